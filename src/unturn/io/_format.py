@@ -1,0 +1,70 @@
+"""What every file format offers: the record behind the FORMATS table."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from dataclasses import dataclass
+from pathlib import Path
+from typing import Protocol
+
+from unturn.result import Result
+
+
+class ResultFile(Protocol):
+    """An opened result file; nothing of size is read before `read`.
+
+    Attributes
+    ----------
+    path
+        As given by the user.
+    format_name
+        Name in the FORMATS table.
+    steps
+        The value (time, frequency ...) of each step, in file order; None when the file is not a series.
+    """
+
+    path: str
+    format_name: str
+    steps: tuple[float, ...] | None
+
+    def read(self, step: int = 0) -> Result:
+        """Read one step (zero-based; 0 when the file is not a series)."""
+        ...
+
+
+class StepWriter(Protocol):
+    """Writes a series step by step into `path`; the caller renames the finished file into place."""
+
+    def add(self, result: Result, value: float) -> None:
+        """Write one step; only this step is held in memory."""
+        ...
+
+    def close(self) -> None:
+        """Finish the file."""
+        ...
+
+
+@dataclass(frozen=True)
+class Format:
+    """One file format.
+
+    Parameters
+    ----------
+    name
+        Short name for people: ``VTU``, ``XDMF`` ...
+    suffixes
+        Lower-case file suffixes with the dot.
+    open
+        Opens a file for reading; raises `InputError` for anything it cannot read right.
+    write
+        Writes a result to a path, not atomically (the caller does that), and returns sentences on what the
+        format could not hold. None: reading only.
+    write_series
+        Opens a `StepWriter`. None: no series.
+    """
+
+    name: str
+    suffixes: tuple[str, ...]
+    open: Callable[[Path], ResultFile]
+    write: Callable[[Result, Path], tuple[str, ...]] | None = None
+    write_series: Callable[[Path], StepWriter] | None = None
