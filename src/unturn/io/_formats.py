@@ -1,0 +1,146 @@
+"""The FORMATS table, and which of its lines a file belongs to."""
+
+from __future__ import annotations
+
+import importlib
+import re
+from collections.abc import Callable
+from pathlib import Path
+from typing import Any
+
+from unturn.errors import InputError, UsageError, close_matches
+from unturn.io._format import Format
+
+
+def _call(module: str, function: str, *extra: Any) -> Callable[..., Any]:
+    """Return a function of an adapter that is imported at its first call."""
+
+    def call(*args: Any) -> Any:
+        return getattr(importlib.import_module(f"unturn.io.{module}"), function)(*args, *extra)
+
+    return call
+
+
+def _xml(name: str, suffix: str) -> Format:
+    return Format(
+        name, (suffix,), _call("vtk_xml", "open_file", suffix), _call("vtk_xml", "write_file", suffix)
+    )
+
+
+def _meshio(name: str, *suffixes: str) -> Format:
+    return Format(name, suffixes, _call("_meshio", "open_file"))
+
+
+FORMATS: tuple[Format, ...] = (
+    _xml("VTU", ".vtu"),
+    _xml("VTP", ".vtp"),
+    _xml("VTS", ".vts"),
+    _xml("VTR", ".vtr"),
+    _xml("VTI", ".vti"),
+    Format(
+        "XDMF",
+        (".xdmf", ".xmf", ".xdmf3"),
+        _call("xdmf", "open_file"),
+        _call("xdmf", "write"),
+        _call("xdmf", "open_series"),
+    ),
+    _meshio("MSH", ".msh"),
+    _meshio("MED", ".med"),
+    _meshio("Exodus", ".exo", ".e", ".ex2"),
+    _meshio("INP", ".inp"),
+    _meshio("AVS-UCD", ".avs"),
+    _meshio("CGNS", ".cgns"),
+    _meshio("Nastran bulk data", ".bdf", ".nas", ".fem"),
+    _meshio("Permas", ".dato", ".post"),
+    _meshio("TetGen", ".node", ".ele"),
+    _meshio("FLAC3D", ".f3grid"),
+    _meshio("MOAB", ".h5m"),
+    _meshio("HMF", ".hmf"),
+    _meshio("MDPA", ".mdpa"),
+    _meshio("Medit", ".mesh", ".meshb"),
+    _meshio("Netgen", ".vol"),
+    _meshio("PLY", ".ply"),
+    _meshio("SU2", ".su2"),
+    _meshio("Tecplot ASCII", ".tec"),
+    _meshio("UGRID", ".ugrid"),
+    _meshio("DOLFIN XML", ".xml"),
+)
+
+_BY_SUFFIX = {suffix: fmt for fmt in FORMATS for suffix in fmt.suffixes}
+_BY_NAME = {fmt.name: fmt for fmt in FORMATS}
+
+_VTKFILE = re.compile(rb"<VTKFile\b[^>]*\btype\s*=\s*[\"'](\w+)[\"']")
+_VTKFILE_NAMES = {
+    b"UnstructuredGrid": "VTU",
+    b"PolyData": "VTP",
+    b"StructuredGrid": "VTS",
+    b"RectilinearGrid": "VTR",
+    b"ImageData": "VTI",
+}
+
+
+def format_of_file(path: Path) -> Format:
+    """Return the format of an existing file, by what it holds, else by its suffix.
+
+    Raises
+    ------
+    InputError
+        Neither the content nor the suffix is known.
+    """
+    with path.open("rb") as stream:
+        head = stream.read(4096)
+    by_suffix = _BY_SUFFIX.get(path.suffix.lower())
+    name = _name_by_content(head, path)
+    if name is not None:
+        return _BY_NAME[name]
+    if by_suffix is None:
+        raise InputError(
+            f"{path}: neither the suffix {path.suffix!r} nor the content is that of a known result format. "
+            f"Formats that can be read: {_listing(FORMATS)}."
+        )
+    return by_suffix
+
+
+def _name_by_content(head: bytes, path: Path) -> str | None:
+    kind = _VTKFILE.search(head)
+    if kind is not None:
+        if kind[1] not in _VTKFILE_NAMES:
+            raise InputError(
+                f"{path}: VTK files of type {kind[1].decode()!r} cannot be read; write VTU instead."
+            )
+        return _VTKFILE_NAMES[kind[1]]
+    if re.search(rb"<Xdmf\b", head):
+        return "XDMF"
+    if head.startswith(b"$MeshFormat"):
+        return "MSH"
+    if head.startswith(b"CDF"):
+        return "Exodus"
+    return None
+
+
+def format_for_writing(path: Path, *, series: bool = False) -> Format:
+    """Return the format to write for a target's suffix.
+
+    Raises
+    ------
+    UsageError
+        The suffix is not known, or that format is not written here.
+    """
+    fmt = _BY_SUFFIX.get(path.suffix.lower())
+    able = [f for f in FORMATS if (f.write_series if series else f.write) is not None]
+    if fmt is None:
+        hint = close_matches(path.suffix.lower(), _BY_SUFFIX)
+        raise UsageError(
+            f"{path}: no format is written to the suffix {path.suffix!r}.{hint} Use {_listing(able)}."
+        )
+    if fmt not in able:
+        what = "a series of steps is not written" if series and fmt.write else "results are not written"
+        raise UsageError(
+            f"{path}: {what} as {fmt.name}; use "
+            + (f"{_listing(able)}." if series else "VTU (.vtu) or XDMF (.xdmf).")
+        )
+    return fmt
+
+
+def _listing(formats: tuple[Format, ...] | list[Format]) -> str:
+    return ", ".join(f"{f.name} ({' '.join(f.suffixes)})" for f in formats)

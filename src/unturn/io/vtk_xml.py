@@ -1,0 +1,112 @@
+"""VTU, VTP, VTS, VTR and VTI: one piece of VTK's XML family a file."""
+
+from __future__ import annotations
+
+import importlib
+from dataclasses import dataclass
+from pathlib import Path
+from typing import Any
+
+from unturn.errors import InputError, UsageError
+from unturn.io.vtk_arrays import quiet_vtk
+from unturn.io.vtk_result import dataset_from_result, result_from_vtk, vtk_from_result
+from unturn.result import Result
+
+# Suffix -> name for people and middle part of VTK's class names.
+KINDS = {
+    ".vtu": ("VTU", "UnstructuredGrid"),
+    ".vtp": ("VTP", "PolyData"),
+    ".vts": ("VTS", "StructuredGrid"),
+    ".vtr": ("VTR", "RectilinearGrid"),
+    ".vti": ("VTI", "ImageData"),
+}
+
+
+def vtk_class(module: str, name: str) -> Any:
+    """Return a class of one of VTK's modules, loaded only now."""
+    return getattr(importlib.import_module(f"vtkmodules.{module}"), name)()
+
+
+@dataclass(frozen=True)
+class XmlFile:
+    """An opened file of VTK's XML family."""
+
+    path: str
+    format_name: str
+    kind: str
+    steps: tuple[float, ...] | None = None
+
+    def read(self, step: int = 0) -> Result:
+        """Read the file; there is only step 0."""
+        return result_from_vtk(read_dataset(self.path, self.kind), self.path, format_name=self.format_name)
+
+
+def open_file(path: Path, suffix: str) -> XmlFile:
+    """Open a file of the kind that `suffix` stands for."""
+    name, kind = KINDS[suffix]
+    return XmlFile(str(path), name, kind)
+
+
+def read_dataset(path: str, kind: str) -> Any:
+    """Return the VTK data set in a file of VTK's XML family, read by VTK after the file was proved sound."""
+    reader = vtk_class("vtkIOXML", f"vtkXML{kind}Reader")
+    return run_reader(reader, path)
+
+
+def run_reader(reader: Any, path: str) -> Any:
+    """Run a VTK reader on a file and return its output; raise `InputError` in VTK's words when it fails."""
+    errors: list[str] = []
+    with quiet_vtk() as said:
+        reader.SetFileName(path)
+        reader.Update()
+    errors.extend(said)
+    if reader.GetErrorCode() or errors:
+        reason = "; ".join(dict.fromkeys(errors)) or f"error {reader.GetErrorCode()}"
+        raise InputError(
+            f"{path} cannot be read: {reason}. The file is damaged or incomplete: write it again, "
+            "or ask the program that made it for another format."
+        )
+    return reader.GetOutputDataObject(0)
+
+
+def write_file(result: Result, path: Path, suffix: str) -> tuple[str, ...]:
+    """Write a result and return what the format could not hold."""
+    dataset = vtk_from_result(result) if suffix == ".vtu" else dataset_from_result(result)
+    name, kind = KINDS[suffix]
+    if not dataset.IsA(f"vtk{kind}"):
+        raise UsageError(
+            f"{path.name}: a result that was not read from {name} cannot be written as {name}; "
+            "give the output the suffix .vtu or .xdmf."
+        )
+    write_dataset(dataset, str(path), kind)
+    return lost_groups(result)
+
+
+def lost_groups(result: Result) -> tuple[str, ...]:
+    """Return one sentence when cell groups of the result have no place in VTK's formats."""
+    if not result.groups:
+        return ()
+    names = ", ".join(repr(n) for n in result.groups)
+    return (
+        f"The cell groups {names} were not written: VTK's formats have no groups; write XDMF to keep them.",
+    )
+
+
+def write_dataset(dataset: Any, path: str, kind: str) -> None:
+    """Write a VTK data set uncompressed with 64-bit sizes (measured: fastest to write and to read back)."""
+    writer = vtk_class("vtkIOXML", f"vtkXML{kind}Writer")
+    writer.SetDataModeToAppended()
+    writer.EncodeAppendedDataOff()
+    writer.SetCompressorTypeToNone()
+    writer.SetHeaderTypeToUInt64()
+    run_writer(writer, dataset, path)
+
+
+def run_writer(writer: Any, dataset: Any, path: str) -> None:
+    """Run a VTK writer; raise `OSError` with VTK's own words when it fails."""
+    with quiet_vtk() as said:
+        writer.SetFileName(path)
+        writer.SetInputData(dataset)
+        done = writer.Write()
+    if not done or said or (hasattr(writer, "GetErrorCode") and writer.GetErrorCode()):
+        raise OSError("; ".join(dict.fromkeys(said)) or f"error {writer.GetErrorCode()}")
