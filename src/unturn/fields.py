@@ -230,6 +230,9 @@ class _Job:
         low = high = point.measure if chunk.row.dim == 3 else np.abs(point.measure)
         volume = np.zeros(len(chunk))
         if chunk.row.dim == 3:
+            wanted = wanted or "jacobian_min_over_max" in self.arrays
+            if not wanted and chunk.surely_untangled(point, rule):
+                return point.measure, point.measure, volume
             low, high = np.full(len(chunk), np.inf), np.full(len(chunk), -np.inf)
             for gradients, weight in zip(rule.gradients, rule.weights):
                 det = chunk.measure(gradients)
@@ -274,10 +277,7 @@ class _Job:
         for i in range(3):
             d.centroid[rows, i] = chunk.first[i] + place.functions[0, 1:] @ chunk.relative[i]
         d.dimension[rows] = chunk.row.dim
-        steepest = np.zeros(len(chunk))
-        for k, extent in enumerate(extents(chunk)):
-            slope = np.sqrt((point.inverse[k] ** 2).sum(axis=0)) / extent
-            np.maximum(steepest, slope, out=steepest)
+        steepest = 1.0 / smallest_height(chunk, point)
         H_size = np.sqrt(np.nansum(split.H**2, axis=(0, 1)))
         largest = [
             np.maximum(np.abs(chunk.first[a:b] + 0.0).max(axis=0), np.abs(chunk.relative[a:b] + chunk.first[a:b, None]).max(axis=(0, 1)))
@@ -302,11 +302,19 @@ def _same_side(point: PointGradient, here: PointGradient) -> Floats:
     return np.where((a * b).sum(axis=0) < 0, -1.0, 1.0)
 
 
-def extents(chunk: ElementChunk) -> Floats:
-    """Return the width of the reference shape along each reference coordinate."""
-    vertices = chunk.row.shape.vertices
-    widths: Floats = np.ptp(vertices, axis=0)
-    return widths
+def smallest_height(chunk: ElementChunk, point: PointGradient) -> Floats:
+    """Return the smallest height `(m,)` of the elements: the distance between opposite sides, or corner and side.
+
+    The gradient of a reference coordinate is one over the distance in which it grows by one.
+    """
+    shape = chunk.row.shape
+    widths = np.ptp(shape.vertices, axis=0)
+    directions = [np.eye(shape.dim)[k] / widths[k] for k in range(shape.dim)]
+    if len(shape.vertices) == shape.dim + 1 and shape.dim > 1:  # simplex: the last barycentric coordinate too
+        directions.append(np.ones(shape.dim))
+    squares = [(np.tensordot(d, point.inverse, axes=1) ** 2).sum(axis=0) for d in directions]
+    height: Floats = 1.0 / np.sqrt(np.max(squares, axis=0))
+    return height
 
 
-__all__ = ["GEOMETRY", "LOCATIONS", "CellDiagnostics", "CellFields", "Location", "compute_fields"]
+__all__ = ["GEOMETRY", "LOCATIONS", "CellDiagnostics", "CellFields", "Location", "compute_fields", "smallest_height"]

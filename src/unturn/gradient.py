@@ -22,8 +22,8 @@ from unturn.kinematics._symmetric import Floats
 
 PlaneModel = Literal["strain", "stress", "axisymmetric"]
 
-_CHUNK = 4096
-_CHUNK_VALUES = 120_000  # nodes x elements x 6 values of a chunk: about one megabyte
+_CHUNK = 8192
+_CHUNK_VALUES = 200_000  # nodes x elements x 6 values of a chunk: a megabyte and a half
 _FLAT = 1e-13  # a Jacobian below this share of the product of its columns belongs to a cell without volume
 
 
@@ -134,6 +134,21 @@ class ElementChunk:
         J = np.matmul(rest, self.relative[:3])
         return _determinant(J, _cofactors(J))
 
+    def surely_untangled(self, point: PointGradient, rule: Samples) -> bool:
+        """Whether no Jacobian determinant can change its sign between the centroid and the points of the rule.
+
+        With `J_q = J_c + D`, `det J_q` keeps the sign of `det J_c` while `|J_c^-1| |D| < 1`. D comes from the nodes'
+        distance to the affine image of the reference nodes, so affine elements pass at once. A bound, not the answer:
+        where it fails the determinants themselves decide.
+        """
+        nodes = self.row.nodes[1:] - self.row.nodes[0]
+        departure = self.relative[:3] - np.matmul(nodes, self.tangents(rule.center)[:3])
+        reach = np.linalg.norm((rule.gradients - rule.center)[:, :, 1:], ord=2, axis=(1, 2)).max()
+        departure *= departure
+        spread = departure.sum(axis=(0, 1))
+        spread *= (point.inverse * point.inverse).sum(axis=(0, 1))
+        return bool((spread * reach**2 < 0.98).all())
+
     def at(self, gradients: Floats, functions: Floats) -> PointGradient:
         """Return the displacement gradient at a point given by its shape gradients `(dim, nodes)` and functions."""
         mixed = self.tangents(gradients)
@@ -194,33 +209,32 @@ class ElementChunk:
 
 
 def _cofactors(J: Floats) -> Floats:
-    """Return `C[k, j]`, the cofactor of `J[k, j]`, for `(3, 3, m)` arrays."""
-    C = np.empty_like(J)
-    for k in range(3):
-        k1, k2 = (k + 1) % 3, (k + 2) % 3
-        for j in range(3):
-            j1, j2 = (j + 1) % 3, (j + 2) % 3
-            np.multiply(J[k1, j1], J[k2, j2], out=C[k, j])
-            C[k, j] -= J[k1, j2] * J[k2, j1]
+    """Return `C[j, k]`, the cofactor of `J[j, k]`, for `(3, 3, m)` arrays.
+
+    Rows and columns are repeated cyclically so that all nine minors are one difference of two products: few large
+    operations keep several threads out of each other's way.
+    """
+    cyclic = np.empty((5, 5, J.shape[-1]))
+    cyclic[:3, :3] = J
+    cyclic[3:, :3] = J[:2]
+    cyclic[:, 3:] = cyclic[:, :2]
+    C = cyclic[1:4, 1:4] * cyclic[2:5, 2:5]
+    C -= cyclic[1:4, 2:5] * cyclic[2:5, 1:4]
     return C
 
 
 def _determinant(J: Floats, C: Floats) -> Floats:
-    # rows of J are coordinates here, columns reference coordinates; the determinant does not mind
-    det = J[0, 0] * C[0, 0]
-    det += J[0, 1] * C[0, 1]
-    det += J[0, 2] * C[0, 2]
+    terms = J[0] * C[0]
+    det: Floats = terms[0] + terms[1]
+    det += terms[2]
     return det
 
 
 def _product(U: Floats, inverse: Floats) -> Floats:
     """Return `H[i, j] = sum_k U[i, k] inverse[k, j]`."""
-    H = np.empty((3, 3, U.shape[-1]))
-    for i in range(3):
-        for j in range(3):
-            np.multiply(U[i, 0], inverse[0, j], out=H[i, j])
-            for k in range(1, len(inverse)):
-                H[i, j] += U[i, k] * inverse[k, j]
+    H = U[:, 0, None] * inverse[0, None]
+    for k in range(1, len(inverse)):
+        H += U[:, k, None] * inverse[k, None]
     return H
 
 
@@ -228,9 +242,13 @@ def _solid(mixed: Floats) -> PointGradient:
     J, U = mixed[:3], mixed[3:]
     C = _cofactors(J)
     det = _determinant(J, C)
-    size = np.sqrt((J * J).sum(axis=0)).prod(axis=0)
-    usable = np.where(np.abs(det) > _FLAT * size, det, np.nan)
-    C /= usable
+    squares = J * J
+    lengths = squares[0] + squares[1]
+    lengths += squares[2]
+    bound = lengths[0] * lengths[1]
+    bound *= lengths[2]
+    flat = det * det <= _FLAT**2 * bound
+    C /= np.where(flat, np.nan, det) if flat.any() else det
     inverse = C.swapaxes(0, 1)
     return PointGradient(_product(U, inverse), det, np.abs(det), inverse)
 
@@ -421,11 +439,15 @@ def displacement_gradient(
 
 @dataclass(frozen=True, eq=False)
 class Samples:
-    """Shape functions `(p, nodes)`, gradients `(p, dim, nodes)` and weights `(p,)` at reference points."""
+    """Shape functions `(p, nodes)`, gradients `(p, dim, nodes)` and weights `(p,)` at reference points.
+
+    `center` holds the shape gradients `(dim, nodes)` at the centroid.
+    """
 
     functions: Floats
     gradients: Floats
     weights: Floats
+    center: Floats
 
 
 def sample_points(row: Element, at: Any) -> Samples:
@@ -442,7 +464,8 @@ def sample_points(row: Element, at: Any) -> Samples:
         weights = np.zeros(len(points))
         if points.shape[1] != row.dim:
             raise UsageError(f"reference points of {row.name} have {row.dim} coordinates, got {points.shape[1]}.")
-    return Samples(row.shape_functions(points), row.shape_gradients(points), weights)
+    center = row.shape_gradients(row.centroid[None])[0]
+    return Samples(row.shape_functions(points), row.shape_gradients(points), weights, center)
 
 
 def mean_gradient(chunk: ElementChunk, samples: Samples) -> tuple[Floats, Floats]:
