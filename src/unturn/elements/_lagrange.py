@@ -26,7 +26,7 @@ NUMBERING = Source(
 
 
 def triangle_lattice(order: int) -> list[tuple[int, int]]:
-    """Return ``(i, j)`` of the nodes of a triangle of this order: corners, edges, then the inner triangle alike."""
+    """Return ``(i, j)`` of the nodes of a triangle: corners, edges, then the inner triangle alike."""
     if order < 0:
         return []
     if order == 0:
@@ -39,8 +39,14 @@ def triangle_lattice(order: int) -> list[tuple[int, int]]:
     return ring + [(i + 1, j + 1) for i, j in triangle_lattice(k - 3)]
 
 
-def _inner_triangle(order: int) -> list[tuple[int, int]]:
+def inner_triangle(order: int) -> list[tuple[int, int]]:
+    """Inner nodes of a triangle, again as a triangle: VTK's order in triangles and faces of tetrahedra."""
     return [(i + 1, j + 1) for i, j in triangle_lattice(order - 3)]
+
+
+def inner_rows(order: int) -> list[tuple[int, int]]:
+    """Inner nodes of a triangle row by row: VTK's order in wedges, a different one from order 5 on."""
+    return [(i, j) for j in range(1, order) for i in range(1, order - j)]
 
 
 def _inner_square(order: int) -> list[tuple[int, int]]:
@@ -65,11 +71,11 @@ class Family:
         In the direction in which VTK numbers their inner nodes; a face's first axis runs from its first corner
         to the second, its second axis from the first to the last.
     body
-        Inner nodes of a solid (of a face of dimension 2, through `faces`).
+        Inner nodes of a line or solid (a triangle or quadrilateral has its inner nodes through `faces`).
+    inner_triangle
+        Order of the inner nodes of triangular faces.
     facets
         Families of the shape's faces, for solids.
-    orders
-        Orders whose numbering VTK defines.
     refused
         Number of nodes -> why such a cell is not computed.
     exempt
@@ -86,8 +92,8 @@ class Family:
     edges: tuple[tuple[int, int], ...] = ()
     faces: tuple[tuple[int, ...], ...] = ()
     body: Callable[[int], list[tuple[int, ...]]] = lambda order: []
+    inner_triangle: Callable[[int], list[tuple[int, int]]] = inner_triangle
     facets: tuple[Family, ...] = ()
-    orders: range = range(1, MAX_ORDER + 1)
     refused: dict[int, str] = field(default_factory=dict)
     exempt: tuple[int, ...] = ()
 
@@ -100,7 +106,7 @@ class Family:
                 np.array([order * corners[a] + s * (corners[b] - corners[a]) for s in range(1, order)])
             )
         for face in self.faces:
-            inner = _inner_triangle(order) if len(face) == 3 else _inner_square(order)
+            inner = self.inner_triangle(order) if len(face) == 3 else _inner_square(order)
             first, second = (corners[face[c]] - corners[face[0]] for c in (1, -1))
             nodes.append(np.array([order * corners[face[0]] + i * first + j * second for i, j in inner]))
         nodes.append(np.array(self.body(order), dtype=np.int64))
@@ -184,4 +190,4 @@ def inner_box(dim: int) -> Callable[[int], list[tuple[int, ...]]]:
 
 def inner_prism(order: int) -> list[tuple[int, ...]]:
     """Inner nodes of a wedge: the inner triangle, layer by layer."""
-    return [(i, j, k) for k in range(1, order) for i, j in _inner_triangle(order)]
+    return [(i, j, k) for k in range(1, order) for i, j in inner_rows(order)]

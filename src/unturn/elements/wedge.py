@@ -6,7 +6,7 @@ from functools import partial
 
 from unturn.elements import quad, triangle
 from unturn.elements._element import Element, placed
-from unturn.elements._lagrange import Family, inner_prism, warp_prism
+from unturn.elements._lagrange import Family, inner_prism, inner_rows, warp_prism
 from unturn.elements._quadrature import wedge_rule
 from unturn.elements._shape import Shape, read_only
 from unturn.elements._space import prism_space
@@ -88,6 +88,7 @@ LAGRANGE = Family(
     edges=WEDGE.edges,
     faces=((0, 1, 2), (3, 4, 5), *_QUADS),
     body=inner_prism,
+    inner_triangle=inner_rows,
     facets=(triangle.LAGRANGE,) * 2 + (quad.LAGRANGE,) * 3,
     refused={21: "a quadratic wedge with face and centre nodes, which has no row in the element table"},
 )
