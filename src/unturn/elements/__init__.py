@@ -1,11 +1,12 @@
 """The element table: every cell that can be computed, and why the others cannot.
 
-A row is reference nodes and a space of functions; shape functions, gradients, edges and faces follow from them.
-Names are meshio's, node orders are VTK's.
+A row is reference nodes and a space of functions; shape functions, gradients, edges and faces follow from
+them. Names are meshio's, node orders are VTK's.
 """
 
 from __future__ import annotations
 
+from unturn.elements._detect import detect_spacing
 from unturn.elements._element import Element, FaceNodes
 from unturn.elements._lookup import ELEMENTS, FAMILIES, element, not_computable
 from unturn.elements._quadrature import Quadrature
@@ -20,6 +21,7 @@ __all__ = [
     "Quadrature",
     "Shape",
     "Spacing",
+    "detect_spacing",
     "element",
     "not_computable",
 ]

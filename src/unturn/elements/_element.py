@@ -51,8 +51,7 @@ class Element:
     face_elements
         For solids: the element of each face of the shape.
     layout
-        ``(n_nodes, dim)`` the nodes at equal spacing: tells which node is which where the true spacing differs.
-        Default: `nodes`.
+        ``(n_nodes, dim)`` the nodes at equal spacing, where `nodes` are not. Default: `nodes`.
     node_jacobian_exempt
         Nodes where det J is legitimately zero or undefined (the apex of a pyramid).
 
@@ -129,7 +128,7 @@ class Element:
 
         Returns
         -------
-        ``(p, dim, n_nodes)``, dimensionless, read-only. Kept for the centroid, the quadrature points and the nodes.
+        ``(p, dim, n_nodes)``, dimensionless, read-only. Kept for centroid, quadrature points and nodes.
         """
         points = _points(xi, self.dim)
         for known, gradients in self._kept:
@@ -150,7 +149,8 @@ class Element:
         return read_only(self.space.gradients(points) @ self._cardinal)
 
     @property
-    def _layout(self) -> Floats:
+    def places(self) -> Floats:
+        """``(n_nodes, dim)`` the nodes at equal spacing: which node is which, whatever the true spacing."""
         return self.nodes if self.layout is None else self.layout
 
     @cached_property
@@ -159,8 +159,8 @@ class Element:
         found = []
         for a, b in self.shape.edges:
             start, along = self.shape.vertices[a], self.shape.vertices[b] - self.shape.vertices[a]
-            t = (self._layout - start) @ along / (along @ along)
-            off = np.abs(self._layout - start - t[:, None] * along).max(axis=1)
+            t = (self.places - start) @ along / (along @ along)
+            off = np.abs(self.places - start - t[:, None] * along).max(axis=1)
             between = np.flatnonzero((off < 1e-9) & (t > 1e-9) & (t < 1 - 1e-9))
             found.append((a, b, tuple(int(n) for n in between[np.argsort(t[between])])))
         return tuple(found)
@@ -173,8 +173,8 @@ class Element:
             v = self.shape.vertices[list(corners)]
             origin = face.shape.vertices[0]
             axes = [(v[b] - v[0]) / np.linalg.norm(face.shape.vertices[b] - origin) for b in (1, -1)]
-            places = v[0] + (face._layout - origin) @ np.array(axes)
-            distance = np.linalg.norm(self._layout[None] - places[:, None], axis=-1)
+            places = v[0] + (face.places - origin) @ np.array(axes)
+            distance = np.linalg.norm(self.places[None] - places[:, None], axis=-1)
             found.append(FaceNodes(face.name, tuple(int(n) for n in distance.argmin(axis=1)), face))
         return tuple(found)
 

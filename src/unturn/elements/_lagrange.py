@@ -33,9 +33,8 @@ def triangle_lattice(order: int) -> list[tuple[int, int]]:
         return [(0, 0)]
     k = order
     ring = [(0, 0), (k, 0), (0, k)]
-    ring += (
-        [(s, 0) for s in range(1, k)] + [(k - s, s) for s in range(1, k)] + [(0, k - s) for s in range(1, k)]
-    )
+    steps = range(1, k)
+    ring += [(s, 0) for s in steps] + [(k - s, s) for s in steps] + [(0, k - s) for s in steps]
     return ring + [(i + 1, j + 1) for i, j in triangle_lattice(k - 3)]
 
 
@@ -68,8 +67,8 @@ class Family:
     warp
         ``(lattice, order) -> (n, dim)`` reference nodes at Gauss-Lobatto-Legendre spacing.
     edges, faces
-        In the direction in which VTK numbers their inner nodes; a face's first axis runs from its first corner
-        to the second, its second axis from the first to the last.
+        In the direction in which VTK numbers their inner nodes; a face's first axis runs from its first
+        corner to the second, its second axis from the first to the last.
     body
         Inner nodes of a line or solid (a triangle or quadrilateral has its inner nodes through `faces`).
     inner_triangle
@@ -78,8 +77,6 @@ class Family:
         Families of the shape's faces, for solids.
     refused
         Number of nodes -> why such a cell is not computed.
-    exempt
-        See `Element.node_jacobian_exempt`.
     """
 
     name: str
@@ -95,16 +92,13 @@ class Family:
     inner_triangle: Callable[[int], list[tuple[int, int]]] = inner_triangle
     facets: tuple[Family, ...] = ()
     refused: dict[int, str] = field(default_factory=dict)
-    exempt: tuple[int, ...] = ()
 
     def lattice(self, order: int) -> Lattice:
         """``(n_nodes, dim)`` integer positions of the nodes in VTK's numbering."""
         corners = np.array(self.corners, dtype=np.int64)
         nodes = [order * corners]
-        for a, b in self.edges:
-            nodes.append(
-                np.array([order * corners[a] + s * (corners[b] - corners[a]) for s in range(1, order)])
-            )
+        steps = np.arange(1, order)[:, None]
+        nodes += [order * corners[a] + steps * (corners[b] - corners[a]) for a, b in self.edges]
         for face in self.faces:
             inner = self.inner_triangle(order) if len(face) == 3 else _inner_square(order)
             first, second = (corners[face[c]] - corners[face[0]] for c in (1, -1))
@@ -153,7 +147,6 @@ def lagrange(family: Family, order: int, spacing: Spacing = "equal") -> Element:
         vtk_type=family.vtk_type,
         face_elements=faces,
         layout=layout,
-        node_jacobian_exempt=family.exempt,
     )
 
 

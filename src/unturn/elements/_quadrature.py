@@ -87,7 +87,7 @@ def _orbit(dim: int, value: float) -> list[list[float]]:
 
 @lru_cache
 def triangle_rule(degree: int) -> Quadrature:
-    """Rule on the triangle (0,0), (1,0), (0,1) exact to at least `degree`: 1, 3 or 7 points, then conical products.
+    """Rule on the unit triangle exact to at least `degree`: 1, 3 or 7 points, then conical products.
 
     Notes
     -----
@@ -136,7 +136,7 @@ def pyramid_rule(n: int) -> Quadrature:
     Notes
     -----
     With ``x = X (1 - z)``, ``y = Y (1 - z)`` the volume element is ``(1 - z)^2``: Gauss-Legendre in X and Y,
-    Gauss-Jacobi in z (Stroud 1971, section 2.4). Exact also for ``X^i Y^j (1 - z)^c`` with exponents to 2 n - 1.
+    Gauss-Jacobi in z (Stroud 1971, section 2.4). Exact also for ``X^i Y^j (1 - z)^c``, exponents to 2 n - 1.
     """
     base = box_rule(2, n)
     z, w = _gauss_unit(n, 2)

@@ -26,7 +26,7 @@ class Shape:
     Parameters
     ----------
     name
-        ``line``, ``triangle``, ``quad``, ``tetra``, ``hexahedron``, ``wedge``, ``pyramid``, ``pixel``, ``voxel``.
+        ``line``, ``triangle``, ``quad``, ``tetra`` ...: the name of the linear cell.
     vertices
         ``(n_vertices, dim)``, in VTK's order of the linear cell.
     centroid
@@ -69,7 +69,7 @@ class Shape:
 
     @cached_property
     def extents(self) -> Floats:
-        """``(n, dim)`` covectors g whose ``g . xi`` varies by exactly one over the shape, one per pair of facets.
+        """``(n, dim)`` covectors g, one per pair of facets: ``g . xi`` varies by one over the shape.
 
         Notes
         -----
@@ -87,4 +87,5 @@ class Shape:
         """``(p,)`` whether each point of the shape lies on a facet."""
         normal = self.facet_normals[facet]
         offset = xi @ normal - self.vertices[self.facets[facet][0]] @ normal
-        return np.abs(offset) < 1e-9
+        found: NDArray[np.bool_] = np.abs(offset) < 1e-9
+        return found

@@ -29,7 +29,7 @@ def jacobi_table(degree: int, alpha: int, u: Table, w: Table | None = None) -> T
     alpha
         First exponent of the Jacobi weight ``(1 - x)^alpha``.
     u, w
-        Two functions of the reference coordinates: values ``(p,)`` and gradients ``(p, dim)``. Without w it is 1.
+        Functions of the reference coordinates: values ``(p,)``, gradients ``(p, dim)``. Default w: 1.
 
     Notes
     -----
@@ -136,12 +136,12 @@ def prism(xi: Floats, terms: tuple[Term, ...]) -> Table:
 
 
 def collapsed(xi: Floats, terms: tuple[Term, ...]) -> Table:
-    """Functions ``P_i(X) P_j(Y) t^c`` of a pyramid: ``t = 1 - z``, ``X = x / t``, ``Y = y / t``, term ``(i, j, c)``.
+    """Functions ``P_i(X) P_j(Y) t^c`` of a pyramid, term ``(i, j, c)``, with ``t = 1 - z, X = x/t, Y = y/t``.
 
     Notes
     -----
-    With ``max(i, j) <= c`` every gradient is a polynomial in X, Y times ``t^(c - 1)``. At the apex X and Y are
-    taken as zero, which gives the limit along the axis.
+    With ``max(i, j) <= c`` every gradient is a polynomial in X, Y times ``t^(c - 1)``. At the apex X and Y
+    are taken as zero, which gives the limit along the axis.
     """
     t = 1.0 - xi[:, 2]
     inverse = np.divide(1.0, t, out=np.zeros_like(t), where=t != 0)
@@ -189,8 +189,8 @@ class Space:
         return np.transpose(gradients, (1, 2, 0))
 
     def cardinal(self, nodes: Floats) -> Floats:
-        """Return ``(n, n)`` coefficients: column a is the function that is 1 at node a and 0 at the others."""
-        return np.linalg.inv(self.values(nodes))
+        """Return ``(n, n)`` coefficients: column a is the function that is 1 at node a, 0 at the others."""
+        return np.asarray(np.linalg.inv(self.values(nodes)), dtype=np.float64)
 
 
 def tensor(*degrees: int) -> Space:
@@ -199,7 +199,7 @@ def tensor(*degrees: int) -> Space:
 
 
 def superlinear(dim: int, *more: Term) -> Space:
-    """Serendipity space of order 2: superlinear degree at most 2 (Arnold and Awanou 2011), plus single terms."""
+    """Serendipity space of order 2: superlinear degree up to 2 (Arnold and Awanou 2011), and more terms."""
     terms = [t for t in product(range(3), repeat=dim) if sum(n for n in t if n >= 2) <= 2]
     return Space(box, tuple(terms) + more)
 
@@ -222,6 +222,6 @@ def prism_space(*products: tuple[int, int]) -> Space:
 
 
 def pyramid_space(degree: int, *without: Term) -> Space:
-    """Functions ``X^i Y^j t^c`` with ``max(i, j) <= c <= degree`` less some terms (Bergot, Cohen, Durufle 2010)."""
+    """Functions with ``max(i, j) <= c <= degree`` (Bergot, Cohen, Durufle 2010) without some terms."""
     terms = [(i, j, c) for c in range(degree + 1) for i in range(c + 1) for j in range(c + 1)]
     return Space(collapsed, tuple(t for t in terms if t not in without))

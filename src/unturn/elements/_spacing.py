@@ -1,4 +1,4 @@
-"""Where the nodes of elements of order 3 and higher lie: equally spaced or at Gauss-Lobatto-Legendre points."""
+"""Nodes of elements of order 3 and higher: equally spaced or at Gauss-Lobatto-Legendre points."""
 
 from __future__ import annotations
 
@@ -34,9 +34,9 @@ def simplex_node(counts: tuple[int, ...]) -> tuple[float, ...]:
 
     Notes
     -----
-    T. Isaac 2020, Recursive, parameter-free, explicitly defined interpolation nodes for simplices, SIAM J. Sci.
-    Comput. 42(6), A4046: leave out one coordinate at a time, place the node of the lower simplex, and take the
-    mean weighted by the one-dimensional node ``gll(order)[order - count left out]``.
+    T. Isaac 2020, Recursive, parameter-free, explicitly defined interpolation nodes for simplices, SIAM J.
+    Sci. Comput. 42(6), A4046: leave out one coordinate at a time, place the node of the lower simplex, and
+    take the mean weighted by the one-dimensional node ``gll(order)[order - count left out]``.
     """
     order = sum(counts)
     points = gll(order)

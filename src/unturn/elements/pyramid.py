@@ -24,8 +24,8 @@ PYRAMID = Shape(
 )
 _FULL = Source(
     "published",
-    "Bergot, Cohen and Durufle 2010, Higher-order finite elements for hybrid meshes using new nodal pyramidal "
-    "elements, J. Sci. Comput. 42, 345-381",
+    "Bergot, Cohen and Durufle 2010, Higher-order finite elements for hybrid meshes using new nodal "
+    "pyramidal elements, J. Sci. Comput. 42, 345-381",
 )
 _SERENDIPITY = Source(
     "published",
