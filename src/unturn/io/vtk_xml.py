@@ -10,6 +10,7 @@ from typing import Any
 from unturn.errors import InputError, UsageError
 from unturn.io.vtk_arrays import quiet_vtk
 from unturn.io.vtk_result import dataset_from_result, result_from_vtk, vtk_from_result
+from unturn.io.vtk_xml_check import check_xml
 from unturn.result import Result
 
 # Suffix -> name for people and middle part of VTK's class names.
@@ -49,6 +50,7 @@ def open_file(path: Path, suffix: str) -> XmlFile:
 
 def read_dataset(path: str, kind: str) -> Any:
     """Return the VTK data set in a file of VTK's XML family, read by VTK after the file was proved sound."""
+    check_xml(path, kind)
     reader = vtk_class("vtkIOXML", f"vtkXML{kind}Reader")
     return run_reader(reader, path)
 
