@@ -6,7 +6,6 @@ from collections.abc import Sequence
 from os import PathLike
 from typing import Literal
 
-
 from unturn import io
 from unturn.errors import UsageError
 from unturn.fields import CellFields, Location, compute_fields
