@@ -222,33 +222,32 @@ def _region_data(r: RegionSummary, summary: Summary) -> dict[str, Any]:
             "size": v.size,
             "noise_floor": v.noise,
             "largest_error_over_size": v.worst,
-            "largest_error_at": _place(v.worst_cell, summary),
+            "largest_error_at": _place(v.worst_cell, summary, v.size),
             "share_above_1_percent": v.share_marginal,
             "share_above_10_percent": v.share_broken,
             "largest_rotation_degrees": v.largest_rotation,
             "action": v.action,
         },
-        "statistics": {name: _statistics_data(s, summary) for name, s in r.statistics.items()},
+        "statistics": {name: _statistics_data(s, summary, v.size) for name, s in r.statistics.items()},
     }
 
 
-def _statistics_data(s: Statistics, summary: Summary) -> dict[str, Any]:
+def _statistics_data(s: Statistics, summary: Summary, size: float) -> dict[str, Any]:
     return {
         "count": s.count,
         "left_out": s.left_out,
         "mean": s.mean,
-        "maximum": {"value": s.maximum, **_place(s.at_maximum, summary)},
-        "minimum": {"value": s.minimum, **_place(s.at_minimum, summary)},
+        "maximum": {"value": s.maximum, **_place(s.at_maximum, summary, size)},
+        "minimum": {"value": s.minimum, **_place(s.at_minimum, summary, size)},
         "percentiles": {f"{q:g}": value for q, value in s.percentiles.items()},
     }
 
 
-def _place(cell: int, summary: Summary) -> dict[str, Any]:
+def _place(cell: int, summary: Summary, size: float) -> dict[str, Any]:
     if cell < 0:
         return {"cell": None, "element": None, "at": None, "error_over_size": None}
     d = summary.fields.diagnostics
     assert d is not None
-    size = next((r.verdict.size for r in summary.regions if cell in _members(r)), math.nan)
     number = None if summary.numbers is None else int(summary.numbers.numbers[cell])
     return {
         "cell": cell,
@@ -256,10 +255,6 @@ def _place(cell: int, summary: Summary) -> dict[str, Any]:
         "at": [float(x) for x in d.centroid[cell]],
         "error_over_size": float(d.error[cell] / size) if size > 0 else None,
     }
-
-
-def _members(r: RegionSummary) -> range | np.ndarray:
-    return r.region.cells
 
 
 def cell_counts(model: Model) -> dict[str, int]:
