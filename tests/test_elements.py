@@ -4,10 +4,10 @@ from __future__ import annotations
 
 from itertools import product
 
-import meshes
 import numpy as np
 import pytest
 
+import meshes
 from unturn.elements import ELEMENTS, FAMILIES, Element, element
 
 # Source: completeness and nodality of shape functions: Zienkiewicz and Taylor, The Finite Element Method; Hughes,
