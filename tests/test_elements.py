@@ -10,8 +10,8 @@ import pytest
 import meshes
 from unturn.elements import ELEMENTS, FAMILIES, Element, element
 
-# Source: completeness and nodality of shape functions: Zienkiewicz and Taylor, The Finite Element Method; Hughes,
-# The Finite Element Method, chapter 3; Bathe, Finite Element Procedures, chapter 5. All checks of this file.
+# Source: completeness and nodality of shape functions: Zienkiewicz and Taylor, The Finite Element Method;
+# Hughes, The Finite Element Method, chapter 3; Bathe, Finite Element Procedures, chapter 5. All checks here.
 
 ROWS = [
     *((name, row) for name, row in ELEMENTS.items()),
@@ -37,7 +37,7 @@ def inside(row: Element, n: int = 7, seed: int = 3) -> np.ndarray:
 
 
 def displacement_gradients(row: Element, X: np.ndarray, values: np.ndarray, xi: np.ndarray) -> np.ndarray:
-    """``(p, m, dim)`` gradients of m nodal fields ``(n_nodes, m)`` on a cell with nodes X ``(n_nodes, dim)``."""
+    """``(p, m, dim)`` gradients of m nodal fields ``(n_nodes, m)``, nodes X ``(n_nodes, dim)``."""
     dN = row.shape_gradients(xi)
     jacobian = np.swapaxes(dN @ X, 1, 2)
     return np.swapaxes(dN @ values, 1, 2) @ np.linalg.inv(jacobian)
@@ -57,7 +57,7 @@ def test_functions_sum_to_one_and_gradients_to_zero(row: Element) -> None:
 
 @each_row
 def test_gradients_are_the_differences_of_the_functions(row: Element) -> None:
-    # Fourth-order central differences: error about step^4 times the fifth derivative, rounding about eps / step.
+    # Fourth-order central differences: error about step^4 times the fifth derivative, rounding eps / step.
     xi, step = inside(row), 2e-4
     for d in range(row.dim):
         shift = step * np.eye(row.dim)[d]
@@ -249,8 +249,8 @@ def test_patch_has_positive_jacobians_and_shared_nodes(row: Element) -> None:
 
 @each_row
 def test_patch_volumes(row: Element) -> None:
-    # Source: MacNeal and Harder 1985: the plate has area 0.24 x 0.12, the cube volume 1. The wedges are the plate
-    # times 0.12; line, pixel and voxel patches have no published size: the line is (0.9, 0.4, 0.2) long.
+    # Source: MacNeal and Harder 1985: the plate has area 0.24 x 0.12, the cube volume 1. The wedges are the
+    # plate times 0.12; line, pixel and voxel patches have no published size: the line is (0.9, 0.4, 0.2) long.
     xi, w = _fine_rule(row)
     total = float((_measures(row, meshes.patch(row), xi) @ w).sum())
     expected = {"quad": 0.0288, "triangle": 0.0288, "wedge": 0.0288 * 0.12, "line": np.sqrt(1.01)}
@@ -259,11 +259,17 @@ def test_patch_volumes(row: Element) -> None:
 
 
 def test_solid_patch_is_tangled_at_one_corner() -> None:
-    # Source: MacNeal and Harder 1985. Measured: one of the 56 corner values of det J is -0.00158, a fact of the
-    # published coordinates; all integration points are positive.
+    # Source: MacNeal and Harder 1985. Measured: one of the 56 corner values of det J is -0.00158, a fact of
+    # the published coordinates; all integration points are positive.
     row = ELEMENTS["hexahedron"]
     at_nodes = _measures(row, meshes.patch(row), row.nodes)
     np.testing.assert_allclose(at_nodes[at_nodes < 0], [-0.00158], atol=5e-6)
+
+
+@each_row
+def test_distorted_cell_is_not_tangled(row: Element) -> None:
+    for seed in range(3):
+        assert (_measures(row, meshes.distorted_cell(row, seed=seed), row.quadrature.points) > 0).all()
 
 
 def test_wrong_shape_of_reference_coordinates_is_named() -> None:

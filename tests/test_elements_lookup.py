@@ -11,6 +11,8 @@ import pytest
 from unturn.elements import ELEMENTS, FAMILIES, element, not_computable
 from unturn.errors import InputError
 
+pytestmark = pytest.mark.derived("node counts are the dimensions of the spaces; the words are this project's")
+
 
 @pytest.mark.parametrize("name", ELEMENTS)
 def test_rows_are_found_by_name_and_number_of_nodes(name: str) -> None:

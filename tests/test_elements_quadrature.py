@@ -12,8 +12,8 @@ import pytest
 from unturn.elements import ELEMENTS, FAMILIES, Quadrature, Shape, element
 from unturn.elements._quadrature import box_rule, pyramid_rule, tetra_rule, triangle_rule, wedge_rule
 
-# Source: closed forms: integral of x^a y^b z^c is a! b! c! / (a + b + c + dim)! on the unit simplex (Stroud 1971,
-# Approximate Calculation of Multiple Integrals, section 7.8); 2 / (a + 1) for even a on [-1, 1].
+# Source: closed forms: integral of x^a y^b z^c is a! b! c! / (a + b + c + dim)! on the unit simplex (Stroud
+# 1971, Approximate Calculation of Multiple Integrals, section 7.8); 2 / (a + 1) for even a on [-1, 1].
 
 
 def _on_line(a: int) -> float:
@@ -109,15 +109,15 @@ def test_two_gauss_points_a_direction() -> None:
 
 
 def test_radon_points() -> None:
-    # Source: Dunavant 1985, High degree efficient symmetrical Gaussian quadrature rules for the triangle, Int. J.
-    # Numer. Meth. Eng. 21, 1129-1148, p = 5: weights 0.225, 0.132394152788506, 0.125939180544827.
+    # Source: Dunavant 1985, High degree efficient symmetrical Gaussian quadrature rules for the triangle,
+    # Int. J. Numer. Meth. Eng. 21, 1129-1148, p = 5: weights 0.225, 0.132394152788506, 0.125939180544827.
     # From memory, not looked up: the digits; the monomial test above is the independent computation.
     weights = np.unique(np.round(2 * triangle_rule(5).weights, 12))
     np.testing.assert_allclose(weights, [0.125939180544827, 0.132394152788506, 0.225], atol=1e-12)
 
 
 def test_four_tetrahedron_points() -> None:
-    # Source: Keast 1986, Moderate-degree tetrahedral quadrature formulas; Hammer and Stroud 1956: 0.1381966011250105.
+    # Source: Keast 1986, Moderate-degree tetrahedral quadrature formulas: 0.1381966011250105.
     # From memory, not looked up: the digits; the monomial test above is the independent computation.
     points = tetra_rule(2).points
     np.testing.assert_allclose(

@@ -20,7 +20,7 @@ def inside(row: Element, n: int = 6) -> np.ndarray:
     return np.random.default_rng(11).dirichlet(np.ones(row.n_corners), n) @ row.shape.vertices
 
 
-# --- formulas, one function of a node's coordinates each ---------------------------------------------------------
+# --- formulas, one function of a node's coordinates each ---
 
 
 def _serendipity_2d(a: float, b: float, _c: float) -> sympy.Expr:
@@ -63,8 +63,8 @@ def _pyramid_13(a: float, b: float, c: float) -> sympy.Expr:
     return (t + y) * (t - y) * (t + a * x) / (2 * t)
 
 
-# Source: Zienkiewicz and Taylor, The Finite Element Method, serendipity and prism families (quad8, hexahedron20,
-# wedge15); Bedrosian 1992, Int. J. Numer. Meth. Eng. 35, 95-108 (pyramid13).
+# Source: Zienkiewicz and Taylor, The Finite Element Method, serendipity and prism families (quad8,
+# hexahedron20, wedge15); Bedrosian 1992, Int. J. Numer. Meth. Eng. 35, 95-108 (pyramid13).
 # From memory, not looked up: the pyramid's. Independent computation: nodality and sum of one, checked below.
 FORMULAS: dict[str, Callable[[float, float, float], sympy.Expr]] = {
     "quad8": _serendipity_2d,
@@ -106,13 +106,13 @@ def test_pyramid_apex_is_the_limit_along_the_axis(name: str) -> None:
 
 @pytest.mark.parametrize("name", ["pyramid", "pyramid14"])
 def test_pyramid_space_has_the_dimension_of_its_degree(name: str) -> None:
-    # Source: Bergot, Cohen and Durufle 2010, J. Sci. Comput. 42, 345-381: (k + 1)(k + 2)(2 k + 3) / 6 functions.
+    # Source: Bergot, Cohen and Durufle 2010, J. Sci. Comput. 42, 345-381: (k+1)(k+2)(2k+3)/6 functions.
     row = ELEMENTS[name]
     k = row.order
     assert row.n_nodes == (k + 1) * (k + 2) * (2 * k + 3) // 6
 
 
-# --- scikit-fem --------------------------------------------------------------------------------------------------
+# --- scikit-fem ---
 
 SKFEM = {
     "line": skfem.ElementLineP1,
@@ -148,7 +148,7 @@ def test_scikit_fem(name: str) -> None:
         np.testing.assert_allclose(gradients[:, :, a].T * extent[:, None], dphi, atol=1e-13)
 
 
-# --- VTK ---------------------------------------------------------------------------------------------------------
+# --- VTK ---
 
 VTK = {
     "line": vtk.vtkLine,
@@ -259,8 +259,8 @@ def test_vtk(name: str) -> None:
 
 @pytest.mark.source("VTK 9.7.2, vtkQuadraticPyramid::InterpolateFunctions")
 def test_vtk_quadratic_pyramid_is_another_space() -> None:
-    # Measured: VTK's 13 functions miss quadratic polynomials on the straight pyramid (a collapsed hexahedron in
-    # parametric coordinates, not the rational functions); ours hold all ten. So they are not compared.
+    # Measured: VTK's 13 functions (quadratic in the coordinates of the collapsed cube, not the rational ones)
+    # miss quadratic polynomials on the straight pyramid; ours hold all ten. So they are not compared.
     row = ELEMENTS["pyramid13"]
     xi = inside(row)
     values, _ = _vtk_functions(row, vtk.vtkQuadraticPyramid(), xi)

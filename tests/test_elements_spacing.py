@@ -10,6 +10,8 @@ from unturn.elements import ELEMENTS, FAMILIES, Element, Spacing, detect_spacing
 from unturn.elements._spacing import gll, simplex_node
 from unturn.errors import InputError
 
+pytestmark = pytest.mark.derived("cells made with a known spacing must give that spacing back")
+
 HIGHER = [
     pytest.param(name, order, id=f"{name.removeprefix('VTK_LAGRANGE_').lower()}_{order}")
     for name in FAMILIES
@@ -90,8 +92,8 @@ def test_straight_patches_and_curved_patches(name: str, order: int, spacing: Spa
 @pytest.mark.parametrize("order", [3, 4, 5, 6])
 @pytest.mark.parametrize("angle", [30, 60, 90, 120])
 def test_strongly_curved_arcs_are_not_misread(angle: float, order: int, spacing: Spacing) -> None:
-    # Equal thirds of a wide arc lie at chord fractions near those of Gauss-Lobatto-Legendre nodes (0.25 at 180
-    # degrees): the distance along the arc must decide.
+    # Equal thirds of a wide arc lie at chord fractions near those of Gauss-Lobatto-Legendre nodes (0.25 at
+    # 180 degrees): the distance along the arc must decide.
     row = _row("VTK_LAGRANGE_QUADRILATERAL", order, spacing)
     polar = np.radians(angle) * (row.nodes[:, 0] + 1) / 2
     radius = 2 + row.nodes[:, 1]
@@ -164,6 +166,14 @@ def test_nodes_crowded_to_one_end_are_no_spacing() -> None:
     t = ((row.nodes[:, 0] + 1) / 2) ** 2
     with pytest.raises(InputError, match="no other spacing fits"):
         detect_spacing(np.column_stack([t, t, 0 * t]), np.arange(4)[None], row.name)
+
+
+def test_another_node_order_is_no_spacing() -> None:
+    row = _row("VTK_LAGRANGE_QUADRILATERAL", 3)
+    mesh = meshes.affine_cell(row)
+    turned_edges = mesh.points[[0, 1, 2, 3, 5, 4, 7, 6, 9, 8, 11, 10, 12, 13, 14, 15]]
+    with pytest.raises(InputError, match="Check the node order"):
+        detect_spacing(turned_edges, mesh.cells, row.name)
 
 
 def test_most_cells_decide() -> None:
