@@ -220,8 +220,6 @@ def read_points(items: ItemReader, geometry: Node, topology: Node) -> tuple[Arra
     if stated.upper() not in readers:
         raise fault(geometry, f"a Geometry of type {stated!r} is not read; {', '.join(readers)} are.")
     points = readers[stated.upper()](items, geometry, topology)
-    if points.dtype.kind != "f":
-        points = points.astype(np.float64)
     dimension = points.shape[1]
     if dimension == 2:
         points = np.column_stack([points, np.zeros(len(points), points.dtype)])

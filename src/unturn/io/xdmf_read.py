@@ -8,14 +8,18 @@ from dataclasses import dataclass, field
 from pathlib import Path
 
 import numpy as np
+from numpy.typing import NDArray
 
 from unturn.errors import UsageError
+from unturn.io._node_order import checked_order
 from unturn.io.xdmf_attributes import Kept
 from unturn.io.xdmf_items import ItemReader
 from unturn.io.xdmf_merge import merge, read_part
 from unturn.io.xdmf_tree import MAX_DEPTH, Node, XdmfTree, attribute, fault, local_name
-from unturn.result import Association, Result, Steps
+from unturn.result import Array, Association, Result, Steps
 
+# Source: VTK 9.7, vtkDataSetAttributes.h, CellGhostTypes.
+_GHOSTS, _GHOST_BITS = "vtkGhostType", {1: "ghost", 8: "refined", 32: "hidden"}
 _IN_GRID = {"Topology", "Geometry", "Attribute", "Set", "Time", "Information", "DataItem"}
 
 
@@ -101,13 +105,16 @@ class XdmfFile:
                     )
             still = [p for p in still if p.geometry_key in shared]
         merged = merge([*moving, *still], items)
+        arrays = merged.arrays
+        arrays["blocks"], repaired = checked_order(arrays["points"], arrays["blocks"], f"{self.path}: ")
         return Result(
-            **merged.arrays,
+            **arrays,
+            left_out=_left_out(arrays["cell_data"].get(_GHOSTS)),
             steps=Steps(self.steps, step) if self.steps else None,
             path=self.path,
             format_name=self.format_name,
             point_dimension=merged.point_dimension,
-            notes=(*self._notes, *items.notes),
+            notes=(*self._notes, *items.notes, *repaired),
             carrier=XdmfCarrier(
                 merged.forms, merged.connectivity_dtype, merged.kept, self._information(step)
             ),
@@ -221,6 +228,14 @@ class XdmfFile:
         if not re.fullmatch(r"[-+]?(\d+\.?\d*|\.\d+)([eE][-+]?\d{1,3})?", text):
             raise fault(time, f"the time {text!r} is not a number.")
         return float(text)
+
+
+def _left_out(flags: Array | None) -> dict[str, NDArray[np.int64]]:
+    """Return the cells that do not count, by reason."""
+    if flags is None or flags.dtype.kind not in "iu" or flags.ndim != 1:
+        return {}
+    found = {reason: np.flatnonzero(flags & bit) for bit, reason in _GHOST_BITS.items()}
+    return {reason: cells for reason, cells in found.items() if len(cells)}
 
 
 def _is_temporal(grid: Node) -> bool:

@@ -43,7 +43,8 @@ def write(result: Result, path: Path) -> tuple[str, ...]:
     result
         Any result; one that came from an XDMF file keeps its array types, sets and information.
     path
-        The index; the HDF5 file has its name with the suffix ``.h5`` and lies in the same folder.
+        The index ``NAME.xdmf``; the numbers go to ``NAME.xdmf.h5`` in the same folder, a name that no other
+        program gives its data, so a solver's own ``NAME.h5`` stays.
 
     Raises
     ------
@@ -97,22 +98,14 @@ class XdmfSeriesWriter:
             store.index()
 
     def close(self) -> None:
-        """Finish the file.
-
-        Raises
-        ------
-        UsageError
-            No step was added.
-        """
-        if not self._values:
-            raise UsageError(f"{self._store.path}: a series without a step cannot be written.")
+        """Finish the file: nothing is left to do, it is complete after each step."""
 
 
 class _Store:
     """The index in memory and the HDF5 file that its DataItems point into."""
 
     def __init__(self, path: Path) -> None:
-        self.path, self.h5_path = path, path.with_suffix(".h5")
+        self.path, self.h5_path = path, path.with_name(path.name + ".h5")
         self.root = ET.Element("Xdmf", Version="3.0")
         self.domain = ET.SubElement(self.root, "Domain")
         self.lost: dict[str, None] = {}
@@ -200,7 +193,9 @@ class _Store:
         element = ET.SubElement(grid, "Attribute", Name=name, AttributeType=kind, Center=center)
         if kind == "Tensor6":
             element.append(ET.Comment(f" components: {' '.join(names)} "))
-        dataset = self._item(element, values, group, f"the {association} array {name!r}", name, shape)
+        # A Matrix of one row keeps its two axes in HDF5, where other readers look.
+        stored = values if tail[:1] == (1,) and len(tail) > 1 else values.reshape(shape)
+        dataset = self._item(element, stored, group, f"the {association} array {name!r}", name, shape)
         if names:
             dataset.attrs[COMPONENT_NAMES] = np.array(names, dtype=h5py.string_dtype())
 
@@ -250,8 +245,9 @@ def _carrier(result: Result) -> XdmfCarrier:
 
 def _check_names(result: Result) -> None:
     names = [*result.point_data, *result.cell_data, *result.field_data, *result.groups]
+    names += [component for key in result.component_names.values() for component in key]
     for name in names:
-        if not name or _NOT_XML.search(name):
+        if _NOT_XML.search(name):
             raise UsageError(f"the name {name!r} cannot be written in XDMF: rename the array or group.")
 
 
