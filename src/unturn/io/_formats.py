@@ -37,6 +37,7 @@ FORMATS: tuple[Format, ...] = (
     _xml("VTS", ".vts"),
     _xml("VTR", ".vtr"),
     _xml("VTI", ".vti"),
+    Format("VTK legacy", (".vtk",), _call("vtk_legacy", "open_file"), _call("vtk_legacy", "write_file")),
     Format(
         "XDMF",
         (".xdmf", ".xmf", ".xdmf3"),
@@ -109,6 +110,8 @@ def _name_by_content(head: bytes, path: Path) -> str | None:
                 f"{path}: VTK files of type {kind[1].decode()!r} cannot be read; write VTU instead."
             )
         return _VTKFILE_NAMES[kind[1]]
+    if head.startswith(b"# vtk DataFile"):
+        return "VTK legacy"
     if re.search(rb"<Xdmf\b", head):
         return "XDMF"
     if head.startswith(b"$MeshFormat"):
