@@ -2,11 +2,11 @@
 
 from __future__ import annotations
 
-import meshes
 import numpy as np
 import pytest
-from strategies import axis_angle
 
+import meshes
+from strategies import axis_angle
 from unturn import kinematics as kin
 from unturn.elements import ELEMENTS, FAMILIES, Element, element
 from unturn.errors import InputError, UsageError
@@ -103,7 +103,9 @@ def test_far_origin_and_large_translation_keep_the_digits(row: Element) -> None:
     far = gradients(mesh._replace(points=points + offset), u, "mean")
     np.testing.assert_allclose(far, here, rtol=1e-13, atol=1e-18)
     np.testing.assert_allclose(here, near, atol=1e-8 * row.order**2)
-    moved = gradients(mesh._replace(points=points), u + np.array([1e6, -1e6, 1e6 if row.dim == 3 else 0]), "mean")
+    moved = gradients(
+        mesh._replace(points=points), u + np.array([1e6, -1e6, 1e6 if row.dim == 3 else 0]), "mean"
+    )
     np.testing.assert_allclose(moved, here, atol=2e-8 * row.order**2)  # u rounds to 1e6 x 1.1e-16
 
 
@@ -125,7 +127,9 @@ def test_mirrored_numbering_gives_the_right_gradient(row: Element) -> None:
         np.testing.assert_allclose(found, np.broadcast_to(H, found.shape), atol=1e-12)
 
 
-@pytest.mark.source("MacNeal and Harder 1985, Finite Elem. Anal. Des. 1, 3-20: patch test of membrane and solid elements")
+@pytest.mark.source(
+    "MacNeal and Harder 1985, Finite Elem. Anal. Des. 1, 3-20: patch test of membrane and solid elements"
+)
 @each({**SOLIDS, **FLAT})
 def test_patches_of_macneal_and_harder(row: Element) -> None:
     mesh = meshes.patch(row)
@@ -152,7 +156,9 @@ def test_bent_patches(name: str) -> None:
         np.testing.assert_allclose(found, np.broadcast_to(H, found.shape), atol=1e-15)
 
 
-@pytest.mark.derived("mean of the gradient = surface integral of u (x) n over the volume (Gauss): exact for polynomials")
+@pytest.mark.derived(
+    "mean of the gradient = surface integral of u (x) n over the volume (Gauss): exact for polynomials"
+)
 @each({n: row for n, row in SOLIDS.items() if row.shape.name in {"hexahedron", "tetra"}})
 def test_mean_of_a_field_of_the_elements_order_on_an_affine_cell(row: Element) -> None:
     mesh = meshes.affine_cell(row)
@@ -202,11 +208,51 @@ def test_plane_arrays_of_two_columns_count_as_z_zero() -> None:
 @pytest.mark.parametrize(
     ("points", "cells", "u", "cell_type", "at", "error", "words"),
     [
-        (np.zeros((4, 3)), [0, 1, 2, 3], np.zeros((4, 3)), "tetra", "centroid", UsageError, "n_cells, n_nodes"),
-        (np.zeros((4, 3)), [[0, 1, 2, 4]], np.zeros((4, 3)), "tetra", "centroid", UsageError, "outside 0 to 3"),
-        (np.zeros((4, 3)), [[0, 1, 2, -1]], np.zeros((4, 3)), "tetra", "centroid", UsageError, "outside 0 to 3"),
-        (np.zeros((4, 3)), [[0, 1, 2, 3]], np.zeros((5, 3)), "tetra", "centroid", UsageError, "one row per point"),
-        (np.zeros((4, 1)), [[0, 1, 2, 3]], np.zeros((4, 3)), "tetra", "centroid", UsageError, "points have shape"),
+        (
+            np.zeros((4, 3)),
+            [0, 1, 2, 3],
+            np.zeros((4, 3)),
+            "tetra",
+            "centroid",
+            UsageError,
+            "n_cells, n_nodes",
+        ),
+        (
+            np.zeros((4, 3)),
+            [[0, 1, 2, 4]],
+            np.zeros((4, 3)),
+            "tetra",
+            "centroid",
+            UsageError,
+            "outside 0 to 3",
+        ),
+        (
+            np.zeros((4, 3)),
+            [[0, 1, 2, -1]],
+            np.zeros((4, 3)),
+            "tetra",
+            "centroid",
+            UsageError,
+            "outside 0 to 3",
+        ),
+        (
+            np.zeros((4, 3)),
+            [[0, 1, 2, 3]],
+            np.zeros((5, 3)),
+            "tetra",
+            "centroid",
+            UsageError,
+            "one row per point",
+        ),
+        (
+            np.zeros((4, 1)),
+            [[0, 1, 2, 3]],
+            np.zeros((4, 3)),
+            "tetra",
+            "centroid",
+            UsageError,
+            "points have shape",
+        ),
         (np.zeros((4, 3)), [[0, 1, 2, 3]], np.zeros((4, 3)), "tetra", "corner", UsageError, "'corner'"),
         (np.zeros((4, 3)), [[0, 1, 2, 3]], np.zeros((4, 3)), "tetra", [[0, 0]], UsageError, "3 coordinates"),
         (np.zeros((4, 3)), [[0, 1, 2]], np.zeros((4, 3)), "tetra", "centroid", InputError, "has 4 nodes"),
