@@ -12,8 +12,8 @@ from unturn.elements import ELEMENTS, FAMILIES, Element, element
 from unturn.errors import InputError, UsageError
 from unturn.gradient import displacement_gradient
 
-# Source: a linear field is exact on any isoparametric element: Hughes, The Finite Element Method, section 3.9;
-# Zienkiewicz and Taylor. Rigid motion without strain: the same. All checks of this file that state no other source.
+# Source: a linear field is exact on any isoparametric element, rigid motion has no strain: Hughes, The Finite
+# Element Method, section 3.9; Zienkiewicz and Taylor. All checks of this file that state no other source.
 
 ROWS = {
     **ELEMENTS,
@@ -85,7 +85,7 @@ def test_small_rigid_rotation_is_rotation_and_no_strain(row: Element) -> None:
     mesh = curved_cell(row)
     theta = np.array([0.02, -0.01, 0.03]) if row.dim == 3 else np.array([0, 0, 0.03])
     for at in places(row):
-        for H in gradients(mesh, np.cross(theta, mesh.points) + [0.4, -0.2, 0], at):
+        for H in gradients(mesh, np.cross(theta, mesh.points) + np.array([0.4, -0.2, 0]), at):
             assert np.abs(kin.strain(H)).max() < 1e-14
             np.testing.assert_allclose(kin.rotation_vector(H), theta, atol=1e-13)
 
@@ -127,9 +127,7 @@ def test_mirrored_numbering_gives_the_right_gradient(row: Element) -> None:
         np.testing.assert_allclose(found, np.broadcast_to(H, found.shape), atol=1e-12)
 
 
-@pytest.mark.source(
-    "MacNeal and Harder 1985, Finite Elem. Anal. Des. 1, 3-20: patch test of membrane and solid elements"
-)
+@pytest.mark.source("MacNeal and Harder 1985, Finite Elem. Anal. Des. 1, 3-20: patch tests")
 @each({**SOLIDS, **FLAT})
 def test_patches_of_macneal_and_harder(row: Element) -> None:
     mesh = meshes.patch(row)
@@ -156,9 +154,7 @@ def test_bent_patches(name: str) -> None:
         np.testing.assert_allclose(found, np.broadcast_to(H, found.shape), atol=1e-15)
 
 
-@pytest.mark.derived(
-    "mean of the gradient = surface integral of u (x) n over the volume (Gauss): exact for polynomials"
-)
+@pytest.mark.derived("the mean of p x^(p-1) over the cell by twelve Gauss points a direction")
 @each({n: row for n, row in SOLIDS.items() if row.shape.name in {"hexahedron", "tetra"}})
 def test_mean_of_a_field_of_the_elements_order_on_an_affine_cell(row: Element) -> None:
     mesh = meshes.affine_cell(row)
@@ -205,63 +201,29 @@ def test_plane_arrays_of_two_columns_count_as_z_zero() -> None:
     np.testing.assert_allclose(found[0], np.diag([1e-3, -2e-3, 0]), atol=1e-18)
 
 
+TETRA = (np.zeros((4, 3)), [[0, 1, 2, 3]], np.zeros((4, 3)), "tetra", "centroid")
+
+
 @pytest.mark.parametrize(
-    ("points", "cells", "u", "cell_type", "at", "error", "words"),
+    ("position", "value", "error", "words"),
     [
-        (
-            np.zeros((4, 3)),
-            [0, 1, 2, 3],
-            np.zeros((4, 3)),
-            "tetra",
-            "centroid",
-            UsageError,
-            "n_cells, n_nodes",
-        ),
-        (
-            np.zeros((4, 3)),
-            [[0, 1, 2, 4]],
-            np.zeros((4, 3)),
-            "tetra",
-            "centroid",
-            UsageError,
-            "outside 0 to 3",
-        ),
-        (
-            np.zeros((4, 3)),
-            [[0, 1, 2, -1]],
-            np.zeros((4, 3)),
-            "tetra",
-            "centroid",
-            UsageError,
-            "outside 0 to 3",
-        ),
-        (
-            np.zeros((4, 3)),
-            [[0, 1, 2, 3]],
-            np.zeros((5, 3)),
-            "tetra",
-            "centroid",
-            UsageError,
-            "one row per point",
-        ),
-        (
-            np.zeros((4, 1)),
-            [[0, 1, 2, 3]],
-            np.zeros((4, 3)),
-            "tetra",
-            "centroid",
-            UsageError,
-            "points have shape",
-        ),
-        (np.zeros((4, 3)), [[0, 1, 2, 3]], np.zeros((4, 3)), "tetra", "corner", UsageError, "'corner'"),
-        (np.zeros((4, 3)), [[0, 1, 2, 3]], np.zeros((4, 3)), "tetra", [[0, 0]], UsageError, "3 coordinates"),
-        (np.zeros((4, 3)), [[0, 1, 2]], np.zeros((4, 3)), "tetra", "centroid", InputError, "has 4 nodes"),
-        (np.zeros((4, 3)), [[0]], np.zeros((4, 3)), "vertex", "centroid", InputError, "no extent"),
+        (0, np.zeros((4, 1)), UsageError, "points have shape"),
+        (1, [0, 1, 2, 3], UsageError, "n_cells, n_nodes"),
+        (1, [[0, 1, 2, 4]], UsageError, "outside 0 to 3"),
+        (1, [[0, 1, 2, -1]], UsageError, "outside 0 to 3"),
+        (1, [[0, 1, 2]], InputError, "has 4 nodes"),
+        (2, np.zeros((5, 3)), UsageError, "one row per point"),
+        (3, "vertex", InputError, "no extent"),
+        (4, "corner", UsageError, "'corner'"),
+        (4, [[0, 0]], UsageError, "3 coordinates"),
     ],
 )
-def test_what_does_not_fit_is_refused(points, cells, u, cell_type, at, error, words) -> None:  # type: ignore[no-untyped-def]
+def test_what_does_not_fit_is_refused(
+    position: int, value: object, error: type[Exception], words: str
+) -> None:
+    arguments = [*TETRA[:position], value, *TETRA[position + 1 :]]
     with pytest.raises(error, match=words):
-        displacement_gradient(points, cells, u, cell_type, at=at)
+        displacement_gradient(*arguments)  # type: ignore[arg-type]
 
 
 @pytest.mark.parametrize("name", ["tetra", "hexahedron", "wedge", "pyramid", "triangle", "quad", "line"])

@@ -56,7 +56,7 @@ def vtk_cell(mesh: meshes.Mesh) -> Any:
 
 
 def parametric(row: Element, xi: np.ndarray) -> np.ndarray:
-    """VTK's parametric coordinates of reference points: 0 to 1; its cubic line is on -1 to 1, its pyramid collapsed."""
+    """VTK's parametric coordinates: 0 to 1; -1 to 1 for its cubic line, collapsed for its pyramid."""
     if row.name == "line4":
         return np.pad(xi, ((0, 0), (0, 2)))
     low, high = row.shape.vertices.min(axis=0), row.shape.vertices.max(axis=0)
@@ -166,6 +166,7 @@ def field(points: np.ndarray) -> np.ndarray:
     )
 
 
+HEXA = "hexahedron"
 SCIKIT_FEM: dict[str, tuple[Element, str, Callable[[], Any], Any, Any]] = {
     "triangle": (ELEMENTS["triangle"], "triangle", skfem.ElementTriP1, skfem.MeshTri1, None),
     "triangle6": (ELEMENTS["triangle6"], "triangle", skfem.ElementTriP2, skfem.MeshTri1, skfem.MeshTri2),
@@ -176,8 +177,8 @@ SCIKIT_FEM: dict[str, tuple[Element, str, Callable[[], Any], Any, Any]] = {
     "quad9": (ELEMENTS["quad9"], "quad", skfem.ElementQuad2, skfem.MeshQuad1, skfem.MeshQuad2),
     "tetra": (ELEMENTS["tetra"], "tetra", skfem.ElementTetP1, skfem.MeshTet1, None),
     "tetra10": (ELEMENTS["tetra10"], "tetra", skfem.ElementTetP2, skfem.MeshTet1, skfem.MeshTet2),
-    "hexahedron": (ELEMENTS["hexahedron"], "hexahedron", skfem.ElementHex1, skfem.MeshHex1, None),
-    "hexahedron20": (ELEMENTS["hexahedron20"], "hexahedron", skfem.ElementHexS2, skfem.MeshHex1, None),
+    "hexahedron": (ELEMENTS["hexahedron"], HEXA, skfem.ElementHex1, skfem.MeshHex1, None),
+    "hexahedron20": (ELEMENTS["hexahedron20"], HEXA, skfem.ElementHexS2, skfem.MeshHex1, None),
     "hexahedron27": (
         ELEMENTS["hexahedron27"],
         "hexahedron",
