@@ -9,10 +9,12 @@ import meshes
 from strategies import axis_angle
 from unturn import kinematics as kin
 from unturn.elements import ELEMENTS, Element, element
+from unturn.fields import compute_fields
 from unturn.gradient import ElementChunk, NodalFields, displacement_gradient, sample_points
+from unturn.model import build_model
 
-# The normal keeps zero strain and takes the tilt of the surface: H n = -(grad_s u)^T n. Finite: F n is the unit normal
-# of the deformed surface. Derived: with both, a rigid turn of the surface is the same turn of its normal.
+# The normal keeps zero strain and takes the tilt of the surface: H n = -(grad_s u)^T n. Finite: F n is the unit
+# normal of the deformed surface. Derived: with both, a rigid turn of the surface turns its normal alike.
 pytestmark = pytest.mark.derived("completion of surface and line gradients as stated in this file")
 
 SURFACES = {
@@ -182,7 +184,19 @@ def test_far_origin_keeps_the_digits(row: Element) -> None:
     points = np.round(mesh.points * 2**20) / 2**20
     u = np.round(np.sin(points) * 1e-3 * 2**30) / 2**30
     near = displacement_gradient(points, mesh.cells, u, row.name, at="mean")
-    far = displacement_gradient(
-        points + [5e5, -5e5, 5e5], mesh.cells, u + [1024.0, 0, -512.0], row.name, at="mean"
-    )
+    origin, shift = np.array([5e5, -5e5, 5e5]), np.array([1024.0, 0, -512.0])
+    far = displacement_gradient(points + origin, mesh.cells, u + shift, row.name, at="mean")
     np.testing.assert_allclose(far, near, atol=1e-16)
+
+
+@each({**SURFACES, **LINES})
+def test_the_mean_of_a_curved_cell_that_turns_has_no_stretch(row: Element) -> None:
+    mesh = surface_cell(row, True, POSES[1]) if row.dim == 2 else line_cell(row)
+    turn = axis_angle((0.48, 0.64, 0.6), np.radians(80))
+    fields = compute_fields(build_model(mesh.result(u=mesh.points @ turn.T)), at="mean", diagnose=True)
+    assert fields.diagnostics is not None
+    if row.dim == 2:
+        assert fields.diagnostics.stretch[0] < 1e-12
+        assert np.degrees(fields.diagnostics.angle[0]) == pytest.approx(80, rel=1e-9)
+    else:  # the smallest rotation differs along a bent line: its mean is shorter than a turn, not longer
+        assert fields.diagnostics.stretch[0] < 0.05
