@@ -1,7 +1,7 @@
 """Tiny meshes for tests, made from the element table: any element, no file, no array but the nodes.
 
-`distorted_cell` and `affine_cell` are one cell; `patch` is a few cells that share nodes. `curved` bends any of
-them smoothly, so that shared nodes stay shared.
+`distorted_cell` and `affine_cell` are one cell; `patch` is a few cells that share nodes. `curved` bends any
+of them smoothly, so that shared nodes stay shared.
 """
 
 from __future__ import annotations
@@ -81,7 +81,7 @@ def distorted_cell(element: Element, amount: float = 0.06, seed: int = 0) -> Mes
     """One cell with every node moved at random: curved where the element can be curved."""
     points = affine_cell(element, seed).points.copy()
     noise = np.random.default_rng(seed + 1).uniform(-1, 1, (element.n_nodes, element.dim))
-    points[:, : element.dim] += amount / element.order * noise
+    points[:, : element.dim] += amount / element.order**2 * noise
     return Mesh(points, np.arange(element.n_nodes)[None], element)
 
 

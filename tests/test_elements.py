@@ -4,14 +4,14 @@ from __future__ import annotations
 
 from itertools import product
 
-import meshes
 import numpy as np
 import pytest
 
+import meshes
 from unturn.elements import ELEMENTS, FAMILIES, Element, element
 
-# Source: completeness and nodality of shape functions: Zienkiewicz and Taylor, The Finite Element Method; Hughes,
-# The Finite Element Method, chapter 3; Bathe, Finite Element Procedures, chapter 5. All checks of this file.
+# Source: completeness and nodality of shape functions: Zienkiewicz and Taylor, The Finite Element Method;
+# Hughes, The Finite Element Method, chapter 3; Bathe, Finite Element Procedures, chapter 5. All checks here.
 
 ROWS = [
     *((name, row) for name, row in ELEMENTS.items()),
@@ -27,7 +27,8 @@ ROWS = [
         if order > 2 or spacing == "equal"
     ),
 ]
-each_row = pytest.mark.parametrize("row", [r for _, r in ROWS], ids=[n for n, _ in ROWS])
+each_row = pytest.mark.parametrize("row", [pytest.param(r, id=n) for n, r in ROWS])
+each_solid = pytest.mark.parametrize("row", [pytest.param(r, id=n) for n, r in ROWS if r.dim == 3])
 
 
 def inside(row: Element, n: int = 7, seed: int = 3) -> np.ndarray:
@@ -37,7 +38,7 @@ def inside(row: Element, n: int = 7, seed: int = 3) -> np.ndarray:
 
 
 def displacement_gradients(row: Element, X: np.ndarray, values: np.ndarray, xi: np.ndarray) -> np.ndarray:
-    """``(p, m, dim)`` gradients of m nodal fields ``(n_nodes, m)`` on a cell with nodes X ``(n_nodes, dim)``."""
+    """``(p, m, dim)`` gradients of m nodal fields ``(n_nodes, m)``, nodes X ``(n_nodes, dim)``."""
     dN = row.shape_gradients(xi)
     jacobian = np.swapaxes(dN @ X, 1, 2)
     return np.swapaxes(dN @ values, 1, 2) @ np.linalg.inv(jacobian)
@@ -57,7 +58,7 @@ def test_functions_sum_to_one_and_gradients_to_zero(row: Element) -> None:
 
 @each_row
 def test_gradients_are_the_differences_of_the_functions(row: Element) -> None:
-    # Fourth-order central differences: error about step^4 times the fifth derivative, rounding about eps / step.
+    # Fourth-order central differences: error about step^4 times the fifth derivative, rounding eps / step.
     xi, step = inside(row), 2e-4
     for d in range(row.dim):
         shift = step * np.eye(row.dim)[d]
@@ -175,11 +176,8 @@ def test_mid_side_nodes_lie_on_their_edges(row: Element) -> None:
         seen |= set(between)
 
 
-@each_row
+@each_solid
 def test_faces(row: Element) -> None:
-    if row.dim < 3:
-        assert row.face_nodes == ()
-        return
     for face, corners in zip(row.face_nodes, row.shape.faces, strict=True):
         local = inside(face.element)
         surface = row.nodes[list(face.nodes)]
@@ -198,11 +196,9 @@ def test_faces(row: Element) -> None:
         assert set(face.nodes[: face.element.n_corners]) == set(corners)
 
 
-@each_row
+@each_solid
 def test_faces_close(row: Element) -> None:
     # The outward area vectors of a closed curved surface sum to zero: also on a distorted cell.
-    if row.dim < 3:
-        pytest.skip("not a solid")
     X = meshes.distorted_cell(row).points
     total = np.zeros(3)
     for face in row.face_nodes:
@@ -249,8 +245,8 @@ def test_patch_has_positive_jacobians_and_shared_nodes(row: Element) -> None:
 
 @each_row
 def test_patch_volumes(row: Element) -> None:
-    # Source: MacNeal and Harder 1985: the plate has area 0.24 x 0.12, the cube volume 1. The wedges are the plate
-    # times 0.12; line, pixel and voxel patches have no published size: the line is (0.9, 0.4, 0.2) long.
+    # Source: MacNeal and Harder 1985: the plate has area 0.24 x 0.12, the cube volume 1. The wedges are the
+    # plate times 0.12; line, pixel and voxel have no published size: the line is (0.9, 0.4, 0.2) long.
     xi, w = _fine_rule(row)
     total = float((_measures(row, meshes.patch(row), xi) @ w).sum())
     expected = {"quad": 0.0288, "triangle": 0.0288, "wedge": 0.0288 * 0.12, "line": np.sqrt(1.01)}
@@ -259,11 +255,17 @@ def test_patch_volumes(row: Element) -> None:
 
 
 def test_solid_patch_is_tangled_at_one_corner() -> None:
-    # Source: MacNeal and Harder 1985. Measured: one of the 56 corner values of det J is -0.00158, a fact of the
-    # published coordinates; all integration points are positive.
+    # Source: MacNeal and Harder 1985. Measured: one of the 56 corner values of det J is -0.00158, a fact of
+    # the published coordinates; all integration points are positive.
     row = ELEMENTS["hexahedron"]
     at_nodes = _measures(row, meshes.patch(row), row.nodes)
     np.testing.assert_allclose(at_nodes[at_nodes < 0], [-0.00158], atol=5e-6)
+
+
+@each_row
+def test_distorted_cell_is_not_tangled(row: Element) -> None:
+    for seed in range(3):
+        assert (_measures(row, meshes.distorted_cell(row, seed=seed), row.quadrature.points) > 0).all()
 
 
 def test_wrong_shape_of_reference_coordinates_is_named() -> None:

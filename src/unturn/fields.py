@@ -181,7 +181,9 @@ class _Job:
 
         def work(start: int, stop: int) -> None:
             rows = (
-                slice(int(index[start]), int(index[start]) + stop - start) if consecutive else index[start:stop]
+                slice(int(index[start]), int(index[start]) + stop - start)
+                if consecutive
+                else index[start:stop]
             )
             with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
                 chunk = ElementChunk(self.model.fields, connectivity[start:stop], row, self.model.plane)
@@ -206,7 +208,9 @@ class _Job:
         self.mirrored[rows] = high < 0
         finite = None
         if self.diagnostics is not None or "small_strain_error" in self.arrays:
-            finite = chunk.finite(PointGradient(H, point.measure, point.weight, point.inverse, point.tangents))
+            finite = chunk.finite(
+                PointGradient(H, point.measure, point.weight, point.inverse, point.tangents)
+            )
         split = Split(H, self.poisson, self.directions, finite)
         for measure in self.measures:
             values = measure.compute(split)
@@ -298,23 +302,30 @@ def _same_side(point: PointGradient, here: PointGradient) -> Floats:
     """Return +-1: whether the surface's normal at a point is on the side of the normal at the centroid."""
     if point.tangents is None or here.tangents is None or len(here.tangents) == 1:
         return np.ones(len(here.measure))
-    a, b = np.cross(point.tangents[0], point.tangents[1], axis=0), np.cross(here.tangents[0], here.tangents[1], axis=0)
+    a, b = (
+        np.cross(point.tangents[0], point.tangents[1], axis=0),
+        np.cross(here.tangents[0], here.tangents[1], axis=0),
+    )
     return np.where((a * b).sum(axis=0) < 0, -1.0, 1.0)
 
 
 def smallest_height(chunk: ElementChunk, point: PointGradient) -> Floats:
     """Return the smallest height `(m,)` of the elements: the distance between opposite sides, or corner and side.
 
-    The gradient of a reference coordinate is one over the distance in which it grows by one.
+    The gradient of a reference coordinate that varies by one over the shape is one over that distance.
     """
-    shape = chunk.row.shape
-    widths = np.ptp(shape.vertices, axis=0)
-    directions = [np.eye(shape.dim)[k] / widths[k] for k in range(shape.dim)]
-    if len(shape.vertices) == shape.dim + 1 and shape.dim > 1:  # simplex: the last barycentric coordinate too
-        directions.append(np.ones(shape.dim))
-    squares = [(np.tensordot(d, point.inverse, axes=1) ** 2).sum(axis=0) for d in directions]
+    covectors = chunk.row.shape.extents
+    squares = [(np.tensordot(g, point.inverse, axes=1) ** 2).sum(axis=0) for g in covectors]
     height: Floats = 1.0 / np.sqrt(np.max(squares, axis=0))
     return height
 
 
-__all__ = ["GEOMETRY", "LOCATIONS", "CellDiagnostics", "CellFields", "Location", "compute_fields", "smallest_height"]
+__all__ = [
+    "GEOMETRY",
+    "LOCATIONS",
+    "CellDiagnostics",
+    "CellFields",
+    "Location",
+    "compute_fields",
+    "smallest_height",
+]
