@@ -166,9 +166,10 @@ class _Job:
         self.mirrored = np.zeros(n, dtype=bool)
         self.diagnostics: CellDiagnostics | None = None
         if diagnose:
-            blank = [np.full(n, np.nan) for _ in range(6)]
+            volume, error, stretch, angle, noise, det_f = (np.full(n, np.nan) for _ in range(6))
+            principal, centroid = np.full((n, 2), np.nan), np.full((n, 3), np.nan)
             self.diagnostics = CellDiagnostics(
-                *blank, np.full((n, 2), np.nan), np.full((n, 3), np.nan), np.zeros(n, dtype=np.int8)
+                volume, error, stretch, angle, noise, det_f, principal, centroid, np.zeros(n, dtype=np.int8)
             )
             stored = model.displacement.stored
             self.resolution_u = max(storage_resolution(a).relative for a in stored)
@@ -180,7 +181,7 @@ class _Job:
         place = sample_points(row, "centroid")
         rule = sample_points(row, "mean")
         connectivity, index = block.connectivity, block.index
-        consecutive = len(index) == int(index[-1] - index[0]) + 1
+        consecutive = bool((np.diff(index) == 1).all())
 
         def work(start: int, stop: int) -> None:
             rows = (
@@ -200,7 +201,8 @@ class _Job:
         point = chunk.at(place.gradients[0], place.functions[0])
         low, high, volume = self._geometry(chunk, point, rule)
         H = point.H
-        if self.at == "mean" and len(rule.weights) > 1:
+        mean = self.at == "mean" and len(rule.weights) > 1
+        if mean:
             H, volume = mean_gradient(chunk, rule)
         status = self._status(chunk, point, low, high)
         if status is not None:
@@ -211,9 +213,11 @@ class _Job:
             self.mirrored[rows] = high < 0
         finite = None
         if self.diagnostics is not None or "small_strain_error" in self.arrays:
-            finite = chunk.finite(
-                PointGradient(H, point.measure, point.weight, point.inverse, point.tangents)
-            )
+            finite = H
+            if chunk.row.dim < 3:
+                finite = mean_gradient(chunk, rule, finite=True)[0] if mean else chunk.finite(point)
+                if status is not None:
+                    finite[:, :, status != _OK] = np.nan
         split = Split(H, self.poisson, self.directions, finite)
         for measure in self.measures:
             values = measure.compute(split)

@@ -133,7 +133,8 @@ class ElementChunk:
         rest = gradients[:, 1:]
         if rest.shape[0] == rest.shape[1] and np.array_equal(rest, np.eye(len(rest))):
             return self.relative
-        return np.matmul(rest, self.relative)
+        product: Floats = np.matmul(rest, self.relative)
+        return product
 
     def measure(self, gradients: Floats) -> Floats:
         """Return the signed Jacobian determinant `(m,)` of solids at a point with these shape gradients."""
@@ -485,14 +486,18 @@ def sample_points(row: Element, at: Any) -> Samples:
     return Samples(row.shape_functions(points), row.shape_gradients(points), weights, center)
 
 
-def mean_gradient(chunk: ElementChunk, samples: Samples) -> tuple[Floats, Floats]:
-    """Return the volume mean `(3, 3, m)` of the gradient and the volume `(m,)`."""
+def mean_gradient(chunk: ElementChunk, samples: Samples, finite: bool = False) -> tuple[Floats, Floats]:
+    """Return the volume mean `(3, 3, m)` of the gradient and the volume `(m,)`.
+
+    With `finite` it is the mean of `F - I` as finite measures complete it: along a curved surface the normal changes,
+    so the mean is completed point by point.
+    """
     total = np.zeros((3, 3, len(chunk)))
     volume = np.zeros(len(chunk))
     for gradients, functions, weight in zip(samples.gradients, samples.functions, samples.weights):
         point = chunk.at(gradients, functions)
         share = weight * point.weight
-        total += share * point.H
+        total += share * (chunk.finite(point) if finite else point.H)
         volume += share
     with np.errstate(invalid="ignore", divide="ignore"):
         total /= volume

@@ -180,4 +180,5 @@ def _leading_sign(d: Floats) -> Floats:
     lead = np.where(
         np.abs(d[0]) > _ZERO_COMPONENT, d[0], np.where(np.abs(d[1]) > _ZERO_COMPONENT, d[1], d[2])
     )
-    return np.copysign(1.0, lead)
+    sign: Floats = np.copysign(1.0, lead)
+    return sign
