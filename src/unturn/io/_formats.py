@@ -185,3 +185,15 @@ def format_for_writing(path: Path, *, series: bool = False) -> Format:
 
 def _listing(formats: tuple[Format, ...] | list[Format]) -> str:
     return ", ".join(f"{f.name} ({' '.join(f.suffixes)})" for f in formats)
+
+
+def writable_suffix(path: Path, *, series: bool = False) -> str:
+    """Return the suffix of a new file for a result read from `path`: its own where that can be written.
+
+    A single step of a format that is only a series, or a format that is only read, goes to ``.vtu``; a series to
+    ``.xdmf``.
+    """
+    fmt = _BY_SUFFIX.get(path.suffix.lower())
+    if fmt is not None and (fmt.write_series if series else fmt.write) is not None:
+        return path.suffix
+    return ".xdmf" if series else ".vtu"
