@@ -15,7 +15,17 @@ from unturn.io._formats import FORMATS, format_for_writing, format_of_file, writ
 from unturn.io._readback import check_same
 from unturn.result import Result
 
-__all__ = ["FORMATS", "Format", "ResultFile", "StepWriter", "open_result", "read", "series_writer", "writable_suffix", "write"]
+__all__ = [
+    "FORMATS",
+    "Format",
+    "ResultFile",
+    "StepWriter",
+    "open_result",
+    "read",
+    "series_writer",
+    "writable_suffix",
+    "write",
+]
 
 
 def open_result(path: str | PathLike[str]) -> ResultFile:
