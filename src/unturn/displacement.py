@@ -30,7 +30,9 @@ _TRIPLES = (
     ("dispx", "dispy", "dispz"),
     ("displacement_x", "displacement_y", "displacement_z"),
 )
-_COMPLEX = re.compile(r"(^|[ _.(-])(re|real|im|imag|imaginary|phase|ampl?|amplitude)([ _.)-]|$)", re.IGNORECASE)
+_COMPLEX = re.compile(
+    r"(^|[ _.(-])(re|real|im|imag|imaginary|phase|ampl?|amplitude)([ _.)-]|$)", re.IGNORECASE
+)
 
 
 @dataclass(frozen=True, eq=False)
@@ -150,7 +152,9 @@ def _chosen(
     names = [name] if name in data else [part.strip() for part in name.split(",")]
     for part in names:
         if part not in data:
-            on_cells = " It is a cell array; a gradient needs nodal values." if part in result.cell_data else ""
+            on_cells = (
+                " It is a cell array; a gradient needs nodal values." if part in result.cell_data else ""
+            )
             present = ", ".join(repr(n) for n in data) or "none"
             raise UsageError(
                 f"{where}no point array is called {part!r}.{on_cells}{close_matches(part, data)} "

@@ -181,7 +181,9 @@ class _Job:
 
         def work(start: int, stop: int) -> None:
             rows = (
-                slice(int(index[start]), int(index[start]) + stop - start) if consecutive else index[start:stop]
+                slice(int(index[start]), int(index[start]) + stop - start)
+                if consecutive
+                else index[start:stop]
             )
             with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
                 chunk = ElementChunk(self.model.fields, connectivity[start:stop], row, self.model.plane)
@@ -206,7 +208,9 @@ class _Job:
         self.mirrored[rows] = high < 0
         finite = None
         if self.diagnostics is not None or "small_strain_error" in self.arrays:
-            finite = chunk.finite(PointGradient(H, point.measure, point.weight, point.inverse, point.tangents))
+            finite = chunk.finite(
+                PointGradient(H, point.measure, point.weight, point.inverse, point.tangents)
+            )
         split = Split(H, self.poisson, self.directions, finite)
         for measure in self.measures:
             values = measure.compute(split)
@@ -298,7 +302,10 @@ def _same_side(point: PointGradient, here: PointGradient) -> Floats:
     """Return +-1: whether the surface's normal at a point is on the side of the normal at the centroid."""
     if point.tangents is None or here.tangents is None or len(here.tangents) == 1:
         return np.ones(len(here.measure))
-    a, b = np.cross(point.tangents[0], point.tangents[1], axis=0), np.cross(here.tangents[0], here.tangents[1], axis=0)
+    a, b = (
+        np.cross(point.tangents[0], point.tangents[1], axis=0),
+        np.cross(here.tangents[0], here.tangents[1], axis=0),
+    )
     return np.where((a * b).sum(axis=0) < 0, -1.0, 1.0)
 
 
@@ -317,4 +324,12 @@ def smallest_height(chunk: ElementChunk, point: PointGradient) -> Floats:
     return height
 
 
-__all__ = ["GEOMETRY", "LOCATIONS", "CellDiagnostics", "CellFields", "Location", "compute_fields", "smallest_height"]
+__all__ = [
+    "GEOMETRY",
+    "LOCATIONS",
+    "CellDiagnostics",
+    "CellFields",
+    "Location",
+    "compute_fields",
+    "smallest_height",
+]

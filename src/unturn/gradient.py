@@ -463,7 +463,9 @@ def sample_points(row: Element, at: Any) -> Samples:
         points = np.atleast_2d(np.asarray(at, dtype=np.float64))
         weights = np.zeros(len(points))
         if points.shape[1] != row.dim:
-            raise UsageError(f"reference points of {row.name} have {row.dim} coordinates, got {points.shape[1]}.")
+            raise UsageError(
+                f"reference points of {row.name} have {row.dim} coordinates, got {points.shape[1]}."
+            )
     center = row.shape_gradients(row.centroid[None])[0]
     return Samples(row.shape_functions(points), row.shape_gradients(points), weights, center)
 

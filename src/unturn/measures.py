@@ -35,7 +35,11 @@ class Split:
     """
 
     def __init__(
-        self, H: Floats, poisson: float | None = None, directions: bool = False, finite_H: Floats | None = None
+        self,
+        H: Floats,
+        poisson: float | None = None,
+        directions: bool = False,
+        finite_H: Floats | None = None,
     ) -> None:
         self.H = H
         self.poisson = poisson

@@ -249,7 +249,8 @@ def skin_cells(result: Result, rows: list[Element | None]) -> list[NDArray[np.in
 def _incidence(connectivity: NDArray[np.int64], n_points: int) -> sparse.csr_array:
     n, k = connectivity.shape
     return sparse.csr_array(
-        (np.ones(n * k, dtype=np.int32), connectivity.reshape(-1), np.arange(0, n * k + 1, k)), shape=(n, n_points)
+        (np.ones(n * k, dtype=np.int32), connectivity.reshape(-1), np.arange(0, n * k + 1, k)),
+        shape=(n, n_points),
     )
 
 

@@ -132,7 +132,9 @@ def bodies(model: Model, cells: NDArray[np.bool_]) -> list[Region]:
     if not 1 < len(distinct) <= _MOST_BODIES:
         return []
     order = np.argsort(-counts, kind="stable")
-    return [Region(f"body {rank + 1}", np.sort(positions[inverse == k]), "body") for rank, k in enumerate(order)]
+    return [
+        Region(f"body {rank + 1}", np.sort(positions[inverse == k]), "body") for rank, k in enumerate(order)
+    ]
 
 
 def _shares_nodes(model: Model, cells: NDArray[np.bool_]) -> bool:

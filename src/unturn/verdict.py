@@ -84,10 +84,14 @@ def judge(diagnostics: CellDiagnostics, region: Region, solve: Solve, mode: bool
         return Verdict(region.name, "not judged", size, noise, math.nan, -1, 0.0, 0.0, rotation, "")
     worst_at = int(np.nanargmax(error))
     if not size > 0:
-        return Verdict(region.name, "no strain", size, noise, 0.0, int(usable[worst_at]), 0.0, 0.0, rotation, "")
+        return Verdict(
+            region.name, "no strain", size, noise, 0.0, int(usable[worst_at]), 0.0, 0.0, rotation, ""
+        )
     ratio = error / size
     total = float(weight.sum())
-    marginal, broken = (float(weight[ratio > bound].sum() / total) if total else 0.0 for bound in (MARGINAL, BROKEN))
+    marginal, broken = (
+        float(weight[ratio > bound].sum() / total) if total else 0.0 for bound in (MARGINAL, BROKEN)
+    )
     worst = float(ratio[worst_at])
     level: Level = "does not hold" if worst > BROKEN else "marginal" if worst > MARGINAL else "holds"
     if level == "holds" and stretch <= noise:

@@ -116,13 +116,20 @@ def _from_affine(local: Floats, tolerance: Floats, equal: Element) -> Spacing:
     common = np.median(local, axis=0)
     common[: equal.n_corners] = equal.shape.vertices
     agree = bool((np.abs(local - common).max(axis=(1, 2)) < 2 * tolerance).all())
-    if not agree or not _same_from_both_ends(common, equal, float(tolerance.max())):
+    ordered = any(_nearest_is_own(common, element(equal.name, equal.n_nodes, n).nodes) for n in _NAMED)
+    if not (agree and ordered and _same_from_both_ends(common, equal, float(tolerance.max()))):
         raise InputError(
             f"the nodes of the straight {equal.name} cells of order {equal.order} are neither equally spaced "
             "nor at Gauss-Lobatto-Legendre points, and no other spacing fits all of them, so the gradient "
-            "inside the cells is not known. Check the node order of the export, or write cells of order 1 or 2."
+            "inside the cells is not known. Check the node order of the export, or write a lower order."
         )
     return tuple(tuple(float(c) for c in row) for row in common)
+
+
+def _nearest_is_own(nodes: Floats, named: Floats) -> bool:
+    """Whether each node lies nearest to the node of the same number: not so when the order is another."""
+    nearest = np.linalg.norm(nodes[:, None] - named[None], axis=-1).argmin(axis=1)
+    return bool((nearest == np.arange(len(nodes))).all())
 
 
 def _same_from_both_ends(nodes: Floats, equal: Element, tolerance: float) -> bool:

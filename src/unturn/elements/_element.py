@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from functools import cached_property
 from typing import NamedTuple
 
@@ -68,15 +68,15 @@ class Element:
     """
 
     name: str
-    shape: Shape
+    shape: Shape = field(repr=False)
     order: int
-    nodes: Floats
-    space: Space
-    rule: Callable[[], Quadrature]
-    source: Source
+    nodes: Floats = field(repr=False)
+    space: Space = field(repr=False)
+    rule: Callable[[], Quadrature] = field(repr=False)
+    source: Source = field(repr=False)
     vtk_type: int
-    face_elements: tuple[Element, ...] = ()
-    layout: Floats | None = None
+    face_elements: tuple[Element, ...] = field(default=(), repr=False)
+    layout: Floats | None = field(default=None, repr=False)
     node_jacobian_exempt: tuple[int, ...] = ()
 
     @property
@@ -131,19 +131,25 @@ class Element:
         ``(p, dim, n_nodes)``, dimensionless, read-only. Kept for centroid, quadrature points and nodes.
         """
         points = _points(xi, self.dim)
-        for known, gradients in self._kept:
-            if known.shape == points.shape and np.array_equal(known, points):
-                return gradients
+        for name in ("centroid", "nodes", "quadrature"):
+            if np.array_equal(self._known_points(name), points):
+                if name not in self._kept:
+                    self._kept[name] = self._gradients(points)
+                return self._kept[name]
         return self._gradients(points)
+
+    def _known_points(self, name: str) -> Floats:
+        if name == "quadrature":
+            return self.quadrature.points
+        return self.nodes if name == "nodes" else self.centroid[None]
 
     @cached_property
     def _cardinal(self) -> Floats:
         return self.space.cardinal(self.nodes)
 
     @cached_property
-    def _kept(self) -> tuple[tuple[Floats, Floats], ...]:
-        sets = (self.centroid[None], self.quadrature.points, self.nodes)
-        return tuple((points, self._gradients(points)) for points in sets)
+    def _kept(self) -> dict[str, Floats]:
+        return {}
 
     def _gradients(self, points: Floats) -> Floats:
         return read_only(self.space.gradients(points) @ self._cardinal)

@@ -75,8 +75,8 @@ def element(cell_type: str, n_nodes: int, spacing: Spacing = "equal") -> Element
         row = ELEMENTS[cell_type]
         if row.n_nodes != n_nodes:
             raise InputError(
-                f"a {cell_type} cell has {row.n_nodes} nodes; {n_nodes} were found. The cell type or the list "
-                "of nodes was written wrongly: write the file again."
+                f"a {cell_type} cell has {row.n_nodes} nodes; {n_nodes} were found. The cell type or the "
+                "list of nodes was written wrongly: write the file again."
             )
         return row
     orders = _ORDERS[cell_type]

@@ -11,11 +11,11 @@ from typing import Literal
 from unturn.errors import InputError, UsageError
 from unturn.io._atomic import replacing
 from unturn.io._format import Format, ResultFile, StepWriter
-from unturn.io._formats import FORMATS, format_for_writing, format_of_file
+from unturn.io._formats import FORMATS, format_for_writing, format_of_file, writable_suffix
 from unturn.io._readback import check_same
 from unturn.result import Result
 
-__all__ = ["FORMATS", "Format", "ResultFile", "StepWriter", "open_result", "read", "series_writer", "write"]
+__all__ = ["FORMATS", "Format", "ResultFile", "StepWriter", "open_result", "read", "series_writer", "writable_suffix", "write"]
 
 
 def open_result(path: str | PathLike[str]) -> ResultFile:

@@ -37,6 +37,7 @@ FORMATS: tuple[Format, ...] = (
     _xml("VTS", ".vts"),
     _xml("VTR", ".vtr"),
     _xml("VTI", ".vti"),
+    Format("VTK legacy", (".vtk",), _call("vtk_legacy", "open_file"), _call("vtk_legacy", "write_file")),
     Format(
         "XDMF",
         (".xdmf", ".xmf", ".xdmf3"),
@@ -109,6 +110,8 @@ def _name_by_content(head: bytes, path: Path) -> str | None:
                 f"{path}: VTK files of type {kind[1].decode()!r} cannot be read; write VTU instead."
             )
         return _VTKFILE_NAMES[kind[1]]
+    if head.startswith(b"# vtk DataFile"):
+        return "VTK legacy"
     if re.search(rb"<Xdmf\b", head):
         return "XDMF"
     if head.startswith(b"$MeshFormat"):
@@ -144,3 +147,15 @@ def format_for_writing(path: Path, *, series: bool = False) -> Format:
 
 def _listing(formats: tuple[Format, ...] | list[Format]) -> str:
     return ", ".join(f"{f.name} ({' '.join(f.suffixes)})" for f in formats)
+
+
+def writable_suffix(path: Path, *, series: bool = False) -> str:
+    """Return the suffix of a new file for a result read from `path`: its own where that can be written.
+
+    A single step of a format that is only a series, or a format that is only read, goes to ``.vtu``; a series to
+    ``.xdmf``.
+    """
+    fmt = _BY_SUFFIX.get(path.suffix.lower())
+    if fmt is not None and (fmt.write_series if series else fmt.write) is not None:
+        return path.suffix
+    return ".xdmf" if series else ".vtu"

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import contextlib
+import re
 from collections.abc import Iterator, Mapping
 from typing import Any
 
@@ -10,6 +11,7 @@ import numpy as np
 from vtkmodules.util.numpy_support import numpy_to_vtk, vtk_to_numpy
 from vtkmodules.vtkCommonCore import (
     vtkDataArray,
+    vtkLogger,
     vtkOutputWindow,
     vtkStringArray,
     vtkStringOutputWindow,
@@ -23,25 +25,23 @@ from unturn.result import Array, Association
 def quiet_vtk() -> Iterator[list[str]]:
     """Collect what VTK would print; the list is filled when the block ends."""
     said: list[str] = []
-    before = vtkOutputWindow.GetInstance()
+    before, cutoff = vtkOutputWindow.GetInstance(), vtkLogger.GetCurrentVerbosityCutoff()
     window = vtkStringOutputWindow()
     vtkOutputWindow.SetInstance(window)
+    vtkLogger.SetStderrVerbosity(vtkLogger.VERBOSITY_OFF)
     try:
         yield said
     finally:
+        vtkLogger.SetStderrVerbosity(vtkLogger.ConvertToVerbosity(int(cutoff)))
         vtkOutputWindow.SetInstance(before)
         said.extend(_sentences(window.GetOutput()))
 
 
 def _sentences(text: str) -> list[str]:
-    """Return VTK's messages without the source file, line and object address in front of each."""
-    lines = [line.strip() for line in text.splitlines() if line.strip()]
-    kept = []
-    for line in lines:
-        if line.startswith(("ERROR: In", "Warning: In", "Generic Warning: In")):
-            continue
-        kept.append(line.split("): ", 1)[-1] if line.startswith("vtk") else line)
-    return kept
+    """Return VTK's messages without the source file, line, object address and request dump around them."""
+    found = re.findall(r"^(?:ERROR|.*Warning): In .*\n(?:vtk\w+ \(0x[0-9a-f]+\): )?(.*)", text, re.MULTILINE)
+    sentences = [line.strip() for line in found if not line.startswith("Algorithm ")]
+    return list(dict.fromkeys(sentences)) or (["VTK gave no reason"] if text.strip() else [])
 
 
 def to_numpy(array: Any) -> Array | None:

@@ -84,7 +84,9 @@ class Turning:
     angle: Floats
 
 
-_NEGLIGIBLE = 1e-3  # H^T H / 2 below this share of the stretch: the second-order series is right to 0.2 % of itself
+_NEGLIGIBLE = (
+    1e-3  # H^T H / 2 below this share of the stretch: the second-order series is right to 0.2 % of itself
+)
 
 
 def turning(H: NDArray[Any]) -> Turning:

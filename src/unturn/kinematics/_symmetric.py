@@ -117,7 +117,9 @@ def _null_direction(dev: Floats, root: Floats) -> Floats:
     ab, bc, ac = xz * yz - xy * z, xy * xz - x * yz, xy * yz - y * xz
     use_a = (a >= b) & (a >= c)
     use_b = b >= c
-    normal = np.where(use_a, np.stack([a, ab, ac]), np.where(use_b, np.stack([ab, b, bc]), np.stack([ac, bc, c])))
+    normal = np.where(
+        use_a, np.stack([a, ab, ac]), np.where(use_b, np.stack([ab, b, bc]), np.stack([ac, bc, c]))
+    )
     size = np.sqrt(normal[0] ** 2 + normal[1] ** 2 + normal[2] ** 2)
     flat = ~(size > 0)
     normal /= np.where(flat, 1.0, size)
@@ -175,5 +177,7 @@ def _ordered(separate: Floats, high: Floats, low: Floats, upper: NDArray[np.bool
 
 def _leading_sign(d: Floats) -> Floats:
     """Return +-1 so that the first component that is not zero becomes positive."""
-    lead = np.where(np.abs(d[0]) > _ZERO_COMPONENT, d[0], np.where(np.abs(d[1]) > _ZERO_COMPONENT, d[1], d[2]))
+    lead = np.where(
+        np.abs(d[0]) > _ZERO_COMPONENT, d[0], np.where(np.abs(d[1]) > _ZERO_COMPONENT, d[1], d[2])
+    )
     return np.copysign(1.0, lead)
