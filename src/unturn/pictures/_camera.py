@@ -38,7 +38,7 @@ class Camera:
     @property
     def right(self) -> Floats:
         """Unit vector that points right in the picture."""
-        return np.cross(self.up, self.direction)
+        return np.asarray(np.cross(self.up, self.direction))
 
     def pixels(self, points: Floats) -> Floats:
         """Return `(n, 2)` column and row, from the top left corner, of where points `(n, 3)` are seen."""
@@ -48,22 +48,31 @@ class Camera:
         return np.stack([column, row], axis=-1)
 
 
-def directions(extent: Floats, plane: bool) -> list[tuple[Floats, Floats]]:
+def directions(extent: Floats) -> list[tuple[Floats, Floats]]:
     """Return `(direction, up)` pairs, the best first, from which a model of this extent shows most.
 
     A flat mesh is seen straight on; anything else aslant, more onto its largest side.
     """
     largest = float(extent.max()) or 1.0
     thin = int(np.argmin(extent))
-    if plane or extent[thin] <= _FLAT * largest:
+    if extent[thin] <= _FLAT * largest:
         straight = np.zeros(3)
         straight[thin] = -1.0 if thin == 1 else 1.0
         up = np.array([0.0, 1.0, 0.0]) if thin == 2 else np.array([0.0, 0.0, 1.0])
-        return [(straight, up), (-straight, up)]
+        return [(straight, up)]
     share = extent / largest
     weight = 0.42 + 0.58 * (1.0 - share)
     weight[2] *= 0.8  # eyes look slightly down on things
-    order = [(1, -1, 1), (-1, -1, 1), (1, 1, 1), (-1, 1, 1), (1, -1, -1), (-1, -1, -1), (1, 1, -1), (-1, 1, -1)]
+    order = [
+        (1, -1, 1),
+        (-1, -1, 1),
+        (1, 1, 1),
+        (-1, 1, 1),
+        (1, -1, -1),
+        (-1, -1, -1),
+        (1, 1, -1),
+        (-1, 1, -1),
+    ]
     found = []
     for signs in order:
         toward = weight * np.array(signs) * np.array([0.8, 1.0, 1.0])
@@ -75,7 +84,11 @@ def directions(extent: Floats, plane: bool) -> list[tuple[Floats, Floats]]:
 
 
 def fit(
-    points: Floats, direction: Floats, up: Floats, size: tuple[int, int], box: tuple[float, float, float, float]
+    points: Floats,
+    direction: Floats,
+    up: Floats,
+    size: tuple[int, int],
+    box: tuple[float, float, float, float],
 ) -> Camera:
     """Return the camera that shows `points` as large as they fit into `box` (left, right, bottom, top; pixels)."""
     right = np.cross(up, direction)

@@ -18,6 +18,7 @@ INK = (0.12, 0.13, 0.16)
 # CIELAB lightness, a, b from the lowest to the highest value: straw, moss, petrol, night.
 _ANCHORS = np.array([[94, -3, 22], [72, -22, 22], [46, -20, -10], [17, 12, -32]], dtype=np.float64)
 N_COLOURS = 256
+_ONE_SIDED = 10.0  # a range reaches this much further below zero than above: as good as negative
 
 
 def srgb_from_lab(lab: Floats) -> Floats:
@@ -31,10 +32,14 @@ def srgb_from_lab(lab: Floats) -> Floats:
     f = np.stack([fy + lab[:, 1] / 500, fy, fy - lab[:, 2] / 200], axis=1)
     xyz = np.where(f > 6 / 29, f**3, 3 * (6 / 29) ** 2 * (f - 4 / 29)) * [0.95047, 1.0, 1.08883]
     linear = xyz @ np.array(
-        [[3.2404542, -0.9692660, 0.0556434], [-1.5371385, 1.8760108, -0.2040259], [-0.4985314, 0.0415560, 1.0572252]]
+        [
+            [3.2404542, -0.9692660, 0.0556434],
+            [-1.5371385, 1.8760108, -0.2040259],
+            [-0.4985314, 0.0415560, 1.0572252],
+        ]
     )
     linear = np.clip(linear, 0, 1)
-    return np.where(linear <= 0.0031308, 12.92 * linear, 1.055 * linear ** (1 / 2.4) - 0.055)
+    return np.asarray(np.where(linear <= 0.0031308, 12.92 * linear, 1.055 * linear ** (1 / 2.4) - 0.055))
 
 
 @functools.cache
@@ -61,6 +66,8 @@ class Range:
         Number of values above `high` and below `low`.
     missing
         Number of values that are not finite.
+    count
+        Number of all values.
     """
 
     low: float
@@ -68,13 +75,25 @@ class Range:
     above: int
     below: int
     missing: int
+    count: int
+
+    @property
+    def dark_low(self) -> bool:
+        """Whether the dark end is the low one: where all that matters is negative."""
+        return self.low < 0 and -self.low >= _ONE_SIDED * max(self.high, 0.0)
+
+    @property
+    def colours(self) -> NDArray[np.uint8]:
+        """Colours `(256, 3)` from low to high; the dark end is the one far from zero."""
+        table = colour_table()
+        return table[::-1] if self.dark_low else table
 
 
 _FAR = 1.25  # the range is cut where the extreme is this much larger than the percentile
 
 
 def choose_range(values: Floats, given: tuple[float, float] | None = None) -> Range:
-    """Return the range of `values` `(n,)`: from 0, or the smallest when negative, to the largest.
+    """Return the range of `values` `(n,)`, which always holds 0: from the smallest to the largest.
 
     An end that lies far beyond 99.9 % of the values is drawn in to them; ends are rounded outwards to two digits.
     """
@@ -85,10 +104,9 @@ def choose_range(values: Floats, given: tuple[float, float] | None = None) -> Ra
     elif not len(finite):
         low = high = 0.0
     else:
-        high = round_up(_drawn_in(finite))
+        high = round_up(_drawn_in(finite)) if finite[-1] > 0 else 0.0
         low = -round_up(_drawn_in(-finite[::-1])) if finite[0] < 0 else 0.0
-        high = max(high, 0.0) if finite[0] >= 0 else high
-    return Range(low, high, int((finite > high).sum()), int((finite < low).sum()), missing)
+    return Range(low, high, int((finite > high).sum()), int((finite < low).sum()), missing, len(values))
 
 
 def _drawn_in(ascending: Floats) -> float:

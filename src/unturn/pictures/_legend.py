@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 
 from unturn.pictures._camera import Camera
-from unturn.pictures._colours import ABOVE, BELOW, INK, NO_VALUE, Range, colour_table
+from unturn.pictures._colours import ABOVE, BELOW, INK, NO_VALUE, Range
 from unturn.pictures._numbers import nice_step, ticks, written
 from unturn.pictures._page import Page
 from unturn.pictures._values import Values
@@ -24,35 +24,41 @@ def head(page: Page, title: str, subtitle: str) -> None:
     page.line(np.array([[40 * u, height - 106 * u], [width - 40 * u, height - 106 * u]]), (0.8, 0.8, 0.82), u)
 
 
-def colour_bar(page: Page, values: Values, found: Range, location: str, what: str) -> None:
-    """Draw the colour bar with its name, unit and place, and what lies outside it."""
+def colour_bar(page: Page, values: Values, found: Range, location: str, noun: str) -> None:
+    """Draw the colour bar with its name, unit and place, and what lies outside it; `noun` is what is counted."""
     u, (width, height) = page.unit, page.size
     left, room = width - (LEGEND_WIDTH - 20) * u, (LEGEND_WIDTH - 60) * u
+    name, *remarks = values.name.splitlines()
     y = height - 150 * u
-    for line in page.wrapped(values.name, 20 * u, room, bold=True):
+    for line in page.wrapped(name, 20 * u, room, bold=True):
         page.text(line, left, y, 20 * u, bold=True, room=room)
         y -= 27 * u
-    for line in (values.unit, location):
+    for line in (*remarks, values.unit, location):
         for part in page.wrapped(line, 16 * u, room):
             page.text(part, left, y, 16 * u, colour=_SOFT, room=room)
             y -= 22 * u
     y -= 8 * u
     if found.above:
-        y = _swatch(page, left, y, ABOVE, f"above {_shown(values, found.high)}: {found.above} {what}", room)
-    low = 210 * u + 28 * u * ((found.below > 0) + (found.missing > 0))
-    _bar(page, values, found, (left, low, y))
-    y = low - 22 * u
+        words = f"above {written(found.high * values.scale)}: {_counted(found.above, noun)}"
+        y = _swatch(page, left, y, ABOVE, words, room) - 8 * u
+    low = (170 + 28 * ((found.below > 0) + (found.missing > 0))) * u
+    if found.above + found.below + found.missing < found.count:
+        _bar(page, values, found, (left, low, y))
+        y = low - 24 * u
     if found.below:
-        y = _swatch(page, left, y, BELOW, f"below {_shown(values, found.low)}: {found.below} {what}", room)
+        words = f"below {written(found.low * values.scale)}: {_counted(found.below, noun)}"
+        y = _swatch(page, left, y, BELOW, words, room)
     if found.missing:
-        _swatch(page, left, y, NO_VALUE, f"no value: {found.missing} {what}", room)
+        _swatch(page, left, y, NO_VALUE, f"no value: {_counted(found.missing, noun)}", room)
 
 
-def _shown(values: Values, number: float) -> str:
-    return written(number * values.scale)
+def _counted(count: int, noun: str) -> str:
+    return f"{count:,} {noun}{'s' * (count != 1)}".replace(",", " ")
 
 
-def _swatch(page: Page, left: float, top: float, colour: tuple[float, float, float], words: str, room: float) -> float:
+def _swatch(
+    page: Page, left: float, top: float, colour: tuple[float, float, float], words: str, room: float
+) -> float:
     u = page.unit
     page.box(left, top - 18 * u, left + 34 * u, top, colour)
     page.text(words, left + 44 * u, top - 18 * u, 15 * u, room=room - 44 * u)
@@ -63,7 +69,7 @@ def _bar(page: Page, values: Values, found: Range, place: tuple[float, float, fl
     u = page.unit
     left, low, high = place
     right = left + 34 * u
-    colours = colour_table()
+    colours = found.colours
     marks = ticks(found.low * values.scale, found.high * values.scale)
     if len(marks) == 1:
         page.areas(_strips(left, right, np.array([low, high])), colours[:1])
@@ -94,7 +100,11 @@ def foot(page: Page, camera: Camera, words: str) -> None:
         length /= 2
     across = length / camera.pixel
     base = 70 * u
-    page.line(np.array([[left, base + 6 * u], [left, base], [left + across, base], [left + across, base + 6 * u]]), INK, 2 * u)
+    page.line(
+        np.array([[left, base + 6 * u], [left, base], [left + across, base], [left + across, base + 6 * u]]),
+        INK,
+        2 * u,
+    )
     page.text(f"{written(length)} (length unit of the file)", left, base - 27 * u, 15 * u, colour=_SOFT)
     page.text(words, left, 20 * u, 16 * u, room=width - left - 40 * u)
 
@@ -111,6 +121,8 @@ def _axes(page: Page, camera: Camera, centre: tuple[float, float]) -> None:
         page.line(np.array([start, end]), INK, 2 * u)
         tip, side = along / seen, np.array([-along[1], along[0]]) / seen
         back = end - tip * 9 * u
-        page.areas(np.array([[end, back + side * 4 * u, back - side * 4 * u]]), np.array([[31, 33, 41]], np.uint8))
+        page.areas(
+            np.array([[end, back + side * 4 * u, back - side * 4 * u]]), np.array([[31, 33, 41]], np.uint8)
+        )
         label = end + tip * 13 * u
         page.text(name, label[0], label[1] - 9 * u, 16 * u, anchor="centre")

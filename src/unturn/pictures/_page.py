@@ -11,6 +11,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from unturn.pictures._colours import INK
+from unturn.pictures._window import FINE
 
 Colour = tuple[float, float, float]
 Anchor = Literal["left", "centre", "right"]
@@ -27,22 +28,26 @@ def _font(bold: bool) -> str | None:
     return str(file) if file.is_file() else None
 
 
+def unit_of(size: tuple[int, int]) -> float:
+    """Return the length in pixels from which all sizes in a picture are made; 1 at 1600 x 1000."""
+    return min(size[0] / 1600, size[1] / 1000)
+
+
 class Page:
     """The flat layer of a picture.
 
     Parameters
     ----------
-    window, renderer
-        Where it is drawn.
+    renderer
+        Where it is drawn, `FINE` times as large as the picture.
     size
         Width and height of the picture in pixels.
     """
 
-    def __init__(self, window: Any, renderer: Any, size: tuple[int, int]) -> None:
-        self._window = window
+    def __init__(self, renderer: Any, size: tuple[int, int]) -> None:
         self._renderer = renderer
         self.size = size
-        self.unit = min(size[0] / 1600, size[1] / 1000)
+        self.unit = unit_of(size)
 
     def areas(self, corners: NDArray[np.float64], colours: NDArray[np.uint8], opacity: float = 1.0) -> None:
         """Fill polygons `(n, m, 2)` with colours `(n, 3)`."""
@@ -57,7 +62,9 @@ class Page:
         data.GetCellData().SetScalars(_bytes(colours))
         self._add(data).GetProperty().SetOpacity(opacity)
 
-    def box(self, left: float, bottom: float, right: float, top: float, colour: Colour, opacity: float = 1.0) -> None:
+    def box(
+        self, left: float, bottom: float, right: float, top: float, colour: Colour, opacity: float = 1.0
+    ) -> None:
         """Fill a rectangle."""
         corners = np.array([[[left, bottom], [right, bottom], [right, top], [left, top]]])
         self.areas(corners, np.round(np.array([colour]) * 255).astype(np.uint8), opacity)
@@ -73,7 +80,7 @@ class Page:
         data.SetLines(cells)
         actor = self._add(data)
         actor.GetProperty().SetColor(*colour)
-        actor.GetProperty().SetLineWidth(width)
+        actor.GetProperty().SetLineWidth(width * FINE)
 
     def ring(self, centre: NDArray[np.float64], radius: float, colour: Colour, width: float) -> None:
         """Draw a circle."""
@@ -105,7 +112,7 @@ class Page:
                 actor.SetInput(shortened(words, keep))
                 width = self._width(actor)
         shift = {"left": 0.0, "centre": width / 2, "right": width}[anchor]
-        actor.SetPosition(round(left - shift), round(base))
+        actor.SetPosition(round((left - shift) * FINE), round(base * FINE))
         self._renderer.AddViewProp(actor)
         return width
 
@@ -127,7 +134,7 @@ class Page:
     def _width(self, actor: Any) -> float:
         box = [0.0] * 4
         actor.GetBoundingBox(self._renderer, box)
-        return box[1] - box[0] + 1
+        return (box[1] - box[0] + 1) / FINE
 
     def _text_actor(self, words: str, height: float, bold: bool, colour: Colour) -> Any:
         from vtkmodules.vtkRenderingCore import vtkTextActor
@@ -142,7 +149,7 @@ class Page:
         else:
             style.SetFontFamily(4)  # VTK_FONT_FILE
             style.SetFontFile(file)
-        style.SetFontSize(max(6, round(height)))
+        style.SetFontSize(max(6, round(height)) * FINE)
         style.SetColor(*colour)
         style.SetVerticalJustificationToBottom()
         style.UseTightBoundingBoxOff()
@@ -178,7 +185,7 @@ def _flat_points(points: NDArray[np.float64]) -> Any:
     from vtkmodules.vtkCommonCore import vtkPoints
 
     held = vtkPoints()
-    flat = np.column_stack([points, np.zeros(len(points))])
+    flat = np.column_stack([points * FINE, np.zeros(len(points))])
     held.SetData(numpy_to_vtk(np.ascontiguousarray(flat), deep=True))
     return held
 

@@ -1,4 +1,4 @@
-"""The model in the picture: coloured faces without shading, edges, the undeformed outline."""
+"""The model in the picture: coloured faces without shading, edges, the undeformed shape behind."""
 
 from __future__ import annotations
 
@@ -8,24 +8,27 @@ import numpy as np
 from numpy.typing import NDArray
 
 from unturn.pictures._camera import Camera
-from unturn.pictures._colours import ABOVE, BELOW, INK, NO_VALUE, Range, colour_table
+from unturn.pictures._colours import ABOVE, BELOW, INK, NO_VALUE, Range
 from unturn.pictures._surface import POSITION, VALUE
+from unturn.pictures._window import FINE
 
 Floats = NDArray[np.float64]
-_OUTLINE = (0.50, 0.52, 0.56)
+GHOST_FACE = (0.945, 0.945, 0.95)
+GHOST_LINE = (0.60, 0.61, 0.65)
 
 
 def look(renderer: Any, camera: Camera, origin: Floats, reach: float) -> None:
-    """Aim the renderer; everything is drawn relative to `origin` and lies within `reach` of the focus."""
+    """Aim the renderer; everything is drawn relative to `origin` and lies within `reach` of it."""
     view = renderer.GetActiveCamera()
     view.ParallelProjectionOn()
     focus = np.array(camera.focus) - origin
-    eye = focus + np.array(camera.direction) * 2 * reach
-    view.SetFocalPoint(*focus)
-    view.SetPosition(*eye)
+    toward = np.array(camera.direction)
+    middle = focus - (focus @ toward) * toward  # as deep as the model, also for a camera of another step
+    view.SetFocalPoint(*middle)
+    view.SetPosition(*(middle + toward * 2 * reach))
     view.SetViewUp(*camera.up)
     view.SetParallelScale(camera.pixel * camera.size[1] / 2)
-    view.SetClippingRange(reach * 0.01, reach * 4)
+    view.SetClippingRange(reach * 0.5, reach * 3.5)
 
 
 def lookup(found: Range) -> Any:
@@ -33,10 +36,10 @@ def lookup(found: Range) -> Any:
     from vtkmodules.vtkCommonCore import vtkLookupTable
 
     table = vtkLookupTable()
-    colours = colour_table() / 255.0
+    colours = found.colours / 255.0
     table.SetNumberOfTableValues(len(colours))
-    for k, colour in enumerate(colours):
-        table.SetTableValue(k, *colour, 1.0)
+    for k, (red, green, blue) in enumerate(colours.tolist()):
+        table.SetTableValue(k, red, green, blue, 1.0)
     table.SetTableRange(found.low, found.high)
     table.UseAboveRangeColorOn()
     table.SetAboveRangeColor(*ABOVE, 1.0)
@@ -50,11 +53,10 @@ def add_surface(renderer: Any, surface: Any, cell_values: Floats | None, found: 
     """Draw the faces in the colours of `cell_values` `(n_cells,)`, or of the nodal values they carry."""
     from vtkmodules.util.numpy_support import numpy_to_vtk, vtk_to_numpy
 
-    actor = _actor(renderer, surface)
-    mapper = actor.GetMapper()
+    mapper = _actor(renderer, surface, INK, 4.0).GetMapper()
     if cell_values is not None:
         own = vtk_to_numpy(surface.GetCellData().GetArray(POSITION))
-        held = numpy_to_vtk(np.ascontiguousarray(cell_values[own], dtype=np.float64), deep=True)
+        held = numpy_to_vtk(np.ascontiguousarray(cell_values[own]), deep=True)
         held.SetName(VALUE)
         surface.GetCellData().AddArray(held)
         mapper.SetScalarModeToUseCellFieldData()
@@ -65,28 +67,27 @@ def add_surface(renderer: Any, surface: Any, cell_values: Floats | None, found: 
     mapper.SetLookupTable(lookup(found))
     mapper.UseLookupTableScalarRangeOn()
     mapper.ScalarVisibilityOn()
+    _behind_lines(mapper)
+
+
+def add_lines(renderer: Any, lines: Any, width: float, opacity: float = 1.0) -> None:
+    """Draw the edges of cells, or the outline of the body."""
+    _actor(renderer, lines, INK, width).GetProperty().SetOpacity(opacity)
+
+
+def add_ghost(renderer: Any, body: Any, outline: Any, width: float) -> None:
+    """Draw the undeformed shape, pale; the renderer lies behind that of the model."""
+    _behind_lines(_actor(renderer, body, GHOST_FACE, width).GetMapper())
+    _actor(renderer, outline, GHOST_LINE, width)
+
+
+def _behind_lines(mapper: Any) -> None:
+    """Let lines that lie on faces win."""
     mapper.SetResolveCoincidentTopologyToPolygonOffset()
     mapper.SetRelativeCoincidentTopologyPolygonOffsetParameters(1.0, 1.0)
-    actor.GetProperty().SetLineWidth(4.0)
 
 
-def add_edges(renderer: Any, edges: Any, width: float, strong: bool) -> None:
-    """Draw the edges of cells, or the outline of the body."""
-    actor = _actor(renderer, edges)
-    actor.GetProperty().SetColor(*INK)
-    actor.GetProperty().SetOpacity(1.0 if strong else 0.35)
-    actor.GetProperty().SetLineWidth(width)
-
-
-def add_ghost(renderer: Any, outline: Any, width: float) -> None:
-    """Draw the undeformed outline."""
-    actor = _actor(renderer, outline)
-    actor.GetProperty().SetColor(*_OUTLINE)
-    actor.GetProperty().SetOpacity(0.6)
-    actor.GetProperty().SetLineWidth(width)
-
-
-def _actor(renderer: Any, data: Any) -> Any:
+def _actor(renderer: Any, data: Any, colour: tuple[float, float, float], width: float) -> Any:
     from vtkmodules.vtkRenderingCore import vtkActor, vtkPolyDataMapper
 
     mapper = vtkPolyDataMapper()
@@ -95,5 +96,7 @@ def _actor(renderer: Any, data: Any) -> Any:
     actor = vtkActor()
     actor.SetMapper(mapper)
     actor.GetProperty().LightingOff()
+    actor.GetProperty().SetColor(*colour)
+    actor.GetProperty().SetLineWidth(width * FINE)
     renderer.AddActor(actor)
     return actor

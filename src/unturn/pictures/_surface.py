@@ -14,7 +14,9 @@ from unturn.result import Result
 Floats = NDArray[np.float64]
 POSITION = "position"
 VALUE = "value"
-_SMOOTH_BELOW = 6_000  # faces up to which curved faces are drawn as 64 pieces each; 16 up to ten times as many
+_SMOOTH_BELOW = (
+    6_000  # faces up to which curved faces are drawn as 64 pieces each; 16 up to ten times as many
+)
 
 
 @dataclass(frozen=True, eq=False)
@@ -46,7 +48,9 @@ def grid_of(result: Result) -> Any:
     return bare
 
 
-def skin_of(grid: Any, points: Floats, keep: NDArray[np.bool_], values: Floats | None, edges: bool = True) -> Skin:
+def skin_of(
+    grid: Any, points: Floats, keep: NDArray[np.bool_], values: Floats | None, edges: bool = True
+) -> Skin:
     """Return the visible part of the cells `keep` `(n_cells,)` with the points put at `points` `(n, 3)`."""
     faces = _faces(_moved(grid, points, values), keep)
     n = faces.GetNumberOfCells()

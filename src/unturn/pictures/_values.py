@@ -34,7 +34,7 @@ class Values:
     numbers
         `(n_cells,)` or `(n_points,)` in the unit of the array.
     name
-        What the legend calls them.
+        What the legend calls them; lines after the first are remarks.
     scale, unit, short_unit
         Number shown per number held; the unit shown, at length and beside a number.
     """
@@ -75,7 +75,9 @@ def values_of(
     name = legend or array.replace("_", " ") + (f" {labels[k]}" if columns.shape[1] > 1 else "")
     unit = unit or (MEASURES[array].unit if array in MEASURES else "1" if array in GEOMETRY else "")
     scale, long = _UNITS.get(unit, (1.0, unit))
-    return Values(columns[:, k].astype(np.float64), name, scale, long, _SHORT.get(unit, "" if unit in _UNITS else unit))
+    return Values(
+        columns[:, k].astype(np.float64), name, scale, long, _SHORT.get(unit, "" if unit in _UNITS else unit)
+    )
 
 
 def _labels(array: str, n: int) -> tuple[str, ...]:

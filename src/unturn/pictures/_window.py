@@ -12,9 +12,10 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from unturn.errors import MissingExtraError, UnturnError
+from unturn.errors import MissingExtraError
 
 _PROBE_SECONDS = 60
+FINE = 2  # pixels drawn for each pixel of the picture, on a side
 
 # Rendering without a graphics library ends the interpreter (VTK 9.7), so a child process tries it first.
 _PROBE = """
@@ -26,7 +27,7 @@ window.SetShowWindow(False)
 window.SetSize(16, 16)
 window.AddRenderer(vtkRenderer())
 window.Render()
-print("rendered", bool(window.GetGenericContext() or True))
+print("rendered")
 """
 
 
@@ -74,8 +75,11 @@ def check_graphics() -> None:
     )
 
 
-def make_window(size: tuple[int, int]) -> tuple[Any, Any]:
-    """Return an invisible render window of `size` pixels and its white renderer."""
+def make_window(size: tuple[int, int]) -> tuple[Any, Any, Any]:
+    """Return an invisible render window, the renderer behind (white ground) and the one in front.
+
+    The window has `FINE` times as many pixels on a side as the picture.
+    """
     check_graphics()
     import vtkmodules.vtkRenderingFreeType  # noqa: F401  (text)
     import vtkmodules.vtkRenderingOpenGL2 as gl
@@ -85,53 +89,54 @@ def make_window(size: tuple[int, int]) -> tuple[Any, Any]:
     window = getattr(gl, name)() if name != "vtkRenderWindow" else vtkRenderWindow()
     window.SetOffScreenRendering(1)
     window.SetShowWindow(False)
-    window.SetMultiSamples(8)
-    window.SetSize(*size)
-    renderer = vtkRenderer()
-    renderer.SetBackground(1.0, 1.0, 1.0)
-    window.AddRenderer(renderer)
-    return window, renderer
+    window.SetMultiSamples(0)
+    window.SetSize(size[0] * FINE, size[1] * FINE)
+    window.SetNumberOfLayers(2)
+    back, front = vtkRenderer(), vtkRenderer()
+    back.SetBackground(1.0, 1.0, 1.0)
+    front.SetLayer(1)
+    for renderer in (back, front):
+        window.AddRenderer(renderer)
+    return window, back, front
 
 
-def capture(window: Any) -> Any:
-    """Return what the window shows as a `vtkImageData` of RGB bytes."""
+def capture(window: Any) -> NDArray[np.uint8]:
+    """Return the picture, `(height, width, 3)` bytes, top row first, without steps in its lines."""
+    from vtkmodules.util.numpy_support import vtk_to_numpy
     from vtkmodules.vtkRenderingCore import vtkWindowToImageFilter
 
     window.Render()
     grab = vtkWindowToImageFilter()
     grab.SetInput(window)
     grab.ReadFrontBufferOff()
+    grab.ShouldRerenderOff()
     grab.SetInputBufferTypeToRGB()
     grab.Update()
-    return grab.GetOutput()
-
-
-def pixels(image: Any) -> NDArray[np.uint8]:
-    """Return `(height, width, 3)` bytes of an image, top row first."""
-    from vtkmodules.util.numpy_support import vtk_to_numpy
-
+    image = grab.GetOutput()
     width, height, _ = image.GetDimensions()
-    values = vtk_to_numpy(image.GetPointData().GetScalars()).reshape(height, width, 3)
-    return np.asarray(values[::-1], dtype=np.uint8)
+    fine = vtk_to_numpy(image.GetPointData().GetScalars()).reshape(height, width, 3)[::-1]
+    total = sum(fine[i::FINE, j::FINE].astype(np.uint16) for i in range(FINE) for j in range(FINE))
+    return np.asarray((total + FINE * FINE // 2) // (FINE * FINE), dtype=np.uint8)
 
 
-def write_png(image: Any, path: Path) -> None:
-    """Write an image as PNG.
+def write_png(picture: NDArray[np.uint8], path: Path) -> None:
+    """Write a picture `(height, width, 3)` as PNG.
 
     Raises
     ------
     OSError
         The file cannot be written.
     """
+    from vtkmodules.util.numpy_support import numpy_to_vtk, vtk_to_numpy
+    from vtkmodules.vtkCommonDataModel import vtkImageData
     from vtkmodules.vtkIOImage import vtkPNGWriter
 
+    height, width, _ = picture.shape
+    image = vtkImageData()
+    image.SetDimensions(width, height, 1)
+    image.GetPointData().SetScalars(numpy_to_vtk(picture[::-1].reshape(-1, 3), deep=True))
     writer = vtkPNGWriter()
     writer.WriteToMemoryOn()
     writer.SetInputData(image)
     writer.Write()
-    from vtkmodules.util.numpy_support import vtk_to_numpy
-
-    held = writer.GetResult()
-    if held is None:
-        raise UnturnError("the picture could not be encoded as PNG.")
-    path.write_bytes(vtk_to_numpy(held).tobytes())
+    path.write_bytes(vtk_to_numpy(writer.GetResult()).tobytes())
