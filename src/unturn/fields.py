@@ -312,14 +312,10 @@ def _same_side(point: PointGradient, here: PointGradient) -> Floats:
 def smallest_height(chunk: ElementChunk, point: PointGradient) -> Floats:
     """Return the smallest height `(m,)` of the elements: the distance between opposite sides, or corner and side.
 
-    The gradient of a reference coordinate is one over the distance in which it grows by one.
+    The gradient of a reference coordinate that varies by one over the shape is one over that distance.
     """
-    shape = chunk.row.shape
-    widths = np.ptp(shape.vertices, axis=0)
-    directions = [np.eye(shape.dim)[k] / widths[k] for k in range(shape.dim)]
-    if len(shape.vertices) == shape.dim + 1 and shape.dim > 1:  # simplex: the last barycentric coordinate too
-        directions.append(np.ones(shape.dim))
-    squares = [(np.tensordot(d, point.inverse, axes=1) ** 2).sum(axis=0) for d in directions]
+    covectors = chunk.row.shape.extents
+    squares = [(np.tensordot(g, point.inverse, axes=1) ** 2).sum(axis=0) for g in covectors]
     height: Floats = 1.0 / np.sqrt(np.max(squares, axis=0))
     return height
 

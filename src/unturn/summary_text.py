@@ -6,10 +6,13 @@ import math
 from collections.abc import Callable
 from pathlib import PurePath
 
+import numpy as np
+
 from unturn.summary import CAUTION, RegionSummary, Summary, cell_counts, equivalent_form, mesh_kind
 from unturn.verdict import Verdict
 
 _MOST_COLUMNS = 5
+_MOST_VERDICTS = 12
 
 
 def summary_text(summary: Summary) -> str:
@@ -60,34 +63,48 @@ def _kind(summary: Summary) -> str:
 def _verdicts(summary: Summary) -> list[str]:
     if summary.options.mode:
         return ["mode shape: amplitude is arbitrary, so nothing is judged; values are per unit amplitude"]
-    return [_sentence(r.verdict) for r in summary.regions]
+    shown = sorted(summary.regions, key=lambda r: -r.verdict.worst if math.isfinite(r.verdict.worst) else 0.0)
+    lines = ["small strain"]
+    lines += _aligned([["  " + r.region.name, *_words(r.verdict)] for r in shown[:_MOST_VERDICTS]], left=True)
+    if len(shown) > _MOST_VERDICTS:
+        lines.append(f"  {len(shown) - _MOST_VERDICTS} more regions with smaller errors")
+    by_action: dict[str, list[str]] = {}
+    for r in shown:
+        if r.verdict.action:
+            by_action.setdefault(r.verdict.action, []).append(r.region.name)
+    for action, names in by_action.items():
+        listed = ", ".join(names[:4]) + (f" and {len(names) - 4} more" if len(names) > 4 else "")
+        lines.append(f"  -> {listed}: {action}")
+    return lines
 
 
-def _sentence(v: Verdict) -> str:
+def _words(v: Verdict) -> tuple[str, str]:
     turns = f"turns up to {_degrees(v.largest_rotation)} degrees"
-    if v.level == "not judged":
-        return f"small strain, {v.region}: nothing to judge, no cell was computed"
-    if v.level == "no strain":
-        return f"small strain, {v.region}: no strain above the stored precision; {turns}"
     worst = _ratio(v.worst)
-    if v.level == "holds":
-        return f"small strain, {v.region}: holds ({turns}, error at most {worst} of its strain)"
-    if v.level == "marginal":
-        return (
-            f"small strain, {v.region}: MARGINAL ({turns}, error up to {worst} of its strain, above 1 % in "
-            f"{_share(v.share_marginal)} of the volume): {v.action}"
-        )
-    return (
-        f"small strain, {v.region}: DOES NOT HOLD ({turns}, error up to {worst} of its strain, above 10 % in "
-        f"{_share(v.share_broken)} of the volume): {v.action}"
-    )
+    return {
+        "not judged": ("not judged", "no cell was computed"),
+        "no strain": ("no strain", f"none above the stored precision; {turns}"),
+        "holds": ("holds", f"{turns}, error at most {worst} of its strain"),
+        "marginal": (
+            "MARGINAL",
+            f"{turns}, error up to {worst} of its strain, above 1 % in {_share(v.share_marginal)} of the volume",
+        ),
+        "does not hold": (
+            "DOES NOT HOLD",
+            f"{turns}, error up to {worst} its strain, above 10 % in {_share(v.share_broken)} of the volume",
+        ),
+    }[v.level]
 
 
 def _degrees(value: float) -> str:
+    if value < 1e-6:
+        return "0"
     return f"{value:.2g}" if value < 10 else f"{value:.1f}"
 
 
 def _ratio(value: float) -> str:
+    if value < 1e-6:
+        return "0 %"
     return f"{100 * value:.2g} %" if value < 1 else f"{value:.3g} x"
 
 
@@ -116,15 +133,18 @@ def _table(summary: Summary) -> list[str]:
     unit = "microstrain" + (" per unit amplitude" if summary.options.mode else "")
     rows: list[list[str]] = [[unit, *(r.region.name for r in shown)]]
     for label, name, which in _ROWS:
-        if not all(name in r.statistics for r in shown):
+        instead = name.startswith("strain_") and "principal_strain_1" in shown[0].statistics
+        if instead or not all(name in r.statistics for r in shown):
             continue
         rows.append([label, *(_micro(getattr(r.statistics[name], which)) for r in shown)])
         at = f"at_{which}"
         rows.append(["  where", *(_where(getattr(r.statistics[name], at), summary) for r in shown)])
+        rows.append(["  at x, y, z", *(_position(getattr(r.statistics[name], at), summary) for r in shown)])
         if not summary.options.mode:
             rows.append(["  error there", *(_error(getattr(r.statistics[name], at), r, summary) for r in shown)])
-    rows.append(["99.9 % of volume below", *(_micro(_percentile(r)) for r in shown)])
-    rows.append(["largest rotation, degrees", *(_degrees(r.verdict.largest_rotation) for r in shown)])
+    if any(math.isfinite(_percentile(r)) for r in shown):
+        rows.append(["99.9 % of volume below", *(_micro(_percentile(r)) for r in shown)])
+    rows.append(["largest rotation, degree", *(_degrees(r.verdict.largest_rotation) for r in shown)])
     lines = _aligned(rows)
     if len(shown) < len(summary.regions):
         rest = len(summary.regions) - len(shown)
@@ -149,6 +169,8 @@ def _micro(value: float) -> str:
     if not math.isfinite(value):
         return "-"
     micro = value * 1e6
+    if abs(micro) < 1e-6:
+        return "0"
     return f"{micro:.0f}" if abs(micro) >= 100 else f"{micro:.3g}"
 
 
@@ -160,6 +182,15 @@ def _where(cell: int, summary: Summary) -> str:
     return f"element {summary.numbers.numbers[cell]} (cell {cell})"
 
 
+def _position(cell: int, summary: Summary) -> str:
+    d = summary.fields.diagnostics
+    if cell < 0 or d is None:
+        return "-"
+    extent = float(np.nanmax(np.ptp(d.centroid[np.isfinite(d.centroid[:, 0])], axis=0)))
+    digits = max(0, 3 - math.floor(math.log10(extent))) if extent > 0 else 3
+    return ", ".join(f"{x + 0.0:.{digits}f}" if digits < 9 else f"{x:.4g}" for x in d.centroid[cell])
+
+
 def _error(cell: int, r: RegionSummary, summary: Summary) -> str:
     d = summary.fields.diagnostics
     if cell < 0 or d is None or not r.verdict.size > 0:
@@ -167,9 +198,10 @@ def _error(cell: int, r: RegionSummary, summary: Summary) -> str:
     return _ratio(float(d.error[cell]) / r.verdict.size)
 
 
-def _aligned(rows: list[list[str]]) -> list[str]:
+def _aligned(rows: list[list[str]], left: bool = False) -> list[str]:
     widths = [max(len(row[k]) for row in rows) for k in range(len(rows[0]))]
-    pad: list[Callable[[str, int], str]] = [str.ljust, *[str.rjust] * (len(widths) - 1)]
+    other = str.ljust if left else str.rjust
+    pad: list[Callable[[str, int], str]] = [str.ljust, *[other] * (len(widths) - 1)]
     return ["  ".join(p(cell, w) for p, cell, w in zip(pad, row, widths)).rstrip() for row in rows]
 
 
@@ -183,7 +215,8 @@ def _tail(summary: Summary) -> list[str]:
         lines.append(f"values at element {_location(options.at)}; shear is tensor shear")
     left = ", ".join(f"{len(cells)} {reason}" for reason, cells in fields.left_out.items())
     noise = max((r.verdict.noise for r in summary.regions), default=math.nan)
-    precision = f"; stored precision +-{noise * 1e6:.1g} microstrain" if math.isfinite(noise) else ""
+    floor = "below 1e-6" if noise < 1e-12 else f"+-{noise * 1e6:.1g}"
+    precision = f"; stored precision {floor} microstrain" if math.isfinite(noise) else ""
     lines.append(f"left out: {left or 'no cell'}{precision}")
     if summary.numbers is not None:
         lines.append(f"element numbers are those of '{summary.numbers.name}'; cell = zero-based position in the file")
