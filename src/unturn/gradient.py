@@ -427,7 +427,7 @@ def displacement_gradient(
 
     def work(start: int, stop: int) -> None:
         chunk = ElementChunk(fields, connectivity[start:stop], row, None)
-        if at == "mean":
+        if single and at == "mean":
             result[start:stop, 0] = np.moveaxis(mean_gradient(chunk, where)[0], -1, 0)
             return
         for q, (gradients, functions) in enumerate(zip(where.gradients, where.functions)):
