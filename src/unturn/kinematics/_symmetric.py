@@ -89,7 +89,7 @@ def eigen(six: NDArray[Any]) -> tuple[Floats, Floats]:
     values = _ordered(separate, middle + radius, middle - radius, upper) + mean
     directions = np.where(upper, np.stack([normal, high, low]), np.stack([high, low, normal]))
     for d in directions:
-        d *= _leading_sign(d)
+        d *= leading_sign(d)
     return values, directions
 
 
@@ -175,7 +175,7 @@ def _ordered(separate: Floats, high: Floats, low: Floats, upper: NDArray[np.bool
     )
 
 
-def _leading_sign(d: Floats) -> Floats:
+def leading_sign(d: Floats) -> Floats:
     """Return +-1 so that the first component that is not zero becomes positive."""
     lead = np.where(
         np.abs(d[0]) > _ZERO_COMPONENT, d[0], np.where(np.abs(d[1]) > _ZERO_COMPONENT, d[1], d[2])

@@ -1,0 +1,190 @@
+"""Finite strain and rotation from the displacement gradient, by component.
+
+Everything follows from the eigenvalues and directions of the Green-Lagrange strain, which is computed from H and not
+from F, so that small strain keeps its digits. Where a stretch is far below one, squaring would lose it, and the
+singular values of F are taken instead.
+"""
+
+from __future__ import annotations
+
+from functools import cached_property
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+
+from unturn.kinematics._motion import green_lagrange, length, relative_volume_change, rotation_vector
+from unturn.kinematics._symmetric import PAIRS, Floats, eigen, leading_sign, spectral
+
+BASES = ("green_lagrange", "hencky", "biot", "almansi")
+
+_FLATTENED = 0.1  # a squared stretch below this is taken from the singular values of F
+
+
+class Finite:
+    """Finite measures of `F = I + H`, computed when first asked for; NaN where `det F` is not positive.
+
+    Parameters
+    ----------
+    H
+        `(3, 3, n)` displacement gradient.
+
+    Notes
+    -----
+    Polar decomposition `F = R U`, `U = sum l_k N_k N_k^T`: Green-Lagrange `(l^2 - 1)/2`, Biot `l - 1`, Hencky `ln l` along
+    N_k; Almansi `(1 - l^-2)/2` along `n_k = R N_k` (Holzapfel 2000, Nonlinear Solid Mechanics, sections 2.5 and 2.6;
+    Bower 2009, Applied Mechanics of Solids, section 2.1).
+    """
+
+    def __init__(self, H: NDArray[Any]) -> None:
+        self.H = np.asarray(H, dtype=np.float64)
+
+    @cached_property
+    def det_f(self) -> Floats:
+        """`det F`, `(n,)`."""
+        return 1.0 + self.volume_change
+
+    @cached_property
+    def volume_change(self) -> Floats:
+        """`det F - 1`, `(n,)`."""
+        return relative_volume_change(self.H)
+
+    @cached_property
+    def green_lagrange(self) -> Floats:
+        """Green-Lagrange strain, `(6, n)`."""
+        E = green_lagrange(self.H)
+        E[:, self._inside_out] = np.nan
+        return E
+
+    @cached_property
+    def _inside_out(self) -> NDArray[np.bool_]:
+        with np.errstate(invalid="ignore"):
+            inverted: NDArray[np.bool_] = self.det_f <= 0
+        return inverted
+
+    @cached_property
+    def _spectrum(self) -> tuple[Floats, Floats, NDArray[np.int64], Floats]:
+        """Eigenvalues of E, directions, and where the singular values of F were taken, with their rotations R - I."""
+        with np.errstate(invalid="ignore", over="ignore", divide="ignore"):
+            values, directions = eigen(self.green_lagrange)
+            few = np.flatnonzero(1.0 + 2.0 * values[2] < _FLATTENED)
+        if not len(few):
+            return values, directions, few, np.zeros((3, 3, 0))
+        F = np.moveaxis(self.H[:, :, few], -1, 0) + np.eye(3)
+        left, stretch, right = np.linalg.svd(F)
+        values[:, few] = (0.5 * (stretch - 1.0) * (stretch + 1.0)).T
+        turned = np.moveaxis(right, 0, -1).copy()
+        for k in range(3):
+            turned[k] *= leading_sign(turned[k])
+        directions[:, :, few] = turned
+        self._small_stretch = stretch.T
+        return values, directions, few, np.moveaxis(left @ right - np.eye(3), 0, -1)
+
+    @cached_property
+    def hencky_values(self) -> Floats:
+        """Logarithms of the principal stretches, `(3, n)`, largest first."""
+        values, _, few, _ = self._spectrum
+        with np.errstate(invalid="ignore", divide="ignore"):
+            logarithms: Floats = 0.5 * np.log1p(2.0 * values)
+            if len(few):
+                logarithms[:, few] = np.log(self._small_stretch)
+        return logarithms
+
+    @cached_property
+    def biot_values(self) -> Floats:
+        """Principal stretches minus one, `(3, n)`, largest first."""
+        return np.expm1(self.hencky_values)
+
+    @cached_property
+    def almansi_values(self) -> Floats:
+        """Principal Almansi strains `(1 - l^-2)/2`, `(3, n)`, largest first."""
+        values: Floats = -0.5 * np.expm1(-2.0 * self.hencky_values)
+        return values
+
+    @property
+    def green_lagrange_values(self) -> Floats:
+        """Principal Green-Lagrange strains, `(3, n)`, largest first."""
+        return self._spectrum[0]
+
+    @property
+    def material_directions(self) -> Floats:
+        """Directions of stretch in the undeformed body, `(3, 3, n)`: `[k]` belongs to value k."""
+        return self._spectrum[1]
+
+    @cached_property
+    def spatial_directions(self) -> Floats:
+        """Directions of stretch in the deformed body, `n_k = R N_k`, first non-zero component positive."""
+        directions = self.material_directions
+        turned = np.empty_like(directions)
+        for k in range(3):
+            d = directions[k]
+            turned[k] = d + np.stack([(self.turn[i] * d).sum(axis=0) for i in range(3)])
+            turned[k] *= leading_sign(turned[k])
+        return turned
+
+    @cached_property
+    def turn(self) -> Floats:
+        """`R - I`, `(3, 3, n)`."""
+        _, directions, few, given = self._spectrum
+        with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
+            inverse = spectral(np.expm1(-self.hencky_values), directions)  # U^-1 - I
+            K = {(i, j): inverse[k] for k, (i, j) in enumerate(PAIRS)}
+            turn = np.empty_like(self.H)
+            for i in range(3):
+                for j in range(3):
+                    turn[i, j] = self.H[i, j] + K[min(i, j), max(i, j)]
+                    for m in range(3):
+                        turn[i, j] += self.H[i, m] * K[min(m, j), max(m, j)]
+        if len(few):
+            turn[:, :, few] = given
+        return turn
+
+    @cached_property
+    def hencky(self) -> Floats:
+        """Hencky strain `ln U`, `(6, n)`."""
+        return spectral(self.hencky_values, self.material_directions)
+
+    @cached_property
+    def biot(self) -> Floats:
+        """Biot strain `U - I`, `(6, n)`."""
+        return spectral(self.biot_values, self.material_directions)
+
+    @cached_property
+    def almansi(self) -> Floats:
+        """Almansi strain `F^-T E F^-1`, `(6, n)`."""
+        return spectral(self.almansi_values, self.spatial_directions)
+
+    @cached_property
+    def rotation_angle(self) -> Floats:
+        """Angle of R in [0, pi], `(n,)`."""
+        cosine = 0.5 * (2.0 + self.turn[0, 0] + self.turn[1, 1] + self.turn[2, 2])
+        angle: Floats = np.arctan2(length(rotation_vector(self.turn)), cosine)
+        return angle
+
+    @cached_property
+    def rotation(self) -> Floats:
+        """Rotation vector of R, angle times axis, `(3, n)`; at half a turn the first non-zero component is positive."""
+        axial = rotation_vector(self.turn)  # sine of the angle times the axis
+        sine, angle = length(axial), self.rotation_angle
+        with np.errstate(invalid="ignore", divide="ignore"):
+            vector = axial * np.where(sine > 0, angle / sine, 1.0)
+        index = np.flatnonzero(angle > 0.5 * np.pi)
+        if len(index):
+            vector[:, index] = self._obtuse(index, axial[:, index]) * angle[index]
+        return vector
+
+    def _obtuse(self, index: NDArray[np.int64], axial: Floats) -> Floats:
+        """Return the axis of turns beyond a right angle, from the symmetric part of R."""
+        turn = self.turn[:, :, index]
+        versine = -0.5 * (turn[0, 0] + turn[1, 1] + turn[2, 2])  # 1 - cosine, between 1 and 2
+        outer = 0.5 * (turn + turn.swapaxes(0, 1))  # (1 - cosine)(n n^T - I)
+        for i in range(3):
+            outer[i, i] += versine
+        diagonal = np.stack([outer[0, 0], outer[1, 1], outer[2, 2]])
+        largest = np.argmax(diagonal, axis=0)
+        axis = outer[:, largest, np.arange(len(index))]
+        axis /= length(axis)
+        along = axis[0] * axial[0] + axis[1] * axial[1] + axis[2] * axial[2]
+        clear = np.abs(along) > 1e-15
+        signed: Floats = axis * np.where(clear, np.copysign(1.0, along), leading_sign(axis))
+        return signed
