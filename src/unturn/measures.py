@@ -2,14 +2,16 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from functools import cached_property
+from typing import cast
 
 import numpy as np
 
 from unturn.errors import UsageError, close_matches
 from unturn.kinematics import _motion, _symmetric
+from unturn.kinematics._finite import BASES, Finite
 from unturn.kinematics._symmetric import Floats
 from unturn.source import Source
 
@@ -77,6 +79,11 @@ class Split:
         return H
 
     @cached_property
+    def finite(self) -> Finite:
+        """Finite measures of the same points."""
+        return Finite(self.finite_H)
+
+    @cached_property
     def turning(self) -> _motion.Turning:
         """Error, size and angle of the small-strain split."""
         return _motion.turning(self.finite_H)
@@ -106,6 +113,10 @@ class Measure:
         Where the formula comes from.
     directions
         Whether it needs principal directions.
+    finite
+        Whether it is a finite measure: real only for a geometrically nonlinear solve.
+    base
+        The small measure it replaces when a finite base is asked for; empty for those that have no counterpart.
     """
 
     name: str
@@ -117,6 +128,8 @@ class Measure:
     meaning: str
     source: Source
     directions: bool = False
+    finite: bool = False
+    base: str = ""
 
 
 _ELASTICITY = Source("published", "Timoshenko and Goodier, Theory of Elasticity, chapters 1 and 7")
@@ -159,7 +172,76 @@ def _table() -> dict[str, Measure]:
     return {row.name: row for row in rows}
 
 
-MEASURES: dict[str, Measure] = _table()
+_FINITE = Source("published", "Holzapfel 2000, Nonlinear Solid Mechanics, sections 2.5 and 2.6")
+_BASE_WORDS = {
+    "green_lagrange": "Green-Lagrange strain (H + H^T + H^T H)/2",
+    "hencky": "Hencky (logarithmic) strain ln U",
+    "biot": "Biot strain U - I",
+    "almansi": "Almansi strain F^-T E F^-1",
+}
+
+
+def _tensor(base: str) -> Callable[[Split], Floats]:
+    return lambda s: cast(Floats, getattr(s.finite, base))
+
+
+def _values(base: str) -> Callable[[Split], Floats]:
+    return lambda s: cast(Floats, getattr(s.finite, base + "_values"))
+
+
+def _finite_direction(base: str, k: int) -> Callable[[Split], Floats]:
+    which = "spatial_directions" if base == "almansi" else "material_directions"
+    return lambda s: cast(Floats, getattr(s.finite, which))[k]
+
+
+def _finite_rows(base: str) -> list[Measure]:
+    """Return a finite strain and the measures derived from it; their names carry the base."""
+    tensor, values, word = _tensor(base), _values(base), _BASE_WORDS[base]
+
+    def row(small: str, components: tuple[str, ...], compute: Callable[[Split], Floats], unit: str, signed: bool,
+            meaning: str) -> Measure:  # fmt: skip
+        name = f"strain_{base}" if small == "strain" else f"{small}_{base}"
+        return Measure(name, components, compute, unit, True, signed, meaning, _FINITE, finite=True, base=small)
+
+    return [
+        row("strain", TENSOR, tensor, "strain", True, word),
+        row("equivalent_strain", (), lambda s: _motion.equivalent(tensor(s), s.poisson), "strain", False,
+            f"equivalent strain of the {word}"),
+        row("principal_strain", PRINCIPAL, values, "strain", True, f"principal values of the {word}, largest first"),
+        *(
+            row(f"principal_direction_{k + 1}", VECTOR, _finite_direction(base, k), "1", True,
+                f"unit direction of principal value {k + 1} of the {word}")
+            for k in range(3)
+        ),
+        row("max_shear_strain", (), lambda s: values(s)[0] - values(s)[2], "strain", False,
+            f"largest less smallest principal value of the {word}"),
+        row("volumetric_strain", (), lambda s: tensor(s)[0] + tensor(s)[1] + tensor(s)[2], "strain", True,
+            f"trace of the {word}"),
+        row("deviatoric_strain", TENSOR, lambda s: _motion.deviator(tensor(s)), "strain", True,
+            f"{word} less a third of its trace"),
+    ]  # fmt: skip
+
+
+def _finite_motion() -> list[Measure]:
+    return [
+        Measure("finite_rotation", VECTOR, lambda s: s.finite.rotation, "radian", False, True,
+                "rotation vector of R, angle times axis", _FINITE, finite=True, base="rotation"),
+        Measure("finite_rotation_angle", (), lambda s: s.finite.rotation_angle, "radian", False, False,
+                "angle of R, 0 to pi", _FINITE, finite=True, base="rotation_angle"),
+        Measure("det_f", (), lambda s: s.finite.det_f, "1", True, True,
+                "determinant of F: deformed over undeformed volume", _FINITE, finite=True),
+    ]  # fmt: skip
+
+
+SMALL: dict[str, Measure] = _table()
+"""The measures of the small-strain split."""
+
+MEASURES: dict[str, Measure] = {
+    **SMALL,
+    **{row.name: row for row in _finite_motion()},
+    **{row.name: row for base in BASES for row in _finite_rows(base)},
+}
+"""Every measure of the gradient."""
 
 GEOMETRY: dict[str, str] = {
     "element_volume": "reference volume, area or length of the cell",
@@ -170,31 +252,56 @@ GEOMETRY: dict[str, str] = {
 DEFAULT_MEASURES = ("strain", "rotation", "equivalent_strain", "principal_strain")
 
 
-def choose_measures(names: list[str] | tuple[str, ...] | None) -> tuple[str, ...]:
-    """Return the names asked for, in table order, without repeats; ``all`` is every small measure.
+def choose_measures(names: Sequence[str] | None, base: str = "small") -> tuple[str, ...]:
+    """Return the names asked for, in table order, without repeats.
+
+    Parameters
+    ----------
+    names
+        Array names; ``all`` is every small measure. None: the default set.
+    base
+        ``small``, or a finite base: each small measure is then replaced by its counterpart of that base.
 
     Raises
     ------
     UsageError
-        A name that is not in the table.
+        A name or base that is not in the table.
 
     Examples
     --------
     >>> choose_measures(["rotation", "strain"])
     ('strain', 'rotation')
+    >>> choose_measures(["rotation", "strain"], base="green-lagrange")
+    ('finite_rotation', 'strain_green_lagrange')
     """
     known = [*MEASURES, *GEOMETRY]
-    if not names:
-        return DEFAULT_MEASURES
+    counterpart = _counterparts(base)
     wanted: set[str] = set()
-    for name in names:
+    for name in names or DEFAULT_MEASURES:
         if name == "all":
-            wanted.update(known)
+            wanted.update(counterpart.get(k, k) for k in (*SMALL, *GEOMETRY))
         elif name in known:
-            wanted.add(name)
+            wanted.add(counterpart.get(name, name))
         else:
             raise UsageError(
                 f"no measure is called {name!r}.{close_matches(name, [*known, 'all'])} "
-                f"Measures: {', '.join(known)}, or all."
+                f"Measures: {', '.join((*SMALL, *GEOMETRY))}, or all; finite ones: {', '.join(_finite_names())}."
             )
     return tuple(k for k in known if k in wanted)
+
+
+def _finite_names() -> list[str]:
+    plain = [m.name for m in MEASURES.values() if m.finite and m.base in ("", "strain", "rotation", "rotation_angle")]
+    return [*plain, "and those derived from a strain, as equivalent_strain_hencky"]
+
+
+def _counterparts(base: str) -> dict[str, str]:
+    """Return for each small measure its counterpart of a finite base."""
+    if base == "small":
+        return {}
+    key = base.replace("-", "_")
+    if key not in BASES:
+        names = ["small", *(b.replace("_", "-") for b in BASES)]
+        raise UsageError(f"no base is called {base!r}.{close_matches(base, names)} Bases: {', '.join(names)}.")
+    rows = [*_finite_motion(), *_finite_rows(key)]
+    return {row.base: row.name for row in rows if row.base}
