@@ -106,11 +106,12 @@ def bodies(model: Model, cells: NDArray[np.bool_]) -> list[Region]:
 
     A single body, or more than fifty, gives an empty list: the whole is then the better unit.
     """
-    label = np.arange(model.result.n_points)
-    shared = _shares_nodes(model, cells)
-    if not shared:
-        label, _ = merge_coincident(model.points)
     n = model.result.n_points
+    label = np.arange(n)
+    used, shared = _used_nodes(model, cells)
+    if not shared:
+        where = np.flatnonzero(used)  # a node of no cell may lie anywhere
+        label[where] = where[merge_coincident(model.points[where])[0]]
     heads, tails, first, index = [], [], [], []
     for block in model.blocks:
         if block.row is None:
@@ -124,7 +125,7 @@ def bodies(model: Model, cells: NDArray[np.bool_]) -> list[Region]:
             heads.append(conn[:, 0])
             tails.append(corners[:, k])
     rows, cols = np.concatenate(heads), np.concatenate(tails)
-    graph = sparse.csr_array((np.ones(len(rows), dtype=np.int8), (rows, cols)), shape=(n, n))
+    graph = sparse.csr_array((np.ones(len(rows), dtype=np.int32), (rows, cols)), shape=(n, n))
     _, part = connected_components(graph, directed=False)
     positions = np.concatenate(index)
     part_of_cell = part[np.concatenate(first)]
@@ -137,7 +138,8 @@ def bodies(model: Model, cells: NDArray[np.bool_]) -> list[Region]:
     ]
 
 
-def _shares_nodes(model: Model, cells: NDArray[np.bool_]) -> bool:
+def _used_nodes(model: Model, cells: NDArray[np.bool_]) -> tuple[NDArray[np.bool_], bool]:
+    """Return which nodes the cells have, and whether any two cells share one (or there is only one cell)."""
     seen = np.zeros(model.result.n_points, dtype=bool)
     total = 0
     for block in model.blocks:
@@ -145,7 +147,7 @@ def _shares_nodes(model: Model, cells: NDArray[np.bool_]) -> bool:
             conn = block.connectivity[cells[block.index]]
             seen[conn] = True
             total += conn.size
-    return total != int(seen.sum()) or int(cells.sum()) == 1
+    return seen, total != int(seen.sum()) or int(cells.sum()) == 1
 
 
 def merge_coincident(points: Floats) -> tuple[NDArray[np.int64], float]:
