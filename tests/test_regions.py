@@ -24,9 +24,9 @@ def row_of_hexahedra(gaps: tuple[int, ...] = (), n: int = 6) -> meshes.Mesh:
     for k in range(n):
         if k == 0 or k in gaps:
             start += 1.0
-            points.append(face + [start, 0, 0])
+            points.append(face + np.array([start, 0, 0]))
         start += 1.0
-        points.append(face + [start, 0, 0])
+        points.append(face + np.array([start, 0, 0]))
         b = 4 * (len(points) - 2)
         cells.append([b, b + 4, b + 5, b + 1, b + 3, b + 7, b + 6, b + 2])
     return meshes.Mesh(np.concatenate(points), np.array(cells), ELEMENTS["hexahedron"])

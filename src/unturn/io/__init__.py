@@ -15,7 +15,17 @@ from unturn.io._formats import FORMATS, format_for_writing, format_of_file, writ
 from unturn.io._readback import check_same
 from unturn.result import Result
 
-__all__ = ["FORMATS", "Format", "ResultFile", "StepWriter", "open_result", "read", "series_writer", "writable_suffix", "write"]
+__all__ = [
+    "FORMATS",
+    "Format",
+    "ResultFile",
+    "StepWriter",
+    "open_result",
+    "read",
+    "series_writer",
+    "writable_suffix",
+    "write",
+]
 
 
 def open_result(path: str | PathLike[str]) -> ResultFile:
@@ -35,6 +45,9 @@ def open_result(path: str | PathLike[str]) -> ResultFile:
     try:
         if place.is_dir():
             raise InputError(f"{path} is a folder; give the name of the result file in it.")
+        if not place.is_file():
+            place.stat()
+            raise InputError(f"{path} is not a regular file; give the name of a result file.")
         if place.stat().st_size == 0:
             raise InputError(
                 f"{path} is empty (0 bytes). The program that writes it did not finish: run it again."
@@ -104,6 +117,8 @@ def write(result: Result, path: str | PathLike[str]) -> tuple[str, ...]:
 def series_writer(path: str | PathLike[str]) -> Iterator[StepWriter]:
     """Return a context manager that writes a series step by step and puts it in place when it is complete.
 
+    Each step is read back and compared bit for bit as soon as it is written; one step is held at a time.
+
     Parameters
     ----------
     path
@@ -112,14 +127,39 @@ def series_writer(path: str | PathLike[str]) -> Iterator[StepWriter]:
     Raises
     ------
     UsageError
-        The format holds no series, or the place cannot be written to.
+        The format holds no series, no step was added, or the place cannot be written to.
     """
     target = Path(path)
     fmt = format_for_writing(target, series=True)
     assert fmt.write_series is not None
     with replacing(target) as work:
-        writer = fmt.write_series(work)
+        writer = _CheckedSeries(fmt, fmt.write_series(work), work)
         try:
             yield writer
         finally:
             writer.close()
+        if not writer.n_steps:
+            raise UsageError(f"{path}: a series needs at least one step; nothing was written.")
+
+
+class _CheckedSeries:
+    """Passes steps on to a format's writer and reads each of them back."""
+
+    def __init__(self, fmt: Format, inner: StepWriter, work: Path) -> None:
+        self._fmt, self._inner, self._work = fmt, inner, work
+        self.n_steps = 0
+
+    @property
+    def lost(self) -> tuple[str, ...]:
+        """What the format could not hold, so far."""
+        return self._inner.lost
+
+    def add(self, result: Result, value: float) -> None:
+        """Write one step and prove that it is in the file."""
+        self._inner.add(result, value)
+        check_same(result, self._fmt.open(self._work).read(self.n_steps), self._inner.lost)
+        self.n_steps += 1
+
+    def close(self) -> None:
+        """Finish the file."""
+        self._inner.close()

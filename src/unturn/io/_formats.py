@@ -37,6 +37,18 @@ FORMATS: tuple[Format, ...] = (
     _xml("VTS", ".vts"),
     _xml("VTR", ".vtr"),
     _xml("VTI", ".vti"),
+    Format(
+        "PVD", (".pvd",), _call("vtk_composite", "open_file"), None, _call("vtk_composite", "open_series")
+    ),
+    Format("PVTU", (".pvtu", ".pvtp"), _call("vtk_composite", "open_file")),
+    Format("VTM", (".vtm",), _call("vtk_composite", "open_file")),
+    Format(
+        "VTKHDF",
+        (".vtkhdf",),
+        _call("vtk_hdf", "open_file"),
+        _call("vtk_hdf_write", "write_file"),
+        _call("vtk_hdf_write", "open_series"),
+    ),
     Format("VTK legacy", (".vtk",), _call("vtk_legacy", "open_file"), _call("vtk_legacy", "write_file")),
     Format(
         "XDMF",
@@ -77,6 +89,10 @@ _VTKFILE_NAMES = {
     b"StructuredGrid": "VTS",
     b"RectilinearGrid": "VTR",
     b"ImageData": "VTI",
+    b"Collection": "PVD",
+    b"PUnstructuredGrid": "PVTU",
+    b"PPolyData": "PVTU",
+    b"vtkMultiBlockDataSet": "VTM",
 }
 
 
@@ -117,6 +133,28 @@ def _name_by_content(head: bytes, path: Path) -> str | None:
     if head.startswith(b"$MeshFormat"):
         return "MSH"
     if head.startswith(b"CDF"):
+        return "Exodus"
+    return _hdf_name(path) if head.startswith(b"\x89HDF") else None
+
+
+def _hdf_name(path: Path) -> str | None:
+    """Return which format an HDF5 file is, by its topmost groups; None when they do not tell."""
+    import h5py
+
+    try:
+        with h5py.File(path, "r") as file:
+            groups = set(file)
+            is_exodus = "title" in file.attrs and "api_version" in file.attrs
+    except OSError as error:
+        raise InputError(
+            f"{path} is an HDF5 file that cannot be opened ({error}). It is damaged, cut short or still "
+            "being written by another program."
+        ) from error
+    if "VTKHDF" in groups:
+        return "VTKHDF"
+    if {"ENS_MAA", "INFOS_GENERALES"} & groups:
+        return "MED"
+    if is_exodus:
         return "Exodus"
     return None
 

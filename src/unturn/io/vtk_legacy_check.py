@@ -187,7 +187,7 @@ class _Walk:
             if not words or step == 0:
                 self.fail(f"{n} values are announced and {n - left} are there")
             try:
-                count_numbers(b" ".join(words).decode("latin-1"))
+                count_numbers(b" ".join(words))
             except Unsound as error:
                 self.fail(str(error))
             left -= len(words)

@@ -19,6 +19,7 @@ from vtkmodules.vtkCommonDataModel import (
 )
 
 from unturn.errors import InputError, UsageError
+from unturn.io._node_order import checked_order
 from unturn.io.vtk_arrays import from_numpy, read_attributes, to_numpy, update_attributes
 from unturn.io.vtk_cells import blocks_of_poly, blocks_of_structured, blocks_of_unstructured, grid_from_blocks
 from unturn.io.vtk_types import cell_number
@@ -41,7 +42,8 @@ def result_from_vtk(
 ) -> Result:
     """Return a VTK data set as a `Result` whose arrays share VTK's memory and whose carrier is the data set.
 
-    Voxels, pixels and the cells of structured, rectilinear and image grids become hexahedra and quads.
+    Voxels, pixels and the cells of structured, rectilinear and image grids become hexahedra and quads, and
+    mid-side nodes in a known wrong order are put right, in the result only: the carrier keeps its cells.
 
     Parameters
     ----------
@@ -53,7 +55,8 @@ def result_from_vtk(
     Raises
     ------
     InputError
-        No cell, or cells, offsets, faces or arrays that contradict each other; the message names the place.
+        No cell; cells, offsets, faces or arrays that contradict each other; mid-side nodes far from their
+        edges. The message names the place.
     """
     where = f"{path}: " if path else ""
     blocks = blocks_of(dataset, where)
@@ -63,10 +66,11 @@ def result_from_vtk(
             f"{where}the mesh has {dataset.GetNumberOfPoints()} points and no cells; a displacement gradient "
             "needs elements. Check that the file is complete and holds the volume mesh."
         )
+    blocks, repaired = checked_order(points, blocks, where)
     point_data, names, skipped = read_attributes(dataset.GetPointData(), "point", where)
     cell_data, cell_names, cell_skipped = read_attributes(dataset.GetCellData(), "cell", where)
     field_data, field_names, field_skipped = read_attributes(dataset.GetFieldData(), "field", where)
-    result = Result(
+    return Result(
         points=points,
         blocks=blocks,
         point_data=point_data,
@@ -77,11 +81,10 @@ def result_from_vtk(
         steps=steps,
         path=path,
         format_name=format_name,
-        notes=(*notes, *skipped, *cell_skipped, *field_skipped),
+        notes=(*notes, *repaired, *skipped, *cell_skipped, *field_skipped),
         left_out=_left_out(blocks, point_data.get(GHOSTS), cell_data.get(GHOSTS)),
         carrier=dataset,
     )
-    return result
 
 
 def blocks_of(dataset: Any, where: str) -> tuple[CellBlock, ...]:

@@ -6,6 +6,7 @@ import importlib
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
+from xml.sax.saxutils import escape
 
 from unturn.errors import InputError, UsageError
 from unturn.io.vtk_arrays import quiet_vtk
@@ -96,12 +97,57 @@ def lost_groups(result: Result) -> tuple[str, ...]:
 
 def write_dataset(dataset: Any, path: str, kind: str) -> None:
     """Write a VTK data set uncompressed with 64-bit sizes (measured: fastest to write and to read back)."""
+    for attributes in (dataset.GetPointData(), dataset.GetCellData(), dataset.GetFieldData()):
+        _escape_names(attributes)
     writer = vtk_class("vtkIOXML", f"vtkXML{kind}Writer")
     writer.SetDataModeToAppended()
     writer.EncodeAppendedDataOff()
     writer.SetCompressorTypeToNone()
     writer.SetHeaderTypeToUInt64()
     run_writer(writer, dataset, path)
+
+
+def _escape_names(attributes: Any) -> None:
+    """Replace arrays whose names XML cannot hold: VTK writes names as they are and reads them unescaped."""
+    arrays = [attributes.GetAbstractArray(i) for i in range(attributes.GetNumberOfArrays())]
+    twins = [_with_escaped_names(array) for array in arrays]
+    if all(twin is array for twin, array in zip(twins, arrays, strict=True)):
+        return
+    roles = {}
+    for number in range(getattr(attributes, "NUM_ATTRIBUTES", 0)):
+        active = attributes.GetAbstractAttribute(number)
+        if active is not None:
+            roles[number] = next(i for i, array in enumerate(arrays) if array is active)
+    for i in reversed(range(len(arrays))):
+        attributes.RemoveArray(i)
+    for twin in twins:
+        attributes.AddArray(twin)
+    for number, i in roles.items():
+        attributes.SetActiveAttribute(twins[i].GetName(), number)
+
+
+def _with_escaped_names(array: Any) -> Any:
+    """Return the array, or a copy that shares its values when one of its names must be escaped."""
+    labels = [array.GetComponentName(k) for k in range(array.GetNumberOfComponents())]
+    special = {k: _escaped(text) for k, text in enumerate(labels) if text and _escaped(text) != text}
+    name = array.GetName() or ""
+    if _escaped(name) == name and not special:
+        return array
+    twin = array.NewInstance()
+    twin.ShallowCopy(array)
+    twin.SetName(_escaped(name))
+    for k, text in special.items():
+        twin.SetComponentName(k, text)
+    return twin
+
+
+def _escaped(text: str) -> str:
+    unprintable = [c for c in text if ord(c) < 32 and c not in "\t\n\r"]
+    if unprintable:
+        raise UsageError(
+            f"the name {text!r} holds a control character, which no XML file can; rename the array."
+        )
+    return escape(text, {'"': "&quot;", "\t": "&#9;", "\n": "&#10;", "\r": "&#13;"})
 
 
 def run_writer(writer: Any, dataset: Any, path: str) -> None:

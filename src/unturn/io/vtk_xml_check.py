@@ -123,6 +123,12 @@ def _check_grid(file: _File, grid: ElementTree.Element, kind: str) -> None:
         _check_section(file, section, None)
     _check_alike(file, pieces)
     structured = kind not in ("UnstructuredGrid", "PolyData")
+    if (
+        structured
+        and _extent_size(file, grid, "WholeExtent")[0] > 2**26
+        and not any(_arrays(s) for s in pieces[0] if s.tag in ("PointData", "CellData", "Points"))
+    ):
+        raise file.fail(f"its extent {grid.get('WholeExtent')!r} is large and no array has values there")
     total = 0
     for number, piece in enumerate(pieces):
         n_points, n_cells = _extent_counts(file, piece) if structured else _counts(file, piece, kind)
@@ -341,7 +347,7 @@ def _values(file: _File, array: ElementTree.Element, where: str, dtype: str | No
     stream = _stream(file, array, where)
     kind = np.dtype(dtype) if dtype else _dtype(file, array)
     try:
-        if isinstance(stream, str):
+        if isinstance(stream, bytes):
             return count_numbers(stream)
         n_bytes = decoded_size(stream, file.encoding)
     except Unsound as error:
@@ -360,7 +366,7 @@ def _decode(
     kind = np.dtype(dtype) if dtype else _dtype(file, array)
     stream = _stream(file, array, where)
     try:
-        if isinstance(stream, str):
+        if isinstance(stream, bytes):
             words = stream.split() if n_last is None else stream.rsplit(maxsplit=n_last)[-n_last:]
             return np.array(words, dtype=np.float64).astype(np.int64)
         n = decoded_size(stream, file.encoding) if n_last is None else n_last * kind.itemsize
@@ -370,7 +376,7 @@ def _decode(
         raise file.fail(f"{where}array {array.get('Name')!r}: {error}") from error
 
 
-def _stream(file: _File, array: ElementTree.Element, where: str) -> Stream | str:
+def _stream(file: _File, array: ElementTree.Element, where: str) -> Stream | bytes:
     """Return the encoded bytes of an array, or its text when it is ASCII."""
     form = array.get("format", "ascii").strip().lower()
     if form == "appended":
@@ -381,7 +387,7 @@ def _stream(file: _File, array: ElementTree.Element, where: str) -> Stream | str
         return Stream(file.appended.data, start, file.appended.is_text, False)
     text = (array.text or "") + "".join(child.tail or "" for child in array)
     if form == "ascii":
-        return text
+        return text.encode()
     if form == "binary":
-        return Stream("".join(text.split()).encode(), 0, True, True)
+        return Stream(b"".join(text.encode().split()), 0, True, True)
     raise file.fail(f"{where}array {array.get('Name')!r} has the unknown format {form!r}")

@@ -65,6 +65,22 @@ def green_lagrange(H: NDArray[Any]) -> Floats:
     return E
 
 
+def relative_volume_change(H: NDArray[Any]) -> Floats:
+    """Return `J - 1 = I1 + I2 + I3` of H: small changes keep their digits."""
+    first = H[0, 0] + H[1, 1] + H[2, 2]
+    second = (
+        H[0, 0] * H[1, 1] - H[0, 1] * H[1, 0] + H[1, 1] * H[2, 2] - H[1, 2] * H[2, 1] + H[0, 0] * H[2, 2]
+        - H[0, 2] * H[2, 0]
+    )  # fmt: skip
+    third = (
+        H[0, 0] * (H[1, 1] * H[2, 2] - H[1, 2] * H[2, 1])
+        - H[0, 1] * (H[1, 0] * H[2, 2] - H[1, 2] * H[2, 0])
+        + H[0, 2] * (H[1, 0] * H[2, 1] - H[1, 1] * H[2, 0])
+    )
+    total: Floats = first + second + third
+    return total
+
+
 @dataclass(frozen=True, eq=False)
 class Turning:
     """What turning does to the small strain, per point.
