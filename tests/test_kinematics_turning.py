@@ -10,14 +10,14 @@ from hypothesis import assume, example, given, settings
 from hypothesis import strategies as st
 
 from strategies import axis_angle, gradients, unit_vectors
-from unturn.kinematics import _motion, small_strain_error
+from unturn.kinematics import _turning, small_strain_error
 from unturn.kinematics._symmetric import six_from_full
 
 N = np.array([0.36, 0.48, 0.8])  # a unit normal: F = I - N N^T flattens along it
 
 
 def measured(H: np.ndarray) -> tuple[float, float, float]:
-    found = _motion.turning(np.asarray(H, dtype=float)[:, :, None])
+    found = _turning.turning(np.asarray(H, dtype=float)[:, :, None])
     return float(found.error[0]), float(found.stretch[0]), float(found.angle[0])
 
 
@@ -44,7 +44,7 @@ def polar_in_many_digits(H: np.ndarray) -> tuple[float, float, float]:
 
 def exact_branch(H: np.ndarray) -> bool:
     _, stretch, _ = polar_in_many_digits(H)
-    return bool(0.5 * np.linalg.norm(H.T @ H) > _motion._NEGLIGIBLE * stretch)
+    return bool(0.5 * np.linalg.norm(H.T @ H) > _turning._NEGLIGIBLE * stretch)
 
 
 @pytest.mark.source(
@@ -142,9 +142,9 @@ def test_series_and_polar_decomposition_meet_at_the_switch(size: float) -> None:
             H = size * (e + middle / np.sqrt(size) * w)
             low, high = (low, middle) if exact_branch(H) else (middle, high)
         H = (size * (e + middle / np.sqrt(size) * w))[:, :, None]
-        exact = _motion._exact_turning(H, six_from_full(H))
-        below = _motion.turning(H * (1 - 1e-4))  # the series, or the exact branch: both sides of the switch
-        above = _motion.turning(H * (1 + 1e-4))
+        exact = _turning._exact_turning(H, six_from_full(H))
+        below = _turning.turning(H * (1 - 1e-4))  # the series, or the exact branch: both sides of the switch
+        above = _turning.turning(H * (1 + 1e-4))
         reach = float(np.linalg.norm(H)) * float(exact[1][0])
         for found in (below, above):
             assert float(found.error[0]) == pytest.approx(
@@ -188,6 +188,6 @@ def test_a_flattened_point_keeps_its_stretch(H: np.ndarray, stretch: float) -> N
 def test_not_finite_stays_where_it_is() -> None:
     H = np.zeros((3, 3, 4))
     H[0, 0] = [1e-3, np.nan, np.inf, 2e-3]
-    found = _motion.turning(H)
+    found = _turning.turning(H)
     assert np.isfinite(found.error).tolist() == [True, False, False, True]
     np.testing.assert_allclose(found.stretch[[0, 3]], [1e-3, 2e-3], rtol=1e-3)

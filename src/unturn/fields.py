@@ -19,8 +19,9 @@ from unturn.gradient import (
     over_chunks,
     sample_points,
 )
-from unturn.kinematics._motion import Turning, relative_volume_change
+from unturn.kinematics._motion import relative_volume_change
 from unturn.kinematics._symmetric import Floats
+from unturn.kinematics._turning import Turning
 from unturn.measures import GEOMETRY, MEASURES, Measure, Split, choose_measures
 from unturn.model import Model, ModelBlock
 from unturn.precision import storage_resolution
@@ -38,7 +39,7 @@ class CellDiagnostics:
     volume
         Weight of the cell: reference volume, area or length; `2 pi r` times the area where axisymmetric.
     error, stretch, angle
-        See `unturn.kinematics._motion.Turning`.
+        See `unturn.kinematics._turning.Turning`.
     noise
         Floor of the strain from the storage resolution.
     det_f
@@ -91,6 +92,7 @@ def compute_fields(
     model: Model,
     measures: Sequence[str] | None = None,
     *,
+    base: str = "small",
     at: Location = "centroid",
     equivalent_poisson: float | None = None,
     threads: int | None = None,
@@ -104,6 +106,9 @@ def compute_fields(
         See `build_model`.
     measures
         Array names; None for the default set.
+    base
+        ``small``, or ``green-lagrange``, ``hencky``, ``biot``, ``almansi``: the small measures are then replaced by
+        their counterparts of that base.
     at
         ``centroid``, or ``mean``: the volume mean of the gradient, from which the rest is derived.
     equivalent_poisson
@@ -118,7 +123,7 @@ def compute_fields(
     UsageError
         A measure that depends on the unstated third direction of a plane mesh.
     """
-    names = choose_measures(list(measures) if measures is not None else None)
+    names = choose_measures(measures, base)
     if at not in LOCATIONS:
         raise UsageError(f"at={at!r} is not known; use one of {', '.join(LOCATIONS)}.")
     _check_third_direction(model, names)
@@ -155,6 +160,9 @@ class _Job:
         self.model, self.at, self.poisson = model, at, poisson
         self.measures: list[Measure] = [MEASURES[n] for n in names if n in MEASURES]
         self.directions = any(m.directions for m in self.measures)
+        self.needs_finite = (
+            diagnose or "small_strain_error" in names or any(m.finite for m in self.measures)
+        )
         n = model.result.n_cells
         whole = all(len(b.active) == len(b.cells) for b in model.blocks)
         self.arrays: dict[str, Floats] = {}
@@ -212,7 +220,7 @@ class _Job:
         if chunk.row.dim == 3:
             self.mirrored[rows] = high < 0
         finite = None
-        if self.diagnostics is not None or "small_strain_error" in self.arrays:
+        if self.needs_finite:
             finite = H
             if chunk.row.dim < 3:
                 finite = mean_gradient(chunk, rule, finite=True)[0] if mean else chunk.finite(point)

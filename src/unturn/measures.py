@@ -10,7 +10,7 @@ from typing import cast
 import numpy as np
 
 from unturn.errors import UsageError, close_matches
-from unturn.kinematics import _motion, _symmetric
+from unturn.kinematics import _motion, _symmetric, _turning
 from unturn.kinematics._finite import BASES, Finite
 from unturn.kinematics._symmetric import Floats
 from unturn.source import Source
@@ -84,9 +84,9 @@ class Split:
         return Finite(self.finite_H)
 
     @cached_property
-    def turning(self) -> _motion.Turning:
+    def turning(self) -> _turning.Turning:
         """Error, size and angle of the small-strain split."""
-        return _motion.turning(self.finite_H)
+        return _turning.turning(self.finite_H)
 
 
 @dataclass(frozen=True)

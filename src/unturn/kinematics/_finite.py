@@ -50,26 +50,36 @@ class Finite:
         return relative_volume_change(self.H)
 
     @cached_property
+    def _reversed(self) -> NDArray[np.bool_] | None:
+        """Where `det F` is not positive; None when nowhere."""
+        with np.errstate(invalid="ignore"):
+            reversed_: NDArray[np.bool_] = self.det_f <= 0
+        return reversed_ if reversed_.any() else None
+
+    def _proper(self, values: Floats) -> Floats:
+        """Return the values, NaN where `det F` is not positive."""
+        if self._reversed is not None:
+            values = values.copy()
+            values[..., self._reversed] = np.nan
+        return values
+
+    @cached_property
     def green_lagrange(self) -> Floats:
         """Green-Lagrange strain, `(6, n)`."""
-        E = green_lagrange(self.H)
-        E[:, self._inside_out] = np.nan
-        return E
+        return self._proper(self._E)
 
     @cached_property
-    def _inside_out(self) -> NDArray[np.bool_]:
-        with np.errstate(invalid="ignore"):
-            inverted: NDArray[np.bool_] = self.det_f <= 0
-        return inverted
+    def _E(self) -> Floats:
+        return green_lagrange(self.H)
 
     @cached_property
-    def _spectrum(self) -> tuple[Floats, Floats, NDArray[np.int64], Floats]:
-        """Eigenvalues of E, directions, and where the singular values of F were taken, with their rotations R - I."""
+    def _spectrum(self) -> tuple[Floats, Floats, NDArray[np.int64], Floats, Floats]:
+        """Eigenvalues of E and directions; where singular values of F were taken, those, and their rotations R - I."""
         with np.errstate(invalid="ignore", over="ignore", divide="ignore"):
-            values, directions = eigen(self.green_lagrange)
+            values, directions = eigen(self._E)
             few = np.flatnonzero(1.0 + 2.0 * values[2] < _FLATTENED)
         if not len(few):
-            return values, directions, few, np.zeros((3, 3, 0))
+            return values, directions, few, np.zeros((3, 0)), np.zeros((3, 3, 0))
         F = np.moveaxis(self.H[:, :, few], -1, 0) + np.eye(3)
         left, stretch, right = np.linalg.svd(F)
         values[:, few] = (0.5 * (stretch - 1.0) * (stretch + 1.0)).T
@@ -77,23 +87,36 @@ class Finite:
         for k in range(3):
             turned[k] *= leading_sign(turned[k])
         directions[:, :, few] = turned
-        self._small_stretch = stretch.T
-        return values, directions, few, np.moveaxis(left @ right - np.eye(3), 0, -1)
+        return values, directions, few, stretch.T, np.moveaxis(left @ right - np.eye(3), 0, -1)
+
+    @cached_property
+    def _logarithms(self) -> Floats:
+        values, _, few, stretch, _ = self._spectrum
+        with np.errstate(invalid="ignore", divide="ignore"):
+            logarithms: Floats = 0.5 * np.log1p(2.0 * values)
+            if len(few):
+                logarithms[:, few] = np.log(stretch)
+        return logarithms
+
+    @cached_property
+    def stretch_values(self) -> Floats:
+        """Principal stretches minus one, `(3, n)`, largest first; also where `det F` is not positive."""
+        return np.expm1(self._logarithms)
+
+    @cached_property
+    def stretch_tensor(self) -> Floats:
+        """`U - I`, `(6, n)`; also where `det F` is not positive."""
+        return spectral(self.stretch_values, self._spectrum[1])
 
     @cached_property
     def hencky_values(self) -> Floats:
         """Logarithms of the principal stretches, `(3, n)`, largest first."""
-        values, _, few, _ = self._spectrum
-        with np.errstate(invalid="ignore", divide="ignore"):
-            logarithms: Floats = 0.5 * np.log1p(2.0 * values)
-            if len(few):
-                logarithms[:, few] = np.log(self._small_stretch)
-        return logarithms
+        return self._proper(self._logarithms)
 
     @cached_property
     def biot_values(self) -> Floats:
         """Principal stretches minus one, `(3, n)`, largest first."""
-        return np.expm1(self.hencky_values)
+        return self._proper(self.stretch_values)
 
     @cached_property
     def almansi_values(self) -> Floats:
@@ -104,12 +127,12 @@ class Finite:
     @property
     def green_lagrange_values(self) -> Floats:
         """Principal Green-Lagrange strains, `(3, n)`, largest first."""
-        return self._spectrum[0]
+        return self._proper(self._spectrum[0])
 
     @property
     def material_directions(self) -> Floats:
         """Directions of stretch in the undeformed body, `(3, 3, n)`: `[k]` belongs to value k."""
-        return self._spectrum[1]
+        return self._proper(self._spectrum[1])
 
     @cached_property
     def spatial_directions(self) -> Floats:
@@ -125,7 +148,7 @@ class Finite:
     @cached_property
     def turn(self) -> Floats:
         """`R - I`, `(3, 3, n)`."""
-        _, directions, few, given = self._spectrum
+        _, directions, few, _, given = self._spectrum
         with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
             inverse = spectral(np.expm1(-self.hencky_values), directions)  # U^-1 - I
             K = {(i, j): inverse[k] for k, (i, j) in enumerate(PAIRS)}
@@ -137,7 +160,7 @@ class Finite:
                         turn[i, j] += self.H[i, m] * K[min(m, j), max(m, j)]
         if len(few):
             turn[:, :, few] = given
-        return turn
+        return self._proper(turn)
 
     @cached_property
     def hencky(self) -> Floats:
@@ -147,7 +170,7 @@ class Finite:
     @cached_property
     def biot(self) -> Floats:
         """Biot strain `U - I`, `(6, n)`."""
-        return spectral(self.biot_values, self.material_directions)
+        return self._proper(self.stretch_tensor)
 
     @cached_property
     def almansi(self) -> Floats:

@@ -8,7 +8,7 @@ import numpy as np
 from numpy.typing import ArrayLike, NDArray
 
 from unturn.errors import UsageError
-from unturn.kinematics import _motion, _symmetric
+from unturn.kinematics import _motion, _symmetric, _turning
 from unturn.kinematics._symmetric import Floats
 
 
@@ -180,7 +180,7 @@ def small_strain_error(H: ArrayLike) -> Floats:
     0.005382
     """
     array, batch = _first(H)
-    return _last(_motion.turning(array).error, batch)
+    return _last(_turning.turning(array).error, batch)
 
 
 def tensor_to_components(tensor: ArrayLike) -> Floats:
