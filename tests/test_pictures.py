@@ -20,6 +20,7 @@ from unturn.model import PlaneOptions, build_model
 from unturn.pictures import Camera, draw
 from unturn.pictures._camera import directions, fit
 from unturn.pictures._colours import ABOVE, BELOW, NO_VALUE, choose_range, colour_table
+from unturn.pictures._label import free_place
 from unturn.pictures._values import fitted_factor
 from unturn.result import CellBlock, Result
 
@@ -135,9 +136,7 @@ def test_every_cell_of_a_plane_mesh_has_the_colour_of_its_value(name, computed, 
     np.testing.assert_allclose(read_off, held, rtol=0, atol=(high - low) / 256)
 
 
-@pytest.mark.source(
-    "PyVista 0.49: ray_trace and find_closest_cell say which cell is seen"
-)
+@pytest.mark.source("PyVista 0.49: ray_trace and find_closest_cell say which cell is seen")
 @pytest.mark.parametrize("name", ["bracket.vtu", "bracket_tets.vtu"])
 def test_faces_of_curved_solids_have_the_colour_of_their_own_cell(name, computed, tmp_path):
     result, u = computed(name)
@@ -432,6 +431,20 @@ def test_the_camera_fits_the_model_into_its_box():
     np.testing.assert_array_equal(flat[0][0], [0, 0, 1])
 
 
+def test_a_label_finds_the_nearest_free_place():
+    taken = np.ones((400, 600), dtype=bool)
+    taken[20:80, 30:200] = False
+    left, top = free_place(taken, (260.0, 60.0), (100.0, 40.0), 30.0)
+    assert not taken[int(top) : int(top + 40) + 1, int(left) : int(left + 100) + 1].any()
+    taken[:] = False
+    left, top = free_place(taken, (300.0, 200.0), (100.0, 40.0), 30.0)
+    assert np.hypot(np.clip(300, left, left + 100) - 300, np.clip(200, top, top + 40) - 200) <= 31
+    left, top = free_place(taken, (595.0, 5.0), (100.0, 40.0), 30.0)
+    assert left >= 0
+    assert left + 100 < 600
+    assert top >= 0
+
+
 def test_nothing_is_cut_off_at_the_margin(tmp_path):
     result = squares().with_arrays(cell_data={"value": np.linspace(-1e6, 3e12, 24)})
     long = (
@@ -474,6 +487,7 @@ def test_only_the_picture_is_left_in_its_folder(tmp_path):
         ({"factor": 2.0}, "no displacement"),
         ({"size": (10, 10)}, "each side must be"),
         ({"colour_range": (2.0, 1.0)}, "colour range"),
+        ({"camera": Camera((0, 0, 1), (0, 1, 0), (0, 0, 0), 1.0, (700, 500))}, "made for 700 x 500"),
     ],
 )
 def test_requests_that_cannot_be_met_say_why(change, says, tmp_path):
