@@ -369,6 +369,7 @@ def test_meshes_of_every_dimension_are_drawn(kind, tmp_path):
     mesh.cell_data["value"] = np.arange(mesh.n_cells) + 1.0
     drawn = draw(result_from_vtk(mesh), "value", tmp_path / "p.png", size=SIZE)
     assert drawn.marks[0].position == mesh.n_cells - 1
+    assert drawn.marks[0].visible
     model = pixels_of(tmp_path / "p.png")[90:560, :740]
     assert (model < 240).any()
 
