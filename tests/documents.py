@@ -123,7 +123,9 @@ class Session:
     def _command(line: str, where: str) -> str:
         expected = _STATUS.search(line)
         status, said = run(spoken(_STATUS.sub("", line)))
-        assert status == (int(expected[1]) if expected else 0), f"{where}: exit status {status}: {line}\n{said}"
+        assert status == (int(expected[1]) if expected else 0), (
+            f"{where}: exit status {status}: {line}\n{said}"
+        )
         return said
 
 

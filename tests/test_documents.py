@@ -3,7 +3,8 @@
 from __future__ import annotations
 
 import pytest
-from documents import Session, Block, PAGES, compare
+
+from documents import PAGES, Block, Session, compare
 
 PRINTED = "bracket.vtu   704 cells\nlargest  836\n  where  element 5257 (cell 256)\n  at x, y, z  0.1, 0.2, 0.3\nend\n"
 
