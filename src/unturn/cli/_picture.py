@@ -5,7 +5,7 @@ from __future__ import annotations
 from pathlib import Path
 
 from unturn._api import add_fields
-from unturn.summary import Summary
+from unturn.summary import Summary, equivalent_form
 
 
 def draw_summary(summary: Summary, path: Path) -> str:
@@ -29,6 +29,9 @@ def draw_summary(summary: Summary, path: Path) -> str:
         path,
         displacement=model.displacement.values,
         location={"mean": "mean over each element"}.get(summary.options.at, ""),
+        legend=f"equivalent strain\n{equivalent_form(summary.options.equivalent_poisson)}"
+        if array == "equivalent_strain"
+        else "",
         numbers=None if summary.numbers is None else summary.numbers.numbers,
     )
     return f"drew {drawing.path}: {array} on the shape deformed x {drawing.factor:g}"
