@@ -9,7 +9,7 @@ from __future__ import annotations
 from unturn.elements._detect import detect_spacing
 from unturn.elements._element import Element, FaceNodes
 from unturn.elements._lookup import ELEMENTS, FAMILIES, element, not_computable
-from unturn.elements._quadrature import Quadrature
+from unturn.elements._quadrature import Quadrature, rule_of_degree
 from unturn.elements._shape import Shape
 from unturn.elements._spacing import Spacing
 
@@ -24,4 +24,5 @@ __all__ = [
     "detect_spacing",
     "element",
     "not_computable",
+    "rule_of_degree",
 ]

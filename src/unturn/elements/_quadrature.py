@@ -8,7 +8,7 @@ from itertools import permutations, product
 
 import numpy as np
 
-from unturn.elements._shape import Floats, read_only
+from unturn.elements._shape import Floats, Shape, read_only
 
 
 @dataclass(frozen=True, eq=False)
@@ -143,3 +143,21 @@ def pyramid_rule(n: int) -> Quadrature:
     points = [[*(p * (1 - s)), s] for s in z for p in base.points]
     weights = [v * u for v in w for u in base.weights]
     return _rule(points, weights, 2 * n - 1)
+
+
+@lru_cache
+def rule_of_degree(shape: Shape, degree: int) -> Quadrature:
+    """Return a rule on a reference shape that is exact to at least `degree`."""
+    n = degree // 2 + 1
+    if shape.name == "triangle":
+        return triangle_rule(degree)
+    if shape.name == "tetra":
+        return tetra_rule(degree)
+    if shape.name == "wedge":
+        return wedge_rule(degree, n)
+    if shape.name == "pyramid":
+        return pyramid_rule(n)
+    box = box_rule(shape.dim, n)
+    low, high = shape.vertices.min(axis=0), shape.vertices.max(axis=0)
+    half = 0.5 * (high - low)
+    return _rule(low + (box.points + 1.0) * half, box.weights * float(half.prod()), box.degree)

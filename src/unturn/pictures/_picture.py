@@ -160,7 +160,7 @@ class Picture:
         steps = self.result.steps
         if steps is not None:
             value = written(steps.values[steps.current], 4)
-            parts.append(f"step {steps.current + 1} of {len(steps.values)} (at {value})")
+            parts.append(f"step {steps.current} (of 0 to {len(steps.values) - 1}), t = {value}")
         parts.append(f"{self.result.n_cells:,} cells".replace(",", " "))
         return "    ".join(parts)
 
