@@ -10,8 +10,10 @@ import numpy as np
 from numpy.typing import NDArray
 
 from unturn.errors import UsageError
+from unturn.frames import Frame, turned_components
 from unturn.gradient import (
     ElementChunk,
+    Plane,
     PointGradient,
     Samples,
     chunk_ranges,
@@ -25,6 +27,7 @@ from unturn.kinematics._turning import Turning
 from unturn.measures import GEOMETRY, MEASURES, Measure, Split, choose_measures
 from unturn.model import Model, ModelBlock
 from unturn.precision import storage_resolution
+from unturn.thermal import Thermal
 
 Location = Literal["centroid", "mean"]
 LOCATIONS: tuple[Location, ...] = ("centroid", "mean")
@@ -73,6 +76,8 @@ class CellFields:
         The model they were computed on.
     arrays
         Measure name -> `(n_cells,)` or `(n_cells, components)` float64 in file order; NaN where not computed.
+    components
+        Measure name -> names of its components, in the frame that was asked for; scalars are not in it.
     left_out
         ``{reason: file positions}``, the model's and those found on the way: tangled, without volume, not finite.
     mirrored
@@ -83,6 +88,7 @@ class CellFields:
 
     model: Model
     arrays: dict[str, Floats]
+    components: dict[str, tuple[str, ...]] = field(default_factory=dict)
     left_out: dict[str, NDArray[np.int64]] = field(default_factory=dict)
     mirrored: int = 0
     diagnostics: CellDiagnostics | None = None
@@ -95,6 +101,8 @@ def compute_fields(
     base: str = "small",
     at: Location = "centroid",
     equivalent_poisson: float | None = None,
+    frame: Frame | None = None,
+    thermal: Thermal | None = None,
     threads: int | None = None,
     diagnose: bool = False,
 ) -> CellFields:
@@ -113,6 +121,10 @@ def compute_fields(
         ``centroid``, or ``mean``: the volume mean of the gradient, from which the rest is derived.
     equivalent_poisson
         Effective Poisson ratio of the equivalent strain; None for `sqrt(2/3 e':e')`.
+    frame
+        Frame of the components; None for the axes of the file.
+    thermal
+        Free thermal strain to take out of the mechanical strain.
     threads
         Number of threads; None for all processors.
     diagnose
@@ -123,11 +135,16 @@ def compute_fields(
     UsageError
         A measure that depends on the unstated third direction of a plane mesh.
     """
-    names = choose_measures(measures, base)
+    names = choose_measures(measures, base, mechanical=thermal is not None)
     if at not in LOCATIONS:
         raise UsageError(f"at={at!r} is not known; use one of {', '.join(LOCATIONS)}.")
     _check_third_direction(model, names)
-    job = _Job(model, names, at, equivalent_poisson, diagnose)
+    if thermal is not None and not thermal.isotropic and model.plane is not None and model.plane.model == "stress":
+        raise UsageError(
+            "plane stress with an expansion that differs by direction is not supported: the strain across the plane "
+            "would need the elastic constants."
+        )
+    job = _Job(model, names, at, equivalent_poisson, diagnose, frame, thermal)
     for block in model.blocks:
         if block.row is not None and len(block.active):
             job.run(block, threads)
@@ -155,9 +172,17 @@ class _Job:
     """The arrays being filled."""
 
     def __init__(
-        self, model: Model, names: Sequence[str], at: Location, poisson: float | None, diagnose: bool
+        self,
+        model: Model,
+        names: Sequence[str],
+        at: Location,
+        poisson: float | None,
+        diagnose: bool,
+        frame: Frame | None,
+        thermal: Thermal | None,
     ) -> None:
         self.model, self.at, self.poisson = model, at, poisson
+        self.frame, self.thermal = frame, thermal
         self.measures: list[Measure] = [MEASURES[n] for n in names if n in MEASURES]
         self.directions = any(m.directions for m in self.measures)
         self.needs_finite = (
@@ -198,13 +223,18 @@ class _Job:
                 else index[start:stop]
             )
             with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
-                chunk = ElementChunk(self.model.fields, connectivity[start:stop], row, self.model.plane)
-                self._chunk(chunk, place, rule, rows)
+                chunk = self.model.chunk(block, connectivity[start:stop], index[start:stop])
+                self._chunk(chunk, place, rule, rows, connectivity[start:stop])
 
         over_chunks(work, chunk_ranges(len(index), connectivity.shape[1]), threads)
 
     def _chunk(
-        self, chunk: ElementChunk, place: Samples, rule: Samples, rows: slice | NDArray[np.int64]
+        self,
+        chunk: ElementChunk,
+        place: Samples,
+        rule: Samples,
+        rows: slice | NDArray[np.int64],
+        connectivity: NDArray[np.int64],
     ) -> None:
         point = chunk.at(place.gradients[0], place.functions[0])
         low, high, volume = self._geometry(chunk, point, rule)
@@ -226,9 +256,16 @@ class _Job:
                 finite = mean_gradient(chunk, rule, finite=True)[0] if mean else chunk.finite(point)
                 if status is not None:
                     finite[:, :, status != _OK] = np.nan
-        split = Split(H, self.poisson, self.directions, finite)
+        axes = self._axes(chunk, place, rows)
+        free = None
+        if self.thermal is not None:
+            free = self.thermal.free_strain(rows, connectivity, place.functions[0], axes)
+            H = _with_thermal_thickness(H, free, self.model.plane)
+        split = Split(H, self.poisson, self.directions, finite, free)
         for measure in self.measures:
             values = measure.compute(split)
+            if axes is not None and measure.turns:
+                values = turned_components(values, axes)
             self.arrays[measure.name][rows] = values.T if values.ndim == 2 else values
         if "element_volume" in self.arrays:
             self.arrays["element_volume"][rows] = volume
@@ -236,6 +273,14 @@ class _Job:
             self.arrays["jacobian_min_over_max"][rows] = np.where(high < 0, high / low, low / high)
         if self.diagnostics is not None:
             self._diagnose(chunk, point, split, place, volume, rows)
+
+    def _axes(
+        self, chunk: ElementChunk, place: Samples, rows: slice | NDArray[np.int64]
+    ) -> Floats | None:
+        if self.frame is None:
+            return None
+        centroid = np.stack([chunk.interpolate(place.functions[0], i) for i in range(3)])
+        return self.frame.axes(centroid, rows)
 
     def _geometry(
         self, chunk: ElementChunk, point: PointGradient, rule: Samples
@@ -317,7 +362,28 @@ class _Job:
             cells = np.flatnonzero(self.status == code)
             if len(cells):
                 left_out[reason] = cells
-        return CellFields(self.model, self.arrays, left_out, int(self.mirrored.sum()), self.diagnostics)
+        components = {
+            m.name: self.frame.component_names(len(m.components)) if self.frame and m.turns else m.components
+            for m in self.measures
+            if m.components
+        }
+        return CellFields(
+            self.model, self.arrays, components, left_out, int(self.mirrored.sum()), self.diagnostics
+        )
+
+
+def _with_thermal_thickness(H: Floats, free: Floats, plane: Plane | None) -> Floats:
+    """Return H with the strain across a plane-stress mesh that the free expansion adds.
+
+    The mechanical strain across is `-nu/(1-nu)` times the mechanical strain in the plane; the total has the free strain
+    on top: `(1+nu)/(1-nu)` times it more than without.
+    """
+    if plane is None or plane.model != "stress":
+        return H
+    assert plane.poisson is not None
+    H = H.copy()
+    H[plane.normal, plane.normal] += (1.0 + plane.poisson) / (1.0 - plane.poisson) * free[plane.normal]
+    return H
 
 
 def _same_side(point: PointGradient, here: PointGradient) -> Floats:

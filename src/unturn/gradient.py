@@ -110,8 +110,23 @@ class ElementChunk:
     """Some elements of one block, gathered."""
 
     def __init__(
-        self, fields: NodalFields, connectivity: NDArray[np.int64], row: Element, plane: Plane | None
+        self,
+        fields: NodalFields,
+        connectivity: NDArray[np.int64],
+        row: Element,
+        plane: Plane | None,
+        back: Floats | None = None,
     ) -> None:
+        """Gather elements.
+
+        Parameters
+        ----------
+        fields, connectivity, row, plane
+            Nodal values, `(m, n_nodes)` nodes, their element, and the plane of the mesh.
+        back
+            `(2, 3, 3)` or `(2, 3, 3, m)`: a rigid motion to take out. To the displacements relative to the first node
+            are added the first tensor times the coordinates and the second times the displacements.
+        """
         self.row, self.plane = row, plane
         nodes = np.ascontiguousarray(connectivity.T)
         values = np.empty((6, *nodes.shape))
@@ -119,6 +134,11 @@ class ElementChunk:
             fields.rows[k].take(nodes, out=values[k], mode="clip")
         self.first = values[:, 0]
         self.relative = values[:, 1:] - values[:, :1]
+        if back is not None:
+            form = "ij,jam->iam" if back.ndim == 3 else "ijm,jam->iam"
+            change = np.einsum(form, back[0], self.relative[:3])
+            change += np.einsum(form, back[1], self.relative[3:])
+            self.relative[3:] += change
 
     def __len__(self) -> int:
         return int(self.first.shape[1])

@@ -34,6 +34,8 @@ class Split:
         Whether principal directions will be asked for.
     finite_H
         `(3, 3, n)` gradient with the completion for finite measures, when it differs from H.
+    free
+        `(6, n)` free thermal strain, for the mechanical strain.
     """
 
     def __init__(
@@ -42,11 +44,13 @@ class Split:
         poisson: float | None = None,
         directions: bool = False,
         finite_H: Floats | None = None,
+        free: Floats | None = None,
     ) -> None:
         self.H = H
         self.poisson = poisson
         self._directions = directions
         self._finite_H = finite_H if finite_H is not None else H
+        self._free = free
 
     @cached_property
     def strain(self) -> Floats:
@@ -67,6 +71,17 @@ class Split:
     def principal(self) -> Floats:
         """Principal values, `(3, n)`."""
         return self.eigen[0] if self._directions else _symmetric.eigenvalues(self.strain)
+
+    @cached_property
+    def mechanical(self) -> Floats:
+        """Strain less the free thermal strain, `(6, n)`."""
+        assert self._free is not None
+        return self.strain - self._free
+
+    @cached_property
+    def mechanical_eigen(self) -> tuple[Floats, Floats]:
+        """Principal values and directions of the mechanical strain."""
+        return _symmetric.eigen(self.mechanical)
 
     @cached_property
     def finite_H(self) -> Floats:
@@ -115,6 +130,8 @@ class Measure:
         Whether it needs principal directions.
     finite
         Whether it is a finite measure: real only for a geometrically nonlinear solve.
+    mechanical
+        Whether it needs a free thermal strain.
     base
         The small measure it replaces when a finite base is asked for; empty for those that have no counterpart.
     """
@@ -129,7 +146,13 @@ class Measure:
     source: Source
     directions: bool = False
     finite: bool = False
+    mechanical: bool = False
     base: str = ""
+
+    @property
+    def turns(self) -> bool:
+        """Whether its components depend on the frame; principal values do not, directions stay in the file's axes."""
+        return bool(self.components) and not self.name.startswith("principal_")
 
 
 _ELASTICITY = Source("published", "Timoshenko and Goodier, Theory of Elasticity, chapters 1 and 7")
@@ -233,6 +256,38 @@ def _finite_motion() -> list[Measure]:
     ]  # fmt: skip
 
 
+def _mechanical_rows() -> list[Measure]:
+    word = "mechanical strain (total less free thermal strain)"
+    source = Source("published", "Timoshenko and Goodier, Theory of Elasticity, chapter 13")
+
+    def row(name: str, components: tuple[str, ...], compute: Callable[[Split], Floats], unit: str, signed: bool,
+            meaning: str) -> Measure:  # fmt: skip
+        return Measure(name, components, compute, unit, True, signed, meaning, source, mechanical=True)
+
+    return [
+        row("mechanical_strain", TENSOR, lambda s: s.mechanical, "strain", True, word),
+        row("equivalent_strain_mechanical", (), lambda s: _motion.equivalent(s.mechanical, s.poisson), "strain", False,
+            f"equivalent strain of the {word}"),
+        row("principal_strain_mechanical", PRINCIPAL, lambda s: s.mechanical_eigen[0], "strain", True,
+            f"principal values of the {word}, largest first"),
+        *(
+            row(f"principal_direction_{k + 1}_mechanical", VECTOR, _mechanical_direction(k), "1", True,
+                f"unit direction of principal value {k + 1} of the {word}")
+            for k in range(3)
+        ),
+        row("max_shear_strain_mechanical", (), lambda s: s.mechanical_eigen[0][0] - s.mechanical_eigen[0][2], "strain",
+            False, f"largest engineering shear of the {word}"),
+        row("volumetric_strain_mechanical", (), lambda s: s.mechanical[0] + s.mechanical[1] + s.mechanical[2],
+            "strain", True, f"trace of the {word}"),
+        row("deviatoric_strain_mechanical", TENSOR, lambda s: _motion.deviator(s.mechanical), "strain", True,
+            f"{word} less a third of its trace"),
+    ]  # fmt: skip
+
+
+def _mechanical_direction(k: int) -> Callable[[Split], Floats]:
+    return lambda s: s.mechanical_eigen[1][k]
+
+
 SMALL: dict[str, Measure] = _table()
 """The measures of the small-strain split."""
 
@@ -240,6 +295,7 @@ MEASURES: dict[str, Measure] = {
     **SMALL,
     **{row.name: row for row in _finite_motion()},
     **{row.name: row for base in BASES for row in _finite_rows(base)},
+    **{row.name: row for row in _mechanical_rows()},
 }
 """Every measure of the gradient."""
 
@@ -250,9 +306,12 @@ GEOMETRY: dict[str, str] = {
 """Measures of the mesh alone."""
 
 DEFAULT_MEASURES = ("strain", "rotation", "equivalent_strain", "principal_strain")
+DEFAULT_MECHANICAL = ("mechanical_strain", "equivalent_strain_mechanical", "principal_strain_mechanical")
 
 
-def choose_measures(names: Sequence[str] | None, base: str = "small") -> tuple[str, ...]:
+def choose_measures(
+    names: Sequence[str] | None, base: str = "small", mechanical: bool = False
+) -> tuple[str, ...]:
     """Return the names asked for, in table order, without repeats.
 
     Parameters
@@ -261,11 +320,13 @@ def choose_measures(names: Sequence[str] | None, base: str = "small") -> tuple[s
         Array names; ``all`` is every small measure. None: the default set.
     base
         ``small``, or a finite base: each small measure is then replaced by its counterpart of that base.
+    mechanical
+        Whether a free thermal strain is given: the default set then has the mechanical strain too.
 
     Raises
     ------
     UsageError
-        A name or base that is not in the table.
+        A name or base that is not in the table, or a mechanical measure without a free thermal strain.
 
     Examples
     --------
@@ -277,9 +338,11 @@ def choose_measures(names: Sequence[str] | None, base: str = "small") -> tuple[s
     known = [*MEASURES, *GEOMETRY]
     counterpart = _counterparts(base)
     wanted: set[str] = set()
-    for name in names or DEFAULT_MEASURES:
+    for name in names or (*DEFAULT_MEASURES, *(DEFAULT_MECHANICAL if mechanical else ())):
         if name == "all":
             wanted.update(counterpart.get(k, k) for k in (*SMALL, *GEOMETRY))
+            if mechanical:
+                wanted.update(k for k, m in MEASURES.items() if m.mechanical)
         elif name in known:
             wanted.add(counterpart.get(name, name))
         else:
@@ -287,6 +350,12 @@ def choose_measures(names: Sequence[str] | None, base: str = "small") -> tuple[s
                 f"no measure is called {name!r}.{close_matches(name, [*known, 'all'])} "
                 f"Measures: {', '.join((*SMALL, *GEOMETRY))}, or all; finite ones: {', '.join(_finite_names())}."
             )
+    bound = [k for k in wanted if k in MEASURES and MEASURES[k].mechanical]
+    if bound and not mechanical:
+        raise UsageError(
+            f"{min(bound)} needs the free thermal strain: give --thermal-expansion, --temperature and "
+            "--reference-temperature."
+        )
     return tuple(k for k in known if k in wanted)
 
 

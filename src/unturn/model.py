@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from typing import Literal
 
 import numpy as np
@@ -13,7 +13,7 @@ from scipy import sparse
 from unturn.displacement import Displacement, find_displacement
 from unturn.elements import Element, detect_spacing, element, not_computable
 from unturn.errors import InputError, UsageError
-from unturn.gradient import NodalFields, Plane, PlaneModel
+from unturn.gradient import ElementChunk, NodalFields, Plane, PlaneModel
 from unturn.kinematics._symmetric import Floats
 from unturn.midside import misplaced_mid_nodes
 from unturn.result import CellBlock, Result
@@ -88,6 +88,10 @@ class Model:
         ``{reason: file positions}`` of cells that are not computed.
     notes
         Sentences for the user.
+    back
+        `(k, 2, 3, 3)` rigid motions to take out, see `ElementChunk`.
+    back_of
+        `(n_cells,)` which of them, -1 for none; None when there are none.
     """
 
     result: Result
@@ -98,6 +102,27 @@ class Model:
     plane: Plane | None
     left_out: Mapping[str, NDArray[np.int64]] = field(default_factory=dict)
     notes: tuple[str, ...] = ()
+    back: Floats | None = None
+    back_of: NDArray[np.int64] | None = None
+
+    def chunk(self, block: ModelBlock, connectivity: NDArray[np.int64], index: NDArray[np.int64]) -> ElementChunk:
+        """Return some elements of a block, gathered, without the rigid motions that are to be taken out."""
+        assert block.row is not None
+        back = None
+        if self.back is not None and self.back_of is not None:
+            which = self.back_of[index]
+            if (which >= 0).any():
+                same = bool((which == which[0]).all())
+                tensors = np.concatenate([self.back, np.zeros((1, 2, 3, 3))])
+                back = tensors[which[0]] if same else np.ascontiguousarray(np.moveaxis(tensors[which], 0, -1))
+        return ElementChunk(self.fields, connectivity, block.row, self.plane, back)
+
+    def only(self, cells: NDArray[np.int64]) -> Model:
+        """Return the model with these cells alone computed; the others count neither as computed nor as left out."""
+        mask = np.zeros(self.result.n_cells, dtype=bool)
+        mask[cells] = True
+        blocks = tuple(replace(b, active=b.active[mask[b.index]]) for b in self.blocks)
+        return replace(self, blocks=blocks, left_out={})
 
     @property
     def dimension(self) -> int:

@@ -7,7 +7,7 @@ rotation for a nonlinear one.
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, replace
 from typing import Literal
 
@@ -60,6 +60,71 @@ class Axis:
 
     point: Floats
     direction: Floats
+
+
+@dataclass(frozen=True, eq=False)
+class Removal:
+    """A rigid motion that was taken out.
+
+    Attributes
+    ----------
+    fitted, applied
+        Names of the parts over which it was fitted, and from which it was taken.
+    motion
+        What was taken out.
+    other
+        The motion of the other kind of fit, for its residual; None when the kind of solve is known.
+    """
+
+    fitted: str
+    applied: str
+    motion: RigidMotion
+    other: RigidMotion | None
+
+
+def take_out(
+    model: Model,
+    parts: Sequence[tuple[str, NDArray[np.int64], str, NDArray[np.int64]]],
+    solve: Literal["linear", "nonlinear", "unknown"],
+    axis: Axis | None = None,
+) -> tuple[Model, tuple[Removal, ...]]:
+    """Return the model without the rigid motions of some parts, and what was taken out.
+
+    Parameters
+    ----------
+    model
+        The model.
+    parts
+        For each motion: name and cells over which it is fitted, name and cells from which it is taken.
+    solve
+        ``linear``: the linearised fit; ``nonlinear``: the best proper rotation; ``unknown``: both are fitted, and the
+        one that leaves less is taken out.
+    axis
+        A known axis of rotation instead of the full fit.
+    """
+    back, back_of, removals = [], np.full(model.result.n_cells, -1, dtype=np.int64), []
+    for number, (fitted, cells, applied, target) in enumerate(parts):
+        kinds: tuple[Fit, ...] = _KINDS[solve]
+        found = sorted((fit_rigid_motion(model, cells, kind, axis) for kind in kinds), key=lambda m: m.residual)
+        motion, other = found[0], found[1] if len(found) > 1 else None
+        back.append(_back(motion))
+        back_of[target] = number
+        removals.append(Removal(fitted, applied, motion, other))
+    return replace(model, back=np.array(back), back_of=back_of), tuple(removals)
+
+
+_KINDS: dict[str, tuple[Fit, ...]] = {
+    "linear": ("linearised",),
+    "nonlinear": ("finite",),
+    "unknown": ("finite", "linearised"),
+}
+
+
+def _back(motion: RigidMotion) -> Floats:
+    turn = motion.turn
+    if motion.fit == "linearised":
+        return np.array([-turn, np.zeros((3, 3))])
+    return np.array([turn.T, turn.T])
 
 
 def skew(vector: Floats) -> Floats:

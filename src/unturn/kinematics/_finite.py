@@ -18,6 +18,7 @@ from unturn.kinematics._symmetric import PAIRS, Floats, eigen, leading_sign, spe
 
 BASES = ("green_lagrange", "hencky", "biot", "almansi")
 
+_ROUNDING = 1e-15  # det F is not known better than this, times 1 + |H|^2
 _FLATTENED = 0.1  # a squared stretch below this is taken from the singular values of F
 
 
@@ -51,9 +52,10 @@ class Finite:
 
     @cached_property
     def _reversed(self) -> NDArray[np.bool_] | None:
-        """Where `det F` is not positive; None when nowhere."""
-        with np.errstate(invalid="ignore"):
-            reversed_: NDArray[np.bool_] = self.det_f <= 0
+        """Where `det F` is not positive, to rounding; None when nowhere."""
+        with np.errstate(invalid="ignore", over="ignore"):
+            size = 1.0 + (self.H * self.H).sum(axis=(0, 1))
+            reversed_: NDArray[np.bool_] = self.det_f <= _ROUNDING * size
         return reversed_ if reversed_.any() else None
 
     def _proper(self, values: Floats) -> Floats:
