@@ -81,6 +81,8 @@ def _check_face_stream(
         if end != ends[cell]:
             raise file.fail(f"{where}the faces of the polyhedron in cell {int(cell)} do not fit their offset")
         start = end
+    if start != len(stream):
+        raise file.fail(f"{where}faces has {len(stream)} numbers and its polyhedra take {start}")
 
 
 def _faces(stream: Any, start: int) -> Iterator[tuple[int, Any]]:
