@@ -19,7 +19,7 @@ from unturn.gradient import (
     over_chunks,
     sample_points,
 )
-from unturn.kinematics._motion import Turning
+from unturn.kinematics._motion import Turning, relative_volume_change
 from unturn.kinematics._symmetric import Floats
 from unturn.measures import GEOMETRY, MEASURES, Measure, Split, choose_measures
 from unturn.model import Model, ModelBlock
@@ -41,6 +41,8 @@ class CellDiagnostics:
         See `unturn.kinematics._motion.Turning`.
     noise
         Floor of the strain from the storage resolution.
+    det_f
+        Determinant of `F = I + H`; not above zero where the displacement turns the element inside out.
     principal
         `(n_cells, 2)` largest and smallest principal strain.
     centroid
@@ -54,6 +56,7 @@ class CellDiagnostics:
     stretch: Floats
     angle: Floats
     noise: Floats
+    det_f: Floats
     principal: Floats
     centroid: Floats
     dimension: NDArray[np.int8]
@@ -163,9 +166,10 @@ class _Job:
         self.mirrored = np.zeros(n, dtype=bool)
         self.diagnostics: CellDiagnostics | None = None
         if diagnose:
-            blank = [np.full(n, np.nan) for _ in range(5)]
+            volume, error, stretch, angle, noise, det_f = (np.full(n, np.nan) for _ in range(6))
+            principal, centroid = np.full((n, 2), np.nan), np.full((n, 3), np.nan)
             self.diagnostics = CellDiagnostics(
-                *blank, np.full((n, 2), np.nan), np.full((n, 3), np.nan), np.zeros(n, dtype=np.int8)
+                volume, error, stretch, angle, noise, det_f, principal, centroid, np.zeros(n, dtype=np.int8)
             )
             stored = model.displacement.stored
             self.resolution_u = max(storage_resolution(a).relative for a in stored)
@@ -177,7 +181,7 @@ class _Job:
         place = sample_points(row, "centroid")
         rule = sample_points(row, "mean")
         connectivity, index = block.connectivity, block.index
-        consecutive = len(index) == int(index[-1] - index[0]) + 1
+        consecutive = bool((np.diff(index) == 1).all())
 
         def work(start: int, stop: int) -> None:
             rows = (
@@ -197,20 +201,23 @@ class _Job:
         point = chunk.at(place.gradients[0], place.functions[0])
         low, high, volume = self._geometry(chunk, point, rule)
         H = point.H
-        if self.at == "mean" and len(rule.weights) > 1:
+        mean = self.at == "mean" and len(rule.weights) > 1
+        if mean:
             H, volume = mean_gradient(chunk, rule)
         status = self._status(chunk, point, low, high)
-        bad = status != _OK
-        spoiled = bool(bad.any())
-        if spoiled:
-            H[:, :, bad] = np.nan
+        if status is not None:
+            H[:, :, status != _OK] = np.nan
+            volume = np.where(status == _TANGLED, np.nan, volume)
             self.status[rows] = status
-        self.mirrored[rows] = high < 0
+        if chunk.row.dim == 3:
+            self.mirrored[rows] = high < 0
         finite = None
         if self.diagnostics is not None or "small_strain_error" in self.arrays:
-            finite = chunk.finite(
-                PointGradient(H, point.measure, point.weight, point.inverse, point.tangents)
-            )
+            finite = H
+            if chunk.row.dim < 3:
+                finite = mean_gradient(chunk, rule, finite=True)[0] if mean else chunk.finite(point)
+                if status is not None:
+                    finite[:, :, status != _OK] = np.nan
         split = Split(H, self.poisson, self.directions, finite)
         for measure in self.measures:
             values = measure.compute(split)
@@ -220,7 +227,6 @@ class _Job:
         if "jacobian_min_over_max" in self.arrays:
             self.arrays["jacobian_min_over_max"][rows] = np.where(high < 0, high / low, low / high)
         if self.diagnostics is not None:
-            volume[status == _TANGLED] = np.nan
             self._diagnose(chunk, point, split, place, volume, rows)
 
     def _geometry(
@@ -253,9 +259,16 @@ class _Job:
         return low, high, volume
 
     @staticmethod
-    def _status(chunk: ElementChunk, point: PointGradient, low: Floats, high: Floats) -> NDArray[np.uint8]:
+    def _status(
+        chunk: ElementChunk, point: PointGradient, low: Floats, high: Floats
+    ) -> NDArray[np.uint8] | None:
+        """Return the code of each cell, or None when all are sound."""
+        H = point.H.reshape(-1)
+        one_sign = low is high
+        if np.isfinite(np.einsum("i,i->", H, H)) and (one_sign or not ((low <= 0) & (high >= 0)).any()):
+            return None
         status = np.zeros(len(chunk), dtype=np.uint8)
-        status[(low < 0) & (high > 0)] = _TANGLED
+        status[(low <= 0) & (high >= 0)] = _TANGLED
         broken = ~np.isfinite(point.inverse[0, 0])
         status[broken] = _FLAT
         moved = chunk.relative[3:].sum(axis=(0, 1)) + chunk.first[3:].sum(axis=0)
@@ -276,10 +289,11 @@ class _Job:
         turning: Turning = split.turning
         d.volume[rows] = volume
         d.error[rows], d.stretch[rows], d.angle[rows] = turning.error, turning.stretch, turning.angle
+        d.det_f[rows] = 1.0 + relative_volume_change(split.finite_H)
         principal = split.principal
         d.principal[rows, 0], d.principal[rows, 1] = principal[0], principal[2]
         for i in range(3):
-            d.centroid[rows, i] = chunk.first[i] + place.functions[0, 1:] @ chunk.relative[i]
+            d.centroid[rows, i] = chunk.interpolate(place.functions[0], i)
         d.dimension[rows] = chunk.row.dim
         steepest = 1.0 / smallest_height(chunk, point)
         H_size = np.sqrt(np.nansum(split.H**2, axis=(0, 1)))
@@ -315,7 +329,7 @@ def smallest_height(chunk: ElementChunk, point: PointGradient) -> Floats:
     The gradient of a reference coordinate that varies by one over the shape is one over that distance.
     """
     covectors = chunk.row.shape.extents
-    squares = [(np.tensordot(g, point.inverse, axes=1) ** 2).sum(axis=0) for g in covectors]
+    squares = [(np.einsum("k,kjm->jm", g, point.inverse) ** 2).sum(axis=0) for g in covectors]
     height: Floats = 1.0 / np.sqrt(np.max(squares, axis=0))
     return height
 

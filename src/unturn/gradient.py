@@ -22,6 +22,8 @@ from unturn.kinematics._symmetric import Floats
 
 PlaneModel = Literal["strain", "stress", "axisymmetric"]
 
+# BLAS must not start threads of its own inside ours: matrix products stay below its threshold by the size of a chunk,
+# and products of vectors are left to einsum.
 _CHUNK = 8192
 _CHUNK_VALUES = 200_000  # nodes x elements x 6 values of a chunk: a megabyte and a half
 _FLAT = 1e-13  # a Jacobian below this share of the product of its columns belongs to a cell without volume
@@ -121,12 +123,18 @@ class ElementChunk:
     def __len__(self) -> int:
         return int(self.first.shape[1])
 
+    def interpolate(self, functions: Floats, row: int) -> Floats:
+        """Return coordinate `row` (0 to 2) or displacement `row - 3` `(m,)` at a point with these shape functions."""
+        value: Floats = self.first[row] + np.einsum("a,am->m", functions[1:], self.relative[row])
+        return value
+
     def tangents(self, gradients: Floats) -> Floats:
         """Return `(6, dim, m)`: coordinates and displacements differentiated by the reference coordinates."""
         rest = gradients[:, 1:]
         if rest.shape[0] == rest.shape[1] and np.array_equal(rest, np.eye(len(rest))):
             return self.relative
-        return np.matmul(rest, self.relative)
+        product: Floats = np.matmul(rest, self.relative)
+        return product
 
     def measure(self, gradients: Floats) -> Floats:
         """Return the signed Jacobian determinant `(m,)` of solids at a point with these shape gradients."""
@@ -176,8 +184,8 @@ class ElementChunk:
             H[k, k] = -nu / (1.0 - nu) * (H[a, a] + H[b, b])
         else:
             r = self.plane.radial
-            radius = self.first[r] + functions[1:] @ self.relative[r]
-            radial = self.first[3 + r] + functions[1:] @ self.relative[3 + r]
+            radius = self.interpolate(functions, r)
+            radial = self.interpolate(functions, 3 + r)
             on_axis = np.abs(radius) <= 1e-12 * np.abs(self.relative[r]).max(axis=0, initial=0.0)
             H[k, k] = np.where(on_axis, H[r, r], radial / np.where(on_axis, 1.0, radius))
             weight = weight * (2.0 * np.pi) * np.abs(radius)
@@ -238,17 +246,25 @@ def _product(U: Floats, inverse: Floats) -> Floats:
     return H
 
 
+def _flat(J: Floats, det: Floats) -> NDArray[np.bool_] | None:
+    """Return which cells have no volume; None when no cell can be flat: the smallest determinant is large enough."""
+    values = J.reshape(-1)
+    bound = _FLAT * (float(np.einsum("i,i->", values, values)) / 3.0) ** 1.5  # no smaller than _FLAT times the product of any columns
+    if float(np.abs(det).min(initial=np.inf)) > bound:
+        return None
+    squares = J * J
+    lengths = squares[0] + squares[1]
+    lengths += squares[2]
+    flat: NDArray[np.bool_] = det * det <= _FLAT**2 * (lengths[0] * lengths[1] * lengths[2])
+    return flat
+
+
 def _solid(mixed: Floats) -> PointGradient:
     J, U = mixed[:3], mixed[3:]
     C = _cofactors(J)
     det = _determinant(J, C)
-    squares = J * J
-    lengths = squares[0] + squares[1]
-    lengths += squares[2]
-    bound = lengths[0] * lengths[1]
-    bound *= lengths[2]
-    flat = det * det <= _FLAT**2 * bound
-    C /= np.where(flat, np.nan, det) if flat.any() else det
+    flat = _flat(J, det)
+    C /= det if flat is None else np.where(flat, np.nan, det)
     inverse = C.swapaxes(0, 1)
     return PointGradient(_product(U, inverse), det, np.abs(det), inverse)
 
@@ -427,7 +443,7 @@ def displacement_gradient(
 
     def work(start: int, stop: int) -> None:
         chunk = ElementChunk(fields, connectivity[start:stop], row, None)
-        if at == "mean":
+        if single and at == "mean":
             result[start:stop, 0] = np.moveaxis(mean_gradient(chunk, where)[0], -1, 0)
             return
         for q, (gradients, functions) in enumerate(zip(where.gradients, where.functions)):
@@ -470,14 +486,18 @@ def sample_points(row: Element, at: Any) -> Samples:
     return Samples(row.shape_functions(points), row.shape_gradients(points), weights, center)
 
 
-def mean_gradient(chunk: ElementChunk, samples: Samples) -> tuple[Floats, Floats]:
-    """Return the volume mean `(3, 3, m)` of the gradient and the volume `(m,)`."""
+def mean_gradient(chunk: ElementChunk, samples: Samples, finite: bool = False) -> tuple[Floats, Floats]:
+    """Return the volume mean `(3, 3, m)` of the gradient and the volume `(m,)`.
+
+    With `finite` it is the mean of `F - I` as finite measures complete it: along a curved surface the normal changes,
+    so the mean is completed point by point.
+    """
     total = np.zeros((3, 3, len(chunk)))
     volume = np.zeros(len(chunk))
     for gradients, functions, weight in zip(samples.gradients, samples.functions, samples.weights):
         point = chunk.at(gradients, functions)
         share = weight * point.weight
-        total += share * point.H
+        total += share * (chunk.finite(point) if finite else point.H)
         volume += share
     with np.errstate(invalid="ignore", divide="ignore"):
         total /= volume

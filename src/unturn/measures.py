@@ -67,15 +67,19 @@ class Split:
         return self.eigen[0] if self._directions else _symmetric.eigenvalues(self.strain)
 
     @cached_property
+    def finite_H(self) -> Floats:
+        """`F - I`, `(3, 3, n)`; a plane mesh whose third direction is not stated counts as not stretched across."""
+        H = self._finite_H
+        for k in range(3):
+            if np.isnan(H[k, k]).all():
+                H = H.copy()
+                H[k, k] = 0.0
+        return H
+
+    @cached_property
     def turning(self) -> _motion.Turning:
         """Error, size and angle of the small-strain split."""
-        H = self._finite_H
-        if np.isnan(H[2, 2]).all() or np.isnan(H[1, 1]).all() or np.isnan(H[0, 0]).all():
-            H = H.copy()  # a plane mesh whose third direction is not stated: it does not turn
-            for k in range(3):
-                if np.isnan(H[k, k]).all():
-                    H[k, k] = 0.0
-        return _motion.turning(H)
+        return _motion.turning(self.finite_H)
 
 
 @dataclass(frozen=True)

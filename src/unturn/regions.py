@@ -9,9 +9,6 @@ from typing import Literal
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy import sparse
-from scipy.sparse.csgraph import connected_components
-from scipy.spatial import cKDTree
 
 from unturn.errors import UsageError, close_matches
 from unturn.kinematics._symmetric import Floats
@@ -106,28 +103,37 @@ def bodies(model: Model, cells: NDArray[np.bool_]) -> list[Region]:
 
     A single body, or more than fifty, gives an empty list: the whole is then the better unit.
     """
-    label = np.arange(model.result.n_points)
-    shared = _shares_nodes(model, cells)
+    from scipy import sparse
+    from scipy.sparse.csgraph import connected_components
+
+    used, shared = _used_nodes(model, cells)
+    label = None
     if not shared:
-        label, _ = merge_coincident(model.points)
-    n = model.result.n_points
-    heads, tails, first, index = [], [], [], []
+        where = np.flatnonzero(used)  # a node of no cell may lie anywhere
+        label = np.arange(model.result.n_points)
+        label[where] = where[merge_coincident(model.points[where])[0]]
+    nodes, lengths, index = [], [], []
     for block in model.blocks:
         if block.row is None:
             continue
         mask = cells[block.index]
-        conn = label[block.connectivity if mask.all() else block.connectivity[mask]]
-        first.append(conn[:, 0])
+        corners = block.connectivity[:, : block.row.n_corners]
+        corners = corners if mask.all() else corners[mask]
+        nodes.append((corners if label is None else label[corners]).reshape(-1).astype(np.int32))
+        lengths.append(np.full(len(corners), corners.shape[1]))
         index.append(block.index if mask.all() else block.index[mask])
-        corners = conn[:, : block.row.n_corners]
-        for k in range(1, corners.shape[1]):
-            heads.append(conn[:, 0])
-            tails.append(corners[:, k])
-    rows, cols = np.concatenate(heads), np.concatenate(tails)
-    graph = sparse.csr_array((np.ones(len(rows), dtype=np.int8), (rows, cols)), shape=(n, n))
-    _, part = connected_components(graph, directed=False)
     positions = np.concatenate(index)
-    part_of_cell = part[np.concatenate(first)]
+    # a graph of points, then cells, each cell joined to its corners
+    n, n_cells = model.result.n_points, len(positions)
+    ends = np.concatenate([np.zeros(n + 1, dtype=np.int64), np.cumsum(np.concatenate(lengths))]).astype(
+        np.int32
+    )
+    joined = np.concatenate(nodes)
+    graph = sparse.csr_array(
+        (np.ones(len(joined), dtype=np.int8), joined, ends), shape=(n + n_cells, n + n_cells)
+    )
+    _, part = connected_components(graph, directed=False)
+    part_of_cell = part[n:]
     distinct, inverse, counts = np.unique(part_of_cell, return_inverse=True, return_counts=True)
     if not 1 < len(distinct) <= _MOST_BODIES:
         return []
@@ -137,7 +143,8 @@ def bodies(model: Model, cells: NDArray[np.bool_]) -> list[Region]:
     ]
 
 
-def _shares_nodes(model: Model, cells: NDArray[np.bool_]) -> bool:
+def _used_nodes(model: Model, cells: NDArray[np.bool_]) -> tuple[NDArray[np.bool_], bool]:
+    """Return which nodes the cells have, and whether any two cells share one (or there is only one cell)."""
     seen = np.zeros(model.result.n_points, dtype=bool)
     total = 0
     for block in model.blocks:
@@ -145,11 +152,15 @@ def _shares_nodes(model: Model, cells: NDArray[np.bool_]) -> bool:
             conn = block.connectivity[cells[block.index]]
             seen[conn] = True
             total += conn.size
-    return total != int(seen.sum()) or int(cells.sum()) == 1
+    return seen, total != int(seen.sum()) or int(cells.sum()) == 1
 
 
 def merge_coincident(points: Floats) -> tuple[NDArray[np.int64], float]:
     """Return for each point the smallest position among coincident points, and the tolerance used."""
+    from scipy import sparse
+    from scipy.sparse.csgraph import connected_components
+    from scipy.spatial import cKDTree
+
     finite = np.isfinite(points).all(axis=1)
     spread = float(np.ptp(points[finite], axis=0).max()) if finite.any() else 0.0
     tolerance = 1e-9 * spread

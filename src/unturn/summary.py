@@ -147,6 +147,12 @@ def _warnings(fields: CellFields, d: CellDiagnostics, regions: list[RegionSummar
         )
     elif 0 < largest < 1e-8:
         found.append(f"strain of {largest:.3g} is very small: check the unit of the displacement, --displacement-scale")
+    inside_out = int((d.det_f <= 0).sum())
+    if inside_out:
+        found.append(
+            f"{inside_out} cells are turned inside out (det F <= 0): a wrong unit or sign of the displacement, "
+            "coordinates that are already deformed (--coordinates deformed), or a failed solve"
+        )
     for r in regions:
         if 0 < r.verdict.size < 20 * r.verdict.noise:
             found.append(

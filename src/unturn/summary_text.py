@@ -131,6 +131,7 @@ def _table(summary: Summary) -> list[str]:
     if len(shown) > _MOST_COLUMNS:
         shown = tuple(sorted(shown, key=lambda r: -_peak(r))[:_MOST_COLUMNS])
     unit = "microstrain" + (" per unit amplitude" if summary.options.mode else "")
+    digits = _digits(summary)
     rows: list[list[str]] = [[unit, *(r.region.name for r in shown)]]
     for label, name, which in _ROWS:
         instead = name.startswith("strain_") and "principal_strain_1" in shown[0].statistics
@@ -139,7 +140,7 @@ def _table(summary: Summary) -> list[str]:
         rows.append([label, *(_micro(getattr(r.statistics[name], which)) for r in shown)])
         at = f"at_{which}"
         rows.append(["  where", *(_where(getattr(r.statistics[name], at), summary) for r in shown)])
-        rows.append(["  at x, y, z", *(_position(getattr(r.statistics[name], at), summary) for r in shown)])
+        rows.append(["  at x, y, z", *(_position(getattr(r.statistics[name], at), summary, digits) for r in shown)])
         if not summary.options.mode:
             rows.append(["  error there", *(_error(getattr(r.statistics[name], at), r, summary) for r in shown)])
     if any(math.isfinite(_percentile(r)) for r in shown):
@@ -182,12 +183,17 @@ def _where(cell: int, summary: Summary) -> str:
     return f"element {summary.numbers.numbers[cell]} (cell {cell})"
 
 
-def _position(cell: int, summary: Summary) -> str:
+def _digits(summary: Summary) -> int:
+    """Return how many decimals tell a position to a ten-thousandth of the model's size."""
+    points = summary.fields.model.points
+    extent = float(np.nanmax(np.nanmax(points, axis=0) - np.nanmin(points, axis=0)))
+    return max(0, 4 - math.ceil(math.log10(extent))) if 0 < extent < math.inf else 3
+
+
+def _position(cell: int, summary: Summary, digits: int) -> str:
     d = summary.fields.diagnostics
     if cell < 0 or d is None:
         return "-"
-    extent = float(np.nanmax(np.ptp(d.centroid[np.isfinite(d.centroid[:, 0])], axis=0)))
-    digits = max(0, 3 - math.floor(math.log10(extent))) if extent > 0 else 3
     return ", ".join(f"{x + 0.0:.{digits}f}" if digits < 9 else f"{x:.4g}" for x in d.centroid[cell])
 
 

@@ -221,6 +221,14 @@ def _problems(model: Model, fields: CellFields, found: Mapping[str, Any]) -> lis
                 f"{len(bad)} {block.cells.cell_type} cells have a negative Jacobian at a node though not inside "
                 f"(first: cell {int(bad[0])}): their strain is computed, but they are strongly distorted"
             )
+    assert fields.diagnostics is not None
+    inside_out = np.flatnonzero(fields.diagnostics.det_f <= 0)
+    if len(inside_out):
+        said.append(
+            f"{len(inside_out)} cells are turned inside out by the displacement (det F <= 0; first: cell "
+            f"{int(inside_out[0])}): a wrong unit or sign, coordinates that are already deformed (--coordinates "
+            "deformed), or a failed solve"
+        )
     return said + _magnitudes(model, found)
 
 

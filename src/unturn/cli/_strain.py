@@ -179,9 +179,9 @@ class _Job:
         for sentence in lost:
             typer.echo(f"note: {sentence}")
         if self.picture is not None:
-            from unturn.cli._picture import draw_equivalent
+            from unturn.cli._picture import draw_summary
 
-            typer.echo(draw_equivalent(summary, self.picture))
+            typer.echo(draw_summary(summary, self.picture))
 
     def _data(self, summary: Summary, out: Path) -> dict[str, Any]:
         from unturn.summary import summary_data

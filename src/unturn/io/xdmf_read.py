@@ -20,6 +20,7 @@ from unturn.result import Array, Association, Result, Steps
 
 # Source: VTK 9.7, vtkDataSetAttributes.h, CellGhostTypes.
 _GHOSTS, _GHOST_BITS = "vtkGhostType", {1: "ghost", 8: "refined", 32: "hidden"}
+_MAX_GRIDS = 200_000
 _IN_GRID = {"Topology", "Geometry", "Attribute", "Set", "Time", "Information", "DataItem"}
 
 
@@ -65,6 +66,7 @@ class XdmfFile:
         self.path = str(path)
         self._tree = XdmfTree(path)
         self._notes: list[str] = []
+        self._walked = 0
         self._still, series = self._sort_grids()
         self._steps = _join_series(series)
         values = tuple(self._steps)
@@ -158,8 +160,11 @@ class XdmfFile:
                 yield self._tree.resolve(child)
 
     def _uniform(self, grid: Node, depth: int) -> Iterator[Node]:
-        if depth > MAX_DEPTH:
-            raise fault(grid, "Grids nested too deep, or in a circle.")
+        self._walked += 1
+        if depth > MAX_DEPTH or self._walked > _MAX_GRIDS:
+            raise fault(
+                grid, f"Grids nested more than {MAX_DEPTH} deep, more than {_MAX_GRIDS}, or in a circle."
+            )
         kind = attribute(grid, "GridType", default="Uniform").lower()
         if kind == "uniform":
             for child in self._tree.children(grid):

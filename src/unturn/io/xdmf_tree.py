@@ -16,7 +16,8 @@ from unturn.errors import InputError
 
 MAX_DEPTH = 16
 MAX_NESTING = 64
-MAX_INCLUDED = 2_000_000
+MAX_INCLUDED = 200_000
+MAX_SEARCHED = 100_000_000
 MAX_ENTITY = 256
 _STEP = re.compile(r"(//?)([A-Za-z_*][\w.:-]*|\*)((?:\[[^\]]*\])*)")
 _PREDICATE = re.compile(r"\[([^\]]*)\]")
@@ -130,7 +131,8 @@ class XdmfTree:
         self._roots: dict[Path, Node] = {}
         self.root = self._load(path)
         self._found: dict[tuple[Path, str], list[Node]] = {}
-        self._included = 0
+        self._children: dict[int, list[Node]] = {}
+        self._included = self._searched = 0
 
     def _load(self, path: Path) -> Node:
         root = parse(path)
@@ -144,14 +146,15 @@ class XdmfTree:
         self._roots[path.resolve()] = root
         return root
 
-    def children(self, node: Node, depth: int = 0) -> Iterator[Node]:
-        """Yield the child elements, each include replaced by what it points to."""
-        for child in node:
-            assert isinstance(child, Node)
-            if local_name(child) == "include":
-                yield from self._include(child, depth)
-            else:
-                yield child
+    def children(self, node: Node) -> list[Node]:
+        """Return the child elements, each include replaced by what it points to."""
+        if id(node) not in self._children:
+            found: list[Node] = []
+            for child in node:
+                assert isinstance(child, Node)
+                found.extend(self._include(child, 0) if local_name(child) == "include" else [child])
+            self._children[id(node)] = found
+        return self._children[id(node)]
 
     def child(self, node: Node, name: str) -> Node | None:
         """Return the one child with this tag, references followed, or None."""
@@ -224,6 +227,12 @@ class XdmfTree:
         """
         key = (anchor.file, expression)
         if key not in self._found:
+            searches = expression.count("//") + 1
+            self._searched += searches * sum(1 for _ in self._roots[anchor.file.resolve()].iter())
+            if self._searched > MAX_SEARCHED:
+                raise fault(
+                    of or anchor, "too many different paths into too large a file; it is not followed."
+                )
             self._found[key] = _evaluate(self._roots[anchor.file.resolve()], expression, of or anchor)
         return self._found[key]
 

@@ -65,6 +65,22 @@ def green_lagrange(H: NDArray[Any]) -> Floats:
     return E
 
 
+def relative_volume_change(H: NDArray[Any]) -> Floats:
+    """Return `J - 1 = I1 + I2 + I3` of H: small changes keep their digits."""
+    first = H[0, 0] + H[1, 1] + H[2, 2]
+    second = (
+        H[0, 0] * H[1, 1] - H[0, 1] * H[1, 0] + H[1, 1] * H[2, 2] - H[1, 2] * H[2, 1] + H[0, 0] * H[2, 2]
+        - H[0, 2] * H[2, 0]
+    )  # fmt: skip
+    third = (
+        H[0, 0] * (H[1, 1] * H[2, 2] - H[1, 2] * H[2, 1])
+        - H[0, 1] * (H[1, 0] * H[2, 2] - H[1, 2] * H[2, 0])
+        + H[0, 2] * (H[1, 0] * H[2, 1] - H[1, 1] * H[2, 0])
+    )
+    total: Floats = first + second + third
+    return total
+
+
 @dataclass(frozen=True, eq=False)
 class Turning:
     """What turning does to the small strain, per point.
@@ -77,6 +93,7 @@ class Turning:
         `(n,)` Frobenius norm of `U - I`: the size of the strain.
     angle
         `(n,)` rotation angle in radians, of R where the gradient is not small, else of the small rotation.
+        NaN where the displacement flattens the material: R is not defined there.
     """
 
     error: Floats
@@ -132,12 +149,13 @@ def _square(e: NDArray[Any]) -> Floats:
 def _exact_turning(H: Floats, e: Floats) -> tuple[Floats, Floats, Floats]:
     values, directions = eigen(green_lagrange(H))
     with np.errstate(invalid="ignore", divide="ignore"):
-        stretches = np.expm1(0.5 * np.log1p(2.0 * values))  # principal stretches minus one
+        # principal stretches minus one; rounding may leave a flattened point's E just below -1/2
+        stretches = np.expm1(0.5 * np.log1p(np.maximum(2.0 * values, -1.0)))
         inverse = spectral(-stretches / (1.0 + stretches), directions)  # U^-1 - I
-    difference = e - spectral(stretches, directions)
-    error = np.sqrt(contract(difference, difference))
-    size = np.sqrt(stretches[0] ** 2 + stretches[1] ** 2 + stretches[2] ** 2)
-    return error, size, _angle_of_turn(H, inverse)
+        difference = e - spectral(stretches, directions)
+        error = np.sqrt(contract(difference, difference))
+        size = np.sqrt(stretches[0] ** 2 + stretches[1] ** 2 + stretches[2] ** 2)
+        return error, size, _angle_of_turn(H, inverse)
 
 
 def _angle_of_turn(H: Floats, inverse: Floats) -> Floats:

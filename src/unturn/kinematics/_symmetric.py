@@ -121,7 +121,7 @@ def _null_direction(dev: Floats, root: Floats) -> Floats:
         use_a, np.stack([a, ab, ac]), np.where(use_b, np.stack([ab, b, bc]), np.stack([ac, bc, c]))
     )
     size = np.sqrt(normal[0] ** 2 + normal[1] ** 2 + normal[2] ** 2)
-    flat = ~(size > 0)
+    flat = size == 0  # not finite stays so
     normal /= np.where(flat, 1.0, size)
     if flat.any():
         normal[:, flat] = np.array([[1.0], [0.0], [0.0]])
@@ -180,4 +180,5 @@ def _leading_sign(d: Floats) -> Floats:
     lead = np.where(
         np.abs(d[0]) > _ZERO_COMPONENT, d[0], np.where(np.abs(d[1]) > _ZERO_COMPONENT, d[1], d[2])
     )
-    return np.copysign(1.0, lead)
+    sign: Floats = np.copysign(1.0, lead)
+    return sign
