@@ -11,11 +11,11 @@ from typing import Any
 import numpy as np
 import pytest
 import pyvista
-import vtk_samples as samples
-from roundtrip import assert_same
 from vtkmodules.vtkCommonDataModel import vtkDataSetAttributes, vtkImageData
 
 import unturn.io
+import vtk_samples as samples
+from roundtrip import assert_same
 from unturn.errors import InputError
 from unturn.io.vtk_result import result_from_vtk
 
@@ -82,6 +82,43 @@ def test_a_legacy_file_of_version_3(tmp_path: Path) -> None:
     assert result.point_data["t"].tolist() == [1, 2, 3, 4]
 
 
+@pytest.mark.parametrize("binary", [True, False])
+def test_every_attribute_keyword_of_a_legacy_file(binary: bool, tmp_path: Path) -> None:
+    # Source: VTK User's Guide, "VTK file formats", simple legacy formats: data set attributes.
+    def numbers(values: list[float], kind: str) -> bytes:
+        if binary:
+            return np.array(values).astype(kind).tobytes() + b"\n"
+        return " ".join(f"{v:g}" for v in values).encode() + b"\n"
+
+    colors = [0, 128, 255] if binary else [0.0, 0.5, 1.0]
+    kind = "u1" if binary else ">f4"
+    parts = [
+        b"# vtk DataFile Version 3.0\nx\n" + (b"BINARY" if binary else b"ASCII"),
+        b"\nDATASET POLYDATA\nPOINTS 3 double\n" + numbers([0, 0, 0, 1, 0, 0, 0, 1, 0], ">f8"),
+        b"POLYGONS 1 4\n" + numbers([3, 0, 1, 2], ">i4"),
+        b"POINT_DATA 3\nSCALARS s float\nLOOKUP_TABLE mine\n" + numbers([1, 2, 3], ">f4"),
+        b"LOOKUP_TABLE mine 1\n" + numbers([*colors, colors[-1]], kind),
+        b"COLOR_SCALARS c 3\n" + numbers(colors * 3, kind),
+        b"VECTORS v double\n" + numbers(list(range(9)), ">f8"),
+        b"NORMALS n float\n" + numbers([0, 0, 1] * 3, ">f4"),
+        b"TEXTURE_COORDINATES t 2 float\n" + numbers(list(range(6)), ">f4"),
+        b"TENSORS w double\n" + numbers(list(range(27)), ">f8"),
+        b"CELL_DATA 1\nTENSORS6 six double\n" + numbers(list(range(6)), ">f8"),
+        b"FIELD more 2\nf 2 1 int\n"
+        + numbers([7, 8], ">i4")
+        + b"g 1 1 unsigned_short\n"
+        + numbers([9], ">u2"),
+    ]
+    (tmp_path / "in.vtk").write_bytes(b"".join(parts))
+    result = unturn.io.read(tmp_path / "in.vtk")
+    assert set(result.point_data) == {"s", "c", "v", "n", "t", "w"}
+    assert result.point_data["w"].tolist() == np.arange(27.0).reshape(3, 9).tolist()
+    assert result.point_data["c"].shape == (3, 3)
+    assert result.cell_data["f"].tolist() == [[7, 8]]
+    assert result.cell_data["g"].tolist() == [9]
+    assert result.cell_data["six"].size in (6, 9)  # VTK makes nine of TENSORS6
+
+
 def test_pieces_of_one_vtu_are_put_together(tmp_path: Path) -> None:
     # Source: VTK file format description: a file may have several Pieces.
     piece = (
@@ -91,7 +128,9 @@ def test_pieces_of_one_vtu_are_put_together(tmp_path: Path) -> None:
         'format="ascii">0 1 2 3</DataArray><DataArray type="Int32" Name="offsets" format="ascii">4</DataArray>'
         '<DataArray type="UInt8" Name="types" format="ascii">10</DataArray></Cells></Piece>'
     )
-    text = '<VTKFile type="UnstructuredGrid" version="1.0"><UnstructuredGrid>{}{}</UnstructuredGrid></VTKFile>'
+    text = (
+        '<VTKFile type="UnstructuredGrid" version="1.0"><UnstructuredGrid>{}{}</UnstructuredGrid></VTKFile>'
+    )
     pieces = [piece.format(t=t, z=z) for t, z in (("1 2 3 4", 0), ("5 6 7 8", 1))]
     (tmp_path / "two.vtu").write_text(text.format(*pieces))
     result = unturn.io.read(tmp_path / "two.vtu")
@@ -126,11 +165,16 @@ def test_structured_cells_are_those_vtk_has(make: Any) -> None:
     for k, nodes in enumerate(block.connectivity):
         assert sorted(nodes) == sorted(grid.get_cell(k).point_ids)
     if block.cell_type == "hexahedron":
-        a, b, c = (result.points[block.connectivity[:, k]] - result.points[block.connectivity[:, 0]] for k in (1, 3, 4))
+        a, b, c = (
+            result.points[block.connectivity[:, k]] - result.points[block.connectivity[:, 0]]
+            for k in (1, 3, 4)
+        )
         volume = np.einsum("ci,ci->c", np.cross(a, b), c)
         assert np.allclose(volume, grid.compute_cell_sizes()["Volume"])
     if block.cell_type == "quad":
-        a, b = (result.points[block.connectivity[:, k]] - result.points[block.connectivity[:, 0]] for k in (1, 3))
+        a, b = (
+            result.points[block.connectivity[:, k]] - result.points[block.connectivity[:, 0]] for k in (1, 3)
+        )
         assert np.allclose(np.linalg.norm(np.cross(a, b), axis=1), grid.compute_cell_sizes()["Area"])
 
 

@@ -10,11 +10,11 @@ import meshio
 import numpy as np
 import pytest
 import pyvista
+
+import unturn.io
 import vtk_samples as samples
 from meshes import affine_cell, curved, patch
 from roundtrip import assert_same, round_trip, same_bits
-
-import unturn.io
 from unturn.elements import ELEMENTS
 from unturn.errors import UsageError
 from unturn.io.vtk_result import result_from_vtk, vtk_from_result
@@ -36,7 +36,10 @@ def with_results(result: Result) -> Result:
     """Add what the main job adds: new cell arrays, six components with names, float64."""
     rng = np.random.default_rng(1)
     return result.with_arrays(
-        cell_data={"strain": rng.random((result.n_cells, 6)), "equivalent_strain": rng.random(result.n_cells)},
+        cell_data={
+            "strain": rng.random((result.n_cells, 6)),
+            "equivalent_strain": rng.random(result.n_cells),
+        },
         point_data={"rotation": rng.random((result.n_points, 3))},
         field_data={"note": np.array(["small strain"])},
         component_names={("cell", "strain"): samples.VOIGT},
@@ -78,7 +81,9 @@ def test_vtkhdf_brings_back_all_but_strings(grid: str, tmp_path: Path) -> None:
 
 @pytest.mark.parametrize("name", [n for n in ELEMENTS if cell_number(n) is not None])
 @pytest.mark.parametrize("suffix", [".vtu", ".vtk", ".vtkhdf"])
-def test_every_element_comes_back_from_a_result_made_in_memory(name: str, suffix: str, tmp_path: Path) -> None:
+def test_every_element_comes_back_from_a_result_made_in_memory(
+    name: str, suffix: str, tmp_path: Path
+) -> None:
     # Common practice, no source.
     mesh = curved(patch(ELEMENTS[name]))
     result = mesh.result(u=np.random.default_rng(0).random((len(mesh.points), 3)))
@@ -105,7 +110,9 @@ def test_vtk_sees_the_same_elements(name: str, tmp_path: Path) -> None:
 @pytest.mark.source("pyvista 0.49 and meshio 5.3 as readers of what was written")
 def test_other_readers_agree(tmp_path: Path) -> None:
     source = with_results(result_from_vtk(samples.dressed(samples.tetrahedra(3), strings=False)))
-    source = replace(source, field_data={}, point_data={k: v for k, v in source.point_data.items() if k != "label"})
+    source = replace(
+        source, field_data={}, point_data={k: v for k, v in source.point_data.items() if k != "label"}
+    )
     source = replace(source, cell_data={k: v for k, v in source.cell_data.items() if k != "label"})
     unturn.io.write(source, tmp_path / "out.vtu")
     grid, mesh = pyvista.read(tmp_path / "out.vtu"), meshio.read(tmp_path / "out.vtu")
@@ -115,7 +122,9 @@ def test_other_readers_agree(tmp_path: Path) -> None:
         assert same_bits(np.asarray(grid.point_data[name]), values), name
     for name, values in source.cell_data.items():
         assert same_bits(np.asarray(grid.cell_data[name]), values), name
-    assert [grid.GetCellData().GetArray("strain").GetComponentName(k) for k in range(6)] == list(samples.VOIGT)
+    assert [grid.GetCellData().GetArray("strain").GetComponentName(k) for k in range(6)] == list(
+        samples.VOIGT
+    )
 
 
 @pytest.mark.source("VTK 9.7's own VTKHDF reader (through pyvista)")
@@ -131,7 +140,9 @@ def test_vtk_reads_our_vtkhdf(tmp_path: Path) -> None:
 
 def test_roles_and_types_of_the_file_stay(tmp_path: Path) -> None:
     # Common practice, no source.
-    path = samples.write_xml(samples.without_odd_names(samples.mixed()), tmp_path / "in.vtu", "binary", "ZLib")
+    path = samples.write_xml(
+        samples.without_odd_names(samples.mixed()), tmp_path / "in.vtu", "binary", "ZLib"
+    )
     result = with_results(unturn.io.read(path))
     unturn.io.write(result, tmp_path / "out.vtu")
     before, after = pyvista.read(path), pyvista.read(tmp_path / "out.vtu")
@@ -169,11 +180,15 @@ def test_moved_points_are_written(tmp_path: Path) -> None:
     round_trip(replace(result, points=result.points + 1.0), tmp_path / "out.vtu")
 
 
-@pytest.mark.parametrize("name", ['a<b>&"c"', "it's", "line\nbreak\ttab", " lead and trail ", "naïve ε", "a;b,c"])
+@pytest.mark.parametrize(
+    "name", ['a<b>&"c"', "it's", "line\nbreak\ttab", " lead and trail ", "naïve ε", "a;b,c"]
+)
 @pytest.mark.parametrize("suffix", [".vtu", ".vtk", ".vtkhdf", ".vts"])
 def test_odd_names_come_back(name: str, suffix: str, tmp_path: Path) -> None:
     # Common practice, no source.
-    result = result_from_vtk(samples.structured()) if suffix == ".vts" else result_from_vtk(samples.tetrahedra())
+    result = (
+        result_from_vtk(samples.structured()) if suffix == ".vts" else result_from_vtk(samples.tetrahedra())
+    )
     bare = replace(result, point_data={}, cell_data={}, field_data={}, component_names={})
     result = bare.with_arrays(
         point_data={name: np.arange(result.n_points)},

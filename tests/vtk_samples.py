@@ -145,7 +145,9 @@ def dressed(data: Any, *, strings: bool = True) -> Any:
             tensor.SetComponentName(k, label)
         attributes.AddArray(tensor)
         for number in NUMBERS:
-            attributes.AddArray(_array((rng.random(n) * 250 - 100 * (number[0] != "u")).astype(number), number))
+            attributes.AddArray(
+                _array((rng.random(n) * 250 - 100 * (number[0] != "u")).astype(number), number)
+            )
         attributes.AddArray(_array(np.arange(n), "ids"))
         attributes.SetActiveVectors("u")
         attributes.SetActiveGlobalIds("ids")

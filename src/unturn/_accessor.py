@@ -37,9 +37,9 @@ class UnturnAccessor:
         Returns
         -------
         pyvista.DataSet
-            Shares points and old arrays with the mesh, as `copy(deep=False)` does; the new arrays are float64, symmetric tensors in the order
-            XX, YY, ZZ, XY, YZ, XZ with tensor shear, NaN where a cell cannot be computed; strain is
-            dimensionless, rotation in radians.
+            Shares points and old arrays with the mesh, as `copy(deep=False)` does. The new arrays are float64,
+            symmetric tensors in the order XX, YY, ZZ, XY, YZ, XZ with tensor shear, NaN where a cell cannot be
+            computed; strain is dimensionless, rotation in radians.
 
         Raises
         ------

@@ -137,7 +137,8 @@ def find_displacement(result: Result, name: str | None = None, scale: float = 1.
 
 def _refuse_complex(result: Result, where: str) -> None:
     for n, a in result.point_data.items():
-        if np.iscomplexobj(a) or (_NAMED.search(n) and _COMPLEX.search(n) and a.ndim == 2):
+        part = a.ndim == 2 and _COMPLEX.search(n)
+        if np.iscomplexobj(a) or (part and (_NAMED.search(n) or _NAMED.search(_COMPLEX.sub("", n).strip()))):
             raise DisplacementError(
                 f"{where}point array {n!r} looks like part of a complex (harmonic) displacement. Its strain has an "
                 "amplitude and a phase, which is not supported yet; for one instant of the cycle name a real array "

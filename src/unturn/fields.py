@@ -265,10 +265,10 @@ class _Job:
         """Return the code of each cell, or None when all are sound."""
         H = point.H.reshape(-1)
         one_sign = low is high
-        if np.isfinite(np.einsum("i,i->", H, H)) and (one_sign or not ((low < 0) & (high > 0)).any()):
+        if np.isfinite(np.einsum("i,i->", H, H)) and (one_sign or not ((low <= 0) & (high >= 0)).any()):
             return None
         status = np.zeros(len(chunk), dtype=np.uint8)
-        status[(low < 0) & (high > 0)] = _TANGLED
+        status[(low <= 0) & (high >= 0)] = _TANGLED
         broken = ~np.isfinite(point.inverse[0, 0])
         status[broken] = _FLAT
         moved = chunk.relative[3:].sum(axis=(0, 1)) + chunk.first[3:].sum(axis=0)

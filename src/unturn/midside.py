@@ -1,4 +1,4 @@
-"""Mid-side nodes far from the middle of their edges: the sign of a wrong node order."""
+"""Nodes between the corners that are far from their places: the sign of a wrong node order."""
 
 from __future__ import annotations
 
@@ -7,15 +7,15 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from unturn.elements import Element
+from unturn.elements import ELEMENTS, Element
 from unturn.kinematics._symmetric import Floats
 
-_FAR = 0.25  # of the edge's length: quarter-point nodes of crack-tip elements sit exactly there
+_FAR = 0.25  # of the edge's length: the quarter-point nodes of crack-tip elements sit exactly there
 
 
 @dataclass(frozen=True)
 class MidNodes:
-    """Cells whose mid-side nodes are far off.
+    """Cells whose nodes between the corners are far off.
 
     Parameters
     ----------
@@ -31,22 +31,30 @@ class MidNodes:
 
 
 def misplaced_mid_nodes(points: Floats, connectivity: NDArray[np.int64], row: Element) -> MidNodes:
-    """Return the cells with an edge node farther than a quarter of the edge from its reference place on the chord.
+    """Return the cells with a node that is far from where its corners would have it.
 
-    A curved edge with a rise of a quarter of its chord is a half circle nearly; crack-tip elements with quarter-point
-    nodes are at the bound and pass.
+    An edge node may be a quarter of its edge away from its place on the chord: a bow of a quarter of the chord is
+    nearly a half circle, and the quarter-point nodes of crack-tip elements are at the bound and pass. A node within
+    a face or the cell may be a quarter of the longest distance between its corners away.
     """
     off = np.zeros(len(connectivity), dtype=bool)
-    for a, b, between in row.edges:
-        if not between:
-            continue
-        start, along = row.nodes[a], row.nodes[b] - row.nodes[a]
-        xa, xb = points[connectivity[:, a]], points[connectivity[:, b]]
-        length = np.linalg.norm(xb - xa, axis=1)
-        for node in between:
-            t = float((row.nodes[node] - start) @ along / (along @ along))
-            middle = (1.0 - t) * xa + t * xb
-            distance = np.linalg.norm(points[connectivity[:, node]] - middle, axis=1)
-            off |= distance > (_FAR + 0.01) * length
+    if row.n_nodes == row.n_corners:
+        return MidNodes(0, 0.0, -1)
+    corners = points[connectivity[:, : row.n_corners]]
+    with np.errstate(invalid="ignore", over="ignore"):
+        # repeated corners leave edges without length: there the stored digits of the coordinates decide
+        rounding = 1e-6 * np.linalg.norm(np.ptp(corners, axis=1), axis=1)
+        for node, weights in zip(range(row.n_corners, row.n_nodes), _corner_weights(row)):
+            held = np.flatnonzero(np.abs(weights) > 1e-9)
+            around = corners[:, held]
+            place = np.einsum("c,ncx->nx", weights[held], around)
+            reach = np.linalg.norm(around[:, :, None] - around[:, None], axis=-1).max(axis=(1, 2))
+            distance = np.linalg.norm(points[connectivity[:, node]] - place, axis=1)
+            off |= distance > (_FAR + 0.01) * reach + rounding
     count = int(off.sum())
     return MidNodes(count, count / max(1, len(off)), int(np.argmax(off)) if count else -1)
+
+
+def _corner_weights(row: Element) -> Floats:
+    """Return the linear functions of the corners at the other nodes, `(n_nodes - n_corners, n_corners)`."""
+    return ELEMENTS[row.shape.name].shape_functions(row.nodes[row.n_corners :])

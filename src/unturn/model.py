@@ -129,11 +129,12 @@ def build_model(
     found = find_displacement(result, displacement, displacement_scale)
     points = np.asarray(result.points, dtype=np.float64)
     if coordinates == "deformed":
-        points = points - found.values
-    rows = [_row(result, points, block) for block in result.blocks]
+        with np.errstate(invalid="ignore"):
+            points = points - found.values
+    notes = list(result.notes)
+    rows = [_row(result, points, block, notes) for block in result.blocks]
     if all(row is None for row in rows):
         raise InputError(_nothing_to_compute(result))
-    notes = list(result.notes)
     left_out, masks = _left_out(result, rows, skin, alive)
     flat, values = _plane_mesh(result, rows, points, found.values, plane or PlaneOptions(), notes)
     blocks = []
@@ -156,7 +157,7 @@ def _where(result: Result) -> str:
     return f"{result.path}: " if result.path else ""
 
 
-def _row(result: Result, points: Floats, block: CellBlock) -> Element | None:
+def _row(result: Result, points: Floats, block: CellBlock, notes: list[str]) -> Element | None:
     n_nodes = block.connectivity.shape[1]
     if not_computable(block.cell_type, n_nodes) is not None:
         return None
@@ -166,12 +167,17 @@ def _row(result: Result, points: Floats, block: CellBlock) -> Element | None:
     except InputError as error:
         raise InputError(f"{_where(result)}cell {int(block.index[0])}: {error}") from None
     check = misplaced_mid_nodes(points, block.connectivity, row)
-    if check.share > 0.5:
-        raise InputError(
-            f"{_where(result)}{check.count} of {len(block)} {block.cell_type} cells have mid-side nodes far from the "
-            f"middle of their edges (first: cell {int(block.index[check.first])}): the node order of the file is not "
-            "that of its format. Write the file again with the right node order."
+    if check.count:
+        found = (
+            f"{check.count} of {len(block)} {block.cell_type} cells have mid-side nodes far from the middle of their "
+            f"edges (first: cell {int(block.index[check.first])})"
         )
+        if check.share > 0.5:
+            raise InputError(
+                f"{_where(result)}{found}: the node order of the file is not that of its format. Write the file again "
+                "with the right node order."
+            )
+        notes.append(f"{found}: look at these cells before you trust their strain.")
     return row
 
 
@@ -283,9 +289,9 @@ def _plane_mesh(
             )
         return None, displacement
     used = _used(flat, result.n_points)
-    across = np.abs(displacement[used, normal])
-    moved = float(np.nanmax(across, initial=0.0))
-    size = float(np.nanmax(np.abs(displacement[used]), initial=0.0))
+    known = displacement[used & np.isfinite(displacement).all(axis=1)]
+    moved = float(np.abs(known[:, normal]).max(initial=0.0))
+    size = float(np.abs(known).max(initial=0.0))
     if moved > 1e-9 * size:
         if options.model is None:
             return None, displacement
@@ -314,7 +320,8 @@ def _used(blocks: list[CellBlock], n_points: int) -> NDArray[np.bool_]:
 def _normal_axis(points: Floats, blocks: list[CellBlock], used: NDArray[np.bool_]) -> int | None:
     if not blocks:
         return None
-    spread = np.ptp(points[used], axis=0)
+    with np.errstate(invalid="ignore"):
+        spread = np.ptp(points[used], axis=0)
     size = float(spread.max())
     thin = [k for k in range(3) if spread[k] <= _IN_PLANE * size]
     return thin[-1] if thin and size > 0 else None

@@ -106,7 +106,12 @@ def bodies(model: Model, cells: NDArray[np.bool_]) -> list[Region]:
     from scipy import sparse
     from scipy.sparse.csgraph import connected_components
 
-    label = None if _shares_nodes(model, cells) else merge_coincident(model.points)[0]
+    used, shared = _used_nodes(model, cells)
+    label = None
+    if not shared:
+        where = np.flatnonzero(used)  # a node of no cell may lie anywhere
+        label = np.arange(model.result.n_points)
+        label[where] = where[merge_coincident(model.points[where])[0]]
     nodes, lengths, index = [], [], []
     for block in model.blocks:
         if block.row is None:
@@ -120,9 +125,13 @@ def bodies(model: Model, cells: NDArray[np.bool_]) -> list[Region]:
     positions = np.concatenate(index)
     # a graph of points, then cells, each cell joined to its corners
     n, n_cells = model.result.n_points, len(positions)
-    ends = np.concatenate([np.zeros(n + 1, dtype=np.int64), np.cumsum(np.concatenate(lengths))]).astype(np.int32)
+    ends = np.concatenate([np.zeros(n + 1, dtype=np.int64), np.cumsum(np.concatenate(lengths))]).astype(
+        np.int32
+    )
     joined = np.concatenate(nodes)
-    graph = sparse.csr_array((np.ones(len(joined), dtype=np.int8), joined, ends), shape=(n + n_cells, n + n_cells))
+    graph = sparse.csr_array(
+        (np.ones(len(joined), dtype=np.int8), joined, ends), shape=(n + n_cells, n + n_cells)
+    )
     _, part = connected_components(graph, directed=False)
     part_of_cell = part[n:]
     distinct, inverse, counts = np.unique(part_of_cell, return_inverse=True, return_counts=True)
@@ -134,7 +143,8 @@ def bodies(model: Model, cells: NDArray[np.bool_]) -> list[Region]:
     ]
 
 
-def _shares_nodes(model: Model, cells: NDArray[np.bool_]) -> bool:
+def _used_nodes(model: Model, cells: NDArray[np.bool_]) -> tuple[NDArray[np.bool_], bool]:
+    """Return which nodes the cells have, and whether any two cells share one (or there is only one cell)."""
     seen = np.zeros(model.result.n_points, dtype=bool)
     total = 0
     for block in model.blocks:
@@ -142,7 +152,7 @@ def _shares_nodes(model: Model, cells: NDArray[np.bool_]) -> bool:
             conn = block.connectivity[cells[block.index]]
             seen[conn] = True
             total += conn.size
-    return total != int(seen.sum()) or int(cells.sum()) == 1
+    return seen, total != int(seen.sum()) or int(cells.sum()) == 1
 
 
 def merge_coincident(points: Floats) -> tuple[NDArray[np.int64], float]:

@@ -79,7 +79,8 @@ def judge(diagnostics: CellDiagnostics, region: Region, solve: Solve, mode: bool
     noise = weighted_percentiles(d.noise[usable], weight, [99.0])[0]
     stretch = weighted_percentiles(d.stretch[usable], weight, [99.0])[0]
     size = max(stretch, noise)
-    rotation = math.degrees(float(np.nanmax(d.angle[usable])))
+    turned = d.angle[usable]
+    rotation = math.degrees(float(turned.max(initial=0.0, where=np.isfinite(turned))))
     if mode:
         return Verdict(region.name, "not judged", size, noise, math.nan, -1, 0.0, 0.0, rotation, "")
     worst_at = int(np.nanargmax(error))
@@ -104,17 +105,33 @@ def judge(diagnostics: CellDiagnostics, region: Region, solve: Solve, mode: bool
 
 _SOLVE_AGAIN = "solve it again as geometrically nonlinear"
 _ACTIONS: dict[tuple[Solve, Level], str] = {
-    ("linear", "marginal"): "the strain is that of the linear solve, good to the error stated; where that matters, "
+    (
+        "linear",
+        "marginal",
+    ): "the strain is that of the linear solve, good to the error stated; where that matters, "
     + _SOLVE_AGAIN,
-    ("linear", "does not hold"): "the solve was linear and its rotations are beyond what linear theory covers: "
+    (
+        "linear",
+        "does not hold",
+    ): "the solve was linear and its rotations are beyond what linear theory covers: "
     + _SOLVE_AGAIN
     + "; no measure of this result mends it",
-    ("nonlinear", "marginal"): "the small strain is good to the error stated; where that matters, use the solver's own "
-    "strain",
-    ("nonlinear", "does not hold"): "the small strain contains turning; it is not the strain of the material here",
-    ("unknown", "marginal"): "the small strain is good to the error stated; --solve linear or nonlinear tells what to do "
+    (
+        "nonlinear",
+        "marginal",
+    ): "the small strain is good to the error stated; where that matters, use the solver's own strain",
+    (
+        "nonlinear",
+        "does not hold",
+    ): "the small strain contains turning; it is not the strain of the material here",
+    (
+        "unknown",
+        "marginal",
+    ): "the small strain is good to the error stated; --solve linear or nonlinear tells what to do "
     "where that matters",
-    ("unknown", "does not hold"): "if the solve was linear, " + _SOLVE_AGAIN + "; if it was nonlinear, the small strain is "
+    ("unknown", "does not hold"): "if the solve was linear, "
+    + _SOLVE_AGAIN
+    + "; if it was nonlinear, the small strain is "
     "not the strain of the material here (state it with --solve)",
 }
 

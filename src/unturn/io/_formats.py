@@ -145,7 +145,7 @@ def _hdf_name(path: Path) -> str | None:
         with h5py.File(path, "r") as file:
             groups = set(file)
             is_exodus = "title" in file.attrs and "api_version" in file.attrs
-    except OSError as error:
+    except (OSError, RuntimeError, KeyError, ValueError) as error:
         raise InputError(
             f"{path} is an HDF5 file that cannot be opened ({error}). It is damaged, cut short or still "
             "being written by another program."

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import contextlib
 import re
-from collections.abc import Iterator, Mapping
+from collections.abc import Iterator, Mapping, Sequence
 from typing import Any
 
 import numpy as np
@@ -34,7 +34,7 @@ def quiet_vtk() -> Iterator[list[str]]:
     finally:
         vtkLogger.SetStderrVerbosity(vtkLogger.ConvertToVerbosity(int(cutoff)))
         vtkOutputWindow.SetInstance(before)
-        said.extend(_sentences(window.GetOutput()))
+        said.extend(_sentences(text_of(window.GetOutput())))
 
 
 def _sentences(text: str) -> list[str]:
@@ -44,6 +44,16 @@ def _sentences(text: str) -> list[str]:
     return list(dict.fromkeys(sentences)) or (["VTK gave no reason"] if text.strip() else [])
 
 
+def text_of(value: str | bytes | None) -> str:
+    """Return text that VTK gave; what is not UTF-8 comes as bytes and is taken for Latin-1."""
+    return value.decode("latin-1") if isinstance(value, bytes) else value or ""
+
+
+def name_of(array: Any, position: int) -> str:
+    """Return the name of a VTK array, made up from its position when it has none."""
+    return text_of(array.GetName()) or f"unnamed_{position}"
+
+
 def to_numpy(array: Any) -> Array | None:
     """Return a VTK array as numpy, ``(n,)`` for one component, ``(n, c)`` else; None if numpy cannot hold it.
 
@@ -51,7 +61,7 @@ def to_numpy(array: Any) -> Array | None:
     """
     if isinstance(array, vtkStringArray):
         n, c = array.GetNumberOfTuples(), array.GetNumberOfComponents()
-        strings = np.array([array.GetValue(i) for i in range(n * c)], dtype=np.str_)
+        strings = np.array([text_of(array.GetValue(i)) for i in range(n * c)], dtype=np.str_)
         return strings if c == 1 else strings.reshape(n, c)
     if not isinstance(array, vtkDataArray) or array.GetNumberOfComponents() == 0:
         return None
@@ -105,7 +115,7 @@ def read_attributes(
     notes = []
     for i in range(attributes.GetNumberOfArrays()):
         array = attributes.GetAbstractArray(i)
-        name = array.GetName() or f"unnamed_{i}"
+        name = name_of(array, i)
         if name in arrays:
             raise InputError(
                 f"{where}two {association} arrays are called {name!r}, so one would be lost. "
@@ -118,8 +128,29 @@ def read_attributes(
         arrays[name] = values
         if array.HasAComponentName():
             c = array.GetNumberOfComponents()
-            names[association, name] = tuple(array.GetComponentName(k) or "" for k in range(c))
+            names[association, name] = tuple(text_of(array.GetComponentName(k)) for k in range(c))
     return arrays, names, notes
+
+
+def set_arrays(attributes: Any, arrays: Sequence[Any], roles: Mapping[int, int]) -> None:
+    """Make a VTK field-data object hold these arrays in this order; `roles`: attribute type -> position."""
+    for i in reversed(range(attributes.GetNumberOfArrays())):
+        attributes.RemoveArray(i)
+    for array in arrays:
+        attributes.AddArray(array)
+    for number, i in roles.items():
+        attributes.SetActiveAttribute(arrays[i].GetName(), number)
+
+
+def roles_of(attributes: Any) -> dict[int, int]:
+    """Return which arrays are the active scalars, vectors, global ids ...: attribute type -> position."""
+    arrays = [attributes.GetAbstractArray(i) for i in range(attributes.GetNumberOfArrays())]
+    roles = {}
+    for number in range(getattr(attributes, "NUM_ATTRIBUTES", 0)):
+        active = attributes.GetAbstractAttribute(number)
+        if active is not None:
+            roles[number] = next(i for i, array in enumerate(arrays) if array is active)
+    return roles
 
 
 def update_attributes(
@@ -134,7 +165,7 @@ def update_attributes(
     """
     for i in reversed(range(attributes.GetNumberOfArrays())):
         array = attributes.GetAbstractArray(i)
-        name = array.GetName() or f"unnamed_{i}"
+        name = name_of(array, i)
         if name not in wanted and to_numpy(array) is not None:
             attributes.RemoveArray(i)
     for name, values in wanted.items():
@@ -153,7 +184,7 @@ def _is_same(present: Any, values: Array, labels: tuple[str, ...]) -> bool:
     held = to_numpy(present)
     if held is None or held.dtype != values.dtype or held.shape != values.shape:
         return False
-    if any((present.GetComponentName(k) or "") != label for k, label in enumerate(labels)):
+    if any(text_of(present.GetComponentName(k)) != label for k, label in enumerate(labels)):
         return False
     if held.dtype.kind == "U":
         return bool((held == values).all())

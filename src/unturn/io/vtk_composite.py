@@ -14,11 +14,11 @@ import numpy as np
 from numpy.typing import NDArray
 
 from unturn.errors import InputError, UsageError
-from unturn.io.vtk_arrays import read_attributes
+from unturn.io.vtk_arrays import name_of, roles_of, set_arrays
 from unturn.io.vtk_result import result_from_vtk
 from unturn.io.vtk_xml import KINDS, read_dataset, vtk_class, write_file
 from unturn.io.vtk_xml_check import parse_root
-from unturn.result import Association, Result, Steps
+from unturn.result import Result, Steps
 
 _SINGLE = {kind: name for name, kind in KINDS.values()}
 _PIECES = ("PUnstructuredGrid", "PPolyData")
@@ -82,6 +82,8 @@ def _pieces(body: ElementTree.Element, path: Path) -> list[_Part]:
 
 def _leaves(element: ElementTree.Element, path: Path, above: tuple[str, ...]) -> list[_Part]:
     """Return the files of nested blocks; each block's path of names is a group."""
+    if len(above) > 100:
+        raise InputError(f"{path}: its blocks are nested more than 100 deep. Write it again.")
     parts = []
     for position, child in enumerate(element):
         if child.tag not in ("Block", "DataSet", "Piece"):
@@ -189,7 +191,7 @@ def _demand_same_arrays(held: Sequence[tuple[Any, _Part, Any]], path: str) -> No
 def _arrays(dataset: Any, kind: str) -> set[tuple[str, int, int]]:
     data = dataset.GetPointData() if kind == "Point" else dataset.GetCellData()
     arrays = [data.GetAbstractArray(i) for i in range(data.GetNumberOfArrays())]
-    return {(a.GetName() or "", a.GetDataType(), a.GetNumberOfComponents()) for a in arrays}
+    return {(name_of(a, i), a.GetDataType(), a.GetNumberOfComponents()) for i, a in enumerate(arrays)}
 
 
 def _merge(datasets: Sequence[Any]) -> Any:
@@ -214,17 +216,16 @@ def _precision(datasets: Sequence[Any]) -> int:
 
 
 def _restore(merged: Any, first: Any) -> None:
-    """Give the merged data set the component names and the field data of the first part."""
-    kinds: tuple[tuple[Association, Any, Any], ...] = (
-        ("point", merged.GetPointData(), first.GetPointData()),
-        ("cell", merged.GetCellData(), first.GetCellData()),
-    )
-    for kind, data, source in kinds:
-        _, names, _ = read_attributes(source, kind, "")
-        for (_, name), labels in names.items():
-            array = data.GetAbstractArray(name)
-            for k, label in enumerate(labels):
-                array.SetComponentName(k, label)
+    """Give the merged data set the order, roles and component names of the first part, and its field data."""
+    for data, source in (
+        (merged.GetPointData(), first.GetPointData()),
+        (merged.GetCellData(), first.GetCellData()),
+    ):
+        models = [source.GetAbstractArray(i) for i in range(source.GetNumberOfArrays())]
+        arrays = [data.GetAbstractArray(model.GetName()) for model in models]
+        for array, model in zip(arrays, models, strict=True):
+            array.CopyComponentNames(model)
+        set_arrays(data, arrays, roles_of(source))
     merged.GetFieldData().ShallowCopy(first.GetFieldData())
 
 

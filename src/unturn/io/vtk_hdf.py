@@ -46,30 +46,32 @@ class HdfFile:
         series = self.steps is not None
         state = Steps(self.steps, step) if self.steps is not None else None
         with _opened(self.path) as file:
-            reader = _Reader(self.path, file["VTKHDF"], step if series else None)
-            dataset = _guarded(self.path, lambda: reader.dataset(self.kind))
+            dataset = _guarded(
+                self.path,
+                lambda: _Reader(self.path, file["VTKHDF"], step if series else None).dataset(self.kind),
+            )
         return result_from_vtk(dataset, self.path, format_name=FORMAT_NAME, steps=state)
 
 
 def open_file(path: Path) -> HdfFile:
     """Open a VTKHDF file; raise `InputError` for types of it that hold no single mesh."""
     with _opened(str(path)) as file:
-        root = file.get("VTKHDF")
-        kind = root.attrs.get("Type", b"") if isinstance(root, h5py.Group) else b""
-        kind = kind.decode("utf-8", "replace") if isinstance(kind, bytes) else str(kind)
-        if kind not in ("UnstructuredGrid", "PolyData", "ImageData"):
-            raise InputError(
-                f"{path}: VTKHDF of type {kind!r} is not read; expected UnstructuredGrid, PolyData or "
-                "ImageData. Write the parts of a composite as single meshes."
-            )
-        steps = None
-        if "Steps" in root:
-            values = _guarded(str(path), lambda: np.asarray(root["Steps/Values"][...], dtype=float))
-            steps = tuple(float(v) for v in values.ravel())
-            if not steps:
-                raise InputError(
-                    f"{path}: the series has no step. The program that writes it did not finish."
-                )
+        return _guarded(str(path), lambda: _file(file, path))
+
+
+def _file(file: Any, path: Path) -> HdfFile:
+    root = file["VTKHDF"]
+    kind = _text(root.attrs["Type"])
+    if kind not in ("UnstructuredGrid", "PolyData", "ImageData"):
+        raise InputError(
+            f"{path}: VTKHDF of type {kind!r} is not read; expected UnstructuredGrid, PolyData or ImageData. "
+            "Write the parts of a composite as single meshes."
+        )
+    steps = None
+    if "Steps" in root:
+        steps = tuple(float(v) for v in np.asarray(root["Steps/Values"][...], dtype=float).ravel())
+        if not steps:
+            raise InputError(f"{path}: the series has no step. The program that writes it did not finish.")
     return HdfFile(str(path), kind, steps)
 
 

@@ -18,13 +18,13 @@ import numpy as np
 from unturn.errors import InputError
 from unturn.io.vtk_xml_data import Unsound, count_numbers
 
-_BYTES = {
-    "char": 1, "signed_char": 1, "unsigned_char": 1, "short": 2, "unsigned_short": 2, "int": 4,
-    "unsigned_int": 4, "vtkidtype": 4, "float": 4, "long": 8, "unsigned_long": 8, "double": 8,
-    "long_long": 8, "unsigned_long_long": 8, "vtktypeint64": 8, "vtktypeuint64": 8,
+_TYPES = {
+    "char": "i1", "signed_char": "i1", "unsigned_char": "u1", "short": "i2", "unsigned_short": "u2",
+    "int": "i4", "unsigned_int": "u4", "vtkidtype": "i4", "long": "i8", "unsigned_long": "u8",
+    "long_long": "i8", "unsigned_long_long": "u8", "float": "f4", "double": "f8",
+    # Some name their own size.
+    **{f"vtktype{sign}int{8 * n}": f"{sign or 'i'}{n}" for sign in ("", "u") for n in (1, 2, 4, 8)},
 }  # fmt: skip
-# vtktypeint32 and the like name their own size.
-_BYTES |= {f"vtktype{sign}int{8 * n}": n for sign in ("", "u") for n in (1, 2, 4)}
 _DATASETS = ("UNSTRUCTURED_GRID", "STRUCTURED_GRID", "RECTILINEAR_GRID", "STRUCTURED_POINTS", "POLYDATA")
 _CELL_LISTS = ("CELLS", "VERTICES", "LINES", "POLYGONS", "TRIANGLE_STRIPS")
 # Attribute keyword -> number of components when the file does not state it.
@@ -34,6 +34,9 @@ _FIXED = {
 }  # fmt: skip
 _POLYHEDRON = 42
 _WORD = re.compile(rb"\s*(\S+)")
+_INFORMATION = re.compile(rb"NAME \S+ LOCATION \S+\s*")
+_RANGE_VALUES = re.compile(rb"DATA 2( [-+.\deinfa]+){2}\s*", re.IGNORECASE)
+_ANY_VALUES = re.compile(rb"DATA \S.*")
 _NUMBER = re.compile(rb"\s*(\d{1,15})(?=\s|$)")
 
 
@@ -48,8 +51,9 @@ class _Walk:
 
     def __init__(self, path: str, data: mmap.mmap) -> None:
         self.path, self.data, self.at, self.binary = path, data, 0, False
-        self.rows = 0
+        self.rows, self.width = 0, 1
         self.names: set[str] = set()
+        self.n_cells = 0
         self.streams: list[Any] = []
         self.new_layout = False
 
@@ -96,7 +100,7 @@ class _Walk:
             self.rows, self.names = self.number(), set()
         elif keyword in _FIXED:
             self.name()
-            self.values(self.rows * _FIXED[keyword], self.word().lower())
+            self.values(self.rows, self.word().lower(), _FIXED[keyword])
         elif keyword in ("X_COORDINATES", "Y_COORDINATES", "Z_COORDINATES"):
             n = self.number()
             self.values(n, self.word().lower())
@@ -150,18 +154,17 @@ class _Walk:
             self.fail(f"two arrays are called {name!r}, so one would be lost")
         self.names.add(name)
 
-    def values(self, n: int, kind: str) -> int:
-        """Walk over n values of a number type and return where they begin."""
+    def values(self, rows: int, kind: str, width: int = 1) -> int:
+        """Walk over the rows of an array of `width` components and return where they begin."""
+        n, self.width = rows * width, width
         if kind in ("string", "utf8_string"):
             return self.strings(n)
-        if kind == "bit":
-            n_bytes = -(-n // 8)
-        elif kind in _BYTES:
-            n_bytes = n * _BYTES[kind]
-        else:
+        if kind != "bit" and kind not in _TYPES:
             self.fail(f"the number type {kind!r} is not read")
+        dtype = np.dtype(_TYPES.get(kind, "u1"))
+        n_bytes = -(-n // 8) if kind == "bit" else n * dtype.itemsize
         if not self.binary:
-            return self.ascii_values(n)
+            return self.ascii_values(n, dtype)
         self.line()
         begin = self.at
         if begin + n_bytes > len(self.data):
@@ -169,7 +172,7 @@ class _Walk:
         self.at += n_bytes
         return begin
 
-    def ascii_values(self, n: int) -> int:
+    def ascii_values(self, n: int, dtype: np.dtype[Any]) -> int:
         """Walk over n numbers in text, a piece at a time."""
         begin, left = self.at, n
         while left:
@@ -187,7 +190,7 @@ class _Walk:
             if not words or step == 0:
                 self.fail(f"{n} values are announced and {n - left} are there")
             try:
-                count_numbers(b" ".join(words))
+                count_numbers(b" ".join(words), dtype)
             except Unsound as error:
                 self.fail(str(error))
             left -= len(words)
@@ -214,7 +217,7 @@ class _Walk:
 
     def points(self) -> None:
         n = self.number()
-        self.values(3 * n, self.word().lower())
+        self.values(n, self.word().lower(), 3)
 
     def field(self) -> None:
         self.word()
@@ -225,13 +228,24 @@ class _Walk:
                 self.metadata()
             self.name()
             n_components, n_rows = self.number(), self.number()
-            self.values(n_components * n_rows, self.word().lower())
+            self.values(n_rows, self.word().lower(), n_components)
 
     def metadata(self) -> None:
-        """Walk over lines up to an empty one."""
+        """Walk over component names and information about the last array, up to an empty line."""
         self.line()
-        while self.at < len(self.data) and self.line().strip():
-            pass
+        while self.at < len(self.data) and (line := self.line().strip()):
+            if line == b"COMPONENT_NAMES":
+                for _ in range(self.width):
+                    self.line()
+                continue
+            found = re.fullmatch(rb"INFORMATION (\d{1,6})", line)
+            if found is None:
+                self.fail(f"METADATA is followed by {line[:40]!r}")
+            for _ in range(int(found[1])):
+                name, values = self.line(), self.line()
+                whole = _RANGE_VALUES if b"_RANGE " in name else _ANY_VALUES
+                if not _INFORMATION.fullmatch(name) or not whole.fullmatch(values):
+                    self.fail(f"the {int(found[1])} announced pieces of INFORMATION are not all there")
 
     def scalars(self) -> None:
         self.name()
@@ -241,30 +255,35 @@ class _Walk:
         if self.word() != "LOOKUP_TABLE":
             self.fail("SCALARS is not followed by a LOOKUP_TABLE line")
         self.word()
-        self.values(self.rows * n_components, kind)
+        self.values(self.rows, kind, n_components)
 
     def lookup_table(self) -> None:
         self.word()
-        self.values(4 * self.number(), "unsigned_char")
+        self.values(self.number(), self.color(), 4)
 
     def color_scalars(self) -> None:
         self.name()
-        self.values(self.rows * self.number(), "unsigned_char")
+        self.values(self.rows, self.color(), self.number())
+
+    def color(self) -> str:
+        """Return the type of colours: bytes in binary, numbers from 0 to 1 in text."""
+        return "unsigned_char" if self.binary else "float"
 
     def texture_coordinates(self) -> None:
         self.name()
         n_components = self.number()
-        self.values(self.rows * n_components, self.word().lower())
+        self.values(self.rows, self.word().lower(), n_components)
 
     def cell_list(self) -> None:
         """Walk over cells: ``n size`` and a stream up to version 4.2, offsets and connectivity from 5.0."""
         n, size = self.number(), self.number()
         found = re.compile(rb"\s*OFFSETS\s+(\S+)", re.IGNORECASE).match(self.data, self.at)
+        self.n_cells = n
         if found is None:
             begin = self.values(size, "int")
             self.stream(begin, n, size)
             return
-        self.new_layout = True
+        self.new_layout, self.n_cells = True, max(n - 1, 0)
         kind = found[1].decode("latin-1").lower()
         self.at = found.end()
         begin = self.values(n, kind)
@@ -280,9 +299,7 @@ class _Walk:
     def integers(self, begin: int, n: int, kind: str) -> Any:
         """Return the n whole numbers that begin at a position already walked over."""
         if self.binary:
-            dtype = {4: ">i4", 8: ">i8"}.get(_BYTES[kind])
-            if dtype is None:
-                self.fail(f"cells are numbers of type {kind}")
+            dtype = np.dtype(_TYPES[kind]).newbyteorder(">")
             return np.frombuffer(self.data[begin : self.at], dtype, n).astype(np.int64)
         return np.array(self.data[begin : self.at].split()[:n], dtype=np.float64).astype(np.int64)
 
@@ -305,6 +322,8 @@ class _Walk:
 
     def cell_types(self) -> None:
         n = self.number()
+        if n != self.n_cells:
+            self.fail(f"it has {n} cell types for {self.n_cells} cells")
         begin = self.values(n, "int")
         kinds = self.integers(begin, n, "int")
         if (kinds < 0).any() or (kinds > 255).any():

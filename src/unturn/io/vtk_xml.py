@@ -9,7 +9,7 @@ from typing import Any
 from xml.sax.saxutils import escape
 
 from unturn.errors import InputError, UsageError
-from unturn.io.vtk_arrays import quiet_vtk
+from unturn.io.vtk_arrays import quiet_vtk, roles_of, set_arrays, text_of
 from unturn.io.vtk_result import dataset_from_result, result_from_vtk, vtk_from_result
 from unturn.io.vtk_xml_check import check_xml
 from unturn.result import Result
@@ -111,26 +111,15 @@ def _escape_names(attributes: Any) -> None:
     """Replace arrays whose names XML cannot hold: VTK writes names as they are and reads them unescaped."""
     arrays = [attributes.GetAbstractArray(i) for i in range(attributes.GetNumberOfArrays())]
     twins = [_with_escaped_names(array) for array in arrays]
-    if all(twin is array for twin, array in zip(twins, arrays, strict=True)):
-        return
-    roles = {}
-    for number in range(getattr(attributes, "NUM_ATTRIBUTES", 0)):
-        active = attributes.GetAbstractAttribute(number)
-        if active is not None:
-            roles[number] = next(i for i, array in enumerate(arrays) if array is active)
-    for i in reversed(range(len(arrays))):
-        attributes.RemoveArray(i)
-    for twin in twins:
-        attributes.AddArray(twin)
-    for number, i in roles.items():
-        attributes.SetActiveAttribute(twins[i].GetName(), number)
+    if any(twin is not array for twin, array in zip(twins, arrays, strict=True)):
+        set_arrays(attributes, twins, roles_of(attributes))
 
 
 def _with_escaped_names(array: Any) -> Any:
     """Return the array, or a copy that shares its values when one of its names must be escaped."""
-    labels = [array.GetComponentName(k) for k in range(array.GetNumberOfComponents())]
+    labels = [text_of(array.GetComponentName(k)) for k in range(array.GetNumberOfComponents())]
     special = {k: _escaped(text) for k, text in enumerate(labels) if text and _escaped(text) != text}
-    name = array.GetName() or ""
+    name = text_of(array.GetName())
     if _escaped(name) == name and not special:
         return array
     twin = array.NewInstance()

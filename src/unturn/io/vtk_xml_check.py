@@ -100,6 +100,11 @@ def _file(path: str, root: ElementTree.Element, data: memoryview, body: int) -> 
     encoding = Encoding(np.dtype(order + width), order, compressor)
     if body < 0:
         return _File(path, encoding, None)
+    if b"</VTKFile>" not in bytes(data[-256:]):
+        raise InputError(
+            f"{path} ends without its closing </VTKFile>: the program that wrote it did not finish, or the file "
+            "was cut short. Write it again."
+        )
     head = bytes(data[body : body + 4096])
     found = re.match(rb"<AppendedData[^>]*\bencoding\s*=\s*[\"'](raw|base64)[\"'][^>]*>\s*_", head)
     if found is None:
@@ -348,7 +353,7 @@ def _values(file: _File, array: ElementTree.Element, where: str, dtype: str | No
     kind = np.dtype(dtype) if dtype else _dtype(file, array)
     try:
         if isinstance(stream, bytes):
-            return count_numbers(stream)
+            return count_numbers(stream, kind)
         n_bytes = decoded_size(stream, file.encoding)
     except Unsound as error:
         raise file.fail(f"{where}array {array.get('Name')!r}: {error}") from error

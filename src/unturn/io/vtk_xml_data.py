@@ -12,6 +12,7 @@ import binascii
 import lzma
 import re
 import zlib
+from collections.abc import Callable
 from dataclasses import dataclass
 from typing import Any
 
@@ -170,14 +171,19 @@ def _decompress(compressor: str, part: bytes, size: int) -> bytes:
     return b"" if block is None else bytes(vtk_to_numpy(block).tobytes())
 
 
-def count_numbers(text: bytes) -> int:
-    """Return how many numbers an ASCII array holds; VTK would split a damaged one in two and shift the rest.
+def count_numbers(text: bytes, dtype: np.dtype[Any]) -> int:
+    """Return how many numbers an ASCII array holds, each of them proved to be one of this type.
+
+    VTK would split a damaged number in two and shift the rest, and let one that is too large run over.
 
     Examples
     --------
-    >>> count_numbers(b" 1 2.5e-3 nan ")
+    >>> count_numbers(b" 1 2.5e-3 nan ", np.dtype("f8"))
     3
     """
+    is_real = dtype.kind == "f"
+    parse: Callable[[bytes], float] = float if is_real else int
+    low, high = (0, 0) if is_real else (int(np.iinfo(dtype).min), int(np.iinfo(dtype).max))
     count = start = 0
     if b"_" in text:  # Python would take it for a separator of digits
         raise Unsound("'_' is no part of a number")
@@ -188,9 +194,12 @@ def count_numbers(text: bytes) -> int:
         words = text[start:end].split()
         for word in words:
             try:
-                float(word)
+                value = parse(word)
             except ValueError:
-                raise Unsound(f"{word[:40]!r} is not a number") from None
+                kind = "a" if is_real else "a whole"
+                raise Unsound(f"{word[:40].decode('latin-1')!r} is not {kind} number") from None
+            if not (is_real or low <= value <= high):
+                raise Unsound(f"{word.decode()} is out of the range of {dtype.name}")
         count += len(words)
         start = end
     return count

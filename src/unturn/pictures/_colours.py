@@ -8,6 +8,8 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from unturn.errors import UsageError
+
 Floats = NDArray[np.float64]
 
 ABOVE = (0.902, 0.224, 0.106)
@@ -96,11 +98,18 @@ def choose_range(values: Floats, given: tuple[float, float] | None = None) -> Ra
     """Return the range of `values` `(n,)`, which always holds 0: from the smallest to the largest.
 
     An end that lies far beyond 99.9 % of the values is drawn in to them; ends are rounded outwards to two digits.
+
+    Raises
+    ------
+    UsageError
+        A `given` range that is none.
     """
     finite = np.sort(values[np.isfinite(values)])
     missing = len(values) - len(finite)
     if given is not None:
         low, high = given
+        if not (np.isfinite(low) and np.isfinite(high) and low < high):
+            raise UsageError(f"the colour range {low} to {high}: give two numbers, the lower one first.")
     elif not len(finite):
         low = high = 0.0
     else:

@@ -25,7 +25,7 @@ def words_of(mark: Mark, values: Values, noun: str, numbers: NDArray[Any] | None
         lines.append(f"{'element' if noun == 'cell' else 'node'} {numbers[mark.position]} in the file")
     lines.append(f"{noun} {mark.position}, counted from 0")
     if not mark.visible:
-        lines.append("hidden from this side")
+        lines.append("not seen from this side")
     return lines
 
 
@@ -36,7 +36,10 @@ def add_label(page: Page, mark: Mark, lines: list[str], taken: NDArray[np.bool_]
     wide = max(page.width(t, s, k == 0) for k, (t, s) in enumerate(zip(lines, letters))) + 20 * u
     tall = (34 + 20 * (len(lines) - 1)) * u
     left, top = free_place(taken, mark.pixel, (wide, tall), 50 * u)
-    taken[int(top) : int(top + tall) + 1, int(left) : int(left + wide) + 1] = True
+    rim = 8 * u
+    taken[
+        int(max(0, top - rim)) : int(top + tall + rim), int(max(0, left - rim)) : int(left + wide + rim)
+    ] = True
     right, low, high = left + wide, height - top - tall, height - top
     at = np.array([mark.pixel[0], height - mark.pixel[1]])
     corner = np.array([np.clip(at[0], left, right), np.clip(at[1], low, high)])

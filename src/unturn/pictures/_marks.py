@@ -79,7 +79,7 @@ class Sight:
         order = np.argsort(np.linalg.norm(away, axis=1), kind="stable")
         for k in order[:200]:
             hit = self._first_hit(middles[k], direction)
-            if hit >= 0 and self._own[hit] == position:
+            if hit < 0 or self._own[hit] == position:  # no ray hits a line or a vertex itself
                 return np.asarray(middles[k])
         return None
 

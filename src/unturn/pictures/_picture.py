@@ -21,6 +21,7 @@ from unturn.pictures._window import capture, make_window
 from unturn.result import Association, Result
 
 Floats = NDArray[np.float64]
+_LABEL_ROOM = 90  # above the model, where a label finds a place if nowhere else
 _EDGES_BELOW = 20_000  # cells up to which their edges are drawn
 
 
@@ -73,7 +74,7 @@ class Picture:
             _, position = self.extremes[0]
             chosen = next((c for c in candidates if self._seen(position, c[0]) is not None), chosen)
         u, (width, height) = unit_of(self.size), self.size
-        right, top = width - (_legend.LEGEND_WIDTH + 30) * u, height - (_legend.HEAD + 30) * u
+        right, top = width - (_legend.LEGEND_WIDTH + 30) * u, height - (_legend.HEAD + _LABEL_ROOM) * u
         return fit(self.shown, *chosen, self.size, (60 * u, right, (_legend.FOOT + 30) * u, top))
 
     @cached_property
@@ -118,6 +119,7 @@ class Picture:
         ghost = round(_scene.GHOST_FACE[0] * 255) - 1
         taken = np.asarray((picture < ghost).any(axis=2))
         taken[: int(_legend.HEAD * u)] = True
+        taken[:, : int(36 * u)] = True
         taken[int(height - _legend.FOOT * u) :] = True
         taken[:, int(width - _legend.LEGEND_WIDTH * u) :] = True
         for mark in self.marks:

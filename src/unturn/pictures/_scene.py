@@ -77,7 +77,8 @@ def add_lines(renderer: Any, lines: Any, width: float, opacity: float = 1.0) -> 
 
 def add_ghost(renderer: Any, body: Any, outline: Any, width: float) -> None:
     """Draw the undeformed shape, pale; the renderer lies behind that of the model."""
-    _behind_lines(_actor(renderer, body, GHOST_FACE, width).GetMapper())
+    colour = GHOST_FACE if body.GetNumberOfPolys() else GHOST_LINE
+    _behind_lines(_actor(renderer, body, colour, width).GetMapper())
     _actor(renderer, outline, GHOST_LINE, width)
 
 

@@ -8,6 +8,7 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
+from unturn.io.vtk_cells import types_of
 from unturn.io.vtk_result import vtk_from_result
 from unturn.result import Result
 
@@ -106,9 +107,7 @@ def _faces(grid: Any, keep: NDArray[np.bool_]) -> Any:
 
 
 def _is_linear(grid: Any) -> bool:
-    from vtkmodules.util.numpy_support import vtk_to_numpy
-
-    _, first = np.unique(vtk_to_numpy(grid.GetCellTypesArray()), return_index=True)
+    _, first = np.unique(types_of(grid), return_index=True)
     return all(grid.GetCell(int(cell)).IsLinear() for cell in first)
 
 
@@ -138,7 +137,7 @@ def _separated(grid: Any) -> Any:
     points = vtkPoints()
     points.SetData(numpy_to_vtk(vtk_to_numpy(grid.GetPoints().GetData())[nodes], deep=True))
     apart.SetPoints(points)
-    apart.SetCells(grid.GetCellTypesArray(), cells)
+    apart.SetCells(numpy_to_vtk(types_of(grid), deep=True), cells)
     apart.GetCellData().ShallowCopy(grid.GetCellData())
     nodal = grid.GetPointData().GetArray(VALUE)
     if nodal is not None:

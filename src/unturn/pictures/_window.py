@@ -19,9 +19,9 @@ FINE = 2  # pixels drawn for each pixel of the picture, on a side
 
 # Rendering without a graphics library ends the interpreter (VTK 9.7), so a child process tries it first.
 _PROBE = """
-from vtkmodules.vtkRenderingCore import vtkRenderer
+from vtkmodules.vtkRenderingCore import vtkRenderer, vtkRenderWindow
 import vtkmodules.vtkRenderingOpenGL2 as gl
-window = getattr(gl, {name!r})()
+window = getattr(gl, {name!r}, vtkRenderWindow)()
 window.SetOffScreenRendering(1)
 window.SetShowWindow(False)
 window.SetSize(16, 16)
@@ -31,48 +31,55 @@ print("rendered")
 """
 
 
-def _window_class() -> str:
-    """Return the name of VTK's window class that needs no display."""
-    return "vtkEGLRenderWindow" if sys.platform.startswith("linux") else "vtkRenderWindow"
+def _candidates() -> tuple[str, ...]:
+    """Return VTK's window classes to try; those of Linux need no display."""
+    if sys.platform.startswith("linux"):
+        return ("vtkEGLRenderWindow", "vtkOSOpenGLRenderWindow")
+    return ("vtkRenderWindow",)
 
 
 @functools.cache
-def check_graphics() -> None:
-    """Make sure, once a process, that rendering works here.
+def usable_window() -> str:
+    """Return, found once a process, the name of a window class that renders here.
 
     Raises
     ------
     MissingExtraError
         No graphics library; the message names the package.
     """
+    said = ""
+    for name in _candidates():
+        failure = _try(name)
+        if failure is None:
+            return name
+        said = said or failure
+    raise MissingExtraError(
+        "pictures cannot be drawn here: no graphics library that renders without a display. Install one "
+        f"(Debian, Ubuntu: apt install libegl1 libgl1-mesa-dri). A trial drawing ended with: {said}"
+    )
+
+
+def _try(name: str) -> str | None:
+    """Return None when a child process can render with this window class, else its last words."""
     if not sys.executable:
-        return
-    name = _window_class()
-    code = _PROBE.format(name=name)
-    if name == "vtkRenderWindow":
-        code = code.replace("import vtkmodules.vtkRenderingOpenGL2 as gl", "import vtkmodules.all as gl")
-    environment = {**os.environ, "PYTHONPATH": os.pathsep.join(p for p in sys.path if p)}
+        return None
     try:
         done = subprocess.run(
-            [sys.executable, "-c", code],
+            [sys.executable, "-c", _PROBE.format(name=name)],
             capture_output=True,
             text=True,
             timeout=_PROBE_SECONDS,
-            env=environment,
+            env={**os.environ, "PYTHONPATH": os.pathsep.join(p for p in sys.path if p)},
             check=False,
         )
-        said = done.stderr.strip()
-        if done.returncode == 0 and "rendered" in done.stdout:
-            return
     except subprocess.TimeoutExpired:
-        said = f"no answer within {_PROBE_SECONDS} s"
+        return f"no answer within {_PROBE_SECONDS} s"
     except OSError as error:
-        said = str(error)
-    raise MissingExtraError(
-        "pictures cannot be drawn here: no graphics library that renders without a display. Install it "
-        "(Debian, Ubuntu: apt install libegl1 libgl1-mesa-dri). "
-        f"A trial drawing ended with: {said.splitlines()[-1] if said else 'a crash and no message'}"
-    )
+        return str(error)
+    if done.returncode == 0 and "rendered" in done.stdout:
+        return None
+    lines = done.stderr.strip().splitlines()
+    return lines[-1] if lines else f"a crash without a message (status {done.returncode})"
 
 
 def make_window(size: tuple[int, int]) -> tuple[Any, Any, Any]:
@@ -80,13 +87,12 @@ def make_window(size: tuple[int, int]) -> tuple[Any, Any, Any]:
 
     The window has `FINE` times as many pixels on a side as the picture.
     """
-    check_graphics()
+    name = usable_window()
     import vtkmodules.vtkRenderingFreeType  # noqa: F401  (text)
     import vtkmodules.vtkRenderingOpenGL2 as gl
     from vtkmodules.vtkRenderingCore import vtkRenderer, vtkRenderWindow
 
-    name = _window_class()
-    window = getattr(gl, name)() if name != "vtkRenderWindow" else vtkRenderWindow()
+    window: Any = getattr(gl, name, vtkRenderWindow)()
     window.SetOffScreenRendering(1)
     window.SetShowWindow(False)
     window.SetMultiSamples(0)

@@ -17,7 +17,7 @@ from unturn.pictures._colours import choose_range
 from unturn.pictures._marks import Mark
 from unturn.pictures._picture import Picture
 from unturn.pictures._values import shape_of, values_of
-from unturn.pictures._window import check_graphics, write_png
+from unturn.pictures._window import usable_window, write_png
 from unturn.result import Association, Result
 
 Floats = NDArray[np.float64]
@@ -112,7 +112,8 @@ def draw(
     Raises
     ------
     UsageError
-        Not a PNG name, no such array, a size that makes no picture, or a place that cannot be written to.
+        Not a PNG name, no such array or component, a displacement, factor, range, camera or size that does not
+        fit, or a place that cannot be written to.
     MissingExtraError
         No graphics library; the message names the package.
 
@@ -122,9 +123,13 @@ def draw(
     """
     target = Path(path)
     _check(target, size)
+    if camera is not None and camera.size != tuple(size):
+        raise UsageError(
+            f"the camera was made for {camera.size[0]} x {camera.size[1]} pixels, not {size[0]} x {size[1]}."
+        )
     values = values_of(result, array, association, component, legend, unit)
     shape = shape_of(result, displacement, factor)
-    check_graphics()
+    usable_window()
     picture = Picture(result, values, shape, association, choose_range(values.numbers, colour_range), size)
     if camera is not None:
         picture.camera = camera
