@@ -64,6 +64,7 @@ def test_what_is_not_finite_is_passed_over() -> None:
     spoiled = SMOOTH.astype(np.float32).astype(float)
     spoiled[::5] = np.nan
     spoiled[1::7] = np.inf
+    spoiled[2::11] = 1e300
     assert storage_resolution(spoiled).relative == SINGLE
     assert storage_resolution(np.full((40, 3), np.nan)).relative == DOUBLE
 

@@ -9,6 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 _SAMPLE = 20_000
+_MARK = 1e30  # from here on a number is no coordinate or displacement but a mark for "nothing here"
 
 
 @dataclass(frozen=True)
@@ -62,7 +63,7 @@ def storage_resolution(values: NDArray[Any]) -> Resolution:
 def _distinct(flat: NDArray[np.float64]) -> NDArray[np.float64]:
     step = max(1, len(flat) // _SAMPLE)
     sample = flat[::step]
-    sample = sample[np.isfinite(sample) & (sample != 0)]
+    sample = sample[(np.abs(sample) < _MARK) & (sample != 0)]
     return np.unique(sample)
 
 

@@ -63,7 +63,8 @@ def _same_bits(a: Array, b: Array) -> bool:
 
 
 def _rows(a: Array) -> tuple[int, int]:
-    return len(a), int(np.prod(a.shape[1:], dtype=np.int64))
+    whole = np.atleast_1d(a)
+    return len(whole), int(np.prod(whole.shape[1:], dtype=np.int64))
 
 
 def _bits(a: Array) -> Array:
