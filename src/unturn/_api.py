@@ -8,11 +8,11 @@ from typing import Literal
 
 from unturn import io
 from unturn.errors import UsageError
-from unturn.fields import CellFields, Location, compute_fields
+from unturn.fields import Location
 from unturn.gradient import PlaneModel
-from unturn.measures import MEASURES
-from unturn.model import PlaneOptions, build_model
-from unturn.result import Result
+from unturn.pipeline import Computed, StrainOptions, compute, rigid_arrays
+from unturn.result import Association, Result
+from unturn.verdict import Solve
 
 
 def read(path: str | PathLike[str], step: Literal["last"] | int = "last") -> Result:
@@ -58,13 +58,23 @@ def strain(
     *,
     displacement: str | None = None,
     measures: Sequence[str] | None = None,
+    base: str = "small",
     at: Location = "centroid",
+    solve: Solve = "unknown",
     plane: PlaneModel | None = None,
     poisson: float | None = None,
     axis: Literal["x", "y"] = "y",
     coordinates: Literal["reference", "deformed"] = "reference",
     displacement_scale: float = 1.0,
     equivalent_poisson: float | None = None,
+    remove_rigid: str = "none",
+    rigid_to: str | None = None,
+    rigid_axis: str | None = None,
+    frame: str | None = None,
+    thermal_expansion: str | float | None = None,
+    temperature: str | None = None,
+    reference_temperature: float | None = None,
+    zero: Result | None = None,
     skin: bool = False,
     alive: str | None = None,
     prefix: str = "",
@@ -81,8 +91,14 @@ def strain(
         Point array to use, three scalar arrays as ``ux,uy,uz``; None: the one clear candidate.
     measures
         Array names, or ``["all"]``; None: strain, rotation, equivalent_strain, principal_strain.
+    base
+        ``small``, or ``green-lagrange``, ``hencky``, ``biot``, ``almansi``: each small measure is then replaced by its
+        counterpart of that base, whose name carries it.
     at
         ``centroid``, or ``mean``: the volume mean of the gradient, from which the rest is derived.
+    solve
+        ``linear``, ``nonlinear`` or ``unknown``: decides how rigid motion is fitted; finite measures of a linear solve
+        are refused.
     plane
         What a plane mesh assumes of its third direction: ``strain``, ``stress`` (with `poisson`), ``axisymmetric``.
     poisson
@@ -95,6 +111,22 @@ def strain(
         Factor from the displacement's unit to that of the points.
     equivalent_poisson
         None: `sqrt(2/3 e':e')`. A number: `1/(1+number)` times the norm of the principal differences.
+    remove_rigid
+        ``none``, ``whole``, ``bodies``, ``regions``, or the name of a region: take its rigid motion out first. Strain is
+        then in the axes of the undeformed part.
+    rigid_to
+        Take the motion of the region out of this one instead, or of the ``whole``.
+    rigid_axis
+        A known axis instead of the full fit: ``0,0,1 through 10,0,0``.
+    frame
+        Axes of the components: ``cylindrical z``, ``cylindrical 0,0,1 through 10,0,0``, ``cartesian 1,1,0 0,0,1``,
+        ``arrays FIRST SECOND``.
+    thermal_expansion, temperature, reference_temperature
+        Free thermal strain to take out: a coefficient (number, three along the axes of the frame, or by region
+        ``part=1:12e-6;part=2:23e-6``), a point or cell array, a number. Gives `mechanical_strain` and what derives from it.
+    zero
+        A step of the same series from which displacements are measured: `u - u_N` for small, `F F_N^-1` for finite
+        measures.
     skin
         Also compute cells whose nodes all belong to one cell of higher dimension.
     alive
@@ -136,27 +168,24 @@ def strain(
     >>> round(strain(pulled).cell_data["equivalent_strain"][0] * 1e6)
     867
     """
-    model = build_model(
-        result,
-        displacement=displacement,
-        displacement_scale=displacement_scale,
-        coordinates=coordinates,
-        plane=PlaneOptions(plane, poisson, axis),
-        skin=skin,
-        alive=alive,
-    )
-    fields = compute_fields(model, measures, at=at, equivalent_poisson=equivalent_poisson, threads=threads)
-    return add_fields(result, fields, prefix=prefix, overwrite=overwrite)
+    options = StrainOptions(
+        displacement, measures, base, at, solve, plane, poisson, axis, coordinates, displacement_scale,
+        equivalent_poisson, remove_rigid, rigid_to, rigid_axis, frame, thermal_expansion, temperature,
+        reference_temperature, skin, alive, threads,
+    )  # fmt: skip
+    computed = compute(result, options, zero=zero)
+    return add_fields(result, computed, prefix=prefix, overwrite=overwrite)
 
 
-def add_fields(result: Result, fields: CellFields, *, prefix: str = "", overwrite: bool = False) -> Result:
-    """Return the result with computed fields as cell arrays.
+def add_fields(result: Result, computed: Computed, *, prefix: str = "", overwrite: bool = False) -> Result:
+    """Return the result with computed fields as cell arrays, and rigid motions that were taken out as field arrays.
 
     Raises
     ------
     UsageError
         An array of that name is already there and `overwrite` is not set.
     """
+    fields = computed.fields
     arrays = {prefix + name: values for name, values in fields.arrays.items()}
     taken = [name for name in arrays if name in result.cell_data]
     if taken and not overwrite:
@@ -165,9 +194,9 @@ def add_fields(result: Result, fields: CellFields, *, prefix: str = "", overwrit
             f"{where}the file already has a cell array called {taken[0]!r}; it is not overwritten unasked. Give the new "
             "arrays other names with --prefix TEXT, or replace the old ones with --overwrite."
         )
-    names: dict[tuple[Literal["cell"], str], Sequence[str]] = {
-        ("cell", prefix + name): MEASURES[name].components
-        for name in fields.arrays
-        if name in MEASURES and MEASURES[name].components
+    names: dict[tuple[Association, str], tuple[str, ...]] = {
+        ("cell", prefix + name): components for name, components in fields.components.items()
     }
-    return result.with_arrays(cell_data=arrays, component_names=names)  # type: ignore[arg-type]
+    return result.with_arrays(
+        cell_data=arrays, field_data=rigid_arrays(computed.removals, prefix), component_names=names
+    )

@@ -15,7 +15,8 @@ from unturn.statistics import weighted_percentiles
 
 _NAMES = re.compile(r"strain|^e$|^el$|^le$|^ee$|^eps(ilon)?$|^epto$|^epel$", re.IGNORECASE)
 _NOT = re.compile(
-    r"plastic|thermal|creep|inelastic|energy|rate|equiv|mises|princ|_?pe$|error|eff|volum|direction|max", re.IGNORECASE
+    r"plastic|thermal|creep|inelastic|energy|rate|equiv|mises|princ|_?pe$|error|eff|volum|direction|max",
+    re.IGNORECASE,
 )
 
 _ORDERS: dict[str, tuple[int, ...]] = {
@@ -93,7 +94,9 @@ def compare_with_solver(fields: CellFields, threads: int | None = None) -> list[
     candidates = strain_arrays(fields)
     if not candidates or fields.diagnostics is None:
         return []
-    H = compute_fields(fields.model, ["displacement_gradient"], threads=threads).arrays["displacement_gradient"]
+    H = compute_fields(fields.model, ["displacement_gradient"], threads=threads).arrays[
+        "displacement_gradient"
+    ]
     gradient = np.moveaxis(H.reshape(-1, 3, 3), 0, -1)
     ours = {"small strain": six_from_full(gradient), "Green-Lagrange strain": green_lagrange(gradient)}
     return [_best(name, where, values, ours, fields) for name, where, values in candidates]

@@ -49,6 +49,8 @@ class CellDiagnostics:
         Determinant of `F = I + H`; not above zero where the displacement turns the element inside out.
     principal
         `(n_cells, 2)` largest and smallest principal strain.
+    stretches
+        `(n_cells, 2)` largest and smallest stretch; only with finite measures, else NaN.
     centroid
         `(n_cells, 3)`.
     dimension
@@ -62,6 +64,7 @@ class CellDiagnostics:
     noise: Floats
     det_f: Floats
     principal: Floats
+    stretches: Floats
     centroid: Floats
     dimension: NDArray[np.int8]
 
@@ -139,7 +142,12 @@ def compute_fields(
     if at not in LOCATIONS:
         raise UsageError(f"at={at!r} is not known; use one of {', '.join(LOCATIONS)}.")
     _check_third_direction(model, names)
-    if thermal is not None and not thermal.isotropic and model.plane is not None and model.plane.model == "stress":
+    if (
+        thermal is not None
+        and not thermal.isotropic
+        and model.plane is not None
+        and model.plane.model == "stress"
+    ):
         raise UsageError(
             "plane stress with an expansion that differs by direction is not supported: the strain across the plane "
             "would need the elastic constants."
@@ -185,9 +193,7 @@ class _Job:
         self.frame, self.thermal = frame, thermal
         self.measures: list[Measure] = [MEASURES[n] for n in names if n in MEASURES]
         self.directions = any(m.directions for m in self.measures)
-        self.needs_finite = (
-            diagnose or "small_strain_error" in names or any(m.finite for m in self.measures)
-        )
+        self.needs_finite = diagnose or "small_strain_error" in names or any(m.finite for m in self.measures)
         n = model.result.n_cells
         whole = all(len(b.active) == len(b.cells) for b in model.blocks)
         self.arrays: dict[str, Floats] = {}
@@ -200,9 +206,19 @@ class _Job:
         self.diagnostics: CellDiagnostics | None = None
         if diagnose:
             volume, error, stretch, angle, noise, det_f = (np.full(n, np.nan) for _ in range(6))
-            principal, centroid = np.full((n, 2), np.nan), np.full((n, 3), np.nan)
+            principal, stretches = np.full((n, 2), np.nan), np.full((n, 2), np.nan)
+            centroid = np.full((n, 3), np.nan)
             self.diagnostics = CellDiagnostics(
-                volume, error, stretch, angle, noise, det_f, principal, centroid, np.zeros(n, dtype=np.int8)
+                volume,
+                error,
+                stretch,
+                angle,
+                noise,
+                det_f,
+                principal,
+                stretches,
+                centroid,
+                np.zeros(n, dtype=np.int8),
             )
             stored = model.displacement.stored
             self.resolution_u = max(storage_resolution(a).relative for a in stored)
@@ -274,9 +290,7 @@ class _Job:
         if self.diagnostics is not None:
             self._diagnose(chunk, point, split, place, volume, rows)
 
-    def _axes(
-        self, chunk: ElementChunk, place: Samples, rows: slice | NDArray[np.int64]
-    ) -> Floats | None:
+    def _axes(self, chunk: ElementChunk, place: Samples, rows: slice | NDArray[np.int64]) -> Floats | None:
         if self.frame is None:
             return None
         centroid = np.stack([chunk.interpolate(place.functions[0], i) for i in range(3)])
@@ -345,16 +359,16 @@ class _Job:
         d.det_f[rows] = 1.0 + relative_volume_change(split.finite_H)
         principal = split.principal
         d.principal[rows, 0], d.principal[rows, 1] = principal[0], principal[2]
+        if any(m.finite for m in self.measures):
+            longest = 1.0 + split.finite.biot_values
+            d.stretches[rows, 0], d.stretches[rows, 1] = longest[0], longest[2]
         for i in range(3):
             d.centroid[rows, i] = chunk.interpolate(place.functions[0], i)
         d.dimension[rows] = chunk.row.dim
         steepest = 1.0 / smallest_height(chunk, point)
         H_size = np.sqrt(np.nansum(split.H**2, axis=(0, 1)))
-        largest = [
-            np.maximum(np.abs(chunk.first[a:b] + 0.0).max(axis=0), np.abs(chunk.relative[a:b] + chunk.first[a:b, None]).max(axis=(0, 1)))
-            for a, b in ((0, 3), (3, 6))
-        ]  # fmt: skip
-        d.noise[rows] = (self.resolution_u * largest[1] + H_size * self.resolution_x * largest[0]) * steepest
+        far, moved = chunk.magnitudes()
+        d.noise[rows] = (self.resolution_u * moved + H_size * self.resolution_x * far) * steepest
 
     def finish(self) -> CellFields:
         left_out = dict(self.model.left_out)

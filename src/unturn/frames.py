@@ -49,10 +49,11 @@ class Frame:
         On the axis of a cylindrical frame the radial direction is not defined: NaN.
         """
         if self.fixed is not None:
-            return np.broadcast_to(self.fixed[:, :, None], (3, 3, centroid.shape[1]))
+            return np.repeat(self.fixed[:, :, None], centroid.shape[1], axis=2)
         if self.cells is not None:
             return np.moveaxis(self.cells[rows], 0, -1)
-        assert self.point is not None and self.direction is not None
+        assert self.point is not None
+        assert self.direction is not None
         n = self.direction[:, None]
         arm = centroid - self.point[:, None]
         arm = arm - n * (n * arm).sum(axis=0)
@@ -75,10 +76,11 @@ class Frame:
 def turned_components(values: Floats, axes: Floats) -> Floats:
     """Return a vector `(3, m)`, symmetric tensor `(6, m)` or full tensor `(9, m)` in the frame of `axes`."""
     if len(values) == 3:
-        return np.einsum("aim,im->am", axes, values)
+        vector: Floats = np.einsum("aim,im->am", axes, values)
+        return vector
     if len(values) == 9:
-        full = np.einsum("aim,ijm,bjm->abm", axes, values.reshape(3, 3, -1), axes, optimize=True)
-        return full.reshape(9, -1)
+        turned: Floats = np.einsum("aim,ijm,bjm->abm", axes, values.reshape(3, 3, -1), axes, optimize=True)
+        return turned.reshape(9, -1)
     full = np.empty((3, 3, values.shape[1]))
     for k, (i, j) in enumerate(PAIRS):
         full[i, j] = full[j, i] = values[k]
@@ -142,7 +144,8 @@ def _unit(vector: Floats, text: str) -> Floats:
     size = float(np.linalg.norm(vector))
     if not size > 0:
         raise UsageError(f"--frame {text!r}: a direction has no length.")
-    return vector / size
+    unit: Floats = vector / size
+    return unit
 
 
 def _orthonormal(first: Floats, second: Floats, text: str) -> Floats:
@@ -166,5 +169,7 @@ def _cell_directions(result: Result, name: str) -> Floats:
             f"--frame: no cell array is called {name!r}.{close_matches(name, result.cell_data)} Cell arrays: {present}."
         )
     if values.ndim != 2 or values.shape[1] != 3:
-        raise UsageError(f"--frame: cell array {name!r} has shape {values.shape}; a direction has 3 components.")
+        raise UsageError(
+            f"--frame: cell array {name!r} has shape {values.shape}; a direction has 3 components."
+        )
     return np.asarray(values, dtype=np.float64)

@@ -134,7 +134,9 @@ class ElementChunk:
             fields.rows[k].take(nodes, out=values[k], mode="clip")
         self.first = values[:, 0]
         self.relative = values[:, 1:] - values[:, :1]
+        self._moved: Floats | None = None
         if back is not None:
+            self._moved = self.magnitudes()[1]  # as stored
             form = "ij,jam->iam" if back.ndim == 3 else "ijm,jam->iam"
             change = np.einsum(form, back[0], self.relative[:3])
             change += np.einsum(form, back[1], self.relative[3:])
@@ -142,6 +144,14 @@ class ElementChunk:
 
     def __len__(self) -> int:
         return int(self.first.shape[1])
+
+    def magnitudes(self) -> tuple[Floats, Floats]:
+        """Return the largest coordinate and the largest displacement of each element as stored, `(m,)` each."""
+        values = self.relative + self.first[:, None]
+        far = np.maximum(np.abs(self.first[:3]).max(axis=0), np.abs(values[:3]).max(axis=(0, 1)))
+        if self._moved is not None:
+            return far, self._moved
+        return far, np.maximum(np.abs(self.first[3:]).max(axis=0), np.abs(values[3:]).max(axis=(0, 1)))
 
     def interpolate(self, functions: Floats, row: int) -> Floats:
         """Return coordinate `row` (0 to 2) or displacement `row - 3` `(m,)` at a point with these shape functions."""
@@ -269,7 +279,9 @@ def _product(U: Floats, inverse: Floats) -> Floats:
 def _flat(J: Floats, det: Floats) -> NDArray[np.bool_] | None:
     """Return which cells have no volume; None when no cell can be flat: the smallest determinant is large enough."""
     values = J.reshape(-1)
-    bound = _FLAT * (float(np.einsum("i,i->", values, values)) / 3.0) ** 1.5  # no smaller than _FLAT times the product of any columns
+    bound = (
+        _FLAT * (float(np.einsum("i,i->", values, values)) / 3.0) ** 1.5
+    )  # no smaller than _FLAT times the product of any columns
     if float(np.abs(det).min(initial=np.inf)) > bound:
         return None
     squares = J * J

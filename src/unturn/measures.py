@@ -224,7 +224,9 @@ def _finite_rows(base: str) -> list[Measure]:
     def row(small: str, components: tuple[str, ...], compute: Callable[[Split], Floats], unit: str, signed: bool,
             meaning: str) -> Measure:  # fmt: skip
         name = f"strain_{base}" if small == "strain" else f"{small}_{base}"
-        return Measure(name, components, compute, unit, True, signed, meaning, _FINITE, finite=True, base=small)
+        return Measure(
+            name, components, compute, unit, True, signed, meaning, _FINITE, finite=True, base=small
+        )
 
     return [
         row("strain", TENSOR, tensor, "strain", True, word),
@@ -360,7 +362,11 @@ def choose_measures(
 
 
 def _finite_names() -> list[str]:
-    plain = [m.name for m in MEASURES.values() if m.finite and m.base in ("", "strain", "rotation", "rotation_angle")]
+    plain = [
+        m.name
+        for m in MEASURES.values()
+        if m.finite and m.base in ("", "strain", "rotation", "rotation_angle")
+    ]
     return [*plain, "and those derived from a strain, as equivalent_strain_hencky"]
 
 
@@ -371,6 +377,8 @@ def _counterparts(base: str) -> dict[str, str]:
     key = base.replace("-", "_")
     if key not in BASES:
         names = ["small", *(b.replace("_", "-") for b in BASES)]
-        raise UsageError(f"no base is called {base!r}.{close_matches(base, names)} Bases: {', '.join(names)}.")
+        raise UsageError(
+            f"no base is called {base!r}.{close_matches(base, names)} Bases: {', '.join(names)}."
+        )
     rows = [*_finite_motion(), *_finite_rows(key)]
     return {row.base: row.name for row in rows if row.base}

@@ -105,7 +105,9 @@ class Model:
     back: Floats | None = None
     back_of: NDArray[np.int64] | None = None
 
-    def chunk(self, block: ModelBlock, connectivity: NDArray[np.int64], index: NDArray[np.int64]) -> ElementChunk:
+    def chunk(
+        self, block: ModelBlock, connectivity: NDArray[np.int64], index: NDArray[np.int64]
+    ) -> ElementChunk:
         """Return some elements of a block, gathered, without the rigid motions that are to be taken out."""
         assert block.row is not None
         back = None
@@ -361,6 +363,6 @@ def _check_axis(result: Result, points: Floats, normal: int, axis: int) -> None:
     low, high = float(radius.min()), float(radius.max())
     if low < -1e-9 * max(abs(low), abs(high)):
         raise UsageError(
-            f"{_where(result)}--plane axisymmetric about {'xyz'[axis]}: the mesh reaches across the axis (radius {low:.6g} to "
+            f"{_where(result)}--plane axisymmetric about {'xyz'[axis]}: it reaches across the axis (radius {low:.6g} to "
             f"{high:.6g}). Choose the other axis with --axis, or move the mesh."
         )

@@ -105,7 +105,9 @@ def take_out(
     back, back_of, removals = [], np.full(model.result.n_cells, -1, dtype=np.int64), []
     for number, (fitted, cells, applied, target) in enumerate(parts):
         kinds: tuple[Fit, ...] = _KINDS[solve]
-        found = sorted((fit_rigid_motion(model, cells, kind, axis) for kind in kinds), key=lambda m: m.residual)
+        found = sorted(
+            (fit_rigid_motion(model, cells, kind, axis) for kind in kinds), key=lambda m: m.residual
+        )
         motion, other = found[0], found[1] if len(found) > 1 else None
         back.append(_back(motion))
         back_of[target] = number
@@ -203,8 +205,8 @@ def fit_rigid_motion(
 def _moments(model: Model, mask: NDArray[np.bool_]) -> _Moments:
     origin = _start(model, mask)
     volume, first, second = 0.0, np.zeros(6), np.zeros((6, 6))
-    for values, weights in _points(model, mask):
-        values -= origin[:, None]
+    for points, weights in _points(model, mask):
+        values = points - origin[:, None]
         volume += float(weights.sum())
         first += np.einsum("im,m->i", values, weights)
         second += np.einsum("im,jm,m->ij", values, values, weights)
@@ -240,7 +242,11 @@ def _points(model: Model, mask: NDArray[np.bool_]) -> Iterator[tuple[Floats, Flo
 def _start(model: Model, mask: NDArray[np.bool_]) -> Floats:
     """Return the mean coordinates and displacement of some of the nodes: sums are taken relative to it."""
     for block in model.blocks:
-        nodes = block.connectivity[mask[block.index]].reshape(-1) if block.row is not None else np.zeros(0, np.int64)
+        nodes = (
+            block.connectivity[mask[block.index]].reshape(-1)
+            if block.row is not None
+            else np.zeros(0, np.int64)
+        )
         rows = model.fields.rows[:, nodes[:: max(1, len(nodes) // 1000)]]
         rows = rows[:, np.isfinite(rows).all(axis=0)]
         if rows.shape[1]:
@@ -323,10 +329,9 @@ def _about_axis(m: _Moments, fit: Fit, axis: Axis) -> RigidMotion:
     spread = float(np.trace(P @ XX))
     if not spread > 0:
         raise UsageError("the part lies on the rotation axis: its angle cannot be found.")
-    if fit == "linearised":
-        angle = sine / spread
-    else:
-        angle = float(np.arctan2(sine, spread + float(np.trace(P @ uX))))
+    angle = (
+        sine / spread if fit == "linearised" else float(np.arctan2(sine, spread + float(np.trace(P @ uX))))
+    )
     theta = angle * n
     turn = skew(theta) if fit == "linearised" else turn_of(theta)
     return RigidMotion(fit, m.center, turn @ arm, theta, 0.0)
@@ -344,7 +349,11 @@ def _with_residual(model: Model, mask: NDArray[np.bool_], m: _Moments, motion: R
     """Return the motion with the root mean square of what it leaves."""
     turn, square = motion.turn, 0.0
     for values, weights in _points(model, mask):
-        left = values[3:] - motion.translation[:, None] - np.einsum("ij,jm->im", turn, values[:3] - m.center[:, None])
+        left = (
+            values[3:]
+            - motion.translation[:, None]
+            - np.einsum("ij,jm->im", turn, values[:3] - m.center[:, None])
+        )
         square += float(np.einsum("im,im,m->", left, left, weights))
     return replace(motion, residual=float(np.sqrt(square / m.volume)))
 
@@ -356,6 +365,10 @@ def unwrapped(rotation: Floats, previous: Floats) -> Floats:
     if size == 0:
         return rotation
     n = rotation / angle if angle > 1e-12 else previous / size
-    turns = np.rint((float(previous @ n) - angle) / (2.0 * np.pi)) if angle > 1e-12 else np.rint(size / (2.0 * np.pi))
+    turns = (
+        np.rint((float(previous @ n) - angle) / (2.0 * np.pi))
+        if angle > 1e-12
+        else np.rint(size / (2.0 * np.pi))
+    )
     start = angle if angle > 1e-12 else 0.0
     return np.asarray(n * (start + 2.0 * np.pi * turns))

@@ -16,8 +16,11 @@ from unturn.kinematics._symmetric import Floats
 from unturn.measures import MEASURES
 from unturn.model import Model
 from unturn.numbering import Numbering, element_numbers
+from unturn.pipeline import Computed
 from unturn.regions import Region, find_regions, named_regions
+from unturn.rigid import Removal
 from unturn.statistics import LOW_PERCENTILES, PERCENTILES, Statistics, statistics
+from unturn.trial import Trial, try_without_rigid_motion
 from unturn.verdict import Solve, Verdict, judge
 
 SCHEMA = "unturn.summary/1"
@@ -41,6 +44,7 @@ class RegionSummary:
 
     region: Region
     verdict: Verdict
+    trial: Trial | None
     volume: float
     statistics: dict[str, Statistics]
 
@@ -56,14 +60,23 @@ class Summary:
     agreements: tuple[Agreement, ...]
     warnings: tuple[str, ...]
     other_dimensions: dict[int, int]
+    removals: tuple[Removal, ...] = ()
+
+    @property
+    def finite_only(self) -> bool:
+        """Whether every strain among the arrays is a finite measure."""
+        strains = [MEASURES[n] for n in self.fields.arrays if n in MEASURES and MEASURES[n].unit == "strain"]
+        return bool(strains) and all(m.finite or m.name == "small_strain_error" for m in strains)
 
 
-def summarise(fields: CellFields, options: SummaryOptions | None = None, threads: int | None = None) -> Summary:
+def summarise(
+    computed: Computed, options: SummaryOptions | None = None, threads: int | None = None
+) -> Summary:
     """Return the summary of computed fields.
 
     Parameters
     ----------
-    fields
+    computed
         Computed with ``diagnose=True``.
     options
         See `SummaryOptions`.
@@ -76,6 +89,7 @@ def summarise(fields: CellFields, options: SummaryOptions | None = None, threads
         A region that does not exist.
     """
     options = options or SummaryOptions()
+    fields = computed.fields
     d = fields.diagnostics
     assert d is not None
     judged = d.dimension == fields.model.dimension
@@ -91,10 +105,16 @@ def summarise(fields: CellFields, options: SummaryOptions | None = None, threads
             name: statistics(values, d.volume, cells, _percentages(name, signed, options.full))
             for name, (values, signed) in columns.items()
         }
-        verdict = judge(d, Region(region.name, cells, region.origin), options.solve, options.mode)
-        made.append(RegionSummary(region, verdict, float(np.nansum(d.volume[cells])), found))
+        counted = Region(region.name, cells, region.origin)
+        verdict = judge(d, counted, options.solve, options.mode)
+        trial = None
+        if verdict.level == "does not hold" and options.solve != "linear" and not computed.removals:
+            trial = try_without_rigid_motion(fields, counted, options.at, threads)
+        made.append(RegionSummary(region, verdict, trial, float(np.nansum(d.volume[cells])), found))
     others = {
-        int(k): int((d.dimension == k).sum()) for k in np.unique(d.dimension) if 0 < k < fields.model.dimension
+        int(k): int((d.dimension == k).sum())
+        for k in np.unique(d.dimension)
+        if 0 < k < fields.model.dimension
     }
     return Summary(
         fields,
@@ -104,13 +124,14 @@ def summarise(fields: CellFields, options: SummaryOptions | None = None, threads
         tuple(compare_with_solver(fields, threads)),
         tuple(_warnings(fields, d, made)),
         others,
+        computed.removals,
     )
 
 
 def _percentages(name: str, signed: bool, full: bool) -> Sequence[float]:
     if full:
         return (*LOW_PERCENTILES, *PERCENTILES) if signed else PERCENTILES
-    return (99.9,) if name in ("equivalent_strain", "principal_strain_1") else ()
+    return (99.9,) if name.startswith("equivalent_strain") or name == "principal_strain_1" else ()
 
 
 def _columns(fields: CellFields, d: CellDiagnostics, full: bool) -> dict[str, tuple[Floats, bool]]:
@@ -123,12 +144,22 @@ def _columns(fields: CellFields, d: CellDiagnostics, full: bool) -> dict[str, tu
             continue
         if values.ndim == 1:
             columns[name] = (values, signed)
-        elif measure is not None and (full or name == "strain" and _third_unknown(fields.model)):
-            for k, component in enumerate(measure.components):
+            continue
+        labels = fields.components.get(name, ())
+        principal = name.startswith("principal_strain")
+        for k, component in enumerate(labels):
+            if full or (principal and k != 1) or (name == "strain" and _third_unknown(fields.model)):
                 columns[f"{name}_{component}"] = (values[:, k], signed)
-    if not _third_unknown(fields.model):
+    small = any(
+        not MEASURES[n].finite and MEASURES[n].unit == "strain" for n in fields.arrays if n in MEASURES
+    )
+    if small and not _third_unknown(fields.model):
         columns["principal_strain_1"] = (d.principal[:, 0], True)
         columns["principal_strain_3"] = (d.principal[:, 1], True)
+    if any(MEASURES[n].finite for n in fields.arrays if n in MEASURES):
+        columns["det_f"] = (d.det_f, True)
+        columns["stretch_1"] = (d.stretches[:, 0], True)
+        columns["stretch_3"] = (d.stretches[:, 1], True)
     columns["angle_of_turn"] = (d.angle, False)
     return columns
 
@@ -146,7 +177,9 @@ def _warnings(fields: CellFields, d: CellDiagnostics, regions: list[RegionSummar
             f"strain of {largest:.3g} (99 % of the volume below) is rubber or a wrong unit: check --displacement-scale"
         )
     elif 0 < largest < 1e-8:
-        found.append(f"strain of {largest:.3g} is very small: check the unit of the displacement, --displacement-scale")
+        found.append(
+            f"strain of {largest:.3g} is very small: check the unit of the displacement, --displacement-scale"
+        )
     inside_out = int((d.det_f <= 0).sum())
     if inside_out:
         found.append(
@@ -207,6 +240,7 @@ def summary_data(summary: Summary) -> dict[str, Any]:
              "agrees": a.agrees}
             for a in summary.agreements
         ],
+        "rigid_motion_taken_out": [_removal_data(r) for r in summary.removals],
         "left_out": {reason: len(cells) for reason, cells in fields.left_out.items()},
         "other_dimensions": {f"{k}D": n for k, n in summary.other_dimensions.items()},
         "notes": list(model.notes),
@@ -233,8 +267,28 @@ def _region_data(r: RegionSummary, summary: Summary) -> dict[str, Any]:
             "share_above_10_percent": v.share_broken,
             "largest_rotation_degrees": v.largest_rotation,
             "action": v.action,
+            "tried": None
+            if r.trial is None
+            else {
+                "option": r.trial.option,
+                "error_left_over_size": r.trial.left,
+                "small_strain": r.trial.level,
+            },
         },
         "statistics": {name: _statistics_data(s, summary, v.size) for name, s in r.statistics.items()},
+    }
+
+
+def _removal_data(r: Removal) -> dict[str, Any]:
+    return {
+        "fitted_over": r.fitted,
+        "taken_out_of": r.applied,
+        "fit": r.motion.fit,
+        "translation": r.motion.translation.tolist(),
+        "rotation_vector_degrees": np.degrees(r.motion.rotation).tolist(),
+        "center": r.motion.center.tolist(),
+        "residual_rms": r.motion.residual,
+        "residual_rms_of_other_fit": None if r.other is None else r.other.residual,
     }
 
 

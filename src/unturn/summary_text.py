@@ -3,11 +3,12 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from pathlib import PurePath
 
 import numpy as np
 
+from unturn.rigid import Removal
 from unturn.summary import CAUTION, RegionSummary, Summary, cell_counts, equivalent_form, mesh_kind
 from unturn.verdict import Verdict
 
@@ -51,7 +52,11 @@ def _kind(summary: Summary) -> str:
         said = f"plane mesh in {axes}, third direction "
         if plane.model is None:
             return said + "not stated (ZZ is NaN)"
-        extra = {"stress": f", nu = {plane.poisson}", "axisymmetric": f" about {'xyz'[plane.axis]}", "strain": ""}
+        extra = {
+            "stress": f", nu = {plane.poisson}",
+            "axisymmetric": f" about {'xyz'[plane.axis]}",
+            "strain": "",
+        }
         return said + f"plane {plane.model}{extra[plane.model]}".replace("plane axi", "axi")
     if kind == "surface":
         return "surface mesh: in-plane strain of the mid-surface only"
@@ -72,6 +77,16 @@ def _verdicts(summary: Summary) -> list[str]:
     for r in shown:
         if r.verdict.action:
             by_action.setdefault(r.verdict.action, []).append(r.region.name)
+    tried = [r for r in shown if r.trial is not None]
+    for r in tried[:_MOST_VERDICTS]:
+        assert r.trial is not None
+        enough = "" if r.trial.level in ("holds", "marginal", "no strain") else ", which is not enough"
+        lines.append(
+            f"  tried, {r.region.name}: its rigid motion taken out, {_ratio(r.trial.left)} error left{enough} "
+            f"({r.trial.option})"
+        )
+    if summary.finite_only:
+        return [*lines, "  -> the arrays that are written are finite measures: they contain no turning"]
     for action, names in by_action.items():
         listed = ", ".join(names[:4]) + (f" and {len(names) - 4} more" if len(names) > 4 else "")
         lines.append(f"  -> {listed}: {action}")
@@ -112,18 +127,53 @@ def _share(value: float) -> str:
     return f"{100 * value:.2g} %" if value < 0.995 else f"{100 * value:.0f} %"
 
 
-_ROWS: tuple[tuple[str, str, str], ...] = (
-    ("largest principal", "principal_strain_1", "maximum"),
-    ("smallest principal", "principal_strain_3", "minimum"),
-    ("equivalent, largest", "equivalent_strain", "maximum"),
-    ("largest XX", "strain_XX", "maximum"),
-    ("smallest XX", "strain_XX", "minimum"),
-    ("largest YY", "strain_YY", "maximum"),
-    ("smallest YY", "strain_YY", "minimum"),
-    ("max shear, largest", "max_shear_strain", "maximum"),
-    ("volumetric, largest", "volumetric_strain", "maximum"),
-    ("volumetric, smallest", "volumetric_strain", "minimum"),
+_BASES = {
+    "": "",
+    "_mechanical": ", mechanical",
+    "_green_lagrange": ", Green-Lagrange",
+    "_hencky": ", Hencky",
+    "_biot": ", Biot",
+    "_almansi": ", Almansi",
+}
+_STRAIN_ROWS: tuple[tuple[str, str, str], ...] = tuple(
+    row
+    for suffix, words in _BASES.items()
+    for row in (
+        (f"largest principal{words}", f"principal_strain{suffix}_1", "maximum"),
+        (f"smallest principal{words}", f"principal_strain{suffix}_3", "minimum"),
+        (f"equivalent, largest{words}", f"equivalent_strain{suffix}", "maximum"),
+        (f"max shear, largest{words}", f"max_shear_strain{suffix}", "maximum"),
+        (f"volumetric, largest{words}", f"volumetric_strain{suffix}", "maximum"),
+        (f"volumetric, smallest{words}", f"volumetric_strain{suffix}", "minimum"),
+    )
 )
+
+
+_FINITE_ENDS = tuple(
+    f"{base}{end}" for base in _BASES if base not in ("", "_mechanical") for end in ("", "_1", "_3")
+)
+
+
+def _rows(shown: Sequence[RegionSummary]) -> list[tuple[str, str, str]]:
+    """Return label, statistics name and which extreme of the rows of the table."""
+    have = shown[0].statistics
+    rows = list(_STRAIN_ROWS)
+    if (
+        "principal_strain_1" not in have
+    ):  # a plane mesh whose third direction is not stated: components instead
+        for name in have:
+            if name.startswith("strain_") and name.split("_")[1] not in (
+                "green",
+                "hencky",
+                "biot",
+                "almansi",
+            ):
+                component = name.removeprefix("strain_")
+                rows += [
+                    (f"largest {component}", name, "maximum"),
+                    (f"smallest {component}", name, "minimum"),
+                ]
+    return [row for row in rows if all(row[1] in r.statistics for r in shown)]
 
 
 def _table(summary: Summary) -> list[str]:
@@ -133,18 +183,24 @@ def _table(summary: Summary) -> list[str]:
     unit = "microstrain" + (" per unit amplitude" if summary.options.mode else "")
     digits = _digits(summary)
     rows: list[list[str]] = [[unit, *(r.region.name for r in shown)]]
-    for label, name, which in _ROWS:
-        instead = name.startswith("strain_") and "principal_strain_1" in shown[0].statistics
-        if instead or not all(name in r.statistics for r in shown):
+    for label, name, which in _rows(shown):
+        if not any(math.isfinite(r.statistics[name].maximum) for r in shown):
             continue
         rows.append([label, *(_micro(getattr(r.statistics[name], which)) for r in shown)])
         at = f"at_{which}"
         rows.append(["  where", *(_where(getattr(r.statistics[name], at), summary) for r in shown)])
-        rows.append(["  at x, y, z", *(_position(getattr(r.statistics[name], at), summary, digits) for r in shown)])
-        if not summary.options.mode:
-            rows.append(["  error there", *(_error(getattr(r.statistics[name], at), r, summary) for r in shown)])
+        rows.append(
+            ["  at x, y, z", *(_position(getattr(r.statistics[name], at), summary, digits) for r in shown)]
+        )
+        if not summary.options.mode and not name.endswith(_FINITE_ENDS):
+            rows.append(
+                ["  error there", *(_error(getattr(r.statistics[name], at), r, summary) for r in shown)]
+            )
     if any(math.isfinite(_percentile(r)) for r in shown):
         rows.append(["99.9 % of volume below", *(_micro(_percentile(r)) for r in shown)])
+    for label, name in (("det F, smallest to largest", "det_f"), ("stretch, smallest to largest", "stretch")):
+        if "det_f" in shown[0].statistics:
+            rows.append([label, *(_scatter(r, name) for r in shown)])
     rows.append(["largest rotation, degree", *(_degrees(r.verdict.largest_rotation) for r in shown)])
     lines = _aligned(rows)
     if len(shown) < len(summary.regions):
@@ -153,17 +209,30 @@ def _table(summary: Summary) -> list[str]:
     return lines
 
 
+def _scatter(r: RegionSummary, name: str) -> str:
+    low, high = ("det_f", "det_f") if name == "det_f" else ("stretch_3", "stretch_1")
+    return f"{r.statistics[low].minimum:.4g} to {r.statistics[high].maximum:.4g}"
+
+
+def _leading(r: RegionSummary) -> str:
+    """Return the number by which a region is ranked: its equivalent strain, of whatever base."""
+    names = [n for n in r.statistics if n.startswith("equivalent_strain")]
+    return (
+        names[0]
+        if names
+        else "principal_strain_1"
+        if "principal_strain_1" in r.statistics
+        else "angle_of_turn"
+    )
+
+
 def _peak(r: RegionSummary) -> float:
-    name = "equivalent_strain" if "equivalent_strain" in r.statistics else "angle_of_turn"
-    value = r.statistics[name].maximum
+    value = r.statistics[_leading(r)].maximum
     return value if math.isfinite(value) else -1.0
 
 
 def _percentile(r: RegionSummary) -> float:
-    for name in ("equivalent_strain", "principal_strain_1"):
-        if name in r.statistics:
-            return r.statistics[name].percentiles.get(99.9, math.nan)
-    return math.nan
+    return r.statistics[_leading(r)].percentiles.get(99.9, math.nan)
 
 
 def _micro(value: float) -> str:
@@ -183,10 +252,14 @@ def _where(cell: int, summary: Summary) -> str:
     return f"element {summary.numbers.numbers[cell]} (cell {cell})"
 
 
+def _extent(summary: Summary) -> float:
+    points = summary.fields.model.points
+    return float(np.nanmax(np.nanmax(points, axis=0) - np.nanmin(points, axis=0)))
+
+
 def _digits(summary: Summary) -> int:
     """Return how many decimals tell a position to a ten-thousandth of the model's size."""
-    points = summary.fields.model.points
-    extent = float(np.nanmax(np.nanmax(points, axis=0) - np.nanmin(points, axis=0)))
+    extent = _extent(summary)
     return max(0, 4 - math.ceil(math.log10(extent))) if 0 < extent < math.inf else 3
 
 
@@ -214,18 +287,21 @@ def _aligned(rows: list[list[str]], left: bool = False) -> list[str]:
 def _tail(summary: Summary) -> list[str]:
     fields, options = summary.fields, summary.options
     lines = []
-    if "equivalent_strain" in fields.arrays:
+    if any(name.startswith("equivalent_strain") for name in fields.arrays):
         form = equivalent_form(options.equivalent_poisson)
         lines.append(f"equivalent = {form}; values at element {_location(options.at)}; shear is tensor shear")
     else:
         lines.append(f"values at element {_location(options.at)}; shear is tensor shear")
+    lines += [line for r in summary.removals for line in _removed(r, _extent(summary))]
     left = ", ".join(f"{len(cells)} {reason}" for reason, cells in fields.left_out.items())
     noise = max((r.verdict.noise for r in summary.regions), default=math.nan)
     floor = "below 1e-6" if noise < 1e-12 else f"+-{noise * 1e6:.1g}"
     precision = f"; stored precision {floor} microstrain" if math.isfinite(noise) else ""
     lines.append(f"left out: {left or 'no cell'}{precision}")
     if summary.numbers is not None:
-        lines.append(f"element numbers are those of '{summary.numbers.name}'; cell = zero-based position in the file")
+        lines.append(
+            f"element numbers are those of '{summary.numbers.name}'; cell = zero-based position in the file"
+        )
     else:
         lines.append("cell = zero-based position in the file")
     for dimension, n in summary.other_dimensions.items():
@@ -234,6 +310,24 @@ def _tail(summary: Summary) -> list[str]:
     lines += [f"WARNING: {warning}" for warning in summary.warnings]
     lines.append(CAUTION)
     return lines
+
+
+def _removed(r: Removal, extent: float) -> list[str]:
+    m = r.motion
+    turn = np.degrees(m.rotation)
+    kind = {"linearised": "linearised fit", "finite": "best proper rotation"}[m.fit]
+    over = "" if r.fitted == r.applied else f" (fitted over {r.fitted})"
+    other = "" if r.other is None else f"; the other kind of fit leaves {r.other.residual:.3g}"
+    return [
+        f"rigid motion taken out of {r.applied}{over}: translation {_three(m.translation, extent)}, "
+        f"rotation {_three(turn, 1.0)} = "
+        f"{float(np.linalg.norm(turn)):.6g} degrees about {_three(m.center, extent)}",
+        f"  {kind}, RMS displacement left {m.residual:.3g}{other}; strain is in the axes of the undeformed part",
+    ]
+
+
+def _three(values: np.ndarray, size: float) -> str:
+    return "(" + ", ".join("0" if abs(v) <= 1e-12 * size else f"{v:.6g}" for v in values) + ")"
 
 
 def _location(at: str) -> str:

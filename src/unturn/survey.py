@@ -53,7 +53,9 @@ def survey_result(
         "format": result.format_name,
         "points": result.n_points,
         "cells": [_cell_type(b.cell_type, b.connectivity, len(b)) for b in result.blocks],
-        "steps": None if result.steps is None else {"read": result.steps.current, "values": list(result.steps.values)},
+        "steps": None
+        if result.steps is None
+        else {"read": result.steps.current, "values": list(result.steps.values)},
         "arrays": [
             *(_array(n, "point", a, result) for n, a in result.point_data.items()),
             *(_array(n, "cell", a, result) for n, a in result.cell_data.items()),
@@ -96,7 +98,9 @@ def _cell_type(name: str, connectivity: NDArray[np.int64], count: int) -> dict[s
     }
 
 
-def _array(name: str, association: Literal["point", "cell", "field"], a: Array, result: Result) -> dict[str, Any]:
+def _array(
+    name: str, association: Literal["point", "cell", "field"], a: Array, result: Result
+) -> dict[str, Any]:
     entry: dict[str, Any] = {
         "name": name,
         "association": association,
@@ -156,7 +160,9 @@ def _model(
 
 
 def _mesh(model: Model, found: dict[str, Any], threads: int | None) -> None:
-    fields = compute_fields(model, ["element_volume", "jacobian_min_over_max"], threads=threads, diagnose=True)
+    fields = compute_fields(
+        model, ["element_volume", "jacobian_min_over_max"], threads=threads, diagnose=True
+    )
     d = fields.diagnostics
     assert d is not None
     judged = d.dimension == model.dimension
@@ -180,7 +186,9 @@ def _mesh(model: Model, found: dict[str, Any], threads: int | None) -> None:
         "mirrored": fields.mirrored,
     }
     found["left_out"] = {reason: len(c) for reason, c in fields.left_out.items()}
-    found["regions"] = [{"name": r.name, "origin": r.origin, "cells": len(r.cells)} for r in find_regions(model, judged)]
+    found["regions"] = [
+        {"name": r.name, "origin": r.origin, "cells": len(r.cells)} for r in find_regions(model, judged)
+    ]
     noise = statistics(d.noise, d.volume, cells, (50.0, 99.0))
     size = statistics(d.stretch, d.volume, cells, (50.0, 99.0))
     found["precision"] = {
@@ -242,7 +250,9 @@ def _magnitudes(model: Model, found: Mapping[str, Any]) -> list[str]:
             "and displacement, and use --displacement-scale"
         )
     elif 0 < size < 1e-8:
-        said.append(f"strain is only {size:.2g}: compare the units of mesh and displacement, --displacement-scale")
+        said.append(
+            f"strain is only {size:.2g}: compare the units of mesh and displacement, --displacement-scale"
+        )
     if 0 < size < 20 * noise:
         said.append(
             f"strain ({size:.2g}) is not well above the noise floor of the stored numbers ({noise:.2g}): "
@@ -279,7 +289,9 @@ def survey_text(found: Mapping[str, Any]) -> str:
     if found["steps"]:
         values = found["steps"]["values"]
         shown = ", ".join(f"{v:g}" for v in values[:8]) + (" ..." if len(values) > 8 else "")
-        lines.append(f"steps      {len(values)} (0 to {len(values) - 1}) at {shown}; read: {found['steps']['read']}")
+        lines.append(
+            f"steps      {len(values)} (0 to {len(values) - 1}) at {shown}; read: {found['steps']['read']}"
+        )
     lines.append(f"points     {found['points']}")
     for cell in found["cells"]:
         dim = f"{cell['dimension']}D" if cell["dimension"] else "--"
@@ -319,7 +331,9 @@ def _mesh_lines(found: Mapping[str, Any]) -> list[str]:
     if found["left_out"]:
         lines.append("left out   " + ", ".join(f"{n} {reason}" for reason, n in found["left_out"].items()))
     regions = found["regions"]
-    shown = ", ".join(f"{r['name']} ({r['cells']} cells)" for r in regions[:8]) + (" ..." if len(regions) > 8 else "")
+    shown = ", ".join(f"{r['name']} ({r['cells']} cells)" for r in regions[:8]) + (
+        " ..." if len(regions) > 8 else ""
+    )
     lines.append(f"regions    {len(regions)} by {regions[0]['origin'] if regions else '-'}: {shown}")
     p = found["precision"]
     lines.append(
@@ -352,5 +366,13 @@ def _array_lines(found: Mapping[str, Any]) -> list[str]:
             ]
         )
     widths = [max(len(r[k]) for r in rows) for k in range(len(rows[0]))]
-    pad: list[Callable[[str, int], str]] = [str.ljust, str.ljust, str.ljust, str.rjust, str.rjust, str.rjust, str.ljust]
+    pad: list[Callable[[str, int], str]] = [
+        str.ljust,
+        str.ljust,
+        str.ljust,
+        str.rjust,
+        str.rjust,
+        str.rjust,
+        str.ljust,
+    ]
     return ["  ".join(p(c, w) for p, c, w in zip(pad, row, widths)).rstrip() for row in rows]

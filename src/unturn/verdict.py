@@ -105,35 +105,19 @@ def judge(diagnostics: CellDiagnostics, region: Region, solve: Solve, mode: bool
 
 _SOLVE_AGAIN = "solve it again as geometrically nonlinear"
 _ACTIONS: dict[tuple[Solve, Level], str] = {
-    (
-        "linear",
-        "marginal",
-    ): "the strain is that of the linear solve, good to the error stated; where that matters, "
-    + _SOLVE_AGAIN,
-    (
-        "linear",
-        "does not hold",
-    ): "the solve was linear and its rotations are beyond what linear theory covers: "
-    + _SOLVE_AGAIN
-    + "; no measure of this result mends it",
-    (
-        "nonlinear",
-        "marginal",
-    ): "the small strain is good to the error stated; where that matters, use the solver's own strain",
-    (
-        "nonlinear",
-        "does not hold",
-    ): "the small strain contains turning; it is not the strain of the material here",
-    (
-        "unknown",
-        "marginal",
-    ): "the small strain is good to the error stated; --solve linear or nonlinear tells what to do "
+    ("linear", "marginal"): "the strain is that of the linear solve, good to the error stated; where that matters, "
+    f"{_SOLVE_AGAIN}",
+    ("linear", "does not hold"): "the solve was linear and its rotations are beyond what linear theory covers: "
+    f"{_SOLVE_AGAIN}; no measure of this result mends it",
+    ("nonlinear", "marginal"): "the small strain is good to the error stated; where that matters, use a finite measure, "
+    "--base green-lagrange, hencky or biot",
+    ("nonlinear", "does not hold"): "the small strain contains turning; a finite measure does not: "
+    "--base green-lagrange, hencky or biot",
+    ("unknown", "marginal"): "the small strain is good to the error stated; --solve linear or nonlinear tells what to do "
     "where that matters",
-    ("unknown", "does not hold"): "if the solve was linear, "
-    + _SOLVE_AGAIN
-    + "; if it was nonlinear, the small strain is "
-    "not the strain of the material here (state it with --solve)",
-}
+    ("unknown", "does not hold"): f"if the solve was linear, {_SOLVE_AGAIN}; if it was nonlinear, the small strain "
+    "contains turning and a finite measure does not: --base green-lagrange, hencky or biot (state it with --solve)",
+}  # fmt: skip
 
 
 def _action(solve: Solve, level: Level) -> str:

@@ -42,7 +42,8 @@ def _show_version(value: bool) -> None:
 @app.callback()
 def _options(
     version: Annotated[
-        bool, typer.Option("--version", callback=_show_version, is_eager=True, help="Print the version and exit.")
+        bool,
+        typer.Option("--version", callback=_show_version, is_eager=True, help="Print the version and exit."),
     ] = False,
     debug: Annotated[bool, typer.Option("--debug", help="Show the traceback of an error.")] = False,
 ) -> None:
@@ -62,7 +63,7 @@ def main() -> None:
     except KeyboardInterrupt:
         typer.echo("unturn: stopped", err=True)
         sys.exit(130)
-    except Exception as error:  # noqa: BLE001 - a fault of ours must not look like a broken limit
+    except Exception as error:  # a fault of ours must not look like a broken limit
         if debug:
             raise
         typer.echo(

@@ -32,6 +32,16 @@ class AxisChoice(StrEnum):
     y = "y"
 
 
+class BaseChoice(StrEnum):
+    """Strain measure that the others derive from."""
+
+    small = "small"
+    green_lagrange = "green-lagrange"
+    hencky = "hencky"
+    biot = "biot"
+    almansi = "almansi"
+
+
 class LocationChoice(StrEnum):
     """Where values live."""
 
@@ -52,10 +62,15 @@ Displacement = Annotated[
 ]
 Table = Annotated[
     Path | None,
-    typer.Option("--displacement-table", metavar="FILE.csv", help="Displacements by node number, for a mesh without."),
+    typer.Option(
+        "--displacement-table", metavar="FILE.csv", help="Displacements by node number, for a mesh without."
+    ),
 ]
 Scale = Annotated[
-    float, typer.Option("--displacement-scale", metavar="X", help="Factor from the displacement's unit to the mesh's.")
+    float,
+    typer.Option(
+        "--displacement-scale", metavar="X", help="Factor from the displacement's unit to the mesh's."
+    ),
 ]
 Coordinates = Annotated[
     CoordinatesChoice, typer.Option(help="Whether the file's coordinates are already deformed.")
@@ -67,10 +82,16 @@ Plane = Annotated[
 Axis = Annotated[AxisChoice, typer.Option(help="Axis of revolution for --plane axisymmetric.")]
 Poisson = Annotated[float | None, typer.Option(metavar="NU", help="Poisson's ratio for --plane stress.")]
 Alive = Annotated[
-    str | None, typer.Option(metavar="ARRAY", help="Cell array; cells where it is zero are left out as deleted.")
+    str | None,
+    typer.Option(metavar="ARRAY", help="Cell array; cells where it is zero are left out as deleted."),
 ]
 Skin = Annotated[
-    bool, typer.Option("--skin", help="Also compute skins and edges: cells whose nodes all belong to one larger cell.")
+    bool,
+    typer.Option(
+        "--skin", help="Also compute skins and edges: cells whose nodes all belong to one larger cell."
+    ),
 ]
 Threads = Annotated[int | None, typer.Option(metavar="N", min=1, help="Threads; default: all processors.")]
-Json = Annotated[Path | None, typer.Option("--json", metavar="FILE", help="Also write everything as JSON ('-': stdout).")]
+Json = Annotated[
+    Path | None, typer.Option("--json", metavar="FILE", help="Also write everything as JSON ('-': stdout).")
+]

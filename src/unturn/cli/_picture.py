@@ -5,6 +5,8 @@ from __future__ import annotations
 from pathlib import Path
 
 from unturn._api import add_fields
+from unturn.measures import MEASURES
+from unturn.pipeline import Computed
 from unturn.summary import Summary, equivalent_form
 
 
@@ -22,16 +24,19 @@ def draw_summary(summary: Summary, path: Path) -> str:
 
     fields = summary.fields
     model = fields.model
-    array = "equivalent_strain" if "equivalent_strain" in fields.arrays else next(iter(fields.arrays))
+    array = next(
+        (name for name in fields.arrays if name.startswith("equivalent_strain")), next(iter(fields.arrays))
+    )
     drawing = draw(
-        add_fields(model.result, fields, overwrite=True),
+        add_fields(model.result, Computed(fields), overwrite=True),
         array,
         path,
         displacement=model.displacement.values,
         location={"mean": "mean over each element"}.get(summary.options.at, ""),
-        legend=f"equivalent strain\n{equivalent_form(summary.options.equivalent_poisson)}"
-        if array == "equivalent_strain"
+        legend=f"{array.replace('_', ' ')}\n{equivalent_form(summary.options.equivalent_poisson)}"
+        if array.startswith("equivalent_strain")
         else "",
+        unit=MEASURES[array].unit if array in MEASURES else "",
         numbers=None if summary.numbers is None else summary.numbers.numbers,
     )
     return f"drew {drawing.path}: {array} on the shape deformed x {drawing.factor:g}"

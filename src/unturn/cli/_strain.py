@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import TYPE_CHECKING, Annotated, Any
 
@@ -13,7 +13,9 @@ from unturn.errors import InputError, UnturnError, UsageError
 
 if TYPE_CHECKING:
     from unturn.io import ResultFile
+    from unturn.pipeline import StrainOptions
     from unturn.result import Result
+    from unturn.rigid import RigidMotion
     from unturn.summary import Summary
 
 
@@ -21,20 +23,33 @@ def strain(
     files: Annotated[list[Path], typer.Argument(metavar="FILE...", help="Result files.")],
     output: Annotated[
         Path | None,
-        typer.Option("-o", "--output", metavar="OUT", help="Output file, or an existing folder. "
-                     "Default: the input's name with .strain before the suffix."),
+        typer.Option(
+            "-o",
+            "--output",
+            metavar="OUT",
+            help="Output file, or an existing folder. "
+            "Default: the input's name with .strain before the suffix.",
+        ),
     ] = None,
     measures: Annotated[
         str | None,
-        typer.Option(metavar="LIST", help="Arrays to add, by comma; 'all' for every one. "
-                     "Default: strain,rotation,equivalent_strain,principal_strain."),
+        typer.Option(
+            metavar="LIST",
+            help="Arrays to add, by comma; 'all' for every one. "
+            "Default: strain,rotation,equivalent_strain,principal_strain.",
+        ),
     ] = None,
+    base: Annotated[
+        o.BaseChoice, typer.Option(help="Replace each small measure by its counterpart of this finite base.")
+    ] = o.BaseChoice.small,
     at: Annotated[o.LocationChoice, typer.Option(help="Where values are taken.")] = o.LocationChoice.centroid,
     step: o.Step = "last",
     solve: Annotated[
         o.SolveChoice, typer.Option(help="What the solve was; it decides what the verdict says.")
     ] = o.SolveChoice.unknown,
-    mode: Annotated[bool, typer.Option("--mode", help="A mode shape: no verdict, values per unit amplitude.")] = False,
+    mode: Annotated[
+        bool, typer.Option("--mode", help="A mode shape: no verdict, values per unit amplitude.")
+    ] = False,
     displacement: o.Displacement = None,
     displacement_table: o.Table = None,
     displacement_scale: o.Scale = 1.0,
@@ -44,33 +59,84 @@ def strain(
     poisson: o.Poisson = None,
     equivalent_poisson: Annotated[
         float | None,
-        typer.Option(metavar="NU", help="Equivalent strain as 1/(1+NU) times the norm of the principal differences."),
+        typer.Option(
+            metavar="NU", help="Equivalent strain as 1/(1+NU) times the norm of the principal differences."
+        ),
+    ] = None,
+    remove_rigid: Annotated[
+        str,
+        typer.Option(
+            "--remove-rigid",
+            metavar="none|whole|bodies|regions|REGION",
+            help="Take the rigid motion of these out first.",
+        ),
+    ] = "none",
+    rigid_to: Annotated[
+        str | None,
+        typer.Option(metavar="REGION|whole", help="Take it out of this part instead of the one it is of."),
+    ] = None,
+    rigid_axis: Annotated[
+        str | None,
+        typer.Option(metavar="AXIS", help="Known axis instead of the full fit: '0,0,1 through 10,0,0'."),
+    ] = None,
+    frame: Annotated[
+        str | None,
+        typer.Option(
+            metavar="FRAME",
+            help="Axes of the components: 'cylindrical z', 'cylindrical 0,0,1 through 10,0,0', "
+            "'cartesian 1,1,0 0,0,1', or 'arrays FIRST SECOND' (cell arrays).",
+        ),
+    ] = None,
+    thermal_expansion: Annotated[
+        str | None,
+        typer.Option(
+            metavar="ALPHA",
+            help="Free thermal strain to take out: a number, three by comma along the axes of "
+            "the frame, or by region 'part=1:12e-6;part=2:23e-6'.",
+        ),
+    ] = None,
+    temperature: Annotated[
+        str | None, typer.Option(metavar="ARRAY", help="Point or cell array of temperature.")
+    ] = None,
+    reference_temperature: Annotated[
+        float | None, typer.Option(metavar="T0", help="Temperature without thermal strain.")
+    ] = None,
+    zero_step: Annotated[
+        int | None, typer.Option(metavar="N", help="Measure displacements from this step of the series.")
     ] = None,
     region: Annotated[
         list[str] | None,
-        typer.Option(metavar="NAME", help="Summarise this region only (repeatable): a group, or array=value."),
+        typer.Option(
+            metavar="NAME", help="Summarise this region only (repeatable): a group, or array=value."
+        ),
     ] = None,
     alive: o.Alive = None,
     skin: o.Skin = False,
     prefix: Annotated[str, typer.Option(metavar="TEXT", help="Goes before the name of each new array.")] = "",
     overwrite: Annotated[bool, typer.Option("--overwrite", help="Replace arrays of the same name.")] = False,
     picture: Annotated[
-        Path | None, typer.Option(metavar="FILE.png", help="Also draw the equivalent strain on the deformed shape.")
+        Path | None,
+        typer.Option(metavar="FILE.png", help="Also draw the equivalent strain on the deformed shape."),
     ] = None,
     json: o.Json = None,
     threads: o.Threads = None,
 ) -> None:
     """Add strain, rotation and equivalent strain to result files and say where they can be trusted."""
+    from unturn.pipeline import StrainOptions
+
     job = _Job(
         output=output,
         several=len(files) > 1,
-        measures=[m.strip() for m in measures.split(",") if m.strip()] if measures else None,
-        model={
-            "displacement": displacement, "displacement_scale": displacement_scale,
-            "coordinates": coordinates.value, "skin": skin, "alive": alive,
-        },
-        plane=(plane.value if plane else None, poisson, axis.value),
-        fields={"at": at.value, "equivalent_poisson": equivalent_poisson, "threads": threads},
+        options=StrainOptions(
+            displacement=displacement,
+            measures=[m.strip() for m in measures.split(",") if m.strip()] if measures else None,
+            base=base.value, at=at.value, solve=solve.value, plane=plane.value if plane else None, poisson=poisson,
+            axis=axis.value, coordinates=coordinates.value, displacement_scale=displacement_scale,
+            equivalent_poisson=equivalent_poisson, remove_rigid=remove_rigid, rigid_to=rigid_to, rigid_axis=rigid_axis,
+            frame=frame, thermal_expansion=thermal_expansion, temperature=temperature,
+            reference_temperature=reference_temperature, skin=skin, alive=alive, threads=threads,
+        ),
+        zero_step=zero_step,
         summary={"regions": tuple(region or ()), "solve": solve.value, "mode": mode, "at": at.value,
                  "equivalent_poisson": equivalent_poisson, "full": json is not None},
         table=displacement_table, step=step, prefix=prefix, overwrite=overwrite, picture=picture,
@@ -103,10 +169,8 @@ def strain(
 class _Job:
     output: Path | None
     several: bool
-    measures: list[str] | None
-    model: dict[str, Any]
-    plane: tuple[Any, float | None, Any]
-    fields: dict[str, Any]
+    options: StrainOptions
+    zero_step: int | None
     summary: dict[str, Any]
     table: Path | None
     step: str
@@ -122,7 +186,7 @@ class _Job:
         if self.step == "all" and opened.steps is not None:
             return self._series(opened, path)
         result = opened.read(chosen_step(opened, "last" if self.step == "all" else self.step))
-        result, summary = self._compute(result)
+        result, summary = self._compute(result, self._zero(opened))
         out = self._target(path, series=False)
         lost = io.write(result, out)
         self._print(summary, out, lost)
@@ -134,9 +198,12 @@ class _Job:
         assert opened.steps is not None
         out = self._target(path, series=True)
         data, summary = [], None
+        zero = self._zero(opened)
+        previous: tuple[RigidMotion, ...] = ()
         with io.series_writer(out) as writer:
             for index, value in enumerate(opened.steps):
-                result, summary = self._compute(opened.read(index))
+                result, summary = self._compute(opened.read(index), zero, previous)
+                previous = tuple(r.motion for r in summary.removals)
                 writer.add(result, value)
                 data.append(self._data(summary, out))
                 typer.echo(_step_line(summary, index, value))
@@ -146,21 +213,29 @@ class _Job:
         self._print(summary, out, ())
         return data
 
-    def _compute(self, result: Result) -> tuple[Result, Summary]:
+    def _zero(self, opened: ResultFile) -> Result | None:
+        if self.zero_step is None:
+            return None
+        if opened.steps is None:
+            raise UsageError(f"{opened.path} is not a series: --zero-step has nothing to measure from.")
+        return opened.read(chosen_step(opened, str(self.zero_step)))
+
+    def _compute(
+        self, result: Result, zero: Result | None, previous: tuple[RigidMotion, ...] = ()
+    ) -> tuple[Result, Summary]:
         from unturn._api import add_fields
-        from unturn.fields import compute_fields
-        from unturn.model import PlaneOptions, build_model
+        from unturn.pipeline import compute
         from unturn.summary import SummaryOptions, summarise
 
+        options = self.options
         if self.table is not None:
             from unturn.io.table import attach_displacement_table, read_displacement_table
 
             result = attach_displacement_table(result, read_displacement_table(self.table))
-            self.model["displacement"] = self.model["displacement"] or "displacement"
-        model = build_model(result, plane=PlaneOptions(*self.plane), **self.model)
-        fields = compute_fields(model, self.measures, diagnose=True, **self.fields)
-        summary = summarise(fields, SummaryOptions(**self.summary), threads=self.fields["threads"])
-        return add_fields(result, fields, prefix=self.prefix, overwrite=self.overwrite), summary
+            options = replace(options, displacement=options.displacement or "displacement")
+        computed = compute(result, options, zero=zero, diagnose=True, previous=previous)
+        summary = summarise(computed, SummaryOptions(**self.summary), threads=options.threads)
+        return add_fields(result, computed, prefix=self.prefix, overwrite=self.overwrite), summary
 
     def _target(self, path: Path, series: bool) -> Path:
         from unturn.cli._output import output_path
@@ -174,7 +249,7 @@ class _Job:
         typer.echo(summary_text(summary))
         result = summary.fields.model.result
         before = len(result.point_data) + len(result.cell_data) + len(result.field_data)
-        n = len(summary.fields.arrays)
+        n = len(summary.fields.arrays) + (3 if summary.removals else 0)
         typer.echo(f"wrote {out}: {n} array{'s' * (n != 1)} added, {before} unchanged")
         for sentence in lost:
             typer.echo(f"note: {sentence}")
@@ -205,14 +280,18 @@ def chosen_step(opened: ResultFile, step: str) -> int:
     except ValueError:
         raise UsageError(f"--step {step!r}: use 'last', 'all' or a number from 0 to {n - 1}.") from None
     if not 0 <= number < n:
-        raise UsageError(f"{opened.path} has {n} step{'s' * (n != 1)}, 0 to {n - 1}; --step {number} does not exist.")
+        raise UsageError(
+            f"{opened.path} has {n} step{'s' * (n != 1)}, 0 to {n - 1}; --step {number} does not exist."
+        )
     return number
 
 
 def _step_line(summary: Summary, index: int, value: float) -> str:
     parts = []
     for r in summary.regions[:5]:
-        peak = r.statistics.get("equivalent_strain")
+        peak = next((s for n, s in r.statistics.items() if n.startswith("equivalent_strain")), None)
         largest = f"equivalent up to {peak.maximum * 1e6:.0f} microstrain, " if peak else ""
-        parts.append(f"{r.region.name}: {largest}turn {r.verdict.largest_rotation:.3g} degrees, {r.verdict.level}")
+        parts.append(
+            f"{r.region.name}: {largest}turn {r.verdict.largest_rotation:.3g} degrees, {r.verdict.level}"
+        )
     return f"step {index}  t = {value:g}   " + "; ".join(parts)

@@ -1,0 +1,263 @@
+"""From a result and the user's options to computed fields: what the library and the command line share."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
+from typing import Any, Literal
+
+import numpy as np
+from numpy.typing import NDArray
+
+from unturn.displacement import find_displacement
+from unturn.errors import UsageError
+from unturn.fields import CellFields, Location, compute_fields
+from unturn.frames import parse_frame
+from unturn.gradient import NodalFields, PlaneModel
+from unturn.kinematics._symmetric import Floats
+from unturn.measures import MEASURES, choose_measures
+from unturn.model import Model, PlaneOptions, build_model
+from unturn.regions import bodies, find_regions, named_regions
+from unturn.result import Result
+from unturn.rigid import Axis, Removal, RigidMotion, take_out, unwrapped
+from unturn.thermal import Thermal, parse_thermal
+from unturn.verdict import Solve
+
+
+@dataclass(frozen=True)
+class StrainOptions:
+    """The options of `unturn.strain`, by the same names."""
+
+    displacement: str | None = None
+    measures: Sequence[str] | None = None
+    base: str = "small"
+    at: Location = "centroid"
+    solve: Solve = "unknown"
+    plane: PlaneModel | None = None
+    poisson: float | None = None
+    axis: Literal["x", "y"] = "y"
+    coordinates: Literal["reference", "deformed"] = "reference"
+    displacement_scale: float = 1.0
+    equivalent_poisson: float | None = None
+    remove_rigid: str = "none"
+    rigid_to: str | None = None
+    rigid_axis: str | None = None
+    frame: str | None = None
+    thermal_expansion: str | float | None = None
+    temperature: str | None = None
+    reference_temperature: float | None = None
+    skin: bool = False
+    alive: str | None = None
+    threads: int | None = None
+
+
+@dataclass(frozen=True, eq=False)
+class Computed:
+    """Computed fields, and the rigid motions that were taken out first."""
+
+    fields: CellFields
+    removals: tuple[Removal, ...] = ()
+
+
+def compute(
+    result: Result,
+    options: StrainOptions,
+    *,
+    zero: Result | None = None,
+    diagnose: bool = False,
+    previous: Sequence[RigidMotion] = (),
+) -> Computed:
+    """Return the fields of a result.
+
+    Parameters
+    ----------
+    result
+        The result.
+    options
+        What is asked for.
+    zero
+        The step of the same series from which displacements are measured; None for the undeformed state.
+    diagnose
+        Also compute what verdict and summary need.
+    previous
+        Motions of the step before, to unwrap rotation vectors over a series.
+
+    Raises
+    ------
+    UsageError
+        Options that do not fit each other or the mesh.
+    InputError
+        A result that cannot be used.
+    """
+    names = _checked_measures(options)
+    model = _model(result, options)
+    frame = None if options.frame is None else parse_frame(options.frame, result)
+    settings: dict[str, Any] = {
+        "at": options.at,
+        "equivalent_poisson": options.equivalent_poisson,
+        "frame": frame,
+        "thermal": _thermal(result, options, frame),
+        "threads": options.threads,
+    }
+    small, finite = _zeroed(model, zero, options)
+    parts = _parts(small, options)
+    small, removals = (
+        take_out(small, parts, options.solve, _axis(options.rigid_axis)) if parts else (small, ())
+    )
+    if finite is not None and parts:
+        finite, _ = take_out(finite, parts, "nonlinear", _axis(options.rigid_axis))
+    if previous and len(previous) == len(removals):
+        removals = tuple(_unwrap(r, p) for r, p in zip(removals, previous))
+    return Computed(_fields(small, finite, names, settings, options, diagnose), removals)
+
+
+def _fields(
+    small: Model,
+    finite: Model | None,
+    names: Sequence[str],
+    settings: dict[str, Any],
+    options: StrainOptions,
+    diagnose: bool,
+) -> CellFields:
+    if finite is None:
+        return compute_fields(small, names, **settings, diagnose=diagnose)
+    real = [n for n in names if n in MEASURES and MEASURES[n].finite]
+    linear = [n for n in names if n not in real]
+    by_finite = options.solve == "nonlinear"
+    first = compute_fields(small, linear or ["strain"], **settings, diagnose=diagnose and not by_finite)
+    second = compute_fields(finite, real or ["det_f"], **settings, diagnose=diagnose and by_finite)
+    arrays = {n: (second if n in real else first).arrays[n] for n in names}
+    return replace(
+        first,
+        arrays=arrays,
+        components={**first.components, **second.components},
+        diagnostics=second.diagnostics if by_finite else first.diagnostics,
+    )
+
+
+def _checked_measures(options: StrainOptions) -> tuple[str, ...]:
+    names = choose_measures(options.measures, options.base, options.thermal_expansion is not None)
+    finite = [n for n in names if n in MEASURES and MEASURES[n].finite]
+    if finite and options.solve == "linear":
+        raise UsageError(
+            f"{finite[0]} of a geometrically linear solve is fiction: the solve itself used the small strain. Ask for the "
+            "small measures, or state --solve nonlinear if it was."
+        )
+    return names
+
+
+def _model(result: Result, options: StrainOptions) -> Model:
+    return build_model(
+        result,
+        displacement=options.displacement,
+        displacement_scale=options.displacement_scale,
+        coordinates=options.coordinates,
+        plane=PlaneOptions(options.plane, options.poisson, options.axis),
+        skin=options.skin,
+        alive=options.alive,
+    )
+
+
+def _thermal(result: Result, options: StrainOptions, frame: Any) -> Thermal | None:
+    given = (options.thermal_expansion, options.temperature, options.reference_temperature)
+    if all(g is None for g in given):
+        return None
+    expansion, temperature, reference = given
+    if expansion is None or temperature is None or reference is None:
+        raise UsageError(
+            "free thermal strain needs all three of --thermal-expansion, --temperature and --reference-temperature."
+        )
+    return parse_thermal(result, str(expansion), temperature, float(reference), frame)
+
+
+def _zeroed(model: Model, zero: Result | None, options: StrainOptions) -> tuple[Model, Model | None]:
+    """Return the model for small measures, and the one for finite measures when it differs."""
+    if zero is None:
+        return model, None
+    start = find_displacement(
+        zero, options.displacement or model.displacement.name, options.displacement_scale
+    ).values
+    if len(start) != len(model.points):
+        raise UsageError(
+            f"the zero step has {len(start)} points and this step {len(model.points)}: they cannot be subtracted."
+        )
+    normal = None if model.plane is None else model.plane.normal
+    if normal is not None:
+        start = start.copy()
+        start[:, normal] = 0.0
+    moved = model.displacement.values - start
+    if normal is not None:
+        moved[:, normal] = 0.0
+    displacement = replace(model.displacement, values=moved)
+    small = replace(model, displacement=displacement, fields=NodalFields(model.points, moved))
+    points = model.points + start
+    return small, replace(small, points=points, fields=NodalFields(points, moved))
+
+
+def _parts(
+    model: Model, options: StrainOptions
+) -> list[tuple[str, NDArray[np.int64], str, NDArray[np.int64]]]:
+    """Return name and cells over which each rigid motion is fitted, and name and cells it is taken from."""
+    how = options.remove_rigid
+    if how == "none":
+        if options.rigid_to is not None or options.rigid_axis is not None:
+            raise UsageError(
+                "--rigid-to and --rigid-axis belong to --remove-rigid: name what is to be taken out."
+            )
+        return []
+    computed = np.zeros(model.result.n_cells, dtype=bool)
+    for block in model.blocks:
+        computed[block.index] = True
+    everything = np.flatnonzero(computed)
+    if how == "whole":
+        regions = [("whole", everything)]
+    elif how == "bodies":
+        regions = [(r.name, r.cells) for r in bodies(model, computed)] or [("body 1", everything)]
+    elif how == "regions":
+        regions = [(r.name, r.cells) for r in find_regions(model, computed)]
+    else:
+        regions = [(r.name, r.cells) for r in named_regions(model, [how], computed)]
+    if options.rigid_to is None:
+        return [(name, cells, name, cells) for name, cells in regions]
+    if len(regions) != 1:
+        raise UsageError(
+            "--rigid-to needs one region in --remove-rigid, whose motion is then taken out of the other."
+        )
+    if options.rigid_to == "whole":
+        target = ("whole", everything)
+    else:
+        target = (options.rigid_to, named_regions(model, [options.rigid_to], computed)[0].cells)
+    return [(*regions[0], *target)]
+
+
+def _axis(text: str | None) -> Axis | None:
+    """Return the axis of ``DX,DY,DZ through X,Y,Z``."""
+    if text is None:
+        return None
+    words = text.split()
+    try:
+        if len(words) == 1:
+            words += ["through", "0,0,0"]
+        direction, point = (np.array([float(w) for w in words[k].split(",")]) for k in (0, 2))
+    except (ValueError, IndexError):
+        direction = point = np.zeros(0)
+    if len(words) != 3 or words[1] != "through" or direction.shape != (3,) or point.shape != (3,):
+        raise UsageError(f"--rigid-axis {text!r} is not understood. Use '0,0,1' or '0,0,1 through 10,0,0'.")
+    return Axis(point, direction)
+
+
+def _unwrap(removal: Removal, previous: RigidMotion) -> Removal:
+    rotation = unwrapped(removal.motion.rotation, previous.rotation)
+    return replace(removal, motion=replace(removal.motion, rotation=rotation))
+
+
+def rigid_arrays(removals: Sequence[Removal], prefix: str = "") -> dict[str, Floats]:
+    """Return the rigid motions that were taken out as field arrays, `(k, 3)` each, in the order of the parts."""
+    if not removals:
+        return {}
+    motions = [r.motion for r in removals]
+    return {
+        prefix + "rigid_translation": np.array([m.translation for m in motions]),
+        prefix + "rigid_rotation": np.array([m.rotation for m in motions]),
+        prefix + "rigid_center": np.array([m.center for m in motions]),
+    }
