@@ -213,6 +213,21 @@ def test_noise_floor_bounds_what_rounding_does_to_the_strain() -> None:
     assert np.median(off) > stored.diagnostics.noise.min() / 30  # no floor that is out of reach
 
 
+@pytest.mark.derived(
+    "six decimals of a metre: half a micrometre at every node, whatever the displacement's size there"
+)
+@pytest.mark.parametrize("scale", [1.0, 1e-3])
+def test_noise_floor_of_a_fixed_number_of_decimals(scale: float) -> None:
+    mesh = meshes.patch(ELEMENTS["hexahedron20"])
+    u = np.round(1e-2 * np.sin(3 * mesh.points) ** 3, 6)
+    found = compute_fields(build_model(mesh.result(u=u), displacement_scale=scale), ["strain"], diagnose=True)
+    exact = fields(mesh, 1e-2 * scale * np.sin(3 * mesh.points) ** 3, "strain").arrays["strain"]
+    off = np.abs(found.arrays["strain"] - exact).max(axis=1)
+    assert found.diagnostics is not None
+    assert (off < 6 * found.diagnostics.noise).all()  # twenty nodes add up
+    assert (found.diagnostics.noise > 0.5e-6 * scale).all()
+
+
 def test_unknown_names_and_places_are_refused() -> None:
     mesh = meshes.affine_cell(ELEMENTS["tetra"])
     model = build_model(mesh.result(u=mesh.points))

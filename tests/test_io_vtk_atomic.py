@@ -243,3 +243,9 @@ def test_the_check_sees_every_difference(result: Result) -> None:
             _readback.check_same(result, found, ())
     without = replace(result, point_data={k: v for k, v in point.items() if k != "u"})
     _readback.check_same(result, without, ("The point array 'u' was not written.",))
+
+
+def test_component_names_of_an_array_taken_away_do_not_matter(result: Result, tmp_path: Path) -> None:
+    bare = replace(result, point_data={"u": result.point_data["u"]}, cell_data={}, field_data={})
+    assert bare.component_names
+    assert unturn.io.write(bare, tmp_path / "out.vtu") == ()

@@ -27,6 +27,7 @@ def diagnostics(n: int = 10, **values: Any) -> CellDiagnostics:
     return CellDiagnostics(
         **arrays,
         principal=np.zeros((n, 2)),
+        stretches=np.ones((n, 2)),
         centroid=np.zeros((n, 3)),
         dimension=np.full(n, 3, dtype=np.int8),
     )

@@ -26,7 +26,7 @@ from unturn.kinematics._symmetric import Floats
 from unturn.kinematics._turning import Turning
 from unturn.measures import GEOMETRY, MEASURES, Measure, Split, choose_measures
 from unturn.model import Model, ModelBlock
-from unturn.precision import storage_resolution
+from unturn.precision import MEANT_DISPLACEMENT, storage_resolution
 from unturn.thermal import Thermal
 
 Location = Literal["centroid", "mean"]
@@ -220,9 +220,11 @@ class _Job:
                 centroid,
                 np.zeros(n, dtype=np.int8),
             )
-            stored = model.displacement.stored
-            self.resolution_u = max(storage_resolution(a).relative for a in stored)
-            self.resolution_x = storage_resolution(model.result.points).relative
+            found = [storage_resolution(a, MEANT_DISPLACEMENT) for a in model.displacement.stored]
+            scale = abs(model.displacement.scale)
+            self.resolution_u = max(r.relative for r in found), scale * max(r.absolute for r in found)
+            x = storage_resolution(model.result.points)
+            self.resolution_x = x.relative, x.absolute
 
     def run(self, block: ModelBlock, threads: int | None) -> None:
         assert block.row is not None
@@ -368,7 +370,9 @@ class _Job:
         steepest = 1.0 / smallest_height(chunk, point)
         H_size = np.sqrt(np.nansum(split.H**2, axis=(0, 1)))
         far, moved = chunk.magnitudes()
-        d.noise[rows] = (self.resolution_u * moved + H_size * self.resolution_x * far) * steepest
+        res_x = self.resolution_x[0] * far + self.resolution_x[1]
+        res_u = self.resolution_u[0] * moved + self.resolution_u[1]
+        d.noise[rows] = (res_u + H_size * res_x) * steepest
 
     def finish(self) -> CellFields:
         left_out = dict(self.model.left_out)

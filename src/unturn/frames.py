@@ -158,7 +158,8 @@ def _orthonormal(first: Floats, second: Floats, text: str) -> Floats:
         two = two / np.where(size > _SAME, size, np.nan)
     if not np.isfinite(two).any():
         raise UsageError(f"--frame {text!r}: the two directions are parallel or have no length.")
-    return np.stack([one, two, np.cross(one, two)], axis=1)
+    axes: Floats = np.stack([one, two, np.cross(one, two)], axis=1)
+    return axes
 
 
 def _cell_directions(result: Result, name: str) -> Floats:
