@@ -12,7 +12,7 @@ from unturn import kinematics as kin
 from unturn.elements import ELEMENTS
 from unturn.errors import UsageError
 from unturn.fields import CellFields, compute_fields
-from unturn.measures import GEOMETRY, MEASURES
+from unturn.measures import GEOMETRY, SMALL
 from unturn.model import PlaneOptions, build_model
 
 Location = Literal["centroid", "mean"]
@@ -124,7 +124,7 @@ def test_every_measure_is_that_of_the_gradient(name: str) -> None:
             "small_strain_error": kin.small_strain_error(H),
             **{f"principal_direction_{k + 1}": directions[:, k] for k in range(3)},
         }
-        assert {*same, "displacement_gradient", *GEOMETRY} == {*MEASURES, *GEOMETRY} == set(found)
+        assert {*same, "displacement_gradient", *GEOMETRY} == {*SMALL, *GEOMETRY} == set(found)
         for key, value in same.items():
             np.testing.assert_allclose(found[key], value, rtol=1e-11, atol=1e-14, err_msg=key)
 

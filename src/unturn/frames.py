@@ -136,7 +136,8 @@ def _vector(word: str, text: str) -> Floats:
 
 def _direction(word: str, text: str) -> Floats:
     if word in ("x", "y", "z"):
-        return np.eye(3)["xyz".index(word)]
+        axis: Floats = np.eye(3)["xyz".index(word)]
+        return axis
     return _vector(word, text)
 
 
