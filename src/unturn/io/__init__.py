@@ -1,1 +1,192 @@
 """Files in, files out. Readers and writers know no mechanics; node reordering happens only here."""
+
+from __future__ import annotations
+
+import contextlib
+from collections.abc import Iterator
+from os import PathLike
+from pathlib import Path
+from typing import Literal
+
+from unturn.errors import InputError, UsageError
+from unturn.io._atomic import ensure_room, replacing
+from unturn.io._format import Format, ResultFile, StepWriter
+from unturn.io._formats import FORMATS, format_for_writing, format_of_file, writable_suffix
+from unturn.io._readback import check_same
+from unturn.result import Result
+
+__all__ = [
+    "FORMATS",
+    "Format",
+    "ResultFile",
+    "StepWriter",
+    "open_result",
+    "read",
+    "series_writer",
+    "writable_suffix",
+    "write",
+]
+
+
+def open_result(path: str | PathLike[str]) -> ResultFile:
+    """Return an opened result file of any known format; nothing of size is read yet.
+
+    Parameters
+    ----------
+    path
+        The file. Its content decides the format, its suffix where the content does not tell.
+
+    Raises
+    ------
+    InputError
+        No such file, a folder, empty, not readable, or of no known format.
+    """
+    place = Path(path)
+    try:
+        if place.is_dir():
+            raise InputError(f"{path} is a folder; give the name of the result file in it.")
+        if not place.is_file():
+            place.stat()
+            raise InputError(f"{path} is not a regular file; give the name of a result file.")
+        if place.stat().st_size == 0:
+            raise InputError(
+                f"{path} is empty (0 bytes). The program that writes it did not finish: run it again."
+            )
+        fmt = format_of_file(place)
+    except FileNotFoundError:
+        raise InputError(f"{path}: there is no such file. Check the name and the folder.") from None
+    except OSError as error:
+        raise InputError(f"{path} cannot be read: {error.strerror}. Check its permissions.") from error
+    return fmt.open(place)
+
+
+def read(path: str | PathLike[str], step: Literal["last"] | int = "last") -> Result:
+    """Return one step of a result file.
+
+    Parameters
+    ----------
+    path
+        The file.
+    step
+        Zero-based position of the step, or ``"last"``.
+
+    Raises
+    ------
+    InputError
+        The file cannot be read right; the message says what is wrong, where, and what to do.
+    UsageError
+        There is no such step.
+    """
+    opened = open_result(path)
+    n_steps = 1 if opened.steps is None else len(opened.steps)
+    number = n_steps - 1 if step == "last" else step
+    if not 0 <= number < n_steps:
+        raise UsageError(
+            f"{path} has no step {step}: it has {n_steps} step{'s' * (n_steps != 1)}, 0 to {n_steps - 1}."
+        )
+    return opened.read(number)
+
+
+def write(result: Result, path: str | PathLike[str]) -> tuple[str, ...]:
+    """Write a result whole or not at all, and return sentences on what the format could not hold.
+
+    The file is written beside its target, read back, compared bit for bit, and only then put in place.
+
+    Parameters
+    ----------
+    result
+        What to write.
+    path
+        The target; its suffix decides the format. What was there before stays until the new file is complete.
+
+    Raises
+    ------
+    UsageError
+        The format is not written here, or the place cannot be written to.
+
+    Examples
+    --------
+    >>> import tempfile
+    >>> import numpy as np
+    >>> from unturn.result import CellBlock
+    >>> points = np.array([[0.0, 0, 0], [1, 0, 0], [0, 1, 0]])
+    >>> cells = CellBlock("triangle", np.array([[0, 1, 2]]), np.array([0]))
+    >>> with tempfile.TemporaryDirectory() as folder:
+    ...     lost = write(Result(points, (cells,), {"u": 0.1 * points}), f"{folder}/plate.vtu")
+    ...     found = read(f"{folder}/plate.vtu")
+    >>> lost, found.format_name, list(found.point_data)
+    ((), 'VTU', ['u'])
+    """
+    target = Path(path)
+    fmt = format_for_writing(target)
+    assert fmt.write is not None
+    with replacing(target) as work:
+        ensure_room(work, _size(result))
+        lost = fmt.write(result, work)
+        check_same(result, fmt.open(work).read(0), lost)
+    return lost
+
+
+def _size(result: Result) -> int:
+    """Return about how many bytes a result takes in a file, rather too many."""
+    arrays = [
+        result.points,
+        *result.point_data.values(),
+        *result.cell_data.values(),
+        *result.field_data.values(),
+    ]
+    cells = sum(b.connectivity.nbytes + 16 * len(b) for b in result.blocks)
+    return cells + sum(a.nbytes + 4096 for a in arrays)
+
+
+@contextlib.contextmanager
+def series_writer(path: str | PathLike[str]) -> Iterator[StepWriter]:
+    """Return a context manager that writes a series step by step and puts it in place when it is complete.
+
+    Each step is read back and compared bit for bit as soon as it is written; one step is held at a time.
+
+    Parameters
+    ----------
+    path
+        The target; its suffix decides the format.
+
+    Raises
+    ------
+    UsageError
+        The format holds no series, no step was added, or the place cannot be written to.
+    """
+    target = Path(path)
+    fmt = format_for_writing(target, series=True)
+    assert fmt.write_series is not None
+    with replacing(target) as work:
+        writer = _CheckedSeries(fmt, fmt.write_series(work), work)
+        try:
+            yield writer
+        finally:
+            writer.close()
+        if not writer.n_steps:
+            raise UsageError(f"{path}: a series needs at least one step; nothing was written.")
+
+
+class _CheckedSeries:
+    """Passes steps on to a format's writer and reads each of them back."""
+
+    def __init__(self, fmt: Format, inner: StepWriter, work: Path) -> None:
+        self._fmt, self._inner, self._work = fmt, inner, work
+        self.n_steps = 0
+
+    @property
+    def lost(self) -> tuple[str, ...]:
+        """What the format could not hold, so far."""
+        return self._inner.lost
+
+    def add(self, result: Result, value: float) -> None:
+        """Write one step and prove that it is in the file."""
+        ensure_room(self._work, _size(result))
+        self._inner.add(result, value)
+        check_same(result, self._fmt.open(self._work).read(self.n_steps), self._inner.lost)
+        self.n_steps += 1
+
+    def close(self) -> None:
+        """Finish the file."""
+        self._inner.close()

@@ -33,7 +33,18 @@ class ResultFile(Protocol):
 
 
 class StepWriter(Protocol):
-    """Writes a series step by step into `path`; the caller renames the finished file into place."""
+    """Writes a series step by step into `path`; the caller renames the finished file into place.
+
+    The files are complete and closed after each step, so that the step can be read back.
+
+    Attributes
+    ----------
+    lost
+        Sentences on what the format could not hold so far; each names its array in quotes.
+    """
+
+    @property
+    def lost(self) -> tuple[str, ...]: ...
 
     def add(self, result: Result, value: float) -> None:
         """Write one step; only this step is held in memory."""
@@ -58,7 +69,7 @@ class Format:
         Opens a file for reading; raises `InputError` for anything it cannot read right.
     write
         Writes a result to a path, not atomically (the caller does that), and returns sentences on what the
-        format could not hold. None: reading only.
+        format could not hold; each names its array in quotes. None: reading only.
     write_series
         Opens a `StepWriter`. None: no series.
     """

@@ -1,0 +1,152 @@
+"""Times unturn against referees in the same run and prints the ratios. Run by hand on a quiet machine:
+
+    python benchmarks/compare.py            # everything, about two minutes
+    python benchmarks/compare.py kernel     # or: eigen, command, help, memory
+
+Nothing here is asserted: a ratio is read by a person, on a machine whose other work is known.
+"""
+
+from __future__ import annotations
+
+import subprocess
+import sys
+import tempfile
+import time
+from collections.abc import Callable
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+
+from unturn.fields import compute_fields
+from unturn.kinematics import principal_strain
+from unturn.model import build_model
+from unturn.result import CellBlock, Result
+
+MEASURES = ["strain", "rotation", "equivalent_strain"]
+SPLIT = ([0, 1, 2, 6], [0, 1, 6, 5], [0, 5, 6, 4], [0, 2, 3, 6], [0, 3, 7, 6], [0, 7, 4, 6])
+
+
+def brick_mesh(n: int) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
+    """Return points, hexahedra and displacement of a perturbed cube of n^3 hexahedra."""
+    axis = np.arange(n + 1)
+    z, y, x = np.meshgrid(axis, axis, axis, indexing="ij")
+    points = np.stack([x.ravel(), y.ravel(), z.ravel()], axis=1).astype(float)
+    points += 0.1 * np.random.default_rng(0).random(points.shape)
+    corner = (axis[:-1, None, None] * (n + 1) ** 2 + axis[None, :-1, None] * (n + 1) + axis[None, None, :-1]).ravel()
+    step, layer = n + 1, (n + 1) ** 2
+    offsets = np.array([0, 1, step + 1, step, layer, layer + 1, layer + step + 1, layer + step])
+    x, y, z = points.T / n
+    u = 1e-2 * np.stack([np.sin(x + y) * z, np.cos(y * z) * x, x * y * np.exp(z)], axis=1)
+    return points, corner[:, None] + offsets, u
+
+
+def million(kind: str) -> tuple[Result, int]:
+    """Return a result of a million tetrahedra or hexahedra, and VTK's number of the cell type."""
+    if kind == "tetra":
+        points, bricks, u = brick_mesh(55)
+        cells, vtk_type = np.concatenate([bricks[:, s] for s in SPLIT]), 10
+    else:
+        points, cells, u = brick_mesh(100)
+        vtk_type = 12
+    return Result(points, (CellBlock(kind, cells, np.arange(len(cells))),), {"u": u}), vtk_type
+
+
+def best(work: Callable[[], Any], runs: int = 5) -> float:
+    """Return the shortest time of some runs, in seconds."""
+    times = []
+    for _ in range(runs):
+        start = time.perf_counter()
+        work()
+        times.append(time.perf_counter() - start)
+    return min(times)
+
+
+def kernel() -> None:
+    """Strain, rotation and equivalent strain in memory against VTK's cell derivatives."""
+    import pyvista as pv
+    from vtkmodules.vtkFiltersGeneral import vtkCellDerivatives
+
+    for kind in ("tetra", "hexahedron"):
+        result, vtk_type = million(kind)
+        grid = pv.UnstructuredGrid({vtk_type: result.blocks[0].connectivity}, result.points)
+        grid.point_data["u"] = result.point_data["u"]
+        grid.set_active_vectors("u")
+
+        def referee(grid: Any = grid) -> None:
+            derivatives = vtkCellDerivatives()
+            derivatives.SetInputData(grid)
+            derivatives.SetTensorModeToComputeStrain()
+            derivatives.Update()
+
+        theirs = best(referee)
+        for threads in (1, 2):
+            ours = best(lambda t=threads, r=result: compute_fields(build_model(r), MEASURES, threads=t))
+            print(f"{kind}: {result.n_cells} cells, {threads} threads: {ours:.3f} s; VTK {theirs:.3f} s; "
+                  f"{theirs / ours:.2f} times as fast")  # fmt: skip
+
+
+def eigen() -> None:
+    """Principal values against LAPACK through numpy."""
+    tensor = np.random.default_rng(0).normal(size=(1_000_000, 3, 3))
+    tensor += tensor.swapaxes(1, 2)
+    ours, theirs = best(lambda: principal_strain(tensor), 3), best(lambda: np.linalg.eigvalsh(tensor), 3)
+    print(f"principal values, 1 M: {ours:.3f} s; numpy.linalg.eigvalsh {theirs:.3f} s; {theirs / ours:.2f} times as fast")
+
+
+SCRIPT = """
+import numpy as np, pyvista as pv
+g = pv.read({source!r}); n = g.n_cells
+g.cell_data['strain'] = np.ones((n, 6)); g.cell_data['rotation'] = np.ones((n, 3))
+g.cell_data['equivalent_strain'] = np.ones(n)
+g.save({target!r}{options})
+"""
+
+
+def command() -> None:
+    """The whole strain command against a script that only reads and writes through pyvista."""
+    from unturn import write
+
+    with tempfile.TemporaryDirectory() as folder:
+        source = Path(folder) / "million.vtu"
+        write(million("tetra")[0], source)
+        target = str(Path(folder) / "out.vtu")
+        run = [sys.executable, "-c", "from unturn.cli import main; main()", "strain", str(source), "-o", target,
+               "--measures", ",".join(MEASURES)]  # fmt: skip
+        ours = best(lambda: subprocess.run(run, check=True, capture_output=True), 3)
+        for name, options in (("default", ""), ("uncompressed", ", compression=None")):
+            script = SCRIPT.format(source=str(source), target=target, options=options)
+            theirs = best(lambda s=script: subprocess.run([sys.executable, "-c", s], check=True), 3)
+            print(f"whole command, 1 M tetrahedra: {ours:.2f} s; read and write through pyvista, {name}: {theirs:.2f} s; "
+                  f"{ours / theirs:.2f} times its time")  # fmt: skip
+
+
+def help_text() -> None:
+    """How soon `unturn --help` answers."""
+    run = [sys.executable, "-c", "from unturn.cli import main; main()", "--help"]
+    print(f"unturn --help: {best(lambda: subprocess.run(run, check=True, capture_output=True)):.3f} s")
+
+
+def memory() -> None:
+    """Peak memory over the input, less the output arrays."""
+    for kind in ("tetra", "hexahedron"):
+        script = f"""
+import resource, sys
+sys.path.insert(0, {str(Path(__file__).parent)!r})
+import compare, unturn
+r, _ = compare.million({kind!r})
+unturn.displacement_gradient(r.points[:8], [[0, 1, 2, 3]], r.point_data['u'][:8], 'tetra')
+before = resource.getrusage(resource.RUSAGE_SELF).ru_maxrss
+out = unturn.strain(r, measures=compare.MEASURES)
+after = resource.getrusage(resource.RUSAGE_SELF).ru_maxrss
+arrays = sum(a.nbytes for a in out.cell_data.values()) / 1e6
+print(f'{kind}: peak rises by {{(after - before) / 1e3:.0f}} MB, of which {{arrays:.0f}} MB are the output arrays')
+"""
+        subprocess.run([sys.executable, "-c", script], check=True)
+
+
+PARTS = {"kernel": kernel, "eigen": eigen, "command": command, "help": help_text, "memory": memory}
+
+if __name__ == "__main__":
+    for part in sys.argv[1:] or PARTS:
+        PARTS[part]()

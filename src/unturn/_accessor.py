@@ -1,0 +1,75 @@
+"""The PyVista plug-in: ``mesh.unturn`` on every mesh of PyVista, found through the ``pyvista.accessors`` entry points.
+
+Delegation only: a mesh becomes a `Result`, a function of `unturn` works on it, a new mesh comes out.
+"""
+
+from __future__ import annotations
+
+from typing import Any
+
+import pyvista
+
+from unturn._api import strain
+from unturn.io.vtk_arrays import update_attributes
+from unturn.io.vtk_result import result_from_vtk
+
+
+class UnturnAccessor:
+    """What `unturn` offers on a mesh.
+
+    Parameters
+    ----------
+    mesh
+        The mesh it hangs on; never changed.
+    """
+
+    def __init__(self, mesh: Any) -> None:
+        self._mesh = mesh
+
+    def strain(self, **options: Any) -> Any:
+        """Return a new mesh of the same class with strain, rotation and what follows from them as cell arrays.
+
+        Parameters
+        ----------
+        **options
+            The keywords of `unturn.strain`: ``displacement``, ``measures``, ``at``, ``plane``, ``poisson`` ...
+
+        Returns
+        -------
+        pyvista.DataSet
+            Shares points and old arrays with the mesh, as `copy(deep=False)` does. The new arrays are float64,
+            symmetric tensors in the order XX, YY, ZZ, XY, YZ, XZ with tensor shear, NaN where a cell cannot be
+            computed; strain is dimensionless, rotation in radians.
+
+        Raises
+        ------
+        DisplacementError
+            No displacement array, or several candidates and none chosen.
+        UsageError
+            Unknown names, options that do not fit the mesh, or an array of that name is already there.
+        InputError
+            No cell, or no computable element.
+
+        Examples
+        --------
+        >>> import pyvista
+        >>> import unturn._accessor  # not needed once the package is installed
+        >>> mesh = pyvista.ImageData(dimensions=(3, 3, 3)).cast_to_unstructured_grid()
+        >>> mesh.point_data["u"] = mesh.points * [1e-3, -0.3e-3, -0.3e-3]
+        >>> round(mesh.unturn.strain()["equivalent_strain"][0] * 1e6)
+        867
+        """
+        found = strain(result_from_vtk(self._mesh), **options)
+        mesh = self._mesh.copy(deep=False)
+        update_attributes(mesh.GetCellData(), found.cell_data, "cell", found.component_names)
+        return mesh
+
+
+for _kind in (
+    pyvista.UnstructuredGrid,
+    pyvista.StructuredGrid,
+    pyvista.RectilinearGrid,
+    pyvista.ImageData,
+    pyvista.PolyData,
+):
+    pyvista.register_dataset_accessor("unturn", _kind)(UnturnAccessor)

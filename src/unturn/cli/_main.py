@@ -1,0 +1,73 @@
+"""The program: its commands, and what its exit status says."""
+
+from __future__ import annotations
+
+import sys
+from typing import Annotated
+
+import typer
+
+from unturn.cli import _strain, _survey
+from unturn.errors import UnturnError
+
+_EPILOG = (
+    "Exit status: 0 done, and every limit met; 1 a limit or tolerance exceeded or undecided; 2 wrong usage; 3 the input "
+    "cannot be used; 70 a fault of unturn. Results are as good as the solve, the mesh and the loads behind them; limits "
+    "come from the governing code and a licensed engineer."
+)
+
+app = typer.Typer(
+    name="unturn",
+    help="Take the turning out of a finished finite-element result: strain, rotation and equivalent strain "
+    "from nodal displacements, written back as mesh arrays.",
+    epilog=_EPILOG,
+    add_completion=False,
+    rich_markup_mode=None,
+    no_args_is_help=True,
+    context_settings={"help_option_names": ["-h", "--help"]},
+    pretty_exceptions_enable=False,
+)
+app.command("survey")(_survey.survey)
+app.command("strain")(_strain.strain)
+
+
+def _show_version(value: bool) -> None:
+    if value:
+        from unturn._version import __version__
+
+        typer.echo(f"unturn {__version__}")
+        raise typer.Exit
+
+
+@app.callback()
+def _options(
+    version: Annotated[
+        bool, typer.Option("--version", callback=_show_version, is_eager=True, help="Print the version and exit.")
+    ] = False,
+    debug: Annotated[bool, typer.Option("--debug", help="Show the traceback of an error.")] = False,
+) -> None:
+    pass
+
+
+def main() -> None:
+    """Run the program and exit."""
+    debug = "--debug" in sys.argv[1:]
+    try:
+        app()
+    except UnturnError as error:
+        if debug:
+            raise
+        typer.echo(f"unturn: {error}", err=True)
+        sys.exit(error.exit_status)
+    except KeyboardInterrupt:
+        typer.echo("unturn: stopped", err=True)
+        sys.exit(130)
+    except Exception as error:  # noqa: BLE001 - a fault of ours must not look like a broken limit
+        if debug:
+            raise
+        typer.echo(
+            f"unturn: a fault of unturn, please report it with the file: {type(error).__name__}: {error}. "
+            "'unturn --debug ...' shows where.",
+            err=True,
+        )
+        sys.exit(UnturnError.exit_status)

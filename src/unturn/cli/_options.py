@@ -1,0 +1,76 @@
+"""Options that several commands share, declared once."""
+
+from __future__ import annotations
+
+from enum import StrEnum
+from pathlib import Path
+from typing import Annotated
+
+import typer
+
+
+class SolveChoice(StrEnum):
+    """Kind of solve."""
+
+    linear = "linear"
+    nonlinear = "nonlinear"
+    unknown = "unknown"
+
+
+class PlaneChoice(StrEnum):
+    """Assumption on the third direction of a plane mesh."""
+
+    strain = "strain"
+    stress = "stress"
+    axisymmetric = "axisymmetric"
+
+
+class AxisChoice(StrEnum):
+    """Axis of revolution."""
+
+    x = "x"
+    y = "y"
+
+
+class LocationChoice(StrEnum):
+    """Where values live."""
+
+    centroid = "centroid"
+    mean = "mean"
+
+
+class CoordinatesChoice(StrEnum):
+    """What the coordinates of the file are."""
+
+    reference = "reference"
+    deformed = "deformed"
+
+
+Displacement = Annotated[
+    str | None,
+    typer.Option(metavar="NAME", help="Point array that holds the displacement, or three scalars: ux,uy,uz."),
+]
+Table = Annotated[
+    Path | None,
+    typer.Option("--displacement-table", metavar="FILE.csv", help="Displacements by node number, for a mesh without."),
+]
+Scale = Annotated[
+    float, typer.Option("--displacement-scale", metavar="X", help="Factor from the displacement's unit to the mesh's.")
+]
+Coordinates = Annotated[
+    CoordinatesChoice, typer.Option(help="Whether the file's coordinates are already deformed.")
+]
+Step = Annotated[str, typer.Option(metavar="last|all|N", help="Step of a series; N counts from zero.")]
+Plane = Annotated[
+    PlaneChoice | None, typer.Option(help="What a plane mesh assumes of the direction across it.")
+]
+Axis = Annotated[AxisChoice, typer.Option(help="Axis of revolution for --plane axisymmetric.")]
+Poisson = Annotated[float | None, typer.Option(metavar="NU", help="Poisson's ratio for --plane stress.")]
+Alive = Annotated[
+    str | None, typer.Option(metavar="ARRAY", help="Cell array; cells where it is zero are left out as deleted.")
+]
+Skin = Annotated[
+    bool, typer.Option("--skin", help="Also compute skins and edges: cells whose nodes all belong to one larger cell.")
+]
+Threads = Annotated[int | None, typer.Option(metavar="N", min=1, help="Threads; default: all processors.")]
+Json = Annotated[Path | None, typer.Option("--json", metavar="FILE", help="Also write everything as JSON ('-': stdout).")]

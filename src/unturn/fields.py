@@ -1,0 +1,345 @@
+"""Measures on every cell of a model, and what is needed to judge them: volume, turning, noise floor."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass, field
+from typing import Literal
+
+import numpy as np
+from numpy.typing import NDArray
+
+from unturn.errors import UsageError
+from unturn.gradient import (
+    ElementChunk,
+    PointGradient,
+    Samples,
+    chunk_ranges,
+    mean_gradient,
+    over_chunks,
+    sample_points,
+)
+from unturn.kinematics._motion import Turning, relative_volume_change
+from unturn.kinematics._symmetric import Floats
+from unturn.measures import GEOMETRY, MEASURES, Measure, Split, choose_measures
+from unturn.model import Model, ModelBlock
+from unturn.precision import storage_resolution
+
+Location = Literal["centroid", "mean"]
+LOCATIONS: tuple[Location, ...] = ("centroid", "mean")
+
+
+@dataclass(eq=False)
+class CellDiagnostics:
+    """What the verdict and the summary need of every cell, `(n_cells,)` each, file order; NaN where not computed.
+
+    Attributes
+    ----------
+    volume
+        Weight of the cell: reference volume, area or length; `2 pi r` times the area where axisymmetric.
+    error, stretch, angle
+        See `unturn.kinematics._motion.Turning`.
+    noise
+        Floor of the strain from the storage resolution.
+    det_f
+        Determinant of `F = I + H`; not above zero where the displacement turns the element inside out.
+    principal
+        `(n_cells, 2)` largest and smallest principal strain.
+    centroid
+        `(n_cells, 3)`.
+    dimension
+        0 where the cell is not computed.
+    """
+
+    volume: Floats
+    error: Floats
+    stretch: Floats
+    angle: Floats
+    noise: Floats
+    det_f: Floats
+    principal: Floats
+    centroid: Floats
+    dimension: NDArray[np.int8]
+
+
+@dataclass(eq=False)
+class CellFields:
+    """Measures on the cells of a model.
+
+    Attributes
+    ----------
+    model
+        The model they were computed on.
+    arrays
+        Measure name -> `(n_cells,)` or `(n_cells, components)` float64 in file order; NaN where not computed.
+    left_out
+        ``{reason: file positions}``, the model's and those found on the way: tangled, without volume, not finite.
+    mirrored
+        Number of cells whose Jacobian is negative everywhere (their gradient is right).
+    diagnostics
+        Set when asked for.
+    """
+
+    model: Model
+    arrays: dict[str, Floats]
+    left_out: dict[str, NDArray[np.int64]] = field(default_factory=dict)
+    mirrored: int = 0
+    diagnostics: CellDiagnostics | None = None
+
+
+def compute_fields(
+    model: Model,
+    measures: Sequence[str] | None = None,
+    *,
+    at: Location = "centroid",
+    equivalent_poisson: float | None = None,
+    threads: int | None = None,
+    diagnose: bool = False,
+) -> CellFields:
+    """Return measures on the cells of a model.
+
+    Parameters
+    ----------
+    model
+        See `build_model`.
+    measures
+        Array names; None for the default set.
+    at
+        ``centroid``, or ``mean``: the volume mean of the gradient, from which the rest is derived.
+    equivalent_poisson
+        Effective Poisson ratio of the equivalent strain; None for `sqrt(2/3 e':e')`.
+    threads
+        Number of threads; None for all processors.
+    diagnose
+        Also return what verdict and summary need.
+
+    Raises
+    ------
+    UsageError
+        A measure that depends on the unstated third direction of a plane mesh.
+    """
+    names = choose_measures(list(measures) if measures is not None else None)
+    if at not in LOCATIONS:
+        raise UsageError(f"at={at!r} is not known; use one of {', '.join(LOCATIONS)}.")
+    _check_third_direction(model, names)
+    job = _Job(model, names, at, equivalent_poisson, diagnose)
+    for block in model.blocks:
+        if block.row is not None and len(block.active):
+            job.run(block, threads)
+    return job.finish()
+
+
+def _check_third_direction(model: Model, names: Sequence[str]) -> None:
+    if model.plane is None or model.plane.model is not None:
+        return
+    bound = [n for n in names if n in MEASURES and MEASURES[n].needs_third]
+    if bound:
+        raise UsageError(
+            f"{model.result.path + ': ' if model.result.path else ''}the mesh is plane, and {', '.join(bound)} depend on the "
+            "strain across the plane, which the displacement does not hold: state it with --plane strain, "
+            "--plane stress --poisson NU or --plane axisymmetric, or ask for in-plane measures only "
+            "(--measures strain,rotation)."
+        )
+
+
+_OK, _NOT_FINITE, _FLAT, _TANGLED = range(4)
+_REASONS = {_NOT_FINITE: "displacement not finite", _FLAT: "no volume", _TANGLED: "tangled"}
+
+
+class _Job:
+    """The arrays being filled."""
+
+    def __init__(
+        self, model: Model, names: Sequence[str], at: Location, poisson: float | None, diagnose: bool
+    ) -> None:
+        self.model, self.at, self.poisson = model, at, poisson
+        self.measures: list[Measure] = [MEASURES[n] for n in names if n in MEASURES]
+        self.directions = any(m.directions for m in self.measures)
+        n = model.result.n_cells
+        whole = all(len(b.active) == len(b.cells) for b in model.blocks)
+        self.arrays: dict[str, Floats] = {}
+        for name in names:
+            components = len(MEASURES[name].components) if name in MEASURES else 0
+            shape = (n, components) if components else (n,)
+            self.arrays[name] = np.empty(shape) if whole else np.full(shape, np.nan)
+        self.status = np.zeros(n, dtype=np.uint8)
+        self.mirrored = np.zeros(n, dtype=bool)
+        self.diagnostics: CellDiagnostics | None = None
+        if diagnose:
+            volume, error, stretch, angle, noise, det_f = (np.full(n, np.nan) for _ in range(6))
+            principal, centroid = np.full((n, 2), np.nan), np.full((n, 3), np.nan)
+            self.diagnostics = CellDiagnostics(
+                volume, error, stretch, angle, noise, det_f, principal, centroid, np.zeros(n, dtype=np.int8)
+            )
+            stored = model.displacement.stored
+            self.resolution_u = max(storage_resolution(a).relative for a in stored)
+            self.resolution_x = storage_resolution(model.result.points).relative
+
+    def run(self, block: ModelBlock, threads: int | None) -> None:
+        assert block.row is not None
+        row = block.row
+        place = sample_points(row, "centroid")
+        rule = sample_points(row, "mean")
+        connectivity, index = block.connectivity, block.index
+        consecutive = bool((np.diff(index) == 1).all())
+
+        def work(start: int, stop: int) -> None:
+            rows = (
+                slice(int(index[start]), int(index[start]) + stop - start)
+                if consecutive
+                else index[start:stop]
+            )
+            with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
+                chunk = ElementChunk(self.model.fields, connectivity[start:stop], row, self.model.plane)
+                self._chunk(chunk, place, rule, rows)
+
+        over_chunks(work, chunk_ranges(len(index), connectivity.shape[1]), threads)
+
+    def _chunk(
+        self, chunk: ElementChunk, place: Samples, rule: Samples, rows: slice | NDArray[np.int64]
+    ) -> None:
+        point = chunk.at(place.gradients[0], place.functions[0])
+        low, high, volume = self._geometry(chunk, point, rule)
+        H = point.H
+        mean = self.at == "mean" and len(rule.weights) > 1
+        if mean:
+            H, volume = mean_gradient(chunk, rule)
+        status = self._status(chunk, point, low, high)
+        if status is not None:
+            H[:, :, status != _OK] = np.nan
+            volume = np.where(status == _TANGLED, np.nan, volume)
+            self.status[rows] = status
+        if chunk.row.dim == 3:
+            self.mirrored[rows] = high < 0
+        finite = None
+        if self.diagnostics is not None or "small_strain_error" in self.arrays:
+            finite = H
+            if chunk.row.dim < 3:
+                finite = mean_gradient(chunk, rule, finite=True)[0] if mean else chunk.finite(point)
+                if status is not None:
+                    finite[:, :, status != _OK] = np.nan
+        split = Split(H, self.poisson, self.directions, finite)
+        for measure in self.measures:
+            values = measure.compute(split)
+            self.arrays[measure.name][rows] = values.T if values.ndim == 2 else values
+        if "element_volume" in self.arrays:
+            self.arrays["element_volume"][rows] = volume
+        if "jacobian_min_over_max" in self.arrays:
+            self.arrays["jacobian_min_over_max"][rows] = np.where(high < 0, high / low, low / high)
+        if self.diagnostics is not None:
+            self._diagnose(chunk, point, split, place, volume, rows)
+
+    def _geometry(
+        self, chunk: ElementChunk, point: PointGradient, rule: Samples
+    ) -> tuple[Floats, Floats, Floats]:
+        """Return smallest and largest Jacobian over the quadrature points, and the volume."""
+        wanted = self.diagnostics is not None or "element_volume" in self.arrays
+        axisymmetric = chunk.plane is not None and chunk.plane.model == "axisymmetric"
+        if len(rule.weights) == 1 and not axisymmetric:
+            return point.measure, point.measure, rule.weights[0] * point.weight
+        low = high = point.measure if chunk.row.dim == 3 else np.abs(point.measure)
+        volume = np.zeros(len(chunk))
+        if chunk.row.dim == 3:
+            wanted = wanted or "jacobian_min_over_max" in self.arrays
+            if not wanted and chunk.surely_untangled(point, rule):
+                return point.measure, point.measure, volume
+            low, high = np.full(len(chunk), np.inf), np.full(len(chunk), -np.inf)
+            for gradients, weight in zip(rule.gradients, rule.weights):
+                det = chunk.measure(gradients)
+                low, high = np.minimum(low, det), np.maximum(high, det)
+                volume += weight * np.abs(det)
+            return low, high, volume
+        if wanted or chunk.row.n_nodes > chunk.row.dim + 1:
+            low, high = np.full(len(chunk), np.inf), np.full(len(chunk), -np.inf)
+            for gradients, functions, weight in zip(rule.gradients, rule.functions, rule.weights):
+                here = chunk.at(gradients, functions)
+                signed = here.measure * _same_side(point, here)
+                low, high = np.minimum(low, signed), np.maximum(high, signed)
+                volume += weight * here.weight
+        return low, high, volume
+
+    @staticmethod
+    def _status(
+        chunk: ElementChunk, point: PointGradient, low: Floats, high: Floats
+    ) -> NDArray[np.uint8] | None:
+        """Return the code of each cell, or None when all are sound."""
+        H = point.H.reshape(-1)
+        one_sign = low is high
+        if np.isfinite(np.einsum("i,i->", H, H)) and (one_sign or not ((low <= 0) & (high >= 0)).any()):
+            return None
+        status = np.zeros(len(chunk), dtype=np.uint8)
+        status[(low <= 0) & (high >= 0)] = _TANGLED
+        broken = ~np.isfinite(point.inverse[0, 0])
+        status[broken] = _FLAT
+        moved = chunk.relative[3:].sum(axis=(0, 1)) + chunk.first[3:].sum(axis=0)
+        status[~np.isfinite(moved)] = _NOT_FINITE
+        return status
+
+    def _diagnose(
+        self,
+        chunk: ElementChunk,
+        point: PointGradient,
+        split: Split,
+        place: Samples,
+        volume: Floats,
+        rows: slice | NDArray[np.int64],
+    ) -> None:
+        assert self.diagnostics is not None
+        d = self.diagnostics
+        turning: Turning = split.turning
+        d.volume[rows] = volume
+        d.error[rows], d.stretch[rows], d.angle[rows] = turning.error, turning.stretch, turning.angle
+        d.det_f[rows] = 1.0 + relative_volume_change(split.finite_H)
+        principal = split.principal
+        d.principal[rows, 0], d.principal[rows, 1] = principal[0], principal[2]
+        for i in range(3):
+            d.centroid[rows, i] = chunk.interpolate(place.functions[0], i)
+        d.dimension[rows] = chunk.row.dim
+        steepest = 1.0 / smallest_height(chunk, point)
+        H_size = np.sqrt(np.nansum(split.H**2, axis=(0, 1)))
+        largest = [
+            np.maximum(np.abs(chunk.first[a:b] + 0.0).max(axis=0), np.abs(chunk.relative[a:b] + chunk.first[a:b, None]).max(axis=(0, 1)))
+            for a, b in ((0, 3), (3, 6))
+        ]  # fmt: skip
+        d.noise[rows] = (self.resolution_u * largest[1] + H_size * self.resolution_x * largest[0]) * steepest
+
+    def finish(self) -> CellFields:
+        left_out = dict(self.model.left_out)
+        for code, reason in _REASONS.items():
+            cells = np.flatnonzero(self.status == code)
+            if len(cells):
+                left_out[reason] = cells
+        return CellFields(self.model, self.arrays, left_out, int(self.mirrored.sum()), self.diagnostics)
+
+
+def _same_side(point: PointGradient, here: PointGradient) -> Floats:
+    """Return +-1: whether the surface's normal at a point is on the side of the normal at the centroid."""
+    if point.tangents is None or here.tangents is None or len(here.tangents) == 1:
+        return np.ones(len(here.measure))
+    a, b = (
+        np.cross(point.tangents[0], point.tangents[1], axis=0),
+        np.cross(here.tangents[0], here.tangents[1], axis=0),
+    )
+    return np.where((a * b).sum(axis=0) < 0, -1.0, 1.0)
+
+
+def smallest_height(chunk: ElementChunk, point: PointGradient) -> Floats:
+    """Return the smallest height `(m,)` of the elements: the distance between opposite sides, or corner and side.
+
+    The gradient of a reference coordinate that varies by one over the shape is one over that distance.
+    """
+    covectors = chunk.row.shape.extents
+    squares = [(np.einsum("k,kjm->jm", g, point.inverse) ** 2).sum(axis=0) for g in covectors]
+    height: Floats = 1.0 / np.sqrt(np.max(squares, axis=0))
+    return height
+
+
+__all__ = [
+    "GEOMETRY",
+    "LOCATIONS",
+    "CellDiagnostics",
+    "CellFields",
+    "Location",
+    "compute_fields",
+    "smallest_height",
+]

@@ -1,0 +1,36 @@
+"""Pure tensor functions on arrays of shape `(..., 3, 3)`; no mesh is known here.
+
+`H[..., i, j] = du_i / dX_j`. Shear is tensor shear. Angles are radians.
+"""
+
+from unturn.kinematics._public import (
+    deviatoric_strain,
+    equivalent_strain,
+    green_lagrange_strain,
+    max_shear_strain,
+    principal_strain,
+    rotation_angle,
+    rotation_tensor,
+    rotation_vector,
+    small_strain_error,
+    strain,
+    tensor_from_components,
+    tensor_to_components,
+    volumetric_strain,
+)
+
+__all__ = [
+    "deviatoric_strain",
+    "equivalent_strain",
+    "green_lagrange_strain",
+    "max_shear_strain",
+    "principal_strain",
+    "rotation_angle",
+    "rotation_tensor",
+    "rotation_vector",
+    "small_strain_error",
+    "strain",
+    "tensor_from_components",
+    "tensor_to_components",
+    "volumetric_strain",
+]

@@ -1,0 +1,341 @@
+"""A result made ready for computing: reference coordinates, displacement, what each block of cells is."""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+from typing import Literal
+
+import numpy as np
+from numpy.typing import NDArray
+from scipy import sparse
+
+from unturn.displacement import Displacement, find_displacement
+from unturn.elements import Element, detect_spacing, element, not_computable
+from unturn.errors import InputError, UsageError
+from unturn.gradient import NodalFields, Plane, PlaneModel
+from unturn.kinematics._symmetric import Floats
+from unturn.midside import misplaced_mid_nodes
+from unturn.result import CellBlock, Result
+
+Kind = Literal["solid", "plane", "surface", "line"]
+KINDS: tuple[Kind, ...] = ("line", "surface", "solid")
+
+_IN_PLANE = 1e-9  # share of the model's size within which a mesh counts as lying in a coordinate plane
+
+
+@dataclass(frozen=True)
+class PlaneOptions:
+    """What the user says of a plane mesh; see `Plane`."""
+
+    model: PlaneModel | None = None
+    poisson: float | None = None
+    axis: Literal["x", "y"] = "y"
+
+
+@dataclass(frozen=True, eq=False)
+class ModelBlock:
+    """Cells of one type with their element row.
+
+    Parameters
+    ----------
+    cells
+        The block of the result.
+    row
+        Its row of the element table; None when it cannot be computed.
+    kind
+        ``solid``, ``plane``, ``surface`` or ``line``; None when it cannot be computed.
+    active
+        `(n,)` positions within the block that are computed.
+    """
+
+    cells: CellBlock
+    row: Element | None
+    kind: Kind | None
+    active: NDArray[np.int64]
+
+    @property
+    def connectivity(self) -> NDArray[np.int64]:
+        """Connectivity of the active cells."""
+        conn = self.cells.connectivity
+        return conn if len(self.active) == len(conn) else conn[self.active]
+
+    @property
+    def index(self) -> NDArray[np.int64]:
+        """File positions of the active cells."""
+        return self.cells.index if len(self.active) == len(self.cells) else self.cells.index[self.active]
+
+
+@dataclass(frozen=True, eq=False)
+class Model:
+    """A result ready for computing.
+
+    Parameters
+    ----------
+    result
+        What was read.
+    displacement
+        The displacement that was found.
+    points
+        `(n, 3)` reference coordinates.
+    fields
+        Coordinates and displacement for gathering.
+    blocks
+        Blocks with their element rows.
+    plane
+        Set when the mesh is plane.
+    left_out
+        ``{reason: file positions}`` of cells that are not computed.
+    notes
+        Sentences for the user.
+    """
+
+    result: Result
+    displacement: Displacement
+    points: Floats
+    fields: NodalFields
+    blocks: tuple[ModelBlock, ...]
+    plane: Plane | None
+    left_out: Mapping[str, NDArray[np.int64]] = field(default_factory=dict)
+    notes: tuple[str, ...] = ()
+
+    @property
+    def dimension(self) -> int:
+        """Highest dimension among the computed cells."""
+        return max(b.row.dim for b in self.blocks if b.row is not None)
+
+
+def build_model(
+    result: Result,
+    *,
+    displacement: str | None = None,
+    displacement_scale: float = 1.0,
+    coordinates: Literal["reference", "deformed"] = "reference",
+    plane: PlaneOptions | None = None,
+    skin: bool = False,
+    alive: str | None = None,
+) -> Model:
+    """Return the model of a result.
+
+    Raises
+    ------
+    DisplacementError
+        No displacement or several.
+    UsageError
+        Options that do not fit the mesh.
+    InputError
+        No computable element, or a node order that cannot be right.
+    """
+    found = find_displacement(result, displacement, displacement_scale)
+    points = np.asarray(result.points, dtype=np.float64)
+    if coordinates == "deformed":
+        with np.errstate(invalid="ignore"):
+            points = points - found.values
+    notes = list(result.notes)
+    rows = [_row(result, points, block, notes) for block in result.blocks]
+    if all(row is None for row in rows):
+        raise InputError(_nothing_to_compute(result))
+    left_out, masks = _left_out(result, rows, skin, alive)
+    flat, values = _plane_mesh(result, rows, points, found.values, plane or PlaneOptions(), notes)
+    blocks = []
+    for block, row, mask in zip(result.blocks, rows, masks):
+        kind: Kind | None = None
+        if row is not None:
+            kind = "plane" if flat is not None and row.dim == 2 else KINDS[row.dim - 1]
+        active = np.flatnonzero(mask) if row is not None else np.zeros(0, dtype=np.int64)
+        blocks.append(ModelBlock(block, row, kind, active))
+    if not any(len(b.active) for b in blocks):
+        raise InputError(
+            f"{_where(result)}every cell is left out ({', '.join(left_out)}): nothing remains to compute."
+        )
+    return Model(
+        result, found, points, NodalFields(points, values), tuple(blocks), flat, left_out, tuple(notes)
+    )
+
+
+def _where(result: Result) -> str:
+    return f"{result.path}: " if result.path else ""
+
+
+def _row(result: Result, points: Floats, block: CellBlock, notes: list[str]) -> Element | None:
+    n_nodes = block.connectivity.shape[1]
+    if not_computable(block.cell_type, n_nodes) is not None:
+        return None
+    try:
+        spacing = detect_spacing(points, block.connectivity, block.cell_type)
+        row = element(block.cell_type, n_nodes, spacing)
+    except InputError as error:
+        raise InputError(f"{_where(result)}cell {int(block.index[0])}: {error}") from None
+    check = misplaced_mid_nodes(points, block.connectivity, row)
+    if check.count:
+        found = (
+            f"{check.count} of {len(block)} {block.cell_type} cells have mid-side nodes far from the middle of their "
+            f"edges (first: cell {int(block.index[check.first])})"
+        )
+        if check.share > 0.5:
+            raise InputError(
+                f"{_where(result)}{found}: the node order of the file is not that of its format. Write the file again "
+                "with the right node order."
+            )
+        notes.append(f"{found}: look at these cells before you trust their strain.")
+    return row
+
+
+def _nothing_to_compute(result: Result) -> str:
+    reasons = {b.cell_type: not_computable(b.cell_type, b.connectivity.shape[1]) for b in result.blocks}
+    listed = "; ".join(f"{name}: {reason}" for name, reason in reasons.items())
+    return f"{_where(result)}no element of this mesh can be computed ({listed})."
+
+
+def _left_out(
+    result: Result, rows: list[Element | None], skin: bool, alive: str | None
+) -> tuple[dict[str, NDArray[np.int64]], list[NDArray[np.bool_]]]:
+    """Return the cells left out by reason and, per block, the mask of those that stay."""
+    out: dict[str, list[NDArray[np.int64]]] = {}
+    gone = np.zeros(result.n_cells, dtype=bool)
+    for block, row in zip(result.blocks, rows):
+        if row is None:
+            reason = not_computable(block.cell_type, block.connectivity.shape[1])
+            out.setdefault(f"{block.cell_type} ({reason})", []).append(block.index)
+            gone[block.index] = True
+    for reason, cells in result.left_out.items():
+        fresh = np.asarray(cells)[~gone[cells]]
+        if len(fresh):
+            out.setdefault(reason, []).append(fresh)
+        gone[cells] = True
+    if alive is not None:
+        dead = np.flatnonzero(_dead(result, alive) & ~gone)
+        if len(dead):
+            out["deleted"] = [dead]
+        gone[dead] = True
+    if not skin:
+        for cells in skin_cells(result, rows):
+            fresh = cells[~gone[cells]]
+            if len(fresh):
+                out.setdefault("skins and edges of other cells", []).append(fresh)
+            gone[cells] = True
+    masks = [~gone[block.index] for block in result.blocks]
+    return {reason: np.sort(np.concatenate(parts)) for reason, parts in out.items()}, masks
+
+
+def _dead(result: Result, alive: str) -> NDArray[np.bool_]:
+    if alive not in result.cell_data:
+        present = ", ".join(repr(n) for n in result.cell_data) or "none"
+        raise UsageError(
+            f"{_where(result)}--alive: no cell array is called {alive!r}. Cell arrays: {present}."
+        )
+    values = result.cell_data[alive]
+    if values.size != result.n_cells:
+        raise UsageError(f"{_where(result)}--alive: cell array {alive!r} has more than one component.")
+    dead: NDArray[np.bool_] = values.reshape(-1) == 0
+    return dead
+
+
+def skin_cells(result: Result, rows: list[Element | None]) -> list[NDArray[np.int64]]:
+    """Return file positions of cells all of whose nodes belong to one cell of higher dimension."""
+    dims = [row.dim if row is not None else 0 for row in rows]
+    found = []
+    for low in (1, 2):
+        upper = [b for b, d in zip(result.blocks, dims) if d > low]
+        if not upper:
+            continue
+        used = np.zeros(result.n_points, dtype=bool)
+        for block in upper:
+            used[block.connectivity] = True
+        for block, d in zip(result.blocks, dims):
+            if d != low:
+                continue
+            maybe = np.flatnonzero(used[block.connectivity].all(axis=1))
+            if len(maybe):
+                inside = _inside_one(block.connectivity[maybe], upper, result.n_points)
+                found.append(block.index[maybe[inside]])
+    return found
+
+
+def _incidence(connectivity: NDArray[np.int64], n_points: int) -> sparse.csr_array:
+    n, k = connectivity.shape
+    return sparse.csr_array(
+        (np.ones(n * k, dtype=np.int32), connectivity.reshape(-1), np.arange(0, n * k + 1, k)),
+        shape=(n, n_points),
+    )
+
+
+def _inside_one(low: NDArray[np.int64], upper: list[CellBlock], n_points: int) -> NDArray[np.bool_]:
+    inside = np.zeros(len(low), dtype=bool)
+    lower = _incidence(low, n_points)
+    for block in upper:
+        shared = lower @ _incidence(block.connectivity, n_points).T
+        inside |= np.asarray(shared.max(axis=1).todense()).reshape(-1) >= low.shape[1]
+    return inside
+
+
+def _plane_mesh(
+    result: Result,
+    rows: list[Element | None],
+    points: Floats,
+    displacement: Floats,
+    options: PlaneOptions,
+    notes: list[str],
+) -> tuple[Plane | None, Floats]:
+    """Return the plane of the mesh, or None, and the displacement to use."""
+    flat = [b for b, r in zip(result.blocks, rows) if r is not None and r.dim == 2]
+    highest = max(r.dim for r in rows if r is not None)
+    normal = _normal_axis(points, flat, _used(flat, result.n_points)) if highest == 2 else None
+    if normal is None:
+        if options.model is not None:
+            raise UsageError(
+                f"{_where(result)}--plane {options.model} needs a mesh whose highest cells are two-dimensional and lie in "
+                "one coordinate plane; this one does not."
+            )
+        return None, displacement
+    used = _used(flat, result.n_points)
+    known = displacement[used & np.isfinite(displacement).all(axis=1)]
+    moved = float(np.abs(known[:, normal]).max(initial=0.0))
+    size = float(np.abs(known).max(initial=0.0))
+    if moved > 1e-9 * size:
+        if options.model is None:
+            return None, displacement
+        notes.append(
+            f"--plane {options.model}: the displacement across the plane (up to {moved:.3g}) is left out."
+        )
+    displacement = displacement.copy()
+    displacement[:, normal] = 0.0
+    axis = {"x": 0, "y": 1}[options.axis]
+    if options.model == "axisymmetric":
+        _check_axis(result, points[used], normal, axis)
+    if options.model == "stress" and options.poisson is None:
+        raise UsageError("--plane stress needs --poisson NU: the strain across the plane follows from it.")
+    if options.poisson is not None and not -1.0 < options.poisson <= 0.5:
+        raise UsageError(f"--poisson {options.poisson:g}: Poisson's ratio lies between -1 and 0.5.")
+    return Plane(normal, options.model, options.poisson, axis), displacement
+
+
+def _used(blocks: list[CellBlock], n_points: int) -> NDArray[np.bool_]:
+    used = np.zeros(n_points, dtype=bool)
+    for block in blocks:
+        used[block.connectivity] = True
+    return used
+
+
+def _normal_axis(points: Floats, blocks: list[CellBlock], used: NDArray[np.bool_]) -> int | None:
+    if not blocks:
+        return None
+    with np.errstate(invalid="ignore"):
+        spread = np.ptp(points[used], axis=0)
+    size = float(spread.max())
+    thin = [k for k in range(3) if spread[k] <= _IN_PLANE * size]
+    return thin[-1] if thin and size > 0 else None
+
+
+def _check_axis(result: Result, points: Floats, normal: int, axis: int) -> None:
+    if normal == axis:
+        raise UsageError(
+            f"{_where(result)}--axis {'xyz'[axis]}: the axis of revolution must lie in the plane of the mesh."
+        )
+    radius = points[:, 3 - normal - axis]
+    low, high = float(radius.min()), float(radius.max())
+    if low < -1e-9 * max(abs(low), abs(high)):
+        raise UsageError(
+            f"{_where(result)}--plane axisymmetric about {'xyz'[axis]}: the mesh reaches across the axis (radius {low:.6g} to "
+            f"{high:.6g}). Choose the other axis with --axis, or move the mesh."
+        )

@@ -1,0 +1,128 @@
+"""The words of a picture: title, colour bar, what is outside the range, how the shape is drawn, scale and axes."""
+
+from __future__ import annotations
+
+import numpy as np
+
+from unturn.pictures._camera import Camera
+from unturn.pictures._colours import ABOVE, BELOW, INK, NO_VALUE, Range
+from unturn.pictures._numbers import nice_step, ticks, written
+from unturn.pictures._page import Page
+from unturn.pictures._values import Values
+
+_SOFT = (0.32, 0.33, 0.37)
+LEGEND_WIDTH = 330
+HEAD = 118
+FOOT = 112
+
+
+def head(page: Page, title: str, subtitle: str) -> None:
+    """Write the title and what the picture was made from."""
+    u, (width, height) = page.unit, page.size
+    page.text(title, 40 * u, height - 58 * u, 27 * u, bold=True, room=width - 80 * u)
+    page.text(subtitle, 40 * u, height - 92 * u, 17 * u, colour=_SOFT, room=width - 80 * u)
+    page.line(np.array([[40 * u, height - 106 * u], [width - 40 * u, height - 106 * u]]), (0.8, 0.8, 0.82), u)
+
+
+def colour_bar(page: Page, values: Values, found: Range, location: str, noun: str) -> None:
+    """Draw the colour bar with its name, unit and place, and what lies outside it; `noun` is what is counted."""
+    u, (width, height) = page.unit, page.size
+    left, room = width - (LEGEND_WIDTH - 20) * u, (LEGEND_WIDTH - 60) * u
+    name, *remarks = values.name.splitlines()
+    y = height - 150 * u
+    for line in page.wrapped(name, 20 * u, room, bold=True):
+        page.text(line, left, y, 20 * u, bold=True, room=room)
+        y -= 27 * u
+    for line in (*remarks, values.unit, location):
+        for part in page.wrapped(line, 16 * u, room):
+            page.text(part, left, y, 16 * u, colour=_SOFT, room=room)
+            y -= 22 * u
+    y -= 8 * u
+    if found.above:
+        words = f"above {written(found.high * values.scale)}: {_counted(found.above, noun)}"
+        y = _swatch(page, left, y, ABOVE, words, room) - 8 * u
+    low = (170 + 28 * ((found.below > 0) + (found.missing > 0))) * u
+    if found.above + found.below + found.missing < found.count:
+        _bar(page, values, found, (left, low, y))
+        y = low - 24 * u
+    if found.below:
+        words = f"below {written(found.low * values.scale)}: {_counted(found.below, noun)}"
+        y = _swatch(page, left, y, BELOW, words, room)
+    if found.missing:
+        _swatch(page, left, y, NO_VALUE, f"no value: {_counted(found.missing, noun)}", room)
+
+
+def _counted(count: int, noun: str) -> str:
+    return f"{count:,} {noun}{'s' * (count != 1)}".replace(",", " ")
+
+
+def _swatch(
+    page: Page, left: float, top: float, colour: tuple[float, float, float], words: str, room: float
+) -> float:
+    u = page.unit
+    page.box(left, top - 18 * u, left + 34 * u, top, colour)
+    page.text(words, left + 44 * u, top - 18 * u, 15 * u, room=room - 44 * u)
+    return top - 28 * u
+
+
+def _bar(page: Page, values: Values, found: Range, place: tuple[float, float, float]) -> None:
+    u = page.unit
+    left, low, high = place
+    right = left + 34 * u
+    colours = found.colours
+    marks = ticks(found.low * values.scale, found.high * values.scale)
+    if len(marks) == 1:
+        page.areas(_strips(left, right, np.array([low, high])), colours[:1])
+        page.text(written(marks[0]), right + 14 * u, (low + high) / 2 - 9 * u, 16 * u)
+        return
+    page.areas(_strips(left, right, np.linspace(low, high, len(colours) + 1)), colours)
+    page.line(np.array([[left, low], [right, low], [right, high], [left, high], [left, low]]), INK, u)
+    for mark in marks:
+        y = low + (mark - marks[0]) / (marks[-1] - marks[0]) * (high - low)
+        page.line(np.array([[right, y], [right + 8 * u, y]]), INK, u)
+        page.text(written(mark), right + 14 * u, y - 10 * u, 16 * u)
+
+
+def _strips(left: float, right: float, levels: np.ndarray) -> np.ndarray:
+    low, high = levels[:-1], levels[1:]
+    x = np.full_like(low, left), np.full_like(low, right)
+    corners = [(x[0], low), (x[1], low), (x[1], high), (x[0], high)]
+    return np.stack([np.stack(c, axis=1) for c in corners], axis=1)
+
+
+def foot(page: Page, camera: Camera, words: str) -> None:
+    """Draw axes, a scale bar, and how the shape is drawn."""
+    u, (width, _) = page.unit, page.size
+    _axes(page, camera, (92 * u, 66 * u))
+    left = 190 * u
+    length = nice_step(200 * u * camera.pixel, 1) if camera.pixel > 0 else 0.0
+    if length > 200 * u * camera.pixel * 1.6:
+        length /= 2
+    across = length / camera.pixel
+    base = 70 * u
+    page.line(
+        np.array([[left, base + 6 * u], [left, base], [left + across, base], [left + across, base + 6 * u]]),
+        INK,
+        2 * u,
+    )
+    page.text(f"{written(length)} (length unit of the file)", left, base - 27 * u, 15 * u, colour=_SOFT)
+    page.text(words, left, 20 * u, 16 * u, room=width - left - 40 * u)
+
+
+def _axes(page: Page, camera: Camera, centre: tuple[float, float]) -> None:
+    u = page.unit
+    start = np.array(centre)
+    for name, axis in zip("xyz", np.eye(3)):
+        along = np.array([axis @ camera.right, axis @ np.array(camera.up)])
+        seen = float(np.linalg.norm(along))
+        if seen < 0.15:
+            continue
+        end = start + along * 46 * u
+        page.line(np.array([start, end]), INK, 2 * u)
+        tip, side = along / seen, np.array([-along[1], along[0]]) / seen
+        back = end - tip * 9 * u
+        page.areas(
+            np.array([[end, back + side * 4 * u, back - side * 4 * u]]), np.array([[31, 33, 41]], np.uint8)
+        )
+        label = end + tip * 13 * u
+        page.text(name, label[0], label[1] - 9 * u, 16 * u, anchor="centre")

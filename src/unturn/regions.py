@@ -1,0 +1,221 @@
+"""Parts of a result by which it is judged: cell groups, tags, connected bodies, else the whole."""
+
+from __future__ import annotations
+
+import re
+from collections.abc import Sequence
+from dataclasses import dataclass
+from typing import Literal
+
+import numpy as np
+from numpy.typing import NDArray
+
+from unturn.errors import UsageError, close_matches
+from unturn.kinematics._symmetric import Floats
+from unturn.model import Model
+from unturn.result import Result
+
+Origin = Literal["group", "tag", "body", "whole"]
+
+_TAG_NAMES = re.compile(
+    r"region|material|^mat(_?id)?$|part|body|bodies|group|tag|physical|propert|^[pm]id$|domain|section|component|zone",
+    re.IGNORECASE,
+)
+_NOT_TAGS = re.compile(
+    r"number|ghost|owner|proc|rank|partition|element.?id|cell.?id|node|global|type|status|alive|geometrical|index",
+    re.IGNORECASE,
+)
+_MOST_TAGS = 200
+_MOST_BODIES = 50
+
+
+@dataclass(frozen=True, eq=False)
+class Region:
+    """A named part.
+
+    Parameters
+    ----------
+    name
+        Group name, ``array=value``, ``body 1`` ... or ``whole``.
+    cells
+        Zero-based file positions.
+    origin
+        What it comes from.
+    """
+
+    name: str
+    cells: NDArray[np.int64]
+    origin: Origin
+
+
+def tag_arrays(result: Result) -> list[str]:
+    """Return the integer cell arrays that number parts, the likeliest first."""
+    likely = []
+    for name, values in result.cell_data.items():
+        if values.size != result.n_cells or values.dtype.kind not in "iu" or _NOT_TAGS.search(name):
+            continue
+        if _TAG_NAMES.search(name) and len(np.unique(values)) <= _MOST_TAGS:
+            likely.append(name)
+    return likely
+
+
+def find_regions(model: Model, cells: NDArray[np.bool_]) -> list[Region]:
+    """Return the regions of a model; only the `cells` (mask) that are judged belong to them.
+
+    Groups come before tags, tags before connected bodies. Cells that are in no group make the region ``(no group)``.
+    """
+    result = model.result
+    found = _groups(result, cells) or _tags(result, cells)
+    if not found:
+        found = bodies(model, cells)
+    if not found:
+        found = [Region("whole", np.flatnonzero(cells), "whole")]
+    return found
+
+
+def _groups(result: Result, cells: NDArray[np.bool_]) -> list[Region]:
+    found = []
+    rest = cells.copy()
+    for name, members in result.groups.items():
+        inside = np.asarray(members)[cells[members]]
+        if len(inside):
+            found.append(Region(name, np.sort(inside), "group"))
+            rest[inside] = False
+    if found and rest.any():
+        found.append(Region("(no group)", np.flatnonzero(rest), "group"))
+    return found
+
+
+def _tags(result: Result, cells: NDArray[np.bool_]) -> list[Region]:
+    for name in tag_arrays(result):
+        values = result.cell_data[name].reshape(-1)
+        distinct = np.unique(values[cells])
+        if len(distinct) < 2:
+            continue
+        return [
+            Region(f"{name}={v}", np.flatnonzero(cells & (values == v)), "tag") for v in distinct.tolist()
+        ]
+    return []
+
+
+def bodies(model: Model, cells: NDArray[np.bool_]) -> list[Region]:
+    """Return connected bodies: cells that share nodes. Coincident nodes count as one when no two cells share any.
+
+    A single body, or more than fifty, gives an empty list: the whole is then the better unit.
+    """
+    from scipy import sparse
+    from scipy.sparse.csgraph import connected_components
+
+    used, shared = _used_nodes(model, cells)
+    label = None
+    if not shared:
+        where = np.flatnonzero(used)  # a node of no cell may lie anywhere
+        label = np.arange(model.result.n_points)
+        label[where] = where[merge_coincident(model.points[where])[0]]
+    nodes, lengths, index = [], [], []
+    for block in model.blocks:
+        if block.row is None:
+            continue
+        mask = cells[block.index]
+        corners = block.connectivity[:, : block.row.n_corners]
+        corners = corners if mask.all() else corners[mask]
+        nodes.append((corners if label is None else label[corners]).reshape(-1).astype(np.int32))
+        lengths.append(np.full(len(corners), corners.shape[1]))
+        index.append(block.index if mask.all() else block.index[mask])
+    positions = np.concatenate(index)
+    # a graph of points, then cells, each cell joined to its corners
+    n, n_cells = model.result.n_points, len(positions)
+    ends = np.concatenate([np.zeros(n + 1, dtype=np.int64), np.cumsum(np.concatenate(lengths))]).astype(
+        np.int32
+    )
+    joined = np.concatenate(nodes)
+    graph = sparse.csr_array(
+        (np.ones(len(joined), dtype=np.int8), joined, ends), shape=(n + n_cells, n + n_cells)
+    )
+    _, part = connected_components(graph, directed=False)
+    part_of_cell = part[n:]
+    distinct, inverse, counts = np.unique(part_of_cell, return_inverse=True, return_counts=True)
+    if not 1 < len(distinct) <= _MOST_BODIES:
+        return []
+    order = np.argsort(-counts, kind="stable")
+    return [
+        Region(f"body {rank + 1}", np.sort(positions[inverse == k]), "body") for rank, k in enumerate(order)
+    ]
+
+
+def _used_nodes(model: Model, cells: NDArray[np.bool_]) -> tuple[NDArray[np.bool_], bool]:
+    """Return which nodes the cells have, and whether any two cells share one (or there is only one cell)."""
+    seen = np.zeros(model.result.n_points, dtype=bool)
+    total = 0
+    for block in model.blocks:
+        if block.row is not None:
+            conn = block.connectivity[cells[block.index]]
+            seen[conn] = True
+            total += conn.size
+    return seen, total != int(seen.sum()) or int(cells.sum()) == 1
+
+
+def merge_coincident(points: Floats) -> tuple[NDArray[np.int64], float]:
+    """Return for each point the smallest position among coincident points, and the tolerance used."""
+    from scipy import sparse
+    from scipy.sparse.csgraph import connected_components
+    from scipy.spatial import cKDTree
+
+    finite = np.isfinite(points).all(axis=1)
+    spread = float(np.ptp(points[finite], axis=0).max()) if finite.any() else 0.0
+    tolerance = 1e-9 * spread
+    label = np.arange(len(points))
+    where = np.flatnonzero(finite)
+    pairs = cKDTree(points[where]).query_pairs(tolerance, output_type="ndarray")
+    if len(pairs):
+        graph = sparse.csr_array(
+            (np.ones(len(pairs), dtype=np.int8), (pairs[:, 0], pairs[:, 1])), shape=(len(where), len(where))
+        )
+        _, part = connected_components(graph, directed=False)
+        smallest = np.full(part.max() + 1, len(points))
+        np.minimum.at(smallest, part, where)
+        label[where] = smallest[part]
+    return label, tolerance
+
+
+def named_regions(model: Model, names: Sequence[str], cells: NDArray[np.bool_]) -> list[Region]:
+    """Return the regions asked for by name: a group, ``array=value``, or a name that `find_regions` gives.
+
+    Raises
+    ------
+    UsageError
+        No such region, or it holds no computed cell.
+    """
+    default = {r.name: r for r in find_regions(model, cells)}
+    return [_one_region(model.result, name, cells, default) for name in names]
+
+
+def _one_region(result: Result, name: str, cells: NDArray[np.bool_], default: dict[str, Region]) -> Region:
+    if name in result.groups:
+        members = np.asarray(result.groups[name])
+        region = Region(name, np.sort(members[cells[members]]), "group")
+    elif "=" in name and name.rsplit("=", 1)[0] in result.cell_data:
+        region = _tag_region(result, name, cells)
+    elif name in default:
+        region = default[name]
+    else:
+        known = [*result.groups, *default, *(f"{t}=VALUE" for t in tag_arrays(result))]
+        raise UsageError(
+            f"no region is called {name!r}.{close_matches(name, known)} Regions: "
+            f"{', '.join(dict.fromkeys(known))}."
+        )
+    if not len(region.cells):
+        raise UsageError(f"region {name!r} holds no cell that is computed.")
+    return region
+
+
+def _tag_region(result: Result, name: str, cells: NDArray[np.bool_]) -> Region:
+    array, text = name.rsplit("=", 1)
+    values = result.cell_data[array]
+    if values.size != result.n_cells or values.dtype.kind not in "iufb":
+        raise UsageError(f"region {name!r}: cell array {array!r} is not one number a cell.")
+    try:
+        value = float(text)
+    except ValueError:
+        raise UsageError(f"region {name!r}: {text!r} is not a number.") from None
+    return Region(name, np.flatnonzero(cells & (values.reshape(-1) == value)), "tag")

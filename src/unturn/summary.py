@@ -1,0 +1,289 @@
+"""What a result says in ten seconds: verdicts, extremes by region, what was left out. As data and as text."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Sequence
+from dataclasses import dataclass
+from typing import Any
+
+import numpy as np
+
+from unturn._version import __version__
+from unturn.agreement import Agreement, compare_with_solver
+from unturn.fields import CellDiagnostics, CellFields
+from unturn.kinematics._symmetric import Floats
+from unturn.measures import MEASURES
+from unturn.model import Model
+from unturn.numbering import Numbering, element_numbers
+from unturn.regions import Region, find_regions, named_regions
+from unturn.statistics import LOW_PERCENTILES, PERCENTILES, Statistics, statistics
+from unturn.verdict import Solve, Verdict, judge
+
+SCHEMA = "unturn.summary/1"
+
+
+@dataclass(frozen=True)
+class SummaryOptions:
+    """How a summary is made: regions by name, what is known of the solve, mode shape or not, all statistics or few."""
+
+    regions: tuple[str, ...] = ()
+    solve: Solve = "unknown"
+    mode: bool = False
+    equivalent_poisson: float | None = None
+    at: str = "centroid"
+    full: bool = False
+
+
+@dataclass(frozen=True, eq=False)
+class RegionSummary:
+    """One region: its verdict and statistics by column name (`principal_strain_1`, `equivalent_strain` ...)."""
+
+    region: Region
+    verdict: Verdict
+    volume: float
+    statistics: dict[str, Statistics]
+
+
+@dataclass(frozen=True, eq=False)
+class Summary:
+    """Everything the summary of one step holds."""
+
+    fields: CellFields
+    options: SummaryOptions
+    regions: tuple[RegionSummary, ...]
+    numbers: Numbering | None
+    agreements: tuple[Agreement, ...]
+    warnings: tuple[str, ...]
+    other_dimensions: dict[int, int]
+
+
+def summarise(fields: CellFields, options: SummaryOptions | None = None, threads: int | None = None) -> Summary:
+    """Return the summary of computed fields.
+
+    Parameters
+    ----------
+    fields
+        Computed with ``diagnose=True``.
+    options
+        See `SummaryOptions`.
+    threads
+        None: all processors.
+
+    Raises
+    ------
+    UsageError
+        A region that does not exist.
+    """
+    options = options or SummaryOptions()
+    d = fields.diagnostics
+    assert d is not None
+    judged = d.dimension == fields.model.dimension
+    if options.regions:
+        regions = named_regions(fields.model, options.regions, d.dimension > 0)
+    else:
+        regions = find_regions(fields.model, judged)
+    columns = _columns(fields, d, options.full)
+    made = []
+    for region in regions:
+        cells = region.cells[d.dimension[region.cells] == d.dimension[region.cells].max()]
+        found = {
+            name: statistics(values, d.volume, cells, _percentages(name, signed, options.full))
+            for name, (values, signed) in columns.items()
+        }
+        verdict = judge(d, Region(region.name, cells, region.origin), options.solve, options.mode)
+        made.append(RegionSummary(region, verdict, float(np.nansum(d.volume[cells])), found))
+    others = {
+        int(k): int((d.dimension == k).sum()) for k in np.unique(d.dimension) if 0 < k < fields.model.dimension
+    }
+    return Summary(
+        fields,
+        options,
+        tuple(made),
+        element_numbers(fields.model.result),
+        tuple(compare_with_solver(fields, threads)),
+        tuple(_warnings(fields, d, made)),
+        others,
+    )
+
+
+def _percentages(name: str, signed: bool, full: bool) -> Sequence[float]:
+    if full:
+        return (*LOW_PERCENTILES, *PERCENTILES) if signed else PERCENTILES
+    return (99.9,) if name in ("equivalent_strain", "principal_strain_1") else ()
+
+
+def _columns(fields: CellFields, d: CellDiagnostics, full: bool) -> dict[str, tuple[Floats, bool]]:
+    """Return every number that gets statistics: name -> values and whether it is signed."""
+    columns: dict[str, tuple[Floats, bool]] = {}
+    for name, values in fields.arrays.items():
+        measure = MEASURES.get(name)
+        signed = measure is not None and measure.signed
+        if name.startswith("principal_direction") or name == "displacement_gradient":
+            continue
+        if values.ndim == 1:
+            columns[name] = (values, signed)
+        elif measure is not None and (full or name == "strain" and _third_unknown(fields.model)):
+            for k, component in enumerate(measure.components):
+                columns[f"{name}_{component}"] = (values[:, k], signed)
+    if not _third_unknown(fields.model):
+        columns["principal_strain_1"] = (d.principal[:, 0], True)
+        columns["principal_strain_3"] = (d.principal[:, 1], True)
+    columns["angle_of_turn"] = (d.angle, False)
+    return columns
+
+
+def _third_unknown(model: Model) -> bool:
+    return model.plane is not None and model.plane.model is None
+
+
+def _warnings(fields: CellFields, d: CellDiagnostics, regions: list[RegionSummary]) -> list[str]:
+    found = []
+    sizes = [r.verdict.size for r in regions if math.isfinite(r.verdict.size)]
+    largest = max(sizes, default=math.nan)
+    if largest > 0.5:
+        found.append(
+            f"strain of {largest:.3g} (99 % of the volume below) is rubber or a wrong unit: check --displacement-scale"
+        )
+    elif 0 < largest < 1e-8:
+        found.append(f"strain of {largest:.3g} is very small: check the unit of the displacement, --displacement-scale")
+    inside_out = int((d.det_f <= 0).sum())
+    if inside_out:
+        found.append(
+            f"{inside_out} cells are turned inside out (det F <= 0): a wrong unit or sign of the displacement, "
+            "coordinates that are already deformed (--coordinates deformed), or a failed solve"
+        )
+    for r in regions:
+        if 0 < r.verdict.size < 20 * r.verdict.noise:
+            found.append(
+                f"{r.region.name}: the stored precision blurs the strain by +-{r.verdict.noise * 1e6:.2g} microstrain, "
+                f"and 99 % of the volume is below {r.verdict.size * 1e6:.3g}: write the result with more digits"
+            )
+    if fields.mirrored:
+        found.append(
+            f"{fields.mirrored} solids are numbered the other way round (negative Jacobian everywhere); "
+            "their gradient is right"
+        )
+    return found
+
+
+def summary_data(summary: Summary) -> dict[str, Any]:
+    """Return the summary as plain data for JSON, schema ``unturn.summary/1`` (docs/summary-json.md)."""
+    fields, options = summary.fields, summary.options
+    model = fields.model
+    result = model.result
+    plane = model.plane
+    return {
+        "schema": SCHEMA,
+        "tool": {"name": "unturn", "version": __version__},
+        "file": result.path,
+        "format": result.format_name,
+        "step": None
+        if result.steps is None
+        else {
+            "index": result.steps.current,
+            "count": len(result.steps.values),
+            "value": result.steps.values[result.steps.current],
+        },
+        "mesh": {
+            "points": result.n_points,
+            "cells": result.n_cells,
+            "types": cell_counts(model),
+            "kind": mesh_kind(model),
+            "plane": None
+            if plane is None
+            else {"normal": "xyz"[plane.normal], "assumption": plane.model, "poisson": plane.poisson,
+                  "axis": "xyz"[plane.axis] if plane.model == "axisymmetric" else None},
+        },
+        "displacement": {"array": model.displacement.name, "why": model.displacement.why},
+        "solve": options.solve,
+        "mode_shape": options.mode,
+        "location": options.at,
+        "equivalent_strain": equivalent_form(options.equivalent_poisson),
+        "measures": list(fields.arrays),
+        "regions": [_region_data(r, summary) for r in summary.regions],
+        "solver_strain": [
+            {"array": a.array, "association": a.association, "difference": a.difference, "read_as": a.guess,
+             "agrees": a.agrees}
+            for a in summary.agreements
+        ],
+        "left_out": {reason: len(cells) for reason, cells in fields.left_out.items()},
+        "other_dimensions": {f"{k}D": n for k, n in summary.other_dimensions.items()},
+        "notes": list(model.notes),
+        "warnings": list(summary.warnings),
+        "units": {"strain": "1", "rotation": "radian", "angle_of_turn": "radian", "volume": "length unit of the file"},
+        "caution": CAUTION,
+    }  # fmt: skip
+
+
+def _region_data(r: RegionSummary, summary: Summary) -> dict[str, Any]:
+    v = r.verdict
+    return {
+        "name": r.region.name,
+        "origin": r.region.origin,
+        "cells": len(r.region.cells),
+        "volume": r.volume,
+        "verdict": {
+            "small_strain": v.level,
+            "size": v.size,
+            "noise_floor": v.noise,
+            "largest_error_over_size": v.worst,
+            "largest_error_at": _place(v.worst_cell, summary, v.size),
+            "share_above_1_percent": v.share_marginal,
+            "share_above_10_percent": v.share_broken,
+            "largest_rotation_degrees": v.largest_rotation,
+            "action": v.action,
+        },
+        "statistics": {name: _statistics_data(s, summary, v.size) for name, s in r.statistics.items()},
+    }
+
+
+def _statistics_data(s: Statistics, summary: Summary, size: float) -> dict[str, Any]:
+    return {
+        "count": s.count,
+        "left_out": s.left_out,
+        "mean": s.mean,
+        "maximum": {"value": s.maximum, **_place(s.at_maximum, summary, size)},
+        "minimum": {"value": s.minimum, **_place(s.at_minimum, summary, size)},
+        "percentiles": {f"{q:g}": value for q, value in s.percentiles.items()},
+    }
+
+
+def _place(cell: int, summary: Summary, size: float) -> dict[str, Any]:
+    if cell < 0:
+        return {"cell": None, "element": None, "at": None, "error_over_size": None}
+    d = summary.fields.diagnostics
+    assert d is not None
+    number = None if summary.numbers is None else int(summary.numbers.numbers[cell])
+    return {
+        "cell": cell,
+        "element": number,
+        "at": [float(x) for x in d.centroid[cell]],
+        "error_over_size": float(d.error[cell] / size) if size > 0 else None,
+    }
+
+
+def cell_counts(model: Model) -> dict[str, int]:
+    """Return the number of cells of each type."""
+    counts: dict[str, int] = {}
+    for block in model.result.blocks:
+        counts[block.cell_type] = counts.get(block.cell_type, 0) + len(block)
+    return counts
+
+
+def mesh_kind(model: Model) -> str:
+    """Return ``solid``, ``plane``, ``surface`` or ``line`` of the highest dimension."""
+    return next(b.kind for b in model.blocks if b.row is not None and b.row.dim == model.dimension) or ""
+
+
+def equivalent_form(poisson: float | None) -> str:
+    """Return the form of the equivalent strain in words."""
+    if poisson is None:
+        return "sqrt(2/3 e':e') of the total strain"
+    return f"1/(1+{poisson:g}) times the norm of the principal differences of the total strain"
+
+
+CAUTION = (
+    "As good as the solve, the mesh and the loads behind it; no release. "
+    "Limits come from the governing code and a licensed engineer."
+)

@@ -1,0 +1,240 @@
+"""The summary for people: plain, aligned, ten seconds to read."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Callable
+from pathlib import PurePath
+
+import numpy as np
+
+from unturn.summary import CAUTION, RegionSummary, Summary, cell_counts, equivalent_form, mesh_kind
+from unturn.verdict import Verdict
+
+_MOST_COLUMNS = 5
+_MOST_VERDICTS = 12
+
+
+def summary_text(summary: Summary) -> str:
+    """Return the summary as text, without a line end."""
+    lines = [*_head(summary), *_verdicts(summary), "", *_table(summary), *_tail(summary)]
+    return "\n".join(lines)
+
+
+def _head(summary: Summary) -> list[str]:
+    model, options = summary.fields.model, summary.options
+    result = model.result
+    parts = [PurePath(result.path).name or "(in memory)"]
+    if result.steps is not None:
+        value = result.steps.values[result.steps.current]
+        parts.append(f"step {result.steps.current} (of 0 to {len(result.steps.values) - 1}), t = {value:g}")
+    types = ", ".join(f"{n} {name}" for name, n in cell_counts(model).items())
+    n = len(summary.regions)
+    parts += [f"{result.n_cells} cells ({types})", f"{n} region{'s' * (n != 1)}"]
+    parts.append(f"displacement '{model.displacement.name}' ({model.displacement.why})")
+    solve = "not stated" if options.solve == "unknown" else f"stated {options.solve}"
+    lines = ["   ".join(parts), f"solve: {solve}   {_kind(summary)}"]
+    for a in summary.agreements:
+        part = f"{100 * a.difference:.2g} %" if math.isfinite(a.difference) else "everything"
+        where = "cells" if a.association == "cell" else "nodes, averaged to cells"
+        said = "equal to ours within" if a.agrees else "DIFFERS from ours by"
+        lines.append(f"solver's strain array '{a.array}' ({where}): {said} {part} (read as {a.guess})")
+    return lines
+
+
+def _kind(summary: Summary) -> str:
+    model = summary.fields.model
+    kind = mesh_kind(model)
+    plane = model.plane
+    if plane is not None:
+        axes = "xyz".replace("xyz"[plane.normal], "")
+        said = f"plane mesh in {axes}, third direction "
+        if plane.model is None:
+            return said + "not stated (ZZ is NaN)"
+        extra = {"stress": f", nu = {plane.poisson}", "axisymmetric": f" about {'xyz'[plane.axis]}", "strain": ""}
+        return said + f"plane {plane.model}{extra[plane.model]}".replace("plane axi", "axi")
+    if kind == "surface":
+        return "surface mesh: in-plane strain of the mid-surface only"
+    if kind == "line":
+        return "line mesh: axial strain only; twist and bending are not in the nodal displacements"
+    return "solid mesh"
+
+
+def _verdicts(summary: Summary) -> list[str]:
+    if summary.options.mode:
+        return ["mode shape: amplitude is arbitrary, so nothing is judged; values are per unit amplitude"]
+    shown = sorted(summary.regions, key=lambda r: -r.verdict.worst if math.isfinite(r.verdict.worst) else 0.0)
+    lines = ["small strain"]
+    lines += _aligned([["  " + r.region.name, *_words(r.verdict)] for r in shown[:_MOST_VERDICTS]], left=True)
+    if len(shown) > _MOST_VERDICTS:
+        lines.append(f"  {len(shown) - _MOST_VERDICTS} more regions with smaller errors")
+    by_action: dict[str, list[str]] = {}
+    for r in shown:
+        if r.verdict.action:
+            by_action.setdefault(r.verdict.action, []).append(r.region.name)
+    for action, names in by_action.items():
+        listed = ", ".join(names[:4]) + (f" and {len(names) - 4} more" if len(names) > 4 else "")
+        lines.append(f"  -> {listed}: {action}")
+    return lines
+
+
+def _words(v: Verdict) -> tuple[str, str]:
+    turns = f"turns up to {_degrees(v.largest_rotation)} degrees"
+    worst = _ratio(v.worst)
+    return {
+        "not judged": ("not judged", "no cell was computed"),
+        "no strain": ("no strain", f"none above the stored precision; {turns}"),
+        "holds": ("holds", f"{turns}, error at most {worst} of its strain"),
+        "marginal": (
+            "MARGINAL",
+            f"{turns}, error up to {worst} of its strain, above 1 % in {_share(v.share_marginal)} of the volume",
+        ),
+        "does not hold": (
+            "DOES NOT HOLD",
+            f"{turns}, error up to {worst} its strain, above 10 % in {_share(v.share_broken)} of the volume",
+        ),
+    }[v.level]
+
+
+def _degrees(value: float) -> str:
+    if value < 1e-6:
+        return "0"
+    return f"{value:.2g}" if value < 10 else f"{value:.1f}"
+
+
+def _ratio(value: float) -> str:
+    if value < 1e-6:
+        return "0 %"
+    return f"{100 * value:.2g} %" if value < 1 else f"{value:.3g} x"
+
+
+def _share(value: float) -> str:
+    return f"{100 * value:.2g} %" if value < 0.995 else f"{100 * value:.0f} %"
+
+
+_ROWS: tuple[tuple[str, str, str], ...] = (
+    ("largest principal", "principal_strain_1", "maximum"),
+    ("smallest principal", "principal_strain_3", "minimum"),
+    ("equivalent, largest", "equivalent_strain", "maximum"),
+    ("largest XX", "strain_XX", "maximum"),
+    ("smallest XX", "strain_XX", "minimum"),
+    ("largest YY", "strain_YY", "maximum"),
+    ("smallest YY", "strain_YY", "minimum"),
+    ("max shear, largest", "max_shear_strain", "maximum"),
+    ("volumetric, largest", "volumetric_strain", "maximum"),
+    ("volumetric, smallest", "volumetric_strain", "minimum"),
+)
+
+
+def _table(summary: Summary) -> list[str]:
+    shown = summary.regions
+    if len(shown) > _MOST_COLUMNS:
+        shown = tuple(sorted(shown, key=lambda r: -_peak(r))[:_MOST_COLUMNS])
+    unit = "microstrain" + (" per unit amplitude" if summary.options.mode else "")
+    digits = _digits(summary)
+    rows: list[list[str]] = [[unit, *(r.region.name for r in shown)]]
+    for label, name, which in _ROWS:
+        instead = name.startswith("strain_") and "principal_strain_1" in shown[0].statistics
+        if instead or not all(name in r.statistics for r in shown):
+            continue
+        rows.append([label, *(_micro(getattr(r.statistics[name], which)) for r in shown)])
+        at = f"at_{which}"
+        rows.append(["  where", *(_where(getattr(r.statistics[name], at), summary) for r in shown)])
+        rows.append(["  at x, y, z", *(_position(getattr(r.statistics[name], at), summary, digits) for r in shown)])
+        if not summary.options.mode:
+            rows.append(["  error there", *(_error(getattr(r.statistics[name], at), r, summary) for r in shown)])
+    if any(math.isfinite(_percentile(r)) for r in shown):
+        rows.append(["99.9 % of volume below", *(_micro(_percentile(r)) for r in shown)])
+    rows.append(["largest rotation, degree", *(_degrees(r.verdict.largest_rotation) for r in shown)])
+    lines = _aligned(rows)
+    if len(shown) < len(summary.regions):
+        rest = len(summary.regions) - len(shown)
+        lines.append(f"{rest} more regions with smaller peaks: all are in --json; --region NAME shows one")
+    return lines
+
+
+def _peak(r: RegionSummary) -> float:
+    name = "equivalent_strain" if "equivalent_strain" in r.statistics else "angle_of_turn"
+    value = r.statistics[name].maximum
+    return value if math.isfinite(value) else -1.0
+
+
+def _percentile(r: RegionSummary) -> float:
+    for name in ("equivalent_strain", "principal_strain_1"):
+        if name in r.statistics:
+            return r.statistics[name].percentiles.get(99.9, math.nan)
+    return math.nan
+
+
+def _micro(value: float) -> str:
+    if not math.isfinite(value):
+        return "-"
+    micro = value * 1e6
+    if abs(micro) < 1e-6:
+        return "0"
+    return f"{micro:.0f}" if abs(micro) >= 100 else f"{micro:.3g}"
+
+
+def _where(cell: int, summary: Summary) -> str:
+    if cell < 0:
+        return "-"
+    if summary.numbers is None:
+        return f"cell {cell}"
+    return f"element {summary.numbers.numbers[cell]} (cell {cell})"
+
+
+def _digits(summary: Summary) -> int:
+    """Return how many decimals tell a position to a ten-thousandth of the model's size."""
+    points = summary.fields.model.points
+    extent = float(np.nanmax(np.nanmax(points, axis=0) - np.nanmin(points, axis=0)))
+    return max(0, 4 - math.ceil(math.log10(extent))) if 0 < extent < math.inf else 3
+
+
+def _position(cell: int, summary: Summary, digits: int) -> str:
+    d = summary.fields.diagnostics
+    if cell < 0 or d is None:
+        return "-"
+    return ", ".join(f"{x + 0.0:.{digits}f}" if digits < 9 else f"{x:.4g}" for x in d.centroid[cell])
+
+
+def _error(cell: int, r: RegionSummary, summary: Summary) -> str:
+    d = summary.fields.diagnostics
+    if cell < 0 or d is None or not r.verdict.size > 0:
+        return "-"
+    return _ratio(float(d.error[cell]) / r.verdict.size)
+
+
+def _aligned(rows: list[list[str]], left: bool = False) -> list[str]:
+    widths = [max(len(row[k]) for row in rows) for k in range(len(rows[0]))]
+    other = str.ljust if left else str.rjust
+    pad: list[Callable[[str, int], str]] = [str.ljust, *[other] * (len(widths) - 1)]
+    return ["  ".join(p(cell, w) for p, cell, w in zip(pad, row, widths)).rstrip() for row in rows]
+
+
+def _tail(summary: Summary) -> list[str]:
+    fields, options = summary.fields, summary.options
+    lines = []
+    if "equivalent_strain" in fields.arrays:
+        form = equivalent_form(options.equivalent_poisson)
+        lines.append(f"equivalent = {form}; values at element {_location(options.at)}; shear is tensor shear")
+    else:
+        lines.append(f"values at element {_location(options.at)}; shear is tensor shear")
+    left = ", ".join(f"{len(cells)} {reason}" for reason, cells in fields.left_out.items())
+    noise = max((r.verdict.noise for r in summary.regions), default=math.nan)
+    floor = "below 1e-6" if noise < 1e-12 else f"+-{noise * 1e6:.1g}"
+    precision = f"; stored precision {floor} microstrain" if math.isfinite(noise) else ""
+    lines.append(f"left out: {left or 'no cell'}{precision}")
+    if summary.numbers is not None:
+        lines.append(f"element numbers are those of '{summary.numbers.name}'; cell = zero-based position in the file")
+    else:
+        lines.append("cell = zero-based position in the file")
+    for dimension, n in summary.other_dimensions.items():
+        lines.append(f"{n} cells of dimension {dimension} are computed and written, but not in this table")
+    lines += [f"note: {note}" for note in fields.model.notes]
+    lines += [f"WARNING: {warning}" for warning in summary.warnings]
+    lines.append(CAUTION)
+    return lines
+
+
+def _location(at: str) -> str:
+    return {"centroid": "centroids", "mean": "means over the volume"}.get(at, at)

@@ -1,0 +1,255 @@
+"""The documents say what the program does: every example runs, every table is held against the code."""
+
+from __future__ import annotations
+
+import json
+import re
+import shutil
+import tomllib
+from pathlib import Path
+from typing import Any
+
+import numpy as np
+import pytest
+from typer.main import get_command
+
+import unturn
+import unturn._accessor  # found by itself only when the package is installed
+from documents import EVERY_PAGE, PAGES, ROOT, Session, blocks, run, spoken, table
+from unturn import CellBlock, Result
+from unturn.cli._main import app
+from unturn.elements import ELEMENTS
+from unturn.errors import UnturnError
+from unturn.io import FORMATS
+from unturn.measures import DEFAULT_MEASURES, GEOMETRY, MEASURES
+
+SAMPLES = [p for p in (ROOT / "sample_meshes").iterdir() if p.suffix in (".vtu", ".xdmf", ".h5")]
+README, DOCS = ROOT / "README.md", ROOT / "docs"
+COMMANDS: dict[str, Any] = dict(get_command(app).commands)  # type: ignore[attr-defined]
+
+pytestmark = pytest.mark.derived("the documents and the code say the same")
+
+
+@pytest.fixture
+def desk(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> Path:
+    """A working folder with the sample results in it, and in a folder of it as in a clone."""
+    (tmp_path / "sample_meshes").mkdir()
+    for sample in SAMPLES:
+        shutil.copy(sample, tmp_path)
+        shutil.copy(sample, tmp_path / "sample_meshes")
+    monkeypatch.chdir(tmp_path)
+    monkeypatch.setenv("COLUMNS", "100")
+    return tmp_path
+
+
+@pytest.mark.parametrize("page", PAGES, ids=lambda p: p.name)
+def test_every_example_runs_and_prints_what_is_shown(page: Path, desk: Path) -> None:
+    session = Session(page)
+    for number, block in enumerate(blocks(page)):
+        if page == README and number == 0:
+            status, said = run(_main_job(block.text))
+            assert status == 0, said
+            assert (desk / "bracket.png").stat().st_size > 5_000
+            session.said = said
+        elif page != README or block.text != _test_command():
+            session.play(block)
+
+
+def _main_job(line: str) -> list[str]:
+    """Return the arguments of the README's first command."""
+    *install, job = line.split(" && ")
+    assert install == ["python3 -m venv .venv", ".venv/bin/pip install --quiet ."]
+    return spoken(job.removeprefix(".venv/bin/"))
+
+
+def _test_command() -> str:
+    return [b for b in blocks(README) if b.info == "sh"][1].text
+
+
+def test_the_first_two_commands_are_single_lines_that_need_nothing_else() -> None:
+    shell = [b for b in blocks(README) if b.info == "sh"]
+    assert shell[0].text.startswith(
+        "python3 -m venv .venv && .venv/bin/pip install --quiet . && .venv/bin/unturn strain "
+    )
+    assert "--picture" in shell[0].text
+    assert shell[1].text == (
+        "python3 -m venv .venv-test && .venv-test/bin/pip install --quiet -e '.[test]' && "
+        ".venv-test/bin/python -m pytest"
+    )
+    assert "\n" not in shell[0].text + shell[1].text
+
+
+def test_the_table_of_commands_is_the_programs() -> None:
+    assert [row[0] for row in table(README, "command")] == [f"`unturn {name}`" for name in COMMANDS]
+
+
+@pytest.mark.parametrize("name", list(COMMANDS))
+def test_every_option_is_documented(name: str) -> None:
+    documented = {row[0] for row in table(DOCS / "commands.md", f"option of `{name}`")}
+    options = {opt for p in COMMANDS[name].params for opt in p.opts if opt.startswith("--")} - {"--help"}
+    assert {re.search(r"--[\w-]+", d)[0] for d in documented} == options  # type: ignore[index]
+
+
+def test_no_page_names_an_option_that_does_not_exist() -> None:
+    known = {opt for c in COMMANDS.values() for p in c.params for opt in p.opts} | {
+        "--version",
+        "--debug",
+        "--help",
+    }
+    for page in (p for p in EVERY_PAGE if p.name != "DEVELOPERS.md"):
+        named = set(re.findall(r"(?<![\w-])--[a-z][a-z-]*", page.read_text(encoding="utf-8")))
+        assert not named - known - {"--quiet"}, page.name
+
+
+def test_the_exit_codes_are_those_of_the_errors() -> None:
+    rows = {int(row[0]): row[1] for row in table(DOCS / "commands.md", "exit status")}
+    assert {0, 1} | {e.exit_status for e in _all_errors(UnturnError)} == set(rows)
+    assert rows == {int(row[0]): row[1] for row in table(README, "exit status")}
+
+
+def _all_errors(kind: type[UnturnError]) -> set[type[UnturnError]]:
+    return {kind}.union(*(_all_errors(k) for k in kind.__subclasses__()))
+
+
+def test_the_table_of_measures_is_the_codes() -> None:
+    expected = [
+        [f"`{m.name}`", " ".join(m.components) or "one number", "radian" if m.unit == "radian" else "1",
+         "yes" if m.needs_third else "no", m.meaning, f"{m.source.text} ({m.source.kind})"]
+        for m in MEASURES.values()
+    ]  # fmt: skip
+    assert table(DOCS / "conventions.md", "array", "components") == expected
+    geometry = [[f"`{name}`", meaning] for name, meaning in GEOMETRY.items()]
+    assert table(DOCS / "conventions.md", "array of the mesh alone") == geometry
+    text = (DOCS / "conventions.md").read_text(encoding="utf-8")
+    assert f"`{', '.join(DEFAULT_MEASURES)}`" in text
+
+
+def test_the_table_of_elements_is_the_codes() -> None:
+    expected = [
+        [f"`{e.name}`", str(e.dim), str(e.n_nodes), str(e.order), str(len(e.quadrature)), e.source.text]
+        for e in ELEMENTS.values()
+    ]
+    assert table(DOCS / "conventions.md", "cell type", "dimension") == expected
+
+
+def test_the_table_of_formats_is_the_codes() -> None:
+    expected = [
+        [
+            f.name,
+            " ".join(f"`{s}`" for s in f.suffixes),
+            "yes" if f.write else "no",
+            "yes" if f.write_series else "no",
+        ]
+        for f in FORMATS
+    ]
+    assert [row[:4] for row in table(DOCS / "formats.md", "format", "suffixes")] == expected
+
+
+@pytest.mark.parametrize("page", EVERY_PAGE, ids=lambda p: p.name)
+def test_every_link_leads_to_a_file(page: Path) -> None:
+    for target in re.findall(r"\]\(([^)#]+)", page.read_text(encoding="utf-8")):
+        assert target.startswith("https://") or (page.parent / target).exists(), f"{page.name}: {target}"
+
+
+def test_the_picture_is_small() -> None:
+    picture = DOCS / "images" / "bracket.png"
+    assert 5_000 < picture.stat().st_size < 150_000
+    assert "docs/images/bracket.png" in README.read_text(encoding="utf-8")
+
+
+def test_the_version_has_an_entry_in_the_changelog() -> None:
+    version = tomllib.loads((ROOT / "pyproject.toml").read_text(encoding="utf-8"))["project"]["version"]
+    assert f"\n## {version}" in (ROOT / "CHANGELOG.md").read_text(encoding="utf-8")
+
+
+# --- the JSON schemas -------------------------------------------------------------------------------------------------
+
+_KINDS: dict[str, tuple[type, ...]] = {
+    "object": (dict,), "list": (list,), "string": (str,), "integer": (int,), "number": (int, float),
+    "boolean": (bool,), "null": (type(None),),
+}  # fmt: skip
+
+
+def _paths(data: Any, documented: set[str], path: str = "") -> dict[str, list[Any]]:
+    """Return every key of JSON data with its values; keys that the documents write in capitals stand for any key."""
+    found: dict[str, list[Any]] = {}
+    if isinstance(data, dict):
+        free = [d for d in documented if re.fullmatch(re.escape(f"{path}.".lstrip(".")) + r"[A-Z]+", d)]
+        for key, value in data.items():
+            below = free[0] if free else f"{path}.{key}".lstrip(".")
+            _merge(found, {below: [value]})
+            _merge(found, _paths(value, documented, below))
+    elif isinstance(data, list):
+        for value in data:
+            if isinstance(value, dict):
+                _merge(found, _paths(value, documented, f"{path}[]"))
+    return found
+
+
+def _merge(into: dict[str, list[Any]], more: dict[str, list[Any]]) -> None:
+    for key, values in more.items():
+        into.setdefault(key, []).extend(values)
+
+
+def _mixed_file(path: Path) -> None:
+    """A tetrahedron, a triangle apart from it, a vertex that cannot be computed, a group and a NaN."""
+    points = np.array([*np.eye(4, 3), [2, 0, 0], [3, 0, 0], [2, 1, 0.0]])
+    cells = [("tetra", [[0, 1, 2, 3]], [0]), ("triangle", [[4, 5, 6]], [1]), ("vertex", [[0]], [2])]
+    blocks = tuple(CellBlock(t, np.array(c), np.array(i)) for t, c, i in cells)
+    noisy = np.array([np.nan, 1, 2, 3, 4, 5, 6])
+    groups = {"body": np.array([0])}
+    unturn.write(Result(points, blocks, {"u": 1e-3 * points, "noisy": noisy}, groups=groups), path)
+
+
+def _check_schema(page: Path, produced: list[dict[str, Any]]) -> None:
+    rows = {row[0].strip("`"): row[1] for row in table(page, "key", "type")}
+    found: dict[str, list[Any]] = {}
+    for data in produced:
+        _merge(found, _paths(data, set(rows)))
+    assert set(found) == set(rows), f"{page.name}: {sorted(set(found) ^ set(rows))}"
+    for key, values in found.items():
+        kinds = tuple(k for word in rows[key].split(" or ") for k in _KINDS[word])
+        wrong = [v for v in values if not isinstance(v, kinds) or (isinstance(v, bool) and bool not in kinds)]
+        assert not wrong, f"{page.name}: {key} is {wrong[0]!r}, documented as {rows[key]}"
+
+
+def _json_of(command: str) -> Any:
+    status, said = run([*spoken(command), "--json", "out.json"])
+    assert status == 0, said
+    return json.loads(Path("out.json").read_text(encoding="utf-8"))
+
+
+def test_the_summary_schema_is_documented_key_by_key(desk: Path) -> None:
+    _mixed_file(desk / "mixed.xdmf")
+    commands = (
+        "bracket.vtu --solve linear",
+        "bracket.strain.vtu --prefix again_",
+        "ring.vtu --plane strain",
+        "ring.vtu --plane stress --poisson 0.38",
+        "ring.vtu --measures strain",
+        "skin.vtu --mode --measures all",
+        "lever.xdmf",
+        "mixed.xdmf",
+    )
+    produced = [_json_of(f"unturn strain {c}") for c in commands]
+    assert {d["schema"] for d in produced} == {"unturn.summary/1"}
+    _check_schema(DOCS / "summary-json.md", produced)
+
+
+def test_several_summaries_are_one_list(desk: Path) -> None:
+    for command, n in (("bracket.vtu bracket_tets.vtu", 2), ("lever.xdmf --step all", 7)):
+        data = _json_of(f"unturn strain {command}")
+        assert set(data) == {"schema", "results"}
+        assert data["schema"] == "unturn.summaries/1"
+        assert len(data["results"]) == n
+        assert {d["schema"] for d in data["results"]} == {"unturn.summary/1"}
+
+
+def test_the_survey_schema_is_documented_key_by_key(desk: Path) -> None:
+    _mixed_file(desk / "mixed.xdmf")
+    names = ("bracket.vtu", "ring.vtu", "lever.xdmf", "mixed.xdmf")
+    produced = [_json_of(f"unturn survey {name}") for name in names]
+    no_displacement = Result(np.eye(4, 3), (CellBlock("tetra", np.array([[0, 1, 2, 3]]), np.array([0])),), {})
+    unturn.write(no_displacement, desk / "bare.vtu")
+    produced.append(_json_of("unturn survey bare.vtu"))
+    _check_schema(DOCS / "survey-json.md", produced)
