@@ -50,7 +50,7 @@ def exact_branch(H: np.ndarray) -> bool:
 @pytest.mark.source(
     "Higham 1986, Computing the polar decomposition, SIAM J. Sci. Stat. Comput. 7(4), with mpmath"
 )
-@settings(max_examples=300)
+@settings(max_examples=150)
 @given(gradients())
 def test_turning_over_twelve_decades(H: np.ndarray) -> None:
     size = float(np.linalg.norm(H))

@@ -5,7 +5,7 @@ from __future__ import annotations
 import numpy as np
 import pytest
 
-from unturn.precision import storage_resolution
+from unturn.precision import MEANT_DISPLACEMENT, storage_resolution
 
 RNG = np.random.default_rng(0)
 SMOOTH = RNG.normal(size=3000) * 1e-2
@@ -48,6 +48,17 @@ def test_few_digits_kept_as_singles(digits: int) -> None:
     assert storage_resolution(rounded(SMOOTH, digits).astype(np.float32)).kind == f"{digits} digits"
 
 
+@pytest.mark.parametrize("places", [3, 6, 9])
+@pytest.mark.parametrize("dtype", [np.float64, np.float32])
+def test_a_fixed_number_of_decimals(places: int, dtype: type) -> None:
+    values = np.round(SMOOTH * 10.0 ** (6 - places), places)  # up to 0.04 at six places: 40 000 steps
+    found = storage_resolution(values.astype(dtype))
+    assert (found.relative, found.kind) == (0.0, f"{places} decimals")
+    assert found.absolute == pytest.approx(0.5 * 10.0**-places)
+    off = np.abs(values - SMOOTH * 10.0 ** (6 - places)).max()
+    assert 0.9 * found.absolute < off <= found.absolute * (1 + 1e-6)
+
+
 @pytest.mark.parametrize(
     "step",
     [1 / 8, 0.05, 0.1, 0.25, 1 / 3, 0.001, 0.0125, 2.5, 1 / 64, 0.03125, 5e-4],
@@ -60,10 +71,18 @@ def test_regular_coordinates_are_not_taken_for_rounded_ones(step: float, count: 
     assert storage_resolution(values).relative == (DOUBLE if dtype is np.float64 else SINGLE)
 
 
+@pytest.mark.parametrize("places", [5, 6])
+def test_few_steps_are_rounded_where_values_are_computed(places: int) -> None:
+    values = np.round(np.random.default_rng(1).normal(size=60) * 1e-3, places)
+    assert storage_resolution(values).kind == "float64"  # coordinates: somebody may have typed them
+    assert storage_resolution(values, MEANT_DISPLACEMENT).kind == f"{places} decimals"
+
+
 def test_what_is_not_finite_is_passed_over() -> None:
     spoiled = SMOOTH.astype(np.float32).astype(float)
     spoiled[::5] = np.nan
     spoiled[1::7] = np.inf
+    spoiled[2::11] = 1e300
     assert storage_resolution(spoiled).relative == SINGLE
     assert storage_resolution(np.full((40, 3), np.nan)).relative == DOUBLE
 

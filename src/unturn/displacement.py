@@ -51,6 +51,8 @@ class Displacement:
         Why this one: ``only candidate``, ``chosen`` ...
     candidates
         Every name that could have been it.
+    scale
+        Factor from the stored arrays to the values.
     """
 
     name: str
@@ -58,6 +60,7 @@ class Displacement:
     stored: tuple[np.ndarray, ...]
     why: str
     candidates: tuple[str, ...]
+    scale: float = 1.0
 
 
 def displacement_candidates(result: Result) -> tuple[list[str], list[str]]:
@@ -174,7 +177,7 @@ def _chosen(
     values[:, : len(columns)] = np.stack(columns, axis=1)
     if scale != 1.0:
         values *= scale
-    return Displacement(name, values, stored, why, candidates)
+    return Displacement(name, values, stored, why, candidates, scale)
 
 
 def _columns(stored: tuple[np.ndarray, ...], name: str, where: str) -> list[np.ndarray]:

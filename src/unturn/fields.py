@@ -23,7 +23,7 @@ from unturn.kinematics._motion import Turning, relative_volume_change
 from unturn.kinematics._symmetric import Floats
 from unturn.measures import GEOMETRY, MEASURES, Measure, Split, choose_measures
 from unturn.model import Model, ModelBlock
-from unturn.precision import storage_resolution
+from unturn.precision import MEANT_DISPLACEMENT, storage_resolution
 
 Location = Literal["centroid", "mean"]
 LOCATIONS: tuple[Location, ...] = ("centroid", "mean")
@@ -171,9 +171,11 @@ class _Job:
             self.diagnostics = CellDiagnostics(
                 volume, error, stretch, angle, noise, det_f, principal, centroid, np.zeros(n, dtype=np.int8)
             )
-            stored = model.displacement.stored
-            self.resolution_u = max(storage_resolution(a).relative for a in stored)
-            self.resolution_x = storage_resolution(model.result.points).relative
+            found = [storage_resolution(a, MEANT_DISPLACEMENT) for a in model.displacement.stored]
+            scale = abs(model.displacement.scale)
+            self.resolution_u = max(r.relative for r in found), scale * max(r.absolute for r in found)
+            x = storage_resolution(model.result.points)
+            self.resolution_x = x.relative, x.absolute
 
     def run(self, block: ModelBlock, threads: int | None) -> None:
         assert block.row is not None
@@ -301,7 +303,11 @@ class _Job:
             np.maximum(np.abs(chunk.first[a:b] + 0.0).max(axis=0), np.abs(chunk.relative[a:b] + chunk.first[a:b, None]).max(axis=(0, 1)))
             for a, b in ((0, 3), (3, 6))
         ]  # fmt: skip
-        d.noise[rows] = (self.resolution_u * largest[1] + H_size * self.resolution_x * largest[0]) * steepest
+        x, u = (
+            relative * size + absolute
+            for (relative, absolute), size in zip((self.resolution_x, self.resolution_u), largest)
+        )
+        d.noise[rows] = (u + H_size * x) * steepest
 
     def finish(self) -> CellFields:
         left_out = dict(self.model.left_out)

@@ -9,6 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 _SAMPLE = 20_000
+_MARK = 1e30  # from here on a number is no coordinate or displacement but a mark for "nothing here"
 
 
 @dataclass(frozen=True)
@@ -20,18 +21,25 @@ class Resolution:
     relative
         Share of a value's own size.
     kind
-        What was found, in words: ``float64``, ``float32``, ``7 digits``.
+        What was found, in words: ``float64``, ``float32``, ``7 digits``, ``6 decimals``.
+    absolute
+        The same for all values, in their unit: where a fixed number of decimals was written.
     """
 
     relative: float
     kind: str
+    absolute: float = 0.0
 
 
-def storage_resolution(values: NDArray[Any]) -> Resolution:
+MEANT_COORDINATE, MEANT_DISPLACEMENT = 4, 2
+"""Digits up to which a value is taken as meant: people type coordinates such as 0.125; displacements are computed."""
+
+
+def storage_resolution(values: NDArray[Any], meant: int = MEANT_COORDINATE) -> Resolution:
     """Return the resolution found from the values themselves, not only from their type.
 
-    float32 values kept in a float64 array, and text with few digits, are recognised. Four digits or fewer are taken as
-    meant (a coordinate of 0.125), not as rounded.
+    float32 values kept in a float64 array, and text with few digits or a fixed number of decimals, are recognised.
+    Values of `meant` digits or fewer, and those of a regular grid, are taken as meant and not as rounded.
 
     Examples
     --------
@@ -42,7 +50,8 @@ def storage_resolution(values: NDArray[Any]) -> Resolution:
     'float32'
     """
     if values.dtype == np.float32:
-        return _decimal(values.astype(np.float64), 4, 6) or Resolution(2.0**-24, "float32")
+        wide = values.astype(np.float64)
+        return _fixed(wide, meant, 1e6) or _decimal(wide, meant, 6) or Resolution(2.0**-24, "float32")
     if values.dtype == np.float16:
         return Resolution(2.0**-11, "float16")
     flat = np.asarray(values, dtype=np.float64).reshape(-1)
@@ -56,13 +65,13 @@ def storage_resolution(values: NDArray[Any]) -> Resolution:
         if np.mean(np.fmod(mantissa, 256.0) != 0) > 0.5:
             return Resolution(2.0**-24, "float32")
         return Resolution(2.0**-53, "float64")
-    return _decimal(sample, 4, 14) or Resolution(2.0**-53, "float64")
+    return _fixed(sample, meant, 1e12) or _decimal(sample, meant, 14) or Resolution(2.0**-53, "float64")
 
 
 def _distinct(flat: NDArray[np.float64]) -> NDArray[np.float64]:
     step = max(1, len(flat) // _SAMPLE)
     sample = flat[::step]
-    sample = sample[np.isfinite(sample) & (sample != 0)]
+    sample = sample[(np.abs(sample) < _MARK) & (sample != 0)]
     return np.unique(sample)
 
 
@@ -83,4 +92,29 @@ def _decimal(values: NDArray[np.float64], low: int, high: int) -> Resolution | N
         if digits > low and used > 0.5:
             return Resolution(0.5 * 10.0 ** (1 - digits), f"{digits} digits")
         return None
+    return None
+
+
+def _fixed(values: NDArray[np.float64], meant: int, most: float) -> Resolution | None:
+    """Return the resolution of values written with the same number of decimals, or None.
+
+    They are whole multiples of a power of ten, up to more than `meant` digits and less than `most` of it, use its
+    last digit as evenly as chance, and their gaps are not those of a regular grid.
+    """
+    sample = _distinct(values.reshape(-1))
+    if len(sample) < 16:
+        return None
+    largest = float(np.abs(sample).max())
+    first = meant - int(np.floor(np.log10(largest)))
+    for places in range(first, first + 9):
+        scaled = sample * 10.0**places
+        if np.abs(scaled).max() >= most:
+            return None
+        nearest = np.rint(scaled)
+        if (np.abs(scaled - nearest) <= np.abs(scaled) * (0.1 / most) + 1e-9).all():
+            regular = len(np.unique(np.diff(nearest))) <= 3
+            even = np.mean(np.fmod(np.abs(nearest), 10.0) != 0) > 0.8
+            if regular or not even or places < 1:
+                return None
+            return Resolution(0.0, f"{places} decimals", 0.5 * 10.0**-places)
     return None
