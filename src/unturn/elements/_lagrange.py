@@ -166,7 +166,7 @@ def warp_tensor(lattice: Lattice, order: int) -> Floats:
 
 
 def warp_simplex(lattice: Lattice, order: int) -> Floats:
-    """Recursively interpolated nodes of a triangle or tetrahedron."""
+    """Nodes of a triangle or tetrahedron moved along its edges to the Gauss-Lobatto-Legendre points."""
     counts = [(order - sum(row), *row) for row in lattice.tolist()]
     return np.array([simplex_node(c)[1:] for c in counts])
 

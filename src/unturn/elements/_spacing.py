@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from functools import lru_cache
+from itertools import combinations
 from typing import Literal
 
 import numpy as np
@@ -34,17 +35,20 @@ def simplex_node(counts: tuple[int, ...]) -> tuple[float, ...]:
 
     Notes
     -----
-    T. Isaac 2020, Recursive, parameter-free, explicitly defined interpolation nodes for simplices, SIAM J.
-    Sci. Comput. 42(6), A4046: leave out one coordinate at a time, place the node of the lower simplex, and
-    take the mean weighted by the one-dimensional node ``gll(order)[order - count left out]``.
+    The warped nodes of T. Warburton 2006, An explicit construction of interpolation nodes on the simplex, J. Eng.
+    Math. 56, 247-262, without its optimised blending (fenics-basix 0.11.0 calls them ``gll_warped`` and takes them
+    unless told otherwise). With ``b = counts / order``, each pair of corners i, j moves the node along its edge by
+    ``w(s) b_i b_j / (s (1 - s))``, where ``s = (1 + b_i - b_j) / 2`` and w is the polynomial of the order that takes
+    the equally spaced points of an edge to `gll(order)`.
     """
     order = sum(counts)
-    points = gll(order)
-    if len(counts) == 2:
-        return float(points[counts[0]]), float(points[counts[1]])
-    total = np.zeros(len(counts))
-    for left_out, count in enumerate(counts):
-        others = [c for c in range(len(counts)) if c != left_out]
-        lower = simplex_node(tuple(counts[c] for c in others))
-        total[others] += points[order - count] * np.array(lower)
-    return tuple(float(b) for b in total / total.sum())
+    b = np.array(counts) / order
+    places = np.linspace(0, 1, order + 1)
+    moved = np.polynomial.Polynomial.fit(places, gll(order) - places, order, domain=[0, 1])
+    node = b.copy()
+    for i, j in combinations(np.flatnonzero(b), 2):
+        s = (1 + b[i] - b[j]) / 2
+        step = moved(s) * b[i] * b[j] / (s * (1 - s))
+        node[i] += step
+        node[j] -= step
+    return tuple(float(c) for c in node)
