@@ -33,7 +33,9 @@ def brick_mesh(n: int) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
     z, y, x = np.meshgrid(axis, axis, axis, indexing="ij")
     points = np.stack([x.ravel(), y.ravel(), z.ravel()], axis=1).astype(float)
     points += 0.1 * np.random.default_rng(0).random(points.shape)
-    corner = (axis[:-1, None, None] * (n + 1) ** 2 + axis[None, :-1, None] * (n + 1) + axis[None, None, :-1]).ravel()
+    corner = (
+        axis[:-1, None, None] * (n + 1) ** 2 + axis[None, :-1, None] * (n + 1) + axis[None, None, :-1]
+    ).ravel()
     step, layer = n + 1, (n + 1) ** 2
     offsets = np.array([0, 1, step + 1, step, layer, layer + 1, layer + step + 1, layer + step])
     x, y, z = points.T / n
@@ -91,7 +93,9 @@ def eigen() -> None:
     tensor = np.random.default_rng(0).normal(size=(1_000_000, 3, 3))
     tensor += tensor.swapaxes(1, 2)
     ours, theirs = best(lambda: principal_strain(tensor), 3), best(lambda: np.linalg.eigvalsh(tensor), 3)
-    print(f"principal values, 1 M: {ours:.3f} s; numpy.linalg.eigvalsh {theirs:.3f} s; {theirs / ours:.2f} times as fast")
+    print(
+        f"principal values, 1 M: {ours:.3f} s; numpy.linalg.eigvalsh {theirs:.3f} s; {theirs / ours:.2f} times as fast"
+    )
 
 
 SCRIPT = """
