@@ -297,6 +297,23 @@ def test_grids_that_would_not_fit_in_memory(tmp_path: Path) -> None:
         refused(outcome)
 
 
+def test_faces_of_polyhedra_that_do_not_exist(tmp_path: Path) -> None:
+    path = samples.write_xml(samples.polyhedra(), tmp_path / "in.vtu", "ascii")
+    text = path.read_text()
+    head, tail = text.split('Name="face_connectivity"')
+    made = {
+        "node": head + 'Name="face_connectivity"' + tail.replace(" 13 ", " 9999999999999 ", 1),
+        "negative": head + 'Name="face_connectivity"' + tail.replace(" 13 ", " -13 ", 1),
+        "face": text.replace("6 7 8 9 10 11", "6 7 8 9 10 36028797018963973"),
+        "missing": text.replace("polyhedron_offsets", "polyhedron_offset"),
+    }
+    for name, damaged in made.items():
+        assert damaged != text
+        (tmp_path / f"{name}.vtu").write_text(damaged)
+    for outcome in read_in_child([tmp_path / f"{name}.vtu" for name in made]).values():
+        refused(outcome, "face|polyhedron")
+
+
 LEGACY = (
     "# vtk DataFile Version 3.0\nby hand\nASCII\nDATASET UNSTRUCTURED_GRID\nPOINTS 4 float\n"
     "0 0 0 1 0 0 0 1 0 0 0 1\nCELLS 1 5\n4 0 1 2 3\nCELL_TYPES 1\n10\nPOINT_DATA 4\n"
@@ -316,6 +333,8 @@ WRONG_LEGACY = {
     "more types than cells": ("CELL_TYPES 1\n10", "CELL_TYPES 2\n10 10", "."),
     "data set unknown": ("UNSTRUCTURED_GRID", "HYPERGRID", "HYPERGRID"),
     "not a number": ("0 0 0 1 0 0", "0 0 0 1 a 0", "not a number"),
+    "newer version, older layout": ("Version 3.0", "Version 5.1", "laid out"),
+    "no version": ("Version 3.0", "Version", "Version"),
 }
 
 

@@ -15,6 +15,7 @@ from vtkmodules.vtkCommonDataModel import vtkDataSetAttributes, vtkImageData
 
 import unturn.io
 import vtk_samples as samples
+from child_reader import read_in_child
 from roundtrip import assert_same
 from unturn.errors import InputError
 from unturn.io.vtk_result import result_from_vtk
@@ -140,6 +141,38 @@ def test_pieces_of_one_vtu_are_put_together(tmp_path: Path) -> None:
     (tmp_path / "odd.vtu").write_text(text.format(pieces[0], other))
     with pytest.raises(InputError, match="piece 1 has other PointData arrays"):
         unturn.io.read(tmp_path / "odd.vtu")
+
+
+STREAM = (
+    '<VTKFile type="UnstructuredGrid" version="0.1"><UnstructuredGrid><Piece NumberOfPoints="27" NumberOfCells="3">'
+    '<Points><DataArray type="Float64" NumberOfComponents="3" format="ascii">{points}</DataArray></Points><Cells>'
+    '<DataArray type="Int64" Name="connectivity" format="ascii">{nodes}</DataArray>'
+    '<DataArray type="Int64" Name="offsets" format="ascii">8 16 24</DataArray>'
+    '<DataArray type="UInt8" Name="types" format="ascii">12 42 42</DataArray>'
+    '<DataArray type="Int64" Name="faces" format="ascii">{faces}</DataArray>'
+    '<DataArray type="Int64" Name="faceoffsets" format="ascii">-1 31 62</DataArray>'
+    "</Cells></Piece></UnstructuredGrid></VTKFile>"
+)
+
+
+def test_polyhedra_in_the_older_layout(tmp_path: Path) -> None:
+    # Source: VTK file format description up to file version 2.2: faces and faceoffsets.
+    grid = samples.polyhedra()
+    meant = result_from_vtk(grid)
+    faces = "6 4 0 1 4 3 4 9 10 13 12 4 0 1 10 9 4 3 4 13 12 4 0 3 12 9 4 1 4 13 10"
+    nodes = " ".join(str(n) for b in meant.blocks for n in b.connectivity.ravel())
+    points = " ".join(repr(float(v)) for v in meant.points.ravel())
+    text = STREAM.format(points=points, nodes=nodes, faces=f"{faces} {faces}")
+    (tmp_path / "in.vtu").write_text(text)
+    assert_same(meant, unturn.io.read(tmp_path / "in.vtu"))
+    wrong = [text.replace(" 13 10<", new) for new in (" 13 99<", " 13 -1<", " 13<")]
+    wrong += [text.replace(">6 4 0", new) for new in (">9 4 0", ">6 90 0", ">-6 4 0", ">6 -4 0")]
+    wrong += [text.replace("-1 31 62", new) for new in ("-1 31 61", "-1 62 31", "-1 31 99", "-1 -1 31")]
+    paths = [tmp_path / f"{k}.vtu" for k in range(len(wrong))]
+    for path, damaged in zip(paths, wrong, strict=True):
+        assert damaged != text
+        path.write_text(damaged)
+    assert {o for o, _ in read_in_child(paths).values()} == {"InputError"}
 
 
 @pytest.mark.source("VTK 9.7 (through pyvista): its own cells of every grid")

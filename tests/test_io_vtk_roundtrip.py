@@ -225,6 +225,28 @@ def test_numbers_no_vtk_format_holds_are_refused(dtype: str, tmp_path: Path) -> 
         unturn.io.write(result, tmp_path / "out.vtu")
 
 
+@pytest.mark.parametrize("suffix", [".vtu", ".vtk", ".vtkhdf"])
+def test_true_and_false_are_stored_as_bytes_and_told(suffix: str, tmp_path: Path) -> None:
+    # Common practice, no source.
+    result = patch(ELEMENTS["tetra"]).result()
+    flags = np.arange(result.n_cells) % 2 == 0
+    result = result.with_arrays(cell_data={"alive": flags}, field_data={"t": np.array(1.5)})
+    (sentence,) = unturn.io.write(result, tmp_path / f"out{suffix}")
+    assert "'alive'" in sentence
+    found = unturn.io.read(tmp_path / f"out{suffix}")
+    assert found.cell_data["alive"].dtype == np.uint8
+    assert np.array_equal(found.cell_data["alive"], flags)
+    assert found.field_data["t"].tolist() == [1.5]
+
+
+def test_arrays_of_matrices_are_stored_row_by_row(tmp_path: Path) -> None:
+    # Common practice, no source.
+    result = patch(ELEMENTS["tetra"]).result()
+    gradient = np.random.default_rng(2).random((result.n_cells, 3, 3))
+    unturn.io.write(result.with_arrays(cell_data={"h": gradient}), tmp_path / "out.vtu")
+    assert np.array_equal(unturn.io.read(tmp_path / "out.vtu").cell_data["h"], gradient.reshape(-1, 9))
+
+
 def test_groups_are_named_as_lost(tmp_path: Path) -> None:
     # Common practice, no source.
     result = replace(result_from_vtk(samples.tetrahedra()), groups={"steel": np.array([0])})

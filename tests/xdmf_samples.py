@@ -7,7 +7,7 @@ from typing import Any
 
 import numpy as np
 
-from unturn.io._node_order import EDGES
+from unturn.io._node_order import PLACES
 from unturn.result import CellBlock, Result
 
 CORNERS: dict[str, list[list[float]]] = {
@@ -22,26 +22,13 @@ CORNERS: dict[str, list[list[float]]] = {
         [0, 0, 0], [2, 0, 0], [2, 2, 0], [0, 2, 0], [0, 0, 2], [2, 0, 2], [2, 2, 2], [0, 2, 2]
     ],
 }  # fmt: skip
-# Face and body nodes by the corners they are the middle of, in VTK's order.
-# Source: VTK 9.7, class references of vtkBiQuadraticQuad, vtkBiQuadraticQuadraticWedge,
-# vtkBiQuadraticQuadraticHexahedron and vtkTriQuadraticHexahedron.
-_FACES = {
-    "quad9": [[0, 1, 2, 3]],
-    "wedge18": [[0, 1, 4, 3], [1, 2, 5, 4], [2, 0, 3, 5]],
-    "hexahedron24": [[0, 4, 7, 3], [1, 2, 6, 5], [0, 1, 5, 4], [3, 2, 6, 7]],
-    "hexahedron27": [
-        [0, 4, 7, 3], [1, 2, 6, 5], [0, 1, 5, 4], [3, 2, 6, 7], [0, 1, 2, 3], [4, 5, 6, 7], list(range(8))
-    ],
-}  # fmt: skip
 
 
 def cell_points(cell_type: str) -> np.ndarray:
     """Return the points of one cell in VTK's order."""
     base = cell_type.rstrip("0123456789")
     corners = np.array(CORNERS[base], dtype=float)
-    middles = [corners[list(edge)].mean(axis=0) for edge in EDGES.get(cell_type, [])]
-    faces = [corners[face].mean(axis=0) for face in _FACES.get(cell_type, [])]
-    return np.array([*corners, *middles, *faces])
+    return np.array([*corners, *(corners[list(place)].mean(axis=0) for place in PLACES.get(cell_type, ()))])
 
 
 def one_cell(cell_type: str) -> Result:

@@ -9,7 +9,7 @@ from pathlib import Path
 from typing import Literal
 
 from unturn.errors import InputError, UsageError
-from unturn.io._atomic import replacing
+from unturn.io._atomic import ensure_room, replacing
 from unturn.io._format import Format, ResultFile, StepWriter
 from unturn.io._formats import FORMATS, format_for_writing, format_of_file, writable_suffix
 from unturn.io._readback import check_same
@@ -103,14 +103,40 @@ def write(result: Result, path: str | PathLike[str]) -> tuple[str, ...]:
     ------
     UsageError
         The format is not written here, or the place cannot be written to.
+
+    Examples
+    --------
+    >>> import tempfile
+    >>> import numpy as np
+    >>> from unturn.result import CellBlock
+    >>> points = np.array([[0.0, 0, 0], [1, 0, 0], [0, 1, 0]])
+    >>> cells = CellBlock("triangle", np.array([[0, 1, 2]]), np.array([0]))
+    >>> with tempfile.TemporaryDirectory() as folder:
+    ...     lost = write(Result(points, (cells,), {"u": 0.1 * points}), f"{folder}/plate.vtu")
+    ...     found = read(f"{folder}/plate.vtu")
+    >>> lost, found.format_name, list(found.point_data)
+    ((), 'VTU', ['u'])
     """
     target = Path(path)
     fmt = format_for_writing(target)
     assert fmt.write is not None
     with replacing(target) as work:
+        ensure_room(work, _size(result))
         lost = fmt.write(result, work)
         check_same(result, fmt.open(work).read(0), lost)
     return lost
+
+
+def _size(result: Result) -> int:
+    """Return about how many bytes a result takes in a file, rather too many."""
+    arrays = [
+        result.points,
+        *result.point_data.values(),
+        *result.cell_data.values(),
+        *result.field_data.values(),
+    ]
+    cells = sum(b.connectivity.nbytes + 16 * len(b) for b in result.blocks)
+    return cells + sum(a.nbytes + 4096 for a in arrays)
 
 
 @contextlib.contextmanager
@@ -156,6 +182,7 @@ class _CheckedSeries:
 
     def add(self, result: Result, value: float) -> None:
         """Write one step and prove that it is in the file."""
+        ensure_room(self._work, _size(result))
         self._inner.add(result, value)
         check_same(result, self._fmt.open(self._work).read(self.n_steps), self._inner.lost)
         self.n_steps += 1

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import contextlib
+import errno
 import os
 import shutil
 import tempfile
@@ -43,6 +44,19 @@ def replacing(target: Path) -> Iterator[Path]:
         raise _cannot_write(target, error) from error
     finally:
         shutil.rmtree(work, ignore_errors=True)
+
+
+def ensure_room(path: Path, n_bytes: int) -> None:
+    """Raise `OSError` unless so many bytes can be written beside `path`, by taking the room and giving it back.
+
+    HDF5 ends the interpreter when the disk is full in the middle of a file.
+    """
+    if not hasattr(os, "posix_fallocate"):
+        if shutil.disk_usage(path.parent).free < n_bytes:
+            raise OSError(errno.ENOSPC, os.strerror(errno.ENOSPC))
+        return
+    with tempfile.TemporaryFile(dir=path.parent) as file:
+        os.posix_fallocate(file.fileno(), 0, max(n_bytes, 1))
 
 
 def _cannot_write(target: Path, error: OSError) -> UsageError:

@@ -82,17 +82,16 @@ FORMATS: tuple[Format, ...] = (
 _BY_SUFFIX = {suffix: fmt for fmt in FORMATS for suffix in fmt.suffixes}
 _BY_NAME = {fmt.name: fmt for fmt in FORMATS}
 
-_VTKFILE = re.compile(rb"<VTKFile\b[^>]*\btype\s*=\s*[\"'](\w+)[\"']")
 _VTKFILE_NAMES = {
-    b"UnstructuredGrid": "VTU",
-    b"PolyData": "VTP",
-    b"StructuredGrid": "VTS",
-    b"RectilinearGrid": "VTR",
-    b"ImageData": "VTI",
-    b"Collection": "PVD",
-    b"PUnstructuredGrid": "PVTU",
-    b"PPolyData": "PVTU",
-    b"vtkMultiBlockDataSet": "VTM",
+    "UnstructuredGrid": "VTU",
+    "PolyData": "VTP",
+    "StructuredGrid": "VTS",
+    "RectilinearGrid": "VTR",
+    "ImageData": "VTI",
+    "Collection": "PVD",
+    "PUnstructuredGrid": "PVTU",
+    "PPolyData": "PVTU",
+    "vtkMultiBlockDataSet": "VTM",
 }
 
 
@@ -118,14 +117,24 @@ def format_of_file(path: Path) -> Format:
     return by_suffix
 
 
+def vtk_xml_type(head: bytes) -> str | None:
+    """Return the type that the first bytes of a VTK XML file state; None for another file.
+
+    Examples
+    --------
+    >>> vtk_xml_type(b"<VTKFile version='1.0' type='PolyData'>")
+    'PolyData'
+    """
+    found = re.search(rb"<VTKFile\b[^>]*\btype\s*=\s*[\"'](\w+)[\"']", head)
+    return None if found is None else found[1].decode()
+
+
 def _name_by_content(head: bytes, path: Path) -> str | None:
-    kind = _VTKFILE.search(head)
+    kind = vtk_xml_type(head)
     if kind is not None:
-        if kind[1] not in _VTKFILE_NAMES:
-            raise InputError(
-                f"{path}: VTK files of type {kind[1].decode()!r} cannot be read; write VTU instead."
-            )
-        return _VTKFILE_NAMES[kind[1]]
+        if kind not in _VTKFILE_NAMES:
+            raise InputError(f"{path}: VTK files of type {kind!r} cannot be read; write VTU instead.")
+        return _VTKFILE_NAMES[kind]
     if head.startswith(b"# vtk DataFile"):
         return "VTK legacy"
     if re.search(rb"<Xdmf\b", head):

@@ -76,6 +76,7 @@ def from_numpy(values: Array, name: str) -> Any:
 
     Axes after the first are laid out row by row as components.
     """
+    values = np.atleast_1d(values)
     if values.dtype.kind in "US":
         return _strings_to_vtk(values, name)
     if values.dtype.kind == "b":

@@ -29,8 +29,9 @@ def blocks_of_unstructured(grid: Any, where: str) -> tuple[CellBlock, ...]:
             "The file is incomplete or was written wrongly: write it again."
         )
     check_range(connectivity, grid.GetNumberOfPoints(), offsets, where)
-    if POLYHEDRON in np.unique(types):
-        _check_polyhedra(grid, where)
+    polyhedra = np.flatnonzero(types == POLYHEDRON)
+    if len(polyhedra):
+        _check_polyhedra(grid, polyhedra, where)
     return group(types, offsets, connectivity, where)
 
 
@@ -164,8 +165,8 @@ def check_range(nodes: Ints, n_points: int, offsets: Ints, where: str) -> None:
     )
 
 
-def _check_polyhedra(grid: Any, where: str) -> None:
-    """Raise `InputError` when a face of a polyhedron or one of its nodes does not exist."""
+def _check_polyhedra(grid: Any, polyhedra: Ints, where: str) -> None:
+    """Raise `InputError` when a polyhedron has no faces, or a face or one of its nodes does not exist."""
     faces, locations = grid.GetPolyhedronFaces(), grid.GetPolyhedronFaceLocations()
     if faces is None or locations is None:
         raise InputError(f"{where}the polyhedra have no faces. The file is incomplete: write it again.")
@@ -174,6 +175,9 @@ def _check_polyhedra(grid: Any, where: str) -> None:
     location_offsets, face_ids = _cell_array(locations, where)
     if len(location_offsets) - 1 != grid.GetNumberOfCells():
         raise InputError(f"{where}the list of polyhedron faces does not fit the cells: write the file again.")
+    bare = polyhedra[np.diff(location_offsets)[polyhedra] == 0]
+    if len(bare):
+        raise InputError(f"{where}the polyhedron in cell {int(bare[0])} has no faces: write the file again.")
     if len(face_ids) and (face_ids.min() < 0 or face_ids.max() >= len(face_offsets) - 1):
         raise InputError(f"{where}a polyhedron refers to a face that does not exist: write the file again.")
 

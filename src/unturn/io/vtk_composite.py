@@ -14,6 +14,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from unturn.errors import InputError, UsageError
+from unturn.io._formats import vtk_xml_type
 from unturn.io.vtk_arrays import name_of, roles_of, set_arrays
 from unturn.io.vtk_result import result_from_vtk
 from unturn.io.vtk_xml import KINDS, read_dataset, vtk_class, write_file
@@ -154,8 +155,7 @@ def _read_part(file: Path, index: str) -> tuple[Any, dict[str, NDArray[np.int64]
             f"{index} names the file {file.name}, which cannot be opened ({error.strerror}). A part of the "
             "result would be missing: put the file where the index looks for it, or write the result again."
         ) from error
-    root = head.split(b"<VTKFile", 1)[-1].split(b">", 1)[0]
-    kind = next((k for k in (*_SINGLE, *_PIECES, _BLOCKS) if f'"{k}"'.encode() in root), None)
+    kind = vtk_xml_type(head)
     if kind in _SINGLE:
         dataset = read_dataset(str(file), kind)
         if dataset.GetNumberOfCells():
@@ -164,7 +164,7 @@ def _read_part(file: Path, index: str) -> tuple[Any, dict[str, NDArray[np.int64]
     inner_index_allowed = (kind in _PIECES and not index.endswith((".pvtu", ".pvtp"))) or (
         kind == _BLOCKS and index.endswith(".pvd")
     )
-    if kind is None or not inner_index_allowed:
+    if not inner_index_allowed:
         raise InputError(
             f"{index} names {file.name}, which is not a mesh file that can stand there. Expected "
             f"{', '.join(KINDS)}: write the result again."

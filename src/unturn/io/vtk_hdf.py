@@ -134,6 +134,8 @@ class _Reader:
         data = group[name]
         if start < 0 or n < 0 or start + n > data.shape[0]:
             raise self.fail(f"{data.name} has {data.shape[0]} rows; rows {start} to {start + n} are needed")
+        if data.dtype.kind not in "iufSO" or (data.dtype.kind == "f" and data.dtype.itemsize not in (4, 8)):
+            raise self.fail(f"{data.name} has numbers of type {data.dtype}, which are not read")
         if n and data.id.get_storage_size() == 0:
             raise self.fail(f"{data.name} was announced and never written")
         return np.asarray(data[start : start + n])

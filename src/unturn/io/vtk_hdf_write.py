@@ -18,7 +18,7 @@ from unturn.io.vtk_cells import types_of
 from unturn.io.vtk_hdf import COMPONENTS, NAME, ROLE
 from unturn.io.vtk_result import vtk_from_result
 from unturn.io.vtk_types import POLYHEDRON
-from unturn.io.vtk_xml import lost_groups
+from unturn.io.vtk_xml import lost_in_vtk
 from unturn.result import Array, Association, Result
 
 _VERSION = (2, 2)
@@ -73,8 +73,8 @@ def _lost_kind(result: Result) -> tuple[str, ...]:
     carrier = result.carrier
     if isinstance(carrier, vtkDataSet) and not isinstance(carrier, vtkUnstructuredGrid):
         kind = carrier.GetClassName().removeprefix("vtk")
-        return (f"The {kind} is stored as an unstructured grid.", *lost_groups(result))
-    return lost_groups(result)
+        return (f"The {kind} is stored as an unstructured grid.", *lost_in_vtk(result))
+    return lost_in_vtk(result)
 
 
 def _start(file: Any) -> Any:
@@ -106,6 +106,7 @@ def _mesh(grid: Any) -> dict[str, Array]:
 
 def _flat(values: Array) -> Array:
     """Return an array with its components in one axis, in a type HDF5 and VTK both have."""
+    values = np.atleast_1d(values)
     if values.ndim > 2:
         values = values.reshape(len(values), -1)
     if values.dtype.kind == "b":

@@ -7,7 +7,7 @@ from pathlib import Path
 
 from unturn.io.vtk_legacy_check import check_legacy
 from unturn.io.vtk_result import dataset_from_result, result_from_vtk
-from unturn.io.vtk_xml import lost_groups, run_reader, run_writer, vtk_class
+from unturn.io.vtk_xml import lost_in_vtk, run_reader, run_writer, vtk_class
 from unturn.result import Result
 
 FORMAT_NAME = "VTK legacy"
@@ -55,4 +55,4 @@ def write_file(result: Result, path: Path) -> tuple[str, ...]:
     writer = vtk_class("vtkIOLegacy", f"vtk{kind}Writer")
     writer.SetFileTypeToBinary()
     run_writer(writer, dataset, str(path))
-    return lost_groups(result)
+    return lost_in_vtk(result)

@@ -53,7 +53,7 @@ class _Walk:
         self.path, self.data, self.at, self.binary = path, data, 0, False
         self.rows, self.width = 0, 1
         self.names: set[str] = set()
-        self.n_cells = 0
+        self.n_cells, self.with_offsets = 0, False
         self.streams: list[Any] = []
         self.new_layout = False
 
@@ -64,8 +64,10 @@ class _Walk:
         )
 
     def run(self) -> str:
-        if not self.line().startswith(b"# vtk DataFile Version"):
-            self.fail("it does not begin with '# vtk DataFile Version'")
+        version = re.fullmatch(rb"# vtk DataFile Version (\d)\.\d\s*", self.line())
+        if version is None:
+            self.fail("it does not begin with '# vtk DataFile Version' and a number")
+        self.with_offsets = int(version[1]) >= 5
         self.line()
         mode = self.word()
         if mode not in ("ASCII", "BINARY"):
@@ -279,6 +281,8 @@ class _Walk:
         n, size = self.number(), self.number()
         found = re.compile(rb"\s*OFFSETS\s+(\S+)", re.IGNORECASE).match(self.data, self.at)
         self.n_cells = n
+        if (found is not None) != (self.with_offsets and (n, size) != (0, 0)):
+            self.fail("its cells are not laid out as its version says")
         if found is None:
             begin = self.values(size, "int")
             self.stream(begin, n, size)

@@ -82,17 +82,22 @@ def write_file(result: Result, path: Path, suffix: str) -> tuple[str, ...]:
             "give the output the suffix .vtu or .xdmf."
         )
     write_dataset(dataset, str(path), kind)
-    return lost_groups(result)
+    return lost_in_vtk(result)
 
 
-def lost_groups(result: Result) -> tuple[str, ...]:
-    """Return one sentence when cell groups of the result have no place in VTK's formats."""
-    if not result.groups:
-        return ()
-    names = ", ".join(repr(n) for n in result.groups)
-    return (
-        f"The cell groups {names} were not written: VTK's formats have no groups; write XDMF to keep them.",
-    )
+def lost_in_vtk(result: Result) -> tuple[str, ...]:
+    """Return a sentence for everything in a result that has no place in VTK's formats."""
+    lost = []
+    if result.groups:
+        names = ", ".join(repr(n) for n in result.groups)
+        lost.append(
+            f"The cell groups {names} were not written: VTK's formats have none; write XDMF to keep them."
+        )
+    for kind in ("point", "cell", "field"):
+        for name, values in getattr(result, f"{kind}_data").items():
+            if values.dtype.kind == "b":
+                lost.append(f"The {kind} array {name!r} of true and false is stored as 1 and 0 in one byte.")
+    return tuple(lost)
 
 
 def write_dataset(dataset: Any, path: str, kind: str) -> None:

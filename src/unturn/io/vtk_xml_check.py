@@ -8,22 +8,16 @@ from __future__ import annotations
 
 import mmap
 import re
-from collections.abc import Iterator
-from dataclasses import dataclass
 from pathlib import Path
-from typing import Any
 from xml.etree import ElementTree
 
 import numpy as np
 
 from unturn.errors import InputError
-from unturn.io.vtk_xml_data import Encoding, Stream, Unsound, count_numbers, decoded_size, tail
+from unturn.io.vtk_xml_array import XmlArrays
+from unturn.io.vtk_xml_data import Encoding, Stream
+from unturn.io.vtk_xml_faces import check_faces
 
-# Source: VTK 9.7, vtkXMLDataReader and vtkXMLWriter: the names of number types in files.
-_TYPES = {
-    "Int8": "i1", "UInt8": "u1", "Int16": "i2", "UInt16": "u2", "Int32": "i4", "UInt32": "u4",
-    "Int64": "i8", "UInt64": "u8", "Float32": "f4", "Float64": "f8",
-}  # fmt: skip
 _COMPRESSORS = ("", "vtkZLibDataCompressor", "vtkLZ4DataCompressor", "vtkLZMADataCompressor")
 _CELL_LISTS = ("Cells", "Verts", "Lines", "Strips", "Polys")
 _COUNTED = {
@@ -32,20 +26,6 @@ _COUNTED = {
     "Strips": "NumberOfStrips",
     "Polys": "NumberOfPolys",
 }
-
-
-@dataclass(frozen=True)
-class _File:
-    """A file under proof."""
-
-    path: str
-    encoding: Encoding
-    appended: Stream | None
-
-    def fail(self, what: str) -> InputError:
-        return InputError(
-            f"{self.path}: {what}. The file is damaged, incomplete or was written wrongly: write it again."
-        )
 
 
 def check_xml(path: str, kind: str) -> None:
@@ -88,7 +68,7 @@ def _parse(path: str, data: mmap.mmap) -> tuple[ElementTree.Element, int]:
         ) from error
 
 
-def _file(path: str, root: ElementTree.Element, data: memoryview, body: int) -> _File:
+def _file(path: str, root: ElementTree.Element, data: memoryview, body: int) -> XmlArrays:
     order = "<" if root.get("byte_order", "LittleEndian") == "LittleEndian" else ">"
     width = {"UInt32": "u4", "UInt64": "u8"}.get(root.get("header_type", "UInt32"))
     compressor = root.get("compressor", "")
@@ -99,7 +79,7 @@ def _file(path: str, root: ElementTree.Element, data: memoryview, body: int) -> 
         )
     encoding = Encoding(np.dtype(order + width), order, compressor)
     if body < 0:
-        return _File(path, encoding, None)
+        return XmlArrays(path, encoding, None)
     if b"</VTKFile>" not in bytes(data[-256:]):
         raise InputError(
             f"{path} ends without its closing </VTKFile>: the program that wrote it did not finish, or the file "
@@ -110,12 +90,12 @@ def _file(path: str, root: ElementTree.Element, data: memoryview, body: int) -> 
     if found is None:
         raise InputError(f"{path}: the appended data have no known encoding or no beginning. Write it again.")
     if found[1] == b"raw":
-        return _File(path, encoding, Stream(data, body + found.end(), False, False))
+        return XmlArrays(path, encoding, Stream(data, body + found.end(), False, False))
     text = bytes(data[body + found.end() :]).split(b"<", 1)[0].rstrip()
-    return _File(path, encoding, Stream(text, 0, True, False))
+    return XmlArrays(path, encoding, Stream(text, 0, True, False))
 
 
-def _check_grid(file: _File, grid: ElementTree.Element, kind: str) -> None:
+def _check_grid(file: XmlArrays, grid: ElementTree.Element, kind: str) -> None:
     pieces = grid.findall("Piece")
     if not pieces:
         raise file.fail("it has no Piece, so no mesh")
@@ -143,21 +123,14 @@ def _check_grid(file: _File, grid: ElementTree.Element, kind: str) -> None:
         raise file.fail("its pieces do not fill its whole extent")
 
 
-def _counts(file: _File, piece: ElementTree.Element, kind: str) -> tuple[int, int]:
-    n_points = _count(file, piece, "NumberOfPoints")
+def _counts(file: XmlArrays, piece: ElementTree.Element, kind: str) -> tuple[int, int]:
+    n_points = file.count(piece, "NumberOfPoints")
     if kind == "UnstructuredGrid":
-        return n_points, _count(file, piece, "NumberOfCells")
-    return n_points, sum(_count(file, piece, name, 0) for name in _COUNTED.values())
+        return n_points, file.count(piece, "NumberOfCells")
+    return n_points, sum(file.count(piece, name, 0) for name in _COUNTED.values())
 
 
-def _count(file: _File, element: ElementTree.Element, name: str, default: int | None = None) -> int:
-    text = element.get(name, None if default is None else str(default))
-    if text is None or not re.fullmatch(r"\s*\d{1,15}\s*", text):
-        raise file.fail(f"{name} is {text!r} instead of a number")
-    return int(text)
-
-
-def _extent_size(file: _File, element: ElementTree.Element, name: str) -> tuple[int, int]:
+def _extent_size(file: XmlArrays, element: ElementTree.Element, name: str) -> tuple[int, int]:
     """Return the number of points and cells of an extent."""
     text = element.get(name, "")
     numbers = text.split()
@@ -174,11 +147,11 @@ def _extent_size(file: _File, element: ElementTree.Element, name: str) -> tuple[
     return n_points, n_cells
 
 
-def _extent_counts(file: _File, piece: ElementTree.Element) -> tuple[int, int]:
+def _extent_counts(file: XmlArrays, piece: ElementTree.Element) -> tuple[int, int]:
     return _extent_size(file, piece, "Extent")
 
 
-def _check_alike(file: _File, pieces: list[ElementTree.Element]) -> None:
+def _check_alike(file: XmlArrays, pieces: list[ElementTree.Element]) -> None:
     """VTK pairs the arrays of all pieces by position: they must be the same in the same order."""
     for section in ("PointData", "CellData"):
         first = _signature(pieces[0].find(section))
@@ -198,7 +171,9 @@ def _arrays(section: ElementTree.Element) -> list[ElementTree.Element]:
     return [a for a in section if a.tag in ("DataArray", "Array")]
 
 
-def _check_piece(file: _File, piece: ElementTree.Element, n_points: int, n_cells: int, where: str) -> None:
+def _check_piece(
+    file: XmlArrays, piece: ElementTree.Element, n_points: int, n_cells: int, where: str
+) -> None:
     for section in piece:
         if section.tag == "PointData":
             _check_section(file, section, n_points, where)
@@ -209,15 +184,15 @@ def _check_piece(file: _File, piece: ElementTree.Element, n_points: int, n_cells
         elif section.tag == "Coordinates":
             _check_coordinates(file, piece, section, where)
         elif section.tag in _CELL_LISTS:
-            n = n_cells if section.tag == "Cells" else _count(file, piece, _COUNTED[section.tag], 0)
-            _check_cells(file, section, n, where)
+            n = n_cells if section.tag == "Cells" else file.count(piece, _COUNTED[section.tag], 0)
+            _check_cells(file, section, n_points, n, where)
     if n_points and piece.tag == "Piece" and piece.find("Points") is None and piece.get("NumberOfPoints"):
         raise file.fail(f"{where}it says it has {n_points} points and holds none")
     if n_cells and piece.get("NumberOfCells") and piece.find("Cells") is None:
         raise file.fail(f"{where}it says it has {n_cells} cells and holds none")
 
 
-def _check_points(file: _File, section: ElementTree.Element, n_points: int, where: str) -> None:
+def _check_points(file: XmlArrays, section: ElementTree.Element, n_points: int, where: str) -> None:
     arrays = _arrays(section)
     if n_points and (len(arrays) != 1 or arrays[0].get("NumberOfComponents", "1").strip() != "3"):
         raise file.fail(f"{where}the points are not one array of 3 components")
@@ -225,17 +200,19 @@ def _check_points(file: _File, section: ElementTree.Element, n_points: int, wher
 
 
 def _check_coordinates(
-    file: _File, piece: ElementTree.Element, section: ElementTree.Element, where: str
+    file: XmlArrays, piece: ElementTree.Element, section: ElementTree.Element, where: str
 ) -> None:
     arrays = _arrays(section)
     extent = [int(v) for v in piece.get("Extent", "").split()]
     if len(arrays) != 3:
         raise file.fail(f"{where}it has {len(arrays)} arrays of coordinates instead of 3")
     for axis, array in enumerate(arrays):
-        _check_array(file, array, extent[2 * axis + 1] - extent[2 * axis] + 1, where)
+        file.check_array(array, extent[2 * axis + 1] - extent[2 * axis] + 1, where)
 
 
-def _check_section(file: _File, section: ElementTree.Element, n_rows: int | None, where: str = "") -> None:
+def _check_section(
+    file: XmlArrays, section: ElementTree.Element, n_rows: int | None, where: str = ""
+) -> None:
     """Prove every array of a section; `n_rows` None: each states its own number of rows."""
     seen = set()
     for array in _arrays(section):
@@ -245,12 +222,10 @@ def _check_section(file: _File, section: ElementTree.Element, n_rows: int | None
         if array.get("TimeStep"):
             raise file.fail(f"{where}{section.tag} array {name!r} belongs to a TimeStep, which is not read")
         seen.add(name)
-        _check_array(
-            file, array, _count(file, array, "NumberOfTuples", 0) if n_rows is None else n_rows, where
-        )
+        file.check_array(array, file.count(array, "NumberOfTuples", 0) if n_rows is None else n_rows, where)
 
 
-def _check_cells(file: _File, section: ElementTree.Element, n: int, where: str) -> None:
+def _check_cells(file: XmlArrays, section: ElementTree.Element, n_points: int, n: int, where: str) -> None:
     """Prove the lists of a cell section; the offsets tell how long the connectivity must be."""
     arrays = {a.get("Name", ""): a for a in _arrays(section)}
     if n == 0:
@@ -261,138 +236,19 @@ def _check_cells(file: _File, section: ElementTree.Element, n: int, where: str) 
     if section.tag == "Cells":
         if "types" not in arrays:
             raise file.fail(f"{where}Cells has no array 'types'")
-        _check_array(file, arrays["types"], n, where)
+        file.check_array(arrays["types"], n, where)
     last = _check_offsets(file, arrays["offsets"], n, where)
-    _check_array(file, arrays["connectivity"], last, where)
-    # Polyhedra. Source: VTK 9.7, vtkXMLUnstructuredDataReader: one stream ("faces") up to version 2.2,
-    # lists with their own offsets from 2.3 on.
-    for name, offsets, length in (
-        ("face_connectivity", "face_offsets", None),
-        ("polyhedron_to_faces", "polyhedron_offsets", n),
-    ):
-        if name in arrays and offsets in arrays:
-            rows = _values(file, arrays[offsets], where) if length is None else length
-            _check_array(file, arrays[name], _check_offsets(file, arrays[offsets], rows, where), where)
-    if "faces" in arrays and "faceoffsets" in arrays:
-        _check_face_stream(file, arrays["faces"], arrays["faceoffsets"], n, where)
+    file.check_array(arrays["connectivity"], last, where)
+    if section.tag == "Cells":
+        check_faces(file, arrays, n_points, n, where)
 
 
-def _check_offsets(file: _File, array: ElementTree.Element, n: int, where: str) -> int:
+def _check_offsets(file: XmlArrays, array: ElementTree.Element, n: int, where: str) -> int:
     """Prove an array of n offsets and return the last one."""
-    _check_array(file, array, n, where)
+    file.check_array(array, n, where)
     if n == 0:
         return 0
-    last = int(_decode(file, array, 1, where)[-1])
+    last = int(file.decode(array, 1, where)[-1])
     if not 0 <= last < 2**47:
         raise file.fail(f"{where}the last of the {array.get('Name')} is {last}")
     return last
-
-
-def _check_face_stream(
-    file: _File, faces: ElementTree.Element, offsets: ElementTree.Element, n: int, where: str
-) -> None:
-    """Prove the stream ``[number of faces, (number of nodes, nodes ...) ...]`` of every polyhedron."""
-    _check_array(file, offsets, n, where)
-    ends = _decode(file, offsets, None, where)
-    stream = _decode(file, faces, None, where)
-    _check_array(file, faces, len(stream), where)
-    start = 0
-    for cell in np.flatnonzero(ends >= 0):
-        position = start
-        for count in _face_counts(stream, position):
-            position = count
-        if position != ends[cell] or position > len(stream):
-            raise file.fail(f"{where}the faces of the polyhedron in cell {int(cell)} do not fit their offset")
-        start = position
-
-
-def _face_counts(stream: Any, start: int) -> Iterator[int]:
-    """Yield the position after the head and after each face of one polyhedron; -1 when it runs out."""
-    if not 0 <= start < len(stream) or stream[start] < 0:
-        yield -1
-        return
-    position = start + 1
-    for _ in range(int(stream[start])):
-        if position >= len(stream) or stream[position] < 0:
-            yield -1
-            return
-        position += 1 + int(stream[position])
-    yield position
-
-
-def _check_array(file: _File, array: ElementTree.Element, n_rows: int, where: str) -> None:
-    """Prove that an array has exactly the values that `n_rows` rows need."""
-    name = array.get("Name", "")
-    width = _count(file, array, "NumberOfComponents", 1)
-    if width < 1:
-        raise file.fail(f"{where}array {name!r} has {width} components")
-    needed = n_rows * width
-    if array.get("type") == "String":
-        found = int(np.count_nonzero(_decode(file, array, None, where, "u1") == 0))
-        unit = "strings"
-    elif array.get("type") == "Bit":
-        needed, found, unit = -(-needed // 8), _values(file, array, where, "u1"), "bytes of bits"
-        if array.get("format", "ascii") == "ascii":
-            needed, unit = n_rows * width, "bits"
-    else:
-        found, unit = _values(file, array, where), "values"
-    if found != needed:
-        raise file.fail(f"{where}array {name!r} has {found} {unit}; {needed} are needed ({n_rows} x {width})")
-
-
-def _dtype(file: _File, array: ElementTree.Element) -> np.dtype[Any]:
-    kind = array.get("type", "")
-    if kind not in _TYPES:
-        raise file.fail(f"array {array.get('Name')!r} has the unknown number type {kind!r}")
-    return np.dtype(file.encoding.order + _TYPES[kind])
-
-
-def _values(file: _File, array: ElementTree.Element, where: str, dtype: str | None = None) -> int:
-    """Return the number of values an array holds."""
-    stream = _stream(file, array, where)
-    kind = np.dtype(dtype) if dtype else _dtype(file, array)
-    try:
-        if isinstance(stream, bytes):
-            return count_numbers(stream, kind)
-        n_bytes = decoded_size(stream, file.encoding)
-    except Unsound as error:
-        raise file.fail(f"{where}array {array.get('Name')!r}: {error}") from error
-    if n_bytes % kind.itemsize:
-        raise file.fail(
-            f"{where}array {array.get('Name')!r} has {n_bytes} bytes, no multiple of {kind.itemsize}"
-        )
-    return n_bytes // kind.itemsize
-
-
-def _decode(
-    file: _File, array: ElementTree.Element, n_last: int | None, where: str, dtype: str | None = None
-) -> Any:
-    """Return the last values of an array, or all of them for `n_last` None."""
-    kind = np.dtype(dtype) if dtype else _dtype(file, array)
-    stream = _stream(file, array, where)
-    try:
-        if isinstance(stream, bytes):
-            words = stream.split() if n_last is None else stream.rsplit(maxsplit=n_last)[-n_last:]
-            return np.array(words, dtype=np.float64).astype(np.int64)
-        n = decoded_size(stream, file.encoding) if n_last is None else n_last * kind.itemsize
-        found = tail(stream, file.encoding, n)
-        return np.frombuffer(found[: len(found) // kind.itemsize * kind.itemsize], kind)
-    except (Unsound, ValueError) as error:
-        raise file.fail(f"{where}array {array.get('Name')!r}: {error}") from error
-
-
-def _stream(file: _File, array: ElementTree.Element, where: str) -> Stream | bytes:
-    """Return the encoded bytes of an array, or its text when it is ASCII."""
-    form = array.get("format", "ascii").strip().lower()
-    if form == "appended":
-        if file.appended is None:
-            raise file.fail(f"{where}array {array.get('Name')!r} lies in appended data that are not there")
-        offset = _count(file, array, "offset")
-        start = file.appended.start + offset
-        return Stream(file.appended.data, start, file.appended.is_text, False)
-    text = (array.text or "") + "".join(child.tail or "" for child in array)
-    if form == "ascii":
-        return text.encode()
-    if form == "binary":
-        return Stream(b"".join(text.encode().split()), 0, True, True)
-    raise file.fail(f"{where}array {array.get('Name')!r} has the unknown format {form!r}")
