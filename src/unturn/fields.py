@@ -135,8 +135,8 @@ def _check_third_direction(model: Model, names: Sequence[str]) -> None:
     bound = [n for n in names if n in MEASURES and MEASURES[n].needs_third]
     if bound:
         raise UsageError(
-            f"{model.result.path + ': ' if model.result.path else ''}the mesh is plane, and {', '.join(bound)} depend on the "
-            "strain across the plane, which the displacement does not hold: state it with --plane strain, "
+            f"{model.result.path + ': ' if model.result.path else ''}the mesh is plane, and {', '.join(bound)} depend on "
+            "the strain across the plane, which the displacement does not hold: state it with --plane strain, "
             "--plane stress --poisson NU or --plane axisymmetric, or ask for in-plane measures only "
             "(--measures strain,rotation)."
         )
@@ -299,10 +299,9 @@ class _Job:
         d.dimension[rows] = chunk.row.dim
         steepest = 1.0 / smallest_height(chunk, point)
         H_size = np.sqrt(np.nansum(split.H**2, axis=(0, 1)))
-        largest = [
-            np.maximum(np.abs(chunk.first[a:b] + 0.0).max(axis=0), np.abs(chunk.relative[a:b] + chunk.first[a:b, None]).max(axis=(0, 1)))
-            for a, b in ((0, 3), (3, 6))
-        ]  # fmt: skip
+        others = np.abs(chunk.relative + chunk.first[:, None]).max(axis=1)
+        nodal = np.maximum(np.abs(chunk.first), others)
+        largest = nodal[:3].max(axis=0), nodal[3:].max(axis=0)
         x, u = (
             relative * size + absolute
             for (relative, absolute), size in zip((self.resolution_x, self.resolution_u), largest)

@@ -88,8 +88,8 @@ def eigen(six: NDArray[Any]) -> tuple[Floats, Floats]:
     low = cosine * second - sine * first
     values = _ordered(separate, middle + radius, middle - radius, upper) + mean
     directions = np.where(upper, np.stack([normal, high, low]), np.stack([high, low, normal]))
-    for d in directions:
-        d *= _leading_sign(d)
+    for k in range(3):
+        directions[k] *= _leading_sign(directions[k])
     return values, directions
 
 
