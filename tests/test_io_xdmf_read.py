@@ -9,13 +9,13 @@ import meshio
 import numpy as np
 import pytest
 
+from roundtrip import assert_same
 from unturn.io import xdmf
 from unturn.io.xdmf_mesh import CELLS
 from unturn.result import Result, Steps
 from xdmf_samples import (
     TRIANGLES,
     assert_bits,
-    assert_same,
     cell_points,
     everything,
     grid,

@@ -68,7 +68,10 @@ def displacement_candidates(result: Result) -> tuple[list[str], list[str]]:
     vectors = [
         name
         for name, a in result.point_data.items()
-        if a.ndim == 2 and a.shape[1] in (2, 3, 6) and np.issubdtype(a.dtype, np.floating)
+        if a.ndim == 2
+        and a.shape[1] in (2, 3, 6)
+        and np.issubdtype(a.dtype, np.floating)
+        and "XY" not in result.component_names.get(("point", name), ())
     ]
     named = [n for n in vectors if _NAMED.search(n.strip()) and not _OTHER.search(n)]
     triples = _scalar_triples(result) if not named else []

@@ -75,10 +75,19 @@ def _distinct(flat: NDArray[np.float64]) -> NDArray[np.float64]:
     return np.unique(sample)
 
 
+def _regular(sample: NDArray[np.float64]) -> bool:
+    """Return whether sorted values lie on a regular grid: at most three different gaps, multiples of the smallest."""
+    gaps = np.diff(sample)
+    multiples = gaps / gaps.min()
+    return len(np.unique(np.rint(multiples))) <= 3 and bool(
+        (np.abs(multiples - np.rint(multiples)) < 0.05).all()
+    )
+
+
 def _decimal(values: NDArray[np.float64], low: int, high: int) -> Resolution | None:
     """Return the resolution of decimals with more than `low` and at most `high` digits, or None."""
     sample = _distinct(values.reshape(-1))
-    if len(sample) < 16:
+    if len(sample) < 16 or _regular(sample):
         return None
     single = high < 8
     exponent = np.floor(np.log10(np.abs(sample)))
@@ -102,7 +111,7 @@ def _fixed(values: NDArray[np.float64], meant: int, most: float) -> Resolution |
     last digit as evenly as chance, and their gaps are not those of a regular grid.
     """
     sample = _distinct(values.reshape(-1))
-    if len(sample) < 16:
+    if len(sample) < 16 or _regular(sample):
         return None
     largest = float(np.abs(sample).max())
     first = meant - int(np.floor(np.log10(largest)))
@@ -112,9 +121,8 @@ def _fixed(values: NDArray[np.float64], meant: int, most: float) -> Resolution |
             return None
         nearest = np.rint(scaled)
         if (np.abs(scaled - nearest) <= np.abs(scaled) * (0.1 / most) + 1e-9).all():
-            regular = len(np.unique(np.diff(nearest))) <= 3
             even = np.mean(np.fmod(np.abs(nearest), 10.0) != 0) > 0.8
-            if regular or not even or places < 1:
+            if not even or places < 1:
                 return None
             return Resolution(0.0, f"{places} decimals", 0.5 * 10.0**-places)
     return None

@@ -7,6 +7,7 @@ from dataclasses import replace
 import numpy as np
 from numpy.typing import NDArray
 
+from unturn.elements import ELEMENTS
 from unturn.errors import InputError
 from unturn.result import Array, CellBlock
 
@@ -17,35 +18,19 @@ _NEARER = 1.05
 Places = tuple[tuple[int, ...], ...]
 
 
-def _ring(*nodes: int) -> Places:
-    return tuple(zip(nodes, (*nodes[1:], nodes[0])))
+def _places() -> dict[str, Places]:
+    """Return the corners that each further node of an element lies in the middle of."""
+    found: dict[str, Places] = {}
+    for name, row in ELEMENTS.items():
+        weights = ELEMENTS[row.shape.name].shape_functions(row.nodes[row.n_corners :])
+        around = [np.flatnonzero(np.abs(w) > 1e-9) for w in weights]
+        if around and all(np.allclose(w[held], 1 / len(held)) for w, held in zip(weights, around)):
+            found[name] = tuple(tuple(int(corner) for corner in held) for held in around)
+    return found
 
 
-_TETRA: Places = (*_ring(0, 1, 2), (0, 3), (1, 3), (2, 3))
-_PYRAMID: Places = (*_ring(0, 1, 2, 3), (0, 4), (1, 4), (2, 4), (3, 4))
-_WEDGE: Places = (*_ring(0, 1, 2), *_ring(3, 4, 5), (0, 3), (1, 4), (2, 5))
-_HEXAHEDRON: Places = (*_ring(0, 1, 2, 3), *_ring(4, 5, 6, 7), (0, 4), (1, 5), (2, 6), (3, 7))
-_SIDES: Places = ((0, 4, 7, 3), (1, 2, 6, 5), (0, 1, 5, 4), (3, 2, 6, 7))
-_FLAT: Places = (*_ring(0, 1, 2, 3), (0, 1, 2, 3))
-PLACES: dict[str, Places] = {
-    "line3": ((0, 1),),
-    "triangle6": _ring(0, 1, 2),
-    "triangle7": (*_ring(0, 1, 2), (0, 1, 2)),
-    "quad8": _ring(0, 1, 2, 3),
-    "quad9": _FLAT,
-    "tetra10": _TETRA,
-    "pyramid13": _PYRAMID,
-    "pyramid14": (*_PYRAMID, (0, 1, 2, 3)),
-    "wedge15": _WEDGE,
-    "wedge18": (*_WEDGE, (0, 1, 4, 3), (1, 2, 5, 4), (2, 0, 3, 5)),
-    "hexahedron20": _HEXAHEDRON,
-    "hexahedron24": (*_HEXAHEDRON, *_SIDES),
-    "hexahedron27": (*_HEXAHEDRON, *_SIDES, (0, 1, 2, 3), (4, 5, 6, 7), tuple(range(8))),
-}
-"""The corners that each further node lies in the middle of, in VTK's order.
-
-Source: VTK 9.7, class references of the quadratic cells.
-"""
+PLACES: dict[str, Places] = _places()
+"""The corners that each further node lies in the middle of, in VTK's order; from the element table."""
 
 
 def checked_order(

@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 
 from unturn.io.xdmf_hdf import hdf_dataset
 from unturn.io.xdmf_items import ItemReader
-from unturn.io.xdmf_tree import Node, attribute, fault, local_name
+from unturn.io.xdmf_xml import Node, attribute, fault, local_name
 from unturn.result import Array, CellBlock
 
 TENSOR6 = ("XX", "YY", "ZZ", "XY", "YZ", "XZ")

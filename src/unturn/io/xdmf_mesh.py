@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 
 from unturn.io.xdmf_items import ItemReader
 from unturn.io.xdmf_structured import points_from_origin, points_on_axes, structured_cells
-from unturn.io.xdmf_tree import Node, attribute, fault, local_name
+from unturn.io.xdmf_xml import Node, attribute, fault, local_name
 from unturn.result import Array, CellBlock
 
 # name in files, code in mixed streams, meshio's name, nodes (0: stated by the file).
