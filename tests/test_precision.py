@@ -101,3 +101,14 @@ def test_large_arrays_are_sampled() -> None:
 
 def test_integers_are_exact() -> None:
     assert storage_resolution(np.arange(300)).relative == DOUBLE
+
+
+def test_leftovers_next_to_zero_have_no_digits() -> None:
+    # Source: NGSolve 6.2.2608, VTKOutput: coordinates of a curve of order 4 with values such as 1e-310 beside zero.
+    assert storage_resolution(np.concatenate([SMOOTH, [3e-310, -1e-323]])).kind == "float64"
+
+
+def test_the_few_values_of_a_small_mesh_are_enough() -> None:
+    assert storage_resolution(rounded(SMOOTH[:9], 6).astype(np.float32)).kind == "6 digits"
+    assert storage_resolution(SMOOTH[:9].astype(np.float32)).kind == "float32"
+    assert storage_resolution(SMOOTH[:9]).kind == "float64"

@@ -88,6 +88,8 @@ def checked_order(
 
 def _right_order(points: Array, block: CellBlock) -> list[int] | None:
     """Return the columns that bring the nodes into order, an empty list for none needed, None if unknown."""
+    if block.cell_type == "VTK_LAGRANGE_HEXAHEDRON":
+        return _right_lagrange_hexahedron(points, block)
     places = PLACES.get(block.cell_type)
     if places is None or not len(block):
         return []
@@ -104,6 +106,33 @@ def _right_order(points: Array, block: CellBlock) -> list[int] | None:
     if count.max() < 0.9 * len(nearest) or len(np.unique(best)) != len(best):
         return None
     return [*range(corners), *(int(k) + corners for k in np.argsort(best))]
+
+
+def _right_lagrange_hexahedron(points: Array, block: CellBlock) -> list[int]:
+    """Return the columns that exchange the upright edges at corners 2 and 3, an empty list for none needed.
+
+    Notes
+    -----
+    VTK exchanged these two edges between its versions 8 and 9, and its readers turn files of the older format versions
+    round. Some writers state an old version over nodes in the new order, and some the other way round.
+    """
+    n_nodes = block.connectivity.shape[1]
+    order = round(n_nodes ** (1 / 3)) - 1
+    if (order + 1) ** 3 != n_nodes or order < 2 or not len(block):
+        return []
+    inner = order - 1
+    starts = (8 + 10 * inner, 8 + 11 * inner)
+    picked = np.unique(np.linspace(0, len(block) - 1, _SAMPLE).astype(np.int64))
+    nodes = points[block.connectivity[picked]].astype(np.float64)
+    middles = np.stack([nodes[:, [2, 6]].mean(axis=1), nodes[:, [3, 7]].mean(axis=1)], axis=1)
+    held = nodes[:, [start + inner // 2 for start in starts]]
+    own, other = (np.linalg.norm(held - m, axis=2) for m in (middles, middles[:, ::-1]))
+    if (own > other).all(axis=1).mean() < 0.5:
+        return []
+    columns = np.arange(n_nodes)
+    for here, there in (starts, starts[::-1]):
+        columns[here : here + inner] = np.arange(there, there + inner)
+    return [int(c) for c in columns]
 
 
 def _distances(points: Array, connectivity: NDArray[np.int64], places: Places) -> tuple[Array, int]:

@@ -90,9 +90,10 @@ class ItemReader:
         if dtype.kind == "f":
             if dtype.itemsize == 4 and not stated and self._loses(values, narrow):
                 self.notes[
-                    "Some numbers in the XML have more digits than their 4 bytes hold; a DataItem without "
-                    'Precision is 4 bytes in XDMF. Digits after the seventh are lost: write Precision="8".'
+                    "Some numbers in the XML have more digits than the 4 bytes of a DataItem that states no "
+                    "Precision; they were read with all their digits."
                 ] = None
+                return values
         elif not np.array_equal(values, narrow):
             raise fault(
                 node, f"a number does not fit into {8 * dtype.itemsize} bits, the Precision of this DataItem."
