@@ -283,9 +283,8 @@ def _product(U: Floats, inverse: Floats) -> Floats:
 def _flat(J: Floats, det: Floats) -> NDArray[np.bool_] | None:
     """Return which cells have no volume; None when no cell can be flat: the smallest determinant is large enough."""
     values = J.reshape(-1)
-    bound = (
-        _FLAT * (float(np.einsum("i,i->", values, values)) / 3.0) ** 1.5
-    )  # no smaller than _FLAT times the product of any columns
+    # no smaller than _FLAT times the product of the columns of any cell
+    bound = _FLAT * (float(np.einsum("i,i->", values, values)) / 3.0) ** 1.5
     if float(np.abs(det).min(initial=np.inf)) > bound:
         return None
     squares = J * J
@@ -474,8 +473,8 @@ def displacement_gradient(
     Returns
     -------
     numpy.ndarray
-        `(n_cells, 3, 3)`, or `(n_cells, p, 3, 3)` for given points; `[..., i, j] = du_i/dX_j`, dimensionless. Surface and
-        line elements in space: the small completion. NaN where an element has no volume.
+        `(n_cells, 3, 3)`, or `(n_cells, p, 3, 3)` for given points; `[..., i, j] = du_i/dX_j`, dimensionless.
+        Surface and line elements in space: the small completion. NaN where an element has no volume.
 
     Raises
     ------

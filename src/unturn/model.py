@@ -318,8 +318,8 @@ def _plane_mesh(
     if normal is None:
         if options.model is not None:
             raise UsageError(
-                f"{_where(result)}--plane {options.model} needs a mesh whose highest cells are two-dimensional and lie in "
-                "one coordinate plane; this one does not."
+                f"{_where(result)}--plane {options.model} needs a mesh whose highest cells are two-dimensional "
+                "and lie in one coordinate plane; this one does not."
             )
         return None, displacement
     used = _used(flat, result.n_points)
@@ -368,6 +368,6 @@ def _check_axis(result: Result, points: Floats, normal: int, axis: int) -> None:
     low, high = float(radius.min()), float(radius.max())
     if low < -1e-9 * max(abs(low), abs(high)):
         raise UsageError(
-            f"{_where(result)}--plane axisymmetric about {'xyz'[axis]}: it reaches across the axis (radius {low:.6g} to "
-            f"{high:.6g}). Choose the other axis with --axis, or move the mesh."
+            f"{_where(result)}--plane axisymmetric about {'xyz'[axis]}: the mesh reaches across the axis "
+            f"(radius {low:.6g} to {high:.6g}). Choose the other axis with --axis, or move the mesh."
         )

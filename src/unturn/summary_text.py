@@ -3,17 +3,22 @@
 from __future__ import annotations
 
 import math
+import textwrap
 from collections.abc import Callable, Sequence
 from pathlib import PurePath
 
 import numpy as np
 
+from unturn.fields import CellFields
+from unturn.measures import MEASURES
 from unturn.rigid import Removal
 from unturn.summary import CAUTION, RegionSummary, Summary, cell_counts, equivalent_form, mesh_kind
-from unturn.verdict import Verdict
+from unturn.trial import Trial
+from unturn.verdict import BROKEN, Solve, Verdict
 
 _MOST_COLUMNS = 5
 _MOST_VERDICTS = 12
+_LINE = 112  # where sentences are broken
 
 
 def summary_text(summary: Summary) -> str:
@@ -71,44 +76,66 @@ def _verdicts(summary: Summary) -> list[str]:
     if summary.options.mode:
         return ["mode shape: amplitude is arbitrary, so nothing is judged; values are per unit amplitude"]
     shown = sorted(summary.regions, key=lambda r: -r.verdict.worst if math.isfinite(r.verdict.worst) else 0.0)
-    lines = ["small strain"]
+    lines = ["small strain" + (", rigid motion taken out as stated below" if summary.removals else "")]
     lines += _aligned([["  " + r.region.name, *_words(r.verdict)] for r in shown[:_MOST_VERDICTS]], left=True)
     if len(shown) > _MOST_VERDICTS:
         lines.append(f"  {len(shown) - _MOST_VERDICTS} more regions with smaller errors")
+    if summary.finite_only:
+        return [*lines, *_advice(_FINITE_ONLY[summary.options.solve])]
+    tried = [(r.region.name, r.trial) for r in shown if r.trial is not None]
+    lines += [_tried(name, trial, summary.options.solve) for name, trial in tried[:_MOST_VERDICTS]]
     by_action: dict[str, list[str]] = {}
     for r in shown:
         if r.verdict.action:
             by_action.setdefault(r.verdict.action, []).append(r.region.name)
-    tried = [r for r in shown if r.trial is not None]
-    for r in tried[:_MOST_VERDICTS]:
-        assert r.trial is not None
-        enough = "" if r.trial.level in ("holds", "marginal", "no strain") else ", which is not enough"
-        lines.append(
-            f"  tried, {r.region.name}: its rigid motion taken out, {_ratio(r.trial.left)} error left{enough} "
-            f"({r.trial.option})"
-        )
-    if summary.finite_only:
-        return [*lines, "  -> the arrays that are written are finite measures: they contain no turning"]
     for action, names in by_action.items():
         listed = ", ".join(names[:4]) + (f" and {len(names) - 4} more" if len(names) > 4 else "")
-        lines.append(f"  -> {listed}: {action}")
+        lines += _advice(f"{listed}: {action}")
     return lines
+
+
+_FINITE_ONLY: dict[Solve, str] = {
+    "nonlinear": "that is for the small strain; the arrays that are written are finite measures, which contain no turning",
+    "unknown": "that is for the small strain; the arrays that are written are finite measures, which contain no turning "
+    "but are real only if the solve was geometrically nonlinear (say which with --solve)",
+}
+
+
+def _advice(sentence: str) -> list[str]:
+    return textwrap.wrap(
+        sentence,
+        _LINE,
+        initial_indent="  -> ",
+        subsequent_indent="     ",
+        break_on_hyphens=False,
+        break_long_words=False,
+    )
+
+
+def _tried(region: str, trial: Trial, solve: Solve) -> str:
+    """Return what taking out the rigid motion of a region leaves, and the option that does it when that helps."""
+    helps = trial.level in ("holds", "marginal", "no strain")
+    supposed = "" if solve == "nonlinear" else " (if the solve was nonlinear)"
+    left = f"error left {_of_its_strain(trial.left)}"
+    return f"  tried{supposed}: rigid motion of {region} taken out, {left}" + (
+        f" -> {trial.option}" if helps else ": not enough"
+    )
 
 
 def _words(v: Verdict) -> tuple[str, str]:
     turns = f"turns up to {_degrees(v.largest_rotation)} degrees"
-    worst = _ratio(v.worst)
+    worst = _of_its_strain(v.worst)
     return {
         "not judged": ("not judged", "no cell was computed"),
         "no strain": ("no strain", f"none above the stored precision; {turns}"),
-        "holds": ("holds", f"{turns}, error at most {worst} of its strain"),
+        "holds": ("holds", f"{turns}, error at most {worst}"),
         "marginal": (
             "MARGINAL",
-            f"{turns}, error up to {worst} of its strain, above 1 % in {_share(v.share_marginal)} of the volume",
+            f"{turns}, error up to {worst}, above 1 % in {_share(v.share_marginal)} of the volume",
         ),
         "does not hold": (
             "DOES NOT HOLD",
-            f"{turns}, error up to {worst} its strain, above 10 % in {_share(v.share_broken)} of the volume",
+            f"{turns}, error up to {worst}, above 10 % in {_share(v.share_broken)} of the volume",
         ),
     }[v.level]
 
@@ -123,6 +150,10 @@ def _ratio(value: float) -> str:
     if value < 1e-6:
         return "0 %"
     return f"{100 * value:.2g} %" if value < 1 else f"{value:.3g} x"
+
+
+def _of_its_strain(value: float) -> str:
+    return _ratio(value) + (" of its strain" if value < 1 else " its strain")
 
 
 def _share(value: float) -> str:
@@ -199,11 +230,14 @@ def _table(summary: Summary) -> list[str]:
                 ["  error there", *(_error(getattr(r.statistics[name], at), r, summary) for r in shown)]
             )
     if any(math.isfinite(_percentile(r)) for r in shown):
-        rows.append(["99.9 % of volume below", *(_micro(_percentile(r)) for r in shown)])
+        rows.append(
+            ["99.9 % of volume below" + _base_words(shown[0]), *(_micro(_percentile(r)) for r in shown)]
+        )
     for label, name in (("det F, smallest to largest", "det_f"), ("stretch, smallest to largest", "stretch")):
         if "det_f" in shown[0].statistics:
             rows.append([label, *(_scatter(r, name) for r in shown)])
-    rows.append(["largest rotation, degree", *(_degrees(r.verdict.largest_rotation) for r in shown)])
+    left = " left" if summary.removals else ""
+    rows.append([f"largest rotation{left}, degree", *(_degrees(r.verdict.largest_rotation) for r in shown)])
     lines = _aligned(rows)
     if len(shown) < len(summary.regions):
         rest = len(summary.regions) - len(shown)
@@ -213,7 +247,7 @@ def _table(summary: Summary) -> list[str]:
 
 def _scatter(r: RegionSummary, name: str) -> str:
     low, high = ("det_f", "det_f") if name == "det_f" else ("stretch_3", "stretch_1")
-    return f"{r.statistics[low].minimum:.4g} to {r.statistics[high].maximum:.4g}"
+    return f"{r.statistics[low].minimum:.5g} to {r.statistics[high].maximum:.5g}"
 
 
 def _leading(r: RegionSummary) -> str:
@@ -234,7 +268,12 @@ def _peak(r: RegionSummary) -> float:
 
 
 def _percentile(r: RegionSummary) -> float:
-    return r.statistics[_leading(r)].percentiles.get(99.9, math.nan)
+    name = _leading(r)
+    return math.nan if name == "angle_of_turn" else r.statistics[name].percentiles.get(99.9, math.nan)
+
+
+def _base_words(r: RegionSummary) -> str:
+    return _BASES.get(_leading(r).removeprefix("equivalent_strain"), "")
 
 
 def _micro(value: float) -> str:
@@ -291,10 +330,13 @@ def _tail(summary: Summary) -> list[str]:
     lines = []
     if any(name.startswith("equivalent_strain") for name in fields.arrays):
         form = equivalent_form(options.equivalent_poisson)
+        if any(name.endswith("_mechanical") for name in fields.arrays):
+            form += " (mechanical: of the total less the free thermal strain)"
         lines.append(f"equivalent = {form}; values at element {_location(options.at)}; shear is tensor shear")
     else:
         lines.append(f"values at element {_location(options.at)}; shear is tensor shear")
-    lines += [line for r in summary.removals for line in _removed(r, _extent(summary))]
+    lines += _frame(fields)
+    lines += _removals(summary)
     left = ", ".join(f"{len(cells)} {reason}" for reason, cells in fields.left_out.items())
     noise = max((r.verdict.noise for r in summary.regions), default=math.nan)
     floor = "below 1e-6" if noise < 1e-12 else f"+-{noise * 1e6:.1g}"
@@ -309,23 +351,63 @@ def _tail(summary: Summary) -> list[str]:
     for dimension, n in summary.other_dimensions.items():
         lines.append(f"{n} cells of dimension {dimension} are computed and written, but not in this table")
     lines += [f"note: {note}" for note in fields.model.notes]
+    lines += _beyond_linear(summary)
     lines += [f"WARNING: {warning}" for warning in summary.warnings]
     lines.append(CAUTION)
+    return lines
+
+
+def _frame(fields: CellFields) -> list[str]:
+    named = {names: None for name, names in fields.components.items() if names != MEASURES[name].components}
+    if not named:
+        return []
+    listed = "; ".join(", ".join(names) for names in named)
+    return [f"components are in the frame that was asked for: {listed}"]
+
+
+def _removals(summary: Summary) -> list[str]:
+    """Return what was taken out: two lines a part, and of many parts only those that turn most."""
+    if not summary.removals:
+        return []
+    order = sorted(summary.removals, key=lambda r: -float(np.linalg.norm(r.motion.rotation)))
+    shown = summary.removals if len(order) <= _MOST_COLUMNS else order[:_MOST_COLUMNS]
+    lines = [line for r in shown for line in _removed(r, _extent(summary))]
+    if len(shown) < len(order):
+        lines.append(
+            f"rigid motion taken out of {len(order) - len(shown)} more that turn less: all are in --json"
+        )
+    lines.append("where it was taken out, strain is in the axes of the undeformed part")
     return lines
 
 
 def _removed(r: Removal, extent: float) -> list[str]:
     m = r.motion
     turn = np.degrees(m.rotation)
-    kind = {"linearised": "linearised fit", "finite": "best proper rotation"}[m.fit]
-    over = "" if r.fitted == r.applied else f" (fitted over {r.fitted})"
-    other = "" if r.other is None else f"; the other kind of fit leaves {r.other.residual:.3g}"
+    fits = {"linearised": "linearised fit", "finite": "best-fit rotation"}
+    over = "" if r.fitted == r.applied else f" (as fitted over {r.fitted})"
+    other = "" if r.other is None else f" ({fits[r.other.fit]}: {r.other.residual:.3g})"
+    angle = float(np.linalg.norm(turn))
     return [
-        f"rigid motion taken out of {r.applied}{over}: translation {_three(m.translation, extent)}, "
-        f"rotation {_three(turn, 1.0)} = "
-        f"{float(np.linalg.norm(turn)):.6g} degrees about {_three(m.center, extent)}",
-        f"  {kind}, RMS displacement left {m.residual:.3g}{other}; strain is in the axes of the undeformed part",
+        f"rigid motion taken out of {r.applied}{over}, {fits[m.fit]}: {0.0 if angle < 1e-9 else angle:.6g} degrees, "
+        f"rotation vector {_three(turn, 1e3)} degrees",
+        f"  translation {_three(m.translation, extent)} of the centre {_three(m.center, extent)}; "
+        f"RMS displacement left {m.residual:.3g}{other}",
     ]
+
+
+def _beyond_linear(summary: Summary) -> list[str]:
+    """Return warnings where a linearised turn stretches lengths by what the strain cannot bear."""
+    lines = []
+    for r in summary.removals:
+        turn = float(np.linalg.norm(r.motion.rotation))
+        stretched = math.hypot(1.0, turn) - 1.0
+        sizes = [s.verdict.size for s in summary.regions if r.applied in (s.region.name, "whole")]
+        if r.motion.fit == "linearised" and any(stretched > BROKEN * size > 0 for size in sizes):
+            lines.append(
+                f"WARNING: {r.applied} turns by {math.degrees(turn):.3g} degrees; in a linear solve that stretches "
+                f"lengths by {_micro(stretched)} microstrain, and taking it out does not bring the solve into range"
+            )
+    return lines[:_MOST_COLUMNS]
 
 
 def _three(values: np.ndarray, size: float) -> str:
