@@ -15,7 +15,7 @@ from unturn.fields import CellFields, Location, compute_fields
 from unturn.frames import Frame, parse_frame
 from unturn.gradient import NodalFields, PlaneModel
 from unturn.kinematics._symmetric import Floats
-from unturn.measures import MEASURES, choose_measures
+from unturn.measures import MEASURES, SMALL, choose_measures
 from unturn.model import Model, PlaneOptions, build_model
 from unturn.regions import bodies, find_regions, named_regions
 from unturn.result import Result
@@ -105,7 +105,9 @@ def compute(
         take_out(small, parts, options.solve, _axis(options.rigid_axis)) if parts else (small, ())
     )
     if finite is not None and parts:
-        finite, _ = take_out(finite, parts, "nonlinear", _axis(options.rigid_axis))
+        finite, real = take_out(finite, parts, "nonlinear", _axis(options.rigid_axis))
+        if not any(n in SMALL for n in names):
+            removals = real
     if previous and len(previous) == len(removals):
         removals = tuple(_unwrap(r, p) for r, p in zip(removals, previous))
     return Computed(_fields(small, finite, names, settings, options, diagnose), removals)
