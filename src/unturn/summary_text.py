@@ -18,7 +18,7 @@ from unturn.verdict import BROKEN, Solve, Verdict
 
 _MOST_COLUMNS = 5
 _MOST_VERDICTS = 12
-_LINE = 112  # where sentences are broken
+_LINE = 120  # where sentences are broken
 
 
 def summary_text(summary: Summary) -> str:
