@@ -33,7 +33,9 @@ def brick_mesh(n: int) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
     z, y, x = np.meshgrid(axis, axis, axis, indexing="ij")
     points = np.stack([x.ravel(), y.ravel(), z.ravel()], axis=1).astype(float)
     points += 0.1 * np.random.default_rng(0).random(points.shape)
-    corner = (axis[:-1, None, None] * (n + 1) ** 2 + axis[None, :-1, None] * (n + 1) + axis[None, None, :-1]).ravel()
+    corner = (
+        axis[:-1, None, None] * (n + 1) ** 2 + axis[None, :-1, None] * (n + 1) + axis[None, None, :-1]
+    ).ravel()
     step, layer = n + 1, (n + 1) ** 2
     offsets = np.array([0, 1, step + 1, step, layer, layer + 1, layer + step + 1, layer + step])
     x, y, z = points.T / n
@@ -91,7 +93,9 @@ def eigen() -> None:
     tensor = np.random.default_rng(0).normal(size=(1_000_000, 3, 3))
     tensor += tensor.swapaxes(1, 2)
     ours, theirs = best(lambda: principal_strain(tensor), 3), best(lambda: np.linalg.eigvalsh(tensor), 3)
-    print(f"principal values, 1 M: {ours:.3f} s; numpy.linalg.eigvalsh {theirs:.3f} s; {theirs / ours:.2f} times as fast")
+    print(
+        f"principal values, 1 M: {ours:.3f} s; numpy.linalg.eigvalsh {theirs:.3f} s; {theirs / ours:.2f} times as fast"
+    )
 
 
 SCRIPT = """
@@ -127,21 +131,33 @@ def help_text() -> None:
     print(f"unturn --help: {best(lambda: subprocess.run(run, check=True, capture_output=True)):.3f} s")
 
 
-def memory() -> None:
-    """Peak memory over the input, less the output arrays."""
-    for kind in ("tetra", "hexahedron"):
-        script = f"""
-import resource, sys
-sys.path.insert(0, {str(Path(__file__).parent)!r})
+MEMORY = """
+import sys
+sys.path.insert(0, {folder!r})
 import compare, unturn
-r, _ = compare.million({kind!r})
-unturn.displacement_gradient(r.points[:8], [[0, 1, 2, 3]], r.point_data['u'][:8], 'tetra')
-before = resource.getrusage(resource.RUSAGE_SELF).ru_maxrss
-out = unturn.strain(r, measures=compare.MEASURES)
-after = resource.getrusage(resource.RUSAGE_SELF).ru_maxrss
+def status(key):
+    return next(int(line.split()[1]) for line in open('/proc/self/status') if line.startswith(key)) / 1e3
+result, _ = compare.million({kind!r})
+unturn.strain(compare.small_result(), measures=compare.MEASURES)
+open('/proc/self/clear_refs', 'w').write('5')  # the peak counts from here
+before = status('VmRSS')
+out = unturn.strain(result, measures=compare.MEASURES)
 arrays = sum(a.nbytes for a in out.cell_data.values()) / 1e6
-print(f'{kind}: peak rises by {{(after - before) / 1e3:.0f}} MB, of which {{arrays:.0f}} MB are the output arrays')
+peak = status('VmHWM') - before
+print(f'{kind}: peak rises by {{peak:.0f}} MB: {{arrays:.0f}} MB output arrays and {{peak - arrays:.0f}} MB more')
 """
+
+
+def small_result() -> Result:
+    """Return a few hexahedra, to load what is loaded at first use."""
+    points, cells, u = brick_mesh(2)
+    return Result(points, (CellBlock("hexahedron", cells, np.arange(len(cells))),), {"u": u})
+
+
+def memory() -> None:
+    """Peak memory over the input, less the output arrays (Linux)."""
+    for kind in ("tetra", "hexahedron"):
+        script = MEMORY.format(folder=str(Path(__file__).parent), kind=kind)
         subprocess.run([sys.executable, "-c", script], check=True)
 
 

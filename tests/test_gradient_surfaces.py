@@ -169,10 +169,12 @@ def test_twist_of_a_line_is_not_seen() -> None:
     np.testing.assert_allclose(finite(mesh, u, np.zeros((1, 1)))[0], np.eye(3), atol=1e-14)
 
 
-def test_a_line_turned_end_for_end_has_no_single_smallest_rotation() -> None:
+def test_a_line_turned_end_for_end_has_no_single_smallest_rotation_but_a_strain() -> None:
     mesh = meshes.Mesh(np.array([[0.0, 0, 0], [1, 0, 0]]), np.array([[0, 1]]), ELEMENTS["line"])
-    F = finite(mesh, np.array([[0.0, 0, 0], [-2, 0, 0]]), np.zeros((1, 1)))
-    assert np.isnan(F).any()
+    F = finite(mesh, np.array([[0.0, 0, 0], [-2.5, 0, 0]]), np.zeros((1, 1)))[0]
+    np.testing.assert_allclose(F.T @ F, np.diag([1.5**2, 1, 1]), atol=1e-15)
+    np.testing.assert_allclose(F[0], [-1.5, 0, 0])
+    assert np.linalg.det(F) == pytest.approx(1.5)
 
 
 @each({**SURFACES, **LINES})

@@ -162,8 +162,8 @@ def test_msh_cells_come_in_vtks_order_without_repair(cell_type: str, tmp_path: P
     np.testing.assert_array_equal(
         found.points[found.blocks[0].connectivity[0]], scale * cell_points(cell_type)
     )
-    assert found.point_data["gmsh:node"].tolist() == numbers
-    assert found.cell_data["gmsh:element"].tolist() == [5]
+    assert found.point_data["node_id"].tolist() == numbers
+    assert found.cell_data["element_id"].tolist() == [5]
 
 
 @pytest.mark.source("meshio 5.3.5, MSH writers")
@@ -277,7 +277,7 @@ def test_msh_41_with_an_entity_without_a_tag_and_parametric_nodes(tmp_path: Path
     assert [b.connectivity.tolist() for b in found.blocks] == [[[0, 1]], [[0, 1, 2], [1, 3, 2]]]
     assert {k: v.tolist() for k, v in found.groups.items()} == {"arm": [1, 2], "physical 6": [1, 2]}
     assert found.cell_data["gmsh:physical"].tolist() == [0, 5, 5]
-    assert found.cell_data["gmsh:element"].tolist() == [7, 8, 1]
+    assert found.cell_data["element_id"].tolist() == [7, 8, 1]
 
 
 WRONG_MSH = {

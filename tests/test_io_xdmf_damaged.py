@@ -178,7 +178,7 @@ def test_ten_thousand_searches_of_a_large_index_end(tmp_path: Path, monkeypatch:
 # Topology and geometry
 
 WRONG_MESHES = {
-    "unknown cells": (('"Triangle"', '"Triangle_10"'), "cells of type 'Triangle_10' are not read"),
+    "unknown cells": (('"Triangle"', '"Triangle_15"'), "cells of type 'Triangle_15' are not read"),
     "no cells named": ((' TopologyType="Triangle"', ""), "cells of type '' are not read"),
     "order": (("<Topology", '<Topology Order="2 1 0"'), "an Order of its own"),
     "number of cells": (('Elements="2"', 'Elements="3"'), "6 node numbers of 3 a cell for 3 cells"),

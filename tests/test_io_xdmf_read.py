@@ -9,13 +9,13 @@ import meshio
 import numpy as np
 import pytest
 
+from roundtrip import assert_same
 from unturn.io import xdmf
 from unturn.io.xdmf_mesh import CELLS
 from unturn.result import Result, Steps
 from xdmf_samples import (
     TRIANGLES,
     assert_bits,
-    assert_same,
     cell_points,
     everything,
     grid,
@@ -251,11 +251,11 @@ def test_extreme_whole_numbers_in_xml_are_exact(tmp_path: Path) -> None:
     assert_bits(found.point_data["high"], np.array([high, 1, 2, 3], np.uint64))
 
 
-def test_digits_lost_to_a_missing_precision_are_mentioned(tmp_path: Path) -> None:
+def test_all_digits_are_read_where_no_precision_is_stated(tmp_path: Path) -> None:
     array = node_array("u", "0.123456789012 1 2 3").replace(' Precision="8"', "")
     found = read(index(tmp_path, grid(array)))
-    assert found.point_data["u"].dtype == np.float32
-    assert "without Precision is 4 bytes" in found.notes[0]
+    assert_bits(found.point_data["u"], np.array([0.123456789012, 1, 2, 3]))
+    assert "read with all their digits" in found.notes[0]
     plain = node_array("u", "0.1 0.10000000149011612 2.5e-3 nan").replace(' Precision="8"', "")
     assert read(index(tmp_path, grid(plain))).notes == ()
 

@@ -13,11 +13,13 @@ import meshio
 import numpy as np
 import pytest
 
+import unturn.io
+from roundtrip import assert_same, round_trip
 from unturn.errors import UsageError
 from unturn.io import xdmf
 from unturn.io.xdmf_mesh import CELLS
 from unturn.result import CellBlock, Result, Steps
-from xdmf_samples import assert_bits, assert_same, cell_points, everything, one_cell
+from xdmf_samples import assert_bits, cell_points, everything, one_cell
 
 TYPES = [cell_type for _, _, cell_type, _ in CELLS if cell_type != "polygon"]
 
@@ -178,7 +180,9 @@ def test_two_dimensional_points_are_written_as_two_coordinates(tmp_path: Path) -
     xdmf.write(meant, tmp_path / "a.xdmf")
     with h5py.File(tmp_path / "a.xdmf.h5") as file:
         assert file["/grid_0/points"].shape == (6, 2)
-    assert_same(meant, xdmf.open_file(tmp_path / "a.xdmf").read())
+    found = xdmf.open_file(tmp_path / "a.xdmf").read()
+    assert_same(meant, found)
+    assert found.point_dimension == 2
 
 
 def test_float32_points_stay_float32(tmp_path: Path) -> None:
@@ -337,3 +341,40 @@ def test_two_steps_of_one_time_are_refused(tmp_path: Path) -> None:
 def test_writing_into_a_folder_that_is_missing_says_so(tmp_path: Path) -> None:
     with pytest.raises(UsageError, match="cannot be written"):
         xdmf.write(one_cell("tetra"), tmp_path / "nowhere" / "a.xdmf")
+
+
+# Through the one door of unturn.io, whole or not at all
+
+
+@pytest.mark.parametrize("suffix", [".xdmf", ".xmf"])
+def test_the_round_trip_that_every_format_must_pass(suffix: str, tmp_path: Path) -> None:
+    once = round_trip(everything(), tmp_path / f"a{suffix}")
+    round_trip(once, tmp_path / f"b{suffix}")
+
+
+def test_two_indices_of_one_stem_do_not_share_their_numbers(tmp_path: Path) -> None:
+    unturn.io.write(one_cell("tetra"), tmp_path / "a.xdmf")
+    unturn.io.write(one_cell("hexahedron"), tmp_path / "a.xmf")
+    assert_same(one_cell("tetra"), unturn.io.read(tmp_path / "a.xdmf"))
+    assert_same(one_cell("hexahedron"), unturn.io.read(tmp_path / "a.xmf"))
+
+
+def test_a_series_through_the_one_door(tmp_path: Path) -> None:
+    with unturn.io.series_writer(tmp_path / "s.xdmf") as writer:
+        for number in range(3):
+            writer.add(step_of(number), float(number))
+    assert sorted(p.name for p in tmp_path.iterdir()) == ["s.xdmf", "s.xdmf.h5"]
+    assert_same(step_of(2), unturn.io.read(tmp_path / "s.xdmf"))
+    assert_same(step_of(1), unturn.io.read(tmp_path / "s.xdmf", 1))
+
+
+def test_a_result_of_another_format_goes_into_xdmf_and_back(tmp_path: Path) -> None:
+    whole = everything()
+    whole = replace(whole, field_data={"load": np.array([1.5])}, groups={})
+    unturn.io.write(whole, tmp_path / "a.vtu")
+    read = unturn.io.read(tmp_path / "a.vtu")
+    assert unturn.io.write(read, tmp_path / "a.xdmf") == ()
+    found = unturn.io.read(tmp_path / "a.xdmf")
+    for name, values in read.point_data.items():
+        assert_bits(found.point_data[name], values)
+    assert unturn.io.write(found, tmp_path / "b.vtu") == ()

@@ -71,6 +71,14 @@ def test_regular_coordinates_are_not_taken_for_rounded_ones(step: float, count: 
     assert storage_resolution(values).relative == (DOUBLE if dtype is np.float64 else SINGLE)
 
 
+@pytest.mark.parametrize("step", [1e-4, 2e-4, 1e-3, 1e-5])
+@pytest.mark.parametrize("start", [0.0, 1.0, -1.5])
+def test_a_fine_regular_grid_is_not_taken_for_rounded_values(step: float, start: float) -> None:
+    values = np.round(start + np.arange(15_000) * step, 6)
+    assert storage_resolution(values).kind == "float64"
+    assert storage_resolution(np.repeat(values, 3).reshape(-1, 3)).kind == "float64"
+
+
 @pytest.mark.parametrize("places", [5, 6])
 def test_few_steps_are_rounded_where_values_are_computed(places: int) -> None:
     values = np.round(np.random.default_rng(1).normal(size=60) * 1e-3, places)
@@ -93,3 +101,14 @@ def test_large_arrays_are_sampled() -> None:
 
 def test_integers_are_exact() -> None:
     assert storage_resolution(np.arange(300)).relative == DOUBLE
+
+
+def test_leftovers_next_to_zero_have_no_digits() -> None:
+    # Source: NGSolve 6.2.2608, VTKOutput: coordinates of a curve of order 4 with values such as 1e-310 beside zero.
+    assert storage_resolution(np.concatenate([SMOOTH, [3e-310, -1e-323]])).kind == "float64"
+
+
+def test_the_few_values_of_a_small_mesh_are_enough() -> None:
+    assert storage_resolution(rounded(SMOOTH[:9], 6).astype(np.float32)).kind == "6 digits"
+    assert storage_resolution(SMOOTH[:9].astype(np.float32)).kind == "float32"
+    assert storage_resolution(SMOOTH[:9]).kind == "float64"

@@ -23,7 +23,9 @@ from unturn.verdict import Solve, Verdict, judge
 def diagnostics(n: int = 10, **values: Any) -> CellDiagnostics:
     """`n` cells of volume 1, strain 1e-3, no turning, no noise; changed by keyword."""
     blank = {"volume": 1.0, "error": 0.0, "stretch": 1e-3, "angle": 0.0, "noise": 0.0, "det_f": 1.0}
-    arrays = {k: np.broadcast_to(np.asarray(v, dtype=float), (n,)).copy() for k, v in (blank | values).items()}
+    arrays = {
+        k: np.broadcast_to(np.asarray(v, dtype=float), (n,)).copy() for k, v in (blank | values).items()
+    }
     return CellDiagnostics(
         **arrays,
         principal=np.zeros((n, 2)),

@@ -102,7 +102,7 @@ def strain(
     plane
         What a plane mesh assumes of its third direction: ``strain``, ``stress`` (with `poisson`), ``axisymmetric``.
     poisson
-        Poisson's ratio for plane stress.
+        Poisson's ratio for plane stress, and for the thickness stretch that finite measures of surfaces in space have.
     axis
         Axis of revolution for ``axisymmetric``.
     coordinates

@@ -68,20 +68,33 @@ def displacement_candidates(result: Result) -> tuple[list[str], list[str]]:
     vectors = [
         name
         for name, a in result.point_data.items()
-        if a.ndim == 2 and a.shape[1] in (2, 3, 6) and np.issubdtype(a.dtype, np.floating)
+        if a.ndim == 2
+        and a.shape[1] in (2, 3, 6)
+        and np.issubdtype(a.dtype, np.floating)
+        and "XY" not in result.component_names.get(("point", name), ())
     ]
     named = [n for n in vectors if _NAMED.search(n.strip()) and not _OTHER.search(n)]
-    triples = _scalar_triples(result) if not named else []
+    scalars = _scalars(result) if not named else []
+    triples = _scalar_triples(result, scalars)
+    if scalars and not triples and _along_x(result):
+        triples = [n for n in scalars if _NAMED.search(n.strip()) and not _OTHER.search(n)]
     others = [n for n in vectors if n not in named and not _OTHER.search(n)]
     return named + triples, others
 
 
-def _scalar_triples(result: Result) -> list[str]:
-    by_folded = {
-        n.strip().casefold(): n
-        for n, a in result.point_data.items()
-        if a.size == len(a) and np.issubdtype(a.dtype, np.floating)
-    }
+def _scalars(result: Result) -> list[str]:
+    return [
+        n for n, a in result.point_data.items() if a.size == len(a) and np.issubdtype(a.dtype, np.floating)
+    ]
+
+
+def _along_x(result: Result) -> bool:
+    """Whether the mesh is one-dimensional: all its points on one line along x."""
+    return not np.ptp(result.points[:, 1:], axis=0).any()
+
+
+def _scalar_triples(result: Result, scalars: list[str]) -> list[str]:
+    by_folded = {n.strip().casefold(): n for n in scalars}
     found = []
     for triple in _TRIPLES:
         present = [by_folded[t] for t in triple if t in by_folded]
@@ -135,6 +148,7 @@ def find_displacement(result: Result, name: str | None = None, scale: float = 1.
     raise DisplacementError(
         f"{where}no displacement found; the point arrays are: {present}. Name a vector with --displacement NAME, "
         "three scalars with --displacement ux,uy,uz, or give a table with --displacement-table FILE.csv."
+        + "".join(f" {note}" for note in result.notes)
     )
 
 
@@ -172,7 +186,7 @@ def _chosen(
             )
         if a.dtype.kind not in "fiu":
             raise UsageError(f"{where}point array {part!r} holds {a.dtype}, not numbers.")
-    columns = _columns(stored, name, where)
+    columns = _columns(stored, name, where, _along_x(result))
     values = np.zeros((result.n_points, 3))
     values[:, : len(columns)] = np.stack(columns, axis=1)
     if scale != 1.0:
@@ -180,9 +194,11 @@ def _chosen(
     return Displacement(name, values, stored, why, candidates, scale)
 
 
-def _columns(stored: tuple[np.ndarray, ...], name: str, where: str) -> list[np.ndarray]:
+def _columns(stored: tuple[np.ndarray, ...], name: str, where: str, along_x: bool) -> list[np.ndarray]:
     if len(stored) == 1:
         a = stored[0]
+        if along_x and a.size == len(a):
+            return [a.reshape(-1)]
         if a.ndim != 2 or a.shape[1] not in (2, 3, 6):
             raise UsageError(
                 f"{where}point array {name!r} has shape {a.shape}; a displacement has 2 or 3 components "

@@ -165,8 +165,8 @@ def _check_third_direction(model: Model, names: Sequence[str]) -> None:
     bound = [n for n in names if n in MEASURES and MEASURES[n].needs_third]
     if bound:
         raise UsageError(
-            f"{model.result.path + ': ' if model.result.path else ''}the mesh is plane, and {', '.join(bound)} depend on the "
-            "strain across the plane, which the displacement does not hold: state it with --plane strain, "
+            f"{model.result.path + ': ' if model.result.path else ''}the mesh is plane, and {', '.join(bound)} depend "
+            "on the strain across the plane, which the displacement does not hold: state it with --plane strain, "
             "--plane stress --poisson NU or --plane axisymmetric, or ask for in-plane measures only "
             "(--measures strain,rotation)."
         )

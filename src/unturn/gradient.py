@@ -116,6 +116,7 @@ class ElementChunk:
         row: Element,
         plane: Plane | None,
         back: Floats | None = None,
+        poisson: float | None = None,
     ) -> None:
         """Gather elements.
 
@@ -126,8 +127,10 @@ class ElementChunk:
         back
             `(2, 3, 3)` or `(2, 3, 3, m)`: a rigid motion to take out. To the displacements relative to the first node
             are added the first tensor times the coordinates and the second times the displacements.
+        poisson
+            Poisson's ratio of surfaces in space: finite measures then have the thickness stretch of plane stress.
         """
-        self.row, self.plane = row, plane
+        self.row, self.plane, self.poisson = row, plane, poisson
         nodes = np.ascontiguousarray(connectivity.T)
         values = np.empty((6, *nodes.shape))
         for k in range(6):
@@ -224,15 +227,16 @@ class ElementChunk:
     def finite(self, point: PointGradient) -> Floats:
         """Return `F - I` `(3, 3, m)` with the completion that finite measures use.
 
-        Surfaces: the normal goes to the unit normal of the deformed surface. Lines: stretch along the tangent times
-        the smallest rotation from old to new tangent. Plane stress: the thickness stretch of the logarithmic law.
+        Surfaces: the normal goes to the unit normal of the deformed surface, times the thickness stretch when Poisson's
+        ratio is given. Lines: stretch along the tangent times the smallest rotation from old to new tangent. Thickness
+        stretch of plane stress: the logarithmic law `ln l3 = -nu/(1-nu) (ln l1 + ln l2)`.
         """
         if self.row.dim == 3:
             return point.H
         if self.row.dim == 1:
             return _finite_line(point)
         if self.plane is None:
-            return _finite_surface(point)
+            return _finite_surface(point, self.poisson)
         H = point.H
         k = self.plane.normal
         if self.plane.model == "stress":
@@ -279,9 +283,8 @@ def _product(U: Floats, inverse: Floats) -> Floats:
 def _flat(J: Floats, det: Floats) -> NDArray[np.bool_] | None:
     """Return which cells have no volume; None when no cell can be flat: the smallest determinant is large enough."""
     values = J.reshape(-1)
-    bound = (
-        _FLAT * (float(np.einsum("i,i->", values, values)) / 3.0) ** 1.5
-    )  # no smaller than _FLAT times the product of any columns
+    # no smaller than _FLAT times the product of the columns of any cell
+    bound = _FLAT * (float(np.einsum("i,i->", values, values)) / 3.0) ** 1.5
     if float(np.abs(det).min(initial=np.inf)) > bound:
         return None
     squares = J * J
@@ -342,12 +345,13 @@ def _line(mixed: Floats) -> PointGradient:
     return PointGradient(H, size, size, inverse, t[None])
 
 
-def _finite_surface(point: PointGradient) -> Floats:
-    """Return `F - I` with F n = unit normal of the deformed surface."""
+def _finite_surface(point: PointGradient, poisson: float | None) -> Floats:
+    """Return `F - I` with F n = unit normal of the deformed surface times the thickness stretch."""
     assert point.tangents is not None
     t = point.tangents
     normal = _cross(t[0], t[1])
-    normal /= np.sqrt(_dot(normal, normal))
+    area = np.sqrt(_dot(normal, normal))
+    normal /= area
     tilt = -np.stack([_dot(point.H[i], normal) for i in range(3)])  # minus H n = grad_s(u)^T n
     H = point.H.copy()
     for i in range(3):
@@ -355,8 +359,11 @@ def _finite_surface(point: PointGradient) -> Floats:
             H[i, j] += tilt[i] * normal[j]  # the surface gradient alone
     moved = [t[k] + np.stack([_dot(H[i], t[k]) for i in range(3)]) for k in range(2)]
     turned = _cross(moved[0], moved[1])
-    turned /= np.sqrt(_dot(turned, turned))
+    moved_area = np.sqrt(_dot(turned, turned))
+    turned /= moved_area
     change = turned - normal
+    if poisson is not None:
+        change += np.expm1(-poisson / (1.0 - poisson) * np.log(moved_area / area)) * turned
     for i in range(3):
         for j in range(3):
             H[i, j] += change[i] * normal[j]
@@ -374,21 +381,47 @@ def _finite_line(point: PointGradient) -> Floats:
     stretch = np.sqrt(_dot(moved, moved))
     new = moved / stretch
     axis, cosine = _cross(old, new), _dot(old, new)
-    # opposite tangents: any axis across will do; a half turn about it
-    safe = np.where(1.0 + cosine > 1e-12, 1.0 + cosine, np.nan)
+    back = cosine < -0.5
     H = np.empty_like(point.H)
     for i in range(3):
         for j in range(3):
-            H[i, j] = axis[i] * axis[j] / safe
+            H[i, j] = axis[i] * axis[j] / np.where(back, 1.0, 1.0 + cosine)
         H[i, i] += cosine - 1.0
     for i, j, k in ((0, 1, 2), (1, 2, 0), (2, 0, 1)):
         H[i, j] -= axis[k]
         H[j, i] += axis[k]
+    if back.any():
+        H[:, :, back] = _reversing_turn(old[:, back], new[:, back])
     extra = (stretch - 1.0) * new
     for i in range(3):
         for j in range(3):
             H[i, j] += extra[i] * old[j]
     return H
+
+
+def _reversing_turn(old: Floats, new: Floats) -> Floats:
+    """Return `R - I` of the smallest rotations that nearly or wholly reverse a unit vector.
+
+    R takes the frame of `old` and a direction across both vectors to the frame of `new` and that direction. Where they
+    are opposite, to 1e-10, any direction across will do, and the coordinate axis farthest from the line makes it: the
+    same one for all points of an element, whatever the rounding.
+    """
+    across = _cross(old, new)
+    opposite = _dot(across, across) < 1e-20
+    if opposite.any():
+        farthest = np.eye(3)[:, np.argmin(np.abs(old[:, opposite]), axis=0)]
+        across[:, opposite] = _cross(old[:, opposite], farthest)
+    frames = []
+    for tangent in (old, new):
+        side = across - _dot(across, tangent) * tangent
+        side /= np.sqrt(_dot(side, side))
+        frames.append((tangent, side, _cross(tangent, side)))
+    turn = np.zeros((3, 3, old.shape[1]))
+    for before, after in zip(*frames):
+        turn += after[:, None] * before[None]
+    for i in range(3):
+        turn[i, i] -= 1.0
+    return turn
 
 
 def chunk_ranges(n_cells: int, n_nodes: int) -> list[tuple[int, int]]:
@@ -440,8 +473,8 @@ def displacement_gradient(
     Returns
     -------
     numpy.ndarray
-        `(n_cells, 3, 3)`, or `(n_cells, p, 3, 3)` for given points; `[..., i, j] = du_i/dX_j`, dimensionless. Surface and
-        line elements in space: the small completion. NaN where an element has no volume.
+        `(n_cells, 3, 3)`, or `(n_cells, p, 3, 3)` for given points; `[..., i, j] = du_i/dX_j`, dimensionless.
+        Surface and line elements in space: the small completion. NaN where an element has no volume.
 
     Raises
     ------

@@ -92,6 +92,8 @@ class Model:
         `(k, 2, 3, 3)` rigid motions to take out, see `ElementChunk`.
     back_of
         `(n_cells,)` which of them, -1 for none; None when there are none.
+    poisson
+        Poisson's ratio of surfaces in space, for their thickness stretch; None: they keep their thickness.
     """
 
     result: Result
@@ -104,6 +106,7 @@ class Model:
     notes: tuple[str, ...] = ()
     back: Floats | None = None
     back_of: NDArray[np.int64] | None = None
+    poisson: float | None = None
 
     def chunk(
         self, block: ModelBlock, connectivity: NDArray[np.int64], index: NDArray[np.int64]
@@ -117,7 +120,7 @@ class Model:
                 same = bool((which == which[0]).all())
                 tensors = np.concatenate([self.back, np.zeros((1, 2, 3, 3))])
                 back = tensors[which[0]] if same else np.ascontiguousarray(np.moveaxis(tensors[which], 0, -1))
-        return ElementChunk(self.fields, connectivity, block.row, self.plane, back)
+        return ElementChunk(self.fields, connectivity, block.row, self.plane, back, self.poisson)
 
     def only(self, cells: NDArray[np.int64]) -> Model:
         """Return the model with these cells alone computed; the others count neither as computed nor as left out."""
@@ -153,6 +156,9 @@ def build_model(
     InputError
         No computable element, or a node order that cannot be right.
     """
+    options = plane or PlaneOptions()
+    if options.poisson is not None and not -1.0 < options.poisson <= 0.5:
+        raise UsageError(f"--poisson {options.poisson:g}: Poisson's ratio lies between -1 and 0.5.")
     found = find_displacement(result, displacement, displacement_scale)
     points = np.asarray(result.points, dtype=np.float64)
     if coordinates == "deformed":
@@ -163,7 +169,7 @@ def build_model(
     if all(row is None for row in rows):
         raise InputError(_nothing_to_compute(result))
     left_out, masks = _left_out(result, rows, skin, alive)
-    flat, values = _plane_mesh(result, rows, points, found.values, plane or PlaneOptions(), notes)
+    flat, values = _plane_mesh(result, rows, points, found.values, options, notes)
     blocks = []
     for block, row, mask in zip(result.blocks, rows, masks):
         kind: Kind | None = None
@@ -176,8 +182,9 @@ def build_model(
             f"{_where(result)}every cell is left out ({', '.join(left_out)}): nothing remains to compute."
         )
     return Model(
-        result, found, points, NodalFields(points, values), tuple(blocks), flat, left_out, tuple(notes)
-    )
+        result, found, points, NodalFields(points, values), tuple(blocks), flat, left_out, tuple(notes),
+        poisson=options.poisson,
+    )  # fmt: skip
 
 
 def _where(result: Result) -> str:
@@ -311,8 +318,8 @@ def _plane_mesh(
     if normal is None:
         if options.model is not None:
             raise UsageError(
-                f"{_where(result)}--plane {options.model} needs a mesh whose highest cells are two-dimensional and lie in "
-                "one coordinate plane; this one does not."
+                f"{_where(result)}--plane {options.model} needs a mesh whose highest cells are two-dimensional "
+                "and lie in one coordinate plane; this one does not."
             )
         return None, displacement
     used = _used(flat, result.n_points)
@@ -332,8 +339,6 @@ def _plane_mesh(
         _check_axis(result, points[used], normal, axis)
     if options.model == "stress" and options.poisson is None:
         raise UsageError("--plane stress needs --poisson NU: the strain across the plane follows from it.")
-    if options.poisson is not None and not -1.0 < options.poisson <= 0.5:
-        raise UsageError(f"--poisson {options.poisson:g}: Poisson's ratio lies between -1 and 0.5.")
     return Plane(normal, options.model, options.poisson, axis), displacement
 
 
@@ -363,6 +368,6 @@ def _check_axis(result: Result, points: Floats, normal: int, axis: int) -> None:
     low, high = float(radius.min()), float(radius.max())
     if low < -1e-9 * max(abs(low), abs(high)):
         raise UsageError(
-            f"{_where(result)}--plane axisymmetric about {'xyz'[axis]}: it reaches across the axis (radius {low:.6g} to "
-            f"{high:.6g}). Choose the other axis with --axis, or move the mesh."
+            f"{_where(result)}--plane axisymmetric about {'xyz'[axis]}: the mesh reaches across the axis "
+            f"(radius {low:.6g} to {high:.6g}). Choose the other axis with --axis, or move the mesh."
         )

@@ -9,6 +9,10 @@ import numpy as np
 from numpy.typing import NDArray
 
 _SAMPLE = 20_000
+_FEWEST = 8
+"""Different values needed to tell digits that were cut off from chance."""
+_ZERO = 1e-280
+"""Leftovers of a subtraction below this have no digits to speak of."""
 _MARK = 1e30  # from here on a number is no coordinate or displacement but a mark for "nothing here"
 
 
@@ -56,7 +60,7 @@ def storage_resolution(values: NDArray[Any], meant: int = MEANT_COORDINATE) -> R
         return Resolution(2.0**-11, "float16")
     flat = np.asarray(values, dtype=np.float64).reshape(-1)
     sample = _distinct(flat)
-    if len(sample) < 16:
+    if len(sample) < _FEWEST:
         return Resolution(2.0**-53, "float64")
     # values such as 0.5 fit float32 exactly without having been stored so: most must use its last bits
     as_single = sample.astype(np.float32).astype(np.float64)
@@ -71,14 +75,23 @@ def storage_resolution(values: NDArray[Any], meant: int = MEANT_COORDINATE) -> R
 def _distinct(flat: NDArray[np.float64]) -> NDArray[np.float64]:
     step = max(1, len(flat) // _SAMPLE)
     sample = flat[::step]
-    sample = sample[(np.abs(sample) < _MARK) & (sample != 0)]
+    sample = sample[(np.abs(sample) < _MARK) & (np.abs(sample) > _ZERO)]
     return np.unique(sample)
+
+
+def _regular(sample: NDArray[np.float64]) -> bool:
+    """Return whether sorted values lie on a regular grid: at most three different gaps, multiples of the smallest."""
+    gaps = np.diff(sample)
+    multiples = gaps / gaps.min()
+    return len(np.unique(np.rint(multiples))) <= 3 and bool(
+        (np.abs(multiples - np.rint(multiples)) < 0.05).all()
+    )
 
 
 def _decimal(values: NDArray[np.float64], low: int, high: int) -> Resolution | None:
     """Return the resolution of decimals with more than `low` and at most `high` digits, or None."""
     sample = _distinct(values.reshape(-1))
-    if len(sample) < 16:
+    if len(sample) < _FEWEST or _regular(sample):
         return None
     single = high < 8
     exponent = np.floor(np.log10(np.abs(sample)))
@@ -102,7 +115,7 @@ def _fixed(values: NDArray[np.float64], meant: int, most: float) -> Resolution |
     last digit as evenly as chance, and their gaps are not those of a regular grid.
     """
     sample = _distinct(values.reshape(-1))
-    if len(sample) < 16:
+    if len(sample) < _FEWEST or _regular(sample):
         return None
     largest = float(np.abs(sample).max())
     first = meant - int(np.floor(np.log10(largest)))
@@ -112,9 +125,8 @@ def _fixed(values: NDArray[np.float64], meant: int, most: float) -> Resolution |
             return None
         nearest = np.rint(scaled)
         if (np.abs(scaled - nearest) <= np.abs(scaled) * (0.1 / most) + 1e-9).all():
-            regular = len(np.unique(np.diff(nearest))) <= 3
             even = np.mean(np.fmod(np.abs(nearest), 10.0) != 0) > 0.8
-            if regular or not even or places < 1:
+            if not even or places < 1:
                 return None
             return Resolution(0.0, f"{places} decimals", 0.5 * 10.0**-places)
     return None

@@ -13,6 +13,7 @@ from unturn.kinematics._symmetric import Floats
 PERCENTILES = (50.0, 95.0, 99.0, 99.9)
 LOW_PERCENTILES = (0.1, 1.0, 5.0)
 _BINS = 4096
+_TIE = 1e-9  # share of the extreme within which cells count as equal
 
 
 @dataclass(frozen=True)
@@ -41,6 +42,12 @@ class Statistics:
     at_minimum: int
     mean: float
     percentiles: dict[float, float]
+
+
+def _first_extreme(values: Floats) -> int:
+    """Return the first position whose value is the largest to rounding: symmetric twins always name the same cell."""
+    largest = float(values.max())
+    return int(np.argmax(values >= largest - _TIE * abs(largest)))
 
 
 def weighted_percentiles(
@@ -114,7 +121,7 @@ def statistics(
     if not len(cells):
         nan = float("nan")
         return Statistics(0, len(finite), nan, nan, -1, -1, nan, dict.fromkeys(percentages, nan))
-    high, low = int(np.argmax(picked)), int(np.argmin(picked))
+    high, low = _first_extreme(picked), _first_extreme(-picked)
     total = float(weight.sum())
     mean = float((picked * weight).sum() / total) if total > 0 else float(picked.mean())
     found = weighted_percentiles(picked, weight, percentages) if percentages else []

@@ -64,7 +64,9 @@ def _kind(summary: Summary) -> str:
         }
         return said + f"plane {plane.model}{extra[plane.model]}".replace("plane axi", "axi")
     if kind == "surface":
-        return "surface mesh: in-plane strain of the mid-surface only"
+        nu = model.poisson
+        across = "" if nu is None else f"; finite measures: thickness of plane stress, nu = {nu}"
+        return f"surface mesh: in-plane strain of the mid-surface only{across}"
     if kind == "line":
         return "line mesh: axial strain only; twist and bending are not in the nodal displacements"
     return "solid mesh"

@@ -19,7 +19,7 @@ from unturn.jacobian import negative_at_nodes
 from unturn.midside import misplaced_mid_nodes
 from unturn.model import Model, PlaneOptions, build_model
 from unturn.numbering import element_numbers, node_numbers
-from unturn.precision import storage_resolution
+from unturn.precision import MEANT_DISPLACEMENT, storage_resolution
 from unturn.regions import find_regions, merge_coincident
 from unturn.result import Array, Result
 from unturn.statistics import statistics
@@ -118,10 +118,7 @@ def _array(
 
 
 def _size(result: Result) -> dict[str, Any]:
-    used = np.zeros(result.n_points, dtype=bool)
-    for block in result.blocks:
-        used[block.connectivity] = True
-    points = np.asarray(result.points, dtype=np.float64)[used]
+    points = np.asarray(result.points, dtype=np.float64)[used_points(result)]
     points = points[np.isfinite(points).all(axis=1)]
     if not len(points):
         return {"low": None, "high": None, "extent": None}
@@ -193,7 +190,9 @@ def _mesh(model: Model, found: dict[str, Any], threads: int | None) -> None:
     size = statistics(d.stretch, d.volume, cells, (50.0, 99.0))
     found["precision"] = {
         "points": storage_resolution(model.result.points).kind,
-        "displacement": " ".join(sorted({storage_resolution(a).kind for a in model.displacement.stored})),
+        "displacement": " ".join(
+            sorted({storage_resolution(a, MEANT_DISPLACEMENT).kind for a in model.displacement.stored})
+        ),
         "noise_floor": noise.percentiles[99.0],
         "strain_size": size.percentiles[99.0],
         "largest_rotation_degrees": math.degrees(float(np.nanmax(d.angle, initial=0.0))),
@@ -265,7 +264,7 @@ def _magnitudes(model: Model, found: Mapping[str, Any]) -> list[str]:
             f"the largest displacement ({moved:.3g}) exceeds the size of the model ({extent:.3g}): a large rigid motion, "
             "or a wrong unit"
         )
-    label, tolerance = merge_coincident(model.points)
+    label, tolerance = merge_coincident(model.points[used_points(model.result)])
     double = int((label != np.arange(len(label))).sum())
     if double:
         said.append(
@@ -275,10 +274,16 @@ def _magnitudes(model: Model, found: Mapping[str, Any]) -> list[str]:
     return said
 
 
-def _unreferenced(result: Result) -> list[str]:
+def used_points(result: Result) -> NDArray[np.bool_]:
+    """Return which points belong to a cell."""
     used = np.zeros(result.n_points, dtype=bool)
     for block in result.blocks:
         used[block.connectivity] = True
+    return used
+
+
+def _unreferenced(result: Result) -> list[str]:
+    used = used_points(result)
     free = np.flatnonzero(~used)
     return [f"{len(free)} points belong to no cell (first: point {int(free[0])})"] if len(free) else []
 

@@ -80,7 +80,13 @@ Plane = Annotated[
     PlaneChoice | None, typer.Option(help="What a plane mesh assumes of the direction across it.")
 ]
 Axis = Annotated[AxisChoice, typer.Option(help="Axis of revolution for --plane axisymmetric.")]
-Poisson = Annotated[float | None, typer.Option(metavar="NU", help="Poisson's ratio for --plane stress.")]
+Poisson = Annotated[
+    float | None,
+    typer.Option(
+        metavar="NU",
+        help="Poisson's ratio for --plane stress, and for the thickness of surfaces in finite measures.",
+    ),
+]
 Alive = Annotated[
     str | None,
     typer.Option(metavar="ARRAY", help="Cell array; cells where it is zero are left out as deleted."),

@@ -140,6 +140,7 @@ def strain(
         summary={"regions": tuple(region or ()), "solve": solve.value, "mode": mode, "at": at.value,
                  "equivalent_poisson": equivalent_poisson, "full": json is not None},
         table=displacement_table, step=step, prefix=prefix, overwrite=overwrite, picture=picture,
+        text_to_stderr=str(json) == "-",
     )  # fmt: skip
     if picture is not None and len(files) > 1:
         raise UsageError("--picture FILE.png draws one file; give one input file with it.")
@@ -147,7 +148,7 @@ def strain(
     failed: list[UnturnError] = []
     for number, path in enumerate(files):
         if number:
-            typer.echo()
+            typer.echo(err=job.text_to_stderr)
         try:
             data += job.run(path)
         except UnturnError as error:
@@ -177,6 +178,7 @@ class _Job:
     prefix: str
     overwrite: bool
     picture: Path | None
+    text_to_stderr: bool  # stdout is for the JSON then
 
     def run(self, path: Path) -> list[dict[str, Any]]:
         """Do one file and return its summaries as data."""
@@ -206,12 +208,15 @@ class _Job:
                 previous = tuple(r.motion for r in summary.removals)
                 writer.add(result, value)
                 data.append(self._data(summary, out))
-                typer.echo(_step_line(summary, index, value))
+                self._say(_step_line(summary, index, value))
         if summary is None:
             raise InputError(f"{path}: the series holds no step.")
-        typer.echo()
+        self._say("")
         self._print(summary, out, ())
         return data
+
+    def _say(self, text: str) -> None:
+        typer.echo(text, err=self.text_to_stderr)
 
     def _zero(self, opened: ResultFile) -> Result | None:
         if self.zero_step is None:
@@ -246,17 +251,17 @@ class _Job:
     def _print(self, summary: Summary, out: Path, lost: tuple[str, ...]) -> None:
         from unturn.summary_text import summary_text
 
-        typer.echo(summary_text(summary))
+        self._say(summary_text(summary))
         result = summary.fields.model.result
         before = len(result.point_data) + len(result.cell_data) + len(result.field_data)
         n = len(summary.fields.arrays) + (3 if summary.removals else 0)
-        typer.echo(f"wrote {out}: {n} array{'s' * (n != 1)} added, {before} unchanged")
+        self._say(f"wrote {out}: {n} array{'s' * (n != 1)} added, {before} unchanged")
         for sentence in lost:
-            typer.echo(f"note: {sentence}")
+            self._say(f"note: {sentence}")
         if self.picture is not None:
             from unturn.cli._picture import draw_summary
 
-            typer.echo(draw_summary(summary, self.picture))
+            self._say(draw_summary(summary, self.picture))
 
     def _data(self, summary: Summary, out: Path) -> dict[str, Any]:
         from unturn.summary import summary_data

@@ -62,21 +62,9 @@ FORMATS: tuple[Format, ...] = (
     _meshio("Exodus", ".exo", ".e", ".ex2"),
     _meshio("INP", ".inp"),
     _meshio("AVS-UCD", ".avs"),
-    _meshio("CGNS", ".cgns"),
     _meshio("Nastran bulk data", ".bdf", ".nas", ".fem"),
-    _meshio("Permas", ".dato", ".post"),
-    _meshio("TetGen", ".node", ".ele"),
-    _meshio("FLAC3D", ".f3grid"),
-    _meshio("MOAB", ".h5m"),
     _meshio("HMF", ".hmf"),
-    _meshio("MDPA", ".mdpa"),
     _meshio("Medit", ".mesh", ".meshb"),
-    _meshio("Netgen", ".vol"),
-    _meshio("PLY", ".ply"),
-    _meshio("SU2", ".su2"),
-    _meshio("Tecplot ASCII", ".tec"),
-    _meshio("UGRID", ".ugrid"),
-    _meshio("DOLFIN XML", ".xml"),
 )
 
 _BY_SUFFIX = {suffix: fmt for fmt in FORMATS for suffix in fmt.suffixes}

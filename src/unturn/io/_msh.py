@@ -3,17 +3,16 @@
 from __future__ import annotations
 
 import re
-import warnings
 from collections.abc import Callable, Iterator
 from dataclasses import dataclass, field
 from pathlib import Path
-from typing import Literal
 
 import numpy as np
 from numpy.typing import NDArray
 
 from unturn.errors import InputError
 from unturn.io._msh_cells import CELLS
+from unturn.io._msh_reader import MshReader, read_records
 from unturn.result import Array
 
 Integers = NDArray[np.int64]
@@ -55,87 +54,6 @@ class Msh:
     skipped: list[str] = field(default_factory=list)
 
 
-class _Reader:
-    """Numbers and lines of one file, one after the other, from text or binary."""
-
-    def __init__(self, path: Path, data: bytes) -> None:
-        self.path, self.data, self.at = path, data, 0
-        self.binary, self.version = False, ""
-        self.order: Literal["<", ">"] = "<"
-        self._text: Array | None = None
-        self._next = 0
-
-    def fault(self, text: str) -> InputError:
-        return InputError(
-            f"{self.path}: byte {self.at}: {text}. The file is damaged or incomplete: write it again."
-        )
-
-    def line(self) -> str:
-        """Return the next line that is not empty."""
-        while self.at < len(self.data):
-            end = self.data.find(b"\n", self.at)
-            end = len(self.data) if end < 0 else end
-            raw, self.at = self.data[self.at : end], end + 1
-            if raw.strip():
-                return raw.decode("utf-8", "replace").strip()
-        raise self.fault("the file ends too early")
-
-    def whole(self, text: str) -> int:
-        """Return one count that stands on a line of its own."""
-        if not re.fullmatch(r"-?\d{1,15}", text):
-            raise self.fault(f"{text[:40]!r} is not a whole number")
-        return int(text)
-
-    def begin(self, name: str) -> None:
-        """Prepare for `take` in a text file: all numbers up to the end of the section."""
-        if self.binary:
-            return
-        end = self.data.find(f"$End{name}".encode(), self.at)
-        if end < 0:
-            raise self.fault(f"the section ${name} has no end")
-        text = self.data[self.at : end].decode("ascii", "replace")
-        try:
-            with warnings.catch_warnings():
-                warnings.simplefilter("error")
-                self._text = np.fromstring(text, sep=" ") if text.strip() else np.empty(0)
-        except (ValueError, DeprecationWarning) as error:
-            raise self.fault(f"the section ${name} holds something that is not a number") from error
-        self._next, self.at = 0, end
-
-    def take(self, kind: str, count: int) -> Array:
-        """Return the next numbers: ``i`` 4-byte whole, ``z`` 8-byte whole, ``d`` floating-point."""
-        if count < 0:
-            raise self.fault("a count is below zero")
-        if self.binary:
-            code = {"i": "i4", "z": "u8", "d": "f8"}[kind]
-            size = count * int(code[1])
-            if self.at + size > len(self.data):
-                raise self.fault("the file ends too early")
-            raw = np.frombuffer(self.data, f"{self.order}{code}", count, self.at)
-            self.at += size
-            return raw.astype(np.float64 if kind == "d" else np.int64)
-        assert self._text is not None
-        if self._next + count > len(self._text):
-            raise self.fault("a section holds too few numbers")
-        found = self._text[self._next : self._next + count]
-        self._next += count
-        if kind == "d":
-            return found
-        if not np.isfinite(found).all() or (found != np.floor(found)).any() or (np.abs(found) > 2**53).any():
-            raise self.fault("a section holds a number that should be whole and is not")
-        return found.astype(np.int64)
-
-    def left(self) -> int:
-        """Return how many numbers of a text section are left."""
-        return 0 if self._text is None else len(self._text) - self._next
-
-    def end(self, name: str) -> None:
-        """Read the line that ends a section."""
-        found = self.line()
-        if found != f"$End{name}":
-            raise self.fault(f"$End{name} was expected and {found[:40]!r} found")
-
-
 def read_msh(path: Path) -> Msh:
     """Return the sections of an MSH file.
 
@@ -148,8 +66,8 @@ def read_msh(path: Path) -> Msh:
         data = path.read_bytes()
     except OSError as error:
         raise InputError(f"{path}: cannot be opened: {error.strerror}.") from error
-    reader, found = _Reader(path, data), Msh()
-    sections: dict[str, Callable[[_Reader, Msh], None]] = {
+    reader, found = MshReader(path, data), Msh()
+    sections: dict[str, Callable[[MshReader, Msh], None]] = {
         "MeshFormat": _format,
         "PhysicalNames": _names,
         "Entities": _entities,
@@ -175,7 +93,7 @@ def read_msh(path: Path) -> Msh:
     return found
 
 
-def _skip(reader: _Reader, found: Msh, name: str) -> None:
+def _skip(reader: MshReader, found: Msh, name: str) -> None:
     end = reader.data.find(f"$End{name}".encode(), reader.at)
     if end < 0:
         raise reader.fault(f"the section ${name[:40]} has no end")
@@ -185,7 +103,7 @@ def _skip(reader: _Reader, found: Msh, name: str) -> None:
     reader.line()
 
 
-def _format(reader: _Reader, found: Msh) -> None:
+def _format(reader: MshReader, found: Msh) -> None:
     words = reader.line().split()
     if len(words) != 3 or words[0] not in ("2.2", "4.1") or words[1] not in ("0", "1") or words[2] != "8":
         raise InputError(
@@ -201,7 +119,7 @@ def _format(reader: _Reader, found: Msh) -> None:
         reader.at += 4
 
 
-def _names(reader: _Reader, found: Msh) -> None:
+def _names(reader: MshReader, found: Msh) -> None:
     for _ in range(reader.whole(reader.line())):
         match = re.fullmatch(r'(\d+)\s+(-?\d+)\s+"(.*)"', reader.line())
         if match is None:
@@ -209,7 +127,7 @@ def _names(reader: _Reader, found: Msh) -> None:
         found.names[int(match[1]), int(match[2])] = match[3]
 
 
-def _entities(reader: _Reader, found: Msh) -> None:
+def _entities(reader: MshReader, found: Msh) -> None:
     reader.begin("Entities")
     for dimension, count in enumerate(reader.take("z", 4)):
         for _ in range(int(count)):
@@ -221,12 +139,12 @@ def _entities(reader: _Reader, found: Msh) -> None:
                 reader.take("i", int(reader.take("z", 1)[0]))
 
 
-def _nodes(reader: _Reader, found: Msh) -> None:
+def _nodes(reader: MshReader, found: Msh) -> None:
     if reader.version == "2.2":
         count = reader.whole(reader.line())
         reader.begin("Nodes")
         if reader.binary:
-            rows = _records(reader, [("n", "i4"), ("x", "f8", (3,))], count)
+            rows = read_records(reader, [("n", "i4"), ("x", "f8", (3,))], count)
             found.node_numbers, found.points = rows["n"].astype(np.int64), rows["x"].astype(np.float64)
             return
         table = reader.take("d", 4 * count).reshape(count, 4)
@@ -244,24 +162,13 @@ def _nodes(reader: _Reader, found: Msh) -> None:
     found.node_numbers, found.points = np.concatenate(numbers), np.concatenate(points)
 
 
-def _whole_column(reader: _Reader, column: Array) -> Integers:
+def _whole_column(reader: MshReader, column: Array) -> Integers:
     if not np.array_equal(column, np.floor(column)):
         raise reader.fault("a number of a node or element is not whole")
     return column.astype(np.int64)
 
 
-def _records(
-    reader: _Reader, fields: list[tuple[str, ...] | tuple[str, str, tuple[int, ...]]], count: int
-) -> Array:
-    dtype = np.dtype(fields).newbyteorder(reader.order)
-    if count < 0 or reader.at + count * dtype.itemsize > len(reader.data):
-        raise reader.fault("the file ends too early")
-    rows: Array = np.frombuffer(reader.data, dtype, count, reader.at)
-    reader.at += count * dtype.itemsize
-    return rows
-
-
-def _elements(reader: _Reader, found: Msh) -> None:
+def _elements(reader: MshReader, found: Msh) -> None:
     if reader.version == "4.1":
         found.chunks.extend(_elements_41(reader, found))
         return
@@ -270,13 +177,13 @@ def _elements(reader: _Reader, found: Msh) -> None:
     found.chunks.extend(_elements_22_binary(reader, count) if reader.binary else _elements_22(reader, count))
 
 
-def _width(reader: _Reader, kind: int) -> int:
+def _width(reader: MshReader, kind: int) -> int:
     if kind not in CELLS:
         raise InputError(f"{reader.path}: elements of MSH type {kind} are not read. Save the mesh as VTU.")
     return CELLS[kind][1]
 
 
-def _elements_41(reader: _Reader, found: Msh) -> Iterator[Chunk]:
+def _elements_41(reader: MshReader, found: Msh) -> Iterator[Chunk]:
     reader.begin("Elements")
     n_blocks, *_ = (int(v) for v in reader.take("z", 4))
     for _ in range(n_blocks):
@@ -288,7 +195,7 @@ def _elements_41(reader: _Reader, found: Msh) -> Iterator[Chunk]:
         yield Chunk(kind, table[:, 0], table[:, 1:], np.full(count, tag), [physical] * count)
 
 
-def _elements_22_binary(reader: _Reader, count: int) -> Iterator[Chunk]:
+def _elements_22_binary(reader: MshReader, count: int) -> Iterator[Chunk]:
     while count > 0:
         kind, n, n_tags = (int(v) for v in reader.take("i", 3))
         if n < 1 or n_tags < 0:
@@ -299,7 +206,7 @@ def _elements_22_binary(reader: _Reader, count: int) -> Iterator[Chunk]:
         count -= n
 
 
-def _elements_22(reader: _Reader, count: int) -> Iterator[Chunk]:
+def _elements_22(reader: MshReader, count: int) -> Iterator[Chunk]:
     flat = reader.take("i", reader.left())
     rows: list[list[int]] = []
     head, numbers, at = (0, 0), flat.tolist(), 0
@@ -330,7 +237,7 @@ def _chunk_22(kind: int, table: Integers, n_tags: int) -> Chunk:
     return Chunk(kind, table[:, 0], table[:, 1 + n_tags :], entity, physical)
 
 
-def _data(reader: _Reader, section: str) -> Data:
+def _data(reader: MshReader, section: str) -> Data:
     strings = [reader.line().strip('"') for _ in range(reader.whole(reader.line()))]
     try:
         reals = [float(reader.line()) for _ in range(reader.whole(reader.line()))]
@@ -342,7 +249,7 @@ def _data(reader: _Reader, section: str) -> Data:
     step, width, count = whole[0], whole[1], whole[2]
     reader.begin(section)
     if reader.binary:
-        rows = _records(reader, [("n", "i4"), ("v", "f8", (width,))], count)
+        rows = read_records(reader, [("n", "i4"), ("v", "f8", (width,))], count)
         numbers, values = rows["n"].astype(np.int64), rows["v"].astype(np.float64).reshape(count, width)
     else:
         table = reader.take("d", count * (1 + width)).reshape(count, 1 + width)

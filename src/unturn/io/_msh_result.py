@@ -68,9 +68,9 @@ class MshFile:
         return Result(
             msh.points,
             blocks,
-            {"gmsh:node": msh.node_numbers, **point_data},
+            {"node_id": msh.node_numbers, **point_data},
             {
-                "gmsh:element": numbers,
+                "element_id": numbers,
                 "gmsh:physical": np.array(physical, np.int64),
                 "gmsh:geometrical": np.concatenate([c.entity for c in msh.chunks]),
                 **cell_data,

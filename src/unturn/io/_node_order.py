@@ -7,6 +7,7 @@ from dataclasses import replace
 import numpy as np
 from numpy.typing import NDArray
 
+from unturn.elements import ELEMENTS
 from unturn.errors import InputError
 from unturn.result import Array, CellBlock
 
@@ -17,35 +18,19 @@ _NEARER = 1.05
 Places = tuple[tuple[int, ...], ...]
 
 
-def _ring(*nodes: int) -> Places:
-    return tuple(zip(nodes, (*nodes[1:], nodes[0])))
+def _places() -> dict[str, Places]:
+    """Return the corners that each further node of an element lies in the middle of."""
+    found: dict[str, Places] = {}
+    for name, row in ELEMENTS.items():
+        weights = ELEMENTS[row.shape.name].shape_functions(row.nodes[row.n_corners :])
+        around = [np.flatnonzero(np.abs(w) > 1e-9) for w in weights]
+        if around and all(np.allclose(w[held], 1 / len(held)) for w, held in zip(weights, around)):
+            found[name] = tuple(tuple(int(corner) for corner in held) for held in around)
+    return found
 
 
-_TETRA: Places = (*_ring(0, 1, 2), (0, 3), (1, 3), (2, 3))
-_PYRAMID: Places = (*_ring(0, 1, 2, 3), (0, 4), (1, 4), (2, 4), (3, 4))
-_WEDGE: Places = (*_ring(0, 1, 2), *_ring(3, 4, 5), (0, 3), (1, 4), (2, 5))
-_HEXAHEDRON: Places = (*_ring(0, 1, 2, 3), *_ring(4, 5, 6, 7), (0, 4), (1, 5), (2, 6), (3, 7))
-_SIDES: Places = ((0, 4, 7, 3), (1, 2, 6, 5), (0, 1, 5, 4), (3, 2, 6, 7))
-_FLAT: Places = (*_ring(0, 1, 2, 3), (0, 1, 2, 3))
-PLACES: dict[str, Places] = {
-    "line3": ((0, 1),),
-    "triangle6": _ring(0, 1, 2),
-    "triangle7": (*_ring(0, 1, 2), (0, 1, 2)),
-    "quad8": _ring(0, 1, 2, 3),
-    "quad9": _FLAT,
-    "tetra10": _TETRA,
-    "pyramid13": _PYRAMID,
-    "pyramid14": (*_PYRAMID, (0, 1, 2, 3)),
-    "wedge15": _WEDGE,
-    "wedge18": (*_WEDGE, (0, 1, 4, 3), (1, 2, 5, 4), (2, 0, 3, 5)),
-    "hexahedron20": _HEXAHEDRON,
-    "hexahedron24": (*_HEXAHEDRON, *_SIDES),
-    "hexahedron27": (*_HEXAHEDRON, *_SIDES, (0, 1, 2, 3), (4, 5, 6, 7), tuple(range(8))),
-}
-"""The corners that each further node lies in the middle of, in VTK's order.
-
-Source: VTK 9.7, class references of the quadratic cells.
-"""
+PLACES: dict[str, Places] = _places()
+"""The corners that each further node lies in the middle of, in VTK's order; from the element table."""
 
 
 def checked_order(
@@ -103,6 +88,8 @@ def checked_order(
 
 def _right_order(points: Array, block: CellBlock) -> list[int] | None:
     """Return the columns that bring the nodes into order, an empty list for none needed, None if unknown."""
+    if block.cell_type == "VTK_LAGRANGE_HEXAHEDRON":
+        return _right_lagrange_hexahedron(points, block)
     places = PLACES.get(block.cell_type)
     if places is None or not len(block):
         return []
@@ -119,6 +106,33 @@ def _right_order(points: Array, block: CellBlock) -> list[int] | None:
     if count.max() < 0.9 * len(nearest) or len(np.unique(best)) != len(best):
         return None
     return [*range(corners), *(int(k) + corners for k in np.argsort(best))]
+
+
+def _right_lagrange_hexahedron(points: Array, block: CellBlock) -> list[int]:
+    """Return the columns that exchange the upright edges at corners 2 and 3, an empty list for none needed.
+
+    Notes
+    -----
+    VTK exchanged these two edges between its versions 8 and 9, and its readers turn files of the older format versions
+    round. Some writers state an old version over nodes in the new order, and some the other way round.
+    """
+    n_nodes = block.connectivity.shape[1]
+    order = round(n_nodes ** (1 / 3)) - 1
+    if (order + 1) ** 3 != n_nodes or order < 2 or not len(block):
+        return []
+    inner = order - 1
+    starts = (8 + 10 * inner, 8 + 11 * inner)
+    picked = np.unique(np.linspace(0, len(block) - 1, _SAMPLE).astype(np.int64))
+    nodes = points[block.connectivity[picked]].astype(np.float64)
+    middles = np.stack([nodes[:, [2, 6]].mean(axis=1), nodes[:, [3, 7]].mean(axis=1)], axis=1)
+    held = nodes[:, [start + inner // 2 for start in starts]]
+    own, other = (np.linalg.norm(held - m, axis=2) for m in (middles, middles[:, ::-1]))
+    if (own > other).all(axis=1).mean() < 0.5:
+        return []
+    columns = np.arange(n_nodes)
+    for here, there in (starts, starts[::-1]):
+        columns[here : here + inner] = np.arange(there, there + inner)
+    return [int(c) for c in columns]
 
 
 def _distances(points: Array, connectivity: NDArray[np.int64], places: Places) -> tuple[Array, int]:

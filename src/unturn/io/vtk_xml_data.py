@@ -60,7 +60,7 @@ class Stream:
 
     def take(self, start: int, n: int) -> tuple[bytes, int]:
         """Return n decoded bytes that begin at an encoded position, and the encoded position after them."""
-        size = -(-n // 3) * 4 if self.is_text else n
+        size = _characters(n) if self.is_text else n
         if n < 0 or start + size > len(self.data):
             raise Unsound(
                 f"its data end early: {size} bytes are needed and {len(self.data) - start} are left"
@@ -98,16 +98,30 @@ def tail(stream: Stream, encoding: Encoding, n: int) -> bytes:
     if not stream.is_text:
         end = stream.start + width + total
         return bytes(stream.data[end - n : end])
-    skip = (width + total - n) // 3  # whole groups of three bytes before the tail
-    part, _ = stream.take(stream.start + 4 * skip, width + total - 3 * skip)
+    start, before = (stream.start + _characters(width), 0) if _apart(stream, width) else (stream.start, width)
+    skip = (before + total - n) // 3  # whole groups of three bytes before the tail
+    part, _ = stream.take(start + 4 * skip, before + total - 3 * skip)
     return part[len(part) - n :]
+
+
+def _characters(n: int) -> int:
+    """Return the length of n bytes as base64 text."""
+    return -(-n // 3) * 4
+
+
+def _apart(stream: Stream, width: int) -> bool:
+    """Whether the length in front of uncompressed data is base64 text of its own, which ends in padding."""
+    end = stream.start + _characters(width)
+    return stream.is_text and bytes(stream.data[end - -width % 3 : end]) == b"=" * (-width % 3)
 
 
 def _plain(stream: Stream, encoding: Encoding) -> int:
     width = encoding.header.itemsize
     head, _ = stream.take(stream.start, width)
     n = int(np.frombuffer(head, encoding.header)[0])
-    size = -(-(width + n) // 3) * 4 if stream.is_text else width + n
+    size = _characters(width + n) if stream.is_text else width + n
+    if _apart(stream, width):
+        size = _characters(width) + _characters(n)
     left = len(stream.data) - stream.start
     if size > left or (stream.whole and size != left):
         raise Unsound(f"it says it has {n} bytes, which does not fit the {left} bytes that are there")
@@ -128,7 +142,7 @@ def _compressed(stream: Stream, encoding: Encoding) -> tuple[int, int, Any, Any]
         sizes[-1] = last
     needed = sum(lengths)
     if stream.is_text:
-        needed = -(-needed // 3) * 4
+        needed = _characters(needed)
     if sum(sizes) > 10_000 * needed + 2**20:  # no compressor packs that well
         raise Unsound(f"it says that {needed} bytes unpack to {sum(sizes)}")
     left = len(stream.data) - position

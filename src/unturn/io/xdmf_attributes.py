@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 
 from unturn.io.xdmf_hdf import hdf_dataset
 from unturn.io.xdmf_items import ItemReader
-from unturn.io.xdmf_tree import Node, attribute, fault, local_name
+from unturn.io.xdmf_xml import Node, attribute, fault, local_name
 from unturn.result import Array, CellBlock
 
 TENSOR6 = ("XX", "YY", "ZZ", "XY", "YZ", "XZ")
@@ -177,7 +177,7 @@ def _function(
         return kept
     if degree == "0" and family in ("DG", "DISCONTINUOUS LAGRANGE", "DQ", "DPC"):
         return Field("cell", name, values[table] if table.shape[1] > 1 else values[table[:, 0]], kind, ())
-    if family in ("CG", "LAGRANGE", "P") and degree in ("1", "2"):
+    if family in ("CG", "LAGRANGE", "P") and degree == ("2" if blocks[0].cell_type[-1].isdigit() else "1"):
         found = _on_nodes(values, table, blocks[0], n_points)
         if found is not None:
             return Field("point", name, found, kind, ())

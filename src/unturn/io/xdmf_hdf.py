@@ -9,7 +9,7 @@ import h5py
 import numpy as np
 
 from unturn.errors import InputError
-from unturn.io.xdmf_tree import Node, fault
+from unturn.io.xdmf_xml import Node, fault
 from unturn.result import Array
 
 _MAX_RATIO = 100_000

@@ -2,35 +2,17 @@
 
 from __future__ import annotations
 
-import bz2
 import re
 import warnings
-import zlib
-from typing import Any, Literal
+from typing import Any
 
 import numpy as np
 
-from unturn.io.xdmf_hdf import beside, hdf_dataset, load
-from unturn.io.xdmf_tree import MAX_DEPTH, Node, XdmfTree, attribute, fault, local_name
+from unturn.io.xdmf_binary import dimensions, needed_dimensions, number_type, read_binary
+from unturn.io.xdmf_hdf import hdf_dataset, load
+from unturn.io.xdmf_tree import MAX_DEPTH, XdmfTree
+from unturn.io.xdmf_xml import Node, attribute, fault, local_name
 from unturn.result import Array
-
-TYPES: dict[tuple[str, int], str] = {
-    ("float", 4): "f4",
-    ("float", 8): "f8",
-    ("int", 1): "i1",
-    ("int", 2): "i2",
-    ("int", 4): "i4",
-    ("int", 8): "i8",
-    ("uint", 1): "u1",
-    ("uint", 2): "u2",
-    ("uint", 4): "u4",
-    ("uint", 8): "u8",
-    ("char", 1): "i1",
-    ("uchar", 1): "u1",
-    ("short", 2): "i2",
-    ("ushort", 2): "u2",
-}
-_ONE_SIZE = {"char": 1, "uchar": 1, "short": 2, "ushort": 2}
 
 
 class ItemReader:
@@ -80,14 +62,14 @@ class ItemReader:
         if layout == "xml":
             return self._text(node)
         if layout == "binary":
-            return _binary(node)
+            return read_binary(node)
         raise fault(
             node, f"a DataItem of format {attribute(node, 'Format')!r} is not read; XML, HDF and Binary are."
         )
 
     def _text(self, node: Node) -> Array:
-        shape = _needed_dimensions(node)
-        dtype, stated = _dtype(node)
+        shape = needed_dimensions(node)
+        dtype, stated = number_type(node)
         wide = {"f": "f8", "i": "i8", "u": "u8"}[dtype.kind]
         text = (node.text or "").strip()
         if wide == "u8" and "-" in text:
@@ -108,9 +90,10 @@ class ItemReader:
         if dtype.kind == "f":
             if dtype.itemsize == 4 and not stated and self._loses(values, narrow):
                 self.notes[
-                    "Some numbers in the XML have more digits than their 4 bytes hold; a DataItem without "
-                    'Precision is 4 bytes in XDMF. Digits after the seventh are lost: write Precision="8".'
+                    "Some numbers in the XML have more digits than the 4 bytes of a DataItem that states no "
+                    "Precision; they were read with all their digits."
                 ] = None
+                return values
         elif not np.array_equal(values, narrow):
             raise fault(
                 node, f"a number does not fit into {8 * dtype.itemsize} bits, the Precision of this DataItem."
@@ -179,34 +162,6 @@ class ItemReader:
         return np.stack([d[:, 0] if column else d for d in data], axis=-1)
 
 
-def dimensions(node: Node) -> tuple[int, ...] | None:
-    """Return ``Dimensions`` as numbers, None when the element has none."""
-    text = attribute(node, "Dimensions")
-    if not text:
-        return None
-    words = text.split()
-    if len(words) > 32 or not all(re.fullmatch(r"\d{1,15}", w) for w in words):
-        raise fault(node, f"Dimensions={text!r} is not a list of whole numbers.")
-    return tuple(int(w) for w in words)
-
-
-def _needed_dimensions(node: Node) -> tuple[int, ...]:
-    shape = dimensions(node)
-    if shape is None:
-        raise fault(node, "a DataItem without Dimensions: its size cannot be checked.")
-    return shape
-
-
-def _dtype(node: Node) -> tuple[np.dtype[Any], bool]:
-    kind = attribute(node, "NumberType", "DataType", default="Float")
-    precision = attribute(node, "Precision")
-    size = precision or str(_ONE_SIZE.get(kind.lower(), 4))
-    code = TYPES.get((kind.lower(), int(size) if re.fullmatch(r"\d{1,3}", size) else 0))
-    if code is None:
-        raise fault(node, f"NumberType={kind!r} with Precision={size!r} is no number type of XDMF.")
-    return np.dtype(code), bool(precision)
-
-
 def _word(dtype: np.dtype[Any]) -> str:
     return {"f": "floating-point", "i": "whole", "u": "unsigned whole"}[dtype.kind]
 
@@ -256,41 +211,3 @@ def _slices(
                 node, f"a HyperSlab from {s} by {d}, {c} times, does not lie inside an axis of length {n}."
             )
     return tuple(slice(s, s + (c - 1) * d + 1, d) for s, d, c in zip(start, stride, count))
-
-
-def _binary(node: Node) -> Array:
-    shape = _needed_dimensions(node)
-    dtype, _ = _dtype(node)
-    endian = attribute(node, "Endian", default="Native").lower()
-    orders: dict[str, Literal["=", "<", ">"]] = {"native": "=", "little": "<", "big": ">"}
-    order = orders.get(endian)
-    seek = attribute(node, "Seek", default="0")
-    packing = attribute(node, "Compression", default="Raw").lower()
-    if order is None or not re.fullmatch(r"\d{1,18}", seek) or packing not in ("raw", "zlib", "bzip2"):
-        raise fault(node, f"Endian={endian!r}, Seek={seek!r}, Compression={packing!r} is not understood.")
-    path = beside(node, (node.text or "").strip(), "binary file")
-    n_bytes = int(np.prod(shape, dtype=object)) * dtype.itemsize
-    with open(path, "rb") as stream:
-        size = path.stat().st_size
-        if packing == "raw":
-            if int(seek) + n_bytes > size:
-                raise fault(
-                    node, f"{path.name} has {size} bytes; {n_bytes} bytes from byte {seek} on are asked for."
-                )
-            stream.seek(int(seek))
-            raw = stream.read(n_bytes)
-        else:
-            stream.seek(min(int(seek), size))
-            raw = _unpack(stream.read(), packing, n_bytes, node)
-    if len(raw) != n_bytes:
-        raise fault(node, f"{path.name} gave {len(raw)} bytes; {n_bytes} were asked for.")
-    return np.frombuffer(raw, dtype=dtype.newbyteorder(order)).astype(dtype).reshape(shape)
-
-
-def _unpack(packed: bytes, packing: str, n_bytes: int, node: Node) -> bytes:
-    try:
-        if packing == "zlib":
-            return zlib.decompressobj().decompress(packed, n_bytes + 1)
-        return bz2.BZ2Decompressor().decompress(packed, n_bytes + 1)
-    except (zlib.error, OSError, EOFError) as error:
-        raise fault(node, f"the {packing} data cannot be unpacked: {error}.") from error

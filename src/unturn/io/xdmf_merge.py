@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 from unturn.io.xdmf_attributes import Field, Kept, read_attribute, read_set
 from unturn.io.xdmf_items import ItemReader
 from unturn.io.xdmf_mesh import mesh_key, read_cells, read_points
-from unturn.io.xdmf_tree import Node, attribute, fault, local_name
+from unturn.io.xdmf_xml import Node, attribute, fault, local_name
 from unturn.result import Array, Association, CellBlock
 
 

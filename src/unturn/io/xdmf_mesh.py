@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 
 from unturn.io.xdmf_items import ItemReader
 from unturn.io.xdmf_structured import points_from_origin, points_on_axes, structured_cells
-from unturn.io.xdmf_tree import Node, attribute, fault, local_name
+from unturn.io.xdmf_xml import Node, attribute, fault, local_name
 from unturn.result import Array, CellBlock
 
 # name in files, code in mixed streams, meshio's name, nodes (0: stated by the file).
@@ -49,6 +49,12 @@ _ALIASES = {
 _ALIASES |= {f"hex{n}": f"hexahedron{n}" for n in (20, 24, 27)}
 _ALIASES |= {"quad": "quadrilateral", "tet": "tetrahedron", "hex": "hexahedron"}
 _BY_NAME = {name.lower().replace("_", ""): (cell_type, nodes) for name, _, cell_type, nodes in CELLS}
+# Source: DOLFINx 0.11, io/xdmf_utils.cpp: names beyond XDMF's own, nodes in VTK's order. Read, not written.
+_BY_NAME |= {
+    "triangle10": ("VTK_LAGRANGE_TRIANGLE", 10),
+    "quadrilateral16": ("VTK_LAGRANGE_QUADRILATERAL", 16),
+    "tetrahedron20": ("VTK_LAGRANGE_TETRAHEDRON", 20),
+}
 
 
 def read_cells(items: ItemReader, topology: Node) -> tuple[tuple[CellBlock, ...], np.dtype[np.generic]]:

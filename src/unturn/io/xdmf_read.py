@@ -15,7 +15,8 @@ from unturn.io._node_order import checked_order
 from unturn.io.xdmf_attributes import Kept
 from unturn.io.xdmf_items import ItemReader
 from unturn.io.xdmf_merge import merge, read_part
-from unturn.io.xdmf_tree import MAX_DEPTH, Node, XdmfTree, attribute, fault, local_name
+from unturn.io.xdmf_tree import MAX_DEPTH, XdmfTree
+from unturn.io.xdmf_xml import Node, attribute, fault, local_name
 from unturn.result import Array, Association, Result, Steps
 
 # Source: VTK 9.7, vtkDataSetAttributes.h, CellGhostTypes.

@@ -6,8 +6,9 @@ import re
 
 import numpy as np
 
-from unturn.io.xdmf_items import ItemReader, dimensions
-from unturn.io.xdmf_tree import Node, attribute, fault
+from unturn.io.xdmf_binary import dimensions
+from unturn.io.xdmf_items import ItemReader
+from unturn.io.xdmf_xml import Node, attribute, fault
 from unturn.result import Array, CellBlock
 
 _MAX_STRUCTURED = 1 << 26

@@ -1,4 +1,4 @@
-"""The XML side of an XDMF file: parsed without outside entities, includes and references followed.
+"""The elements of an XDMF index, includes and references followed.
 
 The tree is left as it was read; `XdmfTree.children` puts in what an include points to, so that two
 steps which include one mesh hand out the very same elements.
@@ -9,107 +9,13 @@ from __future__ import annotations
 import re
 from collections.abc import Iterator
 from pathlib import Path
-from xml.etree import ElementTree as ET
-from xml.parsers import expat
 
-from unturn.errors import InputError
+from unturn.io.xdmf_path import evaluate
+from unturn.io.xdmf_xml import Node, attribute, fault, local_name, parse
 
 MAX_DEPTH = 16
-MAX_NESTING = 64
 MAX_INCLUDED = 200_000
 MAX_SEARCHED = 100_000_000
-MAX_ENTITY = 256
-_STEP = re.compile(r"(//?)([A-Za-z_*][\w.:-]*|\*)((?:\[[^\]]*\])*)")
-_PREDICATE = re.compile(r"\[([^\]]*)\]")
-_HAS = re.compile(r"""@([\w:-]+)\s*=\s*(?:"([^"]*)"|'([^']*)')$""")
-
-
-class Node(ET.Element):
-    """An XML element that knows its line and the file it stands in."""
-
-    line: int = 0
-    file: Path = Path()
-
-
-def local_name(node: ET.Element) -> str:
-    """Return the tag without its namespace."""
-    return node.tag.rpartition("}")[2]
-
-
-def attribute(node: ET.Element, *names: str, default: str = "") -> str:
-    """Return the first of these XML attributes that is set, stripped."""
-    for name in names:
-        if name in node.attrib:
-            return str(node.attrib[name]).strip()
-    return default
-
-
-def fault(node: ET.Element, text: str) -> InputError:
-    """Return the error for something wrong with this element, with file and line in front."""
-    place = f"{node.file}: line {node.line}: " if isinstance(node, Node) else ""
-    return InputError(f"{place}{text}")
-
-
-def parse(path: Path) -> Node:
-    """Return the root element of an XML file.
-
-    Raises
-    ------
-    InputError
-        The file is missing, no XML, or declares an entity that is nested, long or outside the file.
-    """
-    builder = ET.TreeBuilder(element_factory=Node)
-    parser = expat.ParserCreate(namespace_separator="}")
-    parser.buffer_text = True
-    parser.SetParamEntityParsing(expat.XML_PARAM_ENTITY_PARSING_NEVER)
-
-    depth = 0
-
-    def start(tag: str, attrib: dict[str, str]) -> None:
-        nonlocal depth
-        depth += 1
-        if depth > MAX_NESTING:
-            raise InputError(f"{path}: line {parser.CurrentLineNumber}: elements nested {depth} deep.")
-        node = builder.start(tag, attrib)
-        assert isinstance(node, Node)
-        node.line, node.file = parser.CurrentLineNumber, path
-
-    def end(tag: str) -> None:
-        nonlocal depth
-        depth -= 1
-        builder.end(tag)
-
-    def skipped(name: str, *_: object) -> None:
-        raise InputError(
-            f"{path}: line {parser.CurrentLineNumber}: the entity {name!r} is not declared in this file."
-        )
-
-    def entity(name: str, is_parameter: int, value: str | None, *_: object) -> None:
-        if is_parameter or value is None or len(value) > MAX_ENTITY or "&" in value or "<" in value:
-            raise InputError(
-                f"{path}: line {parser.CurrentLineNumber}: the entity {name!r} is not a short text of this "
-                "file; entities that point elsewhere or into each other are not followed. "
-                "Write its text in place."
-            )
-
-    parser.StartElementHandler = start
-    parser.EndElementHandler = end
-    parser.CharacterDataHandler = builder.data
-    parser.EntityDeclHandler = entity
-    parser.SkippedEntityHandler = skipped
-    try:
-        with open(path, "rb") as stream:
-            parser.ParseFile(stream)
-        root = builder.close()
-    except OSError as error:
-        raise InputError(f"{path}: cannot be opened: {error.strerror or error}.") from error
-    except (expat.ExpatError, ValueError, AssertionError, LookupError) as error:
-        raise InputError(
-            f"{path}: is not complete XML ({error}). "
-            "The file was cut short or is no XDMF index: write it again."
-        ) from error
-    assert isinstance(root, Node)
-    return root
 
 
 class XdmfTree:
@@ -233,66 +139,5 @@ class XdmfTree:
                 raise fault(
                     of or anchor, "too many different paths into too large a file; it is not followed."
                 )
-            self._found[key] = _evaluate(self._roots[anchor.file.resolve()], expression, of or anchor)
+            self._found[key] = evaluate(self._roots[anchor.file.resolve()], expression, of or anchor)
         return self._found[key]
-
-
-def _evaluate(root: Node, expression: str, of: Node) -> list[Node]:
-    text = expression.strip()
-    wrapped = re.fullmatch(r"(xpointer|element)\s*\((.*)\)", text, re.DOTALL)
-    if wrapped:
-        text = wrapped[2].strip()
-    if wrapped and wrapped[1] == "element":
-        return _by_position(root, text, of)
-    top = Node("")
-    top.append(root)
-    found, position = [top], 0
-    while position < len(text):
-        step = _STEP.match(text, position)
-        if step is None:
-            raise fault(of, f"the path {expression!r} is written in a way that is not understood.")
-        found = _take_step(found, step[1] == "//", step[2], _PREDICATE.findall(step[3]), of, expression)
-        position = step.end()
-    return [] if found == [top] else found
-
-
-def _by_position(root: Node, text: str, of: Node) -> list[Node]:
-    if not re.fullmatch(r"(/\d{1,9})+", text):
-        raise fault(of, f"the path {text!r} is written in a way that is not understood.")
-    top = Node("")
-    top.append(root)
-    node = top
-    for number in text.split("/")[1:]:
-        inner = list(node)
-        if not 1 <= int(number) <= len(inner):
-            return []
-        node = inner[int(number) - 1]  # type: ignore[assignment]
-    return [node]
-
-
-def _take_step(
-    nodes: list[Node], anywhere: bool, name: str, predicates: list[str], of: Node, expression: str
-) -> list[Node]:
-    parents: list[Node] = []
-    for node in nodes:
-        parents.extend(node.iter() if anywhere else [node])  # type: ignore[arg-type]
-    taken: dict[int, Node] = {}
-    for parent in parents:
-        inner = [c for c in parent if isinstance(c, Node) and name in ("*", local_name(c))]
-        for predicate in predicates:
-            inner = _filter(inner, predicate.strip(), of, expression)
-        taken.update((id(c), c) for c in inner)
-    return list(taken.values())
-
-
-def _filter(nodes: list[Node], predicate: str, of: Node, expression: str) -> list[Node]:
-    if re.fullmatch(r"\d{1,9}", predicate):
-        return nodes[int(predicate) - 1 : int(predicate)] if int(predicate) else []
-    has = _HAS.match(predicate)
-    if has:
-        wanted = has[2] if has[2] is not None else has[3]
-        return [n for n in nodes if n.get(has[1]) == wanted]
-    tags = [part.strip() for part in re.split(r"\bor\b", predicate)]
-    if all(re.fullmatch(r"self::[\w.-]+", tag) for tag in tags):
-        return [n for n in nodes if f"self::{local_name(n)}" in tags]
-    raise fault(of, f"the path {expression!r} has a condition that is not understood: [{predicate}].")

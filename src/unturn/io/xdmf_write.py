@@ -4,19 +4,17 @@ from __future__ import annotations
 
 import os
 import re
-from collections.abc import Sequence
 from pathlib import Path
 from typing import Any
 from xml.etree import ElementTree as ET
 
 import h5py
 import numpy as np
-from numpy.typing import NDArray
 
 from unturn.errors import UsageError
-from unturn.io.xdmf_attributes import COMPONENT_NAMES, TENSOR6, TENSOR6_IN_FILE, TENSOR6_ORDER
-from unturn.io.xdmf_mesh import BY_TYPE, COUNTED
-from unturn.io.xdmf_read import XdmfCarrier
+from unturn.io._atomic import ensure_room
+from unturn.io.xdmf_attributes import COMPONENT_NAMES, TENSOR6_IN_FILE, TENSOR6_ORDER
+from unturn.io.xdmf_layout import carrier_of, check_names, form_of, same_mesh, topology_of
 from unturn.result import Array, Association, Result
 
 _NUMBER_TYPES = {
@@ -32,7 +30,6 @@ _NUMBER_TYPES = {
     "u8": ("UInt", "8"),
 }
 _CENTERS: tuple[tuple[Association, str], ...] = (("point", "Node"), ("cell", "Cell"), ("field", "Grid"))
-_NOT_XML = re.compile("[\x00-\x08\x0b\x0c\x0e-\x1f\ud800-\udfff\ufffe\uffff]")
 
 
 def write(result: Result, path: Path) -> tuple[str, ...]:
@@ -54,7 +51,7 @@ def write(result: Result, path: Path) -> tuple[str, ...]:
     with _Store(path) as store:
         value = result.steps.values[result.steps.current] if result.steps else None
         grid = store.grid(result, "mesh", value)
-        for where, attributes, text in _carrier(result).information:
+        for where, attributes, text in carrier_of(result).information:
             parent = {"Xdmf": store.root, "Domain": store.domain}.get(where, grid)
             ET.SubElement(parent, "Information", dict(attributes)).text = text or None
         store.domain.append(grid)
@@ -134,7 +131,8 @@ class _Store:
 
     def grid(self, result: Result, name: str, value: float | None) -> ET.Element:
         """Return the Grid of one result, its data stored."""
-        _check_names(result)
+        check_names(result)
+        ensure_room(self.h5_path, _size(result))
         group = f"/grid_{self._grids}"
         self._grids += 1
         grid = ET.Element("Grid", Name=name, GridType="Uniform")
@@ -151,16 +149,16 @@ class _Store:
         for key, members in result.groups.items():
             element = ET.SubElement(grid, "Set", Name=key, SetType="Cell")
             self._item(element, np.asarray(members), group, f"cell set {key!r}")
-        for kept in _carrier(result).kept:
+        for kept in carrier_of(result).kept:
             element = ET.SubElement(grid, kept.tag, dict(kept.attributes))
             for array in kept.arrays:
                 self._item(element, array, group, kept.why)
         return grid
 
     def _mesh_elements(self, result: Result, group: str) -> tuple[ET.Element, ET.Element]:
-        if self._mesh and _same_mesh(self._mesh[0], result):
+        if self._mesh and same_mesh(self._mesh[0], result):
             return self._mesh[1:]
-        topology, data = _topology(result)
+        topology, data = topology_of(result)
         self._item(topology, data, group, "the connectivity", "connectivity")
         two = result.point_dimension == 2 and not np.any(result.points[:, 2])
         points = result.points[:, :2] if two else result.points
@@ -186,7 +184,7 @@ class _Store:
             ] = None
             return
         names = tuple(result.component_names.get((association, name), ()))
-        kind, tail = _form(result, association, name, values, names)
+        kind, tail = form_of(result, association, name, values, names)
         shape = values.shape if association == "field" else (len(values), *tail)
         if kind == "Tensor6":
             values, names = values[:, TENSOR6_ORDER], TENSOR6_IN_FILE
@@ -239,91 +237,9 @@ class _Store:
         return values.astype(values.dtype.newbyteorder("="), copy=False)
 
 
-def _carrier(result: Result) -> XdmfCarrier:
-    return result.carrier if isinstance(result.carrier, XdmfCarrier) else XdmfCarrier()
-
-
-def _check_names(result: Result) -> None:
-    names = [*result.point_data, *result.cell_data, *result.field_data, *result.groups]
-    names += [component for key in result.component_names.values() for component in key]
-    for name in names:
-        if _NOT_XML.search(name):
-            raise UsageError(f"the name {name!r} cannot be written in XDMF: rename the array or group.")
-
-
-def _same_mesh(a: Result, b: Result) -> bool:
-    if a.points is not b.points and not np.array_equal(a.points, b.points):
-        return False
-    if (
-        a.points.dtype != b.points.dtype
-        or a.point_dimension != b.point_dimension
-        or len(a.blocks) != len(b.blocks)
-    ):
-        return False
-    return all(
-        x is y
-        or (
-            x.cell_type == y.cell_type
-            and np.array_equal(x.connectivity, y.connectivity)
-            and np.array_equal(x.index, y.index)
-        )
-        for x, y in zip(a.blocks, b.blocks)
-    )
-
-
-def _form(
-    result: Result, association: Association, name: str, values: Array, names: Sequence[str]
-) -> tuple[str, tuple[int, ...]]:
-    """Return AttributeType and the shape of one row: as in the file read, else by the component count."""
-    tail = values.shape[1:]
-    width = int(np.prod(tail))
-    if association != "field" and width == 6 and tuple(names) == TENSOR6:
-        return "Tensor6", (6,)
-    kind, before = _carrier(result).forms.get((association, name), ("", ()))
-    if kind and kind.lower() != "tensor6" and (association == "field" or int(np.prod(before)) == width):
-        return kind, before
-    if association == "field":
-        return "Matrix" if values.ndim > 1 else "Scalar", tail
-    kind = {1: "Scalar", 2: "Vector", 3: "Vector", 9: "Tensor"}.get(width, "Matrix")
-    # A Matrix has rows and columns; readers take a flat one for a single matrix.
-    return kind, (1, width) if kind == "Matrix" else tail
-
-
-def _topology(result: Result) -> tuple[ET.Element, NDArray[Any]]:
-    """Return the Topology element without its data, and the data."""
-    for block in result.blocks:
-        if block.cell_type not in BY_TYPE:
-            raise UsageError(
-                f"XDMF has no cells of type {block.cell_type} with {block.connectivity.shape[1]} nodes. "
-                "Write VTU instead (-o NAME.vtu): it holds them."
-            )
-    stated = np.dtype(_carrier(result).connectivity_dtype)
-    n_nodes = max(result.n_points, 256)
-    dtype = stated if n_nodes <= np.iinfo(stated).max else np.dtype(np.int64)
-    if len(result.blocks) == 1:
-        block = result.blocks[0]
-        rows = block.connectivity[np.argsort(block.index, kind="stable")].astype(dtype)
-        element = ET.Element(
-            "Topology",
-            TopologyType=BY_TYPE[block.cell_type][0],
-            NumberOfElements=str(len(rows)),
-            NodesPerElement=str(rows.shape[1]),
-        )
-        return element, rows
-    element = ET.Element("Topology", TopologyType="Mixed", NumberOfElements=str(result.n_cells))
-    return element, _mixed(result).astype(dtype)
-
-
-def _mixed(result: Result) -> NDArray[np.int64]:
-    length = np.zeros(result.n_cells, np.int64)
-    rows: list[NDArray[np.int64]] = []
-    for block in result.blocks:
-        code, width = BY_TYPE[block.cell_type][1], block.connectivity.shape[1]
-        head = [code, width] if code in COUNTED else [code]
-        rows.append(np.column_stack([np.tile(head, (len(block), 1)), block.connectivity]))
-        length[block.index] = rows[-1].shape[1]
-    begin = np.cumsum(length) - length
-    stream = np.empty(int(length.sum()), np.int64)
-    for block, table in zip(result.blocks, rows):
-        stream[begin[block.index][:, None] + np.arange(table.shape[1])] = table
-    return stream
+def _size(result: Result) -> int:
+    """Return at least as many bytes as the data of one step takes."""
+    arrays = [result.points, *(block.connectivity for block in result.blocks), *result.groups.values()]
+    for association, _ in _CENTERS:
+        arrays.extend(np.asarray(a) for a in getattr(result, f"{association}_data").values())
+    return sum(2 * a.nbytes for a in arrays) + (1 << 20)

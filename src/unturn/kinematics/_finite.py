@@ -19,6 +19,9 @@ from unturn.kinematics._symmetric import PAIRS, Floats, eigen, leading_sign, spe
 BASES = ("green_lagrange", "hencky", "biot", "almansi")
 
 _ROUNDING = 1e-15  # det F is not known better than this, times 1 + |H|^2
+_HALF_TURN = (
+    1e-11  # the sine of an angle so close to half a turn is rounding: both directions of the axis are right
+)
 _FLATTENED = 0.1  # a squared stretch below this is taken from the singular values of F
 
 
@@ -72,7 +75,8 @@ class Finite:
 
     @cached_property
     def _E(self) -> Floats:
-        return green_lagrange(self.H)
+        with np.errstate(invalid="ignore", over="ignore"):
+            return green_lagrange(self.H)
 
     @cached_property
     def _spectrum(self) -> tuple[Floats, Floats, NDArray[np.int64], Floats, Floats]:
@@ -210,6 +214,6 @@ class Finite:
         axis = outer[:, largest, np.arange(len(index))]
         axis /= length(axis)
         along = axis[0] * axial[0] + axis[1] * axial[1] + axis[2] * axial[2]
-        clear = np.abs(along) > 1e-15
+        clear = np.abs(along) > _HALF_TURN
         signed: Floats = axis * np.where(clear, np.copysign(1.0, along), leading_sign(axis))
         return signed

@@ -161,7 +161,8 @@ def green_lagrange_strain(H: ArrayLike) -> Floats:
 
     Notes
     -----
-    Holzapfel 2000, Nonlinear Solid Mechanics, section 2.5. Computed from H, not from F, so small strain keeps its digits.
+    Holzapfel 2000, Nonlinear Solid Mechanics, section 2.5. Computed from H, not from F, so
+    small strain keeps its digits.
     """
     array, batch = _first(H)
     return _last(_symmetric.full_from_six(_motion.green_lagrange(array)), batch)

@@ -1,0 +1,185 @@
+"""Files laid out as finite-element libraries write them, made by hand: what each means must come out."""
+
+from __future__ import annotations
+
+import base64
+from collections.abc import Callable
+from pathlib import Path
+
+import numpy as np
+import pytest
+
+import unturn
+from unturn.elements import element
+from unturn.errors import DisplacementError
+
+Field = Callable[[np.ndarray], np.ndarray]
+SLANT = np.array([[1.0, 0.1, 0.05], [0.2, 0.9, -0.1], [0.0, 0.15, 1.1]])
+
+
+def displacement(points: np.ndarray) -> np.ndarray:
+    """A cubic field, held exactly by affine cells of order 3 and higher."""
+    x, y, z = points.T
+    return 1e-3 * np.stack([x**3 + y * z, 0.5 * y**3 - x * y, z**3 + 2 * x * x * y], axis=1)
+
+
+def gradient(points: np.ndarray) -> np.ndarray:
+    """``(n, 3, 3)`` the field's gradient."""
+    x, y, z = points.T
+    rows = [[3 * x * x, z, y], [-y, 1.5 * y * y - x, 0 * x], [4 * x * y, 2 * x * x, 3 * z * z]]
+    return 1e-3 * np.moveaxis(np.array(rows), -1, 0)
+
+
+def expected_strain(places: np.ndarray) -> np.ndarray:
+    h = gradient(places)
+    e = (h + np.swapaxes(h, 1, 2)) / 2
+    return e[:, [0, 1, 2, 0, 1, 0], [0, 1, 2, 1, 2, 2]]
+
+
+def text(values: np.ndarray) -> str:
+    return " ".join(map(repr, np.asarray(values).ravel().tolist()))
+
+
+@pytest.mark.source("NGSolve 6.2.2608, VTKOutput(legacy=True, order=3): version 3.0 over VTK 9's node order")
+@pytest.mark.parametrize("order", [2, 3, 4])
+def test_lagrange_hexahedra_in_the_new_order_under_an_old_version(order: int, tmp_path: Path) -> None:
+    row = element("VTK_LAGRANGE_HEXAHEDRON", (order + 1) ** 3)
+    points = row.nodes @ SLANT.T
+    path = tmp_path / "u.vtk"
+    path.write_text(
+        "# vtk DataFile Version 3.0\nvtk output\nASCII\nDATASET UNSTRUCTURED_GRID\n"
+        f"POINTS {len(points)} double\n{text(points)}\n"
+        f"CELLS 1 {len(points) + 1}\n{len(points)} {text(np.arange(len(points)))}\nCELL_TYPES 1\n72\n"
+        f"POINT_DATA {len(points)}\nVECTORS displacement double\n{text(displacement(points))}\n"
+    )
+    result = unturn.read(path)
+    assert "VTK_LAGRANGE_HEXAHEDRON cells were not in the order of the format" in result.notes[0]
+    assert result.blocks[0].connectivity.tolist() == [list(range(len(points)))]
+    found = unturn.strain(result).cell_data["strain"]
+    if order > 2:
+        np.testing.assert_allclose(found, expected_strain(row.centroid[None] @ SLANT.T), atol=1e-15)
+    unturn.write(result, tmp_path / "again.vtu")
+    again = unturn.strain(unturn.read(tmp_path / "again.vtu")).cell_data["strain"]
+    np.testing.assert_array_equal(again, found)
+
+
+def base64_apart(values: np.ndarray, header: str) -> str:
+    """The length as base64 text of its own, then the data."""
+    data = values.tobytes()
+    return (base64.b64encode(np.array([len(data)], header).tobytes()) + base64.b64encode(data)).decode()
+
+
+@pytest.mark.source("DOLFIN 2019.2, File(name, 'base64'): length encoded apart, offsets padded with zeros")
+@pytest.mark.parametrize(("header", "stated"), [("<u4", ""), ("<u8", ' header_type="UInt64"')])
+@pytest.mark.parametrize("n_cells", [1, 2, 3])
+def test_base64_with_its_length_apart_and_padded_offsets(
+    header: str, stated: str, n_cells: int, tmp_path: Path
+) -> None:
+    corners = np.array([[0, 0, 0], [1, 0, 0], [0, 1, 0], [0, 0, 1], [1, 1, 1], [1, 1, -1.0]])
+    cells = np.array([[0, 1, 2, 3], [1, 2, 3, 4], [0, 2, 1, 5]], np.uint32)[:n_cells]
+    points = corners[: cells.max() + 1] @ SLANT.T
+    offsets = np.zeros(cells.size, np.uint32)
+    offsets[:n_cells] = 4 * np.arange(1, n_cells + 1)
+
+    def array(name: str, values: np.ndarray, kind: str, more: str = "") -> str:
+        return (
+            f'<DataArray  type="{kind}"  Name="{name}"{more}  format="binary">\n'
+            f"{base64_apart(values, header)}\n</DataArray>\n"
+        )
+
+    three = '  NumberOfComponents="3"'
+    path = tmp_path / "u.vtu"
+    path.write_text(
+        f'<?xml version="1.0"?>\n<VTKFile type="UnstructuredGrid"  version="0.1"{stated} '
+        'byte_order="LittleEndian">\n<UnstructuredGrid>\n'
+        f'<Piece  NumberOfPoints="{len(points)}" NumberOfCells="{n_cells}">\n<Points>\n'
+        + array("Points", points, "Float64", three)
+        + "</Points>\n<Cells>\n"
+        + array("connectivity", cells, "UInt32")
+        + array("offsets", offsets, "UInt32")
+        + array("types", np.full(n_cells, 10, np.uint8), "UInt8")
+        + '</Cells>\n<PointData  Vectors="u">\n'
+        + array("u", displacement(points), "Float64", three)
+        + "</PointData>\n</Piece>\n</UnstructuredGrid>\n</VTKFile>\n"
+    )
+    result = unturn.read(path)
+    np.testing.assert_array_equal(result.points, points)
+    np.testing.assert_array_equal(result.point_data["u"], displacement(points))
+    assert result.blocks[0].connectivity.tolist() == cells.tolist()
+
+
+def xdmf(topology: str, rows: np.ndarray, points: np.ndarray, values: np.ndarray, more: str = "") -> str:
+    def item(a: np.ndarray, kind: str = "") -> str:
+        return f'<DataItem Dimensions="{a.shape[0]} {a.shape[1]}"{kind} Format="XML">{text(a)}</DataItem>'
+
+    return (
+        '<?xml version="1.0"?>\n<!DOCTYPE Xdmf SYSTEM "Xdmf.dtd" []>\n<Xdmf Version="3.0"><Domain>'
+        f'<Grid Name="mesh" GridType="Uniform"><Topology TopologyType="{topology}" '
+        f'NumberOfElements="{len(rows)}" NodesPerElement="{rows.shape[1]}">'
+        + item(rows, ' NumberType="Int"')
+        + f'</Topology><Geometry GeometryType="XYZ">{item(points)}</Geometry>'
+        + f'<Attribute Name="u" AttributeType="Vector" Center="Node">{item(values)}</Attribute>{more}'
+        + "</Grid></Domain></Xdmf>"
+    )
+
+
+@pytest.mark.source("DOLFINx 0.11, XDMFFile with Encoding.ASCII: numbers of 16 digits, no Precision stated")
+@pytest.mark.parametrize(
+    ("topology", "cell_type", "n_nodes"),
+    [
+        ("Triangle_10", "VTK_LAGRANGE_TRIANGLE", 10),
+        ("Quadrilateral_16", "VTK_LAGRANGE_QUADRILATERAL", 16),
+        ("Tetrahedron_20", "VTK_LAGRANGE_TETRAHEDRON", 20),
+    ],
+)
+def test_cubic_cells_in_xdmf(topology: str, cell_type: str, n_nodes: int, tmp_path: Path) -> None:
+    row = element(cell_type, n_nodes)
+    points = np.zeros((n_nodes, 3))
+    points[:, : row.dim] = row.nodes @ SLANT[: row.dim, : row.dim].T
+    flat = np.array([1.0, 1.0, row.dim == 3])
+    path = tmp_path / "u.xdmf"
+    path.write_text(xdmf(topology, np.arange(n_nodes)[None], points, displacement(points) * flat))
+    result = unturn.read(path)
+    assert result.points.dtype == np.float64
+    assert "read with all their digits" in result.notes[0]
+    at = np.zeros((1, 3))
+    at[0, : row.dim] = SLANT[: row.dim, : row.dim] @ row.centroid
+    held = slice(0, 6) if row.dim == 3 else [0, 1, 3]
+    found = unturn.strain(result, measures=["strain"]).cell_data["strain"]
+    np.testing.assert_allclose(found[:, held], expected_strain(at)[:, held], atol=1e-15)
+
+
+@pytest.mark.source("DOLFIN 2019.2, XDMFFile.write_checkpoint of a quadratic function on linear cells")
+def test_a_function_of_higher_degree_than_its_mesh_is_named_in_the_refusal(tmp_path: Path) -> None:
+    def item(values: np.ndarray, kind: str) -> str:
+        return f'<DataItem Dimensions="{len(values)} 1" NumberType="{kind}" Precision="8">{text(values)}</DataItem>'
+
+    function = (
+        '<Attribute ItemType="FiniteElementFunction" ElementFamily="CG" ElementDegree="2" '
+        'ElementCell="triangle" Name="w" Center="Other" AttributeType="Vector">'
+        + item(np.arange(12), "UInt") + item(np.linspace(0, 1e-3, 12), "Float")
+        + item(np.array([0, 12]), "UInt") + item(np.array([0]), "UInt") + "</Attribute>"
+    )  # fmt: skip
+    points = np.array([[0, 0, 0], [1, 0, 0], [0, 1, 0.0]])
+    path = tmp_path / "u.xdmf"
+    whole = xdmf("Triangle", np.array([[0, 1, 2]]), points, points, function)
+    before, rest = whole.split('<Attribute Name="u"', 1)
+    path.write_text(before + rest.split("</Attribute>", 1)[1])
+    with pytest.raises(DisplacementError, match=r"Not used: the finite-element function 'w' \(CG 2\)"):
+        unturn.strain(unturn.read(path))
+
+
+@pytest.mark.source("MFEM 4.10 and NGSolve 6.2.2608: one component along a mesh of lines on the x axis")
+@pytest.mark.parametrize("shape", [(-1,), (-1, 1)])
+def test_a_bar_along_x_has_one_component(shape: tuple[int, ...], tmp_path: Path) -> None:
+    x = np.array([0.0, 0.5, 1.25])
+    points = np.stack([x, 0 * x, 0 * x], axis=1)
+    block = unturn.CellBlock("line", np.array([[0, 1], [1, 2]]), np.array([0, 1]))
+    u = (1e-3 * x * x).reshape(shape)
+    for name in (None, "u"):
+        found = unturn.strain(unturn.Result(points, (block,), {"u": u}), displacement=name)
+        np.testing.assert_allclose(found.cell_data["strain"][:, 0], [0.5e-3, 1.75e-3], atol=1e-18)
+    with pytest.raises(DisplacementError, match="no displacement found"):
+        unturn.strain(unturn.Result(points[:, [1, 0, 2]], (block,), {"u": u}))
+    with pytest.raises(DisplacementError, match="no displacement found"):
+        unturn.strain(unturn.Result(points, (block,), {"temperature": u}))
