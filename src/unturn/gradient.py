@@ -391,7 +391,7 @@ def _finite_line(point: PointGradient) -> Floats:
         H[i, j] -= axis[k]
         H[j, i] += axis[k]
     if back.any():
-        H[:, :, back] = _reversing_turn(old[:, back], new[:, back])
+        H[:, :, back] = reversing_turn(old[:, back], new[:, back])
     extra = (stretch - 1.0) * new
     for i in range(3):
         for j in range(3):
@@ -399,7 +399,7 @@ def _finite_line(point: PointGradient) -> Floats:
     return H
 
 
-def _reversing_turn(old: Floats, new: Floats) -> Floats:
+def reversing_turn(old: Floats, new: Floats) -> Floats:
     """Return `R - I` of the smallest rotations that nearly or wholly reverse a unit vector.
 
     R takes the frame of `old` and a direction across both vectors to the frame of `new` and that direction. Where they

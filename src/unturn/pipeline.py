@@ -247,6 +247,8 @@ def _axis(text: str | None) -> Axis | None:
 
 
 def _unwrap(removal: Removal, previous: RigidMotion) -> Removal:
+    if "linearised" in (removal.motion.fit, previous.fit):
+        return removal  # its rotation vector has no whole turns
     rotation = unwrapped(removal.motion.rotation, previous.rotation)
     return replace(removal, motion=replace(removal.motion, rotation=rotation))
 

@@ -16,7 +16,7 @@ from numpy.typing import NDArray
 
 from unturn.elements import rule_of_degree
 from unturn.errors import InputError, UsageError
-from unturn.gradient import ElementChunk, chunk_ranges
+from unturn.gradient import ElementChunk, chunk_ranges, reversing_turn
 from unturn.kinematics._symmetric import Floats
 from unturn.model import Model
 
@@ -40,13 +40,16 @@ class RigidMotion:
         `(3,)` rotation vector, radians.
     residual
         Root mean square of the displacement that is left.
+    size
+        Root mean square distance of what was fitted from its centroid.
     """
 
     fit: Fit
     center: Floats
     translation: Floats
     rotation: Floats
-    residual: float
+    residual: float = 0.0
+    size: float = 0.0
 
     @property
     def turn(self) -> Floats:
@@ -98,16 +101,15 @@ def take_out(
         For each motion: name and cells over which it is fitted, name and cells from which it is taken.
     solve
         ``linear``: the linearised fit; ``nonlinear``: the best proper rotation; ``unknown``: both are fitted, and the
-        one that leaves less is taken out.
+        one that leaves less is taken out, the rotation where they are equal.
     axis
         A known axis of rotation instead of the full fit.
     """
     back, back_of, removals = [], np.full(model.result.n_cells, -1, dtype=np.int64), []
     for number, (fitted, cells, applied, target) in enumerate(parts):
-        kinds: tuple[Fit, ...] = _KINDS[solve]
-        found = sorted(
-            (fit_rigid_motion(model, cells, kind, axis) for kind in kinds), key=lambda m: m.residual
-        )
+        found = [fit_rigid_motion(model, cells, kind, axis) for kind in _KINDS[solve]]
+        if len(found) > 1 and found[1].residual < found[0].residual - _EQUAL * found[0].size:
+            found.reverse()
         motion, other = found[0], found[1] if len(found) > 1 else None
         back.append(_back(motion))
         back_of[target] = number
@@ -115,6 +117,7 @@ def take_out(
     return replace(model, back=np.array(back), back_of=back_of), tuple(removals)
 
 
+_EQUAL = 1e-12  # residuals that differ by less than this share of the part's size are equal
 _KINDS: dict[str, tuple[Fit, ...]] = {
     "linear": ("linearised",),
     "nonlinear": ("finite",),
@@ -191,6 +194,8 @@ def fit_rigid_motion(
     mask = np.zeros(model.result.n_cells, dtype=bool)
     mask[cells] = True
     m = _moments(model, mask)
+    if axis is not None:
+        _check_axis(model, axis)
     if model.plane is not None and model.plane.model == "axisymmetric":
         motion = _axial(model, m, fit)
     elif axis is not None:
@@ -198,7 +203,7 @@ def fit_rigid_motion(
     else:
         planar = None if model.plane is None else model.plane.normal
         rotation = _linear_rotation(m, planar) if fit == "linearised" else _finite_rotation(m, planar)
-        motion = RigidMotion(fit, m.center, m.mean, rotation, 0.0)
+        motion = RigidMotion(fit, m.center, m.mean, rotation)
     return _with_residual(model, mask, m, motion)
 
 
@@ -288,7 +293,7 @@ def _finite_rotation(m: _Moments, planar: int | None) -> Floats:
     R = (left * signs) @ right
     if size[1] <= 1e-12 * size[0]:  # a straight line: any turn about it does as well; take the smallest
         R = _smallest_turn(right[0], left[:, 0])
-    small = np.linalg.norm(R - np.eye(3)) < 1e-3
+    small = np.linalg.norm(R - np.eye(3)) < 0.1
     if not small:
         return rotation_vector_of(R - np.eye(3))
     return _refined(moment, rotation_vector_of(R - np.eye(3)), m)
@@ -308,33 +313,44 @@ def _refined(moment: Floats, theta: Floats, m: _Moments) -> Floats:
 
 
 def _smallest_turn(old: Floats, new: Floats) -> Floats:
-    if old @ new < 0:
-        new = -new
-    cross, cosine = np.cross(old, new), float(old @ new)
-    W = skew(cross)
+    """Return the smallest rotation that takes one unit vector to another; where they are opposite, one of them."""
+    cosine = float(old @ new)
+    if cosine < -0.5:
+        return np.eye(3) + reversing_turn(old[:, None], new[:, None])[:, :, 0]
+    W = skew(np.cross(old, new))
     return np.asarray(np.eye(3) + W + W @ W / (1.0 + cosine))
+
+
+def _check_axis(model: Model, axis: Axis) -> None:
+    if not np.linalg.norm(axis.direction) > 0:
+        raise UsageError("--rigid-axis: the direction of the axis has no length.")
+    if model.plane is None:
+        return
+    if model.plane.model == "axisymmetric":
+        raise UsageError("--rigid-axis: an axisymmetric mesh cannot turn, it only moves along its own axis.")
+    if np.delete(axis.direction, model.plane.normal).any():
+        raise UsageError(
+            f"--rigid-axis: a plane mesh turns about {'xyz'[model.plane.normal]} only; the axis given points elsewhere."
+        )
 
 
 def _about_axis(m: _Moments, fit: Fit, axis: Axis) -> RigidMotion:
     """Return the rotation about a known axis that fits best."""
-    size = float(np.linalg.norm(axis.direction))
-    if not size > 0:
-        raise UsageError("the direction of the rotation axis has no length.")
-    n = axis.direction / size
+    n = axis.direction / float(np.linalg.norm(axis.direction))
     arm = m.center - axis.point
     XX = m.XX + m.volume * np.outer(arm, arm)
     uX = m.uX + m.volume * np.outer(m.mean, arm)
     P = np.eye(3) - np.outer(n, n)
     sine = float(np.einsum("ij,ij->", skew(n), uX))
     spread = float(np.trace(P @ XX))
-    if not spread > 0:
-        raise UsageError("the part lies on the rotation axis: its angle cannot be found.")
+    if not spread > 1e-20 * float(np.trace(XX)):
+        raise UsageError("--rigid-axis: the part lies on the axis; the angle of its turn cannot be found.")
     angle = (
         sine / spread if fit == "linearised" else float(np.arctan2(sine, spread + float(np.trace(P @ uX))))
     )
     theta = angle * n
     turn = skew(theta) if fit == "linearised" else turn_of(theta)
-    return RigidMotion(fit, m.center, turn @ arm, theta, 0.0)
+    return RigidMotion(fit, m.center, turn @ arm, theta)
 
 
 def _axial(model: Model, m: _Moments, fit: Fit) -> RigidMotion:
@@ -342,7 +358,7 @@ def _axial(model: Model, m: _Moments, fit: Fit) -> RigidMotion:
     assert model.plane is not None
     translation = np.zeros(3)
     translation[model.plane.axis] = m.mean[model.plane.axis]
-    return RigidMotion(fit, m.center, translation, np.zeros(3), 0.0)
+    return RigidMotion(fit, m.center, translation, np.zeros(3))
 
 
 def _with_residual(model: Model, mask: NDArray[np.bool_], m: _Moments, motion: RigidMotion) -> RigidMotion:
@@ -355,7 +371,8 @@ def _with_residual(model: Model, mask: NDArray[np.bool_], m: _Moments, motion: R
             - np.einsum("ij,jm->im", turn, values[:3] - m.center[:, None])
         )
         square += float(np.einsum("im,im,m->", left, left, weights))
-    return replace(motion, residual=float(np.sqrt(square / m.volume)))
+    size = float(np.sqrt(np.trace(m.XX) / m.volume))
+    return replace(motion, residual=float(np.sqrt(square / m.volume)), size=size)
 
 
 def unwrapped(rotation: Floats, previous: Floats) -> Floats:
