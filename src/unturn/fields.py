@@ -22,7 +22,7 @@ from unturn.gradient import (
     sample_points,
 )
 from unturn.kinematics._motion import relative_volume_change
-from unturn.kinematics._symmetric import Floats
+from unturn.kinematics._symmetric import Floats, full_from_six, six_from_full
 from unturn.kinematics._turning import Turning
 from unturn.measures import GEOMETRY, MEASURES, Measure, Split, choose_measures
 from unturn.model import Model, ModelBlock
@@ -277,7 +277,8 @@ class _Job:
         axes = self._axes(chunk, place, rows)
         free = None
         if self.thermal is not None:
-            free = self.thermal.free_strain(rows, connectivity, place.functions[0], axes)
+            samples = rule if mean else place
+            free = mean_free_strain(self.thermal, chunk, samples, rows, connectivity, axes)
             H = _with_thermal_thickness(H, free, self.model.plane)
         split = Split(H, self.poisson, self.directions, finite, free)
         for measure in self.measures:
@@ -402,6 +403,42 @@ def _with_thermal_thickness(H: Floats, free: Floats, plane: Plane | None) -> Flo
     H = H.copy()
     H[plane.normal, plane.normal] += (1.0 + plane.poisson) / (1.0 - plane.poisson) * free[plane.normal]
     return H
+
+
+def mean_free_strain(
+    thermal: Thermal,
+    chunk: ElementChunk,
+    samples: Samples,
+    rows: slice | NDArray[np.int64],
+    connectivity: NDArray[np.int64],
+    axes: Floats | None,
+) -> Floats:
+    """Return the free thermal strain `(6, m)`, the mean over the samples.
+
+    Surfaces and lines in space show strain along themselves only: of the free strain only that part counts.
+    """
+    total, volume = np.zeros((6, len(chunk))), np.zeros(len(chunk))
+    for gradients, functions, weight in zip(samples.gradients, samples.functions, samples.weights):
+        here = chunk.at(gradients, functions)
+        free = thermal.free_strain(rows, connectivity, functions, axes)
+        if chunk.plane is None and here.tangents is not None:
+            free = _along(free, here.tangents)
+        total += weight * here.weight * free
+        volume += weight * here.weight
+    total /= volume
+    return total
+
+
+def _along(strain: Floats, tangents: Floats) -> Floats:
+    """Return the part of a strain `(6, m)` along a line or within a surface with these tangents `(dim, 3, m)`."""
+    if len(tangents) == 1:
+        t = tangents[0]
+        P = t[:, None] * t[None] / (t * t).sum(axis=0)
+    else:
+        n = np.cross(tangents[0], tangents[1], axis=0)
+        P = np.eye(3)[:, :, None] - n[:, None] * n[None] / (n * n).sum(axis=0)
+    half = np.einsum("iam,abm->ibm", P, full_from_six(strain))
+    return six_from_full(np.einsum("ibm,bjm->ijm", half, P))
 
 
 def _same_side(point: PointGradient, here: PointGradient) -> Floats:

@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 from unturn.displacement import find_displacement
 from unturn.errors import UsageError
 from unturn.fields import CellFields, Location, compute_fields
-from unturn.frames import parse_frame
+from unturn.frames import Frame, parse_frame
 from unturn.gradient import NodalFields, PlaneModel
 from unturn.kinematics._symmetric import Floats
 from unturn.measures import MEASURES, choose_measures
@@ -96,7 +96,7 @@ def compute(
         "at": options.at,
         "equivalent_poisson": options.equivalent_poisson,
         "frame": frame,
-        "thermal": _thermal(result, options, frame),
+        "thermal": _thermal(result, zero, options, frame),
         "threads": options.threads,
     }
     small, finite = _zeroed(model, zero, options)
@@ -158,7 +158,9 @@ def _model(result: Result, options: StrainOptions) -> Model:
     )
 
 
-def _thermal(result: Result, options: StrainOptions, frame: Any) -> Thermal | None:
+def _thermal(
+    result: Result, zero: Result | None, options: StrainOptions, frame: Frame | None
+) -> Thermal | None:
     given = (options.thermal_expansion, options.temperature, options.reference_temperature)
     if all(g is None for g in given):
         return None
@@ -167,7 +169,22 @@ def _thermal(result: Result, options: StrainOptions, frame: Any) -> Thermal | No
         raise UsageError(
             "free thermal strain needs all three of --thermal-expansion, --temperature and --reference-temperature."
         )
-    return parse_thermal(result, str(expansion), temperature, float(reference), frame)
+    if zero is not None:
+        _check_zero_temperature(zero, temperature, float(reference))
+    return parse_thermal(result, str(expansion), temperature, float(reference))
+
+
+def _check_zero_temperature(zero: Result, name: str, reference: float) -> None:
+    """Refuse a zero step whose temperature is not the reference: the free strain since then is not `T - T0`."""
+    values = zero.point_data.get(name, zero.cell_data.get(name))
+    if values is None or not len(values):
+        return
+    low, high = float(np.nanmin(values)), float(np.nanmax(values))
+    if max(abs(low - reference), abs(high - reference)) > 1e-6 * max(1.0, abs(reference)):
+        raise UsageError(
+            f"--reference-temperature {reference:g}: with --zero-step it must be the temperature of that step, whose "
+            f"{name!r} is {low:g} to {high:g}. Where it is not one number, the free strain since then is not known here."
+        )
 
 
 def _zeroed(model: Model, zero: Result | None, options: StrainOptions) -> tuple[Model, Model | None]:

@@ -8,7 +8,6 @@ import numpy as np
 from numpy.typing import NDArray
 
 from unturn.errors import UsageError, close_matches
-from unturn.frames import Frame
 from unturn.kinematics._symmetric import PAIRS, Floats
 from unturn.result import Result
 
@@ -42,7 +41,7 @@ class Thermal:
         functions: Floats,
         axes: Floats | None,
     ) -> Floats:
-        """Return the free strain `(6, m)` of some cells, temperature taken with these weights `(nodes,)` of the nodes."""
+        """Return the free strain `(6, m)` of some cells where the shape functions have these values `(nodes,)`."""
         if self.nodal is not None:
             temperature = np.einsum("ma,a->m", self.nodal[connectivity], functions)
         else:
@@ -54,9 +53,7 @@ class Thermal:
         return np.stack([(growth * axes[:, i] * axes[:, j]).sum(axis=0) for i, j in PAIRS])
 
 
-def parse_thermal(
-    result: Result, expansion: str, temperature: str, reference: float, frame: Frame | None
-) -> Thermal:
+def parse_thermal(result: Result, expansion: str, temperature: str, reference: float) -> Thermal:
     """Return the thermal data of a result.
 
     Parameters
@@ -70,8 +67,6 @@ def parse_thermal(
         Point or cell array.
     reference
         Temperature without thermal strain.
-    frame
-        The frame; None for the axes of the file.
 
     Raises
     ------
