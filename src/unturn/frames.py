@@ -16,6 +16,7 @@ from unturn.kinematics._symmetric import PAIRS, Floats
 from unturn.result import Result
 
 _SAME = 1e-12
+_ALONG = np.cos(np.radians(1.0))
 
 
 @dataclass(frozen=True, eq=False)
@@ -34,6 +35,8 @@ class Frame:
         A point on the axis and its unit direction, for a cylindrical frame.
     cells
         `(n_cells, 3, 3)` axes as rows, from arrays.
+    surface
+        Local axes of each surface cell, see `surface_axes`.
     """
 
     text: str
@@ -42,6 +45,7 @@ class Frame:
     point: Floats | None = None
     direction: Floats | None = None
     cells: Floats | None = None
+    surface: bool = False
 
     def axes(self, centroid: Floats, rows: slice | NDArray[np.int64]) -> Floats:
         """Return the axes as rows `(3, 3, m)` of cells with this centroid `(3, m)` and file positions.
@@ -73,19 +77,53 @@ class Frame:
         return tuple(x + y for x in a for y in a)
 
 
-def turned_components(values: Floats, axes: Floats) -> Floats:
-    """Return a vector `(3, m)`, symmetric tensor `(6, m)` or full tensor `(9, m)` in the frame of `axes`."""
+def turned_components(values: Floats, axes: Floats, unknown: int | None = None) -> Floats:
+    """Return a vector `(3, m)`, symmetric tensor `(6, m)` or full tensor `(9, m)` in the frame of `axes`.
+
+    Parameters
+    ----------
+    values
+        In the axes of the file.
+    axes
+        `(3, 3, m)`, axes as rows.
+    unknown
+        Coordinate axis across a plane mesh whose third direction is not stated: its diagonal component is not known, nor
+        are those of the frame that contain it.
+    """
     if len(values) == 3:
         vector: Floats = np.einsum("aim,im->am", axes, values)
         return vector
     if len(values) == 9:
-        turned: Floats = np.einsum("aim,ijm,bjm->abm", axes, values.reshape(3, 3, -1), axes, optimize=True)
+        full = values.reshape(3, 3, -1).copy()
+    else:
+        full = np.empty((3, 3, values.shape[1]))
+        for k, (i, j) in enumerate(PAIRS):
+            full[i, j] = full[j, i] = values[k]
+    if unknown is not None:
+        full[unknown, unknown] = 0.0
+    turned: Floats = np.einsum("aim,ijm,bjm->abm", axes, full, axes, optimize=True)
+    if unknown is not None:
+        across = np.abs(axes[:, unknown])
+        turned[across[:, None] * across[None] > _SAME] = np.nan
+    if len(values) == 9:
         return turned.reshape(9, -1)
-    full = np.empty((3, 3, values.shape[1]))
-    for k, (i, j) in enumerate(PAIRS):
-        full[i, j] = full[j, i] = values[k]
-    half = np.einsum("aim,ijm->ajm", axes, full)
-    return np.stack([(half[i] * axes[j]).sum(axis=0) for i, j in PAIRS])
+    return np.stack([turned[i, j] for i, j in PAIRS])
+
+
+def surface_axes(tangents: Floats) -> Floats:
+    """Return local axes of a surface as rows `(3, 3, m)` from its tangents `(2, 3, m)`.
+
+    The third is the normal. The first is the projection of global x, or of y where the normal is along x within 1 degree.
+    """
+    normal = np.cross(tangents[0], tangents[1], axis=0)
+    normal = normal / np.sqrt((normal * normal).sum(axis=0))
+    first = np.zeros_like(normal)
+    along_x = np.abs(normal[0]) > _ALONG
+    first[0] = np.where(along_x, 0.0, 1.0)
+    first[1] = np.where(along_x, 1.0, 0.0)
+    first = first - normal * (first * normal).sum(axis=0)
+    first = first / np.sqrt((first * first).sum(axis=0))
+    return np.stack([first, np.cross(normal, first, axis=0), normal])
 
 
 def parse_frame(text: str, result: Result) -> Frame:
@@ -93,7 +131,8 @@ def parse_frame(text: str, result: Result) -> Frame:
 
     ``cylindrical AXIS [through X,Y,Z]`` with AXIS ``x``, ``y``, ``z`` or a direction ``a,b,c``;
     ``cartesian FIRST SECOND`` with two directions: 1 along the first, 2 in their plane;
-    ``arrays FIRST SECOND`` with two cell arrays of directions, taken the same way.
+    ``arrays FIRST SECOND`` with two cell arrays of directions, taken the same way;
+    ``surface``: 3 along the normal of each surface cell, 1 the projection of x.
 
     Raises
     ------
@@ -114,13 +153,15 @@ def parse_frame(text: str, result: Result) -> Frame:
     if words and words[0] == "arrays" and len(words) == 3:
         first, second = (_cell_directions(result, w) for w in words[1:])
         return Frame(text, ("1", "2", "3"), cells=_orthonormal(first, second, text))
+    if words == ["surface"]:
+        return Frame(text, ("1", "2", "3"), surface=True)
     raise _unclear(text)
 
 
 def _unclear(text: str) -> UsageError:
     return UsageError(
         f"--frame {text!r} is not understood. Use 'cylindrical z', 'cylindrical 0,0,1 through 10,0,0', "
-        "'cartesian 1,1,0 0,0,1' or 'arrays FIRST SECOND' (two cell arrays of directions)."
+        "'cartesian 1,1,0 0,0,1', 'arrays FIRST SECOND' (two cell arrays of directions) or 'surface'."
     )
 
 

@@ -186,7 +186,7 @@ def _table() -> dict[str, Measure]:
                 "trace of the small strain", _ELASTICITY),
         Measure("deviatoric_strain", TENSOR, lambda s: _motion.deviator(s.strain), "strain", True, True,
                 "strain less a third of its trace", _ELASTICITY),
-        Measure("displacement_gradient", FULL, lambda s: s.H.reshape(9, -1), "strain", False, True,
+        Measure("displacement_gradient", FULL, lambda s: s.H.reshape(9, -1), "1", False, True,
                 "du_i/dX_j, row-major", Source("published", "Hughes 2000, The Finite Element Method, section 3.9")),
         Measure("small_strain_error", (), lambda s: s.turning.error, "strain", False, False,
                 "norm(e - (U - I)): what turning adds to the small strain",
