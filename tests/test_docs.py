@@ -18,10 +18,12 @@ import unturn._accessor  # found by itself only when the package is installed
 from documents import EVERY_PAGE, PAGES, ROOT, Session, blocks, run, spoken, table
 from unturn import CellBlock, Result
 from unturn.cli._main import app
+from unturn.cli._options import BaseChoice
 from unturn.elements import ELEMENTS
 from unturn.errors import InputError, UnturnError
 from unturn.io import FORMATS, Format
-from unturn.measures import DEFAULT_MEASURES, GEOMETRY, MEASURES
+from unturn.kinematics._finite import BASES
+from unturn.measures import DEFAULT_MEASURES, GEOMETRY, MEASURES, SMALL, Measure
 
 SAMPLES = [p for p in (ROOT / "sample_meshes").iterdir() if p.suffix in (".vtu", ".xdmf", ".h5")]
 README, DOCS = ROOT / "README.md", ROOT / "docs"
@@ -111,17 +113,51 @@ def _all_errors(kind: type[UnturnError]) -> set[type[UnturnError]]:
     return {kind}.union(*(_all_errors(k) for k in kind.__subclasses__()))
 
 
-def test_the_table_of_measures_is_the_codes() -> None:
-    expected = [
-        [f"`{m.name}`", " ".join(m.components) or "one number", "radian" if m.unit == "radian" else "1",
-         "yes" if m.needs_third else "no", m.meaning, f"{m.source.text} ({m.source.kind})"]
-        for m in MEASURES.values()
+def _row(m: Measure) -> list[str]:
+    return [
+        f"`{m.name}`", _components(m), "radian" if m.unit == "radian" else "1", "yes" if m.needs_third else "no",
+        m.meaning, f"{m.source.text} ({m.source.kind})",
     ]  # fmt: skip
-    assert table(DOCS / "conventions.md", "array", "components") == expected
+
+
+def _components(m: Measure) -> str:
+    return " ".join(m.components) or "one number"
+
+
+def test_the_tables_of_measures_are_the_codes() -> None:
+    page = DOCS / "conventions.md"
+    assert table(page, "array", "components") == [_row(m) for m in SMALL.values()]
+    motion = [m for m in MEASURES.values() if m.finite and not m.name.endswith(BASES)]
+    assert table(page, "array of the motion") == [_row(m) for m in motion]
+    assert table(page, "mechanical array") == [_row(m) for m in MEASURES.values() if m.mechanical]
     geometry = [[f"`{name}`", meaning] for name, meaning in GEOMETRY.items()]
-    assert table(DOCS / "conventions.md", "array of the mesh alone") == geometry
-    text = (DOCS / "conventions.md").read_text(encoding="utf-8")
-    assert f"`{', '.join(DEFAULT_MEASURES)}`" in text
+    assert table(page, "array of the mesh alone") == geometry
+    assert f"`{', '.join(DEFAULT_MEASURES)}`" in page.read_text(encoding="utf-8")
+
+
+def test_the_tables_of_finite_strains_are_the_codes() -> None:
+    page = DOCS / "conventions.md"
+    strains = table(page, "base", "array")
+    assert [[row[0], row[1]] for row in strains] == [[f"`{_spoken(b)}`", f"`strain_{b}`"] for b in BASES]
+    assert [f"`{choice}`" for choice in list(BaseChoice)[1:]] == [row[0] for row in strains]
+    text = page.read_text(encoding="utf-8")
+    named = {m.name: m for m in MEASURES.values() if m.finite and m.name.endswith(BASES)}
+    described = set()
+    for base, row in zip(BASES, strains):
+        strain = named[f"strain_{base}"]
+        assert row[2] == strain.meaning
+        assert f"{strain.source.text} ({strain.source.kind})" in " ".join(text.split())
+        described.add(strain.name)
+        for array, components, meaning in table(page, "derived array"):
+            measure = named[array.strip("`").replace("BASE", base)]
+            assert [components, meaning.replace("STRAIN", row[2])] == [_components(measure), measure.meaning]
+            described.add(measure.name)
+    assert described == set(named)
+    assert all(m.needs_third and m.unit in ("strain", "1") for m in named.values())
+
+
+def _spoken(base: str) -> str:
+    return base.replace("_", "-")
 
 
 def test_the_table_of_elements_is_the_codes() -> None:
@@ -241,6 +277,8 @@ def test_the_summary_schema_is_documented_key_by_key(desk: Path) -> None:
         "ring.vtu --measures strain",
         "skin.vtu --mode --measures all",
         "lever.xdmf",
+        "lever.xdmf --solve nonlinear --base hencky",
+        "lever.xdmf --remove-rigid regions --frame 'cylindrical z'",
         "mixed.xdmf",
     )
     produced = [_json_of(f"unturn strain {c}") for c in commands]

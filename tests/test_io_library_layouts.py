@@ -183,3 +183,74 @@ def test_a_bar_along_x_has_one_component(shape: tuple[int, ...], tmp_path: Path)
         unturn.strain(unturn.Result(points[:, [1, 0, 2]], (block,), {"u": u}))
     with pytest.raises(DisplacementError, match="no displacement found"):
         unturn.strain(unturn.Result(points, (block,), {"temperature": u}))
+
+
+# Source: gmsh 4.15.2, getElementProperties(type): local coordinates of the nodes in units of 1 / order, a digit each.
+MSH_NODES: dict[int, tuple[str, int, str]] = {
+    25: (
+        "VTK_LAGRANGE_TRIANGLE",
+        5,
+        "00 50 05 10 20 30 40 41 32 23 14 04 03 02 01 11 31 13 21 22 12",
+    ),
+    37: (
+        "VTK_LAGRANGE_QUADRILATERAL",
+        4,
+        "00 40 44 04 10 20 30 41 42 43 34 24 14 03 02 01 11 31 33 13 21 32 23 12 22",
+    ),
+    30: (
+        "VTK_LAGRANGE_TETRAHEDRON",
+        4,
+        "000 400 040 004 100 200 300 310 220 130 030 020 010 003 002 001 013 022 031 103 202 301 110 120 210 "
+        "101 201 102 011 012 021 112 211 121 111",
+    ),
+    92: (
+        "VTK_LAGRANGE_HEXAHEDRON",
+        3,
+        "000 300 330 030 003 303 333 033 100 200 010 020 001 002 310 320 301 302 230 130 331 332 031 032 103 "
+        "203 013 023 313 323 233 133 110 120 220 210 101 201 202 102 011 012 022 021 311 321 322 312 231 131 "
+        "132 232 113 213 223 123 111 211 221 121 112 212 222 122",
+    ),
+    93: (
+        "VTK_LAGRANGE_HEXAHEDRON",
+        4,
+        "000 400 440 040 004 404 444 044 100 200 300 010 020 030 001 002 003 410 420 430 401 402 403 340 240 "
+        "140 441 442 443 041 042 043 104 204 304 014 024 034 414 424 434 344 244 144 110 130 330 310 120 230 "
+        "320 210 220 101 301 303 103 201 302 203 102 202 011 013 033 031 012 023 032 021 022 411 431 433 413 "
+        "421 432 423 412 422 341 141 143 343 241 142 243 342 242 114 314 334 134 214 324 234 124 224 111 311 "
+        "331 131 113 313 333 133 211 121 112 321 312 231 332 132 213 123 323 233 221 212 122 322 232 223 222",
+    ),
+}
+
+
+@pytest.mark.source(
+    "gmsh 4.15.2: view.addModelData(..., 'NodeData') written in MSH 2.2 over elements of higher order"
+)
+@pytest.mark.parametrize("kind", MSH_NODES)
+def test_msh_elements_of_higher_order(kind: int, tmp_path: Path) -> None:
+    cell_type, order, digits = MSH_NODES[kind]
+    lattice = np.array([[int(d) for d in word] for word in digits.split()]) / order
+    points = np.zeros((len(lattice), 3))
+    dim = lattice.shape[1]
+    points[:, :dim] = lattice @ SLANT[:dim, :dim].T
+    values = displacement(points) * [1, 1, dim == 3]
+    numbers = np.arange(1, len(points) + 1)
+    path = tmp_path / "u.msh"
+    path.write_text(
+        "$MeshFormat\n2.2 0 8\n$EndMeshFormat\n"
+        f"$Nodes\n{len(points)}\n"
+        + "".join(f"{n} {text(x)}\n" for n, x in zip(numbers, points))
+        + f"$EndNodes\n$Elements\n1\n1 {kind} 2 1 1 {text(numbers)}\n$EndElements\n"
+        + f'$NodeData\n1\n"displacement"\n1\n0\n3\n0\n3\n{len(points)}\n'
+        + "".join(f"{n} {text(u)}\n" for n, u in zip(numbers, values))
+        + "$EndNodeData\n"
+    )
+    result = unturn.read(path)
+    assert [b.cell_type for b in result.blocks] == [cell_type]
+    assert result.notes == ()
+    shape = element(cell_type, len(points)).shape
+    box = (shape.centroid - shape.vertices.min(axis=0)) / np.ptp(shape.vertices, axis=0)
+    at = np.zeros((1, 3))
+    at[0, :dim] = SLANT[:dim, :dim] @ box
+    held = slice(0, 6) if dim == 3 else [0, 1, 3]
+    found = unturn.strain(result, measures=["strain"]).cell_data["strain"]
+    np.testing.assert_allclose(found[:, held], expected_strain(at)[:, held], atol=1e-15)

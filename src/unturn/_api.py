@@ -194,9 +194,14 @@ def add_fields(result: Result, computed: Computed, *, prefix: str = "", overwrit
             f"{where}the file already has a cell array called {taken[0]!r}; it is not overwritten unasked. Give the new "
             "arrays other names with --prefix TEXT, or replace the old ones with --overwrite."
         )
+    motions = rigid_arrays(computed.removals, prefix)
+    kept = [name for name in motions if name in result.field_data]
+    if kept and not overwrite:
+        raise UsageError(
+            f"{result.path + ': ' if result.path else ''}the file already has a field array called {kept[0]!r}; it is not "
+            "overwritten unasked. Use --prefix TEXT or --overwrite."
+        )
     names: dict[tuple[Association, str], tuple[str, ...]] = {
         ("cell", prefix + name): components for name, components in fields.components.items()
     }
-    return result.with_arrays(
-        cell_data=arrays, field_data=rigid_arrays(computed.removals, prefix), component_names=names
-    )
+    return result.with_arrays(cell_data=arrays, field_data=motions, component_names=names)

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass, replace
+from dataclasses import asdict, dataclass, field, replace
 from typing import Any, Literal
 
 import numpy as np
@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 
 from unturn.displacement import find_displacement
 from unturn.errors import UsageError
-from unturn.fields import CellFields, Location, compute_fields
+from unturn.fields import FRAME_AXES, CellFields, Location, compute_fields
 from unturn.frames import Frame, parse_frame
 from unturn.gradient import NodalFields, PlaneModel
 from unturn.kinematics._symmetric import Floats
@@ -57,6 +57,7 @@ class Computed:
 
     fields: CellFields
     removals: tuple[Removal, ...] = ()
+    request: dict[str, Any] = field(default_factory=dict)
 
 
 def compute(
@@ -101,16 +102,28 @@ def compute(
     }
     small, finite = _zeroed(model, zero, options)
     parts = _parts(small, options)
-    small, removals = (
-        take_out(small, parts, options.solve, _axis(options.rigid_axis)) if parts else (small, ())
-    )
+    removals: tuple[Removal, ...] = ()
+    if parts:
+        real = any(n in MEASURES and MEASURES[n].finite for n in names)
+        small, removals = take_out(small, parts, options.solve, _axis(options.rigid_axis), real)
     if finite is not None and parts:
-        finite, real = take_out(finite, parts, "nonlinear", _axis(options.rigid_axis))
+        finite, of_finite = take_out(finite, parts, "nonlinear", _axis(options.rigid_axis))
         if not any(n in SMALL for n in names):
-            removals = real
+            removals = of_finite
     if previous and len(previous) == len(removals):
         removals = tuple(_unwrap(r, p) for r, p in zip(removals, previous))
-    return Computed(_fields(small, finite, names, settings, options, diagnose), removals)
+    return Computed(
+        _fields(small, finite, names, settings, options, diagnose), removals, _request(options, zero)
+    )
+
+
+def _request(options: StrainOptions, zero: Result | None) -> dict[str, Any]:
+    """Return what was asked for beyond the defaults, by option name, and the zero step."""
+    default = StrainOptions()
+    told = {k: v for k, v in asdict(options).items() if v != getattr(default, k) and k != "threads"}
+    if zero is not None:
+        told["zero_step"] = None if zero.steps is None else zero.steps.current
+    return told
 
 
 def _fields(
@@ -129,9 +142,10 @@ def _fields(
     first = compute_fields(small, linear or ["strain"], **settings, diagnose=diagnose and not by_finite)
     second = compute_fields(finite, real or ["det_f"], **settings, diagnose=diagnose and by_finite)
     arrays = {n: (second if n in real else first).arrays[n] for n in names}
+    extra = {n: a for n, a in first.arrays.items() if n in FRAME_AXES}
     return replace(
         first,
-        arrays=arrays,
+        arrays={**arrays, **extra},
         components={**first.components, **second.components},
         diagnostics=second.diagnostics if by_finite else first.diagnostics,
     )
@@ -142,7 +156,8 @@ def _checked_measures(options: StrainOptions) -> tuple[str, ...]:
     finite = [n for n in names if n in MEASURES and MEASURES[n].finite]
     if finite and options.solve == "linear":
         raise UsageError(
-            f"{finite[0]} of a geometrically linear solve is fiction: the solve itself used the small strain. Ask for the "
+            f"finite measures ({finite[0]} ...) of a geometrically linear solve are fiction: the solve itself used the small "
+            "strain. Ask for the "
             "small measures, or state --solve nonlinear if it was."
         )
     return names

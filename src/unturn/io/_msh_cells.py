@@ -8,6 +8,7 @@ from __future__ import annotations
 import numpy as np
 from numpy.typing import NDArray
 
+from unturn.io._msh_lagrange import lagrange_columns
 from unturn.io._node_order import PLACES, Places
 
 CELLS: dict[int, tuple[str, int]] = {
@@ -30,24 +31,25 @@ CELLS: dict[int, tuple[str, int]] = {
     17: ("hexahedron20", 20),
     18: ("wedge15", 15),
     19: ("pyramid13", 13),
-    21: ("triangle10", 10),
-    23: ("triangle15", 15),
-    25: ("triangle21", 21),
-    26: ("line4", 4),
-    27: ("line5", 5),
-    28: ("line6", 6),
-    29: ("tetra20", 20),
-    30: ("tetra35", 35),
-    31: ("tetra56", 56),
-    36: ("quad16", 16),
-    37: ("quad25", 25),
-    38: ("quad36", 36),
+    21: ("VTK_LAGRANGE_TRIANGLE", 10),
+    23: ("VTK_LAGRANGE_TRIANGLE", 15),
+    25: ("VTK_LAGRANGE_TRIANGLE", 21),
+    26: ("VTK_LAGRANGE_CURVE", 4),
+    27: ("VTK_LAGRANGE_CURVE", 5),
+    28: ("VTK_LAGRANGE_CURVE", 6),
+    29: ("VTK_LAGRANGE_TETRAHEDRON", 20),
+    30: ("VTK_LAGRANGE_TETRAHEDRON", 35),
+    31: ("VTK_LAGRANGE_TETRAHEDRON", 56),
+    36: ("VTK_LAGRANGE_QUADRILATERAL", 16),
+    37: ("VTK_LAGRANGE_QUADRILATERAL", 25),
+    38: ("VTK_LAGRANGE_QUADRILATERAL", 36),
     90: ("wedge40", 40),
     91: ("wedge75", 75),
-    92: ("hexahedron64", 64),
-    93: ("hexahedron125", 125),
+    92: ("VTK_LAGRANGE_HEXAHEDRON", 64),
+    93: ("VTK_LAGRANGE_HEXAHEDRON", 125),
+    94: ("VTK_LAGRANGE_HEXAHEDRON", 216),
 }
-"""MSH type -> name and number of nodes. Orders above two keep MSH's own node order."""
+"""MSH type -> name and number of nodes. Wedges above order two keep MSH's own node order and are not computed."""
 
 _TETRA: Places = ((0, 1), (1, 2), (2, 0), (3, 0), (2, 3), (1, 3))
 _PYRAMID: Places = ((0, 1), (0, 3), (0, 4), (1, 2), (1, 4), (2, 3), (2, 4), (3, 4))
@@ -71,6 +73,8 @@ _MSH_PLACES: dict[str, Places] = {
 
 def to_vtk_order(cell_type: str, nodes: NDArray[np.int64]) -> NDArray[np.int64]:
     """Return the nodes ``(n, n_nodes)`` of MSH elements in VTK's order."""
+    if cell_type.startswith("VTK_LAGRANGE"):
+        return nodes[:, lagrange_columns(cell_type, nodes.shape[1])]
     if cell_type not in _MSH_PLACES:
         return nodes
     theirs = [frozenset(place) for place in _MSH_PLACES[cell_type]]

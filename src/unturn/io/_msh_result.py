@@ -14,6 +14,7 @@ from unturn.result import Array, CellBlock, Result, Steps
 
 # Source: Gmsh 4.13 reference manual, MSH file format: dimension of the entity an element type belongs to.
 _DIMENSIONS = {"vertex": 0, "line": 1, "triangle": 2, "quad": 2}
+_DIMENSIONS |= {"VTK_LAGRANGE_CURVE": 1, "VTK_LAGRANGE_TRIANGLE": 2, "VTK_LAGRANGE_QUADRILATERAL": 2}
 
 
 class MshFile:
