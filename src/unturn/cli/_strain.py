@@ -84,7 +84,7 @@ def strain(
         typer.Option(
             metavar="FRAME",
             help="Axes of the components: 'cylindrical z', 'cylindrical 0,0,1 through 10,0,0', "
-            "'cartesian 1,1,0 0,0,1', or 'arrays FIRST SECOND' (cell arrays).",
+            "'cartesian 1,1,0 0,0,1', 'surface', or 'arrays FIRST SECOND' (cell arrays).",
         ),
     ] = None,
     thermal_expansion: Annotated[
