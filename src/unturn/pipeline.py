@@ -104,8 +104,8 @@ def compute(
     parts = _parts(small, options)
     removals: tuple[Removal, ...] = ()
     if parts:
-        real = any(n in MEASURES and MEASURES[n].finite for n in names)
-        small, removals = take_out(small, parts, options.solve, _axis(options.rigid_axis), real)
+        wanted = any(n in MEASURES and MEASURES[n].finite for n in names)
+        small, removals = take_out(small, parts, options.solve, _axis(options.rigid_axis), wanted)
     if finite is not None and parts:
         finite, real = take_out(finite, parts, "nonlinear", _axis(options.rigid_axis))
         if not any(n in SMALL for n in names):
