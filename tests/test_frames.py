@@ -252,8 +252,8 @@ def patch_in_space() -> meshes.Mesh:
 def test_the_frame_of_a_surface() -> None:
     mesh = patch_in_space()
     result = mesh.result(u=mesh.points @ H.T)
-    names = ["frame_axis_1", "frame_axis_2", "frame_axis_3"]
-    out = strain(result, measures=["strain"], frame="surface")
+    names = ["surface_direction_1", "surface_direction_2", "surface_normal"]
+    out = strain(result, measures=[*names, "strain"], frame="surface")
     axes = np.stack([out.cell_data[n] for n in names], axis=1)
     normal = (axis_angle([0.6, 0.0, 0.8], 0.4) + np.eye(3))[:, 2]
     np.testing.assert_allclose(axes @ axes.swapaxes(1, 2), np.tile(np.eye(3), (5, 1, 1)), atol=1e-15)
@@ -264,21 +264,28 @@ def test_the_frame_of_a_surface() -> None:
     local = strain(result, measures=["strain"], frame="surface")
     np.testing.assert_allclose(local.cell_data["strain"][:, [2, 4, 5]], 0, atol=1e-18)  # nothing across
     assert_turned(result, "surface", axes)
-    assert out.component_names["cell", "frame_axis_3"] == ("X", "Y", "Z")
+    assert out.component_names["cell", "surface_normal"] == ("X", "Y", "Z")
     assert out.component_names["cell", "strain"] == ("11", "22", "33", "12", "23", "13")
 
 
-def test_the_frame_of_a_surface_across_x_starts_from_y() -> None:
+def test_the_frame_of_a_surface_across_x_starts_from_z() -> None:
     mesh = meshes.patch(ELEMENTS["quad"])
     mesh = mesh._replace(points=np.roll(mesh.points, 1, axis=1))  # in y, z
-    out = strain(mesh.result(u=mesh.points @ H.T), measures=["strain"], frame="surface").cell_data
-    np.testing.assert_allclose(out["frame_axis_1"], np.tile([0, 1.0, 0], (5, 1)), atol=1e-15)
-    np.testing.assert_allclose(out["frame_axis_3"], np.tile([1.0, 0, 0], (5, 1)), atol=1e-15)
+    out = strain(
+        mesh.result(u=mesh.points @ H.T), measures=["surface_direction_1", "surface_normal"]
+    ).cell_data
+    np.testing.assert_allclose(out["surface_direction_1"], np.tile([0, 0, 1.0], (5, 1)), atol=1e-15)
+    np.testing.assert_allclose(out["surface_normal"], np.tile([1.0, 0, 0], (5, 1)), atol=1e-15)
 
 
 def test_the_frame_of_a_surface_is_not_one_of_solids() -> None:
-    with pytest.raises(UsageError, match="needs surface cells"):
-        strain(homogeneous(), frame="surface")
+    for options in ({"frame": "surface"}, {"measures": ["surface_normal"]}):
+        with pytest.raises(UsageError, match="needs surface cells"):
+            strain(homogeneous(), **options)  # type: ignore[arg-type]
+    assert (
+        "surface_normal"
+        not in strain(patch_in_space().result(u=patch_in_space().points), measures=["all"]).cell_data
+    )
 
 
 @pytest.mark.parametrize(

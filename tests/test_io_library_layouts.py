@@ -6,11 +6,12 @@ import base64
 from collections.abc import Callable
 from pathlib import Path
 
+import h5py
 import numpy as np
 import pytest
 
 import unturn
-from unturn.elements import element
+from unturn.elements import ELEMENTS, element
 from unturn.errors import DisplacementError
 
 Field = Callable[[np.ndarray], np.ndarray]
@@ -254,3 +255,51 @@ def test_msh_elements_of_higher_order(kind: int, tmp_path: Path) -> None:
     held = slice(0, 6) if dim == 3 else [0, 1, 3]
     found = unturn.strain(result, measures=["strain"]).cell_data["strain"]
     np.testing.assert_allclose(found[:, held], expected_strain(at)[:, held], atol=1e-15)
+
+
+@pytest.mark.source(
+    "MEDCoupling 9.15, WriteField: MED 4.2; element H27, QU9, P18, TR7, SE2; field DEPL at nodes"
+)
+@pytest.mark.parametrize(
+    ("med_name", "cell_type", "coordinates"),
+    [
+        ("H27", "hexahedron27", 3),
+        ("QU9", "quad9", 2),
+        ("P18", "wedge18", 3),
+        ("TR7", "triangle7", 2),
+        ("SE2", "line", 1),
+    ],
+)
+def test_med_fields_on_full_quadratic_cells_and_bars(
+    med_name: str, cell_type: str, coordinates: int, tmp_path: Path
+) -> None:
+    row = ELEMENTS[cell_type]
+    held = SLANT[:coordinates, :coordinates]
+    points = row.nodes @ held.T
+    slope = 1e-3 * np.array([[1.0, 2, 0], [0.5, -1, 1], [0, 0.25, 3]])[:coordinates, :coordinates]
+    path = tmp_path / "u.med"
+    whole = {"NBR": len(points)}
+    with h5py.File(path, "w") as file:
+        mesh = file.create_group("ENS_MAA/mesh")
+        mesh.attrs.update({"DIM": row.dim, "ESP": coordinates, "TYP": 0})
+        step = mesh.create_group("-0000000000000000001-0000000000000000001")
+        step.create_dataset("NOE/COO", data=points.T.ravel()).attrs.update(whole)
+        nodes = step.create_dataset(f"MAI/{med_name}/NOD", data=np.arange(1, len(points) + 1))
+        nodes.attrs["NBR"] = 1
+        file.create_group("FAS/mesh/FAMILLE_ZERO").attrs["NUM"] = 0
+        field = file.create_group("CHA/DEPL")
+        field.attrs.update({"MAI": b"mesh", "NCO": coordinates, "TYP": 6})
+        at = field.create_group("0000000000000000000100000000000000000000")
+        at.attrs.update({"NDT": 1, "NOR": 0, "PDT": 1.0})
+        at.create_group("NOE").attrs["PFL"] = np.bytes_(b"MED_NO_PROFILE_INTERNAL")
+        values = at.create_group("NOE/MED_NO_PROFILE_INTERNAL")
+        values.attrs.update(whole)
+        values.create_dataset("CO", data=(points @ slope.T).T.ravel())
+    result = unturn.read(path)
+    assert [b.cell_type for b in result.blocks] == [cell_type]
+    found = unturn.strain(result, measures=["strain"]).cell_data["strain"][0]
+    expected = np.zeros((3, 3))
+    expected[:coordinates, :coordinates] = (slope + slope.T) / 2
+    seen = {1: [0], 2: [0, 1, 3], 3: [0, 1, 2, 3, 4, 5]}[coordinates]
+    flat = expected[[0, 1, 2, 0, 1, 0], [0, 1, 2, 1, 2, 2]]
+    np.testing.assert_allclose(found[seen], flat[seen], atol=1e-15)

@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 
 from unturn.displacement import find_displacement
 from unturn.errors import UsageError
-from unturn.fields import FRAME_AXES, CellFields, Location, compute_fields
+from unturn.fields import CellFields, Location, compute_fields
 from unturn.frames import Frame, parse_frame
 from unturn.gradient import NodalFields, PlaneModel
 from unturn.kinematics._symmetric import Floats
@@ -104,8 +104,8 @@ def compute(
     parts = _parts(small, options)
     removals: tuple[Removal, ...] = ()
     if parts:
-        real = any(n in MEASURES and MEASURES[n].finite for n in names)
-        small, removals = take_out(small, parts, options.solve, _axis(options.rigid_axis), real)
+        wanted = any(n in MEASURES and MEASURES[n].finite for n in names)
+        small, removals = take_out(small, parts, options.solve, _axis(options.rigid_axis), wanted)
     if finite is not None and parts:
         finite, of_finite = take_out(finite, parts, "nonlinear", _axis(options.rigid_axis))
         if not any(n in SMALL for n in names):
@@ -142,10 +142,9 @@ def _fields(
     first = compute_fields(small, linear or ["strain"], **settings, diagnose=diagnose and not by_finite)
     second = compute_fields(finite, real or ["det_f"], **settings, diagnose=diagnose and by_finite)
     arrays = {n: (second if n in real else first).arrays[n] for n in names}
-    extra = {n: a for n, a in first.arrays.items() if n in FRAME_AXES}
     return replace(
         first,
-        arrays={**arrays, **extra},
+        arrays=arrays,
         components={**first.components, **second.components},
         diagnostics=second.diagnostics if by_finite else first.diagnostics,
     )
