@@ -274,7 +274,8 @@ def _axis(text: str | None) -> Axis | None:
         direction, point = (np.array([float(w) for w in words[k].split(",")]) for k in (0, 2))
     except (ValueError, IndexError):
         direction = point = np.zeros(0)
-    if len(words) != 3 or words[1] != "through" or direction.shape != (3,) or point.shape != (3,):
+    sound = all(v.shape == (3,) and np.isfinite(v).all() for v in (direction, point))
+    if len(words) != 3 or words[1] != "through" or not sound:
         raise UsageError(f"--rigid-axis {text!r} is not understood. Use '0,0,1' or '0,0,1 through 10,0,0'.")
     return Axis(point, direction)
 
