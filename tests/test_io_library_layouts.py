@@ -11,8 +11,10 @@ import numpy as np
 import pytest
 
 import unturn
+from unturn import io
 from unturn.elements import ELEMENTS, element
 from unturn.errors import DisplacementError, InputError
+from unturn.result import CellBlock, Result
 
 Field = Callable[[np.ndarray], np.ndarray]
 SLANT = np.array([[1.0, 0.1, 0.05], [0.2, 0.9, -0.1], [0.0, 0.15, 1.1]])
@@ -339,3 +341,13 @@ def test_med_fields_on_full_quadratic_cells_and_bars(
     seen = {1: [0], 2: [0, 1, 3], 3: [0, 1, 2, 3, 4, 5]}[coordinates]
     flat = expected[[0, 1, 2, 0, 1, 0], [0, 1, 2, 1, 2, 2]]
     np.testing.assert_allclose(found[seen], flat[seen], atol=1e-15)
+
+
+def test_a_result_whose_cells_xdmf_cannot_name_goes_to_vtu() -> None:
+    cubic = CellBlock("VTK_LAGRANGE_TRIANGLE", np.arange(10)[None], np.array([0]))
+    linear = CellBlock("triangle", np.arange(3)[None], np.array([0]))
+    for block, single, series in ((cubic, ".vtu", ".pvd"), (linear, ".xdmf", ".xdmf")):
+        result = Result(np.random.default_rng(0).normal(size=(10, 3)), (block,))
+        assert io.writable_suffix(Path("a.xdmf"), result) == single
+        assert io.writable_suffix(Path("a.xdmf"), result, series=True) == series
+    assert io.writable_suffix(Path("a.msh"), result) == ".vtu"
