@@ -11,8 +11,10 @@ import numpy as np
 import pytest
 
 import unturn
+from unturn import io
 from unturn.elements import ELEMENTS, element
-from unturn.errors import DisplacementError
+from unturn.errors import DisplacementError, InputError
+from unturn.result import CellBlock, Result
 
 Field = Callable[[np.ndarray], np.ndarray]
 SLANT = np.array([[1.0, 0.1, 0.05], [0.2, 0.9, -0.1], [0.0, 0.15, 1.1]])
@@ -107,6 +109,42 @@ def test_base64_with_its_length_apart_and_padded_offsets(
     np.testing.assert_array_equal(result.points, points)
     np.testing.assert_array_equal(result.point_data["u"], displacement(points))
     assert result.blocks[0].connectivity.tolist() == cells.tolist()
+
+
+@pytest.mark.source("GetFEM 5.4.2, export_to_vtu: in front of point arrays the number of values as a float")
+@pytest.mark.parametrize("short", [False, True])
+def test_base64_behind_a_length_that_is_none(short: bool, tmp_path: Path) -> None:
+    points = (np.array([[0, 0, 0], [1, 0, 0], [0, 1, 0], [0, 0, 1.0]]) @ SLANT.T).astype(np.float32)
+    u = displacement(points).astype(np.float32)
+
+    def array(name: str, values: np.ndarray, kind: str, more: str = "", length: bytes = b"") -> str:
+        data = (length or np.array([values.nbytes], "<u4").tobytes()) + values.tobytes()
+        return (
+            f'<DataArray type="{kind}" Name="{name}"{more} format="binary">\n'
+            f"{base64.b64encode(data).decode()}\n</DataArray>\n"
+        )
+
+    three = ' NumberOfComponents="3"'
+    path = tmp_path / "u.vtu"
+    path.write_text(
+        '<?xml version="1.0"?>\n<VTKFile type="UnstructuredGrid" version="0.1" byte_order="LittleEndian">\n'
+        '<UnstructuredGrid>\n<Piece NumberOfPoints="4" NumberOfCells="1">\n<Points>\n'
+        + array("Points", points, "Float32", three)
+        + "</Points>\n<Cells>\n"
+        + array("connectivity", np.arange(4, dtype=np.int32), "Int32")
+        + array("offsets", np.array([4], np.int32), "Int32")
+        + array("types", np.array([10], np.int32), "Int32")
+        + "</Cells>\n<PointData>\n"
+        + array("displacement", u[: 4 - short], "Float32", three, np.array([u.size], "<f4").tobytes())
+        + "</PointData>\n</Piece>\n</UnstructuredGrid>\n</VTKFile>\n"
+    )
+    if short:
+        with pytest.raises(InputError, match="'displacement' has 9 values; 12 are needed"):
+            unturn.read(path)
+        return
+    result = unturn.read(path)
+    np.testing.assert_array_equal(result.point_data["displacement"], u)
+    np.testing.assert_array_equal(result.points, points)
 
 
 def xdmf(topology: str, rows: np.ndarray, points: np.ndarray, values: np.ndarray, more: str = "") -> str:
@@ -303,3 +341,13 @@ def test_med_fields_on_full_quadratic_cells_and_bars(
     seen = {1: [0], 2: [0, 1, 3], 3: [0, 1, 2, 3, 4, 5]}[coordinates]
     flat = expected[[0, 1, 2, 0, 1, 0], [0, 1, 2, 1, 2, 2]]
     np.testing.assert_allclose(found[seen], flat[seen], atol=1e-15)
+
+
+def test_a_result_whose_cells_xdmf_cannot_name_goes_to_vtu() -> None:
+    cubic = CellBlock("VTK_LAGRANGE_TRIANGLE", np.arange(10)[None], np.array([0]))
+    linear = CellBlock("triangle", np.arange(3)[None], np.array([0]))
+    for block, single, series in ((cubic, ".vtu", ".pvd"), (linear, ".xdmf", ".xdmf")):
+        result = Result(np.random.default_rng(0).normal(size=(10, 3)), (block,))
+        assert io.writable_suffix(Path("a.xdmf"), result) == single
+        assert io.writable_suffix(Path("a.xdmf"), result, series=True) == series
+    assert io.writable_suffix(Path("a.msh"), result) == ".vtu"

@@ -96,6 +96,14 @@ class CellFields:
     mirrored: int = 0
     diagnostics: CellDiagnostics | None = None
 
+    @property
+    def notes(self) -> tuple[str, ...]:
+        """Sentences for the user: the model's, and what was found on the way."""
+        if not self.mirrored:
+            return self.model.notes
+        mirrored = f"{self.mirrored} solids are numbered the other way round (negative Jacobian everywhere)"
+        return (*self.model.notes, f"{mirrored}; their gradient is right")
+
 
 def compute_fields(
     model: Model,
