@@ -164,3 +164,26 @@ def test_a_skin_has_its_own_frame_and_thickness(tmp_path: Path) -> None:
     status, said = run([*arguments, "--measures", "strain"])
     assert status == 0, said
     np.testing.assert_allclose(io.read(target).cell_data["strain_hencky"][:, 2], 0, atol=1e-14)
+
+
+@pytest.mark.derived(
+    "the solver's strain is of the whole motion from the undeformed state: it is compared with that"
+)
+def test_the_solver_is_compared_on_the_whole_motion(tmp_path: Path) -> None:
+    from unturn import strain
+    from unturn.pipeline import StrainOptions, compute
+    from unturn.summary import summarise
+
+    plain = io.read(LEVER)
+    own = strain(plain, measures=["strain"]).cell_data["strain"]
+    result = plain.with_arrays(cell_data={"EPS": own})
+    for more in (
+        {},
+        {"remove_rigid": "regions"},
+        {"remove_rigid": "whole", "solve": "nonlinear", "frame": "cylindrical z"},
+    ):
+        (found,) = summarise(compute(result, StrainOptions(**more), diagnose=True)).agreements  # type: ignore[arg-type]
+        assert found.agrees, more
+        assert found.difference < 1e-9
+    zero = io.read(LEVER, 2)
+    assert summarise(compute(result, StrainOptions(), zero=zero, diagnose=True)).agreements == ()
