@@ -174,6 +174,7 @@ def strain(
         reference_temperature, skin, alive, threads,
     )  # fmt: skip
     computed = compute(result, options, zero=zero)
+    computed.require_some()
     return add_fields(result, computed, prefix=prefix, overwrite=overwrite)
 
 

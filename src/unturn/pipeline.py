@@ -10,7 +10,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from unturn.displacement import find_displacement
-from unturn.errors import UsageError
+from unturn.errors import InputError, UsageError
 from unturn.fields import CellFields, Location, compute_fields
 from unturn.frames import Frame, parse_frame
 from unturn.gradient import NodalFields, PlaneModel
@@ -58,6 +58,24 @@ class Computed:
     fields: CellFields
     removals: tuple[Removal, ...] = ()
     request: dict[str, Any] = field(default_factory=dict)
+
+    def require_some(self) -> None:
+        """Refuse a result of which no cell could be computed.
+
+        Raises
+        ------
+        InputError
+            Every cell was left out.
+        """
+        n = self.fields.model.result.n_cells
+        out = self.fields.left_out
+        if sum(len(cells) for cells in out.values()) >= n:
+            where = self.fields.model.result.path
+            reasons = ", ".join(f"{len(cells)} {reason}" for reason, cells in out.items())
+            raise InputError(
+                f"{where + ': ' if where else ''}no cell could be computed: {reasons}. Look at the displacement and the mesh "
+                "with 'unturn survey'."
+            )
 
 
 def compute(
