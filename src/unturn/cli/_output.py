@@ -34,15 +34,15 @@ def _finite(data: Any) -> Any:
     return data
 
 
-def output_path(source: Path, asked: Path | None, several: bool, suffix: str) -> Path:
-    """Return where the output of one input goes.
+def output_path(source: Path, asked: Path | None, several: bool, suffix: str, added: str = "strain") -> Path:
+    """Return where the output of one input goes; `added` stands before the suffix of a name of ours.
 
     Raises
     ------
     UsageError
         Several inputs and an output that is no folder.
     """
-    name = f"{source.stem}.strain{suffix}"
+    name = f"{source.stem}.{added}{suffix}"
     if asked is None:
         return source.with_name(name)
     if asked.is_dir():
