@@ -20,6 +20,7 @@ from unturn.fields import CellDiagnostics, CellFields
 from unturn.kinematics._symmetric import Floats
 from unturn.measures import MEASURES
 from unturn.model import Model
+from unturn.numbering import Numbering, element_numbers
 from unturn.pipeline import StrainOptions, compute
 from unturn.regions import Region, find_regions, named_regions
 from unturn.result import Result
@@ -129,6 +130,8 @@ class Envelope:
         State -> what went wrong.
     notes
         Sentences for the user.
+    numbers
+        The solver's element numbers, where an array holds them.
     """
 
     options: EnvelopeOptions
@@ -143,6 +146,7 @@ class Envelope:
     left_out: dict[str, NDArray[np.int64]]
     failures: dict[int, UnturnError]
     notes: tuple[str, ...]
+    numbers: Numbering | None
 
 
 def envelope(
@@ -360,4 +364,5 @@ class _Run:
         return Envelope(
             self.options, states, self.model, arrays, components, tuple(tracked), tuple(self.judged), self.volume,
             self.centroid, self.left_out, self.failures, tuple(self.notes),
+            element_numbers(self.model.result),
         )  # fmt: skip

@@ -13,11 +13,10 @@ import numpy as np
 from unturn._version import __version__
 from unturn.envelope import RANGE, Envelope, Judged, Tracked
 from unturn.measures import MEASURES
-from unturn.numbering import element_numbers
 from unturn.series import SERIES_MEASURES
 from unturn.statistics import statistics
 from unturn.summary import CAUTION, cell_counts, equivalent_form, mesh_kind
-from unturn.summary_text import _aligned, _micro, _of_its_strain
+from unturn.summary_text import _FINITE_ONLY, _advice, _aligned, _micro, _of_its_strain
 
 SCHEMA = "unturn.envelope/1"
 _MOST_COLUMNS = 5
@@ -125,7 +124,7 @@ def _region_data(envelope: Envelope, r: Judged) -> dict[str, Any]:
 
 
 def _place(envelope: Envelope, cell: int) -> dict[str, Any]:
-    numbers = element_numbers(envelope.model.result)
+    numbers = envelope.numbers
     known = cell >= 0
     return {
         "cell": cell if known else None,
@@ -167,7 +166,8 @@ def _state(envelope: Envelope, number: int) -> str:
 
 def _verdicts(envelope: Envelope) -> list[str]:
     lines = [f"small strain, worst {'step' if envelope.options.kind == 'step' else 'case'} of each region"]
-    rows, actions = [], []
+    rows = []
+    actions: dict[str, list[str]] = {}
     for r in envelope.judged:
         v = r.verdict
         level = v.level if v.level in ("holds", "no strain", "not judged") else v.level.upper()
@@ -175,8 +175,19 @@ def _verdicts(envelope: Envelope) -> list[str]:
         turns = f"turns up to {v.largest_rotation:.3g} degrees" if math.isfinite(v.largest_rotation) else ""
         rows.append([f"  {r.region.name}", level, _state(envelope, r.state), error, turns])
         if v.action:
-            actions.append(f"  -> {r.region.name}: {v.action}")
-    return [*lines, *_aligned(rows, left=True), *actions]
+            actions.setdefault(v.action, []).append(r.region.name)
+    lines += _aligned(rows, left=True)
+    if _finite_only(envelope):
+        return [*lines, *_advice(_FINITE_ONLY[envelope.options.strain.solve])]
+    for action, names in actions.items():
+        lines += _advice(f"{', '.join(names)}: {action}")
+    return lines
+
+
+def _finite_only(envelope: Envelope) -> bool:
+    """Whether every strain among the measures is a finite one; those of a linear solve are refused before."""
+    strains = [MEASURES[t.measure] for t in envelope.tracked if t.measure in MEASURES]
+    return bool(strains) and all(m.finite for m in strains if m.unit == "strain")
 
 
 def _table(envelope: Envelope) -> list[str]:
@@ -261,7 +272,7 @@ def _tail(envelope: Envelope) -> list[str]:
         )
     left = ", ".join(f"{len(cells)} {reason}" for reason, cells in envelope.left_out.items())
     lines.append(f"never computed: {left or 'no cell'}")
-    numbers = element_numbers(envelope.model.result)
+    numbers = envelope.numbers
     of = f"element numbers are those of '{numbers.name}'; " if numbers is not None else ""
     lines.append(f"{of}cell = zero-based position in the file")
     lines += [f"note: {note}" for note in (*envelope.model.notes, *envelope.notes)]
