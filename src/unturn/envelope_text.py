@@ -186,8 +186,9 @@ def _verdicts(envelope: Envelope) -> list[str]:
 
 def _finite_only(envelope: Envelope) -> bool:
     """Whether every strain among the measures is a finite one; those of a linear solve are refused before."""
-    strains = [MEASURES[t.measure] for t in envelope.tracked if t.measure in MEASURES]
-    return bool(strains) and all(m.finite for m in strains if m.unit == "strain")
+    rows = [MEASURES[t.measure] for t in envelope.tracked if t.measure in MEASURES]
+    strains = [m for m in rows if m.unit == "strain"]
+    return bool(strains) and all(m.finite for m in strains)
 
 
 def _table(envelope: Envelope) -> list[str]:

@@ -19,7 +19,7 @@ from unturn.kinematics._symmetric import Floats
 
 Ints = NDArray[np.int64]
 
-_BLOCK = 1_000_000  # numbers of a block of cells, all steps: 8 MB
+_BLOCK = 300_000  # numbers of a block of cells, all steps: 2.4 MB
 _COMPONENTS = 5
 _ROW = 8 * _COMPONENTS
 
