@@ -122,7 +122,7 @@ def study(values: tuple[float, float, float], sizes: tuple[float, float, float])
     if abs(e21) <= floor or abs(e32) <= floor:
         which = "medium and fine" if abs(e21) <= floor else "coarse and medium"
         reason = (
-            f"it is the same on the {which} mesh and another on the third: no order follows. Refine once more"
+            f"it is the same on the {which} mesh and another on the third: no order follows. Refine again"
         )
         return Study(values, "stalls", reason)
     if e32 / e21 < 0:
@@ -139,7 +139,7 @@ def study(values: tuple[float, float, float], sizes: tuple[float, float, float])
         )
         return Study(values, "diverges", reason)
     if p >= HIGHEST:
-        reason = f"it changes {abs(e32 / e21):.3g} times less at the second refinement: faster than any order. Refine once more"
+        reason = f"it changes {e32 / e21:.3g} times less at the second refinement: faster than any order. Refine again"
         return Study(values, "stalls", reason)
     gain21, gain32 = math.expm1(p * math.log(r21)), math.expm1(p * math.log(r32))
     error, error_medium = SAFETY * abs(e21) / gain21, SAFETY * abs(e32) / gain32
