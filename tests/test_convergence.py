@@ -81,7 +81,7 @@ def test_a_sequence_that_diverges_is_refused(values: tuple[float, float, float])
 def test_other_sequences_are_refused_with_the_reason() -> None:
     sizes = (4.0, 2.0, 1.0)
     assert study((1.0, 2.0, 1.5), sizes).behaviour == "oscillates"
-    assert "it oscillates (+1, then -0.5)" in study((1.0, 2.0, 1.5), sizes).reason
+    assert "it oscillates" in study((1.0, 2.0, 1.5), sizes).reason
     same = study((1.0, 1.0, 1.0), sizes)
     assert (same.behaviour, same.extrapolated, same.error, same.index) == ("unchanged", 1.0, 0.0, 0.0)
     assert math.isnan(same.order)

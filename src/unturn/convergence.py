@@ -127,14 +127,14 @@ def study(values: tuple[float, float, float], sizes: tuple[float, float, float])
         return Study(values, "stalls", reason)
     if e32 / e21 < 0:
         reason = (
-            f"it oscillates ({-e32:+.3g}, then {-e21:+.3g}). The meshes are too coarse for an order, or not alike: refine "
+            "it oscillates: up, then down, or the other way round. The meshes are too coarse for an order, or not alike: refine "
             "all of them in the same way"
         )
         return Study(values, "oscillates", reason)
     p = observed_order(e32 / e21, r21, r32)
     if p <= LOWEST:
         reason = (
-            f"it diverges: the change does not shrink with the size ({-e32:+.3g}, then {-e21:+.3g}). A peak that grows so "
+            "it diverges: the change does not shrink with the size. A peak that grows so "
             "often sits at a sharp corner, a point load or a point support: take a value away from it"
         )
         return Study(values, "diverges", reason)

@@ -175,6 +175,10 @@ def _number(value: float, strain: bool) -> str:
     return f"{value * 1e6 if strain else value:.6g}"
 
 
+def _rounded(value: float, strain: bool) -> str:
+    return f"{value * 1e6 if strain else value:.3g}"
+
+
 def _words(s: Study, strain: bool) -> str:
     if s.behaviour == "unchanged":
         return f"{_number(s.values[2], strain)}, {s.reason}"
@@ -182,6 +186,6 @@ def _words(s: Study, strain: bool) -> str:
         return f"NO ORDER, {s.reason}."
     share = f" ({100 * s.index:.3g} % of it)" if math.isfinite(s.index) else ""
     return (
-        f"{_number(s.values[2], strain)} on the fine mesh, +-{_number(s.error, strain)}{share}; order {s.order:.3g}; "
+        f"{_number(s.values[2], strain)} on the fine mesh, +-{_rounded(s.error, strain)}{share}; order {s.order:.3g}; "
         f"extrapolated {_number(s.extrapolated, strain)}"
     )
