@@ -109,7 +109,7 @@ def compute(
         A result that cannot be used.
     """
     names = _checked_measures(options)
-    model = _model(result, options)
+    model = model_of(result, options)
     frame = None if options.frame is None else parse_frame(options.frame, result)
     settings: dict[str, Any] = {
         "at": options.at,
@@ -180,7 +180,8 @@ def _checked_measures(options: StrainOptions) -> tuple[str, ...]:
     return names
 
 
-def _model(result: Result, options: StrainOptions) -> Model:
+def model_of(result: Result, options: StrainOptions) -> Model:
+    """Return the model of a result as the options ask."""
     return build_model(
         result,
         displacement=options.displacement,

@@ -7,7 +7,7 @@ from typing import Annotated
 
 import typer
 
-from unturn.cli import _strain, _survey
+from unturn.cli import _convergence, _envelope, _strain, _survey
 from unturn.errors import UnturnError
 
 _EPILOG = (
@@ -29,6 +29,8 @@ app = typer.Typer(
 )
 app.command("survey")(_survey.survey)
 app.command("strain")(_strain.strain)
+app.command("envelope")(_envelope.envelope)
+app.command("convergence")(_convergence.convergence)
 
 
 def _show_version(value: bool) -> None:

@@ -49,9 +49,12 @@ def _finite(data: Any) -> Any:
     return data
 
 
-def output_path(source: Path, asked: Path | None, suffix: str) -> Path:
-    """Return where the output of one input goes: the name asked for, in the folder asked for, or beside the input."""
-    name = f"{source.stem}.strain{suffix}"
+def output_path(source: Path, asked: Path | None, suffix: str, added: str = "strain") -> Path:
+    """Return where the output of one input goes: the name asked for, in the folder asked for, or beside the input.
+
+    `added` stands before the suffix of a name of ours.
+    """
+    name = f"{source.stem}.{added}{suffix}"
     if asked is None:
         return source.with_name(name)
     return asked / name if asked.is_dir() else asked

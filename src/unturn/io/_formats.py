@@ -185,7 +185,7 @@ def _listing(formats: tuple[Format, ...] | list[Format]) -> str:
     return ", ".join(f"{f.name} ({' '.join(f.suffixes)})" for f in formats)
 
 
-def writable_suffix(path: Path, result: Result, *, series: bool = False) -> str:
+def writable_suffix(path: Path, result: Result | None = None, *, series: bool = False) -> str:
     """Return the suffix of a new file for a result read from `path`: its own where that can be written.
 
     A format that is only read, a single step of a format that is only a series, and cells that XDMF has no name for, go to
@@ -195,7 +195,8 @@ def writable_suffix(path: Path, result: Result, *, series: bool = False) -> str:
     suffix = ".xdmf" if series else ".vtu"
     if fmt is not None and (fmt.write_series if series else fmt.write) is not None:
         suffix = path.suffix
-    nameless = any(b.cell_type.startswith(("VTK_", "polyhedron")) for b in result.blocks)
+    blocks = () if result is None else result.blocks
+    nameless = any(b.cell_type.startswith(("VTK_", "polyhedron")) for b in blocks)
     if nameless and _BY_SUFFIX.get(suffix.lower()) is _BY_NAME["XDMF"]:
         return ".pvd" if series else ".vtu"
     return suffix

@@ -1,0 +1,114 @@
+"""Extremes of arrays over states, and what must be computed at each state for them."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+from typing import Literal
+
+import numpy as np
+from numpy.typing import NDArray
+
+from unturn.errors import UsageError
+from unturn.kinematics._finite import BASES
+from unturn.kinematics._symmetric import Floats
+from unturn.measures import GEOMETRY, MEASURES, choose_measures
+from unturn.series import SERIES_MEASURES, StepChanges
+
+Kind = Literal["step", "case"]
+Stored = NDArray[np.float64] | NDArray[np.int32]
+
+_NO_RANGE = "almansi"  # its axes turn with the body: tensors of two steps cannot be subtracted
+_NO_TENSOR = ("displacement_gradient", "small_strain_error")
+
+
+class Extremes:
+    """Largest and smallest values of an array over the states, and the states they are of; NaN does not count."""
+
+    def __init__(self, shape: tuple[int, ...]) -> None:
+        self.maximum, self.minimum = np.full(shape, -np.inf), np.full(shape, np.inf)
+        self.at_maximum, self.at_minimum = (np.full(shape, -1, dtype=np.int32) for _ in range(2))
+
+    def add(self, values: Floats, state: int) -> tuple[NDArray[np.bool_], NDArray[np.bool_]]:
+        """Take the values of a state; return where they are a new maximum and a new minimum."""
+        higher, lower = values > self.maximum, values < self.minimum
+        for mask, extreme, at in (
+            (higher, self.maximum, self.at_maximum),
+            (lower, self.minimum, self.at_minimum),
+        ):
+            np.copyto(extreme, values, where=mask)
+            at[mask] = state
+        return higher, lower
+
+    def arrays(self, name: str, kind: Kind, signed: bool) -> dict[str, Stored]:
+        """Return the arrays of a measure by their names; of equal magnitudes the earlier state counts."""
+        for extreme, at in ((self.maximum, self.at_maximum), (self.minimum, self.at_minimum)):
+            extreme[at < 0] = np.nan
+        found: dict[str, Stored] = {
+            f"{name}_maximum": self.maximum,
+            f"{name}_maximum_{kind}": self.at_maximum,
+            f"{name}_minimum": self.minimum,
+            f"{name}_minimum_{kind}": self.at_minimum,
+        }
+        if signed:
+            high, low = np.abs(self.maximum), np.abs(self.minimum)
+            upper = (high > low) | ((high == low) & (self.at_maximum <= self.at_minimum))
+            found[f"{name}_largest_magnitude"] = np.where(upper, high, low)
+            found[f"{name}_largest_magnitude_{kind}"] = np.where(upper, self.at_maximum, self.at_minimum)
+        return found
+
+
+@dataclass(frozen=True)
+class Plan:
+    """What is computed at each state and what is made of it."""
+
+    extremes: tuple[str, ...]
+    series: tuple[str, ...]
+    families: tuple[str, ...]  # of strain tensors with a range: "" or a finite base
+    needs: tuple[str, ...]
+    notes: tuple[str, ...]
+
+    @property
+    def principal(self) -> tuple[str, ...]:
+        """Suffixes of the principal strains whose directions are kept."""
+        return tuple(
+            n.removeprefix("principal_strain") for n in self.extremes if n.startswith("principal_strain")
+        )
+
+
+def plan_envelope(asked: Sequence[str] | None, base: str, changes: StepChanges, tensor_range: bool) -> Plan:
+    """Return what an envelope of these measures needs.
+
+    Raises
+    ------
+    UsageError
+        An unknown measure, or one that has no extremes.
+    """
+    own = None if asked is None else [n for n in asked if n not in SERIES_MEASURES]
+    chosen = choose_measures(own, base) if own is None or own else ()
+    for name in own or ():
+        if name in GEOMETRY or name.startswith("principal_direction"):
+            raise UsageError(
+                f"{name} has no largest value. The directions of the extreme principal values are written with "
+                "principal_strain; ask for that."
+            )
+    extremes = tuple(n for n in chosen if n in MEASURES and not n.startswith("principal_direction"))
+    families = {_family(n) for n in extremes if MEASURES[n].unit == "strain" and n not in _NO_TENSOR}
+    notes: tuple[str, ...] = ()
+    if tensor_range and _NO_RANGE in families:
+        notes = ("no strain range of the Almansi strain: its axes turn with the body, so that tensors of two steps "
+                 "cannot be subtracted",)  # fmt: skip
+    ranged = [f for f in ("", *BASES) if f in families - {_NO_RANGE}] if tensor_range else []
+    needs = {*extremes, *changes.needs, *(strain_tensor(f) for f in ranged)}
+    for suffix in (n.removeprefix("principal_strain") for n in extremes if n.startswith("principal_strain")):
+        needs.update(f"principal_direction_{k}{suffix}" for k in (1, 2, 3))
+    return Plan(extremes, changes.names, tuple(ranged), tuple(n for n in MEASURES if n in needs), notes)
+
+
+def _family(name: str) -> str:
+    return next((b for b in BASES if name.endswith(f"_{b}")), "")
+
+
+def strain_tensor(family: str) -> str:
+    """Return the name of the strain tensor of a base; ``""`` is the small strain."""
+    return f"strain_{family}" if family else "strain"

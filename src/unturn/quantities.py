@@ -1,0 +1,237 @@
+"""Named quantities of a result: a peak, a percentile or a value at a point, each from one line of text."""
+
+from __future__ import annotations
+
+import math
+import re
+from dataclasses import dataclass
+from typing import Literal
+
+import numpy as np
+from numpy.typing import NDArray
+
+from unturn.errors import InputError, UsageError, close_matches
+from unturn.fields import CellFields
+from unturn.gradient import sample_points
+from unturn.kinematics._symmetric import Floats
+from unturn.locate import locate
+from unturn.measures import MEASURES, Measure, Split
+from unturn.regions import Region, named_regions
+from unturn.statistics import statistics
+
+Form = Literal["peak", "lowest", "percentile", "value"]
+
+FORMS = (
+    "'peak NAME', 'lowest NAME' or 'percentile Q NAME', each with 'in REGION' or 'within R of X,Y,Z' after it where "
+    "wanted, or 'value NAME at X,Y,Z'"
+)
+_PATTERN = re.compile(
+    r"(?:(?P<form>peak|lowest|value)|percentile\s+(?P<q>\S+))\s+(?P<name>\S+)"
+    r"(?:\s+in\s+(?P<region>.+)|\s+within\s+(?P<radius>\S+)\s+of\s+(?P<centre>.+)|\s+at\s+(?P<at>.+))?"
+)
+
+
+@dataclass(frozen=True, eq=False)
+class Quantity:
+    """A number to be had from a result.
+
+    Parameters
+    ----------
+    text
+        As the user wrote it.
+    form
+        What is taken over the cells.
+    measure, component
+        Of what; component -1 for a scalar.
+    percentage
+        For a percentile.
+    region
+        Name of a region; empty for the whole.
+    point, radius
+        Centre and radius of a ball that must hold the centroid of a cell; or the place of a value.
+    """
+
+    text: str
+    form: Form
+    measure: Measure
+    component: int
+    percentage: float = math.nan
+    region: str = ""
+    point: Floats | None = None
+    radius: float = math.inf
+
+
+@dataclass(frozen=True, eq=False)
+class Found:
+    """A quantity of one result: its value, the cell that holds it (-1: none in particular), where, of how many cells."""
+
+    value: float
+    cell: int
+    at: Floats
+    cells: int
+
+
+def parse_quantity(text: str) -> Quantity:
+    """Return the quantity of a text; see `FORMS`.
+
+    NAME is a scalar measure or one with its component: ``equivalent_strain``, ``principal_strain_1``, ``strain_XX``.
+
+    Raises
+    ------
+    UsageError
+        The text is none of these forms, or names no measure.
+
+    Examples
+    --------
+    >>> parse_quantity("peak principal_strain_1 within 5 of 10,0,0").radius
+    5.0
+    """
+    found = _PATTERN.fullmatch(text.strip())
+    if found is None:
+        raise UsageError(f"--quantity {text!r} is not understood. Use {FORMS}.")
+    form: Form = "percentile" if found["form"] is None else found["form"]  # type: ignore[assignment]
+    if (form == "value") is not (found["at"] is not None):
+        raise UsageError(
+            f"--quantity {text!r}: 'value NAME' goes with 'at X,Y,Z', and nothing else does. Use {FORMS}."
+        )
+    measure, component = _measure(found["name"], text)
+    place = found["centre"] or found["at"]
+    return Quantity(
+        text, form, measure, component,
+        percentage=math.nan if found["q"] is None else _number(found["q"], text, 0.0, 100.0),
+        region=(found["region"] or "").strip(),
+        point=None if place is None else _point(place, text),
+        radius=math.inf if found["radius"] is None else _number(found["radius"], text, 0.0, math.inf),
+    )  # fmt: skip
+
+
+def _number(word: str, text: str, low: float, high: float) -> float:
+    try:
+        value = float(word)
+    except ValueError:
+        value = math.nan
+    if not low < value <= high:
+        raise UsageError(f"--quantity {text!r}: {word!r} is no number above {low:g}" + (
+            f" and up to {high:g}." if math.isfinite(high) else "."))  # fmt: skip
+    return value
+
+
+def _point(words: str, text: str) -> Floats:
+    try:
+        values = np.array([float(w) for w in words.split(",")])
+    except ValueError:
+        values = np.zeros(0)
+    if len(values) not in (2, 3) or not np.isfinite(values).all():
+        raise UsageError(f"--quantity {text!r}: {words!r} is no point; write X,Y,Z.")
+    return np.append(values, 0.0)[:3]
+
+
+def _measure(name: str, text: str) -> tuple[Measure, int]:
+    if name in MEASURES and not MEASURES[name].components:
+        return MEASURES[name], -1
+    base, _, component = name.rpartition("_")
+    if base in MEASURES and component in MEASURES[base].components:
+        return MEASURES[base], MEASURES[base].components.index(component)
+    known = [
+        m.name if not m.components else f"{m.name}_{c}"
+        for m in MEASURES.values()
+        for c in m.components or ("",)
+    ]
+    if name in MEASURES:
+        listed = ", ".join(f"{name}_{c}" for c in MEASURES[name].components)
+        raise UsageError(f"--quantity {text!r}: {name} has components; name one of {listed}.")
+    raise UsageError(f"--quantity {text!r}: no number is called {name!r}.{close_matches(name, known)}")
+
+
+def find_quantity(quantity: Quantity, fields: CellFields, equivalent_poisson: float | None = None) -> Found:
+    """Return a quantity of computed fields.
+
+    Parameters
+    ----------
+    quantity
+        See `parse_quantity`.
+    fields
+        Computed with ``diagnose=True``, the quantity's measure among the arrays.
+    equivalent_poisson
+        Effective Poisson ratio of the equivalent strain, for a value at a point.
+
+    Raises
+    ------
+    UsageError
+        No such region, or no cell where it is asked for.
+    InputError
+        Nothing there is finite.
+
+    Notes
+    -----
+    A value at a point is derived from the displacement gradient that the shape functions of the element give there; on
+    the border of several elements, from the volume-weighted mean of their gradients.
+    """
+    if quantity.form == "value":
+        return _value(quantity, fields, equivalent_poisson)
+    d = fields.diagnostics
+    assert d is not None
+    cells = _cells(quantity, fields)
+    values = fields.arrays[quantity.measure.name]
+    column = values if quantity.component < 0 else values[:, quantity.component]
+    s = statistics(column, d.volume, cells, (quantity.percentage,) if quantity.form == "percentile" else ())
+    if not s.count:
+        raise InputError(
+            f"{_where(fields)}{quantity.text!r}: none of its {len(cells)} cells has a finite value."
+        )
+    if quantity.form == "percentile":
+        return Found(s.percentiles[quantity.percentage], -1, np.full(3, np.nan), s.count)
+    value, cell = (s.maximum, s.at_maximum) if quantity.form == "peak" else (s.minimum, s.at_minimum)
+    return Found(value, cell, d.centroid[cell], s.count)
+
+
+def _where(fields: CellFields) -> str:
+    return f"{fields.model.result.path}: " if fields.model.result.path else ""
+
+
+def _cells(quantity: Quantity, fields: CellFields) -> NDArray[np.int64]:
+    d = fields.diagnostics
+    assert d is not None
+    judged = d.dimension == fields.model.dimension
+    whole = Region("whole", np.flatnonzero(judged), "whole")
+    region = named_regions(fields.model, [quantity.region], d.dimension > 0)[0] if quantity.region else whole
+    cells: NDArray[np.int64] = region.cells[d.dimension[region.cells] == d.dimension[region.cells].max()]
+    if quantity.point is None:
+        return cells
+    distance = np.linalg.norm(d.centroid[cells] - quantity.point, axis=1)
+    near: NDArray[np.int64] = cells[distance <= quantity.radius]
+    if not len(near):
+        raise UsageError(
+            f"{_where(fields)}{quantity.text!r}: no cell has its centroid there; the nearest is {np.nanmin(distance):.4g} "
+            "away. Give a larger radius."
+        )
+    return near
+
+
+def _value(quantity: Quantity, fields: CellFields, equivalent_poisson: float | None) -> Found:
+    assert quantity.point is not None
+    model = fields.model
+    places = locate(model, quantity.point)
+    if not places:
+        raise UsageError(f"{_where(fields)}{quantity.text!r}: no computed element holds that point.")
+    total, finite, weight = np.zeros((3, 3, 1)), np.zeros((3, 3, 1)), 0.0
+    for place in places:
+        row = place.block.row
+        assert row is not None
+        samples = sample_points(row, place.reference[None])
+        chunk = model.chunk(place.block, place.connectivity[None], np.array([place.cell]))
+        with np.errstate(invalid="ignore", divide="ignore"):
+            point = chunk.at(samples.gradients[0], samples.functions[0])
+            share = float(point.weight[0])
+            total += share * point.H
+            finite += share * chunk.finite(point)
+        weight += share
+    with np.errstate(invalid="ignore", divide="ignore"):
+        split = Split(total / weight, equivalent_poisson, quantity.measure.directions, finite / weight)
+        values = quantity.measure.compute(split)
+    value = float(values[0] if quantity.component < 0 else values[quantity.component, 0])
+    if not math.isfinite(value):
+        raise InputError(
+            f"{_where(fields)}{quantity.text!r} is not finite there: the element or its displacement is broken."
+        )
+    return Found(value, places[0].cell if len(places) == 1 else -1, quantity.point, len(places))
