@@ -141,6 +141,18 @@ def compute_fields(
     names = choose_measures(measures, base, mechanical=thermal is not None)
     if at not in LOCATIONS:
         raise UsageError(f"at={at!r} is not known; use one of {', '.join(LOCATIONS)}.")
+    check_request(model, names, frame, thermal)
+    job = _Job(model, names, at, equivalent_poisson, diagnose, frame, thermal)
+    for block in model.blocks:
+        if block.row is not None and len(block.active):
+            job.run(block, threads)
+    return job.finish()
+
+
+def check_request(
+    model: Model, names: Sequence[str], frame: Frame | None = None, thermal: Thermal | None = None
+) -> None:
+    """Raise `UsageError` when the mesh cannot give measures, a frame or a free thermal strain."""
     _check_third_direction(model, names)
     if (
         thermal is not None
@@ -158,11 +170,6 @@ def compute_fields(
         and not any(b.row is not None and b.row.dim == 2 for b in model.blocks)
     ):
         raise UsageError("--frame surface needs surface cells; this mesh has none.")
-    job = _Job(model, names, at, equivalent_poisson, diagnose, frame, thermal)
-    for block in model.blocks:
-        if block.row is not None and len(block.active):
-            job.run(block, threads)
-    return job.finish()
 
 
 def _check_third_direction(model: Model, names: Sequence[str]) -> None:
@@ -493,6 +500,7 @@ __all__ = [
     "CellDiagnostics",
     "CellFields",
     "Location",
+    "check_request",
     "compute_fields",
     "smallest_height",
 ]

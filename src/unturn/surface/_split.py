@@ -142,7 +142,8 @@ class SurfaceSplit:
         """
         assert self.thinning is not None
         if base == "small":
-            return self.thinning * (self.small.local[0] + self.small.local[1])
+            normal: Floats = self.thinning * (self.small.local[0] + self.small.local[1])
+            return normal
         return _from_logarithm(base, self.thinning * self._logarithms.sum(axis=0))
 
     def equivalent(self, base: str) -> Floats:
