@@ -463,6 +463,17 @@ def test_values_that_are_not_to_be_had() -> None:
     assert flat.result.cell_data["area"].min() == 0
 
 
+def test_no_face_at_all() -> None:
+    points = meshes.affine_cell(ELEMENTS["hexahedron"]).points.copy()
+    points[[0, 1, 2, 3]] = points[[1, 0, 3, 2]]
+    model = build_model(meshes.Mesh(points, np.arange(8)[None], ELEMENTS["hexahedron"]).result(u=0 * points))
+    faces = free_faces(model)
+    assert len(faces) == 0
+    assert faces.left_out["tangled or without volume"].tolist() == [0]
+    with pytest.raises(UsageError, match="there is no face to compute on"):
+        surface_result(model, faces)
+
+
 def test_collapsed_faces_hold_a_linear_field() -> None:
     points = meshes.affine_cell(ELEMENTS["hexahedron"]).points
     mesh = meshes.Mesh(points, np.array([[0, 1, 2, 2, 4, 5, 6, 6]]), ELEMENTS["hexahedron"])

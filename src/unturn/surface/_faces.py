@@ -109,8 +109,9 @@ def free_faces(
     -----
     A face is free when no other cell has the same corners. Deleted and hidden cells leave a free face behind; ghost
     cells, tangled ones, and solids that cannot be computed (polyhedra) do not. Nodes at one place count as one node when
-    no two cells share a node, or when their displacements are the same number too: a writer that repeats nodes makes no
-    surface, a crack that opens does. Faces with less than three corners, of collapsed cells, are none.
+    no two cells share a face, or when their displacements are the same number too: a writer that repeats nodes makes no
+    surface, a crack that opens does. Faces with less than three corners, of collapsed cells, are none. Cells that meet
+    without common corners (hanging nodes, tied meshes of different size) both show their face.
 
     Raises
     ------

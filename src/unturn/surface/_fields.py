@@ -32,10 +32,10 @@ class SurfaceFields:
     Parameters
     ----------
     result
-        The surface mesh: the nodes of the faces with their point arrays; for each face the arrays of its parent,
-        ``parent_cell`` (file position), ``parent_face``, ``parent_element`` (the solver's number, where an array holds
-        it), ``area``, the local axes ``frame_axis_1`` to ``frame_axis_3`` (the third is the outward normal), the measures,
-        and ``between_groups`` where such faces are among them. Ready for `unturn.write`.
+        The surface mesh: the nodes of the faces, where the file has them, with their point arrays; for each face the
+        arrays of its parent, ``parent_cell`` (file position), ``parent_face``, ``parent_element`` (the solver's number,
+        where an array holds it), ``area``, the local axes ``frame_axis_1`` to ``frame_axis_3`` (the third is the outward
+        normal), the measures, and ``between_groups`` where such faces are among them. Ready for `unturn.write`.
     faces
         The faces, in the order of the cells of `result`.
     left_out

@@ -116,7 +116,7 @@ def _set_keys(nodes: Ints, table: Keys) -> tuple[Keys, NDArray[np.int8]]:
     """Return a key of each set of nodes and how many different ones it has, from `(k, m)` nodes.
 
     The key is the sum of the random 64-bit numbers that `table` gives to the different nodes. Two sets get the same key
-    by chance once in 2^64 pairs; a free face is lost so with a probability of faces times free faces over 2^64: 1e-7 for a
+    by chance once in 2^64 pairs; a free face is lost so with a probability of faces times free faces over 2^64: 2e-8 for a
     million hexahedra.
     """
     values = table[nodes]
