@@ -184,12 +184,13 @@ def test_local_axes_of_surfaces() -> None:
         points=mesh.points + np.stack([0 * mesh.points[:, 0]] * 2 + [mesh.points[:, 0] ** 2], 1)
     )
     model = build_model(bent.result(u=bent.points * 1e-3))
-    cloud = quadrature_result(model, ["strain"], frame=parse_frame("surface", model.result))
+    names = ["strain", "surface_normal"]
+    cloud = quadrature_result(model, names, frame=parse_frame("surface", model.result))
     expected = np.broadcast_to([1e-3, 1e-3, 0, 0, 0, 0], (cloud.n_points, 6))
     np.testing.assert_allclose(cloud.point_data["strain"], expected, atol=1e-14)
     slope = np.stack([-2 * cloud.points[:, 0], 0 * cloud.points[:, 0], np.ones(cloud.n_points)], 1)
     normal = slope / np.linalg.norm(slope, axis=1, keepdims=True)
-    np.testing.assert_allclose(cloud.point_data["frame_axis_3"], normal, atol=1e-12)
+    np.testing.assert_allclose(cloud.point_data["surface_normal"], normal, atol=1e-12)
 
 
 @pytest.mark.source(

@@ -68,7 +68,7 @@ def box(row: Element, n: tuple[int, int, int], size: tuple[float, float, float])
 
 
 def normals(found: SurfaceFields) -> np.ndarray:
-    values = found.result.cell_data["frame_axis_3"]
+    values = found.result.cell_data["surface_normal"]
     np.testing.assert_allclose(np.linalg.norm(values, axis=1), 1, rtol=1e-13)
     return np.asarray(values)
 
@@ -92,7 +92,7 @@ def test_patch_test_on_every_face(row: Element, bent: float) -> None:
     e = (H + H.T) / 2
     in_plane = P @ e @ P
     np.testing.assert_allclose(data["surface_strain"], six(in_plane), atol=1e-13)
-    t = np.stack([data["frame_axis_1"], data["frame_axis_2"]], axis=1)
+    t = np.stack([data["surface_direction_1"], data["surface_direction_2"]], axis=1)
     local = t @ e @ np.swapaxes(t, 1, 2)
     expected = np.stack([local[:, 0, 0], local[:, 1, 1], local[:, 0, 1]], 1)
     np.testing.assert_allclose(data["surface_in_plane_strain"], expected, atol=1e-13)
@@ -252,7 +252,7 @@ def test_finite_stretch_with_a_turn(name: str) -> None:
         key = base.replace("-", "_")
         found = surface(result, "all", base=base, poisson=NU)
         data = found.result.cell_data
-        t = np.stack([data["frame_axis_1"], data["frame_axis_2"]], axis=1)
+        t = np.stack([data["surface_direction_1"], data["surface_direction_2"]], axis=1)
         squares, vectors = np.linalg.eigh(t @ C @ np.swapaxes(t, 1, 2))
         logs = np.log(squares[:, ::-1]) / 2
         np.testing.assert_allclose(data[f"surface_principal_strain_{key}"], of(logs), atol=1e-12)
@@ -300,13 +300,13 @@ def test_the_local_frame() -> None:
     found = surface(mesh.result(u=mesh.points @ H.T), "in_plane_strain")
     data = found.result.cell_data
     e = (H + H.T) / 2
-    for axis, first, second in ((0, 1, 2), (1, 0, 2), (2, 0, 1)):
+    for axis, first, second in ((0, 2, 1), (1, 0, 2), (2, 0, 1)):
         for sign in (1, -1):
-            (k,) = np.flatnonzero(np.abs(data["frame_axis_3"][:, axis] - sign) < 1e-12)
-            np.testing.assert_allclose(data["frame_axis_1"][k], np.eye(3)[first], atol=1e-15)
-            third = np.cross(data["frame_axis_1"][k], data["frame_axis_2"][k])
-            np.testing.assert_allclose(third, data["frame_axis_3"][k], atol=1e-15)
-            sense = data["frame_axis_2"][k] @ np.eye(3)[second]
+            (k,) = np.flatnonzero(np.abs(data["surface_normal"][:, axis] - sign) < 1e-12)
+            np.testing.assert_allclose(data["surface_direction_1"][k], np.eye(3)[first], atol=1e-15)
+            third = np.cross(data["surface_direction_1"][k], data["surface_direction_2"][k])
+            np.testing.assert_allclose(third, data["surface_normal"][k], atol=1e-15)
+            sense = data["surface_direction_2"][k] @ np.eye(3)[second]
             expected = [e[first, first], e[second, second], sense * e[first, second]]
             np.testing.assert_allclose(data["surface_in_plane_strain"][k], expected, atol=1e-15)
     assert found.result.component_names["cell", "surface_in_plane_strain"] == ("11", "22", "12")
@@ -318,7 +318,7 @@ def test_peaks_within_a_face() -> None:
     u = 1e-3 * np.stack([mesh.points[:, 0] ** 2, 0 * mesh.points[:, 0], 0 * mesh.points[:, 0]], 1)
     found = surface(mesh.result(u=u), "principal_strain", "equivalent_strain", poisson=0.0, peaks=True)
     data = found.result.cell_data
-    top = data["frame_axis_3"][:, 2] > 0.9
+    top = data["surface_normal"][:, 2] > 0.9
     np.testing.assert_allclose(data["surface_principal_strain"][top], 0, atol=1e-15)
     edge = 2e-3 / np.sqrt(3)
     np.testing.assert_allclose(data["surface_principal_strain_peak"][top], [[edge, -edge]], rtol=1e-12)
@@ -516,7 +516,7 @@ def test_effective_poisson_ratio() -> None:
     mesh = meshes.patch(ELEMENTS["tetra"])
     pull = mesh.result(u=mesh.points * [1e-3, -NU * 1e-3, -NU * 1e-3])
     found = surface(pull, "equivalent_strain", poisson=NU, equivalent_poisson=NU).result.cell_data
-    across = np.abs(found["frame_axis_3"][:, 0]) < 1e-9
+    across = np.abs(found["surface_normal"][:, 0]) < 1e-9
     np.testing.assert_allclose(found["surface_equivalent_strain"][across], 1e-3, rtol=1e-12)
     plain = surface(pull, "equivalent_strain", poisson=NU).result.cell_data["surface_equivalent_strain"]
     np.testing.assert_allclose(plain[across], 867e-6, rtol=1e-3)

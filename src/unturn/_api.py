@@ -120,7 +120,7 @@ def strain(
         A known axis instead of the full fit: ``0,0,1 through 10,0,0``.
     frame
         Axes of the components: ``cylindrical z``, ``cylindrical 0,0,1 through 10,0,0``, ``cartesian 1,1,0 0,0,1``,
-        ``arrays FIRST SECOND``.
+        ``surface``, ``arrays FIRST SECOND``.
     thermal_expansion, temperature, reference_temperature
         Free thermal strain to take out: a coefficient (number, three along the axes of the frame, or by region
         ``part=1:12e-6;part=2:23e-6``), a point or cell array, a number. Gives `mechanical_strain` and what derives from it.

@@ -24,7 +24,7 @@ from unturn.gradient import (
 from unturn.kinematics._motion import relative_volume_change
 from unturn.kinematics._symmetric import Floats, full_from_six, six_from_full
 from unturn.kinematics._turning import Turning
-from unturn.measures import GEOMETRY, MEASURES, VECTOR, Measure, Split, choose_measures
+from unturn.measures import GEOMETRY, MEASURES, SURFACE_AXES, VECTOR, Measure, Split, choose_measures
 from unturn.model import Model, ModelBlock
 from unturn.precision import MEANT_DISPLACEMENT, storage_resolution
 from unturn.thermal import Thermal
@@ -96,6 +96,14 @@ class CellFields:
     mirrored: int = 0
     diagnostics: CellDiagnostics | None = None
 
+    @property
+    def notes(self) -> tuple[str, ...]:
+        """Sentences for the user: the model's, and what was found on the way."""
+        if not self.mirrored:
+            return self.model.notes
+        mirrored = f"{self.mirrored} solids are numbered the other way round (negative Jacobian everywhere)"
+        return (*self.model.notes, f"{mirrored}; their gradient is right")
+
 
 def compute_fields(
     model: Model,
@@ -154,6 +162,7 @@ def check_request(
 ) -> None:
     """Raise `UsageError` when the mesh cannot give measures, a frame or a free thermal strain."""
     _check_third_direction(model, names)
+    _check_surface(model, names, frame)
     if (
         thermal is not None
         and not thermal.isotropic
@@ -164,12 +173,6 @@ def check_request(
             "plane stress with an expansion that differs by direction is not supported: the strain across the plane "
             "would need the elastic constants."
         )
-    if (
-        frame is not None
-        and frame.surface
-        and not any(b.row is not None and b.row.dim == 2 for b in model.blocks)
-    ):
-        raise UsageError("--frame surface needs surface cells; this mesh has none.")
 
 
 def _check_third_direction(model: Model, names: Sequence[str]) -> None:
@@ -185,8 +188,14 @@ def _check_third_direction(model: Model, names: Sequence[str]) -> None:
         )
 
 
-FRAME_AXES = ("frame_axis_1", "frame_axis_2", "frame_axis_3")
-"""Local axes of surface cells, in the axes of the file; written when the frame is ``surface``."""
+def _check_surface(model: Model, names: Sequence[str], frame: Frame | None) -> None:
+    asked = "--frame surface" if frame is not None and frame.surface else ""
+    asked = asked or next((n for n in names if n in SURFACE_AXES), "")
+    if asked and not any(b.row is not None and b.row.dim == 2 and len(b.active) for b in model.blocks):
+        raise UsageError(
+            f"{asked} needs surface cells; this mesh has none that are computed (--skin computes skins)."
+        )
+
 
 _OK, _NOT_FINITE, _FLAT, _TANGLED = range(4)
 _REASONS = {_NOT_FINITE: "displacement not finite", _FLAT: "no volume", _TANGLED: "tangled"}
@@ -207,8 +216,6 @@ class _Job:
     ) -> None:
         self.model, self.at, self.poisson = model, at, poisson
         self.frame, self.thermal = frame, thermal
-        plane = model.plane
-        self.unknown = plane.normal if plane is not None and plane.model is None else None
         self.measures: list[Measure] = [MEASURES[n] for n in names if n in MEASURES]
         self.directions = any(m.directions for m in self.measures)
         self.needs_finite = diagnose or "small_strain_error" in names or any(m.finite for m in self.measures)
@@ -216,11 +223,9 @@ class _Job:
         whole = all(len(b.active) == len(b.cells) for b in model.blocks)
         self.arrays: dict[str, Floats] = {}
         for name in names:
-            components = len(MEASURES[name].components) if name in MEASURES else 0
+            components = len(MEASURES[name].components) if name in MEASURES else 3 * (name in SURFACE_AXES)
             shape = (n, components) if components else (n,)
             self.arrays[name] = np.empty(shape) if whole else np.full(shape, np.nan)
-        if frame is not None and frame.surface:
-            self.arrays.update({name: np.full((n, 3), np.nan) for name in FRAME_AXES})
         self.status = np.zeros(n, dtype=np.uint8)
         self.mirrored = np.zeros(n, dtype=bool)
         self.diagnostics: CellDiagnostics | None = None
@@ -294,7 +299,7 @@ class _Job:
                 finite = mean_gradient(chunk, rule, finite=True)[0] if mean else chunk.finite(point)
                 if status is not None:
                     finite[:, :, status != _OK] = np.nan
-        axes = self._axes(chunk, place, point, rows)
+        axes = self._axes(chunk, point, place, rows)
         free = None
         if self.thermal is not None:
             samples = rule if mean else place
@@ -304,7 +309,7 @@ class _Job:
         for measure in self.measures:
             values = measure.compute(split)
             if axes is not None and measure.turns:
-                values = turned_components(values, axes, self.unknown)
+                values = turned_components(values, axes)
             self.arrays[measure.name][rows] = values.T if values.ndim == 2 else values
         if "element_volume" in self.arrays:
             self.arrays["element_volume"][rows] = volume
@@ -314,19 +319,18 @@ class _Job:
             self._diagnose(chunk, point, split, place, volume, rows)
 
     def _axes(
-        self, chunk: ElementChunk, place: Samples, point: PointGradient, rows: slice | NDArray[np.int64]
+        self, chunk: ElementChunk, point: PointGradient, place: Samples, rows: slice | NDArray[np.int64]
     ) -> Floats | None:
+        """Return the axes of the frame, and fill the arrays of those of the surface."""
+        asked = [(k, name) for k, name in enumerate(SURFACE_AXES) if name in self.arrays]
+        if asked:
+            axes = surface_axes(point.tangents, len(chunk))
+            for k, name in asked:
+                self.arrays[name][rows] = axes[k].T
         if self.frame is None:
             return None
-        if self.frame.surface:
-            axes = np.full((3, 3, len(chunk)), np.nan)
-            if point.tangents is not None and len(point.tangents) == 2:
-                axes = surface_axes(point.tangents)
-            for k, name in enumerate(FRAME_AXES):
-                self.arrays[name][rows] = axes[k].T
-            return axes
         centroid = np.stack([chunk.interpolate(place.functions[0], i) for i in range(3)])
-        return self.frame.axes(centroid, rows)
+        return self.frame.axes(centroid, rows, point.tangents)
 
     def _geometry(
         self, chunk: ElementChunk, point: PointGradient, rule: Samples
@@ -415,8 +419,7 @@ class _Job:
             for m in self.measures
             if m.components
         }
-        if self.frame is not None and self.frame.surface:
-            components.update(dict.fromkeys(FRAME_AXES, VECTOR))
+        components |= {name: VECTOR for name in SURFACE_AXES if name in self.arrays}
         return CellFields(
             self.model, self.arrays, components, left_out, int(self.mirrored.sum()), self.diagnostics
         )

@@ -11,11 +11,11 @@ from numpy.typing import NDArray
 
 from unturn.displacement import find_displacement
 from unturn.errors import UsageError
-from unturn.fields import FRAME_AXES, CellFields, Location, compute_fields
+from unturn.fields import CellFields, Location, compute_fields
 from unturn.frames import Frame, parse_frame
 from unturn.gradient import NodalFields, PlaneModel
 from unturn.kinematics._symmetric import Floats
-from unturn.measures import MEASURES, choose_measures
+from unturn.measures import MEASURES, SMALL, choose_measures
 from unturn.model import Model, PlaneOptions, build_model
 from unturn.regions import bodies, find_regions, named_regions
 from unturn.result import Result
@@ -104,10 +104,12 @@ def compute(
     parts = _parts(small, options)
     removals: tuple[Removal, ...] = ()
     if parts:
-        real = any(n in MEASURES and MEASURES[n].finite for n in names)
-        small, removals = take_out(small, parts, options.solve, _axis(options.rigid_axis), real)
+        wanted = any(n in MEASURES and MEASURES[n].finite for n in names)
+        small, removals = take_out(small, parts, options.solve, _axis(options.rigid_axis), wanted)
     if finite is not None and parts:
-        finite, _ = take_out(finite, parts, "nonlinear", _axis(options.rigid_axis))
+        finite, of_finite = take_out(finite, parts, "nonlinear", _axis(options.rigid_axis))
+        if not any(n in SMALL for n in names):
+            removals = of_finite
     if previous and len(previous) == len(removals):
         removals = tuple(_unwrap(r, p) for r, p in zip(removals, previous))
     return Computed(
@@ -140,10 +142,9 @@ def _fields(
     first = compute_fields(small, linear or ["strain"], **settings, diagnose=diagnose and not by_finite)
     second = compute_fields(finite, real or ["det_f"], **settings, diagnose=diagnose and by_finite)
     arrays = {n: (second if n in real else first).arrays[n] for n in names}
-    extra = {n: a for n, a in first.arrays.items() if n in FRAME_AXES}
     return replace(
         first,
-        arrays={**arrays, **extra},
+        arrays=arrays,
         components={**first.components, **second.components},
         diagnostics=second.diagnostics if by_finite else first.diagnostics,
     )
@@ -273,7 +274,8 @@ def _axis(text: str | None) -> Axis | None:
         direction, point = (np.array([float(w) for w in words[k].split(",")]) for k in (0, 2))
     except (ValueError, IndexError):
         direction = point = np.zeros(0)
-    if len(words) != 3 or words[1] != "through" or direction.shape != (3,) or point.shape != (3,):
+    sound = all(v.shape == (3,) and np.isfinite(v).all() for v in (direction, point))
+    if len(words) != 3 or words[1] != "through" or not sound:
         raise UsageError(f"--rigid-axis {text!r} is not understood. Use '0,0,1' or '0,0,1 through 10,0,0'.")
     return Axis(point, direction)
 

@@ -12,7 +12,6 @@ from unturn.fields import (
     _OK,
     _REASONS,
     _TANGLED,
-    FRAME_AXES,
     _Job,
     _same_side,
     _with_thermal_thickness,
@@ -22,7 +21,7 @@ from unturn.fields import (
 from unturn.frames import Frame, surface_axes, turned_components
 from unturn.gradient import ElementChunk, PointGradient, Samples, chunk_ranges, over_chunks, sample_points
 from unturn.kinematics._symmetric import Floats
-from unturn.measures import GEOMETRY, MEASURES, VECTOR, Split, choose_measures
+from unturn.measures import GEOMETRY, MEASURES, SURFACE_AXES, VECTOR, Split, choose_measures
 from unturn.model import Model, ModelBlock
 from unturn.numbering import element_numbers
 from unturn.result import Array, Association, CellBlock, Result
@@ -98,7 +97,7 @@ def _names(measures: Sequence[str] | None, base: str, mechanical: bool) -> tuple
                 f"{name} belongs to a cell, not to a point of it: leave it out at the quadrature points, where 'weight' "
                 "is the share of each point in the volume."
             )
-    return tuple(n for n in choose_measures(measures, base, mechanical) if n in MEASURES)
+    return tuple(n for n in choose_measures(measures, base, mechanical) if n not in GEOMETRY)
 
 
 class _Cloud:
@@ -114,7 +113,7 @@ class _Cloud:
     ) -> None:
         self.model, self.frame, self.thermal = model, frame, thermal
         self.equivalent_poisson = equivalent_poisson
-        self.measures = [MEASURES[n] for n in names]
+        self.measures = [MEASURES[n] for n in names if n in MEASURES]
         self.directions = any(m.directions for m in self.measures)
         self.needs_finite = "small_strain_error" in names or any(m.finite for m in self.measures)
         count = np.zeros(model.result.n_cells, dtype=np.int64)
@@ -131,8 +130,7 @@ class _Cloud:
         self.arrays: dict[str, Floats] = {
             m.name: np.empty((n, len(m.components)) if m.components else n) for m in self.measures
         }
-        if frame is not None and frame.surface:
-            self.arrays.update({name: np.empty((n, 3)) for name in FRAME_AXES})
+        self.arrays.update({name: np.empty((n, 3)) for name in names if name in SURFACE_AXES})
 
     def run(self, block: ModelBlock, threads: int | None) -> None:
         assert block.row is not None
@@ -204,25 +202,20 @@ class _Cloud:
             free = mean_free_strain(self.thermal, chunk, here, index, connectivity, axes)
             H = _with_thermal_thickness(H, free, self.model.plane)
         split = Split(H, self.equivalent_poisson, self.directions, finite, free)
-        plane = self.model.plane
-        unknown = plane.normal if plane is not None and plane.model is None else None
         for measure in self.measures:
             values = measure.compute(split)
             if axes is not None and measure.turns:
-                values = turned_components(values, axes, unknown)
+                values = turned_components(values, axes)
             self.arrays[measure.name][rows] = values.T
 
     def _axes(self, chunk: ElementChunk, point: PointGradient, index: Ints, rows: Ints) -> Floats | None:
+        """Return the axes of the frame, and fill the arrays of those of the surface."""
+        for k, name in enumerate(SURFACE_AXES):
+            if name in self.arrays:
+                self.arrays[name][rows] = surface_axes(point.tangents, len(chunk))[k].T
         if self.frame is None:
             return None
-        if not self.frame.surface:
-            return self.frame.axes(np.ascontiguousarray(self.points[rows].T), index)
-        axes = np.full((3, 3, len(chunk)), np.nan)
-        if point.tangents is not None and len(point.tangents) == 2:
-            axes = surface_axes(point.tangents)
-        for name, axis in zip(FRAME_AXES, axes):
-            self.arrays[name][rows] = axis.T
-        return axes
+        return self.frame.axes(np.ascontiguousarray(self.points[rows].T), index, point.tangents)
 
     def finish(self) -> Result:
         source = self.model.result
@@ -243,8 +236,7 @@ class _Cloud:
                     self.frame.component_names(len(m.components)) if self.frame and m.turns else m.components
                 )
                 names["point", m.name] = own
-        if self.frame is not None and self.frame.surface:
-            names.update({("point", name): VECTOR for name in FRAME_AXES})
+        names.update({("point", name): VECTOR for name in SURFACE_AXES if name in self.arrays})
         return Result(
             points=self.points,
             blocks=(CellBlock("vertex", np.arange(n)[:, None], np.arange(n)),),

@@ -110,7 +110,7 @@ def summarise(
         verdict = judge(d, counted, options.solve, options.mode)
         trials: list[Trial] = []
         if verdict.level == "does not hold" and options.solve != "linear" and not computed.removals:
-            trials = try_remedies(fields, counted, {"at": options.at, "threads": threads})
+            trials = try_remedies(fields, counted, options.solve, {"at": options.at, "threads": threads})
         made.append(RegionSummary(region, verdict, tuple(trials), float(np.nansum(d.volume[cells])), found))
     others = {
         int(k): int((d.dimension == k).sum())
@@ -122,7 +122,8 @@ def summarise(
         options,
         tuple(made),
         element_numbers(fields.model.result),
-        tuple(compare_with_solver(fields, threads)),
+        # the solver's strain is measured from the undeformed state, not from a zero step
+        () if "zero_step" in computed.request else tuple(compare_with_solver(fields, threads)),
         (*_warnings(fields, d, made), *_beyond_linear(computed.removals, made)),
         others,
         computed.removals,
@@ -194,11 +195,6 @@ def _warnings(fields: CellFields, d: CellDiagnostics, regions: list[RegionSummar
                 f"{r.region.name}: the stored precision blurs the strain by +-{r.verdict.noise * 1e6:.2g} microstrain, "
                 f"and 99 % of the volume is below {r.verdict.size * 1e6:.3g}: write the result with more digits"
             )
-    if fields.mirrored:
-        found.append(
-            f"{fields.mirrored} solids are numbered the other way round (negative Jacobian everywhere); "
-            "their gradient is right"
-        )
     return found
 
 
@@ -262,7 +258,7 @@ def summary_data(summary: Summary) -> dict[str, Any]:
         "rigid_motion_taken_out": [_removal_data(r) for r in summary.removals],
         "left_out": {reason: len(cells) for reason, cells in fields.left_out.items()},
         "other_dimensions": {f"{k}D": n for k, n in summary.other_dimensions.items()},
-        "notes": list(model.notes),
+        "notes": list(fields.notes),
         "warnings": list(summary.warnings),
         "units": {"strain": "1", "rotation": "radian", "angle_of_turn": "radian", "volume": "length unit of the file"},
         "caution": CAUTION,

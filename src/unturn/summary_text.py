@@ -359,7 +359,7 @@ def _tail(summary: Summary) -> list[str]:
         lines.append("cell = zero-based position in the file")
     for dimension, n in summary.other_dimensions.items():
         lines.append(f"{n} cells of dimension {dimension} are computed and written, but not in this table")
-    lines += [f"note: {note}" for note in fields.model.notes]
+    lines += [f"note: {note}" for note in fields.notes]
     lines += [f"WARNING: {warning}" for warning in summary.warnings]
     lines.append(CAUTION)
     return lines

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import math
+import shlex
 from dataclasses import dataclass
 from typing import Any
 
@@ -12,7 +13,7 @@ from unturn.fields import CellFields, compute_fields
 from unturn.model import Model
 from unturn.regions import Region
 from unturn.rigid import take_out
-from unturn.verdict import Level, judge
+from unturn.verdict import Level, Solve, judge
 
 
 @dataclass(frozen=True)
@@ -45,7 +46,7 @@ class Trial:
         return self.level in ("holds", "marginal", "no strain")
 
 
-def try_remedies(fields: CellFields, region: Region, settings: dict[str, Any]) -> list[Trial]:
+def try_remedies(fields: CellFields, region: Region, solve: Solve, settings: dict[str, Any]) -> list[Trial]:
     """Return what is left of the error by the region's rigid motion taken out, and by a finite base if that is not enough.
 
     Parameters
@@ -54,23 +55,27 @@ def try_remedies(fields: CellFields, region: Region, settings: dict[str, Any]) -
         The fields that were judged; their model has no rigid motion taken out yet.
     region
         The region, with the cells that count.
+    solve
+        What is known of it; what is tried is for a nonlinear one, and where that is not known the option says so.
     settings
         Location and threads, as the fields were computed.
     """
     model = fields.model.only(region.cells)
-    trials = [_without_rigid_motion(model, region, settings)]
+    trials = [_without_rigid_motion(model, region, solve, settings)]
     if not trials[0].helps and (model.plane is None or model.plane.model is not None):
         trials.append(_finite_base(model, region, settings))
     return trials
 
 
-def _without_rigid_motion(model: Model, region: Region, settings: dict[str, Any]) -> Trial:
+def _without_rigid_motion(model: Model, region: Region, solve: Solve, settings: dict[str, Any]) -> Trial:
     still, _ = take_out(model, [(region.name, region.cells) * 2], "nonlinear")
     again = compute_fields(still, ["small_strain_error"], **settings, diagnose=True)
     assert again.diagnostics is not None
     found = judge(again.diagnostics, region, "nonlinear")
     name = {"whole": "whole", "body": "bodies"}.get(region.origin, region.name)
-    option = f"--remove-rigid {name}" if " " not in name else f"--remove-rigid '{name}'"
+    option = f"--remove-rigid {shlex.quote(name)}"
+    if solve == "unknown":
+        option = f"--solve nonlinear {option}"
     return Trial(f"rigid motion of {region.name} taken out", option, found.worst, math.nan, found.level)
 
 

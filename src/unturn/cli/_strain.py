@@ -84,7 +84,7 @@ def strain(
         typer.Option(
             metavar="FRAME",
             help="Axes of the components: 'cylindrical z', 'cylindrical 0,0,1 through 10,0,0', "
-            "'cartesian 1,1,0 0,0,1', or 'arrays FIRST SECOND' (cell arrays).",
+            "'cartesian 1,1,0 0,0,1', 'surface', or 'arrays FIRST SECOND' (cell arrays).",
         ),
     ] = None,
     thermal_expansion: Annotated[
@@ -189,7 +189,7 @@ class _Job:
             return self._series(opened, path)
         result = opened.read(chosen_step(opened, "last" if self.step == "all" else self.step))
         result, summary = self._compute(result, self._zero(opened))
-        out = self._target(path, series=False)
+        out = self._target(path, result, series=False)
         lost = io.write(result, out)
         self._print(summary, out, lost)
         return [self._data(summary, out)]
@@ -198,7 +198,7 @@ class _Job:
         from unturn import io
 
         assert opened.steps is not None
-        out = self._target(path, series=True)
+        out = self._target(path, opened.read(0), series=True)
         data, summary = [], None
         zero = self._zero(opened)
         previous: tuple[RigidMotion, ...] = ()
@@ -242,11 +242,11 @@ class _Job:
         summary = summarise(computed, SummaryOptions(**self.summary), threads=options.threads)
         return add_fields(result, computed, prefix=self.prefix, overwrite=self.overwrite), summary
 
-    def _target(self, path: Path, series: bool) -> Path:
+    def _target(self, path: Path, result: Result, series: bool) -> Path:
         from unturn.cli._output import output_path
         from unturn.io import writable_suffix
 
-        return output_path(path, self.output, self.several, writable_suffix(path, series=series))
+        return output_path(path, self.output, self.several, writable_suffix(path, result, series=series))
 
     def _print(self, summary: Summary, out: Path, lost: tuple[str, ...]) -> None:
         from unturn.summary_text import summary_text

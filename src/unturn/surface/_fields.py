@@ -12,7 +12,7 @@ from unturn.errors import UsageError
 from unturn.frames import surface_axes
 from unturn.gradient import ElementChunk, Samples, chunk_ranges, over_chunks, sample_points
 from unturn.kinematics._symmetric import Floats
-from unturn.measures import VECTOR
+from unturn.measures import SURFACE_AXES, VECTOR
 from unturn.model import Model, ModelBlock
 from unturn.numbering import element_numbers
 from unturn.result import Array, Association, CellBlock, Result
@@ -21,7 +21,6 @@ from unturn.surface._measures import SURFACE_MEASURES, SurfaceMeasure, choose_su
 from unturn.surface._split import SurfaceSplit
 from unturn.verdict import Solve
 
-AXES = ("frame_axis_1", "frame_axis_2", "frame_axis_3")
 _NO_AREA, _NOT_FINITE = "face without area", "displacement not finite"
 
 
@@ -34,8 +33,9 @@ class SurfaceFields:
     result
         The surface mesh: the nodes of the faces, where the file has them, with their point arrays; for each face the
         arrays of its parent, ``parent_cell`` (file position), ``parent_face``, ``parent_element`` (the solver's number,
-        where an array holds it), ``area``, the local axes ``frame_axis_1`` to ``frame_axis_3`` (the third is the outward
-        normal), the measures, and ``between_groups`` where such faces are among them. Ready for `unturn.write`.
+        where an array holds it), ``area``, the local axes ``surface_direction_1``, ``surface_direction_2`` and
+        ``surface_normal`` (outward), the measures, and ``between_groups`` where such faces are among them. Ready for
+        `unturn.write`.
     faces
         The faces, in the order of the cells of `result`.
     left_out
@@ -91,9 +91,10 @@ def surface_result(
     Notes
     -----
     Values are at the centroid of each face. The surface gradient is `sum_a u_a (x) grad_s N_a` with the shape functions
-    of the face's own element. First local axis: the projection of x, of y where the normal is along x within 1 degree;
-    third: the outward normal. Strain along the normal: `-nu/(1-nu) (e_1 + e_2)` (Timoshenko and Goodier, Theory of
-    Elasticity, article 16), finite `ln l_n = -nu/(1-nu) (ln l_1 + ln l_2)`. The rotation is that of surface and normal.
+    of the face's own element. The local axes are those of `surface_axes`: 3 the outward normal, 1 the direction x laid
+    into the face, or z where the normal is within 0.1 degree of x. Strain along the normal: `-nu/(1-nu) (e_1 + e_2)`
+    (Timoshenko and Goodier, Theory of Elasticity, article 16), finite `ln l_n = -nu/(1-nu) (ln l_1 + ln l_2)`. The
+    rotation is that of surface and normal.
 
     Raises
     ------
@@ -140,8 +141,11 @@ class _Job:
         self.model, self.poisson, self.equivalent_poisson = model, poisson, equivalent_poisson
         self.measures: list[SurfaceMeasure] = [SURFACE_MEASURES[name] for name in names]
         self.extremes = [m for m in self.measures if m.replaces in ("principal_strain", "equivalent_strain")]
-        self.arrays: dict[str, Floats] = {"area": np.empty(n), **{name: np.empty((n, 3)) for name in AXES}}
-        self.components: dict[str, tuple[str, ...]] = dict.fromkeys(AXES, VECTOR)
+        self.arrays: dict[str, Floats] = {
+            "area": np.empty(n),
+            **{name: np.empty((n, 3)) for name in SURFACE_AXES},
+        }
+        self.components: dict[str, tuple[str, ...]] = dict.fromkeys(SURFACE_AXES, VECTOR)
         peaked = self.extremes if peaks else []
         for name, m in [(m.name, m) for m in self.measures] + [(m.name + "_peak", m) for m in peaked]:
             self.arrays[name] = np.empty((n, len(m.components)) if m.components else n)
@@ -164,7 +168,7 @@ class _Job:
 
     def _chunk(self, chunk: ElementChunk, place: Samples, rule: Samples, rows: slice) -> None:
         split, _ = self._split(chunk, place, 0)
-        for name, axis in zip(AXES, split.axes):
+        for name, axis in zip(SURFACE_AXES, split.axes):
             self.arrays[name][rows] = axis.T
         for m in self.measures:
             self.arrays[m.name][rows] = m.compute(split).T
@@ -184,7 +188,7 @@ class _Job:
         point = chunk.at(samples.gradients[q], samples.functions[q])
         assert point.tangents is not None
         moved = chunk.finite(point) if any(m.moves for m in self.measures) else None
-        axes = surface_axes(point.tangents)
+        axes = surface_axes(point.tangents, len(chunk))
         return SurfaceSplit(point.H, axes, self.poisson, moved, self.equivalent_poisson), point.weight
 
 
