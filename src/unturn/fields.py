@@ -149,6 +149,18 @@ def compute_fields(
     names = choose_measures(measures, base, mechanical=thermal is not None)
     if at not in LOCATIONS:
         raise UsageError(f"at={at!r} is not known; use one of {', '.join(LOCATIONS)}.")
+    check_request(model, names, frame, thermal)
+    job = _Job(model, names, at, equivalent_poisson, diagnose, frame, thermal)
+    for block in model.blocks:
+        if block.row is not None and len(block.active):
+            job.run(block, threads)
+    return job.finish()
+
+
+def check_request(
+    model: Model, names: Sequence[str], frame: Frame | None = None, thermal: Thermal | None = None
+) -> None:
+    """Raise `UsageError` when the mesh cannot give measures, a frame or a free thermal strain."""
     _check_third_direction(model, names)
     _check_surface(model, names, frame)
     if (
@@ -161,11 +173,6 @@ def compute_fields(
             "plane stress with an expansion that differs by direction is not supported: the strain across the plane "
             "would need the elastic constants."
         )
-    job = _Job(model, names, at, equivalent_poisson, diagnose, frame, thermal)
-    for block in model.blocks:
-        if block.row is not None and len(block.active):
-            job.run(block, threads)
-    return job.finish()
 
 
 def _check_third_direction(model: Model, names: Sequence[str]) -> None:
@@ -496,6 +503,7 @@ __all__ = [
     "CellDiagnostics",
     "CellFields",
     "Location",
+    "check_request",
     "compute_fields",
     "smallest_height",
 ]
