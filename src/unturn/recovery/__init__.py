@@ -5,6 +5,7 @@ from __future__ import annotations
 from unturn.recovery._nodes import NodeShares, Spots, node_shares
 from unturn.recovery._recover import METHODS, Method, Recovered, recover_gradient, recover_samples
 from unturn.recovery._samples import CellSamples, sample_cells
+from unturn.recovery._sheets import sheets
 
 __all__ = [
     "METHODS",
@@ -17,4 +18,5 @@ __all__ = [
     "recover_gradient",
     "recover_samples",
     "sample_cells",
+    "sheets",
 ]

@@ -123,7 +123,9 @@ def node_shares(model: Model, groups: NDArray[np.integer]) -> NodeShares:
     node = _flat(model, [b.connectivity for b in blocks])
     label, tolerance, apart = _coincident(model, node)
     group = np.concatenate([np.asarray(groups[b.index], dtype=np.int64) for b in blocks])
-    dimension = np.concatenate([np.full(len(b.active), b.row.dim if b.row else 0, dtype=np.int8) for b in blocks])
+    dimension = np.concatenate(
+        [np.full(len(b.active), b.row.dim if b.row else 0, dtype=np.int8) for b in blocks]
+    )
     kinds, kind_of_cell = _kinds(group, dimension)
     widths = np.concatenate([np.full(len(b.active), b.cells.connectivity.shape[1]) for b in blocks])
     first, kind, index = _unique_pairs(
@@ -146,7 +148,9 @@ def _flat(model: Model, parts: list[Ints]) -> NDArray[np.int32]:
     return np.concatenate([np.asarray(p, dtype=np.int32).reshape(-1) for p in parts])
 
 
-def _unflat(index: Shares, like: tuple[NDArray[np.integer], ...] | list[NDArray[np.int8]]) -> tuple[Shares, ...]:
+def _unflat(
+    index: Shares, like: tuple[NDArray[np.integer], ...] | list[NDArray[np.int8]]
+) -> tuple[Shares, ...]:
     ends = np.cumsum([c.size for c in like])
     return tuple(index[e - c.size : e].reshape(c.shape) for e, c in zip(ends, like))
 

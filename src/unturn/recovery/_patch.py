@@ -17,8 +17,8 @@ from unturn.kinematics._symmetric import Floats
 from unturn.recovery._nodes import Ints, NodeShares
 from unturn.recovery._samples import PAIRS, CellSamples, Gathered, Meetings
 
-MOST_LEVERAGE = 1.0
-"""Above it, the value at the corner scatters more than the samples: the polynomial reaches too far beyond them."""
+_REACH = 1.0  # standard deviations of the samples: a corner further from their mean has them to one side
+_COVER = 2.0  # the same along one direction, for a linear polynomial in the directions that the samples cover
 _SPREAD = 1e-12  # variance across, as a share of the largest, below which samples lie in one plane or line
 _CONDITION = 1e8
 
@@ -43,10 +43,10 @@ class Patches:
     terms
         Exponents.
     good
-        `(n,)` whether the whole polynomial could be fitted; otherwise it is linear along the directions that the
-        samples cover.
-    covered
-        `(n,)` number of these directions.
+        `(n,)` whether the samples determine the whole polynomial and surround the corner.
+    linear
+        `(n,)` whether, failing that, a linear polynomial along the directions that the samples cover stands in its
+        place; only for order 1.
     """
 
     share: Ints
@@ -55,7 +55,7 @@ class Patches:
     coefficients: Floats
     terms: tuple[tuple[int, ...], ...]
     good: NDArray[np.bool_]
-    covered: NDArray[np.int8]
+    linear: NDArray[np.bool_]
 
     def evaluate(self, which: Ints, x: Floats) -> Floats:
         """Return the values `(m, 9)` of patches `which` at places `x` `(m, 3)`."""
@@ -101,7 +101,7 @@ def fit_patches(
         np.zeros((n, len(terms), 9)),
         terms,
         np.empty(n, dtype=bool),
-        np.empty(n, dtype=np.int8),
+        np.zeros(n, dtype=bool),
     )
     plane = shares.model.plane
     fixed = None if plane is None or dim != 2 else np.delete(np.eye(3), plane.normal, axis=1)
@@ -131,20 +131,19 @@ def _fit(
     scale = np.where(seen, 1.0 / np.sqrt(np.where(seen, variance, 1.0)), 0.0)
     axes = np.swapaxes(frame @ axes, -1, -2) * scale[:, :, None]
     corner = -np.einsum("sdj,js->ds", axes, mean)
-    # how far the corner lies beyond the samples, against what as many samples can bear
-    covered = seen & (corner.T**2 <= MOST_LEVERAGE * n[:, None])
-    good = covered.all(axis=1) & (1.0 + (corner**2).sum(axis=0) <= MOST_LEVERAGE * n) & (n > dim)
+    good = seen.all(axis=1) & ((corner**2).sum(axis=0) <= _REACH**2) & (n > dim)
+    covered = seen & (corner.T**2 <= _COVER**2)
     patches.center[rows] = node + mean.T
     patches.axes[rows] = axes
-    patches.covered[rows] = covered.sum(axis=1)
     H = samples.H[:, at.at]
     slopes = np.stack([at.sums(x[j] * H) for j in range(3)]) / n
     first = _linear_terms(patches.terms, dim)
     patches.coefficients[rows, 0] = (at.sums(H) / n).T
     patches.coefficients[rows, first] = np.einsum("sdj,jcs->sdc", axes * covered[:, :, None], slopes)
     if len(patches.terms) > dim + 1:
-        y = np.stack([sum(at.spread(axes[:, d, j]) * x[j] for j in range(3)) for d in range(dim)])
-        good = _fit_higher(patches, rows, corner, seen.all(axis=1), at, y, H)
+        _fit_higher(patches, rows, good, at, x, H)
+    else:
+        patches.linear[rows] = ~good & covered.any(axis=1)
     patches.good[rows] = good
 
 
@@ -156,30 +155,23 @@ def _linear_terms(terms: tuple[tuple[int, ...], ...], dim: int) -> list[int]:
 def _fit_higher(
     patches: Patches,
     rows: slice,
-    corner: Floats,
-    seen: NDArray[np.bool_],
+    good: NDArray[np.bool_],
     at: Gathered,
-    y: Floats,
+    x: Floats,
     H: Floats,
-) -> NDArray[np.bool_]:
-    """Put the full polynomial where it can be fitted; return where."""
+) -> None:
+    """Put the full polynomial where it can be fitted, and take from `good` the patches where it cannot."""
+    axes = patches.axes[rows]
+    y = np.stack([sum(at.spread(axes[:, d, j]) * x[j] for j in range(3)) for d in range(axes.shape[1])])
     phi = monomials(y, patches.terms)
     t, n = len(phi), at.lengths
-    A = np.empty((len(n), t, t))
-    B = np.empty((len(n), t, 10))
-    B[:, :, 9] = monomials(corner, patches.terms).T
+    A, B = np.empty((len(n), t, t)), np.empty((len(n), t, 9))
     for k in range(t):
-        sums = at.sums(phi[k] * phi[k:]) / n
-        A[:, k, k:] = A[:, k:, k] = sums.T
-        B[:, k, :9] = (at.sums(phi[k] * H) / n).T
+        A[:, k, k:] = A[:, k:, k] = (at.sums(phi[k] * phi[k:]) / n).T
+        B[:, k] = (at.sums(phi[k] * H) / n).T
     values = np.linalg.eigvalsh(A)
-    good: NDArray[np.bool_] = seen & (n >= t) & (values[:, 0] * _CONDITION > values[:, -1])
-    found = np.linalg.solve(A[good], B[good])
-    leverage = np.einsum("st,st->s", found[:, :, 9], B[good][:, :, 9]) / n[good]
-    near = leverage <= MOST_LEVERAGE
-    good[good] = near
-    patches.coefficients[rows][good] = found[near, :, :9]
-    return good
+    good &= (n >= t) & (values[:, 0] * _CONDITION > values[:, -1])
+    patches.coefficients[rows][good] = np.linalg.solve(A[good], B[good])
 
 
 def _symmetric(parts: Floats) -> Floats:

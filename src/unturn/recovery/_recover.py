@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
 from dataclasses import dataclass
 from functools import cached_property
 from typing import Literal
@@ -10,25 +9,16 @@ from typing import Literal
 import numpy as np
 from numpy.typing import NDArray
 
-from unturn.elements import ELEMENTS, Element
-from unturn.elements._space import Space, complete, prism_space, pyramid_space, tensor
 from unturn.errors import UsageError
-from unturn.gradient import over_chunks
 from unturn.kinematics._symmetric import Floats
 from unturn.model import Model
+from unturn.recovery._average import averages
 from unturn.recovery._nodes import Ints, NodeShares, node_shares
-from unturn.recovery._patch import Patches, fit_patches
-from unturn.recovery._samples import CellSamples, Meetings, meetings, sample_cells
+from unturn.recovery._samples import CellSamples, meetings, sample_cells
+from unturn.recovery._spread import FALLBACKS, by_patches
 
 Method = Literal["patch", "extrapolate", "average"]
 METHODS: tuple[Method, ...] = ("patch", "extrapolate", "average")
-FALLBACKS = (
-    "from the patches of neighbouring corners",
-    "by a polynomial of lower degree",
-    "by the average weighted by volume",
-)
-_MEANT, _NEIGHBOURS, _LOWER, _AVERAGE = range(4)
-_PAIRS = 4096
 
 
 @dataclass(frozen=True, eq=False)
@@ -84,9 +74,13 @@ class Recovered:
             found.append(f"at borders and thin patches, of {met} values: {', '.join(odd)}")
         border = int((self.jump > 0).sum())
         if border:
-            found.append(f"{border} nodes lie on borders of groups; the value of the group with most volume is written")
+            found.append(
+                f"{border} nodes lie on borders of groups; the value of the group with most volume is written"
+            )
         if self.shares.merged:
-            found.append(f"{self.shares.merged} coincident nodes (within {self.shares.tolerance:.2g}) count as one")
+            found.append(
+                f"{self.shares.merged} coincident nodes (within {self.shares.tolerance:.2g}) count as one"
+            )
         if self.shares.apart:
             found.append(f"{self.shares.apart} coincident nodes move differently and stay apart")
         return tuple(found)
@@ -130,16 +124,26 @@ def recover_gradient(
     points of the cells that meet there. Surfaces: in the coordinates of the tangent plane; lines: along the tangent.
     Other nodes take the mean of the patches of the corners of their edge, face or cell.
 
-    A patch is not used where its samples are fewer than the terms, leave the polynomial undetermined (condition of the
-    scaled normal equations above 1e8), or where the polynomial would be extrapolated so far that the value scatters more
-    than one sample does. Then, in this order: the mean of the usable patches of the corners of the cells around, at this
-    node; the linear polynomial along the directions that the samples cover; the average weighted by volume.
+    The patch of a corner is not used where its samples leave the polynomial undetermined (fewer than the terms, all in
+    one plane, condition of the scaled normal equations above 1e8) or lie to one side of it: more than one standard
+    deviation of the samples away from their mean, as at borders. The node then takes, in this order: the mean of the
+    patches of usable corners of the cells around, evaluated at the node; the same of the cells around those; for order 1
+    the linear polynomial along the directions that the samples cover; else what the elements extrapolate to the node,
+    averaged weighted by volume.
 
     Examples
     --------
     >>> import numpy as np
-    >>> from unturn import make_result
-    >>> from unturn.model import build_model
+    >>> from unturn.model import PlaneOptions, build_model
+    >>> from unturn.result import CellBlock, Result
+    >>> x, y = np.meshgrid(np.arange(4.0), np.arange(4.0))
+    >>> points = np.stack([x.ravel(), y.ravel(), 0 * x.ravel()], axis=1)
+    >>> first = np.array([0, 1, 2, 4, 5, 6, 8, 9, 10])
+    >>> cells = CellBlock("quad", first[:, None] + [0, 1, 5, 4], np.arange(9))
+    >>> u = points[:, [0]] ** 2 * [[1e-3, 0, 0]]
+    >>> model = build_model(Result(points, (cells,), point_data={"u": u}), plane=PlaneOptions("strain"))
+    >>> recover_gradient(model, np.zeros(9, dtype=int)).H[0, 0, :4].round(6)
+    array([0.   , 0.002, 0.004, 0.006])
     """
     if method not in METHODS:
         raise UsageError(f"method {method!r} is not known; use one of {', '.join(METHODS)}.")
@@ -152,227 +156,16 @@ def recover_samples(
 ) -> Recovered:
     """Return the values at nodes of gradients that were sampled in the cells; see `recover_gradient`."""
     if method == "patch":
-        values, how = _by_patches(shares, samples, threads)
+        values, how = by_patches(shares, samples, threads)
     else:
         met = meetings(shares, samples)
         values, how = np.full((9, len(shares)), np.nan), np.zeros(len(shares), dtype=np.int8)
-        values[:, met.share] = _weighted(shares, samples, met, method == "extrapolate", threads)
+        values[:, met.share] = averages(shares, samples, met, method == "extrapolate", threads)
     plane = shares.model.plane
     if plane is not None and plane.model is None:
         values[4 * plane.normal] = np.nan
     fallback = {text: int((how == code).sum()) for code, text in enumerate(FALLBACKS, 1)}
     return _finished(shares, samples, values, method, fallback)
-
-
-def _weighted(
-    shares: NodeShares, samples: CellSamples, met: Meetings, extrapolate: bool, threads: int | None
-) -> Floats:
-    """Return `(9, n)` the average over the cells that meet, weighted by volume, of their mean or nodal values."""
-    tables, block_of, offset = _nodal_tables(shares) if extrapolate else (np.zeros(0), np.zeros(0), np.zeros(0))
-    out = np.empty((9, len(met.share)))
-
-    def work(a: int, b: int) -> None:
-        at = met.gather(a, b, samples)
-        cell = met.cell[at.pairs]
-        volume = np.repeat(samples.volume[cell], at.of_pair)
-        if extrapolate:
-            of_cell = block_of[cell]
-            start = offset[of_cell] + met.local[at.pairs] * samples.count[cell]
-            share = tables[np.repeat(start, at.of_pair) + at.within]
-        else:
-            share = samples.weight[at.at]
-        total = at.sums(volume * samples.weight[at.at])
-        out[:, a:b] = at.sums((volume * share) * samples.H[:, at.at]) / total
-
-    over_chunks(work, met.ranges(), threads)
-    return out
-
-
-def _nodal_tables(shares: NodeShares) -> tuple[Floats, Ints, Ints]:
-    """Return the extrapolation of every block as one flat table, the block of each cell, and where blocks begin."""
-    tables = [extrapolation(b.row).reshape(-1) if b.row else np.zeros(0) for b in shares.model.blocks]
-    offset = np.concatenate([[0], np.cumsum([len(t) for t in tables])])
-    block_of = np.repeat(np.arange(len(tables)), [len(c) for c in shares.cells])
-    return np.concatenate(tables), block_of, offset
-
-
-def extrapolation(row: Element) -> Floats:
-    """Return `(n_nodes, n_samples)`: values at the nodes from those at the accurate points, by least squares.
-
-    Notes
-    -----
-    The space of one order less than the element's: for the two-point Gauss products the polynomial through all points.
-    """
-    space = _lower_space(row)
-    inverse = np.linalg.pinv(space.values(row.accurate.points))
-    table: Floats = space.values(row.nodes) @ inverse
-    return table
-
-
-def _lower_space(row: Element) -> Space:
-    k = row.order - 1
-    made: dict[str, Callable[[], Space]] = {
-        "triangle": lambda: complete(2, k),
-        "tetra": lambda: complete(3, k),
-        "wedge": lambda: prism_space((k, k)),
-        "pyramid": lambda: pyramid_space(k),
-    }
-    return made.get(row.shape.name, lambda: tensor(*[k] * row.dim))()
-
-
-def _by_patches(
-    shares: NodeShares, samples: CellSamples, threads: int | None
-) -> tuple[Floats, NDArray[np.int8]]:
-    """Return the value `(9, n_shares)` of each share and how it came about."""
-    corners = meetings(shares, samples, corners_only=True)
-    sets = _fit_all(shares, samples, corners, threads)
-    values = np.full((9, len(shares)), np.nan)
-    how = np.full(len(shares), -1, dtype=np.int8)
-    pool = _Pool(shares, samples.origin, sets, threads)
-    is_corner = np.zeros(len(shares), dtype=bool)
-    is_corner[corners.share] = True
-    pool.fill(values, how, _MEANT, pool.good, pool.good)
-    between = _between(shares, samples, ~is_corner)
-    pool.fill(values, how, _MEANT, *between)
-    waiting = how < 0
-    pool.fill(values, how, _NEIGHBOURS, *_around(shares, samples, waiting, pool.usable))
-    pool.fill(values, how, _LOWER, pool.linear, pool.linear)
-    left = (how < 0) & is_corner
-    rest = corners.only(left[corners.share], samples.count)
-    if len(rest.share):
-        values[:, rest.share] = _weighted(shares, samples, rest, False, threads)
-        how[rest.share] = _AVERAGE
-    _interpolate(values, how, *between)
-    return values, how
-
-
-def _fit_all(
-    shares: NodeShares, samples: CellSamples, corners: Meetings, threads: int | None
-) -> list[Patches]:
-    orders = np.concatenate(
-        [np.full(len(c), b.row.order if b.row else 0) for b, c in zip(shares.model.blocks, shares.cells)]
-    )
-    order = np.minimum.reduceat(orders[corners.cell], corners.first[:-1]) if len(corners.share) else orders[:0]
-    dimension = shares.dimension[corners.share]
-    found = []
-    for dim, p in sorted(set(zip(dimension.tolist(), order.tolist()))):
-        met = corners.only((dimension == dim) & (order == p), samples.count)
-        found.append(fit_patches(shares, samples, met, dim, p, threads))
-    return found
-
-
-class _Pool:
-    """All patches, looked up by share."""
-
-    def __init__(
-        self, shares: NodeShares, origin: Floats, sets: list[Patches], threads: int | None
-    ) -> None:
-        self.shares, self.origin, self.sets, self.threads = shares, origin, sets, threads
-        self.set_of = np.full(len(shares), -1, dtype=np.int8)
-        self.rank = np.zeros(len(shares), dtype=np.int64)
-        self.usable = np.zeros(len(shares), dtype=bool)
-        linear = np.zeros(len(shares), dtype=bool)
-        for k, patches in enumerate(sets):
-            self.set_of[patches.share] = k
-            self.rank[patches.share] = np.arange(len(patches.share))
-            self.usable[patches.share] = patches.good
-            linear[patches.share] = ~patches.good & (patches.covered > 0)
-        self.good = np.flatnonzero(self.usable)
-        self.linear = np.flatnonzero(linear)
-
-    def fill(self, values: Floats, how: NDArray[np.int8], code: int, target: Ints, source: Ints) -> None:
-        """Write the mean of the usable patches `source`, at the nodes of `target`, where there is no value yet."""
-        wanted = how[target] < 0
-        if code != _LOWER:
-            wanted &= self.usable[source]
-        target, source = target[wanted], source[wanted]
-        if not len(target):
-            return
-        if (np.diff(target) < 0).any():
-            order = np.argsort(target, kind="stable")
-            target, source = target[order], source[order]
-        starts = np.flatnonzero(np.concatenate([[True], np.diff(target) > 0]))
-        ends = np.append(starts[1:], len(target))
-        filled = target[starts]
-        cuts = np.unique(np.minimum(np.searchsorted(starts, np.arange(0, len(target) + _PAIRS, _PAIRS)), len(starts)))
-
-        def work(a: int, b: int) -> None:
-            pairs = slice(int(starts[a]), int(ends[b - 1]))
-            found = self._evaluate(target[pairs], source[pairs])
-            counts = (ends[a:b] - starts[a:b])[:, None]
-            values[:, filled[a:b]] = (np.add.reduceat(found, starts[a:b] - starts[a], axis=0) / counts).T
-
-        over_chunks(work, list(zip(cuts[:-1].tolist(), cuts[1:].tolist())), self.threads)
-        how[filled] = code
-
-    def _evaluate(self, target: Ints, source: Ints) -> Floats:
-        x = self.shares.model.points[self.shares.point[target]] - self.origin
-        which = self.set_of[source]
-        if len(self.sets) == 1:
-            return self.sets[0].evaluate(self.rank[source], x)
-        found = np.empty((len(target), 9))
-        for k in np.unique(which):
-            mine = which == k
-            found[mine] = self.sets[k].evaluate(self.rank[source[mine]], x[mine])
-        return found
-
-
-def parents(row: Element) -> NDArray[np.bool_]:
-    """Return `(n_nodes, n_corners)`: the corners of the edge, face or cell inside which each node lies."""
-    linear = ELEMENTS[row.shape.name]
-    found: NDArray[np.bool_] = np.abs(linear.shape_functions(row.places)) > 1e-9
-    return found
-
-
-def _between(
-    shares: NodeShares, samples: CellSamples, chosen: NDArray[np.bool_]
-) -> tuple[Ints, Ints]:
-    """Return pairs (node, corner) of the nodes that are no corner and the corners between which they lie."""
-    targets, sources = [np.zeros(0, dtype=np.int64)], [np.zeros(0, dtype=np.int64)]
-    todo = chosen.copy()
-    for block, cells, rows in zip(shares.model.blocks, shares.cells, shares.rows):
-        if block.row is None or block.row.n_nodes == block.row.n_corners or not len(cells):
-            continue
-        sound = samples.valid[rows]
-        belongs = parents(block.row)
-        for local in range(block.row.n_corners, block.row.n_nodes):
-            at = np.flatnonzero(todo[cells[:, local]] & sound)
-            share, once = np.unique(cells[at, local], return_index=True)
-            corners = np.flatnonzero(belongs[local])
-            targets.append(np.repeat(share, len(corners)))
-            sources.append(cells[at[once]][:, corners].reshape(-1))
-            todo[share] = False
-    return np.concatenate(targets).astype(np.int64), np.concatenate(sources).astype(np.int64)
-
-
-def _around(
-    shares: NodeShares, samples: CellSamples, chosen: NDArray[np.bool_], usable: NDArray[np.bool_]
-) -> tuple[Ints, Ints]:
-    """Return pairs (node, corner) of chosen nodes and the usable corners of the cells around them."""
-    targets, sources = [np.zeros(0, dtype=np.int64)], [np.zeros(0, dtype=np.int64)]
-    for block, cells, rows in zip(shares.model.blocks, shares.cells, shares.rows):
-        if block.row is None:
-            continue
-        corners = cells[:, : block.row.n_corners]
-        some = np.flatnonzero(samples.valid[rows] & chosen[cells].any(axis=1) & usable[corners].any(axis=1))
-        for local in range(block.row.n_nodes):
-            here = some[chosen[cells[some, local]]]
-            pairs = usable[corners[here]]
-            targets.append(np.repeat(cells[here, local], pairs.sum(axis=1)))
-            sources.append(corners[here][pairs])
-    return np.concatenate(targets).astype(np.int64), np.concatenate(sources).astype(np.int64)
-
-
-def _interpolate(values: Floats, how: NDArray[np.int8], target: Ints, source: Ints) -> None:
-    """Give nodes without any usable patch around the mean of the corners between which they lie."""
-    wanted = how[target] < 0
-    target, source = target[wanted], source[wanted]
-    if not len(target):
-        return
-    filled, inverse, counts = np.unique(target, return_inverse=True, return_counts=True)
-    for c in range(9):
-        values[c, filled] = np.bincount(inverse, values[c, source]) / counts
-    how[filled] = _LOWER
 
 
 def _finished(

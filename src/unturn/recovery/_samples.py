@@ -4,6 +4,7 @@ from __future__ import annotations
 
 from dataclasses import dataclass
 from functools import cached_property
+from itertools import pairwise
 
 import numpy as np
 from numpy.typing import NDArray
@@ -172,7 +173,7 @@ class Meetings:
         """Ranges of shares with about as many samples as fit the cache."""
         steps = np.arange(0, self.samples[-1] + _PER_CHUNK, _PER_CHUNK)
         ends = np.unique(np.minimum(np.searchsorted(self.samples, steps), len(self.share)))
-        return list(zip(ends[:-1].tolist(), ends[1:].tolist()))
+        return list(pairwise(ends.tolist()))
 
     def only(self, chosen: NDArray[np.bool_], count: Ints) -> Meetings:
         """Return the meetings at some of the shares, `chosen` a mask over `share`."""
