@@ -47,6 +47,8 @@ class Recovered:
         `(n_points,)` volume of each element over the number of its nodes, summed: the weight in statistics.
     fallback
         ``{how: number of nodes}`` where the method could not be used as it is.
+    usable
+        `(n_cells,)` which cells were used: computed, with volume, not tangled, displacement finite.
     """
 
     method: Method
@@ -58,6 +60,7 @@ class Recovered:
     jump: Floats
     weight: Floats
     fallback: dict[str, int]
+    usable: NDArray[np.bool_]
 
     @property
     def group(self) -> Ints:
@@ -174,7 +177,9 @@ def _finished(
     blocks = shares.model.blocks
     n_points = len(shares.model.points)
     volume, weight = np.zeros(len(shares)), np.zeros(n_points)
+    usable = np.zeros(shares.model.result.n_cells, dtype=bool)
     for block, cells, rows in zip(blocks, shares.cells, shares.rows):
+        usable[block.index] = samples.valid[rows]
         sizes = np.where(samples.valid[rows], samples.volume[rows], 0.0)
         volume += np.bincount(cells.reshape(-1), np.repeat(sizes, cells.shape[1]), len(shares))
         part = np.repeat(sizes / cells.shape[1], cells.shape[1])
@@ -185,7 +190,7 @@ def _finished(
     H[:, has] = values[:, share[has]]
     jump = np.where(has, _jumps(shares, values, volume)[shares.label], np.nan)
     tensors = (values.reshape(3, 3, -1), H.reshape(3, 3, -1))
-    return Recovered(method, shares, tensors[0], volume, tensors[1], share, jump, weight, fallback)
+    return Recovered(method, shares, tensors[0], volume, tensors[1], share, jump, weight, fallback, usable)
 
 
 def _dominant(shares: NodeShares, volume: Floats) -> Ints:

@@ -59,7 +59,8 @@ def sheets(model: Model, groups: NDArray[np.integer], angle: float = 40.0) -> In
     bent = np.zeros(n, dtype=bool)
     bent[cell] = True
     kinds = np.stack([label, np.where(bent, part, -1)], axis=1)
-    return np.unique(kinds, axis=0, return_inverse=True)[1].reshape(-1).astype(np.int64)
+    found: Ints = np.unique(kinds, axis=0, return_inverse=True)[1].reshape(-1).astype(np.int64)
+    return found
 
 
 def _facets(
