@@ -23,6 +23,7 @@ LAYERS = (
     ("model",),
     ("fields", "regions", "jacobian"),
     ("recovery", "series", "rigid", "verdict"),
+    ("trust", "peaks"),
     ("agreement", "pipeline", "trial"),
     ("io",),
     ("survey", "summary"),

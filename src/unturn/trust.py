@@ -14,7 +14,7 @@ from threading import Lock
 import numpy as np
 from numpy.typing import NDArray
 
-from unturn.elements import rule_of_degree
+from unturn.elements import Element, rule_of_degree
 from unturn.gradient import ElementChunk, Plane, Samples, chunk_ranges, over_chunks, sample_points
 from unturn.kinematics._symmetric import Floats
 from unturn.model import Model, ModelBlock
@@ -147,6 +147,11 @@ def norms(e: Floats) -> Floats:
     return size
 
 
+def _is_constant(row: Element, plane: Plane | None) -> bool:
+    """Return whether the strain is the same everywhere in an element."""
+    return row.n_nodes == row.dim + 1 and (plane is None or plane.model != "axisymmetric")
+
+
 class _Job:
     """Errors of the elements of one block."""
 
@@ -165,8 +170,7 @@ class _Job:
         self.inside = sample_points(row, self.rule.points)
         self.nodes = sample_points(row, row.nodes)
         self.center = sample_points(row, "centroid")
-        plane = model.plane
-        self.constant = row.n_nodes == row.dim + 1 and (plane is None or plane.model != "axisymmetric")
+        self.constant = _is_constant(row, model.plane)
 
     def strains(self, chunk: ElementChunk, where: Samples) -> Iterator[tuple[Floats, Floats]]:
         """Yield strain components and volume per reference volume at each point."""
@@ -254,6 +258,7 @@ class _Meeting:
         self.share = share[self.entry]
         self.offset = np.concatenate([[0], np.cumsum([c.size for c in shares.cells])])
         self.nodes = [sample_points(b.row, b.row.nodes) if b.row else None for b in model.blocks]
+        self.constant = [b.row is not None and _is_constant(b.row, model.plane) for b in model.blocks]
 
     def ranges(self) -> list[tuple[int, int]]:
         """Ranges of pairs that do not cut a share."""
@@ -272,6 +277,8 @@ class _Meeting:
                 continue
             here = np.flatnonzero((entry >= self.offset[k]) & (entry < self.offset[k + 1]))
             cell, local = np.divmod(entry[here] - self.offset[k], block.connectivity.shape[1])
+            if self.constant[k]:
+                local[:] = 0
             for node in np.unique(local):
                 mine = local == node
                 which = cell[mine]

@@ -44,7 +44,7 @@ def sheets(model: Model, groups: NDArray[np.integer], angle: float = 40.0) -> In
         The groups are not one integer a cell.
     """
     shares = node_shares(model, groups)
-    label = np.unique(groups, return_inverse=True)[1].astype(np.int64)
+    label: Ints = np.unique(groups, return_inverse=True)[1].astype(np.int64)
     joints = [
         _facets(model, b, s) for b, s in zip(model.blocks, shares.cells) if b.kind in ("surface", "line")
     ]
