@@ -23,6 +23,7 @@ LAYERS = (
     ("model",),
     ("fields", "regions", "jacobian"),
     ("recovery", "tensor_range", "rigid", "verdict"),
+    ("trust", "peaks", "surface", "quadrature_points"),
     ("agreement", "pipeline", "trial", "series"),
     ("extremes", "same_mesh", "locate", "convergence"),
     ("envelope", "quantities"),

@@ -9,7 +9,7 @@ from typing import NamedTuple
 
 import numpy as np
 
-from unturn.elements._quadrature import Quadrature
+from unturn.elements._quadrature import Quadrature, rule_of_degree
 from unturn.elements._shape import Floats, Shape, read_only
 from unturn.elements._space import Space
 from unturn.source import Source
@@ -103,6 +103,25 @@ class Element:
     def quadrature(self) -> Quadrature:
         """The default rule: exact for the volume mean of the gradient on affine elements."""
         return self.rule()
+
+    @cached_property
+    def accurate(self) -> Quadrature:
+        """The rule at whose points the gradient of the element is most accurate.
+
+        Notes
+        -----
+        The rule that integrates products of gradients of the complete polynomials of the element exactly: order 1 the
+        centroid, order 2 the two-point Gauss products, three points of a triangle, four of a tetrahedron, and so on.
+        Products of Gauss points are superconvergent (Barlow 1976, Int. J. Numer. Meth. Eng. 10, 243-251; Zienkiewicz
+        and Zhu 1992, Int. J. Numer. Meth. Eng. 33, 1331-1364); those of simplices are only the best sampling points.
+
+        Examples
+        --------
+        >>> from unturn.elements import ELEMENTS
+        >>> [len(ELEMENTS[name].accurate) for name in ("tetra", "tetra10", "hexahedron20")]
+        [1, 4, 8]
+        """
+        return rule_of_degree(self.shape, 2 * (self.order - 1))
 
     def shape_functions(self, xi: Floats | Sequence[Sequence[float]]) -> Floats:
         """Values of the shape functions.

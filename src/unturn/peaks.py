@@ -1,0 +1,175 @@
+"""Peaks: whether one keeps growing towards a node, as at a singularity, and which is the next away from it."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+from scipy import sparse
+
+from unturn.kinematics._symmetric import Floats
+from unturn.recovery import Recovered
+
+Ints = NDArray[np.int64]
+
+RINGS = 3
+GROWING = 0.35
+"""Exponent of growth above which a peak that does not level off is suspected."""
+STEEP = 0.6
+"""Exponent above which it is suspected in any case."""
+LEVEL = 0.9
+"""Share of the exponent further out below which the growth levels off."""
+_MOST = 200
+
+
+@dataclass(frozen=True)
+class Peak:
+    """An extreme over some cells, and how the value grows towards it.
+
+    Attributes
+    ----------
+    cell
+        File position of the cell that holds the extreme; -1 for none.
+    value
+        The value there.
+    point
+        Position of the node towards which it grows: of the corners of the cell the one around which the volume-weighted
+        mean is most extreme.
+    distances, means
+        Mean distance from the node and mean value of three rings of cells around it, volume-weighted.
+    growth, growth_outside
+        Exponents a of `value ~ distance^-a` between the first and second, and the second and third ring; NaN where there
+        are not that many rings, or values change sign.
+    singular
+        Suspected singular.
+    """
+
+    cell: int
+    value: float
+    point: int
+    distances: tuple[float, ...]
+    means: tuple[float, ...]
+    growth: float
+    growth_outside: float
+    singular: bool
+
+
+class Peaks:
+    """Finds peaks of values on cells.
+
+    Parameters
+    ----------
+    recovered
+        Tells which cells meet at which node; rings stay within a group.
+    centroid, volume
+        `(n_cells, 3)` and `(n_cells,)` of each cell, file order.
+
+    Notes
+    -----
+    The first ring is the cells that meet at the node, the second those that share a corner with them, and so on. Towards
+    a singular point the strain grows as a power of the distance (Williams 1952, Stress singularities resulting from
+    various boundary conditions in angular corners, J. Appl. Mech. 19, 526-528: exponent 0.46 at a re-entrant right
+    angle, 0.5 at a crack; 1 under a point load in the plane, 2 in space), so the exponent is the same from ring to
+    ring; towards a smooth peak it falls to zero. A peak is suspected where the exponent is above 0.35 and at least 0.9 of
+    that of the ring further out, or above 0.6. A notch that the mesh hardly resolves looks the same: then, too, the
+    value is not to be trusted.
+    """
+
+    def __init__(self, recovered: Recovered, centroid: Floats, volume: Floats) -> None:
+        shares = recovered.shares
+        self.shares, self.centroid, self.volume = shares, centroid, volume
+        n_cells, rows, columns = len(volume), [], []
+        for block, cells in zip(shares.model.blocks, shares.cells):
+            if block.row is None:
+                continue
+            usable = recovered.usable[block.index]
+            corners = cells[usable, : block.row.n_corners]
+            rows.append(np.repeat(block.index[usable], corners.shape[1]))
+            columns.append(corners.reshape(-1))
+        at = (np.concatenate(rows), np.concatenate(columns))
+        ones = np.ones(len(at[0]), dtype=np.int8)
+        self.corners = sparse.coo_array((ones, at), shape=(n_cells, len(shares))).tocsr()
+        self.cells = self.corners.T.tocsr()
+
+    def find(self, values: Floats, cells: Ints, smallest: bool = False) -> Peak:
+        """Return the largest (smallest) of `values[cells]` as a peak.
+
+        Parameters
+        ----------
+        values
+            `(n_cells,)`; NaN is passed over.
+        cells
+            File positions to look at.
+        smallest
+            Look for the smallest, and for values that fall towards it.
+        """
+        signed = -values if smallest else values
+        known = cells[np.isfinite(signed[cells]) & (np.diff(self.corners.indptr)[cells] > 0)]
+        if not len(known):
+            nan = float("nan")
+            return Peak(-1, nan, -1, (), (), nan, nan, False)
+        cell = int(known[signed[known].argmax()])
+        share = self._towards(signed, cell)
+        distances, means = self._profile(signed, share)
+        near, far = _exponent(distances, means, 0), _exponent(distances, means, 1)
+        singular = near > STEEP or (near > GROWING and near >= LEVEL * far)
+        sign = -1.0 if smallest else 1.0
+        point = int(self.shares.point[share])
+        shown = tuple(sign * m for m in means)
+        return Peak(cell, float(values[cell]), point, distances, shown, near, far, bool(singular))
+
+    def next_peak(self, values: Floats, cells: Ints, peak: Peak, smallest: bool = False) -> Peak:
+        """Return the most extreme peak of `cells` that is not suspected singular, away from `peak`.
+
+        The cells of the first two rings around a suspected peak are left out, and so on with the next while that is
+        suspected too (the nodes along a re-entrant edge), at most 200 times; `cell` is -1 when nothing is left.
+        """
+        rest = np.zeros(len(values), dtype=bool)
+        rest[cells] = True
+        for _ in range(_MOST):
+            if peak.cell < 0 or not peak.singular:
+                return peak
+            share = self._towards(-values if smallest else values, peak.cell)
+            for ring in self._rings(share)[:2]:
+                rest[ring] = False
+            rest[peak.cell] = False
+            peak = self.find(values, np.flatnonzero(rest), smallest)
+        return peak if not peak.singular else self.find(values, np.zeros(0, dtype=np.int64), smallest)
+
+    def _towards(self, signed: Floats, cell: int) -> int:
+        corners = self.corners[[cell]].indices
+        around = [self._mean(signed, self.cells[[int(c)]].indices) for c in corners]
+        return int(corners[int(np.argmax(around))])
+
+    def _mean(self, values: Floats, cells: NDArray[np.integer]) -> float:
+        weight = np.where(np.isfinite(values[cells]), self.volume[cells], 0.0)
+        return float((weight * np.nan_to_num(values[cells])).sum() / weight.sum())
+
+    def _rings(self, share: int) -> list[Ints]:
+        inside = np.zeros(0, dtype=np.int64)
+        nodes = np.array([share], dtype=np.int64)
+        found = []
+        for _ in range(RINGS):
+            reached = np.unique(self.cells[nodes].indices).astype(np.int64)
+            ring = np.setdiff1d(reached, inside)
+            if not len(ring):
+                break
+            found.append(ring)
+            inside, nodes = reached, np.unique(self.corners[reached].indices).astype(np.int64)
+        return found
+
+    def _profile(self, signed: Floats, share: int) -> tuple[tuple[float, ...], tuple[float, ...]]:
+        place = self.shares.model.points[self.shares.point[share]]
+        distances, means = [], []
+        for ring in self._rings(share):
+            far = np.linalg.norm(self.centroid[ring] - place, axis=1)
+            distances.append(float(np.average(far, weights=self.volume[ring])))
+            means.append(self._mean(signed, ring))
+        return tuple(distances), tuple(means)
+
+
+def _exponent(distances: tuple[float, ...], means: tuple[float, ...], k: int) -> float:
+    if len(means) < k + 2 or min(means[k], means[k + 1]) <= 0 or distances[k + 1] <= distances[k]:
+        return float("nan")
+    return float(np.log(means[k] / means[k + 1]) / np.log(distances[k + 1] / distances[k]))

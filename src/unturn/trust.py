@@ -1,0 +1,288 @@
+"""How far a strain can be trusted: what recovery changes of it, and how elements differ where they meet.
+
+All norms are Frobenius norms of small strain tensors: `norm(e) = sqrt(e:e)`, energy-like but without a material. On a
+plane mesh whose third direction is not stated, only the strain in the plane counts.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from dataclasses import dataclass
+from itertools import pairwise
+from threading import Lock
+
+import numpy as np
+from numpy.typing import NDArray
+
+from unturn.elements import Element, rule_of_degree
+from unturn.gradient import ElementChunk, Plane, Samples, chunk_ranges, over_chunks, sample_points
+from unturn.kinematics._symmetric import Floats
+from unturn.model import Model, ModelBlock
+from unturn.recovery import Recovered
+
+Ints = NDArray[np.int64]
+_COMPONENTS = ((0, 0), (1, 1), (2, 2), (0, 1), (1, 2), (0, 2))
+_ROOTS = np.sqrt([1.0, 1.0, 1.0, 2.0, 2.0, 2.0])
+_PER_CHUNK = 8192
+
+MOST_CHANGE = {
+    "strain": 1.0,
+    "principal_strain": 1.0,
+    "equivalent_strain": float(np.sqrt(2 / 3)),
+    "max_shear_strain": float(np.sqrt(2)),
+    "volumetric_strain": float(np.sqrt(3)),
+    "deviatoric_strain": 1.0,
+}
+"""How much a measure changes at most when the strain changes by a tensor of norm one.
+
+`e1 - e3` and `tr e` are products of e with tensors of norm sqrt 2 and sqrt 3; eigenvalues move by no more than the norm
+of the change (Weyl 1912); `sqrt(2/3 e':e')` is sqrt(2/3) times a norm. For small strain measures.
+"""
+
+
+@dataclass(frozen=True, eq=False)
+class StrainError:
+    """The difference between recovered and raw strain.
+
+    Attributes
+    ----------
+    strain_error
+        `(n_cells,)` root mean square over the element of `norm(e* - e)`, e the strain of the element itself and e* the
+        recovered strain, interpolated from the nodes with the element's shape functions; NaN where not computed.
+    plus_minus
+        `(n_cells,)` bound for the value at the centroid as one for the whole element: the largest over its nodes of
+        `norm(e*(node) - e(centroid)) + d(node)`, with d the largest `norm(e* - e)` there over the elements that meet.
+    plus_minus_nodes
+        `(n_points,)` bound for the recovered value: the largest d over the nodes of the elements that meet at the node.
+    volume
+        `(n_cells,)` volume of the element.
+    error_squared, strain_squared
+        `(n_cells,)` integrals of `norm(e* - e)^2` and `norm(e)^2` over the element.
+    """
+
+    strain_error: Floats
+    plus_minus: Floats
+    plus_minus_nodes: Floats
+    volume: Floats
+    error_squared: Floats
+    strain_squared: Floats
+
+    def percentage(self, cells: Ints) -> float:
+        """Return the global error of some cells (file positions) in percent; NaN without any strain.
+
+        Notes
+        -----
+        `100 norm(e* - e) / sqrt(norm(e)^2 + norm(e* - e)^2)` with norms over the volume: Zienkiewicz and Zhu 1987, A
+        simple error estimator and adaptive procedure for practical engineering analysis, Int. J. Numer. Meth. Eng. 24,
+        337-357, with the strain norm in place of the energy norm.
+        """
+        error = float(np.nansum(self.error_squared[cells]))
+        strain = float(np.nansum(self.strain_squared[cells]))
+        return 100.0 * float(np.sqrt(error / (strain + error))) if strain + error > 0 else float("nan")
+
+
+def strain_error(recovered: Recovered, threads: int | None = None) -> StrainError:
+    """Return how far the recovered strain departs from that of the elements.
+
+    Parameters
+    ----------
+    recovered
+        See `unturn.recovery.recover_gradient`.
+    threads
+        None: all processors.
+
+    Notes
+    -----
+    Integrated with a rule that is exact for the square of the element's complete polynomials on affine elements. The
+    bounds are bounds by experience, not by proof: recovered strain converges faster than that of the elements, so what
+    it changes is about their error, and the largest change around a place is more than the error at the place as a
+    rule. They know nothing of what the mesh does not show at all (a notch with one element in its root), and are NaN
+    where an element has no neighbour to differ from.
+    """
+    model, shares = recovered.shares.model, recovered.shares
+    n = model.result.n_cells
+    volume, error, strain, plus_minus = (np.full(n, np.nan) for _ in range(4))
+    departure = np.zeros(len(shares))
+    nodal = strain_components(recovered.values, model.plane)
+    reach = [np.zeros(cells.shape) for cells in shares.cells]
+    lock = Lock()
+    for block, cells, out in zip(model.blocks, shares.cells, reach):
+        if block.row is None:
+            continue
+        job = _Job(model, block, cells, nodal, recovered.usable[block.index])
+
+        def work(a: int, b: int, job: _Job = job, out: Floats = out) -> None:
+            with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
+                sums, here, out[a:b] = job.chunk(a, b)
+            here[~job.usable[a:b]] = 0.0
+            for array, values in zip((volume, error, strain), sums):
+                array[job.block.index[a:b]] = np.where(job.usable[a:b], values, np.nan)
+            with lock:
+                np.maximum.at(departure, job.cells[a:b], np.nan_to_num(here))
+
+        over_chunks(work, chunk_ranges(len(cells), block.row.n_nodes), threads)
+    wide = np.full(len(shares), np.nan)
+    alone = np.bincount(np.concatenate([c.reshape(-1) for c in shares.cells]), minlength=len(shares)) == 1
+    for block, cells, far in zip(model.blocks, shares.cells, reach):
+        if len(cells):
+            lost = alone[cells].all(axis=1) | ~recovered.usable[block.index]
+            worst = np.where(lost, np.nan, departure[cells].max(axis=1))
+            np.fmax.at(wide, cells, worst[:, None])
+            plus_minus[block.index] = np.where(lost, np.nan, (far + departure[cells]).max(axis=1))
+    at_nodes = np.where(recovered.share >= 0, wide[recovered.share], np.nan)
+    return StrainError(np.sqrt(error / volume), plus_minus, at_nodes, volume, error, strain)
+
+
+def strain_components(H: Floats, plane: Plane | None) -> Floats:
+    """Return `(6, n)` strain components of `(3, 3, n)` gradients, shear times sqrt 2: their norm is the tensor's."""
+    e = np.stack([0.5 * root * (H[i, j] + H[j, i]) for (i, j), root in zip(_COMPONENTS, _ROOTS)])
+    if plane is not None and plane.model is None:
+        e[plane.normal] = 0.0
+    return e
+
+
+def norms(e: Floats) -> Floats:
+    """Return the norm over the first axis."""
+    size: Floats = np.sqrt(np.einsum("c...,c...->...", e, e))
+    return size
+
+
+def _is_constant(row: Element, plane: Plane | None) -> bool:
+    """Return whether the strain is the same everywhere in an element."""
+    return row.n_nodes == row.dim + 1 and (plane is None or plane.model != "axisymmetric")
+
+
+class _Job:
+    """Errors of the elements of one block."""
+
+    def __init__(
+        self,
+        model: Model,
+        block: ModelBlock,
+        cells: NDArray[np.int32],
+        nodal: Floats,
+        usable: NDArray[np.bool_],
+    ) -> None:
+        assert block.row is not None
+        self.model, self.block, self.cells, self.nodal, self.usable = model, block, cells, nodal, usable
+        row = block.row
+        self.rule = rule_of_degree(row.shape, 2 * row.order)
+        self.inside = sample_points(row, self.rule.points)
+        self.nodes = sample_points(row, row.nodes)
+        self.center = sample_points(row, "centroid")
+        self.constant = _is_constant(row, model.plane)
+
+    def strains(self, chunk: ElementChunk, where: Samples) -> Iterator[tuple[Floats, Floats]]:
+        """Yield strain components and volume per reference volume at each point."""
+        point = None
+        for gradients, functions in zip(where.gradients, where.functions):
+            if point is None or not self.constant:
+                point = chunk.at(gradients, functions)
+                e = strain_components(point.H, self.model.plane)
+            yield e, point.weight
+
+    def chunk(self, a: int, b: int) -> tuple[tuple[Floats, Floats, Floats], Floats, Floats]:
+        """Return volume, error and strain integrals; then, `(m, n_nodes)`, departure and reach at the nodes."""
+        chunk = self.model.chunk(self.block, self.block.connectivity[a:b], self.block.index[a:b])
+        nodal = self.nodal[:, self.cells[a:b].T]
+        volume, error, strain = np.zeros(b - a), np.zeros(b - a), np.zeros(b - a)
+        inside = self.strains(chunk, self.inside)
+        for (e, size), functions, weight in zip(inside, self.inside.functions, self.rule.weights):
+            share = weight * size
+            volume += share
+            strain += share * np.einsum("cm,cm->m", e, e)
+            off = np.einsum("a,cam->cm", functions, nodal) - e
+            error += share * np.einsum("cm,cm->m", off, off)
+        departure = np.stack(
+            [norms(nodal[:, k] - e) for k, (e, _) in enumerate(self.strains(chunk, self.nodes))], 1
+        )
+        middle, _ = next(self.strains(chunk, self.center))
+        return (volume, error, strain), departure, norms(nodal - middle[:, None]).T
+
+
+def strain_jump(recovered: Recovered, threads: int | None = None) -> tuple[Floats, Floats]:
+    """Return the largest difference between the strains that elements have where they meet.
+
+    Parameters
+    ----------
+    recovered
+        Tells which elements meet at which node; elements of different groups or dimensions are not compared.
+    threads
+        None: all processors.
+
+    Returns
+    -------
+    cells
+        `(n_cells,)` the largest jump at the nodes of each cell; NaN where not computed.
+    points
+        `(n_points,)` `max norm(e_a - e_b)` over the pairs of elements of one group that meet at the node, e the strain
+        of each element itself at the node; the largest over its groups; NaN at nodes of no computed cell.
+    """
+    shares, model = recovered.shares, recovered.shares.model
+    jump = np.full(len(shares), np.nan)
+    meeting = _Meeting(recovered)
+
+    def work(a: int, b: int) -> None:
+        with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
+            e = meeting.strains(a, b)
+        share = meeting.share[a:b]
+        usable = np.isfinite(e).all(axis=0)
+        e, share = e[:, usable], share[usable]
+        jump[share] = 0.0
+        step = 1
+        while len(pairs := np.flatnonzero(share[step:] == share[:-step])):
+            np.maximum.at(jump, share[pairs], norms(e[:, pairs + step] - e[:, pairs]))
+            step += 1
+
+    over_chunks(work, meeting.ranges(), threads)
+    cells = np.full(model.result.n_cells, np.nan)
+    points = np.full(len(model.points), np.nan)
+    for block, own in zip(model.blocks, shares.cells):
+        if len(own):
+            usable = recovered.usable[block.index]
+            cells[block.index[usable]] = np.fmax.reduce(jump[own[usable]], axis=1)
+            np.fmax.at(points, block.connectivity[usable], jump[own[usable]])
+    return cells, points
+
+
+class _Meeting:
+    """Pairs of share and cell, sorted by share, and the strain of the cell there."""
+
+    def __init__(self, recovered: Recovered) -> None:
+        self.shares = shares = recovered.shares
+        model = shares.model
+        share = np.concatenate([c.reshape(-1) for c in shares.cells])
+        used = [np.repeat(recovered.usable[b.index], c.shape[1]) for b, c in zip(model.blocks, shares.cells)]
+        order = np.argsort(share, kind="stable")
+        self.entry = order[np.concatenate(used)[order]]
+        self.share = share[self.entry]
+        self.offset = np.concatenate([[0], np.cumsum([c.size for c in shares.cells])])
+        self.nodes = [sample_points(b.row, b.row.nodes) if b.row else None for b in model.blocks]
+        self.constant = [b.row is not None and _is_constant(b.row, model.plane) for b in model.blocks]
+
+    def ranges(self) -> list[tuple[int, int]]:
+        """Ranges of pairs that do not cut a share."""
+        starts = np.flatnonzero(np.concatenate([[True], np.diff(self.share) > 0]))
+        steps = np.searchsorted(starts, np.arange(0, len(self.share), _PER_CHUNK))
+        cuts = np.append(starts[np.minimum(steps, len(starts) - 1)], len(self.share))
+        return [(int(a), int(b)) for a, b in pairwise(np.unique(cuts))]
+
+    def strains(self, a: int, b: int) -> Floats:
+        """Return `(6, b - a)` strain components of each pair."""
+        model = self.shares.model
+        out = np.empty((6, b - a))
+        entry = self.entry[a:b]
+        for k, (block, samples) in enumerate(zip(model.blocks, self.nodes)):
+            if samples is None:
+                continue
+            here = np.flatnonzero((entry >= self.offset[k]) & (entry < self.offset[k + 1]))
+            cell, local = np.divmod(entry[here] - self.offset[k], block.connectivity.shape[1])
+            if self.constant[k]:
+                local[:] = 0
+            for node in np.unique(local):
+                mine = local == node
+                which = cell[mine]
+                chunk = model.chunk(block, block.connectivity[which], block.index[which])
+                H = chunk.at(samples.gradients[node], samples.functions[node]).H
+                out[:, here[mine]] = strain_components(H, model.plane)
+        return out
