@@ -112,7 +112,14 @@ def test_rates_of_a_spinning_part(desk: Path) -> None:
     with series_writer("spin.xdmf") as writer:
         for k in range(4):
             writer.add(MESH.result(u=MESH.points @ axis_angle(np.array([0, 0, 1.0]), 0.5 * k).T), 2.0 * k)
-    said("spin.xdmf --solve nonlinear --measures deformation_rate,spin -o s.vtu")
+    said("spin.xdmf --solve nonlinear --measures deformation_rate,spin -o s.vtu --steps-output rates.xdmf")
+    for k in range(4):
+        rates = unturn.read("rates.xdmf", k)
+        assert rates.steps is not None
+        assert rates.steps.values == (0, 2, 4, 6)
+        spin = rates.cell_data["spin"]
+        assert np.isnan(spin).all() if k == 0 else np.allclose(spin, [0, 0, 0.25], atol=1e-13)
+    assert rates.component_names["cell", "deformation_rate"] == ("XX", "YY", "ZZ", "XY", "YZ", "XZ")
     found = unturn.read("s.vtu").cell_data
     assert np.abs(found["deformation_rate_largest_magnitude"]).max() < 1e-13
     for which in ("maximum", "minimum"):
@@ -170,6 +177,9 @@ def test_json_on_the_standard_output(desk: Path, capsys: pytest.CaptureFixture[s
         ("run.xdmf --measures principal_direction_1", 2, "has no largest value"),
         ("dead.vtu wind.vtu --measures spin", 2, "load cases do not follow"),
         ("part_1.vtu part_2.vtu --as-series --measures spin", 2, "rates need the time of every step"),
+        ("run.xdmf --measures spinn", 2, "Did you mean 'spin'"),
+        ("run.xdmf --steps-output s.xdmf", 2, "no measure of a series"),
+        ("run.xdmf --steps-output s.msh --measures spin", 2, "s.msh"),
         ("dead.vtu wind.vtu --as-series", 2, "holds no number"),
         ("run.xdmf --base hencky --solve linear", 2, "is fiction"),
         ("run.xdmf --region roof", 2, "no region is called 'roof'"),

@@ -235,6 +235,15 @@ def test_another_mesh_is_refused() -> None:
     assert set(found.arrays["equivalent_strain_maximum_step"].tolist()) == {1}
 
 
+@pytest.mark.practice("a flat mesh is plane or a surface, not once this and once that")
+def test_a_flat_mesh_keeps_its_kind() -> None:
+    plate = patch(ELEMENTS["quad"])
+    bent = 0.01 * plate.points[:, :1] ** 2 * np.array([0.0, 0.0, 1.0])
+    states = [State(f"step {k}", lambda k=k: plate.result(u=k * bent)) for k in range(2)]  # type: ignore[misc]
+    with pytest.raises(InputError, match=r"step 1: .*as a surface once and as plane once"):
+        envelope(states, EnvelopeOptions(StrainOptions(measures=["strain"])))
+
+
 @pytest.mark.derived("the worst verdict of a region is that of the step that turns most")
 def test_the_worst_verdict_over_the_steps_is_kept() -> None:
     steps = [

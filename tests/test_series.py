@@ -16,14 +16,9 @@ from strategies import axis_angle, gradients, unit_vectors
 from unturn.elements import ELEMENTS
 from unturn.errors import InputError, UsageError
 from unturn.fields import compute_fields
+from unturn.kinematics._relative import finite_gradient, increments, relative_gradient
 from unturn.model import PlaneOptions, build_model
-from unturn.series import (
-    StepChanges,
-    choose_series_measures,
-    finite_gradient,
-    increments,
-    relative_gradient,
-)
+from unturn.series import StepChanges, choose_series_measures
 
 Floats = NDArray[np.float64]
 AXIS = np.array([1.0, 2.0, -2.0]) / 3.0

@@ -127,8 +127,8 @@ def study(values: tuple[float, float, float], sizes: tuple[float, float, float])
         return Study(values, "stalls", reason)
     if e32 / e21 < 0:
         reason = (
-            "it oscillates: up, then down, or the other way round. The meshes are too coarse for an order, or not alike: refine "
-            "all of them in the same way"
+            "it oscillates: up, then down, or the other way round. The meshes are too coarse for an order, or not "
+            "alike: refine all of them in the same way"
         )
         return Study(values, "oscillates", reason)
     p = observed_order(e32 / e21, r21, r32)

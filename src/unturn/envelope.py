@@ -155,6 +155,7 @@ def envelope(
     *,
     zero: Result | None = None,
     progress: Callable[[int], None] | None = None,
+    each: Callable[[CellFields, float], None] | None = None,
 ) -> Envelope:
     """Return the extremes of a result over its states, cell by cell, and which state made each.
 
@@ -168,6 +169,9 @@ def envelope(
         The step from which displacements are measured; None for the undeformed state.
     progress
         Called with the number of states done.
+    each
+        Called with the measures of the series at every step that was computed, and its time (its number where it has
+        none).
 
     Returns
     -------
@@ -191,7 +195,7 @@ def envelope(
     options = options or EnvelopeOptions()
     if not states:
         raise InputError("the series holds no step: there is nothing to envelop.")
-    run = _Run(options, zero)
+    run = _Run(options, zero, each)
     with run.stack:
         for number, state in enumerate(states):
             try:
@@ -215,8 +219,13 @@ def _named(state: State, error: UnturnError) -> UnturnError:
 class _Run:
     """The arrays being filled."""
 
-    def __init__(self, options: EnvelopeOptions, zero: Result | None) -> None:
-        self.options, self.zero = options, zero
+    def __init__(
+        self,
+        options: EnvelopeOptions,
+        zero: Result | None,
+        each: Callable[[CellFields, float], None] | None,
+    ) -> None:
+        self.options, self.zero, self.each = options, zero, each
         strain = options.strain
         series = choose_series_measures(strain.measures or (), strain.base, strain.solve)
         if series and options.kind == "case":
@@ -256,6 +265,11 @@ class _Run:
         self._left_out(fields)
         fresh = np.isnan(self.volume)
         self.volume[fresh], self.centroid[fresh] = d.volume[fresh], d.centroid[fresh]
+        if self.each is not None:
+            names = {n: self.components[n] for n in changed if n in self.components}
+            self.each(
+                CellFields(fields.model, dict(changed), names), number if state.time is None else state.time
+            )
         self.model = fields.model
         self.previous = tuple(r.motion for r in computed.removals)
 

@@ -9,7 +9,7 @@ from typing import Literal
 import numpy as np
 from numpy.typing import NDArray
 
-from unturn.errors import UsageError
+from unturn.errors import UsageError, close_matches
 from unturn.kinematics._finite import BASES
 from unturn.kinematics._symmetric import Floats
 from unturn.measures import GEOMETRY, MEASURES, choose_measures
@@ -85,6 +85,13 @@ def plan_envelope(asked: Sequence[str] | None, base: str, changes: StepChanges, 
         An unknown measure, or one that has no extremes.
     """
     own = None if asked is None else [n for n in asked if n not in SERIES_MEASURES]
+    for name in own or ():
+        if name not in MEASURES and name not in GEOMETRY and name != "all":
+            known = [*MEASURES, *SERIES_MEASURES]
+            raise UsageError(
+                f"no measure is called {name!r}.{close_matches(name, known)} Measures: those of 'unturn strain', and of a "
+                f"series {', '.join(SERIES_MEASURES)}."
+            )
     chosen = choose_measures(own, base) if own is None or own else ()
     for name in own or ():
         if name in GEOMETRY or name.startswith("principal_direction"):

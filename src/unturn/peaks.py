@@ -12,13 +12,14 @@ from unturn.kinematics._symmetric import Floats
 from unturn.recovery import Recovered
 
 Ints = NDArray[np.int64]
+Profile = tuple[tuple[float, ...], tuple[float, ...]]
 
 RINGS = 3
-GROWING = 0.35
-"""Exponent of growth above which a peak that does not level off is suspected."""
+GROWING = 0.43
+"""Exponent of growth from the third ring to the first above which a peak that does not level off is suspected."""
 STEEP = 0.6
-"""Exponent above which it is suspected in any case."""
-LEVEL = 0.9
+"""Exponent between the first two rings above which it is suspected in any case."""
+LEVEL = 0.55
 """Share of the exponent further out below which the growth levels off."""
 _MOST = 200
 
@@ -34,8 +35,8 @@ class Peak:
     value
         The value there.
     point
-        Position of the node towards which it grows: of the corners of the cell the one around which the volume-weighted
-        mean is most extreme.
+        Position of the node towards which it grows: of the corners of the cell the one with the largest exponent between
+        the first two rings; a singular point lies there or one cell on.
     distances, means
         Mean distance from the node and mean value of three rings of cells around it, volume-weighted.
     growth, growth_outside
@@ -70,10 +71,12 @@ class Peaks:
     The first ring is the cells that meet at the node, the second those that share a corner with them, and so on. Towards
     a singular point the strain grows as a power of the distance (Williams 1952, Stress singularities resulting from
     various boundary conditions in angular corners, J. Appl. Mech. 19, 526-528: exponent 0.46 at a re-entrant right
-    angle, 0.5 at a crack; 1 under a point load in the plane, 2 in space), so the exponent is the same from ring to
-    ring; towards a smooth peak it falls to zero. A peak is suspected where the exponent is above 0.35 and at least 0.9 of
-    that of the ring further out, or above 0.6. A notch that the mesh hardly resolves looks the same: then, too, the
-    value is not to be trusted.
+    angle, 0.5 at a crack; 1 under a point load in the plane, 2 in space), so the exponent stays the same from ring to
+    ring; towards a smooth peak it falls to zero. A peak is suspected where the exponent from the third ring to the first
+    is above 0.43 and has not fallen, between the first two rings, below 0.55 of that further out; or is above 0.6 between
+    the first two. The bounds were set on solved problems (a hole, a thick cylinder, a re-entrant corner, a point load)
+    from 4 to 16 cells across. A notch that the mesh hardly resolves looks the same: then, too, the value is not to be
+    trusted.
     """
 
     def __init__(self, recovered: Recovered, centroid: Floats, volume: Floats) -> None:
@@ -110,10 +113,10 @@ class Peaks:
             nan = float("nan")
             return Peak(-1, nan, -1, (), (), nan, nan, False)
         cell = int(known[signed[known].argmax()])
-        share = self._towards(signed, cell)
-        distances, means = self._profile(signed, share)
-        near, far = _exponent(distances, means, 0), _exponent(distances, means, 1)
-        singular = near > STEEP or (near > GROWING and near >= LEVEL * far)
+        share, (distances, means) = self._towards(signed, cell)
+        near, far = _exponent(distances, means, 0, 1), _exponent(distances, means, 1, 2)
+        growing = _exponent(distances, means, 0, 2) > GROWING and near >= LEVEL * far
+        singular = near > STEEP or growing
         sign = -1.0 if smallest else 1.0
         point = int(self.shares.point[share])
         shown = tuple(sign * m for m in means)
@@ -130,17 +133,20 @@ class Peaks:
         for _ in range(_MOST):
             if peak.cell < 0 or not peak.singular:
                 return peak
-            share = self._towards(-values if smallest else values, peak.cell)
+            share, _ = self._towards(-values if smallest else values, peak.cell)
             for ring in self._rings(share)[:2]:
                 rest[ring] = False
             rest[peak.cell] = False
             peak = self.find(values, np.flatnonzero(rest), smallest)
         return peak if not peak.singular else self.find(values, np.zeros(0, dtype=np.int64), smallest)
 
-    def _towards(self, signed: Floats, cell: int) -> int:
-        corners = self.corners[[cell]].indices
-        around = [self._mean(signed, self.cells[[int(c)]].indices) for c in corners]
-        return int(corners[int(np.argmax(around))])
+    def _towards(self, signed: Floats, cell: int) -> tuple[int, Profile]:
+        """Return the corner of a cell towards which values grow most, and the rings around it."""
+        corners = [int(c) for c in np.unique(self.corners[[cell]].indices)]
+        profiles = [self._profile(signed, c) for c in corners]
+        growth = np.nan_to_num([_exponent(*p, 0, 1) for p in profiles], nan=-np.inf)
+        best = int(np.argmax(growth >= growth.max() - 1e-6))
+        return corners[best], profiles[best]
 
     def _mean(self, values: Floats, cells: NDArray[np.integer]) -> float:
         weight = np.where(np.isfinite(values[cells]), self.volume[cells], 0.0)
@@ -159,7 +165,7 @@ class Peaks:
             inside, nodes = reached, np.unique(self.corners[reached].indices).astype(np.int64)
         return found
 
-    def _profile(self, signed: Floats, share: int) -> tuple[tuple[float, ...], tuple[float, ...]]:
+    def _profile(self, signed: Floats, share: int) -> Profile:
         place = self.shares.model.points[self.shares.point[share]]
         distances, means = [], []
         for ring in self._rings(share):
@@ -169,7 +175,7 @@ class Peaks:
         return tuple(distances), tuple(means)
 
 
-def _exponent(distances: tuple[float, ...], means: tuple[float, ...], k: int) -> float:
-    if len(means) < k + 2 or min(means[k], means[k + 1]) <= 0 or distances[k + 1] <= distances[k]:
+def _exponent(distances: tuple[float, ...], means: tuple[float, ...], a: int, b: int) -> float:
+    if len(means) <= b or min(means[a], means[b]) <= 0 or distances[b] <= distances[a]:
         return float("nan")
-    return float(np.log(means[k] / means[k + 1]) / np.log(distances[k + 1] / distances[k]))
+    return float(np.log(means[a] / means[b]) / np.log(distances[b] / distances[a]))

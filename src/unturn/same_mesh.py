@@ -21,6 +21,7 @@ class ReferenceMesh:
         for block in model.result.blocks:
             self._used[block.connectivity] = True
         self._points = model.points
+        self._plane = model.plane is not None
         used = self._points[self._used]
         self._tolerance = _SAME * float(np.nanmax(np.nanmax(used, axis=0) - np.nanmin(used, axis=0)))
 
@@ -37,6 +38,12 @@ class ReferenceMesh:
                 f"{model.result.path}: its mesh is another one than that of the first state ({model.result.n_points} "
                 f"points and {model.result.n_cells} cells; before {len(self._points)} points): values of a cell "
                 "cannot be compared. Give states on one mesh."
+            )
+        if (model.plane is not None) is not self._plane:
+            raise InputError(
+                f"{model.result.path}: the flat mesh moves across its plane here and not in the first state, or the other "
+                "way round: it counts as a surface once and as plane once. State --plane, or leave out the states "
+                "without such displacement."
             )
         apart = np.abs(model.points - self._points).max(axis=1)
         worst = float(np.nanmax(apart, where=self._used, initial=0.0))

@@ -2,9 +2,10 @@
 
 from __future__ import annotations
 
+import contextlib
 import os
 import re
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from pathlib import Path
 from typing import TYPE_CHECKING, Annotated, cast
 
@@ -15,6 +16,7 @@ from unturn.errors import UnturnError, UsageError
 
 if TYPE_CHECKING:
     from unturn.envelope import Envelope, EnvelopeOptions, State
+    from unturn.fields import CellFields
     from unturn.io import ResultFile
     from unturn.pipeline import StrainOptions
     from unturn.result import Result
@@ -65,6 +67,13 @@ def envelope(
             "--as-series", help="The files are the steps of one series, by the last number in their names."
         ),
     ] = False,
+    steps_output: Annotated[
+        Path | None,
+        typer.Option(
+            metavar="FILE",
+            help="Also write a series with the increments, rates and accumulated strain of every step.",
+        ),
+    ] = None,
     tensor_range: Annotated[
         bool,
         typer.Option(
@@ -146,7 +155,7 @@ def envelope(
         tuple(region or ()),
         out.absolute().parent,
     )
-    found = _run(states, options, zero)
+    found = _run(states, options, zero, steps_output, prefix, overwrite)
     base_result = _read_first(files) if combinations is not None else found.model.result
     _write(found, base_result, out, [str(f) for f in files], prefix, overwrite, json)
     if found.failures:
@@ -259,12 +268,39 @@ class _fails:
         raise self._error
 
 
-def _run(states: Sequence[State], options: EnvelopeOptions, zero: Result | None) -> Envelope:
+def _run(
+    states: Sequence[State],
+    options: EnvelopeOptions,
+    zero: Result | None,
+    steps_output: Path | None,
+    prefix: str,
+    overwrite: bool,
+) -> Envelope:
+    from unturn._api import add_fields
     from unturn.cli._progress import progress_bar
     from unturn.envelope import envelope as find_envelope
+    from unturn.io import series_writer
+    from unturn.pipeline import Computed
+    from unturn.series import SERIES_MEASURES
 
-    with progress_bar(f"{options.kind}s", len(states)) as progress:
-        return find_envelope(states, options, zero=zero, progress=progress)
+    with contextlib.ExitStack() as stack:
+        progress = stack.enter_context(progress_bar(f"{options.kind}s", len(states)))
+        each: Callable[[CellFields, float], None] | None = None
+        if steps_output is not None:
+            if not any(m in SERIES_MEASURES for m in options.strain.measures or ()):
+                raise UsageError(
+                    f"--steps-output {steps_output}: no measure of a series is asked for; name some in --measures: "
+                    f"{', '.join(SERIES_MEASURES)}."
+                )
+            writer = stack.enter_context(series_writer(steps_output))
+
+            def each(fields: CellFields, time: float) -> None:
+                computed = Computed(fields)
+                writer.add(
+                    add_fields(fields.model.result, computed, prefix=prefix, overwrite=overwrite), time
+                )
+
+        return find_envelope(states, options, zero=zero, progress=progress, each=each)
 
 
 def _read_first(files: Sequence[Path]) -> Result:

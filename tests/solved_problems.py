@@ -1,0 +1,87 @@
+"""Solved problems whose peak is known: a hole in a plate, a thick cylinder, an L-shaped plate, a loaded block."""
+
+from __future__ import annotations
+
+import numpy as np
+
+import meshes
+from small_solver import elasticity, solve
+from test_fields_convergence import quarter, radial, unit_grid
+
+Floats = np.ndarray
+YOUNG, NU, PULL = 1000.0, 0.3, 1.0
+# Source: Kirsch 1898; Timoshenko and Goodier, Theory of Elasticity, article 35: hoop strain 3 S/E at the hole.
+PEAK = 3 * PULL / YOUNG
+# Source: Lame; Timoshenko and Goodier, article 28: hoop strain at the bore of the cylinder of test_fields_convergence.
+BORE = float(radial(np.array(1.0)))
+
+
+def kirsch(x: Floats) -> Floats:
+    """Displacement of a plate with a hole of radius 1 pulled along x, plane stress."""
+    r, t = np.hypot(x[:, 0], x[:, 1]), np.arctan2(x[:, 1], x[:, 0])
+    k, shear = (3 - NU) / (1 + NU), YOUNG / 2 / (1 + NU)
+    u = r * (k + 1) * np.cos(t) + 2 / r * ((1 + k) * np.cos(t) + np.cos(3 * t)) - 2 / r**3 * np.cos(3 * t)
+    v = r * (k - 3) * np.sin(t) + 2 / r * ((1 - k) * np.sin(t) + np.sin(3 * t)) - 2 / r**3 * np.sin(3 * t)
+    return PULL / 8 / shear * np.stack([u, v, 0 * u], 1)
+
+
+def plate(name: str, n: int) -> tuple[meshes.Mesh, Floats]:
+    """A quarter of the plate, `n` cells a direction from the hole to radius 3; Kirsch's displacement on the outside."""
+    mesh = unit_grid(name, n)
+    r, angle = 1 + 2 * mesh.points[:, 0], np.pi / 2 * mesh.points[:, 1]
+    mesh = mesh._replace(points=np.stack([r * np.cos(angle), r * np.sin(angle), 0 * r], 1))
+    exact = kirsch(mesh.points)
+    held = {d: np.flatnonzero((r > 3 - 1e-9) | (np.abs(mesh.points[:, d]) < 1e-9)) for d in (0, 1)}
+    C = elasticity(YOUNG, NU, 2, "stress")
+    return mesh, solve(mesh, C, {d: (k, exact[k, d]) for d, k in held.items()})
+
+
+def cylinder(name: str, n: int) -> tuple[meshes.Mesh, Floats]:
+    """A quarter of the thick cylinder under internal pressure, held by its exact displacement on both circles."""
+    mesh = quarter(name, n)
+    x = mesh.points
+    r = np.hypot(x[:, 0], x[:, 1])
+    exact = np.zeros(x.shape)
+    exact[:, :2] = x[:, :2] * (radial(r) / r)[:, None]
+    round_ = (np.abs(r - 1) < 1e-6) | (np.abs(r - 2) < 1e-6)
+    held = [round_ | (np.abs(x[:, 0]) < 1e-9), round_ | (np.abs(x[:, 1]) < 1e-9)]
+    held += [np.abs(x[:, 2] - 0.25) > 0.25 - 1e-9]
+    fixed = {d: (np.flatnonzero(k), exact[k, d]) for d, k in enumerate(held)}
+    return mesh, solve(mesh, elasticity(YOUNG, NU, 3), fixed)
+
+
+def corner_plate(name: str, n: int) -> tuple[meshes.Mesh, Floats]:
+    """An L-shaped plate clamped on top and pulled down over its whole right end: re-entrant corner at (0.5, 0.5)."""
+    grid = unit_grid(name, 2 * n)
+    x = grid.points[grid.cells].mean(axis=1)
+    cells = grid.cells[(x[:, 0] < 0.5) | (x[:, 1] < 0.5)]
+    used, cells = np.unique(cells, return_inverse=True)
+    mesh = grid._replace(points=grid.points[used], cells=cells.reshape(-1, grid.cells.shape[1]))
+    x = mesh.points
+    top, end = np.flatnonzero(x[:, 1] > 1 - 1e-9), np.flatnonzero(x[:, 0] > 1 - 1e-9)
+    force = np.zeros(x.shape)
+    order = end[np.argsort(x[end, 1])]
+    height = x[order, 1]
+    force[order, 1] = -np.gradient(height) if mesh.element.order == 1 else -_thirds(len(order)) / (2 * n)
+    C = elasticity(YOUNG, NU, 2, "stress")
+    return mesh, solve(mesh, C, {d: (top, 0.0 * top) for d in (0, 1)}, force)
+
+
+def _thirds(count: int) -> Floats:
+    """Simpson's weights along an edge of quadratic cells, as shares of a cell."""
+    weights = np.full(count, 1 / 3)
+    weights[1::2] = 2 / 3
+    weights[[0, -1]] = 1 / 6
+    return weights
+
+
+def pressed(name: str, n: int) -> tuple[meshes.Mesh, Floats]:
+    """A square (cube) on a fixed base, pulled by one force in the middle of its top."""
+    mesh = unit_grid(name, n)
+    dim, x = mesh.element.dim, mesh.points
+    base = np.flatnonzero(np.abs(x[:, dim - 1]) < 1e-9)
+    place = np.array([0.5, 1, 0]) if dim == 2 else np.array([0.5, 0.5, 1])
+    force = np.zeros(x.shape)
+    force[np.abs(x - place).sum(axis=1).argmin(), dim - 1] = 1.0
+    C = elasticity(YOUNG, NU, dim, "stress")
+    return mesh, solve(mesh, C, {d: (base, 0.0 * base) for d in range(dim)}, force)
