@@ -8,9 +8,9 @@ from typing import Literal
 
 from unturn import io
 from unturn.errors import UsageError
-from unturn.fields import Location
 from unturn.gradient import PlaneModel
-from unturn.pipeline import Computed, StrainOptions, compute, rigid_arrays
+from unturn.pipeline import Computed, Place, StrainOptions, compute, rigid_arrays
+from unturn.recovery import Method
 from unturn.result import Association, Result
 from unturn.verdict import Solve
 
@@ -59,7 +59,8 @@ def strain(
     displacement: str | None = None,
     measures: Sequence[str] | None = None,
     base: str = "small",
-    at: Location = "centroid",
+    at: Place = "centroid",
+    recovery: Method = "patch",
     solve: Solve = "unknown",
     plane: PlaneModel | None = None,
     poisson: float | None = None,
@@ -95,7 +96,12 @@ def strain(
         ``small``, or ``green-lagrange``, ``hencky``, ``biot``, ``almansi``: each small measure is then replaced by its
         counterpart of that base, whose name carries it.
     at
-        ``centroid``, or ``mean``: the volume mean of the gradient, from which the rest is derived.
+        ``centroid``; ``mean``: the volume mean of the gradient, from which the rest is derived; ``nodes``: the gradient is
+        recovered at nodes, the arrays are point arrays; ``surface``: the free faces of solids, returned as a surface mesh of
+        their own; ``quadrature``: every quadrature point, returned as a cloud of points.
+    recovery
+        How the gradient gets to nodes: ``patch`` (least squares over the cells around, Zienkiewicz and Zhu 1992),
+        ``extrapolate`` or ``average``. Never across regions.
     solve
         ``linear``, ``nonlinear`` or ``unknown``: decides how rigid motion is fitted; finite measures of a linear solve
         are refused.
@@ -169,7 +175,7 @@ def strain(
     867
     """
     options = StrainOptions(
-        displacement, measures, base, at, solve, plane, poisson, axis, coordinates, displacement_scale,
+        displacement, measures, base, at, recovery, solve, plane, poisson, axis, coordinates, displacement_scale,
         equivalent_poisson, remove_rigid, rigid_to, rigid_axis, frame, thermal_expansion, temperature,
         reference_temperature, skin, alive, threads,
     )  # fmt: skip
@@ -179,20 +185,25 @@ def strain(
 
 
 def add_fields(result: Result, computed: Computed, *, prefix: str = "", overwrite: bool = False) -> Result:
-    """Return the result with computed fields as cell arrays, and rigid motions that were taken out as field arrays.
+    """Return the result with computed fields as cell or point arrays, or the mesh of their own, and rigid motions that were taken out as field arrays.
 
     Raises
     ------
     UsageError
         An array of that name is already there and `overwrite` is not set.
     """
-    fields = computed.fields
-    arrays = {prefix + name: values for name, values in fields.arrays.items()}
-    taken = [name for name in arrays if name in result.cell_data]
+    if computed.surface is not None:
+        return computed.surface.result
+    if computed.cloud is not None:
+        return computed.cloud
+    where: Association = "cell" if computed.nodes is None else "point"
+    found = computed.fields if computed.nodes is None else computed.nodes
+    present = result.cell_data if computed.nodes is None else result.point_data
+    arrays = {prefix + name: values for name, values in found.arrays.items()}
+    taken = [name for name in arrays if name in present]
     if taken and not overwrite:
-        where = f"{result.path}: " if result.path else ""
         raise UsageError(
-            f"{where}the file already has a cell array called {taken[0]!r}; it is not overwritten unasked. Give the new "
+            f"{result.path + ': ' if result.path else ''}the file already has a {where} array called {taken[0]!r}; it is not overwritten unasked. Give the new "
             "arrays other names with --prefix TEXT, or replace the old ones with --overwrite."
         )
     motions = rigid_arrays(computed.removals, prefix)
@@ -203,6 +214,8 @@ def add_fields(result: Result, computed: Computed, *, prefix: str = "", overwrit
             "overwritten unasked. Use --prefix TEXT or --overwrite."
         )
     names: dict[tuple[Association, str], tuple[str, ...]] = {
-        ("cell", prefix + name): components for name, components in fields.components.items()
+        (where, prefix + name): components for name, components in found.components.items()
     }
+    if computed.nodes is not None:
+        return result.with_arrays(point_data=arrays, field_data=motions, component_names=names)
     return result.with_arrays(cell_data=arrays, field_data=motions, component_names=names)

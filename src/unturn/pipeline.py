@@ -11,17 +11,25 @@ from numpy.typing import NDArray
 
 from unturn.displacement import find_displacement
 from unturn.errors import InputError, UsageError
-from unturn.fields import CellFields, Location, compute_fields
+from unturn.fields import CellFields, compute_fields
 from unturn.frames import Frame, parse_frame
 from unturn.gradient import NodalFields, PlaneModel
 from unturn.kinematics._symmetric import Floats
 from unturn.measures import MEASURES, SMALL, choose_measures
 from unturn.model import Model, PlaneOptions, build_model
+from unturn.nodal import NodeFields, nodal_fields
+from unturn.quadrature_points import quadrature_result
+from unturn.recovery import Method
 from unturn.regions import bodies, find_regions, named_regions
 from unturn.result import Result
 from unturn.rigid import Axis, Removal, RigidMotion, take_out, unwrapped
+from unturn.surface import SurfaceFields, free_faces, surface_result
 from unturn.thermal import Thermal, parse_thermal
 from unturn.verdict import Solve
+
+
+Place = Literal["centroid", "mean", "nodes", "surface", "quadrature"]
+PLACES: tuple[Place, ...] = ("centroid", "mean", "nodes", "surface", "quadrature")
 
 
 @dataclass(frozen=True)
@@ -31,7 +39,8 @@ class StrainOptions:
     displacement: str | None = None
     measures: Sequence[str] | None = None
     base: str = "small"
-    at: Location = "centroid"
+    at: Place = "centroid"
+    recovery: Method = "patch"
     solve: Solve = "unknown"
     plane: PlaneModel | None = None
     poisson: float | None = None
@@ -53,11 +62,19 @@ class StrainOptions:
 
 @dataclass(frozen=True, eq=False)
 class Computed:
-    """Computed fields, and the rigid motions that were taken out first."""
+    """Computed fields, and the rigid motions that were taken out first.
+
+    `fields` are those of cells: at centroids where the values asked for live elsewhere. `nodes`, `surface` and `cloud` hold
+    those.
+    """
 
     fields: CellFields
     removals: tuple[Removal, ...] = ()
     request: dict[str, Any] = field(default_factory=dict)
+    nodes: NodeFields | None = None
+    surface: SurfaceFields | None = None
+    cloud: Result | None = None
+    equivalent_poisson: float | None = None
 
     def require_some(self) -> None:
         """Refuse a result of which no cell could be computed.
@@ -108,11 +125,13 @@ def compute(
     InputError
         A result that cannot be used.
     """
+    if options.at not in PLACES:
+        raise UsageError(f"at={options.at!r} is not known; use one of {', '.join(PLACES)}.")
     names = _checked_measures(options)
     model = model_of(result, options)
     frame = None if options.frame is None else parse_frame(options.frame, result)
     settings: dict[str, Any] = {
-        "at": options.at,
+        "at": options.at if options.at == "mean" else "centroid",
         "equivalent_poisson": options.equivalent_poisson,
         "frame": frame,
         "thermal": _thermal(result, zero, options, frame),
@@ -130,8 +149,69 @@ def compute(
             removals = of_finite
     if previous and len(previous) == len(removals):
         removals = tuple(_unwrap(r, p) for r, p in zip(removals, previous))
-    return Computed(
-        _fields(small, finite, names, settings, options, diagnose), removals, _request(options, zero)
+    computed = Computed(
+        _fields(small, finite, names, settings, options, diagnose),
+        removals,
+        _request(options, zero),
+        equivalent_poisson=options.equivalent_poisson,
+    )
+    del settings["at"]
+    if options.at == "nodes":
+        return replace(computed, nodes=_at_nodes(small, finite, names, settings, options.recovery))
+    if options.at in ("surface", "quadrature"):
+        model = small if finite is None else _one_model(small, finite, names)
+        if options.at == "quadrature":
+            return replace(computed, cloud=quadrature_result(model, names, **settings))
+        return replace(computed, surface=_on_surface(model, options))
+    return computed
+
+
+def _at_nodes(
+    small: Model, finite: Model | None, names: Sequence[str], settings: dict[str, Any], method: Method
+) -> NodeFields:
+    regions = find_regions(small, _computed(small))
+    if finite is None:
+        return nodal_fields(small, names, regions, method=method, **settings)
+    real = [n for n in names if n in MEASURES and MEASURES[n].finite]
+    first = nodal_fields(small, [n for n in names if n not in real], regions, method=method, **settings)
+    second = nodal_fields(finite, real, regions, method=method, **settings)
+    return NodeFields(
+        {n: (second if n in real else first).arrays[n] for n in names},
+        {**first.components, **second.components},
+        first.recovered,
+        first.groups,
+    )
+
+
+def _one_model(small: Model, finite: Model, names: Sequence[str]) -> Model:
+    """Return the model for measures of one kind; with a zero step small and finite ones have different ones."""
+    real = [n for n in names if n in MEASURES and MEASURES[n].finite]
+    if real and len(real) < len(names):
+        raise UsageError(
+            f"with --zero-step, small and finite measures ({real[0]} ...) are not given together here: ask for them in two "
+            "runs."
+        )
+    return finite if real else small
+
+
+def _on_surface(model: Model, options: StrainOptions) -> SurfaceFields:
+    if options.frame is not None or options.thermal_expansion is not None:
+        raise UsageError(
+            "--at surface has its own frame and no free thermal strain: leave --frame and --thermal-* out."
+        )
+    if not any(b.kind == "solid" and len(b.active) for b in model.blocks):
+        raise UsageError(
+            "--at surface needs solids: it is the strain on their free faces. This mesh has none."
+        )
+    return surface_result(
+        model,
+        free_faces(model, threads=options.threads),
+        options.measures,
+        base=options.base,
+        poisson=options.poisson,
+        solve=options.solve,
+        equivalent_poisson=options.equivalent_poisson,
+        threads=options.threads,
     )
 
 
@@ -257,9 +337,7 @@ def _parts(
                 "--rigid-to and --rigid-axis belong to --remove-rigid: name what is to be taken out."
             )
         return []
-    computed = np.zeros(model.result.n_cells, dtype=bool)
-    for block in model.blocks:
-        computed[block.index] = True
+    computed = _computed(model)
     everything = np.flatnonzero(computed)
     if how == "whole":
         regions = [("whole", everything)]
@@ -280,6 +358,13 @@ def _parts(
     else:
         target = (options.rigid_to, named_regions(model, [options.rigid_to], computed)[0].cells)
     return [(*regions[0], *target)]
+
+
+def _computed(model: Model) -> NDArray[np.bool_]:
+    computed = np.zeros(model.result.n_cells, dtype=bool)
+    for block in model.blocks:
+        computed[block.index] = True
+    return computed
 
 
 def _axis(text: str | None) -> Axis | None:

@@ -11,6 +11,7 @@ import numpy as np
 
 from unturn._version import __version__
 from unturn.agreement import Agreement, compare_with_solver
+from unturn.elsewhere import Elsewhere, find_elsewhere
 from unturn.fields import CellDiagnostics, CellFields
 from unturn.kinematics._symmetric import Floats
 from unturn.measures import MEASURES
@@ -62,6 +63,7 @@ class Summary:
     other_dimensions: dict[int, int]
     removals: tuple[Removal, ...] = ()
     request: dict[str, Any] = field(default_factory=dict)
+    elsewhere: Elsewhere | None = None
 
     @property
     def finite_only(self) -> bool:
@@ -99,7 +101,8 @@ def summarise(
     else:
         regions = find_regions(fields.model, judged)
     columns = _columns(fields, d, options.full)
-    made = []
+    made: list[RegionSummary] = []
+    counted_regions: list[Region] = []
     for region in regions:
         cells = region.cells[d.dimension[region.cells] == d.dimension[region.cells].max()]
         found = {
@@ -111,7 +114,9 @@ def summarise(
         trials: list[Trial] = []
         if verdict.level == "does not hold" and options.solve != "linear" and not computed.removals:
             trials = try_remedies(fields, counted, options.solve, {"at": options.at, "threads": threads})
+        counted_regions.append(counted)
         made.append(RegionSummary(region, verdict, tuple(trials), float(np.nansum(d.volume[cells])), found))
+    numbers = element_numbers(fields.model.result)
     others = {
         int(k): int((d.dimension == k).sum())
         for k in np.unique(d.dimension)
@@ -121,13 +126,14 @@ def summarise(
         fields,
         options,
         tuple(made),
-        element_numbers(fields.model.result),
+        numbers,
         # the solver's strain is measured from the undeformed state, not from a zero step
         () if "zero_step" in computed.request else tuple(compare_with_solver(fields, threads)),
         (*_warnings(fields, d, made), *_beyond_linear(computed.removals, made)),
         others,
         computed.removals,
         computed.request,
+        find_elsewhere(computed, counted_regions, None if numbers is None else numbers.numbers, threads),
     )
 
 
@@ -255,6 +261,7 @@ def summary_data(summary: Summary) -> dict[str, Any]:
              "agrees": a.agrees}
             for a in summary.agreements
         ],
+        "elsewhere": _elsewhere_data(summary.elsewhere),
         "rigid_motion_taken_out": [_removal_data(r) for r in summary.removals],
         "left_out": {reason: len(cells) for reason, cells in fields.left_out.items()},
         "other_dimensions": {f"{k}D": n for k, n in summary.other_dimensions.items()},
@@ -294,6 +301,30 @@ def _region_data(r: RegionSummary, summary: Summary) -> dict[str, Any]:
         },
         "statistics": {name: _statistics_data(s, summary, v.size) for name, s in r.statistics.items()},
     }
+
+
+def _elsewhere_data(found: Elsewhere | None) -> dict[str, Any] | None:
+    if found is None:
+        return None
+    return {
+        "location": found.title,
+        "extremes": [
+            {
+                "region": e.region, "statistic": e.label, "array": e.array, "value": e.value, "plus_minus": e.plus_minus,
+                "place": e.place, "at": list(e.at),
+            }
+            for e in found.extremes
+        ],
+        "suspected_singular": [
+            {
+                "region": g.region, "statistic": g.label, "cell": g.peak.cell, "value": g.peak.value, "point": g.peak.point,
+                "growth": g.peak.growth, "next_cell": g.next_cell, "next_value": g.next_value,
+            }
+            for g in found.growths
+        ],
+        "estimated_error_percent": found.error_percent or {},
+        "notes": list(found.notes),
+    }  # fmt: skip
 
 
 def _removal_data(r: Removal) -> dict[str, Any]:

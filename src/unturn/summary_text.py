@@ -11,6 +11,7 @@ import numpy as np
 
 from unturn.fields import CellFields
 from unturn.measures import MEASURES
+from unturn.elsewhere import ElsewhereExtreme
 from unturn.rigid import Removal
 from unturn.summary import CAUTION, RegionSummary, Summary, cell_counts, equivalent_form, mesh_kind
 from unturn.trial import Trial
@@ -23,7 +24,14 @@ _LINE = 120  # where sentences are broken
 
 def summary_text(summary: Summary) -> str:
     """Return the summary as text, without a line end."""
-    lines = [*_head(summary), *_verdicts(summary), "", *_table(summary), *_tail(summary)]
+    lines = [
+        *_head(summary),
+        *_verdicts(summary),
+        "",
+        *_table(summary),
+        *_elsewhere(summary),
+        *_tail(summary),
+    ]
     return "\n".join(lines)
 
 
@@ -254,6 +262,56 @@ def _table(summary: Summary) -> list[str]:
     return lines
 
 
+def _elsewhere(summary: Summary) -> list[str]:
+    """Return the extremes at nodes or on free surfaces, region by region, and what is suspected of them."""
+    found = summary.elsewhere
+    if found is None:
+        return []
+    shown = list(dict.fromkeys(e.region for e in found.extremes))[:_MOST_COLUMNS]
+    of_region = {name: [e for e in found.extremes if e.region == name] for name in shown}
+    labels = list(dict.fromkeys(e.label for e in found.extremes))
+    digits = _digits(summary)
+    rows = [[f"microstrain at {found.title}", *shown]]
+    for label in labels:
+        each = [next((e for e in of_region[name] if e.label == label), None) for name in shown]
+        rows.append([label, *(_bounded(e) for e in each)])
+        rows.append(["  where", *(_spot(e) for e in each)])
+        rows.append(["  at x, y, z", *("-" if e is None else _coordinates(e.at, digits) for e in each)])
+    if found.error_percent is not None:
+        rows.append(
+            ["estimated error of the strain", *(f"{found.error_percent[name]:.2g} %" for name in shown)]
+        )
+    lines = ["", *_aligned(rows), *found.notes]
+    for g in found.growths:
+        after = "nothing else is left" if g.next_cell < 0 else f"next away from it {_micro(g.next_value)} in " + _where(
+            g.next_cell, summary
+        )  # fmt: skip
+        lines.append(
+            f"suspected singular, {g.region}: {g.label} keeps growing towards point {g.peak.point}; {after}"
+        )
+    return lines
+
+
+def _bounded(e: ElsewhereExtreme | None) -> str:
+    if e is None:
+        return "-"
+    return _micro(e.value) + ("" if math.isnan(e.plus_minus) else f" +-{_micro(e.plus_minus)}")
+
+
+def _spot(e: ElsewhereExtreme | None) -> str:
+    if e is None:
+        return "-"
+    if "point" in e.place:
+        number = e.place["node"]
+        return f"point {e.place['point']}" if number is None else f"node {number} (point {e.place['point']})"
+    number = e.place["element"]
+    return f"cell {e.place['cell']}" if number is None else f"element {number} (cell {e.place['cell']})"
+
+
+def _coordinates(at: Sequence[float], digits: int) -> str:
+    return ", ".join(f"{x + 0.0:.{digits}f}" if digits < 9 else f"{x:.4g}" for x in at)
+
+
 def _scatter(r: RegionSummary, name: str) -> str:
     low, high = ("det_f", "det_f") if name == "det_f" else ("stretch_3", "stretch_1")
     return f"{r.statistics[low].minimum:.5g} to {r.statistics[high].maximum:.5g}"
@@ -317,7 +375,7 @@ def _position(cell: int, summary: Summary, digits: int) -> str:
     d = summary.fields.diagnostics
     if cell < 0 or d is None:
         return "-"
-    return ", ".join(f"{x + 0.0:.{digits}f}" if digits < 9 else f"{x:.4g}" for x in d.centroid[cell])
+    return _coordinates(d.centroid[cell], digits)
 
 
 def _error(cell: int, r: RegionSummary, summary: Summary) -> str:

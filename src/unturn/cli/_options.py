@@ -47,6 +47,17 @@ class LocationChoice(StrEnum):
 
     centroid = "centroid"
     mean = "mean"
+    nodes = "nodes"
+    surface = "surface"
+    quadrature = "quadrature"
+
+
+class RecoveryChoice(StrEnum):
+    """How the gradient gets to nodes."""
+
+    patch = "patch"
+    extrapolate = "extrapolate"
+    average = "average"
 
 
 class CoordinatesChoice(StrEnum):

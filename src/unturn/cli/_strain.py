@@ -43,6 +43,9 @@ def strain(
         o.BaseChoice, typer.Option(help="Replace each small measure by its counterpart of this finite base.")
     ] = o.BaseChoice.small,
     at: Annotated[o.LocationChoice, typer.Option(help="Where values are taken.")] = o.LocationChoice.centroid,
+    recovery: Annotated[
+        o.RecoveryChoice, typer.Option(help="How the gradient gets to the nodes with --at nodes.")
+    ] = o.RecoveryChoice.patch,
     step: o.Step = "last",
     solve: Annotated[
         o.SolveChoice, typer.Option(help="What the solve was; it decides what the verdict says.")
@@ -130,14 +133,14 @@ def strain(
         options=StrainOptions(
             displacement=displacement,
             measures=[m.strip() for m in measures.split(",") if m.strip()] if measures else None,
-            base=base.value, at=at.value, solve=solve.value, plane=plane.value if plane else None, poisson=poisson,
+            base=base.value, at=at.value, recovery=recovery.value, solve=solve.value, plane=plane.value if plane else None, poisson=poisson,
             axis=axis.value, coordinates=coordinates.value, displacement_scale=displacement_scale,
             equivalent_poisson=equivalent_poisson, remove_rigid=remove_rigid, rigid_to=rigid_to, rigid_axis=rigid_axis,
             frame=frame, thermal_expansion=thermal_expansion, temperature=temperature,
             reference_temperature=reference_temperature, skin=skin, alive=alive, threads=threads,
         ),
         zero_step=zero_step,
-        summary={"regions": tuple(region or ()), "solve": solve.value, "mode": mode, "at": at.value,
+        summary={"regions": tuple(region or ()), "solve": solve.value, "mode": mode, "at": "mean" if at.value == "mean" else "centroid",
                  "equivalent_poisson": equivalent_poisson, "full": json is not None},
         table=displacement_table, step=step, prefix=prefix, overwrite=overwrite, picture=picture,
         text_to_stderr=str(json) == "-",
@@ -167,6 +170,10 @@ def strain(
         raise typer.Exit(max(e.exit_status for e in failed))
 
 
+_OWN_MESH = ("surface", "quadrature")
+"""Places whose values do not fit on the mesh of the file."""
+
+
 @dataclass(frozen=True)
 class _Job:
     output: Path | None
@@ -186,12 +193,16 @@ class _Job:
 
         opened = io.open_result(path)
         if self.step == "all" and opened.steps is not None:
+            if self.options.at in _OWN_MESH:
+                raise UsageError(
+                    f"--at {self.options.at} makes a mesh of its own; give one --step of the series."
+                )
             return self._series(opened, path)
         result = opened.read(chosen_step(opened, "last" if self.step == "all" else self.step))
         result, summary = self._compute(result, self._zero(opened), alone=True)
         out = self._target(path, result, series=False)
         lost = io.write(result, out)
-        self._print(summary, out, lost)
+        self._print(summary, out, lost, result if self.options.at in _OWN_MESH else None)
         return [self._data(summary, out)]
 
     def _series(self, opened: ResultFile, path: Path) -> list[dict[str, Any]]:
@@ -248,16 +259,24 @@ class _Job:
         from unturn.cli._output import output_path
         from unturn.io import writable_suffix
 
+        if self.options.at in _OWN_MESH:
+            return output_path(path, self.output, ".vtu", self.options.at)
         return output_path(path, self.output, writable_suffix(path, result, series=series))
 
-    def _print(self, summary: Summary, out: Path, lost: tuple[str, ...]) -> None:
+    def _print(self, summary: Summary, out: Path, lost: tuple[str, ...], own: Result | None = None) -> None:
         from unturn.summary_text import summary_text
 
         self._say(summary_text(summary))
         result = summary.fields.model.result
         before = len(result.point_data) + len(result.cell_data) + len(result.field_data)
         n = len(summary.fields.arrays) + (3 if summary.removals else 0)
-        self._say(f"wrote {out}: {n} array{'s' * (n != 1)} added, {before} unchanged")
+        if own is None:
+            self._say(f"wrote {out}: {n} array{'s' * (n != 1)} added, {before} unchanged")
+        else:
+            what = "faces" if self.options.at == "surface" else "quadrature points"
+            self._say(
+                f"wrote {out}: {own.n_cells} {what} with {len(own.cell_data) + len(own.point_data)} arrays"
+            )
         for sentence in lost:
             self._say(f"note: {sentence}")
         if self.picture is not None:

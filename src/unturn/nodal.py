@@ -1,0 +1,152 @@
+"""Measures at nodes: the gradient is recovered there, everything else is derived from it."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from unturn.errors import UsageError
+from unturn.fields import check_request
+from unturn.frames import Frame, turned_components
+from unturn.gradient import over_chunks
+from unturn.kinematics._symmetric import PAIRS, Floats
+from unturn.measures import MEASURES, Split
+from unturn.model import Model
+from unturn.recovery import Method, Recovered, recover_gradient, sheets
+from unturn.regions import Region
+from unturn.thermal import Thermal
+
+_CHUNK = 8192
+FOLD = 40.0
+"""Degrees between neighbouring surface cells above which nothing is averaged across their edge."""
+
+
+@dataclass(frozen=True, eq=False)
+class NodeFields:
+    """Measures at the nodes of a model.
+
+    Attributes
+    ----------
+    arrays
+        Measure name -> `(n_points,)` or `(n_points, components)`; NaN at nodes of no computed cell.
+    components
+        Names of the components.
+    recovered
+        The recovered gradient.
+    groups
+        `(n_cells,)` within which it was recovered.
+    """
+
+    arrays: dict[str, Floats]
+    components: dict[str, tuple[str, ...]]
+    recovered: Recovered
+    groups: NDArray[np.int64]
+
+
+def nodal_fields(
+    model: Model,
+    names: Sequence[str],
+    regions: Sequence[Region],
+    *,
+    method: Method = "patch",
+    equivalent_poisson: float | None = None,
+    frame: Frame | None = None,
+    thermal: Thermal | None = None,
+    threads: int | None = None,
+) -> NodeFields:
+    """Return measures at nodes.
+
+    Parameters
+    ----------
+    model
+        See `build_model`.
+    names
+        Array names, as `choose_measures` returns them.
+    regions
+        Nothing is averaged across their borders, nor across dimensions, nor across folds of surfaces above 40 degrees. On a
+        border the value of the region with most volume at the node is given.
+    method
+        ``patch``, ``extrapolate`` or ``average``, see `recover_gradient`.
+    equivalent_poisson, frame, thermal, threads
+        As in `compute_fields`.
+
+    Raises
+    ------
+    UsageError
+        A measure of the cells alone, a finite measure of surfaces or lines in space, a frame that is given on cells.
+    """
+    check_request(model, names, frame, thermal)
+    _check(model, names, frame)
+    groups = np.zeros(model.result.n_cells, dtype=np.int64)
+    for number, region in enumerate(regions, 1):
+        groups[region.cells] = number
+    groups = sheets(model, groups, FOLD)
+    recovered = recover_gradient(model, groups, method, threads)
+    measures = [MEASURES[name] for name in names]
+    n = model.result.n_points
+    arrays = {m.name: np.empty((n, len(m.components)) if m.components else n) for m in measures}
+    free = None if thermal is None else _free_strain(model, thermal)
+
+    def work(start: int, stop: int) -> None:
+        rows = slice(start, stop)
+        part = None if free is None else free[:, rows]
+        directions = any(m.directions for m in measures)
+        with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
+            split = Split(recovered.H[:, :, rows], equivalent_poisson, directions, None, part)
+            axes = None if frame is None else frame.axes(model.points[rows].T, rows, None)
+            for measure in measures:
+                values = measure.compute(split)
+                if axes is not None and measure.turns:
+                    values = turned_components(values, axes)
+                arrays[measure.name][rows] = values.T if values.ndim == 2 else values
+
+    over_chunks(work, [(s, min(s + _CHUNK, n)) for s in range(0, n, _CHUNK)], threads)
+    components = {
+        m.name: frame.component_names(len(m.components)) if frame and m.turns else m.components
+        for m in measures
+        if m.components
+    }
+    return NodeFields(arrays, components, recovered, groups)
+
+
+def _check(model: Model, names: Sequence[str], frame: Frame | None) -> None:
+    alone = [n for n in names if n not in MEASURES]
+    if alone:
+        raise UsageError(
+            f"{alone[0]} belongs to cells; it has no value at nodes. Leave it out of --measures."
+        )
+    if frame is not None and (frame.cells is not None or frame.surface):
+        raise UsageError(
+            f"--frame {frame.text!r} is given on cells; at nodes use a cartesian or cylindrical frame."
+        )
+    finite = [n for n in names if MEASURES[n].finite]
+    spatial = [
+        b for b in model.blocks if b.row is not None and len(b.active) and b.kind in ("surface", "line")
+    ]
+    if finite and spatial:
+        raise UsageError(
+            f"{finite[0]} of surfaces and lines in space is not recovered at nodes; ask for it at centroids (--at centroid)."
+        )
+
+
+def _free_strain(model: Model, thermal: Thermal) -> Floats:
+    """Return the free strain at nodes `(6, n_points)`; coefficients are those of the cells around, averaged."""
+    if thermal.nodal is None:
+        raise UsageError("--at nodes needs the temperature at nodes: give a point array with --temperature.")
+    if not thermal.isotropic:
+        raise UsageError("--at nodes takes one expansion coefficient a region, not three.")
+    n = model.result.n_points
+    total, count = np.zeros(n), np.zeros(n)
+    for block in model.blocks:
+        conn: NDArray[np.int64] = block.connectivity
+        alpha = np.repeat(thermal.expansion[block.index, 0], conn.shape[1])
+        total += np.bincount(conn.reshape(-1), alpha, n)
+        count += np.bincount(conn.reshape(-1), minlength=n)
+    with np.errstate(invalid="ignore"):
+        growth = total / count * (thermal.nodal - thermal.reference)
+    free = np.zeros((len(PAIRS), n))
+    free[:3] = growth
+    return free
