@@ -185,7 +185,7 @@ def strain(
 
 
 def add_fields(result: Result, computed: Computed, *, prefix: str = "", overwrite: bool = False) -> Result:
-    """Return the result with computed fields as cell or point arrays, or the mesh of their own, and rigid motions that were taken out as field arrays.
+    """Return the result with computed fields as cell or point arrays, or their own mesh; rigid motions as field arrays.
 
     Raises
     ------
@@ -203,7 +203,8 @@ def add_fields(result: Result, computed: Computed, *, prefix: str = "", overwrit
     taken = [name for name in arrays if name in present]
     if taken and not overwrite:
         raise UsageError(
-            f"{result.path + ': ' if result.path else ''}the file already has a {where} array called {taken[0]!r}; it is not overwritten unasked. Give the new "
+            f"{result.path + ': ' if result.path else ''}the file already has a {where} array called {taken[0]!r}; it is "
+            "not overwritten unasked. Give the new "
             "arrays other names with --prefix TEXT, or replace the old ones with --overwrite."
         )
     motions = rigid_arrays(computed.removals, prefix)

@@ -135,6 +135,7 @@ def _columns(arrays: dict[str, Floats], prefix: str = "") -> list[tuple[str, str
     return sorted(found, key=lambda f: _ORDER.index(f[0]))
 
 
+_NEGLIGIBLE = 1e-3  # of the largest principal strain of the region: a smaller extreme is no peak
 _ORDER = ["largest principal", "smallest principal", "equivalent, largest"]
 
 
@@ -178,7 +179,10 @@ def _growths(recovered: Recovered, d: CellDiagnostics, region: Region) -> list[G
         ("smallest principal", d.principal[:, 1], True),
     ):
         peak = peaks.find(values, region.cells, smallest)
-        if peak.cell >= 0 and peak.singular:
+        negligible = abs(peak.value) < _NEGLIGIBLE * float(
+            np.nanmax(np.abs(d.principal[region.cells]), initial=0.0)
+        )
+        if peak.cell >= 0 and peak.singular and not negligible:
             after = peaks.next_peak(values, region.cells, peak, smallest)
             found.append(Growth(region.name, label, peak, after.cell, after.value))
     return found

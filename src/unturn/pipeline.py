@@ -27,7 +27,6 @@ from unturn.surface import SurfaceFields, free_faces, surface_result
 from unturn.thermal import Thermal, parse_thermal
 from unturn.verdict import Solve
 
-
 Place = Literal["centroid", "mean", "nodes", "surface", "quadrature"]
 PLACES: tuple[Place, ...] = ("centroid", "mean", "nodes", "surface", "quadrature")
 

@@ -9,9 +9,9 @@ from pathlib import PurePath
 
 import numpy as np
 
+from unturn.elsewhere import ElsewhereExtreme
 from unturn.fields import CellFields
 from unturn.measures import MEASURES
-from unturn.elsewhere import ElsewhereExtreme
 from unturn.rigid import Removal
 from unturn.summary import CAUTION, RegionSummary, Summary, cell_counts, equivalent_form, mesh_kind
 from unturn.trial import Trial
