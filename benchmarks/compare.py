@@ -1,7 +1,7 @@
 """Times unturn against referees in the same run and prints the ratios. Run by hand on a quiet machine:
 
     python benchmarks/compare.py            # everything, about two minutes
-    python benchmarks/compare.py kernel     # or: eigen, command, help, memory
+    python benchmarks/compare.py kernel     # or: finite, eigen, command, help, memory
 
 Nothing here is asserted: a ratio is read by a person, on a machine whose other work is known.
 """
@@ -88,6 +88,23 @@ def kernel() -> None:
                   f"{theirs / ours:.2f} times as fast")  # fmt: skip
 
 
+FINITE = ["strain_green_lagrange", "strain_hencky", "strain_biot", "strain_almansi", "finite_rotation",
+          "finite_rotation_angle", "det_f"]  # fmt: skip
+
+
+def finite() -> None:
+    """All finite measures against the default set, and against one LAPACK call per matrix through numpy."""
+    result, _ = million("tetra")
+    model = build_model(result)
+    H = np.random.default_rng(0).normal(scale=0.1, size=(result.n_cells, 3, 3)) + np.eye(3)
+    lapack = best(lambda: np.linalg.svd(H), 1)
+    for threads in (1, 2):
+        default = best(lambda t=threads: compute_fields(model, threads=t))
+        ours = best(lambda t=threads: compute_fields(model, FINITE, threads=t))
+        print(f"finite measures, {result.n_cells} tetrahedra, {threads} threads: {ours:.3f} s; default set {default:.3f} s; "
+              f"{ours / default:.2f} times its time; numpy.linalg.svd of as many matrices alone: {lapack:.2f} s")  # fmt: skip
+
+
 def eigen() -> None:
     """Principal values against LAPACK through numpy."""
     tensor = np.random.default_rng(0).normal(size=(1_000_000, 3, 3))
@@ -161,7 +178,14 @@ def memory() -> None:
         subprocess.run([sys.executable, "-c", script], check=True)
 
 
-PARTS = {"kernel": kernel, "eigen": eigen, "command": command, "help": help_text, "memory": memory}
+PARTS = {
+    "kernel": kernel,
+    "finite": finite,
+    "eigen": eigen,
+    "command": command,
+    "help": help_text,
+    "memory": memory,
+}
 
 if __name__ == "__main__":
     for part in sys.argv[1:] or PARTS:

@@ -167,6 +167,36 @@ def test_extreme_stretches(stretch: tuple[float, ...]) -> None:
             )
 
 
+@pytest.mark.source("scipy.linalg.svd of each F: stretches over eighteen decades, at random")
+@settings(max_examples=150)
+@given(
+    st.lists(st.floats(-9.0, 1.0), min_size=3, max_size=3),
+    rotations(),
+    rotations(),
+    st.sampled_from([0.0, 1e-9, 1e-15]),
+)
+def test_crushed_matter_against_scipy(
+    exponents: list[float], turn: Floats, more: Floats, equal: float
+) -> None:
+    stretch = 10.0 ** np.array(exponents)
+    stretch[1] = stretch[0] * (1 + equal) if equal else stretch[1]  # also two that are nearly equal
+    Q = I + more
+    F = (I + turn) @ (Q * stretch) @ Q.T
+    H = F - I
+    F = I + H  # what is left of it after storage
+    assume(np.linalg.det(F) > 4e-15 * (1 + np.linalg.norm(H) ** 2))
+    left, values, right = scipy.linalg.svd(F)
+    found = finite(H)
+    rounding = 4e-15 * max(1.0, values[0])
+    np.testing.assert_allclose(np.exp(found.hencky_values[:, 0]), values, rtol=1e-12, atol=rounding)
+    R = I + found.turn[..., 0]
+    np.testing.assert_allclose(R @ R.T, I, atol=1e-14 + (0 if values[2] ** 2 < 0.1 else rounding))
+    # R is known to eps |F| / (l2 + l3)
+    np.testing.assert_allclose(R, left @ right, atol=4 * rounding / (values[1] + values[2]) + 1e-14)
+    U = full_from_six(found.stretch_tensor)[..., 0] + I
+    np.testing.assert_allclose(U, (right.T * values) @ right, atol=4 * rounding)
+
+
 @pytest.mark.source("Rodrigues 1840: a rotation by phi about n")
 @pytest.mark.parametrize(
     "angle", [0.0, 1e-9, 1e-6, 0.5, np.pi / 2, 3.0, np.radians(179.99), np.pi - 1e-6, np.pi]

@@ -43,6 +43,10 @@ def six(tensor: Any) -> np.ndarray:
     return np.array([t[0, 0], t[1, 1], t[2, 2], t[0, 1], t[1, 2], t[0, 2]])
 
 
+def full(six_components: np.ndarray) -> np.ndarray:
+    return six_components[..., [0, 3, 5, 3, 1, 4, 5, 4, 2]].reshape(*six_components.shape[:-1], 3, 3)
+
+
 def lowest(mesh: meshes.Mesh) -> float:
     """Smallest height of an element, as the noise floor has it."""
     model = build_model(mesh.result(u=np.zeros((len(mesh.points), 3))))
@@ -128,16 +132,16 @@ def test_derived_measures_of_a_base(base: str) -> None:
     result = mesh.result(u=mesh.points @ H.T)
     arrays = strain(result, measures=["all"], base=base.replace("_", "-")).cell_data
     t = arrays[f"strain_{base}"]
-    full = t[:, [0, 3, 5, 3, 1, 4, 5, 4, 2]].reshape(-1, 3, 3)
-    values, vectors = np.linalg.eigh(full)
+    tensor = full(t)
+    values, vectors = np.linalg.eigh(tensor)
     np.testing.assert_allclose(arrays[f"principal_strain_{base}"], values[:, ::-1], atol=1e-13)
     for k in range(3):
         d = arrays[f"principal_direction_{k + 1}_{base}"]
         np.testing.assert_allclose(np.abs((d * vectors[:, :, 2 - k]).sum(axis=1)), 1.0, atol=1e-12)
     np.testing.assert_allclose(arrays[f"max_shear_strain_{base}"], values[:, 2] - values[:, 0], atol=1e-13)
-    trace = np.trace(full, axis1=1, axis2=2)
+    trace = np.trace(tensor, axis1=1, axis2=2)
     np.testing.assert_allclose(arrays[f"volumetric_strain_{base}"], trace, atol=1e-13)
-    deviator = full - trace[:, None, None] / 3 * np.eye(3)
+    deviator = tensor - trace[:, None, None] / 3 * np.eye(3)
     np.testing.assert_allclose(
         arrays[f"equivalent_strain_{base}"], np.sqrt(2 / 3 * (deviator**2).sum(axis=(1, 2))), atol=1e-13
     )

@@ -6,12 +6,15 @@ import base64
 from collections.abc import Callable
 from pathlib import Path
 
+import h5py
 import numpy as np
 import pytest
 
 import unturn
-from unturn.elements import element
-from unturn.errors import DisplacementError
+from unturn import io
+from unturn.elements import ELEMENTS, element
+from unturn.errors import DisplacementError, InputError
+from unturn.result import CellBlock, Result
 
 Field = Callable[[np.ndarray], np.ndarray]
 SLANT = np.array([[1.0, 0.1, 0.05], [0.2, 0.9, -0.1], [0.0, 0.15, 1.1]])
@@ -106,6 +109,42 @@ def test_base64_with_its_length_apart_and_padded_offsets(
     np.testing.assert_array_equal(result.points, points)
     np.testing.assert_array_equal(result.point_data["u"], displacement(points))
     assert result.blocks[0].connectivity.tolist() == cells.tolist()
+
+
+@pytest.mark.source("GetFEM 5.4.2, export_to_vtu: in front of point arrays the number of values as a float")
+@pytest.mark.parametrize("short", [False, True])
+def test_base64_behind_a_length_that_is_none(short: bool, tmp_path: Path) -> None:
+    points = (np.array([[0, 0, 0], [1, 0, 0], [0, 1, 0], [0, 0, 1.0]]) @ SLANT.T).astype(np.float32)
+    u = displacement(points).astype(np.float32)
+
+    def array(name: str, values: np.ndarray, kind: str, more: str = "", length: bytes = b"") -> str:
+        data = (length or np.array([values.nbytes], "<u4").tobytes()) + values.tobytes()
+        return (
+            f'<DataArray type="{kind}" Name="{name}"{more} format="binary">\n'
+            f"{base64.b64encode(data).decode()}\n</DataArray>\n"
+        )
+
+    three = ' NumberOfComponents="3"'
+    path = tmp_path / "u.vtu"
+    path.write_text(
+        '<?xml version="1.0"?>\n<VTKFile type="UnstructuredGrid" version="0.1" byte_order="LittleEndian">\n'
+        '<UnstructuredGrid>\n<Piece NumberOfPoints="4" NumberOfCells="1">\n<Points>\n'
+        + array("Points", points, "Float32", three)
+        + "</Points>\n<Cells>\n"
+        + array("connectivity", np.arange(4, dtype=np.int32), "Int32")
+        + array("offsets", np.array([4], np.int32), "Int32")
+        + array("types", np.array([10], np.int32), "Int32")
+        + "</Cells>\n<PointData>\n"
+        + array("displacement", u[: 4 - short], "Float32", three, np.array([u.size], "<f4").tobytes())
+        + "</PointData>\n</Piece>\n</UnstructuredGrid>\n</VTKFile>\n"
+    )
+    if short:
+        with pytest.raises(InputError, match="'displacement' has 9 values; 12 are needed"):
+            unturn.read(path)
+        return
+    result = unturn.read(path)
+    np.testing.assert_array_equal(result.point_data["displacement"], u)
+    np.testing.assert_array_equal(result.points, points)
 
 
 def xdmf(topology: str, rows: np.ndarray, points: np.ndarray, values: np.ndarray, more: str = "") -> str:
@@ -254,3 +293,61 @@ def test_msh_elements_of_higher_order(kind: int, tmp_path: Path) -> None:
     held = slice(0, 6) if dim == 3 else [0, 1, 3]
     found = unturn.strain(result, measures=["strain"]).cell_data["strain"]
     np.testing.assert_allclose(found[:, held], expected_strain(at)[:, held], atol=1e-15)
+
+
+@pytest.mark.source(
+    "MEDCoupling 9.15, WriteField: MED 4.2; element H27, QU9, P18, TR7, SE2; field DEPL at nodes"
+)
+@pytest.mark.parametrize(
+    ("med_name", "cell_type", "coordinates"),
+    [
+        ("H27", "hexahedron27", 3),
+        ("QU9", "quad9", 2),
+        ("P18", "wedge18", 3),
+        ("TR7", "triangle7", 2),
+        ("SE2", "line", 1),
+    ],
+)
+def test_med_fields_on_full_quadratic_cells_and_bars(
+    med_name: str, cell_type: str, coordinates: int, tmp_path: Path
+) -> None:
+    row = ELEMENTS[cell_type]
+    held = SLANT[:coordinates, :coordinates]
+    points = row.nodes @ held.T
+    slope = 1e-3 * np.array([[1.0, 2, 0], [0.5, -1, 1], [0, 0.25, 3]])[:coordinates, :coordinates]
+    path = tmp_path / "u.med"
+    whole = {"NBR": len(points)}
+    with h5py.File(path, "w") as file:
+        mesh = file.create_group("ENS_MAA/mesh")
+        mesh.attrs.update({"DIM": row.dim, "ESP": coordinates, "TYP": 0})
+        step = mesh.create_group("-0000000000000000001-0000000000000000001")
+        step.create_dataset("NOE/COO", data=points.T.ravel()).attrs.update(whole)
+        nodes = step.create_dataset(f"MAI/{med_name}/NOD", data=np.arange(1, len(points) + 1))
+        nodes.attrs["NBR"] = 1
+        file.create_group("FAS/mesh/FAMILLE_ZERO").attrs["NUM"] = 0
+        field = file.create_group("CHA/DEPL")
+        field.attrs.update({"MAI": b"mesh", "NCO": coordinates, "TYP": 6})
+        at = field.create_group("0000000000000000000100000000000000000000")
+        at.attrs.update({"NDT": 1, "NOR": 0, "PDT": 1.0})
+        at.create_group("NOE").attrs["PFL"] = np.bytes_(b"MED_NO_PROFILE_INTERNAL")
+        values = at.create_group("NOE/MED_NO_PROFILE_INTERNAL")
+        values.attrs.update(whole)
+        values.create_dataset("CO", data=(points @ slope.T).T.ravel())
+    result = unturn.read(path)
+    assert [b.cell_type for b in result.blocks] == [cell_type]
+    found = unturn.strain(result, measures=["strain"]).cell_data["strain"][0]
+    expected = np.zeros((3, 3))
+    expected[:coordinates, :coordinates] = (slope + slope.T) / 2
+    seen = {1: [0], 2: [0, 1, 3], 3: [0, 1, 2, 3, 4, 5]}[coordinates]
+    flat = expected[[0, 1, 2, 0, 1, 0], [0, 1, 2, 1, 2, 2]]
+    np.testing.assert_allclose(found[seen], flat[seen], atol=1e-15)
+
+
+def test_a_result_whose_cells_xdmf_cannot_name_goes_to_vtu() -> None:
+    cubic = CellBlock("VTK_LAGRANGE_TRIANGLE", np.arange(10)[None], np.array([0]))
+    linear = CellBlock("triangle", np.arange(3)[None], np.array([0]))
+    for block, single, series in ((cubic, ".vtu", ".pvd"), (linear, ".xdmf", ".xdmf")):
+        result = Result(np.random.default_rng(0).normal(size=(10, 3)), (block,))
+        assert io.writable_suffix(Path("a.xdmf"), result) == single
+        assert io.writable_suffix(Path("a.xdmf"), result, series=True) == series
+    assert io.writable_suffix(Path("a.msh"), result) == ".vtu"

@@ -135,6 +135,19 @@ def test_bodies_that_touch_without_shared_nodes_stay_apart() -> None:
     assert cells_of(find_regions(m, everything(m))) == {"body 1": [0, 1, 2], "body 2": [3, 4, 5]}
 
 
+def test_nodes_repeated_by_the_writer_make_no_bodies() -> None:
+    """Each pair of cells has its own nodes, as writers do that subdivide elements."""
+    mesh = row_of_hexahedra()
+    points, cells = [], []
+    for k in (0, 2, 4):
+        used, local = np.unique(mesh.cells[k : k + 2], return_inverse=True)
+        cells.append(local.reshape(2, 8) + sum(map(len, points)))
+        points.append(mesh.points[used])
+    apart = mesh._replace(points=np.concatenate(points), cells=np.concatenate(cells))
+    m = model(apart)
+    assert cells_of(find_regions(m, everything(m))) == {"whole": [0, 1, 2, 3, 4, 5]}
+
+
 def test_many_bodies_are_no_regions() -> None:
     m = model(row_of_hexahedra(gaps=tuple(range(1, 120)), n=120))
     assert [r.name for r in find_regions(m, everything(m))] == ["whole"]

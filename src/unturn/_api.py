@@ -120,7 +120,7 @@ def strain(
         A known axis instead of the full fit: ``0,0,1 through 10,0,0``.
     frame
         Axes of the components: ``cylindrical z``, ``cylindrical 0,0,1 through 10,0,0``, ``cartesian 1,1,0 0,0,1``,
-        ``arrays FIRST SECOND``.
+        ``surface``, ``arrays FIRST SECOND``.
     thermal_expansion, temperature, reference_temperature
         Free thermal strain to take out: a coefficient (number, three along the axes of the frame, or by region
         ``part=1:12e-6;part=2:23e-6``), a point or cell array, a number. Gives `mechanical_strain` and what derives from it.
@@ -174,6 +174,7 @@ def strain(
         reference_temperature, skin, alive, threads,
     )  # fmt: skip
     computed = compute(result, options, zero=zero)
+    computed.require_some()
     return add_fields(result, computed, prefix=prefix, overwrite=overwrite)
 
 
@@ -194,9 +195,14 @@ def add_fields(result: Result, computed: Computed, *, prefix: str = "", overwrit
             f"{where}the file already has a cell array called {taken[0]!r}; it is not overwritten unasked. Give the new "
             "arrays other names with --prefix TEXT, or replace the old ones with --overwrite."
         )
+    motions = rigid_arrays(computed.removals, prefix)
+    kept = [name for name in motions if name in result.field_data]
+    if kept and not overwrite:
+        raise UsageError(
+            f"{result.path + ': ' if result.path else ''}the file already has a field array called {kept[0]!r}; it is not "
+            "overwritten unasked. Use --prefix TEXT or --overwrite."
+        )
     names: dict[tuple[Association, str], tuple[str, ...]] = {
         ("cell", prefix + name): components for name, components in fields.components.items()
     }
-    return result.with_arrays(
-        cell_data=arrays, field_data=rigid_arrays(computed.removals, prefix), component_names=names
-    )
+    return result.with_arrays(cell_data=arrays, field_data=motions, component_names=names)

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import re
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from typing import Literal
 
 import numpy as np
@@ -94,9 +94,8 @@ def compare_with_solver(fields: CellFields, threads: int | None = None) -> list[
     candidates = strain_arrays(fields)
     if not candidates or fields.diagnostics is None:
         return []
-    H = compute_fields(fields.model, ["displacement_gradient"], threads=threads).arrays[
-        "displacement_gradient"
-    ]
+    whole = replace(fields.model, back=None, back_of=None)  # the solver's strain is that of the whole motion
+    H = compute_fields(whole, ["displacement_gradient"], threads=threads).arrays["displacement_gradient"]
     gradient = np.moveaxis(H.reshape(-1, 3, 3), 0, -1)
     ours = {"small strain": six_from_full(gradient), "Green-Lagrange strain": green_lagrange(gradient)}
     return [_best(name, where, values, ours, fields) for name, where, values in candidates]

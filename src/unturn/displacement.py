@@ -13,7 +13,7 @@ from unturn.result import Result
 
 _NAMED = re.compile(
     r"^(u|uvec|u_?h|disp|displ|displacements?|deformation|translations?)$"
-    r"|displacement|^disp(l)?[ _.-]|[ _.-]disp(l)?$|^u[ _.-]?(vector|total|mean)$",
+    r"|displacement|(^|[ _.])depl(acements?)?$|^disp(l)?[ _.-]|[ _.-]disp(l)?$|^u[ _.-]?(vector|total|mean)$",
     re.IGNORECASE,
 )
 _OTHER = re.compile(

@@ -10,7 +10,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from unturn.errors import UsageError
-from unturn.frames import Frame, turned_components
+from unturn.frames import Frame, surface_axes, turned_components
 from unturn.gradient import (
     ElementChunk,
     Plane,
@@ -24,7 +24,7 @@ from unturn.gradient import (
 from unturn.kinematics._motion import relative_volume_change
 from unturn.kinematics._symmetric import Floats, full_from_six, six_from_full
 from unturn.kinematics._turning import Turning
-from unturn.measures import GEOMETRY, MEASURES, Measure, Split, choose_measures
+from unturn.measures import GEOMETRY, MEASURES, SURFACE_AXES, VECTOR, Measure, Split, choose_measures
 from unturn.model import Model, ModelBlock
 from unturn.precision import MEANT_DISPLACEMENT, storage_resolution
 from unturn.thermal import Thermal
@@ -96,6 +96,14 @@ class CellFields:
     mirrored: int = 0
     diagnostics: CellDiagnostics | None = None
 
+    @property
+    def notes(self) -> tuple[str, ...]:
+        """Sentences for the user: the model's, and what was found on the way."""
+        if not self.mirrored:
+            return self.model.notes
+        mirrored = f"{self.mirrored} solids are numbered the other way round (negative Jacobian everywhere)"
+        return (*self.model.notes, f"{mirrored}; their gradient is right")
+
 
 def compute_fields(
     model: Model,
@@ -142,6 +150,7 @@ def compute_fields(
     if at not in LOCATIONS:
         raise UsageError(f"at={at!r} is not known; use one of {', '.join(LOCATIONS)}.")
     _check_third_direction(model, names)
+    _check_surface(model, names, frame)
     if (
         thermal is not None
         and not thermal.isotropic
@@ -172,6 +181,15 @@ def _check_third_direction(model: Model, names: Sequence[str]) -> None:
         )
 
 
+def _check_surface(model: Model, names: Sequence[str], frame: Frame | None) -> None:
+    asked = "--frame surface" if frame is not None and frame.surface else ""
+    asked = asked or next((n for n in names if n in SURFACE_AXES), "")
+    if asked and not any(b.row is not None and b.row.dim == 2 and len(b.active) for b in model.blocks):
+        raise UsageError(
+            f"{asked} needs surface cells; this mesh has none that are computed (--skin computes skins)."
+        )
+
+
 _OK, _NOT_FINITE, _FLAT, _TANGLED = range(4)
 _REASONS = {_NOT_FINITE: "displacement not finite", _FLAT: "no volume", _TANGLED: "tangled"}
 
@@ -198,7 +216,7 @@ class _Job:
         whole = all(len(b.active) == len(b.cells) for b in model.blocks)
         self.arrays: dict[str, Floats] = {}
         for name in names:
-            components = len(MEASURES[name].components) if name in MEASURES else 0
+            components = len(MEASURES[name].components) if name in MEASURES else 3 * (name in SURFACE_AXES)
             shape = (n, components) if components else (n,)
             self.arrays[name] = np.empty(shape) if whole else np.full(shape, np.nan)
         self.status = np.zeros(n, dtype=np.uint8)
@@ -274,7 +292,7 @@ class _Job:
                 finite = mean_gradient(chunk, rule, finite=True)[0] if mean else chunk.finite(point)
                 if status is not None:
                     finite[:, :, status != _OK] = np.nan
-        axes = self._axes(chunk, place, rows)
+        axes = self._axes(chunk, point, place, rows)
         free = None
         if self.thermal is not None:
             samples = rule if mean else place
@@ -293,11 +311,19 @@ class _Job:
         if self.diagnostics is not None:
             self._diagnose(chunk, point, split, place, volume, rows)
 
-    def _axes(self, chunk: ElementChunk, place: Samples, rows: slice | NDArray[np.int64]) -> Floats | None:
+    def _axes(
+        self, chunk: ElementChunk, point: PointGradient, place: Samples, rows: slice | NDArray[np.int64]
+    ) -> Floats | None:
+        """Return the axes of the frame, and fill the arrays of those of the surface."""
+        asked = [(k, name) for k, name in enumerate(SURFACE_AXES) if name in self.arrays]
+        if asked:
+            axes = surface_axes(point.tangents, len(chunk))
+            for k, name in asked:
+                self.arrays[name][rows] = axes[k].T
         if self.frame is None:
             return None
         centroid = np.stack([chunk.interpolate(place.functions[0], i) for i in range(3)])
-        return self.frame.axes(centroid, rows)
+        return self.frame.axes(centroid, rows, point.tangents)
 
     def _geometry(
         self, chunk: ElementChunk, point: PointGradient, rule: Samples
@@ -386,6 +412,7 @@ class _Job:
             for m in self.measures
             if m.components
         }
+        components |= {name: VECTOR for name in SURFACE_AXES if name in self.arrays}
         return CellFields(
             self.model, self.arrays, components, left_out, int(self.mirrored.sum()), self.diagnostics
         )

@@ -1,4 +1,4 @@
-"""Frames in which components are given: turned cartesian, cylindrical, or directions from cell arrays.
+"""Frames in which components are given: turned cartesian, cylindrical, of the surface, or directions from cell arrays.
 
 Components change, invariants do not. Principal directions stay in the axes of the file.
 """
@@ -16,6 +16,9 @@ from unturn.kinematics._symmetric import PAIRS, Floats
 from unturn.result import Result
 
 _SAME = 1e-12
+_ACROSS = (
+    0.9999985  # cosine of 0.1 degree: a surface whose normal is this near to x takes its first axis from z
+)
 
 
 @dataclass(frozen=True, eq=False)
@@ -34,6 +37,8 @@ class Frame:
         A point on the axis and its unit direction, for a cylindrical frame.
     cells
         `(n_cells, 3, 3)` axes as rows, from arrays.
+    surface
+        Whether the axes are those of `surface_axes`.
     """
 
     text: str
@@ -42,12 +47,16 @@ class Frame:
     point: Floats | None = None
     direction: Floats | None = None
     cells: Floats | None = None
+    surface: bool = False
 
-    def axes(self, centroid: Floats, rows: slice | NDArray[np.int64]) -> Floats:
-        """Return the axes as rows `(3, 3, m)` of cells with this centroid `(3, m)` and file positions.
+    def axes(self, centroid: Floats, rows: slice | NDArray[np.int64], tangents: Floats | None) -> Floats:
+        """Return the axes as rows `(3, 3, m)` of cells with this centroid `(3, m)`, file positions, and tangents.
 
-        On the axis of a cylindrical frame the radial direction is not defined: NaN.
+        On the axis of a cylindrical frame the radial direction is not defined: NaN; as is the frame of the surface of
+        cells that are none.
         """
+        if self.surface:
+            return surface_axes(tangents, centroid.shape[1])
         if self.fixed is not None:
             return np.repeat(self.fixed[:, :, None], centroid.shape[1], axis=2)
         if self.cells is not None:
@@ -73,8 +82,39 @@ class Frame:
         return tuple(x + y for x in a for y in a)
 
 
+def surface_axes(tangents: Floats | None, count: int) -> Floats:
+    """Return the axes `(3, 3, m)` of surface cells as rows from their tangents `(2, 3, m)`; NaN for other cells.
+
+    Notes
+    -----
+    3 is the normal, right-handed with the order of the nodes; 1 is the direction x laid into the surface, or z where the
+    normal is within 0.1 degree of x; 2 completes them. Common practice for shells, no source.
+    """
+    if tangents is None or len(tangents) != 2:
+        return np.full((3, 3, count), np.nan)
+    with np.errstate(invalid="ignore", divide="ignore"):
+        normal = np.cross(tangents[0], tangents[1], axis=0)
+        normal /= np.sqrt((normal * normal).sum(axis=0))
+        start = np.where(np.abs(normal[0]) > _ACROSS, np.eye(3)[2][:, None], np.eye(3)[0][:, None])
+        first = start - normal * (start * normal).sum(axis=0)
+        first /= np.sqrt((first * first).sum(axis=0))
+    return np.stack([first, np.cross(normal, first, axis=0), normal])
+
+
 def turned_components(values: Floats, axes: Floats) -> Floats:
-    """Return a vector `(3, m)`, symmetric tensor `(6, m)` or full tensor `(9, m)` in the frame of `axes`."""
+    """Return a vector `(3, m)`, symmetric tensor `(6, m)` or full tensor `(9, m)` in the frame of `axes`.
+
+    A component that is not known, as the strain across a plane mesh, spoils those that it enters and no others.
+    """
+    missing = np.isnan(values)
+    if not missing.any():
+        return _turned(values, axes)
+    turned = _turned(np.where(missing, 0.0, values), axes)
+    turned[_turned(missing.astype(np.float64), np.abs(axes)) > _SAME] = np.nan
+    return turned
+
+
+def _turned(values: Floats, axes: Floats) -> Floats:
     if len(values) == 3:
         vector: Floats = np.einsum("aim,im->am", axes, values)
         return vector
@@ -93,6 +133,7 @@ def parse_frame(text: str, result: Result) -> Frame:
 
     ``cylindrical AXIS [through X,Y,Z]`` with AXIS ``x``, ``y``, ``z`` or a direction ``a,b,c``;
     ``cartesian FIRST SECOND`` with two directions: 1 along the first, 2 in their plane;
+    ``surface``, see `surface_axes`;
     ``arrays FIRST SECOND`` with two cell arrays of directions, taken the same way.
 
     Raises
@@ -114,13 +155,15 @@ def parse_frame(text: str, result: Result) -> Frame:
     if words and words[0] == "arrays" and len(words) == 3:
         first, second = (_cell_directions(result, w) for w in words[1:])
         return Frame(text, ("1", "2", "3"), cells=_orthonormal(first, second, text))
+    if words == ["surface"]:
+        return Frame(text, ("1", "2", "3"), surface=True)
     raise _unclear(text)
 
 
 def _unclear(text: str) -> UsageError:
     return UsageError(
         f"--frame {text!r} is not understood. Use 'cylindrical z', 'cylindrical 0,0,1 through 10,0,0', "
-        "'cartesian 1,1,0 0,0,1' or 'arrays FIRST SECOND' (two cell arrays of directions)."
+        "'cartesian 1,1,0 0,0,1', 'surface' or 'arrays FIRST SECOND' (two cell arrays of directions)."
     )
 
 

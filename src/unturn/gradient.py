@@ -234,7 +234,8 @@ class ElementChunk:
         if self.row.dim == 3:
             return point.H
         if self.row.dim == 1:
-            return _finite_line(point)
+            assert point.tangents is not None
+            return _finite_line(point.tangents[0] / point.measure, _moved_tangent(point))
         if self.plane is None:
             return _finite_surface(point, self.poisson)
         H = point.H
@@ -370,19 +371,28 @@ def _finite_surface(point: PointGradient, poisson: float | None) -> Floats:
     return H
 
 
-def _finite_line(point: PointGradient) -> Floats:
-    """Return `F - I`, F the axial stretch times the smallest rotation from old to new tangent."""
+def _moved_tangent(point: PointGradient) -> Floats:
+    """Return the tangent of the deformed line per unit of reference length: the small completion keeps du/ds."""
     assert point.tangents is not None
-    t = point.tangents[0]
-    size = np.sqrt(_dot(t, t))
-    old = t / size
-    slope = np.stack([_dot(point.H[i], old) for i in range(3)])  # du/ds: the small completion keeps it
-    moved = old + slope
-    stretch = np.sqrt(_dot(moved, moved))
-    new = moved / stretch
+    old = point.tangents[0] / point.measure
+    moved: Floats = old + np.stack([_dot(point.H[i], old) for i in range(3)])
+    return moved
+
+
+def _finite_line(old: Floats, moved: Floats, stretch: Floats | None = None) -> Floats:
+    """Return `F - I`, F the axial stretch times the smallest rotation from old to new tangent, both `(3, m)`.
+
+    Without a stretch it is the ratio of their lengths.
+    """
+    size = np.sqrt(_dot(old, old))
+    old = old / size
+    length = np.sqrt(_dot(moved, moved))
+    new = moved / length
+    if stretch is None:
+        stretch = length / size
     axis, cosine = _cross(old, new), _dot(old, new)
     back = cosine < -0.5
-    H = np.empty_like(point.H)
+    H = np.empty((3, 3, old.shape[-1]))
     for i in range(3):
         for j in range(3):
             H[i, j] = axis[i] * axis[j] / np.where(back, 1.0, 1.0 + cosine)
@@ -397,6 +407,26 @@ def _finite_line(point: PointGradient) -> Floats:
         for j in range(3):
             H[i, j] += extra[i] * old[j]
     return H
+
+
+def _mean_finite_line(chunk: ElementChunk, samples: Samples) -> tuple[Floats, Floats]:
+    """Return the mean `F - I` of lines, and their lengths: mean axial stretch, rotation of the chord.
+
+    Along a curved line the smallest rotation of the tangent is another at each point even when the whole line turns as
+    one; the chord has one rotation, and the mean stretch is no affair of turning.
+    """
+    chord, moved = np.zeros((2, 3, len(chunk)))
+    stretch, length = np.zeros((2, len(chunk)))
+    for gradients, functions, weight in zip(samples.gradients, samples.functions, samples.weights):
+        point = chunk.at(gradients, functions)
+        assert point.tangents is not None
+        share = weight * point.weight
+        tangent = _moved_tangent(point)
+        chord += weight * point.tangents[0]
+        moved += share * tangent
+        stretch += share * np.sqrt(_dot(tangent, tangent))
+        length += share
+    return _finite_line(chord, moved, stretch / length), length
 
 
 def reversing_turn(old: Floats, new: Floats) -> Floats:
@@ -555,8 +585,10 @@ def mean_gradient(chunk: ElementChunk, samples: Samples, finite: bool = False) -
     """Return the volume mean `(3, 3, m)` of the gradient and the volume `(m,)`.
 
     With `finite` it is the mean of `F - I` as finite measures complete it: along a curved surface the normal changes,
-    so the mean is completed point by point.
+    so the mean is completed point by point. Lines: mean axial stretch, rotation of the chord.
     """
+    if finite and chunk.row.dim == 1:
+        return _mean_finite_line(chunk, samples)
     total = np.zeros((3, 3, len(chunk)))
     volume = np.zeros(len(chunk))
     for gradients, functions, weight in zip(samples.gradients, samples.functions, samples.weights):

@@ -186,7 +186,7 @@ def _table() -> dict[str, Measure]:
                 "trace of the small strain", _ELASTICITY),
         Measure("deviatoric_strain", TENSOR, lambda s: _motion.deviator(s.strain), "strain", True, True,
                 "strain less a third of its trace", _ELASTICITY),
-        Measure("displacement_gradient", FULL, lambda s: s.H.reshape(9, -1), "strain", False, True,
+        Measure("displacement_gradient", FULL, lambda s: s.H.reshape(9, -1), "1", False, True,
                 "du_i/dX_j, row-major", Source("published", "Hughes 2000, The Finite Element Method, section 3.9")),
         Measure("small_strain_error", (), lambda s: s.turning.error, "strain", False, False,
                 "norm(e - (U - I)): what turning adds to the small strain",
@@ -307,6 +307,13 @@ GEOMETRY: dict[str, str] = {
 }
 """Measures of the mesh alone."""
 
+SURFACE_AXES: dict[str, str] = {
+    "surface_direction_1": "first axis within the surface: the direction x laid into it",
+    "surface_direction_2": "second axis within the surface",
+    "surface_normal": "unit normal of the surface, right-handed with the order of the nodes",
+}
+"""Axes of the frame of a surface mesh, on request only."""
+
 DEFAULT_MEASURES = ("strain", "rotation", "equivalent_strain", "principal_strain")
 DEFAULT_MECHANICAL = ("mechanical_strain", "equivalent_strain_mechanical", "principal_strain_mechanical")
 
@@ -337,7 +344,7 @@ def choose_measures(
     >>> choose_measures(["rotation", "strain"], base="green-lagrange")
     ('finite_rotation', 'strain_green_lagrange')
     """
-    known = [*MEASURES, *GEOMETRY]
+    known = [*MEASURES, *GEOMETRY, *SURFACE_AXES]
     counterpart = _counterparts(base)
     wanted: set[str] = set()
     for name in names or (*DEFAULT_MEASURES, *(DEFAULT_MECHANICAL if mechanical else ())):

@@ -129,6 +129,18 @@ class Model:
         blocks = tuple(replace(b, active=b.active[mask[b.index]]) for b in self.blocks)
         return replace(self, blocks=blocks, left_out={})
 
+    def turned(self) -> Model:
+        """Return the model with the deformed body turned a quarter about (1, 1, 1), or about a plane mesh's normal."""
+        axis = np.full(3, 3.0**-0.5) if self.plane is None else np.eye(3)[self.plane.normal]
+        if self.plane is not None and self.plane.model == "axisymmetric":
+            return self
+        R = np.outer(axis, axis) + np.cross(np.eye(3), -axis)  # a quarter turn: cosine 0, sine 1
+        rows = self.fields.rows
+        place = rows[:3] + rows[3:]
+        center = np.nanmean(np.where(np.isfinite(place), place, np.nan), axis=1, keepdims=True)
+        moved = (np.einsum("ij,jn->in", R, place - center) + center - rows[:3]).T
+        return replace(self, fields=NodalFields(rows[:3].T, moved))
+
     @property
     def dimension(self) -> int:
         """Highest dimension among the computed cells."""

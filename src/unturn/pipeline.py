@@ -3,19 +3,19 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass, replace
+from dataclasses import asdict, dataclass, field, replace
 from typing import Any, Literal
 
 import numpy as np
 from numpy.typing import NDArray
 
 from unturn.displacement import find_displacement
-from unturn.errors import UsageError
+from unturn.errors import InputError, UsageError
 from unturn.fields import CellFields, Location, compute_fields
 from unturn.frames import Frame, parse_frame
 from unturn.gradient import NodalFields, PlaneModel
 from unturn.kinematics._symmetric import Floats
-from unturn.measures import MEASURES, choose_measures
+from unturn.measures import MEASURES, SMALL, choose_measures
 from unturn.model import Model, PlaneOptions, build_model
 from unturn.regions import bodies, find_regions, named_regions
 from unturn.result import Result
@@ -57,6 +57,25 @@ class Computed:
 
     fields: CellFields
     removals: tuple[Removal, ...] = ()
+    request: dict[str, Any] = field(default_factory=dict)
+
+    def require_some(self) -> None:
+        """Refuse a result of which no cell could be computed.
+
+        Raises
+        ------
+        InputError
+            Every cell was left out.
+        """
+        n = self.fields.model.result.n_cells
+        out = self.fields.left_out
+        if sum(len(cells) for cells in out.values()) >= n:
+            where = self.fields.model.result.path
+            reasons = ", ".join(f"{len(cells)} {reason}" for reason, cells in out.items())
+            raise InputError(
+                f"{where + ': ' if where else ''}no cell could be computed: {reasons}. Look at the displacement and the mesh "
+                "with 'unturn survey'."
+            )
 
 
 def compute(
@@ -101,14 +120,28 @@ def compute(
     }
     small, finite = _zeroed(model, zero, options)
     parts = _parts(small, options)
-    small, removals = (
-        take_out(small, parts, options.solve, _axis(options.rigid_axis)) if parts else (small, ())
-    )
+    removals: tuple[Removal, ...] = ()
+    if parts:
+        wanted = any(n in MEASURES and MEASURES[n].finite for n in names)
+        small, removals = take_out(small, parts, options.solve, _axis(options.rigid_axis), wanted)
     if finite is not None and parts:
-        finite, _ = take_out(finite, parts, "nonlinear", _axis(options.rigid_axis))
+        finite, of_finite = take_out(finite, parts, "nonlinear", _axis(options.rigid_axis))
+        if not any(n in SMALL for n in names):
+            removals = of_finite
     if previous and len(previous) == len(removals):
         removals = tuple(_unwrap(r, p) for r, p in zip(removals, previous))
-    return Computed(_fields(small, finite, names, settings, options, diagnose), removals)
+    return Computed(
+        _fields(small, finite, names, settings, options, diagnose), removals, _request(options, zero)
+    )
+
+
+def _request(options: StrainOptions, zero: Result | None) -> dict[str, Any]:
+    """Return what was asked for beyond the defaults, by option name, and the zero step."""
+    default = StrainOptions()
+    told = {k: v for k, v in asdict(options).items() if v != getattr(default, k) and k != "threads"}
+    if zero is not None:
+        told["zero_step"] = None if zero.steps is None else zero.steps.current
+    return told
 
 
 def _fields(
@@ -140,7 +173,8 @@ def _checked_measures(options: StrainOptions) -> tuple[str, ...]:
     finite = [n for n in names if n in MEASURES and MEASURES[n].finite]
     if finite and options.solve == "linear":
         raise UsageError(
-            f"{finite[0]} of a geometrically linear solve is fiction: the solve itself used the small strain. Ask for the "
+            f"finite measures ({finite[0]} ...) of a geometrically linear solve are fiction: the solve itself used the small "
+            "strain. Ask for the "
             "small measures, or state --solve nonlinear if it was."
         )
     return names
@@ -259,7 +293,8 @@ def _axis(text: str | None) -> Axis | None:
         direction, point = (np.array([float(w) for w in words[k].split(",")]) for k in (0, 2))
     except (ValueError, IndexError):
         direction = point = np.zeros(0)
-    if len(words) != 3 or words[1] != "through" or direction.shape != (3,) or point.shape != (3,):
+    sound = all(v.shape == (3,) and np.isfinite(v).all() for v in (direction, point))
+    if len(words) != 3 or words[1] != "through" or not sound:
         raise UsageError(f"--rigid-axis {text!r} is not understood. Use '0,0,1' or '0,0,1 through 10,0,0'.")
     return Axis(point, direction)
 

@@ -27,6 +27,7 @@ _NOT_TAGS = re.compile(
 )
 _MOST_TAGS = 200
 _MOST_BODIES = 50
+_REPEATED = 0.4  # share of nodes with a twin from which a writer is taken to have repeated them
 
 
 @dataclass(frozen=True, eq=False)
@@ -99,60 +100,53 @@ def _tags(result: Result, cells: NDArray[np.bool_]) -> list[Region]:
 
 
 def bodies(model: Model, cells: NDArray[np.bool_]) -> list[Region]:
-    """Return connected bodies: cells that share nodes. Coincident nodes count as one when no two cells share any.
+    """Return connected bodies: cells that share nodes.
 
-    A single body, or more than fifty, gives an empty list: the whole is then the better unit.
+    Coincident nodes count as one where two fifths of the nodes or more have a twin: the writer repeated them per element or
+    per block. Parts that only touch stay apart. A single body, or more than fifty, gives an empty list: the whole is then
+    the better unit.
     """
-    from scipy import sparse
-    from scipy.sparse.csgraph import connected_components
-
-    used, shared = _used_nodes(model, cells)
-    label = None
-    if not shared:
+    corners, index = [], []
+    for block in model.blocks:
+        if block.row is not None:
+            mask = cells[block.index]
+            conn = block.connectivity[:, : block.row.n_corners]
+            corners.append(conn if mask.all() else conn[mask])
+            index.append(block.index if mask.all() else block.index[mask])
+    part = _parts(corners, model.result.n_points)
+    if part.max(initial=0) > 0:
+        used = np.zeros(model.result.n_points, dtype=bool)
+        for conn in corners:
+            used[conn] = True
         where = np.flatnonzero(used)  # a node of no cell may lie anywhere
         label = np.arange(model.result.n_points)
         label[where] = where[merge_coincident(model.points[where])[0]]
-    nodes, lengths, index = [], [], []
-    for block in model.blocks:
-        if block.row is None:
-            continue
-        mask = cells[block.index]
-        corners = block.connectivity[:, : block.row.n_corners]
-        corners = corners if mask.all() else corners[mask]
-        nodes.append((corners if label is None else label[corners]).reshape(-1).astype(np.int32))
-        lengths.append(np.full(len(corners), corners.shape[1]))
-        index.append(block.index if mask.all() else block.index[mask])
-    positions = np.concatenate(index)
-    # a graph of points, then cells, each cell joined to its corners
-    n, n_cells = model.result.n_points, len(positions)
-    ends = np.concatenate([np.zeros(n + 1, dtype=np.int64), np.cumsum(np.concatenate(lengths))]).astype(
-        np.int32
-    )
-    joined = np.concatenate(nodes)
-    graph = sparse.csr_array(
-        (np.ones(len(joined), dtype=np.int8), joined, ends), shape=(n + n_cells, n + n_cells)
-    )
-    _, part = connected_components(graph, directed=False)
-    part_of_cell = part[n:]
-    distinct, inverse, counts = np.unique(part_of_cell, return_inverse=True, return_counts=True)
+        single = np.bincount(label[where], minlength=len(label))[label[where]] == 1
+        if len(where) and np.mean(~single) >= _REPEATED:
+            part = _parts([label[conn] for conn in corners], model.result.n_points)
+    distinct, inverse, counts = np.unique(part, return_inverse=True, return_counts=True)
     if not 1 < len(distinct) <= _MOST_BODIES:
         return []
+    positions = np.concatenate(index)
     order = np.argsort(-counts, kind="stable")
     return [
         Region(f"body {rank + 1}", np.sort(positions[inverse == k]), "body") for rank, k in enumerate(order)
     ]
 
 
-def _used_nodes(model: Model, cells: NDArray[np.bool_]) -> tuple[NDArray[np.bool_], bool]:
-    """Return which nodes the cells have, and whether any two cells share one (or there is only one cell)."""
-    seen = np.zeros(model.result.n_points, dtype=bool)
-    total = 0
-    for block in model.blocks:
-        if block.row is not None:
-            conn = block.connectivity[cells[block.index]]
-            seen[conn] = True
-            total += conn.size
-    return seen, total != int(seen.sum()) or int(cells.sum()) == 1
+def _parts(corners: Sequence[NDArray[np.int64]], n_points: int) -> NDArray[np.int64]:
+    """Return for each cell the number of its connected part, from zero."""
+    from scipy import sparse
+    from scipy.sparse.csgraph import connected_components
+
+    lengths = np.concatenate([np.full(len(conn), conn.shape[1]) for conn in corners])
+    # a graph of points, then cells, each cell joined to its corners
+    ends = np.concatenate([np.zeros(n_points + 1, dtype=np.int64), np.cumsum(lengths)]).astype(np.int32)
+    joined = np.concatenate([conn.reshape(-1) for conn in corners]).astype(np.int32)
+    size = n_points + len(lengths)
+    graph = sparse.csr_array((np.ones(len(joined), dtype=np.int8), joined, ends), shape=(size, size))
+    _, part = connected_components(graph, directed=False)
+    return np.unique(part[n_points:], return_inverse=True)[1]
 
 
 def merge_coincident(points: Floats) -> tuple[NDArray[np.int64], float]:

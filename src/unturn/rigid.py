@@ -90,6 +90,7 @@ def take_out(
     parts: Sequence[tuple[str, NDArray[np.int64], str, NDArray[np.int64]]],
     solve: Literal["linear", "nonlinear", "unknown"],
     axis: Axis | None = None,
+    finite: bool = False,
 ) -> tuple[Model, tuple[Removal, ...]]:
     """Return the model without the rigid motions of some parts, and what was taken out.
 
@@ -104,11 +105,13 @@ def take_out(
         one that leaves less is taken out, the rotation where they are equal.
     axis
         A known axis of rotation instead of the full fit.
+    finite
+        Whether finite measures follow: an unknown solve then takes the rotation out, which does not change them.
     """
     back, back_of, removals = [], np.full(model.result.n_cells, -1, dtype=np.int64), []
     for number, (fitted, cells, applied, target) in enumerate(parts):
         found = [fit_rigid_motion(model, cells, kind, axis) for kind in _KINDS[solve]]
-        if len(found) > 1 and found[1].residual < found[0].residual - _EQUAL * found[0].size:
+        if len(found) > 1 and not finite and found[1].residual < found[0].residual - _EQUAL * found[0].size:
             found.reverse()
         motion, other = found[0], found[1] if len(found) > 1 else None
         back.append(_back(motion))

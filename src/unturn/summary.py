@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from typing import Any
 
 import numpy as np
@@ -20,8 +20,8 @@ from unturn.pipeline import Computed
 from unturn.regions import Region, find_regions, named_regions
 from unturn.rigid import Removal
 from unturn.statistics import LOW_PERCENTILES, PERCENTILES, Statistics, statistics
-from unturn.trial import Trial, try_without_rigid_motion
-from unturn.verdict import Solve, Verdict, judge
+from unturn.trial import Trial, try_remedies
+from unturn.verdict import BROKEN, Solve, Verdict, judge
 
 SCHEMA = "unturn.summary/1"
 
@@ -44,7 +44,7 @@ class RegionSummary:
 
     region: Region
     verdict: Verdict
-    trial: Trial | None
+    trials: tuple[Trial, ...]
     volume: float
     statistics: dict[str, Statistics]
 
@@ -61,6 +61,7 @@ class Summary:
     warnings: tuple[str, ...]
     other_dimensions: dict[int, int]
     removals: tuple[Removal, ...] = ()
+    request: dict[str, Any] = field(default_factory=dict)
 
     @property
     def finite_only(self) -> bool:
@@ -107,10 +108,10 @@ def summarise(
         }
         counted = Region(region.name, cells, region.origin)
         verdict = judge(d, counted, options.solve, options.mode)
-        trial = None
+        trials: list[Trial] = []
         if verdict.level == "does not hold" and options.solve != "linear" and not computed.removals:
-            trial = try_without_rigid_motion(fields, counted, options.at, threads)
-        made.append(RegionSummary(region, verdict, trial, float(np.nansum(d.volume[cells])), found))
+            trials = try_remedies(fields, counted, options.solve, {"at": options.at, "threads": threads})
+        made.append(RegionSummary(region, verdict, tuple(trials), float(np.nansum(d.volume[cells])), found))
     others = {
         int(k): int((d.dimension == k).sum())
         for k in np.unique(d.dimension)
@@ -121,10 +122,12 @@ def summarise(
         options,
         tuple(made),
         element_numbers(fields.model.result),
-        tuple(compare_with_solver(fields, threads)),
-        tuple(_warnings(fields, d, made)),
+        # the solver's strain is measured from the undeformed state, not from a zero step
+        () if "zero_step" in computed.request else tuple(compare_with_solver(fields, threads)),
+        (*_warnings(fields, d, made), *_beyond_linear(computed.removals, made)),
         others,
         computed.removals,
+        computed.request,
     )
 
 
@@ -192,11 +195,21 @@ def _warnings(fields: CellFields, d: CellDiagnostics, regions: list[RegionSummar
                 f"{r.region.name}: the stored precision blurs the strain by +-{r.verdict.noise * 1e6:.2g} microstrain, "
                 f"and 99 % of the volume is below {r.verdict.size * 1e6:.3g}: write the result with more digits"
             )
-    if fields.mirrored:
-        found.append(
-            f"{fields.mirrored} solids are numbered the other way round (negative Jacobian everywhere); "
-            "their gradient is right"
-        )
+    return found
+
+
+def _beyond_linear(removals: Sequence[Removal], regions: list[RegionSummary]) -> list[str]:
+    """Return warnings where a linearised turn stretches lengths by what the strain cannot bear."""
+    found = []
+    for r in removals:
+        turn = float(np.linalg.norm(r.motion.rotation))
+        stretched = math.hypot(1.0, turn) - 1.0
+        sizes = [s.verdict.size for s in regions if r.applied in (s.region.name, "whole")]
+        if r.motion.fit == "linearised" and any(stretched > BROKEN * size > 0 for size in sizes):
+            found.append(
+                f"{r.applied} turns by {math.degrees(turn):.3g} degrees; in a linear solve that stretches lengths by "
+                f"{stretched * 1e6:.3g} microstrain, and taking it out does not bring the solve into range"
+            )
     return found
 
 
@@ -234,6 +247,8 @@ def summary_data(summary: Summary) -> dict[str, Any]:
         "location": options.at,
         "equivalent_strain": equivalent_form(options.equivalent_poisson),
         "measures": list(fields.arrays),
+        "components": {name: list(labels) for name, labels in fields.components.items()},
+        "request": summary.request,
         "regions": [_region_data(r, summary) for r in summary.regions],
         "solver_strain": [
             {"array": a.array, "association": a.association, "difference": a.difference, "read_as": a.guess,
@@ -243,7 +258,7 @@ def summary_data(summary: Summary) -> dict[str, Any]:
         "rigid_motion_taken_out": [_removal_data(r) for r in summary.removals],
         "left_out": {reason: len(cells) for reason, cells in fields.left_out.items()},
         "other_dimensions": {f"{k}D": n for k, n in summary.other_dimensions.items()},
-        "notes": list(model.notes),
+        "notes": list(fields.notes),
         "warnings": list(summary.warnings),
         "units": {"strain": "1", "rotation": "radian", "angle_of_turn": "radian", "volume": "length unit of the file"},
         "caution": CAUTION,
@@ -267,13 +282,15 @@ def _region_data(r: RegionSummary, summary: Summary) -> dict[str, Any]:
             "share_above_10_percent": v.share_broken,
             "largest_rotation_degrees": v.largest_rotation,
             "action": v.action,
-            "tried": None
-            if r.trial is None
-            else {
-                "option": r.trial.option,
-                "error_left_over_size": r.trial.left,
-                "small_strain": r.trial.level,
-            },
+            "tried": [
+                {
+                    "option": t.option,
+                    "error_left_over_size": t.left,
+                    "largest_equivalent": t.peak,
+                    "small_strain": t.level,
+                }
+                for t in r.trials
+            ],
         },
         "statistics": {name: _statistics_data(s, summary, v.size) for name, s in r.statistics.items()},
     }

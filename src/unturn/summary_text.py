@@ -14,7 +14,7 @@ from unturn.measures import MEASURES
 from unturn.rigid import Removal
 from unturn.summary import CAUTION, RegionSummary, Summary, cell_counts, equivalent_form, mesh_kind
 from unturn.trial import Trial
-from unturn.verdict import BROKEN, Solve, Verdict
+from unturn.verdict import Solve, Verdict
 
 _MOST_COLUMNS = 5
 _MOST_VERDICTS = 12
@@ -25,6 +25,12 @@ def summary_text(summary: Summary) -> str:
     """Return the summary as text, without a line end."""
     lines = [*_head(summary), *_verdicts(summary), "", *_table(summary), *_tail(summary)]
     return "\n".join(lines)
+
+
+_TOLD = (
+    "base", "zero_step", "coordinates", "displacement_scale", "remove_rigid", "rigid_to", "rigid_axis", "frame",
+    "thermal_expansion", "temperature", "reference_temperature", "alive",
+)  # fmt: skip
 
 
 def _head(summary: Summary) -> list[str]:
@@ -40,6 +46,9 @@ def _head(summary: Summary) -> list[str]:
     parts.append(f"displacement '{model.displacement.name}' ({model.displacement.why})")
     solve = "not stated" if options.solve == "unknown" else f"stated {options.solve}"
     lines = ["   ".join(parts), f"solve: {solve}   {_kind(summary)}"]
+    asked = [f"--{k.replace('_', '-')} {v}" for k, v in summary.request.items() if k in _TOLD]
+    if asked:
+        lines.append("asked: " + ", ".join(asked))
     for a in summary.agreements:
         part = f"{100 * a.difference:.2g} %" if math.isfinite(a.difference) else "everything"
         where = "cells" if a.association == "cell" else "nodes, averaged to cells"
@@ -82,8 +91,8 @@ def _verdicts(summary: Summary) -> list[str]:
         lines.append(f"  {len(shown) - _MOST_VERDICTS} more regions with smaller errors")
     if summary.finite_only:
         return [*lines, *_advice(_FINITE_ONLY[summary.options.solve])]
-    tried = [(r.region.name, r.trial) for r in shown if r.trial is not None]
-    lines += [_tried(name, trial, summary.options.solve) for name, trial in tried[:_MOST_VERDICTS]]
+    tried = [(r.region.name, trial) for r in shown[:_MOST_VERDICTS] for trial in r.trials]
+    lines += [_tried(name, trial, summary.options.solve) for name, trial in tried]
     by_action: dict[str, list[str]] = {}
     for r in shown:
         if r.verdict.action:
@@ -113,12 +122,12 @@ def _advice(sentence: str) -> list[str]:
 
 
 def _tried(region: str, trial: Trial, solve: Solve) -> str:
-    """Return what taking out the rigid motion of a region leaves, and the option that does it when that helps."""
-    helps = trial.level in ("holds", "marginal", "no strain")
+    """Return what a trial leaves, and the option that does it when that helps."""
     supposed = "" if solve == "nonlinear" else " (if the solve was nonlinear)"
-    left = f"error left {_of_its_strain(trial.left)}"
-    return f"  tried{supposed}: rigid motion of {region} taken out, {left}" + (
-        f" -> {trial.option}" if helps else ": not enough"
+    peak = "" if math.isnan(trial.peak) else f", largest equivalent {_micro(trial.peak)} microstrain"
+    left = f"error left {_of_its_strain(trial.left)}{peak}"
+    return f"  tried{supposed}: {trial.what}, {left}" + (
+        f" -> {trial.option}" if trial.helps else ": not enough"
     )
 
 
@@ -350,15 +359,18 @@ def _tail(summary: Summary) -> list[str]:
         lines.append("cell = zero-based position in the file")
     for dimension, n in summary.other_dimensions.items():
         lines.append(f"{n} cells of dimension {dimension} are computed and written, but not in this table")
-    lines += [f"note: {note}" for note in fields.model.notes]
-    lines += _beyond_linear(summary)
+    lines += [f"note: {note}" for note in fields.notes]
     lines += [f"WARNING: {warning}" for warning in summary.warnings]
     lines.append(CAUTION)
     return lines
 
 
 def _frame(fields: CellFields) -> list[str]:
-    named = {names: None for name, names in fields.components.items() if names != MEASURES[name].components}
+    named = {
+        names: None
+        for name, names in fields.components.items()
+        if name in MEASURES and names != MEASURES[name].components
+    }
     if not named:
         return []
     listed = "; ".join(", ".join(names) for names in named)
@@ -393,21 +405,6 @@ def _removed(r: Removal, extent: float) -> list[str]:
         f"  translation {_three(m.translation, extent)} of the centre {_three(m.center, extent)}; "
         f"RMS displacement left {m.residual:.3g}{other}",
     ]
-
-
-def _beyond_linear(summary: Summary) -> list[str]:
-    """Return warnings where a linearised turn stretches lengths by what the strain cannot bear."""
-    lines = []
-    for r in summary.removals:
-        turn = float(np.linalg.norm(r.motion.rotation))
-        stretched = math.hypot(1.0, turn) - 1.0
-        sizes = [s.verdict.size for s in summary.regions if r.applied in (s.region.name, "whole")]
-        if r.motion.fit == "linearised" and any(stretched > BROKEN * size > 0 for size in sizes):
-            lines.append(
-                f"WARNING: {r.applied} turns by {math.degrees(turn):.3g} degrees; in a linear solve that stretches "
-                f"lengths by {_micro(stretched)} microstrain, and taking it out does not bring the solve into range"
-            )
-    return lines[:_MOST_COLUMNS]
 
 
 def _three(values: np.ndarray, size: float) -> str:

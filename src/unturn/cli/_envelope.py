@@ -130,7 +130,7 @@ def envelope(
     threads: o.Threads = None,
 ) -> None:
     """Find the extremes of every cell over steps or load cases, and which of them made each."""
-    from unturn.cli._output import output_path
+    from unturn.cli._output import check_place, output_path
     from unturn.envelope import EnvelopeOptions
     from unturn.io import writable_suffix
     from unturn.pipeline import StrainOptions
@@ -144,7 +144,9 @@ def envelope(
         threads=threads,
     )  # fmt: skip
     files = _numbered(files) if as_series else files
-    out = output_path(files[0], output, False, writable_suffix(files[0]), "envelope")
+    check_place(None, json)
+    check_place(None, steps_output)
+    out = output_path(files[0], output, writable_suffix(files[0], _read_first(files)), "envelope")
     _check_target(out)
     states, strain, zero = _states(files, strain, combinations, as_series, keep_going, zero_step)
     options = EnvelopeOptions(
@@ -289,7 +291,7 @@ def _run(
 
 
 def _read_first(files: Sequence[Path]) -> Result:
-    """Return the first file that can be read: its mesh and arrays carry the envelope of combinations."""
+    """Return the first file that can be read: it tells what the output can hold, and carries that of combinations."""
     from unturn import io
 
     errors = []

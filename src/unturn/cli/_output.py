@@ -24,6 +24,21 @@ def write_json(data: Any, path: Path) -> None:
         work.write_text(text + "\n", encoding="utf-8")
 
 
+def check_place(picture: Path | None, data: Path | None) -> None:
+    """Refuse places for the picture and the JSON that cannot be written to, before anything is computed.
+
+    Raises
+    ------
+    UsageError
+        Not a PNG name, or a folder that does not exist.
+    """
+    if picture is not None and picture.suffix.lower() != ".png":
+        raise UsageError(f"{picture}: pictures are written as PNG; give a name that ends in .png.")
+    for path in (picture, data):
+        if path is not None and not path.parent.is_dir():
+            raise UsageError(f"{path}: there is no folder {path.parent}; make it first.")
+
+
 def _finite(data: Any) -> Any:
     if isinstance(data, dict):
         return {str(k): _finite(v) for k, v in data.items()}
@@ -34,19 +49,12 @@ def _finite(data: Any) -> Any:
     return data
 
 
-def output_path(source: Path, asked: Path | None, several: bool, suffix: str, added: str = "strain") -> Path:
-    """Return where the output of one input goes; `added` stands before the suffix of a name of ours.
+def output_path(source: Path, asked: Path | None, suffix: str, added: str = "strain") -> Path:
+    """Return where the output of one input goes: the name asked for, in the folder asked for, or beside the input.
 
-    Raises
-    ------
-    UsageError
-        Several inputs and an output that is no folder.
+    In a name of ours `added` stands before the suffix.
     """
     name = f"{source.stem}.{added}{suffix}"
     if asked is None:
         return source.with_name(name)
-    if asked.is_dir():
-        return asked / name
-    if several:
-        raise UsageError(f"-o {asked}: with several input files the output must be an existing folder.")
-    return asked
+    return asked / name if asked.is_dir() else asked

@@ -84,7 +84,7 @@ def strain(
         typer.Option(
             metavar="FRAME",
             help="Axes of the components: 'cylindrical z', 'cylindrical 0,0,1 through 10,0,0', "
-            "'cartesian 1,1,0 0,0,1', or 'arrays FIRST SECOND' (cell arrays).",
+            "'cartesian 1,1,0 0,0,1', 'surface', or 'arrays FIRST SECOND' (cell arrays).",
         ),
     ] = None,
     thermal_expansion: Annotated[
@@ -122,11 +122,11 @@ def strain(
     threads: o.Threads = None,
 ) -> None:
     """Add strain, rotation and equivalent strain to result files and say where they can be trusted."""
+    from unturn.cli._output import check_place, write_json
     from unturn.pipeline import StrainOptions
 
     job = _Job(
         output=output,
-        several=len(files) > 1,
         options=StrainOptions(
             displacement=displacement,
             measures=[m.strip() for m in measures.split(",") if m.strip()] if measures else None,
@@ -142,8 +142,11 @@ def strain(
         table=displacement_table, step=step, prefix=prefix, overwrite=overwrite, picture=picture,
         text_to_stderr=str(json) == "-",
     )  # fmt: skip
+    check_place(picture, json)
     if picture is not None and len(files) > 1:
         raise UsageError("--picture FILE.png draws one file; give one input file with it.")
+    if output is not None and len(files) > 1 and not output.is_dir():
+        raise UsageError(f"-o {output}: with several input files the output must be an existing folder.")
     data: list[dict[str, Any]] = []
     failed: list[UnturnError] = []
     for number, path in enumerate(files):
@@ -157,8 +160,6 @@ def strain(
             typer.echo(f"unturn: {error}", err=True)
             failed.append(error)
     if json is not None:
-        from unturn.cli._output import write_json
-
         write_json(data[0] if len(files) == 1 and len(data) == 1 else {"schema": "unturn.summaries/1", "results": data},
                    json)  # fmt: skip
     if failed:
@@ -169,7 +170,6 @@ def strain(
 @dataclass(frozen=True)
 class _Job:
     output: Path | None
-    several: bool
     options: StrainOptions
     zero_step: int | None
     summary: dict[str, Any]
@@ -188,8 +188,8 @@ class _Job:
         if self.step == "all" and opened.steps is not None:
             return self._series(opened, path)
         result = opened.read(chosen_step(opened, "last" if self.step == "all" else self.step))
-        result, summary = self._compute(result, self._zero(opened))
-        out = self._target(path, series=False)
+        result, summary = self._compute(result, self._zero(opened), alone=True)
+        out = self._target(path, result, series=False)
         lost = io.write(result, out)
         self._print(summary, out, lost)
         return [self._data(summary, out)]
@@ -198,7 +198,7 @@ class _Job:
         from unturn import io
 
         assert opened.steps is not None
-        out = self._target(path, series=True)
+        out = self._target(path, opened.read(0), series=True)
         data, summary = [], None
         zero = self._zero(opened)
         previous: tuple[RigidMotion, ...] = ()
@@ -226,7 +226,7 @@ class _Job:
         return opened.read(chosen_step(opened, str(self.zero_step)))
 
     def _compute(
-        self, result: Result, zero: Result | None, previous: tuple[RigidMotion, ...] = ()
+        self, result: Result, zero: Result | None, previous: tuple[RigidMotion, ...] = (), alone: bool = False
     ) -> tuple[Result, Summary]:
         from unturn._api import add_fields
         from unturn.pipeline import compute
@@ -239,14 +239,16 @@ class _Job:
             result = attach_displacement_table(result, read_displacement_table(self.table))
             options = replace(options, displacement=options.displacement or "displacement")
         computed = compute(result, options, zero=zero, diagnose=True, previous=previous)
+        if alone:  # of a series, one such step is no reason to lose the others
+            computed.require_some()
         summary = summarise(computed, SummaryOptions(**self.summary), threads=options.threads)
         return add_fields(result, computed, prefix=self.prefix, overwrite=self.overwrite), summary
 
-    def _target(self, path: Path, series: bool) -> Path:
+    def _target(self, path: Path, result: Result, series: bool) -> Path:
         from unturn.cli._output import output_path
         from unturn.io import writable_suffix
 
-        return output_path(path, self.output, self.several, writable_suffix(path, series=series))
+        return output_path(path, self.output, writable_suffix(path, result, series=series))
 
     def _print(self, summary: Summary, out: Path, lost: tuple[str, ...]) -> None:
         from unturn.summary_text import summary_text

@@ -10,6 +10,7 @@ from typing import Any
 
 from unturn.errors import InputError, UsageError, close_matches
 from unturn.io._format import Format
+from unturn.result import Result
 
 
 def _call(module: str, function: str, *extra: Any) -> Callable[..., Any]:
@@ -184,13 +185,17 @@ def _listing(formats: tuple[Format, ...] | list[Format]) -> str:
     return ", ".join(f"{f.name} ({' '.join(f.suffixes)})" for f in formats)
 
 
-def writable_suffix(path: Path, *, series: bool = False) -> str:
+def writable_suffix(path: Path, result: Result, *, series: bool = False) -> str:
     """Return the suffix of a new file for a result read from `path`: its own where that can be written.
 
-    A single step of a format that is only a series, or a format that is only read, goes to ``.vtu``; a series to
-    ``.xdmf``.
+    A format that is only read, a single step of a format that is only a series, and cells that XDMF has no name for, go to
+    ``.vtu``, a series of them to ``.pvd``; other series to ``.xdmf``.
     """
     fmt = _BY_SUFFIX.get(path.suffix.lower())
+    suffix = ".xdmf" if series else ".vtu"
     if fmt is not None and (fmt.write_series if series else fmt.write) is not None:
-        return path.suffix
-    return ".xdmf" if series else ".vtu"
+        suffix = path.suffix
+    nameless = any(b.cell_type.startswith(("VTK_", "polyhedron")) for b in result.blocks)
+    if nameless and _BY_SUFFIX.get(suffix.lower()) is _BY_NAME["XDMF"]:
+        return ".pvd" if series else ".vtu"
+    return suffix

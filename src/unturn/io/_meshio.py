@@ -27,6 +27,7 @@ from unturn.io._node_order import checked_order
 from unturn.result import Array, CellBlock, Result
 
 _LINEAR = ("vertex", "line", "triangle", "quad", "tetra", "pyramid", "wedge", "hexahedron")
+_FULL = ("quad9", "wedge18", "hexahedron27")
 _QUADRATIC = ("line3", "triangle6", "quad8", "tetra10", "pyramid13", "wedge15", "hexahedron20")
 
 
@@ -43,8 +44,8 @@ class _Line:
 # Measured with meshio 5.3.5: round trip of each cell type with a nodal vector, node places compared.
 READ: dict[str, _Line] = {
     ".avs": _Line("AVS-UCD", "avsucd", _LINEAR, True),
-    ".med": _Line("MED", "med", (*_LINEAR, *_QUADRATIC), True),
-    ".hmf": _Line("HMF", "hmf", (*_LINEAR, *_QUADRATIC, "quad9", "wedge18", "hexahedron27"), True),
+    ".med": _Line("MED", "med", (*_LINEAR, *_QUADRATIC, *_FULL, "triangle7"), True),
+    ".hmf": _Line("HMF", "hmf", (*_LINEAR, *_QUADRATIC, *_FULL), True),
     ".inp": _Line(
         "INP", "abaqus",
         ("line", "triangle", "quad", "tetra", "wedge", "hexahedron", "line3", "triangle6", "quad8", "tetra10",
@@ -127,11 +128,12 @@ class MeshioFile:
 
     def _result(self, mesh: Any) -> Result:
         points = np.asarray(mesh.points)
-        if points.ndim != 2 or points.shape[1] not in (2, 3):
+        if points.ndim != 2 or points.shape[1] not in (1, 2, 3):
             raise InputError(f"{self.path}: the points have the shape {points.shape}; the file is damaged.")
-        dimension = points.shape[1]
-        if dimension == 2:
-            points = np.column_stack([points, np.zeros(len(points), points.dtype)])
+        dimension = max(2, points.shape[1])
+        if points.shape[1] < 3:
+            missing = np.zeros((len(points), 3 - points.shape[1]), points.dtype)
+            points = np.column_stack([points, missing])
         blocks = _blocks(mesh, len(points), self.path)
         blocks, notes = checked_order(points, blocks, f"{self.path}: ")
         point_data = {name: _flat(np.asarray(v)) for name, v in mesh.point_data.items()}
@@ -165,10 +167,19 @@ class MeshioFile:
 def _read_quietly(path: Path, line: _Line) -> Any:
     import meshio
     from meshio._mesh import topological_dimension
+    from meshio.med._med import med_to_meshio_type
 
     # meshio knows how many nodes these have and not their dimension, without which it holds them not.
     for cell_type, dimension in (("wedge15", 3), ("pyramid13", 3), ("triangle7", 2)):
         topological_dimension.setdefault(cell_type, dimension)
+    # Source: MED 4.2, med_geometry_type, and the group names of its files: the quadratic cells meshio leaves out.
+    for med_name, cell_type in (
+        ("TR7", "triangle7"),
+        ("QU9", "quad9"),
+        ("P18", "wedge18"),
+        ("H27", "hexahedron27"),
+    ):
+        med_to_meshio_type.setdefault(med_name, cell_type)
     if not path.is_file():
         raise InputError(f"{path}: there is no such file.")
     heard = io.StringIO()

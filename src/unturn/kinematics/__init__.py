@@ -4,9 +4,14 @@
 """
 
 from unturn.kinematics._public import (
+    almansi_strain,
+    biot_strain,
+    det_f,
     deviatoric_strain,
     equivalent_strain,
+    finite_rotation,
     green_lagrange_strain,
+    hencky_strain,
     max_shear_strain,
     principal_strain,
     rotation_angle,
@@ -20,9 +25,14 @@ from unturn.kinematics._public import (
 )
 
 __all__ = [
+    "almansi_strain",
+    "biot_strain",
+    "det_f",
     "deviatoric_strain",
     "equivalent_strain",
+    "finite_rotation",
     "green_lagrange_strain",
+    "hencky_strain",
     "max_shear_strain",
     "principal_strain",
     "rotation_angle",

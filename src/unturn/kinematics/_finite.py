@@ -86,14 +86,13 @@ class Finite:
             few = np.flatnonzero(1.0 + 2.0 * values[2] < _FLATTENED)
         if not len(few):
             return values, directions, few, np.zeros((3, 0)), np.zeros((3, 3, 0))
-        F = np.moveaxis(self.H[:, :, few], -1, 0) + np.eye(3)
-        left, stretch, right = np.linalg.svd(F)
-        values[:, few] = (0.5 * (stretch - 1.0) * (stretch + 1.0)).T
-        turned = np.moveaxis(right, 0, -1).copy()
+        with np.errstate(invalid="ignore", over="ignore", divide="ignore"):
+            stretch, turned, turn = _singular(self.H[:, :, few], directions[:, :, few])
+        values[:, few] = 0.5 * (stretch - 1.0) * (stretch + 1.0)
         for k in range(3):
             turned[k] *= leading_sign(turned[k])
         directions[:, :, few] = turned
-        return values, directions, few, stretch.T, np.moveaxis(left @ right - np.eye(3), 0, -1)
+        return values, directions, few, stretch, turn
 
     @cached_property
     def _logarithms(self) -> Floats:
@@ -217,3 +216,41 @@ class Finite:
         clear = np.abs(along) > _HALF_TURN
         signed: Floats = axis * np.where(clear, np.copysign(1.0, along), leading_sign(axis))
         return signed
+
+
+def _dot(a: Floats, b: Floats) -> Floats:
+    result: Floats = a[0] * b[0] + a[1] * b[1] + a[2] * b[2]
+    return result
+
+
+def _singular(H: Floats, right: Floats) -> tuple[Floats, Floats, Floats]:
+    """Return singular values of F `(3, m)`, largest first, right directions `(3, 3, m)`, and R - I.
+
+    Notes
+    -----
+    One-sided Jacobi rotations (Hestenes 1958) make the columns `F v_k` orthogonal, all matrices at once. They start from
+    the eigenvectors of E, which are right but for the two smallest among themselves: one sweep after that pair is enough.
+    The third left direction is the one across the two others: R is a rotation however short the third column is.
+    """
+    right = right.copy()
+    F = H + np.eye(3)[:, :, None]
+    left = np.stack([F[:, 0] * v[0] + F[:, 1] * v[1] + F[:, 2] * v[2] for v in right])
+    for p, q in ((1, 2), (0, 1), (0, 2), (1, 2)):
+        a, b, c = (_dot(left[i], left[j]) for i, j in ((p, p), (q, q), (p, q)))
+        ratio = (b - a) / (2.0 * c)
+        tangent = np.where(c == 0, 0.0, np.copysign(1.0, ratio) / (np.abs(ratio) + np.hypot(1.0, ratio)))
+        cosine = 1.0 / np.hypot(1.0, tangent)
+        for d in (left, right):
+            d[p], d[q] = cosine * (d[p] - tangent * d[q]), cosine * (d[q] + tangent * d[p])
+    stretch = np.stack([length(d) for d in left])
+    order = np.argsort(-stretch, axis=0)
+    stretch = np.take_along_axis(stretch, order, axis=0)
+    left, right = (np.take_along_axis(d, order[:, None], axis=0) for d in (left, right))
+    first = left[0] / stretch[0]
+    second = left[1] / stretch[1]
+    second -= _dot(first, second) * first
+    second /= length(second)
+    hand = np.copysign(1.0, _dot(np.cross(right[0], right[1], axis=0), right[2]))
+    across = np.cross(first, second, axis=0) * hand
+    turn = sum(u[:, None] * v[None] for u, v in zip((first, second, across), right)) - np.eye(3)[:, :, None]
+    return stretch, right, turn

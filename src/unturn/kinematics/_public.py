@@ -9,6 +9,7 @@ from numpy.typing import ArrayLike, NDArray
 
 from unturn.errors import UsageError
 from unturn.kinematics import _motion, _symmetric, _turning
+from unturn.kinematics._finite import Finite
 from unturn.kinematics._symmetric import Floats
 
 
@@ -197,3 +198,52 @@ def tensor_from_components(components: ArrayLike) -> Floats:
         raise UsageError(f"expected an array of shape (..., 6), got {array.shape}.")
     batch = array.shape[:-1]
     return _last(_symmetric.full_from_six(np.moveaxis(array.reshape(-1, 6), 0, -1)), batch)
+
+
+def hencky_strain(H: ArrayLike) -> Floats:
+    """Return the Hencky (logarithmic) strain `ln U`, `(..., 3, 3)`, dimensionless; NaN where `det F` is not positive.
+
+    Notes
+    -----
+    Holzapfel 2000, Nonlinear Solid Mechanics, section 2.6.
+
+    Examples
+    --------
+    >>> import numpy as np
+    >>> hencky_strain(np.diag([1.0, 0.0, 0.0]))[0, 0].round(6)
+    np.float64(0.693147)
+    """
+    array, batch = _first(H)
+    return _last(_symmetric.full_from_six(Finite(array).hencky), batch)
+
+
+def biot_strain(H: ArrayLike) -> Floats:
+    """Return the Biot strain `U - I`, `(..., 3, 3)`, dimensionless; NaN where `det F` is not positive."""
+    array, batch = _first(H)
+    return _last(_symmetric.full_from_six(Finite(array).biot), batch)
+
+
+def almansi_strain(H: ArrayLike) -> Floats:
+    """Return the Almansi strain `F^-T E F^-1`, `(..., 3, 3)`, dimensionless; NaN where `det F` is not positive."""
+    array, batch = _first(H)
+    return _last(_symmetric.full_from_six(Finite(array).almansi), batch)
+
+
+def finite_rotation(H: ArrayLike) -> Floats:
+    """Return the rotation vector of R in `F = R U`, `(..., 3)`, radians: angle in [0, pi] times axis.
+
+    Examples
+    --------
+    A quarter turn about z:
+
+    >>> finite_rotation([[-1, -1, 0], [1, -1, 0], [0, 0, 0]]).round(6)
+    array([0.      , 0.      , 1.570796])
+    """
+    array, batch = _first(H)
+    return _last(Finite(array).rotation, batch)
+
+
+def det_f(H: ArrayLike) -> Floats:
+    """Return the determinant of `F = I + H`, `(...)`: deformed over undeformed volume."""
+    array, batch = _first(H)
+    return _last(Finite(array).det_f, batch)
