@@ -264,7 +264,7 @@ class _Run:
         self._take(fields, changed, number)
         self._judge(d, number)
         self._left_out(fields)
-        fresh = np.isnan(self.volume)
+        fresh = np.isnan(self.volume) & np.isfinite(d.stretch)
         self.volume[fresh], self.centroid[fresh] = d.volume[fresh], d.centroid[fresh]
         if self.each is not None:
             names = {n: self.components[n] for n in changed if n in self.components}
