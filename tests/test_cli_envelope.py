@@ -181,7 +181,7 @@ def test_json_on_the_standard_output(desk: Path, capsys: pytest.CaptureFixture[s
         ("run.xdmf --steps-output s.xdmf", 2, "no measure of a series"),
         ("run.xdmf --steps-output s.msh --measures spin", 2, "s.msh"),
         ("dead.vtu wind.vtu --as-series", 2, "holds no number"),
-        ("run.xdmf --base hencky --solve linear", 2, "is fiction"),
+        ("run.xdmf --base hencky --solve linear", 2, "are fiction"),
         ("run.xdmf --region roof", 2, "no region is called 'roof'"),
         ("run.xdmf --alive status", 2, "no cell array is called 'status'"),
         ("run.xdmf --zero-step 9", 2, "--step 9 does not exist"),

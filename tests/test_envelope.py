@@ -244,6 +244,26 @@ def test_a_flat_mesh_keeps_its_kind() -> None:
         envelope(states, EnvelopeOptions(StrainOptions(measures=["strain"])))
 
 
+@pytest.mark.practice("nothing computed is no envelope")
+def test_nothing_computed_is_refused() -> None:
+    with pytest.raises(
+        InputError, match=r"no cell could be computed in any step: \d+ displacement not finite"
+    ):
+        run([np.full_like(MESH.points, np.nan)] * 2, ["strain"])
+
+
+@pytest.mark.practice("a cell that is broken in the first step counts in the others")
+def test_cells_that_the_first_step_cannot_compute_belong_to_their_region() -> None:
+    steps = random_steps(3)
+    steps[0][MESH.cells[0]] = np.nan
+    found = run(steps, ["equivalent_strain"])
+    assert found.left_out == {}
+    assert [len(j.region.cells) for j in found.judged] == [len(MESH.cells)]
+    assert np.isfinite(found.volume).all()
+    assert found.arrays["equivalent_strain_maximum_step"][0] > 0
+    assert found.arrays["strain_range_equivalent_first_step"][0] == 1
+
+
 @pytest.mark.derived("the worst verdict of a region is that of the step that turns most")
 def test_the_worst_verdict_over_the_steps_is_kept() -> None:
     steps = [

@@ -247,6 +247,7 @@ class _Run:
         self.failures: dict[int, UnturnError] = {}
         self.left_out: dict[str, NDArray[np.int64]] = {}
         self.notes: list[str] = list(self.plan.notes)
+        self.said: tuple[str, ...] = ()
 
     def add(self, state: State, number: int) -> None:
         options = replace(self.options.strain, measures=self.plan.needs, base="small")
@@ -263,14 +264,14 @@ class _Run:
         self._take(fields, changed, number)
         self._judge(d, number)
         self._left_out(fields)
-        fresh = np.isnan(self.volume)
+        fresh = np.isnan(self.volume) & np.isfinite(d.stretch)
         self.volume[fresh], self.centroid[fresh] = d.volume[fresh], d.centroid[fresh]
         if self.each is not None:
             names = {n: self.components[n] for n in changed if n in self.components}
             self.each(
                 CellFields(fields.model, dict(changed), names), number if state.time is None else state.time
             )
-        self.model = fields.model
+        self.model, self.said = fields.model, fields.notes
         self.previous = tuple(r.motion for r in computed.removals)
 
     def _begin(self, fields: CellFields, d: CellDiagnostics) -> None:
@@ -279,7 +280,7 @@ class _Run:
         dimension = np.zeros(n, dtype=np.int8)
         for block in model.blocks:
             dimension[block.cells.index] = 0 if block.row is None else block.row.dim
-        for reason, cells in fields.left_out.items():
+        for reason, cells in model.left_out.items():
             if reason != "deleted":  # it may be alive in another step
                 dimension[cells] = 0
         names = self.options.regions
@@ -353,6 +354,12 @@ class _Run:
 
     def finish(self, states: tuple[State, ...]) -> Envelope:
         assert self.model is not None
+        if np.isnan(self.volume).all():
+            reasons = ", ".join(f"{len(cells)} {reason}" for reason, cells in self.left_out.items())
+            raise InputError(
+                f"no cell could be computed in any {self.options.kind}: {reasons}. Look at the displacement and the mesh "
+                "with 'unturn survey'."
+            )
         kind = self.options.kind
         arrays: dict[str, Stored] = {}
         components: dict[str, tuple[str, ...]] = {}
@@ -377,6 +384,6 @@ class _Run:
             tracked.append(Tracked(name, name, "maximum", made_by))
         return Envelope(
             self.options, states, self.model, arrays, components, tuple(tracked), tuple(self.judged), self.volume,
-            self.centroid, self.left_out, self.failures, tuple(self.notes),
+            self.centroid, self.left_out, self.failures, (*self.said, *self.notes),
             element_numbers(self.model.result),
         )  # fmt: skip

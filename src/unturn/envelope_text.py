@@ -92,7 +92,7 @@ def envelope_data(envelope: Envelope, files: Sequence[str]) -> dict[str, Any]:
         "arrays": list(envelope.arrays),
         "regions": [_region_data(envelope, r) for r in envelope.judged],
         "left_out": {reason: len(cells) for reason, cells in envelope.left_out.items()},
-        "notes": [*envelope.model.notes, *envelope.notes],
+        "notes": list(envelope.notes),
         "units": {"strain": "1", "rotation": "radian", "rate": "1 / time of the file", "volume": "length of the file"},
         "caution": CAUTION,
     }  # fmt: skip
@@ -276,6 +276,6 @@ def _tail(envelope: Envelope) -> list[str]:
     numbers = envelope.numbers
     of = f"element numbers are those of '{numbers.name}'; " if numbers is not None else ""
     lines.append(f"{of}cell = zero-based position in the file")
-    lines += [f"note: {note}" for note in (*envelope.model.notes, *envelope.notes)]
+    lines += [f"note: {note}" for note in envelope.notes]
     lines.append(CAUTION)
     return lines

@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 from unturn.errors import UsageError, close_matches
 from unturn.kinematics._finite import BASES
 from unturn.kinematics._symmetric import Floats
-from unturn.measures import GEOMETRY, MEASURES, choose_measures
+from unturn.measures import GEOMETRY, MEASURES, SURFACE_AXES, choose_measures
 from unturn.series import SERIES_MEASURES, StepChanges
 
 Kind = Literal["step", "case"]
@@ -86,7 +86,7 @@ def plan_envelope(asked: Sequence[str] | None, base: str, changes: StepChanges, 
     """
     own = None if asked is None else [n for n in asked if n not in SERIES_MEASURES]
     for name in own or ():
-        if name not in MEASURES and name not in GEOMETRY and name != "all":
+        if name not in (*MEASURES, *GEOMETRY, *SURFACE_AXES, "all"):
             known = [*MEASURES, *SERIES_MEASURES]
             raise UsageError(
                 f"no measure is called {name!r}.{close_matches(name, known)} Measures: those of 'unturn strain', and of a "
@@ -94,7 +94,7 @@ def plan_envelope(asked: Sequence[str] | None, base: str, changes: StepChanges, 
             )
     chosen = choose_measures(own, base) if own is None or own else ()
     for name in own or ():
-        if name in GEOMETRY or name.startswith("principal_direction"):
+        if name in (*GEOMETRY, *SURFACE_AXES) or name.startswith("principal_direction"):
             raise UsageError(
                 f"{name} has no largest value. The directions of the extreme principal values are written with "
                 "principal_strain; ask for that."

@@ -52,6 +52,7 @@ def convergence(
     threads: o.Threads = None,
 ) -> None:
     """Follow quantities over three meshes: observed order, extrapolated value, grid convergence index."""
+    from unturn.cli._output import check_place, write_json
     from unturn.convergence_text import refinement, refinement_data, refinement_text
     from unturn.pipeline import StrainOptions
     from unturn.quantities import FORMS, parse_quantity
@@ -60,6 +61,7 @@ def convergence(
         raise UsageError(f"say what is to be followed over the meshes with --quantity: {FORMS}.")
     if step == "all":
         raise UsageError("--step all: a refinement study follows one step; give its number or 'last'.")
+    check_place(None, json)
     quantities = [parse_quantity(text) for text in quantity]
     options = StrainOptions(
         displacement=displacement, measures=sorted({q.measure.name for q in quantities}), at=at.value,
@@ -71,8 +73,6 @@ def convergence(
     found = refinement(meshes, quantities, list(zip(*by_mesh)))
     typer.echo(refinement_text(found), err=str(json) == "-")
     if json is not None:
-        from unturn.cli._output import write_json
-
         write_json(refinement_data(found), json)
     if found.undecided:
         n = len(quantities)

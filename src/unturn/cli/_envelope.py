@@ -6,6 +6,7 @@ import contextlib
 import os
 import re
 from collections.abc import Callable, Sequence
+from functools import partial
 from pathlib import Path
 from typing import TYPE_CHECKING, Annotated, cast
 
@@ -17,7 +18,6 @@ from unturn.errors import UnturnError, UsageError
 if TYPE_CHECKING:
     from unturn.envelope import Envelope, EnvelopeOptions, State
     from unturn.fields import CellFields
-    from unturn.io import ResultFile
     from unturn.pipeline import StrainOptions
     from unturn.result import Result
 
@@ -130,7 +130,7 @@ def envelope(
     threads: o.Threads = None,
 ) -> None:
     """Find the extremes of every cell over steps or load cases, and which of them made each."""
-    from unturn.cli._output import output_path
+    from unturn.cli._output import check_place, output_path
     from unturn.envelope import EnvelopeOptions
     from unturn.io import writable_suffix
     from unturn.pipeline import StrainOptions
@@ -144,7 +144,9 @@ def envelope(
         threads=threads,
     )  # fmt: skip
     files = _numbered(files) if as_series else files
-    out = output_path(files[0], output, writable_suffix(files[0]), "envelope")
+    check_place(None, json)
+    check_place(None, steps_output)
+    out = output_path(files[0], output, writable_suffix(files[0], _read_first(files)), "envelope")
     _check_target(out)
     states, strain, zero = _states(files, strain, combinations, as_series, keep_going, zero_step)
     options = EnvelopeOptions(
@@ -233,39 +235,24 @@ def _of_file(path: Path, several: bool, as_case: bool, keep_going: bool) -> list
     except UnturnError as error:
         if not keep_going:
             raise
-        return [State(path.stem if as_case else path.name, _fails(error))]
+        return [State(path.stem if as_case else path.name, partial(_fail, error))]
     if opened.steps is None:
-        return [State(path.stem if as_case else path.name, _reads(opened, 0))]
+        return [State(path.stem if as_case else path.name, partial(opened.read, 0))]
     number = "{0}:{1}" if as_case else "{0} step {1}" if several else "step {1}"
     alone = len(opened.steps) == 1 and as_case
     return [
         State(
             path.stem if alone else number.format(path.stem if as_case else path.name, k),
-            _reads(opened, k),
+            partial(opened.read, k),
             time,
         )
         for k, time in enumerate(opened.steps)
     ]
 
 
-class _reads:
-    """Reads one step when called."""
-
-    def __init__(self, opened: ResultFile, step: int) -> None:
-        self._opened, self._step = opened, step
-
-    def __call__(self) -> Result:
-        return self._opened.read(self._step)
-
-
-class _fails:
-    """Stands for a file that could not be opened."""
-
-    def __init__(self, error: UnturnError) -> None:
-        self._error = error
-
-    def __call__(self) -> Result:
-        raise self._error
+def _fail(error: UnturnError) -> Result:
+    """Stand for a file that could not be opened."""
+    raise error
 
 
 def _run(
@@ -304,7 +291,7 @@ def _run(
 
 
 def _read_first(files: Sequence[Path]) -> Result:
-    """Return the first file that can be read: its mesh and arrays carry the envelope of combinations."""
+    """Return the first file that can be read: it tells what the output can hold, and carries that of combinations."""
     from unturn import io
 
     errors = []

@@ -52,7 +52,7 @@ def _finite(data: Any) -> Any:
 def output_path(source: Path, asked: Path | None, suffix: str, added: str = "strain") -> Path:
     """Return where the output of one input goes: the name asked for, in the folder asked for, or beside the input.
 
-    `added` stands before the suffix of a name of ours.
+    In a name of ours `added` stands before the suffix.
     """
     name = f"{source.stem}.{added}{suffix}"
     if asked is None:
