@@ -24,7 +24,9 @@ def elasticity(young: float, poisson: float, dim: int, plane: str = "strain") ->
     )
 
 
-def solve(mesh: meshes.Mesh, C: Floats, fixed: dict[int, tuple[Floats, Floats]], load: Floats | None = None) -> Floats:
+def solve(
+    mesh: meshes.Mesh, C: Floats, fixed: dict[int, tuple[Floats, Floats]], load: Floats | None = None
+) -> Floats:
     """Return nodal displacements ``(n_points, 3)``.
 
     `fixed` maps a direction to positions of nodes and their displacement; `load` holds forces at nodes.

@@ -63,17 +63,23 @@ class TestExact:
     @pytest.mark.parametrize("name", ["triangle", "quad8", "tetra", "tetra10", "hexahedron", "hexahedron20"])
     def test_thin_cells_far_from_the_origin(self, name: str) -> None:
         mesh = block(ELEMENTS[name], 3, 0.2)
-        mesh = mesh._replace(points=mesh.points * ([1.0, 1e-4, 1.0] if mesh.element.dim == 3 else [1, 1e-4, 0]))
+        mesh = mesh._replace(
+            points=mesh.points * ([1.0, 1e-4, 1.0] if mesh.element.dim == 3 else [1, 1e-4, 0])
+        )
         shares, samples = prescribed(mesh)
         x = (samples.x + samples.origin[:, None]) * np.array([[1.0], [1e4], [1.0]])
         found = recover_samples(shares, replace(samples, H=linear(x.T)))
         np.testing.assert_allclose(found.H.reshape(9, -1), linear(mesh.points * [1, 1e4, 1]), atol=1e-8)
-        far = recover_samples(*prescribed(block(ELEMENTS[name], 3, 0.2), 5e5 if mesh.element.dim == 3 else 0.0))
+        far = recover_samples(
+            *prescribed(block(ELEMENTS[name], 3, 0.2), 5e5 if mesh.element.dim == 3 else 0.0)
+        )
         near = linear(block(ELEMENTS[name], 3, 0.2).points)
         np.testing.assert_allclose(far.H.reshape(9, -1), near, atol=1e-8)  # positions hold 6e-11
 
     @pytest.mark.derived("a displacement that the element holds has the exact gradient at every point")
-    @pytest.mark.parametrize("row", [r for r in ROWS if r.order > 1], ids=[n for r, n in zip(ROWS, NAMES) if r.order > 1])
+    @pytest.mark.parametrize(
+        "row", [r for r in ROWS if r.order > 1], ids=[n for r, n in zip(ROWS, NAMES) if r.order > 1]
+    )
     def test_quadratic_displacement(self, row: Element) -> None:
         mesh = block(row, 3)
         shear = np.eye(3)
@@ -108,7 +114,9 @@ class TestExact:
         found = recover_samples(node_shares(model, one_group(model)), replace(samples, H=H))
         np.testing.assert_allclose(found.H.reshape(9, -1), linear(mesh.points), atol=1e-11)
 
-    @pytest.mark.derived("averages keep a constant; least squares through a linear field extrapolate it exactly")
+    @pytest.mark.derived(
+        "averages keep a constant; least squares through a linear field extrapolate it exactly"
+    )
     @pytest.mark.parametrize("row", ROWS, ids=NAMES)
     def test_extrapolation_of_an_element(self, row: Element) -> None:
         table = extrapolation(row)
@@ -217,7 +225,9 @@ class TestCoincident:
         points = np.concatenate([mesh.points, mesh.points[at]])
         moved = np.concatenate([u, u[at]])
         moved[np.concatenate([points[: len(u), 0] > 0.6, np.ones(len(at), dtype=bool)])] += [0.1, 0, 0]
-        found = recover_gradient(model_of(mesh._replace(points=points, cells=cells), moved), np.zeros(64, dtype=int))
+        found = recover_gradient(
+            model_of(mesh._replace(points=points, cells=cells), moved), np.zeros(64, dtype=int)
+        )
         assert found.shares.merged == 0
         assert found.shares.apart == len(at)
         assert found.H[0, 0, at] == pytest.approx(1e-3)
@@ -245,7 +255,9 @@ class TestOddCells:
         skin = CellBlock("quad", bottom, np.arange(8, 12))
         both = Result(points, (solid, skin), point_data={"u": u})
         found = recover_gradient(build_model(both), np.arange(12) // 8)
-        alone = recover_gradient(build_model(Result(points, (solid,), point_data={"u": u})), np.zeros(8, dtype=int))
+        alone = recover_gradient(
+            build_model(Result(points, (solid,), point_data={"u": u})), np.zeros(8, dtype=int)
+        )
         np.testing.assert_array_equal(found.H, alone.H)
         assert np.isnan(found.H[..., -1]).all()
         assert np.isnan(found.jump[-1])
@@ -260,7 +272,9 @@ class TestOddCells:
         lines = CellBlock("line", np.array([[end, n], [n, n + 1]]), np.array([8, 9]))
         u = points * [1e-3, 0, 0]
         u[n:, 0] += [0.01, 0.02]
-        result = Result(points, (CellBlock("hexahedron", mesh.cells, np.arange(8)), lines), point_data={"u": u})
+        result = Result(
+            points, (CellBlock("hexahedron", mesh.cells, np.arange(8)), lines), point_data={"u": u}
+        )
         found = recover_gradient(build_model(result), np.zeros(10, dtype=int))
         assert found.H[0, 0, :n] == pytest.approx(1e-3)
         assert found.H[0, 0, n:] == pytest.approx(0.021)

@@ -52,7 +52,9 @@ def test_corners_inside_a_structured_mesh(name: str) -> None:
     n = np.array(SIZES[row.dim])
     found = np.array([errors(block(row, int(k)), int(k)) for k in n])
     rates = np.log(found[:-1, :2] / found[1:, :2]) / np.log(n[1:] / n[:-1])[:, None]
-    table = "\n".join(f"n={k:3d} raw {r:.3e} corners {c:.3e} between {b:.3e}" for k, (r, c, b) in zip(n, found))
+    table = "\n".join(
+        f"n={k:3d} raw {r:.3e} corners {c:.3e} between {b:.3e}" for k, (r, c, b) in zip(n, found)
+    )
     table += f"\norders\n{rates.round(2)}"
     assert abs(rates[-1, 0] - row.order) < 0.4, table
     assert rates[-1, 1] > row.order + 0.85, table
@@ -126,7 +128,10 @@ class TestSheets:
         if parts == 2:
             assert np.unique(np.stack([found, side]), axis=1).shape[1] == 2
         assert len(np.unique(sheets(build_model(result), side))) == 2
-        assert len(np.unique(sheets(build_model(result), one_group(build_model(result)), angle=degrees + 2))) == 1
+        assert (
+            len(np.unique(sheets(build_model(result), one_group(build_model(result)), angle=degrees + 2)))
+            == 1
+        )
 
     def test_values_on_both_sides_of_a_fold(self) -> None:
         result, side = self.folded(90)
@@ -140,7 +145,10 @@ class TestSheets:
 
     @pytest.mark.derived("a smooth cylinder of few curved cells has no fold")
     def test_coarse_curved_cells_are_not_cut(self) -> None:
-        for name, parts in (("quad9", 1), ("quad", 4)):  # 45 degrees from the middle of a cell to that of the next
+        for name, parts in (
+            ("quad9", 1),
+            ("quad", 4),
+        ):  # 45 degrees from the middle of a cell to that of the next
             mesh = block(ELEMENTS[name], 4)
             angle = np.pi * mesh.points[:, 0]
             mesh = mesh._replace(points=np.stack([np.cos(angle), mesh.points[:, 1], np.sin(angle)], 1))
