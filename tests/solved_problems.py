@@ -85,3 +85,42 @@ def pressed(name: str, n: int) -> tuple[meshes.Mesh, Floats]:
     force[np.abs(x - place).sum(axis=1).argmin(), dim - 1] = 1.0
     C = elasticity(YOUNG, NU, dim, "stress")
     return mesh, solve(mesh, C, {d: (base, 0.0 * base) for d in range(dim)}, force)
+
+
+def sphere(name: str, n: int) -> tuple[meshes.Mesh, Floats, float]:
+    """A sector of a hollow sphere, radii 1 to 2, with `u_r = A r + B / r^2`; and the hoop strain at the bore, A + B.
+
+    Source: Lame; Timoshenko and Goodier, article 136.
+    """
+    mesh = unit_grid(name, n)
+    s = mesh.points
+    direction = np.column_stack([np.ones(len(s)), (2 * s[:, 1:] - 1) * np.tan(np.pi / 6)])
+    direction /= np.linalg.norm(direction, axis=1)[:, None]
+    r = 1 + s[:, 0]
+    exact = direction * (1e-4 * r + 1e-3 / r**2)[:, None]
+    mesh = mesh._replace(points=direction * r[:, None])
+    return mesh, _held_all_round(mesh, s, exact), 1.1e-3
+
+
+def ring(name: str, n: int) -> tuple[meshes.Mesh, Floats, float]:
+    """A sector of a ring, radii 1 to 1.5, pressed and twisted: `u_r = a / r + b r`, `u_t = c / r`; and the peak.
+
+    Source: Lame; Timoshenko and Goodier, articles 28 and 43: at r = 1 the strain is
+    `e_rr = b - a, e_tt = a + b, e_rt = -c`.
+    """
+    mesh = unit_grid(name, n)
+    s = mesh.points
+    r, angle = 1 + 0.5 * s[:, 0], np.pi / 3 * s[:, 1]
+    a, b, c = 1e-3, 2e-4, 5e-4
+    radial_, around = a / r + b * r, c / r
+    cos, sin = np.cos(angle), np.sin(angle)
+    exact = np.stack([radial_ * cos - around * sin, radial_ * sin + around * cos, 0 * r], 1)
+    mesh = mesh._replace(points=np.stack([r * cos, r * sin, 0 * r], 1))
+    peak = np.linalg.eigvalsh(np.array([[b - a, -c], [-c, a + b]]))[-1]
+    return mesh, _held_all_round(mesh, s, exact), float(peak)
+
+
+def _held_all_round(mesh: meshes.Mesh, s: Floats, exact: Floats) -> Floats:
+    dim = mesh.element.dim
+    border = np.flatnonzero((np.abs(s[:, :dim] - 0.5) > 0.5 - 1e-9).any(axis=1))
+    return solve(mesh, elasticity(YOUNG, NU, dim), {k: (border, exact[border, k]) for k in range(dim)})

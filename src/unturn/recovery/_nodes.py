@@ -10,6 +10,7 @@ from numpy.typing import NDArray
 from scipy import sparse
 
 from unturn.errors import UsageError
+from unturn.kinematics._symmetric import Floats
 from unturn.model import Model
 from unturn.regions import merge_coincident
 
@@ -183,7 +184,7 @@ def _coincident(model: Model, node: NDArray[np.int32]) -> tuple[Ints, float, int
     used[node] = True
     where = np.flatnonzero(used)
     label = np.arange(len(model.points))
-    same, tolerance = merge_coincident(model.points[where])
+    same, tolerance = _merged(model.points[where])
     several = np.flatnonzero((np.bincount(same, minlength=len(where)) > 1)[same])
     if not len(several):
         return label, tolerance, 0
@@ -193,7 +194,19 @@ def _coincident(model: Model, node: NDArray[np.int32]) -> tuple[Ints, float, int
     size = float(np.ptp(u[known], axis=0).max(initial=0.0)) if known.any() else 0.0
     _, first, place = np.unique(same, return_index=True, return_inverse=True)
     # places by number and displacements, each as a share of their range: equal within a billionth of it
-    together, _ = merge_coincident(np.column_stack([place / len(first), u / size if size > 0 else u]))
+    together, _ = _merged(np.column_stack([place / len(first), u / size if size > 0 else u]))
     label[where] = where[together]
     apart = known & (label[where] != where[first][place])
     return label, tolerance, int(apart.sum())
+
+
+def _merged(values: Floats) -> tuple[Ints, float]:
+    """Return what `merge_coincident` does, equal rows first: of a node written once per element that leaves one."""
+    order = np.lexsort(values.T)
+    fresh = np.ones(len(order), dtype=bool)
+    fresh[1:] = (values[order[1:]] != values[order[:-1]]).any(axis=1)
+    first = np.empty(len(order), dtype=np.int64)
+    first[order] = order[fresh][np.cumsum(fresh) - 1]
+    distinct = np.unique(first)
+    label, tolerance = merge_coincident(values[distinct])
+    return distinct[label][np.searchsorted(distinct, first)], tolerance
