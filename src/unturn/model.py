@@ -31,6 +31,7 @@ class PlaneOptions:
     model: PlaneModel | None = None
     poisson: float | None = None
     axis: Literal["x", "y"] = "y"
+    surface: bool = False  # a flat mesh counts as a surface in space, also where nothing moves across it
 
 
 @dataclass(frozen=True, eq=False)
@@ -327,6 +328,8 @@ def _plane_mesh(
     flat = [b for b, r in zip(result.blocks, rows) if r is not None and r.dim == 2]
     highest = max(r.dim for r in rows if r is not None)
     normal = _normal_axis(points, flat, _used(flat, result.n_points)) if highest == 2 else None
+    if options.surface and options.model is None:
+        return None, displacement
     if normal is None:
         if options.model is not None:
             raise UsageError(

@@ -57,6 +57,7 @@ class StrainOptions:
     skin: bool = False
     alive: str | None = None
     threads: int | None = None
+    surface: bool = False
 
 
 @dataclass(frozen=True, eq=False)
@@ -92,6 +93,21 @@ class Computed:
                 f"{where + ': ' if where else ''}no cell could be computed: {reasons}. Look at the displacement and the mesh "
                 "with 'unturn survey'."
             )
+
+
+def settled(options: StrainOptions, last: Result) -> StrainOptions:
+    """Return the options for a whole series: a flat mesh that moves across its plane in the end is a surface throughout.
+
+    Parameters
+    ----------
+    options
+        As asked for.
+    last
+        The last step.
+    """
+    if options.plane is not None or model_of(last, options).plane is not None:
+        return options
+    return replace(options, surface=True)
 
 
 def compute(
@@ -217,7 +233,11 @@ def _on_surface(model: Model, options: StrainOptions) -> SurfaceFields:
 def _request(options: StrainOptions, zero: Result | None) -> dict[str, Any]:
     """Return what was asked for beyond the defaults, by option name, and the zero step."""
     default = StrainOptions()
-    told = {k: v for k, v in asdict(options).items() if v != getattr(default, k) and k != "threads"}
+    told = {
+        k: v
+        for k, v in asdict(options).items()
+        if v != getattr(default, k) and k not in ("threads", "surface")
+    }
     if zero is not None:
         told["zero_step"] = None if zero.steps is None else zero.steps.current
     return told
@@ -266,7 +286,7 @@ def model_of(result: Result, options: StrainOptions) -> Model:
         displacement=options.displacement,
         displacement_scale=options.displacement_scale,
         coordinates=options.coordinates,
-        plane=PlaneOptions(options.plane, options.poisson, options.axis),
+        plane=PlaneOptions(options.plane, options.poisson, options.axis, options.surface),
         skin=options.skin,
         alive=options.alive,
     )

@@ -184,6 +184,17 @@ def _check_target(out: Path) -> None:
         raise UsageError(f"-o {out}: there is no folder {folder} that may be written to. Choose another one.")
 
 
+def _settled(strain: StrainOptions, last: State) -> StrainOptions:
+    """Return the options with the kind of a flat mesh settled by the last state, where that can be used."""
+    from unturn.errors import UnturnError
+    from unturn.pipeline import settled
+
+    try:
+        return settled(strain, last.read())
+    except UnturnError:  # it is told where it is met
+        return strain
+
+
 def _states(
     files: Sequence[Path],
     strain: StrainOptions,
@@ -215,7 +226,7 @@ def _states(
             raise UsageError(
                 f"{files[0]} holds one step: an envelope needs a series, several files or --combinations."
             )
-        return states, strain, zero
+        return states, _settled(strain, states[-1]), zero
     if zero is not None:
         raise UsageError(
             "--zero-step does not go with --combinations: a load case has its own undeformed state."

@@ -213,7 +213,12 @@ class _Job:
         assert opened.steps is not None
         out = self._target(path, opened.read(0), series=True)
         data, summary = [], None
+        from unturn.pipeline import settled
+
         zero = self._zero(opened)
+        if self.table is None:
+            last = opened.read(len(opened.steps) - 1)
+            self = replace(self, options=settled(self.options, last))
         previous: tuple[RigidMotion, ...] = ()
         with io.series_writer(out) as writer:
             for index, value in enumerate(opened.steps):
