@@ -209,20 +209,19 @@ class _Job:
 
     def _series(self, opened: ResultFile, path: Path) -> list[dict[str, Any]]:
         from unturn import io
+        from unturn.pipeline import settled
 
         assert opened.steps is not None
         out = self._target(path, opened.read(0), series=True)
-        data, summary = [], None
-        from unturn.pipeline import settled
-
-        zero = self._zero(opened)
+        job = self
         if self.table is None:
-            last = opened.read(len(opened.steps) - 1)
-            self = replace(self, options=settled(self.options, last))
+            job = replace(self, options=settled(self.options, opened.read(len(opened.steps) - 1)))
+        data, summary = [], None
+        zero = self._zero(opened)
         previous: tuple[RigidMotion, ...] = ()
         with io.series_writer(out) as writer:
             for index, value in enumerate(opened.steps):
-                result, summary = self._compute(opened.read(index), zero, previous)
+                result, summary = job._compute(opened.read(index), zero, previous)
                 previous = tuple(r.motion for r in summary.removals)
                 writer.add(result, value)
                 data.append(self._data(summary, out))
