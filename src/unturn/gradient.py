@@ -11,6 +11,7 @@ import os
 from collections.abc import Callable, Iterable
 from concurrent.futures import ThreadPoolExecutor
 from dataclasses import dataclass
+from functools import cached_property
 from typing import Any, Literal
 
 import numpy as np
@@ -75,9 +76,10 @@ class NodalFields:
             raise UsageError(
                 f"the displacement has shape {u.shape}; expected ({len(x)}, 2) or ({len(x)}, 3), one row per point."
             )
-        self.rows = np.zeros((6, len(x)))
-        self.rows[: x.shape[1]] = x.T
-        self.rows[3 : 3 + u.shape[1]] = u.T
+        self.rows = np.empty((6, len(x)))
+        for first, values in ((0, x), (3, u)):
+            for k in range(3):
+                self.rows[first + k] = values[:, k] if k < values.shape[1] else 0.0
 
 
 @dataclass(frozen=True, eq=False)
@@ -184,11 +186,9 @@ class ElementChunk:
         """
         nodes = self.row.nodes[1:] - self.row.nodes[0]
         departure = self.relative[:3] - np.matmul(nodes, self.tangents(rule.center)[:3])
-        reach = np.linalg.norm((rule.gradients - rule.center)[:, :, 1:], ord=2, axis=(1, 2)).max()
-        departure *= departure
-        spread = departure.sum(axis=(0, 1))
-        spread *= (point.inverse * point.inverse).sum(axis=(0, 1))
-        return bool((spread * reach**2 < 0.98).all())
+        spread = np.einsum("jam,jam->m", departure, departure)
+        spread *= np.einsum("kjm,kjm->m", point.inverse, point.inverse)
+        return bool((spread * rule.reach**2 < 0.98).all())
 
     def at(self, gradients: Floats, functions: Floats) -> PointGradient:
         """Return the displacement gradient at a point given by its shape gradients `(dim, nodes)` and functions."""
@@ -559,6 +559,12 @@ class Samples:
     gradients: Floats
     weights: Floats
     center: Floats
+
+    @cached_property
+    def reach(self) -> float:
+        """Largest norm of the difference between the gradients at a point and at the centroid, without the first node."""
+        apart = (self.gradients - self.center)[:, :, 1:]
+        return float(np.linalg.norm(apart, ord=2, axis=(1, 2)).max())
 
 
 def sample_points(row: Element, at: Any) -> Samples:

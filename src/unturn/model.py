@@ -284,7 +284,7 @@ def skin_cells(result: Result, rows: list[Element | None]) -> list[NDArray[np.in
     found = []
     for low in (1, 2):
         upper = [b for b, d in zip(result.blocks, dims) if d > low]
-        if not upper:
+        if not upper or low not in dims:
             continue
         used = np.zeros(result.n_points, dtype=bool)
         for block in upper:
