@@ -43,6 +43,13 @@ class BaseChoice(StrEnum):
 
 
 class LocationChoice(StrEnum):
+    """Where values of cells live."""
+
+    centroid = "centroid"
+    mean = "mean"
+
+
+class PlaceChoice(StrEnum):
     """Where values live."""
 
     centroid = "centroid"

@@ -42,7 +42,7 @@ def strain(
     base: Annotated[
         o.BaseChoice, typer.Option(help="Replace each small measure by its counterpart of this finite base.")
     ] = o.BaseChoice.small,
-    at: Annotated[o.LocationChoice, typer.Option(help="Where values are taken.")] = o.LocationChoice.centroid,
+    at: Annotated[o.PlaceChoice, typer.Option(help="Where values are taken.")] = o.PlaceChoice.centroid,
     recovery: Annotated[
         o.RecoveryChoice, typer.Option(help="How the gradient gets to the nodes with --at nodes.")
     ] = o.RecoveryChoice.patch,
