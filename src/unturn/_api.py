@@ -14,6 +14,8 @@ from unturn.pipeline import Computed, StrainOptions, compute, rigid_arrays
 from unturn.result import Association, Result
 from unturn.verdict import Solve
 
+_LONGEST_PREFIX = 100
+
 
 def read(path: str | PathLike[str], step: Literal["last"] | int = "last") -> Result:
     """Return one step of a result file.
@@ -184,8 +186,13 @@ def add_fields(result: Result, computed: Computed, *, prefix: str = "", overwrit
     Raises
     ------
     UsageError
-        An array of that name is already there and `overwrite` is not set.
+        An array of that name is already there and `overwrite` is not set, or a prefix that formats cannot hold.
     """
+    if prefix != prefix.strip() or not prefix.isprintable() or len(prefix) > _LONGEST_PREFIX:
+        raise UsageError(
+            f"--prefix {prefix[:40]!r}: not every format keeps blanks at the ends of a name, characters that cannot be "
+            f"printed, or more than {_LONGEST_PREFIX} of them; choose another one."
+        )
     fields = computed.fields
     arrays = {prefix + name: values for name, values in fields.arrays.items()}
     taken = [name for name in arrays if name in result.cell_data]
