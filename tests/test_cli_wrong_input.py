@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import hashlib
+import os
 import subprocess
 import sys
 from pathlib import Path
@@ -85,6 +86,18 @@ CASES = [
     ("good.vtu", ["--picture", "a.jpg"], 2, "pictures are written as PNG"),
     ("good.vtu", ["--picture", "nowhere/a.png"], 2, "there is no folder nowhere"),
     ("good.vtu", ["--json", "nowhere/a.json"], 2, "there is no folder nowhere"),
+    ("good.vtu", ["--picture", "folder.vtu"], 2, "pictures are written as PNG"),
+    ("good.vtu", ["--json", "folder.vtu"], 2, "folder.vtu is a folder"),
+    ("good.vtu", ["--json", "good.vtu"], 2, "good.vtu is an input file and would be lost"),
+    ("good.vtu", ["--json", "out.vtu", "-o", "out.vtu"], 2, "the place of the picture or the JSON"),
+    ("good.vtu", ["-o", "x" * 300 + ".vtu"], 2, "File name too long"),
+    ("good.vtu", ["-o", os.fsdecode(b"lat\xe9.vtu")], 2, "the name is not UTF-8"),
+    (os.fsdecode(b"lat\xe9.vtu"), [], 3, "the name is not UTF-8"),
+    ("good.vtu", ["--prefix", " "], 2, "not every format keeps blanks"),
+    ("good.vtu", ["--prefix", "a\nb"], 2, "characters that cannot be printed"),
+    ("good.vtu", ["--prefix", "x" * 500], 2, "more than 100"),
+    ("good.vtu", ["--measures", ""], 2, "no measure is named"),
+    ("good.vtu", ["--measures", " , "], 2, "no measure is named"),
     ("good.vtu", ["--displacement-table", "missing.csv"], 3, "missing.csv"),
 ]
 

@@ -14,6 +14,8 @@ from unturn.recovery import Method
 from unturn.result import Association, Result
 from unturn.verdict import Solve
 
+_LONGEST_PREFIX = 100
+
 
 def read(path: str | PathLike[str], step: Literal["last"] | int = "last") -> Result:
     """Return one step of a result file.
@@ -190,8 +192,13 @@ def add_fields(result: Result, computed: Computed, *, prefix: str = "", overwrit
     Raises
     ------
     UsageError
-        An array of that name is already there and `overwrite` is not set.
+        An array of that name is already there and `overwrite` is not set, or a prefix that formats cannot hold.
     """
+    if prefix != prefix.strip() or not prefix.isprintable() or len(prefix) > _LONGEST_PREFIX:
+        raise UsageError(
+            f"--prefix {prefix[:40]!r}: not every format keeps blanks at the ends of a name, characters that cannot be "
+            f"printed, or more than {_LONGEST_PREFIX} of them; choose another one."
+        )
     if computed.surface is not None:
         return computed.surface.result
     if computed.cloud is not None:

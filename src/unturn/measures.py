@@ -335,7 +335,7 @@ def choose_measures(
     Raises
     ------
     UsageError
-        A name or base that is not in the table, or a mechanical measure without a free thermal strain.
+        No name, a name or base that is not in the table, or a mechanical measure without a free thermal strain.
 
     Examples
     --------
@@ -347,7 +347,11 @@ def choose_measures(
     known = [*MEASURES, *GEOMETRY, *SURFACE_AXES]
     counterpart = _counterparts(base)
     wanted: set[str] = set()
-    for name in names or (*DEFAULT_MEASURES, *(DEFAULT_MECHANICAL if mechanical else ())):
+    if names is not None and not len(names):
+        raise UsageError("no measure is named; leave --measures away for the default set, or name some.")
+    if names is None:
+        names = (*DEFAULT_MEASURES, *(DEFAULT_MECHANICAL if mechanical else ()))
+    for name in names:
         if name == "all":
             wanted.update(counterpart.get(k, k) for k in (*SMALL, *GEOMETRY))
             if mechanical:

@@ -61,7 +61,7 @@ def convergence(
         raise UsageError(f"say what is to be followed over the meshes with --quantity: {FORMS}.")
     if step == "all":
         raise UsageError("--step all: a refinement study follows one step; give its number or 'last'.")
-    check_place(None, json)
+    check_place(None, json, (coarse, medium, fine))
     quantities = [parse_quantity(text) for text in quantity]
     options = StrainOptions(
         displacement=displacement, measures=sorted({q.measure.name for q in quantities}), at=at.value,

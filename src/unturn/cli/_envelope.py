@@ -130,7 +130,7 @@ def envelope(
     threads: o.Threads = None,
 ) -> None:
     """Find the extremes of every cell over steps or load cases, and which of them made each."""
-    from unturn.cli._output import check_place, output_path
+    from unturn.cli._output import Places, check_place
     from unturn.envelope import EnvelopeOptions
     from unturn.io import writable_suffix
     from unturn.pipeline import StrainOptions
@@ -144,9 +144,10 @@ def envelope(
         threads=threads,
     )  # fmt: skip
     files = _numbered(files) if as_series else files
-    check_place(None, json)
-    check_place(None, steps_output)
-    out = output_path(files[0], output, writable_suffix(files[0], _read_first(files)), "envelope")
+    check_place(None, json, files)
+    check_place(None, steps_output, files)
+    suffix = writable_suffix(files[0], _read_first(files))
+    out = Places(output, files, (json, steps_output)).of(files[0], suffix, "envelope")
     _check_target(out)
     states, strain, zero = _states(files, strain, combinations, as_series, keep_going, zero_step)
     options = EnvelopeOptions(

@@ -2,13 +2,20 @@
 
 from __future__ import annotations
 
+import contextlib
+import io
+import signal
 import sys
+import threading
+from collections.abc import Iterator
 from typing import Annotated
 
 import typer
 
 from unturn.cli import _convergence, _envelope, _strain, _survey
 from unturn.errors import UnturnError
+
+_SIGPIPE = 13  # which not every system has
 
 _EPILOG = (
     "Exit status: 0 done, and every limit met; 1 a limit or tolerance exceeded or undecided; 2 wrong usage; 3 the input "
@@ -54,9 +61,33 @@ def _options(
 
 def main() -> None:
     """Run the program and exit."""
-    debug = "--debug" in sys.argv[1:]
+    for stream in (sys.stdout, sys.stderr):
+        if isinstance(stream, io.TextIOWrapper):  # names that the terminal cannot show are no reason to fail
+            stream.reconfigure(errors="backslashreplace")
+    with _stopped_in_order():
+        _run("--debug" in sys.argv[1:])
+
+
+@contextlib.contextmanager
+def _stopped_in_order() -> Iterator[None]:
+    """Let a request to end the program unwind it, so that unfinished files are removed."""
+    if threading.current_thread() is not threading.main_thread():
+        yield
+        return
+    before = signal.signal(signal.SIGTERM, lambda number, _: sys.exit(128 + number))
+    try:
+        yield
+    finally:
+        signal.signal(signal.SIGTERM, before)
+
+
+def _run(debug: bool) -> None:
     try:
         app()
+    except SystemExit as stop:
+        if isinstance(stop.__context__, BrokenPipeError):  # whoever read our text stopped: no broken limit
+            sys.exit(128 + _SIGPIPE)
+        raise
     except UnturnError as error:
         if debug:
             raise

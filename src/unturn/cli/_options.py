@@ -81,7 +81,10 @@ Displacement = Annotated[
 Table = Annotated[
     Path | None,
     typer.Option(
-        "--displacement-table", metavar="FILE.csv", help="Displacements by node number, for a mesh without."
+        "--displacement-table",
+        metavar="FILE.csv",
+        help="Displacements by node number, for a mesh without.",
+        readable=False,
     ),
 ]
 Scale = Annotated[

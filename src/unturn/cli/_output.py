@@ -4,6 +4,9 @@ from __future__ import annotations
 
 import json
 import math
+import os
+import stat
+from collections.abc import Sequence
 from pathlib import Path
 from typing import Any
 
@@ -21,22 +24,83 @@ def write_json(data: Any, path: Path) -> None:
     from unturn.io._atomic import replacing
 
     with replacing(path) as work:
-        work.write_text(text + "\n", encoding="utf-8")
+        work.write_text(text + "\n", encoding="utf-8", errors="backslashreplace")
 
 
-def check_place(picture: Path | None, data: Path | None) -> None:
+def check_place(picture: Path | None, data: Path | None, inputs: Sequence[Path]) -> None:
     """Refuse places for the picture and the JSON that cannot be written to, before anything is computed.
 
     Raises
     ------
     UsageError
-        Not a PNG name, or a folder that does not exist.
+        Not a PNG name, a folder or a name in a folder that does not exist, or one of the input files.
     """
     if picture is not None and picture.suffix.lower() != ".png":
         raise UsageError(f"{picture}: pictures are written as PNG; give a name that ends in .png.")
     for path in (picture, data):
-        if path is not None and not path.parent.is_dir():
+        if path is None or str(path) == "-":
+            continue
+        if is_folder(path):
+            raise UsageError(f"{path} is a folder; give the name of a file in it.")
+        if not path.parent.is_dir():
             raise UsageError(f"{path}: there is no folder {path.parent}; make it first.")
+        if any(_same_place(path, file) for file in inputs):
+            raise UsageError(f"{path} is an input file and would be lost; give another name.")
+
+
+def is_folder(path: Path) -> bool:
+    """Return whether a path is a folder; a name that no file can have is none.
+
+    Raises
+    ------
+    UsageError
+        The name is too long, or no name at all.
+    """
+    try:
+        return stat.S_ISDIR(path.stat().st_mode)
+    except (FileNotFoundError, NotADirectoryError):
+        return False
+    except (OSError, ValueError) as error:
+        raise UsageError(f"{path}: {getattr(error, 'strerror', None) or error}. Give another name.") from None
+
+
+def _same_place(a: Path, b: Path) -> bool:
+    return os.path.realpath(a) == os.path.realpath(b)
+
+
+class Places:
+    """Where results go, so that none is written over another file of the same call."""
+
+    def __init__(self, asked: Path | None, inputs: Sequence[Path], others: Sequence[Path | None]) -> None:
+        self._asked, self._inputs = asked, inputs
+        self._taken = {os.path.realpath(p): "of the picture or the JSON" for p in others if p is not None}
+
+    def of(self, source: Path, suffix: str, added: str = "strain") -> Path:
+        """Return where the result of one input goes: the name asked for, in the folder asked for, or beside the input.
+
+        In a name of ours `added` stands before the suffix.
+
+        Raises
+        ------
+        UsageError
+            Another file of this call goes there, or an input lies there and was not named as the output.
+        """
+        name = f"{source.stem}.{added}{suffix}"
+        out = source.with_name(name) if self._asked is None else self._asked
+        named = self._asked is not None and not is_folder(self._asked)
+        if self._asked is not None and not named:
+            out = self._asked / name
+        if not named and any(_same_place(out, file) for file in self._inputs):
+            raise UsageError(
+                f"{source}: its result would replace {out}, which is an input too; say where it goes with -o."
+            )
+        place = os.path.realpath(out)
+        if place in self._taken:
+            raise UsageError(
+                f"{source}: its result would go to {out}, the place {self._taken[place]}; give another one with -o."
+            )
+        self._taken[place] = f"of the result of {source}"
+        return out
 
 
 def _finite(data: Any) -> Any:
@@ -47,14 +111,3 @@ def _finite(data: Any) -> Any:
     if isinstance(data, float):
         return data if math.isfinite(data) else None
     return data
-
-
-def output_path(source: Path, asked: Path | None, suffix: str, added: str = "strain") -> Path:
-    """Return where the output of one input goes: the name asked for, in the folder asked for, or beside the input.
-
-    In a name of ours `added` stands before the suffix.
-    """
-    name = f"{source.stem}.{added}{suffix}"
-    if asked is None:
-        return source.with_name(name)
-    return asked / name if asked.is_dir() else asked

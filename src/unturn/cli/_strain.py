@@ -12,6 +12,7 @@ from unturn.cli import _options as o
 from unturn.errors import InputError, UnturnError, UsageError
 
 if TYPE_CHECKING:
+    from unturn.cli._output import Places
     from unturn.io import ResultFile
     from unturn.pipeline import StrainOptions
     from unturn.result import Result
@@ -20,7 +21,7 @@ if TYPE_CHECKING:
 
 
 def strain(
-    files: Annotated[list[Path], typer.Argument(metavar="FILE...", help="Result files.")],
+    files: Annotated[list[Path], typer.Argument(metavar="FILE...", help="Result files.", readable=False)],
     output: Annotated[
         Path | None,
         typer.Option(
@@ -125,14 +126,19 @@ def strain(
     threads: o.Threads = None,
 ) -> None:
     """Add strain, rotation and equivalent strain to result files and say where they can be trusted."""
-    from unturn.cli._output import check_place, write_json
+    from unturn.cli._output import Places, check_place, is_folder, write_json
     from unturn.pipeline import StrainOptions
 
+    check_place(picture, json, files)
+    if picture is not None and len(files) > 1:
+        raise UsageError("--picture FILE.png draws one file; give one input file with it.")
+    if output is not None and not is_folder(output) and len(files) > 1:
+        raise UsageError(f"-o {output}: with several input files the output must be an existing folder.")
     job = _Job(
-        output=output,
+        places=Places(output, files, (picture, json)),
         options=StrainOptions(
             displacement=displacement,
-            measures=[m.strip() for m in measures.split(",") if m.strip()] if measures else None,
+            measures=None if measures is None else [m.strip() for m in measures.split(",") if m.strip()],
             base=base.value, at=at.value, recovery=recovery.value, solve=solve.value,
             plane=plane.value if plane else None, poisson=poisson,
             axis=axis.value, coordinates=coordinates.value, displacement_scale=displacement_scale,
@@ -147,11 +153,6 @@ def strain(
         table=displacement_table, step=step, prefix=prefix, overwrite=overwrite, picture=picture,
         text_to_stderr=str(json) == "-",
     )  # fmt: skip
-    check_place(picture, json)
-    if picture is not None and len(files) > 1:
-        raise UsageError("--picture FILE.png draws one file; give one input file with it.")
-    if output is not None and len(files) > 1 and not output.is_dir():
-        raise UsageError(f"-o {output}: with several input files the output must be an existing folder.")
     data: list[dict[str, Any]] = []
     failed: list[UnturnError] = []
     for number, path in enumerate(files):
@@ -178,7 +179,7 @@ _OWN_MESH = ("surface", "quadrature")
 
 @dataclass(frozen=True)
 class _Job:
-    output: Path | None
+    places: Places
     options: StrainOptions
     zero_step: int | None
     summary: dict[str, Any]
@@ -201,8 +202,8 @@ class _Job:
                 )
             return self._series(opened, path)
         result = opened.read(chosen_step(opened, "last" if self.step == "all" else self.step))
-        result, summary = self._compute(result, self._zero(opened), alone=True)
         out = self._target(path, result, series=False)
+        result, summary = self._compute(result, self._zero(opened), alone=True)
         lost = io.write(result, out)
         self._print(summary, out, lost, result if self.options.at in _OWN_MESH else None)
         return [self._data(summary, out)]
@@ -262,12 +263,13 @@ class _Job:
         return add_fields(result, computed, prefix=self.prefix, overwrite=self.overwrite), summary
 
     def _target(self, path: Path, result: Result, series: bool) -> Path:
-        from unturn.cli._output import output_path
-        from unturn.io import writable_suffix
+        from unturn.io import check_target, writable_suffix
 
-        if self.options.at in _OWN_MESH:
-            return output_path(path, self.output, ".vtu", self.options.at)
-        return output_path(path, self.output, writable_suffix(path, result, series=series))
+        own = self.options.at in _OWN_MESH
+        suffix = ".vtu" if own else writable_suffix(path, result, series=series)
+        out = self.places.of(path, suffix, self.options.at if own else "strain")
+        check_target(out, series=series)
+        return out
 
     def _print(self, summary: Summary, out: Path, lost: tuple[str, ...], own: Result | None = None) -> None:
         from unturn.summary_text import summary_text

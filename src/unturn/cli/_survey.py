@@ -11,7 +11,7 @@ from unturn.cli import _options as o
 
 
 def survey(
-    file: Annotated[Path, typer.Argument(metavar="FILE", help="Result file.")],
+    file: Annotated[Path, typer.Argument(metavar="FILE", help="Result file.", readable=False)],
     step: o.Step = "last",
     displacement: o.Displacement = None,
     displacement_scale: o.Scale = 1.0,
@@ -21,9 +21,11 @@ def survey(
 ) -> None:
     """Say what a result file holds, which array is the displacement, and what looks wrong."""
     from unturn import io
+    from unturn.cli._output import check_place, write_json
     from unturn.cli._strain import chosen_step
     from unturn.survey import survey_result, survey_text
 
+    check_place(None, json, [file])
     opened = io.open_result(file)
     result = opened.read(chosen_step(opened, "last" if step == "all" else step))
     found = survey_result(
@@ -34,8 +36,6 @@ def survey(
         threads=threads,
     )
     if json is not None:
-        from unturn.cli._output import write_json
-
         write_json(found, json)
     if str(json) != "-":
         typer.echo(survey_text(found))

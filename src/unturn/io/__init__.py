@@ -3,12 +3,13 @@
 from __future__ import annotations
 
 import contextlib
+import os
 from collections.abc import Iterator
 from os import PathLike
 from pathlib import Path
 from typing import Literal
 
-from unturn.errors import InputError, UsageError
+from unturn.errors import InputError, UnturnError, UsageError
 from unturn.io._atomic import ensure_room, replacing
 from unturn.io._format import Format, ResultFile, StepWriter
 from unturn.io._formats import FORMATS, format_for_writing, format_of_file, writable_suffix
@@ -20,6 +21,7 @@ __all__ = [
     "Format",
     "ResultFile",
     "StepWriter",
+    "check_target",
     "open_result",
     "read",
     "series_writer",
@@ -42,6 +44,12 @@ def open_result(path: str | PathLike[str]) -> ResultFile:
         No such file, a folder, empty, not readable, or of no known format.
     """
     place = Path(path)
+    try:
+        os.fspath(place).encode()
+    except UnicodeEncodeError:
+        raise InputError(
+            f"{os.fspath(place)!a}: the name is not UTF-8, which the readers need; rename it."
+        ) from None
     try:
         if place.is_dir():
             raise InputError(f"{path} is a folder; give the name of the result file in it.")
@@ -87,6 +95,24 @@ def read(path: str | PathLike[str], step: Literal["last"] | int = "last") -> Res
     return opened.read(number)
 
 
+def check_target(path: str | PathLike[str], *, series: bool = False) -> None:
+    """Refuse a place that no result can be written to, before anything is computed.
+
+    Raises
+    ------
+    UsageError
+        The format is not written here, the place is a folder, or its folder does not exist or may not be written to.
+    """
+    target = Path(path)
+    format_for_writing(target, series=series)
+    with contextlib.suppress(_Nothing), replacing(target):
+        raise _Nothing
+
+
+class _Nothing(Exception):
+    """Leaves a place as it was."""
+
+
 def write(result: Result, path: str | PathLike[str]) -> tuple[str, ...]:
     """Write a result whole or not at all, and return sentences on what the format could not hold.
 
@@ -123,8 +149,20 @@ def write(result: Result, path: str | PathLike[str]) -> tuple[str, ...]:
     with replacing(target) as work:
         ensure_room(work, _size(result))
         lost = fmt.write(result, work)
-        check_same(result, fmt.open(work).read(0), lost)
+        check_same(result, _again(fmt, work), lost)
     return lost
+
+
+def _again(fmt: Format, work: Path, step: int = 0) -> Result:
+    """Return what was just written, read back."""
+    try:
+        return fmt.open(work).read(step)
+    except InputError as error:
+        said = str(error).replace(str(work), work.name)
+        raise UnturnError(
+            f"what was written cannot be read back ({said}), so it was not put in place and what was there before is "
+            "unchanged. Write another format, and report this as a fault."
+        ) from error
 
 
 def _size(result: Result) -> int:
@@ -184,7 +222,7 @@ class _CheckedSeries:
         """Write one step and prove that it is in the file."""
         ensure_room(self._work, _size(result))
         self._inner.add(result, value)
-        check_same(result, self._fmt.open(self._work).read(self.n_steps), self._inner.lost)
+        check_same(result, _again(self._fmt, self._work, self.n_steps), self._inner.lost)
         self.n_steps += 1
 
     def close(self) -> None:

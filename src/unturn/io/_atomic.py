@@ -32,6 +32,12 @@ def replacing(target: Path) -> Iterator[Path]:
     if final.is_dir():
         raise UsageError(f"{target} is a folder; give the name of a file in it.")
     try:
+        os.fspath(final).encode()
+    except UnicodeEncodeError:
+        raise UsageError(
+            f"{os.fspath(target)!a}: the name is not UTF-8, which the writers need; give another one."
+        ) from None
+    try:
         work = Path(
             tempfile.mkdtemp(prefix=f"{WORK_PREFIX}{final.stem[:40]}-", suffix=".tmp", dir=final.parent)
         )
@@ -40,6 +46,8 @@ def replacing(target: Path) -> Iterator[Path]:
     try:
         yield work / final.name
         _move_into_place(work, final)
+    except BrokenPipeError:  # of the text for people, not of the file
+        raise
     except OSError as error:
         raise _cannot_write(target, error) from error
     finally:
