@@ -18,7 +18,7 @@ LAYERS = (
     ("errors", "source", "_version"),
     ("kinematics", "elements"),
     ("result", "statistics", "precision"),
-    ("numbering", "frames"),
+    ("numbering", "frames", "point_gradient"),
     ("gradient", "measures", "midside", "displacement", "thermal"),
     ("model",),
     ("fields", "regions", "jacobian"),

@@ -14,7 +14,6 @@ from unturn.frames import Frame, surface_axes, turned_components
 from unturn.gradient import (
     ElementChunk,
     Plane,
-    PointGradient,
     Samples,
     chunk_ranges,
     mean_gradient,
@@ -26,6 +25,7 @@ from unturn.kinematics._symmetric import Floats, full_from_six, six_from_full
 from unturn.kinematics._turning import Turning
 from unturn.measures import GEOMETRY, MEASURES, SURFACE_AXES, VECTOR, Measure, Split, choose_measures
 from unturn.model import Model, ModelBlock
+from unturn.point_gradient import PointGradient
 from unturn.precision import MEANT_DISPLACEMENT, storage_resolution
 from unturn.thermal import Thermal
 

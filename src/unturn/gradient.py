@@ -20,6 +20,18 @@ from numpy.typing import ArrayLike, NDArray
 from unturn.elements import Element, element
 from unturn.errors import UsageError
 from unturn.kinematics._symmetric import Floats
+from unturn.point_gradient import (
+    PointGradient,
+    cofactors,
+    determinant,
+    dot,
+    finite_line,
+    finite_surface,
+    line_point,
+    moved_tangent,
+    solid_point,
+    surface_point,
+)
 
 PlaneModel = Literal["strain", "stress", "axisymmetric"]
 
@@ -27,7 +39,6 @@ PlaneModel = Literal["strain", "stress", "axisymmetric"]
 # and products of vectors are left to einsum.
 _CHUNK = 8192
 _CHUNK_VALUES = 200_000  # nodes x elements x 6 values of a chunk: a megabyte and a half
-_FLAT = 1e-13  # a Jacobian below this share of the product of its columns belongs to a cell without volume
 
 
 @dataclass(frozen=True)
@@ -80,32 +91,6 @@ class NodalFields:
         for first, values in ((0, x), (3, u)):
             for k in range(3):
                 self.rows[first + k] = values[:, k] if k < values.shape[1] else 0.0
-
-
-@dataclass(frozen=True, eq=False)
-class PointGradient:
-    """The gradient of a chunk of elements at one reference point.
-
-    Parameters
-    ----------
-    H
-        `(3, 3, m)` displacement gradient; surfaces and lines with the small completion, plane meshes with their
-        third direction.
-    measure
-        `(m,)` signed Jacobian determinant for solids; area or length per reference unit for surfaces and lines.
-    weight
-        `(m,)` the same without sign, times `2 pi r` where axisymmetric: what one unit of reference volume weighs.
-    inverse
-        `(dim, 3, m)` gradients of the reference coordinates, `d xi_k / d X_j`.
-    tangents
-        `(dim, 3, m)` tangents `dX_j / d xi_k`; only for surfaces and lines.
-    """
-
-    H: Floats
-    measure: Floats
-    weight: Floats
-    inverse: Floats
-    tangents: Floats | None = None
 
 
 class ElementChunk:
@@ -175,7 +160,7 @@ class ElementChunk:
         """Return the signed Jacobian determinant `(m,)` of solids at a point with these shape gradients."""
         rest = gradients[:, 1:]
         J = np.matmul(rest, self.relative[:3])
-        return _determinant(J, _cofactors(J))
+        return determinant(J, cofactors(J))
 
     def surely_untangled(self, point: PointGradient, rule: Samples) -> bool:
         """Whether no Jacobian determinant can change its sign between the centroid and the points of the rule.
@@ -194,10 +179,10 @@ class ElementChunk:
         """Return the displacement gradient at a point given by its shape gradients `(dim, nodes)` and functions."""
         mixed = self.tangents(gradients)
         if self.row.dim == 3:
-            return _solid(mixed)
+            return solid_point(mixed)
         if self.row.dim == 1:
-            return _line(mixed)
-        point = _surface(mixed)
+            return line_point(mixed)
+        point = surface_point(mixed)
         if self.plane is None:
             return point
         return self._with_third_direction(point, functions)
@@ -235,9 +220,9 @@ class ElementChunk:
             return point.H
         if self.row.dim == 1:
             assert point.tangents is not None
-            return _finite_line(point.tangents[0] / point.measure, _moved_tangent(point))
+            return finite_line(point.tangents[0] / point.measure, moved_tangent(point))
         if self.plane is None:
-            return _finite_surface(point, self.poisson)
+            return finite_surface(point, self.poisson)
         H = point.H
         k = self.plane.normal
         if self.plane.model == "stress":
@@ -249,164 +234,6 @@ class ElementChunk:
             with np.errstate(invalid="ignore", divide="ignore"):
                 H[k, k] = np.expm1(-nu / (1.0 - nu) * np.log1p(relative))
         return H
-
-
-def _cofactors(J: Floats) -> Floats:
-    """Return `C[j, k]`, the cofactor of `J[j, k]`, for `(3, 3, m)` arrays.
-
-    Rows and columns are repeated cyclically so that all nine minors are one difference of two products: few large
-    operations keep several threads out of each other's way.
-    """
-    cyclic = np.empty((5, 5, J.shape[-1]))
-    cyclic[:3, :3] = J
-    cyclic[3:, :3] = J[:2]
-    cyclic[:, 3:] = cyclic[:, :2]
-    C = cyclic[1:4, 1:4] * cyclic[2:5, 2:5]
-    C -= cyclic[1:4, 2:5] * cyclic[2:5, 1:4]
-    return C
-
-
-def _determinant(J: Floats, C: Floats) -> Floats:
-    terms = J[0] * C[0]
-    det: Floats = terms[0] + terms[1]
-    det += terms[2]
-    return det
-
-
-def _product(U: Floats, inverse: Floats) -> Floats:
-    """Return `H[i, j] = sum_k U[i, k] inverse[k, j]`."""
-    H = U[:, 0, None] * inverse[0, None]
-    for k in range(1, len(inverse)):
-        H += U[:, k, None] * inverse[k, None]
-    return H
-
-
-def _flat(J: Floats, det: Floats) -> NDArray[np.bool_] | None:
-    """Return which cells have no volume; None when no cell can be flat: the smallest determinant is large enough."""
-    values = J.reshape(-1)
-    # no smaller than _FLAT times the product of the columns of any cell
-    bound = _FLAT * (float(np.einsum("i,i->", values, values)) / 3.0) ** 1.5
-    if float(np.abs(det).min(initial=np.inf)) > bound:
-        return None
-    squares = J * J
-    lengths = squares[0] + squares[1]
-    lengths += squares[2]
-    flat: NDArray[np.bool_] = det * det <= _FLAT**2 * (lengths[0] * lengths[1] * lengths[2])
-    return flat
-
-
-def _solid(mixed: Floats) -> PointGradient:
-    J, U = mixed[:3], mixed[3:]
-    C = _cofactors(J)
-    det = _determinant(J, C)
-    flat = _flat(J, det)
-    C /= det if flat is None else np.where(flat, np.nan, det)
-    inverse = C.swapaxes(0, 1)
-    return PointGradient(_product(U, inverse), det, np.abs(det), inverse)
-
-
-def _cross(a: Floats, b: Floats) -> Floats:
-    return np.stack([a[1] * b[2] - a[2] * b[1], a[2] * b[0] - a[0] * b[2], a[0] * b[1] - a[1] * b[0]])
-
-
-def _dot(a: Floats, b: Floats) -> Floats:
-    result: Floats = a[0] * b[0] + a[1] * b[1] + a[2] * b[2]
-    return result
-
-
-def _surface(mixed: Floats) -> PointGradient:
-    t, U = mixed[:3].swapaxes(0, 1), mixed[3:]
-    normal = _cross(t[0], t[1])
-    area = np.sqrt(_dot(normal, normal))
-    size = np.sqrt(_dot(t[0], t[0]) * _dot(t[1], t[1]))
-    usable = np.where(area > _FLAT * size, area, np.nan)
-    normal /= usable
-    inverse = np.stack([_cross(t[1], normal), _cross(normal, t[0])])
-    inverse /= usable
-    H = _product(U, inverse)
-    tilt = np.stack([H[0, j] * normal[0] + H[1, j] * normal[1] + H[2, j] * normal[2] for j in range(3)])
-    for i in range(3):
-        for j in range(3):
-            H[i, j] -= tilt[i] * normal[j]
-    return PointGradient(H, area, area, inverse, np.ascontiguousarray(t))
-
-
-def _line(mixed: Floats) -> PointGradient:
-    t, U = mixed[:3, 0], mixed[3:, 0]
-    square = _dot(t, t)
-    size = np.sqrt(square)
-    usable = np.where(square > 0, square, np.nan)
-    inverse = (t / usable)[None]
-    axial = _dot(U, inverse[0])
-    across = U - axial * t
-    H = np.empty((3, 3, t.shape[-1]))
-    for i in range(3):
-        for j in range(3):
-            H[i, j] = U[i] * inverse[0, j] - inverse[0, i] * across[j]
-    return PointGradient(H, size, size, inverse, t[None])
-
-
-def _finite_surface(point: PointGradient, poisson: float | None) -> Floats:
-    """Return `F - I` with F n = unit normal of the deformed surface times the thickness stretch."""
-    assert point.tangents is not None
-    t = point.tangents
-    normal = _cross(t[0], t[1])
-    area = np.sqrt(_dot(normal, normal))
-    normal /= area
-    tilt = -np.stack([_dot(point.H[i], normal) for i in range(3)])  # minus H n = grad_s(u)^T n
-    H = point.H.copy()
-    for i in range(3):
-        for j in range(3):
-            H[i, j] += tilt[i] * normal[j]  # the surface gradient alone
-    moved = [t[k] + np.stack([_dot(H[i], t[k]) for i in range(3)]) for k in range(2)]
-    turned = _cross(moved[0], moved[1])
-    moved_area = np.sqrt(_dot(turned, turned))
-    turned /= moved_area
-    change = turned - normal
-    if poisson is not None:
-        change += np.expm1(-poisson / (1.0 - poisson) * np.log(moved_area / area)) * turned
-    for i in range(3):
-        for j in range(3):
-            H[i, j] += change[i] * normal[j]
-    return H
-
-
-def _moved_tangent(point: PointGradient) -> Floats:
-    """Return the tangent of the deformed line per unit of reference length: the small completion keeps du/ds."""
-    assert point.tangents is not None
-    old = point.tangents[0] / point.measure
-    moved: Floats = old + np.stack([_dot(point.H[i], old) for i in range(3)])
-    return moved
-
-
-def _finite_line(old: Floats, moved: Floats, stretch: Floats | None = None) -> Floats:
-    """Return `F - I`, F the axial stretch times the smallest rotation from old to new tangent, both `(3, m)`.
-
-    Without a stretch it is the ratio of their lengths.
-    """
-    size = np.sqrt(_dot(old, old))
-    old = old / size
-    length = np.sqrt(_dot(moved, moved))
-    new = moved / length
-    if stretch is None:
-        stretch = length / size
-    axis, cosine = _cross(old, new), _dot(old, new)
-    back = cosine < -0.5
-    H = np.empty((3, 3, old.shape[-1]))
-    for i in range(3):
-        for j in range(3):
-            H[i, j] = axis[i] * axis[j] / np.where(back, 1.0, 1.0 + cosine)
-        H[i, i] += cosine - 1.0
-    for i, j, k in ((0, 1, 2), (1, 2, 0), (2, 0, 1)):
-        H[i, j] -= axis[k]
-        H[j, i] += axis[k]
-    if back.any():
-        H[:, :, back] = reversing_turn(old[:, back], new[:, back])
-    extra = (stretch - 1.0) * new
-    for i in range(3):
-        for j in range(3):
-            H[i, j] += extra[i] * old[j]
-    return H
 
 
 def _mean_finite_line(chunk: ElementChunk, samples: Samples) -> tuple[Floats, Floats]:
@@ -421,37 +248,12 @@ def _mean_finite_line(chunk: ElementChunk, samples: Samples) -> tuple[Floats, Fl
         point = chunk.at(gradients, functions)
         assert point.tangents is not None
         share = weight * point.weight
-        tangent = _moved_tangent(point)
+        tangent = moved_tangent(point)
         chord += weight * point.tangents[0]
         moved += share * tangent
-        stretch += share * np.sqrt(_dot(tangent, tangent))
+        stretch += share * np.sqrt(dot(tangent, tangent))
         length += share
-    return _finite_line(chord, moved, stretch / length), length
-
-
-def reversing_turn(old: Floats, new: Floats) -> Floats:
-    """Return `R - I` of the smallest rotations that nearly or wholly reverse a unit vector.
-
-    R takes the frame of `old` and a direction across both vectors to the frame of `new` and that direction. Where they
-    are opposite, to 1e-10, any direction across will do, and the coordinate axis farthest from the line makes it: the
-    same one for all points of an element, whatever the rounding.
-    """
-    across = _cross(old, new)
-    opposite = _dot(across, across) < 1e-20
-    if opposite.any():
-        farthest = np.eye(3)[:, np.argmin(np.abs(old[:, opposite]), axis=0)]
-        across[:, opposite] = _cross(old[:, opposite], farthest)
-    frames = []
-    for tangent in (old, new):
-        side = across - _dot(across, tangent) * tangent
-        side /= np.sqrt(_dot(side, side))
-        frames.append((tangent, side, _cross(tangent, side)))
-    turn = np.zeros((3, 3, old.shape[1]))
-    for before, after in zip(*frames):
-        turn += after[:, None] * before[None]
-    for i in range(3):
-        turn[i, i] -= 1.0
-    return turn
+    return finite_line(chord, moved, stretch / length), length
 
 
 def chunk_ranges(n_cells: int, n_nodes: int) -> list[tuple[int, int]]:

@@ -19,11 +19,12 @@ from unturn.fields import (
     mean_free_strain,
 )
 from unturn.frames import Frame, surface_axes, turned_components
-from unturn.gradient import ElementChunk, PointGradient, Samples, chunk_ranges, over_chunks, sample_points
+from unturn.gradient import ElementChunk, Samples, chunk_ranges, over_chunks, sample_points
 from unturn.kinematics._symmetric import Floats
 from unturn.measures import GEOMETRY, MEASURES, SURFACE_AXES, VECTOR, Split, choose_measures
 from unturn.model import Model, ModelBlock
 from unturn.numbering import element_numbers
+from unturn.point_gradient import PointGradient
 from unturn.result import Array, Association, CellBlock, Result
 from unturn.thermal import Thermal
 

@@ -16,9 +16,10 @@ from numpy.typing import NDArray
 
 from unturn.elements import rule_of_degree
 from unturn.errors import InputError, UsageError
-from unturn.gradient import ElementChunk, chunk_ranges, reversing_turn
+from unturn.gradient import ElementChunk, chunk_ranges
 from unturn.kinematics._symmetric import Floats
 from unturn.model import Model
+from unturn.point_gradient import reversing_turn
 
 Fit = Literal["linearised", "finite"]
 
