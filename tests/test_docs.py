@@ -93,7 +93,7 @@ def test_every_option_is_documented(name: str) -> None:
 
 
 def test_no_page_names_an_option_that_does_not_exist() -> None:
-    known = {opt for c in COMMANDS.values() for p in c.params for opt in p.opts} | {
+    known = {opt for c in COMMANDS.values() for p in c.params for opt in (*p.opts, *p.secondary_opts)} | {
         "--version",
         "--debug",
         "--help",
