@@ -7,7 +7,7 @@ import re
 import shutil
 import tomllib
 from pathlib import Path
-from typing import Any
+from typing import Any, get_args
 
 import numpy as np
 import pytest
@@ -16,14 +16,16 @@ from typer.main import get_command
 import unturn
 import unturn._accessor  # found by itself only when the package is installed
 from documents import EVERY_PAGE, PAGES, ROOT, Session, blocks, run, spoken, table
-from unturn import CellBlock, Result
+from unturn import CellBlock, Result, convergence
 from unturn.cli._main import app
 from unturn.cli._options import BaseChoice
+from unturn.convergence import Behaviour
 from unturn.elements import ELEMENTS
 from unturn.errors import InputError, UnturnError
 from unturn.io import FORMATS, Format
 from unturn.kinematics._finite import BASES
 from unturn.measures import DEFAULT_MEASURES, GEOMETRY, MEASURES, SMALL, Measure
+from unturn.series import SERIES_MEASURES
 
 SAMPLES = [p for p in (ROOT / "sample_meshes").iterdir() if p.suffix in (".vtu", ".xdmf", ".h5")]
 README, DOCS = ROOT / "README.md", ROOT / "docs"
@@ -133,6 +135,31 @@ def test_the_tables_of_measures_are_the_codes() -> None:
     geometry = [[f"`{name}`", meaning] for name, meaning in GEOMETRY.items()]
     assert table(page, "array of the mesh alone") == geometry
     assert f"`{', '.join(DEFAULT_MEASURES)}`" in page.read_text(encoding="utf-8")
+
+
+def test_the_tables_of_series_and_studies_are_the_codes() -> None:
+    page = DOCS / "conventions.md"
+    assert table(page, "array of a series") == [
+        [f"`{m.name}`", " ".join(m.components) or "one number", "1" if m.unit == "strain" else m.unit, m.meaning,
+         f"{m.source.text} ({m.source.kind})"]
+        for m in SERIES_MEASURES.values()
+    ]  # fmt: skip
+    assert [row[0] for row in table(page, "behaviour")] == [f"`{b}`" for b in get_args(Behaviour)]
+    text = " ".join(page.read_text(encoding="utf-8").split())
+    assert f"{convergence.SOURCE.text} ({convergence.SOURCE.kind})" in text
+    assert f"an order between {convergence.LOWEST:g} and {convergence.HIGHEST:g}" in text
+    assert f"by less than a factor of {convergence.SMALL_RATIO:g}" in text
+
+
+def test_the_table_of_an_envelope_names_what_is_written(desk: Path) -> None:
+    rows = table(DOCS / "conventions.md", "array of an envelope")
+    words = " ".join(row[0] for row in rows).replace("NAME", "principal_strain")
+    documented = set(re.findall(r"`(\w+)`", words))
+    assert {"principal_direction_1_at_maximum", "principal_direction_3_at_minimum"} <= documented
+    documented |= {f"principal_direction_{k}_at_{end}" for k in (1, 2, 3) for end in ("maximum", "minimum")}
+    assert run(spoken("unturn envelope lever.xdmf --measures principal_strain -o e.vtu"))[0] == 0
+    written = set(unturn.read("e.vtu").cell_data) - set(unturn.read("lever.xdmf").cell_data)
+    assert written == documented
 
 
 def test_the_tables_of_finite_strains_are_the_codes() -> None:
@@ -305,3 +332,62 @@ def test_the_survey_schema_is_documented_key_by_key(desk: Path) -> None:
     unturn.write(no_displacement, desk / "bare.vtu")
     produced.append(_json_of("unturn survey bare.vtu"))
     _check_schema(DOCS / "survey-json.md", produced)
+
+
+def _loads(desk: Path) -> None:
+    """Combinations of the bracket, and a file that cannot be read."""
+    (desk / "loads.toml").write_text('[combinations.a]\nbracket = 1\n[combinations.b]\nbracket = "+-1.5"\n')
+    (desk / "broken.vtu").write_text("<VTKFile")
+
+
+def test_the_envelope_schema_is_documented_key_by_key(desk: Path) -> None:
+    _mixed_file(desk / "mixed.xdmf")
+    _loads(desk)
+    commands = (
+        "lever.xdmf --solve nonlinear --base hencky",
+        "lever.xdmf --solve nonlinear --measures spin,accumulated_equivalent_strain -o spin.vtu",
+        "bracket.vtu --combinations loads.toml --solve linear",
+        "ring.vtu ring.vtu --measures strain -o ring.out.vtu",
+        "mixed.xdmf mixed.xdmf -o mixed.out.xdmf",
+    )
+    produced = [_json_of(f"unturn envelope {c}") for c in commands]
+    status, said = run(spoken("unturn envelope bracket.vtu broken.vtu --keep-going --json failed.json"))
+    assert status == InputError.exit_status, said
+    produced.append(json.loads(Path("failed.json").read_text(encoding="utf-8")))
+    assert {d["schema"] for d in produced} == {"unturn.envelope/1"}
+    _check_schema(DOCS / "envelope-json.md", produced)
+
+
+def _square(n: int, power: int) -> Result:
+    """The unit square in n x n quads with u = (x^power, 0)."""
+    x, y = (k.ravel() for k in np.meshgrid(np.linspace(0, 1, n + 1), np.linspace(0, 1, n + 1), indexing="ij"))
+    number = np.arange((n + 1) ** 2).reshape(n + 1, n + 1)
+    corners = number[:-1, :-1], number[1:, :-1], number[1:, 1:], number[:-1, 1:]
+    cells = np.stack(corners, axis=-1).reshape(-1, 4)
+    points = np.column_stack([x, y, 0 * x])
+    u = 1e-3 * np.column_stack([x**power, 0 * x, 0 * x])
+    return Result(points, (CellBlock("quad", cells, np.arange(n * n)),), {"u": u})
+
+
+def test_the_convergence_schema_is_documented_key_by_key(desk: Path) -> None:
+    for power in (1, 2):
+        for n in (2, 4, 8):
+            unturn.write(_square(n, power), desk / f"square_{power}_{n}.vtu")
+    asked = " ".join(
+        f"--quantity '{q}'"
+        for q in (
+            "peak strain_XX",
+            "percentile 50 strain_XX",
+            "value strain_XX at 0.3,0.3,0",
+            "peak rotation_Z",
+        )
+    )
+    produced = [
+        _json_of(f"unturn convergence square_1_2.vtu square_1_4.vtu square_1_8.vtu {asked}"),
+    ]
+    meshes = "square_2_2.vtu square_2_4.vtu square_2_8.vtu"
+    status, said = run(spoken(f"unturn convergence {meshes} {asked} --json study.json"))
+    assert status == 1, said  # the value at a point oscillates
+    produced.append(json.loads(Path("study.json").read_text(encoding="utf-8")))
+    assert {d["schema"] for d in produced} == {"unturn.convergence/1"}
+    _check_schema(DOCS / "convergence-json.md", produced)

@@ -86,7 +86,7 @@ def envelope(
         bool,
         typer.Option(
             "--keep-going",
-            help="Leave out a state that fails, name it, and go on; it still fails at the end.",
+            help="Leave out a state that fails, name it, and go on; the exit status is still that of the failure.",
         ),
     ] = False,
     displacement: o.Displacement = None,
