@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 import re
 from dataclasses import dataclass
 
@@ -53,6 +54,8 @@ class Displacement:
         Every name that could have been it.
     scale
         Factor from the stored arrays to the values.
+    components
+        How many of the three were stored: 2 or 3.
     """
 
     name: str
@@ -61,6 +64,7 @@ class Displacement:
     why: str
     candidates: tuple[str, ...]
     scale: float = 1.0
+    components: int = 3
 
 
 def displacement_candidates(result: Result) -> tuple[list[str], list[str]]:
@@ -120,9 +124,11 @@ def find_displacement(result: Result, name: str | None = None, scale: float = 1.
     DisplacementError
         No candidate, several, only on cells, or a complex (harmonic) pair.
     UsageError
-        The named array does not exist or is no vector.
+        The named array does not exist or is no vector, or the scale is no factor.
     """
     where = f"{result.path}: " if result.path else ""
+    if not (math.isfinite(scale) and scale):
+        raise UsageError(f"--displacement-scale {scale:g}: the factor must be a number other than zero.")
     named, others = displacement_candidates(result)
     candidates = tuple(named or others)
     if name is not None:
@@ -191,7 +197,7 @@ def _chosen(
     values[:, : len(columns)] = np.stack(columns, axis=1)
     if scale != 1.0:
         values *= scale
-    return Displacement(name, values, stored, why, candidates, scale)
+    return Displacement(name, values, stored, why, candidates, scale, len(columns))
 
 
 def _columns(stored: tuple[np.ndarray, ...], name: str, where: str, along_x: bool) -> list[np.ndarray]:

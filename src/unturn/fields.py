@@ -197,8 +197,15 @@ def _check_surface(model: Model, names: Sequence[str], frame: Frame | None) -> N
         )
 
 
-_OK, _NOT_FINITE, _FLAT, _TANGLED = range(4)
-_REASONS = {_NOT_FINITE: "displacement not finite", _FLAT: "no volume", _TANGLED: "tangled"}
+_OK, _NOT_FINITE, _FLAT, _TANGLED, _NOWHERE = range(5)
+_REASONS = {
+    _NOT_FINITE: "displacement not finite",
+    _NOWHERE: "coordinates not finite",
+    _FLAT: "no volume",
+    _TANGLED: "tangled",
+}
+
+_ALONG = 1e-9  # component of an axis below which it lies in the plane
 
 
 class _Job:
@@ -330,7 +337,22 @@ class _Job:
         if self.frame is None:
             return None
         centroid = np.stack([chunk.interpolate(place.functions[0], i) for i in range(3)])
-        return self.frame.axes(centroid, rows, point.tangents)
+        found = self.frame.axes(centroid, rows, point.tangents)
+        self._check_across(found)
+        return found
+
+    def _check_across(self, axes: Floats) -> None:
+        """Refuse axes none of which lies in a plane mesh whose third direction is not stated: all would be NaN."""
+        plane = self.model.plane
+        if plane is None or plane.model is not None or self.frame is None:
+            return
+        across = np.abs(axes[:, plane.normal])
+        if (across.min(axis=0) > _ALONG).any():
+            raise UsageError(
+                f"--frame {self.frame.text!r}: none of its axes lies in the plane of the mesh, and the strain across the "
+                "plane is not known: state it with --plane strain, --plane stress --poisson NU or --plane axisymmetric, or "
+                "take a frame with an axis in it."
+            )
 
     def _geometry(
         self, chunk: ElementChunk, point: PointGradient, rule: Samples
@@ -374,6 +396,8 @@ class _Job:
         status[(low <= 0) & (high >= 0)] = _TANGLED
         broken = ~np.isfinite(point.inverse[0, 0])
         status[broken] = _FLAT
+        placed = chunk.relative[:3].sum(axis=(0, 1)) + chunk.first[:3].sum(axis=0)
+        status[~np.isfinite(placed)] = _NOWHERE
         moved = chunk.relative[3:].sum(axis=(0, 1)) + chunk.first[3:].sum(axis=0)
         status[~np.isfinite(moved)] = _NOT_FINITE
         return status

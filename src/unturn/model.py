@@ -12,7 +12,7 @@ from scipy import sparse
 
 from unturn.displacement import Displacement, find_displacement
 from unturn.elements import Element, detect_spacing, element, not_computable
-from unturn.errors import InputError, UsageError
+from unturn.errors import DisplacementError, InputError, UsageError
 from unturn.gradient import ElementChunk, NodalFields, Plane, PlaneModel
 from unturn.kinematics._symmetric import Floats
 from unturn.midside import misplaced_mid_nodes
@@ -182,7 +182,10 @@ def build_model(
     if all(row is None for row in rows):
         raise InputError(_nothing_to_compute(result))
     left_out, masks = _left_out(result, rows, skin, alive)
+    _check_components(result, rows, points, found)
     flat, values = _plane_mesh(result, rows, points, found.values, options, notes)
+    if options.poisson is not None and (flat is None or options.model is None):
+        _check_poisson(result, rows, flat)
     blocks = []
     for block, row, mask in zip(result.blocks, rows, masks):
         kind: Kind | None = None
@@ -198,6 +201,35 @@ def build_model(
         result, found, points, NodalFields(points, values), tuple(blocks), flat, left_out, tuple(notes),
         poisson=options.poisson,
     )  # fmt: skip
+
+
+def _check_components(
+    result: Result, rows: list[Element | None], points: Floats, found: Displacement
+) -> None:
+    """Refuse a displacement in the plane for a mesh that is not in it."""
+    if found.components != 2:
+        return
+    blocks = [b for b, row in zip(result.blocks, rows) if row is not None]
+    z = points[_used(blocks, result.n_points), 2]
+    z = z[np.isfinite(z)]
+    if len(z) and np.ptp(z) > _IN_PLANE * float(np.abs(points[np.isfinite(points)]).max(initial=0.0)):
+        raise DisplacementError(
+            f"{_where(result)}{found.name!r} has 2 components, and the mesh does not lie in the x-y plane: the third one is "
+            "missing. Name an array of 3 components with --displacement NAME, or three scalars ux,uy,uz."
+        )
+
+
+def _check_poisson(result: Result, rows: list[Element | None], flat: Plane | None) -> None:
+    """Refuse a Poisson ratio that nothing depends on."""
+    if flat is not None:
+        raise UsageError(
+            f"{_where(result)}--poisson belongs to --plane stress; on its own it does nothing here."
+        )
+    if not any(row is not None and row.dim == 2 for row in rows):
+        raise UsageError(
+            f"{_where(result)}--poisson is for plane stress and for the thickness of surfaces; this mesh has no cells of "
+            "either. For the form of the equivalent strain there is --equivalent-poisson."
+        )
 
 
 def _where(result: Result) -> str:

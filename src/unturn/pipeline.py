@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Sequence
 from dataclasses import asdict, dataclass, field, replace
 from typing import Any, Literal
@@ -143,6 +144,7 @@ def compute(
     if options.at not in PLACES:
         raise UsageError(f"at={options.at!r} is not known; use one of {', '.join(PLACES)}.")
     names = _checked_measures(options)
+    _check_numbers(options)
     model = model_of(result, options)
     frame = None if options.frame is None else parse_frame(options.frame, result)
     settings: dict[str, Any] = {
@@ -279,6 +281,21 @@ def _checked_measures(options: StrainOptions) -> tuple[str, ...]:
     return names
 
 
+def _check_numbers(options: StrainOptions) -> None:
+    effective = options.equivalent_poisson
+    if effective is not None and not -1.0 < effective <= 0.5:
+        raise UsageError(
+            f"--equivalent-poisson {effective:g}: an effective Poisson ratio lies between -1 and 0.5."
+        )
+    reference = options.reference_temperature
+    if reference is not None and not math.isfinite(reference):
+        raise UsageError(f"--reference-temperature {reference:g} is not a temperature.")
+    if options.axis != "y" and options.plane != "axisymmetric":
+        raise UsageError(
+            f"--axis {options.axis} belongs to --plane axisymmetric; without it, it does nothing."
+        )
+
+
 def model_of(result: Result, options: StrainOptions) -> Model:
     """Return the model of a result as the options ask."""
     return build_model(
@@ -361,9 +378,9 @@ def _parts(
     if how == "whole":
         regions = [("whole", everything)]
     elif how == "bodies":
-        regions = [(r.name, r.cells) for r in bodies(model, computed)] or [("body 1", everything)]
+        regions = [(r.name, r.cells) for r in bodies(model, computed, most=None)] or [("body 1", everything)]
     elif how == "regions":
-        regions = [(r.name, r.cells) for r in find_regions(model, computed)]
+        regions = [(r.name, r.cells) for r in find_regions(model, computed, most=None)]
     else:
         regions = [(r.name, r.cells) for r in named_regions(model, [how], computed)]
     if options.rigid_to is None:

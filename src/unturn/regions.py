@@ -49,26 +49,40 @@ class Region:
     origin: Origin
 
 
-def tag_arrays(result: Result) -> list[str]:
-    """Return the integer cell arrays that number parts, the likeliest first."""
+def tag_arrays(result: Result, most: int | None = _MOST_TAGS) -> list[str]:
+    """Return the integer cell arrays that number parts, the likeliest first; not those of more parts than `most`."""
     likely = []
     for name, values in result.cell_data.items():
         if values.size != result.n_cells or values.dtype.kind not in "iu" or _NOT_TAGS.search(name):
             continue
-        if _TAG_NAMES.search(name) and len(np.unique(values)) <= _MOST_TAGS:
+        if _TAG_NAMES.search(name) and (most is None or len(np.unique(values)) <= most):
             likely.append(name)
     return likely
 
 
-def find_regions(model: Model, cells: NDArray[np.bool_]) -> list[Region]:
+def unused_tags(result: Result) -> str:
+    """Return a sentence on an array that numbers more parts than are judged apart; empty when there is none."""
+    used = tag_arrays(result)
+    if used or result.groups:
+        return ""
+    for name in tag_arrays(result, most=None):
+        return (
+            f"{name!r} numbers {len(np.unique(result.cell_data[name]))} parts, more than the {_MOST_TAGS} that are "
+            f"judged apart: --region {name}=NUMBER judges one"
+        )
+    return ""
+
+
+def find_regions(model: Model, cells: NDArray[np.bool_], most: int | None = _MOST_TAGS) -> list[Region]:
     """Return the regions of a model; only the `cells` (mask) that are judged belong to them.
 
     Groups come before tags, tags before connected bodies. Cells that are in no group make the region ``(no group)``.
+    Arrays that number more than `most` parts are no tags; None: whatever their number.
     """
     result = model.result
-    found = _groups(result, cells) or _tags(result, cells)
+    found = _groups(result, cells) or _tags(result, cells, most)
     if not found:
-        found = bodies(model, cells)
+        found = bodies(model, cells, _MOST_BODIES if most is not None else None)
     if not found:
         found = [Region("whole", np.flatnonzero(cells), "whole")]
     return found
@@ -87,8 +101,8 @@ def _groups(result: Result, cells: NDArray[np.bool_]) -> list[Region]:
     return found
 
 
-def _tags(result: Result, cells: NDArray[np.bool_]) -> list[Region]:
-    for name in tag_arrays(result):
+def _tags(result: Result, cells: NDArray[np.bool_], most: int | None) -> list[Region]:
+    for name in tag_arrays(result, most):
         values = result.cell_data[name].reshape(-1)
         distinct = np.unique(values[cells])
         if len(distinct) < 2:
@@ -99,12 +113,12 @@ def _tags(result: Result, cells: NDArray[np.bool_]) -> list[Region]:
     return []
 
 
-def bodies(model: Model, cells: NDArray[np.bool_]) -> list[Region]:
+def bodies(model: Model, cells: NDArray[np.bool_], most: int | None = _MOST_BODIES) -> list[Region]:
     """Return connected bodies: cells that share nodes.
 
     Coincident nodes count as one where two fifths of the nodes or more have a twin: the writer repeated them per element or
-    per block. Parts that only touch stay apart. A single body, or more than fifty, gives an empty list: the whole is then
-    the better unit.
+    per block. Parts that only touch stay apart. A single body, or more than `most`, gives an empty list: the whole is then
+    the better unit. None: whatever their number.
     """
     corners, index = [], []
     for block in model.blocks:
@@ -125,7 +139,7 @@ def bodies(model: Model, cells: NDArray[np.bool_]) -> list[Region]:
         if len(where) and np.mean(~single) >= _REPEATED:
             part = _parts([label[conn] for conn in corners], model.result.n_points)
     distinct, inverse, counts = np.unique(part, return_inverse=True, return_counts=True)
-    if not 1 < len(distinct) <= _MOST_BODIES:
+    if len(distinct) < 2 or (most is not None and len(distinct) > most):
         return []
     positions = np.concatenate(index)
     order = np.argsort(-counts, kind="stable")

@@ -18,7 +18,7 @@ from unturn.measures import MEASURES
 from unturn.model import Model
 from unturn.numbering import Numbering, element_numbers
 from unturn.pipeline import Computed
-from unturn.regions import Region, find_regions, named_regions
+from unturn.regions import Region, find_regions, named_regions, unused_tags
 from unturn.rigid import Removal
 from unturn.statistics import LOW_PERCENTILES, PERCENTILES, Statistics, statistics
 from unturn.trial import Trial, try_remedies
@@ -179,7 +179,8 @@ def _third_unknown(model: Model) -> bool:
 
 def _warnings(fields: CellFields, d: CellDiagnostics, regions: list[RegionSummary]) -> list[str]:
     found = []
-    sizes = [r.verdict.size for r in regions if math.isfinite(r.verdict.size)]
+    strained = [r for r in regions if r.verdict.level != "no strain"]
+    sizes = [r.verdict.size for r in strained if math.isfinite(r.verdict.size)]
     largest = max(sizes, default=math.nan)
     if largest > 0.5:
         found.append(
@@ -195,13 +196,14 @@ def _warnings(fields: CellFields, d: CellDiagnostics, regions: list[RegionSummar
             f"{inside_out} cells are turned inside out (det F <= 0): a wrong unit or sign of the displacement, "
             "coordinates that are already deformed (--coordinates deformed), or a failed solve"
         )
-    for r in regions:
+    for r in strained:
         if 0 < r.verdict.size < 20 * r.verdict.noise:
             found.append(
-                f"{r.region.name}: the stored precision blurs the strain by +-{r.verdict.noise * 1e6:.2g} microstrain, "
-                f"and 99 % of the volume is below {r.verdict.size * 1e6:.3g}: write the result with more digits"
+                f"{r.region.name}: the stored precision blurs the strain by +-{_micro(r.verdict.noise)} microstrain, "
+                f"and 99 % of the volume is below {_micro(r.verdict.size)}: write the result with more digits"
             )
-    return found
+    unused = unused_tags(fields.model.result)
+    return [*found, unused] if unused else found
 
 
 def _beyond_linear(removals: Sequence[Removal], regions: list[RegionSummary]) -> list[str]:
@@ -217,6 +219,10 @@ def _beyond_linear(removals: Sequence[Removal], regions: list[RegionSummary]) ->
                 f"{stretched * 1e6:.3g} microstrain, and taking it out does not bring the solve into range"
             )
     return found
+
+
+def _micro(value: float) -> str:
+    return f"{float(f'{value * 1e6:.2g}'):g}"
 
 
 def summary_data(summary: Summary) -> dict[str, Any]:

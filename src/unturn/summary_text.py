@@ -73,7 +73,7 @@ def _kind(summary: Summary) -> str:
         axes = "xyz".replace("xyz"[plane.normal], "")
         said = f"plane mesh in {axes}, third direction "
         if plane.model is None:
-            return said + "not stated (ZZ is NaN)"
+            return said + "not stated: the strain across the plane is NaN"
         extra = {
             "stress": f", nu = {plane.poisson}",
             "axisymmetric": f" about {'xyz'[plane.axis]}",
@@ -166,7 +166,9 @@ def _degrees(value: float) -> str:
 def _ratio(value: float) -> str:
     if value < 1e-6:
         return "0 %"
-    return f"{100 * value:.2g} %" if value < 1 else f"{value:.3g} x"
+    if value < 0.995:
+        return f"{100 * value:.2g} %"
+    return "100 %" if value < 1 else f"{value:.3g} x"
 
 
 def _of_its_strain(value: float) -> str:
@@ -223,7 +225,15 @@ def _rows(shown: Sequence[RegionSummary]) -> list[tuple[str, str, str]]:
                     (f"largest {component}", name, "maximum"),
                     (f"smallest {component}", name, "minimum"),
                 ]
-    return [row for row in rows if all(row[1] in r.statistics for r in shown)]
+    rows = [row for row in rows if all(row[1] in r.statistics for r in shown)]
+    return [row for row in rows if not _always_zero(row[1], shown)]
+
+
+def _always_zero(name: str, shown: Sequence[RegionSummary]) -> bool:
+    """Return whether a component is zero by what the mesh is: the shear across a plane."""
+    return name.startswith("strain_") and all(
+        r.statistics[name].minimum == 0 == r.statistics[name].maximum for r in shown
+    )
 
 
 def _table(summary: Summary) -> list[str]:
@@ -406,7 +416,7 @@ def _tail(summary: Summary) -> list[str]:
     lines += _removals(summary)
     left = ", ".join(f"{len(cells)} {reason}" for reason, cells in fields.left_out.items())
     noise = max((r.verdict.noise for r in summary.regions), default=math.nan)
-    floor = "below 1e-6" if noise < 1e-12 else f"+-{noise * 1e6:.1g}"
+    floor = "below 1e-6" if noise < 1e-12 else f"+-{_one_digit(noise * 1e6)}"
     precision = f"; stored precision {floor} microstrain" if math.isfinite(noise) else ""
     lines.append(f"left out: {left or 'no cell'}{precision}")
     if summary.numbers is not None:
@@ -421,6 +431,18 @@ def _tail(summary: Summary) -> list[str]:
     lines += [f"WARNING: {warning}" for warning in summary.warnings]
     lines.append(CAUTION)
     return lines
+
+
+def _one_digit(value: float) -> str:
+    """Return a positive number with one digit, and no power of ten where it is not small.
+
+    Examples
+    --------
+    >>> _one_digit(172.0), _one_digit(0.034), _one_digit(2e-5)
+    ('200', '0.03', '2e-05')
+    """
+    rounded = f"{value:.1g}"
+    return f"{float(rounded):.0f}" if value >= 1 else rounded
 
 
 def _frame(fields: CellFields) -> list[str]:

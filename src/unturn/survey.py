@@ -205,6 +205,7 @@ def _problems(model: Model, fields: CellFields, found: Mapping[str, Any]) -> lis
     hints = {
         "tangled": "their Jacobian changes sign: moved or wrongly ordered nodes; their values are NaN",
         "no volume": "repeated or coinciding nodes; their values are NaN",
+        "coordinates not finite": "NaN or Inf at a node; their values are NaN: write the mesh again",
         "displacement not finite": "NaN or Inf at a node; their values are NaN: look for an unconverged step or a part "
         "that was not solved",
     }
@@ -243,16 +244,18 @@ def _magnitudes(model: Model, found: Mapping[str, Any]) -> list[str]:
     said = []
     precision = found["precision"]
     size, noise = precision["strain_size"], precision["noise_floor"]
-    if size > 0.5:
+    if size <= noise:
+        said.append("there is no strain above the stored precision: a rigid motion, or a step without load")
+    elif size > 0.5:
         said.append(
             f"99 % of the volume has strain below {size:.3g}, which is rubber or a wrong unit: compare the units of mesh "
             "and displacement, and use --displacement-scale"
         )
-    elif 0 < size < 1e-8:
+    elif size < 1e-8:
         said.append(
             f"strain is only {size:.2g}: compare the units of mesh and displacement, --displacement-scale"
         )
-    if 0 < size < 20 * noise:
+    if noise < size < 20 * noise:
         said.append(
             f"strain ({size:.2g}) is not well above the noise floor of the stored numbers ({noise:.2g}): "
             "write the result with more digits"

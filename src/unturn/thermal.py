@@ -7,7 +7,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from unturn.errors import UsageError, close_matches
+from unturn.errors import InputError, UsageError, close_matches
 from unturn.kinematics._symmetric import PAIRS, Floats
 from unturn.result import Result
 
@@ -72,6 +72,8 @@ def parse_thermal(result: Result, expansion: str, temperature: str, reference: f
     ------
     UsageError
         Text that is not understood, an array or region that does not exist, or cells without a coefficient.
+    InputError
+        No finite temperature.
     """
     values = np.full((result.n_cells, 3), np.nan)
     if ":" in expansion:
@@ -125,6 +127,8 @@ def _temperature(result: Result, name: str) -> tuple[Floats | None, Floats | Non
             if values.size != len(values) or values.dtype.kind not in "fiu":
                 raise UsageError(f"--temperature: array {name!r} is not one number a node or cell.")
             flat = values.reshape(-1).astype(np.float64)
+            if not np.isfinite(flat).any():
+                raise InputError(f"--temperature: array {name!r} holds no finite number.")
             return (flat, None) if nodal else (None, flat)
     known = [*result.point_data, *result.cell_data]
     raise UsageError(f"--temperature: no array is called {name!r}.{close_matches(name, known)}")

@@ -130,6 +130,8 @@ def strain(
     from unturn.pipeline import StrainOptions
 
     check_place(picture, json, files)
+    if displacement is not None and displacement_table is not None:
+        raise UsageError("--displacement and --displacement-table exclude each other: give one of them.")
     if picture is not None and len(files) > 1:
         raise UsageError("--picture FILE.png draws one file; give one input file with it.")
     if output is not None and not is_folder(output) and len(files) > 1:
@@ -195,6 +197,15 @@ class _Job:
         from unturn import io
 
         opened = io.open_result(path)
+        if (
+            self.table is not None
+            and opened.steps is not None
+            and (self.step == "all" or self.zero_step is not None)
+        ):
+            raise UsageError(
+                f"{path}: --displacement-table holds the displacement of one state, and --step all and --zero-step need "
+                "that of every step."
+            )
         if self.step == "all" and opened.steps is not None:
             if self.options.at in _OWN_MESH:
                 raise UsageError(
@@ -241,7 +252,7 @@ class _Job:
             return None
         if opened.steps is None:
             raise UsageError(f"{opened.path} is not a series: --zero-step has nothing to measure from.")
-        return opened.read(chosen_step(opened, str(self.zero_step)))
+        return opened.read(chosen_step(opened, str(self.zero_step), "--zero-step"))
 
     def _compute(
         self, result: Result, zero: Result | None, previous: tuple[RigidMotion, ...] = (), alone: bool = False
@@ -255,7 +266,7 @@ class _Job:
             from unturn.io.table import attach_displacement_table, read_displacement_table
 
             result = attach_displacement_table(result, read_displacement_table(self.table))
-            options = replace(options, displacement=options.displacement or "displacement")
+            options = replace(options, displacement="displacement")
         computed = compute(result, options, zero=zero, diagnose=True, previous=previous)
         if alone:  # of a series, one such step is no reason to lose the others
             computed.require_some()
@@ -298,7 +309,7 @@ class _Job:
         return {**summary_data(summary), "output": str(out)}
 
 
-def chosen_step(opened: ResultFile, step: str) -> int:
+def chosen_step(opened: ResultFile, step: str, option: str = "--step") -> int:
     """Return the zero-based number of the step asked for.
 
     Raises
@@ -315,7 +326,7 @@ def chosen_step(opened: ResultFile, step: str) -> int:
         raise UsageError(f"--step {step!r}: use 'last', 'all' or a number from 0 to {n - 1}.") from None
     if not 0 <= number < n:
         raise UsageError(
-            f"{opened.path} has {n} step{'s' * (n != 1)}, 0 to {n - 1}; --step {number} does not exist."
+            f"{opened.path} has {n} step{'s' * (n != 1)}, 0 to {n - 1}; {option} {number} does not exist."
         )
     return number
 

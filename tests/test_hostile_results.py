@@ -1,0 +1,118 @@
+"""Small results that a tired program or a tired person wrote: the numbers are right, and the summary says nothing false."""
+
+from __future__ import annotations
+
+from pathlib import Path
+
+import numpy as np
+import pytest
+
+import unturn
+from documents import run
+from test_cli_wrong_input import POINTS, TETS, two_tets
+from unturn import CellBlock, DisplacementError, Result
+from unturn.model import build_model
+from unturn.pipeline import StrainOptions, compute
+from unturn.regions import bodies, find_regions
+
+GRADIENT = np.array([[1e-3, 4e-4, -2e-4], [2e-4, -3e-4, 5e-4], [-6e-4, 1e-4, 7e-4]])
+QUADS = CellBlock("quad", np.array([[0, 1, 4, 3], [1, 2, 5, 4]]), np.arange(2))
+
+
+def sheet(*axes: int) -> Result:
+    """Two quadrilaterals in a coordinate plane."""
+    flat = np.array([[0, 0], [1, 0.1], [2, 0], [0, 1], [0.9, 1.1], [2, 1.0]])
+    points = np.full((6, 3), 7.0)
+    points[:, axes] = flat
+    u = np.zeros((6, 3))
+    u[:, axes] = flat @ GRADIENT[:2, :2].T
+    return Result(points, (QUADS,), {"u": u})
+
+
+def said(result: Result, folder: Path, *options: str) -> str:
+    unturn.write(result, folder / "file.vtu")
+    status, text = run(["strain", str(folder / "file.vtu"), *options])
+    assert status == 0, text
+    return text
+
+
+@pytest.mark.practice("a displacement of two components belongs to a mesh in the x-y plane")
+def test_two_components_are_not_taken_for_three() -> None:
+    with pytest.raises(
+        DisplacementError, match="'u' has 2 components, and the mesh does not lie in the x-y plane"
+    ):
+        unturn.strain(two_tets(u=1e-3 * POINTS[:, :2]))
+    with pytest.raises(DisplacementError, match="2 components"):
+        unturn.strain(two_tets(ux=POINTS[:, 0], uy=POINTS[:, 1]), displacement="ux,uy")
+    plate = sheet(0, 1)
+    cut = Result(plate.points, plate.blocks, {"u": np.ascontiguousarray(plate.point_data["u"][:, :2])})
+    found = unturn.strain(cut, measures=["strain"]).cell_data["strain"]
+    np.testing.assert_allclose(found[:, [0, 1, 3]], [[1e-3, -3e-4, 3e-4]] * 2, atol=1e-15)
+
+
+@pytest.mark.practice("the reason that is named is the one that can be mended")
+def test_coordinates_that_are_no_numbers_are_called_so() -> None:
+    points = POINTS.copy()
+    points[0] = np.nan  # of the first cell alone
+    result = Result(points, (TETS,), {"u": 1e-3 * POINTS})
+    left_out = compute(result, StrainOptions()).fields.left_out
+    assert {reason: cells.tolist() for reason, cells in left_out.items()} == {"coordinates not finite": [0]}
+
+
+@pytest.mark.practice("what is not known and what is always zero has no row")
+def test_a_plane_mesh_whose_third_direction_is_not_stated(tmp_path: Path) -> None:
+    text = said(sheet(0, 2), tmp_path, "--measures", "strain")
+    assert "third direction not stated: the strain across the plane is NaN" in text
+    rows = [line.split()[1] for line in text.splitlines() if line.startswith(("largest ", "smallest "))]
+    assert rows == ["XX", "XX", "ZZ", "ZZ", "XZ", "XZ", "rotation,"]
+
+
+@pytest.mark.practice("a motion without strain is no case for more digits or another unit")
+def test_a_rigid_motion_raises_no_alarm(tmp_path: Path) -> None:
+    text = said(two_tets(u=np.tile([100.0, 1 / 3, 7.7], (5, 1))), tmp_path)
+    assert "no strain  none above the stored precision" in text
+    assert "WARNING" not in text
+    status, survey = run(["survey", str(tmp_path / "file.vtu")])
+    assert status == 0
+    assert "there is no strain above the stored precision" in survey
+    assert "more digits" not in survey
+
+
+@pytest.mark.practice("numbers are written as people read them")
+def test_no_power_of_ten_where_it_is_not_needed(tmp_path: Path) -> None:
+    points = np.float32(4e6) + POINTS.astype(np.float32)
+    points += np.linspace(0, 0.3, 15, dtype=np.float32).reshape(5, 3)
+    text = said(Result(points, (TETS,), {"u": (points - 4e6) @ GRADIENT.T}), tmp_path)
+    assert "WARNING: whole: the stored precision blurs the strain" in text
+    assert "e+0" not in text
+
+
+def many(n: int) -> Result:
+    """Separate cells, each moved and turned in its own way, with a number each."""
+    points = np.tile(POINTS[:4], (n, 1))
+    points[:, 0] += 3.0 * np.repeat(np.arange(n), 4)
+    turned = np.random.default_rng(1).uniform(-0.1, 0.1, (n, 3))
+    u = np.concatenate([10 * t + np.cross(t, POINTS[:4]) for t in turned])
+    cells = CellBlock("tetra", np.arange(4 * n).reshape(n, 4), np.arange(n))
+    return Result(points, (cells,), {"u": u}, {"part": np.arange(n, dtype=np.int32)})
+
+
+@pytest.mark.derived("theta x X and a translation are a rigid motion of linear theory: nothing is left")
+@pytest.mark.parametrize("how", ["bodies", "regions"])
+def test_every_part_is_freed_of_its_motion_however_many(how: str) -> None:
+    result = many(230)
+    model = build_model(result)
+    cells = np.ones(230, dtype=bool)
+    assert bodies(model, cells) == []  # too many to judge apart
+    assert [r.name for r in find_regions(model, cells)] == ["whole"]
+    found = compute(result, StrainOptions(remove_rigid=how, solve="linear"))
+    assert len(found.removals) == 230
+    for name in ("strain", "rotation"):
+        np.testing.assert_allclose(found.fields.arrays[name], 0.0, atol=1e-12)
+
+
+@pytest.mark.practice("parts that are not judged apart are named")
+def test_too_many_numbers_of_parts_are_said(tmp_path: Path) -> None:
+    text = said(many(230), tmp_path)
+    assert "WARNING: 'part' numbers 230 parts, more than the 200 that are judged apart" in text
+    assert "part=7  " in said(many(230), tmp_path, "--region", "part=7")
