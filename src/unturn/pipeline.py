@@ -298,12 +298,14 @@ def _check_numbers(options: StrainOptions) -> None:
 
 def model_of(result: Result, options: StrainOptions) -> Model:
     """Return the model of a result as the options ask."""
+    # on free faces of solids Poisson's ratio is that of the faces, which are no cells of the model
+    poisson = None if options.at == "surface" and options.plane is None else options.poisson
     return build_model(
         result,
         displacement=options.displacement,
         displacement_scale=options.displacement_scale,
         coordinates=options.coordinates,
-        plane=PlaneOptions(options.plane, options.poisson, options.axis, options.surface),
+        plane=PlaneOptions(options.plane, poisson, options.axis, options.surface),
         skin=options.skin,
         alive=options.alive,
     )

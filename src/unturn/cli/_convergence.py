@@ -17,9 +17,13 @@ if TYPE_CHECKING:
 
 
 def convergence(
-    coarse: Annotated[Path, typer.Argument(metavar="COARSE", help="Result on the coarsest mesh.")],
-    medium: Annotated[Path, typer.Argument(metavar="MEDIUM", help="Result on the mesh between.")],
-    fine: Annotated[Path, typer.Argument(metavar="FINE", help="Result on the finest mesh.")],
+    coarse: Annotated[
+        Path, typer.Argument(metavar="COARSE", help="Result on the coarsest mesh.", readable=False)
+    ],
+    medium: Annotated[
+        Path, typer.Argument(metavar="MEDIUM", help="Result on the mesh between.", readable=False)
+    ],
+    fine: Annotated[Path, typer.Argument(metavar="FINE", help="Result on the finest mesh.", readable=False)],
     quantity: Annotated[
         list[str] | None,
         typer.Option(

@@ -25,7 +25,9 @@ if TYPE_CHECKING:
 def envelope(
     files: Annotated[
         list[Path],
-        typer.Argument(metavar="SERIES...", help="One series, or several files: load cases on one mesh."),
+        typer.Argument(
+            metavar="SERIES...", help="One series, or several files: load cases on one mesh.", readable=False
+        ),
     ],
     output: Annotated[
         Path | None,
@@ -137,15 +139,16 @@ def envelope(
 
     strain = StrainOptions(
         displacement=displacement,
-        measures=[m.strip() for m in measures.split(",") if m.strip()] if measures else None,
+        measures=None if measures is None else [m.strip() for m in measures.split(",") if m.strip()],
         base=base.value, at=at.value, solve=solve.value, plane=plane.value if plane else None, poisson=poisson,
         axis=axis.value, coordinates=coordinates.value, displacement_scale=displacement_scale,
         equivalent_poisson=equivalent_poisson, remove_rigid=remove_rigid, frame=frame, skin=skin, alive=alive,
         threads=threads,
     )  # fmt: skip
     files = _numbered(files) if as_series else files
-    check_place(None, json, files)
-    check_place(None, steps_output, files)
+    inputs = [*files, *([combinations] if combinations is not None else [])]
+    check_place(None, json, inputs)
+    check_place(None, steps_output, inputs)
     suffix = writable_suffix(files[0], _read_first(files))
     out = Places(output, files, (json, steps_output)).of(files[0], suffix, "envelope")
     _check_target(out)
