@@ -139,3 +139,17 @@ def test_an_array_of_nan_does_not_make_a_file_unreadable(tmp_path: Path) -> None
     found: Result = unturn.read(tmp_path / "grid.vtu")
     assert np.isnan(found.cell_data["failed_vector"]).all()
     np.testing.assert_array_equal(found.point_data["u"], U)
+
+
+def test_files_beside_a_new_output_replace_nothing(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.chdir(tmp_path)
+    assert run(["strain", str(LEVER), "--step", "all", "-o", "run.pvd"])[0] == 0
+    (tmp_path / "run.pvd").rename(tmp_path / "old.pvd")  # its files still lie in run/
+    before = state(tmp_path)
+    status, text = run(["strain", "old.pvd", "--step", "all", "-o", "run.pvd", "--prefix", "p_"])
+    assert status == 2
+    assert "run.pvd needs the name run/run_0000.vtu beside it, and such a file is there already" in text
+    assert state(tmp_path) == before
+    for _ in range(2):  # an output of the same name is replaced with all that belongs to it
+        status, text = run(["strain", "old.pvd", "--step", "all", "-o", "new.pvd", "--overwrite"])
+        assert status == 0, text

@@ -116,3 +116,43 @@ def test_too_many_numbers_of_parts_are_said(tmp_path: Path) -> None:
     text = said(many(230), tmp_path)
     assert "WARNING: 'part' numbers 230 parts, more than the 200 that are judged apart" in text
     assert "part=7  " in said(many(230), tmp_path, "--region", "part=7")
+
+
+@pytest.mark.practice("two arrays are compared where both hold strain, and only there")
+def test_the_solvers_strain_is_not_blamed_for_what_nobody_knows(tmp_path: Path) -> None:
+    six = np.tile([1e-3, -3e-4, 0.0, 3e-4, 0, 0], (2, 1))
+    line = "solver's strain array 'E' (cells):"
+    plate = sheet(0, 1)
+    same = Result(plate.points, plate.blocks, plate.point_data, {"E": six + 2e-3 * np.eye(6)[2]})
+    assert f"{line} equal to ours within" in said(same, tmp_path, "--measures", "strain")
+    wrong = Result(plate.points, plate.blocks, plate.point_data, {"E": 2 * six})
+    assert f"{line} DIFFERS from ours by " in said(wrong, tmp_path, "--measures", "strain")
+    rest = Result(plate.points, plate.blocks, {"u": np.zeros((6, 3))}, {"E": 0 * six})
+    assert f"{line} not compared, there is no strain in both" in said(rest, tmp_path, "--measures", "strain")
+    empty = Result(plate.points, plate.blocks, plate.point_data, {"E": np.nan * six})
+    assert f"{line} not compared" in said(empty, tmp_path, "--measures", "strain")
+
+
+@pytest.mark.derived("a whole number stands for half a unit to each side")
+def test_displacements_in_whole_numbers_are_known_to_half_of_one(tmp_path: Path) -> None:
+    result = two_tets(u=np.rint(1e3 * POINTS @ GRADIENT.T * 1e3).astype(np.int32))
+    text = said(result, tmp_path, "--displacement", "u", "--displacement-scale", "1e-6")
+    assert "stored precision +-" in text
+    noise = float(text.split("stored precision +-")[1].split()[0])
+    assert 0.3 < noise < 10  # microstrain, on elements of height 0.6 to 1
+
+
+@pytest.mark.practice("a series says which of its steps is meant")
+def test_a_step_that_cannot_be_used_is_named(tmp_path: Path) -> None:
+    steps = [two_tets(u=1e-3 * POINTS), two_tets(u=np.full((5, 3), np.nan)), two_tets(u=1e-3 * POINTS)]
+    with unturn.io.series_writer(tmp_path / "s.xdmf") as writer:
+        for time, step in enumerate(steps):
+            writer.add(step, float(time))
+    status, text = run(["strain", str(tmp_path / "s.xdmf"), "--step", "all"])
+    assert status == 0
+    assert "step 1  t = 1   whole: no cell was computed" in text
+    status, text = run(
+        ["strain", str(tmp_path / "s.xdmf"), "--step", "all", "--remove-rigid", "whole", "--prefix", "r_"]
+    )
+    assert status == 3
+    assert "at step 1 (t = 1): " in text

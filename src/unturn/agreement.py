@@ -39,9 +39,10 @@ class Agreement:
     array, association
         Its name and where it lives.
     difference
-        99th percentile, weighted by volume, of the norm of the difference over that of the strain.
+        99th percentile, weighted by volume, of the norm of the difference over that of the strain; NaN where neither
+        holds strain above the stored precision, or the array no numbers where ours does.
     guess
-        What was assumed of it: measure, order, factor of shear.
+        What was assumed of it: measure, order, factor of shear; empty when it was not compared.
     agrees
         Whether the difference is below 2 %.
     """
@@ -105,17 +106,26 @@ def _best(
     name: str, where: Literal["point", "cell"], values: Floats, ours: dict[str, Floats], fields: CellFields
 ) -> Agreement:
     assert fields.diagnostics is not None
-    weight = fields.diagnostics.volume
-    best = (np.inf, "nothing that fits")
+    weight, noise = fields.diagnostics.volume, fields.diagnostics.noise
+    best = (np.nan, "")
     for measure, e in ours.items():
+        known = np.flatnonzero(np.isfinite(e).any(axis=1))  # not the strain across a plane that is not stated
         for label, theirs in _readings(values).items():
-            keep = np.isfinite(weight) & np.isfinite(e).all(axis=0) & np.isfinite(theirs).all(axis=0)
+            keep = (
+                np.isfinite(weight)
+                & np.isfinite(e[known]).all(axis=0)
+                & np.isfinite(theirs[known]).all(axis=0)
+            )
             if not keep.any():
                 continue
-            gap, size = _norm(e[:, keep] - theirs[:, keep]), _norm(e[:, keep])
-            bound = weighted_percentiles(size, weight[keep], [99.0])[0]
-            part = weighted_percentiles(gap, weight[keep], [99.0])[0] / bound if bound > 0 else np.inf
-            if part < best[0]:
+            pair = np.zeros((6, 2, int(keep.sum())))
+            pair[known] = np.stack([e[known], theirs[known]], axis=1)[:, :, keep]
+            norms = (pair[:, 0] - pair[:, 1], pair[:, 0], pair[:, 1])
+            gap, size, their_size = (weighted_percentiles(_norm(n), weight[keep], [99.0])[0] for n in norms)
+            if max(size, their_size) <= weighted_percentiles(noise[keep], weight[keep], [99.0])[0]:
+                continue
+            part = gap / size if size > 0 else np.inf
+            if not part >= best[0]:
                 best = (part, f"{measure}, {label}")
     return Agreement(name, where, float(best[0]), best[1], bool(best[0] < _CLOSE))
 

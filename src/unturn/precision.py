@@ -56,8 +56,8 @@ def storage_resolution(values: NDArray[Any], meant: int = MEANT_COORDINATE) -> R
     if values.dtype == np.float32:
         wide = values.astype(np.float64)
         return _fixed(wide, meant, 1e6) or _decimal(wide, meant, 6) or Resolution(2.0**-24, "float32")
-    if values.dtype == np.float16:
-        return Resolution(2.0**-11, "float16")
+    if values.dtype == np.float16 or values.dtype.kind in "iu":
+        return _coarse(values.dtype.kind, meant)
     flat = np.asarray(values, dtype=np.float64).reshape(-1)
     sample = _distinct(flat)
     if len(sample) < _FEWEST:
@@ -70,6 +70,12 @@ def storage_resolution(values: NDArray[Any], meant: int = MEANT_COORDINATE) -> R
             return Resolution(2.0**-24, "float32")
         return Resolution(2.0**-53, "float64")
     return _fixed(sample, meant, 1e12) or _decimal(sample, meant, 14) or Resolution(2.0**-53, "float64")
+
+
+def _coarse(kind: str, meant: int) -> Resolution:
+    if kind == "f":
+        return Resolution(2.0**-11, "float16")
+    return Resolution(2.0**-53, "whole numbers", 0.5 if meant == MEANT_DISPLACEMENT else 0.0)
 
 
 def _distinct(flat: NDArray[np.float64]) -> NDArray[np.float64]:

@@ -9,6 +9,7 @@ from pathlib import PurePath
 
 import numpy as np
 
+from unturn.agreement import Agreement
 from unturn.elsewhere import ElsewhereExtreme
 from unturn.fields import CellFields
 from unturn.measures import MEASURES
@@ -57,12 +58,17 @@ def _head(summary: Summary) -> list[str]:
     asked = [f"--{k.replace('_', '-')} {v}" for k, v in summary.request.items() if k in _TOLD]
     if asked:
         lines.append("asked: " + ", ".join(asked))
-    for a in summary.agreements:
-        part = f"{100 * a.difference:.2g} %" if math.isfinite(a.difference) else "everything"
-        where = "cells" if a.association == "cell" else "nodes, averaged to cells"
-        said = "equal to ours within" if a.agrees else "DIFFERS from ours by"
-        lines.append(f"solver's strain array '{a.array}' ({where}): {said} {part} (read as {a.guess})")
-    return lines
+    return lines + [_agreement(a) for a in summary.agreements]
+
+
+def _agreement(a: Agreement) -> str:
+    where = "cells" if a.association == "cell" else "nodes, averaged to cells"
+    start = f"solver's strain array '{a.array}' ({where}):"
+    if not a.guess:
+        return f"{start} not compared, there is no strain in both"
+    part = _ratio(a.difference) if math.isfinite(a.difference) else "everything"
+    said = "equal to ours within" if a.agrees else "DIFFERS from ours by"
+    return f"{start} {said} {part} (read as {a.guess})"
 
 
 def _kind(summary: Summary) -> str:

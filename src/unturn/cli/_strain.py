@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import TYPE_CHECKING, Annotated, Any
@@ -233,7 +234,10 @@ class _Job:
         previous: tuple[RigidMotion, ...] = ()
         with io.series_writer(out) as writer:
             for index, value in enumerate(opened.steps):
-                result, summary = job._compute(opened.read(index), zero, previous)
+                try:
+                    result, summary = job._compute(opened.read(index), zero, previous)
+                except InputError as error:
+                    raise type(error)(f"at step {index} (t = {value:g}): {error}") from error
                 previous = tuple(r.motion for r in summary.removals)
                 writer.add(result, value)
                 data.append(self._data(summary, out))
@@ -334,6 +338,9 @@ def chosen_step(opened: ResultFile, step: str, option: str = "--step") -> int:
 def _step_line(summary: Summary, index: int, value: float) -> str:
     parts = []
     for r in summary.regions[:5]:
+        if r.verdict.worst_cell < 0 and not math.isfinite(r.verdict.size):
+            parts.append(f"{r.region.name}: no cell was computed")
+            continue
         peak = next((s for n, s in r.statistics.items() if n.startswith("equivalent_strain")), None)
         largest = f"equivalent up to {peak.maximum * 1e6:.0f} microstrain, " if peak else ""
         parts.append(

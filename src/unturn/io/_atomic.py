@@ -7,7 +7,7 @@ import errno
 import os
 import shutil
 import tempfile
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from pathlib import Path
 
 from unturn.errors import UsageError
@@ -26,7 +26,8 @@ def replacing(target: Path) -> Iterator[Path]:
     Raises
     ------
     UsageError
-        The target is a folder, its folder is missing or may not be written to, or the disk is full.
+        The target is a folder, its folder is missing or may not be written to, the disk is full, or a file that goes
+        beside the target would replace one of another result.
     """
     final = Path(os.path.realpath(target))
     if final.is_dir():
@@ -75,6 +76,17 @@ def _cannot_write(target: Path, error: OSError) -> UsageError:
     )
 
 
+def _refuse_strangers(work: Path, final: Path, produced: Sequence[Path]) -> None:
+    """Refuse to replace files beside a target that is not there itself: they belong to something else."""
+    for source in produced:
+        place = final.parent / source.relative_to(work)
+        if place.exists():
+            raise UsageError(
+                f"{final.name} needs the name {source.relative_to(work)} beside it, and such a file is there already, of "
+                "another result. Give another output, or remove that file."
+            )
+
+
 def _move_into_place(work: Path, final: Path) -> None:
     """Move all files of `work` beside `final`, `final` itself last; put the old ones back if a move fails."""
     produced = sorted(p for p in work.rglob("*") if p.is_file())
@@ -82,6 +94,8 @@ def _move_into_place(work: Path, final: Path) -> None:
     if index not in produced:
         raise OSError("the writer produced no file")
     produced.remove(index)
+    if not final.exists():
+        _refuse_strangers(work, final, produced)
     kept = Path(tempfile.mkdtemp(prefix="old-", dir=work))
     moved: list[tuple[Path, Path | None]] = []
     try:
