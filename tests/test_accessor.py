@@ -176,3 +176,20 @@ def test_pyvista_alone_finds_it_once_installed(tmp_path):
     )
     assert done.returncode == 0, done.stderr
     assert "found by PyVista alone" in done.stdout
+
+
+@pytest.mark.derived("u = 1e-3 X: XX is 1e-3 at every node, on every face and at every quadrature point")
+def test_values_that_live_elsewhere_than_on_cells() -> None:
+    mesh = pyvista.ImageData(dimensions=(3, 3, 3)).cast_to_unstructured_grid()
+    mesh.point_data["u"] = mesh.points * [1e-3, 0, 0]
+    at_nodes = mesh.unturn.strain(at="nodes")
+    assert at_nodes.n_cells == mesh.n_cells
+    assert "strain" not in at_nodes.cell_data
+    np.testing.assert_allclose(at_nodes.point_data["strain"][:, 0], 1e-3, rtol=1e-9)
+    faces = mesh.unturn.strain(at="surface")
+    assert faces.n_cells == 24
+    np.testing.assert_allclose(np.sum(faces.cell_data["area"]), 24, rtol=1e-12)
+    cloud = mesh.unturn.strain(at="quadrature")
+    assert cloud.n_points == 64
+    np.testing.assert_allclose(cloud.point_data["strain"][:, 0], 1e-3, rtol=1e-9)
+    assert list(mesh.point_data) == ["u"]

@@ -11,7 +11,8 @@ import pyvista
 
 from unturn._api import strain
 from unturn.io.vtk_arrays import update_attributes
-from unturn.io.vtk_result import result_from_vtk
+from unturn.io.vtk_result import result_from_vtk, vtk_from_result
+from unturn.pipeline import OWN_MESH
 
 
 class UnturnAccessor:
@@ -27,7 +28,9 @@ class UnturnAccessor:
         self._mesh = mesh
 
     def strain(self, **options: Any) -> Any:
-        """Return a new mesh of the same class with strain, rotation and what follows from them as cell arrays.
+        """Return a new mesh of the same class with strain, rotation and what follows from them as arrays.
+
+        With ``at="surface"`` the free faces of solids, with ``at="quadrature"`` a cloud of points.
 
         Parameters
         ----------
@@ -60,7 +63,10 @@ class UnturnAccessor:
         867
         """
         found = strain(result_from_vtk(self._mesh), **options)
+        if options.get("at") in OWN_MESH:
+            return pyvista.wrap(vtk_from_result(found))
         mesh = self._mesh.copy(deep=False)
+        update_attributes(mesh.GetPointData(), found.point_data, "point", found.component_names)
         update_attributes(mesh.GetCellData(), found.cell_data, "cell", found.component_names)
         return mesh
 

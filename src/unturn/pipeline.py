@@ -29,6 +29,8 @@ from unturn.thermal import Thermal, parse_thermal
 from unturn.verdict import Solve
 
 Place = Literal["centroid", "mean", "nodes", "surface", "quadrature"]
+OWN_MESH: tuple[Place, ...] = ("surface", "quadrature")
+"""Places whose values do not fit on the mesh of the file."""
 PLACES: tuple[Place, ...] = ("centroid", "mean", "nodes", "surface", "quadrature")
 
 

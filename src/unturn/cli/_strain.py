@@ -176,10 +176,6 @@ def strain(
         raise typer.Exit(max(e.exit_status for e in failed))
 
 
-_OWN_MESH = ("surface", "quadrature")
-"""Places whose values do not fit on the mesh of the file."""
-
-
 @dataclass(frozen=True)
 class _Job:
     places: Places
@@ -192,6 +188,12 @@ class _Job:
     overwrite: bool
     picture: Path | None
     text_to_stderr: bool  # stdout is for the JSON then
+
+    @property
+    def _own_mesh(self) -> bool:
+        from unturn.pipeline import OWN_MESH
+
+        return self.options.at in OWN_MESH
 
     def run(self, path: Path) -> list[dict[str, Any]]:
         """Do one file and return its summaries as data."""
@@ -208,7 +210,7 @@ class _Job:
                 "that of every step."
             )
         if self.step == "all" and opened.steps is not None:
-            if self.options.at in _OWN_MESH:
+            if self._own_mesh:
                 raise UsageError(
                     f"--at {self.options.at} makes a mesh of its own; give one --step of the series."
                 )
@@ -217,7 +219,7 @@ class _Job:
         out = self._target(path, result, series=False)
         result, summary = self._compute(result, self._zero(opened), alone=True)
         lost = io.write(result, out)
-        self._print(summary, out, lost, result if self.options.at in _OWN_MESH else None)
+        self._print(summary, out, lost, result if self._own_mesh else None)
         return [self._data(summary, out)]
 
     def _series(self, opened: ResultFile, path: Path) -> list[dict[str, Any]]:
@@ -280,7 +282,7 @@ class _Job:
     def _target(self, path: Path, result: Result, series: bool) -> Path:
         from unturn.io import check_target, writable_suffix
 
-        own = self.options.at in _OWN_MESH
+        own = self._own_mesh
         suffix = ".vtu" if own else writable_suffix(path, result, series=series)
         out = self.places.of(path, suffix, self.options.at if own else "strain")
         check_target(out, series=series)
