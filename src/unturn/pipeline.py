@@ -109,6 +109,7 @@ def compute(
     InputError
         A result that cannot be used.
     """
+    _check_choices(options)
     names = _checked_measures(options)
     _check_numbers(options)
     model = _model(result, options)
@@ -180,6 +181,23 @@ def _checked_measures(options: StrainOptions) -> tuple[str, ...]:
             "small measures, or state --solve nonlinear if it was."
         )
     return names
+
+
+_CHOICES: dict[str, tuple[str | None, ...]] = {
+    "solve": ("linear", "nonlinear", "unknown"),
+    "plane": (None, "strain", "stress", "axisymmetric"),
+    "axis": ("x", "y"),
+    "coordinates": ("reference", "deformed"),
+}
+
+
+def _check_choices(options: StrainOptions) -> None:
+    for name, known in _CHOICES.items():
+        value = getattr(options, name)
+        if value not in known:
+            raise UsageError(
+                f"{name}={value!r} is not known; use one of {', '.join(repr(k) for k in known)}."
+            )
 
 
 def _check_numbers(options: StrainOptions) -> None:
