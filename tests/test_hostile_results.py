@@ -10,7 +10,7 @@ import pytest
 import unturn
 from documents import run
 from test_cli_wrong_input import POINTS, TETS, two_tets
-from unturn import CellBlock, DisplacementError, Result
+from unturn import CellBlock, DisplacementError, InputError, Result, UsageError
 from unturn.model import build_model
 from unturn.pipeline import StrainOptions, compute
 from unturn.regions import bodies, find_regions
@@ -156,3 +156,33 @@ def test_a_step_that_cannot_be_used_is_named(tmp_path: Path) -> None:
     )
     assert status == 3
     assert "at step 1 (t = 1): " in text
+
+
+@pytest.mark.practice("a misspelt choice is never taken for the default")
+@pytest.mark.parametrize(
+    ("name", "value"),
+    [
+        ("coordinates", "Deformed"),
+        ("solve", "non-linear"),
+        ("plane", "plane strain"),
+        ("axis", "z"),
+        ("measures", "strain"),
+    ],
+)
+def test_choices_of_the_library_are_checked(name: str, value: str) -> None:
+    with pytest.raises(UsageError, match=value):
+        unturn.strain(two_tets(u=1e-3 * POINTS), **{name: value})  # type: ignore[arg-type]
+
+
+@pytest.mark.practice("a result that contradicts itself is refused when it is made")
+def test_cells_without_a_place() -> None:
+    nodes = TETS.connectivity
+    for index in ([0, 2], [1, 1], [-1, 0]):
+        with pytest.raises(InputError, match="each once"):
+            Result(POINTS, (CellBlock("tetra", nodes, np.array(index)),))
+    with pytest.raises(InputError, match="whole numbers"):
+        Result(POINTS, (CellBlock("tetra", nodes.astype(float), np.arange(2)),))
+    with pytest.raises(InputError, match="group 'arm' holds cells that do not exist"):
+        Result(POINTS, (TETS,), groups={"arm": np.array([2])})
+    with pytest.raises(UsageError, match="use 'last' or a number"):
+        unturn.read(Path(__file__).parents[1] / "sample_meshes" / "lever.xdmf", "all")  # type: ignore[arg-type]

@@ -347,6 +347,8 @@ def choose_measures(
     known = [*MEASURES, *GEOMETRY, *SURFACE_AXES]
     counterpart = _counterparts(base)
     wanted: set[str] = set()
+    if isinstance(names, str):
+        raise UsageError(f"measures={names!r} is one text; give a list of names: [{names!r}].")
     if names is not None and not len(names):
         raise UsageError("no measure is named; leave --measures away for the default set, or name some.")
     if names is None:

@@ -20,7 +20,7 @@ from unturn.measures import MEASURES, SMALL, choose_measures
 from unturn.model import Model, PlaneOptions, build_model
 from unturn.nodal import NodeFields, nodal_fields
 from unturn.quadrature_points import quadrature_result
-from unturn.recovery import Method
+from unturn.recovery import METHODS, Method
 from unturn.regions import bodies, find_regions, named_regions
 from unturn.result import Result
 from unturn.rigid import Axis, Removal, RigidMotion, take_out, unwrapped
@@ -143,8 +143,7 @@ def compute(
     InputError
         A result that cannot be used.
     """
-    if options.at not in PLACES:
-        raise UsageError(f"at={options.at!r} is not known; use one of {', '.join(PLACES)}.")
+    _check_choices(options)
     names = _checked_measures(options)
     _check_numbers(options)
     model = model_of(result, options)
@@ -281,6 +280,25 @@ def _checked_measures(options: StrainOptions) -> tuple[str, ...]:
             "small measures, or state --solve nonlinear if it was."
         )
     return names
+
+
+_CHOICES: dict[str, tuple[str | None, ...]] = {
+    "at": PLACES,
+    "recovery": METHODS,
+    "solve": ("linear", "nonlinear", "unknown"),
+    "plane": (None, "strain", "stress", "axisymmetric"),
+    "axis": ("x", "y"),
+    "coordinates": ("reference", "deformed"),
+}
+
+
+def _check_choices(options: StrainOptions) -> None:
+    for name, known in _CHOICES.items():
+        value = getattr(options, name)
+        if value not in known:
+            raise UsageError(
+                f"{name}={value!r} is not known; use one of {', '.join(repr(k) for k in known)}."
+            )
 
 
 def _check_numbers(options: StrainOptions) -> None:

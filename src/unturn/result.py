@@ -92,7 +92,7 @@ class Result:
     Raises
     ------
     InputError
-        Array lengths do not fit, connectivity out of range, no cell.
+        Array lengths do not fit, connectivity out of range, a cell without a place or with two, no cell.
     """
 
     points: Array
@@ -160,6 +160,7 @@ def _validate(result: Result) -> None:
         )
     for block in result.blocks:
         _validate_block(block, len(points), where)
+    _validate_positions(result, where)
     for kind, data, n in (
         ("point", result.point_data, len(points)),
         ("cell", result.cell_data, result.n_cells),
@@ -172,11 +173,36 @@ def _validate(result: Result) -> None:
                 )
 
 
+def _validate_positions(result: Result, where: str) -> None:
+    """Each cell of the file has one place in the blocks, and groups hold cells that exist."""
+    n = result.n_cells
+    seen = np.zeros(n, dtype=bool)
+    for block in result.blocks:
+        if len(block) and int(block.index.min()) >= 0 and int(block.index.max()) < n:
+            seen[block.index] = True
+    if not seen.all():
+        raise InputError(
+            f"{where}the positions of the cells (index of the blocks) are not 0 to {n - 1}, each once; cell "
+            f"{int(np.argmin(seen))} has no place."
+        )
+    for name, cells in result.groups.items():
+        members = np.asarray(cells)
+        if len(members) and not (members.min() >= 0 and members.max() < n):
+            raise InputError(
+                f"{where}group {name!r} holds cells that do not exist; the mesh has 0 to {n - 1}."
+            )
+
+
 def _validate_block(block: CellBlock, n_points: int, where: str) -> None:
     conn = block.connectivity
     if conn.ndim != 2 or len(conn) != len(block.index):
         raise InputError(
             f"{where}{block.cell_type} block: connectivity of shape {conn.shape} for {len(block.index)} cells."
+        )
+    if conn.dtype.kind not in "iu" or block.index.dtype.kind not in "iu":
+        raise InputError(
+            f"{where}{block.cell_type} block: connectivity and index hold {conn.dtype} and {block.index.dtype}; both are "
+            "whole numbers."
         )
     if conn.size == 0:
         return

@@ -88,6 +88,8 @@ def read(path: str | PathLike[str], step: Literal["last"] | int = "last") -> Res
     opened = open_result(path)
     n_steps = 1 if opened.steps is None else len(opened.steps)
     number = n_steps - 1 if step == "last" else step
+    if not isinstance(number, int):
+        raise UsageError(f"step={step!r} is not known; use 'last' or a number from 0 to {n_steps - 1}.")
     if not 0 <= number < n_steps:
         raise UsageError(
             f"{path} has no step {step}: it has {n_steps} step{'s' * (n_steps != 1)}, 0 to {n_steps - 1}."
