@@ -186,3 +186,18 @@ def test_cells_without_a_place() -> None:
         Result(POINTS, (TETS,), groups={"arm": np.array([2])})
     with pytest.raises(UsageError, match="use 'last' or a number"):
         unturn.read(Path(__file__).parents[1] / "sample_meshes" / "lever.xdmf", "all")  # type: ignore[arg-type]
+
+
+@pytest.mark.practice("a number that stands for no cell is damage")
+def test_a_cell_type_that_does_not_exist(tmp_path: Path) -> None:
+    import pyvista
+
+    grid = pyvista.UnstructuredGrid({10: TETS.connectivity}, POINTS)
+    grid.point_data["u"] = 1e-3 * POINTS
+    grid.save(tmp_path / "grid.vtu", binary=False)
+    text = (tmp_path / "grid.vtu").read_text()
+    start = text.index("10 10", text.index('Name="types"'))
+    (tmp_path / "grid.vtu").write_text(text[:start] + "10 250" + text[start + 5 :])
+    for command in ("survey", "strain"):
+        status, said_then = run([command, str(tmp_path / "grid.vtu")])
+        assert (status, "cell 1 has the cell type 250" in said_then) == (3, True), said_then
