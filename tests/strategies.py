@@ -5,14 +5,11 @@ from __future__ import annotations
 from typing import Any
 
 import numpy as np
-from hypothesis import settings
 from hypothesis import strategies as st
 from numpy.typing import NDArray
 
 Floats = NDArray[np.float64]
 
-settings.register_profile("shared machine", deadline=None)
-settings.load_profile("shared machine")
 
 _UNIT = st.floats(-1.0, 1.0, allow_subnormal=False)
 

@@ -14,6 +14,7 @@ from unturn import CellBlock, DisplacementError, InputError, Result, UsageError
 from unturn.model import build_model
 from unturn.pipeline import StrainOptions, compute
 from unturn.regions import bodies, find_regions
+from unturn.summary import SummaryOptions, summarise
 
 GRADIENT = np.array([[1e-3, 4e-4, -2e-4], [2e-4, -3e-4, 5e-4], [-6e-4, 1e-4, 7e-4]])
 QUADS = CellBlock("quad", np.array([[0, 1, 4, 3], [1, 2, 5, 4]]), np.arange(2))
@@ -186,3 +187,54 @@ def test_cells_without_a_place() -> None:
         Result(POINTS, (TETS,), groups={"arm": np.array([2])})
     with pytest.raises(UsageError, match="use 'last' or a number"):
         unturn.read(Path(__file__).parents[1] / "sample_meshes" / "lever.xdmf", "all")  # type: ignore[arg-type]
+
+
+@pytest.mark.practice("a number that stands for no cell is damage")
+def test_a_cell_type_that_does_not_exist(tmp_path: Path) -> None:
+    import pyvista
+
+    grid = pyvista.UnstructuredGrid({10: TETS.connectivity}, POINTS)
+    grid.point_data["u"] = 1e-3 * POINTS
+    grid.save(tmp_path / "grid.vtu", binary=False)
+    text = (tmp_path / "grid.vtu").read_text()
+    start = text.index("10 10", text.index('Name="types"'))
+    (tmp_path / "grid.vtu").write_text(text[:start] + "10 250" + text[start + 5 :])
+    for command in ("survey", "strain"):
+        status, said_then = run([command, str(tmp_path / "grid.vtu")])
+        assert (status, "cell 1 has the cell type 250" in said_then) == (3, True), said_then
+
+
+def turned(degrees: float, stretch: float) -> np.ndarray:
+    """Displacement of the two cells stretched along x and then turned about z."""
+    a = np.radians(degrees)
+    R = np.array([[np.cos(a), -np.sin(a), 0], [np.sin(a), np.cos(a), 0], [0, 0, 1]])
+    return np.asarray(POINTS * [1 + stretch, 1, 1] @ R.T - POINTS)
+
+
+@pytest.mark.derived(
+    "between two turned states u - u_N is no motion: its symmetric gradient is not what was stretched"
+)
+@pytest.mark.parametrize("solve", ["unknown", "nonlinear"])
+@pytest.mark.parametrize("remove", ["none", "whole"])
+def test_a_turned_zero_step_is_not_called_trustworthy(solve: str, remove: str) -> None:
+    zero, now = two_tets(u=turned(90, 1e-3)), two_tets(u=turned(100, 2e-3))
+    computed = compute(now, StrainOptions(solve=solve, remove_rigid=remove), zero=zero, diagnose=True)  # type: ignore[arg-type]
+    (region,) = summarise(computed, SummaryOptions(solve=solve)).regions  # type: ignore[arg-type]
+    assert region.verdict.level == "does not hold"
+    assert region.verdict.size == pytest.approx(2.002e-3 / 1.001 - 1e-3, rel=1e-2)  # what was stretched since
+    assert region.trials == ()
+    written = computed.fields.arrays["principal_strain"]
+    assert region.statistics["principal_strain_1"].maximum == pytest.approx(written[:, 0].max(), abs=1e-15)
+    size = np.linalg.norm(written, axis=1).max()  # of a strain that nothing has
+    assert size > 0.1
+    assert region.verdict.worst > 0.9 * (size - 1e-3) / region.verdict.size
+
+
+@pytest.mark.derived("where nothing turns much, u - u_N is the motion since then")
+def test_a_zero_step_that_is_not_turned_is_judged_as_before() -> None:
+    zero, now = two_tets(u=turned(0.01, 1e-3)), two_tets(u=turned(0.02, 2e-3))
+    for solve in ("linear", "unknown", "nonlinear"):
+        computed = compute(now, StrainOptions(solve=solve), zero=zero, diagnose=True)
+        (region,) = summarise(computed, SummaryOptions(solve=solve)).regions
+        assert region.verdict.level == "holds"
+        assert region.verdict.worst < 2e-3

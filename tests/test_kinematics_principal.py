@@ -75,3 +75,16 @@ def test_not_finite_stays_where_it_is() -> None:
     assert np.isnan(values[1]).all()
     assert np.isnan(directions[1]).all()
     np.testing.assert_allclose(values[[0, 2]], [[3, 2, 1]] * 2)
+
+
+@pytest.mark.derived(
+    "two equal roots and an off-diagonal component below 1e-308: directions stay of unit length"
+)
+def test_a_component_without_digits_does_not_spoil_directions() -> None:
+    for tiny in (2e-317, 1e-300, 5e-324):
+        tensor = np.array([[-0.5, tiny, 0], [tiny, -0.43, -0.17], [0, -0.17, -0.07]])
+        tensor[1:, 1:] = -0.5 * np.eye(2) + 0.5 * np.outer([0.366, 0.9306], [0.366, 0.9306]) / (
+            0.366**2 + 0.9306**2
+        )
+        _, directions = principal_strain(tensor, directions=True)
+        np.testing.assert_allclose(directions @ directions.T, np.eye(3), atol=1e-15)

@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 
 from unturn.displacement import find_displacement
 from unturn.errors import InputError, UsageError
-from unturn.fields import CellFields, compute_fields
+from unturn.fields import CellDiagnostics, CellFields, compute_fields
 from unturn.frames import Frame, parse_frame
 from unturn.gradient import NodalFields, PlaneModel
 from unturn.kinematics._symmetric import Floats
@@ -263,15 +263,31 @@ def _fields(
         return compute_fields(small, names, **settings, diagnose=diagnose)
     real = [n for n in names if n in MEASURES and MEASURES[n].finite]
     linear = [n for n in names if n not in real]
-    by_finite = options.solve == "nonlinear"
-    first = compute_fields(small, linear or ["strain"], **settings, diagnose=diagnose and not by_finite)
-    second = compute_fields(finite, real or ["det_f"], **settings, diagnose=diagnose and by_finite)
-    arrays = {n: (second if n in real else first).arrays[n] for n in names}
+    judged = diagnose and options.solve != "linear"
+    first = compute_fields(small, list(dict.fromkeys([*linear, "strain"])), **settings, diagnose=diagnose)
+    second = compute_fields(finite, real or ["det_f"], **settings, diagnose=judged)
     return replace(
         first,
-        arrays=arrays,
+        arrays={n: (second if n in real else first).arrays[n] for n in names},
         components={**first.components, **second.components},
-        diagnostics=second.diagnostics if by_finite else first.diagnostics,
+        diagnostics=_judged_from_zero(first, second) if judged else first.diagnostics,
+    )
+
+
+def _judged_from_zero(small: CellFields, finite: CellFields) -> CellDiagnostics | None:
+    """Return the diagnostics of the small strain of `u - u_N`, judged by the motion since the zero step.
+
+    Where the zero step itself is turned, the gradient of `u - u_N` is that of no motion. The strain since then is the
+    stretch of `F F_N^-1`; what the small strain has more or less of than that, by its norm, is its error at least.
+    """
+    ours, real = small.diagnostics, finite.diagnostics
+    if ours is None or real is None:
+        return ours
+    e = small.arrays["strain"].T
+    size = np.sqrt(np.nansum(e[:3] ** 2, axis=0) + 2.0 * np.nansum(e[3:] ** 2, axis=0))
+    error = np.maximum(real.error, np.abs(size - real.stretch))
+    return replace(
+        ours, error=error, stretch=real.stretch, angle=real.angle, det_f=real.det_f, stretches=real.stretches
     )
 
 

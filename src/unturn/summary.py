@@ -112,7 +112,9 @@ def summarise(
         counted = Region(region.name, cells, region.origin)
         verdict = judge(d, counted, options.solve, options.mode)
         trials: list[Trial] = []
-        if verdict.level == "does not hold" and options.solve != "linear" and not computed.removals:
+        # what is tried takes the displacement for that of a motion from the undeformed state
+        whole_motion = not computed.removals and "zero_step" not in computed.request
+        if verdict.level == "does not hold" and options.solve != "linear" and whole_motion:
             trials = try_remedies(fields, counted, options.solve, {"at": options.at, "threads": threads})
         counted_regions.append(counted)
         made.append(RegionSummary(region, verdict, tuple(trials), float(np.nansum(d.volume[cells])), found))

@@ -11,7 +11,7 @@ from vtkmodules.vtkCommonDataModel import vtkCellArray
 
 from unturn.errors import InputError
 from unturn.io.vtk_arrays import from_numpy, to_numpy
-from unturn.io.vtk_types import POLYHEDRON, TURNED, cell_name, expected_nodes, uniform_types
+from unturn.io.vtk_types import POLYHEDRON, TURNED, cell_name, expected_nodes, is_cell_type, uniform_types
 from unturn.result import CellBlock
 
 Ints = NDArray[np.int64]
@@ -120,6 +120,11 @@ def group(types: NDArray[Any], offsets: Ints, connectivity: Ints, where: str) ->
 
 
 def _block(number: int, nodes: Ints, index: Ints, where: str) -> CellBlock:
+    if not is_cell_type(number):
+        raise InputError(
+            f"{where}cell {int(index[0])} has the cell type {number}, and VTK 9.7 has none of this number. The file is "
+            "damaged or of another program's making: write it again."
+        )
     expected = expected_nodes(number, nodes.shape[1])
     if expected:
         raise InputError(

@@ -76,6 +76,11 @@ TURNED: dict[int, list[int]] = {PIXEL: [0, 1, 3, 2], VOXEL: [0, 1, 3, 2, 4, 5, 7
 _NUMBERS = {name: number for number, (name, _) in _CELLS.items() if number not in TURNED}
 
 
+def is_cell_type(number: int) -> bool:
+    """Return whether VTK has a cell type of this number."""
+    return number in _CELLS
+
+
 def cell_name(number: int) -> str:
     """Return the cell type name of a VTK type number; ``VTK_<number>`` for one that is not known here.
 

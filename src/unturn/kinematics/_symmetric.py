@@ -159,7 +159,7 @@ def _plane_problem(dev: Floats, u: Floats, v: Floats) -> tuple[Floats, Floats, F
 
 def _half_angle(half: Floats, off: Floats, radius: Floats) -> tuple[Floats, Floats]:
     """Return cosine and sine of the angle from `u` to the direction of the larger root."""
-    round_ = ~(radius > 0)
+    round_ = ~(radius > _TINY)  # below it numbers lose their digits, and any two directions will do
     safe = np.where(round_, 1.0, radius)
     big = np.sqrt(0.5 * (1.0 + np.abs(half) / safe))
     small = 0.5 * off / (safe * big)
