@@ -13,6 +13,7 @@ from unturn.agreement import Agreement
 from unturn.elsewhere import BASE_WORDS, ElsewhereExtreme
 from unturn.fields import CellFields
 from unturn.measures import MEASURES
+from unturn.pipeline import OWN_MESH
 from unturn.rigid import Removal
 from unturn.summary import CAUTION, RegionSummary, Summary, cell_counts, equivalent_form, mesh_kind
 from unturn.trial import Trial
@@ -412,13 +413,15 @@ def _aligned(rows: list[list[str]], left: bool = False) -> list[str]:
 def _tail(summary: Summary) -> list[str]:
     fields, options = summary.fields, summary.options
     lines = []
+    values = "values of the table" if summary.request.get("at") in ("nodes", *OWN_MESH) else "values"
+    values += f" at element {_location(options.at)}; shear is tensor shear"
     if any(name.startswith("equivalent_strain") for name in fields.arrays):
         form = equivalent_form(options.equivalent_poisson)
         if any(name.endswith("_mechanical") for name in fields.arrays):
             form += " (mechanical: of the total less the free thermal strain)"
-        lines.append(f"equivalent = {form}; values at element {_location(options.at)}; shear is tensor shear")
+        lines.append(f"equivalent = {form}; {values}")
     else:
-        lines.append(f"values at element {_location(options.at)}; shear is tensor shear")
+        lines.append(values)
     lines += _frame(fields)
     lines += _removals(summary)
     left = ", ".join(f"{len(cells)} {reason}" for reason, cells in fields.left_out.items())
