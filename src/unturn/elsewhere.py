@@ -244,14 +244,31 @@ class _Nodes:
             name, values = row.component(arrays[row.array])
             peak = peaks.find(values, region.cells, row.smallest)
             size = float(np.nanmax(np.abs(arrays[row.array][region.cells]), initial=0.0))
-            if peak.cell >= 0 and peak.singular and not abs(peak.value) < _NEGLIGIBLE * size:
+            negligible = abs(peak.value) < _NEGLIGIBLE * size
+            if peak.cell >= 0 and peak.singular and not negligible and not self._resolved(row, region, peak):
                 after = peaks.next_peak(values, region.cells, peak, row.smallest)
                 node = self._node(peak.point)
                 found.append(Growth(region.name, row.label, name, peak, node, after.cell, after.value))
         return found
 
+    def _resolved(self, row: _Row, region: Region, peak: Peak) -> bool:
+        """Return whether the elements around the node of a peak agree with what is recovered there.
+
+        At a singular point they never do: what recovery changes there stays in proportion to the peak, however fine the
+        mesh. A steep smooth field, such as bending across a thin part, they follow.
+        """
+        shares = self.nodes.behind(row.array).shares
+        own = _shares_of(shares, region.cells)
+        here = own[shares.point[own] == peak.point]
+        return bool(
+            (self.errors[_base(row.array)].plus_minus_shares[here] < _RESOLVED * abs(peak.value)).all()
+        )
+
 
 _NEGLIGIBLE = 1e-3  # of the largest principal strain of the region: a smaller extreme is no peak
+_RESOLVED = 0.3
+"""Plus and minus at the node of a peak, as a share of it, below which the mesh resolves it: 0.6 to 13 was seen at corners
+and point loads with four kinds of elements each, 0.05 to 0.2 in bending with 4 and 8 quadratic bricks in the thickness."""
 
 
 def _shares_of(shares: NodeShares, cells: NDArray[np.int64]) -> NDArray[np.int64]:
