@@ -9,6 +9,7 @@ from typing import Literal
 from unturn import io
 from unturn.errors import UsageError
 from unturn.gradient import PlaneModel
+from unturn.kinematics._symmetric import Floats
 from unturn.pipeline import Computed, Place, StrainOptions, compute, rigid_arrays
 from unturn.recovery import Method
 from unturn.result import Association, Result
@@ -199,10 +200,14 @@ def add_fields(result: Result, computed: Computed, *, prefix: str = "", overwrit
             f"--prefix {prefix[:40]!r}: not every format keeps blanks at the ends of a name, characters that cannot be "
             f"printed, or more than {_LONGEST_PREFIX} of them; choose another one."
         )
-    if computed.surface is not None:
-        return computed.surface.result
-    if computed.cloud is not None:
-        return computed.cloud
+    own = computed.cloud if computed.surface is None else computed.surface.result
+    if own is not None:
+        if prefix:
+            raise UsageError(
+                "--at surface and --at quadrature make a mesh of their own, whose arrays have fixed names: leave "
+                "--prefix out."
+            )
+        return own.with_arrays(field_data=_motions(own, computed, prefix, overwrite))
     where: Association = "cell" if computed.nodes is None else "point"
     found = computed.fields if computed.nodes is None else computed.nodes
     present = result.cell_data if computed.nodes is None else result.point_data
@@ -214,6 +219,17 @@ def add_fields(result: Result, computed: Computed, *, prefix: str = "", overwrit
             "not overwritten unasked. Give the new "
             "arrays other names with --prefix TEXT, or replace the old ones with --overwrite."
         )
+    motions = _motions(result, computed, prefix, overwrite)
+    names: dict[tuple[Association, str], tuple[str, ...]] = {
+        (where, prefix + name): components for name, components in found.components.items()
+    }
+    if computed.nodes is not None:
+        return result.with_arrays(point_data=arrays, field_data=motions, component_names=names)
+    return result.with_arrays(cell_data=arrays, field_data=motions, component_names=names)
+
+
+def _motions(result: Result, computed: Computed, prefix: str, overwrite: bool) -> dict[str, Floats]:
+    """Return the rigid motions that were taken out as field arrays."""
     motions = rigid_arrays(computed.removals, prefix)
     kept = [name for name in motions if name in result.field_data]
     if kept and not overwrite:
@@ -221,9 +237,4 @@ def add_fields(result: Result, computed: Computed, *, prefix: str = "", overwrit
             f"{result.path + ': ' if result.path else ''}the file already has a field array called {kept[0]!r}; it is not "
             "overwritten unasked. Use --prefix TEXT or --overwrite."
         )
-    names: dict[tuple[Association, str], tuple[str, ...]] = {
-        (where, prefix + name): components for name, components in found.components.items()
-    }
-    if computed.nodes is not None:
-        return result.with_arrays(point_data=arrays, field_data=motions, component_names=names)
-    return result.with_arrays(cell_data=arrays, field_data=motions, component_names=names)
+    return motions

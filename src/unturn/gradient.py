@@ -223,17 +223,21 @@ class ElementChunk:
             return finite_line(point.tangents[0] / point.measure, moved_tangent(point))
         if self.plane is None:
             return finite_surface(point, self.poisson)
-        H = point.H
-        k = self.plane.normal
-        if self.plane.model == "stress":
-            nu = self.plane.poisson
-            assert nu is not None
-            a, b = (i for i in range(3) if i != k)
-            relative = H[a, a] + H[b, b] + (H[a, a] * H[b, b] - H[a, b] * H[b, a])
-            H = H.copy()
-            with np.errstate(invalid="ignore", divide="ignore"):
-                H[k, k] = np.expm1(-nu / (1.0 - nu) * np.log1p(relative))
+        return with_thickness_stretch(point.H, self.plane)
+
+
+def with_thickness_stretch(H: Floats, plane: Plane | None) -> Floats:
+    """Return `F - I` `(3, 3, m)` with the thickness stretch that finite measures of plane stress use."""
+    if plane is None or plane.model != "stress":
         return H
+    assert plane.poisson is not None
+    k = plane.normal
+    a, b = (i for i in range(3) if i != k)
+    relative = H[a, a] + H[b, b] + (H[a, a] * H[b, b] - H[a, b] * H[b, a])
+    H = H.copy()
+    with np.errstate(invalid="ignore", divide="ignore"):
+        H[k, k] = np.expm1(-plane.poisson / (1.0 - plane.poisson) * np.log1p(relative))
+    return H
 
 
 def _mean_finite_line(chunk: ElementChunk, samples: Samples) -> tuple[Floats, Floats]:

@@ -9,13 +9,13 @@ import numpy as np
 from numpy.typing import NDArray
 
 from unturn.errors import UsageError
-from unturn.fields import check_request
+from unturn.fields import _with_thermal_thickness, check_request
 from unturn.frames import Frame, turned_components
-from unturn.gradient import over_chunks
+from unturn.gradient import over_chunks, with_thickness_stretch
 from unturn.kinematics._symmetric import PAIRS, Floats
 from unturn.measures import MEASURES, Split
 from unturn.model import Model
-from unturn.recovery import Method, Recovered, recover_gradient, sheets
+from unturn.recovery import Method, NodeShares, Recovered, recover_gradient, sheets
 from unturn.regions import Region
 from unturn.thermal import Thermal
 
@@ -35,15 +35,39 @@ class NodeFields:
     components
         Names of the components.
     recovered
-        The recovered gradient.
-    groups
-        `(n_cells,)` within which it was recovered.
+        The recovered gradient that small measures follow from.
+    of_finite
+        That of finite measures; another one when they are measured from a zero step.
+    free
+        `(6, n_shares)` free thermal strain of the shares of the nodes, or None.
     """
 
     arrays: dict[str, Floats]
     components: dict[str, tuple[str, ...]]
     recovered: Recovered
-    groups: NDArray[np.int64]
+    of_finite: Recovered
+    free: Floats | None = None
+
+    def behind(self, name: str) -> Recovered:
+        """Return the recovered gradient that a measure follows from."""
+        return self.of_finite if MEASURES[name].finite else self.recovered
+
+    def at_shares(self, name: str, which: NDArray[np.int64], equivalent_poisson: float | None) -> Floats:
+        """Return a measure, in the axes of the file, at some shares of the nodes: `(m,)` or `(m, components)`."""
+        recovered = self.behind(name)
+        free = None if self.free is None else self.free[:, which]
+        with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
+            split = _split(recovered.values[:, :, which], recovered.shares.model, equivalent_poisson, free)
+            return MEASURES[name].compute(split).T
+
+
+def _split(
+    H: Floats, model: Model, equivalent_poisson: float | None, free: Floats | None, directions: bool = False
+) -> Split:
+    finite = with_thickness_stretch(H, model.plane)
+    if free is not None:
+        H = _with_thermal_thickness(H, free, model.plane)
+    return Split(H, equivalent_poisson, directions, finite, free)
 
 
 def nodal_fields(
@@ -76,10 +100,11 @@ def nodal_fields(
     Raises
     ------
     UsageError
-        A measure of the cells alone, a finite measure of surfaces or lines in space, a frame that is given on cells.
+        A measure of the cells alone; a finite or mechanical measure of surfaces or lines in space; a frame that is given on
+        cells; a temperature on cells.
     """
     check_request(model, names, frame, thermal)
-    _check(model, names, frame)
+    _check(model, names, frame, thermal)
     groups = np.zeros(model.result.n_cells, dtype=np.int64)
     for number, region in enumerate(regions, 1):
         groups[region.cells] = number
@@ -88,14 +113,14 @@ def nodal_fields(
     measures = [MEASURES[name] for name in names]
     n = model.result.n_points
     arrays = {m.name: np.empty((n, len(m.components)) if m.components else n) for m in measures}
-    free = None if thermal is None else _free_strain(model, thermal)
+    free = None if thermal is None else _free_strain(recovered.shares, thermal)
 
     def work(start: int, stop: int) -> None:
         rows = slice(start, stop)
-        part = None if free is None else free[:, rows]
+        part = None if free is None else free[:, recovered.share[rows]]
         directions = any(m.directions for m in measures)
         with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
-            split = Split(recovered.H[:, :, rows], equivalent_poisson, directions, None, part)
+            split = _split(recovered.H[:, :, rows], model, equivalent_poisson, part, directions)
             axes = None if frame is None else frame.axes(model.points[rows].T, rows, None)
             for measure in measures:
                 values = measure.compute(split)
@@ -109,10 +134,10 @@ def nodal_fields(
         for m in measures
         if m.components
     }
-    return NodeFields(arrays, components, recovered, groups)
+    return NodeFields(arrays, components, recovered, recovered, free)
 
 
-def _check(model: Model, names: Sequence[str], frame: Frame | None) -> None:
+def _check(model: Model, names: Sequence[str], frame: Frame | None, thermal: Thermal | None) -> None:
     alone = [n for n in names if n not in MEASURES]
     if alone:
         raise UsageError(
@@ -126,27 +151,29 @@ def _check(model: Model, names: Sequence[str], frame: Frame | None) -> None:
     spatial = [
         b for b in model.blocks if b.row is not None and len(b.active) and b.kind in ("surface", "line")
     ]
-    if finite and spatial:
+    mechanical = [n for n in names if MEASURES[n].mechanical]
+    if (finite or mechanical) and spatial:
         raise UsageError(
-            f"{finite[0]} of surfaces and lines in space is not recovered at nodes; ask for it at centroids (--at centroid)."
+            f"{(finite or mechanical)[0]} of surfaces and lines in space is not recovered at nodes; ask for it at centroids "
+            "(--at centroid)."
         )
-
-
-def _free_strain(model: Model, thermal: Thermal) -> Floats:
-    """Return the free strain at nodes `(6, n_points)`; coefficients are those of the cells around, averaged."""
-    if thermal.nodal is None:
+    if thermal is not None and thermal.nodal is None:
         raise UsageError("--at nodes needs the temperature at nodes: give a point array with --temperature.")
-    if not thermal.isotropic:
+    if thermal is not None and not thermal.isotropic:
         raise UsageError("--at nodes takes one expansion coefficient a region, not three.")
-    n = model.result.n_points
+
+
+def _free_strain(shares: NodeShares, thermal: Thermal) -> Floats:
+    """Return the free strain at the shares of the nodes; coefficients are those of its cells there, averaged."""
+    assert thermal.nodal is not None
+    n = len(shares)
     total, count = np.zeros(n), np.zeros(n)
-    for block in model.blocks:
-        conn: NDArray[np.int64] = block.connectivity
-        alpha = np.repeat(thermal.expansion[block.index, 0], conn.shape[1])
-        total += np.bincount(conn.reshape(-1), alpha, n)
-        count += np.bincount(conn.reshape(-1), minlength=n)
+    for block, cells in zip(shares.model.blocks, shares.cells):
+        alpha = np.repeat(thermal.expansion[block.index, 0], cells.shape[1])
+        total += np.bincount(cells.reshape(-1), alpha, n)
+        count += np.bincount(cells.reshape(-1), minlength=n)
     with np.errstate(invalid="ignore"):
-        growth = total / count * (thermal.nodal - thermal.reference)
+        growth = total / count * (thermal.nodal[shares.point] - thermal.reference)
     free = np.zeros((len(PAIRS), n))
     free[:3] = growth
     return free

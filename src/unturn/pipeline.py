@@ -16,7 +16,7 @@ from unturn.fields import CellDiagnostics, CellFields, compute_fields
 from unturn.frames import Frame, parse_frame
 from unturn.gradient import NodalFields, PlaneModel
 from unturn.kinematics._symmetric import Floats
-from unturn.measures import MEASURES, SMALL, choose_measures
+from unturn.measures import GEOMETRY, MEASURES, SMALL, choose_measures
 from unturn.model import Model, PlaneOptions, build_model
 from unturn.nodal import NodeFields, nodal_fields
 from unturn.quadrature_points import quadrature_result
@@ -191,13 +191,18 @@ def _at_nodes(
     if finite is None:
         return nodal_fields(small, names, regions, method=method, **settings)
     real = [n for n in names if n in MEASURES and MEASURES[n].finite]
+    if len(real) == len(names):
+        return nodal_fields(finite, names, regions, method=method, **settings)
     first = nodal_fields(small, [n for n in names if n not in real], regions, method=method, **settings)
+    if not real:
+        return first
     second = nodal_fields(finite, real, regions, method=method, **settings)
     return NodeFields(
         {n: (second if n in real else first).arrays[n] for n in names},
         {**first.components, **second.components},
         first.recovered,
-        first.groups,
+        second.recovered,
+        first.free,
     )
 
 
@@ -288,6 +293,8 @@ def _judged_from_zero(small: CellFields, finite: CellFields) -> CellDiagnostics 
 
 def _checked_measures(options: StrainOptions) -> tuple[str, ...]:
     names = choose_measures(options.measures, options.base, options.thermal_expansion is not None)
+    if options.at in ("nodes", "quadrature") and "all" in (options.measures or ()):
+        names = tuple(n for n in names if n not in GEOMETRY or n in (options.measures or ()))
     finite = [n for n in names if n in MEASURES and MEASURES[n].finite]
     if finite and options.solve == "linear":
         raise UsageError(

@@ -325,8 +325,9 @@ def _elsewhere_data(found: Elsewhere | None) -> dict[str, Any] | None:
         ],
         "suspected_singular": [
             {
-                "region": g.region, "statistic": g.label, "cell": g.peak.cell, "value": g.peak.value, "point": g.peak.point,
-                "growth": g.peak.growth, "next_cell": g.next_cell, "next_value": g.next_value,
+                "region": g.region, "statistic": g.label, "array": g.array, "cell": g.peak.cell, "value": g.peak.value,
+                "point": g.peak.point, "node": g.node, "growth": g.peak.growth, "next_cell": g.next_cell,
+                "next_value": g.next_value,
             }
             for g in found.growths
         ],

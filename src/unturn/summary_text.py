@@ -10,9 +10,10 @@ from pathlib import PurePath
 import numpy as np
 
 from unturn.agreement import Agreement
-from unturn.elsewhere import ElsewhereExtreme
+from unturn.elsewhere import BASE_WORDS, ElsewhereExtreme
 from unturn.fields import CellFields
 from unturn.measures import MEASURES
+from unturn.pipeline import OWN_MESH
 from unturn.rigid import Removal
 from unturn.summary import CAUTION, RegionSummary, Summary, cell_counts, equivalent_form, mesh_kind
 from unturn.trial import Trial
@@ -185,17 +186,9 @@ def _share(value: float) -> str:
     return f"{100 * value:.2g} %" if value < 0.995 else f"{100 * value:.0f} %"
 
 
-_BASES = {
-    "": "",
-    "_mechanical": ", mechanical",
-    "_green_lagrange": ", Green-Lagrange",
-    "_hencky": ", Hencky",
-    "_biot": ", Biot",
-    "_almansi": ", Almansi",
-}
 _STRAIN_ROWS: tuple[tuple[str, str, str], ...] = tuple(
     row
-    for suffix, words in _BASES.items()
+    for suffix, words in BASE_WORDS.items()
     for row in (
         (f"largest principal{words}", f"principal_strain{suffix}_1", "maximum"),
         (f"smallest principal{words}", f"principal_strain{suffix}_3", "minimum"),
@@ -208,7 +201,7 @@ _STRAIN_ROWS: tuple[tuple[str, str, str], ...] = tuple(
 
 
 _FINITE_ENDS = tuple(
-    f"{base}{end}" for base in _BASES if base not in ("", "_mechanical") for end in ("", "_1", "_3")
+    f"{base}{end}" for base in BASE_WORDS if base not in ("", "_mechanical") for end in ("", "_1", "_3")
 )
 
 
@@ -283,7 +276,8 @@ def _elsewhere(summary: Summary) -> list[str]:
     found = summary.elsewhere
     if found is None:
         return []
-    shown = list(dict.fromkeys(e.region for e in found.extremes))[:_MOST_COLUMNS]
+    named = [e.region for e in found.extremes] or list(found.error_percent or ())
+    shown = list(dict.fromkeys(named))[:_MOST_COLUMNS]
     of_region = {name: [e for e in found.extremes if e.region == name] for name in shown}
     labels = list(dict.fromkeys(e.label for e in found.extremes))
     digits = _digits(summary)
@@ -295,7 +289,7 @@ def _elsewhere(summary: Summary) -> list[str]:
         rows.append(["  at x, y, z", *("-" if e is None else _coordinates(e.at, digits) for e in each)])
     if found.error_percent is not None:
         rows.append(
-            ["estimated error of the strain", *(f"{found.error_percent[name]:.2g} %" for name in shown)]
+            ["estimated error of the strain", *(_percent(found.error_percent[name]) for name in shown)]
         )
     lines = ["", *_aligned(rows), *found.notes]
     for g in found.growths:
@@ -303,9 +297,17 @@ def _elsewhere(summary: Summary) -> list[str]:
             g.next_cell, summary
         )  # fmt: skip
         lines.append(
-            f"suspected singular, {g.region}: {g.label} keeps growing towards point {g.peak.point}; {after}"
+            f"suspected singular, {g.region}: {g.label} keeps growing towards {_point(g.peak.point, g.node)}; {after}"
         )
     return lines
+
+
+def _percent(value: float) -> str:
+    return f"{value:.2g} %" if math.isfinite(value) else "-"
+
+
+def _point(point: int, node: int | None) -> str:
+    return f"point {point}" if node is None else f"node {node} (point {point})"
 
 
 def _bounded(e: ElsewhereExtreme | None) -> str:
@@ -317,9 +319,9 @@ def _bounded(e: ElsewhereExtreme | None) -> str:
 def _spot(e: ElsewhereExtreme | None) -> str:
     if e is None:
         return "-"
-    if "point" in e.place:
-        number = e.place["node"]
-        return f"point {e.place['point']}" if number is None else f"node {number} (point {e.place['point']})"
+    point = e.place.get("point")
+    if point is not None:
+        return _point(point, e.place["node"])
     number = e.place["element"]
     return f"cell {e.place['cell']}" if number is None else f"element {number} (cell {e.place['cell']})"
 
@@ -356,7 +358,7 @@ def _percentile(r: RegionSummary) -> float:
 
 
 def _base_words(r: RegionSummary) -> str:
-    return _BASES.get(_leading(r).removeprefix("equivalent_strain"), "")
+    return BASE_WORDS.get(_leading(r).removeprefix("equivalent_strain"), "")
 
 
 def _micro(value: float) -> str:
@@ -411,13 +413,15 @@ def _aligned(rows: list[list[str]], left: bool = False) -> list[str]:
 def _tail(summary: Summary) -> list[str]:
     fields, options = summary.fields, summary.options
     lines = []
+    values = "values of the table" if summary.request.get("at") in ("nodes", *OWN_MESH) else "values"
+    values += f" at element {_location(options.at)}; shear is tensor shear"
     if any(name.startswith("equivalent_strain") for name in fields.arrays):
         form = equivalent_form(options.equivalent_poisson)
         if any(name.endswith("_mechanical") for name in fields.arrays):
             form += " (mechanical: of the total less the free thermal strain)"
-        lines.append(f"equivalent = {form}; values at element {_location(options.at)}; shear is tensor shear")
+        lines.append(f"equivalent = {form}; {values}")
     else:
-        lines.append(f"values at element {_location(options.at)}; shear is tensor shear")
+        lines.append(values)
     lines += _frame(fields)
     lines += _removals(summary)
     left = ", ".join(f"{len(cells)} {reason}" for reason, cells in fields.left_out.items())

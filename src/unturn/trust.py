@@ -1,7 +1,8 @@
 """How far a strain can be trusted: what recovery changes of it, and how elements differ where they meet.
 
-All norms are Frobenius norms of small strain tensors: `norm(e) = sqrt(e:e)`, energy-like but without a material. On a
-plane mesh whose third direction is not stated, only the strain in the plane counts.
+All norms are Frobenius norms of strain tensors: `norm(e) = sqrt(e:e)`, energy-like but without a material; e is the small
+strain, or a finite one where that is asked for. On a plane mesh whose third direction is not stated, only the strain in the
+plane counts.
 """
 
 from __future__ import annotations
@@ -15,7 +16,16 @@ import numpy as np
 from numpy.typing import NDArray
 
 from unturn.elements import Element, rule_of_degree
-from unturn.gradient import ElementChunk, Plane, Samples, chunk_ranges, over_chunks, sample_points
+from unturn.gradient import (
+    ElementChunk,
+    Plane,
+    Samples,
+    chunk_ranges,
+    over_chunks,
+    sample_points,
+    with_thickness_stretch,
+)
+from unturn.kinematics._finite import Finite
 from unturn.kinematics._symmetric import Floats
 from unturn.model import Model, ModelBlock
 from unturn.recovery import Recovered
@@ -36,7 +46,7 @@ MOST_CHANGE = {
 """How much a measure changes at most when the strain changes by a tensor of norm one.
 
 `e1 - e3` and `tr e` are products of e with tensors of norm sqrt 2 and sqrt 3; eigenvalues move by no more than the norm
-of the change (Weyl 1912); `sqrt(2/3 e':e')` is sqrt(2/3) times a norm. For small strain measures.
+of the change (Weyl 1912); `sqrt(2/3 e':e')` is sqrt(2/3) times a norm. For measures of the strain that the norm is of.
 """
 
 
@@ -54,6 +64,8 @@ class StrainError:
         `norm(e*(node) - e(centroid)) + d(node)`, with d the largest `norm(e* - e)` there over the elements that meet.
     plus_minus_nodes
         `(n_points,)` bound for the recovered value: the largest d over the nodes of the elements that meet at the node.
+    plus_minus_shares
+        `(n_shares,)` the same for the value of each share of the nodes, from its own elements.
     volume
         `(n_cells,)` volume of the element.
     error_squared, strain_squared
@@ -63,6 +75,7 @@ class StrainError:
     strain_error: Floats
     plus_minus: Floats
     plus_minus_nodes: Floats
+    plus_minus_shares: Floats
     volume: Floats
     error_squared: Floats
     strain_squared: Floats
@@ -81,7 +94,7 @@ class StrainError:
         return 100.0 * float(np.sqrt(error / (strain + error))) if strain + error > 0 else float("nan")
 
 
-def strain_error(recovered: Recovered, threads: int | None = None) -> StrainError:
+def strain_error(recovered: Recovered, threads: int | None = None, base: str = "") -> StrainError:
     """Return how far the recovered strain departs from that of the elements.
 
     Parameters
@@ -90,6 +103,8 @@ def strain_error(recovered: Recovered, threads: int | None = None) -> StrainErro
         See `unturn.recovery.recover_gradient`.
     threads
         None: all processors.
+    base
+        Of which strain: empty for the small one, or a finite base such as ``hencky``; solids and plane meshes only.
 
     Notes
     -----
@@ -103,13 +118,13 @@ def strain_error(recovered: Recovered, threads: int | None = None) -> StrainErro
     n = model.result.n_cells
     volume, error, strain, plus_minus = (np.full(n, np.nan) for _ in range(4))
     departure = np.zeros(len(shares))
-    nodal = strain_components(recovered.values, model.plane)
+    nodal = _components(recovered.values, model.plane, base)
     reach = [np.zeros(cells.shape) for cells in shares.cells]
     lock = Lock()
     for block, cells, out in zip(model.blocks, shares.cells, reach):
         if block.row is None:
             continue
-        job = _Job(model, block, cells, nodal, recovered.usable[block.index])
+        job = _Job(model, block, cells, nodal, recovered.usable[block.index], base)
 
         def work(a: int, b: int, job: _Job = job, out: Floats = out) -> None:
             with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
@@ -130,7 +145,7 @@ def strain_error(recovered: Recovered, threads: int | None = None) -> StrainErro
             np.fmax.at(wide, cells, worst[:, None])
             plus_minus[block.index] = np.where(lost, np.nan, (far + departure[cells]).max(axis=1))
     at_nodes = np.where(recovered.share >= 0, wide[recovered.share], np.nan)
-    return StrainError(np.sqrt(error / volume), plus_minus, at_nodes, volume, error, strain)
+    return StrainError(np.sqrt(error / volume), plus_minus, at_nodes, wide, volume, error, strain)
 
 
 def strain_components(H: Floats, plane: Plane | None) -> Floats:
@@ -139,6 +154,15 @@ def strain_components(H: Floats, plane: Plane | None) -> Floats:
     if plane is not None and plane.model is None:
         e[plane.normal] = 0.0
     return e
+
+
+def _components(H: Floats, plane: Plane | None, base: str) -> Floats:
+    """Return what `strain_components` does, of a finite strain where a base is given."""
+    if not base:
+        return strain_components(H, plane)
+    with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
+        e: Floats = getattr(Finite(with_thickness_stretch(H, plane)), base)
+    return e * _ROOTS[:, None]
 
 
 def norms(e: Floats) -> Floats:
@@ -162,8 +186,10 @@ class _Job:
         cells: NDArray[np.int32],
         nodal: Floats,
         usable: NDArray[np.bool_],
+        base: str,
     ) -> None:
         assert block.row is not None
+        self.base = base
         self.model, self.block, self.cells, self.nodal, self.usable = model, block, cells, nodal, usable
         row = block.row
         self.rule = rule_of_degree(row.shape, 2 * row.order)
@@ -178,7 +204,7 @@ class _Job:
         for gradients, functions in zip(where.gradients, where.functions):
             if point is None or not self.constant:
                 point = chunk.at(gradients, functions)
-                e = strain_components(point.H, self.model.plane)
+                e = _components(point.H, self.model.plane, self.base)
             yield e, point.weight
 
     def chunk(self, a: int, b: int) -> tuple[tuple[Floats, Floats, Floats], Floats, Floats]:

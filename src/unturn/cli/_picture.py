@@ -2,16 +2,39 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from pathlib import Path
+from typing import Any
+
+import numpy as np
 
 from unturn._api import add_fields
-from unturn.measures import MEASURES
+from unturn.measures import MEASURES, SURFACE_AXES
+from unturn.numbering import node_numbers
 from unturn.pipeline import Computed
 from unturn.summary import Summary, equivalent_form
+from unturn.surface import SURFACE_MEASURES, SurfaceFields
+
+_LOCATIONS = {
+    "mean": "mean over each element",
+    "nodes": "recovered at the nodes",
+    "surface": "on free faces, at their centroids",
+}
 
 
-def draw_summary(summary: Summary, path: Path) -> str:
-    """Draw the equivalent strain (else the first array) of a summary, and return a line that says so.
+def draw_summary(summary: Summary, computed: Computed, at: str, path: Path) -> str:
+    """Draw the equivalent strain (else the largest principal, else the first array), and return a line that says so.
+
+    Parameters
+    ----------
+    summary
+        Of the fields.
+    computed
+        The fields: values at nodes are drawn at nodes, those of free faces on the faces.
+    at
+        Where the values live; not at quadrature points.
+    path
+        The picture.
 
     Raises
     ------
@@ -22,21 +45,56 @@ def draw_summary(summary: Summary, path: Path) -> str:
     """
     from unturn.pictures import draw
 
-    fields = summary.fields
-    model = fields.model
-    array = next(
-        (name for name in fields.arrays if name.startswith("equivalent_strain")), next(iter(fields.arrays))
-    )
+    how = _on_faces(computed.surface) if computed.surface is not None else _on_the_mesh(summary, computed)
+    array, component = _chosen(how.pop("arrays"))
     drawing = draw(
-        add_fields(model.result, Computed(fields), overwrite=True),
-        array,
-        path,
-        displacement=model.displacement.values,
-        location={"mean": "mean over each element"}.get(summary.options.at, ""),
+        **how,
+        array=array,
+        path=path,
+        component=component,
+        location=_LOCATIONS.get(at, ""),
         legend=f"{array.replace('_', ' ')}\n{equivalent_form(summary.options.equivalent_poisson)}"
-        if array.startswith("equivalent_strain")
+        if "equivalent_strain" in array
         else "",
-        unit=MEASURES[array].unit if array in MEASURES else "",
-        numbers=None if summary.numbers is None else summary.numbers.numbers,
+        unit=_unit(array),
     )
-    return f"drew {drawing.path}: {array} on the shape deformed x {drawing.factor:g}"
+    drawn = array if component is None else f"{array} (component {component + 1})"
+    where = f", {_LOCATIONS[at]}," if at in _LOCATIONS else ""
+    return f"drew {drawing.path}: {drawn}{where} on the shape deformed x {drawing.factor:g}"
+
+
+def _chosen(arrays: Mapping[str, Any]) -> tuple[str, int | None]:
+    """Return the array to draw, and its component where it has several."""
+    liked = [n for word in ("equivalent_strain", "principal_strain", "") for n in arrays if word in n]
+    return liked[0], None if np.ndim(arrays[liked[0]]) == 1 else 0
+
+
+def _unit(array: str) -> str:
+    if array in SURFACE_MEASURES:
+        array = SURFACE_MEASURES[array].replaces
+        return MEASURES[array].unit if array in MEASURES else "strain"  # along the normal, in local axes
+    return MEASURES[array].unit if array in MEASURES else ""
+
+
+def _on_the_mesh(summary: Summary, computed: Computed) -> dict[str, Any]:
+    model = summary.fields.model
+    found = summary.fields if computed.nodes is None else computed.nodes
+    numbers = summary.numbers if computed.nodes is None else node_numbers(model.result)
+    return {
+        "result": add_fields(model.result, Computed(summary.fields, nodes=computed.nodes), overwrite=True),
+        "association": "cell" if computed.nodes is None else "point",
+        "arrays": found.arrays,
+        "displacement": model.displacement.values,
+        "numbers": None if numbers is None else numbers.numbers,
+    }
+
+
+def _on_faces(surface: SurfaceFields) -> dict[str, Any]:
+    arrays = surface.result.cell_data
+    used = np.unique(np.concatenate([b.connectivity.reshape(-1) for b in surface.faces.blocks]))
+    return {
+        "result": surface.result,
+        "arrays": {n: a for n, a in arrays.items() if n in SURFACE_MEASURES and n not in SURFACE_AXES},
+        "displacement": surface.faces.model.displacement.values[used],
+        "numbers": arrays.get("parent_element"),
+    }

@@ -15,7 +15,7 @@ from unturn.errors import InputError, UnturnError, UsageError
 if TYPE_CHECKING:
     from unturn.cli._output import Places
     from unturn.io import ResultFile
-    from unturn.pipeline import StrainOptions
+    from unturn.pipeline import Computed, StrainOptions
     from unturn.result import Result
     from unturn.rigid import RigidMotion
     from unturn.summary import Summary
@@ -135,6 +135,8 @@ def strain(
         raise UsageError("--displacement and --displacement-table exclude each other: give one of them.")
     if picture is not None and len(files) > 1:
         raise UsageError("--picture FILE.png draws one file; give one input file with it.")
+    if picture is not None and at is o.PlaceChoice.quadrature:
+        raise UsageError("--picture draws meshes, and --at quadrature gives points: leave one of them out.")
     if output is not None and not is_folder(output) and len(files) > 1:
         raise UsageError(f"-o {output}: with several input files the output must be an existing folder.")
     job = _Job(
@@ -217,9 +219,9 @@ class _Job:
             return self._series(opened, path)
         result = opened.read(chosen_step(opened, "last" if self.step == "all" else self.step))
         out = self._target(path, result, series=False)
-        result, summary = self._compute(result, self._zero(opened), alone=True)
+        result, summary, computed = self._compute(result, self._zero(opened), alone=True)
         lost = io.write(result, out)
-        self._print(summary, out, lost, result if self._own_mesh else None)
+        self._print(summary, computed, out, lost, result if self._own_mesh else None)
         return [self._data(summary, out)]
 
     def _series(self, opened: ResultFile, path: Path) -> list[dict[str, Any]]:
@@ -237,7 +239,7 @@ class _Job:
         with io.series_writer(out) as writer:
             for index, value in enumerate(opened.steps):
                 try:
-                    result, summary = job._compute(opened.read(index), zero, previous)
+                    result, summary, computed = job._compute(opened.read(index), zero, previous)
                 except InputError as error:
                     raise type(error)(f"at step {index} (t = {value:g}): {error}") from error
                 previous = tuple(r.motion for r in summary.removals)
@@ -247,7 +249,7 @@ class _Job:
         if summary is None:
             raise InputError(f"{path}: the series holds no step.")
         self._say("")
-        self._print(summary, out, ())
+        self._print(summary, computed, out, ())
         return data
 
     def _say(self, text: str) -> None:
@@ -262,7 +264,7 @@ class _Job:
 
     def _compute(
         self, result: Result, zero: Result | None, previous: tuple[RigidMotion, ...] = (), alone: bool = False
-    ) -> tuple[Result, Summary]:
+    ) -> tuple[Result, Summary, Computed]:
         from unturn._api import add_fields
         from unturn.pipeline import compute
         from unturn.summary import SummaryOptions, summarise
@@ -277,7 +279,8 @@ class _Job:
         if alone:  # of a series, one such step is no reason to lose the others
             computed.require_some()
         summary = summarise(computed, SummaryOptions(**self.summary), threads=options.threads)
-        return add_fields(result, computed, prefix=self.prefix, overwrite=self.overwrite), summary
+        result = add_fields(result, computed, prefix=self.prefix, overwrite=self.overwrite)
+        return result, summary, computed
 
     def _target(self, path: Path, result: Result, series: bool) -> Path:
         from unturn.io import check_target, writable_suffix
@@ -288,13 +291,21 @@ class _Job:
         check_target(out, series=series)
         return out
 
-    def _print(self, summary: Summary, out: Path, lost: tuple[str, ...], own: Result | None = None) -> None:
+    def _print(
+        self,
+        summary: Summary,
+        computed: Computed,
+        out: Path,
+        lost: tuple[str, ...],
+        own: Result | None = None,
+    ) -> None:
         from unturn.summary_text import summary_text
 
         self._say(summary_text(summary))
         result = summary.fields.model.result
         before = len(result.point_data) + len(result.cell_data) + len(result.field_data)
-        n = len(summary.fields.arrays) + (3 if summary.removals else 0)
+        found = summary.fields if computed.nodes is None else computed.nodes
+        n = len(found.arrays) + (3 if summary.removals else 0)
         if own is None:
             self._say(f"wrote {out}: {n} array{'s' * (n != 1)} added, {before} unchanged")
         else:
@@ -307,7 +318,7 @@ class _Job:
         if self.picture is not None:
             from unturn.cli._picture import draw_summary
 
-            self._say(draw_summary(summary, self.picture))
+            self._say(draw_summary(summary, computed, self.options.at, self.picture))
 
     def _data(self, summary: Summary, out: Path) -> dict[str, Any]:
         from unturn.summary import summary_data
