@@ -311,13 +311,9 @@ class _Job:
         if self.thermal is not None:
             samples = rule if mean else place
             free = mean_free_strain(self.thermal, chunk, samples, rows, connectivity, axes)
-            H = _with_thermal_thickness(H, free, self.model.plane)
+            H = with_thermal_thickness(H, free, self.model.plane)
         split = Split(H, self.poisson, self.directions, finite, free)
-        for measure in self.measures:
-            values = measure.compute(split)
-            if axes is not None and measure.turns:
-                values = turned_components(values, axes)
-            self.arrays[measure.name][rows] = values.T if values.ndim == 2 else values
+        fill_measures(self.arrays, rows, self.measures, split, axes)
         if "element_volume" in self.arrays:
             self.arrays["element_volume"][rows] = volume
         if "jacobian_min_over_max" in self.arrays:
@@ -438,18 +434,38 @@ class _Job:
             cells = np.flatnonzero(self.status == code)
             if len(cells):
                 left_out[reason] = cells
-        components = {
-            m.name: self.frame.component_names(len(m.components)) if self.frame and m.turns else m.components
-            for m in self.measures
-            if m.components
-        }
+        components = component_names(self.measures, self.frame)
         components |= {name: VECTOR for name in SURFACE_AXES if name in self.arrays}
         return CellFields(
             self.model, self.arrays, components, left_out, int(self.mirrored.sum()), self.diagnostics
         )
 
 
-def _with_thermal_thickness(H: Floats, free: Floats, plane: Plane | None) -> Floats:
+def fill_measures(
+    arrays: dict[str, Floats],
+    rows: slice | NDArray[np.int64],
+    measures: Sequence[Measure],
+    split: Split,
+    axes: Floats | None,
+) -> None:
+    """Write measures of some points into their rows of the arrays, in the frame of `axes` where they turn with it."""
+    for measure in measures:
+        values = measure.compute(split)
+        if axes is not None and measure.turns:
+            values = turned_components(values, axes)
+        arrays[measure.name][rows] = values.T
+
+
+def component_names(measures: Sequence[Measure], frame: Frame | None) -> dict[str, tuple[str, ...]]:
+    """Return the names of the components of measures, in the frame that was asked for; scalars are not in it."""
+    return {
+        m.name: frame.component_names(len(m.components)) if frame and m.turns else m.components
+        for m in measures
+        if m.components
+    }
+
+
+def with_thermal_thickness(H: Floats, free: Floats, plane: Plane | None) -> Floats:
     """Return H with the strain across a plane-stress mesh that the free expansion adds.
 
     The mechanical strain across is `-nu/(1-nu)` times the mechanical strain in the plane; the total has the free strain

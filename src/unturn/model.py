@@ -16,7 +16,7 @@ from unturn.errors import DisplacementError, InputError, UsageError
 from unturn.gradient import ElementChunk, NodalFields, Plane, PlaneModel
 from unturn.kinematics._symmetric import Floats
 from unturn.midside import misplaced_mid_nodes
-from unturn.result import CellBlock, Result
+from unturn.result import CellBlock, Result, used_points
 
 Kind = Literal["solid", "plane", "surface", "line"]
 KINDS: tuple[Kind, ...] = ("line", "surface", "solid")
@@ -210,7 +210,7 @@ def _check_components(
     if found.components != 2:
         return
     blocks = [b for b, row in zip(result.blocks, rows) if row is not None]
-    z = points[_used(blocks, result.n_points), 2]
+    z = points[used_points(blocks, result.n_points), 2]
     z = z[np.isfinite(z)]
     if len(z) and np.ptp(z) > _IN_PLANE * float(np.abs(points[np.isfinite(points)]).max(initial=0.0)):
         raise DisplacementError(
@@ -318,9 +318,7 @@ def skin_cells(result: Result, rows: list[Element | None]) -> list[NDArray[np.in
         upper = [b for b, d in zip(result.blocks, dims) if d > low]
         if not upper or low not in dims:
             continue
-        used = np.zeros(result.n_points, dtype=bool)
-        for block in upper:
-            used[block.connectivity] = True
+        used = used_points(upper, result.n_points)
         for block, d in zip(result.blocks, dims):
             if d != low:
                 continue
@@ -359,7 +357,7 @@ def _plane_mesh(
     """Return the plane of the mesh, or None, and the displacement to use."""
     flat = [b for b, r in zip(result.blocks, rows) if r is not None and r.dim == 2]
     highest = max(r.dim for r in rows if r is not None)
-    normal = _normal_axis(points, flat, _used(flat, result.n_points)) if highest == 2 else None
+    normal = _normal_axis(points, flat, used_points(flat, result.n_points)) if highest == 2 else None
     if options.surface and options.model is None:
         return None, displacement
     if normal is None:
@@ -369,7 +367,7 @@ def _plane_mesh(
                 "and lie in one coordinate plane; this one does not."
             )
         return None, displacement
-    used = _used(flat, result.n_points)
+    used = used_points(flat, result.n_points)
     known = displacement[used & np.isfinite(displacement).all(axis=1)]
     moved = float(np.abs(known[:, normal]).max(initial=0.0))
     size = float(np.abs(known).max(initial=0.0))
@@ -387,13 +385,6 @@ def _plane_mesh(
     if options.model == "stress" and options.poisson is None:
         raise UsageError("--plane stress needs --poisson NU: the strain across the plane follows from it.")
     return Plane(normal, options.model, options.poisson, axis), displacement
-
-
-def _used(blocks: list[CellBlock], n_points: int) -> NDArray[np.bool_]:
-    used = np.zeros(n_points, dtype=bool)
-    for block in blocks:
-        used[block.connectivity] = True
-    return used
 
 
 def _normal_axis(points: Floats, blocks: list[CellBlock], used: NDArray[np.bool_]) -> int | None:

@@ -9,8 +9,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from unturn.errors import UsageError
-from unturn.fields import _with_thermal_thickness, check_request
-from unturn.frames import Frame, turned_components
+from unturn.fields import check_request, component_names, fill_measures, with_thermal_thickness
+from unturn.frames import Frame
 from unturn.gradient import over_chunks, with_thickness_stretch
 from unturn.kinematics._symmetric import PAIRS, Floats
 from unturn.measures import MEASURES, Split
@@ -66,7 +66,7 @@ def _split(
 ) -> Split:
     finite = with_thickness_stretch(H, model.plane)
     if free is not None:
-        H = _with_thermal_thickness(H, free, model.plane)
+        H = with_thermal_thickness(H, free, model.plane)
     return Split(H, equivalent_poisson, directions, finite, free)
 
 
@@ -122,19 +122,10 @@ def nodal_fields(
         with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
             split = _split(recovered.H[:, :, rows], model, equivalent_poisson, part, directions)
             axes = None if frame is None else frame.axes(model.points[rows].T, rows, None)
-            for measure in measures:
-                values = measure.compute(split)
-                if axes is not None and measure.turns:
-                    values = turned_components(values, axes)
-                arrays[measure.name][rows] = values.T if values.ndim == 2 else values
+            fill_measures(arrays, rows, measures, split, axes)
 
     over_chunks(work, [(s, min(s + _CHUNK, n)) for s in range(0, n, _CHUNK)], threads)
-    components = {
-        m.name: frame.component_names(len(m.components)) if frame and m.turns else m.components
-        for m in measures
-        if m.components
-    }
-    return NodeFields(arrays, components, recovered, recovered, free)
+    return NodeFields(arrays, component_names(measures, frame), recovered, recovered, free)
 
 
 def _check(model: Model, names: Sequence[str], frame: Frame | None, thermal: Thermal | None) -> None:

@@ -14,11 +14,12 @@ from unturn.fields import (
     _TANGLED,
     _Job,
     _same_side,
-    _with_thermal_thickness,
     check_request,
+    fill_measures,
     mean_free_strain,
+    with_thermal_thickness,
 )
-from unturn.frames import Frame, surface_axes, turned_components
+from unturn.frames import Frame, surface_axes
 from unturn.gradient import ElementChunk, Samples, chunk_ranges, over_chunks, sample_points
 from unturn.kinematics._symmetric import Floats
 from unturn.measures import GEOMETRY, MEASURES, SURFACE_AXES, VECTOR, Split, choose_measures
@@ -201,13 +202,9 @@ class _Cloud:
         free = None
         if self.thermal is not None:
             free = mean_free_strain(self.thermal, chunk, here, index, connectivity, axes)
-            H = _with_thermal_thickness(H, free, self.model.plane)
+            H = with_thermal_thickness(H, free, self.model.plane)
         split = Split(H, self.equivalent_poisson, self.directions, finite, free)
-        for measure in self.measures:
-            values = measure.compute(split)
-            if axes is not None and measure.turns:
-                values = turned_components(values, axes)
-            self.arrays[measure.name][rows] = values.T
+        fill_measures(self.arrays, rows, self.measures, split, axes)
 
     def _axes(self, chunk: ElementChunk, point: PointGradient, index: Ints, rows: Ints) -> Floats | None:
         """Return the axes of the frame, and fill the arrays of those of the surface."""

@@ -6,7 +6,7 @@ It knows no file and no mechanics. Readers fill it, writers empty it.
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass, field, replace
 from typing import Any, Literal
 
@@ -142,6 +142,14 @@ class Result:
                 **{k: tuple(v) for k, v in (component_names or {}).items()},
             },
         )
+
+
+def used_points(blocks: Iterable[CellBlock], n_points: int) -> NDArray[np.bool_]:
+    """Return which of the points belong to a cell of these blocks."""
+    used = np.zeros(n_points, dtype=bool)
+    for block in blocks:
+        used[block.connectivity] = True
+    return used
 
 
 def _where(result: Result) -> str:

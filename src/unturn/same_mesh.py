@@ -8,6 +8,7 @@ import numpy as np
 
 from unturn.errors import InputError
 from unturn.model import Model
+from unturn.result import used_points
 
 _SAME = 1e-6  # share of the model's size within which two meshes have the same coordinates
 
@@ -17,9 +18,7 @@ class ReferenceMesh:
 
     def __init__(self, model: Model) -> None:
         self._blocks = _blocks(model)
-        self._used = np.zeros(model.result.n_points, dtype=bool)
-        for block in model.result.blocks:
-            self._used[block.connectivity] = True
+        self._used = used_points(model.result.blocks, model.result.n_points)
         self._points = model.points
         self._plane = model.plane is not None
         used = self._points[self._used]

@@ -21,7 +21,7 @@ from unturn.model import Model, PlaneOptions, build_model
 from unturn.numbering import element_numbers, node_numbers
 from unturn.precision import MEANT_DISPLACEMENT, storage_resolution
 from unturn.regions import find_regions, merge_coincident
-from unturn.result import Array, Result
+from unturn.result import Array, Result, used_points
 from unturn.statistics import statistics
 
 SCHEMA = "unturn.survey/1"
@@ -118,7 +118,7 @@ def _array(
 
 
 def _size(result: Result) -> dict[str, Any]:
-    points = np.asarray(result.points, dtype=np.float64)[used_points(result)]
+    points = np.asarray(result.points, dtype=np.float64)[used_points(result.blocks, result.n_points)]
     points = points[np.isfinite(points).all(axis=1)]
     if not len(points):
         return {"low": None, "high": None, "extent": None}
@@ -267,7 +267,7 @@ def _magnitudes(model: Model, found: Mapping[str, Any]) -> list[str]:
             f"the largest displacement ({moved:.3g}) exceeds the size of the model ({extent:.3g}): a large rigid motion, "
             "or a wrong unit"
         )
-    label, tolerance = merge_coincident(model.points[used_points(model.result)])
+    label, tolerance = merge_coincident(model.points[used_points(model.result.blocks, model.result.n_points)])
     double = int((label != np.arange(len(label))).sum())
     if double:
         said.append(
@@ -277,16 +277,8 @@ def _magnitudes(model: Model, found: Mapping[str, Any]) -> list[str]:
     return said
 
 
-def used_points(result: Result) -> NDArray[np.bool_]:
-    """Return which points belong to a cell."""
-    used = np.zeros(result.n_points, dtype=bool)
-    for block in result.blocks:
-        used[block.connectivity] = True
-    return used
-
-
 def _unreferenced(result: Result) -> list[str]:
-    used = used_points(result)
+    used = used_points(result.blocks, result.n_points)
     free = np.flatnonzero(~used)
     return [f"{len(free)} points belong to no cell (first: point {int(free[0])})"] if len(free) else []
 

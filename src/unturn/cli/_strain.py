@@ -229,10 +229,10 @@ class _Job:
         from unturn.pipeline import settled
 
         assert opened.steps is not None
-        out = self._target(path, opened.read(0), series=True)
-        job = self
-        if self.table is None:
-            job = replace(self, options=settled(self.options, opened.read(len(opened.steps) - 1)))
+        last = opened.read(len(opened.steps) - 1)
+        out = self._target(path, last, series=True)
+        job = self if self.table is not None else replace(self, options=settled(self.options, last))
+        del last  # one step in memory at a time
         data, summary = [], None
         zero = self._zero(opened)
         previous: tuple[RigidMotion, ...] = ()

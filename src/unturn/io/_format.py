@@ -2,11 +2,13 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable
+import math
+from collections.abc import Callable, Iterable
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Protocol
 
+from unturn.errors import UsageError
 from unturn.result import Result
 
 
@@ -30,6 +32,18 @@ class ResultFile(Protocol):
     def read(self, step: int = 0) -> Result:
         """Read one step (zero-based; 0 when the file is not a series)."""
         ...
+
+
+def check_step_value(value: float, known: Iterable[float]) -> None:
+    """Refuse a step value that is not finite or was used before.
+
+    Raises
+    ------
+    UsageError
+        It cannot tell the step from others.
+    """
+    if not math.isfinite(value) or value in known:
+        raise UsageError(f"each step of a series needs its own finite value; {value!r} cannot be used.")
 
 
 class StepWriter(Protocol):

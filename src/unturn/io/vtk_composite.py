@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import math
 from collections.abc import Sequence
 from dataclasses import dataclass
 from pathlib import Path
@@ -13,7 +12,8 @@ from xml.sax.saxutils import quoteattr
 import numpy as np
 from numpy.typing import NDArray
 
-from unturn.errors import InputError, UsageError
+from unturn.errors import InputError
+from unturn.io._format import check_step_value
 from unturn.io._formats import vtk_xml_type
 from unturn.io.vtk_arrays import name_of, roles_of, set_arrays
 from unturn.io.vtk_result import result_from_vtk
@@ -251,8 +251,7 @@ class PvdWriter:
         UsageError
             A step with this value was written before.
         """
-        if not math.isfinite(value) or any(value == known for known, _ in self.entries):
-            raise UsageError(f"each step of a series needs its own finite value; {value!r} cannot be used.")
+        check_step_value(value, [known for known, _ in self.entries])
         self.folder.mkdir(exist_ok=True)
         name = f"{self.path.stem}_{len(self.entries):04d}.vtu"
         self._lost.update(dict.fromkeys(write_file(result, self.folder / name, ".vtu")))

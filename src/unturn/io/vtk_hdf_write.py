@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import hashlib
-import math
 from collections.abc import Mapping
 from pathlib import Path
 from typing import Any
@@ -13,6 +12,7 @@ import numpy as np
 from vtkmodules.vtkCommonDataModel import vtkDataSet, vtkUnstructuredGrid
 
 from unturn.errors import UsageError
+from unturn.io._format import check_step_value
 from unturn.io.vtk_arrays import to_numpy
 from unturn.io.vtk_cells import types_of
 from unturn.io.vtk_hdf import COMPONENTS, NAME, ROLE
@@ -176,8 +176,7 @@ class HdfSeriesWriter:
         UsageError
             The value is not finite or was used before, or the step has other arrays than the first one.
         """
-        if not math.isfinite(value) or value in self._values:
-            raise UsageError(f"each step of a series needs its own finite value; {value!r} cannot be used.")
+        check_step_value(value, self._values)
         present = {(kind, name) for kind, _ in _KINDS for name in _writable(result, kind)}
         if self._known is not None and present != self._known:
             odd = ", ".join(sorted(repr(name) for _, name in present ^ self._known))
