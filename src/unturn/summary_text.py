@@ -431,7 +431,7 @@ def _tail(summary: Summary) -> list[str]:
     lines = []
     values = "values of the table" if summary.request.get("at") in ("nodes", *OWN_MESH) else "values"
     values += f" at element {_location(options.at)}; shear is tensor shear"
-    if any(name.startswith("equivalent_strain") for name in fields.arrays):
+    if any("equivalent" in name for name in fields.arrays):
         form = equivalent_form(options.equivalent_poisson)
         if any(name.endswith("_mechanical") for name in fields.arrays):
             form += " (mechanical: of the total less the free thermal strain)"

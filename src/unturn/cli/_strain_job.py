@@ -112,7 +112,7 @@ class StrainJob:
         number = chosen_step(opened, "last" if self.step == "all" else self.step)
         stepwise = Stepwise(self.options, self._zero(opened))
         if stepwise.series:
-            stepwise = self._after_earlier(opened, number)
+            stepwise = self._after_earlier(opened, number, stepwise.series[0])
         result = opened.read(number)
         out = self._target(path, result, series=False)
         result, summary, computed = self._compute(stepwise, result, alone=True)
@@ -120,13 +120,13 @@ class StrainJob:
         self._print(summary, computed, out, lost, result if self.options.own_mesh else None)
         return [self._data(summary, out)]
 
-    def _after_earlier(self, opened: ResultFile, number: int) -> Stepwise:
+    def _after_earlier(self, opened: ResultFile, number: int, asked: str) -> Stepwise:
         """Return a series that has gone through the steps from which what changes at a step is measured."""
         from unturn.stepwise import Stepwise
 
         if opened.steps is None:
             raise UsageError(
-                f"{opened.path} holds one state: what changes between the steps of a series is not in it. Leave it out of "
+                f"{opened.path} holds one state, and {asked} is what changes between the steps of a series: leave it out of "
                 "--measures."
             )
         _, options = self._last(opened)
@@ -168,38 +168,32 @@ class StrainJob:
         from unturn.pipeline import settled
 
         assert opened.steps is not None
+        errors: list[UnturnError] = []
         for index in reversed(range(len(opened.steps))):
             try:
                 last = opened.read(index)
                 return last, settled(self.options, last)
             except InputError as error:
-                if not self.keep_going:
-                    raise _at_step(opened, index, error) from error
-                self.failed.append(Failure(opened.path, index, opened.steps[index], error))
-        raise self._nothing_left(opened)
+                errors.append(_at_step(opened, index, error))
+                if self.step == "all" and not self.keep_going:
+                    break
+        raise errors[-1]
 
     def _nothing_left(self, opened: ResultFile) -> UnturnError:
-        """Return the error of the first step of a file none of whose steps can be used; it then counts as one failure."""
-        mine = [f for f in self.failed if f.file == opened.path]
+        """Return the error of the first step of a file none of whose steps can be used; the file then counts as failed."""
+        first = next(f for f in self.failed if f.file == opened.path)
         self.failed[:] = [f for f in self.failed if f.file != opened.path]
-        first = min(mine, key=lambda f: f.step or 0)
         return _at_step(opened, first.step or 0, first.error)
 
     def _try(self, opened: ResultFile, index: int, work: Callable[[Result], Made]) -> Made | None:
-        """Return what is made of a step; None when it fails and the others go on.
-
-        Wrong usage that shows at the first step is no fault of the step.
-        """
+        """Return what is made of a step; None when it fails and the others go on."""
         assert opened.steps is not None
         try:
             return work(opened.read(index))
-        except UsageError as error:
-            if not index:
-                raise
-            raise _at_step(opened, index, error) from error
-        except InputError as error:
+        except (InputError, UsageError) as error:
             if not self.keep_going:
-                raise _at_step(opened, index, error) from error
+                wrong_usage = isinstance(error, UsageError) and index == 0  # no fault of the step
+                raise error if wrong_usage else _at_step(opened, index, error) from error
             self._say(f"FAILED, left out: step {index}: {error}")
             self.failed.append(Failure(opened.path, index, opened.steps[index], error))
             return None
