@@ -48,9 +48,17 @@ def test_the_error_is_that_of_the_values_at_nodes(method: Method, base: str) -> 
     ending = "" if base == "small" else f"_{base}"
     found = strain(result, measures=NAMES, recovery=method, base=base, solve="nonlinear")
     nodes = strain(
-        result, at="nodes", borders="split", measures=["strain"], base=base, recovery=method, solve="nonlinear"
+        result,
+        at="nodes",
+        borders="split",
+        measures=["strain"],
+        base=base,
+        recovery=method,
+        solve="nonlinear",
     )
-    own = tensors(strain(result, measures=["strain"], base=base, solve="nonlinear").cell_data[f"strain{ending}"])
+    own = tensors(
+        strain(result, measures=["strain"], base=base, solve="nonlinear").cell_data[f"strain{ending}"]
+    )
     cells = nodes.blocks[0].connectivity  # every region has its own nodes there
     off = tensors(nodes.point_data[f"strain{ending}"])[cells] - own[:, None]
     squared = ((off**2).sum(axis=(1, 2, 3)) + (off.sum(axis=1) ** 2).sum(axis=(1, 2))) / 20
@@ -101,7 +109,9 @@ def test_estimates_from_a_zero_step() -> None:
     zero = mesh.result(u=start)
     # F F_0^-1 = R F_1 R^T: the strain of the motion alone, in turned axes, with the same norms
     for at in ("centroid", "nodes"):
-        found = strain(mesh.result(u=moved), zero=zero, measures=["strain_error_biot"], at=at, solve="nonlinear")  # type: ignore[arg-type]
+        found = strain(
+            mesh.result(u=moved), zero=zero, measures=["strain_error_biot"], at=at, solve="nonlinear"
+        )  # type: ignore[arg-type]
         alone = strain(mesh.result(u=u), measures=["strain_error_biot"], solve="nonlinear")
         np.testing.assert_allclose(
             found.cell_data["strain_error_biot"], alone.cell_data["strain_error_biot"], rtol=1e-8
@@ -145,9 +155,10 @@ def test_what_they_need_and_when_they_are_computed() -> None:
     assert np.isfinite(strain(result, measures=NAMES).cell_data["strain_error"]).all()
     with pytest.raises(UsageError, match="strain_jump_biot depends on the strain across the plane"):
         strain(result, measures=["strain_jump"], base="biot")
-    for at in ("surface", "quadrature"):
-        with pytest.raises(UsageError, match="belongs to the cells and nodes"):
-            strain(result, measures=NAMES, at=at)  # type: ignore[arg-type]
+    with pytest.raises(UsageError, match="belongs to the cells and nodes"):
+        strain(result, measures=NAMES, at="quadrature")
+    with pytest.raises(UsageError, match="no measure on surfaces is called 'strain_error'"):
+        strain(result, measures=NAMES, at="surface")
     lines = block(ELEMENTS["line"], 4)
     bar = lines.result(u=lines.points**2)
     np.testing.assert_allclose(strain(bar, measures=["strain_jump"]).cell_data["strain_jump"], 0.5, rtol=1e-9)

@@ -22,7 +22,7 @@ from unturn.regions import find_regions
 from unturn.result import Array, Association, Result
 from unturn.rigid import Removal, RigidMotion, take_out
 from unturn.rigid_parts import computed_cells, continued, parse_axis, rigid_parts
-from unturn.surface import SurfaceFields, free_faces, surface_result
+from unturn.surface import SurfaceFields, choose_surface_measures, free_faces, surface_result
 from unturn.thermal import Thermal, parse_thermal
 from unturn.verdict import Solve
 from unturn.zero_step import check_zero_temperature, judged_from_zero, zeroed
@@ -350,7 +350,14 @@ def _fields(
 
 
 def _checked_measures(options: StrainOptions) -> tuple[str, ...]:
-    names = choose_measures(options.measures, options.base, options.thermal_expansion is not None)
+    asked, surface = options.measures, options.at == "surface"
+    if surface and asked and not isinstance(asked, str):
+        choose_surface_measures(asked, options.base, options.poisson)  # it has names of its own
+        asked = [n for n in (n.removeprefix("surface_") for n in asked) if n in MEASURES or n == "all"]
+    only_of_surfaces = surface and not asked and bool(options.measures)
+    names: tuple[str, ...] = ()
+    if not only_of_surfaces:
+        names = choose_measures(asked, options.base, options.thermal_expansion is not None)
     if options.at in ("nodes", "quadrature") and "all" in (options.measures or ()):
         names = tuple(n for n in names if n not in GEOMETRY or n in (options.measures or ()))
     finite = [n for n in names if _is_finite(n)]
