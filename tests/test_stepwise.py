@@ -96,8 +96,6 @@ def truth(k: int) -> dict[str, Floats]:
         "accumulated_equivalent_strain_hencky": np.array(sum(equivalent(logarithm(a, b)) for a, b in pairs)),
         "deformation_rate": six(L) / dt,
         "equivalent_deformation_rate": np.array(equivalent(L)) / dt,
-        * AXIS
-        * (1.0 if k else np.nan),  # R(0.8 t) commutes with itself; V = R exp(..) R^T has no part in it
     }
 
 
