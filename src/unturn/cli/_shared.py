@@ -155,8 +155,11 @@ _OPTIONS: dict[str, tuple[Any, Any]] = {
     "threads": (o.Threads, None),
 }  # fmt: skip
 
-EVERY = tuple(_OPTIONS)
-"""Every option of `unturn.strain` that a command can take."""
+PLACES = ("borders", "faces", "between_regions")
+"""Options of values at nodes and on free faces, for commands that write those."""
+
+EVERY = tuple(name for name in _OPTIONS if name not in PLACES)
+"""Every other option of `unturn.strain`."""
 
 
 def strain_options(*names: str, **instead: Any) -> Callable[[Callable[..., None]], Callable[..., None]]:
@@ -214,4 +217,4 @@ def _plain(name: str, value: Any) -> Any:
     return value.value if isinstance(value, Enum) else value
 
 
-__all__ = ["EVERY", "At", "CellsOnly", "Measures", "strain_options"]
+__all__ = ["EVERY", "PLACES", "At", "CellsOnly", "Measures", "strain_options"]

@@ -9,7 +9,7 @@ from typing import TYPE_CHECKING, Annotated, Any
 import typer
 
 from unturn.cli import _options as o
-from unturn.cli._shared import EVERY, strain_options
+from unturn.cli._shared import EVERY, PLACES, strain_options
 from unturn.cli._steps import chosen_step
 from unturn.cli._strain_job import Failure, StrainJob
 from unturn.errors import UnturnError, UsageError
@@ -18,7 +18,7 @@ if TYPE_CHECKING:
     from unturn.pipeline import StrainOptions
 
 
-@strain_options(*EVERY)
+@strain_options(*EVERY, *PLACES)
 def strain(
     files: Annotated[list[Path], typer.Argument(metavar="FILE...", help="Result files.", readable=False)],
     output: Annotated[
