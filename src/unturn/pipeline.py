@@ -77,7 +77,8 @@ class Computed:
     """Computed fields, and the rigid motions that were taken out first.
 
     `fields` are those of cells: at centroids where the values asked for live elsewhere. `nodes`, `surface` and `cloud` hold
-    those. `estimates` are those of the strain; `faces` says where the values of free faces go.
+    those. `estimates` are those of the strain; `faces` says where the values of free faces go. `finite_model` is that of
+    finite measures where it is another one than that of `fields`: with a zero step.
     """
 
     fields: CellFields
@@ -89,6 +90,7 @@ class Computed:
     equivalent_poisson: float | None = None
     estimates: Estimates | None = None
     faces: FacesTo = "mesh"
+    finite_model: Model | None = None
 
     @property
     def own_mesh(self) -> Result | None:
@@ -201,6 +203,7 @@ def compute(
         _request(options, zero),
         equivalent_poisson=options.equivalent_poisson,
         faces=options.faces,
+        finite_model=finite,
     )
     del settings["at"]
     if options.at in OWN_MESH:
