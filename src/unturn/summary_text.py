@@ -201,8 +201,8 @@ _FINITE_ENDS = tuple(
 )
 
 
-_OF_NO_SPLIT = ("strain_error", "strain_jump", "equivalent_strain_increment", "accumulated")
-"""Rows without the error that turning makes there: they are not values of the small strain of this step."""
+_BESIDE = ("strain_error", "strain_jump", "equivalent_strain_increment", "accumulated")
+"""Rows that are not values of the strain of this step: no bound of theirs is known, and no error that turning makes."""
 
 
 def _rows(summary: Summary, shown: Sequence[RegionSummary]) -> list[tuple[str, str, Which]]:
@@ -234,7 +234,7 @@ def _table(summary: Summary) -> list[str]:
         rows.append(
             ["  at x, y, z", *(_position(getattr(r.statistics[name], at), summary, digits) for r in shown)]
         )
-        if not summary.options.mode and not name.endswith(_FINITE_ENDS) and not name.startswith(_OF_NO_SPLIT):
+        if not summary.options.mode and not name.endswith(_FINITE_ENDS) and not name.startswith(_BESIDE):
             rows.append(
                 ["  error there", *(_error(getattr(r.statistics[name], at), r, summary) for r in shown)]
             )
@@ -242,9 +242,9 @@ def _table(summary: Summary) -> list[str]:
         rows.append(
             ["99.9 % of volume below" + _base_words(shown[0]), *(_micro(_percentile(r)) for r in shown)]
         )
-    for label, name in (("det F, smallest to largest", "det_f"), ("stretch, smallest to largest", "stretch")):
-        if "det_f" in shown[0].statistics:
-            rows.append([label, *(_scatter(r, name) for r in shown)])
+    for label, name, which in _FACTORS:
+        if name in shown[0].statistics:
+            rows.append([label, *(_factor(r, name, which) for r in shown)])
     for name in shown[0].error_percent if summary.elsewhere is None else ():
         words = BASE_WORDS[name.removeprefix("strain_error")]
         rows.append(
@@ -260,7 +260,8 @@ def _table(summary: Summary) -> list[str]:
 
 
 def _extreme(r: RegionSummary, name: str, which: Which) -> str:
-    return _bounded(getattr(r.statistics[name], which), r.plus_minus(name, which))
+    value = getattr(r.statistics[name], which)
+    return _micro(value) if name.startswith(_BESIDE) else _bounded(value, r.plus_minus(name, which))
 
 
 def _bounded(value: float, plus_minus: float) -> str:
@@ -274,6 +275,8 @@ def _rotation(r: RegionSummary) -> str:
 
 def _suspected(summary: Summary, location: str, shown: Sequence[RegionSummary]) -> list[str]:
     """Return a line for each peak of the table that is suspected singular, and how many there are in other regions."""
+    if not shown:
+        return []
     names = [r.region.name for r in shown]
     in_table = {(name, which) for _, name, which in _rows(summary, shown)}
     here = [
@@ -357,11 +360,12 @@ def _coordinates(at: Sequence[float], digits: int) -> str:
     return ", ".join(f"{x + 0.0:.{digits}f}" if digits < 9 else f"{x:.4g}" for x in at)
 
 
-def _scatter(r: RegionSummary, name: str) -> str:
-    ends: tuple[tuple[str, Which], ...] = (("det_f", "minimum"), ("det_f", "maximum"))
-    if name == "stretch":
-        ends = ("stretch_3", "minimum"), ("stretch_1", "maximum")
-    return " to ".join(_factor(r, *end) for end in ends)
+_FACTORS: tuple[tuple[str, str, Which], ...] = (
+    ("det F, smallest", "det_f", "minimum"),
+    ("det F, largest", "det_f", "maximum"),
+    ("stretch, smallest", "stretch_3", "minimum"),
+    ("stretch, largest", "stretch_1", "maximum"),
+)
 
 
 def _factor(r: RegionSummary, name: str, which: Which) -> str:
@@ -443,9 +447,14 @@ def _aligned(rows: list[list[str]], left: bool = False) -> list[str]:
     return ["  ".join(p(cell, w) for p, cell, w in zip(pad, row, widths)).rstrip() for row in rows]
 
 
+_PLUS_MINUS = (
+    "+- is estimated from the elements around; at cells it covers the whole element, not its centroid alone"
+)
+
+
 def _tail(summary: Summary) -> list[str]:
     fields, options = summary.fields, summary.options
-    lines = []
+    lines = [_PLUS_MINUS]
     values = "values of the table" if summary.request.get("at") in ("nodes", *OWN_MESH) else "values"
     values += f" at element {_location(options.at)}; shear is tensor shear"
     if any("equivalent" in name for name in fields.arrays):

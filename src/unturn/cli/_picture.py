@@ -50,6 +50,9 @@ def draw_summary(summary: Summary, computed: Computed, at: str, path: Path) -> s
 
     how = _on_faces(computed.surface) if computed.surface is not None else _on_the_mesh(summary, computed)
     array, component = _chosen(how.pop("arrays"))
+    at = (
+        "" if at == "nodes" and how.get("association") == "cell" else at
+    )  # an estimate of cells, asked for beside
     drawing = draw(
         **how,
         array=array,
