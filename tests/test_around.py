@@ -12,7 +12,8 @@ from unturn import Result, cutout
 from unturn.around import Asked, groups_of, trust_of
 from unturn.elements import ELEMENTS
 from unturn.model import Model
-from unturn.pipeline import Computed, StrainOptions, compute
+from unturn.options import StrainOptions
+from unturn.pipeline import Computed, compute
 from unturn.recovery import recover_gradient
 from unturn.trust import strain_error
 

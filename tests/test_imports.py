@@ -25,7 +25,7 @@ LAYERS = (
     ("recovery", "tensor_range", "rigid", "verdict"),
     ("trust", "peaks", "surface", "quadrature_points", "rigid_parts", "zero_step", "cutout"),
     ("borders",),
-    ("nodal", "estimates"),
+    ("nodal", "estimates", "options"),
     ("agreement", "pipeline", "trial", "series"),
     ("around",),
     ("trusted",),

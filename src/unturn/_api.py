@@ -11,7 +11,8 @@ from unturn.borders import split_mesh
 from unturn.errors import UsageError
 from unturn.gradient import PlaneModel
 from unturn.kinematics._symmetric import Floats
-from unturn.pipeline import Borders, Computed, FacesTo, Place, StrainOptions
+from unturn.options import Borders, FacesTo, Place, StrainOptions
+from unturn.pipeline import Computed
 from unturn.recovery import Method
 from unturn.result import Result
 from unturn.rigid_parts import rigid_arrays

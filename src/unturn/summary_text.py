@@ -13,7 +13,7 @@ from unturn.agreement import Agreement
 from unturn.elsewhere import ElsewhereExtreme
 from unturn.fields import CellFields
 from unturn.measures import MEASURES
-from unturn.pipeline import OWN_MESH
+from unturn.options import OWN_MESH
 from unturn.rigid import Removal
 from unturn.summary import (
     CAUTION,
