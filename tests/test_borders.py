@@ -119,6 +119,43 @@ def test_the_points_of_the_file_come_first() -> None:
     assert again.n_points == split.n_points
 
 
+@pytest.mark.derived(
+    "with a zero step small and finite measures come from two motions; each is as if asked for alone"
+)
+def test_small_and_finite_measures_from_a_zero_step() -> None:
+    result = three_parts()
+    zero = result.with_arrays(point_data={"u": 0.3 * result.point_data["u"][:, [1, 2, 0]]})
+    options: dict[str, Any] = {
+        "at": "nodes",
+        "displacement": "u",
+        "borders": "split",
+        "zero": zero,
+        "solve": "nonlinear",
+    }
+    both = strain(result, measures=["strain", "strain_biot", "strain_jump_biot"], **options)
+    for name in ("strain", "strain_biot"):
+        alone = strain(result, measures=[name], **options)
+        np.testing.assert_array_equal(both.point_data["original_point"], alone.point_data["original_point"])
+        np.testing.assert_allclose(both.point_data[name], alone.point_data[name], atol=1e-15)
+    original = both.point_data["original_point"]
+    jump = strain(result, measures=["strain_jump_biot"], **{**options, "borders": "dominant"})
+    np.testing.assert_array_equal(
+        both.point_data["strain_jump_biot"], jump.point_data["strain_jump_biot"][original]
+    )
+
+
+@pytest.mark.practice("a picture of what was written, whatever it is")
+@pytest.mark.parametrize("measures", ["equivalent_strain", "strain_jump", "strain_error"])
+def test_a_picture_of_values_at_duplicated_points(tmp_path: Path, measures: str) -> None:
+    unturn.write(three_parts(), tmp_path / "in.vtu")
+    picture = tmp_path / "p.png"
+    asked = ["strain", str(tmp_path / "in.vtu"), "--at", "nodes", "--borders", "split", "--displacement", "u"]
+    status, said = run([*asked, "--measures", measures, "--picture", str(picture)])
+    assert (status, picture.exists()) == (0, True), said
+    assert f"drew {picture}: {measures}" in said
+    assert ("recovered at the nodes" in said.splitlines()[-1]) is (measures != "strain_error")
+
+
 def test_a_mesh_without_borders_stays_as_it_is() -> None:
     # Source: the documented conventions: points on borders are duplicated, and no others.
     mesh = block(ELEMENTS["tetra"], 3)

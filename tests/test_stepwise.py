@@ -265,6 +265,17 @@ def test_the_accessor_takes_meshes_as_steps() -> None:
         meshes[2].unturn.strain(previous=meshes[:2], measures=["spin"])
 
 
+@pytest.mark.derived("a body that turns on by a third of a turn a step has turned by whole turns in the end")
+def test_rotation_vectors_continue_those_of_the_steps_before() -> None:
+    angles = np.radians([100.0, 220.0, 340.0, 460.0])
+    steps = [MESH.result(u=MESH.points @ axis_angle(AXIS, a).T) for a in angles]
+    options: dict[str, Any] = {"remove_rigid": "whole", "solve": "nonlinear", "measures": ["strain"]}
+    found = strain(steps[-1], previous=steps[:-1], **options).field_data["rigid_rotation"]
+    np.testing.assert_allclose(found, [angles[-1] * AXIS], rtol=1e-9)
+    alone = strain(steps[-1], **options).field_data["rigid_rotation"]
+    np.testing.assert_allclose(alone, [(angles[-1] - 2 * np.pi) * AXIS], rtol=1e-9)
+
+
 REFUSED: list[tuple[list[str], int, str]] = [
     (["--at", "surface"], 2, "strain_increment belongs to the cells and nodes of the mesh"),
     (["--at", "quadrature"], 2, "strain_increment belongs to the cells and nodes of the mesh"),

@@ -176,6 +176,25 @@ def test_a_series_of_them(tmp_path: Path) -> None:
         np.testing.assert_allclose(found["surface_principal_strain"][:, 0], [k * 1e-3, k * 4e-3], atol=1e-15)
 
 
+@pytest.mark.derived("names that only surfaces have, alone and with the prefix they have in the file")
+def test_measures_that_only_surfaces_have(tmp_path: Path) -> None:
+    result = two_cubes()
+    found = strain(result, at="surface", measures=["normal_strain", "in_plane_strain"], poisson=0.3).cell_data
+    assert {"surface_normal_strain", "surface_in_plane_strain"} <= set(found)
+    assert "surface_strain" not in found
+    prefixed = strain(result, at="surface", measures=["surface_strain_hencky"], solve="nonlinear").cell_data
+    across = prefixed["surface_normal"][:, 0] == 0
+    stretch = np.where(prefixed["parent_cell"] == 0, 1e-3, 4e-3)
+    np.testing.assert_allclose(
+        prefixed["surface_strain_hencky"][across, 0], np.log1p(stretch[across]), rtol=1e-9
+    )
+    unturn.write(result, tmp_path / "in.vtu")
+    asked = ["strain", str(tmp_path / "in.vtu"), "--at", "surface", "--measures", "surface_normal_strain"]
+    status, said = run([*asked, "--poisson", "0.3", "-o", str(tmp_path / "out.vtu")])
+    assert status == 0, said
+    assert "surface_normal_strain" in unturn.read(tmp_path / "out.vtu").cell_data
+
+
 def test_what_is_refused() -> None:
     # Source: the exit codes of the project: 2 is wrong usage.
     result = two_cubes()
