@@ -11,7 +11,7 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from meshes import Mesh, curved, patch, straight
-from unturn.convergence import LOWEST, Study, check_refinement, observed_order, study
+from unturn.refinement import LOWEST, Study, check_refinement, observed_order, study
 from unturn.elements import ELEMENTS, Element
 from unturn.errors import InputError, UsageError
 from unturn.fields import CellFields

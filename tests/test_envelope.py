@@ -16,7 +16,7 @@ from numpy.typing import NDArray
 from meshes import patch
 from strategies import axis_angle
 from unturn.elements import ELEMENTS
-from unturn.envelope import Envelope, EnvelopeOptions, State, envelope
+from unturn.envelopes import Envelope, EnvelopeOptions, State, envelope
 from unturn.errors import InputError, UsageError
 from unturn.kinematics import equivalent_strain, principal_strain, strain, tensor_from_components
 from unturn.model import build_model

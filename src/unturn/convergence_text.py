@@ -11,7 +11,7 @@ from typing import Any
 import numpy as np
 
 from unturn._version import __version__
-from unturn.convergence import SAFETY, SMALL_RATIO, Study, check_refinement, study
+from unturn.refinement import SAFETY, SMALL_RATIO, Study, check_refinement, study
 from unturn.fields import CellFields
 from unturn.quantities import Found, Quantity
 from unturn.summary import CAUTION, cell_counts, mesh_kind

@@ -11,7 +11,7 @@ from typing import Any
 import numpy as np
 
 from unturn._version import __version__
-from unturn.envelope import RANGE, Envelope, Judged, Tracked
+from unturn.envelopes import RANGE, Envelope, Judged, Tracked
 from unturn.measures import MEASURES
 from unturn.series import SERIES_MEASURES
 from unturn.statistics import statistics

@@ -16,7 +16,7 @@ from typing import Any
 
 import numpy as np
 
-from unturn.envelope import State
+from unturn.envelopes import State
 from unturn.errors import InputError, UnturnError, UsageError, close_matches
 from unturn.kinematics._symmetric import Floats
 from unturn.model import Model

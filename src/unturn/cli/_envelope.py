@@ -16,7 +16,7 @@ from unturn.cli import _options as o
 from unturn.errors import UnturnError, UsageError
 
 if TYPE_CHECKING:
-    from unturn.envelope import Envelope, EnvelopeOptions, State
+    from unturn.envelopes import Envelope, EnvelopeOptions, State
     from unturn.fields import CellFields
     from unturn.pipeline import StrainOptions
     from unturn.result import Result
@@ -133,7 +133,7 @@ def envelope(
 ) -> None:
     """Find the extremes of every cell over steps or load cases, and which of them made each."""
     from unturn.cli._output import Places, check_place
-    from unturn.envelope import EnvelopeOptions
+    from unturn.envelopes import EnvelopeOptions
     from unturn.io import writable_suffix
     from unturn.pipeline import StrainOptions
 
@@ -243,7 +243,7 @@ def _states(
 def _of_file(path: Path, several: bool, as_case: bool, keep_going: bool) -> list[State]:
     """Return the states of one file; with `as_case` their names are those of load cases in combinations."""
     from unturn import io
-    from unturn.envelope import State
+    from unturn.envelopes import State
 
     try:
         opened = io.open_result(path)
@@ -280,7 +280,7 @@ def _run(
 ) -> Envelope:
     from unturn._api import add_fields
     from unturn.cli._progress import progress_bar
-    from unturn.envelope import envelope as find_envelope
+    from unturn.envelopes import envelope as find_envelope
     from unturn.io import series_writer
     from unturn.pipeline import Computed
     from unturn.series import SERIES_MEASURES
