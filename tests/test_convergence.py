@@ -11,7 +11,6 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from meshes import Mesh, curved, patch, straight
-from unturn.refinement import LOWEST, Study, check_refinement, observed_order, study
 from unturn.elements import ELEMENTS, Element
 from unturn.errors import InputError, UsageError
 from unturn.fields import CellFields
@@ -19,6 +18,7 @@ from unturn.locate import locate
 from unturn.model import build_model
 from unturn.pipeline import StrainOptions, compute
 from unturn.quantities import Found, find_quantity, parse_quantity
+from unturn.refinement import LOWEST, Study, check_refinement, observed_order, study
 
 # --- the published procedure ------------------------------------------------------------------------------------------
 

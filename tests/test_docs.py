@@ -19,12 +19,12 @@ from documents import EVERY_PAGE, PAGES, ROOT, Session, blocks, run, spoken, tab
 from unturn import CellBlock, Result, refinement
 from unturn.cli._main import app
 from unturn.cli._options import BaseChoice
-from unturn.refinement import Behaviour
 from unturn.elements import ELEMENTS
 from unturn.errors import InputError, UnturnError
 from unturn.io import FORMATS, Format
 from unturn.kinematics._finite import BASES
 from unturn.measures import DEFAULT_MEASURES, GEOMETRY, MEASURES, SMALL, Measure
+from unturn.refinement import Behaviour
 from unturn.series import SERIES_MEASURES
 
 SAMPLES = [p for p in (ROOT / "sample_meshes").iterdir() if p.suffix in (".vtu", ".xdmf", ".h5")]

@@ -11,9 +11,9 @@ from typing import Any
 import numpy as np
 
 from unturn._version import __version__
-from unturn.refinement import SAFETY, SMALL_RATIO, Study, check_refinement, study
 from unturn.fields import CellFields
 from unturn.quantities import Found, Quantity
+from unturn.refinement import SAFETY, SMALL_RATIO, Study, check_refinement, study
 from unturn.summary import CAUTION, cell_counts, mesh_kind
 from unturn.summary_text import _aligned
 

@@ -8,7 +8,7 @@ from __future__ import annotations
 import contextlib
 from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, field, replace
-from pathlib import Path
+from pathlib import Path, PurePath
 from typing import Literal
 
 import numpy as np
@@ -49,12 +49,16 @@ class State:
         Its time; None when the file holds none.
     factors
         For a combination: load case -> factor.
+    noise
+        Called after `read`: floor of its strain from the stored precision, `(n_cells,)`, where that is coarser than the
+        arrays that are read tell. None: they tell.
     """
 
     name: str
     read: Callable[[], Result]
     time: float | None = None
     factors: Mapping[str, float] | None = None
+    noise: Callable[[], Floats | None] | None = None
 
 
 @dataclass(frozen=True)
@@ -202,18 +206,43 @@ def envelope(
                 run.add(state, number)
             except UnturnError as error:
                 if not options.keep_going or len(states) == 1:
-                    raise _named(state, error) from error
+                    raise named(state.name, error) from error
                 run.failures[number] = error
             if progress is not None:
                 progress(number + 1)
         if len(run.failures) == len(states):
             first = run.failures[0]
-            raise _named(states[0], first) from first
+            raise named(states[0].name, first) from first
         return run.finish(tuple(states))
 
 
-def _named(state: State, error: UnturnError) -> UnturnError:
-    return type(error)(f"{state.name}: {error}")
+def named(name: str, error: UnturnError, file: str = "") -> UnturnError:
+    """Return an error that names its state, which may be a file: no file is named twice.
+
+    Parameters
+    ----------
+    name
+        Of the state.
+    error
+        What went wrong.
+    file
+        Name of a file, without folder and suffix, of which `name` says no more than the error itself does.
+
+    Examples
+    --------
+    >>> str(named("step 3", InputError("run.xdmf: cut short.")))
+    'step 3: run.xdmf: cut short.'
+    >>> str(named("run.xdmf step 3", InputError("old/run.xdmf: cut short.")))
+    'old/run.xdmf step 3: cut short.'
+    """
+    said = str(error)
+    where, colon, rest = said.partition(": ")
+    place = PurePath(where)
+    if colon and place.name and (name == place.name or name.startswith(f"{place.name} ")):
+        said = f"{where}{name.removeprefix(place.name)}: {rest}"
+    elif not (colon and file and place.stem == file):
+        said = f"{name}: {said}"
+    return type(error)(said)
 
 
 class _Run:
@@ -233,7 +262,8 @@ class _Run:
                 f"{series[0]} needs the steps of one series; load cases do not follow one another."
             )
         self.changes = StepChanges(series, strain.solve, strain.equivalent_poisson)
-        self.plan = plan_envelope(strain.measures, strain.base, self.changes, options.tensor_range)
+        heated = strain.thermal_expansion is not None
+        self.plan = plan_envelope(strain.measures, strain.base, self.changes, options.tensor_range, heated)
         self.stack = contextlib.ExitStack()
         self.mesh: ReferenceMesh | None = None
         self.model: Model | None = None
@@ -254,6 +284,9 @@ class _Run:
         computed = compute(state.read(), options, zero=self.zero, diagnose=True, previous=self.previous)
         fields, d = computed.fields, computed.fields.diagnostics
         assert d is not None
+        noise = None if state.noise is None else state.noise()
+        if noise is not None:
+            d.noise = np.maximum(d.noise, noise)
         if self.mesh is None:
             mesh = ReferenceMesh(fields.model)
             self._begin(fields, d)

@@ -19,6 +19,7 @@ Kind = Literal["step", "case"]
 Stored = NDArray[np.float64] | NDArray[np.int32]
 
 _NO_RANGE = "almansi"  # its axes turn with the body: tensors of two steps cannot be subtracted
+_MECHANICAL = "mechanical"
 _NO_TENSOR = ("displacement_gradient", "small_strain_error")
 
 
@@ -64,7 +65,7 @@ class Plan:
 
     extremes: tuple[str, ...]
     series: tuple[str, ...]
-    families: tuple[str, ...]  # of strain tensors with a range: "" or a finite base
+    families: tuple[str, ...]  # of strain tensors with a range: "", "mechanical" or a finite base
     needs: tuple[str, ...]
     notes: tuple[str, ...]
 
@@ -76,8 +77,10 @@ class Plan:
         )
 
 
-def plan_envelope(asked: Sequence[str] | None, base: str, changes: StepChanges, tensor_range: bool) -> Plan:
-    """Return what an envelope of these measures needs.
+def plan_envelope(
+    asked: Sequence[str] | None, base: str, changes: StepChanges, tensor_range: bool, mechanical: bool = False
+) -> Plan:
+    """Return what an envelope of these measures needs; `mechanical`: a free thermal strain is given.
 
     Raises
     ------
@@ -92,7 +95,7 @@ def plan_envelope(asked: Sequence[str] | None, base: str, changes: StepChanges, 
                 f"no measure is called {name!r}.{close_matches(name, known)} Measures: those of 'unturn strain', and of a "
                 f"series {', '.join(SERIES_MEASURES)}."
             )
-    chosen = choose_measures(own, base) if own is None or own else ()
+    chosen = choose_measures(own, base, mechanical) if own is None or own else ()
     for name in own or ():
         if name in (*GEOMETRY, *SURFACE_AXES) or name.startswith("principal_direction"):
             raise UsageError(
@@ -105,7 +108,7 @@ def plan_envelope(asked: Sequence[str] | None, base: str, changes: StepChanges, 
     if tensor_range and _NO_RANGE in families:
         notes = ("no strain range of the Almansi strain: its axes turn with the body, so that tensors of two steps "
                  "cannot be subtracted",)  # fmt: skip
-    ranged = [f for f in ("", *BASES) if f in families - {_NO_RANGE}] if tensor_range else []
+    ranged = [f for f in ("", _MECHANICAL, *BASES) if f in families - {_NO_RANGE}] if tensor_range else []
     needs = {*extremes, *changes.needs, *(strain_tensor(f) for f in ranged)}
     for suffix in (n.removeprefix("principal_strain") for n in extremes if n.startswith("principal_strain")):
         needs.update(f"principal_direction_{k}{suffix}" for k in (1, 2, 3))
@@ -113,9 +116,13 @@ def plan_envelope(asked: Sequence[str] | None, base: str, changes: StepChanges, 
 
 
 def _family(name: str) -> str:
+    if MEASURES[name].mechanical:
+        return _MECHANICAL
     return next((b for b in BASES if name.endswith(f"_{b}")), "")
 
 
 def strain_tensor(family: str) -> str:
-    """Return the name of the strain tensor of a base; ``""`` is the small strain."""
+    """Return the name of the strain tensor of a family; ``""`` is the small strain."""
+    if family == _MECHANICAL:
+        return "mechanical_strain"
     return f"strain_{family}" if family else "strain"
