@@ -16,12 +16,13 @@ from numpy.typing import NDArray
 from meshes import patch
 from strategies import axis_angle
 from unturn.elements import ELEMENTS
-from unturn.envelopes import Envelope, EnvelopeOptions, State, envelope, named
+from unturn.envelopes import envelope
 from unturn.errors import InputError, UsageError
 from unturn.kinematics import equivalent_strain, principal_strain, strain, tensor_from_components
 from unturn.model import build_model
 from unturn.pipeline import StrainOptions, compute
 from unturn.result import CellBlock, Result
+from unturn.states import Envelope, EnvelopeOptions, State, named
 from unturn.superposition import Combination, read_combinations, superposed_states
 from unturn.tensor_range import TensorRange, largest_distances
 

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from os import PathLike
 from typing import Literal
 
@@ -12,7 +12,7 @@ from unturn.gradient import PlaneModel
 from unturn.kinematics._symmetric import Floats
 from unturn.pipeline import Computed, Place, StrainOptions, compute, rigid_arrays
 from unturn.recovery import Method
-from unturn.result import Association, Result
+from unturn.result import Array, Association, Result
 from unturn.verdict import Solve
 
 _LONGEST_PREFIX = 100
@@ -195,11 +195,6 @@ def add_fields(result: Result, computed: Computed, *, prefix: str = "", overwrit
     UsageError
         An array of that name is already there and `overwrite` is not set, or a prefix that formats cannot hold.
     """
-    if prefix != prefix.strip() or not prefix.isprintable() or len(prefix) > _LONGEST_PREFIX:
-        raise UsageError(
-            f"--prefix {prefix[:40]!r}: not every format keeps blanks at the ends of a name, characters that cannot be "
-            f"printed, or more than {_LONGEST_PREFIX} of them; choose another one."
-        )
     own = computed.cloud if computed.surface is None else computed.surface.result
     if own is not None:
         if prefix:
@@ -210,22 +205,46 @@ def add_fields(result: Result, computed: Computed, *, prefix: str = "", overwrit
         return own.with_arrays(field_data=_motions(own, computed, prefix, overwrite))
     where: Association = "cell" if computed.nodes is None else "point"
     found = computed.fields if computed.nodes is None else computed.nodes
-    present = result.cell_data if computed.nodes is None else result.point_data
-    arrays = {prefix + name: values for name, values in found.arrays.items()}
-    taken = [name for name in arrays if name in present]
+    added = add_arrays(result, where, found.arrays, found.components, prefix=prefix, overwrite=overwrite)
+    return added.with_arrays(field_data=_motions(result, computed, prefix, overwrite))
+
+
+def add_arrays(
+    result: Result,
+    where: Association,
+    arrays: Mapping[str, Array],
+    components: Mapping[str, tuple[str, ...]],
+    *,
+    prefix: str = "",
+    overwrite: bool = False,
+) -> Result:
+    """Return the result with these cell or point arrays.
+
+    Raises
+    ------
+    UsageError
+        An array of that name is already there and `overwrite` is not set, or a prefix that formats cannot hold.
+    """
+    if prefix != prefix.strip() or not prefix.isprintable() or len(prefix) > _LONGEST_PREFIX:
+        raise UsageError(
+            f"--prefix {prefix[:40]!r}: not every format keeps blanks at the ends of a name, characters that cannot be "
+            f"printed, or more than {_LONGEST_PREFIX} of them; choose another one."
+        )
+    present = result.cell_data if where == "cell" else result.point_data
+    named = {prefix + name: values for name, values in arrays.items()}
+    taken = [name for name in named if name in present]
     if taken and not overwrite:
         raise UsageError(
             f"{result.path + ': ' if result.path else ''}the file already has a {where} array called {taken[0]!r}; it is "
             "not overwritten unasked. Give the new "
             "arrays other names with --prefix TEXT, or replace the old ones with --overwrite."
         )
-    motions = _motions(result, computed, prefix, overwrite)
     names: dict[tuple[Association, str], tuple[str, ...]] = {
-        (where, prefix + name): components for name, components in found.components.items()
+        (where, prefix + name): columns for name, columns in components.items()
     }
-    if computed.nodes is not None:
-        return result.with_arrays(point_data=arrays, field_data=motions, component_names=names)
-    return result.with_arrays(cell_data=arrays, field_data=motions, component_names=names)
+    if where == "point":
+        return result.with_arrays(point_data=named, component_names=names)
+    return result.with_arrays(cell_data=named, component_names=names)
 
 
 def _motions(result: Result, computed: Computed, prefix: str, overwrite: bool) -> dict[str, Floats]:

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from typing import Literal
 
@@ -16,6 +16,7 @@ from unturn.measures import GEOMETRY, MEASURES, SURFACE_AXES, choose_measures
 from unturn.series import SERIES_MEASURES, StepChanges
 
 Kind = Literal["step", "case"]
+Which = Literal["maximum", "minimum", "largest_magnitude"]
 Stored = NDArray[np.float64] | NDArray[np.int32]
 
 _NO_RANGE = "almansi"  # its axes turn with the body: tensors of two steps cannot be subtracted
@@ -41,22 +42,20 @@ class Extremes:
             at[mask] = state
         return higher, lower
 
-    def arrays(self, name: str, kind: Kind, signed: bool) -> dict[str, Stored]:
-        """Return the arrays of a measure by their names; of equal magnitudes the earlier state counts."""
+    def found(self, signed: bool) -> Iterator[tuple[Which, Stored, Stored]]:
+        """Yield each extreme and the states that made it, NaN and -1 for none; of equal ones the earlier state counts."""
         for extreme, at in ((self.maximum, self.at_maximum), (self.minimum, self.at_minimum)):
             extreme[at < 0] = np.nan
-        found: dict[str, Stored] = {
-            f"{name}_maximum": self.maximum,
-            f"{name}_maximum_{kind}": self.at_maximum,
-            f"{name}_minimum": self.minimum,
-            f"{name}_minimum_{kind}": self.at_minimum,
-        }
+        yield "maximum", self.maximum, self.at_maximum
+        yield "minimum", self.minimum, self.at_minimum
         if signed:
             high, low = np.abs(self.maximum), np.abs(self.minimum)
             upper = (high > low) | ((high == low) & (self.at_maximum <= self.at_minimum))
-            found[f"{name}_largest_magnitude"] = np.where(upper, high, low)
-            found[f"{name}_largest_magnitude_{kind}"] = np.where(upper, self.at_maximum, self.at_minimum)
-        return found
+            yield (
+                "largest_magnitude",
+                np.where(upper, high, low),
+                np.where(upper, self.at_maximum, self.at_minimum),
+            )
 
 
 @dataclass(frozen=True)

@@ -128,6 +128,53 @@ def nodal_fields(
     return NodeFields(arrays, component_names(measures, frame), recovered, recovered, free)
 
 
+def share_fields(
+    recovered: Recovered,
+    names: Sequence[str],
+    *,
+    free: Floats | None = None,
+    equivalent_poisson: float | None = None,
+    frame: Frame | None = None,
+    threads: int | None = None,
+) -> tuple[dict[str, Floats], dict[str, tuple[str, ...]]]:
+    """Return measures at every share of the nodes, `(n_shares,)` or `(n_shares, components)`, and names of components.
+
+    Parameters
+    ----------
+    recovered
+        See `recover_gradient`; a region's own side of a node on a border is a share of its own.
+    names
+        Names in `MEASURES`.
+    free
+        `(6, n_shares)` free thermal strain, as `NodeFields` holds it.
+    equivalent_poisson, frame, threads
+        As in `compute_fields`.
+
+    Raises
+    ------
+    UsageError
+        A measure that depends on the unstated third direction of a plane mesh.
+    """
+    model, shares = recovered.shares.model, recovered.shares
+    check_request(model, names, frame)
+    measures = [MEASURES[name] for name in names]
+    n = len(shares)
+    arrays = {m.name: np.empty((n, len(m.components)) if m.components else n) for m in measures}
+    directions = any(m.directions for m in measures)
+
+    def work(start: int, stop: int) -> None:
+        rows = slice(start, stop)
+        part = None if free is None else free[:, rows]
+        with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
+            split = _split(recovered.values[:, :, rows], model, equivalent_poisson, part, directions)
+            place = shares.point[rows]
+            axes = None if frame is None else frame.axes(model.points[place].T, place, None)
+            fill_measures(arrays, rows, measures, split, axes)
+
+    over_chunks(work, [(s, min(s + _CHUNK, n)) for s in range(0, n, _CHUNK)], threads)
+    return arrays, component_names(measures, frame)
+
+
 def _check(model: Model, names: Sequence[str], frame: Frame | None, thermal: Thermal | None) -> None:
     alone = [n for n in names if n not in MEASURES]
     if alone:

@@ -18,7 +18,6 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from unturn.envelopes import State, named
 from unturn.errors import InputError, UnturnError, UsageError, close_matches
 from unturn.fields import compute_fields
 from unturn.kinematics._symmetric import Floats
@@ -27,6 +26,7 @@ from unturn.pipeline import StrainOptions, model_of
 from unturn.precision import MEANT_DISPLACEMENT, storage_resolution
 from unturn.result import Array, Result
 from unturn.same_mesh import ReferenceMesh
+from unturn.states import State, named
 
 _AT_ONCE = 8  # combinations summed in one pass over the load cases
 _MOST_REVERSIBLE = 10

@@ -2,12 +2,14 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from pathlib import Path
 from typing import TYPE_CHECKING, Annotated
 
 import typer
 
 from unturn.cli import _options as o
+from unturn.cli._shared import EVERY, CellsOnly, strain_options
 from unturn.errors import UsageError
 
 if TYPE_CHECKING:
@@ -16,6 +18,10 @@ if TYPE_CHECKING:
     from unturn.quantities import Found, Quantity
 
 
+_OPTIONS = [n for n in EVERY if n not in ("measures", "base", "recovery")]
+
+
+@strain_options(*_OPTIONS, at=CellsOnly)
 def convergence(
     coarse: Annotated[
         Path, typer.Argument(metavar="COARSE", help="Result on the coarsest mesh.", readable=False)
@@ -33,32 +39,14 @@ def convergence(
             "equivalent_strain, principal_strain_1, strain_XX ...",
         ),
     ] = None,
-    at: Annotated[
-        o.LocationChoice, typer.Option(help="Where peaks and percentiles are taken.")
-    ] = o.LocationChoice.centroid,
+    *,
+    options: StrainOptions,
     step: o.Step = "last",
-    solve: Annotated[o.SolveChoice, typer.Option(help="What the solve was.")] = o.SolveChoice.unknown,
-    displacement: o.Displacement = None,
-    displacement_scale: o.Scale = 1.0,
-    coordinates: o.Coordinates = o.CoordinatesChoice.reference,
-    plane: o.Plane = None,
-    axis: o.Axis = o.AxisChoice.y,
-    poisson: o.Poisson = None,
-    equivalent_poisson: Annotated[
-        float | None,
-        typer.Option(
-            metavar="NU", help="Equivalent strain as 1/(1+NU) times the norm of the principal differences."
-        ),
-    ] = None,
-    alive: o.Alive = None,
-    skin: o.Skin = False,
     json: o.Json = None,
-    threads: o.Threads = None,
 ) -> None:
     """Follow quantities over three meshes: observed order, extrapolated value, grid convergence index."""
     from unturn.cli._output import check_place, write_json
     from unturn.convergence_text import refinement, refinement_data, refinement_text
-    from unturn.pipeline import StrainOptions
     from unturn.quantities import FORMS, parse_quantity
 
     if not quantity:
@@ -67,13 +55,8 @@ def convergence(
         raise UsageError("--step all: a refinement study follows one step; give its number or 'last'.")
     check_place(None, json, (coarse, medium, fine))
     quantities = [parse_quantity(text) for text in quantity]
-    options = StrainOptions(
-        displacement=displacement, measures=sorted({q.measure.name for q in quantities}), at=at.value,
-        solve=solve.value, plane=plane.value if plane else None, poisson=poisson, axis=axis.value,
-        coordinates=coordinates.value, displacement_scale=displacement_scale, equivalent_poisson=equivalent_poisson,
-        skin=skin, alive=alive, threads=threads,
-    )  # fmt: skip
-    meshes, by_mesh = zip(*(_measure(path, step, options, quantities) for path in (coarse, medium, fine)))
+    asked = replace(options, measures=sorted({q.measure.name for q in quantities}))
+    meshes, by_mesh = zip(*(_measure(path, step, asked, quantities) for path in (coarse, medium, fine)))
     found = refinement(meshes, quantities, list(zip(*by_mesh)))
     typer.echo(refinement_text(found), err=str(json) == "-")
     if json is not None:
