@@ -35,6 +35,7 @@ LAYERS = (
     ("state_files",),
     ("survey", "summary"),
     ("summary_text",),
+    ("mesh_study",),
     ("envelope_text", "convergence_text"),
     ("_api",),
     ("verdicts", "gauges", "pictures"),

@@ -179,12 +179,14 @@ def _check_third_direction(model: Model, names: Sequence[str]) -> None:
     if model.plane is None or model.plane.model is not None:
         return
     bound = [n for n in names if n in MEASURES and MEASURES[n].needs_third]
+    asked = [n for n in bound if not MEASURES[n].directions]
+    bound = asked or bound  # directions may be computed for the values alone
     if bound:
         raise UsageError(
-            f"{model.result.path + ': ' if model.result.path else ''}the mesh is plane, and {', '.join(bound)} depend "
-            "on the strain across the plane, which the displacement does not hold: state it with --plane strain, "
-            "--plane stress --poisson NU or --plane axisymmetric, or ask for in-plane measures only "
-            "(--measures strain,rotation)."
+            f"{model.result.path + ': ' if model.result.path else ''}the mesh is plane, and {', '.join(bound)} "
+            f"depend{'s' * (len(bound) == 1)} on the strain across the plane, which the displacement does not hold: "
+            "state it with --plane strain, --plane stress --poisson NU or --plane axisymmetric, or ask for in-plane measures "
+            "only (--measures strain,rotation)."
         )
 
 
