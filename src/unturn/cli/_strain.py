@@ -62,7 +62,7 @@ def strain(
     """Add strain, rotation and equivalent strain to result files and say where they can be trusted."""
     from unturn.cli._output import Places, check_place, is_folder, write_json
 
-    check_place(picture, json, files)
+    check_place(picture, json, [*files, *([displacement_table] if displacement_table is not None else [])])
     if options.displacement is not None and displacement_table is not None:
         raise UsageError("--displacement and --displacement-table exclude each other: give one of them.")
     if picture is not None and len(files) > 1:
