@@ -66,10 +66,10 @@ def bytes_of(folder: Path) -> dict[str, bytes]:
         ("strain run.pvd --json run/run_0001.vtu", "run_0001.vtu holds numbers of the input run.pvd"),
         ("strain run.pvd -o run/run_0001.vtu", "run_0001.vtu holds numbers of the input run.pvd"),
         ("strain all.vtm -o part.vtu", "part.vtu holds numbers of the input all.vtm"),
-        ("strain other.xdmf -o numbers.xdmf", "numbers.xdmf.h5 holds numbers of the input other.xdmf"),
+        ("strain other.xdmf -o numbers.xdmf", "numbers.xdmf needs the name numbers.xdmf.h5 beside it"),
         ("strain one.xdmf other.xdmf --json numbers.xdmf.h5", "holds numbers of the input other.xdmf"),
         ("envelope run.xdmf --json run.xdmf.h5", "run.xdmf.h5 holds numbers of the input run.xdmf"),
-        ("envelope part.vtu other.xdmf -o numbers.xdmf", "holds numbers of the input other.xdmf"),
+        ("envelope other.xdmf part.vtu -o numbers.xdmf", "needs the name numbers.xdmf.h5 beside it"),
         (
             "envelope run.xdmf --measures spin --steps-output run.xdmf",
             "run.xdmf is an input file and would be lost",

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import contextlib
-import os
 from collections.abc import Mapping, Sequence
 from enum import StrEnum
 from pathlib import Path
@@ -120,7 +119,7 @@ def envelope(
 ) -> None:
     """Find the extremes of every cell or node over steps or load cases, and which of them made each."""
     from unturn.cli._output import Places, check_place
-    from unturn.io import writable_suffix
+    from unturn.io import check_target, writable_suffix
     from unturn.state_files import Files, numbered, open_states, read_first
     from unturn.states import EnvelopeOptions
     from unturn.superposition import read_combinations
@@ -132,7 +131,7 @@ def envelope(
     files = numbered(files) if as_series and not tables else files
     suffix = writable_suffix(files[0], read_first(files))
     out = Places(output, files, (json, steps_output)).of(files[0], suffix, "envelope")
-    _check_target(out)
+    check_target(out)
     chosen = None if combinations is None else read_combinations(combinations)
     asked = Files(files, tables, chosen, as_series, keep_going, zero_step)
     states, strain, zero = open_states(asked, options)
@@ -145,16 +144,6 @@ def envelope(
     if found.failures:
         typer.echo(f"unturn: {len(found.failures)} of {len(states)} {asked.kind}s failed", err=True)
         raise typer.Exit(max(e.exit_status for e in found.failures.values()))
-
-
-def _check_target(out: Path) -> None:
-    """Refuse before the work what could not be written after it."""
-    from unturn.io._formats import format_for_writing
-
-    format_for_writing(out)
-    folder = out.absolute().parent
-    if not folder.is_dir() or not os.access(folder, os.W_OK):
-        raise UsageError(f"-o {out}: there is no folder {folder} that may be written to. Choose another one.")
 
 
 def _run(

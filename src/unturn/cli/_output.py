@@ -67,9 +67,7 @@ def check_places(places: Sequence[Path | None], inputs: Sequence[Path]) -> None:
             raise UsageError(f"{path} is a folder; give the name of a file in it.")
         if not path.parent.is_dir():
             raise UsageError(f"{path}: there is no folder {path.parent}; make it first.")
-        from unturn.io import files_made
-
-        behind.check(path, files_made(path), "give another name")
+        behind.check(path, "give another name")
 
 
 class _Inputs:
@@ -79,13 +77,13 @@ class _Inputs:
         self._files = files
         self._behind: dict[Path, tuple[Path, ...]] = {}
 
-    def check(self, path: Path, made: Sequence[Path], advice: str, named: bool = False) -> None:
-        """Refuse a place, or what is made beside it, where an input lies or the numbers of one.
+    def check(self, path: Path, advice: str, named: bool = False) -> None:
+        """Refuse a place where an input lies, or the numbers of one.
 
         Parameters
         ----------
-        path, made
-            The place, and the files or folders that come with it.
+        path
+            The place.
         advice
             What to do.
         named
@@ -94,13 +92,9 @@ class _Inputs:
         files = [file for file in self._files if not (named and _same_place(path, file))]
         if any(_same_place(path, file) for file in files):
             raise UsageError(f"{path} is an input file and would be lost; {advice}.")
-        there = [place for place in (path, *made) if os.path.lexists(place)]
-        for file in files if there else ():
-            for behind in self._of(file):
-                if any(_covers(place, behind) for place in there):
-                    raise UsageError(
-                        f"{path}: {behind} holds numbers of the input {file} and would be lost; {advice}."
-                    )
+        for file in files if os.path.lexists(path) else ():
+            if any(_same_place(path, behind) for behind in self._of(file)):
+                raise UsageError(f"{path} holds numbers of the input {file} and would be lost; {advice}.")
 
     def _of(self, file: Path) -> tuple[Path, ...]:
         if file not in self._behind:
@@ -108,10 +102,6 @@ class _Inputs:
 
             self._behind[file] = tuple(files_behind(file))
         return self._behind[file]
-
-
-def _covers(place: Path, file: Path) -> bool:
-    return _same_place(place, file) or (is_folder(place) and _same_place(place, file.parent))
 
 
 def is_folder(path: Path) -> bool:
@@ -160,9 +150,7 @@ class Places:
             raise UsageError(
                 f"{source}: its result would replace {out}, which is an input too; say where it goes with -o."
             )
-        from unturn.io import files_made
-
-        self._behind.check(out, files_made(out), "give another place with -o", named=True)
+        self._behind.check(out, "give another place with -o", named=True)
         place = os.path.realpath(out)
         if place in self._taken:
             raise UsageError(

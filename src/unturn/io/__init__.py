@@ -11,7 +11,7 @@ from typing import Literal
 
 from unturn.errors import InputError, UnturnError, UsageError
 from unturn.io._atomic import ensure_room, replacing
-from unturn.io._companions import files_behind, files_made
+from unturn.io._companions import files_behind
 from unturn.io._format import Format, ResultFile, StepWriter
 from unturn.io._formats import FORMATS, format_for_writing, format_of_file, writable_suffix
 from unturn.io._readback import check_same
@@ -24,7 +24,6 @@ __all__ = [
     "StepWriter",
     "check_target",
     "files_behind",
-    "files_made",
     "open_result",
     "read",
     "series_writer",

@@ -54,20 +54,3 @@ def _of_xdmf(path: Path) -> Iterator[Path]:
             yield path.parent / text.rpartition(":")[0].strip()
         elif local_name(node) == "DataItem" and layout == "binary":
             yield path.parent / text
-
-
-def files_made(path: Path) -> tuple[Path, ...]:
-    """Return the files, or the folder of files, that are written beside a result written to this path.
-
-    Examples
-    --------
-    >>> [p.name for p in files_made(Path("run.xdmf"))], [p.name for p in files_made(Path("run.pvd"))]
-    (['run.xdmf.h5'], ['run'])
-    >>> files_made(Path("run.vtu"))
-    ()
-    """
-    if path.suffix.lower() in (".xdmf", ".xmf", ".xdmf3"):
-        return (path.with_name(path.name + ".h5"),)
-    if path.suffix.lower() == ".pvd":
-        return (path.parent / path.stem,)
-    return ()
