@@ -186,7 +186,7 @@ def test_json_on_the_standard_output(desk: Path, capsys: pytest.CaptureFixture[s
         ("run.xdmf --alive status", 2, "no cell array is called 'status'"),
         ("run.xdmf --zero-step 9", 2, "--zero-step 9 does not exist"),
         ("dead.vtu wind.vtu --zero-step 0", 2, "several files are given"),
-        ("run.xdmf -o no/where.vtu", 2, "no folder"),
+        ("run.xdmf -o no/where.vtu", 2, "Choose a folder that exists"),
         ("run.xdmf -o out.xyz", 2, "no format is written"),
         ("run.xdmf --combinations none.toml", 3, "cannot be read"),
         (

@@ -21,7 +21,7 @@ from unturn.measures import MEASURES
 from unturn.model import Model
 from unturn.numbering import element_numbers, node_numbers
 from unturn.pipeline import compute
-from unturn.regions import Region, find_regions, named_regions
+from unturn.regions import Region, find_regions, judged_together, named_regions
 from unturn.result import Result
 from unturn.rigid import RigidMotion
 from unturn.same_mesh import ReferenceMesh
@@ -183,6 +183,8 @@ class _Run:
             if names
             else find_regions(whole, dimension == model.dimension)
         )
+        together = judged_together(regions)
+        self.notes += [together] if together else []
         for r in regions:
             cells = r.cells[dimension[r.cells] == dimension[r.cells].max()]
             nothing = judge(d, Region(r.name, cells[:0], r.origin), self.options.strain.solve)

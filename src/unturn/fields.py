@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from typing import Literal
 
 import numpy as np
@@ -150,6 +150,8 @@ def compute_fields(
     if at not in LOCATIONS:
         raise UsageError(f"at={at!r} is not known; use one of {', '.join(LOCATIONS)}.")
     check_request(model, names, frame, thermal)
+    if thermal is not None:
+        model = replace(model, notes=(*model.notes, *thermal.notes))
     job = _Job(model, names, at, equivalent_poisson, diagnose, frame, thermal)
     for block in model.blocks:
         if block.row is not None and len(block.active):
