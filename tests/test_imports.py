@@ -38,6 +38,7 @@ LAYERS = (
     ("mesh_study",),
     ("envelope_text", "convergence_text"),
     ("_api",),
+    ("_api_states",),
     ("verdicts", "gauges", "pictures"),
     ("_accessor", "__init__"),
     ("cli", "__main__"),

@@ -7,6 +7,7 @@ from typing import TYPE_CHECKING, Any
 if TYPE_CHECKING:
     from unturn import kinematics
     from unturn._api import read, strain, write
+    from unturn._api_states import convergence, envelope
     from unturn._version import __version__
     from unturn.errors import (
         DisplacementError,
@@ -27,7 +28,9 @@ __all__ = [
     "UnturnError",
     "UsageError",
     "__version__",
+    "convergence",
     "displacement_gradient",
+    "envelope",
     "kinematics",
     "read",
     "strain",
@@ -38,7 +41,9 @@ _HOME = {
     "CellBlock": "unturn.result",
     "Result": "unturn.result",
     "__version__": "unturn._version",
+    "convergence": "unturn._api_states",
     "displacement_gradient": "unturn.gradient",
+    "envelope": "unturn._api_states",
     "read": "unturn._api",
     "strain": "unturn._api",
     "write": "unturn._api",

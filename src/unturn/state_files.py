@@ -71,18 +71,31 @@ def open_states(asked: Files, options: StrainOptions) -> tuple[Sequence[State], 
         zero = _step(asked.files[0], asked.zero_step)
     if asked.tables:
         options = replace(options, displacement=TABLE_ARRAY)
-    states = _states(asked)
-    if asked.combinations is None:
+    return *chosen_states(_states(asked), options, asked.combinations), zero
+
+
+def chosen_states(
+    states: Sequence[State], options: StrainOptions, combinations: Sequence[Combination] | None
+) -> tuple[Sequence[State], StrainOptions]:
+    """Return the states, or the combinations of them, and the options with which to compute them.
+
+    Raises
+    ------
+    UsageError
+        Too few states, or load cases that cannot be combined.
+    """
+    if combinations is None:
         if len(states) == 1:
             raise UsageError(
-                f"{asked.files[0]} holds one step: an envelope needs a series, several files or --combinations."
+                f"{states[0].name} holds one step: an envelope needs a series, several files or "
+                "--combinations."
             )
-        return states, _settled(options, states[-1]), zero
+        return states, _settled(options, states[-1])
     names = [s.name for s in states]
     twice = {n for n in names if names.count(n) > 1}
     if twice:
         raise UsageError(f"two load cases are called {min(twice)!r}: give the files different names.")
-    return *superposed_states({s.name: s.read for s in states}, asked.combinations, options), None
+    return superposed_states({s.name: s.read for s in states}, combinations, options)
 
 
 def _check(asked: Files, options: StrainOptions) -> None:

@@ -63,16 +63,34 @@ def read_combinations(path: Path) -> tuple[Combination, ...]:
         ) from error
     except (tomllib.TOMLDecodeError, UnicodeDecodeError) as error:
         raise InputError(f"{path}: not a TOML file ({error}). Correct it there.") from error
-    tables = data.get("combinations")
     others = sorted(set(data) - {"combinations"})
+    tables = data.get("combinations")
     if others or not isinstance(tables, dict) or not tables:
         found = f"it has {others[0]!r}" if others else "it has none"
         raise UsageError(f"{path}: expected tables [combinations.NAME] and nothing else; {found}.")
-    return tuple(c for name, table in tables.items() for c in _expanded(path, name, table))
+    return expanded_combinations(tables, str(path))
 
 
-def _expanded(path: Path, name: str, table: Any) -> list[Combination]:
-    if not isinstance(table, dict) or not table:
+def expanded_combinations(
+    tables: Mapping[str, Any], where: str = "the combinations"
+) -> tuple[Combination, ...]:
+    """Return the combinations of tables NAME -> (load case -> factor), those that act either way with each of their signs.
+
+    Raises
+    ------
+    UsageError
+        A table that is none, or a factor that is neither a number nor ``"+-1.5"``.
+
+    Examples
+    --------
+    >>> [c.name for c in expanded_combinations({"storm": {"dead": 1.35, "wind": "+-1.5"}})]
+    ['storm (+wind)', 'storm (-wind)']
+    """
+    return tuple(c for name, table in tables.items() for c in _expanded(where, name, table))
+
+
+def _expanded(path: str, name: str, table: Any) -> list[Combination]:
+    if not isinstance(table, Mapping) or not table:
         raise UsageError(f"{path}: combination {name!r} holds no load case; write lines such as wind = 1.5.")
     factors = {case: _factor(path, name, case, value) for case, value in table.items()}
     both = [case for case, (_, reversible) in factors.items() if reversible]
@@ -94,7 +112,7 @@ def _expanded(path: Path, name: str, table: Any) -> list[Combination]:
     return found
 
 
-def _factor(path: Path, name: str, case: str, value: Any) -> tuple[float, bool]:
+def _factor(path: str, name: str, case: str, value: Any) -> tuple[float, bool]:
     """Return a factor and whether it acts either way."""
     reversible = isinstance(value, str) and value.startswith("+-")
     number = math.nan
