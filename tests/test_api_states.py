@@ -166,6 +166,7 @@ def test_tables_of_load_cases(desk: Path) -> None:
         (["dead.vtu"], {}, "holds one step"),
         ([step(0)], {}, "holds one step"),
         ("run.xdmf", {"messures": ["strain"]}, "Did you mean 'measures'"),
+        ("run.xdmf", {"borders": "split"}, "'borders' is no option"),
         ("run.xdmf", {"at": "surface"}, "an envelope is of values at centroid, mean, nodes"),
         ("run.xdmf", {"combinations": {"a": {"run:0": 1}}}, "state --solve linear if they were"),
         (

@@ -335,7 +335,14 @@ def test_measures_without_extremes_still_tell_the_error() -> None:
     assert row.endswith("%")
 
 
-KEYS = {"location", "extremes", "suspected_singular", "estimated_error_percent", "notes"}
+KEYS = {
+    "location",
+    "extremes",
+    "suspected_singular",
+    "estimated_error_percent",
+    "largest_jump_at_border",
+    "notes",
+}
 EXTREME = {"region", "statistic", "array", "value", "plus_minus", "place", "at"}
 GROWTH = {
     "region",

@@ -284,6 +284,8 @@ def test_measures_that_do_not_fit_are_refused() -> None:
         run(steps, ["spin"], kind="case")
     with pytest.raises(UsageError, match="is fiction"):
         run(steps, ["strain_increment"], base="hencky", solve="linear")
+    with pytest.raises(UsageError, match="strain_error tells how far one step can be trusted"):
+        run(steps, ["strain_error"])
     with pytest.raises(UsageError, match="no measure is called 'sstrain'"):
         run(steps, ["sstrain"])
     assert "strain_range_equivalent_almansi" not in run(steps, ["equivalent_strain"], base="almansi").arrays

@@ -26,6 +26,8 @@ from unturn.states import EnvelopeOptions, State
 from unturn.superposition import Combination, expanded_combinations, read_combinations
 
 Name = str | PathLike[str]
+_OF_ONE_RESULT = ("borders", "faces", "between_regions", "surface")
+"""Options of `unturn.strain` that an envelope or study has no use for."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -180,7 +182,7 @@ def envelope(
 
 
 def _strain_options(options: dict[str, Any]) -> StrainOptions:
-    known = [f.name for f in fields(StrainOptions)]
+    known = [f.name for f in fields(StrainOptions) if f.name not in _OF_ONE_RESULT]
     for name in options:
         if name not in known:
             raise UsageError(

@@ -9,6 +9,7 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
+from unturn.borders import BorderJump, border_jump
 from unturn.gradient import sample_points
 from unturn.kinematics._finite import BASES
 from unturn.kinematics._symmetric import Floats
@@ -102,6 +103,8 @@ class Elsewhere:
         Region -> estimated global error of its strain in percent.
     notes
         Sentences on how the values came about.
+    border
+        The largest jump of the strain between two regions at a node.
     """
 
     title: str
@@ -109,6 +112,16 @@ class Elsewhere:
     growths: tuple[Growth, ...] = ()
     error_percent: dict[str, float] | None = None
     notes: tuple[str, ...] = ()
+    border: Border | None = None
+
+
+@dataclass(frozen=True)
+class Border:
+    """The largest jump between the strains of two regions at a node, the solver's number of the node, and its place."""
+
+    jump: BorderJump
+    node: int | None
+    at: tuple[float, ...]
 
 
 def find_elsewhere(
@@ -203,7 +216,15 @@ class _Nodes:
             tuple(g for r in regions for g in self._growths(r)),
             {r.name: error.percentage(r.cells) for r in regions},
             self.nodes.recovered.notes,
+            self._border(regions),
         )
+
+    def _border(self, regions: Sequence[Region]) -> Border | None:
+        jump = border_jump(self.nodes.of_finite if self.main else self.nodes.recovered, regions, self.main)
+        if jump is None:
+            return None
+        at = self.computed.fields.model.points[jump.point]
+        return Border(jump, self._node(jump.point), tuple(float(x) for x in at))
 
     def _node(self, point: int) -> int | None:
         return None if self.numbers is None else int(self.numbers[point])
@@ -331,4 +352,6 @@ def _surface_notes(surface: SurfaceFields) -> tuple[str, ...]:
     faces = surface.result.n_cells
     left = sum(len(cells) for cells in surface.left_out.values())
     note = f"free surfaces: {faces} faces, strain from the face's own nodes at its centroid"
+    between = int(np.sum(surface.result.cell_data.get("between_groups", 0)))
+    note += f"; {between} of them between regions" if between else ""
     return (note + (f"; {left} without values" if left else ""),)

@@ -7,14 +7,13 @@ from collections.abc import Sequence
 import numpy as np
 from numpy.typing import NDArray
 
+from unturn.borders import Layout
 from unturn.extremes import Stored
-from unturn.frames import parse_frame
 from unturn.kinematics._symmetric import Floats
-from unturn.measures import MEASURES
 from unturn.model import Model
-from unturn.nodal import FOLD, share_fields
-from unturn.pipeline import Computed, StrainOptions
-from unturn.recovery import NodeShares, Spots, node_shares, sheets
+from unturn.nodal import FOLD
+from unturn.pipeline import Computed
+from unturn.recovery import Spots, node_shares, sheets
 from unturn.regions import find_regions
 from unturn.result import Association
 
@@ -48,10 +47,11 @@ class CellPlaces:
         self.position: Ints = np.arange(self.n)
         self.weight, self.at = np.full(self.n, np.nan), np.full((self.n, 3), np.nan)
 
-    def values(
-        self, computed: Computed, names: Sequence[str], options: StrainOptions
-    ) -> tuple[Arrays, Components]:
-        """Return the measures of a state at the places, `(n,)` or `(n, components)`, and names of components."""
+    def values(self, computed: Computed, names: Sequence[str]) -> tuple[Arrays, Components]:
+        """Return the measures of a state at the places, `(n,)` or `(n, components)`, and names of components.
+
+        At nodes the state is computed with ``borders="split"``.
+        """
         return computed.fields.arrays, computed.fields.components
 
     def of(self, cells: Ints) -> Ints:
@@ -91,47 +91,29 @@ class NodePlaces(CellPlaces):
         self.weight, self.at = np.zeros(self.n), whole.points[self.position]
         self._shown = np.full(whole.result.n_points, -1, dtype=np.int64)
 
-    @staticmethod
-    def needs(needs: Sequence[str]) -> tuple[str, ...]:
-        """Return what must be asked of `compute` for the values of these measures: the gradients that they follow from."""
-        finite = [n for n in needs if MEASURES[n].finite][:1]
-        mechanical = [n for n in needs if MEASURES[n].mechanical][:1]
-        return ("strain", *finite, *mechanical)
-
-    def values(
-        self, computed: Computed, names: Sequence[str], options: StrainOptions
-    ) -> tuple[Arrays, Components]:
+    def values(self, computed: Computed, names: Sequence[str]) -> tuple[Arrays, Components]:
         nodes = computed.nodes
         assert nodes is not None
-        frame = None if options.frame is None else parse_frame(options.frame, computed.fields.model.result)
-        arrays: Arrays = {}
-        components: Components = {}
-        for finite, recovered in ((False, nodes.recovered), (True, nodes.of_finite)):
-            asked = [n for n in names if MEASURES[n].finite is finite]
-            if not asked:
-                continue
-            found, named = share_fields(
-                recovered, asked, free=None if finite else nodes.free, frame=frame,
-                equivalent_poisson=options.equivalent_poisson, threads=options.threads,
-            )  # fmt: skip
-            share = self._share_of(recovered.shares)
-            lost = share < 0
-            for name, values in found.items():
-                arrays[name] = values[share]
-                arrays[name][lost] = np.nan
-            components |= named
-        return arrays, components
+        row = self._row_of(computed.fields.model, nodes.layout)
+        lost = row < 0
+        arrays = {}
+        for name in names:
+            arrays[name] = nodes.arrays[name][row]
+            arrays[name][lost] = np.nan
+        return arrays, nodes.components
 
-    def _share_of(self, shares: NodeShares) -> Ints:
-        """Return which share of a state each place is; -1 for none."""
-        share = np.full(self.n, -1, dtype=np.int64)
-        blocks = zip(shares.model.blocks, self._whole.blocks, shares.cells, self._spots.cells)
-        for block, whole, cells, spots in blocks:
-            row = np.full(len(whole.cells), -1, dtype=np.int64)
-            row[whole.active] = np.arange(len(whole.active))
-            known = row[block.active]
-            share[spots[known[known >= 0]]] = cells[known >= 0]
-        return share
+    def _row_of(self, model: Model, layout: Layout) -> Ints:
+        """Return which row of a state's values each place is; -1 for none."""
+        assert layout.cells is not None
+        row = np.full(self.n, -1, dtype=np.int64)
+        for block, whole, cells, spots in zip(
+            model.blocks, self._whole.blocks, layout.cells, self._spots.cells
+        ):
+            position = np.full(len(whole.cells), -1, dtype=np.int64)
+            position[whole.active] = np.arange(len(whole.active))
+            known = position[block.active]
+            row[spots[known[known >= 0]]] = cells[known >= 0]
+        return row
 
     def of(self, cells: Ints) -> Ints:
         mask = np.zeros(self._whole.result.n_cells, dtype=bool)

@@ -135,9 +135,8 @@ class _Run:
 
     def add(self, state: State, number: int) -> None:
         strain = self.options.strain
-        at_nodes = strain.at == "nodes"
-        needs = NodePlaces.needs(self.plan.needs) if at_nodes else self.plan.needs
-        asked = replace(strain, measures=needs, base="small")
+        borders = "split" if strain.at == "nodes" else strain.borders
+        asked = replace(strain, measures=self.plan.needs, base="small", borders=borders)
         computed = compute(state.read(), asked, zero=self.zero, diagnose=True, previous=self.previous)
         fields, d = computed.fields, computed.fields.diagnostics
         assert d is not None
@@ -150,7 +149,7 @@ class _Run:
             self.mesh = mesh
         else:
             self.mesh.compare(fields.model)
-        arrays, components = self.places.values(computed, self.plan.needs, strain)
+        arrays, components = self.places.values(computed, self.plan.needs)
         changed = self.changes.add(arrays, state.time) if self.changes.names else {}
         self.components |= {k: v for k, v in components.items() if k in self.plan.extremes}
         self._take(arrays, changed, number)

@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 from unturn.errors import UsageError, close_matches
 from unturn.kinematics._finite import BASES
 from unturn.kinematics._symmetric import Floats
-from unturn.measures import GEOMETRY, MEASURES, SURFACE_AXES, choose_measures
+from unturn.measures import ESTIMATES, GEOMETRY, MEASURES, SURFACE_AXES, choose_measures
 from unturn.series import SERIES_MEASURES, StepChanges
 
 Kind = Literal["step", "case"]
@@ -88,6 +88,10 @@ def plan_envelope(
     """
     own = None if asked is None else [n for n in asked if n not in SERIES_MEASURES]
     for name in own or ():
+        if name in ESTIMATES:
+            raise UsageError(
+                f"{name} tells how far one step can be trusted and has no envelope: ask for it with 'unturn strain'."
+            )
         if name not in (*MEASURES, *GEOMETRY, *SURFACE_AXES, "all"):
             known = [*MEASURES, *SERIES_MEASURES]
             raise UsageError(

@@ -11,7 +11,7 @@ import numpy as np
 
 from unturn._version import __version__
 from unturn.agreement import Agreement, compare_with_solver
-from unturn.elsewhere import Elsewhere, find_elsewhere
+from unturn.elsewhere import Border, Elsewhere, find_elsewhere
 from unturn.fields import CellDiagnostics, CellFields
 from unturn.kinematics._symmetric import Floats
 from unturn.measures import MEASURES
@@ -20,6 +20,7 @@ from unturn.numbering import Numbering, element_numbers
 from unturn.pipeline import Computed
 from unturn.regions import Region, find_regions, judged_together, named_regions, unused_tags
 from unturn.rigid import Removal
+from unturn.series import SERIES_MEASURES
 from unturn.statistics import LOW_PERCENTILES, PERCENTILES, Statistics, statistics
 from unturn.trial import Trial, try_remedies
 from unturn.verdict import BROKEN, Solve, Verdict, judge
@@ -41,13 +42,17 @@ class SummaryOptions:
 
 @dataclass(frozen=True, eq=False)
 class RegionSummary:
-    """One region: its verdict and statistics by column name (`principal_strain_1`, `equivalent_strain` ...)."""
+    """One region: its verdict and statistics by column name (`principal_strain_1`, `equivalent_strain` ...).
+
+    `error_percent` is the estimated global error of each `strain_error` that was asked for.
+    """
 
     region: Region
     verdict: Verdict
     trials: tuple[Trial, ...]
     volume: float
     statistics: dict[str, Statistics]
+    error_percent: dict[str, float] = field(default_factory=dict)
 
 
 @dataclass(frozen=True, eq=False)
@@ -117,7 +122,10 @@ def summarise(
         if verdict.level == "does not hold" and options.solve != "linear" and whole_motion:
             trials = try_remedies(fields, counted, options.solve, {"at": options.at, "threads": threads})
         counted_regions.append(counted)
-        made.append(RegionSummary(region, verdict, tuple(trials), float(np.nansum(d.volume[cells])), found))
+        errors = {} if computed.estimates is None else computed.estimates.errors
+        percent = {name: error.percentage(cells) for name, error in errors.items()}
+        volume = float(np.nansum(d.volume[cells]))
+        made.append(RegionSummary(region, verdict, tuple(trials), volume, found, percent))
     numbers = element_numbers(fields.model.result)
     others = {
         int(k): int((d.dimension == k).sum())
@@ -142,6 +150,8 @@ def summarise(
 def _percentages(name: str, signed: bool, full: bool) -> Sequence[float]:
     if full:
         return (*LOW_PERCENTILES, *PERCENTILES) if signed else PERCENTILES
+    if name in SERIES_MEASURES:
+        return ()
     return (99.9,) if name.startswith("equivalent_strain") or name == "principal_strain_1" else ()
 
 
@@ -149,7 +159,7 @@ def _columns(fields: CellFields, d: CellDiagnostics, full: bool) -> dict[str, tu
     """Return every number that gets statistics: name -> values and whether it is signed."""
     columns: dict[str, tuple[Floats, bool]] = {}
     for name, values in fields.arrays.items():
-        measure = MEASURES.get(name)
+        measure = MEASURES.get(name) or SERIES_MEASURES.get(name)
         signed = measure is not None and measure.signed
         if name.startswith("principal_direction") or name == "displacement_gradient":
             continue
@@ -275,7 +285,8 @@ def summary_data(summary: Summary) -> dict[str, Any]:
         "other_dimensions": {f"{k}D": n for k, n in summary.other_dimensions.items()},
         "notes": list(fields.notes),
         "warnings": list(summary.warnings),
-        "units": {"strain": "1", "rotation": "radian", "angle_of_turn": "radian", "volume": "length unit of the file"},
+        "units": {"strain": "1", "rotation": "radian", "rate": "1/time of the file", "angle_of_turn": "radian",
+                  "volume": "length unit of the file"},
         "caution": CAUTION,
     }  # fmt: skip
 
@@ -307,6 +318,7 @@ def _region_data(r: RegionSummary, summary: Summary) -> dict[str, Any]:
                 for t in r.trials
             ],
         },
+        "estimated_error_percent": r.error_percent,
         "statistics": {name: _statistics_data(s, summary, v.size) for name, s in r.statistics.items()},
     }
 
@@ -332,7 +344,15 @@ def _elsewhere_data(found: Elsewhere | None) -> dict[str, Any] | None:
             for g in found.growths
         ],
         "estimated_error_percent": found.error_percent or {},
+        "largest_jump_at_border": None if found.border is None else _border_data(found.border),
         "notes": list(found.notes),
+    }  # fmt: skip
+
+
+def _border_data(border: Border) -> dict[str, Any]:
+    jump = border.jump
+    return {
+        "value": jump.value, "regions": list(jump.regions), "point": jump.point, "node": border.node, "at": list(border.at),
     }  # fmt: skip
 
 

@@ -12,9 +12,10 @@ import numpy as np
 from unturn.agreement import Agreement
 from unturn.elsewhere import BASE_WORDS, ElsewhereExtreme
 from unturn.fields import CellFields
-from unturn.measures import MEASURES
+from unturn.measures import MEASURES, TENSOR
 from unturn.pipeline import OWN_MESH
 from unturn.rigid import Removal
+from unturn.series import SERIES_MEASURES
 from unturn.summary import CAUTION, RegionSummary, Summary, cell_counts, equivalent_form, mesh_kind
 from unturn.trial import Trial
 from unturn.verdict import Solve, Verdict
@@ -196,6 +197,10 @@ _STRAIN_ROWS: tuple[tuple[str, str, str], ...] = tuple(
         (f"max shear, largest{words}", f"max_shear_strain{suffix}", "maximum"),
         (f"volumetric, largest{words}", f"volumetric_strain{suffix}", "maximum"),
         (f"volumetric, smallest{words}", f"volumetric_strain{suffix}", "minimum"),
+        (f"strain error, largest{words}", f"strain_error{suffix}", "maximum"),
+        (f"strain jump, largest{words}", f"strain_jump{suffix}", "maximum"),
+        (f"equivalent of increment, largest{words}", f"equivalent_strain_increment{suffix}", "maximum"),
+        (f"accumulated equivalent, largest{words}", f"accumulated_equivalent_strain{suffix}", "maximum"),
     )
 )
 
@@ -203,6 +208,10 @@ _STRAIN_ROWS: tuple[tuple[str, str, str], ...] = tuple(
 _FINITE_ENDS = tuple(
     f"{base}{end}" for base in BASE_WORDS if base not in ("", "_mechanical") for end in ("", "_1", "_3")
 )
+
+
+_OF_NO_SPLIT = ("strain_error", "strain_jump", "equivalent_strain_increment", "accumulated")
+"""Rows without the error that turning makes there: they are not values of the small strain of this step."""
 
 
 def _rows(shown: Sequence[RegionSummary]) -> list[tuple[str, str, str]]:
@@ -213,12 +222,7 @@ def _rows(shown: Sequence[RegionSummary]) -> list[tuple[str, str, str]]:
         "principal_strain_1" not in have
     ):  # a plane mesh whose third direction is not stated: components instead
         for name in have:
-            if name.startswith("strain_") and name.split("_")[1] not in (
-                "green",
-                "hencky",
-                "biot",
-                "almansi",
-            ):
+            if name.removeprefix("strain_") in TENSOR:
                 component = name.removeprefix("strain_")
                 rows += [
                     (f"largest {component}", name, "maximum"),
@@ -251,7 +255,7 @@ def _table(summary: Summary) -> list[str]:
         rows.append(
             ["  at x, y, z", *(_position(getattr(r.statistics[name], at), summary, digits) for r in shown)]
         )
-        if not summary.options.mode and not name.endswith(_FINITE_ENDS):
+        if not summary.options.mode and not name.endswith(_FINITE_ENDS) and not name.startswith(_OF_NO_SPLIT):
             rows.append(
                 ["  error there", *(_error(getattr(r.statistics[name], at), r, summary) for r in shown)]
             )
@@ -262,6 +266,11 @@ def _table(summary: Summary) -> list[str]:
     for label, name in (("det F, smallest to largest", "det_f"), ("stretch, smallest to largest", "stretch")):
         if "det_f" in shown[0].statistics:
             rows.append([label, *(_scatter(r, name) for r in shown)])
+    for name in shown[0].error_percent if summary.elsewhere is None else ():
+        words = BASE_WORDS[name.removeprefix("strain_error")]
+        rows.append(
+            [f"estimated error of the strain{words}", *(_percent(r.error_percent[name]) for r in shown)]
+        )
     left = " left" if summary.removals else ""
     rows.append([f"largest rotation{left}, degree", *(_degrees(r.verdict.largest_rotation) for r in shown)])
     lines = _aligned(rows)
@@ -292,6 +301,13 @@ def _elsewhere(summary: Summary) -> list[str]:
             ["estimated error of the strain", *(_percent(found.error_percent[name]) for name in shown)]
         )
     lines = ["", *_aligned(rows), *found.notes]
+    if found.border is not None:
+        jump, border = found.border.jump, found.border
+        lines.append(
+            f"largest jump at a border: {_micro(jump.value)} microstrain (norm of the difference) between "
+            f"{jump.regions[0]} and {jump.regions[1]} at {_point(jump.point, border.node)}, "
+            f"{_coordinates(border.at, digits)}"
+        )
     for g in found.growths:
         after = "nothing else is left" if g.next_cell < 0 else f"next away from it {_micro(g.next_value)} in " + _where(
             g.next_cell, summary
@@ -337,7 +353,7 @@ def _scatter(r: RegionSummary, name: str) -> str:
 
 def _leading(r: RegionSummary) -> str:
     """Return the number by which a region is ranked: its equivalent strain, of whatever base."""
-    names = [n for n in r.statistics if n.startswith("equivalent_strain")]
+    names = [n for n in r.statistics if n.startswith("equivalent_strain") and n not in SERIES_MEASURES]
     return (
         names[0]
         if names
@@ -415,7 +431,7 @@ def _tail(summary: Summary) -> list[str]:
     lines = []
     values = "values of the table" if summary.request.get("at") in ("nodes", *OWN_MESH) else "values"
     values += f" at element {_location(options.at)}; shear is tensor shear"
-    if any(name.startswith("equivalent_strain") for name in fields.arrays):
+    if any("equivalent" in name for name in fields.arrays):
         form = equivalent_form(options.equivalent_poisson)
         if any(name.endswith("_mechanical") for name in fields.arrays):
             form += " (mechanical: of the total less the free thermal strain)"

@@ -118,7 +118,7 @@ def strain_error(recovered: Recovered, threads: int | None = None, base: str = "
     n = model.result.n_cells
     volume, error, strain, plus_minus = (np.full(n, np.nan) for _ in range(4))
     departure = np.zeros(len(shares))
-    nodal = _components(recovered.values, model.plane, base)
+    nodal = strain_of(recovered.values, model.plane, base)
     reach = [np.zeros(cells.shape) for cells in shares.cells]
     lock = Lock()
     for block, cells, out in zip(model.blocks, shares.cells, reach):
@@ -156,7 +156,7 @@ def strain_components(H: Floats, plane: Plane | None) -> Floats:
     return e
 
 
-def _components(H: Floats, plane: Plane | None, base: str) -> Floats:
+def strain_of(H: Floats, plane: Plane | None, base: str) -> Floats:
     """Return what `strain_components` does, of a finite strain where a base is given."""
     if not base:
         return strain_components(H, plane)
@@ -204,7 +204,7 @@ class _Job:
         for gradients, functions in zip(where.gradients, where.functions):
             if point is None or not self.constant:
                 point = chunk.at(gradients, functions)
-                e = _components(point.H, self.model.plane, self.base)
+                e = strain_of(point.H, self.model.plane, self.base)
             yield e, point.weight
 
     def chunk(self, a: int, b: int) -> tuple[tuple[Floats, Floats, Floats], Floats, Floats]:
@@ -226,7 +226,7 @@ class _Job:
         return (volume, error, strain), departure, norms(nodal - middle[:, None]).T
 
 
-def strain_jump(recovered: Recovered, threads: int | None = None) -> tuple[Floats, Floats]:
+def strain_jump(recovered: Recovered, threads: int | None = None, base: str = "") -> tuple[Floats, Floats]:
     """Return the largest difference between the strains that elements have where they meet.
 
     Parameters
@@ -235,6 +235,8 @@ def strain_jump(recovered: Recovered, threads: int | None = None) -> tuple[Float
         Tells which elements meet at which node; elements of different groups or dimensions are not compared.
     threads
         None: all processors.
+    base
+        Of which strain, as in `strain_error`.
 
     Returns
     -------
@@ -246,7 +248,7 @@ def strain_jump(recovered: Recovered, threads: int | None = None) -> tuple[Float
     """
     shares, model = recovered.shares, recovered.shares.model
     jump = np.full(len(shares), np.nan)
-    meeting = _Meeting(recovered)
+    meeting = _Meeting(recovered, base)
 
     def work(a: int, b: int) -> None:
         with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
@@ -274,8 +276,9 @@ def strain_jump(recovered: Recovered, threads: int | None = None) -> tuple[Float
 class _Meeting:
     """Pairs of share and cell, sorted by share, and the strain of the cell there."""
 
-    def __init__(self, recovered: Recovered) -> None:
-        self.shares = shares = recovered.shares
+    def __init__(self, recovered: Recovered, base: str) -> None:
+        self.shares, self.base = recovered.shares, base
+        shares = self.shares
         model = shares.model
         share = np.concatenate([c.reshape(-1) for c in shares.cells])
         used = [np.repeat(recovered.usable[b.index], c.shape[1]) for b, c in zip(model.blocks, shares.cells)]
@@ -310,5 +313,5 @@ class _Meeting:
                 which = cell[mine]
                 chunk = model.chunk(block, block.connectivity[which], block.index[which])
                 H = chunk.at(samples.gradients[node], samples.functions[node]).H
-                out[:, here[mine]] = strain_components(H, model.plane)
+                out[:, here[mine]] = strain_of(H, model.plane, self.base)
         return out

@@ -71,7 +71,7 @@ def convergence(
 
 def _read(path: Path, step: str) -> Result:
     from unturn import io
-    from unturn.cli._strain import chosen_step
+    from unturn.cli._steps import chosen_step
 
     opened = io.open_result(path)
     return opened.read(chosen_step(opened, step))
