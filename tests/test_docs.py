@@ -351,6 +351,7 @@ def test_the_envelope_schema_is_documented_key_by_key(desk: Path) -> None:
         "lever.xdmf --solve nonlinear --base hencky",
         "lever.xdmf --solve nonlinear --measures spin,accumulated_equivalent_strain -o spin.vtu",
         "bracket.vtu --combinations loads.toml --solve linear",
+        "bracket.vtu --combinations loads.toml --solve linear --at nodes -o nodes.vtu",
         "ring.vtu ring.vtu --measures strain -o ring.out.vtu",
         "mixed.xdmf mixed.xdmf -o mixed.out.xdmf",
     )

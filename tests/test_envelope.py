@@ -324,7 +324,11 @@ def test_memory_does_not_grow_with_the_steps(tmp_path: Path) -> None:
         ("a.vtu", "old/a.vtu: cut short.", "old/a.vtu: cut short."),
         ("a.vtu", "b.vtu: cut short.", "a.vtu: b.vtu: cut short."),
         ("run.xdmf step 3", "old/run.xdmf: cut short.", "old/run.xdmf step 3: cut short."),
-        ("step", "step.vtu is empty.", "step: step.vtu is empty."),
+        ("step 3", "step.vtu is empty.", "step 3: step.vtu is empty."),
+        ("a b.vtu", "old folder/a b.vtu is empty.", "old folder/a b.vtu is empty."),
+        ("a.vtu", "the mesh is plane: run.vtu", "a.vtu: the mesh is plane: run.vtu"),
+        ("run.pvd step 2", "run.pvd names the file x.vtu.", "run.pvd step 2: run.pvd names the file x.vtu."),
+        ("run.vtu step 2", "node 4.5 is lost.", "run.vtu step 2: node 4.5 is lost."),
     ],
 )
 def test_errors_name_state_and_file_once(name: str, said: str, words: str) -> None:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import re
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
 from pathlib import Path, PurePath
@@ -20,6 +21,9 @@ from unturn.pipeline import StrainOptions
 from unturn.regions import Region
 from unturn.result import Result
 from unturn.verdict import Verdict
+
+_FILE = re.compile(r"(?:[^:]*/)?([^:/]*?\.\w+)(?=: | is | has | cannot | holds )")
+"""A file name, with or without folders, at the start of an error."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -145,7 +149,7 @@ class Envelope:
 
 
 def named(name: str, error: UnturnError, file: str = "") -> UnturnError:
-    """Return an error that names its state, which may be a file: no file is named twice.
+    """Return an error that names its state, which may be a file or a step of one: no file is named twice.
 
     Parameters
     ----------
@@ -154,21 +158,21 @@ def named(name: str, error: UnturnError, file: str = "") -> UnturnError:
     error
         What went wrong.
     file
-        Name of a file, without folder and suffix, of which `name` says no more than the error itself does.
+        Name of a file without its suffix: an error that names it needs no other name.
 
     Examples
     --------
     >>> from unturn.errors import InputError
     >>> str(named("step 3", InputError("run.xdmf: cut short.")))
     'step 3: run.xdmf: cut short.'
-    >>> str(named("run.xdmf step 3", InputError("old/run.xdmf: cut short.")))
-    'old/run.xdmf step 3: cut short.'
+    >>> str(named("run.xdmf step 3", InputError("old/run.xdmf is cut short.")))
+    'old/run.xdmf step 3 is cut short.'
     """
     said = str(error)
-    where, colon, rest = said.partition(": ")
-    place = PurePath(where)
-    if colon and place.name and (name == place.name or name.startswith(f"{place.name} ")):
-        said = f"{where}{name.removeprefix(place.name)}: {rest}"
-    elif not (colon and file and place.stem == file):
+    told = _FILE.match(said)
+    own, gap, step = name.partition(" step ")
+    if told is not None and told[1] == own:
+        said = f"{told[0]}{gap}{step}{said[told.end() :]}"
+    elif told is None or PurePath(told[1]).stem != file:
         said = f"{name}: {said}"
     return type(error)(said)
