@@ -15,6 +15,7 @@ from numpy.typing import NDArray
 
 from meshes import patch
 from strategies import axis_angle
+from unturn.combinations import Combination, read_combinations
 from unturn.elements import ELEMENTS
 from unturn.envelopes import envelope
 from unturn.errors import InputError, UsageError
@@ -23,7 +24,7 @@ from unturn.model import build_model
 from unturn.pipeline import StrainOptions, compute
 from unturn.result import CellBlock, Result
 from unturn.states import Envelope, EnvelopeOptions, State, named
-from unturn.superposition import Combination, read_combinations, superposed_states
+from unturn.superposition import superposed_states
 from unturn.tensor_range import TensorRange, largest_distances
 
 Floats = NDArray[np.float64]

@@ -281,3 +281,20 @@ def test_names_of_components_follow_the_frame() -> None:  # Common practice, no 
     assert found.components["strain_maximum"] == ("RR", "TT", "ZZ", "RT", "TZ", "RZ")
     assert found.components["strain_maximum_time"] == ("RR", "TT", "ZZ", "RT", "TZ", "RZ")
     assert compute(states(displacements(1))[0].read(), StrainOptions()).nodes is None
+
+
+@pytest.mark.derived("increments of components in a frame are those of the frame")
+def test_increments_are_in_the_frame() -> None:
+    steps = states(displacements(3))
+    given: list[tuple[dict[str, Any], dict[str, Any]]] = []
+    frame = "cylindrical 0,0,1 through -1,0,0"
+    asked = StrainOptions(measures=["strain_increment"], at="nodes", frame=frame)
+    found = envelope(
+        steps,
+        EnvelopeOptions(asked),
+        each=lambda r, arrays, names, t: given.append((dict(arrays), dict(names))),
+    )
+    e = every(steps, "strain", frame=frame)["strain"]
+    assert np.allclose(given[2][0]["strain_increment"], e[2] - e[1], atol=1e-17)
+    assert given[2][1]["strain_increment"] == ("RR", "TT", "ZZ", "RT", "TZ", "RZ")
+    assert found.components["strain_increment_maximum"] == ("RR", "TT", "ZZ", "RT", "TZ", "RZ")

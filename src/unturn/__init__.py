@@ -7,7 +7,8 @@ from typing import TYPE_CHECKING, Any
 if TYPE_CHECKING:
     from unturn import kinematics
     from unturn._api import read, strain, write
-    from unturn._api_states import convergence, envelope
+    from unturn._api_meshes import convergence
+    from unturn._api_states import envelope
     from unturn._version import __version__
     from unturn.errors import (
         DisplacementError,
@@ -41,7 +42,7 @@ _HOME = {
     "CellBlock": "unturn.result",
     "Result": "unturn.result",
     "__version__": "unturn._version",
-    "convergence": "unturn._api_states",
+    "convergence": "unturn._api_meshes",
     "displacement_gradient": "unturn.gradient",
     "envelope": "unturn._api_states",
     "read": "unturn._api",

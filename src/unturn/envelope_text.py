@@ -12,7 +12,7 @@ import numpy as np
 
 from unturn._version import __version__
 from unturn.elsewhere import BASE_WORDS
-from unturn.envelopes import RANGE
+from unturn.envelope_arrays import RANGE
 from unturn.measures import MEASURES
 from unturn.series import SERIES_MEASURES
 from unturn.states import Envelope, Judged, Tracked

@@ -12,10 +12,12 @@ from dataclasses import replace
 import numpy as np
 from numpy.typing import NDArray
 
+from unturn.envelope_arrays import EnvelopeArrays
 from unturn.envelope_places import Arrays, CellPlaces, Components, NodePlaces
 from unturn.errors import InputError, UnturnError, UsageError
-from unturn.extremes import Extremes, Kind, Stored, plan_envelope, strain_tensor
+from unturn.extremes import Extremes, Stored, plan_envelope, strain_tensor
 from unturn.fields import CellDiagnostics, CellFields
+from unturn.frames import parse_frame
 from unturn.kinematics._symmetric import Floats
 from unturn.measures import MEASURES
 from unturn.model import Model
@@ -26,11 +28,10 @@ from unturn.result import Result
 from unturn.rigid import RigidMotion
 from unturn.same_mesh import ReferenceMesh
 from unturn.series import SERIES_MEASURES, StepChanges, choose_series_measures
-from unturn.states import Envelope, EnvelopeOptions, Judged, State, Tracked, named
-from unturn.tensor_range import Ints, TensorRange
+from unturn.states import Envelope, EnvelopeOptions, Judged, State, named
+from unturn.tensor_range import TensorRange
 from unturn.verdict import Level, judge
 
-RANGE = "strain_range_equivalent"
 LOCATIONS = ("centroid", "mean", "nodes")
 """Where the values of an envelope can live."""
 _LEVELS: tuple[Level, ...] = ("not judged", "no strain", "holds", "marginal", "does not hold")
@@ -190,9 +191,12 @@ class _Run:
             self.judged.append(Judged(Region(r.name, cells, r.origin), nothing, -1))
         self.places = NodePlaces(whole) if self.options.strain.at == "nodes" else CellPlaces(whole)
         self.volume, self.centroid = np.full(n, np.nan), np.full((n, 3), np.nan)
-        self.components |= {
-            n: SERIES_MEASURES[n].components for n in self.plan.series if SERIES_MEASURES[n].components
-        }
+        frame = self.options.strain.frame
+        axes = None if frame is None else parse_frame(frame, model.result)
+        for name in self.plan.series:
+            labels = SERIES_MEASURES[name].components
+            if labels:
+                self.components[name] = labels if axes is None else axes.component_names(len(labels))
         families = self.plan.families
         if model.plane is not None and model.plane.model is None:
             families = ()
@@ -256,14 +260,13 @@ class _Run:
                 "with 'unturn survey'."
             )
         self.places.settle(self.volume, self.centroid)
-        made = _Made(self.places, self.options.kind, [s.time for s in states])
+        made = EnvelopeArrays(self.places, self.options.kind, [s.time for s in states])
         for name, extremes in self.extremes.items():
             made.add_extremes(name, extremes, self.components.get(name))
         for name, values in self.directions.items():
             made.add(name, values, MEASURES["principal_direction_1"].components)
         for name, values in self.totals.items():
-            made.add(name, values)
-            made.tracked.append(Tracked(name, name, "maximum", values, ()))
+            made.add_total(name, values)
         for family, tensor_range in self.ranges.items():
             made.add_range(family, *tensor_range.finish(self.options.strain.equivalent_poisson))
         result = self.model.result
@@ -272,48 +275,3 @@ class _Run:
             self.options, states, self.model, made.arrays, made.components, tuple(made.tracked), tuple(self.judged),
             self.places, self.volume, self.left_out, self.failures, (*self.said, *self.notes), numbers,
         )  # fmt: skip
-
-
-class _Made:
-    """The arrays that are written, and the extremes among them."""
-
-    def __init__(self, places: CellPlaces, kind: Kind, times: Sequence[float | None]) -> None:
-        self._places, self._kind = places, kind
-        self._times = None
-        if kind == "step" and None not in times:
-            self._times = np.array([*times, np.nan], dtype=np.float64)  # the last for "no state"
-        self.arrays: dict[str, Stored] = {}
-        self.components: Components = {}
-        self.tracked: list[Tracked] = []
-
-    def add(self, name: str, values: Stored, components: tuple[str, ...] | None = None) -> None:
-        """Add an array of values at the places."""
-        self.arrays[name] = self._places.written(values)
-        if components is not None:
-            self.components[name] = components
-
-    def _add_state(self, name: str, state: Stored, components: tuple[str, ...] | None = None) -> None:
-        self.add(f"{name}_{self._kind}", state, components)
-        if self._times is not None:
-            written = self.arrays[f"{name}_{self._kind}"]
-            self.arrays[f"{name}_time"] = self._times[written]
-            if components is not None:
-                self.components[f"{name}_time"] = components
-
-    def add_extremes(self, name: str, extremes: Extremes, components: tuple[str, ...] | None) -> None:
-        """Add largest and smallest values and largest magnitudes of a measure, and the states that made them."""
-        signed = SERIES_MEASURES[name].signed if name in SERIES_MEASURES else MEASURES[name].signed
-        for which, values, state in extremes.found(signed):
-            self.add(f"{name}_{which}", values, components)
-            self._add_state(f"{name}_{which}", state, components)
-            if which != "largest_magnitude":
-                self.tracked.append(Tracked(f"{name}_{which}", name, which, values, (state,)))
-
-    def add_range(self, family: str, size: Floats, first: Ints, second: Ints) -> None:
-        """Add the range of a strain tensor and the two states that make it."""
-        name = f"{RANGE}_{family}" if family else RANGE
-        pair = first.astype(np.int32), second.astype(np.int32)
-        self.add(name, size)
-        for which, state in zip(("first", "second"), pair):
-            self._add_state(f"{name}_{which}", state)
-        self.tracked.append(Tracked(name, name, "maximum", size, pair))

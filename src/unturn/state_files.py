@@ -9,13 +9,14 @@ from functools import partial
 from pathlib import Path
 
 from unturn import io
+from unturn.combinations import Combination
 from unturn.errors import UnturnError, UsageError
 from unturn.extremes import Kind
 from unturn.io.table import attach_displacement_table, read_displacement_table
 from unturn.pipeline import StrainOptions, settled
 from unturn.result import Result
 from unturn.states import State
-from unturn.superposition import Combination, superposed_states
+from unturn.superposition import superposed_states
 
 TABLE_ARRAY = "displacement"
 """Name of the point array that a table of displacements becomes."""

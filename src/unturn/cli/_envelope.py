@@ -119,10 +119,10 @@ def envelope(
 ) -> None:
     """Find the extremes of every cell or node over steps or load cases, and which of them made each."""
     from unturn.cli._output import Places, check_place
+    from unturn.combinations import read_combinations
     from unturn.io import check_target, writable_suffix
     from unturn.state_files import Files, numbered, open_states, read_first
     from unturn.states import EnvelopeOptions
-    from unturn.superposition import read_combinations
 
     tables = tuple(displacement_table or ())
     inputs = [*files, *tables, *([combinations] if combinations is not None else [])]
