@@ -116,7 +116,7 @@ def test_the_files_behind_a_file(desk: Path) -> None:
     assert names("index.xdmf") == ["one.xdmf", "one.xdmf.h5"]
     assert names("run.pvd") == [f"run/run_000{k}.vtu" for k in range(3)]
     assert names("all.vtm") == ["part.vtu"]
-    assert names("part.vtu") == names("none.xdmf") == names("table.csv") == []
+    assert names("part.vtu") == names("table.csv") == []
     raw = np.arange(3.0)
     raw.tofile("numbers.bin")
     Path("bin.xdmf").write_text(
@@ -128,8 +128,12 @@ def test_the_files_behind_a_file(desk: Path) -> None:
         '<Xdmf Version="3.0"><include href="loop.xdmf"/><include href="bin.xdmf"/></Xdmf>'
     )
     assert names("loop.xdmf") == ["bin.xdmf", "numbers.bin", "one.xdmf.h5"]
-    Path("cut.xdmf").write_text('<Xdmf Version="3.0"><Domain>')
-    assert names("cut.xdmf") == []
+    Path("cut.xdmf").write_text(
+        '<Xdmf Version="3.0"><Domain><DataItem Format="HDF">one.xdmf.h5:/a</DataItem>'
+    )
+    assert names("cut.xdmf") == ["one.xdmf.h5"]
+    status, text = run(["strain", "none.xdmf", "--json", "new.json"])
+    assert (status, "there is no such file" in text) == (3, True)
 
 
 @pytest.mark.practice("a file that may not be read is not called damaged")

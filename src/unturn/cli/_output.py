@@ -75,7 +75,7 @@ class _Inputs:
 
     def __init__(self, files: Sequence[Path]) -> None:
         self._files = files
-        self._behind: dict[Path, tuple[Path, ...]] = {}
+        self._behind: dict[Path, Sequence[Path]] = {}
 
     def check(self, path: Path, advice: str, named: bool = False) -> None:
         """Refuse a place where an input lies, or the numbers of one.
@@ -96,11 +96,14 @@ class _Inputs:
             if any(_same_place(path, behind) for behind in self._of(file)):
                 raise UsageError(f"{path} holds numbers of the input {file} and would be lost; {advice}.")
 
-    def _of(self, file: Path) -> tuple[Path, ...]:
+    def _of(self, file: Path) -> Sequence[Path]:
         if file not in self._behind:
             from unturn.io import files_behind
 
-            self._behind[file] = tuple(files_behind(file))
+            try:
+                self._behind[file] = files_behind(file)
+            except OSError:  # it is told where the file is read
+                self._behind[file] = []
         return self._behind[file]
 
 
