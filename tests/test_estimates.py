@@ -162,8 +162,15 @@ def test_what_they_need_and_when_they_are_computed() -> None:
     lines = block(ELEMENTS["line"], 4)
     bar = lines.result(u=lines.points**2)
     np.testing.assert_allclose(strain(bar, measures=["strain_jump"]).cell_data["strain_jump"], 0.5, rtol=1e-9)
-    with pytest.raises(UsageError, match="of surfaces and lines in space is not estimated"):
-        strain(bar, measures=["strain_error_hencky"])
+    # of a bar the finite strains follow from its stretch 1 + e: e = 0.25, 0.75, 1.25, 1.75
+    green = strain(bar, measures=["strain_jump"], base="green-lagrange", solve="nonlinear").cell_data
+    e = np.array([0.25, 0.75, 1.25, 1.75])
+    jumps = np.diff(e + e * e / 2)
+    np.testing.assert_allclose(green["strain_jump_green_lagrange"], [jumps[0], jumps[1], jumps[2], jumps[2]])
+    turned = lines.result(u=(lines.points + lines.points**2) @ TURN.T - lines.points)
+    for name in ("strain_jump_green_lagrange", "strain_error_green_lagrange"):
+        found = [strain(r, measures=[name], solve="nonlinear").cell_data[name] for r in (bar, turned)]
+        np.testing.assert_allclose(found[0], found[1], rtol=1e-9)
     with pytest.raises(UsageError, match="fiction"):
         strain(result, measures=["strain_error_biot"], plane="strain", solve="linear")
 

@@ -13,7 +13,8 @@ from test_cli_wrong_input import POINTS, TETS, two_tets
 from unturn import CellBlock, DisplacementError, InputError, Result, UsageError
 from unturn.envelopes import envelope
 from unturn.model import build_model
-from unturn.pipeline import StrainOptions, compute
+from unturn.options import StrainOptions
+from unturn.pipeline import compute
 from unturn.regions import bodies, find_regions
 from unturn.states import State
 from unturn.summary import SummaryOptions, summarise

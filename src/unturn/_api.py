@@ -11,7 +11,8 @@ from unturn.borders import split_mesh
 from unturn.errors import UsageError
 from unturn.gradient import PlaneModel
 from unturn.kinematics._symmetric import Floats
-from unturn.pipeline import Borders, Computed, FacesTo, Place, StrainOptions
+from unturn.options import Borders, FacesTo, Place, StrainOptions
+from unturn.pipeline import Computed
 from unturn.recovery import Method
 from unturn.result import Array, Association, Result
 from unturn.rigid_parts import rigid_arrays
@@ -146,7 +147,8 @@ def strain(
     previous
         The steps before this one, in their order; a generator is read one by one. Needed by measures of what changes between
         steps (``strain_increment``, ``deformation_rate``, ``accumulated_equivalent_strain`` ...): increments and rates take
-        the last of them, accumulated strain all. Without any at the first step of a series: the undeformed state.
+        the last of them, accumulated strain all. Without any at the first step of a series: the undeformed state. Rotation
+        vectors of rigid motions that are taken out continue those of the last one by whole turns.
     borders
         With ``at="nodes"``: ``dominant``: a point on the border of regions shows the value of the one with most volume
         there; ``split``: such points are duplicated, so that every region shows its own value. The mesh then has more points;
@@ -203,7 +205,7 @@ def strain(
         reference_temperature, skin, alive, threads, borders, faces, between_regions,
     )  # fmt: skip
     stepwise = Stepwise(options, zero)
-    if stepwise.series:
+    if stepwise.series or remove_rigid != "none":
         _go_through(stepwise, (previous,) if isinstance(previous, Result) else previous, result)
     computed = stepwise.compute(result)
     computed.require_some()
@@ -217,6 +219,8 @@ def _go_through(stepwise: Stepwise, previous: Iterable[Result], result: Result) 
     for step in previous:
         stepwise.pass_over(step)
         count += 1
+    if not stepwise.series:
+        return
     name = stepwise.series[0]
     if not count and number != 0:
         raise UsageError(

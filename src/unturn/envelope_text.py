@@ -11,7 +11,6 @@ from typing import Any
 import numpy as np
 
 from unturn._version import __version__
-from unturn.elsewhere import BASE_WORDS
 from unturn.envelope_arrays import RANGE
 from unturn.measures import MEASURES
 from unturn.series import SERIES_MEASURES
@@ -19,6 +18,7 @@ from unturn.states import Envelope, Judged, Tracked
 from unturn.statistics import statistics
 from unturn.summary import CAUTION, cell_counts, equivalent_form, mesh_kind
 from unturn.summary_text import _FINITE_ONLY, _advice, _aligned, _micro, _of_its_strain, _one_digit
+from unturn.trusted import BASE_WORDS
 
 SCHEMA = "unturn.envelope/1"
 _MOST_COLUMNS = 5

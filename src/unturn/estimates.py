@@ -38,20 +38,13 @@ def check_estimates(names: Sequence[str], model: Model) -> None:
     Raises
     ------
     UsageError
-        Surfaces or lines in space; a plane mesh whose third direction is not stated.
+        A plane mesh whose third direction is not stated.
     """
     finite = [n for n in names if base_of(n)]
-    if not finite:
-        return
-    if model.plane is not None and model.plane.model is None:
+    if finite and model.plane is not None and model.plane.model is None:
         raise UsageError(
             f"the mesh is plane, and {finite[0]} depends on the strain across the plane, which the displacement does not "
             "hold: state it with --plane strain, --plane stress --poisson NU or --plane axisymmetric."
-        )
-    if any(b.row is not None and len(b.active) and b.kind in ("surface", "line") for b in model.blocks):
-        raise UsageError(
-            f"{finite[0]} of surfaces and lines in space is not estimated, since their finite strain is not recovered at "
-            "nodes; ask for strain_error and strain_jump of the small strain."
         )
 
 

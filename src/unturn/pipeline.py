@@ -2,74 +2,28 @@
 
 from __future__ import annotations
 
-import math
 from collections.abc import Sequence
-from dataclasses import asdict, dataclass, field, replace
-from typing import Any, Literal
+from dataclasses import dataclass, field, replace
+from typing import Any
 
 from unturn.borders import ORIGINAL_POINT
 from unturn.errors import InputError, UsageError
 from unturn.estimates import Estimates, check_estimates, estimate
 from unturn.fields import CellFields, compute_fields
 from unturn.frames import Frame, parse_frame
-from unturn.gradient import PlaneModel
-from unturn.measures import ESTIMATES, GEOMETRY, MEASURES, SMALL, base_of, choose_measures
+from unturn.measures import ESTIMATES, SMALL
 from unturn.model import Model, PlaneOptions, build_model
 from unturn.nodal import NodeFields, nodal_fields, recover_in_regions
+from unturn.options import OWN_MESH, FacesTo, StrainOptions, check_options, is_finite, measures_of, told
 from unturn.quadrature_points import quadrature_result
-from unturn.recovery import METHODS, Method, Recovered
+from unturn.recovery import Recovered
 from unturn.regions import find_regions
 from unturn.result import Array, Association, Result
 from unturn.rigid import Removal, RigidMotion, take_out
 from unturn.rigid_parts import computed_cells, continued, parse_axis, rigid_parts
-from unturn.surface import SurfaceFields, choose_surface_measures, free_faces, surface_result
+from unturn.surface import SurfaceFields, free_faces, surface_result
 from unturn.thermal import Thermal, parse_thermal
-from unturn.verdict import Solve
 from unturn.zero_step import check_zero_temperature, judged_from_zero, zeroed
-
-Place = Literal["centroid", "mean", "nodes", "surface", "quadrature"]
-OWN_MESH: tuple[Place, ...] = ("surface", "quadrature")
-"""Places whose values do not fit on the mesh of the file."""
-Borders = Literal["dominant", "split"]
-FacesTo = Literal["mesh", "cells"]
-PLACES: tuple[Place, ...] = ("centroid", "mean", "nodes", "surface", "quadrature")
-
-
-@dataclass(frozen=True)
-class StrainOptions:
-    """The options of `unturn.strain`, by the same names."""
-
-    displacement: str | None = None
-    measures: Sequence[str] | None = None
-    base: str = "small"
-    at: Place = "centroid"
-    recovery: Method = "patch"
-    solve: Solve = "unknown"
-    plane: PlaneModel | None = None
-    poisson: float | None = None
-    axis: Literal["x", "y"] = "y"
-    coordinates: Literal["reference", "deformed"] = "reference"
-    displacement_scale: float = 1.0
-    equivalent_poisson: float | None = None
-    remove_rigid: str = "none"
-    rigid_to: str | None = None
-    rigid_axis: str | None = None
-    frame: str | None = None
-    thermal_expansion: str | float | None = None
-    temperature: str | None = None
-    reference_temperature: float | None = None
-    skin: bool = False
-    alive: str | None = None
-    threads: int | None = None
-    borders: Borders = "dominant"
-    faces: FacesTo = "mesh"
-    between_regions: bool = False
-    surface: bool = False
-
-    @property
-    def own_mesh(self) -> bool:
-        """Whether the values do not fit on the mesh of the file."""
-        return self.at in OWN_MESH and not (self.at == "surface" and self.faces == "cells")
 
 
 @dataclass(frozen=True, eq=False)
@@ -77,7 +31,8 @@ class Computed:
     """Computed fields, and the rigid motions that were taken out first.
 
     `fields` are those of cells: at centroids where the values asked for live elsewhere. `nodes`, `surface` and `cloud` hold
-    those. `estimates` are those of the strain; `faces` says where the values of free faces go.
+    those. `estimates` are those of the strain; `faces` says where the values of free faces go. `finite_model` is that of
+    finite measures where it is another one than that of `fields`: with a zero step.
     """
 
     fields: CellFields
@@ -89,6 +44,7 @@ class Computed:
     equivalent_poisson: float | None = None
     estimates: Estimates | None = None
     faces: FacesTo = "mesh"
+    finite_model: Model | None = None
 
     @property
     def own_mesh(self) -> Result | None:
@@ -178,9 +134,8 @@ def compute(
     InputError
         A result that cannot be used.
     """
-    _check_choices(options)
-    names = _checked_measures(options)
-    _check_numbers(options)
+    check_options(options)
+    names = measures_of(options)
     model = model_of(result, options)
     frame = None if options.frame is None else parse_frame(options.frame, result)
     settings: dict[str, Any] = {
@@ -198,9 +153,10 @@ def compute(
     computed = Computed(
         _fields(small, finite, names, settings, options, diagnose),
         continued(removals, previous),
-        _request(options, zero),
+        told(options, zero),
         equivalent_poisson=options.equivalent_poisson,
         faces=options.faces,
+        finite_model=finite,
     )
     del settings["at"]
     if options.at in OWN_MESH:
@@ -223,17 +179,12 @@ def _without_rigid(
     if not parts:
         return small, finite, ()
     axis = parse_axis(options.rigid_axis)
-    small, removals = take_out(small, parts, options.solve, axis, any(map(_is_finite, names)))
+    small, removals = take_out(small, parts, options.solve, axis, any(map(is_finite, names)))
     if finite is not None:
         finite, of_finite = take_out(finite, parts, "nonlinear", axis)
         if not any(n in SMALL for n in names):
             removals = of_finite
     return small, finite, removals
-
-
-def _is_finite(name: str) -> bool:
-    """Return whether an array comes from finite strain or rotation."""
-    return MEASURES[name].finite if name in MEASURES else bool(base_of(name))
 
 
 def _at_nodes(
@@ -247,7 +198,7 @@ def _at_nodes(
     how = {**settings, "method": options.recovery, "split": options.borders == "split"}
     if finite is None:
         return nodal_fields(small, names, regions, **how)
-    real = [n for n in names if _is_finite(n)]
+    real = [n for n in names if is_finite(n)]
     if real and len(real) == len(names):
         return nodal_fields(finite, names, regions, **how)
     first = nodal_fields(small, [n for n in names if n not in real], regions, **how)
@@ -282,7 +233,7 @@ def _estimated(
 
 def _one_model(small: Model, finite: Model, names: Sequence[str]) -> Model:
     """Return the model for measures of one kind; with a zero step small and finite ones have different ones."""
-    real = [n for n in names if _is_finite(n)]
+    real = [n for n in names if is_finite(n)]
     if real and len(real) < len(names):
         raise UsageError(
             f"with --zero-step, small and finite measures ({real[0]} ...) are not given together here: ask for them in two "
@@ -312,19 +263,6 @@ def _on_surface(model: Model, options: StrainOptions) -> SurfaceFields:
     )
 
 
-def _request(options: StrainOptions, zero: Result | None) -> dict[str, Any]:
-    """Return what was asked for beyond the defaults, by option name, and the zero step."""
-    default = StrainOptions()
-    told = {
-        k: v
-        for k, v in asdict(options).items()
-        if v != getattr(default, k) and k not in ("threads", "surface")
-    }
-    if zero is not None:
-        told["zero_step"] = None if zero.steps is None else zero.steps.current
-    return told
-
-
 def _fields(
     small: Model,
     finite: Model | None,
@@ -336,7 +274,7 @@ def _fields(
     if finite is None:
         found = compute_fields(small, names or ["strain"], **settings, diagnose=diagnose)
         return replace(found, arrays={n: found.arrays[n] for n in names})
-    real = [n for n in names if _is_finite(n)]
+    real = [n for n in names if is_finite(n)]
     linear = [n for n in names if n not in real]
     judged = diagnose and options.solve != "linear"
     first = compute_fields(small, list(dict.fromkeys([*linear, "strain"])), **settings, diagnose=diagnose)
@@ -347,73 +285,6 @@ def _fields(
         components={**first.components, **second.components},
         diagnostics=judged_from_zero(first, second) if judged else first.diagnostics,
     )
-
-
-def _checked_measures(options: StrainOptions) -> tuple[str, ...]:
-    asked, surface = options.measures, options.at == "surface"
-    if surface and asked and not isinstance(asked, str):
-        choose_surface_measures(asked, options.base, options.poisson)  # it has names of its own
-        asked = [n for n in (n.removeprefix("surface_") for n in asked) if n in MEASURES or n == "all"]
-    only_of_surfaces = surface and not asked and bool(options.measures)
-    names: tuple[str, ...] = ()
-    if not only_of_surfaces:
-        names = choose_measures(asked, options.base, options.thermal_expansion is not None)
-    if options.at in ("nodes", "quadrature") and "all" in (options.measures or ()):
-        names = tuple(n for n in names if n not in GEOMETRY or n in (options.measures or ()))
-    finite = [n for n in names if _is_finite(n)]
-    if finite and options.solve == "linear":
-        raise UsageError(
-            f"finite measures ({finite[0]} ...) of a geometrically linear solve are fiction: the solve itself used the small "
-            "strain. Ask for the "
-            "small measures, or state --solve nonlinear if it was."
-        )
-    estimates = [n for n in names if n in ESTIMATES]
-    if estimates and options.at in OWN_MESH:
-        raise UsageError(
-            f"{estimates[0]} belongs to the cells and nodes of the mesh: ask for it with --at centroid, mean or nodes."
-        )
-    return names
-
-
-_CHOICES: dict[str, tuple[str | None, ...]] = {
-    "at": PLACES,
-    "recovery": METHODS,
-    "solve": ("linear", "nonlinear", "unknown"),
-    "plane": (None, "strain", "stress", "axisymmetric"),
-    "axis": ("x", "y"),
-    "coordinates": ("reference", "deformed"),
-    "borders": ("dominant", "split"),
-    "faces": ("mesh", "cells"),
-}
-
-
-def _check_choices(options: StrainOptions) -> None:
-    for name, known in _CHOICES.items():
-        value = getattr(options, name)
-        if value not in known:
-            raise UsageError(
-                f"{name}={value!r} is not known; use one of {', '.join(repr(k) for k in known)}."
-            )
-
-
-def _check_numbers(options: StrainOptions) -> None:
-    effective = options.equivalent_poisson
-    if effective is not None and not -1.0 < effective <= 0.5:
-        raise UsageError(
-            f"--equivalent-poisson {effective:g}: an effective Poisson ratio lies between -1 and 0.5."
-        )
-    for name, at in (("borders", "nodes"), ("faces", "surface"), ("between_regions", "surface")):
-        value = getattr(options, name)
-        if value != getattr(StrainOptions(), name) and options.at != at:
-            given = f"--{name.replace('_', '-')}" + ("" if value is True else f" {value}")
-            raise UsageError(f"{given} belongs to --at {at}; without it, it does nothing.")
-    reference = options.reference_temperature
-    if reference is not None and not math.isfinite(reference):
-        raise UsageError(f"--reference-temperature {reference:g} is not a temperature.")
-    if options.axis != "y" and options.plane != "axisymmetric":
-        raise UsageError(
-            f"--axis {options.axis} belongs to --plane axisymmetric; without it, it does nothing."
-        )
 
 
 def model_of(result: Result, options: StrainOptions) -> Model:
@@ -445,3 +316,6 @@ def _thermal(
     if zero is not None:
         check_zero_temperature(zero, temperature, float(reference))
     return parse_thermal(result, str(expansion), temperature, float(reference))
+
+
+__all__ = ["Computed", "StrainOptions", "compute", "model_of", "settled"]

@@ -9,7 +9,8 @@ from unturn.errors import UsageError
 from unturn.frames import parse_frame
 from unturn.kinematics._symmetric import Floats
 from unturn.measures import choose_measures
-from unturn.pipeline import OWN_MESH, Computed, StrainOptions, compute
+from unturn.options import OWN_MESH, StrainOptions
+from unturn.pipeline import Computed, compute
 from unturn.result import Result
 from unturn.rigid import RigidMotion
 from unturn.same_mesh import ReferenceMesh

@@ -183,7 +183,7 @@ def strain_options(*names: str, **instead: Any) -> Callable[[Callable[..., None]
 
     def decorate(command: Callable[..., None]) -> Callable[..., None]:
         def with_options(**given: Any) -> None:
-            from unturn.pipeline import StrainOptions
+            from unturn.options import StrainOptions
 
             asked = {name: _plain(name, given.pop(name)) for name in names}
             command(**given, options=StrainOptions(**asked))

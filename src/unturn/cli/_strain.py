@@ -15,7 +15,7 @@ from unturn.cli._strain_job import Failure, StrainJob
 from unturn.errors import UnturnError, UsageError
 
 if TYPE_CHECKING:
-    from unturn.pipeline import StrainOptions
+    from unturn.options import StrainOptions
 
 
 @strain_options(*EVERY, *PLACES)

@@ -16,7 +16,8 @@ from unturn.errors import InputError, UnturnError, UsageError
 if TYPE_CHECKING:
     from unturn.cli._output import Places
     from unturn.io import ResultFile
-    from unturn.pipeline import Computed, StrainOptions
+    from unturn.options import StrainOptions
+    from unturn.pipeline import Computed
     from unturn.result import Result
     from unturn.stepwise import Stepwise
     from unturn.summary import Summary

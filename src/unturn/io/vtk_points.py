@@ -6,7 +6,7 @@ from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
-from vtkmodules.vtkCommonCore import vtkIdList, vtkPoints
+from vtkmodules.vtkCommonCore import vtkDataArray, vtkIdList, vtkPoints
 from vtkmodules.vtkCommonDataModel import vtkUnstructuredGrid
 
 from unturn.errors import UsageError
@@ -58,6 +58,8 @@ def _take_points(source: Any, target: Any, point: NDArray[np.int64]) -> None:
     taken = []
     for k in range(source.GetNumberOfArrays()):
         array = source.GetAbstractArray(k)
+        if isinstance(array, vtkDataArray) and not array.HasStandardMemoryLayout():
+            array = array.ToAOSDataArray()
         twin = array.NewInstance()
         twin.SetName(name_of(array, k))
         twin.SetNumberOfComponents(array.GetNumberOfComponents())
