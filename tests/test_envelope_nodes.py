@@ -14,13 +14,15 @@ from numpy.typing import NDArray
 
 import unturn
 from meshes import Mesh, patch, straight
+from unturn.combinations import Combination
 from unturn.elements import ELEMENTS
 from unturn.envelopes import envelope
-from unturn.errors import UsageError
+from unturn.errors import InputError, UsageError
 from unturn.kinematics import equivalent_strain, tensor_from_components
 from unturn.pipeline import StrainOptions, compute
 from unturn.result import CellBlock, Result
 from unturn.states import Envelope, EnvelopeOptions, State
+from unturn.superposition import superposed_states
 
 Floats = NDArray[np.float64]
 
@@ -298,3 +300,63 @@ def test_increments_are_in_the_frame() -> None:
     assert np.allclose(given[2][0]["strain_increment"], e[2] - e[1], atol=1e-17)
     assert given[2][1]["strain_increment"] == ("RR", "TT", "ZZ", "RT", "TZ", "RZ")
     assert found.components["strain_increment_maximum"] == ("RR", "TT", "ZZ", "RT", "TZ", "RZ")
+
+
+@pytest.mark.practice("steps that are broken in part, or as a whole, leave the others what they are")
+def test_broken_steps_at_nodes() -> None:
+    us = displacements(4)
+    us[0][MESH.cells[3]] = np.nan  # of the first step one cell and its neighbours cannot be computed
+    steps = states(us)
+
+    def broken() -> Result:
+        raise InputError("run.xdmf: the data of this step is cut short.")
+
+    steps[2] = State("step 2", broken, 1.0)
+    asked = EnvelopeOptions(StrainOptions(measures=["equivalent_strain"], at="nodes"), keep_going=True)
+    found = envelope(steps, asked)
+    assert list(found.failures) == [2]
+    values = every([steps[k] for k in (0, 1, 3)], "equivalent_strain")["equivalent_strain"]
+    assert np.isnan(values[0]).any()
+    assert np.allclose(found.arrays["equivalent_strain_maximum"], np.nanmax(values, axis=0), rtol=1e-12)
+    at = np.array([0, 1, 3])[np.nanargmax(values, axis=0)]
+    assert np.array_equal(found.arrays["equivalent_strain_maximum_step"], at)
+    assert np.array_equal(found.arrays["equivalent_strain_maximum_time"], 0.5 * at)
+
+
+@pytest.mark.derived("what is recovered of a sum is the sum of what is recovered")
+def test_combinations_at_nodes() -> None:
+    u, v = displacements(2)
+    readers = {name: s.read for name, s in zip("ab", states([u, v]))}
+    asked = StrainOptions(measures=["principal_strain"], at="nodes", solve="linear")
+    combinations = [Combination("both", {"a": 1.35, "b": -1.5}), Combination("one", {"a": 1.0})]
+    summed, options = superposed_states(readers, combinations, asked)
+    found = envelope(summed, EnvelopeOptions(options, "case")).arrays
+    values = every(states([1.35 * u - 1.5 * v, u]), "principal_strain", solve="linear")["principal_strain"]
+    assert np.allclose(found["principal_strain_minimum"], values.min(axis=0), rtol=1e-11, atol=1e-16)
+    assert np.array_equal(found["principal_strain_minimum_case"], values.argmin(axis=0))
+    assert not any(name.endswith("_time") for name in found)
+
+
+@pytest.mark.derived("a bent shell: every face has its own value at the fold, the surfaces do not mix")
+def test_folds_of_surfaces() -> None:
+    plate = patch(ELEMENTS["quad"])
+    n = len(plate.points)
+    up = plate.points[:, [0, 2, 1]]  # the same plate, standing on the x axis
+    points = np.concatenate([plate.points, up])
+    on_axis = np.flatnonzero(np.abs(plate.points[:, 1]) < 1e-12)
+    cells = np.concatenate([plate.cells, plate.cells + n])
+    for k in on_axis:
+        cells[cells == k + n] = k
+    block = CellBlock("quad", cells, np.arange(len(cells)))
+    us = [1e-3 * np.sin(k + 2 * points) for k in range(3)]
+    steps = [
+        State(f"step {k}", lambda u=u: Result(points, (block,), {"u": u}), float(k)) for k, u in enumerate(us)
+    ]  # type: ignore[misc]
+    found = run(steps, ["equivalent_strain"])
+    values = every(steps, "equivalent_strain")["equivalent_strain"]
+    known = np.isfinite(values).all(axis=0)
+    assert np.allclose(
+        found.arrays["equivalent_strain_maximum"][known], values.max(axis=0)[known], rtol=1e-12
+    )
+    assert len(found.places.position) == 2 * n
+    assert [len(j.region.cells) for j in found.judged] == [len(cells)]
