@@ -66,7 +66,7 @@ def strain(
     """Add strain, rotation and equivalent strain to result files and say where they can be trusted."""
     from unturn.cli._output import Places, check_place
 
-    check_place(picture, json, files)
+    check_place(picture, json, [*files, *([displacement_table] if displacement_table is not None else [])])
     _check(files, options, output, picture, displacement_table)
     if displacement_table is not None:
         options = replace(options, displacement="displacement")
