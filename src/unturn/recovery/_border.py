@@ -1,0 +1,151 @@
+"""At borders: the derivative along the edges of free facets, which the displacement of their own nodes gives."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from threading import Lock
+
+import numpy as np
+from numpy.typing import NDArray
+
+from unturn.elements import ELEMENTS, Element, element
+from unturn.gradient import Plane, chunk_ranges, over_chunks
+from unturn.kinematics._symmetric import Floats
+from unturn.model import ModelBlock
+from unturn.node_sets import random_numbers, set_keys, singles
+from unturn.recovery._average import extrapolation
+from unturn.recovery._nodes import Ints, NodeShares
+from unturn.recovery._samples import PAIRS, CellSamples
+
+_SEEN = 0.13
+"""Share of the best covered direction below which the edges at a node do not cover a direction: tan^2 of 20 degrees, so
+that edges which bend by less than 40 degrees at the node count as one direction."""
+
+
+def border_shift(shares: NodeShares, samples: CellSamples, values: Floats, threads: int | None) -> Floats:
+    """Return what is to be added to recovered values at the corners on borders of solids and plane meshes.
+
+    Parameters
+    ----------
+    shares, samples
+        Of the model.
+    values
+        `(9, n_shares)` recovered gradient.
+    threads
+        None: all processors.
+
+    Returns
+    -------
+    numpy.ndarray
+        `(9, n_shares)`, zero at all other nodes.
+    """
+    sums = np.zeros((len(PAIRS) + 9, len(shares)))
+    lock = Lock()
+    for block, cells, facets in _free_facets(shares, samples):
+        assert block.row is not None
+        for k, count in _edges(block.row, facets):
+            which = np.flatnonzero(count)
+
+            def work(a: int, b: int, k: int = k, which: Ints = which, count: Ints = count) -> None:
+                rows = which[a:b]
+                found = _residuals(shares, block, cells, k, rows, values) * count[rows]
+                with lock:
+                    for corner, parts in zip(block.row.edges[k][:2], found):
+                        for total, part in zip(sums, parts):
+                            total += np.bincount(cells[rows, corner], part, len(total))
+
+            over_chunks(work, chunk_ranges(len(which), block.row.n_nodes), threads)
+    return _solved(sums, shares.model.plane)
+
+
+def _free_facets(
+    shares: NodeShares, samples: CellSamples
+) -> Iterator[tuple[ModelBlock, NDArray[np.int32], NDArray[np.bool_]]]:
+    """Yield solid and plane blocks, the shares of their cells, and `(n_facets, n_cells)` which facets no other cell has."""
+    table = random_numbers(len(shares), seed=0)
+    found = []
+    for block, cells, rows in zip(shares.model.blocks, shares.cells, shares.rows):
+        if block.row is None or block.kind not in ("solid", "plane") or not len(cells):
+            continue
+        keys = np.empty((len(block.row.shape.facets), len(cells)), dtype=np.uint64)
+        sound = np.repeat(samples.valid[rows][None], len(keys), axis=0)
+        for facet, key, ok in zip(block.row.shape.facets, keys, sound):
+            key[:], count = set_keys(cells[:, list(facet)].T, table)
+            ok &= count >= block.row.dim
+        found.append((block, cells, keys, sound))
+    all_keys = np.concatenate([np.zeros(0, dtype=np.uint64), *(keys[ok] for *_, keys, ok in found)])
+    alone = np.zeros(len(all_keys), dtype=bool)
+    alone[singles(all_keys)] = True
+    start = 0
+    for block, cells, _, sound in found:
+        free = np.zeros(sound.shape, dtype=bool)
+        stop = start + int(sound.sum())
+        free[sound] = alone[start:stop]
+        start = stop
+        yield block, cells, free
+
+
+def _edges(row: Element, free: NDArray[np.bool_]) -> Iterator[tuple[int, Ints]]:
+    """Yield each edge of an element that lies on facets, and `(n_cells,)` on how many free ones."""
+    for k, (a, b, _) in enumerate(row.edges):
+        on = [f for f, facet in enumerate(row.shape.facets) if a in facet and b in facet]
+        count = free[on].sum(axis=0)
+        if count.any():
+            yield k, count
+
+
+def _residuals(
+    shares: NodeShares, block: ModelBlock, cells: NDArray[np.int32], edge: int, rows: Ints, values: Floats
+) -> Floats:
+    """Return `(2, 15, m)` for both ends of an edge: tangent x tangent, and residual x tangent.
+
+    The residual is what the derivative along the edge, from the displacement, has more than the recovered gradient; from
+    the points where it is most accurate extrapolated to the ends.
+    """
+    assert block.row is not None
+    row, (a, b, between) = block.row, block.row.edges[edge]
+    line = element("VTK_LAGRANGE_CURVE", row.order + 1)
+    ends = row.shape.vertices[[a, b]]
+    places = ELEMENTS["line"].shape_functions(line.accurate.points) @ ends
+    nodes = [a, b, *between]
+    chunk = shares.model.chunk(block, block.connectivity[rows], block.index[rows])
+    nodal = values[:, cells[rows][:, nodes]].reshape(3, 3, len(rows), len(nodes))
+    tangent, residual = [], []
+    for gradients, functions in zip(row.shape_gradients(places), row.shape_functions(places)):
+        along = np.einsum("k,ckm->cm", ends[1] - ends[0], chunk.tangents(gradients))
+        with np.errstate(invalid="ignore", divide="ignore"):
+            along /= np.linalg.norm(along[:3], axis=0)
+        H = nodal @ functions[nodes]
+        tangent.append(along[:3])
+        residual.append(along[3:] - np.einsum("ijm,jm->im", H, along[:3]))
+    to_ends = extrapolation(line)[:2]
+    t = np.einsum("eq,qim->eim", to_ends, tangent)
+    r = np.einsum("eq,qim->eim", to_ends, residual)
+    with np.errstate(invalid="ignore", divide="ignore"):
+        t /= np.linalg.norm(t, axis=1, keepdims=True)
+    squares = np.stack([t[:, i] * t[:, j] for i, j in PAIRS], axis=1)
+    moments = (r[:, :, None] * t[:, None]).reshape(2, 9, -1)
+    found = np.concatenate([squares, moments], axis=1)
+    found[:, :, ~np.isfinite(found).all(axis=(0, 1))] = 0.0  # an edge without length
+    return found
+
+
+def _solved(sums: Floats, plane: Plane | None) -> Floats:
+    """Return the smallest change `(9, n)` that takes the residuals away, in the mean square where they disagree."""
+    some = np.flatnonzero(sums[:3].sum(axis=0))
+    squares = np.empty((len(some), 3, 3))
+    for (i, j), part in zip(PAIRS, sums):
+        squares[:, i, j] = squares[:, j, i] = part[some]
+    size, axes = np.linalg.eigh(squares)
+    seen = size > _SEEN * size[:, -1:]
+    inverse = np.where(seen, 1.0 / np.where(seen, size, 1.0), 0.0)
+    moments = sums[len(PAIRS) :, some].T.reshape(-1, 3, 3)
+    change = np.einsum("nij,njk,nk,nlk->nil", moments, axes, inverse, axes, optimize=True)
+    if plane is not None and plane.model == "stress":
+        assert plane.poisson is not None
+        k = plane.normal
+        trace = np.trace(change, axis1=1, axis2=2) - change[:, k, k]
+        change[:, k, k] = -plane.poisson / (1.0 - plane.poisson) * trace
+    out = np.zeros((9, sums.shape[1]))
+    out[:, some] = change.reshape(-1, 9).T
+    return out
