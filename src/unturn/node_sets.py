@@ -14,7 +14,7 @@ def random_numbers(n: int, seed: int) -> Keys:
     return np.random.default_rng(seed).integers(1, 2**64 - 1, size=n, dtype=np.uint64)
 
 
-def set_keys(nodes: Ints, table: Keys) -> tuple[Keys, NDArray[np.int8]]:
+def set_keys(nodes: NDArray[np.integer], table: Keys) -> tuple[Keys, NDArray[np.int8]]:
     """Return a key of each set of nodes and how many different ones it has, from `(k, m)` nodes.
 
     The key is the sum of the random 64-bit numbers that `table` gives to the different nodes. Two sets get the same key

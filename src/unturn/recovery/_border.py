@@ -12,7 +12,7 @@ from unturn.elements import ELEMENTS, Element, element
 from unturn.gradient import Plane, chunk_ranges, over_chunks
 from unturn.kinematics._symmetric import Floats
 from unturn.model import ModelBlock
-from unturn.node_sets import random_numbers, set_keys, singles
+from unturn.node_sets import Keys, random_numbers, set_keys, singles
 from unturn.recovery._average import extrapolation
 from unturn.recovery._nodes import Ints, NodeShares
 from unturn.recovery._samples import PAIRS, CellSamples
@@ -20,6 +20,7 @@ from unturn.recovery._samples import PAIRS, CellSamples
 _SEEN = 0.13
 """Share of the best covered direction below which the edges at a node do not cover a direction: tan^2 of 20 degrees, so
 that edges which bend by less than 40 degrees at the node count as one direction."""
+_NO_LENGTH = 1e-9  # of the size of the cell: a shorter edge is that of a collapsed cell
 
 
 def border_shift(shares: NodeShares, samples: CellSamples, values: Floats, threads: int | None) -> Floats:
@@ -41,7 +42,7 @@ def border_shift(shares: NodeShares, samples: CellSamples, values: Floats, threa
     """
     sums = np.zeros((len(PAIRS) + 9, len(shares)))
     lock = Lock()
-    for block, cells, facets in _free_facets(shares, samples):
+    for block, cells, facets in _free_facets(shares, samples, threads):
         assert block.row is not None
         for k, count in _edges(block.row, facets):
             which = np.flatnonzero(count)
@@ -59,30 +60,40 @@ def border_shift(shares: NodeShares, samples: CellSamples, values: Floats, threa
 
 
 def _free_facets(
-    shares: NodeShares, samples: CellSamples
+    shares: NodeShares, samples: CellSamples, threads: int | None
 ) -> Iterator[tuple[ModelBlock, NDArray[np.int32], NDArray[np.bool_]]]:
     """Yield solid and plane blocks, the shares of their cells, and `(n_facets, n_cells)` which facets no other cell has."""
     table = random_numbers(len(shares), seed=0)
     found = []
     for block, cells, rows in zip(shares.model.blocks, shares.cells, shares.rows):
-        if block.row is None or block.kind not in ("solid", "plane") or not len(cells):
-            continue
-        keys = np.empty((len(block.row.shape.facets), len(cells)), dtype=np.uint64)
-        sound = np.repeat(samples.valid[rows][None], len(keys), axis=0)
-        for facet, key, ok in zip(block.row.shape.facets, keys, sound):
-            key[:], count = set_keys(cells[:, list(facet)].T, table)
-            ok &= count >= block.row.dim
-        found.append((block, cells, keys, sound))
-    all_keys = np.concatenate([np.zeros(0, dtype=np.uint64), *(keys[ok] for *_, keys, ok in found)])
-    alone = np.zeros(len(all_keys), dtype=bool)
-    alone[singles(all_keys)] = True
-    start = 0
-    for block, cells, _, sound in found:
-        free = np.zeros(sound.shape, dtype=bool)
-        stop = start + int(sound.sum())
-        free[sound] = alone[start:stop]
-        start = stop
+        if block.row is not None and block.kind in ("solid", "plane"):
+            keys, whole = _facet_keys(block.row, cells, table, threads)
+            found.append((block, cells, keys, whole & samples.valid[rows]))
+    keys = np.concatenate([np.zeros(0, dtype=np.uint64), *(k[there] for *_, k, there in found)])
+    alone = np.zeros(len(keys), dtype=bool)
+    alone[singles(keys)] = True
+    for block, cells, _, there in found:
+        free = there.copy()
+        free[there], alone = np.split(alone, [int(there.sum())])
         yield block, cells, free
+
+
+def _facet_keys(
+    row: Element, cells: NDArray[np.int32], table: Keys, threads: int | None
+) -> tuple[Keys, NDArray[np.bool_]]:
+    """Return `(n_facets, n_cells)` a key of the corners of each facet, and whether it has as many as its dimension needs."""
+    facets = [list(f) for f in row.shape.facets]
+    keys = np.empty((len(facets), len(cells)), dtype=np.uint64)
+    whole = np.empty(keys.shape, dtype=bool)
+
+    def work(a: int, b: int) -> None:
+        nodes = np.ascontiguousarray(cells[a:b, : row.n_corners].T)
+        for f, corners in enumerate(facets):
+            keys[f, a:b], count = set_keys(nodes[corners], table)
+            whole[f, a:b] = count >= row.dim
+
+    over_chunks(work, chunk_ranges(len(cells), row.n_nodes), threads)
+    return keys, whole
 
 
 def _edges(row: Element, free: NDArray[np.bool_]) -> Iterator[tuple[int, Ints]]:
@@ -109,25 +120,24 @@ def _residuals(
     places = ELEMENTS["line"].shape_functions(line.accurate.points) @ ends
     nodes = [a, b, *between]
     chunk = shares.model.chunk(block, block.connectivity[rows], block.index[rows])
+    size = np.abs(chunk.relative[:3]).max(axis=(0, 1))
     nodal = values[:, cells[rows][:, nodes]].reshape(3, 3, len(rows), len(nodes))
     tangent, residual = [], []
     for gradients, functions in zip(row.shape_gradients(places), row.shape_functions(places)):
         along = np.einsum("k,ckm->cm", ends[1] - ends[0], chunk.tangents(gradients))
-        with np.errstate(invalid="ignore", divide="ignore"):
-            along /= np.linalg.norm(along[:3], axis=0)
+        length = np.linalg.norm(along[:3], axis=0)
+        along /= np.where(length > _NO_LENGTH * size, length, np.inf)
         H = nodal @ functions[nodes]
         tangent.append(along[:3])
         residual.append(along[3:] - np.einsum("ijm,jm->im", H, along[:3]))
     to_ends = extrapolation(line)[:2]
     t = np.einsum("eq,qim->eim", to_ends, tangent)
     r = np.einsum("eq,qim->eim", to_ends, residual)
-    with np.errstate(invalid="ignore", divide="ignore"):
-        t /= np.linalg.norm(t, axis=1, keepdims=True)
+    long = np.linalg.norm(t, axis=1, keepdims=True)
+    t /= np.where(long > 0, long, 1.0)
     squares = np.stack([t[:, i] * t[:, j] for i, j in PAIRS], axis=1)
     moments = (r[:, :, None] * t[:, None]).reshape(2, 9, -1)
-    found = np.concatenate([squares, moments], axis=1)
-    found[:, :, ~np.isfinite(found).all(axis=(0, 1))] = 0.0  # an edge without length
-    return found
+    return np.concatenate([squares, moments], axis=1)
 
 
 def _solved(sums: Floats, plane: Plane | None) -> Floats:
