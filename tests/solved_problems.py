@@ -196,7 +196,9 @@ def cavity(name: str, n: int) -> tuple[meshes.Mesh, Floats, float]:
     unit = PULL / 8 / shear / (7 - 5 * NU)
     A, B, C = -unit * (13 - 10 * NU), unit, 5 * unit * (1 - 2 * NU)
     cos, sin = x[:, 2] / r, np.hypot(x[:, 0], x[:, 1]) / r
-    radial_ = -A / r**2 - 3 * B / r**4 + ((5 - 4 * NU) / (1 - 2 * NU) * C / r**2 - 9 * B / r**4) * (2 * cos**2 - 1)
+    radial_ = (
+        -A / r**2 - 3 * B / r**4 + ((5 - 4 * NU) / (1 - 2 * NU) * C / r**2 - 9 * B / r**4) * (2 * cos**2 - 1)
+    )
     along = -(2 * C / r**2 + 6 * B / r**4) * 2 * sin * cos
     south = np.column_stack([x[:, :2] * (cos / (r * sin))[:, None], -sin])
     exact = x / r[:, None] * radial_[:, None] + south * along[:, None] + PULL / YOUNG * x * [-NU, -NU, 1]

@@ -139,7 +139,9 @@ TRIED = [
 ]  # fmt: skip
 
 
-@pytest.mark.source("Williams 1952; Inglis 1913; Goodier 1933; Timoshenko and Goodier, articles 28, 102 and 136")
+@pytest.mark.source(
+    "Williams 1952; Inglis 1913; Goodier 1933; Timoshenko and Goodier, articles 28, 102 and 136"
+)
 def test_singular_and_smooth_problems_that_set_no_bound() -> None:
     """Bending with two elements in the thickness is linear already; a corner's field is singular on every mesh."""
     found: dict[str, list[bool]] = {"singular": [], "smooth": []}
@@ -188,7 +190,7 @@ class TestByHand:
     def test_growth_alone_is_not_enough(self) -> None:
         """A strain that falls linearly to a small value grows fast from ring to ring, and is smooth."""
         values = np.array([1.1, 0.9, 0.7, 0.5, 0.3, 0.1])
-        peaks, cells = self.row(1e-4 * values)
+        peaks, _ = self.row(1e-4 * values)
         peak = peaks.find(values, np.arange(2))
         assert peak.growth > 0.2
         assert peak.departure < 1e-3

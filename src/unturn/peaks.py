@@ -179,7 +179,10 @@ class Peaks:
                 break
         else:
             return float("nan")
-        x = self.shares.model.points[self.shares.point[around]] - self.shares.model.points[self.shares.point[share]]
+        x = (
+            self.shares.model.points[self.shares.point[around]]
+            - self.shares.model.points[self.shares.point[share]]
+        )
         table = np.column_stack([np.ones(len(around)), x / np.abs(x).max()])
         here, beside = self._strain(np.array([share]))[0], self._strain(around)
         extrapolated = np.linalg.lstsq(table, beside)[0][0]

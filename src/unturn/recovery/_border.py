@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
-from threading import Lock
 
 import numpy as np
 from numpy.typing import NDArray
@@ -41,21 +40,17 @@ def border_shift(shares: NodeShares, samples: CellSamples, values: Floats, threa
         `(9, n_shares)`, zero at all other nodes.
     """
     sums = np.zeros((len(PAIRS) + 9, len(shares)))
-    lock = Lock()
     for block, cells, facets in _free_facets(shares, samples, threads):
         assert block.row is not None
-        for k, count in _edges(block.row, facets):
-            which = np.flatnonzero(count)
-
-            def work(a: int, b: int, k: int = k, which: Ints = which, count: Ints = count) -> None:
-                rows = which[a:b]
-                found = _residuals(shares, block, cells, k, rows, values) * count[rows]
-                with lock:
-                    for corner, parts in zip(block.row.edges[k][:2], found):
-                        for total, part in zip(sums, parts):
-                            total += np.bincount(cells[rows, corner], part, len(total))
-
-            over_chunks(work, chunk_ranges(len(which), block.row.n_nodes), threads)
+        for edge, count in _edges(block.row, facets):
+            rows = np.flatnonzero(count)
+            ends = _residuals(shares, block, cells, edge, rows, values, threads)
+            for corner, (t, r) in zip(block.row.edges[edge][:2], ends):
+                at, weight = cells[rows, corner], count[rows]
+                for k, (i, j) in enumerate(PAIRS):
+                    sums[k] += np.bincount(at, weight * t[i] * t[j], len(shares))
+                for k, (i, j) in enumerate(np.ndindex(3, 3), len(PAIRS)):
+                    sums[k] += np.bincount(at, weight * r[i] * t[j], len(shares))
     return _solved(sums, shares.model.plane)
 
 
@@ -106,38 +101,46 @@ def _edges(row: Element, free: NDArray[np.bool_]) -> Iterator[tuple[int, Ints]]:
 
 
 def _residuals(
-    shares: NodeShares, block: ModelBlock, cells: NDArray[np.int32], edge: int, rows: Ints, values: Floats
+    shares: NodeShares,
+    block: ModelBlock,
+    cells: NDArray[np.int32],
+    edge: int,
+    rows: Ints,
+    values: Floats,
+    threads: int | None,
 ) -> Floats:
-    """Return `(2, 15, m)` for both ends of an edge: tangent x tangent, and residual x tangent.
+    """Return `(2, 2, 3, m)`: at both ends of an edge of some cells the unit tangent and the residual.
 
     The residual is what the derivative along the edge, from the displacement, has more than the recovered gradient; from
-    the points where it is most accurate extrapolated to the ends.
+    the points where it is most accurate extrapolated to the ends. Both are zero for an edge without length.
     """
     assert block.row is not None
     row, (a, b, between) = block.row, block.row.edges[edge]
     line = element("VTK_LAGRANGE_CURVE", row.order + 1)
-    ends = row.shape.vertices[[a, b]]
-    places = ELEMENTS["line"].shape_functions(line.accurate.points) @ ends
+    span = row.shape.vertices[[a, b]]
+    places = ELEMENTS["line"].shape_functions(line.accurate.points) @ span
     nodes = [a, b, *between]
-    chunk = shares.model.chunk(block, block.connectivity[rows], block.index[rows])
-    size = np.abs(chunk.relative[:3]).max(axis=(0, 1))
-    nodal = values[:, cells[rows][:, nodes]].reshape(3, 3, len(rows), len(nodes))
-    tangent, residual = [], []
-    for gradients, functions in zip(row.shape_gradients(places), row.shape_functions(places)):
-        along = np.einsum("k,ckm->cm", ends[1] - ends[0], chunk.tangents(gradients))
-        length = np.linalg.norm(along[:3], axis=0)
-        along /= np.where(length > _NO_LENGTH * size, length, np.inf)
-        H = nodal @ functions[nodes]
-        tangent.append(along[:3])
-        residual.append(along[3:] - np.einsum("ijm,jm->im", H, along[:3]))
     to_ends = extrapolation(line)[:2]
-    t = np.einsum("eq,qim->eim", to_ends, tangent)
-    r = np.einsum("eq,qim->eim", to_ends, residual)
-    long = np.linalg.norm(t, axis=1, keepdims=True)
-    t /= np.where(long > 0, long, 1.0)
-    squares = np.stack([t[:, i] * t[:, j] for i, j in PAIRS], axis=1)
-    moments = (r[:, :, None] * t[:, None]).reshape(2, 9, -1)
-    return np.concatenate([squares, moments], axis=1)
+    out = np.empty((2, 2, 3, len(rows)))
+
+    def work(start: int, stop: int) -> None:
+        some = rows[start:stop]
+        chunk = shares.model.chunk(block, block.connectivity[some], block.index[some])
+        size = np.abs(chunk.relative[:3]).max(axis=(0, 1))
+        nodal = values[:, cells[some][:, nodes]].reshape(3, 3, len(some), len(nodes))
+        found = []
+        for gradients, functions in zip(row.shape_gradients(places), row.shape_functions(places)):
+            along = np.einsum("k,ckm->cm", span[1] - span[0], chunk.tangents(gradients))
+            length = np.linalg.norm(along[:3], axis=0)
+            tangent, moved = (along / np.where(length > _NO_LENGTH * size, length, np.inf)).reshape(2, 3, -1)
+            recovered = np.einsum("ijm,jm->im", nodal @ functions[nodes], tangent)
+            found.append([tangent, moved - recovered])
+        out[..., start:stop] = np.einsum("eq,qkim->ekim", to_ends, found)
+
+    over_chunks(work, chunk_ranges(len(rows), row.n_nodes), threads)
+    length = np.linalg.norm(out[:, :1], axis=2, keepdims=True)
+    out[:, :1] /= np.where(length > 0, length, 1.0)
+    return out
 
 
 def _solved(sums: Floats, plane: Plane | None) -> Floats:

@@ -187,7 +187,9 @@ def _same_motion(label: Ints, displacement: NDArray[np.float64]) -> Ints:
 
 def mark_between(model: Model, candidates: Candidates) -> Candidates:
     """Return the faces, those marked that another cell has too: they were kept because its group is another."""
-    keys, _ = set_keys(np.ascontiguousarray(candidates.corners.T), random_numbers(model.result.n_points, seed=0))
+    keys, _ = set_keys(
+        np.ascontiguousarray(candidates.corners.T), random_numbers(model.result.n_points, seed=0)
+    )
     between = np.ones(len(keys), dtype=bool)
     between[singles(keys)] = False
     return replace(candidates, between=between)
