@@ -355,10 +355,18 @@ class _Around:
     at: Location
     threads: int | None
     errors: dict[str, StrainError] = field(default_factory=dict)
+    taken: dict[int, Floats] = field(default_factory=dict)
 
     def own(self, cells: Ints) -> Ints:
         """Return the positions of cells of the file."""
         return np.searchsorted(self.part.cells, cells)
+
+    def values(self, asked: Asked) -> Floats:
+        """Return the values of these cells; taken once from the array that several extremes share."""
+        key = id(asked.values)
+        if key not in self.taken:
+            self.taken[key] = asked.values[self.part.cells]
+        return self.taken[key]
 
     def error(self, base: str) -> StrainError:
         """Return the error of a tensor."""
@@ -379,8 +387,7 @@ class _Around:
 
     def peak(self, asked: Asked) -> Peak:
         """Return the value that is asked for as a peak."""
-        values = asked.values[self.part.cells]
-        return self.peaks.find(values, self.own(np.array([asked.cell])), asked.smallest)
+        return self.peaks.find(self.values(asked), self.own(np.array([asked.cell])), asked.smallest)
 
     def grows(self, asked: Asked) -> bool:
         """Return whether a value grows towards a node, and is not negligible."""
@@ -415,8 +422,9 @@ class _Around:
         def suspected(peak: Peak) -> bool:
             return self.suspected(peak, bound.bases[0], asked.size)
 
-        values = asked.values[self.part.cells]
-        after = self.peaks.next_peak(values, self.own(among), self.peak(asked), asked.smallest, suspected)
+        after = self.peaks.next_peak(
+            self.values(asked), self.own(among), self.peak(asked), asked.smallest, suspected
+        )
         if after.cell < 0:
             return known
         cell = int(self.part.cells[after.cell])

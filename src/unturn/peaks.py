@@ -113,7 +113,9 @@ class Peaks:
             Look for the smallest, and for values that fall towards it.
         """
         signed = -values if smallest else values
-        known = cells[np.isfinite(signed[cells]) & (np.diff(self.corners.indptr)[cells] > 0)]
+        known = cells[
+            np.isfinite(signed[cells]) & (self.corners.indptr[cells] < self.corners.indptr[cells + 1])
+        ]
         if not len(known):
             nan = float("nan")
             return Peak(-1, nan, -1, (), (), nan, nan, False)
