@@ -10,6 +10,7 @@ from typing import TYPE_CHECKING, Annotated, Any
 import typer
 
 from unturn.cli import _options as o
+from unturn.cli._shared import EVERY, strain_options
 from unturn.errors import InputError, UnturnError, UsageError
 
 if TYPE_CHECKING:
@@ -21,6 +22,7 @@ if TYPE_CHECKING:
     from unturn.summary import Summary
 
 
+@strain_options(*EVERY)
 def strain(
     files: Annotated[list[Path], typer.Argument(metavar="FILE...", help="Result files.", readable=False)],
     output: Annotated[
@@ -33,79 +35,13 @@ def strain(
             "Default: the input's name with .strain before the suffix.",
         ),
     ] = None,
-    measures: Annotated[
-        str | None,
-        typer.Option(
-            metavar="LIST",
-            help="Arrays to add, by comma; 'all' for every one. "
-            "Default: strain,rotation,equivalent_strain,principal_strain.",
-        ),
-    ] = None,
-    base: Annotated[
-        o.BaseChoice, typer.Option(help="Replace each small measure by its counterpart of this finite base.")
-    ] = o.BaseChoice.small,
-    at: Annotated[o.PlaceChoice, typer.Option(help="Where values are taken.")] = o.PlaceChoice.centroid,
-    recovery: Annotated[
-        o.RecoveryChoice, typer.Option(help="How the gradient gets to the nodes with --at nodes.")
-    ] = o.RecoveryChoice.patch,
+    *,
+    options: StrainOptions,
     step: o.Step = "last",
-    solve: Annotated[
-        o.SolveChoice, typer.Option(help="What the solve was; it decides what the verdict says.")
-    ] = o.SolveChoice.unknown,
     mode: Annotated[
         bool, typer.Option("--mode", help="A mode shape: no verdict, values per unit amplitude.")
     ] = False,
-    displacement: o.Displacement = None,
     displacement_table: o.Table = None,
-    displacement_scale: o.Scale = 1.0,
-    coordinates: o.Coordinates = o.CoordinatesChoice.reference,
-    plane: o.Plane = None,
-    axis: o.Axis = o.AxisChoice.y,
-    poisson: o.Poisson = None,
-    equivalent_poisson: Annotated[
-        float | None,
-        typer.Option(
-            metavar="NU", help="Equivalent strain as 1/(1+NU) times the norm of the principal differences."
-        ),
-    ] = None,
-    remove_rigid: Annotated[
-        str,
-        typer.Option(
-            "--remove-rigid",
-            metavar="none|whole|bodies|regions|REGION",
-            help="Take the rigid motion of these out first.",
-        ),
-    ] = "none",
-    rigid_to: Annotated[
-        str | None,
-        typer.Option(metavar="REGION|whole", help="Take it out of this part instead of the one it is of."),
-    ] = None,
-    rigid_axis: Annotated[
-        str | None,
-        typer.Option(metavar="AXIS", help="Known axis instead of the full fit: '0,0,1 through 10,0,0'."),
-    ] = None,
-    frame: Annotated[
-        str | None,
-        typer.Option(
-            metavar="FRAME",
-            help="Axes of the components: 'cylindrical z', 'cylindrical 0,0,1 through 10,0,0', "
-            "'cartesian 1,1,0 0,0,1', 'surface', or 'arrays FIRST SECOND' (cell arrays).",
-        ),
-    ] = None,
-    thermal_expansion: Annotated[
-        str | None,
-        typer.Option(
-            metavar="ALPHA",
-            help="Free thermal strain to take out: a number, three by comma along the axes of "
-            "the frame, or by region 'part=1:12e-6;part=2:23e-6'.",
-        ),
-    ] = None,
-    temperature: Annotated[
-        str | None, typer.Option(metavar="ARRAY", help="Point or cell array of temperature.")
-    ] = None,
-    reference_temperature: Annotated[
-        float | None, typer.Option(metavar="T0", help="Temperature without thermal strain.")
-    ] = None,
     zero_step: Annotated[
         int | None, typer.Option(metavar="N", help="Measure displacements from this step of the series.")
     ] = None,
@@ -115,8 +51,6 @@ def strain(
             metavar="NAME", help="Summarise this region only (repeatable): a group, or array=value."
         ),
     ] = None,
-    alive: o.Alive = None,
-    skin: o.Skin = False,
     prefix: Annotated[str, typer.Option(metavar="TEXT", help="Goes before the name of each new array.")] = "",
     overwrite: Annotated[bool, typer.Option("--overwrite", help="Replace arrays of the same name.")] = False,
     picture: Annotated[
@@ -124,37 +58,26 @@ def strain(
         typer.Option(metavar="FILE.png", help="Also draw the equivalent strain on the deformed shape."),
     ] = None,
     json: o.Json = None,
-    threads: o.Threads = None,
 ) -> None:
     """Add strain, rotation and equivalent strain to result files and say where they can be trusted."""
     from unturn.cli._output import Places, check_place, is_folder, write_json
-    from unturn.pipeline import StrainOptions
 
     check_place(picture, json, files)
-    if displacement is not None and displacement_table is not None:
+    if options.displacement is not None and displacement_table is not None:
         raise UsageError("--displacement and --displacement-table exclude each other: give one of them.")
     if picture is not None and len(files) > 1:
         raise UsageError("--picture FILE.png draws one file; give one input file with it.")
-    if picture is not None and at is o.PlaceChoice.quadrature:
+    if picture is not None and options.at == "quadrature":
         raise UsageError("--picture draws meshes, and --at quadrature gives points: leave one of them out.")
     if output is not None and not is_folder(output) and len(files) > 1:
         raise UsageError(f"-o {output}: with several input files the output must be an existing folder.")
     job = _Job(
         places=Places(output, files, (picture, json)),
-        options=StrainOptions(
-            displacement=displacement,
-            measures=None if measures is None else [m.strip() for m in measures.split(",") if m.strip()],
-            base=base.value, at=at.value, recovery=recovery.value, solve=solve.value,
-            plane=plane.value if plane else None, poisson=poisson,
-            axis=axis.value, coordinates=coordinates.value, displacement_scale=displacement_scale,
-            equivalent_poisson=equivalent_poisson, remove_rigid=remove_rigid, rigid_to=rigid_to, rigid_axis=rigid_axis,
-            frame=frame, thermal_expansion=thermal_expansion, temperature=temperature,
-            reference_temperature=reference_temperature, skin=skin, alive=alive, threads=threads,
-        ),
+        options=options,
         zero_step=zero_step,
-        summary={"regions": tuple(region or ()), "solve": solve.value, "mode": mode,
-                 "at": "mean" if at.value == "mean" else "centroid",
-                 "equivalent_poisson": equivalent_poisson, "full": json is not None},
+        summary={"regions": tuple(region or ()), "solve": options.solve, "mode": mode,
+                 "at": "mean" if options.at == "mean" else "centroid",
+                 "equivalent_poisson": options.equivalent_poisson, "full": json is not None},
         table=displacement_table, step=step, prefix=prefix, overwrite=overwrite, picture=picture,
         text_to_stderr=str(json) == "-",
     )  # fmt: skip
