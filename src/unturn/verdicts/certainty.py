@@ -14,6 +14,7 @@ from unturn.pipeline import Computed
 from unturn.trust import strain_error
 from unturn.verdicts.limit import Quantity
 from unturn.verdicts.step_values import Selection, Step, one_component
+from unturn.verdicts.units import Unit
 from unturn.verdicts.wording import number
 
 
@@ -33,6 +34,8 @@ class Ask:
         Whether the smallest was looked for.
     extreme
         Whether it is one value of its region that may be a singular peak.
+    unit
+        In which a sentence about it gives values.
     """
 
     quantity: Quantity
@@ -40,6 +43,7 @@ class Ask:
     position: int
     smallest: bool
     extreme: bool
+    unit: Unit
 
 
 @dataclass(frozen=True)
@@ -71,7 +75,7 @@ def certainties(step: Step, asked: Sequence[Ask]) -> list[Certainty]:
         for k, trust in zip(members, answers):
             ask = asked[k]
             plus_minus = at_nodes.of(ask) if ask.selection.column.on == "shares" else trust.plus_minus
-            found[k] = Certainty(plus_minus, _singular(step, trust) if ask.extreme else "")
+            found[k] = Certainty(plus_minus, _singular(step, trust, ask.unit) if ask.extreme else "")
     return found
 
 
@@ -93,12 +97,13 @@ def _at_cell(step: Step, computed: Computed, ask: Ask) -> Asked:
     return Asked(name, values, cells, cell, ask.smallest, size)
 
 
-def _singular(step: Step, trust: Trust) -> str:
+def _singular(step: Step, trust: Trust, unit: Unit) -> str:
     if not trust.singular:
         return ""
     said = f"suspected singular: it keeps growing towards {step.node_words(trust.point)}, so with a finer mesh too"
     if trust.next_cell >= 0:
-        said += f"; the next peak away from it, {number(trust.next_value)}, is at {step.cell_words(trust.next_cell)}"
+        after = f"{number(unit.from_base(trust.next_value))} {unit.name}"
+        said += f" (next peak away from it: {after}, {step.cell_words(trust.next_cell)})"
     return said
 
 

@@ -215,9 +215,10 @@ class _Run:
                 continue
             for tested in row.test(self.seen, value, self.limits.required):
                 name = f"result/{key}" + (f"/{tested.part}" if tested.part else "")
-                where = f" in {tested.part}" if tested.part else ""
+                wanted = value[tested.part] if isinstance(value, dict) else value
+                title = f"in {tested.part}: {row.words(wanted)}" if tested.part else row.words(value)
                 yield Finding(
-                    name, group, f"{row.meaning}{where}", "met" if tested.holds else "error",
+                    name, group, title, "met" if tested.holds else "error",
                     "" if tested.holds else tested.message, tested.value, tested.bound, unit=tested.unit,
                     details={"required": value},
                 )  # fmt: skip

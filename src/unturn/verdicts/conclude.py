@@ -5,7 +5,7 @@ from __future__ import annotations
 import datetime
 import math
 from collections.abc import Sequence
-from typing import Any
+from typing import Any, cast
 
 from unturn.verdicts.finding import Finding, Place, State
 from unturn.verdicts.limit import Limit
@@ -35,9 +35,9 @@ def state_of(limit: Limit, m: Measured) -> tuple[State, str]:
     if (m.high is not None and m.value > m.high) or (m.low is not None and m.value < m.low):
         return "exceeded", ""
     doubts = list(m.doubts)
-    reach = 0.0 if math.isnan(m.plus_minus) else m.plus_minus
+    reach = 0.0 if math.isnan(m.plus_minus) or "plus-minus" in limit.accept else m.plus_minus
     if (m.high is not None and m.value + reach > m.high) or (m.low is not None and m.value - reach < m.low):
-        doubts.append("inside, but the plus and minus reaches across the bound")
+        doubts.insert(0, "inside, but the plus and minus reaches across the bound")
     if doubts:
         return "undecided", "; ".join(doubts)
     unit = STATISTICS[limit.statistic].unit_of(limit)
@@ -101,7 +101,9 @@ def _left_out_words(limit: Limit, m: Measured, more: bool) -> str:
     said = f"{'; ' if more else ''}{n} cell{'s' * (n != 1)} left out of {limit.region}"
     if largest is None:
         return said
-    where = place_text({k: v for k, v in m.left_out["place"].items() if k not in ("step", "time")})  # type: ignore[typeddict-item]
+    where = place_text(
+        cast(Place, {k: v for k, v in m.left_out["place"].items() if k not in ("step", "time")})
+    )
     return f"{said}: {number(largest)} {limit.unit.name} there, {where}"
 
 

@@ -12,7 +12,7 @@ from unturn.verdicts.region_kinds import RegionSpec
 from unturn.verdicts.units import Unit
 
 At = Literal["centroid", "mean", "nodes", "surface"]
-Accepted = Literal["singular", "mid-surface", "turning"]
+Accepted = Literal["plus-minus", "singular", "mid-surface", "turning"]
 Which = Literal["all", "last"] | tuple[int, ...]
 
 

@@ -27,7 +27,7 @@ class Measured:
     Attributes
     ----------
     step, time
-        Which.
+        Which; None where the result is no series.
     value, plus_minus
         As computed; NaN where there is none.
     low, high
@@ -44,7 +44,7 @@ class Measured:
         What the region names and leaves out.
     """
 
-    step: int
+    step: int | None
     time: float | None
     value: float = math.nan
     plus_minus: float = math.nan
@@ -52,7 +52,7 @@ class Measured:
     high: float | None = None
     low_written: float | None = None
     high_written: float | None = None
-    place: Place = field(default_factory=lambda: Place())
+    place: Place = field(default_factory=Place)
     count: int = 0
     missing: int = 0
     error: str = ""
@@ -76,7 +76,7 @@ def measure_all(step: Step, limits: Sequence[Limit]) -> list[Measured]:
     """Return every limit in one step; what is recovered for plus and minus is recovered once for all of them."""
     pending = [_begin(step, limit) for limit in limits]
     asked = [
-        Ask(p.limit.quantity, p.selection, at, smallest, STATISTICS[p.limit.statistic].extreme)
+        Ask(p.limit.quantity, p.selection, at, smallest, STATISTICS[p.limit.statistic].extreme, p.limit.unit)
         for p in pending
         if isinstance(p, _Pending)
         for at, smallest in p.got.ends
@@ -92,12 +92,12 @@ def _begin(step: Step, limit: Limit) -> _Pending | Measured:
         selection = step.select(limit.quantity, limit.region)
         stop = _refused(step, limit, selection)
         if stop:
-            return Measured(step.number, step.time, error=stop, missing=selection.missing)
+            return Measured(step.shown, step.time, error=stop, missing=selection.missing)
         sample = Sample(_based(limit, selection.values), selection.weights)
         got, bounds = _held_against(step, limit, selection, sample)
         return _Pending(limit, selection, sample, got, bounds, _left_out(step, limit))
     except (NoRegion, NoValues, UnturnError) as error:
-        return Measured(step.number, step.time, error=str(error))
+        return Measured(step.shown, step.time, error=str(error))
 
 
 def _refused(step: Step, limit: Limit, selection: Selection) -> str:
@@ -187,10 +187,10 @@ def _finish(step: Step, p: _Pending, certain: list[Certainty]) -> Measured:
         doubts += [c.singular for c in certain if c.singular]
     doubts += _turning(step, limit)
     low, high, low_written, high_written = p.bounds
-    when: Place = {"step": step.number, "time": step.time}
+    when: Place = {"step": step.shown, "time": step.time}
     where = step.place(p.selection.column, int(p.selection.index[p.got.ends[0][0]])) if p.got.ends else when
     return Measured(
-        step.number, step.time, p.got.value, statistic.spread(p.sample, limit, p.got, ends), low, high, low_written,
+        step.shown, step.time, p.got.value, statistic.spread(p.sample, limit, p.got, ends), low, high, low_written,
         high_written, where, len(p.selection.values), p.selection.missing, "", tuple(doubts), p.left_out,
     )  # fmt: skip
 

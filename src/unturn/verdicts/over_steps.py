@@ -84,7 +84,7 @@ class OverSteps:
             error = self._errors.get(limit.id, "")
             if step is None or key not in self._ranges or error:
                 why = error or "no step of it could be used"
-                found.append((limit, Measured(-1 if step is None else step.number, None, error=why)))
+                found.append((limit, Measured(None, None, error=why)))
                 continue
             if key not in finished:
                 finished[key] = self._ranges[key].finish(step)
@@ -98,7 +98,7 @@ class OverSteps:
             step.replace_column(limit.quantity, Column(values, "cells", None))
             measured = measure_all(step, [limit])[0]
         except NoRegion as error:
-            return Measured(step.number, None, error=str(error))
+            return Measured(step.shown, None, error=str(error))
         cell = measured.place.get("cell")
         if measured.error or cell is None:
             return measured

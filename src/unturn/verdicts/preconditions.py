@@ -169,14 +169,10 @@ def _small_strain(seen: Evidence, value: Any, all_: Mapping[str, Any]) -> Sequen
     return tested or [Tested(False, "no region could be judged")]
 
 
-def _true(meaning: str) -> Callable[[Any], str]:
-    return lambda value: meaning
-
-
 PRECONDITIONS: dict[str, Precondition] = {
     row.key: row
     for row in (
-        Precondition("whole_file", k.TRUE, "every step can be read and computed", _true("every step can be read and computed"),
+        Precondition("whole_file", k.TRUE, "every step can be read and computed", lambda v: "every step can be used",
                      _whole_file, every_step=True),
         Precondition("steps", k.COUNT, "number of steps", lambda v: f"it has {v} steps", _steps),
         Precondition("last_time", k.NUMBER, "time that the last step must have reached",
@@ -191,12 +187,12 @@ PRECONDITIONS: dict[str, Precondition] = {
                      lambda v: f"it is newer than {v}", _newer_than),
         Precondition("small_strain", k.either_kind(_LEVEL, k.table_kind("a table of these by region", _LEVEL)),
                      "how well the small strain must hold in every region that a limit names, or by region",
-                     lambda v: "its small strain " + (f"{v}" if isinstance(v, str) else ", ".join(
-                         f"{level} in {name}" for name, level in v.items())), _small_strain, every_step=True),
+                     lambda v: "its small strain is " + (f"{v} or better" if isinstance(v, str) else ", ".join(
+                         f"{level} or better in {name}" for name, level in v.items())), _small_strain, every_step=True),
         Precondition("no_nan", k.TRUE, "no cell without value because coordinates or displacement are not finite",
-                     _true("no displacement or coordinate is NaN"),
+                     lambda v: "no displacement or coordinate is NaN",
                      _none_left_out("displacement not finite", "coordinates not finite"), every_step=True),
-        Precondition("no_tangled", k.TRUE, "no cell is tangled or without volume", _true("no cell is tangled"),
+        Precondition("no_tangled", k.TRUE, "no cell is tangled or without volume", lambda v: "no cell is tangled",
                      _none_left_out("tangled", "no volume"), every_step=True),
     )
 }  # fmt: skip

@@ -13,18 +13,21 @@ from unturn.pipeline import StrainOptions
 from unturn.surface import SURFACE_MEASURES, choose_surface_measures
 from unturn.verdicts import keys as k
 from unturn.verdicts.keys import REQUIRED, Key, Path, Source
-from unturn.verdicts.limit import Limit, Quantity, Waiver
+from unturn.verdicts.limit import At, Limit, Quantity, Waiver
 from unturn.verdicts.region_kinds import WHOLE, RegionSpec
 from unturn.verdicts.statistic import STATISTICS, Statistic
 from unturn.verdicts.units import OF_MEASURE, UNITS, Unit
 
 BASE_NAMES = ("small", *(b.replace("_", "-") for b in BASES))
 PLACES = ("centroid", "mean", "nodes", "surface")
-ACCEPTED = ("singular", "mid-surface", "turning")
+ACCEPTED = ("plus-minus", "singular", "mid-surface", "turning")
 MAGNITUDE = "magnitude"
 _VECTOR = 3
 
 _BOUND = k.either_kind(k.NUMBER, k.table_kind("a table of numbers by region", k.NUMBER))
+_STEPS = k.either_kind(
+    k.choice_kind(("all", "last")), k.POSITION, k.list_kind("a list of whole numbers from 0", k.POSITION)
+)
 _TABLE = k.Kind("a table", lambda value: value)
 
 LIMIT_KEYS = (
@@ -50,8 +53,7 @@ LIMIT_KEYS = (
     Key("unit", k.choice_kind(tuple(UNITS)), "unit of bounds, levels and thresholds", REQUIRED),
     Key("stored_in", k.choice_kind(tuple(UNITS)), "unit in which `array` holds its values; default: `unit`"),
     Key("plus_minus", k.NOT_NEGATIVE, "how far the values of `array` may be off, in `unit`"),
-    Key("steps", k.either_kind(k.choice_kind(("all", "last")), k.POSITION, k.list_kind("a list of whole numbers from 0", k.POSITION)),
-        "which steps of a series", "all"),
+    Key("steps", _STEPS, "which steps of a series; counted from 0", "all"),
     Key("accept", k.list_kind("a list", k.choice_kind(ACCEPTED)), "what is consented to", ()),
     Key("reason", k.TEXT, "why there is this limit", REQUIRED),
     Key("source", k.TEXT, "where its bound comes from: code, clause, edition, test", REQUIRED),
@@ -144,7 +146,7 @@ class _Reader:
         if found["array"] is not None:
             return self._of_array(), ""
         self.refuse(("stored_in", "plus_minus"), "it goes with 'array'; of a measure it is known.")
-        at = found["at"] or "centroid"
+        at: At = found["at"] or "centroid"
         name, components, unit, finite = (
             self._on_surface(options) if at == "surface" else self._on_mesh(options)
         )

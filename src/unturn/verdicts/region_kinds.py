@@ -200,7 +200,7 @@ def _numbers(values: NDArray[Any], n: int, name: str) -> Floats:
 
 def _box(cells: Cells, box: Mapping[str, Any], pick: Pick) -> Mask:
     low, high = np.array(box["from"]), np.array(box["to"])
-    inside: Mask = ((cells.centroid >= low) & (cells.centroid <= high)).all(axis=1)
+    inside: Mask = np.asarray(((cells.centroid >= low) & (cells.centroid <= high)).all(axis=1))
     return inside
 
 
@@ -282,13 +282,13 @@ def _where(cells: Cells, asked: Mapping[str, Any], pick: Pick) -> Mask:
 
 
 def _compares(values: Floats, asked: Mapping[str, Any]) -> Mask:
-    holds: Mask = np.asarray(np.isfinite(values))
+    holds: Mask = np.asarray(np.isfinite(values), dtype=bool)
     if asked["above"] is not None:
-        holds &= values > asked["above"]
+        holds = holds & (values > asked["above"])
     if asked["below"] is not None:
-        holds &= values < asked["below"]
+        holds = holds & (values < asked["below"])
     if asked["equals"] is not None:
-        holds &= np.isin(values, asked["equals"])
+        holds = holds & np.isin(values, asked["equals"])
     return holds
 
 
@@ -420,7 +420,7 @@ class RegionFinder:
             key: REGION_KINDS[key].select(self.cells, value, self.find)
             for key, value in spec.conditions.items()
         }
-        named = self.cells.computed.copy()
+        named: Mask = self.cells.computed.copy()
         for key, mask in masks.items():
             if key != "none_of":
                 named &= mask

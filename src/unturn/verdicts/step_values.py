@@ -26,8 +26,8 @@ from unturn.surface import SURFACE_MEASURES
 from unturn.verdict import Verdict, judge
 from unturn.verdicts.finding import Place
 from unturn.verdicts.limit import Limits, Quantity
-from unturn.verdicts.wording import place_text
 from unturn.verdicts.region_kinds import Cells, Mask, RegionFinder
+from unturn.verdicts.wording import place_text
 
 Group = tuple[str, str | None, str]
 Ints = NDArray[np.int64]
@@ -138,6 +138,7 @@ class Step:
         threads: int | None = None,
     ) -> None:
         self.number, self.time, self.result = number, time, result
+        self.shown = None if time is None else number
         self._options, self.threads = replace(options, threads=threads), threads
         self._solve = options.solve
         self._zero, self._previous = zero, previous
@@ -172,7 +173,7 @@ class Step:
         """
         if group not in self._computed:
             at, frame, base = group
-            options = replace(self._options, measures=self._asked[group], base=base, at=at, frame=frame)
+            options = replace(self._options, measures=self._asked[group], base=base, at=at, frame=frame)  # type: ignore[arg-type]
             try:
                 found: Computed | UnturnError = compute(
                     self.result, options, zero=self._zero, diagnose=True, previous=self._previous
@@ -341,17 +342,16 @@ class Step:
             found = self._surface(column).cell_data
             index = np.flatnonzero(mask[found["parent_cell"]])
             return index, np.asarray(found["area"], dtype=np.float64)[index]
+        blocks = self.model.blocks
+        nodes_of: list[NDArray[Any]] = [b.connectivity for b in blocks]
+        n = self.result.n_points
         if column.on == "shares":
             assert column.computed is not None
             assert column.computed.nodes is not None
             shares = column.computed.nodes.recovered.shares
-            owned = zip(shares.model.blocks, shares.cells)
-            n = len(shares)
-        else:
-            owned = zip(self.model.blocks, (b.connectivity for b in self.model.blocks))
-            n = self.result.n_points
+            blocks, nodes_of, n = shares.model.blocks, list(shares.cells), len(shares)
         weight, met = np.zeros(n), np.zeros(n, dtype=bool)
-        for block, nodes in owned:
+        for block, nodes in zip(blocks, nodes_of):
             inside = mask[block.index]
             chosen = nodes[inside]
             if chosen.size:
@@ -390,7 +390,7 @@ class Step:
 
     def place(self, column: Column, at: int) -> Place:
         """Return where a position of a column is."""
-        when = Place(step=self.number, time=self.time)
+        when = Place(step=self.shown, time=self.time)
         if column.on in ("points", "shares"):
             point = int(self.owners(column, np.array([at]))[0])
             node = None if self._nodes is None else int(self._nodes[point])
