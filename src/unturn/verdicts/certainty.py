@@ -12,9 +12,10 @@ from unturn.around import Asked, Trust, bound_of, trust_of
 from unturn.kinematics._symmetric import Floats
 from unturn.pipeline import Computed
 from unturn.trust import strain_error
+from unturn.verdicts.columns import Selection, one_component
 from unturn.verdicts.limit import Quantity
-from unturn.verdicts.step_values import Selection, Step, one_component
-from unturn.verdicts.units import Unit
+from unturn.verdicts.step import Step
+from unturn.verdicts.units import Unit, unit_words
 from unturn.verdicts.wording import number
 
 
@@ -93,7 +94,7 @@ def _at_cell(step: Step, computed: Computed, ask: Ask) -> Asked:
         best = np.argmin if ask.smallest else np.argmax
         cell = int(known[best(values[known])]) if len(known) and ask.extreme else -1
     # what is no extreme is no peak either: beside an infinite strain every value is negligible
-    size = step.largest_strain(cells) if ask.extreme else math.inf
+    size = step.largest_strain(selection) if ask.extreme else math.inf
     return Asked(name, values, cells, cell, ask.smallest, size)
 
 
@@ -102,7 +103,7 @@ def _singular(step: Step, trust: Trust, unit: Unit) -> str:
         return ""
     said = f"suspected singular: it keeps growing towards {step.node_words(trust.point)}, so with a finer mesh too"
     if trust.next_cell >= 0:
-        after = f"{number(unit.from_base(trust.next_value))} {unit.name}"
+        after = f"{number(unit.from_base(trust.next_value))} {unit_words(unit)}".rstrip()
         said += f" (next peak away from it: {after}, {step.cell_words(trust.next_cell)})"
     return said
 

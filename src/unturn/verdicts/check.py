@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import datetime
 from collections.abc import Callable, Iterable, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import Protocol
 
@@ -18,9 +18,9 @@ from unturn.verdicts.limit import Limit, Limits
 from unturn.verdicts.measured import Measured, measure_all
 from unturn.verdicts.over_steps import OverSteps
 from unturn.verdicts.preconditions import PRECONDITIONS, Evidence
-from unturn.verdicts.region_kinds import NoRegion
+from unturn.verdicts.region_select import NoRegion
 from unturn.verdicts.statistic import STATISTICS
-from unturn.verdicts.step_values import Step
+from unturn.verdicts.step import Step
 
 
 class Opened(Protocol):
@@ -94,9 +94,16 @@ def check_result(
 def unreadable(error: UnturnError, limits: Limits, group: str) -> Checked:
     """Return the verdicts on a result that cannot be opened: every limit is an error, none is left away."""
     why = f"the result cannot be used: {error}"
-    failed = [Measured(0, None, error=why)]
-    findings = [conclude(limit, group, failed, datetime.date.min) for limit in limits.limits]
+    failed = [Measured(None, None, error=why)]
+    findings = [replace(f, state="error", message=why) for f in conditions(limits, evidence(limits), group)]
+    findings += [conclude(limit, group, failed, datetime.date.min) for limit in limits.limits]
     return Checked(tuple(findings), error)
+
+
+def evidence(limits: Limits, path: str = "", times: tuple[float, ...] | None = None) -> Evidence:
+    """Return what is known of a result before a step is read."""
+    regions = tuple(dict.fromkeys(limit.region for limit in limits.limits))
+    return Evidence(path, Path(limits.path).absolute().parent, times, regions)
 
 
 def needed_steps(limits: Limits, n: int) -> list[int]:
@@ -125,7 +132,7 @@ class _Run:
         self.plain = [v for v in limits.limits if not STATISTICS[v.statistic].over_steps]
         self.over = OverSteps([v for v in limits.limits if STATISTICS[v.statistic].over_steps])
         self.measured: dict[str, list[Measured]] = {v.id: [] for v in limits.limits}
-        self.seen = Evidence(opened.path, Path(limits.path).absolute().parent, self.times)
+        self.seen = evidence(limits, opened.path, self.times)
         self.unusable: UnturnError | None = None
         self.motions: Sequence[RigidMotion] = ()
         self.options: StrainOptions | None = None
@@ -188,7 +195,8 @@ class _Run:
         for reason, cells in step.base.fields.left_out.items():
             seen.left_out.setdefault(reason, (step.number, len(cells)))
         if "small_strain" in self.limits.required:
-            for region in dict.fromkeys(v.region for v in self.limits.limits):
+            wanted = self.limits.required["small_strain"]
+            for region in wanted if isinstance(wanted, dict) else seen.regions:
                 try:
                     seen.judged(region, step.verdict(region), step.number)
                 except NoRegion as error:
@@ -201,24 +209,25 @@ class _Run:
 
     def concluded(self, group: str, today: datetime.date) -> Checked:
         """Return every verdict."""
-        findings = list(self._conditions(group))
+        findings = list(conditions(self.limits, self.seen, group))
         failed = [f.id for f in findings if f.state != "met"]
         stopped = f"the result is not what it must be: {', '.join(failed)}" if failed else ""
         for limit in self.limits.limits:
             findings.append(conclude(limit, group, self.measured[limit.id], today, stopped))
         return Checked(tuple(findings), self.unusable)
 
-    def _conditions(self, group: str) -> Iterable[Finding]:
-        for key, value in self.limits.required.items():
-            row = PRECONDITIONS[key]
-            if row.test is None:
-                continue
-            for tested in row.test(self.seen, value, self.limits.required):
-                name = f"result/{key}" + (f"/{tested.part}" if tested.part else "")
-                wanted = value[tested.part] if isinstance(value, dict) else value
-                title = f"in {tested.part}: {row.words(wanted)}" if tested.part else row.words(value)
-                yield Finding(
-                    name, group, title, "met" if tested.holds else "error",
-                    "" if tested.holds else tested.message, tested.value, tested.bound, unit=tested.unit,
-                    details={"required": value},
-                )  # fmt: skip
+
+def conditions(limits: Limits, seen: Evidence, group: str) -> Iterable[Finding]:
+    """Return the verdict on everything that the result must be."""
+    for key, value in limits.required.items():
+        row = PRECONDITIONS[key]
+        if row.test is None:
+            continue
+        for tested in row.test(seen, value, limits.required):
+            name = f"result/{key}" + (f"/{tested.part}" if tested.part else "")
+            wanted = value[tested.part] if isinstance(value, dict) else value
+            title = f"in {tested.part}: {row.words(wanted)}" if tested.part else row.words(value)
+            yield Finding(
+                name, group, title, "met" if tested.holds else "error", "" if tested.holds else tested.message,
+                tested.value, tested.bound, unit=tested.unit, details={"required": value},
+            )  # fmt: skip

@@ -11,7 +11,7 @@ from unturn.verdicts.finding import Finding, Place, State
 from unturn.verdicts.limit import Limit
 from unturn.verdicts.measured import Measured
 from unturn.verdicts.statistic import STATISTICS
-from unturn.verdicts.units import Unit, shown_in
+from unturn.verdicts.units import Unit, shown_in, unit_words
 from unturn.verdicts.wording import number, place_text
 
 _RANKS: tuple[State, ...] = ("met", "warning", "undecided", "error", "exceeded")
@@ -44,9 +44,9 @@ def state_of(limit: Limit, m: Measured) -> tuple[State, str]:
     levels = (limit.warn_below, limit.warn_above)
     below, above = (None if w is None else unit.to_base(w) for w in levels)
     if above is not None and m.value > above:
-        return "warning", f"above the warning level of {number(limit.warn_above)} {unit.name}"
+        return "warning", f"above the warning level of {number(limit.warn_above)} {unit_words(unit)}".rstrip()
     if below is not None and m.value < below:
-        return "warning", f"below the warning level of {number(limit.warn_below)} {unit.name}"
+        return "warning", f"below the warning level of {number(limit.warn_below)} {unit_words(unit)}".rstrip()
     return "met", ""
 
 
@@ -104,7 +104,8 @@ def _left_out_words(limit: Limit, m: Measured, more: bool) -> str:
     where = place_text(
         cast(Place, {k: v for k, v in m.left_out["place"].items() if k not in ("step", "time")})
     )
-    return f"{said}: {number(largest)} {limit.unit.name} there, {where}"
+    peak = f"{number(largest)} {unit_words(limit.unit)}".rstrip()
+    return f"{said}: {peak} there, {where}"
 
 
 def _details(
@@ -164,7 +165,7 @@ def _finding(
         value=_in_unit(limit, m),
         bound=high if low is None else (low, high),
         plus_minus=None if math.isnan(m.plus_minus) else unit.from_base(m.plus_minus),
-        unit="" if unit.name == "number" else unit.name,
+        unit=unit_words(unit),
         place=m.place or Place(step=m.step, time=m.time),
         details=details,
     )

@@ -12,6 +12,7 @@ from unturn.verdicts.limit import Limit, Limits, Waiver
 from unturn.verdicts.preconditions import PRECONDITIONS
 from unturn.verdicts.region_kinds import region_words
 from unturn.verdicts.statistic import STATISTICS
+from unturn.verdicts.units import unit_words
 from unturn.verdicts.wording import clean, number
 
 _LINE = 110
@@ -87,7 +88,9 @@ def _limit(limit: Limit, today: datetime.date) -> list[str]:
     lines += _wrapped(bounds_words(limit), "    ")
     lines += [line for a in sorted(limit.accept) for line in _wrapped(f"accepted: {_CONSENT[a]}", "    ")]
     if limit.plus_minus is not None:
-        lines += _wrapped(f"stated plus and minus: {_full(limit.plus_minus)} {limit.unit.name}", "    ")
+        lines += _wrapped(
+            f"stated plus and minus: {_full(limit.plus_minus)} {unit_words(limit.unit)}", "    "
+        )
     lines += _wrapped(f"reason: {limit.reason}", "    ") + _wrapped(f"source: {limit.source}", "    ")
     if limit.waiver is not None:
         lines += _wrapped(_waiver(limit.waiver, today), "    ")
@@ -100,16 +103,17 @@ def _full(value: float) -> str:
 
 def bounds_words(limit: Limit) -> str:
     """Return the bounds and levels of a limit in words."""
-    unit = STATISTICS[limit.statistic].unit_of(limit).name
+    unit = unit_words(STATISTICS[limit.statistic].unit_of(limit))
+    within = f", in {unit}" if unit else ""
     said = []
     if limit.at_least is not None:
-        said.append(f"at least {_full(limit.at_least)} {unit}")
+        said.append(f"at least {_full(limit.at_least)} {unit}".rstrip())
     if limit.at_most is not None:
-        said.append(f"at most {_full(limit.at_most)} {unit}")
+        said.append(f"at most {_full(limit.at_most)} {unit}".rstrip())
     if limit.at_least_array is not None:
-        said.append(f"at least what the array {limit.at_least_array!r} holds there, in {unit}")
+        said.append(f"at least what the array {limit.at_least_array!r} holds there{within}")
     if limit.at_most_array is not None:
-        said.append(f"at most what the array {limit.at_most_array!r} holds there, in {unit}")
+        said.append(f"at most what the array {limit.at_most_array!r} holds there{within}")
     text = "must be " + " and ".join(said)
     levels = (("below", limit.warn_below), ("above", limit.warn_above))
     warned = [f"{side} {_full(level)}" for side, level in levels if level is not None]

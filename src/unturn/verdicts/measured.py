@@ -13,11 +13,12 @@ from unturn.errors import UnturnError
 from unturn.kinematics._symmetric import Floats
 from unturn.measures import MEASURES
 from unturn.verdicts.certainty import Ask, Certainty, certainties
+from unturn.verdicts.columns import NoValues, Selection
 from unturn.verdicts.finding import Place
 from unturn.verdicts.limit import Limit, Quantity
-from unturn.verdicts.region_kinds import NoRegion
+from unturn.verdicts.region_select import NoRegion
 from unturn.verdicts.statistic import STATISTICS, Got, Sample
-from unturn.verdicts.step_values import NoValues, Selection, Step
+from unturn.verdicts.step import Step
 
 
 @dataclass(frozen=True)
@@ -153,7 +154,7 @@ def _bounds_of(step: Step, selection: Selection, array: str) -> Floats:
     on = selection.column.on
     at = "nodes" if on in ("points", "shares") else "centroid"
     values = step.column(Quantity(array, False, at=at)).values  # type: ignore[arg-type]
-    return values[step.owners(selection.column, selection.index)]
+    return values[selection.column.owners(selection.index)]
 
 
 def _left_out(step: Step, limit: Limit) -> dict[str, Any] | None:

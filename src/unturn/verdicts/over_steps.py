@@ -15,10 +15,11 @@ from unturn.extremes import Extremes
 from unturn.kinematics._symmetric import Floats
 from unturn.same_mesh import ReferenceMesh
 from unturn.tensor_range import TensorRange
+from unturn.verdicts.columns import Column, NoValues
 from unturn.verdicts.limit import Limit, Quantity
 from unturn.verdicts.measured import Measured, measure_all
-from unturn.verdicts.region_kinds import NoRegion
-from unturn.verdicts.step_values import Column, NoValues, Step
+from unturn.verdicts.region_select import NoRegion
+from unturn.verdicts.step import Step
 
 
 class OverSteps:
@@ -31,6 +32,7 @@ class OverSteps:
         self._last: Step | None = None
         self._ranges: dict[tuple[Quantity, object], _Numbers | _Tensors] = {}
         self._errors: dict[str, str] = {}
+        self._taken: dict[str, int] = {v.id: 0 for v in limits}
 
     def __enter__(self) -> OverSteps:
         return self
@@ -62,6 +64,7 @@ class OverSteps:
                 if key not in taken:
                     self._ranges[key].add(step, limit.quantity)
                 taken.add(key)
+                self._taken[limit.id] += 1
             except (NoValues, UnturnError) as error:
                 self._errors[limit.id] = f"step {step.number}: {error}"
 
@@ -82,9 +85,10 @@ class OverSteps:
             step = self._last
             key = limit.quantity, (limit.statistic, limit.steps)
             error = self._errors.get(limit.id, "")
+            if not error and self._taken[limit.id] < 2:
+                error = f"a range over steps needs two at least, and {self._taken[limit.id]} could be used"
             if step is None or key not in self._ranges or error:
-                why = error or "no step of it could be used"
-                found.append((limit, Measured(None, None, error=why)))
+                found.append((limit, Measured(None, None, error=error)))
                 continue
             if key not in finished:
                 finished[key] = self._ranges[key].finish(step)

@@ -9,7 +9,7 @@ from pathlib import Path
 from typing import Any
 
 from unturn.verdict import Level, Verdict
-from unturn.verdicts import keys as k
+from unturn.verdicts import kinds as k
 from unturn.verdicts.finding import Bound
 
 _LEVELS: tuple[Level, ...] = ("no strain", "holds", "marginal", "does not hold", "not judged")
@@ -29,6 +29,8 @@ class Evidence:
         Of the limits file: names in it are relative to that.
     times
         Of its steps; None when it is no series.
+    regions
+        That limits are in.
     n_cells
         Of each step that was read.
     left_out
@@ -42,6 +44,7 @@ class Evidence:
     path: str
     folder: Path
     times: tuple[float, ...] | None
+    regions: tuple[str, ...] = ()
     n_cells: dict[int, int] = field(default_factory=dict)
     left_out: dict[str, tuple[int, int]] = field(default_factory=dict)
     verdicts: dict[str, tuple[Verdict, int] | str] = field(default_factory=dict)
@@ -152,11 +155,10 @@ def _none_left_out(*reasons: str) -> Callable[[Evidence, Any, Mapping[str, Any]]
 
 
 def _small_strain(seen: Evidence, value: Any, all_: Mapping[str, Any]) -> Sequence[Tested]:
+    wanted = value if isinstance(value, dict) else dict.fromkeys(seen.regions, value)
     tested = []
-    for region, found in seen.verdicts.items():
-        level = value.get(region) if isinstance(value, dict) else value
-        if level is None:
-            continue
+    for region, level in wanted.items():
+        found = seen.verdicts.get(region, "no step could be judged")
         if isinstance(found, str):
             tested.append(Tested(False, found, part=region))
             continue
@@ -166,7 +168,7 @@ def _small_strain(seen: Evidence, value: Any, all_: Mapping[str, Any]) -> Sequen
             f"step {step}: {verdict.level}; error up to {verdict.worst:.2%} of the strain. {verdict.action}"
         )
         tested.append(Tested(ok, said.strip(), part=region))
-    return tested or [Tested(False, "no region could be judged")]
+    return tested
 
 
 PRECONDITIONS: dict[str, Precondition] = {

@@ -11,62 +11,15 @@ from unturn.kinematics._finite import BASES
 from unturn.measures import MEASURES, SURFACE_AXES, choose_measures
 from unturn.pipeline import StrainOptions
 from unturn.surface import SURFACE_MEASURES, choose_surface_measures
-from unturn.verdicts import keys as k
-from unturn.verdicts.keys import REQUIRED, Key, Path, Source
+from unturn.verdicts.columns import MAGNITUDE
+from unturn.verdicts.keys import Path, Source, read_table
 from unturn.verdicts.limit import At, Limit, Quantity, Waiver
+from unturn.verdicts.limit_keys import LIMIT_KEYS, WAIVER_KEYS
 from unturn.verdicts.region_kinds import WHOLE, RegionSpec
 from unturn.verdicts.statistic import STATISTICS, Statistic
 from unturn.verdicts.units import OF_MEASURE, UNITS, Unit
 
-BASE_NAMES = ("small", *(b.replace("_", "-") for b in BASES))
-PLACES = ("centroid", "mean", "nodes", "surface")
-ACCEPTED = ("plus-minus", "singular", "mid-surface", "turning")
-MAGNITUDE = "magnitude"
 _VECTOR = 3
-
-_BOUND = k.either_kind(k.NUMBER, k.table_kind("a table of numbers by region", k.NUMBER))
-_STEPS = k.either_kind(
-    k.choice_kind(("all", "last")), k.POSITION, k.list_kind("a list of whole numbers from 0", k.POSITION)
-)
-_TABLE = k.Kind("a table", lambda value: value)
-
-LIMIT_KEYS = (
-    Key("id", k.TEXT, "stable name, unique in the file", REQUIRED),
-    Key("title", k.TEXT, "in words; default: made from the rest", ""),
-    Key("measure", k.TEXT, "a measure of `unturn strain`; or else `array`"),
-    Key("base", k.choice_kind(BASE_NAMES), "strain that the measure is of", "small"),
-    Key("array", k.TEXT, "an array of the file, instead of a measure"),
-    Key("component", k.TEXT, "name of a component, or `magnitude` of a vector", ""),
-    Key("frame", k.TEXT, "axes of the components, as `--frame` has them"),
-    Key("at", k.choice_kind(PLACES), "where values are taken; default: `centroid`, of an array where it is"),
-    Key("region", k.either_kind(k.TEXT, k.TEXTS), "name of a region, or a list: one verdict each", WHOLE),
-    Key("statistic", k.choice_kind(tuple(STATISTICS)), "the number that is held against the bound", REQUIRED),
-    Key("percent", k.number_kind("a number above 0, up to 100", lambda q: 0 < q <= 100), "of a percentile"),
-    Key("above", k.NUMBER, "threshold of `share` and `count`, in `unit`"),
-    Key("below", k.NUMBER, "threshold of `share` and `count` on the other side, in `unit`"),
-    Key("at_most", _BOUND, "upper bound: a number, or a table of one number a region"),
-    Key("at_least", _BOUND, "lower bound, likewise"),
-    Key("at_most_array", k.TEXT, "array of the file with an upper bound for each value, in `unit`"),
-    Key("at_least_array", k.TEXT, "array of the file with a lower bound for each value, in `unit`"),
-    Key("warn_above", k.NUMBER, "warning level within the upper bound"),
-    Key("warn_below", k.NUMBER, "warning level within the lower bound"),
-    Key("unit", k.choice_kind(tuple(UNITS)), "unit of bounds, levels and thresholds", REQUIRED),
-    Key("stored_in", k.choice_kind(tuple(UNITS)), "unit in which `array` holds its values; default: `unit`"),
-    Key("plus_minus", k.NOT_NEGATIVE, "how far the values of `array` may be off, in `unit`"),
-    Key("steps", _STEPS, "which steps of a series; counted from 0", "all"),
-    Key("accept", k.list_kind("a list", k.choice_kind(ACCEPTED)), "what is consented to", ()),
-    Key("reason", k.TEXT, "why there is this limit", REQUIRED),
-    Key("source", k.TEXT, "where its bound comes from: code, clause, edition, test", REQUIRED),
-    Key("waiver", _TABLE, "who lets it be exceeded, why and until when"),
-)  # fmt: skip
-"""Keys of ``[[limits]]``."""
-
-WAIVER_KEYS = (
-    Key("owner", k.TEXT, "who answers for it", REQUIRED),
-    Key("reason", k.TEXT, "why", REQUIRED),
-    Key("expires", k.DATE, "last day on which it holds", REQUIRED),
-)
-"""Keys of ``waiver``."""
 
 
 def read_limit(
@@ -79,7 +32,7 @@ def read_limit(
     UsageError
         The table says something that is not known, or contradicts itself.
     """
-    found = k.read_table(source, place, table, LIMIT_KEYS)
+    found = read_table(source, place, table, LIMIT_KEYS)
     reader = _Reader(source, place, found)
     if not re.fullmatch(r"[\w.:-]+", found["id"]):
         raise reader.error("id", "an id has letters, digits, '_', '.', ':' and '-' only.")
@@ -89,10 +42,10 @@ def read_limit(
     reader.check_statistic(statistic, quantity)
     waiver = None
     if found["waiver"] is not None:
-        waiver = Waiver(**k.read_table(source, (*place, "waiver"), found["waiver"], WAIVER_KEYS))
+        waiver = Waiver(**read_table(source, (*place, "waiver"), found["waiver"], WAIVER_KEYS))
     several = isinstance(found["region"], tuple)
     names = found["region"] if several else (found["region"],)
-    reader.check_regions(names, regions)
+    check_names(source, (*place, "region"), names, regions)
     threshold = found["above"] if found["above"] is not None else found["below"]
     made = []
     for name in names:
@@ -313,15 +266,17 @@ class _Reader:
                 "bounds and levels must rise in the order at_least, warn_below, warn_above, at_most.",
             )
 
-    def check_regions(self, names: tuple[str, ...], regions: Mapping[str, RegionSpec]) -> None:
-        known = [*regions, WHOLE]
-        for name in names:
-            if name not in known:
-                raise self.error(
-                    "region",
-                    f"no region is called {name!r}.{close_matches(name, known)} Regions: {', '.join(known)}. "
-                    f"Define it in [regions.{name}].",
-                )
+
+def check_names(source: Source, path: Path, names: Iterable[str], regions: Mapping[str, RegionSpec]) -> None:
+    """Refuse names of regions that are not defined in the file."""
+    known = [*regions, WHOLE]
+    for name in names:
+        if name not in known:
+            raise source.error(
+                path,
+                f"no region is called {name!r}.{close_matches(name, known)} Regions: {', '.join(known)}; others are "
+                f"defined in [regions.NAME].",
+            )
 
 
 def _without_options(error: UsageError) -> str:

@@ -9,13 +9,14 @@ from dataclasses import replace
 from pathlib import Path as FilePath
 from typing import Any
 
-from unturn.errors import UsageError, close_matches
+from unturn.errors import UsageError
 from unturn.pipeline import StrainOptions
-from unturn.verdicts import keys as k
-from unturn.verdicts.keys import REQUIRED, Key, Lines, Path, Source
+from unturn.verdicts import kinds as k
+from unturn.verdicts.keys import Lines, Path, Source, key_path, read_table
+from unturn.verdicts.kinds import REQUIRED, Key
 from unturn.verdicts.limit import Limits
 from unturn.verdicts.preconditions import PRECONDITIONS
-from unturn.verdicts.read_limit import read_limit
+from unturn.verdicts.read_limit import check_names, read_limit
 from unturn.verdicts.region_kinds import REFERENCES, REGION_KINDS, WHOLE, RegionSpec
 
 SCHEMA = "unturn.limits/1"
@@ -104,9 +105,9 @@ def parse_limits(raw: bytes, name: str) -> Limits:
         said = str(error) if not isinstance(error, RecursionError) else "nested too deep"
         raise UsageError(f"{name}: not a TOML file: {said}. Correct it there.") from None
     source = Source(name, Lines(text, data))
-    found = k.read_table(source, (), data, FILE_KEYS)
-    required = k.read_table(source, ("result",), found["result"], RESULT_KEYS)
-    reading = k.read_table(source, ("reading",), found["reading"], READING_KEYS)
+    found = read_table(source, (), data, FILE_KEYS)
+    required = read_table(source, ("result",), found["result"], RESULT_KEYS)
+    reading = read_table(source, ("reading",), found["reading"], READING_KEYS)
     options = _options(required, reading)
     regions = _regions(source, found["regions"])
     written = _tables(source, found["limits"])
@@ -116,6 +117,8 @@ def parse_limits(raw: bytes, name: str) -> Limits:
             f"it says {found['number_of_limits']}, and the file has {len(written)} [[limits]] tables: it was cut off or "
             "merged wrongly, or the number must be corrected.",
         )
+    if isinstance(required["small_strain"], dict):
+        check_names(source, ("result", "small_strain"), required["small_strain"], regions)
     limits = []
     seen: dict[str, Path] = {}
     for position, table in enumerate(written):
@@ -123,7 +126,7 @@ def parse_limits(raw: bytes, name: str) -> Limits:
         for limit in read_limit(source, place, table, regions, options):
             if limit.id in seen:
                 raise source.error(
-                    (*place, "id"), f"{limit.id!r} is also the id of {k.key_path(seen[limit.id])}."
+                    (*place, "id"), f"{limit.id!r} is also the id of {key_path(seen[limit.id])}."
                 )
             seen[limit.id] = place
             limits.append(limit)
@@ -161,7 +164,7 @@ def _regions(source: Source, tables: Any) -> dict[str, RegionSpec]:
             raise source.error(
                 place, "a region's name has letters, digits, '_', '.' and '-' only, and is not 'whole'."
             )
-        read = k.read_table(source, place, table, REGION_KEYS)
+        read = read_table(source, place, table, REGION_KEYS)
         conditions = {key: read[key] for key in REGION_KINDS if read[key] is not None}
         if not conditions:
             raise source.error(place, f"the region has no condition. Give one of {', '.join(REGION_KINDS)}.")
@@ -173,14 +176,8 @@ def _regions(source: Source, tables: Any) -> dict[str, RegionSpec]:
 
 def _check_references(source: Source, spec: RegionSpec, regions: Mapping[str, RegionSpec]) -> None:
     """Refuse names of regions that do not exist, and regions that name themselves in the end."""
-    known = [*regions, WHOLE]
     for key in REFERENCES:
-        for name in spec.conditions.get(key, ()):
-            if name not in known:
-                raise source.error(
-                    ("regions", spec.name, key),
-                    f"no region is called {name!r}.{close_matches(name, known)} Regions: {', '.join(known)}.",
-                )
+        check_names(source, ("regions", spec.name, key), spec.conditions.get(key, ()), regions)
     reached: list[str] = []
     waiting = [spec.name]
     while waiting:

@@ -13,7 +13,7 @@ from unturn.kinematics._symmetric import Floats
 from unturn.source import Source
 from unturn.statistics import weighted_percentiles
 from unturn.verdicts.limit import Limit
-from unturn.verdicts.units import CELLS, SHARE, Unit
+from unturn.verdicts.units import COUNT, SHARE, Unit, unit_words
 
 
 @dataclass(frozen=True, eq=False)
@@ -171,6 +171,17 @@ def _none(sample: Sample, limit: Limit, got: Got, ends: list[float]) -> float:
     return math.nan
 
 
+def _stated(times: Callable[[Sample], float]) -> Spread:
+    """Return how far a mean or sum may be off: known only where the limit states it for every value."""
+
+    def spread(sample: Sample, limit: Limit, got: Got, ends: list[float]) -> float:
+        if limit.plus_minus is None:
+            return math.nan
+        return times(sample) * limit.unit.to_base(limit.plus_minus)
+
+    return spread
+
+
 def _moved(take: Callable[[Sample, Limit, float], float]) -> Spread:
     """Return how far a statistic goes when its threshold is moved by the plus and minus."""
 
@@ -185,7 +196,7 @@ def _moved(take: Callable[[Sample, Limit, float], float]) -> Spread:
 
 def _threshold_words(limit: Limit) -> str:
     side = "above" if limit.above is not None else "below"
-    return f"{side} {limit.threshold:g} {limit.unit.name}"
+    return f"{side} {limit.threshold:g} {unit_words(limit.unit)}".rstrip()
 
 
 _PLAIN = Source("practice", "extremes, mean and sum of values")
@@ -202,16 +213,16 @@ STATISTICS: dict[str, Statistic] = {
                   per_cell="at_least"),
         Statistic("largest_magnitude", "largest value without its sign", lambda v: "largest magnitude",
                   _largest_magnitude, _added, _PLAIN, extreme=True, per_cell="at_most", magnitude=True),
-        Statistic("mean", "mean, weighted by volume", lambda v: "mean", _mean, _none, _WEIGHTED),
-        Statistic("sum", "sum of the values of the cells, each counted once", lambda v: "sum", _sum, _none, _PLAIN),
+        Statistic("mean", "mean, weighted by volume", lambda v: "mean", _mean, _stated(lambda s: 1.0), _WEIGHTED),
+        Statistic("sum", "sum of the values, each counted once", lambda v: "sum", _sum, _stated(lambda s: float(len(s.values))), _PLAIN),
         Statistic("percentile", "smallest value that `percent` % of the volume do not exceed",
                   lambda v: f"{v.percent:g} % of the volume below", _percentile, _added, _WEIGHTED, needs="percent"),
         Statistic("share", "share of the volume `above` (or `below`) a value; bounds in percent of the volume",
                   lambda v: f"share of volume {_threshold_words(v)}", _crossing(_share), _moved(_share), _WEIGHTED,
                   needs="threshold", unit=SHARE),
-        Statistic("count", "number of cells `above` (or `below`) a value; bounds in cells",
-                  lambda v: f"number of cells {_threshold_words(v)}", _crossing(_count), _moved(_count), _PLAIN,
-                  needs="threshold", unit=CELLS),
+        Statistic("count", "number of cells (nodes, faces) `above` (or `below`) a value",
+                  lambda v: f"count {_threshold_words(v)}", _crossing(_count), _moved(_count), _PLAIN,
+                  needs="threshold", unit=COUNT),
         Statistic("spread", "largest less smallest value of the region, in one step", lambda v: "largest less smallest",
                   _spread_of_region, _added, _PLAIN, extreme=True),
         Statistic("range", "largest less smallest value over the steps, of the cell where that is largest",

@@ -54,11 +54,17 @@ UNITS: dict[str, Unit] = {
 
 SHARE = Unit("percent of volume", "share", lambda x: x / 100.0, lambda x: x * 100.0, _SI)
 """Unit of a share of the volume: a statistic has it, no limit writes it."""
-CELLS = Unit("cells", "number", _SAME, _SAME, Source("practice", "a count"))
+
+COUNT = UNITS["number"]
 """Unit of a count."""
 
 OF_MEASURE = {"strain": "strain", "radian": "angle", "1": "number"}
 """The quantity of a unit of `unturn.measures.MEASURES`."""
+
+
+def unit_words(unit: Unit) -> str:
+    """Return a unit behind a number; empty for a plain number."""
+    return "" if unit.quantity == "number" else unit.name
 
 
 def shown_in(unit: Unit, value: float, bound: float, written: float) -> float:
