@@ -34,7 +34,7 @@ class Opened(Protocol):
         ...
 
 
-@dataclass(frozen=True)
+@dataclass
 class InMemory:
     """A result in memory as if it were a file."""
 
@@ -130,7 +130,7 @@ class _Run:
         self.n = 1 if self.times is None else len(self.times)
         self.needed = needed_steps(limits, self.n)
         self.plain = [v for v in limits.limits if not STATISTICS[v.statistic].over_steps]
-        self.over = OverSteps([v for v in limits.limits if STATISTICS[v.statistic].over_steps])
+        self.over = OverSteps([v for v in limits.limits if STATISTICS[v.statistic].over_steps], self.times)
         self.measured: dict[str, list[Measured]] = {v.id: [] for v in limits.limits}
         self.seen = evidence(limits, opened.path, self.times)
         self.unusable: UnturnError | None = None

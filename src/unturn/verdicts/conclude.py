@@ -91,14 +91,15 @@ def conclude(
         elif not errors and not stopped:
             message = "; ".join(t for t in (state, message, f"waived {until}") if t)
             details["waived"], state = state, "waived"
-    return _finding(limit, group, m, state, message + _left_out_words(limit, m, bool(message)), details)
+    said = (message, m.note, _left_out_words(limit, m))
+    return _finding(limit, group, m, state, "; ".join(t for t in said if t), details)
 
 
-def _left_out_words(limit: Limit, m: Measured, more: bool) -> str:
+def _left_out_words(limit: Limit, m: Measured) -> str:
     if m.left_out is None or not m.left_out.get("cells"):
         return ""
     n, largest = m.left_out["cells"], m.left_out.get("largest")
-    said = f"{'; ' if more else ''}{n} cell{'s' * (n != 1)} left out of {limit.region}"
+    said = f"{n} cell{'s' * (n != 1)} left out of {limit.region}"
     if largest is None:
         return said
     where = place_text(

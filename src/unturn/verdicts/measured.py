@@ -41,6 +41,8 @@ class Measured:
         Why it is not tested; empty when it is.
     doubts
         Why it is undecided even inside its bound.
+    note
+        What else there is to say of it.
     left_out
         What the region names and leaves out.
     """
@@ -58,6 +60,7 @@ class Measured:
     missing: int = 0
     error: str = ""
     doubts: tuple[str, ...] = ()
+    note: str = ""
     left_out: dict[str, Any] | None = None
 
 
@@ -192,7 +195,7 @@ def _finish(step: Step, p: _Pending, certain: list[Certainty]) -> Measured:
     where = step.place(p.selection.column, int(p.selection.index[p.got.ends[0][0]])) if p.got.ends else when
     return Measured(
         step.shown, step.time, p.got.value, statistic.spread(p.sample, limit, p.got, ends), low, high, low_written,
-        high_written, where, len(p.selection.values), p.selection.missing, "", tuple(doubts), p.left_out,
+        high_written, where, len(p.selection.values), p.selection.missing, "", tuple(doubts), "", p.left_out,
     )  # fmt: skip
 
 

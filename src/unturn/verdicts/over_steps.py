@@ -16,6 +16,7 @@ from unturn.kinematics._symmetric import Floats
 from unturn.same_mesh import ReferenceMesh
 from unturn.tensor_range import TensorRange
 from unturn.verdicts.columns import Column, NoValues
+from unturn.verdicts.finding import Place
 from unturn.verdicts.limit import Limit, Quantity
 from unturn.verdicts.measured import Measured, measure_all
 from unturn.verdicts.region_select import NoRegion
@@ -25,8 +26,8 @@ from unturn.verdicts.step import Step
 class OverSteps:
     """Takes one step after the other for the limits that are of all of them; used as a context manager."""
 
-    def __init__(self, limits: Sequence[Limit]) -> None:
-        self.limits = limits
+    def __init__(self, limits: Sequence[Limit], times: tuple[float, ...] | None) -> None:
+        self.limits, self._times = limits, times
         self._stack = contextlib.ExitStack()
         self._mesh: ReferenceMesh | None = None
         self._last: Step | None = None
@@ -106,8 +107,12 @@ class OverSteps:
         cell = measured.place.get("cell")
         if measured.error or cell is None:
             return measured
-        later = int(made_by[cell].max())
-        return replace(measured, step=later, time=None, place={**measured.place, "step": later, "time": None})
+        first, later = sorted(int(s) for s in made_by[cell])
+        time = None if self._times is None else self._times[later]
+        where: Place = {**measured.place, "step": later, "time": time}
+        return replace(
+            measured, step=later, time=time, place=where, note=f"between steps {first} and {later}"
+        )
 
 
 class _Numbers:
