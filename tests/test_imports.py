@@ -36,6 +36,7 @@ LAYERS = (
     ("envelope_text", "convergence_text"),
     ("_api",),
     ("verdicts", "gauges", "pictures"),
+    ("testing",),
     ("_accessor", "__init__"),
     ("cli", "__main__"),
 )

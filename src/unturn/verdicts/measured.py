@@ -122,9 +122,9 @@ def _refused(step: Step, limit: Limit, selection: Selection) -> str:
 
 def _based(limit: Limit, values: Floats) -> Floats:
     """Return values as they are computed: strain without a unit, radian."""
-    if limit.stored_in is None or limit.stored_in.to_base(1.0) == 1.0:
+    if limit.stored_in is None or limit.stored_in.per_base == 1.0:
         return values
-    return np.asarray(limit.stored_in.to_base(values))  # type: ignore[arg-type]
+    return limit.stored_in.to_base(values)
 
 
 def _held_against(
@@ -138,7 +138,7 @@ def _held_against(
         low, high = (None if b is None else unit.to_base(b) for b in (limit.at_least, limit.at_most))
         return statistic.compute(sample, limit), (low, high, limit.at_least, limit.at_most)
     written = _bounds_of(step, selection, array)
-    bounds = np.asarray(limit.unit.to_base(written))  # type: ignore[arg-type]
+    bounds = limit.unit.to_base(written)
     values = np.abs(sample.values) if statistic.magnitude else sample.values
     upper = limit.at_most_array is not None
     room = bounds - values if upper else values - bounds
