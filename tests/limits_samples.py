@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import datetime
+import json
 from collections.abc import Mapping, Sequence
 from pathlib import Path
 from typing import Any
@@ -54,7 +55,7 @@ def toml(value: Any) -> str:
     if isinstance(value, bool):
         return str(value).lower()
     if isinstance(value, str):
-        return '"' + value.replace("\\", "\\\\").replace('"', '\\"') + '"'
+        return json.dumps(value)
     if isinstance(value, Mapping):
         return "{ " + ", ".join(f"{toml(str(k))} = {toml(v)}" for k, v in value.items()) + " }"
     if isinstance(value, list | tuple):
@@ -112,8 +113,9 @@ def checked_series(series: Series, text: str) -> dict[str, Finding]:
 
 def one(result: Result, limit: Mapping[str, Any], **more: Any) -> Finding:
     """Return the verdict on the one limit of a file."""
-    found = checked(result, written({"id": "it", **limit}, **more)).findings
-    return next(f for f in found if f.id == "it")
+    limit = {"id": "it", **limit}
+    found = checked(result, written(limit, **more)).findings
+    return next(f for f in found if f.id == limit["id"])
 
 
 def write(path: Path, text: str) -> Path:
