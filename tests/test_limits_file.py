@@ -42,7 +42,9 @@ def without(limit: dict[str, Any], *keys: str, **more: Any) -> dict[str, Any]:
 
 
 def test_a_file_says_what_is_in_it() -> None:
-    limits = parsed(written({**GOOD, "waiver": WAIVER}, ARRAY, regions=REGIONS, result={"solve": "linear", "steps": 3}))
+    limits = parsed(
+        written({**GOOD, "waiver": WAIVER}, ARRAY, regions=REGIONS, result={"solve": "linear", "steps": 3})
+    )
     assert [v.id for v in limits.limits] == ["pull", "v"]
     assert limits.written == 2
     assert limits.required == {"steps": 3}
@@ -153,7 +155,10 @@ def test_a_missing_key_is_named(key: str) -> None:
         ({**ARRAY, "frame": "cylindrical z"}, "components of an array of the file are as they are stored"),
         ({**ARRAY, "stored_in": "degree"}, "degree and number are units of different things"),
         ({**ARRAY, "plus_minus": -1}, "expected a number not below zero"),
-        ({**GOOD, "measure": "strain", "statistic": "tensor_range", "base": "almansi", "component": ""}, "expected a text"),
+        (
+            {**GOOD, "measure": "strain", "statistic": "tensor_range", "base": "almansi", "component": ""},
+            "expected a text",
+        ),
     ],
     ids=lambda c: str(c)[:40],
 )
@@ -163,9 +168,14 @@ def test_keys_that_do_not_fit_each_other(limit: dict[str, Any], said: str) -> No
 
 def test_tensor_ranges_are_of_tensors() -> None:
     limit = without(GOOD, "component", statistic="tensor_range")
-    assert "'tensor_range' is of the measure 'strain'" in refused({**limit, "measure": "rotation", "unit": "degree"})
+    assert "'tensor_range' is of the measure 'strain'" in refused(
+        {**limit, "measure": "rotation", "unit": "degree"}
+    )
     assert "but almansi" in refused({**limit, "measure": "strain", "base": "almansi"})
-    assert parsed(written({**limit, "measure": "strain", "base": "hencky"})).limits[0].quantity.name == "strain_hencky"
+    assert (
+        parsed(written({**limit, "measure": "strain", "base": "hencky"})).limits[0].quantity.name
+        == "strain_hencky"
+    )
 
 
 @pytest.mark.parametrize(
@@ -217,7 +227,10 @@ def test_a_mistake_elsewhere_is_told_with_its_place(more: dict[str, Any], said: 
 
 def test_measures_of_a_linear_solve_are_small_ones() -> None:
     text = refused({**GOOD, "base": "hencky"}, result={"solve": "linear"})
-    assert "limits[1].base: principal_strain_hencky is a finite measure, and [result] states a linear solve" in text
+    assert (
+        "limits[1].base: principal_strain_hencky is a finite measure, and [result] states a linear solve"
+        in text
+    )
 
 
 @pytest.mark.parametrize(
@@ -226,7 +239,10 @@ def test_measures_of_a_linear_solve_are_small_ones() -> None:
         ("", "the key 'schema' is missing"),
         ("limits = 5", "the key 'schema' is missing"),
         (f'schema = "{SCHEMA}"\nnumber_of_limits = 1', "the key 'limits' is missing"),
-        (f'schema = "{SCHEMA}"\nnumber_of_limits = 1\nlimits = []', "there is no limit: nothing would be tested"),
+        (
+            f'schema = "{SCHEMA}"\nnumber_of_limits = 1\nlimits = []',
+            "there is no limit: nothing would be tested",
+        ),
         (f'schema = "{SCHEMA}"\nnumber_of_limits = 1\n[limits]\nid = "a"', "two brackets on each side"),
         (f'schema = "{SCHEMA}"\nnumber_of_limits = 1\nlimits = [1]', "limits[1]: expected a table, found 1"),
         ('schema = "unturn.limits/2"\nnumber_of_limits = 1', 'schema: expected one of "unturn.limits/1"'),
@@ -257,7 +273,10 @@ def test_two_limits_of_one_id_are_refused() -> None:
 def test_one_limit_in_several_regions_is_one_verdict_each() -> None:
     bounds = {"region": ["arm", "foot"], "at_most": {"arm": 1000, "foot": 400}}
     limits = parsed(written({**GOOD, **bounds}, regions=REGIONS)).limits
-    assert [(v.id, v.region, v.at_most) for v in limits] == [("pull/arm", "arm", 1000.0), ("pull/foot", "foot", 400.0)]
+    assert [(v.id, v.region, v.at_most) for v in limits] == [
+        ("pull/arm", "arm", 1000.0),
+        ("pull/foot", "foot", 400.0),
+    ]
     same = parsed(written({**GOOD, "region": ["arm", "foot"]}, regions=REGIONS)).limits
     assert [v.at_most for v in same] == [1000.0, 1000.0]
 
@@ -279,13 +298,31 @@ def test_what_cannot_be_read_is_wrong_usage(tmp_path: Path) -> None:
 MESH = row([5e-4, -2e-4, 3e-4], v=[1.0, 2.0, 3.0], part=[1, 1, 2])
 SOUND = written(
     {**GOOD, "accept": ["plus-minus", "singular"]},
-    {**GOOD, "id": "low", "component": "3", "statistic": "minimum", "at_least": -1e4, "region": "arm",
-     "accept": ["plus-minus"]},
+    {
+        **GOOD,
+        "id": "low",
+        "component": "3",
+        "statistic": "minimum",
+        "at_least": -1e4,
+        "region": "arm",
+        "accept": ["plus-minus"],
+    },
     ARRAY,
-    {**ARRAY, "id": "share", "statistic": "share", "above": 2.5, "at_most": {"arm": 50, "foot": 100}, "region": ["arm", "foot"]},
+    {
+        **ARRAY,
+        "id": "share",
+        "statistic": "share",
+        "above": 2.5,
+        "at_most": {"arm": 50, "foot": 100},
+        "region": ["arm", "foot"],
+    },
     {**ARRAY, "id": "p", "statistic": "percentile", "percent": 99, "waiver": WAIVER},
     result={"cells": 3, "no_nan": True, "no_tangled": True, "solve": "linear", "small_strain": "marginal"},
-    regions={**REGIONS, "all": {"any_of": ["arm", "foot"]}, "ball": {"sphere": {"center": [0, 0, 0], "radius": 9}}},
+    regions={
+        **REGIONS,
+        "all": {"any_of": ["arm", "foot"]},
+        "ball": {"sphere": {"center": [0, 0, 0], "radius": 9}},
+    },
 ).replace("[result]", "title = '''sound \\' file'''\n\n[result]")
 IDS = {"pull", "low", "v", "share/arm", "share/foot", "p"}
 
@@ -331,7 +368,11 @@ def _corrupted(raw: bytes, random_: random.Random) -> bytes:
     if kind == 1:
         return raw[:a] + raw[a + random_.randrange(1, 30) :]
     if kind == 2:
-        return raw[:a] + random_.choice([b"#", b'"', b'"""', b"'''", b"[", b"=", b"\n", b"[[limits]]\n", b"nan"]) + raw[a:]
+        return (
+            raw[:a]
+            + random_.choice([b"#", b'"', b'"""', b"'''", b"[", b"=", b"\n", b"[[limits]]\n", b"nan"])
+            + raw[a:]
+        )
     if kind == 3:
         return raw[:a]
     if kind == 4:
@@ -345,13 +386,35 @@ def _corrupted(raw: bytes, random_: random.Random) -> bytes:
 
 
 _LEAVES = st.one_of(
-    st.none(), st.booleans(), st.integers(), st.floats(), st.text(max_size=8), st.dates(), st.just({}), st.just([])
+    st.none(),
+    st.booleans(),
+    st.integers(),
+    st.floats(),
+    st.text(max_size=8),
+    st.dates(),
+    st.just({}),
+    st.just([]),
 )
 _VALUES = st.recursive(
     _LEAVES, lambda inner: st.one_of(st.lists(inner, max_size=3), st.dictionaries(st.text(max_size=5), inner, max_size=3)),
     max_leaves=6,
 )  # fmt: skip
-_KEYS = sorted({*GOOD, "region", "base", "at", "steps", "accept", "waiver", "warn_above", "at_least", "percent", "above", "x"})
+_KEYS = sorted(
+    {
+        *GOOD,
+        "region",
+        "base",
+        "at",
+        "steps",
+        "accept",
+        "waiver",
+        "warn_above",
+        "at_least",
+        "percent",
+        "above",
+        "x",
+    }
+)
 
 
 @settings(max_examples=60)

@@ -85,7 +85,7 @@ def test_no_kind_is_left_out() -> None:
         ({"tag": "part=7"}, "holds 0 computed cells"),
         ({"tag": "prat=1"}, "no cell array 'prat'. Did you mean 'part'?"),
         ({"where": {"array": "numbr", "above": 1}}, "no such array 'numbr'. Did you mean 'number'?"),
-        ({"where": {"array": "heat", "above": 1}}, 'both cells and nodes have an array \'heat\''),
+        ({"where": {"array": "heat", "above": 1}}, "both cells and nodes have an array 'heat'"),
         ({"where": {"array": "number", "on": "nodes", "above": 1}}, "no such array"),
         ({"where": {"array": "u", "above": 1}}, "not one number each"),
         ({"tag": "part=1", "cells_at_least": 33}, "holds 32 computed cells and must hold 33"),
@@ -97,7 +97,9 @@ def test_a_region_that_is_not_there_is_never_met(region: dict[str, Any], said: s
     found = one(MESH, {**SUM, "at_most": 1e9}, regions={"it": region})
     assert found.state == "error"
     assert said in found.message
-    above = one(MESH, {**SUM, "at_most": 1e9, "region": "top"}, regions={"it": region, "top": {"any_of": ["it"]}})
+    above = one(
+        MESH, {**SUM, "at_most": 1e9, "region": "top"}, regions={"it": region, "top": {"any_of": ["it"]}}
+    )
     assert above.state == "error"
 
 
@@ -135,14 +137,20 @@ def test_cells_of_lower_dimension_do_not_count() -> None:
     assert one(mixed, {**COUNT, "at_most": 8, "at_least": 8}, regions={"it": both}).state == "met"
 
 
-@pytest.mark.derived("at nodes a region has the nodes of its cells, each weighted by its share of their volume")
+@pytest.mark.derived(
+    "at nodes a region has the nodes of its cells, each weighted by its share of their volume"
+)
 def test_regions_at_nodes() -> None:
     depth = {"array": "depth", "at": "nodes", "unit": "number", "region": "it"}
     regions = {"it": {"box": {"from": [0, 0, 0], "to": [4, 4, 1]}}}  # the lowest layer: nodes at 0 and 1
     for statistic, more, value in (
         ("maximum", {}, 1.0), ("mean", {}, 0.5), ("count", {"above": -1}, 50.0), ("share", {"above": 0.5}, 50.0),
     ):  # fmt: skip
-        found = one(MESH, {**depth, "statistic": statistic, "at_most": value, "at_least": value, **more}, regions=regions)
+        found = one(
+            MESH,
+            {**depth, "statistic": statistic, "at_most": value, "at_least": value, **more},
+            regions=regions,
+        )
         assert (found.state, found.value) == ("met", value), statistic
     top = one(MESH, {**depth, "statistic": "maximum", "at_most": 0.5}, regions=regions)
     assert top.state == "exceeded"
@@ -150,7 +158,9 @@ def test_regions_at_nodes() -> None:
     assert "cell" not in top.place
 
 
-@pytest.mark.derived("u = 0.001 x: e_xx = 0.001 everywhere, whatever the location; u = 0.001 x^2: 0.002 x at nodes")
+@pytest.mark.derived(
+    "u = 0.001 x: e_xx = 0.001 everywhere, whatever the location; u = 0.001 x^2: 0.002 x at nodes"
+)
 @pytest.mark.parametrize("at", ["centroid", "mean", "nodes", "surface"])
 def test_every_location_sees_its_own_values(at: str) -> None:
     x = MESH.points[:, 0]
@@ -166,11 +176,19 @@ def test_every_location_sees_its_own_values(at: str) -> None:
     assert ("point" in found.place) is (at == "nodes")
 
 
-@pytest.mark.derived("u_r = 0.001 r about z: e_RR = 0.001; u_x of it alone is e_XX = 0.001 too, e_TT = 0.001, e_ZZ = 0")
+@pytest.mark.derived(
+    "u_r = 0.001 r about z: e_RR = 0.001; u_x of it alone is e_XX = 0.001 too, e_TT = 0.001, e_ZZ = 0"
+)
 @pytest.mark.parametrize("at", ["centroid", "nodes"])
 def test_components_in_a_frame(at: str) -> None:
     grown = MESH.with_arrays(point_data={"u": np.outer(1e-3 * MESH.points[:, 0], [1, 0, 0])})
-    limit = {"measure": "strain", "at": at, "statistic": "maximum", "unit": "microstrain", "accept": ["plus-minus"]}
+    limit = {
+        "measure": "strain",
+        "at": at,
+        "statistic": "maximum",
+        "unit": "microstrain",
+        "accept": ["plus-minus"],
+    }
     for component, value in (("11", 0.0), ("22", 1000.0), ("12", 0.0)):
         bounds = {"at_most": value + 1e-6, "at_least": value - 1e-6}
         found = one(grown, {**limit, "frame": "cartesian y 1,0,0", "component": component, **bounds})
