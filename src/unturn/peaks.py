@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
@@ -94,6 +95,7 @@ class Peaks:
         ones = np.ones(len(at[0]), dtype=np.int8)
         self.corners = sparse.coo_array((ones, at), shape=(n_cells, len(shares))).tocsr()
         self.cells = self.corners.T.tocsr()
+        self._known_rings: dict[int, list[Ints]] = {}
 
     def find(self, values: Floats, cells: Ints, smallest: bool = False) -> Peak:
         """Return the largest (smallest) of `values[cells]` as a peak.
@@ -122,7 +124,14 @@ class Peaks:
         shown = tuple(sign * m for m in means)
         return Peak(cell, float(values[cell]), point, distances, shown, near, far, bool(singular))
 
-    def next_peak(self, values: Floats, cells: Ints, peak: Peak, smallest: bool = False) -> Peak:
+    def next_peak(
+        self,
+        values: Floats,
+        cells: Ints,
+        peak: Peak,
+        smallest: bool = False,
+        suspected: Callable[[Peak], bool] = lambda peak: peak.singular,
+    ) -> Peak:
         """Return the most extreme peak of `cells` that is not suspected singular, away from `peak`.
 
         The cells of the first two rings around a suspected peak are left out, and so on with the next while that is
@@ -131,14 +140,14 @@ class Peaks:
         rest = np.zeros(len(values), dtype=bool)
         rest[cells] = True
         for _ in range(_MOST):
-            if peak.cell < 0 or not peak.singular:
+            if peak.cell < 0 or not suspected(peak):
                 return peak
             share, _ = self._towards(-values if smallest else values, peak.cell)
             for ring in self._rings(share)[:2]:
                 rest[ring] = False
             rest[peak.cell] = False
             peak = self.find(values, np.flatnonzero(rest), smallest)
-        return peak if not peak.singular else self.find(values, np.zeros(0, dtype=np.int64), smallest)
+        return peak if not suspected(peak) else self.find(values, np.zeros(0, dtype=np.int64), smallest)
 
     def _towards(self, signed: Floats, cell: int) -> tuple[int, Profile]:
         """Return the corner of a cell towards which values grow most, and the rings around it."""
@@ -153,6 +162,11 @@ class Peaks:
         return float((weight * np.nan_to_num(values[cells])).sum() / weight.sum())
 
     def _rings(self, share: int) -> list[Ints]:
+        if share not in self._known_rings:
+            self._known_rings[share] = self._find_rings(share)
+        return self._known_rings[share]
+
+    def _find_rings(self, share: int) -> list[Ints]:
         inside = np.zeros(0, dtype=np.int64)
         nodes = np.array([share], dtype=np.int64)
         found = []

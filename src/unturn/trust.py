@@ -11,6 +11,7 @@ from collections.abc import Iterator
 from dataclasses import dataclass
 from itertools import pairwise
 from threading import Lock
+from typing import Literal
 
 import numpy as np
 from numpy.typing import NDArray
@@ -21,11 +22,13 @@ from unturn.gradient import (
     Plane,
     Samples,
     chunk_ranges,
+    mean_gradient,
     over_chunks,
     sample_points,
     with_thickness_stretch,
 )
 from unturn.kinematics._finite import Finite
+from unturn.kinematics._motion import rotation_vector
 from unturn.kinematics._symmetric import Floats
 from unturn.model import Model, ModelBlock
 from unturn.recovery import Recovered
@@ -94,7 +97,12 @@ class StrainError:
         return 100.0 * float(np.sqrt(error / (strain + error))) if strain + error > 0 else float("nan")
 
 
-def strain_error(recovered: Recovered, threads: int | None = None, base: str = "") -> StrainError:
+def strain_error(
+    recovered: Recovered,
+    threads: int | None = None,
+    base: str = "",
+    at: Literal["centroid", "mean"] = "centroid",
+) -> StrainError:
     """Return how far the recovered strain departs from that of the elements.
 
     Parameters
@@ -104,7 +112,11 @@ def strain_error(recovered: Recovered, threads: int | None = None, base: str = "
     threads
         None: all processors.
     base
-        Of which strain: empty for the small one, or a finite base such as ``hencky``; solids and plane meshes only.
+        Of which strain: empty for the small one, or a finite base such as ``hencky``; solids and plane meshes only. Also
+        ``rotation``, the small rotation vector, and ``turn``, R over the root of two: the norm of the difference of two is
+        twice the sine of half the angle between them.
+    at
+        What `plus_minus` is the bound of: the value at the centroid, or that of the mean of the gradient.
 
     Notes
     -----
@@ -124,7 +136,7 @@ def strain_error(recovered: Recovered, threads: int | None = None, base: str = "
     for block, cells, out in zip(model.blocks, shares.cells, reach):
         if block.row is None:
             continue
-        job = _Job(model, block, cells, nodal, recovered.usable[block.index], base)
+        job = _Job(model, block, cells, nodal, recovered.usable[block.index], base, at)
 
         def work(a: int, b: int, job: _Job = job, out: Floats = out) -> None:
             with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
@@ -157,9 +169,18 @@ def strain_components(H: Floats, plane: Plane | None) -> Floats:
 
 
 def _components(H: Floats, plane: Plane | None, base: str) -> Floats:
-    """Return what `strain_components` does, of a finite strain where a base is given."""
+    """Return what `strain_components` does, of a finite strain or of the rotation where that is asked for."""
     if not base:
         return strain_components(H, plane)
+    if base == "rotation":
+        return rotation_vector(H)
+    if plane is not None and plane.model is None:
+        H = H.copy()
+        H[plane.normal, plane.normal] = 0.0
+    if base == "turn":
+        with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
+            turn: Floats = Finite(with_thickness_stretch(H, plane)).turn.reshape(9, -1)
+        return turn * np.sqrt(0.5)
     with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
         e: Floats = getattr(Finite(with_thickness_stretch(H, plane)), base)
     return e * _ROOTS[:, None]
@@ -187,6 +208,7 @@ class _Job:
         nodal: Floats,
         usable: NDArray[np.bool_],
         base: str,
+        at: str,
     ) -> None:
         assert block.row is not None
         self.base = base
@@ -195,7 +217,8 @@ class _Job:
         self.rule = rule_of_degree(row.shape, 2 * row.order)
         self.inside = sample_points(row, self.rule.points)
         self.nodes = sample_points(row, row.nodes)
-        self.center = sample_points(row, "centroid")
+        self.middle = sample_points(row, at)
+        self.mean = at == "mean" and len(self.middle.weights) > 1
         self.constant = _is_constant(row, model.plane)
 
     def strains(self, chunk: ElementChunk, where: Samples) -> Iterator[tuple[Floats, Floats]]:
@@ -222,7 +245,10 @@ class _Job:
         departure = np.stack(
             [norms(nodal[:, k] - e) for k, (e, _) in enumerate(self.strains(chunk, self.nodes))], 1
         )
-        middle, _ = next(self.strains(chunk, self.center))
+        if self.mean:
+            middle = _components(mean_gradient(chunk, self.middle)[0], self.model.plane, self.base)
+        else:
+            middle, _ = next(self.strains(chunk, self.middle))
         return (volume, error, strain), departure, norms(nodal - middle[:, None]).T
 
 

@@ -1,0 +1,128 @@
+"""How far single values of a step can be trusted: plus and minus, and whether a peak is suspected singular."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+
+from unturn.around import Asked, Trust, bound_of, trust_of
+from unturn.kinematics._symmetric import Floats
+from unturn.pipeline import Computed
+from unturn.trust import strain_error
+from unturn.verdicts.columns import Selection, one_component
+from unturn.verdicts.limit import Quantity
+from unturn.verdicts.step import Step
+from unturn.verdicts.units import Unit, unit_words
+from unturn.verdicts.wording import number
+
+
+@dataclass(frozen=True, eq=False)
+class Ask:
+    """One value of a selection.
+
+    Attributes
+    ----------
+    quantity
+        What it is of.
+    selection
+        Where it is from.
+    position
+        Its position there.
+    smallest
+        Whether the smallest was looked for.
+    extreme
+        Whether it is one value of its region that may be a singular peak.
+    unit
+        In which a sentence about it gives values.
+    """
+
+    quantity: Quantity
+    selection: Selection
+    position: int
+    smallest: bool
+    extreme: bool
+    unit: Unit
+
+
+@dataclass(frozen=True)
+class Certainty:
+    """Plus and minus of a value (NaN: not known), and a sentence when its peak is suspected singular."""
+
+    plus_minus: float = math.nan
+    singular: str = ""
+
+
+def certainties(step: Step, asked: Sequence[Ask]) -> list[Certainty]:
+    """Return how far each value can be trusted.
+
+    What must be recovered for it is recovered once for all values that are computed together. Arrays of the file have
+    none.
+    """
+    found = [Certainty()] * len(asked)
+    together: dict[int, list[int]] = {}
+    for k, ask in enumerate(asked):
+        if ask.selection.column.computed is not None and ask.selection.column.on != "faces":
+            together.setdefault(id(ask.selection.column.computed), []).append(k)
+    for members in together.values():
+        computed = asked[members[0]].selection.column.computed
+        assert computed is not None
+        answers = trust_of(
+            computed, [_at_cell(step, computed, asked[k]) for k in members], None, step.threads
+        )
+        at_nodes = _NodeBounds(computed, step)
+        for k, trust in zip(members, answers):
+            ask = asked[k]
+            plus_minus = at_nodes.of(ask) if ask.selection.column.on == "shares" else trust.plus_minus
+            found[k] = Certainty(plus_minus, _singular(step, trust, ask.unit) if ask.extreme else "")
+    return found
+
+
+def _at_cell(step: Step, computed: Computed, ask: Ask) -> Asked:
+    """Return the question about a value at a cell; of a value at a node, about the extreme at centroids behind it."""
+    selection, name = ask.selection, ask.quantity.name
+    cells = selection.cells
+    if selection.column.on == "cells":
+        values, cell = selection.column.values, int(selection.index[ask.position])
+    else:
+        fields = computed.fields
+        labels = fields.components.get(name, ())
+        values = one_component(fields.arrays[name], labels, ask.quantity.component, name)
+        known = cells[np.isfinite(values[cells])]
+        best = np.argmin if ask.smallest else np.argmax
+        cell = int(known[best(values[known])]) if len(known) and ask.extreme else -1
+    # what is no extreme is no peak either: beside an infinite strain every value is negligible
+    size = step.largest_strain(selection) if ask.extreme else math.inf
+    return Asked(name, values, cells, cell, ask.smallest, size)
+
+
+def _singular(step: Step, trust: Trust, unit: Unit) -> str:
+    if not trust.singular:
+        return ""
+    said = f"suspected singular: it keeps growing towards {step.node_words(trust.point)}, so with a finer mesh too"
+    if trust.next_cell >= 0:
+        after = f"{number(unit.from_base(trust.next_value))} {unit_words(unit)}".rstrip()
+        said += f" (next peak away from it: {after}, {step.cell_words(trust.next_cell)})"
+    return said
+
+
+class _NodeBounds:
+    """Bounds of values at nodes; the error behind them is found when first asked for."""
+
+    def __init__(self, computed: Computed, step: Step) -> None:
+        self._computed, self._threads = computed, step.threads
+        self._errors: dict[tuple[bool, str], Floats] = {}
+
+    def of(self, ask: Ask) -> float:
+        nodes, name = self._computed.nodes, ask.quantity.name
+        assert nodes is not None
+        recovered = nodes.behind(name)
+        bound = bound_of(name, recovered.shares.model, self._computed.equivalent_poisson)
+        if bound is None:
+            return math.nan
+        key = recovered is nodes.of_finite, bound.base
+        if key not in self._errors:
+            self._errors[key] = strain_error(recovered, self._threads, bound.base).plus_minus_shares
+        return bound.of(float(self._errors[key][ask.selection.index[ask.position]]))

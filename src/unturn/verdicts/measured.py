@@ -1,0 +1,208 @@
+"""One limit held against one step: its value, its bounds there, and what stands in the way of a verdict."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Sequence
+from dataclasses import dataclass, field
+from typing import Any
+
+import numpy as np
+
+from unturn.errors import UnturnError
+from unturn.kinematics._symmetric import Floats
+from unturn.measures import MEASURES
+from unturn.verdicts.certainty import Ask, Certainty, certainties
+from unturn.verdicts.columns import NoValues, Selection
+from unturn.verdicts.finding import Place
+from unturn.verdicts.limit import Limit, Quantity
+from unturn.verdicts.region_select import NoRegion
+from unturn.verdicts.statistic import STATISTICS, Got, Sample
+from unturn.verdicts.step import Step
+
+
+@dataclass(frozen=True)
+class Measured:
+    """A limit in one step.
+
+    Attributes
+    ----------
+    step, time
+        Which; None where the result is no series.
+    value, plus_minus
+        As computed; NaN where there is none.
+    low, high
+        Bounds that it is held against, as computed, and as they are written.
+    place
+        Where.
+    count, missing
+        Values behind it, and those that are not finite.
+    error
+        Why it is not tested; empty when it is.
+    doubts
+        Why it is undecided even inside its bound.
+    left_out
+        What the region names and leaves out.
+    """
+
+    step: int | None
+    time: float | None
+    value: float = math.nan
+    plus_minus: float = math.nan
+    low: float | None = None
+    high: float | None = None
+    low_written: float | None = None
+    high_written: float | None = None
+    place: Place = field(default_factory=Place)
+    count: int = 0
+    missing: int = 0
+    error: str = ""
+    doubts: tuple[str, ...] = ()
+    left_out: dict[str, Any] | None = None
+
+
+@dataclass(frozen=True, eq=False)
+class _Pending:
+    """A limit whose value is known and whose certainty is not."""
+
+    limit: Limit
+    selection: Selection
+    sample: Sample
+    got: Got
+    bounds: tuple[float | None, float | None, float | None, float | None]
+    left_out: dict[str, Any] | None
+
+
+def measure_all(step: Step, limits: Sequence[Limit]) -> list[Measured]:
+    """Return every limit in one step; what is recovered for plus and minus is recovered once for all of them."""
+    pending = [_begin(step, limit) for limit in limits]
+    asked = [
+        Ask(p.limit.quantity, p.selection, at, smallest, STATISTICS[p.limit.statistic].extreme, p.limit.unit)
+        for p in pending
+        if isinstance(p, _Pending)
+        for at, smallest in p.got.ends
+    ]
+    found = iter(certainties(step, asked))
+    return [
+        p if isinstance(p, Measured) else _finish(step, p, [next(found) for _ in p.got.ends]) for p in pending
+    ]
+
+
+def _begin(step: Step, limit: Limit) -> _Pending | Measured:
+    try:
+        selection = step.select(limit.quantity, limit.region)
+        stop = _refused(step, limit, selection)
+        if stop:
+            return Measured(step.shown, step.time, error=stop, missing=selection.missing)
+        sample = Sample(_based(limit, selection.values), selection.weights)
+        got, bounds = _held_against(step, limit, selection, sample)
+        return _Pending(limit, selection, sample, got, bounds, _left_out(step, limit))
+    except (NoRegion, NoValues, UnturnError) as error:
+        return Measured(step.shown, step.time, error=str(error))
+
+
+def _refused(step: Step, limit: Limit, selection: Selection) -> str:
+    """Return why a selection cannot be tested; empty when it can."""
+    if not len(selection.values):
+        what = f"none of its {selection.missing} values is finite" if selection.missing else "it has no value"
+        return f"region {limit.region!r}: {what}"
+    only = step.mid_surface
+    if limit.quantity.measure and only is not None and "mid-surface" not in limit.accept:
+        n = int(only[selection.cells].sum())
+        if n:
+            return (
+                f"region {limit.region!r}: {n} cells are surfaces or lines in space, whose displacements hold the strain of "
+                'the mid-surface or axis only, not bending; where that is what the limit is for, accept = ["mid-surface"]'
+            )
+    return ""
+
+
+def _based(limit: Limit, values: Floats) -> Floats:
+    """Return values as they are computed: strain without a unit, radian."""
+    if limit.stored_in is None or limit.stored_in.to_base(1.0) == 1.0:
+        return values
+    return np.asarray(limit.stored_in.to_base(values))  # type: ignore[arg-type]
+
+
+def _held_against(
+    step: Step, limit: Limit, selection: Selection, sample: Sample
+) -> tuple[Got, tuple[float | None, float | None, float | None, float | None]]:
+    """Return the statistic and its bounds: low and high as computed, low and high as written."""
+    statistic = STATISTICS[limit.statistic]
+    array = limit.at_most_array or limit.at_least_array
+    if array is None:
+        unit = statistic.unit_of(limit)
+        low, high = (None if b is None else unit.to_base(b) for b in (limit.at_least, limit.at_most))
+        return statistic.compute(sample, limit), (low, high, limit.at_least, limit.at_most)
+    written = _bounds_of(step, selection, array)
+    bounds = np.asarray(limit.unit.to_base(written))  # type: ignore[arg-type]
+    values = np.abs(sample.values) if statistic.magnitude else sample.values
+    upper = limit.at_most_array is not None
+    room = bounds - values if upper else values - bounds
+    if not np.isfinite(room).all():
+        n = int((~np.isfinite(room)).sum())
+        raise NoValues(f"the array {array!r} has no finite bound for {n} of {len(room)} values")
+    at = int(room.argmin())
+    smallest = not upper or (statistic.magnitude and bool(sample.values[at] < 0))
+    got = Got(float(values[at]), ((at, smallest),))
+    bound, as_written = float(bounds[at]), float(written[at])
+    return got, (None, bound, None, as_written) if upper else (bound, None, as_written, None)
+
+
+def _bounds_of(step: Step, selection: Selection, array: str) -> Floats:
+    """Return the bound for each value of a selection; on free faces, that of the cell behind."""
+    on = selection.column.on
+    at = "nodes" if on in ("points", "shares") else "centroid"
+    values = step.column(Quantity(array, False, at=at)).values  # type: ignore[arg-type]
+    return values[selection.column.owners(selection.index)]
+
+
+def _left_out(step: Step, limit: Limit) -> dict[str, Any] | None:
+    """Return what the region names and leaves out, with its own peak."""
+    n = int(step.finder.find(limit.region).left_out.sum())
+    if not n or STATISTICS[limit.statistic].over_steps:
+        return None if not n else {"cells": n}
+    rest = step.select(limit.quantity, limit.region, left_out=True)
+    if not len(rest.values):
+        return {"cells": n, "without_value": rest.missing}
+    values = _based(limit, rest.values)
+    at = int(np.abs(values).argmax())
+    return {
+        "cells": n,
+        "largest": limit.unit.from_base(float(values[at])),
+        "without_value": rest.missing,
+        "place": dict(step.place(rest.column, int(rest.index[at]))),
+    }
+
+
+def _finish(step: Step, p: _Pending, certain: list[Certainty]) -> Measured:
+    limit, statistic = p.limit, STATISTICS[p.limit.statistic]
+    ends = [c.plus_minus for c in certain]
+    if limit.plus_minus is not None:
+        ends = [limit.unit.to_base(limit.plus_minus)] * len(certain)
+    doubts = []
+    if p.selection.missing:
+        n = p.selection.missing
+        doubts.append(f"{n} value{'s' * (n != 1)} of the region {'are' if n != 1 else 'is'} not finite")
+    if statistic.extreme and "singular" not in limit.accept:
+        doubts += [c.singular for c in certain if c.singular]
+    doubts += _turning(step, limit)
+    low, high, low_written, high_written = p.bounds
+    when: Place = {"step": step.shown, "time": step.time}
+    where = step.place(p.selection.column, int(p.selection.index[p.got.ends[0][0]])) if p.got.ends else when
+    return Measured(
+        step.shown, step.time, p.got.value, statistic.spread(p.sample, limit, p.got, ends), low, high, low_written,
+        high_written, where, len(p.selection.values), p.selection.missing, "", tuple(doubts), p.left_out,
+    )  # fmt: skip
+
+
+def _turning(step: Step, limit: Limit) -> list[str]:
+    """Return the doubt that a small strain contains turning."""
+    row = MEASURES.get(limit.quantity.name.removeprefix("surface_"))
+    small = limit.quantity.measure and row is not None and row.unit == "strain" and not row.finite
+    if not small or "turning" in limit.accept or limit.quantity.name == "small_strain_error":
+        return []
+    verdict = step.verdict(limit.region)
+    if verdict.level != "does not hold":
+        return []
+    return [f"the small strain does not hold in {limit.region}: {verdict.action}"]
