@@ -156,8 +156,8 @@ class _Comparison:
             _keep(written, difference, self.reference)
         if not arrays and all(f.passes() for f in lost):
             raise InputError(
-                f"{self.group}: there is no array to compare with {short_name(self.reference.path)}. Ask for measures of ours "
-                "with --measures, or look at what the files hold with 'unturn survey'."
+                f"{self.group}: there is no array to compare with {short_name(self.reference.path)}. Ask for measures of "
+                "ours with --measures, or look at what the files hold with 'unturn survey'."
             )
         kept = self.reference.with_arrays(
             point_data=written["point"], cell_data=written["cell"], field_data=written["field"]

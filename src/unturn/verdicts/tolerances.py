@@ -2,14 +2,16 @@
 
 from __future__ import annotations
 
-import math
 import tomllib
 from collections.abc import Iterable, Mapping, Sequence
-from dataclasses import dataclass, field, fields, replace
+from dataclasses import dataclass, field, replace
 from pathlib import Path
 from typing import Any, Literal, get_args
 
-from unturn.errors import InputError, UsageError, close_matches
+from unturn.errors import UsageError, close_matches
+from unturn.verdicts import kinds as k
+from unturn.verdicts.keys import Lines, Source, read_table
+from unturn.verdicts.kinds import REQUIRED, Key, Wrong
 
 SCHEMA = "unturn.tolerances/1"
 By = Literal["components", "norm"]
@@ -49,9 +51,27 @@ class Tolerance:
     sign: Sign = "fixed"
 
 
-KEYS = tuple(f.name for f in fields(Tolerance))
-_NUMBERS = ("absolute", "relative", "of_largest", "share")
-_WORDS: dict[str, tuple[str, ...]] = {"by": get_args(By), "sign": get_args(Sign)}
+_AT_LEAST_ZERO = k.number_kind("a number from 0 on", lambda x: x >= 0)
+_SHARE = k.number_kind("a share of the volume, from 0 to below 1", lambda x: 0 <= x < 1)
+
+ARRAY_KEYS = (
+    Key("absolute", _AT_LEAST_ZERO, "in the unit of the array"),
+    Key("relative", _AT_LEAST_ZERO, "share of the reference's size at the same place"),
+    Key("of_largest", _AT_LEAST_ZERO, "share of the reference's largest size in the region"),
+    Key("share", _SHARE, "share of the volume that may differ by more"),
+    Key("by", k.choice_kind(get_args(By)), "every component, or the norm of the difference"),
+    Key("sign", k.choice_kind(get_args(Sign)), "`free`: a vector and its opposite are the same"),
+)
+"""Keys of ``[default]`` and of ``[arrays.NAME]``."""
+
+_ANY = k.Kind("a table", lambda value: value)
+FILE_KEYS = (
+    Key("schema", k.choice_kind((SCHEMA,)), "version of the rules by which the file is read", REQUIRED),
+    Key("default", _ANY, "tolerances of every array", {}),
+    Key("arrays", _ANY, "tables `[arrays.NAME]`: what is another one for an array", {}),
+    Key("ignore", k.TEXTS, "arrays that are not compared", ()),
+)
+"""Keys of the file itself."""
 
 
 @dataclass(frozen=True)
@@ -113,11 +133,17 @@ class Tolerances:
         asked = (("absolute", absolute), ("relative", relative), ("of_largest", of_largest))
         for key, text in ((key, text) for key, texts in asked for text in texts):
             name, _, number = text.rpartition("=")
-            value = _number(_parsed(number), f"--{key.replace('_', '-')} {text}")
+            try:
+                value = _AT_LEAST_ZERO.read(float(number))
+            except (ValueError, Wrong):
+                raise UsageError(
+                    f"--{key.replace('_', '-')} {text}: {number!r} is no tolerance; it is {_AT_LEAST_ZERO.words}, as 1e-6 or "
+                    "NAME=1e-6."
+                ) from None
             if name:
                 arrays.setdefault(name, {})[key] = value
             else:
-                default = replace(default, **{key: value})  # type: ignore[arg-type]
+                default = replace(default, **{key: value})
         return Tolerances(default, arrays, self.ignore)
 
 
@@ -126,35 +152,23 @@ def read_tolerances(path: Path | str) -> Tolerances:
 
     Raises
     ------
-    InputError
-        The file cannot be read.
     UsageError
-        It is no TOML, or holds an unknown key, another kind of value, or a number that is no tolerance.
+        It cannot be read, is no TOML, or holds an unknown key, another kind of value, or a number that is no tolerance.
     """
     try:
         text = Path(path).read_bytes().decode()
+        data = tomllib.loads(text)
     except OSError as error:
-        raise InputError(
+        raise UsageError(
             f"{path}: the tolerances cannot be read: {error.strerror}. Check the name."
         ) from error
-    except (UnicodeDecodeError, ValueError) as error:
-        raise UsageError(f"{path}: not a TOML file ({error}). Correct it there.") from error
-    try:
-        data = tomllib.loads(text)
-    except (tomllib.TOMLDecodeError, RecursionError) as error:
-        raise UsageError(f"{path}: not a TOML file ({error}). Correct it there.") from error
-    return parse_tolerances(data, str(path))
+    except (ValueError, RecursionError) as error:  # no UTF-8, no TOML, or a path that none can be
+        raise UsageError(f"{path}: no TOML file ({error}). Correct it there.") from error
+    return _parsed(Source(str(path), Lines(text, data)), data)
 
 
-def parse_tolerances(data: Mapping[str, Any], where: str = "tolerances") -> Tolerances:
-    """Return the tolerances of the tables of such a file.
-
-    Parameters
-    ----------
-    data
-        ``{"default": {...}, "arrays": {NAME: {...}}, "ignore": [...]}``, with the fields of `Tolerance` as keys.
-    where
-        What messages call it.
+def parse_tolerances(data: Mapping[str, Any]) -> Tolerances:
+    """Return the tolerances of tables that say what such a file says; the schema may be left out.
 
     Raises
     ------
@@ -166,56 +180,19 @@ def parse_tolerances(data: Mapping[str, Any], where: str = "tolerances") -> Tole
     >>> parse_tolerances({"default": {"relative": 0.01}, "ignore": ["rank"]}).of("u").relative
     0.01
     """
-    _known_keys(data, ("schema", "default", "arrays", "ignore"), where)
-    schema = data.get("schema", SCHEMA)
-    if schema != SCHEMA:
-        raise UsageError(f"{where}: schema is {schema!r}; this program knows {SCHEMA!r}.")
-    default = _stated(data.get("default", {}), f"{where}: default")
-    arrays = data.get("arrays", {})
-    if not isinstance(arrays, Mapping):
-        raise UsageError(f"{where}: arrays is no table; write [arrays.NAME] and tolerances below it.")
-    stated = {name: _stated(table, f"{where}: arrays.{name}") for name, table in arrays.items()}
-    ignore = data.get("ignore", [])
-    if not isinstance(ignore, list | tuple) or not all(isinstance(name, str) for name in ignore):
-        raise UsageError(f"{where}: ignore is a list of array names, as ignore = ['rank'].")
-    return Tolerances(Tolerance(**default), stated, tuple(ignore))
+    tables = {"schema": SCHEMA, **data}
+    return _parsed(Source("tolerances", Lines("", tables)), tables)
 
 
-def _known_keys(table: Mapping[str, Any], known: Sequence[str], where: str) -> None:
-    for key in table:
-        if key not in known:
-            raise UsageError(
-                f"{where}: no key is called {key!r}.{close_matches(str(key), known)} Keys: {', '.join(known)}."
-            )
+def _parsed(source: Source, data: dict[str, Any]) -> Tolerances:
+    found = read_table(source, (), data, FILE_KEYS)
+    default = _stated(source, ("default",), found["default"])
+    if not isinstance(found["arrays"], Mapping):
+        raise source.error(("arrays",), "expected tables [arrays.NAME].")
+    arrays = {name: _stated(source, ("arrays", name), table) for name, table in found["arrays"].items()}
+    return Tolerances(Tolerance(**default), arrays, found["ignore"])
 
 
-def _stated(table: Any, where: str) -> dict[str, Any]:
-    if not isinstance(table, Mapping):
-        raise UsageError(f"{where} is no table; its keys are {', '.join(KEYS)}.")
-    _known_keys(table, KEYS, where)
-    return {key: _value(key, value, f"{where}.{key}") for key, value in table.items()}
-
-
-def _value(key: str, value: Any, where: str) -> float | str:
-    if key in _NUMBERS:
-        number = _number(value, where)
-        if key == "share" and number >= 1.0:
-            raise UsageError(f"{where} = {number:g}: a share of the volume lies from 0 to below 1.")
-        return number
-    if value not in _WORDS[key]:
-        raise UsageError(f"{where} = {value!r}: use {' or '.join(repr(w) for w in _WORDS[key])}.")
-    return str(value)
-
-
-def _parsed(text: str) -> float | str:
-    try:
-        return float(text)
-    except ValueError:
-        return text
-
-
-def _number(value: Any, where: str) -> float:
-    is_number = isinstance(value, int | float) and not isinstance(value, bool)
-    if not is_number or not 0.0 <= value < math.inf:
-        raise UsageError(f"{where}: {value!r} is no tolerance; it is a number from 0 on.")
-    return float(value)
+def _stated(source: Source, path: tuple[str, ...], table: Any) -> dict[str, Any]:
+    """Return the keys that a table states; what it does not is left to the default."""
+    return {key: v for key, v in read_table(source, path, table, ARRAY_KEYS).items() if v is not None}
