@@ -36,8 +36,7 @@ LAYERS = (
     ("envelope_text", "convergence_text"),
     ("_api",),
     ("verdicts", "gauges", "pictures"),
-    ("testing",),
-    ("_accessor", "__init__"),
+    ("_accessor", "testing", "__init__"),
     ("cli", "__main__"),
 )
 LEVEL = {name: level for level, names in enumerate(LAYERS) for name in names}

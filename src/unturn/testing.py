@@ -1,17 +1,25 @@
-"""For tests of results: assertions whose messages say what is exceeded, by how much and where."""
+"""Assertions on results for tests: what is found is told in the message."""
 
 from __future__ import annotations
 
 import datetime
+from dataclasses import replace
 from os import PathLike, fspath
 from pathlib import Path
+from typing import Any
 
 from unturn import io
+from unturn.errors import UsageError
 from unturn.result import Result
 from unturn.verdicts.check import InMemory, check_result
+from unturn.verdicts.comparison import compare, compare_files
 from unturn.verdicts.finding import Report
 from unturn.verdicts.read_limits import read_limits
 from unturn.verdicts.writers import text_report
+
+__all__ = ["assert_limits", "assert_results_close"]
+
+Given = Result | str | PathLike[str]
 
 
 def assert_limits(
@@ -40,7 +48,8 @@ def assert_limits(
     Raises
     ------
     AssertionError
-        A limit is exceeded, undecided or was not tested; the message is what ``unturn check`` prints.
+        A limit is exceeded, undecided or was not tested; the message names each with value, bound,
+        margin and place.
     UsageError
         The limits file cannot be right.
     InputError
@@ -78,6 +87,53 @@ def assert_limits(
         checked = check_result(io.open_result(result), read, name, today=today, threads=threads)
     if checked.unusable is not None:
         raise checked.unusable
-    report = Report("check", checked.findings, allow_undecided=allow_undecided)
-    if not report.passed:
-        raise AssertionError(f"{name} does not meet {read.path}\n{text_report(report)}")
+    _assert_passed(Report("check", checked.findings, allow_undecided=allow_undecided))
+
+
+def assert_results_close(result: Given, reference: Given, **options: Any) -> None:
+    """Fail unless a result is within tolerance of its reference.
+
+    Parameters
+    ----------
+    result, reference
+        Two results in memory, or the paths of two files.
+    **options
+        Those of `unturn.compare`: ``absolute``, ``relative``, ``tolerances``, ``arrays``, ``measures`` ...; for files also
+        ``step``: ``"last"``, ``"all"`` or a number.
+
+    Raises
+    ------
+    AssertionError
+        Something is beyond tolerance or undecided; the message names every such array with region, difference, tolerance
+        and place.
+    UsageError
+        A file and a result in memory are mixed, or options that do not fit.
+    InputError
+        A result that cannot be used.
+
+    Examples
+    --------
+    >>> import numpy as np
+    >>> from unturn import CellBlock, Result
+    >>> points = np.array([[0, 0, 0], [1, 0, 0], [0, 1, 0], [0, 0, 1.0]])
+    >>> block = CellBlock("tetra", np.array([[0, 1, 2, 3]]), np.array([0]))
+    >>> old, new = (Result(points, (block,), {"u": points * x}) for x in (1e-3, 1.02e-3))
+    >>> assert_results_close(new, old, relative=0.03)
+    """
+    if isinstance(result, Result) and isinstance(reference, Result):
+        _assert_passed(compare(result, reference, **options).report)
+    elif isinstance(result, Result) or isinstance(reference, Result):
+        raise UsageError(
+            "give two results in memory, or the paths of two files; unturn.read makes a result of a file."
+        )
+    else:
+        _assert_passed(compare_files(result, reference, **options))
+
+
+def _assert_passed(report: Report) -> None:
+    """Raise an AssertionError with every finding that does not pass."""
+    failed = tuple(f for f in report.findings if not f.passes(report.allow_undecided))
+    if failed:
+        others = len(report.findings) - len(failed)
+        notes = (*report.notes, f"{others} more findings pass") if others else report.notes
+        raise AssertionError("\n" + text_report(replace(report, findings=failed, notes=notes)))
