@@ -11,8 +11,8 @@ import numpy as np
 from unturn.errors import UnturnError
 from unturn.fields import CellDiagnostics
 from unturn.model import Model
-from unturn.pipeline import Computed, StrainOptions, compute
-from unturn.regions import Region
+from unturn.pipeline import Computed, StrainOptions, compute, computed_cells
+from unturn.regions import Region, find_regions
 from unturn.result import Result
 from unturn.rigid import RigidMotion
 from unturn.surface import SURFACE_MEASURES
@@ -141,6 +141,11 @@ class StepFields:
     def motions(self) -> tuple[RigidMotion, ...]:
         """The rigid motions that were taken out."""
         return tuple(r.motion for r in self.base.removals)
+
+    @cached_property
+    def groups(self) -> list[Region]:
+        """The parts of the file across whose borders nothing is recovered."""
+        return find_regions(self.model, computed_cells(self.model))
 
     @cached_property
     def mid_surface(self) -> Mask | None:
