@@ -453,9 +453,7 @@ def test_another_mesh_is_told_from_other_numbers() -> None:
 def test_a_linear_field_is_the_same_on_different_meshes(of_result: str, of_reference: str) -> None:
     a, b = box(3, of_result, skew=2.0), box(4, of_reference, skew=1.0)
     measures = ["strain", "rotation", "principal_strain", "strain_hencky", "finite_rotation"]
-    compared = unturn.compare(
-        a.result(u=linear(a.points)), b.result(u=linear(b.points)), measures=measures
-    )
+    compared = unturn.compare(a.result(u=linear(a.points)), b.result(u=linear(b.points)), measures=measures)
     assert compared.passed, compared.report
     assert states(compared)["mesh"] == "warning"
     assert found(compared, "point u in whole").details["outside"] == 0

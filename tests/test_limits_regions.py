@@ -13,40 +13,40 @@ from unturn.result import CellBlock, Result
 from unturn.verdicts.region_kinds import REGION_KINDS
 
 N = 4
-I, J, K = (a.ravel() for a in np.meshgrid(*[np.arange(N)] * 3, indexing="ij"))
-X, Y, Z = I + 0.5, J + 0.5, K + 0.5
+A, B, C = (a.ravel() for a in np.meshgrid(*[np.arange(N)] * 3, indexing="ij"))
+X, Y, Z = A + 0.5, B + 0.5, C + 0.5
 POINTS = grid(N).points
 MESH = replace(
-    grid(N, number=np.arange(N**3), part=(I > 1).astype(np.int32), heat=100.0 * I + K).with_arrays(
+    grid(N, number=np.arange(N**3), part=(A > 1).astype(np.int32), heat=100.0 * A + C).with_arrays(
         point_data={"depth": POINTS[:, 2], "heat": 0.0 * POINTS[:, 0]}
     ),
-    groups={"slab": np.flatnonzero(J == 2), "nothing": np.zeros(0, dtype=np.int64)},
+    groups={"slab": np.flatnonzero(B == 2), "nothing": np.zeros(0, dtype=np.int64)},
 )
 
 Mask = np.ndarray[Any, np.dtype[np.bool_]]
 CASES: list[tuple[dict[str, Any], Mask]] = [
-    ({"group": "slab"}, J == 2),
-    ({"tag": "part=1"}, I > 1),
+    ({"group": "slab"}, B == 2),
+    ({"tag": "part=1"}, A > 1),
     ({"box": {"from": [0, 0, 0], "to": [1.5, 2.5, 0.5]}}, (X <= 1.5) & (Y <= 2.5) & (Z <= 0.5)),
     ({"box": {"from": [0, 0, 0], "to": [1.4999999, 2.5, 0.5]}}, (X <= 0.5) & (Y <= 2.5) & (Z <= 0.5)),
     ({"cylinder": {"from": [2, 2, 0.5], "to": [2, 2, 2.5], "radius": 0.7072}}, (np.hypot(X - 2, Y - 2) < 1) & (Z <= 2.5)),
     ({"cylinder": {"from": [2, 2, 0.5], "to": [2, 2, 2.5], "radius": 0.7070}}, X < 0),
-    ({"cylinder": {"from": [0, 0.5, 0.5], "to": [2, 0.5, 0.5], "radius": 0.1}}, (J == 0) & (K == 0) & (X < 2)),
-    ({"sphere": {"center": [0.5, 0.5, 0.5], "radius": 1.0}}, I + J + K <= 1),
-    ({"sphere": {"center": [0.5, 0.5, 0.5], "radius": 0.9999999}}, I + J + K == 0),
-    ({"near": {"point": [0.5, 0.6, 0.7], "cells": 3, "within": 9}}, (I == 0) & (J + K <= 1)),
-    ({"near": {"point": [0.5, 0.6, 0.7], "cells": 3, "within": 0.5}}, I + J + K == 0),
-    ({"where": {"array": "heat", "on": "cells", "above": 100, "below": 300}}, (100 * I + K > 100) & (100 * I + K < 300)),
+    ({"cylinder": {"from": [0, 0.5, 0.5], "to": [2, 0.5, 0.5], "radius": 0.1}}, (B == 0) & (C == 0) & (X < 2)),
+    ({"sphere": {"center": [0.5, 0.5, 0.5], "radius": 1.0}}, A + B + C <= 1),
+    ({"sphere": {"center": [0.5, 0.5, 0.5], "radius": 0.9999999}}, A + B + C == 0),
+    ({"near": {"point": [0.5, 0.6, 0.7], "cells": 3, "within": 9}}, (A == 0) & (B + C <= 1)),
+    ({"near": {"point": [0.5, 0.6, 0.7], "cells": 3, "within": 0.5}}, A + B + C == 0),
+    ({"where": {"array": "heat", "on": "cells", "above": 100, "below": 300}}, (100 * A + C > 100) & (100 * A + C < 300)),
     ({"where": {"array": "number", "equals": 7}}, np.arange(N**3) == 7),
     ({"where": {"array": "number", "equals": [7, 9]}}, np.isin(np.arange(N**3), [7, 9])),
-    ({"where": {"array": "depth", "below": 2.5}}, K <= 1),
-    ({"where": {"array": "heat", "on": "nodes", "below": 1.0}}, I >= 0),
-    ({"tag": "part=1", "group": "slab"}, (I > 1) & (J == 2)),
-    ({"all_of": ["right", "slab"]}, (I > 1) & (J == 2)),
-    ({"any_of": ["right", "slab"]}, (I > 1) | (J == 2)),
-    ({"none_of": ["right", "slab"]}, (I <= 1) & (J != 2)),
-    ({"all_of": ["right"], "none_of": ["slab"]}, (I > 1) & (J != 2)),
-    ({"all_of": ["whole"], "none_of": ["mixed"]}, ~((I > 1) & (J != 2))),
+    ({"where": {"array": "depth", "below": 2.5}}, C <= 1),
+    ({"where": {"array": "heat", "on": "nodes", "below": 1.0}}, A >= 0),
+    ({"tag": "part=1", "group": "slab"}, (A > 1) & (B == 2)),
+    ({"all_of": ["right", "slab"]}, (A > 1) & (B == 2)),
+    ({"any_of": ["right", "slab"]}, (A > 1) | (B == 2)),
+    ({"none_of": ["right", "slab"]}, (A <= 1) & (B != 2)),
+    ({"all_of": ["right"], "none_of": ["slab"]}, (A > 1) & (B != 2)),
+    ({"all_of": ["whole"], "none_of": ["mixed"]}, ~((A > 1) & (B != 2))),
 ]  # fmt: skip
 OTHERS: dict[str, dict[str, Any]] = {
     "right": {"tag": "part=1"},
@@ -115,7 +115,7 @@ def test_what_is_left_out_is_told_with_its_peak(region: str) -> None:
     regions = {**OTHERS, "away": {"tag": "part=1", "none_of": ["slab"]}, "around": {"all_of": ["away"]}}
     limit = {"array": "number", "statistic": "maximum", "unit": "number", "at_most": 63, "region": region}
     found = one(MESH, limit, regions=regions)
-    left = np.flatnonzero((I > 1) & (J == 2))
+    left = np.flatnonzero((A > 1) & (B == 2))
     assert found.state == "met"
     assert f"{len(left)} cells left out of {region}: {left.max()} there, cell {left.max()}" in found.message
     assert found.details["left_out"]["cells"] == len(left)
@@ -201,4 +201,4 @@ def test_limits_share_what_is_computed() -> None:
     text = written(*limits, regions={"it": {"tag": "part=1"}})
     first, second = (checked(MESH, text).findings for _ in range(2))
     assert first == second
-    assert {(f.value, f.state) for f in first} == {(float(np.flatnonzero(I > 1).sum()), "met")}
+    assert {(f.value, f.state) for f in first} == {(float(np.flatnonzero(A > 1).sum()), "met")}

@@ -442,10 +442,8 @@ def test_displacements_are_measured_from_a_step() -> None:
 
 
 def test_a_measure_that_cannot_be_computed_stops_its_own_limits_only() -> None:
-    flat = Result(
-        np.array([[0, 0, 0], [1, 0, 0], [1, 1, 0], [0, 1, 0.0]]), (CellBlock("quad", np.array([[0, 1, 2, 3]]), np.array([0])),),
-        {"u": 1e-3 * np.array([[0, 0, 0], [1, 0, 0], [1, 1, 0], [0, 1, 0.0]])},
-    )  # fmt: skip
+    points = np.array([[0, 0, 0], [1, 0, 0], [1, 1, 0], [0, 1, 0.0]])
+    flat = Result(points, (CellBlock("quad", np.array([[0, 1, 2, 3]]), np.array([0])),), {"u": 1e-3 * points})
     limits = [{**PULL, "at": "mean"}, {**PULL, "id": "p", "measure": "principal_strain", "component": "1"}]
     found = {f.id: f for f in checked(flat, written(*limits)).findings}
     assert found["pull"].state == "met"
