@@ -27,7 +27,7 @@ from unturn.kinematics._finite import BASES
 from unturn.measures import DEFAULT_MEASURES, GEOMETRY, MEASURES, SMALL, Measure
 from unturn.series import SERIES_MEASURES
 
-SAMPLES = [p for p in (ROOT / "sample_meshes").iterdir() if p.suffix in (".vtu", ".xdmf", ".h5")]
+SAMPLES = [p for p in (ROOT / "sample_meshes").iterdir() if p.suffix in (".vtu", ".xdmf", ".h5", ".toml")]
 README, DOCS = ROOT / "README.md", ROOT / "docs"
 COMMANDS: dict[str, Any] = dict(get_command(app).commands)  # type: ignore[attr-defined]
 

@@ -188,6 +188,8 @@ def test_tensor_ranges_are_of_tensors() -> None:
         ({"result": {"no_nan": False}}, "result.no_nan: expected true, found false. Leave the key out"),
         ({"result": {"no_nan": 1}}, "result.no_nan: expected true, found 1"),
         ({"result": {"cells": 5, "cells_within_percent": 100}}, "result.cells_within_percent: expected"),
+        ({"result": {"cells_within_percent": 5}}, "result.cells_within_percent: it says nothing without 'cells'"),
+        ({"result": {"last_time_within": 5}}, "result.last_time_within: it says nothing without 'last_time'"),
         ({"result": {"solve": "lineer"}}, "Did you mean 'linear'"),
         ({"result": {"small_strain": "hold"}}, "Did you mean 'holds'"),
         ({"result": {"small_strain": {"arm": "does not hold"}}}, "result.small_strain: expected"),
@@ -371,7 +373,7 @@ def _corrupted(raw: bytes, random_: random.Random) -> bytes:
         raw[:a] + added + raw[a:],
         raw[:a],
         b"".join(lines[:i] + lines[j:]),
-        b"".join(lines[:i] + [lines[j]] + lines[i + 1 : j] + [lines[i]] + lines[j + 1 :]),
+        b"".join([*lines[:i], lines[j], *lines[i + 1 : j], lines[i], *lines[j + 1 :]]),
         b"".join(lines[:i] + lines[i:j] + lines[i:]),
         raw[:a] + raw[b:] + raw[a:b],
     )

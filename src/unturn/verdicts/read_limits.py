@@ -117,6 +117,11 @@ def parse_limits(raw: bytes, name: str) -> Limits:
             f"it says {found['number_of_limits']}, and the file has {len(written)} [[limits]] tables: it was cut off or "
             "merged wrongly, or the number must be corrected.",
         )
+    for row in PRECONDITIONS.values():
+        if row.belongs_to and required[row.key] is not None and required[row.belongs_to] is None:
+            raise source.error(
+                ("result", row.key), f"it says nothing without {row.belongs_to!r}, which is missing."
+            )
     if isinstance(required["small_strain"], dict):
         check_names(source, ("result", "small_strain"), required["small_strain"], regions)
     limits = []
