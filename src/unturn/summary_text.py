@@ -238,9 +238,9 @@ def _table(summary: Summary) -> list[str]:
         rows.append(
             ["99.9 % of volume below" + _base_words(shown[0]), *(_micro(_percentile(r)) for r in shown)]
         )
-    for label, name in (("det F, smallest to largest", "det_f"), ("stretch, smallest to largest", "stretch")):
-        if "det_f" in shown[0].statistics:
-            rows.append([label, *(_scatter(r, name) for r in shown)])
+    for label, name, which in _FACTORS:
+        if name in shown[0].statistics:
+            rows.append([label, *(_factor(r, name, which) for r in shown)])
     left = " left" if summary.removals else ""
     rows.append([f"largest rotation{left}, degree", *(_rotation(r) for r in shown)])
     lines = _aligned(rows)
@@ -341,11 +341,12 @@ def _coordinates(at: Sequence[float], digits: int) -> str:
     return ", ".join(f"{x + 0.0:.{digits}f}" if digits < 9 else f"{x:.4g}" for x in at)
 
 
-def _scatter(r: RegionSummary, name: str) -> str:
-    ends: tuple[tuple[str, Which], ...] = (("det_f", "minimum"), ("det_f", "maximum"))
-    if name == "stretch":
-        ends = ("stretch_3", "minimum"), ("stretch_1", "maximum")
-    return " to ".join(_factor(r, *end) for end in ends)
+_FACTORS: tuple[tuple[str, str, Which], ...] = (
+    ("det F, smallest", "det_f", "minimum"),
+    ("det F, largest", "det_f", "maximum"),
+    ("stretch, smallest", "stretch_3", "minimum"),
+    ("stretch, largest", "stretch_1", "maximum"),
+)
 
 
 def _factor(r: RegionSummary, name: str, which: Which) -> str:
@@ -427,9 +428,14 @@ def _aligned(rows: list[list[str]], left: bool = False) -> list[str]:
     return ["  ".join(p(cell, w) for p, cell, w in zip(pad, row, widths)).rstrip() for row in rows]
 
 
+_PLUS_MINUS = (
+    "+- is estimated from the elements around; at cells it covers the whole element, not its centroid alone"
+)
+
+
 def _tail(summary: Summary) -> list[str]:
     fields, options = summary.fields, summary.options
-    lines = []
+    lines = [_PLUS_MINUS]
     values = "values of the table" if summary.request.get("at") in ("nodes", *OWN_MESH) else "values"
     values += f" at element {_location(options.at)}; shear is tensor shear"
     if any(name.startswith("equivalent_strain") for name in fields.arrays):
