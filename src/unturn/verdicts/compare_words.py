@@ -9,6 +9,7 @@ from decimal import ROUND_FLOOR
 from typing import Any
 
 from unturn.kinematics._finite import BASES
+from unturn.regions import Region
 from unturn.result import Result
 from unturn.verdicts.differences import ArrayDifference, Extreme, RegionDifference
 from unturn.verdicts.finding import Finding, Place, State
@@ -122,6 +123,25 @@ def groups_finding(group: str, changed: list[str]) -> Finding:
     return Finding(
         "groups", group, "cell groups hold the same cells", "exceeded" if changed else "met", message
     )
+
+
+def counted_finding(group: str, number_of: int, first: Place) -> Finding:
+    """Return that some cells count in one of the results only."""
+    message = (
+        f"{number_of} cells count in one of the results, and are ghosts, duplicates or hidden in the other"
+    )
+    return Finding("cells that count", group, "the same cells count", "exceeded", message, place=first)
+
+
+def regions_findings(group: str, ours: list[Region], theirs: list[Region]) -> list[Finding]:
+    """Return regions of different meshes that only one of them has, as a warning."""
+    names = {r.name for r in ours}, {r.name for r in theirs}
+    lost, new = sorted(names[1] - names[0]), sorted(names[0] - names[1])
+    sentences = [f"the result has no {', '.join(map(repr, lost))}"] if lost else []
+    sentences += [f"the reference has no {', '.join(map(repr, new))}"] if new else []
+    if not sentences:
+        return []
+    return [Finding("regions", group, "both meshes have the same regions", "warning", "; ".join(sentences))]
 
 
 def difference_finding(
