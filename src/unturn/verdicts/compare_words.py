@@ -11,7 +11,7 @@ from typing import Any
 from unturn.kinematics._finite import BASES
 from unturn.regions import Region
 from unturn.result import Result
-from unturn.verdicts.differences import ArrayDifference, Extreme, RegionDifference
+from unturn.verdicts.differences import ArrayDifference, Extreme, Pair, RegionDifference
 from unturn.verdicts.finding import Finding, Place, State
 from unturn.verdicts.mesh_match import MeshMatch
 from unturn.verdicts.mesh_view import MeshView
@@ -157,17 +157,15 @@ def difference_finding(
     state, message = _state(difference, found, outside)
     where = f" in {region}" if region else ""
     worst = found.worst
-    value: float | None = worst.value
-    bound: float | None = _rounded_down(found.allowed, worst.value)
-    unit = pair.unit
+    factor, unit = _unit(pair)
+    value: float | None = factor * worst.value
+    bound: float | None = _rounded_down(factor * found.allowed, factor * worst.value)
     if pair.exact:
         value, bound, unit = float(found.beyond), 0.0, f"{pair.where}s" if pair.where != "field" else "values"
     elif tolerance.share > 0:
         value, bound, unit = 100.0 * found.share, 100.0 * tolerance.share, "percent"
     if found.places == found.outside:
         value = bound = None
-    if not math.isfinite(worst.value) and not (pair.exact or tolerance.share > 0):
-        value = math.inf
     place = worst.place if worst.place >= 0 else found.first_one_sided
     if found.one_sided and value is not None and bound is not None and value <= bound:
         value, bound, place = None, None, found.first_one_sided  # the number says nothing then
@@ -181,6 +179,11 @@ def difference_finding(
         f"{pair.label}{where}", group, title, state, message, value, bound, unit=unit,
         place=_place(pair.where, place, base), details=_details(difference, found, base),
     )  # fmt: skip
+
+
+def _unit(pair: Pair) -> tuple[float, str]:
+    """Return the factor to the unit in which an array is told, and that unit."""
+    return (1e6, "microstrain") if pair.unit == "strain" else (1.0, pair.unit)
 
 
 def _rounded_down(allowed: float, value: float) -> float:
@@ -225,7 +228,7 @@ def _state(difference: ArrayDifference, found: RegionDifference, outside: float)
 
 
 def _sizes(difference: ArrayDifference, found: RegionDifference) -> str:
-    parts = [f"largest {number(found.largest.value)}"]
+    parts = [f"largest {number(_unit(difference.pair)[0] * found.largest.value)}"]
     if found.size > 0:
         parts.append(f"{number(100 * found.largest.value / found.size, digits=3)} % of the largest value")
     if found.relative.place >= 0:
