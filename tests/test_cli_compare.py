@@ -128,7 +128,8 @@ def test_every_form_is_written_and_says_the_same(desk: Path) -> None:
     assert [bool(c.result) for c in cases] == [f["state"] == "exceeded" for f in data["findings"]]
     strain = by_id["computed strain in whole"]
     assert strain["state"] == "exceeded"
-    assert strain["value"] == pytest.approx(2e-5)
+    assert (strain["unit"], strain["value"]) == ("microstrain", pytest.approx(20))
+    assert strain["details"]["largest"]["value"] == pytest.approx(2e-5)
     assert strain["details"]["relative"]["value"] == pytest.approx(0.02 / np.sqrt(1 + 2 * 0.09), rel=1e-9)
     assert f"{len(by_id)}: NOT PASSED" in said
     written = unturn.read("a.vtu")

@@ -19,6 +19,10 @@ _SLACK = 0.1  # share of a cell's size by which a curved side may lie outside th
 INSIDE = 1e-6
 """Share of the reference shape within which a point counts as on its border."""
 _ITERATIONS = 25
+_SETTLED = (
+    1e-12  # step in reference coordinates, or share of the cell's size, from which on a search stands still
+)
+_ASTRAY = 10.0  # reference coordinate from which on it will not come back
 _POINTS_AT_ONCE = 20_000
 _PAIRS_AT_ONCE = 100_000
 _PRIMES = np.array([73_856_093, 19_349_663, 83_492_791], dtype=np.int64)
@@ -138,7 +142,10 @@ def _in_block(
 ) -> Iterator[tuple[Ints, Ints, Floats, Floats]]:
     assert block.row is not None
     connectivity = block.connectivity
-    boxes = _Boxes(model.points, connectivity)
+    slack = 2.0 * inside + (
+        _SLACK if block.row.order > 1 else 0.0
+    )  # cells of order 1 lie in the box of their nodes
+    boxes = _Boxes(model.points, connectivity, slack)
     for start in range(0, len(usable), _POINTS_AT_ONCE):
         which = usable[start : start + _POINTS_AT_ONCE]
         near, rows = boxes.pairs(points[which])
@@ -152,7 +159,7 @@ def _in_block(
 class _Boxes:
     """The boxes of cells, made a little larger, in grids by size: a box lies in at most eight cells of its grid."""
 
-    def __init__(self, points: Floats, connectivity: Ints) -> None:
+    def __init__(self, points: Floats, connectivity: Ints, slack: float) -> None:
         self.low, self.high = (
             np.full((len(connectivity), 3), np.inf),
             np.full((len(connectivity), 3), -np.inf),
@@ -161,9 +168,9 @@ class _Boxes:
             np.fmin(self.low, points[nodes], out=self.low)
             np.fmax(self.high, points[nodes], out=self.high)
         with np.errstate(invalid="ignore"):
-            slack = _SLACK * (self.high - self.low).max(axis=1, keepdims=True)
-            self.low -= slack
-            self.high += slack
+            margin = slack * (self.high - self.low).max(axis=1, keepdims=True)
+            self.low -= margin
+            self.high += margin
             size = (self.high - self.low).max(axis=1)
         sound = np.isfinite(size) & (size > 0)
         self.origin = self.low[sound].min(axis=0) if sound.any() else np.zeros(3)
@@ -218,21 +225,28 @@ def _references(row: Element, nodes: Floats, points: Floats) -> tuple[Floats, Fl
     X = nodes - points[:, None]
     xi = np.repeat(row.centroid[None], len(X), axis=0)
     todo = np.arange(len(X))
-    for _ in range(_ITERATIONS):
-        if not len(todo):
-            break
-        away = np.einsum("pa,pax->px", row.shape_functions(xi[todo]), X[todo])
-        J = np.einsum("pka,pax->pkx", row.shape_gradients(xi[todo]), X[todo])
-        step = _newton_step(J, away)
-        xi[todo] += step
-        going = np.abs(step).max(axis=1) >= 1e-12
-        going &= np.abs(xi[todo]).max(axis=1) <= 10.0  # NaN does not go on either
-        todo = todo[going]
-    with np.errstate(invalid="ignore"):
+    affine = row.n_nodes == row.dim + 1  # the first step is exact
+    with np.errstate(all="ignore"):  # a search that goes astray ends outside
         size = np.ptp(X, axis=1).max(axis=1)
+        for _ in range(_ITERATIONS):
+            away = np.einsum("pa,pax->px", row.shape_functions(xi[todo]), X[todo])
+            far = np.abs(away).max(axis=1) > _SETTLED * size[todo]
+            todo, away = todo[far], away[far]
+            if not len(todo):
+                break
+            J = np.einsum("pka,pax->pkx", row.shape_gradients(xi[todo]), X[todo])
+            step = _newton_step(J, away)
+            xi[todo] += step
+            if affine:
+                break
+            going = np.abs(step).max(axis=1) >= _SETTLED
+            going &= np.abs(xi[todo]).max(axis=1) <= _ASTRAY  # NaN does not go on either
+            todo = todo[going]
+        astray = ~(np.abs(xi).max(axis=1) <= _ASTRAY)
+        xi[astray] = row.centroid
         apart = np.abs(np.einsum("pa,pax->px", row.shape_functions(xi), X)).max(axis=1) / size
         beyond = np.maximum(_beyond(row, xi), apart)
-    return xi, np.where(np.isfinite(beyond) & (np.abs(xi).max(axis=1) <= 10.0), beyond, np.inf)
+    return xi, np.where(astray | ~np.isfinite(beyond), np.inf, beyond)
 
 
 def _newton_step(J: Floats, away: Floats) -> Floats:

@@ -16,11 +16,13 @@ from unturn.pipeline import StrainOptions, model_of
 from unturn.result import Array, Result
 from unturn.verdicts.compare_arrays import data_of, is_direction, measure_pairs, stored_pairs
 from unturn.verdicts.compare_words import (
+    counted_finding,
     coverage_finding,
     difference_finding,
     groups_finding,
     mesh_finding,
     missing_findings,
+    regions_findings,
 )
 from unturn.verdicts.differences import ArrayDifference, Pair, Where
 from unturn.verdicts.finding import Finding
@@ -78,15 +80,29 @@ class Compared:
         Sentences for the reader.
     differences
         The reference with the differences as further arrays, ``NAME_difference``: result less reference.
+    overlay
+        The result on its reference.
     """
 
     findings: tuple[Finding, ...]
     notes: tuple[str, ...]
     differences: Result
+    overlay: Overlay
 
 
-def compare_states(result: Result, reference: Result, options: CompareOptions) -> Compared:
+def compare_states(
+    result: Result, reference: Result, options: CompareOptions, before: Overlay | None = None
+) -> Compared:
     """Return the differences of one state of a result from one of its reference.
+
+    Parameters
+    ----------
+    result, reference
+        The two states.
+    options
+        What is compared.
+    before
+        Of an earlier comparison: on the same meshes nothing is searched again.
 
     Raises
     ------
@@ -98,14 +114,27 @@ def compare_states(result: Result, reference: Result, options: CompareOptions) -
     if not 0.0 <= options.outside < 1.0:
         raise UsageError(f"--outside {options.outside:g}: a share of the volume lies from 0 to below 1.")
     _check_names(result, reference, options)
-    mesh, base = _view(result, options.strain), _view(reference, options.strain)
-    return _Comparison(Overlay(mesh, base, match(mesh, base)), options).run()
+    return _Comparison(_overlay(result, reference, options.strain, before), options).run()
 
 
-def _view(result: Result, strain: StrainOptions) -> MeshView:
-    points = model_of(result, strain).points if strain.coordinates == "deformed" else None
+def _overlay(result: Result, reference: Result, strain: StrainOptions, before: Overlay | None) -> Overlay:
+    points, base_points = _points(result, strain), _points(reference, strain)
+    if before is not None:
+        mesh, base = before.mesh.of(result, points), before.base.of(reference, base_points)
+        if mesh is not None and base is not None:
+            return before.again(mesh, base)
     plane = PlaneOptions(strain.plane, strain.poisson, strain.axis) if strain.plane else None
-    return view(result, points, plane, strain.threads)
+    mesh, base = (
+        view(result, points, plane, strain.threads),
+        view(reference, base_points, plane, strain.threads),
+    )
+    return Overlay(mesh, base, match(mesh, base))
+
+
+def _points(result: Result, strain: StrainOptions) -> Floats:
+    if strain.coordinates == "deformed":
+        return model_of(result, strain).points
+    return np.asarray(result.points, dtype=np.float64)
 
 
 def _check_names(result: Result, reference: Result, options: CompareOptions) -> None:
@@ -143,7 +172,7 @@ class _Comparison:
         """Compare."""
         overlay, options = self.overlay, self.options
         stored = stored_pairs(overlay, self.group, self._wanted)
-        pairs, notes = stored.pairs, [*_notes(self.result, self.reference), *stored.notes]
+        pairs, notes = stored.pairs, [*_notes(overlay.mesh, overlay.base), *stored.notes]
         if options.measures:
             computed = measure_pairs(overlay, options.strain)
             pairs, notes = [*pairs, *computed.pairs], [*notes, *computed.notes]
@@ -162,7 +191,7 @@ class _Comparison:
         kept = self.reference.with_arrays(
             point_data=written["point"], cell_data=written["cell"], field_data=written["field"]
         )
-        return Compared((*self._mesh(), *lost, *arrays), tuple(notes), kept)
+        return Compared((*self._mesh(), *lost, *arrays), tuple(notes), kept, overlay)
 
     def _wanted(self, name: str) -> bool:
         only = self.options.arrays
@@ -184,10 +213,21 @@ class _Comparison:
                 coverage_finding(self.group, "reference", base, overlay.cells, limit, overlay.points),
                 coverage_finding(self.group, "result", mesh, overlay.back, limit),
             ]
+            found += regions_findings(self.group, mesh.regions(), base.regions())
         order = overlay.match.cell_of
-        ours, theirs = self.result.groups, self.reference.groups
+        if order is not None:
+            found += self._same_cells(order)
+        return found
+
+    def _same_cells(self, order: Ints) -> list[Finding]:
+        """Return whether the same cells of one mesh count, and whether groups hold the same cells."""
+        ours, theirs, base = self.result.groups, self.reference.groups, self.overlay.base
+        found = []
+        apart = np.flatnonzero(self.overlay.mesh.counted[order] != base.counted)
+        if len(apart):
+            found.append(counted_finding(self.group, len(apart), base.place("cell", int(apart[0]))))
         both = [n for n in theirs if n in ours and self._wanted(n)]
-        if order is not None and both:
+        if both:
             changed = [n for n in both if not np.array_equal(np.sort(order[theirs[n]]), np.sort(ours[n]))]
             found.append(groups_finding(self.group, changed))
         return found
@@ -229,8 +269,10 @@ class _Comparison:
         )
 
 
-def _notes(*results: Result) -> list[str]:
-    return list(dict.fromkeys(f"{short_name(r.path)}: {note}" for r in results for note in r.notes))
+def _notes(*meshes: MeshView) -> list[str]:
+    return list(
+        dict.fromkeys(f"{short_name(m.result.path)}: {note}" for m in meshes for note in m.model.notes)
+    )
 
 
 def _keep(written: dict[Where, dict[str, Array]], difference: ArrayDifference, reference: Result) -> None:

@@ -13,6 +13,7 @@ from unturn.pipeline import settled
 from unturn.result import Result
 from unturn.verdicts.compare import Compared, CompareOptions, compare_states
 from unturn.verdicts.finding import WORST_FIRST, Finding, Place
+from unturn.verdicts.overlay import Overlay
 from unturn.verdicts.wording import number, short_name
 
 Step = Literal["last", "all"] | int
@@ -166,8 +167,10 @@ def compare_opened(
     worst: dict[str, Finding] = {}
     failing: dict[str, list[int]] = {}
     notes: dict[str, None] = {}
+    overlay: Overlay | None = None
     for pair in pairs:
-        compared = _one(result, reference, pair, options)
+        compared = _one(result, reference, pair, options, overlay)
+        overlay = compared.overlay
         notes.update(dict.fromkeys(compared.notes))
         for finding in _at_step(compared.findings, pair):
             if not finding.passes():
@@ -184,9 +187,11 @@ def compare_opened(
     return SeriesCompared((*found, *told), tuple(notes))
 
 
-def _one(result: ResultFile, reference: ResultFile, pair: StepPair, options: CompareOptions) -> Compared:
+def _one(
+    result: ResultFile, reference: ResultFile, pair: StepPair, options: CompareOptions, before: Overlay | None
+) -> Compared:
     try:
-        return compare_states(result.read(pair.ours), reference.read(pair.theirs), options)
+        return compare_states(result.read(pair.ours), reference.read(pair.theirs), options, before)
     except (InputError, UsageError) as error:
         if pair.time is None:
             raise

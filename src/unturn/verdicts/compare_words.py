@@ -9,8 +9,9 @@ from decimal import ROUND_FLOOR
 from typing import Any
 
 from unturn.kinematics._finite import BASES
+from unturn.regions import Region
 from unturn.result import Result
-from unturn.verdicts.differences import ArrayDifference, Extreme, RegionDifference
+from unturn.verdicts.differences import ArrayDifference, Extreme, Pair, RegionDifference
 from unturn.verdicts.finding import Finding, Place, State
 from unturn.verdicts.mesh_match import MeshMatch
 from unturn.verdicts.mesh_view import MeshView
@@ -124,6 +125,25 @@ def groups_finding(group: str, changed: list[str]) -> Finding:
     )
 
 
+def counted_finding(group: str, number_of: int, first: Place) -> Finding:
+    """Return that some cells count in one of the results only."""
+    message = (
+        f"{number_of} cells count in one of the results, and are ghosts, duplicates or hidden in the other"
+    )
+    return Finding("cells that count", group, "the same cells count", "exceeded", message, place=first)
+
+
+def regions_findings(group: str, ours: list[Region], theirs: list[Region]) -> list[Finding]:
+    """Return regions of different meshes that only one of them has, as a warning."""
+    names = {r.name for r in ours}, {r.name for r in theirs}
+    lost, new = sorted(names[1] - names[0]), sorted(names[0] - names[1])
+    sentences = [f"the result has no {', '.join(map(repr, lost))}"] if lost else []
+    sentences += [f"the reference has no {', '.join(map(repr, new))}"] if new else []
+    if not sentences:
+        return []
+    return [Finding("regions", group, "both meshes have the same regions", "warning", "; ".join(sentences))]
+
+
 def difference_finding(
     group: str,
     difference: ArrayDifference,
@@ -137,17 +157,15 @@ def difference_finding(
     state, message = _state(difference, found, outside)
     where = f" in {region}" if region else ""
     worst = found.worst
-    value: float | None = worst.value
-    bound: float | None = _rounded_down(found.allowed, worst.value)
-    unit = pair.unit
+    factor, unit = _unit(pair)
+    value: float | None = factor * worst.value
+    bound: float | None = _rounded_down(factor * found.allowed, factor * worst.value)
     if pair.exact:
         value, bound, unit = float(found.beyond), 0.0, f"{pair.where}s" if pair.where != "field" else "values"
     elif tolerance.share > 0:
         value, bound, unit = 100.0 * found.share, 100.0 * tolerance.share, "percent"
     if found.places == found.outside:
         value = bound = None
-    if not math.isfinite(worst.value) and not (pair.exact or tolerance.share > 0):
-        value = math.inf
     place = worst.place if worst.place >= 0 else found.first_one_sided
     if found.one_sided and value is not None and bound is not None and value <= bound:
         value, bound, place = None, None, found.first_one_sided  # the number says nothing then
@@ -161,6 +179,11 @@ def difference_finding(
         f"{pair.label}{where}", group, title, state, message, value, bound, unit=unit,
         place=_place(pair.where, place, base), details=_details(difference, found, base),
     )  # fmt: skip
+
+
+def _unit(pair: Pair) -> tuple[float, str]:
+    """Return the factor to the unit in which an array is told, and that unit."""
+    return (1e6, "microstrain") if pair.unit == "strain" else (1.0, pair.unit)
 
 
 def _rounded_down(allowed: float, value: float) -> float:
@@ -205,7 +228,7 @@ def _state(difference: ArrayDifference, found: RegionDifference, outside: float)
 
 
 def _sizes(difference: ArrayDifference, found: RegionDifference) -> str:
-    parts = [f"largest {number(found.largest.value)}"]
+    parts = [f"largest {number(_unit(difference.pair)[0] * found.largest.value)}"]
     if found.size > 0:
         parts.append(f"{number(100 * found.largest.value / found.size, digits=3)} % of the largest value")
     if found.relative.place >= 0:

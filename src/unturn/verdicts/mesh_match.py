@@ -12,7 +12,7 @@ from scipy.spatial import cKDTree
 from unturn.kinematics._symmetric import Floats
 from unturn.regions import merge_coincident
 from unturn.result import CellBlock
-from unturn.verdicts.mesh_view import MeshView
+from unturn.verdicts.mesh_view import MeshView, same_blocks
 
 Ints = NDArray[np.int64]
 Kind = Literal["same", "renumbered", "different"]
@@ -68,16 +68,7 @@ def match(mesh: MeshView, reference: MeshView) -> MeshMatch:
 
 def _same_cells(mesh: MeshView, reference: MeshView) -> bool:
     a, b = mesh.result, reference.result
-    return (
-        a.n_points == b.n_points
-        and len(a.blocks) == len(b.blocks)
-        and all(
-            x.cell_type == y.cell_type
-            and np.array_equal(x.connectivity, y.connectivity)
-            and np.array_equal(x.index, y.index)
-            for x, y in zip(a.blocks, b.blocks)
-        )
-    )
+    return a.n_points == b.n_points and same_blocks(a, b)
 
 
 def _largest_distance(a: Floats, b: Floats) -> float:

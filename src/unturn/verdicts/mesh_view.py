@@ -72,6 +72,13 @@ class MeshView:
         used = used[np.isfinite(used).all(axis=1)]
         return float(np.ptp(used, axis=0).max()) if len(used) else 0.0
 
+    def of(self, result: Result, points: Floats) -> MeshView | None:
+        """Return this mesh with the arrays of another state; None where that has another mesh."""
+        if not (np.array_equal(self.points, points, equal_nan=True) and same_blocks(self.result, result)):
+            return None
+        model = replace(self.model, result=replace(self.model.result, cell_data=result.cell_data))
+        return replace(self, result=result, model=model, counted=_counted(result))
+
     def regions(self, names: Sequence[str] = ()) -> list[Region]:
         """Return the regions asked for, or those of the mesh.
 
@@ -191,8 +198,22 @@ def view(
         which = block.cells.index[unknown]
         if len(which) and block.cells.connectivity.shape[1]:
             centroid[which] = model.points[block.cells.connectivity[unknown]].mean(axis=1)
+    tagged = replace(model, result=replace(still, cell_data=result.cell_data))
+    return MeshView(result, tagged, volume, centroid, dimension, _counted(result))
+
+
+def same_blocks(a: Result, b: Result) -> bool:
+    """Return whether two results have the same cells in the same order, with the same nodes."""
+    return len(a.blocks) == len(b.blocks) and all(
+        x.cell_type == y.cell_type
+        and np.array_equal(x.connectivity, y.connectivity)
+        and np.array_equal(x.index, y.index)
+        for x, y in zip(a.blocks, b.blocks)
+    )
+
+
+def _counted(result: Result) -> NDArray[np.bool_]:
     counted = np.ones(result.n_cells, dtype=bool)
     for cells in result.left_out.values():
         counted[cells] = False
-    tagged = replace(model, result=replace(still, cell_data=result.cell_data))
-    return MeshView(result, tagged, volume, centroid, dimension, counted)
+    return counted

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from functools import cached_property
 from typing import Any
 
@@ -41,6 +41,11 @@ class Overlay:
     mesh: MeshView
     base: MeshView
     match: MeshMatch
+    _searched: dict[str, Sampled] = field(default_factory=dict)
+
+    def again(self, mesh: MeshView, base: MeshView) -> Overlay:
+        """Return the overlay of other states on these meshes; nothing is searched again."""
+        return Overlay(mesh, base, self.match, self._searched)
 
     @property
     def differ(self) -> bool:
@@ -59,26 +64,32 @@ class Overlay:
         assert order is not None
         return Placed(values[order], outside=order < 0)
 
-    @cached_property
+    @property
     def cells(self) -> Sampled:
         """Where the middles of the reference's cells lie in the other mesh."""
-        parts = [(theirs.cells, ours.cells) for theirs, ours in self._shared_parts]
-        return sample(self.mesh, self.base.centroid, self.base.dimension, parts)
+        if "cells" not in self._searched:
+            parts = [(theirs.cells, ours.cells) for theirs, ours in self._shared_parts]
+            self._searched["cells"] = sample(self.mesh, self.base.centroid, self.base.dimension, parts)
+        return self._searched["cells"]
 
-    @cached_property
+    @property
     def points(self) -> Sampled:
         """Where the reference's points lie in the other mesh."""
-        parts = [(self.base.points_of(theirs.cells), ours.cells) for theirs, ours in self._shared_parts]
-        dimension = np.zeros(self.base.result.n_points, dtype=np.int8)
-        for block in self.base.result.blocks:
-            highest = np.repeat(self.base.dimension[block.index], block.connectivity.shape[1])
-            np.maximum.at(dimension, block.connectivity.reshape(-1), highest)
-        return sample(self.mesh, self.base.points, dimension, parts)
+        if "points" not in self._searched:
+            parts = [(self.base.points_of(theirs.cells), ours.cells) for theirs, ours in self._shared_parts]
+            dimension = np.zeros(self.base.result.n_points, dtype=np.int8)
+            for block in self.base.result.blocks:
+                highest = np.repeat(self.base.dimension[block.index], block.connectivity.shape[1])
+                np.maximum.at(dimension, block.connectivity.reshape(-1), highest)
+            self._searched["points"] = sample(self.mesh, self.base.points, dimension, parts)
+        return self._searched["points"]
 
-    @cached_property
+    @property
     def back(self) -> Sampled:
         """Where the middles of the result's cells lie in the reference."""
-        return sample(self.base, self.mesh.centroid, self.mesh.dimension, [])
+        if "back" not in self._searched:
+            self._searched["back"] = sample(self.base, self.mesh.centroid, self.mesh.dimension, [])
+        return self._searched["back"]
 
     @cached_property
     def _shared_parts(self) -> list[tuple[Region, Region]]:
