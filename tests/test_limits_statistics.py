@@ -206,7 +206,8 @@ def steps(*strains: list[float]) -> Series:
 @pytest.mark.derived("largest less smallest of each cell over the steps: 3 and 7 thousandths")
 def test_the_range_over_steps() -> None:
     series = steps([0.0, 0.0], [2e-3, -3e-3], [-1e-3, 4e-3])
-    limit = {"id": "it", "measure": "strain", "component": "XX", "statistic": "range", "unit": "microstrain"}
+    limit = {"id": "it", "measure": "strain", "component": "XX", "statistic": "range", "unit": "microstrain",
+             "accept": ["plus-minus"]}  # fmt: skip
     for bound, state in ((7000 * (1 + 1e-9), "met"), (7000 * (1 - 1e-9), "exceeded")):
         found = checked_series(series, written({**limit, "at_most": bound}))["it"]
         assert found.state == state
@@ -221,7 +222,8 @@ def test_the_range_over_steps() -> None:
 @pytest.mark.derived("uniaxial strain e has the deviator e (2, -1, -1)/3: equivalent sqrt(2/3 e':e') = 2/3 e")
 def test_the_tensor_range_over_steps() -> None:
     series = steps([0.0, 0.0], [2e-3, -3e-3], [-1e-3, 3e-3])
-    limit = {"id": "it", "measure": "strain", "statistic": "tensor_range", "unit": "microstrain"}
+    limit = {"id": "it", "measure": "strain", "statistic": "tensor_range", "unit": "microstrain",
+             "accept": ["plus-minus"]}  # fmt: skip
     for bound, state in ((4000 * (1 + 1e-9), "met"), (4000 * (1 - 1e-9), "exceeded")):
         found = checked_series(series, written({**limit, "at_most": bound}))["it"]
         assert found.state == state
@@ -309,3 +311,31 @@ def test_bounds_that_are_not_finite_are_an_error(bounds: list[float]) -> None:
     gone = one(MESH, {"array": "v", "statistic": "maximum", "unit": "number", "at_most_array": "allowd"})
     assert gone.state == "error"
     assert "allowd" in gone.message
+
+
+@pytest.mark.derived("the plus and minus of a range is that of the two steps that make it, added")
+@pytest.mark.parametrize(("statistic", "component"), [("range", "XX"), ("tensor_range", None)])
+def test_a_range_has_the_plus_and_minus_of_its_two_steps(statistic: str, component: str | None) -> None:
+    series = steps([0.0, 0.0, 0.0], [2e-3, 1e-3, 1e-3], [-1e-3, 2e-3, 1e-3])
+    limit: dict[str, Any] = {"id": "it", "measure": "strain", "statistic": statistic, "unit": "microstrain"}
+    single: dict[str, Any] = {"measure": "equivalent_strain", "statistic": "maximum", "unit": "microstrain"}
+    if component:
+        limit["component"] = single["component"] = component
+        single["measure"] = "strain"
+    found = checked_series(series, written({**limit, "at_most": 1e9}))["it"]
+    assert found.place["cell"] == 0
+    regions = {"first": {"near": {"point": [0.5, 0.5, 0.5], "cells": 1, "within": 1}}}
+    ends = [
+        one(series.results[k], {**single, "at_most": 1e9, "region": "first"}, regions=regions)  # type: ignore[arg-type]
+        for k in (1, 2)
+    ]
+    expected = sum(e.plus_minus or 0.0 for e in ends)
+    assert expected > 0
+    assert found.plus_minus == pytest.approx(expected)
+    assert found.value is not None
+    inside = found.value + 0.5 * expected
+    assert checked_series(series, written({**limit, "at_most": inside}))["it"].state == "undecided"
+    assert (
+        checked_series(series, written({**limit, "at_most": inside, "accept": ["plus-minus"]}))["it"].state
+        == "met"
+    )

@@ -481,3 +481,14 @@ def test_assert_limits(tmp_path: Path) -> None:
     assert_limits(MESH, waived, today=datetime.date(2026, 12, 1))
     with pytest.raises(AssertionError, match="expired"):
         assert_limits(MESH, waived, today=datetime.date(2027, 12, 1))
+
+
+@pytest.mark.parametrize("region", ["whole", "left", "both"])
+def test_cells_that_are_not_computed_are_counted(region: str) -> None:
+    mesh = MESH.with_arrays(cell_data={"alive": np.array([1, 0, 1])})
+    regions = {"left": {"tag": "part=1"}, "both": {"any_of": ["left", "whole"]}}
+    found = one(mesh, {**PULL, "region": region}, regions=regions, reading={"alive": "alive"})
+    assert found.state == "met"
+    assert f"1 cell of {region} is not computed" in found.message
+    assert found.details["not_computed"] == 1
+    assert found.details["values"] == (1 if region == "left" else 2)

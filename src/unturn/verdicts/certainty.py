@@ -16,6 +16,7 @@ from unturn.trust import strain_error
 from unturn.verdicts.columns import Selection, one_component
 from unturn.verdicts.limit import Quantity
 from unturn.verdicts.step import Step
+from unturn.verdicts.step_fields import group_of
 from unturn.verdicts.units import Unit, unit_words
 from unturn.verdicts.wording import number
 
@@ -113,6 +114,21 @@ def _singular(step: Step, ask: Ask, trust: Trust) -> str:
     cell = int(column.owners(np.array([trust.next_cell]))[0]) if column.on == "faces" else trust.next_cell
     after = f"{number(ask.unit.from_base(trust.next_value))} {unit_words(ask.unit)}".rstrip()
     return f"{said} (next peak away from it: {after}, {step.cell_words(cell)})"
+
+
+def plus_minus_at(step: Step, asked: Sequence[tuple[Quantity, bool, int]]) -> list[float]:
+    """Return the plus and minus of quantities at cells; of a tensor, that of the equivalent of its change."""
+    found = []
+    for quantity, tensor, cell in asked:
+        computed = step.computed(group_of(quantity))
+        if tensor:
+            name = quantity.name.replace("strain", "equivalent_strain", 1)
+            values = np.zeros(step.result.n_cells)
+        else:
+            name, values = quantity.name, step.column(quantity).values
+        question = Asked(name, values, np.array([cell]), cell, size=math.inf)
+        found.append(trust_of(computed, [question], step.groups, step.threads)[0].plus_minus)
+    return found
 
 
 class _NodeBounds:

@@ -30,8 +30,8 @@ def state_of(limit: Limit, m: Measured) -> tuple[State, str]:
     Beyond the bound is exceeded, whatever else is in doubt. Inside, any doubt makes it undecided: the plus and minus
     reaches across, a value is missing, the peak is suspected singular.
     """
-    if m.error:
-        return "error", m.error
+    if m.error or math.isnan(m.value):
+        return "error", m.error or "it has no value"
     if (m.high is not None and m.value > m.high) or (m.low is not None and m.value < m.low):
         return "exceeded", ""
     doubts = list(m.doubts)
@@ -91,7 +91,11 @@ def conclude(
         elif not errors and not stopped:
             message = "; ".join(t for t in (state, message, f"waived {until}") if t)
             details["waived"], state = state, "waived"
-    said = (message, m.note, _left_out_words(limit, m))
+    n = m.not_computed
+    missed = (
+        f"{n} cell{'s' * (n != 1)} of {limit.region} {'is' if n == 1 else 'are'} not computed" if n else ""
+    )
+    said = (message, m.note, _left_out_words(limit, m), missed)
     return _finding(limit, group, m, state, "; ".join(t for t in said if t), details)
 
 
@@ -125,6 +129,7 @@ def _details(
         "values": m.count,
         "without_value": m.missing,
         "left_out": m.left_out,
+        "not_computed": m.not_computed,
         "steps": [
             {"step": k.step, "time": k.time, "state": s, "value": _in_unit(limit, k)}
             for k, (s, _) in zip(measured, states)

@@ -45,6 +45,8 @@ class Measured:
         What else there is to say of it.
     left_out
         What the region names and leaves out.
+    not_computed
+        Cells of the region that are not computed.
     """
 
     step: int | None
@@ -62,6 +64,7 @@ class Measured:
     doubts: tuple[str, ...] = ()
     note: str = ""
     left_out: dict[str, Any] | None = None
+    not_computed: int = 0
 
 
 @dataclass(frozen=True, eq=False)
@@ -196,6 +199,7 @@ def _finish(step: Step, p: _Pending, certain: list[Certainty]) -> Measured:
     return Measured(
         step.shown, step.time, p.got.value, statistic.spread(p.sample, limit, p.got, ends), low, high, low_written,
         high_written, where, len(p.selection.values), p.selection.missing, "", tuple(doubts), "", p.left_out,
+        int(step.finder.find(limit.region).not_computed.sum()),
     )  # fmt: skip
 
 

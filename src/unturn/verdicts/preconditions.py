@@ -8,6 +8,7 @@ from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Any
 
+from unturn.io import files_behind
 from unturn.verdict import Level, Verdict
 from unturn.verdicts import kinds as k
 from unturn.verdicts.finding import Bound
@@ -141,7 +142,8 @@ def _newer_than(seen: Evidence, value: str, all_: Mapping[str, Any]) -> Sequence
         return [Tested(False, "the result is in memory and has no age")]
     other = seen.folder / value
     try:
-        older, newer = other.stat().st_mtime_ns, Path(seen.path).stat().st_mtime_ns
+        older = other.stat().st_mtime_ns
+        newer = min(p.stat().st_mtime_ns for p in (Path(seen.path), *files_behind(Path(seen.path))))
     except (OSError, ValueError) as error:
         reason = getattr(error, "strerror", None) or error
         return [Tested(False, f"the ages of the result and of {value} cannot be compared: {reason}")]

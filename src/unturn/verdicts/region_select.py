@@ -12,7 +12,7 @@ from numpy.typing import NDArray
 
 from unturn.errors import close_matches
 from unturn.kinematics._symmetric import Floats
-from unturn.model import Model
+from unturn.model import SKINS, Model
 from unturn.result import Result
 
 Mask = NDArray[np.bool_]
@@ -45,6 +45,15 @@ class Cells:
         """Which cells are computed."""
         return self.dimension > 0
 
+    @cached_property
+    def missed(self) -> Mask:
+        """Which cells are not computed and should be: all but skins, edges and points."""
+        mask = np.zeros(len(self.dimension), dtype=bool)
+        for reason, cells in self.model.left_out.items():
+            if reason != SKINS and not reason.startswith("vertex"):
+                mask[cells] = True
+        return mask
+
     @property
     def result(self) -> Result:
         """The step."""
@@ -53,10 +62,11 @@ class Cells:
 
 @dataclass(frozen=True, eq=False)
 class Found:
-    """The cells of a region, and those that it names and leaves out."""
+    """The cells of a region, those that it names and leaves out, and those that belong to it and are not computed."""
 
     inside: Mask
     left_out: Mask
+    not_computed: Mask
 
 
 Pick = Callable[[str], Found]
