@@ -252,6 +252,8 @@ def test_measures_of_a_linear_solve_are_small_ones() -> None:
         ('schema = "unturn.limits/2"\nnumber_of_limits = 1', 'schema: expected one of "unturn.limits/1"'),
         ("schema = [", "not a TOML file"),
         ("a = 1\na = 2", "not a TOML file"),
+        ("a = " + "1" * 5000, "not a TOML file"),
+        ("#[" + " " * 100_000 + "\nschema = 5", "line 2: schema: expected one of"),
     ],
 )
 def test_a_file_that_tests_nothing_is_refused(text: str, said: str) -> None:

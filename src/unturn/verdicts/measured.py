@@ -19,6 +19,7 @@ from unturn.verdicts.limit import Limit, Quantity
 from unturn.verdicts.region_select import NoRegion
 from unturn.verdicts.statistic import STATISTICS, Got, Sample
 from unturn.verdicts.step import Step
+from unturn.verdicts.units import BoundAt
 
 
 @dataclass(frozen=True)
@@ -32,7 +33,7 @@ class Measured:
     value, plus_minus
         As computed; NaN where there is none.
     low, high
-        Bounds that it is held against, as computed, and as they are written.
+        Bounds that it is held against.
     place
         Where.
     count, missing
@@ -53,10 +54,8 @@ class Measured:
     time: float | None
     value: float = math.nan
     plus_minus: float = math.nan
-    low: float | None = None
-    high: float | None = None
-    low_written: float | None = None
-    high_written: float | None = None
+    low: BoundAt | None = None
+    high: BoundAt | None = None
     place: Place = field(default_factory=Place)
     count: int = 0
     missing: int = 0
@@ -75,7 +74,8 @@ class _Pending:
     selection: Selection
     sample: Sample
     got: Got
-    bounds: tuple[float | None, float | None, float | None, float | None]
+    low: BoundAt | None
+    high: BoundAt | None
     left_out: dict[str, Any] | None
 
 
@@ -101,8 +101,8 @@ def _begin(step: Step, limit: Limit) -> _Pending | Measured:
         if stop:
             return Measured(step.shown, step.time, error=stop, missing=selection.missing)
         sample = Sample(_based(limit, selection.values), selection.weights)
-        got, bounds = _held_against(step, limit, selection, sample)
-        return _Pending(limit, selection, sample, got, bounds, _left_out(step, limit))
+        got, low, high = _held_against(step, limit, selection, sample)
+        return _Pending(limit, selection, sample, got, low, high, _left_out(step, limit))
     except (NoRegion, NoValues, UnturnError) as error:
         return Measured(step.shown, step.time, error=str(error))
 
@@ -132,14 +132,16 @@ def _based(limit: Limit, values: Floats) -> Floats:
 
 def _held_against(
     step: Step, limit: Limit, selection: Selection, sample: Sample
-) -> tuple[Got, tuple[float | None, float | None, float | None, float | None]]:
-    """Return the statistic and its bounds: low and high as computed, low and high as written."""
+) -> tuple[Got, BoundAt | None, BoundAt | None]:
+    """Return the statistic and its bounds, low and high."""
     statistic = STATISTICS[limit.statistic]
     array = limit.at_most_array or limit.at_least_array
     if array is None:
         unit = statistic.unit_of(limit)
-        low, high = (None if b is None else unit.to_base(b) for b in (limit.at_least, limit.at_most))
-        return statistic.compute(sample, limit), (low, high, limit.at_least, limit.at_most)
+        low, high = (
+            None if b is None else BoundAt(unit.to_base(b), b) for b in (limit.at_least, limit.at_most)
+        )
+        return statistic.compute(sample, limit), low, high
     written = _bounds_of(step, selection, array)
     bounds = limit.unit.to_base(written)
     values = np.abs(sample.values) if statistic.magnitude else sample.values
@@ -150,9 +152,9 @@ def _held_against(
         raise NoValues(f"the array {array!r} has no finite bound for {n} of {len(room)} values")
     at = int(room.argmin())
     smallest = not upper or (statistic.magnitude and bool(sample.values[at] < 0))
+    bound = BoundAt(float(bounds[at]), float(written[at]))
     got = Got(float(values[at]), ((at, smallest),))
-    bound, as_written = float(bounds[at]), float(written[at])
-    return got, (None, bound, None, as_written) if upper else (bound, None, as_written, None)
+    return (got, None, bound) if upper else (got, bound, None)
 
 
 def _bounds_of(step: Step, selection: Selection, array: str) -> Floats:
@@ -193,14 +195,22 @@ def _finish(step: Step, p: _Pending, certain: list[Certainty]) -> Measured:
     if statistic.extreme and "singular" not in limit.accept:
         doubts += [c.singular for c in certain if c.singular]
     doubts += _turning(step, limit)
-    low, high, low_written, high_written = p.bounds
     when: Place = {"step": step.shown, "time": step.time}
     where = step.place(p.selection.column, int(p.selection.index[p.got.ends[0][0]])) if p.got.ends else when
     return Measured(
-        step.shown, step.time, p.got.value, statistic.spread(p.sample, limit, p.got, ends), low, high, low_written,
-        high_written, where, len(p.selection.values), p.selection.missing, "", tuple(doubts), "", p.left_out,
-        int(step.finder.find(limit.region).not_computed.sum()),
-    )  # fmt: skip
+        step.shown,
+        step.time,
+        value=p.got.value,
+        plus_minus=statistic.spread(p.sample, limit, p.got, ends),
+        low=p.low,
+        high=p.high,
+        place=where,
+        count=len(p.selection.values),
+        missing=p.selection.missing,
+        doubts=tuple(doubts),
+        left_out=p.left_out,
+        not_computed=int(step.finder.find(limit.region).not_computed.sum()),
+    )
 
 
 def _turning(step: Step, limit: Limit) -> list[str]:

@@ -101,7 +101,7 @@ def parse_limits(raw: bytes, name: str) -> Limits:
     try:
         text = raw.decode("utf-8")
         data = tomllib.loads(text)
-    except (tomllib.TOMLDecodeError, UnicodeDecodeError, RecursionError) as error:
+    except (ValueError, RecursionError) as error:  # also of numbers with thousands of digits
         said = str(error) if not isinstance(error, RecursionError) else "nested too deep"
         raise UsageError(f"{name}: not a TOML file: {said}. Correct it there.") from None
     source = Source(name, Lines(text, data))

@@ -77,28 +77,27 @@ def unit_words(unit: Unit) -> str:
     return "" if unit.quantity == "number" else unit.name
 
 
-def shown_in(unit: Unit, value: float, bound: float, written: float) -> float:
-    """Return a value in a unit, on the side of its bound on which it was found.
+@dataclass(frozen=True)
+class BoundAt:
+    """One bound: as values are computed, and as it is written."""
 
-    Parameters
-    ----------
-    unit
-        The unit.
-    value, bound
-        As computed; they were compared like this.
-    written
-        The bound in the unit.
+    base: float
+    written: float
+
+
+def shown_in(unit: Unit, value: float, low: BoundAt | None, high: BoundAt | None) -> float:
+    """Return a computed value in a unit, on the side of its bounds on which it was found.
 
     Examples
     --------
-    >>> shown_in(UNITS["microstrain"], 0.000867, 0.000867, 867.0)
+    >>> shown_in(UNITS["microstrain"], 0.000867, None, BoundAt(0.000867, 867.0))
     867.0
     """
-    converted = unit.from_base(value)
-    if value == bound:
-        return written
-    if value > bound and converted <= written:
-        return math.nextafter(written, math.inf)
-    if value < bound and converted >= written:
-        return math.nextafter(written, -math.inf)
-    return converted
+    shown = unit.from_base(value)
+    if high is not None:
+        above = value > high.base
+        shown = max(shown, math.nextafter(high.written, math.inf)) if above else min(shown, high.written)
+    if low is not None:
+        below = value < low.base
+        shown = min(shown, math.nextafter(low.written, -math.inf)) if below else max(shown, low.written)
+    return shown
