@@ -181,7 +181,7 @@ def test_every_bound_level_and_consent_is_explained(desk: Path) -> None:
         "arm_away: tag part=1 and in none of bond, bores", "pull/arm_away",
         "must be at most 4000 microstrain; warning above 1000",
         "must be at least -100 microstrain and at most 100 microstrain", "99 % of the volume below in arm",
-        "share of volume above 400 microstrain in arm", "must be at most 50 percent of volume",
+        "share above 400 microstrain in arm", "must be at most 50 percent",
         "accepted: a peak that is suspected singular is taken as it is",
         "waived: until 2099-12-31 by J. Doe (invented)", "source: Ebbstrider design note 7, table 2 (invented)",
         "must be at most 0.001 length",

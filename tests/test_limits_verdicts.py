@@ -492,3 +492,14 @@ def test_cells_that_are_not_computed_are_counted(region: str) -> None:
     assert f"1 cell of {region} is not computed" in found.message
     assert found.details["not_computed"] == 1
     assert found.details["values"] == (1 if region == "left" else 2)
+
+
+def test_poissons_ratio_of_free_faces_is_theirs_alone() -> None:
+    surface = {**PULL, "measure": "equivalent_strain", "at": "surface"}
+    del surface["component"]
+    with pytest.raises(UsageError, match=r"limits\[1\].measure: .*give surface_poisson in \[reading\]"):
+        parsed(written(surface))
+    found = checked(MESH, written(surface, {**PULL, "id": "b"}, reading={"surface_poisson": 0.3})).findings
+    assert [f.state for f in found] == ["met", "met"]
+    # a uniaxial pull with nu = 0.3 would give 867; here the sides are held: the faces at the ends show none, the others 1000
+    assert found[0].value == pytest.approx(1000 * np.sqrt(2 / 3 * (1 + 0 + (3 / 7) ** 2 - (1 - 3 / 7) ** 2 / 3)))

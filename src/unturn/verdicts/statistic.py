@@ -216,7 +216,7 @@ STATISTICS: dict[str, Statistic] = {
         Statistic("percentile", "smallest value that `percent` % of the volume do not exceed",
                   lambda v: f"{v.percent:g} % of the volume below", _percentile, _added, _WEIGHTED, needs="percent"),
         Statistic("share", "share of the volume `above` (or `below`) a value; bounds in percent of the volume",
-                  lambda v: f"share of volume {_threshold_words(v)}", _crossing(_share), _moved(_share), _WEIGHTED,
+                  lambda v: f"share {_threshold_words(v)}", _crossing(_share), _moved(_share), _WEIGHTED,
                   needs="threshold", unit=SHARE),
         Statistic("count", "number of cells (nodes, faces) `above` (or `below`) a value",
                   lambda v: f"count {_threshold_words(v)}", _crossing(_count), _moved(_count), _PLAIN,

@@ -63,8 +63,8 @@ UNITS: dict[str, Unit] = {
 }  # fmt: skip
 """Every unit a limit can be written in."""
 
-SHARE = Unit("percent of volume", "share", 100.0, _SI)
-"""Unit of a share of the volume: a statistic has it, no limit writes it."""
+SHARE = Unit("percent", "share", 100.0, _SI)
+"""Unit of a share of the volume or area: a statistic has it, no limit writes it."""
 COUNT = UNITS["number"]
 """Unit of a count."""
 
