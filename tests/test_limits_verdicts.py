@@ -501,5 +501,35 @@ def test_poissons_ratio_of_free_faces_is_theirs_alone() -> None:
         parsed(written(surface))
     found = checked(MESH, written(surface, {**PULL, "id": "b"}, reading={"surface_poisson": 0.3})).findings
     assert [f.state for f in found] == ["met", "met"]
-    # a uniaxial pull with nu = 0.3 would give 867; here the sides are held: the faces at the ends show none, the others 1000
-    assert found[0].value == pytest.approx(1000 * np.sqrt(2 / 3 * (1 + 0 + (3 / 7) ** 2 - (1 - 3 / 7) ** 2 / 3)))
+    # in the plane 1000 and 0; along the normal -nu/(1-nu) = -3/7 of their sum
+    assert found[0].value == pytest.approx(
+        1000 * np.sqrt(2 / 3 * (1 + 0 + (3 / 7) ** 2 - (1 - 3 / 7) ** 2 / 3))
+    )
+
+
+@pytest.mark.parametrize("at", ["nodes", "surface"])
+def test_a_cell_without_value_is_not_hidden_by_its_nodes_or_faces(at: str) -> None:
+    points = grid(2).points.copy()
+    points[26] = [0.2, 0.2, 0.2]  # the corner (2, 2, 2) is pushed through its cell
+    tangled = replace(grid(2), points=points)
+    limit = {**PULL, "at": at, "at_most": 1e12}
+    found = one(tangled, limit)
+    assert found.state == "undecided"
+    assert "1 cell of the region has no value" in found.message
+    assert one(grid(2), limit).state == "met"
+
+
+def test_what_cannot_be_told_to_belong_is_never_passed_over() -> None:
+    nowhere = MESH.points.copy()
+    nowhere[12:] = np.nan  # the last cell lies nowhere
+    mesh = replace(MESH, points=nowhere).with_arrays(cell_data={"heat": np.array([1.0, np.nan, 3.0])})
+    for region in (
+        {"box": {"from": [0, 0, 0], "to": [2, 1, 1]}},
+        {"sphere": {"center": [0, 0, 0], "radius": 2}},
+        {"cylinder": {"from": [0, 0, 0], "to": [2, 0, 0], "radius": 1}},
+    ):
+        assert one(mesh, {**PULL, "region": "it"}, regions={"it": region}).state == "undecided", region
+        assert one(MESH, {**PULL, "region": "it"}, regions={"it": region}).state == "met", region
+    found = one(mesh, {**PULL, "region": "it"}, regions={"it": {"where": {"array": "heat", "below": 2}}})
+    assert found.state == "error"
+    assert "1 values of the array 'heat' are not finite" in found.message

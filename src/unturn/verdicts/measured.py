@@ -192,6 +192,7 @@ def _finish(step: Step, p: _Pending, certain: list[Certainty]) -> Measured:
     if p.selection.missing:
         n = p.selection.missing
         doubts.append(f"{n} value{'s' * (n != 1)} of the region {'are' if n != 1 else 'is'} not finite")
+    doubts += _hidden(step, p.selection)
     if statistic.extreme and "singular" not in limit.accept:
         doubts += [c.singular for c in certain if c.singular]
     doubts += _turning(step, limit)
@@ -211,6 +212,14 @@ def _finish(step: Step, p: _Pending, certain: list[Certainty]) -> Measured:
         left_out=p.left_out,
         not_computed=int(step.finder.find(limit.region).not_computed.sum()),
     )
+
+
+def _hidden(step: Step, selection: Selection) -> list[str]:
+    """Return the doubt that cells have no value where the values are not theirs, at nodes and on faces."""
+    if selection.column.on not in ("shares", "faces"):
+        return []
+    n = int((~np.isfinite(step.diagnostics.stretch[selection.cells])).sum())
+    return [f"{n} cell{'s' * (n != 1)} of the region {'have' if n != 1 else 'has'} no value"] if n else []
 
 
 def _turning(step: Step, limit: Limit) -> list[str]:
