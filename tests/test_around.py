@@ -55,7 +55,7 @@ def with_parts(name: str, n: int, size: float = 1e-2, stretch: tuple[float, ...]
     return mesh.result(u=noisy(mesh.points, mesh.element.dim, size)).with_arrays(cell_data={"part": part})
 
 
-def some(n: int, count: int = 12) -> list[int]:
+def some(n: int, count: int = 5) -> list[int]:
     """Some cells, the first and the last among them."""
     return [0, n - 1, *np.random.default_rng(0).permutation(n)[:count].tolist()]
 
@@ -76,7 +76,7 @@ def whole(
     return strain_error(recovered, base=base, at=at).plus_minus
 
 
-def same(model: Model, computed: Computed, count: int = 12, **how: Any) -> None:
+def same(model: Model, computed: Computed, count: int = 5, **how: Any) -> None:
     cells = some(model.result.n_cells, count)
     np.testing.assert_allclose(plus_minus(computed, cells), whole(model, **how)[cells], rtol=1e-9)
 

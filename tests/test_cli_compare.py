@@ -227,6 +227,24 @@ def test_a_series_against_a_single_state(desk: Path) -> None:
     assert (status, "is no series" in said) == (2, True)
 
 
+@pytest.mark.derived(
+    "the steps of a series on another mesh: a linear field is exact, and a wrong step is found"
+)
+def test_a_series_on_another_mesh(desk: Path) -> None:
+    fine = patch(ELEMENTS["tetra10"])
+    for name, factor in (("fine.xdmf", 1.0), ("off.xdmf", 1.02)):
+        with series_writer(desk / name) as writer:
+            for t in (0.0, 0.5, 1.0):
+                u = (factor if t == 0.5 else 1.0) * t * 1e-3 * fine.points * [1.0, -0.3, -0.3]
+                writer.add(fine.result(u=u), t)
+    options = ["--step", "all", "--array", "u", "--measures", "strain", "--json", "a.json"]
+    assert run(["compare", "before.xdmf", "fine.xdmf", *options])[0] == 0
+    assert run(["compare", "before.xdmf", "off.xdmf", *options])[0] == 1
+    data = json.loads(Path("a.json").read_text())
+    wrong = {f["id"]: f["details"]["steps_not_met"] for f in data["findings"] if f["state"] == "exceeded"}
+    assert wrong == {"point u in whole": [1], "computed strain in whole": [1]}
+
+
 # --- tolerances -------------------------------------------------------------------------------------------------------
 
 

@@ -582,6 +582,82 @@ def test_many_points_are_found_in_the_cells_that_hold_them(seed: int) -> None:
         assert own == pytest.approx(xi[k], abs=1e-7)
 
 
+def _mixed(n: int) -> Result:
+    """A cube with a skin below, a beam apart from it, and a vertex."""
+    mesh = box(n, "hexahedron")
+    t = np.linspace(0, 1, n + 1)[:, None]
+    points = np.vstack([mesh.points, t * [1.0, 2.0, 3.0] + [2.0, 0, 0]])
+    below = mesh.cells[np.isclose(mesh.points[mesh.cells][:, :4, 2], 0).all(axis=1)][:, :4]
+    beam = np.stack([np.arange(n), np.arange(1, n + 1)], axis=1) + len(mesh.points)
+    blocks, start = [], 0
+    for name, cells in (
+        ("hexahedron", mesh.cells),
+        ("quad", below),
+        ("line", beam),
+        ("vertex", np.array([[0]])),
+    ):
+        blocks.append(CellBlock(name, cells, np.arange(start, start + len(cells))))
+        start += len(cells)
+    groups = {b.cell_type: b.index for b in blocks[:3]}
+    return Result(points, tuple(blocks), {"u": linear(points)}, {"c": np.ones(start)}, groups=groups)
+
+
+@pytest.mark.derived("each dimension is looked for in its own; what has no element is told")
+def test_skins_beams_and_vertices() -> None:
+    one = unturn.compare(shuffled(_mixed(2)), _mixed(2), measures=["strain"])
+    assert one.passed
+    assert found(one, "mesh").details["kind"] == "renumbered"
+    other = unturn.compare(_mixed(2), _mixed(3), measures=["strain"])
+    assert other.passed, other.report
+    told = states(other)
+    assert told["cell c in quad"] == told["cell c in line"] == told["computed strain in line"] == "met"
+    assert "computed strain in quad" not in told  # skins are not computed unasked
+    assert any("no known element: 1" in note for note in other.report.notes)
+    wrong = _mixed(2)
+    c = wrong.cell_data["c"].copy()
+    c[wrong.groups["line"]] = 1.5
+    told = states(unturn.compare(wrong.with_arrays(cell_data={"c": c}), _mixed(3)))
+    assert (told["cell c in line"], told["cell c in quad"]) == ("exceeded", "met")
+
+
+@pytest.mark.derived("a share is taken among the cells of one dimension")
+def test_a_share_is_not_hidden_by_cells_of_a_higher_dimension() -> None:
+    before = replace(_mixed(2), groups={})
+    c = before.cell_data["c"].copy()
+    c[before.blocks[2].index] = 1.5  # both cells of the beam
+    now = before.with_arrays(cell_data={"c": c})
+    whole = unturn.compare(now, before, tolerances={"default": {"share": 0.9}}, regions=["body 2"])
+    assert not whole.passed
+    assert found(whole, "cell c in body 2").value == pytest.approx(100.0)
+
+
+@pytest.mark.derived("ghosts do not count, and the same cells must count in both")
+def test_cells_that_do_not_count() -> None:
+    mesh = box(2, "hexahedron")
+    c = np.ones(8)
+    c[3] = 2.0
+    before = mesh.result(u=linear(mesh.points)).with_arrays(cell_data={"c": np.ones(8)})
+    now = before.with_arrays(cell_data={"c": c})
+    ghost = {"left_out": {"ghost": np.array([3])}}
+    assert unturn.compare(replace(now, **ghost), replace(before, **ghost)).passed
+    one = found(unturn.compare(replace(now, **ghost), before), "cells that count")
+    assert (one.state, one.place["cell"]) == ("exceeded", 3)
+
+
+@pytest.mark.derived("a node that is nowhere in one result only makes another mesh")
+def test_a_node_that_is_nowhere() -> None:
+    mesh = box(3, "hexahedron")
+    points = mesh.points.copy()
+    points[0] = np.nan
+    result = mesh.result(u=linear(mesh.points))
+    broken = replace(result, points=points)
+    assert unturn.compare(broken, broken).passed
+    compared = unturn.compare(broken, result)
+    assert "nowhere in one of them" in found(compared, "mesh").message
+    assert states(compared)["reference outside"] == "undecided"
+    assert compared.report.exit_status == 1
+
+
 # --- series in memory -------------------------------------------------------------------------------------------------
 
 

@@ -176,6 +176,8 @@ class _Comparison:
         if options.measures:
             computed = measure_pairs(overlay, options.strain)
             pairs, notes = [*pairs, *computed.pairs], [*notes, *computed.notes]
+        if overlay.differ and (n := int((overlay.base.dimension == 0).sum())):
+            notes.append(f"cells of the reference of no known element: {n}; not compared on another mesh")
         lost = [*missing_findings(self.group, self.result, self.reference, self._wanted), *stored.findings]
         arrays: list[Finding] = []
         written: dict[Where, dict[str, Array]] = {"point": {}, "cell": {}, "field": {}}

@@ -110,8 +110,11 @@ def _pair(found: SideBySide, overlay: Overlay, group: str, where: Where, name: s
     if is_direction(name) and b.shape[1] == 3:
         left_open = left_open + _between_equal(reference, where, name)
     found.pairs.append(
-        Pair(name, label, where, at.values, b.astype(np.float64), left_open, names, outside=at.outside)
-    )
+        Pair(
+            name, label, where, at.values, b.astype(np.float64), left_open, names,
+            outside=at.outside, known=overlay.known(where),
+        )
+    )  # fmt: skip
 
 
 def _alike(a: Array, b: Array) -> bool:

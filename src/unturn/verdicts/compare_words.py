@@ -38,7 +38,7 @@ def mesh_finding(
         "reference_points": reference.result.n_points,
         "reference_cells": reference.result.n_cells,
     }
-    return Finding("mesh", group, "the mesh is that of the reference", state, message, details=details)
+    return Finding("mesh", group, "mesh of the result and of the reference", state, message, details=details)
 
 
 def coverage_finding(

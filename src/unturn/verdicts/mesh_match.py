@@ -59,7 +59,8 @@ def match(mesh: MeshView, reference: MeshView) -> MeshMatch:
             order = np.arange(reference.result.n_points)
             order[~used] = _loose(mesh, reference, tolerance)
             return MeshMatch("same", "", apart, order, np.arange(reference.result.n_cells))
-        return MeshMatch("different", f"the same cells, with points up to {apart:.3g} apart")
+        how = f"up to {apart:.3g} apart" if np.isfinite(apart) else "that are nowhere in one of them"
+        return MeshMatch("different", f"the same cells, with points {how}")
     ours, theirs = _kinds(mesh), _kinds(reference)
     if ours != theirs:
         return MeshMatch("different", f"{_counts(ours)}; the reference has {_counts(theirs)}")

@@ -65,6 +65,15 @@ class MeshView:
         """Points of no cell at all."""
         return np.flatnonzero(~used_points(self.result.blocks, self.result.n_points))
 
+    @cached_property
+    def point_dimension(self) -> NDArray[np.int8]:
+        """`(n_points,)` highest dimension of the cells of each point; 0 without any that has an element."""
+        found = np.zeros(self.result.n_points, dtype=np.int8)
+        for block in self.result.blocks:
+            highest = np.repeat(self.dimension[block.index], block.connectivity.shape[1])
+            np.maximum.at(found, block.connectivity.reshape(-1), highest)
+        return found
+
     @property
     def size(self) -> float:
         """The largest extent of the points that count."""

@@ -64,6 +64,13 @@ class Overlay:
         assert order is not None
         return Placed(values[order], outside=order < 0)
 
+    def known(self, where: Where) -> NDArray[np.bool_] | None:
+        """Return the places of the reference that another mesh could have: those of cells that have an element."""
+        if where == "field" or not self.differ:
+            return None
+        known: NDArray[np.bool_] = (self.base.dimension if where == "cell" else self.base.point_dimension) > 0
+        return known
+
     @property
     def cells(self) -> Sampled:
         """Where the middles of the reference's cells lie in the other mesh."""
@@ -77,11 +84,7 @@ class Overlay:
         """Where the reference's points lie in the other mesh."""
         if "points" not in self._searched:
             parts = [(self.base.points_of(theirs.cells), ours.cells) for theirs, ours in self._shared_parts]
-            dimension = np.zeros(self.base.result.n_points, dtype=np.int8)
-            for block in self.base.result.blocks:
-                highest = np.repeat(self.base.dimension[block.index], block.connectivity.shape[1])
-                np.maximum.at(dimension, block.connectivity.reshape(-1), highest)
-            self._searched["points"] = sample(self.mesh, self.base.points, dimension, parts)
+            self._searched["points"] = sample(self.mesh, self.base.points, self.base.point_dimension, parts)
         return self._searched["points"]
 
     @property
