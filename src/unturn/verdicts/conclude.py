@@ -88,7 +88,7 @@ def conclude(
     if state == "exceeded" and errors:
         message = f"not tested in step {measured[errors[0]].step}: {states[errors[0]][1]}"
     if stopped and state != "exceeded":
-        state, message = "error", stopped
+        state, message = "error", "; ".join(t for t in (message, stopped) if t)
     details = _details(limit, m, states, measured)
     if limit.waiver is not None and state in ("exceeded", "undecided"):
         until = f"until {limit.waiver.expires} by {limit.waiver.owner}: {limit.waiver.reason}"
