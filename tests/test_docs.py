@@ -29,7 +29,7 @@ from unturn.series import SERIES_MEASURES
 from unturn.verdicts.finding import STATES
 from unturn.verdicts.tolerances import ARRAY_KEYS, FILE_KEYS
 
-SAMPLES = [p for p in (ROOT / "sample_meshes").iterdir() if p.suffix in (".vtu", ".xdmf", ".h5")]
+SAMPLES = [p for p in (ROOT / "sample_meshes").iterdir() if p.suffix in (".vtu", ".xdmf", ".h5", ".toml")]
 README, DOCS = ROOT / "README.md", ROOT / "docs"
 COMMANDS: dict[str, Any] = dict(get_command(app).commands)  # type: ignore[attr-defined]
 

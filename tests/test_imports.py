@@ -26,6 +26,7 @@ LAYERS = (
     ("trust", "peaks", "surface", "quadrature_points", "nodal", "cutout"),
     ("agreement", "pipeline", "trial", "series"),
     ("around",),
+    ("trusted",),
     ("elsewhere",),
     ("extremes", "same_mesh", "locate", "convergence"),
     ("envelope", "quantities"),

@@ -97,56 +97,85 @@ class Trust:
 
 @dataclass(frozen=True)
 class Bound:
-    """How the bound of a measure follows from that of a tensor: `base` of `strain_error`, and the most it changes.
+    """How the bound of a measure follows from that of tensors.
 
-    `strain` tells whether it is a strain, whose peaks may be singular.
+    Attributes
+    ----------
+    bases
+        The tensors, as `base` of `strain_error`; their bounds are added.
+    change
+        How much the measure changes at most when a tensor changes by one that has norm one.
+    kind
+        ``strain``, whose peaks may be singular, ``other``, or one whose change is no multiple: ``angle``, of the rotation R,
+        and ``ratio``, whose logarithm changes.
     """
 
-    base: str
+    bases: tuple[str, ...]
     change: float
-    strain: bool = True
+    kind: Literal["strain", "other", "angle", "ratio"] = "strain"
 
-    def of(self, plus_minus: float) -> float:
-        """Return the bound of the measure."""
-        if self.base == "turn":
-            return 2.0 * math.asin(min(0.5 * plus_minus, 1.0)) if plus_minus >= 0 else math.nan
-        return self.change * plus_minus
+    def of(self, plus_minus: float, value: float) -> float:
+        """Return the bound of the measure, from that of the tensors, at a value."""
+        change = self.change * plus_minus
+        if self.kind == "angle":
+            return 2.0 * math.asin(min(0.5 * change, 1.0))
+        return abs(value) * math.expm1(min(change, 700.0)) if self.kind == "ratio" else change
 
 
-def bound_of(measure: str, model: Model, equivalent_poisson: float | None = None) -> Bound | None:
+_MOTION = {
+    "rotation": Bound(("rotation",), 1.0, "other"),
+    "rotation_angle": Bound(("rotation",), 1.0, "other"),
+    "small_strain_error": Bound(("", "biot"), 1.0, "other"),
+    "finite_rotation_angle": Bound(("turn",), 1.0, "angle"),
+    "angle_of_turn": Bound(("turn",), 1.0, "angle"),
+    "stretch": Bound(("biot",), 1.0, "other"),
+    "det_f": Bound(("hencky",), 3.0**0.5, "ratio"),
+}
+
+
+def bound_of(
+    measure: str, poisson: float | None = None, equivalent_poisson: float | None = None
+) -> Bound | None:
     """Return how the bound of a measure comes about, or None where none is known.
 
     Parameters
     ----------
     measure
         As of `Asked`.
-    model
-        Its mesh: on surfaces and lines in space only small measures have a bound.
+    poisson
+        Poisson's ratio behind the equivalent strain of free surfaces.
     equivalent_poisson
         Effective Poisson ratio of the equivalent strain.
 
     Notes
     -----
-    Of strain by `MOST_CHANGE`. Rotation vectors, their components and lengths change by no more than the vector; stretches,
-    the eigenvalues of U, by no more than the norm of the change of U (Weyl 1912); the angle of R by no more than the
-    angle between the two (it is their distance from the identity).
+    Strain: `MOST_CHANGE`. The rotation vector bounds its components and its length. Stretches are the eigenvalues of U and
+    change by no more than its norm (Weyl 1912). The angle of R is its distance from the identity, and changes by no more
+    than the angle between two rotations, `2 asin(norm(R* - R)/sqrt 8)`. `ln det F` is the trace of `ln U`. The error of the
+    small strain, `norm(e - (U - I))`, changes by no more than e and U together. On free surfaces the small strain along the
+    normal, `-k (e_1 + e_2)` with `k = nu/(1-nu)`, adds to that within the surface, of which the norm is: the whole tensor
+    changes by up to sqrt(1 + 2 k^2) times as much.
     """
-    if measure in ("rotation", "rotation_angle"):
-        return Bound("rotation", 1.0, strain=False)
-    spatial = any(b.kind in ("surface", "line") and len(b.active) for b in model.blocks)
-    if measure in ("angle_of_turn", "finite_rotation_angle"):
-        return None if spatial else Bound("turn", 1.0, strain=False)
-    if measure == "stretch":
-        return None if spatial else Bound("biot", 1.0, strain=False)
-    row = MEASURES.get(measure)
+    if measure in _MOTION:
+        return _MOTION[measure]
+    row = MEASURES.get(measure.removeprefix("surface_"))
     if row is None:
         return None
-    base = next((b for b in BASES if measure.endswith(f"_{b}")), "")
-    kind = row.base if base else measure.replace("mechanical_strain", "strain").removesuffix("_mechanical")
-    if kind not in MOST_CHANGE or (base and spatial):
+    base = base_of(measure)
+    small = row.base if base else row.name.replace("mechanical_strain", "strain").removesuffix("_mechanical")
+    if small not in MOST_CHANGE:
         return None
-    other = kind == "equivalent_strain" and equivalent_poisson is not None
-    return Bound(base, MOST_CHANGE[kind] * (1.5 / (1.0 + (equivalent_poisson or 0.0)) if other else 1.0))
+    change = MOST_CHANGE[small]
+    if small == "equivalent_strain" and equivalent_poisson is not None:
+        change *= 1.5 / (1.0 + equivalent_poisson)
+    if measure == "surface_equivalent_strain" and poisson is not None:
+        change *= math.sqrt(1.0 + 2.0 * (poisson / (1.0 - poisson)) ** 2)
+    return Bound((base,), change)
+
+
+def base_of(measure: str) -> str:
+    """Return the finite base of a measure by its name, empty for small ones."""
+    return next((b for b in BASES if measure.endswith(f"_{b}")), "")
 
 
 def trust_of(
@@ -178,20 +207,22 @@ def trust_of(
     model, finite = computed.fields.model, computed.finite_model
     groups = groups_of(model, regions)
     at: Location = "mean" if computed.request.get("at") == "mean" else "centroid"
+    judged = computed.request.get("solve") != "linear"  # the turn is then that of the motion
+
+    def of_motion(a: Asked) -> bool:
+        row = MEASURES.get(a.measure)
+        return a.measure == "stretch" or (
+            judged if a.measure == "angle_of_turn" else row is not None and row.finite
+        )
+
     found = [Trust(math.nan)] * len(asked)
     for behind in (model,) if finite is None else (model, finite):
-        mine = [
-            k for k, a in enumerate(asked) if finite is None or _of_finite(a.measure) is (behind is finite)
-        ]
+        mine = [k for k, a in enumerate(asked) if finite is None or of_motion(a) is (behind is finite)]
         part = [asked[k] for k in mine]
         answers = trust_on(behind, d.volume, groups, part, computed.equivalent_poisson, at, threads)
         for k, answer in zip(mine, answers):
             found[k] = answer
     return found
-
-
-def _of_finite(measure: str) -> bool:
-    return measure in ("stretch", "angle_of_turn") or (measure in MEASURES and MEASURES[measure].finite)
 
 
 def groups_of(model: Model, regions: Sequence[Region] | None = None) -> Ints:
@@ -226,15 +257,16 @@ def trust_on(
         Where the values live.
     """
     found = [Trust(math.nan)] * len(asked)
-    bounds = {k: bound_of(a.measure, model, equivalent_poisson) for k, a in enumerate(asked) if a.cell >= 0}
-    known = {k: b for k, b in bounds.items() if b is not None}
+    bounds = {k: bound_of(a.measure, model.poisson, equivalent_poisson) for k, a in enumerate(asked)}
+    there = computed_cells(model)
+    known = {k: b for k, b in bounds.items() if b is not None and asked[k].cell >= 0 and there[asked[k].cell]}
     if not known:
         return found
     mesh = _Mesh(Cutter(model), volume, groups, at, threads)
     near = mesh.around(np.array([asked[k].cell for k in known]), RINGS)
     for k, bound in known.items():
-        found[k] = Trust(near.plus_minus(bound, asked[k].cell))
-    doubtful = [k for k, b in known.items() if b.strain and near.grows(asked[k])]
+        found[k] = Trust(near.plus_minus(bound, asked[k], asked[k].cell))
+    doubtful = [k for k, b in known.items() if b.kind == "strain" and near.grows(asked[k])]
     for taken in _TAKEN:
         if not doubtful:
             break
@@ -295,9 +327,11 @@ class _Around:
             self.errors[base] = strain_error(self.recovered, self.threads, base, self.at)
         return self.errors[base]
 
-    def plus_minus(self, bound: Bound, cell: int) -> float:
+    def plus_minus(self, bound: Bound, asked: Asked, cell: int) -> float:
         """Return the bound of a measure at a cell of the file."""
-        return bound.of(float(self.error(bound.base).plus_minus[self.own(np.array([cell]))[0]]))
+        own = self.own(np.array([cell]))[0]
+        total = sum(float(self.error(base).plus_minus[own]) for base in bound.bases)
+        return bound.of(total, float(asked.values[cell]))
 
     @cached_property
     def peaks(self) -> Peaks:
@@ -334,7 +368,7 @@ class _Around:
         values, own = asked.values[self.part.cells], self.own(among)
 
         def suspected(peak: Peak) -> bool:
-            return self.suspected(peak, bound.base, asked.size)
+            return self.suspected(peak, bound.bases[0], asked.size)
 
         peak = self.peak(asked)
         if not suspected(peak):
@@ -348,7 +382,7 @@ class _Around:
             peak.growth,
             there,
             after.value,
-            self.plus_minus(bound, there) if there >= 0 else math.nan,
+            self.plus_minus(bound, asked, there) if there >= 0 else math.nan,
         )
 
 

@@ -48,6 +48,7 @@ def check(
     """Hold results against limits: met, exceeded or undecided, each with its value, margin and place."""
     from unturn.verdicts.explain import explain_limits
     from unturn.verdicts.finding import Report, hashed_file
+    from unturn.verdicts.inputs import hashed_inputs
     from unturn.verdicts.read_limits import read_limits
 
     day = _date(today)
@@ -72,7 +73,7 @@ def check(
         checked = _one(path, limits, day, threads)
         findings += checked.findings
         if checked.unusable is None:
-            inputs.append(hashed_file("result", path))
+            inputs += hashed_inputs("result", path)
         else:
             unusable.append(checked.unusable)
             typer.echo(f"unturn: {path}: {checked.unusable}", err=True)

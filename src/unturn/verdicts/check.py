@@ -8,10 +8,11 @@ from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import Protocol
 
-from unturn.errors import UnturnError, UsageError
+from unturn.errors import InputError, UnturnError, UsageError
 from unturn.pipeline import StrainOptions, settled
 from unturn.result import Result
 from unturn.rigid import RigidMotion
+from unturn.verdicts.certainty import plus_minus_at
 from unturn.verdicts.conclude import conclude
 from unturn.verdicts.finding import Finding
 from unturn.verdicts.limit import Limit, Limits
@@ -34,7 +35,7 @@ class Opened(Protocol):
         ...
 
 
-@dataclass(frozen=True)
+@dataclass
 class InMemory:
     """A result in memory as if it were a file."""
 
@@ -128,9 +129,11 @@ class _Run:
         self.opened, self.limits, self.threads = opened, limits, threads
         self.times = opened.steps
         self.n = 1 if self.times is None else len(self.times)
+        if not self.n:
+            raise InputError(f"{opened.path}: the series holds no step.")
         self.needed = needed_steps(limits, self.n)
         self.plain = [v for v in limits.limits if not STATISTICS[v.statistic].over_steps]
-        self.over = OverSteps([v for v in limits.limits if STATISTICS[v.statistic].over_steps])
+        self.over = OverSteps([v for v in limits.limits if STATISTICS[v.statistic].over_steps], self.times)
         self.measured: dict[str, list[Measured]] = {v.id: [] for v in limits.limits}
         self.seen = evidence(limits, opened.path, self.times)
         self.unusable: UnturnError | None = None
@@ -203,9 +206,18 @@ class _Run:
                     seen.verdicts[region] = str(error)
 
     def finish(self) -> None:
-        """Take what is of all steps together."""
-        for limit, measured in self.over.finish():
-            self.measured[limit.id].append(measured)
+        """Take what is of all steps together; the plus and minus of a range is that of the two steps that make it."""
+        found = self.over.finish()
+        reach = {r.limit.id: 0.0 for r in found}
+        for number in sorted({s for r in found for s in r.steps}):
+            here = [r for r in found if number in r.steps]
+            step = self._read(number, None)
+            asked = [(r.limit.quantity, r.limit.statistic == "tensor_range", r.cell) for r in here]
+            for r, plus_minus in zip(here, plus_minus_at(step, asked)):
+                reach[r.limit.id] += plus_minus
+        for r in found:
+            measured = replace(r.measured, plus_minus=reach[r.limit.id]) if r.steps else r.measured
+            self.measured[r.limit.id].append(measured)
 
     def concluded(self, group: str, today: datetime.date) -> Checked:
         """Return every verdict."""

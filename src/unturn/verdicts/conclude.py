@@ -11,7 +11,7 @@ from unturn.verdicts.finding import Finding, Place, State
 from unturn.verdicts.limit import Limit
 from unturn.verdicts.measured import Measured
 from unturn.verdicts.statistic import STATISTICS
-from unturn.verdicts.units import Unit, shown_in, unit_words
+from unturn.verdicts.units import shown_in, unit_words
 from unturn.verdicts.wording import number, place_text
 
 _RANKS: tuple[State, ...] = ("met", "warning", "undecided", "error", "exceeded")
@@ -30,13 +30,13 @@ def state_of(limit: Limit, m: Measured) -> tuple[State, str]:
     Beyond the bound is exceeded, whatever else is in doubt. Inside, any doubt makes it undecided: the plus and minus
     reaches across, a value is missing, the peak is suspected singular.
     """
-    if m.error:
-        return "error", m.error
-    if (m.high is not None and m.value > m.high) or (m.low is not None and m.value < m.low):
+    if m.error or math.isnan(m.value):
+        return "error", m.error or "it has no value"
+    if _room(m) < 0:
         return "exceeded", ""
     doubts = list(m.doubts)
     reach = 0.0 if math.isnan(m.plus_minus) or "plus-minus" in limit.accept else m.plus_minus
-    if (m.high is not None and m.value + reach > m.high) or (m.low is not None and m.value - reach < m.low):
+    if _reaches(m, reach):
         doubts.insert(0, "inside, but the plus and minus reaches across the bound")
     if doubts:
         return "undecided", "; ".join(doubts)
@@ -52,9 +52,15 @@ def state_of(limit: Limit, m: Measured) -> tuple[State, str]:
 
 def _room(m: Measured) -> float:
     """Return what is left up to the nearer bound; below zero beyond it."""
-    rooms = [m.high - m.value] if m.high is not None else []
-    rooms += [m.value - m.low] if m.low is not None else []
+    rooms = [m.high.base - m.value] if m.high is not None else []
+    rooms += [m.value - m.low.base] if m.low is not None else []
     return min(rooms, default=math.inf)
+
+
+def _reaches(m: Measured, reach: float) -> bool:
+    """Return whether a value that is off by so much may be beyond a bound."""
+    over = m.high is not None and m.value + reach > m.high.base
+    return over or (m.low is not None and m.value - reach < m.low.base)
 
 
 def conclude(
@@ -91,14 +97,19 @@ def conclude(
         elif not errors and not stopped:
             message = "; ".join(t for t in (state, message, f"waived {until}") if t)
             details["waived"], state = state, "waived"
-    return _finding(limit, group, m, state, message + _left_out_words(limit, m, bool(message)), details)
+    n = m.not_computed
+    missed = (
+        f"{n} cell{'s' * (n != 1)} of {limit.region} {'is' if n == 1 else 'are'} not computed" if n else ""
+    )
+    said = (message, m.note, _left_out_words(limit, m), missed)
+    return _finding(limit, group, m, state, "; ".join(t for t in said if t), details)
 
 
-def _left_out_words(limit: Limit, m: Measured, more: bool) -> str:
+def _left_out_words(limit: Limit, m: Measured) -> str:
     if m.left_out is None or not m.left_out.get("cells"):
         return ""
     n, largest = m.left_out["cells"], m.left_out.get("largest")
-    said = f"{'; ' if more else ''}{n} cell{'s' * (n != 1)} left out of {limit.region}"
+    said = f"{n} cell{'s' * (n != 1)} left out of {limit.region}"
     if largest is None:
         return said
     where = place_text(
@@ -124,6 +135,7 @@ def _details(
         "values": m.count,
         "without_value": m.missing,
         "left_out": m.left_out,
+        "not_computed": m.not_computed,
         "steps": [
             {"step": k.step, "time": k.time, "state": s, "value": _in_unit(limit, k)}
             for k, (s, _) in zip(measured, states)
@@ -141,21 +153,15 @@ def _in_unit(limit: Limit, m: Measured) -> float | None:
     """Return the value in the unit of the limit, on the side of its bounds on which it was found."""
     if math.isnan(m.value):
         return None
-    unit: Unit = STATISTICS[limit.statistic].unit_of(limit)
-    pairs = [(m.low, m.low_written), (m.high, m.high_written)]
-    near = [(b, w) for b, w in pairs if b is not None and w is not None]
-    if not near:
-        return unit.from_base(m.value)
-    bound, written = min(near, key=lambda pair: abs(m.value - pair[0]))
-    return shown_in(unit, m.value, bound, written)
+    return shown_in(STATISTICS[limit.statistic].unit_of(limit), m.value, m.low, m.high)
 
 
 def _finding(
     limit: Limit, group: str, m: Measured, state: State, message: str, details: dict[str, Any]
 ) -> Finding:
     unit = STATISTICS[limit.statistic].unit_of(limit)
-    low = m.low_written if m.low_written is not None else limit.at_least
-    high = m.high_written if m.high_written is not None else limit.at_most
+    low = limit.at_least if m.low is None else m.low.written
+    high = limit.at_most if m.high is None else m.high.written
     return Finding(
         id=limit.id,
         group=group,

@@ -58,8 +58,10 @@ def _least(cells: int) -> str:
 def _reading(limits: Limits) -> list[str]:
     options, plain = limits.options, StrainOptions()
     said = [f"solve: stated {options.solve}" if options.solve != "unknown" else "solve: not stated"]
-    stated = [n for n in limits.settings["reading"] if n != "zero_step"]
+    stated = [n for n in limits.settings["reading"] if hasattr(options, n)]
     said += [f"{n} = {getattr(options, n)}" for n in stated if getattr(options, n) != getattr(plain, n)]
+    if limits.surface_poisson is not None:
+        said.append(f"surface_poisson = {limits.surface_poisson}")
     if limits.zero_step is not None:
         said.append(f"displacements are measured from step {limits.zero_step}")
     return [*said, f"equivalent = {equivalent_form(options.equivalent_poisson)}"]

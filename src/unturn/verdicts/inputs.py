@@ -3,17 +3,12 @@
 from __future__ import annotations
 
 import hashlib
-import re
 from pathlib import Path
 
+from unturn.io import files_behind
 from unturn.verdicts.finding import InputFile, hashed_file
 
-_INDEX = (".xdmf", ".xmf", ".xdmf3", ".pvd", ".pvtu", ".pvtp", ".pvts", ".pvtr", ".pvti", ".vtm")
-_NAMED = re.compile(
-    rb"""(?:file|href)\s*=\s*["']([^"'<>]+)["']|([^\s"'<>:]+\.(?:h5|hdf5|hdf|bin|raw|dat))\b""", re.IGNORECASE
-)
 _MOST_LISTED = 4
-_DEEPEST = 4
 
 
 def hashed_inputs(role: str, path: Path | str) -> tuple[InputFile, ...]:
@@ -33,22 +28,9 @@ def hashed_inputs(role: str, path: Path | str) -> tuple[InputFile, ...]:
         A file cannot be read.
     """
     main = hashed_file(role, path)
-    behind = [hashed_file(f"{role} data", p) for p in _behind(Path(path), _DEEPEST)]
+    behind = [hashed_file(f"{role} data", p) for p in files_behind(Path(path))]
     if len(behind) <= _MOST_LISTED:
         return (main, *behind)
     lines = "".join(f"{f.sha256}  {Path(f.path).name}\n" for f in behind)
     digest = hashlib.sha256(lines.encode(errors="surrogateescape")).hexdigest()
     return main, InputFile(f"{role} data", f"{len(behind)} files that {main.path} names", digest)
-
-
-def _behind(path: Path, depth: int) -> list[Path]:
-    """Return the existing files that an index names, in order, and those that they name."""
-    if path.suffix.lower() not in _INDEX or not depth:
-        return []
-    found: dict[Path, None] = {}
-    for match in _NAMED.finditer(path.read_bytes()):
-        other = path.parent / (match[1] or match[2]).decode(errors="surrogateescape")
-        if other.is_file() and other != path:
-            found[other] = None
-            found.update(dict.fromkeys(_behind(other, depth - 1)))
-    return list(found)

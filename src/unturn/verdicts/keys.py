@@ -11,6 +11,7 @@ from unturn.errors import UsageError, close_matches
 from unturn.verdicts.kinds import REQUIRED, Key, Kind, Wrong, shown
 
 Path = tuple[str | int, ...]
+_LONGEST = 1000  # characters of a line in which a key or table is looked for
 
 
 class Lines:
@@ -28,6 +29,8 @@ class Lines:
         table: Path = ()
         counts: dict[str, int] = {}
         for number, line in enumerate(text.splitlines(), 1):
+            if len(line) > _LONGEST:
+                continue
             header, key = self._HEADER.match(line), self._LINE.match(line)
             if header is not None:
                 name = tuple(part.strip().strip("\"'") for part in header[2].split("."))

@@ -140,6 +140,8 @@ class Limits:
         Key of `unturn.verdicts.preconditions.PRECONDITIONS` -> value.
     options
         How the result is read; measures, base and location are those of the limits.
+    surface_poisson
+        Poisson's ratio of solids, for the strain across their free faces.
     zero_step
         Step from which displacements are measured.
     regions
@@ -154,6 +156,7 @@ class Limits:
     title: str
     required: Mapping[str, Any]
     options: StrainOptions
+    surface_poisson: float | None
     zero_step: int | None
     regions: Mapping[str, RegionSpec]
     limits: tuple[Limit, ...]

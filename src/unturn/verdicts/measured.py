@@ -19,6 +19,7 @@ from unturn.verdicts.limit import Limit, Quantity
 from unturn.verdicts.region_select import NoRegion
 from unturn.verdicts.statistic import STATISTICS, Got, Sample
 from unturn.verdicts.step import Step
+from unturn.verdicts.units import BoundAt
 
 
 @dataclass(frozen=True)
@@ -32,7 +33,7 @@ class Measured:
     value, plus_minus
         As computed; NaN where there is none.
     low, high
-        Bounds that it is held against, as computed, and as they are written.
+        Bounds that it is held against.
     place
         Where.
     count, missing
@@ -41,24 +42,28 @@ class Measured:
         Why it is not tested; empty when it is.
     doubts
         Why it is undecided even inside its bound.
+    note
+        What else there is to say of it.
     left_out
         What the region names and leaves out.
+    not_computed
+        Cells of the region that are not computed.
     """
 
     step: int | None
     time: float | None
     value: float = math.nan
     plus_minus: float = math.nan
-    low: float | None = None
-    high: float | None = None
-    low_written: float | None = None
-    high_written: float | None = None
+    low: BoundAt | None = None
+    high: BoundAt | None = None
     place: Place = field(default_factory=Place)
     count: int = 0
     missing: int = 0
     error: str = ""
     doubts: tuple[str, ...] = ()
+    note: str = ""
     left_out: dict[str, Any] | None = None
+    not_computed: int = 0
 
 
 @dataclass(frozen=True, eq=False)
@@ -69,7 +74,8 @@ class _Pending:
     selection: Selection
     sample: Sample
     got: Got
-    bounds: tuple[float | None, float | None, float | None, float | None]
+    low: BoundAt | None
+    high: BoundAt | None
     left_out: dict[str, Any] | None
 
 
@@ -95,8 +101,8 @@ def _begin(step: Step, limit: Limit) -> _Pending | Measured:
         if stop:
             return Measured(step.shown, step.time, error=stop, missing=selection.missing)
         sample = Sample(_based(limit, selection.values), selection.weights)
-        got, bounds = _held_against(step, limit, selection, sample)
-        return _Pending(limit, selection, sample, got, bounds, _left_out(step, limit))
+        got, low, high = _held_against(step, limit, selection, sample)
+        return _Pending(limit, selection, sample, got, low, high, _left_out(step, limit))
     except (NoRegion, NoValues, UnturnError) as error:
         return Measured(step.shown, step.time, error=str(error))
 
@@ -119,23 +125,25 @@ def _refused(step: Step, limit: Limit, selection: Selection) -> str:
 
 def _based(limit: Limit, values: Floats) -> Floats:
     """Return values as they are computed: strain without a unit, radian."""
-    if limit.stored_in is None or limit.stored_in.to_base(1.0) == 1.0:
+    if limit.stored_in is None or limit.stored_in.per_base == 1.0:
         return values
-    return np.asarray(limit.stored_in.to_base(values))  # type: ignore[arg-type]
+    return limit.stored_in.to_base(values)
 
 
 def _held_against(
     step: Step, limit: Limit, selection: Selection, sample: Sample
-) -> tuple[Got, tuple[float | None, float | None, float | None, float | None]]:
-    """Return the statistic and its bounds: low and high as computed, low and high as written."""
+) -> tuple[Got, BoundAt | None, BoundAt | None]:
+    """Return the statistic and its bounds, low and high."""
     statistic = STATISTICS[limit.statistic]
     array = limit.at_most_array or limit.at_least_array
     if array is None:
         unit = statistic.unit_of(limit)
-        low, high = (None if b is None else unit.to_base(b) for b in (limit.at_least, limit.at_most))
-        return statistic.compute(sample, limit), (low, high, limit.at_least, limit.at_most)
+        low, high = (
+            None if b is None else BoundAt(unit.to_base(b), b) for b in (limit.at_least, limit.at_most)
+        )
+        return statistic.compute(sample, limit), low, high
     written = _bounds_of(step, selection, array)
-    bounds = np.asarray(limit.unit.to_base(written))  # type: ignore[arg-type]
+    bounds = limit.unit.to_base(written)
     values = np.abs(sample.values) if statistic.magnitude else sample.values
     upper = limit.at_most_array is not None
     room = bounds - values if upper else values - bounds
@@ -144,9 +152,9 @@ def _held_against(
         raise NoValues(f"the array {array!r} has no finite bound for {n} of {len(room)} values")
     at = int(room.argmin())
     smallest = not upper or (statistic.magnitude and bool(sample.values[at] < 0))
+    bound = BoundAt(float(bounds[at]), float(written[at]))
     got = Got(float(values[at]), ((at, smallest),))
-    bound, as_written = float(bounds[at]), float(written[at])
-    return got, (None, bound, None, as_written) if upper else (bound, None, as_written, None)
+    return (got, None, bound) if upper else (got, bound, None)
 
 
 def _bounds_of(step: Step, selection: Selection, array: str) -> Floats:
@@ -184,16 +192,34 @@ def _finish(step: Step, p: _Pending, certain: list[Certainty]) -> Measured:
     if p.selection.missing:
         n = p.selection.missing
         doubts.append(f"{n} value{'s' * (n != 1)} of the region {'are' if n != 1 else 'is'} not finite")
+    doubts += _hidden(step, p.selection)
     if statistic.extreme and "singular" not in limit.accept:
         doubts += [c.singular for c in certain if c.singular]
     doubts += _turning(step, limit)
-    low, high, low_written, high_written = p.bounds
     when: Place = {"step": step.shown, "time": step.time}
     where = step.place(p.selection.column, int(p.selection.index[p.got.ends[0][0]])) if p.got.ends else when
     return Measured(
-        step.shown, step.time, p.got.value, statistic.spread(p.sample, limit, p.got, ends), low, high, low_written,
-        high_written, where, len(p.selection.values), p.selection.missing, "", tuple(doubts), p.left_out,
-    )  # fmt: skip
+        step.shown,
+        step.time,
+        value=p.got.value,
+        plus_minus=statistic.spread(p.sample, limit, p.got, ends),
+        low=p.low,
+        high=p.high,
+        place=where,
+        count=len(p.selection.values),
+        missing=p.selection.missing,
+        doubts=tuple(doubts),
+        left_out=p.left_out,
+        not_computed=int(step.finder.find(limit.region).not_computed.sum()),
+    )
+
+
+def _hidden(step: Step, selection: Selection) -> list[str]:
+    """Return the doubt that cells have no value where the values are not theirs, at nodes and on faces."""
+    if selection.column.on not in ("shares", "faces"):
+        return []
+    n = int((~np.isfinite(step.diagnostics.stretch[selection.cells])).sum())
+    return [f"{n} cell{'s' * (n != 1)} of the region {'have' if n != 1 else 'has'} no value"] if n else []
 
 
 def _turning(step: Step, limit: Limit) -> list[str]:

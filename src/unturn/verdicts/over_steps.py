@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import contextlib
 from collections.abc import Sequence
-from dataclasses import replace
+from dataclasses import dataclass, replace
 from types import TracebackType
 
 import numpy as np
@@ -16,17 +16,27 @@ from unturn.kinematics._symmetric import Floats
 from unturn.same_mesh import ReferenceMesh
 from unturn.tensor_range import TensorRange
 from unturn.verdicts.columns import Column, NoValues
+from unturn.verdicts.finding import Place
 from unturn.verdicts.limit import Limit, Quantity
 from unturn.verdicts.measured import Measured, measure_all
-from unturn.verdicts.region_select import NoRegion
 from unturn.verdicts.step import Step
+
+
+@dataclass(frozen=True)
+class Ranged:
+    """A limit over steps: what was found, the cell that holds it (-1: none) and the two steps that make it."""
+
+    limit: Limit
+    measured: Measured
+    cell: int = -1
+    steps: tuple[int, ...] = ()
 
 
 class OverSteps:
     """Takes one step after the other for the limits that are of all of them; used as a context manager."""
 
-    def __init__(self, limits: Sequence[Limit]) -> None:
-        self.limits = limits
+    def __init__(self, limits: Sequence[Limit], times: tuple[float, ...] | None) -> None:
+        self.limits, self._times = limits, times
         self._stack = contextlib.ExitStack()
         self._mesh: ReferenceMesh | None = None
         self._last: Step | None = None
@@ -77,37 +87,39 @@ class OverSteps:
             return _Numbers(step.result.n_cells)
         return _Tensors(self._stack.enter_context(TensorRange(step.result.n_cells)), step.result.n_cells)
 
-    def finish(self) -> list[tuple[Limit, Measured]]:
-        """Return each limit with what was found, once; after that its steps are forgotten."""
+    def finish(self) -> list[Ranged]:
+        """Return each limit with what was found; after that the last step is forgotten."""
+        step, self._last = self._last, None
         found = []
         finished: dict[tuple[Quantity, object], tuple[Floats, NDArray[np.int64]]] = {}
         for limit in self.limits:
-            step = self._last
             key = limit.quantity, (limit.statistic, limit.steps)
             error = self._errors.get(limit.id, "")
             if not error and self._taken[limit.id] < 2:
                 error = f"a range over steps needs two at least, and {self._taken[limit.id]} could be used"
-            if step is None or key not in self._ranges or error:
-                found.append((limit, Measured(None, None, error=error)))
+            if step is None or error:
+                why = error or "its last step could not be used"
+                found.append(Ranged(limit, Measured(None, None, error=why)))
                 continue
             if key not in finished:
                 finished[key] = self._ranges[key].finish(step)
-            values, made_by = finished[key]
-            found.append((limit, self._measured(step, limit, values, made_by)))
+            found.append(self._ranged(step, limit, *finished[key]))
         return found
 
-    def _measured(self, step: Step, limit: Limit, values: Floats, made_by: NDArray[np.int64]) -> Measured:
+    def _ranged(self, step: Step, limit: Limit, values: Floats, made_by: NDArray[np.int64]) -> Ranged:
         """Return a limit held against ranges, as if they were values of the last step."""
-        try:
-            step.replace_column(limit.quantity, Column(values, "cells", None))
-            measured = measure_all(step, [limit])[0]
-        except NoRegion as error:
-            return Measured(step.shown, None, error=str(error))
+        step.replace_column(limit.quantity, Column(values, "cells", None))
+        measured = measure_all(step, [limit])[0]
         cell = measured.place.get("cell")
         if measured.error or cell is None:
-            return measured
-        later = int(made_by[cell].max())
-        return replace(measured, step=later, time=None, place={**measured.place, "step": later, "time": None})
+            return Ranged(limit, measured)
+        first, later = sorted(int(s) for s in made_by[cell])
+        time = None if self._times is None else self._times[later]
+        where: Place = {**measured.place, "step": later, "time": time}
+        told = replace(
+            measured, step=later, time=time, place=where, note=f"between steps {first} and {later}"
+        )
+        return Ranged(limit, told, cell, (first, later))
 
 
 class _Numbers:

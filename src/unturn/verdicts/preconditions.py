@@ -8,6 +8,7 @@ from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Any
 
+from unturn.io import files_behind
 from unturn.verdict import Level, Verdict
 from unturn.verdicts import kinds as k
 from unturn.verdicts.finding import Bound
@@ -86,9 +87,11 @@ class Precondition:
     words
         In words, from its value.
     test
-        From the evidence, its value and the values of all keys.
+        From the evidence, its value and the values of all keys; None for a key that belongs to another.
     every_step
         Whether every step must be looked at.
+    belongs_to
+        The key without which it says nothing.
     """
 
     key: str
@@ -97,6 +100,7 @@ class Precondition:
     words: Callable[[Any], str]
     test: Callable[[Evidence, Any, Mapping[str, Any]], Sequence[Tested]] | None
     every_step: bool = False
+    belongs_to: str = ""
 
 
 def _whole_file(seen: Evidence, value: bool, all_: Mapping[str, Any]) -> Sequence[Tested]:
@@ -138,7 +142,8 @@ def _newer_than(seen: Evidence, value: str, all_: Mapping[str, Any]) -> Sequence
         return [Tested(False, "the result is in memory and has no age")]
     other = seen.folder / value
     try:
-        older, newer = other.stat().st_mtime_ns, Path(seen.path).stat().st_mtime_ns
+        older = other.stat().st_mtime_ns
+        newer = min(p.stat().st_mtime_ns for p in (Path(seen.path), *files_behind(Path(seen.path))))
     except (OSError, ValueError) as error:
         reason = getattr(error, "strerror", None) or error
         return [Tested(False, f"the ages of the result and of {value} cannot be compared: {reason}")]
@@ -180,11 +185,11 @@ PRECONDITIONS: dict[str, Precondition] = {
         Precondition("last_time", k.NUMBER, "time that the last step must have reached",
                      lambda v: f"its last step reaches t = {v:g}", _last_time),
         Precondition("last_time_within", k.NOT_NEGATIVE, "how much earlier the last step may be; default: rounding",
-                     lambda v: f"or at most {v:g} earlier", None),
+                     lambda v: f"or at most {v:g} earlier", None, belongs_to="last_time"),
         Precondition("cells", k.COUNT, "number of cells of every step", lambda v: f"it has {v} cells", _cells),
         Precondition("cells_within_percent", k.number_kind("a number from 0 to below 100", lambda x: 0 <= x < 100),
                      "how far that number may be off, in percent; default: not at all", lambda v: f"or {v:g} % more or fewer",
-                     None),
+                     None, belongs_to="cells"),
         Precondition("newer_than", k.TEXT, "a file, relative to the limits file, that the result must be newer than",
                      lambda v: f"it is newer than {v}", _newer_than),
         Precondition("small_strain", k.either_kind(_LEVEL, k.table_kind("a table of these by region", _LEVEL)),

@@ -23,7 +23,12 @@ _VECTOR = 3
 
 
 def read_limit(
-    source: Source, place: Path, table: Any, regions: Mapping[str, RegionSpec], options: StrainOptions
+    source: Source,
+    place: Path,
+    table: Any,
+    regions: Mapping[str, RegionSpec],
+    options: StrainOptions,
+    surface_poisson: float | None = None,
 ) -> list[Limit]:
     """Return the limits of one table: one for each of its regions.
 
@@ -33,7 +38,7 @@ def read_limit(
         The table says something that is not known, or contradicts itself.
     """
     found = read_table(source, place, table, LIMIT_KEYS)
-    reader = _Reader(source, place, found)
+    reader = _Reader(source, place, found, surface_poisson)
     if not re.fullmatch(r"[\w.:-]+", found["id"]):
         raise reader.error("id", "an id has letters, digits, '_', '.', ':' and '-' only.")
     statistic = STATISTICS[found["statistic"]]
@@ -75,8 +80,11 @@ def _based(unit: Unit, value: float | None) -> float | None:
 class _Reader:
     """Checks that the keys of one limit fit each other."""
 
-    def __init__(self, source: Source, place: Path, found: Mapping[str, Any]) -> None:
+    def __init__(
+        self, source: Source, place: Path, found: Mapping[str, Any], surface_poisson: float | None
+    ) -> None:
         self.source, self.place, self.found = source, place, found
+        self.surface_poisson = surface_poisson
 
     def error(self, key: str, what: str) -> UsageError:
         return self.source.error((*self.place, key), what)
@@ -100,9 +108,7 @@ class _Reader:
             return self._of_array(), ""
         self.refuse(("stored_in", "plus_minus"), "it goes with 'array'; of a measure it is known.")
         at: At = found["at"] or "centroid"
-        name, components, unit, finite = (
-            self._on_surface(options) if at == "surface" else self._on_mesh(options)
-        )
+        name, components, unit, finite = self._on_surface() if at == "surface" else self._on_mesh(options)
         if finite and options.solve == "linear":
             raise self.error(
                 "base" if found["base"] != "small" else "measure",
@@ -137,7 +143,7 @@ class _Reader:
         row = MEASURES[array]
         return array, row.components, row.unit, row.finite
 
-    def _on_surface(self, options: StrainOptions) -> tuple[str, tuple[str, ...], str, bool]:
+    def _on_surface(self) -> tuple[str, tuple[str, ...], str, bool]:
         name = self.found["measure"]
         known = [
             m.replaces for m in SURFACE_MEASURES.values() if m.base == "small" and m.replaces in MEASURES
@@ -150,7 +156,7 @@ class _Reader:
                 f"{', '.join(known)}.",
             )
         try:
-            (array,) = choose_surface_measures([name], self.found["base"], options.poisson)
+            (array,) = choose_surface_measures([name], self.found["base"], self.surface_poisson)
         except UsageError as error:
             raise self.error("measure", _without_options(error)) from None
         row = SURFACE_MEASURES[array]
@@ -281,7 +287,7 @@ def check_names(source: Source, path: Path, names: Iterable[str], regions: Mappi
 
 def _without_options(error: UsageError) -> str:
     """Return what an error says with keys of the file in place of options."""
-    said = str(error).replace(" with --poisson NU", "")
+    said = str(error).replace("state Poisson's ratio with --poisson NU", "give surface_poisson in [reading]")
     return said.replace(
         "give --thermal-expansion, --temperature and --reference-temperature", "state it in [reading]"
     )

@@ -47,7 +47,8 @@ READING_KEYS = (
     Key("coordinates", k.choice_kind(("reference", "deformed")), "whether the coordinates are already moved", "reference"),
     Key("plane", k.choice_kind(("strain", "stress", "axisymmetric")), "what a plane mesh assumes of the direction across it"),
     Key("axis", k.choice_kind(("x", "y")), "axis of revolution", "y"),
-    Key("poisson", k.NUMBER, "Poisson's ratio for plane stress, free surfaces and the thickness of surfaces"),
+    Key("poisson", k.NUMBER, "Poisson's ratio for plane stress and the thickness of surfaces"),
+    Key("surface_poisson", k.NUMBER, "Poisson's ratio of solids, for the strain across their free faces"),
     Key("equivalent_poisson", k.NUMBER, "the other form of the equivalent strain"),
     Key("remove_rigid", k.TEXT, "take the rigid motion of these out first", "none"),
     Key("rigid_to", k.TEXT, "take it out of this region instead"),
@@ -101,7 +102,7 @@ def parse_limits(raw: bytes, name: str) -> Limits:
     try:
         text = raw.decode("utf-8")
         data = tomllib.loads(text)
-    except (tomllib.TOMLDecodeError, UnicodeDecodeError, RecursionError) as error:
+    except (ValueError, RecursionError) as error:  # also of numbers with thousands of digits
         said = str(error) if not isinstance(error, RecursionError) else "nested too deep"
         raise UsageError(f"{name}: not a TOML file: {said}. Correct it there.") from None
     source = Source(name, Lines(text, data))
@@ -117,13 +118,18 @@ def parse_limits(raw: bytes, name: str) -> Limits:
             f"it says {found['number_of_limits']}, and the file has {len(written)} [[limits]] tables: it was cut off or "
             "merged wrongly, or the number must be corrected.",
         )
+    for row in PRECONDITIONS.values():
+        if row.belongs_to and required[row.key] is not None and required[row.belongs_to] is None:
+            raise source.error(
+                ("result", row.key), f"it says nothing without {row.belongs_to!r}, which is missing."
+            )
     if isinstance(required["small_strain"], dict):
         check_names(source, ("result", "small_strain"), required["small_strain"], regions)
     limits = []
     seen: dict[str, Path] = {}
     for position, table in enumerate(written):
         place: Path = ("limits", position)
-        for limit in read_limit(source, place, table, regions, options):
+        for limit in read_limit(source, place, table, regions, options, reading["surface_poisson"]):
             if limit.id in seen:
                 raise source.error(
                     (*place, "id"), f"{limit.id!r} is also the id of {key_path(seen[limit.id])}."
@@ -131,9 +137,17 @@ def parse_limits(raw: bytes, name: str) -> Limits:
             seen[limit.id] = place
             limits.append(limit)
     return Limits(
-        name, found["title"], {key: required[key] for key in PRECONDITIONS if required[key] is not None}, options,
-        reading["zero_step"], regions, tuple(limits), len(written), {"result": required, "reading": reading},
-    )  # fmt: skip
+        path=name,
+        title=found["title"],
+        required={key: required[key] for key in PRECONDITIONS if required[key] is not None},
+        options=options,
+        surface_poisson=reading["surface_poisson"],
+        zero_step=reading["zero_step"],
+        regions=regions,
+        limits=tuple(limits),
+        written=len(written),
+        settings={"result": required, "reading": reading},
+    )
 
 
 def _tables(source: Source, tables: Any) -> list[Any]:
@@ -149,7 +163,7 @@ def _tables(source: Source, tables: Any) -> list[Any]:
 
 
 def _options(required: Mapping[str, Any], reading: Mapping[str, Any]) -> StrainOptions:
-    names = [n for n in reading if n != "zero_step"]
+    names = [n for n in reading if n not in ("zero_step", "surface_poisson")]
     options = replace(StrainOptions(), **{n: reading[n] for n in names})
     return replace(options, displacement=required["displacement"], solve=required["solve"])
 

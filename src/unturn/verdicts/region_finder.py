@@ -39,27 +39,33 @@ class RegionFinder:
 
     def _whole(self) -> Found:
         whole = self.cells.dimension == self.cells.model.dimension
-        return Found(whole, np.zeros(len(whole), dtype=bool))
+        return Found(whole, np.zeros(len(whole), dtype=bool), self.cells.missed)
 
     def _make(self, spec: RegionSpec) -> Found:
         masks = {
             key: REGION_KINDS[key].select(self.cells, value, self.find)
             for key, value in spec.conditions.items()
         }
-        named: Mask = self.cells.computed.copy()
-        for key, mask in masks.items():
-            if key != "none_of":
-                named &= mask
+        named: Mask = np.logical_and.reduce(
+            [m for key, m in masks.items() if key != "none_of"] or [self._every()]
+        )
+        missed: Mask = named & self.cells.missed
+        named = named & self.cells.computed
         if named.any():  # skins and edges do not count beside what they belong to
             named &= self.cells.dimension == self.cells.dimension[named].max()
         inside = named & masks["none_of"] if "none_of" in masks else named
         left_out = named & ~inside
         for key in ("all_of", "any_of"):
             for name in spec.conditions.get(key, ()):
-                left_out = left_out | self.find(name).left_out & ~inside
+                part = self.find(name)
+                left_out = left_out | part.left_out & ~inside
+                missed = missed | part.not_computed
         n = int(inside.sum())
         if n < spec.cells_at_least:
             raise NoRegion(
                 f"it holds {n} computed cell{'s' * (n != 1)} and must hold {spec.cells_at_least} ({region_words(spec)})"
             )
-        return Found(inside, left_out)
+        return Found(inside, left_out, missed)
+
+    def _every(self) -> Mask:
+        return np.ones(len(self.cells.dimension), dtype=bool)

@@ -12,8 +12,8 @@ from numpy.typing import NDArray
 
 from unturn.errors import close_matches
 from unturn.kinematics._symmetric import Floats
-from unturn.model import Model
-from unturn.result import Result
+from unturn.model import SKINS, Model
+from unturn.result import Result, used_points
 
 Mask = NDArray[np.bool_]
 
@@ -45,6 +45,15 @@ class Cells:
         """Which cells are computed."""
         return self.dimension > 0
 
+    @cached_property
+    def missed(self) -> Mask:
+        """Which cells are not computed and should be: all but skins, edges and points."""
+        mask = np.zeros(len(self.dimension), dtype=bool)
+        for reason, cells in self.model.left_out.items():
+            if reason != SKINS and not reason.startswith("vertex"):
+                mask[cells] = True
+        return mask
+
     @property
     def result(self) -> Result:
         """The step."""
@@ -53,10 +62,11 @@ class Cells:
 
 @dataclass(frozen=True, eq=False)
 class Found:
-    """The cells of a region, and those that it names and leaves out."""
+    """The cells of a region, those that it names and leaves out, and those that belong to it and are not computed."""
 
     inside: Mask
     left_out: Mask
+    not_computed: Mask
 
 
 Pick = Callable[[str], Found]
@@ -96,7 +106,7 @@ def _numbers(values: NDArray[Any], n: int, name: str) -> Floats:
 def box(cells: Cells, box: Mapping[str, Any], pick: Pick) -> Mask:
     low, high = np.array(box["from"]), np.array(box["to"])
     inside: Mask = np.asarray(((cells.centroid >= low) & (cells.centroid <= high)).all(axis=1))
-    return inside
+    return _or_nowhere(cells, inside)
 
 
 def cylinder(cells: Cells, shape: Mapping[str, Any], pick: Pick) -> Mask:
@@ -106,13 +116,17 @@ def cylinder(cells: Cells, shape: Mapping[str, Any], pick: Pick) -> Mask:
     away = cells.centroid - start
     along = away @ axis
     across = np.linalg.norm(away - along[:, None] * axis, axis=1)
-    inside: Mask = (along >= 0) & (along <= length) & (across <= shape["radius"])
-    return inside
+    return _or_nowhere(cells, (along >= 0) & (along <= length) & (across <= shape["radius"]))
 
 
 def sphere(cells: Cells, shape: Mapping[str, Any], pick: Pick) -> Mask:
-    inside: Mask = np.linalg.norm(cells.centroid - np.array(shape["center"]), axis=1) <= shape["radius"]
-    return inside
+    away = np.linalg.norm(cells.centroid - np.array(shape["center"]), axis=1)
+    return _or_nowhere(cells, away <= shape["radius"])
+
+
+def _or_nowhere(cells: Cells, inside: Mask) -> Mask:
+    """Return the cells inside, and those whose place is not known: they have no value, which must not be passed over."""
+    return np.asarray(inside | ~np.isfinite(cells.centroid).all(axis=1))
 
 
 def near(cells: Cells, near: Mapping[str, Any], pick: Pick) -> Mask:
@@ -130,21 +144,28 @@ def where(cells: Cells, asked: Mapping[str, Any], pick: Pick) -> Mask:
     if asked["on"] is None and on_cells and on_points:
         raise NoRegion(f'both cells and nodes have an array {name!r}: say which with on = "cells" or "nodes"')
     if on_cells and asked["on"] != "nodes":
-        return _compares(_cell_numbers(result, name), asked)
+        return _compares(_cell_numbers(result, name), asked, cells.computed)
     if not on_points or asked["on"] == "cells":
         known = [*result.cell_data, *result.point_data]
         raise NoRegion(
             f"the file has no such array {name!r}.{close_matches(name, known)} Arrays: {', '.join(known)}"
         )
-    holds = _compares(_numbers(result.point_data[name], result.n_points, name), asked)
+    used = used_points([b.cells for b in cells.model.blocks], result.n_points)
+    holds = _compares(_numbers(result.point_data[name], result.n_points, name), asked, used)
     mask = np.zeros(result.n_cells, dtype=bool)
     for block in result.blocks:
         mask[block.index] = holds[block.connectivity].all(axis=1)
     return mask
 
 
-def _compares(values: Floats, asked: Mapping[str, Any]) -> Mask:
+def _compares(values: Floats, asked: Mapping[str, Any], known: Mask) -> Mask:
+    """Return where values are as asked; they must be finite where it matters."""
     holds: Mask = np.asarray(np.isfinite(values), dtype=bool)
+    n = int((known & ~holds).sum())
+    if n:
+        raise NoRegion(
+            f"{n} values of the array {asked['array']!r} are not finite: what belongs to it is not known"
+        )
     if asked["above"] is not None:
         holds = holds & (values > asked["above"])
     if asked["below"] is not None:

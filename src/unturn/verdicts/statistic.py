@@ -171,15 +171,13 @@ def _none(sample: Sample, limit: Limit, got: Got, ends: list[float]) -> float:
     return math.nan
 
 
-def _stated(times: Callable[[Sample], float]) -> Spread:
-    """Return how far a mean or sum may be off: known only where the limit states it for every value."""
+def _stated_mean(sample: Sample, limit: Limit, got: Got, ends: list[float]) -> float:
+    """Return how far a mean may be off: known only where the limit states it for every value."""
+    return math.nan if limit.plus_minus is None else limit.unit.to_base(limit.plus_minus)
 
-    def spread(sample: Sample, limit: Limit, got: Got, ends: list[float]) -> float:
-        if limit.plus_minus is None:
-            return math.nan
-        return times(sample) * limit.unit.to_base(limit.plus_minus)
 
-    return spread
+def _stated_sum(sample: Sample, limit: Limit, got: Got, ends: list[float]) -> float:
+    return len(sample.values) * _stated_mean(sample, limit, got, ends)
 
 
 def _moved(take: Callable[[Sample, Limit, float], float]) -> Spread:
@@ -213,12 +211,12 @@ STATISTICS: dict[str, Statistic] = {
                   per_cell="at_least"),
         Statistic("largest_magnitude", "largest value without its sign", lambda v: "largest magnitude",
                   _largest_magnitude, _added, _PLAIN, extreme=True, per_cell="at_most", magnitude=True),
-        Statistic("mean", "mean, weighted by volume", lambda v: "mean", _mean, _stated(lambda s: 1.0), _WEIGHTED),
-        Statistic("sum", "sum of the values, each counted once", lambda v: "sum", _sum, _stated(lambda s: float(len(s.values))), _PLAIN),
+        Statistic("mean", "mean, weighted by volume", lambda v: "mean", _mean, _stated_mean, _WEIGHTED),
+        Statistic("sum", "sum of the values, each counted once", lambda v: "sum", _sum, _stated_sum, _PLAIN),
         Statistic("percentile", "smallest value that `percent` % of the volume do not exceed",
                   lambda v: f"{v.percent:g} % of the volume below", _percentile, _added, _WEIGHTED, needs="percent"),
         Statistic("share", "share of the volume `above` (or `below`) a value; bounds in percent of the volume",
-                  lambda v: f"share of volume {_threshold_words(v)}", _crossing(_share), _moved(_share), _WEIGHTED,
+                  lambda v: f"share {_threshold_words(v)}", _crossing(_share), _moved(_share), _WEIGHTED,
                   needs="threshold", unit=SHARE),
         Statistic("count", "number of cells (nodes, faces) `above` (or `below`) a value",
                   lambda v: f"count {_threshold_words(v)}", _crossing(_count), _moved(_count), _PLAIN,

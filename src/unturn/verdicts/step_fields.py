@@ -11,22 +11,22 @@ import numpy as np
 from unturn.errors import UnturnError
 from unturn.fields import CellDiagnostics
 from unturn.model import Model
-from unturn.pipeline import Computed, StrainOptions, compute
-from unturn.regions import Region
+from unturn.pipeline import Computed, StrainOptions, compute, computed_cells
+from unturn.regions import Region, find_regions
 from unturn.result import Result
 from unturn.rigid import RigidMotion
 from unturn.surface import SURFACE_MEASURES
 from unturn.verdict import Verdict, judge
-from unturn.verdicts.limit import Limits, Quantity
+from unturn.verdicts.limit import At, Limits, Quantity
 from unturn.verdicts.region_finder import RegionFinder
 from unturn.verdicts.region_select import Cells, Mask
 
-Group = tuple[str, str | None, str]
+Group = tuple[At, str | None, str]
 
 
 def group_of(quantity: Quantity) -> Group:
     """Return which quantities are computed together: location, frame and, on free surfaces, base."""
-    at = quantity.at or "centroid"
+    at: At = quantity.at or "centroid"
     return at, quantity.frame, quantity.base if at == "surface" else "small"
 
 
@@ -81,6 +81,7 @@ class StepFields:
         self.number, self.time, self.result = number, time, result
         self.shown = None if time is None else number
         self._options, self.threads = replace(options, threads=threads), threads
+        self._surface_poisson = limits.surface_poisson
         self._solve = options.solve
         self._zero, self._previous = zero, previous
         self._asked = measures_by_group(limits)
@@ -112,7 +113,10 @@ class StepFields:
         """
         if group not in self._computed:
             at, frame, base = group
-            options = replace(self._options, measures=self._asked[group], base=base, at=at, frame=frame)  # type: ignore[arg-type]
+            poisson = self._surface_poisson if at == "surface" else self._options.poisson
+            options = replace(
+                self._options, measures=self._asked[group], base=base, at=at, frame=frame, poisson=poisson
+            )
             try:
                 found: Computed | UnturnError = compute(
                     self.result, options, zero=self._zero, diagnose=True, previous=self._previous
@@ -141,6 +145,11 @@ class StepFields:
     def motions(self) -> tuple[RigidMotion, ...]:
         """The rigid motions that were taken out."""
         return tuple(r.motion for r in self.base.removals)
+
+    @cached_property
+    def groups(self) -> list[Region]:
+        """The parts of the file across whose borders nothing is recovered."""
+        return find_regions(self.model, computed_cells(self.model))
 
     @cached_property
     def mid_surface(self) -> Mask | None:

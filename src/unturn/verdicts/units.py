@@ -3,10 +3,13 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Callable
 from dataclasses import dataclass
+from typing import TypeVar
 
+from unturn.kinematics._symmetric import Floats
 from unturn.source import Source
+
+Number = TypeVar("Number", float, Floats)
 
 
 @dataclass(frozen=True)
@@ -19,20 +22,29 @@ class Unit:
         As it is written.
     quantity
         What it is a unit of: ``strain``, ``angle``, ``length``, ``share``, ``number``.
-    to_base, from_base
-        To and from the value as it is computed: strain without a unit, radian, length as in the file, share of one.
+    per_base
+        How many of it are one of what is computed: strain without a unit, radian, length as in the file, share of one.
     source
-        Where the factor comes from.
+        Where that comes from.
     """
 
     name: str
     quantity: str
-    to_base: Callable[[float], float]
-    from_base: Callable[[float], float]
+    per_base: float
     source: Source
 
+    def to_base(self, value: Number) -> Number:
+        """Return a value in this unit as it is computed.
 
-_SAME: Callable[[float], float] = float
+        Division by a power of ten rounds once: 867 microstrain is the very number that 0.000867 is.
+        """
+        return value / self.per_base
+
+    def from_base(self, value: Number) -> Number:
+        """Return a computed value in this unit."""
+        return value * self.per_base
+
+
 _SI = Source(
     "published", "SI Brochure, 9th edition, tables 7 and 8: prefix micro, degree; section 5.4.7: percent"
 )
@@ -40,21 +52,19 @@ _SI = Source(
 UNITS: dict[str, Unit] = {
     unit.name: unit
     for unit in (
-        # division by a power of ten rounds once, so that 867 microstrain is the very number 0.000867
-        Unit("strain", "strain", _SAME, _SAME, _SI),
-        Unit("microstrain", "strain", lambda x: x / 1e6, lambda x: x * 1e6, _SI),
-        Unit("percent", "strain", lambda x: x / 100.0, lambda x: x * 100.0, _SI),
-        Unit("radian", "angle", _SAME, _SAME, _SI),
-        Unit("degree", "angle", lambda x: x * (math.pi / 180.0), lambda x: x * (180.0 / math.pi), _SI),
-        Unit("length", "length", _SAME, _SAME, Source("practice", "the length unit of the file's coordinates")),
-        Unit("number", "number", _SAME, _SAME, Source("practice", "a plain number, as it is")),
+        Unit("strain", "strain", 1.0, _SI),
+        Unit("microstrain", "strain", 1e6, _SI),
+        Unit("percent", "strain", 100.0, _SI),
+        Unit("radian", "angle", 1.0, _SI),
+        Unit("degree", "angle", 180.0 / math.pi, _SI),
+        Unit("length", "length", 1.0, Source("practice", "the length unit of the file's coordinates")),
+        Unit("number", "number", 1.0, Source("practice", "a plain number, as it is")),
     )
 }  # fmt: skip
 """Every unit a limit can be written in."""
 
-SHARE = Unit("percent of volume", "share", lambda x: x / 100.0, lambda x: x * 100.0, _SI)
-"""Unit of a share of the volume: a statistic has it, no limit writes it."""
-
+SHARE = Unit("percent", "share", 100.0, _SI)
+"""Unit of a share of the volume or area: a statistic has it, no limit writes it."""
 COUNT = UNITS["number"]
 """Unit of a count."""
 
@@ -67,28 +77,27 @@ def unit_words(unit: Unit) -> str:
     return "" if unit.quantity == "number" else unit.name
 
 
-def shown_in(unit: Unit, value: float, bound: float, written: float) -> float:
-    """Return a value in a unit, on the side of its bound on which it was found.
+@dataclass(frozen=True)
+class BoundAt:
+    """One bound: as values are computed, and as it is written."""
 
-    Parameters
-    ----------
-    unit
-        The unit.
-    value, bound
-        As computed; they were compared like this.
-    written
-        The bound in the unit.
+    base: float
+    written: float
+
+
+def shown_in(unit: Unit, value: float, low: BoundAt | None, high: BoundAt | None) -> float:
+    """Return a computed value in a unit, on the side of its bounds on which it was found.
 
     Examples
     --------
-    >>> shown_in(UNITS["microstrain"], 0.000867, 0.000867, 867.0)
+    >>> shown_in(UNITS["microstrain"], 0.000867, None, BoundAt(0.000867, 867.0))
     867.0
     """
-    converted = unit.from_base(value)
-    if value == bound:
-        return written
-    if value > bound and converted <= written:
-        return math.nextafter(written, math.inf)
-    if value < bound and converted >= written:
-        return math.nextafter(written, -math.inf)
-    return converted
+    shown = unit.from_base(value)
+    if high is not None:
+        above = value > high.base
+        shown = max(shown, math.nextafter(high.written, math.inf)) if above else min(shown, high.written)
+    if low is not None:
+        below = value < low.base
+        shown = min(shown, math.nextafter(low.written, -math.inf)) if below else max(shown, low.written)
+    return shown
