@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import json
 import shutil
-from dataclasses import replace
+from dataclasses import dataclass, replace
 from pathlib import Path
 from typing import Any
 
@@ -23,6 +23,7 @@ from unturn.errors import UsageError
 from unturn.io import series_writer
 from unturn.result import Result
 from unturn.testing import assert_results_close
+from unturn.verdicts.compare_series import paired_steps
 from unturn.verdicts.inputs import hashed_inputs
 from unturn.verdicts.tolerances import ARRAY_KEYS, parse_tolerances, read_tolerances
 
@@ -159,6 +160,46 @@ def test_the_inputs_are_named_with_their_hashes(desk: Path) -> None:
             writer.add(_result(), float(t))
     main, pieces = hashed_inputs("result", "many.pvd")
     assert (main.path, pieces.path) == ("many.pvd", "6 files that many.pvd names")
+
+
+@pytest.mark.derived("an index of indices")
+def test_what_lies_behind_an_index_of_indices_is_hashed(tmp_path: Path) -> None:
+    (tmp_path / "a.pvd").write_text('<VTKFile><DataSet timestep="0" file="b.pvtu"/></VTKFile>')
+    (tmp_path / "b.pvtu").write_text('<VTKFile><Piece Source="x"/><DataSet file="c.vtu"/></VTKFile>')
+    (tmp_path / "c.vtu").write_text("<VTKFile/>")
+    assert [Path(i.path).name for i in hashed_inputs("result", tmp_path / "a.pvd")] == [
+        "a.pvd",
+        "b.pvtu",
+        "c.vtu",
+    ]
+
+
+@dataclass
+class _Opened:
+    """A file with these steps, that is never read."""
+
+    steps: tuple[float, ...] | None
+    path: str = "x.xdmf"
+    format_name: str = "XDMF"
+
+    def read(self, step: int = 0) -> Result:
+        raise NotImplementedError
+
+
+@pytest.mark.derived("one step is the counterpart of one step, within 1e-6 of the time of the series")
+def test_a_step_is_matched_once() -> None:
+    def matched(
+        ours: tuple[float, ...], theirs: tuple[float, ...]
+    ) -> tuple[list[tuple[int, int]], list[str]]:
+        pairs, findings = paired_steps(_Opened(ours), _Opened(theirs), "all")
+        return [(p.ours, p.theirs) for p in pairs], [f.state for f in findings]
+
+    assert matched((0.0, 1.0, 2.0), (0.0, 1.0, 2.0)) == ([(0, 0), (1, 1), (2, 2)], ["met"])
+    assert matched((2.0, 0.0), (0.0, 2.0)) == ([(1, 0), (0, 1)], ["met"])
+    assert matched((0.0, 1.0), (0.0, 1.0, 1.0 + 1e-9)) == ([(0, 0), (1, 1)], ["exceeded"])
+    assert matched((0.0, 1.0 + 1e-7), (0.0, 1.0)) == ([(0, 0), (1, 1)], ["met"])
+    assert matched((0.0, 1.0 + 1e-5), (0.0, 1.0)) == ([(0, 0)], ["exceeded"])
+    assert matched((5.0,), (0.0, 1.0)) == ([], ["exceeded"])
 
 
 @pytest.mark.derived("names out of files break no form")

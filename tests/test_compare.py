@@ -17,10 +17,12 @@ from unturn.errors import InputError, UsageError
 from unturn.locate import locate_all
 from unturn.model import build_model
 from unturn.result import CellBlock, Result, Steps
+from unturn.verdicts.compare import CompareOptions, compare_states
 from unturn.verdicts.comparison import Comparison
 from unturn.verdicts.finding import Finding
 from unturn.verdicts.mesh_match import match
 from unturn.verdicts.mesh_view import view
+from unturn.verdicts.sampling import sample
 
 RNG = np.random.default_rng(7)
 
@@ -203,13 +205,16 @@ def test_nan_on_one_side_is_a_difference() -> None:
         assert one.state == "exceeded"
         assert "NaN on one side only at 1 of 27 points" in one.message
         assert one.place["point"] == 4
+        assert (one.details["beyond"], one.details["nan_on_one_side"]) == (1, 1)
     assert unturn.compare(mesh.result(u=broken), mesh.result(u=broken)).passed
     nothing = np.full_like(u, np.nan)
     one = found(unturn.compare(mesh.result(v=nothing), mesh.result(v=nothing)), "point v in whole")
     assert one.state == "warning"
     infinite = u.copy()
     infinite[3, 0] = np.inf
-    assert unturn.compare(mesh.result(u=infinite), mesh.result(u=infinite)).passed
+    same = unturn.compare(mesh.result(u=infinite), mesh.result(u=infinite))
+    assert same.passed
+    assert not same.differences.point_data["u_difference"].any()
     assert not unturn.compare(mesh.result(u=infinite), mesh.result(u=u), absolute=1e300).passed
 
 
@@ -387,6 +392,27 @@ def test_a_renumbered_mesh_is_matched(element: str) -> None:
     assert (one.state, one.place["cell"]) == ("exceeded", 1)
 
 
+@pytest.mark.derived("measures that are recovered at nodes are those of the nodes, whatever their numbers")
+def test_measures_at_nodes_of_a_renumbered_mesh() -> None:
+    mesh = box(3, "tetra10", skew=1.0)
+    before = mesh.result(u=quadratic(mesh.points) + 1e-5 * RNG.random((len(mesh.points), 3)))
+    measures = ["strain", "principal_strain", "principal_direction_1"]
+    compared = unturn.compare(shuffled(before), before, measures=measures, at="nodes")
+    assert compared.passed, compared.report
+    assert compared.differences.point_data["strain_difference"].shape == (before.n_points, 6)
+    u = before.point_data["u"].copy()
+    u[np.argmin(np.linalg.norm(mesh.points - 1 / 3, axis=1))] += [0, 0, 1e-4]  # a node within
+    compared = unturn.compare(shuffled(mesh.result(u=u)), before, measures=["strain"], at="nodes")
+    one = found(compared, "computed strain in whole")
+    assert one.state == "exceeded"
+    assert "point" in one.place
+    with pytest.raises(UsageError, match="write it of both results"):
+        unturn.compare(before, before, measures=["strain"], at="surface")
+    with pytest.raises(UsageError, match="the meshes differ"):
+        unturn.compare(box(2, "tetra10").result(u=quadratic(box(2, "tetra10").points)), before, measures=["strain"],
+                       at="nodes")  # fmt: skip
+
+
 @pytest.mark.derived("nodes at one place that belong to different parts stay apart")
 def test_coincident_nodes_are_matched_by_their_cells() -> None:
     mesh = box(2, "hexahedron")
@@ -399,6 +425,24 @@ def test_coincident_nodes_are_matched_by_their_cells() -> None:
     assert found(compared, "mesh").details["kind"] == "renumbered"
     joined = mesh.result(u=linear(mesh.points))
     assert found(unturn.compare(joined, before, arrays=["u"]), "mesh").details["kind"] == "different"
+
+
+@pytest.mark.derived("cells at one place that share no nodes are never taken for each other")
+@pytest.mark.parametrize("seed", range(6))
+def test_coincident_layers_are_never_crossed(seed: int) -> None:
+    mesh = patch(ELEMENTS["quad"])
+    n, k = len(mesh.points), len(mesh.cells)
+    block = CellBlock("quad", np.vstack([mesh.cells, mesh.cells + n]), np.arange(2 * k))
+    layer = np.repeat([1.0, 2.0], n)
+    before = Result(np.vstack([mesh.points, mesh.points]), (block,), {"v": layer})
+    compared = unturn.compare(shuffled(before, seed), before)
+    kind = found(compared, "mesh").details["kind"]
+    assert kind == "different" or set(np.abs(compared.differences.point_data["v_difference"])) in (
+        {0.0},
+        {1.0},
+    )
+    if kind == "different":
+        assert "cannot be told apart" in found(compared, "mesh").message
 
 
 @pytest.mark.derived("points of no cell are compared where they have a counterpart")
@@ -549,6 +593,50 @@ def test_on_a_border_the_same_part_counts() -> None:
     assert compared.passed, compared.report
 
 
+@pytest.mark.derived("of the cells beside a point, the nearest one is taken")
+def test_the_nearest_cell_beside_a_point_is_taken() -> None:
+    mesh = view(box(2, "hexahedron").result())
+    places = np.array(
+        [[1.01, 0.49, 0.25], [1.01, 0.5, 0.25], [1.01, 1.01, 1.01], [0.5, 0.5, 0.5], [1.04, 0.2, 0.2]]
+    )
+    found_ = sample(mesh, places, np.full(5, 3), [])
+    assert found_.count.tolist() == [1, 2, 1, 8, 0]
+    assert found_.beside.tolist() == [True, True, True, False, False]
+
+
+@pytest.mark.derived("ghosts of the other mesh hold nothing, and tangled cells have no strain")
+def test_ghosts_and_tangled_cells_of_the_other_mesh() -> None:
+    a, b = box(2, "hexahedron"), box(3, "tetra")
+    reference = b.result(u=linear(b.points))
+    ghost = replace(a.result(u=linear(a.points)), left_out={"ghost": np.array([0])})
+    compared = unturn.compare(ghost, reference)
+    assert states(compared)["reference outside"] == "undecided"
+    assert found(compared, "point u in whole").details["outside"] == 8
+    points = a.points.copy()
+    points[0] = [0.8, 0.8, 0.8]  # the corner pushed through its cell
+    tangled = a._replace(points=points)
+    compared = unturn.compare(tangled.result(u=linear(points)), reference, measures=["strain"], outside=0.5)
+    assert found(compared, "computed strain in whole").details["nan_on_one_side"] > 0
+    assert states(compared)["computed strain in whole"] == "exceeded"
+
+
+@pytest.mark.derived("on the same meshes nothing is searched again")
+def test_meshes_are_searched_once_for_all_steps() -> None:
+    a, b = box(2, "hexahedron"), box(3, "tetra")
+    first = compare_states(a.result(u=linear(a.points)), b.result(u=linear(b.points)), CompareOptions())
+    again = compare_states(
+        a.result(u=quadratic(a.points)), b.result(u=linear(b.points)), CompareOptions(), first.overlay
+    )
+    assert again.overlay.points is first.overlay.points
+    fresh = compare_states(a.result(u=quadratic(a.points)), b.result(u=linear(b.points)), CompareOptions())
+    assert again.findings == fresh.findings
+    moved = a._replace(points=a.points * 1.001)
+    other = compare_states(
+        moved.result(u=linear(a.points)), b.result(u=linear(b.points)), CompareOptions(), first.overlay
+    )
+    assert other.overlay.points is not first.overlay.points
+
+
 @pytest.mark.derived("measures of the mesh, means and cell frames belong to one mesh")
 def test_what_belongs_to_one_mesh_is_refused_on_another() -> None:
     a, b = (box(n, "hexahedron") for n in (2, 3))
@@ -626,9 +714,24 @@ def test_a_share_is_not_hidden_by_cells_of_a_higher_dimension() -> None:
     c = before.cell_data["c"].copy()
     c[before.blocks[2].index] = 1.5  # both cells of the beam
     now = before.with_arrays(cell_data={"c": c})
-    whole = unturn.compare(now, before, tolerances={"default": {"share": 0.9}}, regions=["body 2"])
+    everything = {"all": np.arange(before.n_cells)}
+    now, before = replace(now, groups=everything), replace(before, groups=everything)
+    whole = unturn.compare(now, before, tolerances={"default": {"share": 0.9}})
     assert not whole.passed
-    assert found(whole, "cell c in body 2").value == pytest.approx(100.0)
+    assert found(whole, "cell c in all").value == pytest.approx(100.0)
+
+
+@pytest.mark.derived("cells weigh their volume, not their number")
+def test_cells_of_unequal_volume() -> None:
+    mesh = box(2, "hexahedron")
+    points = mesh.points.copy()
+    points[np.isclose(points[:, 0], 0.5), 0] = 0.3
+    before = mesh._replace(points=points).result().with_arrays(cell_data={"c": np.zeros(8)})
+    c = np.zeros(8)
+    c[points[mesh.cells].mean(axis=1)[:, 0] < 0.3] = 2.0
+    one = found(unturn.compare(before.with_arrays(cell_data={"c": c}), before), "cell c in whole")
+    assert one.details["share_beyond"] == pytest.approx(0.3)
+    assert one.details["l2"] == pytest.approx(2.0 * np.sqrt(0.3))
 
 
 @pytest.mark.derived("ghosts do not count, and the same cells must count in both")

@@ -262,10 +262,11 @@ def _newton_step(J: Floats, away: Floats) -> Floats:
 
 
 def _beyond(row: Element, xi: Floats) -> Floats:
-    """Return the share of the reference shape by which points lie outside of it; not above 0 inside."""
+    """Return the share of the reference shape by which points lie outside of it, 0 inside: over all its sides, squared."""
     shape = row.shape
-    worst = np.full(len(xi), -np.inf)
+    squares = np.zeros(len(xi))
     for normal, facet in zip(shape.facet_normals, shape.facets):
         outside = (xi - shape.vertices[facet[0]]) @ normal / np.ptp(shape.vertices @ normal)
-        worst = np.fmax(worst, outside)
-    return worst
+        squares += np.maximum(outside, 0.0) ** 2
+    beyond: Floats = np.sqrt(squares)
+    return beyond

@@ -12,7 +12,7 @@ import typer
 
 from unturn.cli import _options as o
 from unturn.cli import _reports as r
-from unturn.cli._shared import CellsOnly, strain_options
+from unturn.cli._shared import strain_options
 from unturn.errors import UsageError
 
 if TYPE_CHECKING:
@@ -30,15 +30,15 @@ Measures = Annotated[
     ),
 ]
 _ONLY_WITH_MEASURES = (
-    "base", "at", "solve", "displacement", "displacement_scale", "equivalent_poisson", "remove_rigid", "rigid_to",
+    "base", "at", "recovery", "solve", "displacement", "displacement_scale", "equivalent_poisson", "remove_rigid", "rigid_to",
     "rigid_axis", "frame", "alive", "skin",
 )  # fmt: skip
 
 
 @strain_options(
-    "measures", "base", "at", "solve", "displacement", "displacement_scale", "coordinates", "plane", "axis", "poisson",
-    "equivalent_poisson", "remove_rigid", "rigid_to", "rigid_axis", "frame", "alive", "skin", "threads",
-    measures=Measures, at=CellsOnly,
+    "measures", "base", "at", "recovery", "solve", "displacement", "displacement_scale", "coordinates", "plane", "axis",
+    "poisson", "equivalent_poisson", "remove_rigid", "rigid_to", "rigid_axis", "frame", "alive", "skin", "threads",
+    measures=Measures,
 )  # fmt: skip
 def compare(
     file: Annotated[Path, typer.Argument(metavar="FILE", help="The result.", readable=False)],
