@@ -112,9 +112,17 @@ def test_several_files_have_their_own_cases(desk: Path) -> None:
     results = {s.name: [type(r) for c in s for r in c.result] for s in suites}
     assert results == {"good.vtu": [], "bad.vtu": [junitparser.Failure], "broken.vtu": [junitparser.Error]}
     with Path("t.csv").open(encoding="utf-8", newline="") as file:
-        assert [(r["group"], r["state"]) for r in csv.DictReader(file)] == [
-            ("good.vtu", "met"), ("bad.vtu", "exceeded"), ("broken.vtu", "error"),
-        ]  # fmt: skip
+        rows = list(csv.DictReader(file))
+    assert [(r["group"], r["state"]) for r in rows] == [
+        ("good.vtu", "met"), ("bad.vtu", "exceeded"), ("broken.vtu", "error"),
+    ]  # fmt: skip
+    hashes = {
+        n: hashlib.sha256(Path(n).read_bytes()).hexdigest() for n in ("limits.toml", "good.vtu", "bad.vtu")
+    }
+    limits = f"limits limits.toml {hashes['limits.toml']}"
+    assert [r["sha256"] for r in rows] == [
+        f"{limits}; result good.vtu {hashes['good.vtu']}", f"{limits}; result bad.vtu {hashes['bad.vtu']}", limits,
+    ]  # fmt: skip
 
 
 def test_one_file_given_twice_is_refused(desk: Path) -> None:

@@ -104,7 +104,9 @@ def parse_limits(raw: bytes, name: str) -> Limits:
         data = tomllib.loads(text)
     except (ValueError, RecursionError) as error:  # also of numbers with thousands of digits
         said = str(error) if not isinstance(error, RecursionError) else "nested too deep"
-        raise UsageError(f"{name}: not a TOML file: {said}. Correct it there.") from None
+        raise UsageError(
+            f"{name}: not a TOML file: {said}. Correct it there; the limits file comes last."
+        ) from None
     source = Source(name, Lines(text, data))
     found = read_table(source, (), data, FILE_KEYS)
     required = read_table(source, ("result",), found["result"], RESULT_KEYS)
