@@ -97,12 +97,17 @@ def conclude(
         elif not errors and not stopped:
             message = "; ".join(t for t in (state, message, f"waived {until}") if t)
             details["waived"], state = state, "waived"
-    n = m.not_computed
-    missed = (
-        f"{n} cell{'s' * (n != 1)} of {limit.region} {'is' if n == 1 else 'are'} not computed" if n else ""
-    )
-    said = (message, m.note, _left_out_words(limit, m), missed)
+    said = (message, m.note, _left_out_words(limit, m), *_passed_over(limit, m))
     return _finding(limit, group, m, state, "; ".join(t for t in said if t), details)
+
+
+def _passed_over(limit: Limit, m: Measured) -> list[str]:
+    """Return sentences on cells of the region that do not count."""
+    said = []
+    for n, why in ((m.not_computed, "not computed"), (m.lower, "of lower dimension and not counted")):
+        if n:
+            said.append(f"{n} cell{'s' * (n != 1)} of {limit.region} {'is' if n == 1 else 'are'} {why}")
+    return said
 
 
 def _left_out_words(limit: Limit, m: Measured) -> str:
@@ -136,6 +141,7 @@ def _details(
         "without_value": m.missing,
         "left_out": m.left_out,
         "not_computed": m.not_computed,
+        "lower_dimension": m.lower,
         "steps": [
             {"step": k.step, "time": k.time, "state": s, "value": _in_unit(limit, k)}
             for k, (s, _) in zip(measured, states)

@@ -77,11 +77,24 @@ class Cells:
 
 @dataclass(frozen=True, eq=False)
 class Found:
-    """The cells of a region, those that it names and leaves out, and those that belong to it and are not computed."""
+    """The cells of a region.
+
+    Attributes
+    ----------
+    inside
+        `(n_cells,)` those that count.
+    left_out
+        Those that it names and leaves out.
+    not_computed
+        Those that belong to it and are not computed.
+    lower
+        Those that belong to it and are of a lower dimension than others.
+    """
 
     inside: Mask
     left_out: Mask
     not_computed: Mask
+    lower: Mask
 
 
 Pick = Callable[[str], Found]
