@@ -33,7 +33,7 @@ def state_of(limit: Limit, m: Measured) -> tuple[State, str]:
     if m.error or math.isnan(m.value):
         return "error", m.error or "it has no value"
     if _room(m) < 0:
-        return "exceeded", ""
+        return "exceeded", "; ".join(m.doubts)
     doubts = list(m.doubts)
     reach = 0.0 if math.isnan(m.plus_minus) or "plus-minus" in limit.accept else m.plus_minus
     if _reaches(m, reach):
@@ -86,7 +86,8 @@ def conclude(
     (state, message), m = states[worst], measured[worst]
     errors = [k for k, (s, _) in enumerate(states) if s == "error"]
     if state == "exceeded" and errors:
-        message = f"not tested in step {measured[errors[0]].step}: {states[errors[0]][1]}"
+        untested = f"not tested in step {measured[errors[0]].step}: {states[errors[0]][1]}"
+        message = "; ".join(t for t in (message, untested) if t)
     if stopped and state != "exceeded":
         state, message = "error", "; ".join(t for t in (message, stopped) if t)
     details = _details(limit, m, states, measured)
