@@ -7,6 +7,8 @@ import hashlib
 import json
 import re
 import shutil
+import subprocess
+import sys
 from pathlib import Path
 from typing import Any
 
@@ -159,9 +161,18 @@ def test_no_output_replaces_an_input(desk: Path) -> None:
             assert Path(name).read_bytes() == before
 
 
-def test_data_on_the_standard_output_stands_alone(desk: Path, capsys: pytest.CaptureFixture[str]) -> None:
-    _, text = run(["check", "good.vtu", "limits.toml", "--json", "-"])
-    assert '"schema": "unturn.verdict/1"' in text
+def test_data_on_the_standard_output_stands_alone(desk: Path) -> None:
+    command = [
+        sys.executable,
+        "-c",
+        "from unturn.cli import main; main()",
+        "check",
+        "good.vtu",
+        "limits.toml",
+    ]
+    done = subprocess.run([*command, "--json", "-"], capture_output=True, text=True, check=True, timeout=120)
+    assert json.loads(done.stdout)["schema"] == "unturn.verdict/1"
+    assert "1 met of 1: PASSED" in done.stderr
 
 
 def test_waivers_are_judged_on_the_day_that_is_given(desk: Path) -> None:

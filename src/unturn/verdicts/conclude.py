@@ -147,6 +147,7 @@ def _details(
             {"step": k.step, "time": k.time, "state": s, "value": _in_unit(limit, k)}
             for k, (s, _) in zip(measured, states)
         ],
+        "accept": sorted(limit.accept),
         "reason": limit.reason,
         "source": limit.source,
         "waiver": None
