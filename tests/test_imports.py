@@ -17,7 +17,7 @@ PACKAGE = Path(unturn.errors.__file__).parent
 LAYERS = (
     ("errors", "source", "_version"),
     ("kinematics", "elements"),
-    ("result", "statistics", "precision"),
+    ("result", "statistics", "precision", "node_sets"),
     ("numbering", "frames", "point_gradient"),
     ("gradient", "measures", "midside", "displacement", "thermal"),
     ("model",),
