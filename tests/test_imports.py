@@ -24,6 +24,7 @@ LAYERS = (
     ("fields", "regions", "jacobian"),
     ("recovery", "tensor_range", "rigid", "verdict"),
     ("trust", "peaks", "surface", "quadrature_points", "nodal", "cutout"),
+    ("neighbourhood",),
     ("agreement", "pipeline", "trial", "series"),
     ("around",),
     ("trusted",),
