@@ -19,6 +19,7 @@ if TYPE_CHECKING:
     )
     from unturn.gradient import displacement_gradient
     from unturn.result import CellBlock, Result
+    from unturn.verdicts.comparison import compare
 
 __all__ = [
     "CellBlock",
@@ -29,6 +30,7 @@ __all__ = [
     "UnturnError",
     "UsageError",
     "__version__",
+    "compare",
     "convergence",
     "displacement_gradient",
     "envelope",
@@ -43,6 +45,7 @@ _HOME = {
     "Result": "unturn.result",
     "__version__": "unturn._version",
     "convergence": "unturn._api_meshes",
+    "compare": "unturn.verdicts.comparison",
     "displacement_gradient": "unturn.gradient",
     "envelope": "unturn._api_states",
     "read": "unturn._api",
