@@ -1,0 +1,271 @@
+"""What an imposed field needs to know of every cell: its middle, how far rounding reaches, whether it is straight."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+from itertools import permutations
+
+import numpy as np
+from numpy.typing import NDArray
+
+from unturn.elements import ELEMENTS, Element
+from unturn.fields import smallest_height
+from unturn.gradient import ElementChunk, chunk_ranges, over_chunks
+from unturn.kinematics._symmetric import Floats, six_from_full
+from unturn.model import Model, ModelBlock
+from unturn.precision import storage_resolution
+
+_STRAIGHT = 1e-9  # share of the cell's size by which a node of a straight cell may be off its place
+_STEPS = 8.0  # of the stored coordinates, where they are coarser
+_LOOKED_AT = 500
+"""Cells of each block in which another order of the nodes is searched for."""
+_SYMMETRIC = ("line", "quad", "pixel", "hexahedron", "voxel")
+"""Shapes with a centre of symmetry: there the gradient of straight cells gains an order."""
+_COMPLETE = ("quad9", "hexahedron27", "wedge18")
+_COMPLETE_FAMILIES = ("VTK_LAGRANGE_QUADRILATERAL", "VTK_LAGRANGE_HEXAHEDRON", "VTK_LAGRANGE_WEDGE")
+"""Elements that hold every product of two functions of their corners, so every quadratic on any cell with straight edges."""
+
+
+@dataclass(eq=False)
+class CellShapes:
+    """Geometry of the cells of a model, `(n_cells,)` each, file order; NaN where there is no such cell.
+
+    Attributes
+    ----------
+    middle
+        `(n_cells, 3)` centroid from `origin`.
+    span
+        Distance of the farthest node from the first.
+    reach
+        Largest over the axes of the sum of the derivatives of the shape functions, by size: what one unit of error in
+        every nodal displacement can do to a component of the gradient.
+    height
+        Smallest height.
+    condition
+        Product of the lengths of the tangents over their volume: 1 for a brick, large for a sliver.
+    bent
+        How far a node is off its place in the straight cell with the same corners.
+    change
+        Norm of the change of a strain with the gradient `slope` over the nodes of the cell.
+    along
+        `(n_cells, 3, 3)` projectors onto the cells that are surfaces or lines in space; None where there are none.
+    straight
+        Whether every node is at its place, or at that of another node.
+    reordered
+        Whether the nodes are those of a straight cell in another order.
+    origin
+        `(3,)` middle of the mesh.
+    """
+
+    middle: Floats
+    span: Floats
+    reach: Floats
+    height: Floats
+    condition: Floats
+    bent: Floats
+    change: Floats
+    along: Floats | None
+    straight: NDArray[np.bool_]
+    reordered: NDArray[np.bool_]
+    origin: Floats
+
+
+def middle_and_size(model: Model) -> tuple[Floats, float]:
+    """Return the middle of the box around the computed cells, and the length of its longest side."""
+    used = np.zeros(len(model.points), dtype=bool)
+    for block in model.blocks:
+        used[block.connectivity] = len(block.active) > 0
+    points = model.points[used & np.isfinite(model.points).all(axis=1)]
+    if not len(points):
+        return np.zeros(3), 1.0
+    low, high = points.min(axis=0), points.max(axis=0)
+    size = float((high - low).max())
+    return 0.5 * (low + high), size if size > 0 else 1.0
+
+
+def cell_shapes(model: Model, slope: Floats, threads: int | None = None) -> CellShapes:
+    """Return the geometry of the cells of a model.
+
+    Parameters
+    ----------
+    model
+        See `build_model`.
+    slope
+        `(3, 3, 3)` second derivatives of a displacement, for `change`.
+    threads
+        Number of threads; None for all processors.
+    """
+    n = model.result.n_cells
+    span, reach, height, condition, bent, change = (np.full(n, np.nan) for _ in range(6))
+    in_space = any(b.kind in ("surface", "line") and len(b.active) for b in model.blocks)
+    shapes = CellShapes(
+        np.full((n, 3), np.nan), span, reach, height, condition, bent, change,
+        np.empty((n, 3, 3)) if in_space else None,
+        np.zeros(n, dtype=bool), np.zeros(n, dtype=bool), middle_and_size(model)[0],
+    )  # fmt: skip
+    stored = storage_resolution(model.result.points)
+    for block in model.blocks:
+        if block.row is not None and len(block.active):
+            _Pass(model, block, shapes, slope, (stored.relative, stored.absolute)).run(threads)
+    return shapes
+
+
+class _Pass:
+    """One block being gone through."""
+
+    def __init__(
+        self, model: Model, block: ModelBlock, shapes: CellShapes, slope: Floats, stored: tuple[float, float]
+    ) -> None:
+        assert block.row is not None
+        self.model, self.block, self.row, self.shapes = model, block, block.row, shapes
+        self.center = self.row.shape_gradients(self.row.centroid[None])[0]
+        self.functions = self.row.shape_functions(self.row.centroid[None])[0]
+        self.strain_slope = six_from_full(slope)  # `(6, 3)` by the coordinates
+        self.norm = np.sqrt([1.0, 1.0, 1.0, 2.0, 2.0, 2.0])
+        self.stored = stored
+        self.frame, self.places = _straight(self.row)
+
+    def run(self, threads: int | None) -> None:
+        connectivity, index = self.block.connectivity, self.block.index
+
+        def work(start: int, stop: int) -> None:
+            with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
+                chunk = self.model.chunk(self.block, connectivity[start:stop], index[start:stop])
+                self._chunk(chunk, index[start:stop])
+
+        over_chunks(work, chunk_ranges(len(index), connectivity.shape[1]), threads)
+        self._search(connectivity, index)
+
+    def _chunk(self, chunk: ElementChunk, rows: NDArray[np.int64]) -> None:
+        s, relative = self.shapes, chunk.relative[:3]
+        point = chunk.at(self.center, self.functions)
+        first = chunk.first[:3] - s.origin[:, None]
+        s.middle[rows] = (first + np.einsum("a,iam->im", self.functions[1:], relative)).T
+        span = np.sqrt((relative**2).sum(axis=0).max(axis=0))
+        s.span[rows] = span
+        s.height[rows] = smallest_height(chunk, point)
+        s.reach[rows] = _reach(point.inverse, self.center)
+        tangents = np.matmul(self.center[:, 1:], relative)  # (3, dim, m)
+        lengths = np.sqrt((tangents**2).sum(axis=0)).prod(axis=0)
+        s.condition[rows] = lengths / np.abs(point.measure)
+        bent = self._bent(relative)
+        s.bent[rows] = bent
+        far = np.abs(chunk.first[:3]).max(axis=0) + span
+        allowed = _STRAIGHT * span + _STEPS * (self.stored[0] * far + self.stored[1])
+        s.straight[rows] = bent <= allowed
+        over = np.einsum("cj,jam->cam", self.strain_slope, relative)
+        most, least = np.maximum(over.max(axis=1), 0.0), np.minimum(over.min(axis=1), 0.0)
+        s.change[rows] = np.sqrt(((self.norm[:, None] * (most - least)) ** 2).sum(axis=0))
+        if self.block.kind in ("surface", "line"):
+            assert s.along is not None
+            s.along[rows] = _projector(tangents)
+
+    def _bent(self, relative: Floats) -> Floats:
+        """Return how far the nodes are off the straight cell that has the same corners."""
+        if self.row.n_nodes == self.row.dim + 1:
+            return np.zeros(relative.shape[-1])
+        nodes = np.concatenate([np.zeros((3, 1, relative.shape[-1])), relative], axis=1)
+        off = nodes - np.einsum("af,ifm->iam", self.places, nodes[:, list(self.frame)])
+        found: Floats = np.sqrt((off**2).sum(axis=0).max(axis=0))
+        return found
+
+    def _search(self, connectivity: NDArray[np.int64], index: NDArray[np.int64]) -> None:
+        """Look among the cells that are not straight for those whose nodes are only in another order."""
+        s = self.shapes
+        odd = np.flatnonzero(~s.straight[index] & np.isfinite(s.bent[index]))
+        if not len(odd):
+            return
+        odd = odd[np.unique(np.linspace(0, len(odd) - 1, _LOOKED_AT).astype(np.int64))]
+        points = self.model.points[connectivity[odd]]
+        far, span = np.abs(points).max(axis=(1, 2)), s.span[index[odd]]
+        allowed = 4.0 * (_STRAIGHT * span + _STEPS * (self.stored[0] * far + self.stored[1]))
+        found = index[odd[reordered_cells(points, self.row, allowed)]]
+        s.reordered[found] = s.straight[found] = True
+        if self.row.n_nodes > self.row.n_corners:
+            linear = ELEMENTS[self.row.shape.name].shape_functions(self.row.nodes)
+            guess = np.einsum("ac,mci->mai", linear, points[:, : self.row.n_corners])
+            other = _same_places(guess, points, allowed) & (np.linalg.norm(guess - points, axis=-1).max(axis=1) > allowed)
+            s.reordered[index[odd[other]]] = True
+
+
+def exact_at_middle(row: Element) -> bool:
+    """Return whether straight cells of an element give the gradient of every quadratic exactly at their centroid."""
+    return row.order >= 2 or row.shape.name in _SYMMETRIC
+
+
+def reordered_cells(points: Floats, row: Element, allowed: Floats) -> NDArray[np.bool_]:
+    """Return which cells hold the nodes of a straight cell, in whatever order.
+
+    Parameters
+    ----------
+    points
+        `(m, n_nodes, 3)` coordinates of the nodes.
+    row
+        The element.
+    allowed
+        `(m,)` distance by which a node may be off its place.
+    """
+    frame, places = _frame(row)
+    n = row.n_corners
+    found = np.zeros(len(points), dtype=bool)
+    vertex_alike = row.shape.name != "pyramid"  # any corner may then stand for the first
+    for order in permutations(range(n), row.dim + 1):
+        if vertex_alike and order[0] != 0:
+            continue
+        todo = np.flatnonzero(~found)
+        if not len(todo):
+            break
+        at = points[todo]
+        guess = np.einsum("af,mfi->mai", places, at[:, list(order)])
+        fits = _same_places(guess[:, :n], at[:, :n], allowed[todo])
+        fits[fits] = _same_places(guess[fits], at[fits], allowed[todo][fits])
+        found[todo[fits]] = True
+    return found
+
+
+def _same_places(a: Floats, b: Floats, allowed: Floats) -> NDArray[np.bool_]:
+    """Return which rows of two lists `(m, n, 3)` of points hold the same points in any order."""
+    apart = np.linalg.norm(a[:, :, None] - b[:, None], axis=-1)
+    near = apart <= allowed[:, None, None]
+    one_each: NDArray[np.bool_] = (near.sum(axis=1) == 1).all(axis=1) & (near.sum(axis=2) == 1).all(axis=1)
+    return one_each
+
+
+def _straight(row: Element) -> tuple[tuple[int, ...], Floats]:
+    """Return corners, and the nodes as combinations of them, in the cells on which an element holds all quadratics.
+
+    Those are cells with parallel opposite sides; for elements that hold all products of the functions of their corners,
+    all with straight edges.
+    """
+    if row.name in _COMPLETE or (row.name in _COMPLETE_FAMILIES and row.order >= 2):
+        return tuple(range(row.n_corners)), ELEMENTS[row.shape.name].shape_functions(row.nodes)
+    return _frame(row)
+
+
+def _frame(row: Element) -> tuple[tuple[int, ...], Floats]:
+    """Return corners that span the cell, and the nodes as combinations of them `(n_nodes, dim + 1)`."""
+    v = row.shape.vertices
+    for corners in permutations(range(row.n_corners), row.dim + 1):
+        edges = v[list(corners[1:])] - v[corners[0]]
+        if abs(np.linalg.det(edges)) > 1e-9:
+            local = (row.nodes - v[corners[0]]) @ np.linalg.inv(edges)
+            return corners, np.concatenate([1.0 - local.sum(axis=1, keepdims=True), local], axis=1)
+    raise AssertionError(row.name)  # a shape whose corners span less than its dimension does not exist
+
+
+def _reach(inverse: Floats, center: Floats) -> Floats:
+    """Return the largest sum over the nodes of `|dN_a / dX_j|` `(m,)`."""
+    total = np.zeros(inverse.shape[1:])
+    for gradient in center.T:
+        total += np.abs(np.einsum("k,kjm->jm", gradient, inverse))
+    found: Floats = total.max(axis=0)
+    return found
+
+
+def _projector(tangents: Floats) -> Floats:
+    """Return the projectors `(m, 3, 3)` onto the span of one or two tangents `(3, dim, m)`."""
+    if tangents.shape[1] == 1:
+        t = tangents[:, 0]
+        return np.asarray(np.einsum("im,jm->mij", t, t) / (t * t).sum(axis=0)[:, None, None])
+    normal = np.cross(tangents[:, 0], tangents[:, 1], axis=0)
+    return np.eye(3) - np.einsum("im,jm->mij", normal, normal) / (normal * normal).sum(axis=0)[:, None, None]
