@@ -181,6 +181,7 @@ class _Pass:
         allowed = 4.0 * (_STRAIGHT * span + _STEPS * (self.stored[0] * far + self.stored[1]))
         found = index[odd[reordered_cells(points, self.row, allowed)]]
         s.reordered[found] = s.straight[found] = True
+        s.bent[found] = 0.0  # the nodes are at the places of a straight cell
         if self.row.n_nodes > self.row.n_corners:
             linear = ELEMENTS[self.row.shape.name].shape_functions(self.row.nodes)
             guess = np.einsum("ac,mci->mai", linear, points[:, : self.row.n_corners])

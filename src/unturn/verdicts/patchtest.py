@@ -27,6 +27,7 @@ from unturn.verdicts.cell_shapes import (
 )
 from unturn.verdicts.finding import Place
 from unturn.verdicts.imposed import ImposedField, imposed_fields
+from unturn.verdicts.node_order import far_from_edges, joined_otherwise
 from unturn.verdicts.patchtest_places import FIELDS, Elsewhere, at_nodes, on_surface
 
 AlsoAt = Literal["nodes", "surface"]
@@ -99,6 +100,8 @@ class PatchTest:
         The mesh as it was computed; its displacement is zero.
     shapes
         Geometry of its cells.
+    far, joined
+        `(n_cells,)` cells with nodes far from their edges, and cells with an edge that is a diagonal of a neighbour.
     groups
         Cells by type and region.
     errors
@@ -119,6 +122,8 @@ class PatchTest:
 
     model: Model
     shapes: CellShapes
+    far: NDArray[np.bool_]
+    joined: NDArray[np.bool_]
     groups: tuple[Group, ...]
     errors: tuple[Errors, ...]
     left_out: dict[str, NDArray[np.int64]]
@@ -180,7 +185,7 @@ def patch_test(result: Result, options: PatchTestOptions | None = None) -> Patch
     regions = named_regions(model, options.regions, active) if options.regions else find_regions(model, active)
     elsewhere, notes = _elsewhere(result, model, fields, regions, shapes, options)
     return PatchTest(
-        model, shapes, _groups(model, regions), tuple(errors), left_out, computed, element_numbers(result), tuple(regions),
+        model, shapes, far_from_edges(model), joined_otherwise(model), _groups(model, regions), tuple(errors), left_out, computed, element_numbers(result), tuple(regions),
         tuple(elsewhere), (*found.notes, *notes),
     )  # fmt: skip
 

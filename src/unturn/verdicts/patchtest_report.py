@@ -123,18 +123,30 @@ def _left_out(test: PatchTest, group: str, name: str, what: str, cells: NDArray[
 
 
 def _orders(test: PatchTest, group: str) -> Iterator[Finding]:
+    """Yield the cells whose nodes are in a wrong order, or may be."""
+    signs = (
+        ("hold the nodes of a straight cell in another order than that of a {} cell", test.shapes.reordered),
+        ("have an edge that is a diagonal of a neighbour, or the other way round", test.joined),
+        ("have mid-side nodes far from the middle of their edges", test.far),
+    )
     for g in test.groups:
-        odd = g.cells[test.shapes.reordered[g.cells]]
-        message = (
-            f"{len(odd)} cells hold the nodes of a straight cell, in another order than that of a {g.cell_type} cell: "
-            "write the file again with the node order of its format"
-        )
+        counts = [int(mask[g.cells].sum()) for _, mask in signs]
+        odd = g.cells[test.shapes.reordered[g.cells] | test.joined[g.cells] | test.far[g.cells]]
+        state: State = "exceeded" if counts[0] else "undecided" if len(odd) else "met"
+        found = [f"{n} {what.format(g.cell_type)}" for n, (what, _) in zip(counts, signs) if n]
+        message = f"{'; '.join(found)}: {_ADVICE[state]}" if found else ""
         yield Finding(
-            f"node_order.{_of(g)}", group, f"{_words(g)}: cells whose nodes are in a wrong order",
-            "exceeded" if len(odd) else "met", message if len(odd) else "", value=float(len(odd)), bound=0.0, unit="cells",
-            place=test.place(int(odd[0])) if len(odd) else {},
-            details={"cell_type": g.cell_type, "region": g.region},
+            f"node_order.{_of(g)}", group, f"{_words(g)}: cells whose nodes are in a wrong order, or may be", state, message,
+            value=float(len(odd)), bound=0.0, unit="cells", place=test.place(int(odd[0])) if len(odd) else {},
+            details={"cell_type": g.cell_type, "region": g.region, "reordered": counts[0], "joined_otherwise": counts[1],
+                     "far": counts[2]},
         )  # fmt: skip
+
+
+_ADVICE = {
+    "exceeded": "write the file again with the node order of its format",
+    "undecided": "look whether the mesh is so, or the order of its nodes wrong",
+}
 
 
 def _of(g: Group) -> str:
