@@ -30,7 +30,9 @@ def patchtest(
     ] = None,
     at: Annotated[
         list[AlsoAtChoice] | None,
-        typer.Option(help="Also there (repeatable): recovered at nodes, on free faces of solids. Informative."),
+        typer.Option(
+            help="Also there (repeatable): recovered at nodes, on free faces of solids. Informative."
+        ),
     ] = None,
     region: Annotated[
         list[str] | None,
@@ -42,12 +44,15 @@ def patchtest(
     installation: Annotated[
         bool,
         typer.Option(
-            "--installation", help="Without FILE: run the published checks on built-in meshes, for a record to sign."
+            "--installation",
+            help="Without FILE: run the published checks on built-in meshes, for a record to sign.",
         ),
     ] = False,
     output: Annotated[
         Path | None,
-        typer.Option("-o", "--output", metavar="RECORD.txt", help="Also write the record of --installation there."),
+        typer.Option(
+            "-o", "--output", metavar="RECORD.txt", help="Also write the record of --installation there."
+        ),
     ] = None,
     today: Annotated[
         str | None,
@@ -68,7 +73,7 @@ def patchtest(
     from unturn.verdicts.patchtest_report import patch_report
 
     places = r.ReportPlaces(json, junit, markdown, csv)
-    where = tuple(dict.fromkeys(a.value for a in at or ()))
+    where = tuple(dict.fromkeys(at or ()))
     if installation:
         for_meshes = file, where, region, alive, skin, allow_undecided, threads
         if any(for_meshes) or step != "last":
@@ -78,14 +83,18 @@ def patchtest(
             )
         _installation(places, output, today)
     if output is not None or today is not None:
-        raise UsageError("-o and --today belong to --installation; say --json, --junit ... for the test of a mesh.")
+        raise UsageError(
+            "-o and --today belong to --installation; say --json, --junit ... for the test of a mesh."
+        )
     if file is None:
         raise UsageError("name the file whose mesh is to be tested, or say --installation.")
     places.check([file])
     opened = io.open_result(file)
     result = opened.read(chosen_step(opened, step))
-    options = PatchTestOptions(tuple(region or ()), where, skin, alive, threads)
-    places.put(patch_report(patch_test(result, options), str(file), [hashed_file("mesh", file)], allow_undecided))
+    options = PatchTestOptions(tuple(region or ()), tuple(w.value for w in where), skin, alive, threads)
+    places.put(
+        patch_report(patch_test(result, options), str(file), [hashed_file("mesh", file)], allow_undecided)
+    )
 
 
 def _installation(places: r.ReportPlaces, output: Path | None, today: str | None) -> None:

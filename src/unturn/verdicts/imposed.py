@@ -76,13 +76,13 @@ class ImposedField:
         u = x @ self.gradient.T + self.shift
         if self.curvature is not None:
             u += 0.5 * np.stack([np.einsum("nj,nj->n", x @ Q, x) for Q in self.curvature], axis=1)
-        return u.astype(np.float32) if self.single else u
+        return np.asarray(u, dtype=np.float32 if self.single else np.float64)
 
     def gradient_at(self, x: Floats) -> Floats:
         """Return the exact gradient at points `(n, 3)`: `(n, 3, 3)`, or `(1, 3, 3)` where it is the same everywhere."""
         if self.curvature is None:
             return self.gradient[None]
-        return self.gradient + np.einsum("ijk,nk->nij", self.curvature, x)
+        return np.asarray(self.gradient + np.einsum("ijk,nk->nij", self.curvature, x))
 
     def expected(self, x: Floats, along: Floats | None) -> dict[str, Floats]:
         """Return the exact values at points, by measure: one row for each point, or one for all.
@@ -134,9 +134,13 @@ _MACNEAL = Source(
     "accuracy, Finite Elem. Anal. Des. 1, 3-20",
 )
 _RODRIGUES = Source("published", "Rodrigues 1840: F = R; R + R^T = 2 I - 2 (1 - cos) (I - a a^T); U = I")
-_POLAR = Source("published", "Holzapfel 2000, Nonlinear Solid Mechanics, sections 2.5 and 2.6: F = R U, strains are f(U)")
+_POLAR = Source(
+    "published", "Holzapfel 2000, Nonlinear Solid Mechanics, sections 2.5 and 2.6: F = R U, strains are f(U)"
+)
 _SMALL = Source("published", "Timoshenko and Goodier, Theory of Elasticity, chapters 1 and 7")
-_TAYLOR = Source("derived", "gradient of a quadratic polynomial; elements that hold all of them give it exactly")
+_TAYLOR = Source(
+    "derived", "gradient of a quadratic polynomial; elements that hold all of them give it exactly"
+)
 
 
 def imposed_fields(normal: int | None, size: float) -> list[ImposedField]:

@@ -56,7 +56,9 @@ class Installation:
     def report(self) -> Report:
         """The results as findings."""
         findings = tuple(_finding(*r) for r in self.results)
-        return Report("patchtest --installation", findings, settings=self.system, timestamp=self.date)
+        return Report(
+            "patchtest --installation", findings, settings=self.system, timestamp=f"{self.date}T00:00:00"
+        )
 
 
 def all_checks() -> tuple[Check, ...]:
@@ -97,7 +99,9 @@ def _finding(check: Check, cases: Sequence[Case], fault: str) -> Finding:
     state: State = "exceeded" if beyond else "met"
     message = f"{len(cases)} comparisons; nearest to its bound: {worst.name}"
     if beyond:
-        message = f"{len(beyond)} of {len(cases)} comparisons are beyond their bounds, the farthest: {worst.name}"
+        message = (
+            f"{len(beyond)} of {len(cases)} comparisons are beyond their bounds, the farthest: {worst.name}"
+        )
     return Finding(
         check.name, _GROUP, check.title, state, message, value=worst.error, bound=worst.bound, unit=_unit(worst.unit),
         details=details,
@@ -215,7 +219,8 @@ def _head(data: dict[str, Any]) -> Iterator[str]:
     yield f"program        unturn {s['unturn']}"
     yield f"               source files: SHA-256 {s['program_sha256']}"
     yield f"python         {s['python']} ({s['implementation']})"
-    yield f"machine        {s['system']} {s['release']}, {s['machine']}, {s['byte_order']}-endian, {s['processors']} processors"
+    machine = f"{s['system']} {s['release']}, {s['machine']}, {s['byte_order']}-endian, {s['processors']} processors"
+    yield f"machine        {machine}"
     packages = ", ".join(f"{k} {v or '(not installed)'}" for k, v in s["packages"].items())
     yield from textwrap.wrap(packages, _WIDTH, initial_indent="packages       ", subsequent_indent=" " * 15)
     counts = ", ".join(f"{n} {state}" for state, n in data["counts"].items())
@@ -227,7 +232,16 @@ def _table(data: dict[str, Any]) -> Iterator[str]:
     for c in data["checks"]:
         error = "" if c["error"] is None else value_text(c["error"], high=c["bound"])
         bound = "" if c["bound"] is None else number(c["bound"], digits=4)
-        rows.append([c["id"], str(len(c["cases"])), error, bound, c["unit"], c["state"].upper() if c["state"] != "met" else "met"])
+        rows.append(
+            [
+                c["id"],
+                str(len(c["cases"])),
+                error,
+                bound,
+                c["unit"],
+                c["state"].upper() if c["state"] != "met" else "met",
+            ]
+        )
     widths = [max(len(r[k]) for r in rows) for k in range(len(rows[0]))]
     for k, row in enumerate(rows):
         cells = [row[0].ljust(widths[0]), *(x.rjust(w) for x, w in zip(row[1:4], widths[1:4])), *row[4:]]
@@ -246,7 +260,9 @@ def _sources(data: dict[str, Any]) -> Iterator[str]:
         title = "patch.*: imposed fields on a patch of each element" if many else f"{c['id']}: {c['title']}"
         seen.setdefault((title, c["source"], c["source_kind"]), []).append(c["id"])
     for title, text, kind in seen:
-        yield from textwrap.wrap(f"{title} [{text} ({kind})]", _WIDTH, initial_indent="  ", subsequent_indent="    ")
+        yield from textwrap.wrap(
+            f"{title} [{text} ({kind})]", _WIDTH, initial_indent="  ", subsequent_indent="    "
+        )
 
 
 def _foot(data: dict[str, Any]) -> Iterator[str]:

@@ -147,7 +147,9 @@ def _simple_shear() -> Iterator[Case]:
         biot = kinematics.principal_strain(kinematics.biot_strain(H))
         yield compared(f"principal stretches, shear {g:g}", biot + 1.0, [long, 1.0, short])
         hencky = kinematics.principal_strain(kinematics.hencky_strain(H))
-        yield compared(f"principal Hencky strains, shear {g:g}", hencky, np.arcsinh(g / 2.0) * np.array([1, 0, -1]))
+        yield compared(
+            f"principal Hencky strains, shear {g:g}", hencky, np.arcsinh(g / 2.0) * np.array([1, 0, -1])
+        )
         green = np.array([[0.0, g / 2.0, 0.0], [g / 2.0, g * g / 2.0, 0.0], [0.0, 0.0, 0.0]])
         yield compared(f"Green-Lagrange strain, shear {g:g}", kinematics.green_lagrange_strain(H), green)
         turned = kinematics.finite_rotation(H)
@@ -174,9 +176,13 @@ def _equivalent() -> Iterator[Case]:
     pull = np.diag([1e-3, -0.5e-3, -0.5e-3])
     yield compared("isochoric pull of 1000 microstrain", kinematics.equivalent_strain(pull), 1e-3, rounding)
     shear = np.array([[0.0, 0.5e-3, 0.0], [0.5e-3, 0.0, 0.0], [0.0, 0.0, 0.0]])
-    yield compared("pure shear of 1000 microstrain", kinematics.equivalent_strain(shear), 1e-3 / np.sqrt(3.0), rounding)
+    yield compared(
+        "pure shear of 1000 microstrain", kinematics.equivalent_strain(shear), 1e-3 / np.sqrt(3.0), rounding
+    )
     pull = np.diag([1e-3, -0.3e-3, -0.3e-3])
-    yield compared("pull at Poisson's ratio 0.3", kinematics.equivalent_strain(pull), 2.0 / 3.0 * 1.3e-3, rounding)
+    yield compared(
+        "pull at Poisson's ratio 0.3", kinematics.equivalent_strain(pull), 2.0 / 3.0 * 1.3e-3, rounding
+    )
 
 
 def _tensors() -> Floats:
@@ -208,7 +214,9 @@ def _percentiles() -> Iterator[Case]:
     wanted = [0.1, 1.0, 5.0, 50.0, 95.0, 99.0, 99.9]
     numpy = np.percentile(values, wanted, method="inverted_cdf")
     yield compared("997 equal weights", weighted_percentiles(values, np.ones(997), wanted), numpy, 0.0)
-    repeated = weighted_percentiles(np.array([3.0, 1.0, 2.0]), np.array([1.0, 1.0, 8.0]), [10.0, 50.0, 90.0, 95.0])
+    repeated = weighted_percentiles(
+        np.array([3.0, 1.0, 2.0]), np.array([1.0, 1.0, 8.0]), [10.0, 50.0, 90.0, 95.0]
+    )
     yield compared("weights 1, 8, 1", repeated, [1.0, 2.0, 2.0, 3.0], 0.0)
 
 

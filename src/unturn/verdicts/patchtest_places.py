@@ -82,7 +82,9 @@ def at_nodes(
         if numbers is not None:
             place["node"] = int(numbers.numbers[node])
         name = f"nodes.{imposed.name}.{region.name}"
-        title = f"{imposed.name.replace('_', ' ')}, recovered at nodes of {region.name}: largest error of strain"
+        title = (
+            f"{imposed.name.replace('_', ' ')}, recovered at nodes of {region.name}: largest error of strain"
+        )
         found.append(Elsewhere(name, title, float(values.max()), unit, message, place, {"nodes": len(nodes)}))
     return found
 

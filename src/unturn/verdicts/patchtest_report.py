@@ -10,11 +10,11 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from unturn.kinematics._symmetric import Floats
 from unturn.measures import MEASURES
 from unturn.summary import cell_counts, mesh_kind
 from unturn.verdicts.finding import Finding, InputFile, Report, State
-from unturn.verdicts.patchtest import Errors, Group, PatchTest, blind
+from unturn.verdicts.patchtest import Group, PatchTest
+from unturn.verdicts.patchtest_errors import Errors, blind
 from unturn.verdicts.patchtest_places import Elsewhere
 from unturn.verdicts.wording import number
 
@@ -56,9 +56,7 @@ def patch_report(
         "middle": [float(x) for x in test.shapes.origin],
         "fields": [_field_data(e) for e in test.errors],
     }
-    return Report(
-        "patchtest", tuple(findings), tuple(inputs), allow_undecided, tuple(_notes(test)), settings
-    )
+    return Report("patchtest", tuple(findings), tuple(inputs), allow_undecided, tuple(_notes(test)), settings)
 
 
 def _notes(test: PatchTest) -> Iterator[str]:
@@ -107,7 +105,9 @@ def _cells(test: PatchTest, group: str) -> Iterator[Finding]:
 def _left_out(test: PatchTest, group: str, name: str, what: str, cells: NDArray[np.int64]) -> Finding:
     missing = cells[~test.computed[cells]]
     share = 100.0 * len(missing) / len(cells)
-    reasons = {r: int(np.isin(out, missing).sum()) for r, out in test.left_out.items()} if len(missing) else {}
+    reasons = (
+        {r: int(np.isin(out, missing).sum()) for r, out in test.left_out.items()} if len(missing) else {}
+    )
     reasons = {r: k for r, k in reasons.items() if k}
     listed = ", ".join(f"{k} {r}" for r, k in reasons.items())
     state: State = "met" if not len(missing) else "warning" if share <= MOST_LEFT_OUT else "undecided"
@@ -215,7 +215,7 @@ def _relative(errors: Errors, cell: int) -> float | None:
     return float(errors.error[cell]) / size if size else None
 
 
-def _floor(errors: Errors, cells: NDArray[np.int64]) -> dict[str, Any]:
+def _floor(errors: Errors, cells: NDArray[np.int64]) -> dict[str, float]:
     assert errors.noise is not None
     floor = errors.noise[cells]
     with np.errstate(divide="ignore", invalid="ignore"):
@@ -228,7 +228,11 @@ def _floor(errors: Errors, cells: NDArray[np.int64]) -> dict[str, Any]:
 
 
 def _why(
-    errors: Errors, cells: NDArray[np.int64], beyond: NDArray[np.bool_], doubtful: NDArray[np.int64], measure: str
+    errors: Errors,
+    cells: NDArray[np.int64],
+    beyond: NDArray[np.bool_],
+    doubtful: NDArray[np.int64],
+    measure: str,
 ) -> str:
     if beyond.any():
         what = f"{int(beyond.sum())} of {len(cells)} cells are beyond what rounding explains"
@@ -243,7 +247,8 @@ def _why(
         floor = _floor(errors, cells)
         return (
             f"at most {_few(floor['error_in_noise_floors'])} times the noise floor reported for the cell, above it in "
-            f"{_few(floor['percent_above_noise_floor'])} % of the cells; the bound is what rounding of every node can do at worst"
+            f"{_few(floor['percent_above_noise_floor'])} % of the cells; the bound is what rounding of every node can do "
+            "at worst"
         )
     return ""
 
@@ -272,7 +277,7 @@ def _resolved(test: PatchTest, errors: Errors, g: Group, cells: NDArray[np.int64
     )  # fmt: skip
 
 
-def _few(value: Floats | float) -> str:
+def _few(value: float) -> str:
     return number(float(value), digits=2) if abs(value) > 1e-6 else "0"
 
 
