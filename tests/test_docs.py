@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+import math
 import re
 import shutil
 import tomllib
@@ -26,6 +27,9 @@ from unturn.io import FORMATS, Format
 from unturn.kinematics._finite import BASES
 from unturn.measures import DEFAULT_MEASURES, GEOMETRY, MEASURES, SMALL, Measure
 from unturn.series import SERIES_MEASURES
+from unturn.verdicts.imposed import imposed_fields
+from unturn.verdicts.installation import check_installation, record_data
+from unturn.verdicts.installation_checks import FORMULAS, Case, Check
 
 SAMPLES = [p for p in (ROOT / "sample_meshes").iterdir() if p.suffix in (".vtu", ".xdmf", ".h5")]
 README, DOCS = ROOT / "README.md", ROOT / "docs"
@@ -185,6 +189,13 @@ def test_the_tables_of_finite_strains_are_the_codes() -> None:
 
 def _spoken(base: str) -> str:
     return base.replace("_", "-")
+
+
+def test_the_table_of_imposed_fields_is_the_codes() -> None:
+    expected = [
+        [f"`{f.name}`", f.title, f"{f.source.text} ({f.source.kind})"] for f in imposed_fields(None, 1.0)
+    ]
+    assert table(DOCS / "patchtest.md", "field") == expected
 
 
 def test_the_table_of_elements_is_the_codes() -> None:
@@ -391,3 +402,14 @@ def test_the_convergence_schema_is_documented_key_by_key(desk: Path) -> None:
     produced.append(json.loads(Path("study.json").read_text(encoding="utf-8")))
     assert {d["schema"] for d in produced} == {"unturn.convergence/1"}
     _check_schema(DOCS / "convergence-json.md", produced)
+
+
+def test_the_schema_of_an_installation_is_documented_key_by_key() -> None:
+    def broken() -> list[Case]:
+        raise OSError("no such library")
+
+    sound = [c for c in FORMULAS if c.name in ("simple_shear", "refinement")]
+    failed = Check("failed", "one is two", FORMULAS[0].source, lambda: [Case("one", math.inf, 0.0)])
+    fault = Check("fault", "it cannot be run", FORMULAS[0].source, broken)
+    data = record_data(check_installation("2026-12-31", [*sound, failed, fault]))
+    _check_schema(DOCS / "installation-json.md", [json.loads(json.dumps(data, allow_nan=False))])
