@@ -23,6 +23,7 @@ from unturn.verdicts.builtin_meshes import straight_cell
 _EPS = 2.0**-53
 _ROUNDINGS = 200.0
 _HIGHEST = 6
+_LOGARITHMS = 20
 
 
 @dataclass(frozen=True)
@@ -82,14 +83,15 @@ def _completeness() -> Iterator[Case]:
     for name, row in every_element():
         mesh = straight_cell(row)
         x, cells = np.asarray(mesh.points), mesh.blocks[0].connectivity
-        worst, size = 0.0, 1.0
         middle = row.shape_functions(row.centroid[None])[0] @ x[cells[0]]
-        for powers in _powers(row.dim, row.order):
-            u = np.zeros_like(x)
-            u[:, 0] = _monomial(x, powers)
-            H = displacement_gradient(x, cells, u, mesh.blocks[0].cell_type)[0, 0]
-            exact = np.array([_derivative(middle, powers, k) for k in range(3)])
-            worst = max(worst, float(np.abs(H - exact)[: row.dim].max()))
+        worst, size = 0.0, 1.0
+        powers = _powers(row.dim, row.order)
+        for start in range(0, len(powers), 3):  # three monomials are the components of one displacement
+            some = powers[start : start + 3]
+            u = np.stack([_monomial(x, p) for p in (*some, *some)[:3]], axis=1)
+            H = displacement_gradient(x, cells, u, mesh.blocks[0].cell_type)[0]
+            exact = np.array([[_derivative(middle, p, k) for k in range(row.dim)] for p in some])
+            worst = max(worst, float(np.abs(H[: len(some), : row.dim] - exact).max()))
             size = max(size, float(np.abs(u).max()))
         # differentiation of a polynomial of order p is worse conditioned by about p squared
         yield Case(name, worst, _ROUNDINGS * _EPS * size * row.order**2 * row.n_nodes)
@@ -201,9 +203,10 @@ def _polar() -> Iterator[Case]:
     H = H[np.linalg.det(np.eye(3) + H) > 0.1]
     U = np.array([polar(np.eye(3) + h)[1] for h in H])
     yield compared(f"Biot strain of {len(H)} gradients", kinematics.biot_strain(H), U - np.eye(3))
-    logs = np.array([logm(u).real for u in U])
+    logs = np.array([logm(u).real for u in U[:_LOGARITHMS]])
     # logm itself is good to some 1e-13 where the smallest stretch is 0.1
-    yield compared(f"Hencky strain of {len(H)} gradients", kinematics.hencky_strain(H), logs, 1e-12)
+    hencky = kinematics.hencky_strain(H[:_LOGARITHMS])
+    yield compared(f"Hencky strain of {_LOGARITHMS} gradients", hencky, logs, 1e-12)
 
 
 # --- statistics and studies ---------------------------------------------------------------------------------------
