@@ -15,7 +15,7 @@ from lxml import etree
 
 import meshes
 import unturn
-from documents import ROOT, run
+from documents import ROOT, run, table
 from unturn.elements import ELEMENTS
 from unturn.verdicts import installation
 from unturn.verdicts.installation_checks import FORMULAS, Case, Check
@@ -69,6 +69,21 @@ def test_a_sound_mesh_passes_in_every_form(desk: Path) -> None:
         "\\", ""
     )
     assert BRACKET.read_bytes() == before
+
+
+def test_the_details_of_findings_are_documented_key_by_key(desk: Path) -> None:
+    page = ROOT / "docs" / "patchtest.md"
+    rows = {row[0].strip("`"): row[1] for row in table(page, "detail of `patchtest`", "type")}
+    assert run(["patchtest", str(BRACKET), "--at", "nodes", "--at", "surface", "--json", "a.json"])[0] == 0
+    data = json.loads(Path("a.json").read_text(encoding="utf-8"))
+    assert {key for f in data["findings"] for key in f["details"]} == set(rows)
+    kinds = {"integer": int, "number": (int, float), "string": str, "object": dict, "boolean": bool}
+    for key, value in ((k, v) for f in data["findings"] for k, v in f["details"].items()):
+        allowed = rows[key].split(" or ")
+        assert (value is None and "null" in allowed) or isinstance(value, kinds[allowed[0]]), key  # type: ignore[arg-type]
+    text = page.read_text(encoding="utf-8")
+    named = [*data["settings"], *data["settings"]["fields"][0]]
+    assert all(f"`{key}`" in text for key in named)
 
 
 def test_a_wrong_order_of_nodes_fails_the_build(desk: Path) -> None:
