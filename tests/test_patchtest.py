@@ -338,7 +338,38 @@ def test_cells_too_thin_to_be_judged_are_undecided() -> None:
     found = report(in_space(mesh._replace(points=mesh.points * [1, 1, 1e-11])).result())
     assert found.exit_status == 1
     assert set(odd(found).values()) == {"undecided"}
-    assert "so thin that rounding alone" in by_id(found)["translation.hexahedron.whole"].message
+    assert "so thin, or so small" in by_id(found)["strain_and_turn.hexahedron.whole"].message
+
+
+@pytest.mark.source("IEEE 754: single precision reaches from 1.2e-38 to 3.4e38")
+@pytest.mark.parametrize(("scale", "stored"), [(1e-33, False), (1e-20, True), (1e20, True), (1e33, False)])
+def test_meshes_beyond_single_precision_are_tested_without_it(scale: float, stored: bool) -> None:
+    mesh = meshes.patch(ELEMENTS["hexahedron20"])
+    found = report(mesh._replace(points=mesh.points * scale).result())
+    assert found.exit_status == 0, odd(found)
+    assert ("strain_and_turn_float32.hexahedron20.whole" in by_id(found)) == stored
+    assert any("does not fit single precision" in n for n in found.notes) != stored
+
+
+@pytest.mark.derived("what rounding may turn inside out says nothing of finite measures")
+def test_parts_that_are_tiny_beside_their_distance_are_undecided() -> None:
+    near = meshes.patch(ELEMENTS["wedge12"]).points
+    cells = meshes.patch(ELEMENTS["wedge12"]).cells
+    points = np.concatenate([near, near + np.array([3e12, 0, 0])])
+    found = report(
+        meshes.Mesh(points, np.concatenate([cells, cells + len(near)]), ELEMENTS["wedge12"]).result()
+    )
+    assert set(odd(found).values()) <= {"undecided", "warning"}
+    assert found.exit_status == 1
+    assert by_id(found)["translation.wedge12.body 1"].state == "met"
+
+
+@pytest.mark.parametrize("digits", [3, 4, 5, 6])
+def test_coordinates_with_few_digits_are_no_wrong_order(digits: int) -> None:
+    # Common practice, no source.
+    mesh = grid(3, ELEMENTS["hexahedron20"], (1.0, 0.93, 1.07))
+    found = report(mesh._replace(points=(mesh.points * 0.987654321).round(digits)).result())
+    assert found.exit_status == 0, odd(found)
 
 
 # --- mixed meshes -------------------------------------------------------------------------------------------------

@@ -16,6 +16,7 @@ from unturn.verdicts.straight_cells import moved_between_edges, reordered_cells,
 
 _STRAIGHT = 1e-9  # share of the cell's size by which a node of a straight cell may be off its place
 _STEPS = 8.0  # of the stored coordinates, where they are coarser
+_FAR_OFF = 20.0
 _LOOKED_AT = 500
 """Cells of each block in which another order of the nodes is searched for."""
 
@@ -145,14 +146,17 @@ class _Pass:
         bent = self._bent(relative)
         s.bent[rows] = bent
         far = np.abs(chunk.first[:3]).max(axis=0) + span
-        allowed = _STRAIGHT * span + _STEPS * (self.stored[0] * far + self.stored[1])
-        s.straight[rows] = bent <= allowed
+        s.straight[rows] = bent <= self._allowed(span, far)
         over = np.einsum("cj,jam->cam", self.strain_slope, relative)
         most, least = np.maximum(over.max(axis=1), 0.0), np.minimum(over.min(axis=1), 0.0)
         s.change[rows] = np.sqrt(((self.norm[:, None] * (most - least)) ** 2).sum(axis=0))
         if self.block.kind in ("surface", "line"):
             assert s.along is not None
             s.along[rows] = _projector(tangents)
+
+    def _allowed(self, span: Floats, far: Floats) -> Floats:
+        """Return how far a node of a straight cell may be off its place, because of the digits of its coordinates."""
+        return _STRAIGHT * span + _STEPS * (self.stored[0] * far + self.stored[1])
 
     def _bent(self, relative: Floats) -> Floats:
         """Return how far the nodes are off the straight cell that has the same corners."""
@@ -166,13 +170,15 @@ class _Pass:
     def _search(self, connectivity: NDArray[np.int64], index: NDArray[np.int64]) -> None:
         """Look among the cells that are not straight for those whose nodes are only in another order."""
         s = self.shapes
-        odd = np.flatnonzero(~s.straight[index] & np.isfinite(s.bent[index]))
+        with np.errstate(invalid="ignore", over="ignore"):
+            far = np.abs(s.middle[index] + s.origin).max(axis=1) + s.span[index]
+            allowed = 4.0 * self._allowed(s.span[index], far)
+            # nodes at each other's places are much farther off than digits that are missing
+            odd = np.flatnonzero(s.bent[index] > _FAR_OFF * allowed)
         if not len(odd):
             return
         odd = odd[np.unique(np.linspace(0, len(odd) - 1, _LOOKED_AT).astype(np.int64))]
-        points = self.model.points[connectivity[odd]]
-        far, span = np.abs(points).max(axis=(1, 2)), s.span[index[odd]]
-        allowed = 4.0 * (_STRAIGHT * span + _STEPS * (self.stored[0] * far + self.stored[1]))
+        points, allowed = self.model.points[connectivity[odd]], allowed[odd]
         found = index[odd[reordered_cells(points, self.row, allowed)]]
         s.reordered[found] = s.straight[found] = True
         s.bent[found] = 0.0  # the nodes are at the places of a straight cell

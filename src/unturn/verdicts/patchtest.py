@@ -16,6 +16,7 @@ from unturn.model import Model, PlaneOptions, build_model
 from unturn.numbering import Numbering, element_numbers
 from unturn.regions import Region, find_regions, named_regions
 from unturn.result import Result
+from unturn.surface import free_faces
 from unturn.verdicts.cell_shapes import CellShapes, cell_shapes, middle_and_size
 from unturn.verdicts.finding import Place
 from unturn.verdicts.imposed import ImposedField, imposed_fields
@@ -24,6 +25,9 @@ from unturn.verdicts.patchtest_errors import NAME, Errors, errors_of, imposed_mo
 from unturn.verdicts.patchtest_places import FIELDS, Elsewhere, at_nodes, on_surface
 
 AlsoAt = Literal["nodes", "surface"]
+
+_SINGLE = (1e-30, 1e30)
+"""Sizes of a mesh between which displacements of its size have all digits of single precision."""
 
 
 @dataclass(frozen=True)
@@ -125,6 +129,10 @@ def patch_test(result: Result, options: PatchTestOptions | None = None) -> Patch
     for block in model.blocks:
         active[block.index] = block.row is not None
     errors: list[Errors] = []
+    notes = []
+    if not _SINGLE[0] < size < _SINGLE[1]:
+        fields = [f for f in fields if not f.single]
+        notes.append(f"a mesh of size {size:.3g} does not fit single precision: nothing was stored so")
     for imposed in fields:
         moved = imposed_model(model, imposed, origin)
         found = compute_fields(moved, imposed.measures, threads=options.threads, diagnose=imposed.single)
@@ -134,10 +142,10 @@ def patch_test(result: Result, options: PatchTestOptions | None = None) -> Patch
         errors.append(errors_of(found, imposed, shapes, computed, options.threads))
     named = options.regions
     regions = named_regions(model, named, active) if named else find_regions(model, active)
-    elsewhere, notes = _elsewhere(result, model, fields, regions, shapes, options)
+    elsewhere, why_not = _elsewhere(result, model, fields, regions, shapes, options)
     return PatchTest(
         model, shapes, far_from_edges(model), joined_otherwise(model), _groups(model, regions), tuple(errors), found.left_out,
-        computed, element_numbers(result), tuple(regions), tuple(elsewhere), (*found.notes, *notes),
+        computed, element_numbers(result), tuple(regions), tuple(elsewhere), (*found.notes, *notes, *why_not),
     )  # fmt: skip
 
 
@@ -158,12 +166,19 @@ def _elsewhere(
     }
     found: list[Elsewhere] = []
     origin = shapes.origin
+    faces = (
+        free_faces(model, threads=options.threads) if "surface" in options.at and "solid" in kinds else None
+    )
+    if faces is not None and not len(faces):
+        wanted["surface"] = "on free faces: not looked at, the solids have none with an area"
     for imposed in (f for f in fields if f.name in FIELDS):
         moved = imposed_model(model, imposed, origin)
         if "nodes" in options.at and wanted["nodes"] is True:
             found += at_nodes(moved, imposed, regions, origin, shapes.change, result, options.threads)
-        if "surface" in options.at and wanted["surface"] is True:
-            found += on_surface(moved, imposed, origin, shapes.change, result, options.threads)
+        if faces is not None and wanted["surface"] is True:
+            found += on_surface(
+                replace(faces, model=moved), imposed, origin, shapes.change, result, options.threads
+            )
     return found, [why for place, why in wanted.items() if place in options.at and isinstance(why, str)]
 
 

@@ -23,6 +23,8 @@ _EPS, _SINGLE = 2.0**-53, 2.0**-24
 _DIGITS_U = 8.0  # roundings of an imposed displacement, each of half a digit of its size
 _DIGITS_H = 24.0  # roundings of a gradient, each of half a digit times the condition of the cell
 _FINITE = 4e-15  # absolute rounding of finite measures, times max(1, |H|^2)
+_UPSET = 0.1  # error of the gradient above which finite measures are not looked at
+_LINEAR = ("strain", "rotation")
 _BLIND = 1e-5
 """Strain that rounding alone may make in a cell, above which an error is no evidence."""
 
@@ -110,8 +112,15 @@ def _block_errors(
     stop: int,
 ) -> None:
     """Fill the errors of some cells of a block."""
+    with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
+        _fill(errors, found, shapes, block, rows[start:stop])
+
+
+def _fill(
+    errors: Errors, found: CellFields, shapes: CellShapes, block: ModelBlock, cells: NDArray[np.int64]
+) -> None:
     assert block.row is not None
-    imposed, cells = errors.field, rows[start:stop]
+    imposed = errors.field
     whole = block.kind in ("solid", "plane")
     along = None if whole or shapes.along is None else shapes.along[cells]
     bound = _rounding(imposed, shapes, cells, block.row.n_nodes)
@@ -126,6 +135,8 @@ def _block_errors(
         for k in range(values.shape[1]):
             error = np.maximum(error, np.abs(values[:, k] - exact[:, k]))
         error[np.isnan(error)] = np.inf
+        if name not in _LINEAR:  # rounding may turn such a cell inside out, and nothing follows from that
+            error[bound > _UPSET] = 0.0
         _keep_worse(errors, cells, imposed.measures.index(name), error, _of_measure(name, bound, imposed))
     errors.exact[cells] = imposed.curvature is None or (shapes.straight[cells] & exact_at_middle(block.row))
 
@@ -143,7 +154,10 @@ def _rounding(imposed: ImposedField, shapes: CellShapes, rows: NDArray[np.int64]
     span, reach = shapes.span[rows], shapes.reach[rows]
     G = float(np.linalg.norm(imposed.gradient))
     Q = 0.0 if imposed.curvature is None else float(np.linalg.norm(imposed.curvature))
-    moved = float(np.linalg.norm(imposed.shift)) + (G + 0.5 * Q * far) * far
+    shift = (
+        float(np.linalg.norm(imposed.shift)) if G or Q else 0.0
+    )  # nodes that all move alike are rounded alike
+    moved = shift + (G + 0.5 * Q * far) * far
     steep = G + Q * far
     bound: Floats = _EPS * (
         reach * (_DIGITS_U * moved + n_nodes * steep * span) + _DIGITS_H * shapes.condition[rows] * steep
@@ -155,18 +169,17 @@ def _rounding(imposed: ImposedField, shapes: CellShapes, rows: NDArray[np.int64]
 
 def _of_measure(name: str, bound: Floats, imposed: ImposedField) -> Floats:
     """Return the bound of a measure from that of the gradient: small ones are linear in it, the others nearly."""
-    if name in ("strain", "rotation"):
+    if name in _LINEAR:
         return bound
     G = float(np.linalg.norm(imposed.gradient))
-    return 4.0 * (1.0 + G) ** 2 * bound + _FINITE * max(1.0, G * G)
+    return 4.0 * ((1.0 + G) ** 2 * bound + bound**2) + _FINITE * max(1.0, G * G)
 
 
 def _keep_worse(errors: Errors, rows: NDArray[np.int64], number: int, error: Floats, bound: Floats) -> None:
     """Keep, cell by cell, the measure farthest beyond its bound; where none is beyond, that with the largest error."""
     before, limit = errors.error[rows], errors.bound[rows]
     beyond, was_beyond = error > bound, before > limit
-    with np.errstate(invalid="ignore", divide="ignore"):
-        worse = np.where(beyond & was_beyond, error / bound > before / limit, error > before)
+    worse = np.where(beyond & was_beyond, error / bound > before / limit, error > before)
     worse = (worse & (beyond | ~was_beyond)) | (beyond & ~was_beyond) | np.isnan(limit)
     errors.error[rows] = np.where(worse, error, before)
     errors.bound[rows] = np.where(worse, bound, limit)

@@ -15,7 +15,7 @@ from unturn.nodal import nodal_fields
 from unturn.numbering import element_numbers, node_numbers
 from unturn.regions import Region
 from unturn.result import Result
-from unturn.surface import Faces, free_faces, surface_result
+from unturn.surface import Faces, surface_result
 from unturn.verdicts.finding import Place
 from unturn.verdicts.imposed import ImposedField
 
@@ -90,11 +90,11 @@ def at_nodes(
 
 
 def on_surface(
-    model: Model, imposed: ImposedField, origin: Floats, change: Floats, result: Result, threads: int | None
+    faces: Faces, imposed: ImposedField, origin: Floats, change: Floats, result: Result, threads: int | None
 ) -> list[Elsewhere]:
     """Return the largest error of the strain on free faces of solids, from the faces' own nodes."""
-    fields = surface_result(model, free_faces(model, threads=threads), ["strain"], threads=threads)
-    found, middles = fields.result, _face_middles(fields.faces, model)
+    found = surface_result(faces.model, faces, ["strain"], threads=threads).result
+    middles = _face_middles(faces)
     parent = found.cell_data["parent_cell"].astype(np.int64)
     normal = found.cell_data["surface_normal"]
     along = np.eye(3) - normal[:, :, None] * normal[:, None]
@@ -142,10 +142,10 @@ def _largest_at_nodes(model: Model, change: Floats) -> Floats:
     return largest
 
 
-def _face_middles(faces: Faces, model: Model) -> Floats:
+def _face_middles(faces: Faces) -> Floats:
     """Return the centroids `(n_faces, 3)` by the faces' own shape functions."""
     parts = []
     for block in faces.blocks:
         functions = block.row.shape_functions(block.row.centroid[None])[0]
-        parts.append(np.einsum("a,nai->ni", functions, model.points[block.connectivity]))
+        parts.append(np.einsum("a,nai->ni", functions, faces.model.points[block.connectivity]))
     return np.concatenate(parts)

@@ -242,7 +242,10 @@ def _why(
             return f"{what}: the order of their nodes or their element type is not what the file says"
         return f"{what}: do not use this file before you know why"
     if len(doubtful):
-        return f"{len(doubtful)} of {len(cells)} cells are so thin that rounding alone may move their strain by more than 1 %"
+        return (
+            f"{len(doubtful)} of {len(cells)} cells are so thin, or so small beside the mesh, that rounding alone may move "
+            "their strain by more than 1 %"
+        )
     if errors.noise is not None:
         floor = _floor(errors, cells)
         return (
