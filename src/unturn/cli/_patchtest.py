@@ -31,14 +31,17 @@ def patchtest(
     at: Annotated[
         list[AlsoAtChoice] | None,
         typer.Option(
-            help="Also there (repeatable): recovered at nodes, on free faces of solids. Informative."
+            metavar="nodes|surface",
+            help="Also there (repeatable): recovered at nodes, on free faces of solids. Informative.",
         ),
     ] = None,
     region: Annotated[
         list[str] | None,
         typer.Option(metavar="NAME", help="Only this region (repeatable): a group, or array=value."),
     ] = None,
-    step: o.Step = "last",
+    step: Annotated[
+        str, typer.Option(metavar="last|N", help="Step of a series; N counts from zero.")
+    ] = "last",
     alive: o.Alive = None,
     skin: o.Skin = False,
     installation: Annotated[
