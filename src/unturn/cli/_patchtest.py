@@ -110,7 +110,7 @@ def _installation(places: r.ReportPlaces, output: Path | None, today: str | None
     text = record_text(found)
     if output is not None:
         write_text(text + "\n", output)
-    places.put(found.report, text, record_data(found))
+    places.put(found.report, text=text, data=record_data(found))
 
 
 def _date(today: str | None) -> str:
