@@ -65,8 +65,9 @@ def _worst(errors: Errors, computed: NDArray[np.bool_], name: str) -> Iterator[C
     """Yield the comparison nearest to its bound; none where the field is not exact in any cell."""
     cells = np.flatnonzero(computed & errors.exact)
     if len(cells):
-        times = np.where(errors.error[cells] > 0, errors.error[cells] / errors.bound[cells], 0.0)
-        worst = int(cells[np.argmax(times)])
+        error, bound = errors.error[cells], errors.bound[cells]
+        with np.errstate(divide="ignore", invalid="ignore"):
+            worst = int(cells[np.argmax(np.where(error > 0, error / bound, 0.0))])
         yield Case(name, 1e6 * float(errors.error[worst]), 1e6 * float(errors.bound[worst]), "1e-6")
 
 
