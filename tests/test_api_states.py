@@ -20,7 +20,7 @@ from unturn.cli._output import write_json
 from unturn.elements import ELEMENTS
 from unturn.errors import InputError, UsageError
 from unturn.io import series_writer
-from unturn.pipeline import StrainOptions
+from unturn.options import StrainOptions
 from unturn.result import Result
 
 MESH = patch(ELEMENTS["hexahedron"])

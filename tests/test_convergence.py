@@ -16,7 +16,8 @@ from unturn.errors import InputError, UsageError
 from unturn.fields import CellFields
 from unturn.locate import locate
 from unturn.model import build_model
-from unturn.pipeline import StrainOptions, compute
+from unturn.options import StrainOptions
+from unturn.pipeline import compute
 from unturn.quantities import Found, find_quantity, parse_quantity
 from unturn.refinement import LOWEST, Study, check_refinement, observed_order, study
 

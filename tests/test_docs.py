@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+import math
 import re
 import shutil
 import tomllib
@@ -27,6 +28,9 @@ from unturn.measures import DEFAULT_MEASURES, ESTIMATES, GEOMETRY, MEASURES, SMA
 from unturn.refinement import Behaviour
 from unturn.series import SERIES_MEASURES
 from unturn.verdicts.finding import STATES
+from unturn.verdicts.imposed import imposed_fields
+from unturn.verdicts.installation import check_installation, record_data
+from unturn.verdicts.installation_checks import FORMULAS, Case, Check
 from unturn.verdicts.tolerances import ARRAY_KEYS, FILE_KEYS
 
 SAMPLES = [p for p in (ROOT / "sample_meshes").iterdir() if p.suffix in (".vtu", ".xdmf", ".h5", ".toml")]
@@ -189,6 +193,13 @@ def test_the_tables_of_finite_strains_are_the_codes() -> None:
 
 def _spoken(base: str) -> str:
     return base.replace("_", "-")
+
+
+def test_the_table_of_imposed_fields_is_the_codes() -> None:
+    expected = [
+        [f"`{f.name}`", f.title, f"{f.source.text} ({f.source.kind})"] for f in imposed_fields(None, 1.0)
+    ]
+    assert table(DOCS / "patchtest.md", "field") == expected
 
 
 def test_the_table_of_elements_is_the_codes() -> None:
@@ -432,3 +443,14 @@ def test_the_keys_of_tolerances_are_the_codes() -> None:
     for heading, keys in (("key of the file", FILE_KEYS), ("key of an array", ARRAY_KEYS)):
         expected = [[f"`{k.name}`", k.kind.words, k.meaning] for k in keys]
         assert table(page, heading) == expected
+
+
+def test_the_schema_of_an_installation_is_documented_key_by_key() -> None:
+    def broken() -> list[Case]:
+        raise OSError("no such library")
+
+    sound = [c for c in FORMULAS if c.name in ("simple_shear", "refinement")]
+    failed = Check("failed", "one is two", FORMULAS[0].source, lambda: [Case("one", math.inf, 0.0)])
+    fault = Check("fault", "it cannot be run", FORMULAS[0].source, broken)
+    data = record_data(check_installation("2026-12-31", [*sound, failed, fault]))
+    _check_schema(DOCS / "installation-json.md", [json.loads(json.dumps(data, allow_nan=False))])

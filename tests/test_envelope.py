@@ -21,7 +21,8 @@ from unturn.envelopes import envelope
 from unturn.errors import InputError, UsageError
 from unturn.kinematics import equivalent_strain, principal_strain, strain, tensor_from_components
 from unturn.model import build_model
-from unturn.pipeline import StrainOptions, compute
+from unturn.options import StrainOptions
+from unturn.pipeline import compute
 from unturn.result import CellBlock, Result
 from unturn.states import Envelope, EnvelopeOptions, State, named
 from unturn.superposition import superposed_states

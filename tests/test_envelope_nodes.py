@@ -19,7 +19,8 @@ from unturn.elements import ELEMENTS
 from unturn.envelopes import envelope
 from unturn.errors import InputError, UsageError
 from unturn.kinematics import equivalent_strain, tensor_from_components
-from unturn.pipeline import StrainOptions, compute
+from unturn.options import StrainOptions
+from unturn.pipeline import compute
 from unturn.result import CellBlock, Result
 from unturn.states import Envelope, EnvelopeOptions, State
 from unturn.superposition import superposed_states

@@ -12,7 +12,8 @@ from strategies import axis_angle
 from unturn import CellBlock, Result, UsageError, strain
 from unturn.elements import ELEMENTS
 from unturn.fields import LOCATIONS
-from unturn.pipeline import StrainOptions, compute
+from unturn.options import StrainOptions
+from unturn.pipeline import compute
 
 ALPHA, T0 = 12e-6, 20.0
 HEAT: dict[str, Any] = {"thermal_expansion": ALPHA, "temperature": "T", "reference_temperature": T0}

@@ -10,7 +10,8 @@ import numpy as np
 
 from unturn.errors import UnturnError
 from unturn.fields import CellFields
-from unturn.pipeline import StrainOptions, compute
+from unturn.options import StrainOptions
+from unturn.pipeline import compute
 from unturn.quantities import Found, Quantity, find_quantity
 from unturn.refinement import DECIDED, SMALL_RATIO, Study, Three, check_refinement, study
 from unturn.result import Result

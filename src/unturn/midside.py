@@ -31,7 +31,14 @@ class MidNodes:
 
 
 def misplaced_mid_nodes(points: Floats, connectivity: NDArray[np.int64], row: Element) -> MidNodes:
-    """Return the cells with a node that is far from where its corners would have it.
+    """Return the cells with a node that is far from where its corners would have it; see `far_mid_nodes`."""
+    off = far_mid_nodes(points, connectivity, row)
+    count = int(off.sum())
+    return MidNodes(count, count / max(1, len(off)), int(np.argmax(off)) if count else -1)
+
+
+def far_mid_nodes(points: Floats, connectivity: NDArray[np.int64], row: Element) -> NDArray[np.bool_]:
+    """Return which cells `(n,)` have a node that is far from where its corners would have it.
 
     An edge node may be a quarter of its edge away from its place on the chord: a bow of a quarter of the chord is
     nearly a half circle, and the quarter-point nodes of crack-tip elements are at the bound and pass. A node within
@@ -39,7 +46,7 @@ def misplaced_mid_nodes(points: Floats, connectivity: NDArray[np.int64], row: El
     """
     off = np.zeros(len(connectivity), dtype=bool)
     if row.n_nodes == row.n_corners:
-        return MidNodes(0, 0.0, -1)
+        return off
     corners = points[connectivity[:, : row.n_corners]]
     with np.errstate(invalid="ignore", over="ignore"):
         # repeated corners leave edges without length: there the stored digits of the coordinates decide
@@ -51,8 +58,7 @@ def misplaced_mid_nodes(points: Floats, connectivity: NDArray[np.int64], row: El
             reach = np.linalg.norm(around[:, :, None] - around[:, None], axis=-1).max(axis=(1, 2))
             distance = np.linalg.norm(points[connectivity[:, node]] - place, axis=1)
             off |= distance > (_FAR + 0.01) * reach + rounding
-    count = int(off.sum())
-    return MidNodes(count, count / max(1, len(off)), int(np.argmax(off)) if count else -1)
+    return off
 
 
 def _corner_weights(row: Element) -> Floats:

@@ -316,6 +316,3 @@ def _thermal(
     if zero is not None:
         check_zero_temperature(zero, temperature, float(reference))
     return parse_thermal(result, str(expansion), temperature, float(reference))
-
-
-__all__ = ["Computed", "StrainOptions", "compute", "model_of", "settled"]

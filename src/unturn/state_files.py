@@ -13,7 +13,8 @@ from unturn.combinations import Combination
 from unturn.errors import UnturnError, UsageError
 from unturn.extremes import Kind
 from unturn.io.table import attach_displacement_table, read_displacement_table
-from unturn.pipeline import StrainOptions, settled
+from unturn.options import StrainOptions
+from unturn.pipeline import settled
 from unturn.result import Result
 from unturn.states import State
 from unturn.superposition import superposed_states

@@ -17,7 +17,7 @@ from unturn.extremes import Kind, Stored
 from unturn.kinematics._symmetric import Floats
 from unturn.model import Model
 from unturn.numbering import Numbering
-from unturn.pipeline import StrainOptions
+from unturn.options import StrainOptions
 from unturn.regions import Region
 from unturn.result import Result
 from unturn.verdict import Verdict

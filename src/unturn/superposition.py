@@ -18,7 +18,8 @@ from unturn.errors import InputError, UnturnError, UsageError, close_matches
 from unturn.fields import compute_fields
 from unturn.kinematics._symmetric import Floats
 from unturn.model import Model
-from unturn.pipeline import StrainOptions, model_of
+from unturn.options import StrainOptions
+from unturn.pipeline import model_of
 from unturn.precision import MEANT_DISPLACEMENT, storage_resolution
 from unturn.result import Array, Result
 from unturn.same_mesh import ReferenceMesh

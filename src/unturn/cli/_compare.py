@@ -18,7 +18,7 @@ from unturn.errors import UsageError
 
 if TYPE_CHECKING:
     from unturn.io import ResultFile
-    from unturn.pipeline import StrainOptions
+    from unturn.options import StrainOptions
     from unturn.result import Result
     from unturn.verdicts.compare_series import Step
     from unturn.verdicts.tolerances import Tolerances

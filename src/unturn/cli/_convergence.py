@@ -13,7 +13,7 @@ from unturn.cli._shared import EVERY, CellsOnly, strain_options
 from unturn.errors import UsageError
 
 if TYPE_CHECKING:
-    from unturn.pipeline import StrainOptions
+    from unturn.options import StrainOptions
     from unturn.result import Result
 
 

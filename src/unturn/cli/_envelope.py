@@ -16,7 +16,7 @@ from unturn.errors import UsageError
 
 if TYPE_CHECKING:
     from unturn.envelopes import EachStep
-    from unturn.pipeline import StrainOptions
+    from unturn.options import StrainOptions
     from unturn.result import Array, Association, Result
     from unturn.states import Envelope, EnvelopeOptions, State
 

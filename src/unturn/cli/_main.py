@@ -12,7 +12,7 @@ from typing import Annotated
 
 import typer
 
-from unturn.cli import _check, _compare, _convergence, _envelope, _strain, _survey
+from unturn.cli import _check, _compare, _convergence, _envelope, _patchtest, _strain, _survey
 from unturn.errors import UnturnError
 
 _SIGPIPE = 13  # which not every system has
@@ -40,6 +40,7 @@ app.command("check")(_check.check)
 app.command("compare")(_compare.compare)
 app.command("envelope")(_envelope.envelope)
 app.command("convergence")(_convergence.convergence)
+app.command("patchtest")(_patchtest.patchtest)
 
 
 def _show_version(value: bool) -> None:

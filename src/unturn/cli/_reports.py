@@ -5,7 +5,7 @@ from __future__ import annotations
 from collections.abc import Sequence
 from dataclasses import dataclass
 from pathlib import Path
-from typing import TYPE_CHECKING, Annotated
+from typing import TYPE_CHECKING, Annotated, Any
 
 import typer
 
@@ -58,7 +58,9 @@ class ReportPlaces:
     def _asked(self) -> dict[str, Path | None]:
         return {"json": self.json, "junit": self.junit, "markdown": self.markdown, "csv": self.csv}
 
-    def put(self, report: Report, at_least: int = 0) -> None:
+    def put(
+        self, report: Report, at_least: int = 0, text: str | None = None, data: dict[str, Any] | None = None
+    ) -> None:
         """Print the report, write the files that were asked for, and end the command with its exit status.
 
         Parameters
@@ -67,6 +69,8 @@ class ReportPlaces:
             What to tell.
         at_least
             An exit status that stands for something worse than a finding.
+        text, data
+            In the place of the report's own text and JSON.
 
         Raises
         ------
@@ -76,12 +80,12 @@ class ReportPlaces:
         from unturn.cli._output import write_json, write_text
         from unturn.verdicts.writers import WRITERS, json_report, text_report
 
-        typer.echo(text_report(report), err="-" in map(str, self._asked.values()))
+        typer.echo(text or text_report(report), err="-" in map(str, self._asked.values()))
         for name, place in self._asked.items():
             if place is None:
                 continue
             if name == "json":
-                write_json(json_report(report), place)
+                write_json(data or json_report(report), place)
             else:
                 write_text(WRITERS[name].write(report), place)
         raise typer.Exit(max(report.exit_status, at_least))

@@ -9,7 +9,8 @@ from pathlib import Path
 from typing import Protocol
 
 from unturn.errors import InputError, UnturnError, UsageError
-from unturn.pipeline import StrainOptions, settled
+from unturn.options import StrainOptions
+from unturn.pipeline import settled
 from unturn.result import Result
 from unturn.rigid import RigidMotion
 from unturn.verdicts.certainty import plus_minus_at

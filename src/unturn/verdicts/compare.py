@@ -12,7 +12,8 @@ from unturn.errors import InputError, UsageError, close_matches
 from unturn.kinematics._symmetric import Floats
 from unturn.measures import choose_measures
 from unturn.model import PlaneOptions
-from unturn.pipeline import StrainOptions, model_of
+from unturn.options import StrainOptions
+from unturn.pipeline import model_of
 from unturn.result import Array, Result
 from unturn.verdicts.compare_arrays import data_of, stored_pairs
 from unturn.verdicts.compare_measures import measure_pairs

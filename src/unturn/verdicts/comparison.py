@@ -9,7 +9,7 @@ from typing import Any
 
 from unturn.errors import UsageError, close_matches
 from unturn.io import open_result
-from unturn.pipeline import StrainOptions
+from unturn.options import StrainOptions
 from unturn.result import Result
 from unturn.verdicts.compare import OUTSIDE, CompareOptions, compare_states
 from unturn.verdicts.compare_series import Step, compare_opened

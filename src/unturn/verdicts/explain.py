@@ -5,7 +5,7 @@ from __future__ import annotations
 import datetime
 import textwrap
 
-from unturn.pipeline import StrainOptions
+from unturn.options import StrainOptions
 from unturn.summary import CAUTION, equivalent_form
 from unturn.verdicts.conclude import title_of
 from unturn.verdicts.limit import Limit, Limits, Waiver

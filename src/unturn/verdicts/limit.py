@@ -7,7 +7,7 @@ from collections.abc import Mapping
 from dataclasses import dataclass, field
 from typing import Any, Literal
 
-from unturn.pipeline import StrainOptions
+from unturn.options import StrainOptions
 from unturn.verdicts.region_kinds import RegionSpec
 from unturn.verdicts.units import Unit
 

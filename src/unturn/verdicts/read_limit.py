@@ -9,7 +9,7 @@ from typing import Any
 from unturn.errors import UsageError, close_matches
 from unturn.kinematics._finite import BASES
 from unturn.measures import MEASURES, SURFACE_AXES, choose_measures
-from unturn.pipeline import StrainOptions
+from unturn.options import StrainOptions
 from unturn.surface import SURFACE_MEASURES, choose_surface_measures
 from unturn.verdicts.columns import MAGNITUDE
 from unturn.verdicts.keys import Path, Source, read_table

@@ -10,7 +10,7 @@ from pathlib import Path as FilePath
 from typing import Any
 
 from unturn.errors import UsageError
-from unturn.pipeline import StrainOptions
+from unturn.options import StrainOptions
 from unturn.verdicts import kinds as k
 from unturn.verdicts.keys import Lines, Path, Source, key_path, read_table
 from unturn.verdicts.kinds import REQUIRED, Key
