@@ -69,7 +69,8 @@ def trusted_extremes(
     """
     questions = _questions(envelope)
     answers: dict[tuple[int, int], list[Trust]] = {}
-    for done, state in enumerate(sorted(questions), 1):
+    # from the last one on: sums of load cases are held for the last combinations that were gone through
+    for done, state in enumerate(sorted(questions, reverse=True), 1):
         asked = questions[state]
         for q, trust in zip(asked, _answers(envelope, envelope.states[state], asked, zero)):
             answers.setdefault((q.region, q.number), []).append(trust)
