@@ -30,7 +30,7 @@ LAYERS = (
     ("around",),
     ("trusted", "node_errors"),
     ("elsewhere",),
-    ("extremes", "same_mesh", "locate", "refinement", "combinations"),
+    ("extremes", "same_mesh", "locate", "refinement", "combinations", "quantity_text"),
     ("envelope_places",),
     ("states",),
     ("envelope_arrays",),

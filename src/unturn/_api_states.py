@@ -64,7 +64,8 @@ def envelope(
 ) -> EnvelopeReport:
     """Return the extremes of every cell or node over steps or load cases, and which of them made each.
 
-    One state is in memory at a time where they come from files.
+    One state is in memory at a time where they come from files; those that made the extremes of regions are read twice, to
+    tell how far to trust them.
 
     Parameters
     ----------

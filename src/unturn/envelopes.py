@@ -55,7 +55,7 @@ def envelope(
     Parameters
     ----------
     states
-        Steps or load cases on one mesh, each read when its turn comes.
+        Steps or load cases on one mesh, each read when its turn comes; those that made extremes of regions once more.
     options
         See `EnvelopeOptions`.
     zero
