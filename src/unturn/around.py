@@ -9,34 +9,39 @@ from __future__ import annotations
 
 import math
 from collections.abc import Sequence
-from dataclasses import dataclass, field
-from functools import cached_property
+from dataclasses import dataclass, replace
 from typing import Literal
 
 import numpy as np
 from numpy.typing import NDArray
 
-from unturn.cutout import Cut, Cutter
+from unturn.cutout import Cutter
 from unturn.kinematics._symmetric import Floats
 from unturn.measures import MEASURES, base_of
 from unturn.model import Model
+from unturn.neighbourhood import Location, Surroundings
 from unturn.nodal import FOLD
-from unturn.peaks import Peak, Peaks
 from unturn.pipeline import Computed
-from unturn.recovery import Recovered, recover_gradient, sheets
+from unturn.recovery import sheets
 from unturn.regions import Region, find_regions
 from unturn.rigid_parts import computed_cells
-from unturn.trust import MOST_CHANGE, StrainError, strain_error
+from unturn.trust import MOST_CHANGE
 
 Ints = NDArray[np.int64]
-Location = Literal["centroid", "mean"]
 
-RINGS = 3
-"""Rings of cells on which the plus and minus of a cell and its profile as a peak depend; one more for its nodes."""
-_TAKEN = (128, 1024, 8192)  # cells of a region among which the next peak is looked for, more if there is none
-_NEGLIGIBLE = 1e-3  # of the largest strain of the region: a smaller extreme is no peak
-_RESOLVED = 0.3
-"""Plus and minus at the node of a peak, as a share of the strain of its cell, below which the mesh resolves it."""
+VALUES, PEAKS = 4, 6
+"""Rings of cells on which the plus and minus of a cell depends, and whether it is a peak that is suspected.
+
+Recovered values at the nodes of a cell depend on three rings, by patches of corners two cells away that stand in at
+borders; on four where the nodes lie on a border, by the nodes beside them. A peak looks at the nodes of two more rings.
+"""
+_TAKEN = (
+    16,
+    128,
+    1024,
+    8192,
+)  # cells of a region among which the next peak is looked for, more if there is none
+_MOST = 250_000  # cells around them that are worth it
 
 
 @dataclass(frozen=True, eq=False)
@@ -253,25 +258,53 @@ def trust_on(
     """
     found = [Trust(math.nan)] * len(asked)
     bounds = {k: bound_of(a.measure, model.poisson, equivalent_poisson) for k, a in enumerate(asked)}
-    known = {k: b for k, b in bounds.items() if b is not None and asked[k].cell >= 0}
+    there = computed_cells(model)
+    known = {k: b for k, b in bounds.items() if b is not None and asked[k].cell >= 0 and there[asked[k].cell]}
     if not known:
         return found
-    mesh = _Mesh(Cutter(model), volume, groups, at, threads)
-    near = mesh.around(np.array([asked[k].cell for k in known]), RINGS)
+    mesh = Surroundings(Cutter(model), volume, groups, at, threads)
+    near = mesh.around([asked[k].cell for k in known], VALUES)
+    growing = []
     for k, bound in known.items():
-        found[k] = Trust(near.plus_minus(bound, asked[k], asked[k].cell))
-    doubtful = [k for k, b in known.items() if b.kind == "strain" and near.grows(asked[k])]
-    for taken in _TAKEN:
-        if not doubtful:
-            break
-        among = {k: _foremost(asked[k], volume, taken) for k in doubtful}
-        wide = mesh.around(np.unique(np.concatenate(list(among.values()))), RINGS + 1)
-        for k in doubtful:
-            found[k] = wide.judged(found[k], asked[k], known[k], among[k])
-        doubtful = [
-            k for k in doubtful if found[k].singular and found[k].next_cell < 0 and len(among[k]) > taken
-        ]
+        a = asked[k]
+        found[k] = Trust(bound.of(near.plus_minus(bound.bases, a.cell), float(a.values[a.cell])))
+        if bound.kind == "strain" and near.grows(near.peak(a.values, a.cell, a.smallest), a.size):
+            growing.append(k)
+    if growing:
+        near = mesh.around([asked[k].cell for k in growing], PEAKS)
+        for k in growing:
+            a = asked[k]
+            peak = near.peak(a.values, a.cell, a.smallest)
+            if near.suspected(peak, known[k].bases[0], a.size):
+                point = int(near.part.points[peak.point])
+                found[k] = replace(found[k], singular=True, point=point, growth=peak.growth)
+        _find_next(mesh, asked, known, found, len(near.part.cells))
     return found
+
+
+def _find_next(
+    mesh: Surroundings, asked: Sequence[Asked], bounds: dict[int, Bound], found: list[Trust], near: int
+) -> None:
+    """Add the next peaks to those that are suspected: among ever more cells, while what lies around is not too much.
+
+    `near` is the number of cells that were recovered anyway.
+    """
+    todo = [k for k, trust in enumerate(found) if trust.singular]
+    for taken in _TAKEN:
+        among = {k: _foremost(asked[k], mesh.volume, taken) for k in todo}
+        if not among:
+            return
+        cells = mesh.cutter.around(np.unique(np.concatenate(list(among.values()))), PEAKS)
+        if len(cells) > max(_MOST, near):
+            return
+        wide = mesh.of(cells)
+        for k in todo:
+            a, bound = asked[k], bounds[k]
+            after, value = wide.next_peak(a.values, a.cell, among[k], a.smallest, bound.bases[0], a.size)
+            if after >= 0:
+                more = bound.of(wide.plus_minus(bound.bases, after), value)
+                found[k] = replace(found[k], next_cell=after, next_value=value, next_plus_minus=more)
+        todo = [k for k in todo if found[k].next_cell < 0 and len(among[k]) > taken]
 
 
 def _foremost(asked: Asked, volume: Floats, count: int) -> Ints:
@@ -281,109 +314,3 @@ def _foremost(asked: Asked, volume: Floats, count: int) -> Ints:
         signed = asked.values[cells] if asked.smallest else -asked.values[cells]
         cells = np.append(cells[np.argpartition(signed, count)[: count + 1]], asked.cell)
     return np.unique(cells)
-
-
-@dataclass(frozen=True, eq=False)
-class _Mesh:
-    """A model and what is known of its cells."""
-
-    cutter: Cutter
-    volume: Floats
-    groups: Ints
-    at: Location
-    threads: int | None
-
-    def around(self, cells: Ints, rings: int) -> _Around:
-        """Return these cells with some rings around them, recovered."""
-        cut = self.cutter.cut(self.cutter.around(cells, rings))
-        recovered = recover_gradient(cut.model, self.groups[cut.cells], "patch", self.threads)
-        return _Around(cut, recovered, self.volume[cut.cells], self.at, self.threads)
-
-
-@dataclass(frozen=True, eq=False)
-class _Around:
-    """Cells that were cut out, with the gradient recovered at their nodes."""
-
-    part: Cut
-    recovered: Recovered
-    volume: Floats
-    at: Location
-    threads: int | None
-    errors: dict[str, StrainError] = field(default_factory=dict)
-
-    def own(self, cells: Ints) -> Ints:
-        """Return the positions of cells of the file."""
-        return np.searchsorted(self.part.cells, cells)
-
-    def error(self, base: str) -> StrainError:
-        """Return the error of a tensor."""
-        if base not in self.errors:
-            self.errors[base] = strain_error(self.recovered, self.threads, base, self.at)
-        return self.errors[base]
-
-    def plus_minus(self, bound: Bound, asked: Asked, cell: int) -> float:
-        """Return the bound of a measure at a cell of the file."""
-        own = self.own(np.array([cell]))[0]
-        total = sum(float(self.error(base).plus_minus[own]) for base in bound.bases)
-        return bound.of(total, float(asked.values[cell]))
-
-    @cached_property
-    def peaks(self) -> Peaks:
-        """The peaks of these cells."""
-        return Peaks(self.recovered, middles(self.part.model), self.volume)
-
-    def peak(self, asked: Asked) -> Peak:
-        """Return the value that is asked for as a peak."""
-        values = asked.values[self.part.cells]
-        return self.peaks.find(values, self.own(np.array([asked.cell])), asked.smallest)
-
-    def grows(self, asked: Asked) -> bool:
-        """Return whether a value grows towards a node as at a singular point, and is not negligible."""
-        peak = self.peak(asked)
-        return peak.singular and abs(peak.value) >= _NEGLIGIBLE * asked.size
-
-    def suspected(self, peak: Peak, base: str, size: float) -> bool:
-        """Return whether a peak grows, is not negligible, and is not resolved.
-
-        At a singular point the elements around never agree with what is recovered there: what recovery changes stays in
-        proportion to the strain, however fine the mesh. A steep smooth field, such as bending across a thin part, they
-        follow.
-        """
-        if not peak.singular or abs(peak.value) < _NEGLIGIBLE * size:
-            return False
-        error = self.error(base)
-        shares = self.peaks.corners[[peak.cell]].indices
-        share = shares[self.recovered.shares.point[shares] == peak.point]
-        strain = math.sqrt(error.strain_squared[peak.cell] / error.volume[peak.cell])
-        return not (error.plus_minus_shares[share] < _RESOLVED * strain).all()
-
-    def judged(self, known: Trust, asked: Asked, bound: Bound, among: Ints) -> Trust:
-        """Return whether a value is suspected singular, and the next peak among some cells of the file."""
-        values, own = asked.values[self.part.cells], self.own(among)
-
-        def suspected(peak: Peak) -> bool:
-            return self.suspected(peak, bound.bases[0], asked.size)
-
-        peak = self.peak(asked)
-        if not suspected(peak):
-            return known
-        after = self.peaks.next_peak(values, own, peak, asked.smallest, suspected)
-        there = int(self.part.cells[after.cell]) if after.cell >= 0 else -1
-        return Trust(
-            known.plus_minus,
-            True,
-            int(self.part.points[peak.point]),
-            peak.growth,
-            there,
-            after.value,
-            self.plus_minus(bound, asked, there) if there >= 0 else math.nan,
-        )
-
-
-def middles(model: Model) -> Floats:
-    """Return the middle of the corners of every cell `(n_cells, 3)`; NaN where it is not computed."""
-    found = np.full((model.result.n_cells, 3), np.nan)
-    for block in model.blocks:
-        if block.row is not None:
-            found[block.index] = model.points[block.connectivity[:, : block.row.n_corners]].mean(axis=1)
-    return found

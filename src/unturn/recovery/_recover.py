@@ -90,7 +90,8 @@ class Recovered:
 
 
 _TITLES = {
-    "patch": "values at nodes: polynomial through the accurate points around each corner, least squares",
+    "patch": "values at nodes: polynomial through the accurate points around each corner, least squares; on borders "
+    "shifted to the derivative along their edges",
     "extrapolate": "values at nodes: extrapolated in each element, averaged weighted by volume",
     "average": "values at nodes: average of the elements weighted by volume",
 }
@@ -134,6 +135,14 @@ def recover_gradient(
     the linear polynomial along the directions that the samples cover; else what the elements extrapolate to the node,
     averaged weighted by volume.
 
+    On borders of solids and plane meshes (facets that one cell of the group alone has) these values are then shifted. Along
+    an edge of such a facet the displacement of its own nodes has a derivative, at the accurate points of a line of the
+    element's order as accurate as inside the body; what it has more than the recovered gradient, interpolated along the
+    edge, is extrapolated to the ends. A corner takes the smallest change (in the mean square where its edges disagree)
+    that makes up for it; directions that no edge covers, the normal of a border that bends by less than 40 degrees, keep
+    their values. Nodes between corners take the mean of the shifts of their corners. A linear displacement, and a
+    quadratic one in elements that hold it, shifts nothing.
+
     Examples
     --------
     >>> import numpy as np
@@ -151,15 +160,22 @@ def recover_gradient(
     if method not in METHODS:
         raise UsageError(f"method {method!r} is not known; use one of {', '.join(METHODS)}.")
     shares = node_shares(model, groups)
-    return recover_samples(shares, sample_cells(model, threads), method, threads)
+    return recover_samples(shares, sample_cells(model, threads), method, threads, borders=True)
 
 
 def recover_samples(
-    shares: NodeShares, samples: CellSamples, method: Method = "patch", threads: int | None = None
+    shares: NodeShares,
+    samples: CellSamples,
+    method: Method = "patch",
+    threads: int | None = None,
+    borders: bool = False,
 ) -> Recovered:
-    """Return the values at nodes of gradients that were sampled in the cells; see `recover_gradient`."""
+    """Return the values at nodes of gradients that were sampled in the cells; see `recover_gradient`.
+
+    With `borders` the samples are those of the model's displacement, which then has its say at borders.
+    """
     if method == "patch":
-        values, how = by_patches(shares, samples, threads)
+        values, how = by_patches(shares, samples, borders, threads)
     else:
         met = meetings(shares, samples)
         values, how = np.full((9, len(shares)), np.nan), np.zeros(len(shares), dtype=np.int8)
