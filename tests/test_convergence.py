@@ -18,7 +18,8 @@ from unturn.locate import locate
 from unturn.model import build_model
 from unturn.options import StrainOptions
 from unturn.pipeline import compute
-from unturn.quantities import Found, find_quantity, parse_quantity
+from unturn.quantities import Found, find_quantity
+from unturn.quantity_text import parse_quantity
 from unturn.refinement import LOWEST, Study, check_refinement, observed_order, study
 
 # --- the published procedure ------------------------------------------------------------------------------------------

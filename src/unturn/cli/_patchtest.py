@@ -70,7 +70,7 @@ def patchtest(
 ) -> None:
     """Impose known fields on the mesh of a file and show the error made on exactly this mesh."""
     from unturn import io
-    from unturn.cli._strain import chosen_step
+    from unturn.cli._steps import chosen_step
     from unturn.verdicts.finding import hashed_file
     from unturn.verdicts.patchtest import PatchTestOptions, patch_test
     from unturn.verdicts.patchtest_report import patch_report
