@@ -21,7 +21,7 @@ from unturn.model import Model
 from unturn.neighbourhood import middles
 from unturn.peaks import Peaks
 from unturn.pipeline import Computed, StrainOptions, compute
-from unturn.recovery import recover_gradient
+from unturn.recovery import node_shares, recover_gradient, recover_samples, sample_cells
 from unturn.statistics import statistics
 from unturn.surface import faces_model, free_faces
 from unturn.trust import strain_error
@@ -72,8 +72,13 @@ def plus_minus(computed: Computed, cells: list[int], measure: str = "principal_s
 def whole(
     model: Model, at: Literal["centroid", "mean"] = "centroid", base: str = "", groups: Any = None
 ) -> Floats:
-    """Plus and minus of every cell from a recovery of the whole mesh."""
-    recovered = recover_gradient(model, groups_of(model) if groups is None else groups)
+    """Plus and minus of every cell from a recovery of the whole mesh; along surfaces and lines finite ones of F - I."""
+    groups = groups_of(model) if groups is None else groups
+    recovered = recover_gradient(model, groups)
+    if base not in ("", "rotation") and model.blocks[0].kind in ("surface", "line"):
+        recovered = recover_samples(
+            node_shares(model, groups), sample_cells(model, finite=True), borders=True
+        )
     return strain_error(recovered, base=base, at=at).plus_minus
 
 
@@ -223,6 +228,42 @@ class TestTheSameAsOfTheWholeMesh:
         np.testing.assert_allclose(
             plus_minus(computed, cells, measure), whole(model, base=base)[cells], rtol=1e-9
         )
+
+    @pytest.mark.parametrize("at", ["centroid", "mean"])
+    @pytest.mark.parametrize("name", ["line", "line3", "quad8"])
+    def test_finite_strain_and_turn_of_lines_and_surfaces(self, name: str, at: Any) -> None:
+        mesh = block(ELEMENTS[name], 24 if name[0] == "l" else 7)
+        x, y, _ = mesh.points.T
+        points = np.stack([x, y, 0.2 * np.sin(3 * x)], axis=1)
+        moved = (points + noisy(points, 3, 0.1)) @ TURN.T - points
+        computed = computed_of(mesh._replace(points=points).result(u=moved), base="hencky", at=at)
+        model = computed.fields.model
+        cells = some(model.result.n_cells)
+        for measure, base in (("principal_strain_hencky", "hencky"), ("stretch", "biot")):
+            expected = whole(model, at, base)[cells]
+            assert (expected > 0).all()
+            np.testing.assert_allclose(plus_minus(computed, cells, measure), expected, rtol=1e-9)
+        turn = whole(model, at, "turn")[cells]
+        found = plus_minus(computed, cells, "angle_of_turn")
+        np.testing.assert_allclose(found, 2 * np.arcsin(turn / 2), rtol=1e-9)
+        assert (found < 0.5).all()
+
+    @pytest.mark.derived("hoop strain 0.01 of a cylinder that is turned as a whole: ln 1.01 everywhere")
+    @pytest.mark.parametrize("name", ["quad", "quad8"])
+    def test_a_turned_shell_of_uniform_strain(self, name: str) -> None:
+        """Facets of linear cells meet at angles, which is all that they disagree by: not by the turn."""
+        mesh = block(ELEMENTS[name], 10)
+        angle = 1.5 * mesh.points[:, 0]
+        points = np.stack([np.cos(angle), np.sin(angle), mesh.points[:, 1]], axis=1)
+        bounds = []
+        for turn in (np.eye(3), TURN):
+            u = (points * [1.01, 1.01, 1]) @ turn.T - points
+            computed = computed_of(mesh._replace(points=points).result(u=u), base="hencky")
+            bounds.append(plus_minus(computed, [0, 44, 57], "principal_strain_hencky"))
+            hoop = computed.fields.arrays["principal_strain_hencky"][[0, 44, 57], 0]
+            assert (np.abs(hoop - np.log(1.01)) < bounds[-1] + 1e-9).all()
+        np.testing.assert_allclose(bounds[1], bounds[0], rtol=1e-6, atol=1e-12)
+        assert bounds[1].max() < 0.12 * np.log(1.01)
 
     def test_an_unstated_third_direction(self) -> None:
         computed = computed_of(with_parts("quad", 10), measures=["strain"])

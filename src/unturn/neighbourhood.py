@@ -15,7 +15,7 @@ from unturn.cutout import Cut, Cutter
 from unturn.kinematics._symmetric import Floats
 from unturn.model import Model
 from unturn.peaks import GROWING, Peak, Peaks
-from unturn.recovery import Recovered, recover_gradient
+from unturn.recovery import Recovered, recover_gradient, recover_samples, sample_cells
 from unturn.trust import StrainError, strain_error
 
 Ints = NDArray[np.int64]
@@ -96,8 +96,18 @@ class Neighbourhood:
     def error(self, base: str) -> StrainError:
         """Return the error of a tensor, `base` as in `strain_error`."""
         if base not in self._errors:
-            self._errors[base] = strain_error(self.recovered, self.threads, base, self.at)
+            recovered = self.recovered if base in ("", "rotation") else self.of_motion
+            self._errors[base] = strain_error(recovered, self.threads, base, self.at)
         return self._errors[base]
+
+    @cached_property
+    def of_motion(self) -> Recovered:
+        """What finite strain and turn follow from: along surfaces and lines `F - I`, which is smooth there."""
+        model = self.part.model
+        if not any(b.kind in ("surface", "line") for b in model.blocks):
+            return self.recovered
+        samples = sample_cells(model, self.threads, finite=True)
+        return recover_samples(self.recovered.shares, samples, "patch", self.threads, borders=True)
 
     def plus_minus(self, bases: Sequence[str], cell: int) -> float:
         """Return the sum of the bounds of some tensors at a cell."""
