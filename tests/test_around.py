@@ -19,8 +19,9 @@ from unturn.cutout import Cutter
 from unturn.elements import ELEMENTS
 from unturn.model import Model
 from unturn.neighbourhood import middles
+from unturn.options import StrainOptions
 from unturn.peaks import Peaks
-from unturn.pipeline import Computed, StrainOptions, compute
+from unturn.pipeline import Computed, compute
 from unturn.recovery import node_shares, recover_gradient, recover_samples, sample_cells
 from unturn.statistics import statistics
 from unturn.surface import faces_model, free_faces

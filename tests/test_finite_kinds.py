@@ -305,7 +305,8 @@ def test_lines(kind: str, at: str, stretch: float, angle: float) -> None:
     "turned inside out: NaN in finite measures, counted in the summary's warnings; the rest is right"
 )
 def test_inside_out_is_counted() -> None:
-    from unturn.pipeline import StrainOptions, compute
+    from unturn.options import StrainOptions
+    from unturn.pipeline import compute
     from unturn.summary import summarise
 
     mesh = meshes.patch(ELEMENTS["hexahedron"])

@@ -12,7 +12,8 @@ from documents import run
 from test_cli_wrong_input import POINTS, TETS, two_tets
 from unturn import CellBlock, DisplacementError, InputError, Result, UsageError
 from unturn.model import build_model
-from unturn.pipeline import StrainOptions, compute
+from unturn.options import StrainOptions
+from unturn.pipeline import compute
 from unturn.regions import bodies, find_regions
 from unturn.summary import SummaryOptions, summarise
 

@@ -23,7 +23,8 @@ from unturn import Result, kinematics, write
 from unturn.around import bound_of, groups_of
 from unturn.elements import ELEMENTS
 from unturn.measures import MEASURES
-from unturn.pipeline import StrainOptions, compute
+from unturn.options import StrainOptions
+from unturn.pipeline import compute
 from unturn.recovery import recover_gradient
 from unturn.summary import Summary, SummaryOptions, summarise, summary_data
 from unturn.summary_text import _above, summary_text

@@ -16,15 +16,15 @@ import numpy as np
 from numpy.typing import NDArray
 
 from unturn.cutout import Cutter
-from unturn.kinematics._finite import BASES
 from unturn.kinematics._symmetric import Floats
-from unturn.measures import MEASURES
+from unturn.measures import MEASURES, base_of
 from unturn.model import Model
 from unturn.neighbourhood import Location, Surroundings
 from unturn.nodal import FOLD
-from unturn.pipeline import Computed, computed_cells
+from unturn.pipeline import Computed
 from unturn.recovery import sheets
 from unturn.regions import Region, find_regions
+from unturn.rigid_parts import computed_cells
 from unturn.trust import MOST_CHANGE
 
 Ints = NDArray[np.int64]
@@ -35,12 +35,8 @@ VALUES, PEAKS = 4, 6
 Recovered values at the nodes of a cell depend on three rings, by patches of corners two cells away that stand in at
 borders; on four where the nodes lie on a border, by the nodes beside them. A peak looks at the nodes of two more rings.
 """
-_TAKEN = (
-    16,
-    128,
-    1024,
-    8192,
-)  # cells of a region among which the next peak is looked for, more if there is none
+_TAKEN = (16, 128, 1024, 8192)
+"""Cells of a region among which the next peak is looked for: more while there is none."""
 _MOST = 250_000  # cells around them that are worth it
 
 
@@ -176,11 +172,6 @@ def bound_of(
     if measure == "surface_equivalent_strain" and poisson is not None:
         change *= math.sqrt(1.0 + 2.0 * (poisson / (1.0 - poisson)) ** 2)
     return Bound((base,), change)
-
-
-def base_of(measure: str) -> str:
-    """Return the finite base of a measure by its name, empty for small ones."""
-    return next((b for b in BASES if measure.endswith(f"_{b}")), "")
 
 
 def trust_of(

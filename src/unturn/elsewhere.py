@@ -9,10 +9,10 @@ import numpy as np
 from numpy.typing import NDArray
 
 from unturn.around import Asked, Trust, groups_of, trust_on
+from unturn.borders import BorderJump, border_jump
 from unturn.gradient import sample_points
-from unturn.kinematics._finite import BASES
 from unturn.kinematics._symmetric import Floats
-from unturn.measures import MEASURES
+from unturn.measures import MEASURES, base_of
 from unturn.nodal import FOLD, NodeFields
 from unturn.numbering import node_numbers
 from unturn.pipeline import Computed
@@ -65,6 +65,8 @@ class Elsewhere:
         Region -> estimated global error of its strain in percent.
     notes
         Sentences on how the values came about.
+    border
+        The largest jump of the strain between two regions at a node.
     """
 
     title: str
@@ -72,6 +74,16 @@ class Elsewhere:
     growths: tuple[Growth, ...] = ()
     error_percent: dict[str, float] | None = None
     notes: tuple[str, ...] = ()
+    border: Border | None = None
+
+
+@dataclass(frozen=True)
+class Border:
+    """The largest jump between the strains of two regions at a node, the solver's number of the node, and its place."""
+
+    jump: BorderJump
+    node: int | None
+    at: tuple[float, ...]
 
 
 def find_elsewhere(
@@ -139,10 +151,6 @@ def _rows(names: Collection[str], prefix: str = "") -> list[_Row]:
     return found
 
 
-def _base(array: str) -> str:
-    return next((b for b in BASES if array.endswith(f"_{b}")), "")
-
-
 class _Nodes:
     """Looks for extremes at nodes."""
 
@@ -151,10 +159,10 @@ class _Nodes:
         self.numbering = node_numbers(computed.fields.model.result)
         self.rows = _rows(nodes.arrays)
         strains = [n for n in nodes.arrays if MEASURES[n].unit == "strain"]
-        bases = list(dict.fromkeys(_base(n) for n in strains)) or [""]
+        bases = list(dict.fromkeys(base_of(n) for n in strains)) or [""]
         self.errors = {
             b: strain_error(nodes.of_finite if b else nodes.recovered, threads, b)
-            for b in dict.fromkeys([bases[0], *(_base(r.array) for r in self.rows)])
+            for b in dict.fromkeys([bases[0], *(base_of(r.array) for r in self.rows)])
         }
         self.main = bases[0]
 
@@ -165,7 +173,15 @@ class _Nodes:
             tuple(e for r in regions for e in self._extremes(r)),
             error_percent={r.name: error.percentage(r.cells) for r in regions},
             notes=self.nodes.recovered.notes,
+            border=self._border(regions),
         )
+
+    def _border(self, regions: Sequence[Region]) -> Border | None:
+        jump = border_jump(self.nodes.of_finite if self.main else self.nodes.recovered, regions, self.main)
+        if jump is None:
+            return None
+        at = self.computed.fields.model.points[jump.point]
+        return Border(jump, node_of(self.numbering, jump.point), tuple(float(x) for x in at))
 
     def _extremes(self, region: Region) -> list[ElsewhereExtreme]:
         """Return the extremes of a region's own side of its nodes; on borders others may have been written."""
@@ -183,7 +199,7 @@ class _Nodes:
             change = MOST_CHANGE[row.kind]
             if row.kind == "equivalent_strain" and effective is not None:
                 change *= 1.5 / (1.0 + effective)
-            bound = change * float(self.errors[_base(row.array)].plus_minus_shares[own[pick]])
+            bound = change * float(self.errors[base_of(row.array)].plus_minus_shares[own[pick]])
             place = {"point": at, "node": node_of(self.numbering, at)}
             found.append(
                 ElsewhereExtreme(region.name, row.label, name, float(values[pick]), bound, place,
@@ -297,4 +313,6 @@ def _surface_notes(surface: SurfaceFields) -> tuple[str, ...]:
     faces = surface.result.n_cells
     left = sum(len(cells) for cells in surface.left_out.values())
     note = f"free surfaces: {faces} faces, strain from the face's own nodes at its centroid"
+    between = int(np.sum(surface.result.cell_data.get("between_groups", 0)))
+    note += f"; {between} of them between regions" if between else ""
     return (note + (f"; {left} without values" if left else ""),)

@@ -91,7 +91,7 @@ def _measure(
 ) -> tuple[MeshSize, list[Found]]:
     """Return the size of one mesh and the quantities on it; one mesh is in memory at a time."""
     from unturn import io
-    from unturn.cli._strain import chosen_step
+    from unturn.cli._steps import chosen_step
     from unturn.convergence_text import mesh_size
     from unturn.pipeline import compute
     from unturn.quantities import find_quantity

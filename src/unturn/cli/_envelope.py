@@ -208,7 +208,7 @@ def _states(
     zero_step: int | None,
 ) -> tuple[Sequence[State], StrainOptions, Result | None]:
     from unturn import io
-    from unturn.cli._strain import chosen_step
+    from unturn.cli._steps import chosen_step
     from unturn.superposition import read_combinations, superposed_states
 
     if combinations is not None and as_series:
