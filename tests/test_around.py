@@ -14,11 +14,11 @@ from solved_problems import NU, corner_plate, pressed
 from test_elsewhere import angle_mesh, corner_field
 from test_nodal import TURN, quadratic
 from unturn import CellBlock, Result, cutout, kinematics
-from unturn.around import Asked, Trust, bound_of, groups_of, trust_of, trust_on
+from unturn.around import PEAKS, Asked, Trust, bound_of, groups_of, trust_of, trust_on
 from unturn.cutout import Cutter
 from unturn.elements import ELEMENTS
 from unturn.model import Model
-from unturn.neighbourhood import middles
+from unturn.neighbourhood import Surroundings, middles
 from unturn.options import StrainOptions
 from unturn.peaks import Peaks
 from unturn.pipeline import Computed, compute
@@ -382,6 +382,28 @@ class TestPeaks:
         for mesh, u in (corner_plate(name, 8), pressed(name, 8)):
             found = check_peaks(computed_of(mesh.result(u=u), plane="stress", poisson=NU))
             assert any(t.singular for t in found)
+
+    @pytest.mark.parametrize("name", ["triangle", "quad8", "tetra", "hexahedron", "tetra10", "wedge"])
+    def test_profile_departure_and_what_is_known_at_the_node(self, name: str) -> None:
+        """Of cells anywhere, in the middle and at borders: all that the suspicion is made of."""
+        row = ELEMENTS[name]
+        result = with_parts(name, 20 if row.dim == 2 else 9 if row.order == 1 else 7)
+        computed = computed_of(result, plane="strain" if row.dim == 2 else None)
+        model, d = computed.fields.model, computed.fields.diagnostics
+        assert d is not None
+        values, groups = computed.fields.arrays["principal_strain"][:, 0].copy(), groups_of(model)
+        recovered = recover_gradient(model, groups)
+        error, peaks = strain_error(recovered), Peaks(recovered, middles(model), d.volume)
+        mesh = Surroundings(Cutter(model), d.volume, groups)
+        for cell in some(len(values), 8):
+            near = mesh.around([cell], PEAKS)
+            found, expected = near.peak(values, cell, False), peaks.find(values, np.array([cell]))
+            assert near.part.points[found.point] == expected.point
+            for a, b in ((found.growth, expected.growth), (found.departure, expected.departure)):
+                np.testing.assert_allclose(a, b, rtol=1e-8)
+            here = near.error("").plus_minus_shares[near.recovered.shares.point == found.point]
+            there = error.plus_minus_shares[recovered.shares.point == expected.point]
+            assert np.isin(np.round(there, 14), np.round(here, 14)).any()
 
     def test_a_smooth_field(self) -> None:
         found = check_peaks(computed_of(with_parts("hexahedron20", 5)))
