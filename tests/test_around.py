@@ -14,15 +14,15 @@ from solved_problems import NU, corner_plate, pressed
 from test_elsewhere import angle_mesh, corner_field
 from test_nodal import TURN, quadratic
 from unturn import CellBlock, Result, cutout, kinematics
-from unturn.around import Asked, Trust, bound_of, groups_of, trust_of, trust_on
+from unturn.around import PEAKS, Asked, Trust, bound_of, groups_of, trust_of, trust_on
 from unturn.cutout import Cutter
 from unturn.elements import ELEMENTS
 from unturn.model import Model
-from unturn.neighbourhood import middles
+from unturn.neighbourhood import Surroundings, middles
 from unturn.options import StrainOptions
 from unturn.peaks import Peaks
 from unturn.pipeline import Computed, compute
-from unturn.recovery import recover_gradient
+from unturn.recovery import node_shares, recover_gradient, recover_samples, sample_cells
 from unturn.statistics import statistics
 from unturn.surface import faces_model, free_faces
 from unturn.trust import strain_error
@@ -73,8 +73,13 @@ def plus_minus(computed: Computed, cells: list[int], measure: str = "principal_s
 def whole(
     model: Model, at: Literal["centroid", "mean"] = "centroid", base: str = "", groups: Any = None
 ) -> Floats:
-    """Plus and minus of every cell from a recovery of the whole mesh."""
-    recovered = recover_gradient(model, groups_of(model) if groups is None else groups)
+    """Plus and minus of every cell from a recovery of the whole mesh; along surfaces and lines finite ones of F - I."""
+    groups = groups_of(model) if groups is None else groups
+    recovered = recover_gradient(model, groups)
+    if base not in ("", "rotation") and model.blocks[0].kind in ("surface", "line"):
+        recovered = recover_samples(
+            node_shares(model, groups), sample_cells(model, finite=True), borders=True
+        )
     return strain_error(recovered, base=base, at=at).plus_minus
 
 
@@ -225,6 +230,42 @@ class TestTheSameAsOfTheWholeMesh:
             plus_minus(computed, cells, measure), whole(model, base=base)[cells], rtol=1e-9
         )
 
+    @pytest.mark.parametrize("at", ["centroid", "mean"])
+    @pytest.mark.parametrize("name", ["line", "line3", "quad8"])
+    def test_finite_strain_and_turn_of_lines_and_surfaces(self, name: str, at: Any) -> None:
+        mesh = block(ELEMENTS[name], 24 if name[0] == "l" else 7)
+        x, y, _ = mesh.points.T
+        points = np.stack([x, y, 0.2 * np.sin(3 * x)], axis=1)
+        moved = (points + noisy(points, 3, 0.1)) @ TURN.T - points
+        computed = computed_of(mesh._replace(points=points).result(u=moved), base="hencky", at=at)
+        model = computed.fields.model
+        cells = some(model.result.n_cells)
+        for measure, base in (("principal_strain_hencky", "hencky"), ("stretch", "biot")):
+            expected = whole(model, at, base)[cells]
+            assert (expected > 0).all()
+            np.testing.assert_allclose(plus_minus(computed, cells, measure), expected, rtol=1e-9)
+        turn = whole(model, at, "turn")[cells]
+        found = plus_minus(computed, cells, "angle_of_turn")
+        np.testing.assert_allclose(found, 2 * np.arcsin(turn / 2), rtol=1e-9)
+        assert (found < 0.5).all()
+
+    @pytest.mark.derived("hoop strain 0.01 of a cylinder that is turned as a whole: ln 1.01 everywhere")
+    @pytest.mark.parametrize("name", ["quad", "quad8"])
+    def test_a_turned_shell_of_uniform_strain(self, name: str) -> None:
+        """Facets of linear cells meet at angles, which is all that they disagree by: not by the turn."""
+        mesh = block(ELEMENTS[name], 10)
+        angle = 1.5 * mesh.points[:, 0]
+        points = np.stack([np.cos(angle), np.sin(angle), mesh.points[:, 1]], axis=1)
+        bounds = []
+        for turn in (np.eye(3), TURN):
+            u = (points * [1.01, 1.01, 1]) @ turn.T - points
+            computed = computed_of(mesh._replace(points=points).result(u=u), base="hencky")
+            bounds.append(plus_minus(computed, [0, 44, 57], "principal_strain_hencky"))
+            hoop = computed.fields.arrays["principal_strain_hencky"][[0, 44, 57], 0]
+            assert (np.abs(hoop - np.log(1.01)) < bounds[-1] + 1e-9).all()
+        np.testing.assert_allclose(bounds[1], bounds[0], rtol=1e-6, atol=1e-12)
+        assert bounds[1].max() < 0.12 * np.log(1.01)
+
     def test_an_unstated_third_direction(self) -> None:
         computed = computed_of(with_parts("quad", 10), measures=["strain"])
         assert computed.fields.model.plane is not None
@@ -303,7 +344,7 @@ def by_the_whole(computed: Computed, asked: Asked) -> Trust:
         return bool(
             peak.singular
             and abs(peak.value) >= 1e-3 * asked.size
-            and not (error.plus_minus_shares[share] < 0.4 * strain[peak.cell]).all()
+            and not (error.plus_minus_shares[share] < 0.5 * strain[peak.cell]).all()
         )
 
     known = error.plus_minus[asked.cell]
@@ -341,6 +382,28 @@ class TestPeaks:
         for mesh, u in (corner_plate(name, 8), pressed(name, 8)):
             found = check_peaks(computed_of(mesh.result(u=u), plane="stress", poisson=NU))
             assert any(t.singular for t in found)
+
+    @pytest.mark.parametrize("name", ["triangle", "quad8", "tetra", "hexahedron", "tetra10", "wedge"])
+    def test_profile_departure_and_what_is_known_at_the_node(self, name: str) -> None:
+        """Of cells anywhere, in the middle and at borders: all that the suspicion is made of."""
+        row = ELEMENTS[name]
+        result = with_parts(name, 20 if row.dim == 2 else 9 if row.order == 1 else 7)
+        computed = computed_of(result, plane="strain" if row.dim == 2 else None)
+        model, d = computed.fields.model, computed.fields.diagnostics
+        assert d is not None
+        values, groups = computed.fields.arrays["principal_strain"][:, 0].copy(), groups_of(model)
+        recovered = recover_gradient(model, groups)
+        error, peaks = strain_error(recovered), Peaks(recovered, middles(model), d.volume)
+        mesh = Surroundings(Cutter(model), d.volume, groups)
+        for cell in some(len(values), 8):
+            near = mesh.around([cell], PEAKS)
+            found, expected = near.peak(values, cell, False), peaks.find(values, np.array([cell]))
+            assert near.part.points[found.point] == expected.point
+            for a, b in ((found.growth, expected.growth), (found.departure, expected.departure)):
+                np.testing.assert_allclose(a, b, rtol=1e-8)
+            here = near.error("").plus_minus_shares[near.recovered.shares.point == found.point]
+            there = error.plus_minus_shares[recovered.shares.point == expected.point]
+            assert np.isin(np.round(there, 14), np.round(here, 14)).any()
 
     def test_a_smooth_field(self) -> None:
         found = check_peaks(computed_of(with_parts("hexahedron20", 5)))

@@ -191,7 +191,7 @@ class TestFreeFacets:
     @pytest.mark.derived(
         "u = xy (xyz) has on every edge of the unit cell a constant derivative, and it is that of the nodes"
     )
-    @pytest.mark.parametrize("name", ["quad", "hexahedron"])
+    @pytest.mark.parametrize("name", ["quad", "pixel", "hexahedron", "voxel"])
     def test_one_bilinear_cell(self, name: str) -> None:
         mesh = block(ELEMENTS[name], 1)
         x, y, z = mesh.points.T

@@ -80,7 +80,7 @@ class Peaks:
     above 0.2 and the strain at that corner departs from the linear extrapolation of the corners around it by more than
     0.3 of itself. The strain is that of Green and Lagrange, which turning does not change. The bounds were set on
     solved problems and tried on others: holes, cavities, thick and curved bars, bending, torsion, steps; re-entrant
-    corners, cracks, punches, point loads; 1 to 16 cells across, fourteen elements. A notch that three or four cells
+    corners, cracks, punches, point loads; 1 to 16 cells across, thirteen elements. A notch that three or four cells
     hardly resolve looks the same: then, too, the value is not to be trusted.
     """
 

@@ -60,8 +60,12 @@ class CellSamples:
         return np.diff(self.first)
 
 
-def sample_cells(model: Model, threads: int | None = None) -> CellSamples:
-    """Return the gradients of the active cells at the accurate points of their elements."""
+def sample_cells(model: Model, threads: int | None = None, finite: bool = False) -> CellSamples:
+    """Return the gradients of the active cells at the accurate points of their elements.
+
+    With `finite` that is `F - I` as finite measures complete it, which a turn of the whole leaves smooth along curved
+    surfaces and lines.
+    """
     blocks = [b for b in model.blocks if b.row is not None]
     rules = [sample_points(b.row, b.row.accurate.points) for b in blocks if b.row is not None]
     counts = [np.full(len(b.active), len(r.functions)) for b, r in zip(blocks, rules)]
@@ -81,7 +85,7 @@ def sample_cells(model: Model, threads: int | None = None) -> CellSamples:
     )
     start = 0
     for block, rule in zip(blocks, rules):
-        _sample_block(model, block, rule, found, start, threads)
+        _sample_block(model, block, rule, found, start, threads, finite)
         start += len(block.active)
     if model.plane is not None and model.plane.model is None:
         found.H[4 * model.plane.normal] = 0.0
@@ -107,7 +111,13 @@ def _volume(model: Model, threads: int | None) -> tuple[Floats, NDArray[np.bool_
 
 
 def _sample_block(
-    model: Model, block: ModelBlock, rule: Samples, found: CellSamples, first_cell: int, threads: int | None
+    model: Model,
+    block: ModelBlock,
+    rule: Samples,
+    found: CellSamples,
+    first_cell: int,
+    threads: int | None,
+    finite: bool,
 ) -> None:
     assert block.row is not None
     connectivity, index, q = block.connectivity, block.index, len(rule.functions)
@@ -122,7 +132,7 @@ def _sample_block(
             for s in range(q):
                 to = slice(base + start * q + s, base + stop * q, q)
                 point = chunk.at(rule.gradients[s], rule.functions[s])
-                found.H[:, to] = point.H.reshape(9, -1)
+                found.H[:, to] = (chunk.finite(point) if finite else point.H).reshape(9, -1)
                 for i in range(3):
                     found.x[i, to] = chunk.interpolate(rule.functions[s], i) - found.origin[i]
                 found.weight[to] = weights[s] * point.weight
