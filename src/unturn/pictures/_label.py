@@ -2,8 +2,6 @@
 
 from __future__ import annotations
 
-from typing import Any
-
 import numpy as np
 from numpy.typing import NDArray
 
@@ -11,6 +9,7 @@ from unturn.pictures._colours import INK
 from unturn.pictures._marks import Mark
 from unturn.pictures._numbers import written
 from unturn.pictures._page import Page
+from unturn.pictures._subject import Subject
 from unturn.pictures._values import Values
 
 RING = 9.0
@@ -18,12 +17,13 @@ _HEIGHTS = (17.0, 14.0)
 _WHITE = (1.0, 1.0, 1.0)
 
 
-def words_of(mark: Mark, values: Values, noun: str, numbers: NDArray[Any] | None) -> list[str]:
-    """Return the lines of a label; `noun` is ``cell`` or ``node``."""
+def words_of(mark: Mark, values: Values, subject: Subject) -> list[str]:
+    """Return the lines of a label."""
     lines = [f"{mark.kind} {written(mark.value * values.scale, 4)} {values.short_unit}".rstrip()]
-    if numbers is not None:
-        lines.append(f"{'element' if noun == 'cell' else 'node'} {numbers[mark.position]} in the file")
-    lines.append(f"{noun} {mark.position}, counted from 0")
+    if subject.numbers is not None:
+        of = "element" if subject.association == "cell" else "node"
+        lines.append(f"{of} {subject.numbers[mark.position]} in the file")
+    lines.append(f"{subject.noun} {mark.position}, counted from 0")
     if not mark.visible:
         lines.append("not seen from this side")
     return lines

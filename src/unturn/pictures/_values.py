@@ -122,8 +122,8 @@ class Shape:
     fitted: bool
 
 
-def shape_of(result: Result, displacement: Floats | None, factor: float | None) -> Shape:
-    """Return the deformed points and the factor used.
+def shape_of(result: Result, rest: Floats, displacement: Floats | None, factor: float | None) -> Shape:
+    """Return the deformed points and the factor used; `rest` `(n_points, 3)` are the undeformed ones.
 
     Raises
     ------
@@ -132,7 +132,6 @@ def shape_of(result: Result, displacement: Floats | None, factor: float | None) 
     InputError
         No point with finite coordinates.
     """
-    rest = np.asarray(result.points, dtype=np.float64)
     if not np.isfinite(rest).all(axis=1).any():
         raise InputError(f"{result.path + ': ' if result.path else ''}no point has finite coordinates.")
     if displacement is None:

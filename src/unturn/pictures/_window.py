@@ -82,8 +82,8 @@ def _try(name: str) -> str | None:
     return lines[-1] if lines else f"a crash without a message (status {done.returncode})"
 
 
-def make_window(size: tuple[int, int]) -> tuple[Any, Any, Any]:
-    """Return an invisible render window, the renderer behind (white ground) and the one in front.
+def make_window(size: tuple[int, int]) -> tuple[Any, Any, Any, Any]:
+    """Return an invisible render window, its renderers: behind (white ground), in front of it, and flat over both.
 
     The window has `FINE` times as many pixels on a side as the picture.
     """
@@ -97,13 +97,13 @@ def make_window(size: tuple[int, int]) -> tuple[Any, Any, Any]:
     window.SetShowWindow(False)
     window.SetMultiSamples(0)
     window.SetSize(size[0] * FINE, size[1] * FINE)
-    window.SetNumberOfLayers(2)
-    back, front = vtkRenderer(), vtkRenderer()
-    back.SetBackground(1.0, 1.0, 1.0)
-    front.SetLayer(1)
-    for renderer in (back, front):
+    window.SetNumberOfLayers(4)
+    ground, back, front, flat = (vtkRenderer() for _ in range(4))
+    ground.SetBackground(1.0, 1.0, 1.0)
+    for layer, renderer in enumerate((ground, back, front, flat)):
+        renderer.SetLayer(layer)
         window.AddRenderer(renderer)
-    return window, back, front
+    return window, back, front, flat
 
 
 def capture(window: Any) -> NDArray[np.uint8]:
@@ -125,24 +125,14 @@ def capture(window: Any) -> NDArray[np.uint8]:
     return np.asarray((total + FINE * FINE // 2) // (FINE * FINE), dtype=np.uint8)
 
 
-def write_png(picture: NDArray[np.uint8], path: Path) -> None:
-    """Write a picture `(height, width, 3)` as PNG.
+def write_png(picture: NDArray[np.uint8], path: Path, dpi: float = 200.0) -> None:
+    """Write a picture `(height, width, 3)` as PNG with `dpi` pixels an inch.
 
     Raises
     ------
     OSError
         The file cannot be written.
     """
-    from vtkmodules.util.numpy_support import numpy_to_vtk, vtk_to_numpy
-    from vtkmodules.vtkCommonDataModel import vtkImageData
-    from vtkmodules.vtkIOImage import vtkPNGWriter
+    from PIL import Image
 
-    height, width, _ = picture.shape
-    image = vtkImageData()
-    image.SetDimensions(width, height, 1)
-    image.GetPointData().SetScalars(numpy_to_vtk(picture[::-1].reshape(-1, 3), deep=True))
-    writer = vtkPNGWriter()
-    writer.WriteToMemoryOn()
-    writer.SetInputData(image)
-    writer.Write()
-    path.write_bytes(vtk_to_numpy(writer.GetResult()).tobytes())
+    Image.fromarray(picture).save(path, format="PNG", dpi=(dpi, dpi))
