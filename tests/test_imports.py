@@ -16,7 +16,9 @@ PACKAGE = Path(unturn.errors.__file__).parent
 # From the foundation up. Modules on one line do not import each other, except where a package holds several files.
 LAYERS = (
     ("errors", "source", "_version"),
-    ("kinematics", "elements"),
+    ("kinematics", "elements", "toml_keys"),
+    ("picture_wishes",),
+    ("picture_keys",),
     ("result", "statistics", "precision"),
     ("numbering", "frames", "point_gradient"),
     ("gradient", "measures", "midside", "displacement", "thermal"),
@@ -25,7 +27,7 @@ LAYERS = (
     ("recovery", "tensor_range", "rigid", "verdict"),
     ("trust", "peaks", "surface", "quadrature_points", "nodal"),
     ("agreement", "pipeline", "trial", "series"),
-    ("elsewhere",),
+    ("elsewhere", "reading_keys"),
     ("extremes", "same_mesh", "locate", "convergence"),
     ("envelope", "quantities"),
     ("superposition",),

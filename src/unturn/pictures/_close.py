@@ -8,11 +8,11 @@ import numpy as np
 from numpy.typing import NDArray
 
 from unturn.errors import UsageError
+from unturn.picture_keys import PictureRequest
 from unturn.pictures._marks import extremes
 from unturn.pictures._subject import Subject
 from unturn.pictures._values import Shape
 from unturn.pictures._view import CLOSE
-from unturn.pictures.request import PictureRequest
 
 Floats = NDArray[np.float64]
 _CELLS = 5.0  # a close-up spans this many times the cell that it looks at
@@ -41,9 +41,7 @@ class Focus:
     cells: NDArray[np.bool_] | None = None
 
 
-def find(
-    subject: Subject, request: PictureRequest, shape: Shape, shown: NDArray[np.bool_]
-) -> Focus | None:
+def find(subject: Subject, request: PictureRequest, shape: Shape, shown: NDArray[np.bool_]) -> Focus | None:
     """Return what a picture looks at closely, or None.
 
     Raises

@@ -166,7 +166,9 @@ def _cut_block(
     N = row.shape_functions(corners)
     names = list(nodal)
     held = np.stack([*(points[:, k] for k in range(3)), *(nodal[n] for n in names)])
-    at = np.einsum("pa,vca->vcp", N, held[:, conn]).reshape(len(held), -1)  # corners of all cells, one after another
+    at = np.einsum("pa,vca->vcp", N, held[:, conn]).reshape(
+        len(held), -1
+    )  # corners of all cells, one after another
     distance = at[3 + names.index(DISTANCE)]
     size = float(np.abs(nodal[DISTANCE][conn]).max())
     above = distance > 1e-9 * size
@@ -175,7 +177,9 @@ def _cut_block(
     ends, who = _crossings(tets, above[tets], owner)
     ends = ends.reshape(-1, 2)
     on_it = distance[ends[:, 0]] >= -1e-9 * size
-    ends[on_it, 1] = ends[on_it, 0]  # the plane goes through the corner itself: one point, not one for each edge
+    ends[on_it, 1] = ends[
+        on_it, 0
+    ]  # the plane goes through the corner itself: one point, not one for each edge
     pair, place = np.unique(ends, axis=0, return_inverse=True)
     below, over = distance[pair[:, 0]], distance[pair[:, 1]]
     t = np.clip(below / np.where(below == over, 1.0, below - over), 0.0, 1.0)

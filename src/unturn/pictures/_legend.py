@@ -39,9 +39,7 @@ def head(page: Page, title: str, subtitle: str) -> None:
     page.line(np.array([[40 * u, height - 106 * u], [width - 40 * u, height - 106 * u]]), _RULE, u)
 
 
-def colour_bar(
-    page: Page, values: Values, found: Range, location: str, noun: str, bottom: float
-) -> None:
+def colour_bar(page: Page, values: Values, found: Range, location: str, noun: str, bottom: float) -> None:
     """Draw the colour bar with name, unit and place, and what lies outside; `noun` is counted, `bottom` left free."""
     u, (width, height) = page.unit, page.size
     left, room = width - (LEGEND_WIDTH - 20) * u, (LEGEND_WIDTH - 60) * u
@@ -110,7 +108,9 @@ def _strips(left: float, right: float, levels: np.ndarray) -> np.ndarray:
 def border(page: Page, box: tuple[int, int, int, int]) -> None:
     """Draw the border of a view that does not show the whole model."""
     left, right, low, high = box
-    page.line(np.array([[left, low], [right, low], [right, high], [left, high], [left, low]]), _RULE, page.unit)
+    page.line(
+        np.array([[left, low], [right, low], [right, high], [left, high], [left, low]]), _RULE, page.unit
+    )
 
 
 def foot(page: Page, camera: Camera, lines: Sequence[str]) -> None:

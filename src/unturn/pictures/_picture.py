@@ -9,6 +9,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from unturn.errors import UsageError
+from unturn.picture_keys import PictureRequest
 from unturn.pictures import _close, _legend, _scene, _words
 from unturn.pictures._camera import Camera, directions
 from unturn.pictures._colours import Range
@@ -19,7 +20,6 @@ from unturn.pictures._subject import Subject
 from unturn.pictures._surface import VALUE, Skin, outline_of
 from unturn.pictures._view import Frame, camera_for, chosen_direction, facing, through
 from unturn.pictures._window import capture, make_window
-from unturn.pictures.request import PictureRequest
 
 Floats = NDArray[np.float64]
 _LABEL_ROOM = 90  # above the model, where a label finds a place if nowhere else
@@ -49,7 +49,9 @@ class Picture:
 
     def _marked(self) -> Floats:
         """Return the values among which extremes are found, NaN elsewhere."""
-        cells = self.shown if self.focus is None or self.focus.cells is None else self.shown & self.focus.cells
+        cells = (
+            self.shown if self.focus is None or self.focus.cells is None else self.shown & self.focus.cells
+        )
         return np.where(self.subject.which(cells), self.values.numbers, np.nan)
 
     @property

@@ -9,8 +9,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 from unturn.errors import UsageError
+from unturn.picture_wishes import RangeWish
 from unturn.pictures._colours import Range, round_up
-from unturn.pictures._wishes import RangeWish
 from unturn.statistics import weighted_percentiles
 
 Floats = NDArray[np.float64]

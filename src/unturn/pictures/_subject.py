@@ -10,9 +10,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 from unturn.errors import UsageError
+from unturn.picture_keys import PictureRequest
 from unturn.pictures._stage import Mask, Stage
 from unturn.pictures._values import Values
-from unturn.pictures.request import PictureRequest
 
 Floats = NDArray[np.float64]
 Ints = NDArray[np.int64]
@@ -55,6 +55,8 @@ class Subject:
         Returns the cells of a region by its name.
     arrows
         Directions, where they are asked for.
+    of_faces
+        Whether the cells are faces of solids.
     """
 
     stage: Stage
@@ -65,11 +67,12 @@ class Subject:
     weights: Floats | None = None
     region: Callable[[str], Ints] = _no_regions
     arrows: Arrows | None = None
+    of_faces: bool = False
 
     @property
     def noun(self) -> str:
         """What values belong to."""
-        return "cell" if self.association == "cell" else "node"
+        return "node" if self.association == "point" else "face" if self.of_faces else "cell"
 
     def shown(self, request: PictureRequest) -> Mask:
         """Return the cells that are drawn with their values.

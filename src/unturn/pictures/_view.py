@@ -8,9 +8,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 from unturn.errors import UsageError
+from unturn.picture_wishes import CameraWish, CutPlane
 from unturn.pictures._camera import Camera, directions, fit
 from unturn.pictures._scene import Box
-from unturn.pictures._wishes import CameraWish, CutPlane
 
 Floats = NDArray[np.float64]
 _EDGE_ON = 0.05
@@ -44,7 +44,7 @@ def chosen_direction(
         The plane is seen edge-on.
     """
     if wish is not None:
-        axes = wish.axes
+        axes = _axes(wish)
     elif plane is not None:
         normal = np.array(plane.normal) / np.linalg.norm(plane.normal)
         axes = max(directions(extent), key=lambda a: abs(a[0] @ normal))
@@ -56,6 +56,13 @@ def chosen_direction(
             "camera."
         )
     return axes
+
+
+def _axes(wish: CameraWish) -> tuple[Floats, Floats]:
+    """Return unit direction, and unit up at right angles to it."""
+    toward = np.array(wish.direction) / np.linalg.norm(wish.direction)
+    up = np.array(wish.up) - toward * (np.array(wish.up) @ toward)
+    return toward, up / np.linalg.norm(up)
 
 
 def facing(plane: CutPlane, direction: Floats) -> Floats:
@@ -81,16 +88,16 @@ def camera_for(
     aside = ((left + right - frame.size[0]) / 2, (bottom + top - frame.size[1]) / 2)
     direction, up = axes
     moved = focus - pixel * (aside[0] * np.cross(up, direction) + aside[1] * up)
-    return Camera(camera.direction, camera.up, (float(moved[0]), float(moved[1]), float(moved[2])), pixel, frame.size)
+    return Camera(
+        camera.direction, camera.up, (float(moved[0]), float(moved[1]), float(moved[2])), pixel, frame.size
+    )
 
 
 def camera_words(camera: Camera, frame: Frame) -> str:
     """Return the text that asks for a camera again, whatever the model then does."""
     left, right, bottom, top = frame.inner
     aside = ((left + right - frame.size[0]) / 2, (bottom + top - frame.size[1]) / 2)
-    point = np.array(camera.focus) + camera.pixel * (
-        aside[0] * camera.right + aside[1] * np.array(camera.up)
-    )
+    point = np.array(camera.focus) + camera.pixel * (aside[0] * camera.right + aside[1] * np.array(camera.up))
     return (
         f"{_three(np.array(camera.direction))} up {_three(np.array(camera.up))} at {_three(point)} "
         f"width {camera.pixel * (right - left):.6g}"

@@ -69,7 +69,11 @@ def _value(picture: Picture, value: float) -> str:
 
 def _about_cut(picture: Picture) -> list[str]:
     cut = picture.request.cut
-    return [] if cut is None else [f"cut: {cut.text} of the undeformed shape, the half towards the eye taken away"]
+    return (
+        []
+        if cut is None
+        else [f"cut: {cut.text} of the undeformed shape, the half towards the eye taken away"]
+    )
 
 
 def _about_arrows(picture: Picture) -> list[str]:

@@ -12,6 +12,7 @@ from numpy.typing import NDArray
 
 from unturn.errors import UsageError
 from unturn.io._atomic import replacing
+from unturn.picture_keys import PictureRequest
 from unturn.pictures._camera import Camera
 from unturn.pictures._colours import Range
 from unturn.pictures._marks import Mark
@@ -23,7 +24,6 @@ from unturn.pictures._values import values_of
 from unturn.pictures._view import camera_words
 from unturn.pictures._window import usable_window, write_png
 from unturn.pictures._words import made_from
-from unturn.pictures.request import PictureRequest
 from unturn.result import Association, Result
 
 Floats = NDArray[np.float64]
@@ -152,6 +152,7 @@ def draw_subject(
     found: Range,
     target: Path,
     camera: Camera | None = None,
+    title: str = "",
 ) -> Drawing:
     """Return what was drawn into a PNG file.
 
@@ -163,11 +164,13 @@ def draw_subject(
         The picture; written whole or not at all.
     camera
         The camera of another picture of this size, instead of the one that is asked for.
+    title
+        Stands before that of the request.
     """
     picture = Picture(subject, request, found, camera)
     with replacing(target) as work:
-        title = request.title or _capital(subject.values.name.splitlines()[0])
-        write_png(picture.render(title, made_from(subject.stage.result)), work, request.dpi)
+        words = full_title(subject, request, title)
+        write_png(picture.render(words, made_from(subject.stage.result)), work, request.dpi)
     return Drawing(
         str(target),
         picture.shape.factor,
@@ -181,8 +184,11 @@ def draw_subject(
     )
 
 
-def _capital(words: str) -> str:
-    return words[:1].upper() + words[1:]
+def full_title(subject: Subject, request: PictureRequest, title: str = "") -> str:
+    """Return the words above a picture: `title` first, then what was asked for or the name of the number."""
+    name = subject.values.name.splitlines()[0]
+    own = request.title or name[:1].upper() + name[1:]
+    return f"{title}: {own}" if title else own
 
 
 def _check(target: Path, size: tuple[int, int]) -> None:

@@ -1,15 +1,14 @@
-"""What one picture shows: the table of everything that can be asked for, on the command line, in a plan, in Python."""
+"""What one picture shows: the table of all that can be asked for, on the command line, in a plan, in Python."""
 
 from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass
-from typing import Any
+from typing import Any, Literal
 
+from unturn import picture_wishes as w
 from unturn import toml_keys as k
 from unturn.errors import UsageError, close_matches
-from unturn.pictures import _wishes as w
-from unturn.pipeline import Place
 from unturn.toml_keys import Key, Wrong
 
 
@@ -94,7 +93,7 @@ class PictureRequest:
     arrows: str = "none"
     size: tuple[int, int] = (1600, 1000)
     dpi: float = 200.0
-    at: Place = "centroid"
+    at: Literal["centroid", "mean", "nodes", "surface", "quadrature"] = "centroid"
     name: str = ""
 
 

@@ -2,17 +2,14 @@
 
 from __future__ import annotations
 
+import math
 import re
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from typing import Any, Literal
 
-import numpy as np
-from numpy.typing import NDArray
-
 from unturn.toml_keys import Kind, Wrong
 
-Floats = NDArray[np.float64]
 Three = tuple[float, float, float]
 
 # name -> (from the model towards the eye, up)
@@ -45,15 +42,6 @@ class CameraWish:
     up: Three
     point: Three | None = None
     width: float | None = None
-
-    @property
-    def axes(self) -> tuple[Floats, Floats]:
-        """Unit direction and unit up at right angles to it."""
-        toward = np.array(self.direction, dtype=np.float64)
-        toward /= np.linalg.norm(toward)
-        up = np.array(self.up, dtype=np.float64)
-        up -= toward * (up @ toward)
-        return toward, up / np.linalg.norm(up)
 
 
 @dataclass(frozen=True)
@@ -90,7 +78,7 @@ def _numbers(words: str, n: int) -> tuple[float, ...]:
         found = tuple(float(w) for w in words.split(","))
     except ValueError:
         raise Wrong(f"{words!r} is not understood.") from None
-    if len(found) != n or not np.isfinite(found).all():
+    if len(found) != n or not all(map(math.isfinite, found)):
         raise Wrong(f"{words!r} must be {n} numbers with commas between them.")
     return found
 
@@ -126,20 +114,26 @@ def _camera(value: Any) -> CameraWish | None:
     first, more = _parts(value, {"up": _three, "at": _three, "width": _length})
     names = first.split("-")
     if all(n in DIRECTIONS for n in names):
-        seen = np.sum([DIRECTIONS[n][0] for n in names], axis=0)
+        direction = _as_three([sum(axis) for axis in zip(*(DIRECTIONS[n][0] for n in names))])
         up = DIRECTIONS[names[0]][1] if len(names) == 1 else (0.0, 0.0, 1.0)
-        direction = _as_three(seen)
     else:
         direction, up = _three(first), (0.0, 0.0, 1.0)
         if direction[0] == direction[1] == 0.0:
             up = (0.0, 1.0, 0.0)
     up = more.get("up", up)
-    if np.linalg.norm(direction) == 0 or np.linalg.norm(np.cross(direction, up)) < 1e-9:
+    if not _sine(direction, up) > 1e-6:
         raise Wrong("The directions cancel, or the one of view and the one upwards are parallel.")
     return CameraWish(direction, up, more.get("at"), more.get("width"))
 
 
-def _as_three(vector: Any) -> Three:
+def _sine(a: Three, b: Three) -> float:
+    """Return the sine of the angle between two vectors; 0 where one has no length."""
+    across = (a[1] * b[2] - a[2] * b[1], a[2] * b[0] - a[0] * b[2], a[0] * b[1] - a[1] * b[0])
+    lengths = math.hypot(*a) * math.hypot(*b)
+    return math.hypot(*across) / lengths if lengths else 0.0
+
+
+def _as_three(vector: Sequence[float]) -> Three:
     return (float(vector[0]), float(vector[1]), float(vector[2]))
 
 
@@ -162,12 +156,12 @@ def _cut(value: Any) -> CutPlane:
     found = re.fullmatch(r"\s*([xyz])\s*(?:=\s*(\S+)\s*)?", value)
     if found is not None:
         axis = "xyz".index(found[1])
-        normal = np.eye(3)[axis]
-        point = None if found[2] is None else _as_three(normal * _numbers(found[2], 1)[0])
+        normal = [1.0 if k == axis else 0.0 for k in range(3)]
+        point = None if found[2] is None else _as_three([n * _numbers(found[2], 1)[0] for n in normal])
         return CutPlane(_as_three(normal), point, value.strip())
     first, more = _parts(value, {"through": _three})
     across = _three(first)
-    if np.linalg.norm(across) == 0:
+    if math.hypot(*across) == 0:
         raise Wrong("The normal of the plane has no length.")
     return CutPlane(across, more.get("through"), value.strip())
 
@@ -209,7 +203,7 @@ def _factor(value: Any) -> float | None:
         found = float(value)
     except (TypeError, ValueError):
         raise Wrong from None
-    if isinstance(value, bool) or not np.isfinite(found):
+    if isinstance(value, bool) or not math.isfinite(found):
         raise Wrong
     return found
 
@@ -220,7 +214,8 @@ CAMERA = Kind(
     _camera,
 )
 CLOSE_UP = Kind(
-    "largest, smallest, 'region NAME', 'element NUMBER' or a point X,Y,Z; 'width LENGTH' may follow", _close_up
+    "largest, smallest, 'region NAME', 'element NUMBER' or a point X,Y,Z; 'width LENGTH' may follow",
+    _close_up,
 )
 CUT = Kind("x, y or z, with '= PLACE' after it, or a normal X,Y,Z, with 'through X,Y,Z' after it", _cut)
 RANGE = Kind("auto, full, shared, 'percentile Q', or the two ends LOW,HIGH in the unit of the legend", _range)
