@@ -2,13 +2,14 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+import contextlib
+from collections.abc import Iterator, Mapping
 from dataclasses import dataclass
 from typing import Any, Literal
 
 from unturn import picture_wishes as w
 from unturn import toml_keys as k
-from unturn.errors import UsageError, close_matches
+from unturn.errors import UnturnError, UsageError, close_matches
 from unturn.toml_keys import Key, Wrong
 
 
@@ -34,6 +35,7 @@ def _names(value: Any) -> tuple[str, ...]:
     return found
 
 
+_AUTO = w.RangeWish("auto")
 NAMES = k.Kind("the name of a region, or a list of names", _names)
 
 PICTURE_KEYS = (
@@ -57,7 +59,7 @@ PICTURE_KEYS = (
     PictureKey("edges", k.BOOLEAN, "the edges of the cells; default: up to 20 000 cells", None),
     PictureKey("range", w.RANGE, "the colour range: auto (to the extremes, drawn in where they lie far beyond 99.9 % of the "
                "values), full, 'percentile Q', LOW,HIGH in the unit of the legend, or shared by the pictures of a plan",
-               w.RangeWish("auto"), "RANGE"),
+               _AUTO, "RANGE"),
     PictureKey("symmetric", k.BOOLEAN, "a colour range as wide below zero as above", False),
     PictureKey("colours", k.choice_kind(("auto", "one-sided", "two-sided")), "the colour map: from light to dark, or with "
                "grey at zero; auto: two-sided for a symmetric range", "auto", "auto|one-sided|two-sided"),
@@ -73,7 +75,10 @@ PICTURE_KEYS = (
 
 @dataclass(frozen=True)
 class PictureRequest:
-    """A picture that is asked for: a value for each of `PICTURE_KEYS`, where values live, and a name for the file."""
+    """A picture that is asked for: a value for each of `PICTURE_KEYS`, where values live, and the name of its file.
+
+    `source` tells where it is written, for errors.
+    """
 
     measure: str = "equivalent_strain"
     title: str = ""
@@ -86,7 +91,7 @@ class PictureRequest:
     leave_out: tuple[str, ...] = ()
     faint: tuple[str, ...] = ()
     edges: bool | None = None
-    range: w.RangeWish = w.RangeWish("auto")
+    range: w.RangeWish = _AUTO
     symmetric: bool = False
     colours: str = "auto"
     extremes: bool = True
@@ -95,6 +100,17 @@ class PictureRequest:
     dpi: float = 200.0
     at: Literal["centroid", "mean", "nodes", "surface", "quadrature"] = "centroid"
     name: str = ""
+    source: str = ""
+
+    @contextlib.contextmanager
+    def told_where(self) -> Iterator[None]:
+        """Return a context manager in which errors say which picture they are about."""
+        try:
+            yield
+        except UnturnError as error:
+            if not self.source or str(error).startswith(self.source):
+                raise
+            raise type(error)(f"{self.source}: {error}") from error
 
 
 def request_of(given: Mapping[str, Any], spelt: str = "{}") -> PictureRequest:

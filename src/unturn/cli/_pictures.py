@@ -237,7 +237,7 @@ class _Job:
         from functools import lru_cache
 
         from unturn.pictures.animation import draw_series
-        from unturn.pictures.told import series_data, series_text
+        from unturn.pictures.told import SCHEMA, series_data, series_text
         from unturn.pipeline import settled
 
         if opened.steps is None:
@@ -249,25 +249,24 @@ class _Job:
         options = settled(options, opened.read(n - 1))
         step = lru_cache(maxsize=12)(lambda k: self._step(opened, k, [request], options, zero_step))
         drawn = draw_series(step, n, request, target)
-        self._say(series_text(drawn), lambda: series_data(drawn))
+        data = {"schema": SCHEMA, "file": str(self.file), "pictures": [series_data(drawn)], "tables": []}
+        self._say(series_text(drawn), data)
 
     def _tell(self, drawn: Sequence[Drawn], tables: Sequence[Path]) -> None:
         from unturn.pictures.told import SCHEMA, drawn_data, drawn_text
 
         lines = [drawn_text(d) for d in drawn] + [f"wrote {place}" for place in tables]
-        self._say(
-            "\n".join(lines),
-            lambda: {
-                "schema": SCHEMA,
-                "file": str(self.file),
-                "pictures": [drawn_data(d) for d in drawn],
-                "tables": [str(t) for t in tables],
-            },
-        )
+        data = {
+            "schema": SCHEMA,
+            "file": str(self.file),
+            "pictures": [drawn_data(d) for d in drawn],
+            "tables": [str(t) for t in tables],
+        }
+        self._say("\n".join(lines), data)
 
-    def _say(self, text: str, data: Callable[[], dict[str, Any]]) -> None:
+    def _say(self, text: str, data: dict[str, Any]) -> None:
         from unturn.cli._output import write_json
 
         typer.echo(text, err=str(self.json) == "-")
         if self.json is not None:
-            write_json(data(), self.json)
+            write_json(data, self.json)

@@ -73,11 +73,11 @@ def find(subject: Subject, request: PictureRequest, shape: Shape, shown: NDArray
         position, cell = found[0], subject.association == "cell"
     if not cell:
         return Focus(place(subject, shape, position), width, position=position)
-    nodes = shape.points[_nodes(subject, position)]
+    corners = shape.points[nodes(subject, position)]
     if wish.width is None:
-        width = max(width, _CELLS * float(np.ptp(nodes, axis=0).max()))
+        width = max(width, _CELLS * float(np.ptp(corners, axis=0).max()))
     seen = position if subject.association == "cell" else None
-    return Focus(nodes.mean(axis=0), width, position=seen)
+    return Focus(corners.mean(axis=0), width, position=seen)
 
 
 def _cell(subject: Subject, name: str) -> int:
@@ -98,7 +98,8 @@ def _cell(subject: Subject, name: str) -> int:
     return int(found[0])
 
 
-def _nodes(subject: Subject, cell: int) -> NDArray[np.int64]:
+def nodes(subject: Subject, cell: int) -> NDArray[np.int64]:
+    """Return the nodes of a cell."""
     for block in subject.stage.result.blocks:
         there = np.flatnonzero(block.index == cell)
         if len(there):
@@ -110,4 +111,4 @@ def place(subject: Subject, shape: Shape, position: int) -> Floats:
     """Return the middle of a cell, or a point, on the deformed shape."""
     if subject.association == "point":
         return np.asarray(shape.points[position])
-    return np.asarray(shape.points[_nodes(subject, position)].mean(axis=0))
+    return np.asarray(shape.points[nodes(subject, position)].mean(axis=0))

@@ -18,7 +18,7 @@ INK = (0.12, 0.13, 0.16)
 # CIELAB lightness, a, b from the lowest to the highest value: straw, moss, petrol, night.
 _ANCHORS = np.array([[94, -3, 22], [72, -22, 22], [46, -20, -10], [17, 12, -32]], dtype=np.float64)
 # Two-sided: apricot, grey, plum.
-_TWO_SIDED = np.array([[93, 10, 38], [57, 0, 0], [21, 32, -34]], dtype=np.float64)
+_TWO_SIDED = np.array([[92, 11, 45], [58, 0, 0], [22, 38, -40]], dtype=np.float64)
 N_COLOURS = 256
 _ONE_SIDED = 10.0  # a range reaches this much further below zero than above: as good as negative
 

@@ -113,6 +113,22 @@ def border(page: Page, box: tuple[int, int, int, int]) -> None:
     )
 
 
+def aside(page: Page, box: tuple[int, int, int, int], lines: Sequence[str]) -> None:
+    """Say in the upper left corner of the view which extremes lie outside of it."""
+    u, (left, _, _, high) = page.unit, box
+    for k, words in enumerate(f"outside this view: {line}" for line in lines):
+        base = high - (30 + 28 * k) * u
+        page.box(
+            left + 8 * u,
+            base - 7 * u,
+            left + 22 * u + page.width(words, 15 * u),
+            base + 20 * u,
+            (1, 1, 1),
+            0.85,
+        )
+        page.text(words, left + 15 * u, base, 15 * u)
+
+
 def foot(page: Page, camera: Camera, lines: Sequence[str]) -> None:
     """Draw axes, a scale bar, and what is said below the model."""
     u, (width, _) = page.unit, page.size

@@ -48,7 +48,9 @@ def extremes(values: Floats, both: bool = False) -> list[tuple[str, int]]:
         return []
     high = int(np.argmax(np.where(finite, values, -np.inf)))
     low = int(np.argmin(np.where(finite, values, np.inf)))
-    found = []
+    found: list[tuple[str, int]] = []
+    if values[high] == values[low] == 0.0 and not both:
+        return found
     if both or values[high] > 0 or values[low] >= 0:
         found.append(("largest", high))
     if both or values[low] < 0:

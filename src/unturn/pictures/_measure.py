@@ -99,14 +99,28 @@ def directions_with(array: str, base: str) -> tuple[str, tuple[str, ...]]:
     """Return the principal values that go with a measure, and the arrays of their directions."""
     own = next((b for b in (*BASES, "mechanical") if array.endswith("_" + b)), None)
     names = ["principal_strain", *(f"principal_direction_{k}" for k in (1, 2, 3))]
-    if own is None:
-        names = [choose_measures([n], base)[0] for n in names]
-    else:
-        names = [f"{n}_{own}" for n in names]
-    return names[0], tuple(names[1:])
+    found = [choose_measures([n], base)[0] if own is None else f"{n}_{own}" for n in names]
+    return found[0], tuple(found[1:])
 
 
 def rotation_with(array: str, base: str) -> str:
     """Return the rotation vector that goes with a measure."""
     finite = base != "small" or (array in MEASURES and MEASURES[array].finite)
     return "finite_rotation" if finite else "rotation"
+
+
+_SPOKEN = {"green_lagrange": "Green-Lagrange", "hencky": "Hencky", "biot": "Biot", "almansi": "Almansi"}
+
+
+def spoken(array: str) -> str:
+    """Return the name of an array as the legend says it.
+
+    Examples
+    --------
+    >>> spoken("equivalent_strain_green_lagrange"), spoken("principal_strain_mechanical")
+    ('equivalent strain, Green-Lagrange', 'principal strain mechanical')
+    """
+    for base, words in _SPOKEN.items():
+        if array.endswith("_" + base):
+            return f"{array.removesuffix('_' + base).replace('_', ' ')}, {words}"
+    return array.replace("_", " ")

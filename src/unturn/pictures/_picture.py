@@ -11,13 +11,14 @@ from numpy.typing import NDArray
 from unturn.errors import UsageError
 from unturn.picture_keys import PictureRequest
 from unturn.pictures import _close, _legend, _scene, _words
+from unturn.pictures._arrows import Place, code_colours, draw_arrows, longest, places, seen_cells
 from unturn.pictures._camera import Camera, directions
 from unturn.pictures._colours import Range
 from unturn.pictures._label import add_label, words_of
 from unturn.pictures._marks import Mark, Sight, extremes
 from unturn.pictures._page import Page, unit_of
-from unturn.pictures._subject import Subject
-from unturn.pictures._surface import VALUE, Skin, outline_of
+from unturn.pictures._subject import Arrows, Subject
+from unturn.pictures._surface import POSITION, VALUE, Skin, outline_of
 from unturn.pictures._view import Frame, camera_for, chosen_direction, facing, through
 from unturn.pictures._window import capture, make_window
 
@@ -59,8 +60,8 @@ class Picture:
         """Where the model is drawn."""
         u, (width, height) = unit_of(self.size), self.size
         foot = _legend.foot_height(len(self.notes))
-        box = (40.0, width / u - _legend.LEGEND_WIDTH, foot, height / u - _legend.HEAD - 4)
-        inner = (box[0] + 20, box[1] - 30, box[2] + 30, box[3] + 4 - _LABEL_ROOM)
+        box = (40.0, width / u - _legend.LEGEND_WIDTH, foot + 26, height / u - _legend.HEAD - 4)
+        inner = (box[0] + 20, box[1] - 30, box[2] + 4, box[3] + 4 - _LABEL_ROOM)
         a, b, c, d = (round(x * u) for x in box)
         i, j, k, m = (round(x * u) for x in inner)
         return Frame(self.size, (a, b, c, d), (i, j, k, m))
@@ -133,6 +134,41 @@ class Picture:
         """What is said below the model, in lines."""
         return _words.notes(self)
 
+    @property
+    def arrows(self) -> Arrows | None:
+        """Directions, if they are asked for."""
+        return self.subject.arrows
+
+    @cached_property
+    def longest(self) -> float:
+        """The value of the longest arrow: the largest of all that is drawn, from whatever side."""
+        return 0.0 if self.arrows is None else longest(self.arrows, self.subject.which(self.shown))
+
+    def _places(self) -> list[Place]:
+        found = places(self.seen_cells(), self.frame.box, unit_of(self.size))
+        return found if self.subject.association == "cell" else [self._at_node(place) for place in found]
+
+    def seen_cells(self) -> NDArray[np.int64]:
+        """Return `(height, width)` the cell that is seen in each pixel, -1 where there is none."""
+        from vtkmodules.util.numpy_support import vtk_to_numpy
+
+        window, _, front, _ = make_window(self.size, ground=(0.0, 0.0, 0.0))
+        _scene.look(front, self.camera, self.stage.origin, self.reach, self.frame.box)
+        surface = self.skin.surface
+        cells = vtk_to_numpy(surface.GetCellData().GetArray(POSITION))
+        _scene.add_coded(front, surface, code_colours(cells))
+        picture = capture(window, single=True)
+        window.Finalize()
+        return seen_cells(picture, self.stage.result.n_cells)
+
+    def _at_node(self, place: Place) -> Place:
+        """Return the node nearest to a place in the cell that is seen there."""
+        nodes = _close.nodes(self.subject, place.position)
+        seen = self.camera.pixels(self.shape.points[nodes])
+        seen[:, 1] = self.size[1] - seen[:, 1]
+        k = int(np.argmin(np.linalg.norm(seen - place.at, axis=1)))
+        return Place(seen[k], int(nodes[k]))
+
     def render(self, title: str, made_from: str) -> NDArray[np.uint8]:
         """Return the picture, `(height, width, 3)` bytes, top row first."""
         window, back, front, flat = make_window(self.size)
@@ -145,11 +181,15 @@ class Picture:
         foot = _legend.foot_height(len(self.notes))
         _legend.colour_bar(page, self.values, self.range, self.subject.location, self.subject.noun, foot)
         _legend.foot(page, self.camera, self.notes)
+        if self.arrows is not None:
+            draw_arrows(page, self.camera, self.arrows, self._places(), self.longest)
         if self.focus is not None:
             _legend.border(page, self.frame.box)
-        for mark in self.marks:
+        labels = [(mark, words_of(mark, self.values, self.subject)) for mark in self.marks]
+        _legend.aside(page, self.frame.box, [", ".join(w) for mark, w in labels if not self.inside(mark)])
+        for mark, words in labels:
             if self.inside(mark):
-                add_label(page, mark, words_of(mark, self.values, self.subject), taken)
+                add_label(page, mark, words, taken)
         picture = capture(window)
         window.Finalize()
         return picture

@@ -51,9 +51,10 @@ def lookup(found: Range) -> Any:
     for k, (red, green, blue) in enumerate(colours.tolist()):
         table.SetTableValue(k, red, green, blue, 1.0)
     table.SetTableRange(found.low, found.high)
-    table.UseAboveRangeColorOn()
+    # where no value lies outside, what the functions of a face overshoot between its nodes is not outside either
+    table.SetUseAboveRangeColor(bool(found.above))
     table.SetAboveRangeColor(*ABOVE, 1.0)
-    table.UseBelowRangeColorOn()
+    table.SetUseBelowRangeColor(bool(found.below))
     table.SetBelowRangeColor(*BELOW, 1.0)
     table.SetNanColor(*NO_VALUE, 1.0)
     return table
@@ -78,6 +79,19 @@ def add_surface(renderer: Any, surface: Any, cell_values: Floats | None, found: 
     mapper.UseLookupTableScalarRangeOn()
     mapper.ScalarVisibilityOn()
     _behind_lines(mapper)
+
+
+def add_coded(renderer: Any, surface: Any, colours: NDArray[np.uint8]) -> None:
+    """Draw the faces in colours of their own `(n_faces, 3)`."""
+    from vtkmodules.util.numpy_support import numpy_to_vtk
+    from vtkmodules.vtkCommonDataModel import vtkPolyData
+
+    coded = vtkPolyData()
+    coded.ShallowCopy(surface)
+    coded.GetCellData().SetScalars(numpy_to_vtk(np.ascontiguousarray(colours), deep=True))
+    mapper = _actor(renderer, coded, INK, 4.0).GetMapper()
+    mapper.SetScalarModeToUseCellData()
+    mapper.ScalarVisibilityOn()
 
 
 def add_lines(renderer: Any, lines: Any, width: float, opacity: float = 1.0) -> None:

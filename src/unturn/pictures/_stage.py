@@ -40,9 +40,9 @@ class Stage:
         self.faces = Faces(result)
         self._shapes: dict[float | None, Shape] = {}
         self._skins: dict[tuple[object, ...], Skin] = {}
-        self._placed = np.isfinite(self.rest).all(axis=1)
+        self._placed: Mask = np.asarray(np.isfinite(self.rest).all(axis=1))
         self.there = self._cells_there()
-        used = used_points(result.blocks, result.n_points) & self._placed
+        used: Mask = used_points(result.blocks, result.n_points) & self._placed
         middle = self.rest[used] if used.any() else np.zeros((1, 3))
         self.origin = (middle.min(axis=0) + middle.max(axis=0)) / 2
         """The middle of the model: everything is drawn relative to it, where single precision suffices."""

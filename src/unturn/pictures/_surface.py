@@ -100,7 +100,7 @@ class Faces:
             if not keep.all():
                 choose = vtkExtractCells()
                 choose.SetInputData(grid)
-                cells = np.flatnonzero(keep)
+                cells: Any = np.flatnonzero(keep)
                 choose.SetCellIds(cells, len(cells))
                 choose.Update()
                 grid = choose.GetOutput()

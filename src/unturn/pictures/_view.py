@@ -14,7 +14,7 @@ from unturn.pictures._scene import Box
 
 Floats = NDArray[np.float64]
 _EDGE_ON = 0.05
-CLOSE = 8.0  # a close-up spans this share of the model's diagonal
+CLOSE = 4.0  # a close-up spans the model's diagonal over this
 
 
 @dataclass(frozen=True)

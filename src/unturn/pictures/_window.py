@@ -82,8 +82,10 @@ def _try(name: str) -> str | None:
     return lines[-1] if lines else f"a crash without a message (status {done.returncode})"
 
 
-def make_window(size: tuple[int, int]) -> tuple[Any, Any, Any, Any]:
-    """Return an invisible render window, its renderers: behind (white ground), in front of it, and flat over both.
+def make_window(
+    size: tuple[int, int], ground: tuple[float, float, float] = (1.0, 1.0, 1.0)
+) -> tuple[Any, Any, Any, Any]:
+    """Return an invisible render window, its renderers: behind, in front of it, and flat over both.
 
     The window has `FINE` times as many pixels on a side as the picture.
     """
@@ -98,16 +100,19 @@ def make_window(size: tuple[int, int]) -> tuple[Any, Any, Any, Any]:
     window.SetMultiSamples(0)
     window.SetSize(size[0] * FINE, size[1] * FINE)
     window.SetNumberOfLayers(4)
-    ground, back, front, flat = (vtkRenderer() for _ in range(4))
-    ground.SetBackground(1.0, 1.0, 1.0)
-    for layer, renderer in enumerate((ground, back, front, flat)):
+    under, back, front, flat = (vtkRenderer() for _ in range(4))
+    under.SetBackground(*ground)
+    for layer, renderer in enumerate((under, back, front, flat)):
         renderer.SetLayer(layer)
         window.AddRenderer(renderer)
     return window, back, front, flat
 
 
-def capture(window: Any) -> NDArray[np.uint8]:
-    """Return the picture, `(height, width, 3)` bytes, top row first, without steps in its lines."""
+def capture(window: Any, single: bool = False) -> NDArray[np.uint8]:
+    """Return the picture, `(height, width, 3)` bytes, top row first, without steps in its lines.
+
+    With `single`, of all pixels that were drawn for one of the picture only one is kept: no colours are mixed.
+    """
     from vtkmodules.util.numpy_support import vtk_to_numpy
     from vtkmodules.vtkRenderingCore import vtkWindowToImageFilter
 
@@ -121,6 +126,8 @@ def capture(window: Any) -> NDArray[np.uint8]:
     image = grab.GetOutput()
     width, height, _ = image.GetDimensions()
     fine = vtk_to_numpy(image.GetPointData().GetScalars()).reshape(height, width, 3)[::-1]
+    if single:
+        return np.ascontiguousarray(fine[FINE // 2 :: FINE, FINE // 2 :: FINE])
     total = sum(fine[i::FINE, j::FINE].astype(np.uint16) for i in range(FINE) for j in range(FINE))
     return np.asarray((total + FINE * FINE // 2) // (FINE * FINE), dtype=np.uint8)
 

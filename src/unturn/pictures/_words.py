@@ -7,6 +7,7 @@ from pathlib import Path
 from typing import TYPE_CHECKING
 
 import numpy as np
+from numpy.typing import NDArray
 
 from unturn.pictures._legend import letters
 from unturn.pictures._marks import extremes
@@ -47,18 +48,25 @@ def about_shape(picture: Picture) -> str:
 
 
 def _about_regions(picture: Picture) -> list[str]:
-    request = picture.request
-    said = [f"drawn: {', '.join(request.only)} only"] if request.only else []
-    said += [f"pale: {', '.join(request.faint)}"] if request.faint else []
-    said += [f"left out: {', '.join(request.leave_out)}"] if request.leave_out else []
-    hidden = picture.stage.there & ~picture.shown
-    if said and hidden.any():
-        peaks = [f"{kind} {_value(picture, value)}" for kind, value in _peaks(picture, hidden)]
-        said.append("in what has no colours here: " + (" and ".join(peaks) or "no value"))
+    request, there = picture.request, picture.stage.there
+    said = []
+    if request.only:
+        said.append(f"drawn: {', '.join(request.only)} only{_peak_there(picture, there & ~picture.shown)}")
+    if request.faint:
+        said.append(f"pale, without colours: {', '.join(request.faint)}{_peak_there(picture, picture.faint)}")
+    if request.leave_out:
+        out = there & ~picture.shown & ~picture.faint
+        said.append(f"left out: {', '.join(request.leave_out)}{_peak_there(picture, out)}")
     return said
 
 
-def _peaks(picture: Picture, cells: np.ndarray) -> list[tuple[str, float]]:
+def _peak_there(picture: Picture, cells: NDArray[np.bool_]) -> str:
+    """Return in brackets how large the values get where there are no colours."""
+    peaks = [f"{kind} {_value(picture, value)}" for kind, value in _peaks(picture, cells)]
+    return f" ({' and '.join(peaks) or 'no value'} there)" if cells.any() else ""
+
+
+def _peaks(picture: Picture, cells: NDArray[np.bool_]) -> list[tuple[str, float]]:
     numbers = np.where(picture.subject.which(cells), picture.values.numbers, np.nan)
     return [(kind, float(numbers[position])) for kind, position in extremes(numbers)]
 
@@ -77,4 +85,12 @@ def _about_cut(picture: Picture) -> list[str]:
 
 
 def _about_arrows(picture: Picture) -> list[str]:
-    return []
+    arrows = picture.subject.arrows
+    if arrows is None:
+        return []
+    if arrows.kind == "principal":
+        what = "arrows: principal directions, heads outwards for stretch, inwards for shortening"
+    else:
+        what = "arrows: axes of rotation by the right hand, arcs where they point to the eye or away"
+    most = f"{written(picture.longest * arrows.scale)} {arrows.short_unit}"
+    return [what, f"the longest: {most}, the shortest left out"]

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Callable
-from dataclasses import replace
+from dataclasses import dataclass, replace
 from pathlib import Path
 
 import numpy as np
@@ -14,7 +14,8 @@ from unturn.picture_keys import PictureRequest
 from unturn.pictures._camera import Camera
 from unturn.pictures._picture import Picture
 from unturn.pictures._range import Ends
-from unturn.pictures._view import camera_for
+from unturn.pictures._subject import Subject
+from unturn.pictures._view import camera_for, camera_words
 from unturn.pictures._window import usable_window
 from unturn.pictures._words import made_from
 from unturn.pictures.computing import Step
@@ -25,10 +26,22 @@ Floats = NDArray[np.float64]
 _FRAME_MS, _LAST_MS = 400, 1600
 
 
+@dataclass(frozen=True, eq=False)
+class Animation:
+    """What was drawn: the file, its frames, what was asked for with the factor used, the last step's subject, the range."""
+
+    path: str
+    frames: int
+    request: PictureRequest
+    subject: Subject
+    colour_range: tuple[float, float]
+    camera_words: str
+
+
 def draw_series(
     step: Callable[[int], Step], n_steps: int, request: PictureRequest, target: Path, title: str = ""
-) -> tuple[Ends, float]:
-    """Write an animated GIF; return the ends of its colour range and its deformation factor.
+) -> Animation:
+    """Return what was drawn into an animated GIF.
 
     Parameters
     ----------
@@ -63,7 +76,10 @@ def draw_series(
         frames.append(picture.render(full_title(subject, fixed, title), made_from(subject.stage.result)))
     with replacing(target) as work:
         _write(frames, work)
-    return ends, factor
+    last = step(n_steps - 1).subject(fixed)
+    return Animation(
+        str(target), n_steps, fixed, last, (ends.low, ends.high), camera_words(camera, picture.frame)
+    )
 
 
 def _camera(step: Callable[[int], Step], n_steps: int, request: PictureRequest, ends: Ends) -> Camera:
@@ -91,6 +107,9 @@ def _write(frames: list[NDArray[np.uint8]], path: Path) -> None:
     step = max(1, len(images) // 8)
     narrow = [np.asarray(image)[::4, ::4] for image in images[::step]]
     palette = Image.fromarray(np.concatenate(narrow)).quantize(256, dither=Image.Dither.NONE)
+    colours = np.array(palette.getpalette(), dtype=np.int64).reshape(-1, 3)
+    colours[colours.sum(axis=1).argmax()] = 255  # the ground is white, not nearly white
+    palette.putpalette(colours.reshape(-1).tolist())
     flat = [image.quantize(palette=palette, dither=Image.Dither.NONE) for image in images]
     times = [_FRAME_MS] * (len(flat) - 1) + [_LAST_MS]
     flat[0].save(

@@ -15,7 +15,7 @@ from unturn.measures import GEOMETRY, MEASURES
 from unturn.model import Model
 from unturn.numbering import element_numbers, node_numbers
 from unturn.picture_keys import PictureRequest
-from unturn.pictures._measure import Wanted, directions_with, rotation_with, wanted
+from unturn.pictures._measure import Wanted, directions_with, rotation_with, spoken, wanted
 from unturn.pictures._range import Ends, ends_of
 from unturn.pictures._stage import Stage
 from unturn.pictures._subject import Arrows, Subject
@@ -67,8 +67,9 @@ class Step:
         self._percentiles = any(r.range.how == "percentile" for r in requests)
         self._names: dict[Place, dict[str, None]] = {}
         for request in requests:
-            _check_place(request)
-            names = self._arrays(request)
+            with request.told_where():
+                _check_place(request)
+                names = self._arrays(request)
             if names:
                 self._names.setdefault(request.at, {}).update(dict.fromkeys(names))
         self._computed: dict[Place, Computed] = {}
@@ -161,11 +162,11 @@ class Step:
             name = (
                 f"displacement {what.component}" if what.component else "displacement\nlength of the vector"
             )
-            return values_with(numbers, name, "length unit of the file")
+            return replace(values_with(numbers, name, "length unit of the file"), short_unit="")
         if what.kind != "measure":
             return self._of_file(what)
         numbers = self._column(what, at)
-        name = f"{what.array.replace('_', ' ')} {what.component}".rstrip()
+        name = f"{spoken(what.array)} {what.component}".rstrip()
         if what.array == "equivalent_strain":
             meaning = equivalent_form(self.options.equivalent_poisson)
         else:

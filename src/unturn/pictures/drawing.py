@@ -29,7 +29,10 @@ def shared_ends(steps: Sequence[Step], requests: Sequence[PictureRequest]) -> li
 
     Those of ``range = "shared"`` hold the values of all such pictures of the same unit.
     """
-    found = [[step.ends(request) for step in steps] for request in requests]
+    found = []
+    for request in requests:
+        with request.told_where():
+            found.append([step.ends(request) for step in steps])
     units = [steps[0].subject(request).values.unit for request in requests]
     ends = []
     for request, own, unit in zip(requests, found, units):
@@ -75,8 +78,9 @@ def draw_all(
     usable_window()
     found = []
     for request, target, ends in zip(requests, targets, shared_ends([step], requests)):
-        subject = step.subject(request)
-        found.append(Drawn(request, subject, draw_one(subject, request, ends, target, title)))
+        with request.told_where():
+            subject = step.subject(request)
+            found.append(Drawn(request, subject, draw_one(subject, request, ends, target, title)))
     return found
 
 

@@ -99,13 +99,15 @@ def parse_plan(raw: bytes, name: str) -> Plan:
     options, zero_step = r.options_of(k.read_table(source, ("reading",), found["reading"], PLAN_READING_KEYS))
     k.read_table(source, ("defaults",), found["defaults"], DEFAULT_KEYS)
     tables = _tables(source, found["pictures"])
-    pictures, csv = [], []
+    pictures: list[PictureRequest] = []
+    csv: list[str] = []
     for position, table in enumerate(tables):
         place: Path = ("pictures", position)
         read = _picture(source, place, table, found["defaults"])
         if read.pop("csv"):
             csv.append(read["name"])
-        request = PictureRequest(**read)
+        line = source.lines.of(place)
+        request = PictureRequest(**read, source=f"{name}, line {line}, picture {read['name']!r}")
         if request.name.casefold() in [p.name.casefold() for p in pictures]:
             raise source.error((*place, "name"), f"another picture is called {request.name!r} too.")
         pictures.append(request)

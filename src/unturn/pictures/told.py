@@ -13,6 +13,7 @@ from unturn.pictures._numbers import written
 
 if TYPE_CHECKING:
     from unturn.pictures._marks import Mark
+    from unturn.pictures.animation import Animation
     from unturn.pictures.drawing import Drawn
 
 SCHEMA = "unturn.pictures/1"
@@ -81,6 +82,32 @@ def drawn_data(drawn: Drawn) -> dict[str, Any]:
             }
             for mark in drawing.marks
         ],
+    }
+
+
+def series_text(drawn: Animation) -> str:
+    """Return in words what an animation shows."""
+    values = drawn.subject.values
+    low, high = (written(x * values.scale, 4) for x in drawn.colour_range)
+    return (
+        f"drew {drawn.path}: {drawn.request.measure} {drawn.subject.location}, {drawn.frames} steps, displacement x "
+        f"{drawn.request.factor:g}, colours {low} to {high} {values.short_unit}".rstrip()
+        + f"\n  camera: {drawn.camera_words}"
+    )
+
+
+def series_data(drawn: Animation) -> dict[str, Any]:
+    """Return as data what an animation shows."""
+    return {
+        "path": drawn.path,
+        "measure": drawn.request.measure,
+        "location": drawn.subject.location,
+        "unit": drawn.subject.values.unit,
+        "unit_factor": drawn.subject.values.scale,
+        "factor": drawn.request.factor,
+        "range": list(drawn.colour_range),
+        "camera": drawn.camera_words,
+        "frames": drawn.frames,
     }
 
 

@@ -1,0 +1,146 @@
+"""Directions on the surface: principal strains with heads outwards or inwards, axes of rotation."""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from unturn.pictures._camera import Camera
+from unturn.pictures._colours import INK
+from unturn.pictures._page import Page
+from unturn.pictures._scene import Box, Colour
+from unturn.pictures._subject import Arrows
+
+Floats = NDArray[np.float64]
+Ints = NDArray[np.int64]
+SPACING = 60.0  # of the places where arrows are drawn, in units of the page
+_LONGEST = 28.0  # half the length of the longest
+_SHORTEST = 0.12  # share of the longest below which nothing is drawn
+_END_ON = 0.35  # share of its length below which an axis of rotation is seen from its end
+_WHITE: Colour = (1.0, 1.0, 1.0)
+
+
+@dataclass(frozen=True, eq=False)
+class Place:
+    """Where arrows are drawn: column and row from the lower left corner, and the position of their values."""
+
+    at: Floats
+    position: int
+
+
+def seen_cells(window_picture: NDArray[np.uint8], n_cells: int) -> Ints:
+    """Return `(height, width)` the cells behind the pixels of a picture in `code_colours`; -1 where there is none."""
+    code = window_picture.astype(np.int64) @ np.array([65536, 256, 1]) - 1
+    return np.where((code >= 0) & (code < n_cells), code, -1)
+
+
+def code_colours(cells: Ints) -> NDArray[np.uint8]:
+    """Return colours `(n, 3)` that tell cells apart; none is black."""
+    code = cells + 1
+    return np.stack([code >> 16 & 255, code >> 8 & 255, code & 255], axis=1).astype(np.uint8)
+
+
+def places(seen: Ints, box: Box, unit: float) -> list[Place]:
+    """Return where arrows are drawn: on a grid of pixels, each cell once, nearest to the middle of its places."""
+    height = seen.shape[0]
+    step = SPACING * unit
+    columns = np.arange(box[0] + step / 2, box[1], step).astype(int)
+    rows = np.arange(height - box[3] + step / 2, height - box[2], step).astype(int)
+    if not len(columns) or not len(rows):
+        return []
+    row, column = (g.reshape(-1) for g in np.meshgrid(rows, columns, indexing="ij"))
+    cell = seen[row, column]
+    found = []
+    for position in np.unique(cell[cell >= 0]):
+        of = np.flatnonzero(cell == position)
+        pixels = np.stack([column[of], height - row[of]], axis=1).astype(np.float64)
+        nearest = np.argmin(np.linalg.norm(pixels - pixels.mean(axis=0), axis=1))
+        found.append(Place(pixels[nearest], int(position)))
+    return found
+
+
+def longest(arrows: Arrows, which: NDArray[np.bool_]) -> float:
+    """Return the largest of some values, without sign."""
+    values = np.abs(arrows.values[which])
+    return float(np.nanmax(values)) if np.isfinite(values).any() else 0.0
+
+
+def draw_arrows(page: Page, camera: Camera, arrows: Arrows, where: list[Place], most: float) -> None:
+    """Draw the arrows of some places; the length of `most` is the longest."""
+    axes = np.stack([camera.right, np.array(camera.up), np.array(camera.direction)], axis=1)
+    strokes: list[Floats] = []
+    heads: list[Floats] = []
+    for place in where:
+        for vector, value in zip(arrows.vectors[place.position], arrows.values[place.position]):
+            if not np.isfinite(value) or abs(value) < _SHORTEST * most:
+                continue
+            seen = vector @ axes
+            length = _LONGEST * page.unit * abs(value) / most
+            make = _principal if arrows.kind == "principal" else _rotation
+            lines, tips = make(place.at, seen, length, value, page.unit)
+            strokes += lines
+            heads += tips
+    for colour, more in ((_WHITE, 2.6), (INK, 0.0)):
+        for line in strokes:
+            page.line(line, colour, (1.5 + more) * page.unit)
+        for tip in heads:
+            page.areas(
+                _grown(tip, more * 0.5 * page.unit), np.round(np.array([colour]) * 255).astype(np.uint8)
+            )
+
+
+def _grown(tip: Floats, by: float) -> Floats:
+    middle = tip.mean(axis=0)
+    away = tip - middle
+    length = np.linalg.norm(away, axis=1, keepdims=True)
+    return np.asarray((middle + away * (1 + 1.6 * by / np.where(length > 0, length, 1.0)))[None])
+
+
+def _head(tip: Floats, along: Floats, size: float) -> Floats:
+    """Return the triangle of an arrow head that ends at `tip`, pointing `along`."""
+    side = np.array([-along[1], along[0]])
+    back = tip - along * size
+    return np.array([tip, back + side * 0.45 * size, back - side * 0.45 * size])
+
+
+def _principal(
+    at: Floats, seen: Floats, length: float, value: float, unit: float
+) -> tuple[list[Floats], list[Floats]]:
+    """Return lines and heads of a principal strain: heads at the ends point outwards (stretch) or inwards."""
+    flat = float(np.linalg.norm(seen[:2]))
+    reach = length * flat
+    size = min(9.0 * unit, 0.75 * reach)
+    if reach < 7.0 * unit:
+        return [], []
+    along = seen[:2] / flat
+    lines, heads = [], []
+    for way in (along, -along):
+        end = at + way * reach
+        if value > 0:
+            heads.append(_head(end, way, size))
+            lines.append(np.array([at, end - way * size * 0.7]))
+        else:
+            heads.append(_head(end - way * size, -way, size))
+            lines.append(np.array([at, end]))
+    return lines, heads
+
+
+def _rotation(
+    at: Floats, seen: Floats, length: float, value: float, unit: float
+) -> tuple[list[Floats], list[Floats]]:
+    """Return lines and heads of an axis of rotation: two heads along it (right hand), or an arc seen from its end."""
+    flat = float(np.linalg.norm(seen[:2]))
+    if flat < _END_ON:
+        turn = np.sign(seen[2])
+        angle = np.linspace(0.2, 0.2 + turn * 1.5 * np.pi, 40)
+        radius = max(0.55 * length, 3.0 * unit)
+        arc = at + radius * np.stack([np.cos(angle), np.sin(angle)], axis=1)
+        along = turn * np.array([-np.sin(angle[-1]), np.cos(angle[-1])])
+        return [arc], [_head(arc[-1] + along * 7.0 * unit, along, 9.0 * unit)]
+    along = seen[:2] / flat
+    end = at + along * length * flat
+    size = min(9.0 * unit, 0.6 * length * flat)
+    heads = [_head(end, along, size), _head(end - along * size * 0.9, along, size)]
+    return [np.array([at - along * length * flat, end - along * size * 0.8])], heads
