@@ -18,7 +18,7 @@ from unturn.pictures._label import add_label, words_of
 from unturn.pictures._marks import Mark, Sight, extremes
 from unturn.pictures._page import Page, unit_of
 from unturn.pictures._subject import Arrows, Subject
-from unturn.pictures._surface import POSITION, VALUE, Skin, outline_of
+from unturn.pictures._surface import POSITION, VALUE, Skin
 from unturn.pictures._view import Frame, camera_for, chosen_direction, facing, through
 from unturn.pictures._window import capture, make_window
 
@@ -38,12 +38,13 @@ class Picture:
         self.shape = self.stage.shape(request.factor)
         self.shown, self.faint = subject.shown(request), subject.faint(request)
         self.size = request.size
-        self._drawn = self.stage.nodes(self.shown | self.faint)
-        seen = [self.shape.points[self._drawn]]
+        drawn = self.stage.faces.nodes(self.shown | self.faint)
+        self._rest = self.stage.rest[drawn]
+        seen = [self.shape.points[drawn]]
         if request.undeformed and self.shape.factor:
-            seen.append(self.stage.rest[self._drawn])
+            seen.append(self._rest)
         self.extent = np.concatenate(seen)
-        around = np.concatenate([self.extent, self.stage.rest[self._drawn]]) - self.stage.origin
+        around = np.concatenate([self.extent, self._rest]) - self.stage.origin
         self.reach = float(2 * np.linalg.norm(around, axis=1).max()) or 1.0
         self.focus = _close.find(subject, request, self.shape, self.shown)
         self.extremes = extremes(self._marked()) if request.extremes else []
@@ -73,7 +74,7 @@ class Picture:
         if cut is None:
             return None
         toward = self._axes[0] if self._given is None else np.array(self._given.direction)
-        return facing(cut, toward), through(cut, self.stage.rest[self._drawn])
+        return facing(cut, toward), through(cut, self._rest)
 
     @cached_property
     def skin(self) -> Skin:
@@ -92,12 +93,12 @@ class Picture:
     @cached_property
     def sight(self) -> Sight:
         """What can be seen from where."""
-        return Sight(self.skin.surface, self.reach)
+        return self.stage.sight(self.skin, self.reach)
 
     @cached_property
     def _axes(self) -> tuple[Floats, Floats]:
         """Direction and up: as asked for, else those that show most, and the extreme if any does."""
-        extent = np.ptp(self.stage.rest[self._drawn], axis=0)
+        extent = np.ptp(self._rest, axis=0)
         chosen = chosen_direction(self.request.camera, self.request.cut, extent)
         if chosen is not None:
             return chosen
@@ -190,24 +191,24 @@ class Picture:
         for mark, words in labels:
             if self.inside(mark):
                 add_label(page, mark, words, taken)
-        picture = capture(window)
+        picture = capture(window, over=flat)
         window.Finalize()
         return picture
 
     def _add_model(self, back: Any, front: Any) -> None:
         u, direction = unit_of(self.size), np.array(self.camera.direction)
         if self.shape.factor and self.request.undeformed:
-            body = self.stage.skin(self.stage.shape(0.0), self.shown, {}, False).body
-            _scene.add_pale(back, body, outline_of(body, direction, self.reach), 1.2 * u)
+            ghost = self.stage.skin(self.stage.shape(0.0), self.shown, {}, False)
+            _scene.add_pale(back, ghost.body, self.stage.outline(ghost, direction, self.reach), 1.2 * u)
         if self.faint.any():
-            body = self.stage.skin(self.shape, self.faint, {}, False).body
-            outline = outline_of(body, direction, self.reach)
-            _scene.add_pale(back, body, outline, 1.2 * u, _scene.FAINT_FACE, _scene.FAINT_LINE)
+            faint = self.stage.skin(self.shape, self.faint, {}, False)
+            outline = self.stage.outline(faint, direction, self.reach)
+            _scene.add_pale(back, faint.body, outline, 1.2 * u, _scene.FAINT_FACE, _scene.FAINT_LINE)
         cells = self.values.numbers if self.subject.association == "cell" else None
         _scene.add_surface(front, self.skin.surface, cells, self.range)
         if self.skin.edges is not None:
             _scene.add_lines(front, self.skin.edges, 0.8 * u, 0.4)
-        _scene.add_lines(front, outline_of(self.skin.body, direction, self.reach), 1.6 * u)
+        _scene.add_lines(front, self.stage.outline(self.skin, direction, self.reach), 1.6 * u)
 
     def _taken(self, picture: NDArray[np.uint8]) -> NDArray[np.bool_]:
         """Return what labels should leave seen: the model, the rings, the margins."""

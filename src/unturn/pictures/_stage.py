@@ -3,12 +3,14 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
+from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
 from unturn.pictures._cut import DISTANCE, cut, section_of
-from unturn.pictures._surface import Faces, Skin
+from unturn.pictures._marks import Sight
+from unturn.pictures._surface import Faces, Skin, outline_of
 from unturn.pictures._values import Shape, shape_of
 from unturn.result import Result, used_points
 
@@ -40,6 +42,8 @@ class Stage:
         self.faces = Faces(result)
         self._shapes: dict[float | None, Shape] = {}
         self._skins: dict[tuple[object, ...], Skin] = {}
+        self._sights: dict[int, Sight] = {}
+        self._outlines: dict[tuple[int, bytes], Any] = {}
         self._placed: Mask = np.asarray(np.isfinite(self.rest).all(axis=1))
         self.there = self._cells_there()
         used: Mask = used_points(result.blocks, result.n_points) & self._placed
@@ -107,3 +111,16 @@ class Stage:
                 skin = cut(skin, section_of(self.result, keep, points, held))
             self._skins[key] = skin
         return self._skins[key]
+
+    def sight(self, skin: Skin, reach: float) -> Sight:
+        """Return what can be seen of a skin from where; nothing is farther from the middle than `reach`."""
+        if id(skin) not in self._sights:
+            self._sights[id(skin)] = Sight(skin.surface, reach)
+        return self._sights[id(skin)]
+
+    def outline(self, skin: Skin, direction: Floats, reach: float) -> Any:
+        """Return the outline of a skin seen from `direction`; nothing is farther from the middle than `reach`."""
+        key = (id(skin), direction.tobytes())
+        if key not in self._outlines:
+            self._outlines[key] = outline_of(skin.body, direction, reach)
+        return self._outlines[key]

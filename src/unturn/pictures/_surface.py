@@ -75,12 +75,16 @@ class Faces:
         apart = _flattened(_separated(faces), level)
         return Skin(apart, _boundaries(apart), body)
 
-    def _moved(self, keep: NDArray[np.bool_], points: Floats, nodal: Mapping[str, Floats]) -> Any:
+    def nodes(self, keep: NDArray[np.bool_]) -> NDArray[np.int64]:
+        """Return the nodes of what is seen of some cells."""
         from vtkmodules.util.numpy_support import vtk_to_numpy
+
+        return np.asarray(vtk_to_numpy(self._of(keep).GetPointData().GetArray(_ORIGINAL)))
+
+    def _moved(self, keep: NDArray[np.bool_], points: Floats, nodal: Mapping[str, Floats]) -> Any:
         from vtkmodules.vtkCommonDataModel import vtkUnstructuredGrid
 
-        faces = self._of(keep)
-        own = vtk_to_numpy(faces.GetPointData().GetArray(_ORIGINAL))
+        faces, own = self._of(keep), self.nodes(keep)
         moved = vtkUnstructuredGrid()
         moved.CopyStructure(faces)
         moved.GetCellData().AddArray(faces.GetCellData().GetArray(POSITION))

@@ -108,14 +108,27 @@ def make_window(
     return window, back, front, flat
 
 
-def capture(window: Any, single: bool = False) -> NDArray[np.uint8]:
+def capture(window: Any, single: bool = False, over: Any = None) -> NDArray[np.uint8]:
     """Return the picture, `(height, width, 3)` bytes, top row first, without steps in its lines.
 
-    With `single`, of all pixels that were drawn for one of the picture only one is kept: no colours are mixed.
+    Parameters
+    ----------
+    window
+        See `make_window`.
+    single
+        Of all pixels that were drawn for one of the picture only one is kept: no colours are mixed.
+    over
+        A renderer that alone is drawn, over what is there from the time before.
     """
     from vtkmodules.util.numpy_support import vtk_to_numpy
     from vtkmodules.vtkRenderingCore import vtkWindowToImageFilter
 
+    if over is not None:
+        renderers = window.GetRenderers()
+        for k in range(renderers.GetNumberOfItems()):
+            renderer = renderers.GetItemAsObject(k)
+            renderer.SetDraw(renderer is over)
+        window.EraseOff()
     window.Render()
     grab = vtkWindowToImageFilter()
     grab.SetInput(window)
