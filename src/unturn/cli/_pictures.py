@@ -152,8 +152,16 @@ class _Job:
         """Draw one picture."""
         from unturn.pictures.drawing import draw_all
         from unturn.pictures.told import write_values
+        from unturn.pictures.window import check_display, show_scene
 
         target = output or self.file.with_suffix(".png")
+        if target.suffix.lower() not in (".png", ".gif"):
+            raise UsageError(
+                f"{target}: pictures are written as PNG, series also as GIF: give a name that ends in .png or .gif. For "
+                "print, --size and --dpi make them as fine as needed."
+            )
+        if show:
+            check_display()
         self._check(target, csv)
         opened = self._opened()
         if target.suffix.lower() == ".gif":
@@ -165,8 +173,6 @@ class _Job:
             write_values(drawn[0], csv)
         self._tell(drawn, [] if csv is None else [csv])
         if show:
-            from unturn.pictures.window import show_scene
-
             show_scene(drawn[0])
 
     def planned(self, path: Path, folder: Path | None, threads: int | None) -> None:

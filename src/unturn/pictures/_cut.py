@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import functools
 from collections.abc import Mapping
 from dataclasses import dataclass, replace
 from typing import Any
@@ -10,7 +9,8 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from unturn.elements import Element, Shape, element, not_computable
+from unturn.elements import Element, element, not_computable
+from unturn.pictures._division import tetrahedra_of
 from unturn.pictures._surface import POSITION, Skin, named, vtk_points
 from unturn.result import Result
 
@@ -18,6 +18,7 @@ Floats = NDArray[np.float64]
 Ints = NDArray[np.int64]
 DISTANCE = "distance"
 _MOST_PIECES = 1_500_000  # tetrahedra into which the cells on the plane are divided, about
+_ON_IT = 1e-9  # share of the extent within which a corner counts as lying on the plane
 _BULGE = 0.2  # share of a curved cell's extent by which it may reach beyond its nodes
 
 
@@ -123,10 +124,10 @@ def section_of(
         if row.dim == 3:
             there = np.flatnonzero(keep[block.index] & _straddles(distance[block.connectivity], row))
             blocks.append((row, block.connectivity[there], block.index[there]))
-    pieces = sum(len(index) * len(_tetrahedra(row.shape, 0)[1]) for row, _, index in blocks)
+    pieces = sum(len(index) * len(tetrahedra_of(row.shape, 0)[1]) for row, _, index in blocks)
     finest = int(np.log(_MOST_PIECES / max(pieces, 1)) / np.log(8))
     parts = [
-        _cut_block(row, conn, index, points, nodal, max(0, min(finest, 1 if row.order == 1 else 2)))
+        _cut_block(row, conn, index, points, nodal, max(0, min(finest, 1 if row.order == 1 else 3)))
         for row, conn, index in blocks
         if len(index)
     ]
@@ -135,7 +136,7 @@ def section_of(
 
 def _straddles(distance: Floats, row: Element) -> NDArray[np.bool_]:
     low, high = distance.min(axis=1), distance.max(axis=1)
-    slack = 0.0 if row.order == 1 else _BULGE * (high - low)
+    slack = (_ON_IT if row.order == 1 else _BULGE) * (high - low)
     return np.asarray((low - slack < 0) & (high + slack >= 0))
 
 
@@ -162,24 +163,21 @@ def _joined(parts: list[Section], names: list[str]) -> Section:
 def _cut_block(
     row: Element, conn: Ints, index: Ints, points: Floats, nodal: Mapping[str, Floats], level: int
 ) -> Section:
-    corners, tetrahedra = _tetrahedra(row.shape, level)
+    corners, tetrahedra = tetrahedra_of(row.shape, level)
     N = row.shape_functions(corners)
     names = list(nodal)
     held = np.stack([*(points[:, k] for k in range(3)), *(nodal[n] for n in names)])
-    at = np.einsum("pa,vca->vcp", N, held[:, conn]).reshape(
-        len(held), -1
-    )  # corners of all cells, one after another
+    # the corners of all cells, one cell after another
+    at = np.einsum("pa,vca->vcp", N, held[:, conn]).reshape(len(held), -1)
     distance = at[3 + names.index(DISTANCE)]
-    size = float(np.abs(nodal[DISTANCE][conn]).max())
-    above = distance > 1e-9 * size
+    near = _ON_IT * float(np.abs(nodal[DISTANCE][conn]).max())
+    above = distance >= -near
     tets = (tetrahedra[None] + np.arange(len(conn))[:, None, None] * len(corners)).reshape(-1, 4)
     owner = np.repeat(np.arange(len(conn)), len(tetrahedra))
     ends, who = _crossings(tets, above[tets], owner)
     ends = ends.reshape(-1, 2)
-    on_it = distance[ends[:, 0]] >= -1e-9 * size
-    ends[on_it, 1] = ends[
-        on_it, 0
-    ]  # the plane goes through the corner itself: one point, not one for each edge
+    # where the plane goes through a corner, that is one point and not one for each edge
+    ends[:, 0] = np.where(distance[ends[:, 1]] <= near, ends[:, 1], ends[:, 0])
     pair, place = np.unique(ends, axis=0, return_inverse=True)
     below, over = distance[pair[:, 0]], distance[pair[:, 1]]
     t = np.clip(below / np.where(below == over, 1.0, below - over), 0.0, 1.0)
@@ -187,13 +185,8 @@ def _cut_block(
     triangles = place.reshape(-1, 3)
     real = (triangles != triangles[:, [1, 2, 0]]).all(axis=1)
     triangles, who = triangles[real], who[real]
-    return Section(
-        np.ascontiguousarray(found[:3].T),
-        {n: found[3 + k] for k, n in enumerate(names)},
-        triangles,
-        index[who],
-        _single_edges(triangles),
-    )
+    values = {n: found[3 + k] for k, n in enumerate(names)}
+    return Section(np.ascontiguousarray(found[:3].T), values, triangles, index[who], _single_edges(triangles))
 
 
 def _crossings(tets: Ints, above: NDArray[np.bool_], owner: Ints) -> tuple[Ints, Ints]:
@@ -220,34 +213,3 @@ def _single_edges(triangles: Ints) -> Ints:
     edges = np.sort(np.concatenate([triangles[:, [a, b]] for a, b in ((0, 1), (1, 2), (2, 0))]), axis=1)
     distinct, count = np.unique(edges, axis=0, return_counts=True)
     return np.asarray(distinct[count == 1])
-
-
-@functools.cache
-def _tetrahedra(shape: Shape, level: int) -> tuple[Floats, Ints]:
-    """Return corners `(p, 3)` and tetrahedra `(t, 4)` that fill a reference solid, divided `level` times."""
-    if level == 0:
-        return shape.vertices, _coarse(shape)
-    corners, tets = _tetrahedra(shape, level - 1)
-    a, b, c, d = tets.T
-    pairs = np.sort(np.stack([tets[:, [i, j]] for i, j in _EDGES], axis=1).reshape(-1, 2), axis=1)
-    distinct, place = np.unique(pairs, axis=0, return_inverse=True)
-    middle = place.reshape(-1, 6).T + len(corners)
-    ab, ac, ad, bc, bd, cd = middle
-    fine = [(a, ab, ac, ad), (b, ab, bc, bd), (c, ac, bc, cd), (d, ad, bd, cd),
-            (ab, cd, ac, ad), (ab, cd, ad, bd), (ab, cd, bd, bc), (ab, cd, bc, ac)]  # fmt: skip
-    return (
-        np.concatenate([corners, corners[distinct].mean(axis=1)]),
-        np.concatenate([np.stack(f, axis=1) for f in fine]),
-    )
-
-
-_EDGES = ((0, 1), (0, 2), (0, 3), (1, 2), (1, 3), (2, 3))
-
-
-def _coarse(shape: Shape) -> Ints:
-    """Return tetrahedra of a reference solid: from its first vertex to the triangles of the faces that lack it."""
-    found = []
-    for face in shape.faces:
-        if 0 not in face:
-            found += [(0, face[0], face[k], face[k + 1]) for k in range(1, len(face) - 1)]
-    return np.array(found, dtype=np.int64)

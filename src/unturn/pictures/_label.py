@@ -17,15 +17,15 @@ _HEIGHTS = (17.0, 14.0)
 _WHITE = (1.0, 1.0, 1.0)
 
 
-def words_of(mark: Mark, values: Values, subject: Subject) -> list[str]:
-    """Return the lines of a label."""
+def words_of(mark: Mark, values: Values, subject: Subject, hidden: str) -> list[str]:
+    """Return the lines of a label; `hidden` says why the place is not seen."""
     lines = [f"{mark.kind} {written(mark.value * values.scale, 4)} {values.short_unit}".rstrip()]
     if subject.numbers is not None:
         of = "element" if subject.association == "cell" else "node"
         lines.append(f"{of} {subject.numbers[mark.position]} in the file")
     lines.append(f"{subject.noun} {mark.position}, counted from 0")
-    if not mark.visible:
-        lines.append("not seen from this side")
+    if hidden:
+        lines.append(hidden)
     return lines
 
 

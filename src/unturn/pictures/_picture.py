@@ -186,7 +186,9 @@ class Picture:
             draw_arrows(page, self.camera, self.arrows, self._places(), self.longest)
         if self.focus is not None:
             _legend.border(page, self.frame.box)
-        labels = [(mark, words_of(mark, self.values, self.subject)) for mark in self.marks]
+        labels = [
+            (mark, words_of(mark, self.values, self.subject, self._hidden(mark))) for mark in self.marks
+        ]
         _legend.aside(page, self.frame.box, [", ".join(w) for mark, w in labels if not self.inside(mark)])
         for mark, words in labels:
             if self.inside(mark):
@@ -241,6 +243,16 @@ class Picture:
             return place if self.sight.point(place - origin, direction) else None
         hit = self.sight.cell(position, place - origin, direction)
         return None if hit is None else hit + origin
+
+    def _hidden(self, mark: Mark) -> str:
+        """Return why a mark is not seen, empty when it is."""
+        if mark.visible:
+            return ""
+        if self.plane is not None:
+            rest = _close.place(self.subject, self.stage.shape(0.0), mark.position)
+            if (rest - self.plane[1]) @ self.plane[0] > 0:
+                return "in the half that is cut away"
+        return "not seen from this side"
 
     def _mark(self, kind: str, position: int) -> Mark:
         place = self.place(position)

@@ -77,11 +77,10 @@ def _value(picture: Picture, value: float) -> str:
 
 def _about_cut(picture: Picture) -> list[str]:
     cut = picture.request.cut
-    return (
-        []
-        if cut is None
-        else [f"cut: {cut.text} of the undeformed shape, the half towards the eye taken away"]
-    )
+    if cut is None:
+        return []
+    hollow = ["hollow: only free faces are drawn"] if picture.subject.of_faces else []
+    return [f"cut: {cut.text} of the undeformed shape, the half towards the eye taken away", *hollow]
 
 
 def _about_arrows(picture: Picture) -> list[str]:
