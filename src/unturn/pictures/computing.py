@@ -81,7 +81,7 @@ class Step:
         what = wanted(request.measure, self.result, self.options, request.at)
         names = [what.array] if what.kind == "measure" else []
         if request.arrows == "principal":
-            values, directions = directions_with(what.array, self.options.base)
+            values, directions = directions_with(what.array, self.options.base, request.at)
             names += [values, *directions]
         elif request.arrows == "rotation":
             names.append(rotation_with(what.array, self.options.base))
@@ -244,8 +244,8 @@ class Step:
         arrays, _ = self._held(request.at)
         front = "surface_" if of_faces else ""
         if request.arrows == "principal":
-            values, names = directions_with(what.array, self.options.base)
-            vectors = np.stack([arrays[front + n] for n in names if front + n in arrays], axis=1)
+            values, names = directions_with(what.array, self.options.base, request.at)
+            vectors = np.stack([arrays[front + n] for n in names], axis=1)
             return Arrows(
                 "principal", vectors, arrays[front + values][:, : vectors.shape[1]], 1e6, "microstrain"
             )
