@@ -243,7 +243,7 @@ class _Job:
         from functools import lru_cache
 
         from unturn.pictures.animation import draw_series
-        from unturn.pictures.told import SCHEMA, series_data, series_text
+        from unturn.pictures.told import pictures_data, series_data, series_text
         from unturn.pipeline import settled
 
         if opened.steps is None:
@@ -255,20 +255,14 @@ class _Job:
         options = settled(options, opened.read(n - 1))
         step = lru_cache(maxsize=12)(lambda k: self._step(opened, k, [request], options, zero_step))
         drawn = draw_series(step, n, request, target)
-        data = {"schema": SCHEMA, "file": str(self.file), "pictures": [series_data(drawn)], "tables": []}
-        self._say(series_text(drawn), data)
+        self._say(series_text(drawn), pictures_data(str(self.file), [series_data(drawn)], []))
 
     def _tell(self, drawn: Sequence[Drawn], tables: Sequence[Path]) -> None:
-        from unturn.pictures.told import SCHEMA, drawn_data, drawn_text
+        from unturn.pictures.told import drawn_data, drawn_text, pictures_data
 
         lines = [drawn_text(d) for d in drawn] + [f"wrote {place}" for place in tables]
-        data = {
-            "schema": SCHEMA,
-            "file": str(self.file),
-            "pictures": [drawn_data(d) for d in drawn],
-            "tables": [str(t) for t in tables],
-        }
-        self._say("\n".join(lines), data)
+        data = [drawn_data(d) for d in drawn]
+        self._say("\n".join(lines), pictures_data(str(self.file), data, tables))
 
     def _say(self, text: str, data: dict[str, Any]) -> None:
         from unturn.cli._output import write_json

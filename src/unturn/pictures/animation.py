@@ -115,7 +115,9 @@ def _write(frames: list[NDArray[np.uint8]], path: Path) -> None:
         nearest = np.asarray(
             tree.query(np.stack([colours >> 16, colours >> 8 & 255, colours & 255], axis=1))[1]
         )
-        image = Image.fromarray(nearest.astype(np.uint8)[place].reshape(frame.shape[:2]), mode="P")
+        image = Image.frombytes(
+            "P", frame.shape[1::-1], nearest.astype(np.uint8)[place.reshape(-1)].tobytes()
+        )
         image.putpalette(palette.reshape(-1).tolist())
         images.append(image)
     times = [_FRAME_MS] * (len(images) - 1) + [_LAST_MS]
