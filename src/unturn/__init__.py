@@ -17,6 +17,7 @@ if TYPE_CHECKING:
     )
     from unturn.gradient import displacement_gradient
     from unturn.result import CellBlock, Result
+    from unturn.verdicts.comparison import compare
 
 __all__ = [
     "CellBlock",
@@ -27,6 +28,7 @@ __all__ = [
     "UnturnError",
     "UsageError",
     "__version__",
+    "compare",
     "displacement_gradient",
     "kinematics",
     "read",
@@ -38,6 +40,7 @@ _HOME = {
     "CellBlock": "unturn.result",
     "Result": "unturn.result",
     "__version__": "unturn._version",
+    "compare": "unturn.verdicts.comparison",
     "displacement_gradient": "unturn.gradient",
     "read": "unturn._api",
     "strain": "unturn._api",

@@ -68,7 +68,7 @@ class Computed:
     """Computed fields, and the rigid motions that were taken out first.
 
     `fields` are those of cells: at centroids where the values asked for live elsewhere. `nodes`, `surface` and `cloud` hold
-    those.
+    those. `finite_model` is that of finite measures where it is another one than that of `fields`: with a zero step.
     """
 
     fields: CellFields
@@ -78,6 +78,7 @@ class Computed:
     surface: SurfaceFields | None = None
     cloud: Result | None = None
     equivalent_poisson: float | None = None
+    finite_model: Model | None = None
 
     def require_some(self) -> None:
         """Refuse a result of which no cell could be computed.
@@ -172,6 +173,7 @@ def compute(
         removals,
         _request(options, zero),
         equivalent_poisson=options.equivalent_poisson,
+        finite_model=finite,
     )
     del settings["at"]
     if options.at == "nodes":
@@ -187,7 +189,7 @@ def compute(
 def _at_nodes(
     small: Model, finite: Model | None, names: Sequence[str], settings: dict[str, Any], method: Method
 ) -> NodeFields:
-    regions = find_regions(small, _computed(small))
+    regions = find_regions(small, computed_cells(small))
     if finite is None:
         return nodal_fields(small, names, regions, method=method, **settings)
     real = [n for n in names if n in MEASURES and MEASURES[n].finite]
@@ -418,7 +420,7 @@ def _parts(
                 "--rigid-to and --rigid-axis belong to --remove-rigid: name what is to be taken out."
             )
         return []
-    computed = _computed(model)
+    computed = computed_cells(model)
     everything = np.flatnonzero(computed)
     if how == "whole":
         regions = [("whole", everything)]
@@ -441,7 +443,8 @@ def _parts(
     return [(*regions[0], *target)]
 
 
-def _computed(model: Model) -> NDArray[np.bool_]:
+def computed_cells(model: Model) -> NDArray[np.bool_]:
+    """Return which cells are computed, `(n_cells,)`."""
     computed = np.zeros(model.result.n_cells, dtype=bool)
     for block in model.blocks:
         computed[block.index] = True

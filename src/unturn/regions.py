@@ -186,15 +186,19 @@ def merge_coincident(points: Floats) -> tuple[NDArray[np.int64], float]:
     return label, tolerance
 
 
-def named_regions(model: Model, names: Sequence[str], cells: NDArray[np.bool_]) -> list[Region]:
+def named_regions(
+    model: Model, names: Sequence[str], cells: NDArray[np.bool_], known: Sequence[Region] | None = None
+) -> list[Region]:
     """Return the regions asked for by name: a group, ``array=value``, or a name that `find_regions` gives.
+
+    `known` is what `find_regions` gives for these cells, where it is at hand.
 
     Raises
     ------
     UsageError
         No such region, or it holds no computed cell.
     """
-    default = {r.name: r for r in find_regions(model, cells)}
+    default = {r.name: r for r in (find_regions(model, cells) if known is None else known)}
     return [_one_region(model.result, name, cells, default) for name in names]
 
 

@@ -17,14 +17,18 @@ from unturn.errors import UsageError
 
 def write_json(data: Any, path: Path) -> None:
     """Write data as JSON, NaN as null, to a file (whole or not at all) or to stdout (``-``)."""
-    text = json.dumps(_finite(data), indent=2, ensure_ascii=False, allow_nan=False)
+    write_text(json.dumps(_finite(data), indent=2, ensure_ascii=False, allow_nan=False) + "\n", path)
+
+
+def write_text(text: str, path: Path) -> None:
+    """Write a text that ends in a line end to a file, whole or not at all and byte for byte, or to stdout (``-``)."""
     if str(path) == "-":
-        typer.echo(text)
+        typer.echo(text, nl=False)
         return
     from unturn.io._atomic import replacing
 
     with replacing(path) as work:
-        work.write_text(text + "\n", encoding="utf-8", errors="backslashreplace")
+        work.write_text(text, encoding="utf-8", errors="backslashreplace", newline="")
 
 
 def check_place(picture: Path | None, data: Path | None, inputs: Sequence[Path]) -> None:
@@ -33,12 +37,30 @@ def check_place(picture: Path | None, data: Path | None, inputs: Sequence[Path])
     Raises
     ------
     UsageError
-        Not a PNG name, a folder or a name in a folder that does not exist, or one of the input files.
+        Not a PNG name, or refused by `check_places`.
     """
     if picture is not None and picture.suffix.lower() != ".png":
         raise UsageError(f"{picture}: pictures are written as PNG; give a name that ends in .png.")
-    for path in (picture, data):
-        if path is None or str(path) == "-":
+    check_places((picture, data), inputs)
+
+
+def check_places(places: Sequence[Path | None], inputs: Sequence[Path]) -> None:
+    """Refuse places that cannot be written to, before anything is computed; ``-`` is the standard output.
+
+    Raises
+    ------
+    UsageError
+        A folder or a name in a folder that does not exist, one of the input files, or a place named twice.
+    """
+    taken: set[str] = set()
+    for path in places:
+        if path is None:
+            continue
+        place = "-" if str(path) == "-" else os.path.realpath(path)
+        if place in taken:
+            raise UsageError(f"{path} is named for two outputs; give each its own.")
+        taken.add(place)
+        if place == "-":
             continue
         if is_folder(path):
             raise UsageError(f"{path} is a folder; give the name of a file in it.")

@@ -1,0 +1,441 @@
+"""How far to trust a value at a cell, from the elements around it alone: the whole mesh is not recovered.
+
+Plus and minus of a cell depend on the gradients that are recovered at its nodes, and these on the cells within a few rings
+around it. Such cells are cut out of the mesh, those of all values together, and recovered as a mesh of their own: what
+comes out is what a recovery of the whole mesh gives.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Sequence
+from dataclasses import dataclass, field, replace
+from functools import cached_property
+from typing import Literal
+
+import numpy as np
+from numpy.typing import NDArray
+
+from unturn.cutout import Cut, Cutter
+from unturn.kinematics._finite import BASES
+from unturn.kinematics._symmetric import Floats
+from unturn.measures import MEASURES
+from unturn.model import Model
+from unturn.nodal import FOLD
+from unturn.peaks import GROWING, Peak, Peaks
+from unturn.pipeline import Computed, computed_cells
+from unturn.recovery import Recovered, recover_gradient, sheets
+from unturn.regions import Region, find_regions
+from unturn.trust import MOST_CHANGE, StrainError, strain_error
+
+Ints = NDArray[np.int64]
+Location = Literal["centroid", "mean"]
+
+VALUES, PEAKS = 4, 6
+"""Rings of cells on which the plus and minus of a cell depends, and whether it is a peak that is suspected.
+
+Recovered values at the nodes of a cell depend on three rings, by patches of corners two cells away that stand in at
+borders; on four where the nodes lie on a border, by the nodes beside them. A peak looks at the nodes of two more rings.
+"""
+_TAKEN = (
+    16,
+    128,
+    1024,
+    8192,
+)  # cells of a region among which the next peak is looked for, more if there is none
+_MOST = 250_000  # cells around them that are worth it
+_NEGLIGIBLE = 1e-3  # of the largest strain of the region: a smaller extreme is no peak
+RESOLVED = 0.4
+"""Plus and minus at the node of a peak, as a share of the strain of its cell, below which the mesh resolves it: 0.5 to 3.5
+was seen at corners and point loads on eleven elements, less at holes, bores, cavities and in bending."""
+
+
+@dataclass(frozen=True, eq=False)
+class Asked:
+    """A value at a cell: an extreme of a region, or any other.
+
+    Attributes
+    ----------
+    measure
+        Name of its array without component (``principal_strain``), or ``stretch`` or ``angle_of_turn``.
+    values
+        `(n_cells,)` of the component, file order.
+    cells
+        File positions of the region: where the next peak is looked for.
+    cell
+        The cell; -1 for none.
+    smallest
+        Whether it is the smallest of the region, not the largest.
+    size
+        Largest strain of the region: an extreme below a thousandth of it is no peak.
+    """
+
+    measure: str
+    values: Floats
+    cells: Ints
+    cell: int
+    smallest: bool = False
+    size: float = 0.0
+
+
+@dataclass(frozen=True)
+class Trust:
+    """How far to trust a value.
+
+    Attributes
+    ----------
+    plus_minus
+        Bound of the error of the value as one for the whole element, see `unturn.trust.StrainError`. NaN where it is not
+        known: for an element without neighbours, and for measures of which `bound_of` knows none.
+    singular
+        Whether it keeps growing towards a node that the mesh does not resolve: suspected singular.
+    point
+        That node, position in the file; -1 for none.
+    growth
+        Exponent a of `value ~ distance^-a` towards it.
+    next_cell, next_value, next_plus_minus
+        The next peak of the region away from it that is not suspected; -1 and NaN for none.
+    """
+
+    plus_minus: float
+    singular: bool = False
+    point: int = -1
+    growth: float = math.nan
+    next_cell: int = -1
+    next_value: float = math.nan
+    next_plus_minus: float = math.nan
+
+
+@dataclass(frozen=True)
+class Bound:
+    """How the bound of a measure follows from that of tensors.
+
+    Attributes
+    ----------
+    bases
+        The tensors, as `base` of `strain_error`; their bounds are added.
+    change
+        How much the measure changes at most when a tensor changes by one that has norm one.
+    kind
+        ``strain``, whose peaks may be singular, ``other``, or one whose change is no multiple: ``angle``, of the rotation R,
+        and ``ratio``, whose logarithm changes.
+    """
+
+    bases: tuple[str, ...]
+    change: float
+    kind: Literal["strain", "other", "angle", "ratio"] = "strain"
+
+    def of(self, plus_minus: float, value: float) -> float:
+        """Return the bound of the measure, from that of the tensors, at a value."""
+        change = self.change * plus_minus
+        if self.kind == "angle":
+            return 2.0 * math.asin(min(0.5 * change, 1.0))
+        return abs(value) * math.expm1(min(change, 700.0)) if self.kind == "ratio" else change
+
+
+_MOTION = {
+    "rotation": Bound(("rotation",), 1.0, "other"),
+    "rotation_angle": Bound(("rotation",), 1.0, "other"),
+    "small_strain_error": Bound(("", "biot"), 1.0, "other"),
+    "finite_rotation_angle": Bound(("turn",), 1.0, "angle"),
+    "angle_of_turn": Bound(("turn",), 1.0, "angle"),
+    "stretch": Bound(("biot",), 1.0, "other"),
+    "det_f": Bound(("hencky",), 3.0**0.5, "ratio"),
+}
+
+
+def bound_of(
+    measure: str, poisson: float | None = None, equivalent_poisson: float | None = None
+) -> Bound | None:
+    """Return how the bound of a measure comes about, or None where none is known.
+
+    Parameters
+    ----------
+    measure
+        As of `Asked`.
+    poisson
+        Poisson's ratio behind the equivalent strain of free surfaces.
+    equivalent_poisson
+        Effective Poisson ratio of the equivalent strain.
+
+    Notes
+    -----
+    Strain: `MOST_CHANGE`. The rotation vector bounds its components and its length. Stretches are the eigenvalues of U and
+    change by no more than its norm (Weyl 1912). The angle of R is its distance from the identity, and changes by no more
+    than the angle between two rotations, `2 asin(norm(R* - R)/sqrt 8)`. `ln det F` is the trace of `ln U`. The error of the
+    small strain, `norm(e - (U - I))`, changes by no more than e and U together. On free surfaces the small strain along the
+    normal, `-k (e_1 + e_2)` with `k = nu/(1-nu)`, adds to that within the surface, of which the norm is: the whole tensor
+    changes by up to sqrt(1 + 2 k^2) times as much.
+    """
+    if measure in _MOTION:
+        return _MOTION[measure]
+    row = MEASURES.get(measure.removeprefix("surface_"))
+    if row is None:
+        return None
+    base = base_of(measure)
+    small = row.base if base else row.name.replace("mechanical_strain", "strain").removesuffix("_mechanical")
+    if small not in MOST_CHANGE:
+        return None
+    change = MOST_CHANGE[small]
+    if small == "equivalent_strain" and equivalent_poisson is not None:
+        change *= 1.5 / (1.0 + equivalent_poisson)
+    if measure == "surface_equivalent_strain" and poisson is not None:
+        change *= math.sqrt(1.0 + 2.0 * (poisson / (1.0 - poisson)) ** 2)
+    return Bound((base,), change)
+
+
+def base_of(measure: str) -> str:
+    """Return the finite base of a measure by its name, empty for small ones."""
+    return next((b for b in BASES if measure.endswith(f"_{b}")), "")
+
+
+def trust_of(
+    computed: Computed,
+    asked: Sequence[Asked],
+    regions: Sequence[Region] | None = None,
+    threads: int | None = None,
+) -> list[Trust]:
+    """Return how far to trust values at cells, in the order they are asked for.
+
+    Parameters
+    ----------
+    computed
+        Computed with ``diagnose=True``.
+    asked
+        The values; many at once cost little more than one.
+    regions
+        What `find_regions` returns for all computed cells, where it is at hand: nothing is recovered across their borders.
+    threads
+        None: all processors.
+
+    Notes
+    -----
+    The free thermal strain counts as known: mechanical strain has the bound of the total. With a zero step finite measures
+    are judged on the motion since then.
+    """
+    d = computed.fields.diagnostics
+    assert d is not None
+    model, finite = computed.fields.model, computed.finite_model
+    groups = groups_of(model, regions)
+    at: Location = "mean" if computed.request.get("at") == "mean" else "centroid"
+    judged = computed.request.get("solve") != "linear"  # the turn is then that of the motion
+
+    def of_motion(a: Asked) -> bool:
+        row = MEASURES.get(a.measure)
+        return a.measure == "stretch" or (
+            judged if a.measure == "angle_of_turn" else row is not None and row.finite
+        )
+
+    found = [Trust(math.nan)] * len(asked)
+    for behind in (model,) if finite is None else (model, finite):
+        mine = [k for k, a in enumerate(asked) if finite is None or of_motion(a) is (behind is finite)]
+        part = [asked[k] for k in mine]
+        answers = trust_on(behind, d.volume, groups, part, computed.equivalent_poisson, at, threads)
+        for k, answer in zip(mine, answers):
+            found[k] = answer
+    return found
+
+
+def groups_of(model: Model, regions: Sequence[Region] | None = None) -> Ints:
+    """Return the groups `(n_cells,)` across whose borders nothing is recovered: regions, and sheets of folded surfaces."""
+    if regions is None:
+        regions = find_regions(model, computed_cells(model))
+    groups = np.zeros(model.result.n_cells, dtype=np.int64)
+    for number, region in enumerate(regions, 1):
+        groups[region.cells] = number
+    bent = any(b.kind in ("surface", "line") and len(b.active) for b in model.blocks)
+    return sheets(model, groups, FOLD) if bent else groups
+
+
+def trust_on(
+    model: Model,
+    volume: Floats,
+    groups: Ints,
+    asked: Sequence[Asked],
+    equivalent_poisson: float | None = None,
+    at: Location = "centroid",
+    threads: int | None = None,
+) -> list[Trust]:
+    """Return what `trust_of` does, on any model.
+
+    Parameters
+    ----------
+    model, volume, groups
+        The model; `(n_cells,)` weights and `(n_cells,)` groups across which nothing is recovered.
+    asked, equivalent_poisson, threads
+        As of `trust_of` and of its fields.
+    at
+        Where the values live.
+    """
+    found = [Trust(math.nan)] * len(asked)
+    bounds = {k: bound_of(a.measure, model.poisson, equivalent_poisson) for k, a in enumerate(asked)}
+    there = computed_cells(model)
+    known = {k: b for k, b in bounds.items() if b is not None and asked[k].cell >= 0 and there[asked[k].cell]}
+    if not known:
+        return found
+    mesh = _Mesh(Cutter(model), volume, groups, at, threads)
+    near = mesh.around([asked[k].cell for k in known], VALUES)
+    for k, bound in known.items():
+        found[k] = Trust(near.plus_minus(bound, asked[k], asked[k].cell))
+    growing = [k for k, b in known.items() if b.kind == "strain" and near.grows(asked[k])]
+    if growing:
+        near = mesh.around([asked[k].cell for k in growing], PEAKS)
+        for k in growing:
+            found[k] = near.judged(found[k], asked[k], known[k])
+        _find_next(mesh, asked, known, found, len(near.part.cells))
+    return found
+
+
+def _find_next(
+    mesh: _Mesh, asked: Sequence[Asked], bounds: dict[int, Bound], found: list[Trust], near: int
+) -> None:
+    """Add the next peaks to those that are suspected: among ever more cells, while what lies around is not too much.
+
+    `near` is the number of cells that were recovered anyway.
+    """
+    todo = [k for k, trust in enumerate(found) if trust.singular]
+    for taken in _TAKEN:
+        among = {k: _foremost(asked[k], mesh.volume, taken) for k in todo}
+        if not among:
+            return
+        cells = mesh.cutter.around(np.unique(np.concatenate(list(among.values()))), PEAKS)
+        if len(cells) > max(_MOST, near):
+            return
+        wide = mesh.recovered(cells)
+        for k in todo:
+            found[k] = wide.with_next(found[k], asked[k], bounds[k], among[k])
+        todo = [k for k in todo if found[k].next_cell < 0 and len(among[k]) > taken]
+
+
+def _foremost(asked: Asked, volume: Floats, count: int) -> Ints:
+    """Return the cell and those of its region whose values come first, rising; all of them when there are no more."""
+    cells = asked.cells[np.isfinite(asked.values[asked.cells]) & np.isfinite(volume[asked.cells])]
+    if len(cells) > count:
+        signed = asked.values[cells] if asked.smallest else -asked.values[cells]
+        cells = np.append(cells[np.argpartition(signed, count)[: count + 1]], asked.cell)
+    return np.unique(cells)
+
+
+@dataclass(eq=False)
+class _Mesh:
+    """A model and what is known of its cells."""
+
+    cutter: Cutter
+    volume: Floats
+    groups: Ints
+    at: Location
+    threads: int | None
+
+    def around(self, cells: Sequence[int], rings: int) -> _Around:
+        """Return these cells with some rings around them, recovered."""
+        return self.recovered(self.cutter.around(np.asarray(cells, dtype=np.int64), rings))
+
+    def recovered(self, cells: Ints) -> _Around:
+        """Return these cells alone, rising, recovered."""
+        return self.whole if len(cells) == self.cutter.count else self._recovered(cells)
+
+    @cached_property
+    def whole(self) -> _Around:
+        """All cells, recovered."""
+        return self._recovered(self.cutter.everything)
+
+    def _recovered(self, cells: Ints) -> _Around:
+        cut = self.cutter.cut(cells)
+        recovered = recover_gradient(cut.model, self.groups[cells], "patch", self.threads)
+        return _Around(cut, recovered, self.volume[cells], self.at, self.threads)
+
+
+@dataclass(frozen=True, eq=False)
+class _Around:
+    """Cells that were cut out, with the gradient recovered at their nodes."""
+
+    part: Cut
+    recovered: Recovered
+    volume: Floats
+    at: Location
+    threads: int | None
+    errors: dict[str, StrainError] = field(default_factory=dict)
+    taken: dict[int, Floats] = field(default_factory=dict)
+
+    def own(self, cells: Ints) -> Ints:
+        """Return the positions of cells of the file."""
+        return np.searchsorted(self.part.cells, cells)
+
+    def values(self, asked: Asked) -> Floats:
+        """Return the values of these cells; taken once from the array that several extremes share."""
+        key = id(asked.values)
+        if key not in self.taken:
+            self.taken[key] = asked.values[self.part.cells]
+        return self.taken[key]
+
+    def error(self, base: str) -> StrainError:
+        """Return the error of a tensor."""
+        if base not in self.errors:
+            self.errors[base] = strain_error(self.recovered, self.threads, base, self.at)
+        return self.errors[base]
+
+    def plus_minus(self, bound: Bound, asked: Asked, cell: int) -> float:
+        """Return the bound of a measure at a cell of the file."""
+        own = self.own(np.array([cell]))[0]
+        total = sum(float(self.error(base).plus_minus[own]) for base in bound.bases)
+        return bound.of(total, float(asked.values[cell]))
+
+    @cached_property
+    def peaks(self) -> Peaks:
+        """The peaks of these cells."""
+        return Peaks(self.recovered, middles(self.part.model), self.volume)
+
+    def peak(self, asked: Asked) -> Peak:
+        """Return the value that is asked for as a peak."""
+        return self.peaks.find(self.values(asked), self.own(np.array([asked.cell])), asked.smallest)
+
+    def grows(self, asked: Asked) -> bool:
+        """Return whether a value grows towards a node, and is not negligible."""
+        peak = self.peak(asked)
+        return peak.growth > GROWING and abs(peak.value) >= _NEGLIGIBLE * asked.size
+
+    def suspected(self, peak: Peak, base: str, size: float) -> bool:
+        """Return whether a peak grows, is not negligible, and is not resolved.
+
+        At a singular point the elements around never agree with what is recovered there: what recovery changes stays in
+        proportion to the strain, however fine the mesh. A steep smooth field, such as bending across a thin part, they
+        follow.
+        """
+        if not peak.singular or abs(peak.value) < _NEGLIGIBLE * size:
+            return False
+        error = self.error(base)
+        shares = self.peaks.corners[[peak.cell]].indices
+        share = shares[self.recovered.shares.point[shares] == peak.point]
+        strain = math.sqrt(error.strain_squared[peak.cell] / error.volume[peak.cell])
+        return not (error.plus_minus_shares[share] < RESOLVED * strain).all()
+
+    def judged(self, known: Trust, asked: Asked, bound: Bound) -> Trust:
+        """Return what is known of a value, and whether it is suspected singular."""
+        peak = self.peak(asked)
+        if not self.suspected(peak, bound.bases[0], asked.size):
+            return known
+        return replace(known, singular=True, point=int(self.part.points[peak.point]), growth=peak.growth)
+
+    def with_next(self, known: Trust, asked: Asked, bound: Bound, among: Ints) -> Trust:
+        """Return what is known of a suspected value, and the next peak among some cells of the file."""
+
+        def suspected(peak: Peak) -> bool:
+            return self.suspected(peak, bound.bases[0], asked.size)
+
+        after = self.peaks.next_peak(
+            self.values(asked), self.own(among), self.peak(asked), asked.smallest, suspected
+        )
+        if after.cell < 0:
+            return known
+        cell = int(self.part.cells[after.cell])
+        more = self.plus_minus(bound, asked, cell)
+        return replace(known, next_cell=cell, next_value=after.value, next_plus_minus=more)
+
+
+def middles(model: Model) -> Floats:
+    """Return the middle of the corners of every cell `(n_cells, 3)`; NaN where it is not computed."""
+    found = np.full((model.result.n_cells, 3), np.nan)
+    for block in model.blocks:
+        if block.row is not None:
+            found[block.index] = model.points[block.connectivity[:, : block.row.n_corners]].mean(axis=1)
+    return found
