@@ -16,14 +16,14 @@ PACKAGE = Path(unturn.errors.__file__).parent
 # From the foundation up. Modules on one line do not import each other, except where a package holds several files.
 LAYERS = (
     ("errors", "source", "_version"),
-    ("kinematics", "elements", "toml_keys"),
-    ("picture_wishes",),
+    ("kinematics", "elements", "toml_kinds"),
+    ("toml_keys", "picture_wishes"),
     ("picture_keys",),
     ("result", "statistics", "precision", "node_sets"),
     ("numbering", "frames", "point_gradient"),
     ("gradient", "measures", "midside", "displacement", "thermal"),
     ("model",),
-    ("fields", "regions", "jacobian"),
+    ("fields", "regions", "jacobian", "written_regions"),
     ("recovery", "tensor_range", "rigid", "verdict"),
     ("trust", "peaks", "surface", "quadrature_points", "nodal", "cutout"),
     ("agreement", "pipeline", "trial", "series"),

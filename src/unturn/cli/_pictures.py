@@ -24,7 +24,7 @@ if TYPE_CHECKING:
 
 def picture_options(command: Callable[..., None]) -> Callable[..., None]:
     """Give a command every option that a picture can be asked for, and the command its `asked`: value by key."""
-    from unturn import toml_keys as k
+    from unturn import toml_kinds as k
     from unturn.picture_keys import NAMES, PICTURE_KEYS
 
     def with_options(**given: Any) -> None:
@@ -190,7 +190,8 @@ class _Job:
         self._check(*targets, *(folder / f"{name}.csv" for name in sorted(plan.csv)))
         opened = self._opened()
         options = replace(plan.options, threads=threads)
-        step = self._step(opened, self._number(opened), plan.pictures, options, plan.zero_step)
+        step = self._step(opened, self._number(opened), plan.pictures, options, plan.zero_step,
+                          surface_poisson=plan.surface_poisson, regions=plan.regions)  # fmt: skip
         drawn = draw_all(step, plan.pictures, targets, plan.title)
         tables = [(d, folder / f"{d.request.name}.csv") for d in drawn if d.request.name in plan.csv]
         for one, place in tables:
@@ -218,7 +219,7 @@ class _Job:
 
     def _step(
         self, opened: ResultFile, number: int, requests: Sequence[PictureRequest], options: StrainOptions,
-        zero_step: int | None,
+        zero_step: int | None, **of_plan: Any,
     ) -> Step:  # fmt: skip
         from unturn.cli._strain import chosen_step
         from unturn.pictures.computing import Step
@@ -234,7 +235,7 @@ class _Job:
             if opened.steps is None:
                 raise UsageError(f"{opened.path} is not a series: --zero-step has nothing to measure from.")
             zero = opened.read(chosen_step(opened, str(zero_step), "--zero-step"))
-        return Step(result, requests, options, zero)
+        return Step(result, requests, options, zero, **of_plan)
 
     def _animate(
         self, opened: ResultFile, request: PictureRequest, options: StrainOptions, zero_step: int | None, target: Path,
