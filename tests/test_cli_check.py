@@ -162,14 +162,8 @@ def test_no_output_replaces_an_input(desk: Path) -> None:
 
 
 def test_data_on_the_standard_output_stands_alone(desk: Path) -> None:
-    command = [
-        sys.executable,
-        "-c",
-        "from unturn.cli import main; main()",
-        "check",
-        "good.vtu",
-        "limits.toml",
-    ]
+    program = f"import sys; sys.path.insert(0, {str(ROOT / 'src')!r}); from unturn.cli import main; main()"
+    command = [sys.executable, "-c", program, "check", "good.vtu", "limits.toml"]
     done = subprocess.run([*command, "--json", "-"], capture_output=True, text=True, check=True, timeout=120)
     assert json.loads(done.stdout)["schema"] == "unturn.verdict/1"
     assert "1 met of 1: PASSED" in done.stderr

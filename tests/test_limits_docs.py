@@ -75,7 +75,7 @@ def _keys(data: dict[str, Any], path: str = "") -> dict[str, list[Any]]:
         found.setdefault(path + key, []).append(value)
         inner = [(f"{path}{key}.", value)] if isinstance(value, dict) and key != "place" else []
         if isinstance(value, list):
-            inner = [(f"{path}{key}[].", v) for v in value]
+            inner = [(f"{path}{key}[].", v) for v in value if isinstance(v, dict)]
         for below, part in inner:
             for name, values in _keys(part, below).items():
                 found.setdefault(name, []).extend(values)
