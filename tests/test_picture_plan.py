@@ -84,7 +84,6 @@ def test_a_plan_is_drawn(tmp_path):
     front, cut = data["pictures"]
     assert front["range"] == cut["range"]  # shared
     assert front["extremes"] == []
-    assert cut["extremes"][0]["number"] == 620
     assert pixels_of(tmp_path / "front.png").shape == (480, 640, 3)
     result = unturn.strain(unturn.read(BRACKET), at="nodes", solve="linear", measures=["principal_strain"])
     with open(tmp_path / "cut.csv", newline="", encoding="utf-8") as file:
@@ -92,7 +91,9 @@ def test_a_plan_is_drawn(tmp_path):
     assert list(rows[0]) == ["node_position", "node_number", "x", "y", "z", "principal_strain_1"]
     values = np.array([float(r["principal_strain_1"]) for r in rows])
     np.testing.assert_array_equal(values, result.point_data["principal_strain"][:, 0])
-    assert max(values) == cut["extremes"][0]["value"]
+    (peak,) = cut["extremes"]
+    assert peak["value"] == max(values) == values[peak["position"]]
+    assert peak["number"] == unturn.read(BRACKET).point_data["node_number"][peak["position"]]
     np.testing.assert_array_equal([float(rows[9][k]) for k in "xyz"], result.points[9])
 
 
@@ -128,6 +129,36 @@ def test_a_plan_with_an_error_names_its_line(old, new, says):
     assert old in PLAN
     with pytest.raises(UsageError, match=says):
         parse_plan(PLAN.replace(old, new).encode(), "plan")
+
+
+REGIONS = """
+[regions.foot]
+box = { from = [0.01, -1, -1], to = [1, 1, 0.006] }
+
+[regions.hub]
+sphere = { center = [9, 9, 9], radius = 1 }
+"""
+
+
+def test_a_plan_defines_regions(tmp_path):
+    plan = parse_plan((PLAN + REGIONS).replace("extremes = true", 'only = "foot"').encode(), "plan")
+    result = unturn.read(BRACKET)
+    step = Step(result, plan.pictures, plan.options, None, plan.surface_poisson, plan.regions)
+    subject = step.subject(plan.pictures[1])
+    shown = np.flatnonzero(subject.shown(plan.pictures[1]))
+    points = np.asarray(result.points)
+    middle = np.empty((result.n_cells, 3))
+    for block in result.blocks:
+        middle[block.index] = points[block.connectivity[:, :8]].mean(axis=1)
+    inside = np.flatnonzero((middle[:, 0] >= 0.01) & (middle[:, 2] <= 0.006))
+    assert 20 < len(shown) < result.n_cells
+    assert len(np.setxor1d(shown, inside)) <= 0.1 * len(
+        shown
+    )  # the mean of the corners is not quite the centroid
+    (tmp_path / "plan.toml").write_text((PLAN + REGIONS).replace("extremes = true", 'only = "hub"'))
+    status, said = run(BRACKET, "--plan", tmp_path / "plan.toml", "-o", tmp_path)
+    assert status == 2
+    assert "picture 'cut': region 'hub': it holds 0 computed cells" in said
 
 
 def test_a_plan_has_a_picture_and_is_a_file(tmp_path):
