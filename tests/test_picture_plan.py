@@ -352,6 +352,7 @@ def test_the_scene_of_a_window_is_that_of_the_picture(tmp_path):
 
     fill(Plotter(), drawn)
     mesh, how = added[0]
+    assert how["scalars"] in mesh.array_names
     assert how["clim"] == pytest.approx([-1000, 1000])
     np.testing.assert_allclose(mesh["strain XX"], 1000)
     assert len(how["cmap"]) == 256
