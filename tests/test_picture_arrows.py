@@ -10,22 +10,16 @@ import pyvista
 
 from picture_reading import boxes, drawn, wanted
 from unturn.elements import ELEMENTS
+from unturn.errors import UsageError
 from unturn.io import read
 from unturn.io.vtk_result import vtk_from_result
-from unturn.pictures._arrows import (
-    Place,
-    _principal,
-    _rotation,
-    code_colours,
-    draw_arrows,
-    longest,
-    places,
-    seen_cells,
-)
+from unturn.pictures._arrows import Place, _principal, _rotation, draw_arrows, longest
 from unturn.pictures._division import tetrahedra_of
 from unturn.pictures._picture import Picture
+from unturn.pictures._seen import code_colours, decoded, places, seen_cells
 from unturn.pictures.computing import Step
 from unturn.pictures.drawing import ranged
+from unturn.pipeline import StrainOptions
 
 SAMPLES = Path(__file__).parent.parent / "sample_meshes"
 AT = np.array([100.0, 50.0])
@@ -81,7 +75,7 @@ def test_a_rotation_seen_from_the_side_is_an_axis_with_two_heads():
 @pytest.mark.source("PyVista 0.49: ray_trace and find_closest_cell say which cell is seen")
 def test_the_cell_behind_every_pixel_is_known():
     picture = picture_of(read(SAMPLES / "bracket_tets.vtu"), factor=0)
-    seen = picture.seen_cells()
+    seen = seen_cells(picture)
     grid = pyvista.wrap(vtk_from_result(picture.stage.result))
     surface = grid.extract_surface(nonlinear_subdivision=3, algorithm="dataset_surface")
     camera = picture.camera
@@ -104,8 +98,8 @@ def test_the_cell_behind_every_pixel_is_known():
 @pytest.mark.derived("a code of three bytes comes back as the number it was made of")
 def test_codes_of_cells_come_back():
     cells = np.array([0, 1, 254, 255, 256, 65535, 16_000_000])
-    assert (seen_cells(code_colours(cells)[None], 16_777_000)[0] == cells).all()
-    assert (seen_cells(np.zeros((2, 2, 3), dtype=np.uint8), 5) == -1).all()
+    assert (decoded(code_colours(cells)[None], 16_777_000)[0] == cells).all()
+    assert (decoded(np.zeros((2, 2, 3), dtype=np.uint8), 5) == -1).all()
 
 
 def test_each_cell_has_one_place_on_itself():
@@ -169,3 +163,16 @@ def test_a_solid_is_filled_by_its_tetrahedra(name, level):
     volumes = np.abs(np.einsum("ij,ij->i", np.cross(b - a, c - a), d - a)) / 6
     assert volumes.min() > 0
     assert volumes.sum() == pytest.approx(shape.volume)
+
+
+def test_arrows_live_where_they_are_computed_whatever_is_drawn(tmp_path):
+    how = {"measure": "displacement", "camera": "front", "factor": 0, "arrows": "principal"}
+    for at, place, n in (("centroid", "cell", 64), ("nodes", "point", 125)):
+        picture = picture_of(boxes(), at=at, **how)
+        assert (picture.arrows.association, len(picture.arrows.values)) == (place, n)
+        assert picture.longest == pytest.approx(1e-3)
+        drawn(boxes(), tmp_path / "p.png", at=at, **how)
+    with pytest.raises(UsageError, match="does not live on free faces"):
+        picture_of(boxes(), at="surface", **how)
+    with pytest.raises(UsageError, match="in the axes of the file"):
+        drawn(boxes(), tmp_path / "p.png", StrainOptions(frame="cylindrical z"), arrows="rotation")

@@ -15,6 +15,13 @@ from unturn.result import Result
 from unturn.surface import SURFACE_MEASURES
 
 DISPLACEMENT = "displacement"
+LOCATIONS: dict[str, str] = {
+    "centroid": "at element centroids",
+    "mean": "mean over each element",
+    "nodes": "recovered at the nodes",
+    "surface": "on free faces, at their centroids",
+}
+"""Where values live, in words."""
 
 
 @dataclass(frozen=True)
