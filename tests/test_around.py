@@ -14,10 +14,11 @@ from solved_problems import NU, corner_plate, pressed
 from test_elsewhere import angle_mesh, corner_field
 from test_nodal import TURN, quadratic
 from unturn import CellBlock, Result, cutout, kinematics
-from unturn.around import Asked, Trust, bound_of, groups_of, middles, trust_of, trust_on
+from unturn.around import Asked, Trust, bound_of, groups_of, trust_of, trust_on
 from unturn.cutout import Cutter
 from unturn.elements import ELEMENTS
 from unturn.model import Model
+from unturn.neighbourhood import middles
 from unturn.peaks import Peaks
 from unturn.pipeline import Computed, StrainOptions, compute
 from unturn.recovery import recover_gradient

@@ -318,7 +318,7 @@ def test_the_summary_schema_is_documented_key_by_key(desk: Path) -> None:
         "lever.xdmf --solve nonlinear --base hencky",
         "lever.xdmf --remove-rigid regions --frame 'cylindrical z'",
         "mixed.xdmf",
-        "bracket.vtu --at nodes --prefix n_",
+        "bracket_tets.vtu --at nodes --prefix n_",
         "bracket.vtu --at surface",
     )
     produced = [_json_of(f"unturn strain {c}") for c in commands]

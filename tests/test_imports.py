@@ -26,6 +26,7 @@ LAYERS = (
     ("fields", "regions", "jacobian", "written_regions"),
     ("recovery", "tensor_range", "rigid", "verdict"),
     ("trust", "peaks", "surface", "quadrature_points", "nodal", "cutout"),
+    ("neighbourhood",),
     ("agreement", "pipeline", "trial", "series"),
     ("around",),
     ("trusted",),
