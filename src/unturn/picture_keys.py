@@ -72,6 +72,13 @@ PICTURE_KEYS = (
 )  # fmt: skip
 """Everything a picture can be asked for."""
 
+STRAIN_OPTIONS = (
+    "base", "at", "recovery", "solve", "displacement", "displacement_scale", "coordinates", "plane", "axis", "poisson",
+    "equivalent_poisson", "remove_rigid", "rigid_to", "rigid_axis", "frame", "thermal_expansion", "temperature",
+    "reference_temperature", "alive", "skin", "threads",
+)  # fmt: skip
+"""The options of strain that pictures take."""
+
 
 @dataclass(frozen=True)
 class PictureRequest:

@@ -11,8 +11,9 @@ import typer
 
 from unturn.cli import _options as o
 from unturn.cli._picture_options import picture_options
-from unturn.cli._shared import EVERY, strain_options
+from unturn.cli._shared import strain_options
 from unturn.errors import UsageError
+from unturn.picture_keys import STRAIN_OPTIONS
 
 if TYPE_CHECKING:
     from unturn.io import ResultFile
@@ -22,7 +23,7 @@ if TYPE_CHECKING:
     from unturn.pipeline import StrainOptions
 
 
-@strain_options(*(name for name in EVERY if name != "measures"))
+@strain_options(*STRAIN_OPTIONS)
 @picture_options
 def picture(
     file: Annotated[Path, typer.Argument(metavar="FILE", help="Result file.", readable=False)],
