@@ -11,11 +11,11 @@ from numpy.typing import NDArray
 from unturn.errors import UsageError
 from unturn.measures import GEOMETRY, MEASURES
 from unturn.model import Model
-from unturn.picture_keys import PictureRequest
+from unturn.picture_keys import At, PictureRequest
 from unturn.pictures._measure import LOCATIONS, Wanted, directions_with, rotation_with, spoken
 from unturn.pictures._subject import Arrows
 from unturn.pictures._values import Values, values_of, values_with
-from unturn.pipeline import Computed, Place, StrainOptions
+from unturn.pipeline import Computed, StrainOptions
 from unturn.result import Result
 from unturn.summary import equivalent_form
 
@@ -43,7 +43,7 @@ def file_values(result: Result, what: Wanted) -> Values:
     return replace(values, name=f"{values.name}\narray of the file", short_unit="")
 
 
-def measure_values(computed: Computed, what: Wanted, at: Place, options: StrainOptions) -> Values:
+def measure_values(computed: Computed, what: Wanted, at: At, options: StrainOptions) -> Values:
     """Return a component of a measure.
 
     Raises
@@ -77,7 +77,7 @@ def measure_values(computed: Computed, what: Wanted, at: Place, options: StrainO
     return values_with(numbers, f"{name}\n{meaning}{frame}", measure.unit)
 
 
-def _held(computed: Computed, at: Place) -> tuple[dict[str, Floats], dict[str, tuple[str, ...]]]:
+def _held(computed: Computed, at: At) -> tuple[dict[str, Floats], dict[str, tuple[str, ...]]]:
     """Return the arrays at a place, and the names of their components."""
     if at == "surface":
         assert computed.surface is not None

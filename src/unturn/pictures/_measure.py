@@ -10,7 +10,8 @@ import numpy as np
 from unturn.errors import UsageError, close_matches
 from unturn.kinematics._finite import BASES
 from unturn.measures import GEOMETRY, MEASURES, SURFACE_AXES, choose_measures
-from unturn.pipeline import Place, StrainOptions
+from unturn.picture_keys import At
+from unturn.pipeline import StrainOptions
 from unturn.result import Result
 from unturn.surface import SURFACE_MEASURES
 
@@ -43,7 +44,7 @@ class Wanted:
     component: str = ""
 
 
-def wanted(name: str, result: Result, options: StrainOptions, at: Place) -> Wanted:
+def wanted(name: str, result: Result, options: StrainOptions, at: At) -> Wanted:
     """Return what a name stands for; a measure of the base that is asked for.
 
     Raises
@@ -71,7 +72,7 @@ def _split(name: str) -> list[tuple[str, str]]:
     return [(name, ""), (base, component)]
 
 
-def _components(array: str, at: Place) -> tuple[str, ...] | None:
+def _components(array: str, at: At) -> tuple[str, ...] | None:
     """Return the components of a measure, empty for a single number; None when there is no such measure."""
     if array == DISPLACEMENT:
         return ("", "X", "Y", "Z")
@@ -103,7 +104,7 @@ def _of_file(name: str, result: Result) -> Wanted:
     )
 
 
-def directions_with(array: str, base: str, at: Place) -> tuple[str, tuple[str, ...]]:
+def directions_with(array: str, base: str, at: At) -> tuple[str, tuple[str, ...]]:
     """Return the principal values that go with a measure, and the arrays of their directions; two on faces."""
     own = next((b for b in (*BASES, "mechanical") if array.endswith("_" + b)), None)
     names = [

@@ -14,14 +14,14 @@ from unturn.errors import UsageError
 from unturn.fields import compute_fields
 from unturn.model import Model
 from unturn.numbering import element_numbers, node_numbers
-from unturn.picture_keys import PictureRequest
+from unturn.picture_keys import At, PictureRequest
 from unturn.pictures._columns import arrows_of, displacement_values, file_values, measure_values
 from unturn.pictures._measure import LOCATIONS, Wanted, directions_with, rotation_with, wanted
 from unturn.pictures._range import Ends, ends_of
 from unturn.pictures._stage import Stage
 from unturn.pictures._subject import Subject
 from unturn.pictures._values import Values
-from unturn.pipeline import Computed, Place, StrainOptions, compute, model_of
+from unturn.pipeline import Computed, StrainOptions, compute, model_of
 from unturn.regions import named_regions
 from unturn.result import Result
 from unturn.written_regions.finder import RegionFinder
@@ -68,15 +68,15 @@ class Step:
         self.options = options or StrainOptions()
         self._surface_poisson, self._regions = surface_poisson, regions or {}
         self._percentiles = any(r.range.how == "percentile" for r in requests)
-        self._names: dict[Place, dict[str, None]] = {}
+        self._names: dict[At, dict[str, None]] = {}
         for request in requests:
             with request.told_where():
                 names = self._arrays(request)
             if names:
                 self._names.setdefault(request.at, {}).update(dict.fromkeys(names))
-        self._computed: dict[Place, Computed] = {}
+        self._computed: dict[At, Computed] = {}
         self._stages: dict[bool, Stage] = {}
-        self._columns: dict[tuple[Place, str], Values] = {}
+        self._columns: dict[tuple[At, str], Values] = {}
 
     def _arrays(self, request: PictureRequest) -> list[str]:
         """Return the measures that must be computed for a picture."""
@@ -90,7 +90,7 @@ class Step:
             names.append(rotation_with(what.array, self.options.base))
         return names
 
-    def computed(self, at: Place) -> Computed:
+    def computed(self, at: At) -> Computed:
         """Return the fields at a place."""
         if at not in self._computed:
             options = replace(self.options, at=at, measures=list(self._names[at]), base="small")
@@ -173,7 +173,7 @@ class Step:
         )
         return found.symmetric() if request.symmetric else found
 
-    def _values(self, what: Wanted, at: Place) -> Values:
+    def _values(self, what: Wanted, at: At) -> Values:
         if what.kind == "displacement":
             return displacement_values(self.model, what)
         if what.kind != "measure":
