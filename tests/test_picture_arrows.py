@@ -102,14 +102,27 @@ def test_codes_of_cells_come_back():
     assert (decoded(np.zeros((2, 2, 3), dtype=np.uint8), 5) == -1).all()
 
 
-def test_each_cell_has_one_place_on_itself():
+def test_each_cell_has_one_place_on_itself_and_large_values_come_first():
     seen = np.full((200, 300), -1)
     seen[20:180, 20:150], seen[20:180, 150:280] = 7, 9
-    found = places(seen, (0, 300, 0, 200), 0.5)
-    assert [p.position for p in found] == [7, 9]
+    seen[90:110, 140:160] = 3  # between the two
+    size = np.arange(10.0)
+    found = places(seen, (0, 300, 0, 200), 60.0, size)
+    assert [p.position for p in found] == [9, 7, 3]
     for place in found:
         column, row = (int(x) for x in place.at)
-        assert seen[200 - row, column] == place.position
+        assert seen[199 - row, column] == place.position
+    assert [p.position for p in places(seen, (0, 300, 0, 200), 100.0, size)] == [9, 7]
+    size[3] = 99
+    assert [p.position for p in places(seen, (0, 300, 0, 200), 100.0, size)] == [3]
+    assert [p.position for p in places(seen, (0, 140, 0, 200), 100.0, size)] == [7]
+    ring = np.full((100, 100), -1)
+    ring[10:90, 10:90] = 1
+    ring[20:80, 20:70] = 2
+    one, two = places(ring, (0, 100, 0, 100), 0.5, np.array([0, 5.0, 1.0]))
+    assert ring[99 - int(one.at[1]), int(one.at[0])] == one.position == 1
+    assert two.position == 2
+    assert places(np.full((9, 9), -1), (0, 9, 0, 9), 5.0, size) == []
 
 
 @pytest.mark.derived("a pull along x at Poisson's ratio 0.2: e1 = 1000 along x, e2 = e3 = -200 microstrain")
@@ -151,6 +164,28 @@ def test_the_arrows_of_a_rotation_are_its_axis(at, tmp_path):
     assert picture.longest * picture.arrows.scale == pytest.approx(np.degrees(2e-3))
     assert "0.115 degrees" in " ".join(picture.notes)
     drawn(turned, tmp_path / "p.png", measure="rotation_Y", arrows="rotation", at=at, camera="top")
+
+
+@pytest.mark.derived(
+    "F = R U with a stretch of 1.2 along x and a turn of 60 degrees about y: the direction turns with R"
+)
+@pytest.mark.parametrize(("factor", "turns"), [(1, True), (0, False), (2, False)])
+def test_directions_of_a_finite_strain_turn_with_the_part(factor, turns):
+    result = boxes()
+    angle = np.pi / 3
+    R = np.array([[np.cos(angle), 0, np.sin(angle)], [0, 1, 0], [-np.sin(angle), 0, np.cos(angle)]])
+    X = np.asarray(result.points, dtype=float)
+    result = result.with_arrays(point_data={"u": X @ (R @ np.diag([1.2, 1.0, 1.0])).T - X})
+    request = wanted(measure="principal_strain_1", arrows="principal", factor=factor)
+    subject = Step(result, [request], StrainOptions(base="hencky", solve="nonlinear")).subject(request)
+    first = subject.arrows.vectors[:, 0]
+    expected = R[:, 0] if turns else np.array([1.0, 0, 0])
+    np.testing.assert_allclose(np.abs(first @ expected), 1.0, atol=1e-9)
+    assert ("turned with the part" in subject.arrows.words) == turns
+    np.testing.assert_allclose(subject.arrows.values[:, 0], np.log(1.2), atol=1e-12)
+    almansi = wanted(measure="principal_strain_almansi_1", arrows="principal", factor=factor)
+    own = Step(result, [almansi], StrainOptions(solve="nonlinear")).subject(almansi).arrows
+    np.testing.assert_allclose(np.abs(own.vectors[:, 0] @ R[:, 0]), 1.0, atol=1e-9)
 
 
 @pytest.mark.derived("the tetrahedra fill the reference shape")

@@ -12,7 +12,15 @@ from unturn.errors import UsageError
 from unturn.measures import GEOMETRY, MEASURES
 from unturn.model import Model
 from unturn.picture_keys import At, PictureRequest
-from unturn.pictures._measure import LOCATIONS, Wanted, directions_with, rotation_with, spoken
+from unturn.pictures._measure import (
+    LOCATIONS,
+    TURNING,
+    Wanted,
+    directions_with,
+    rotation_with,
+    spoken,
+    turns_with,
+)
 from unturn.pictures._subject import Arrows
 from unturn.pictures._values import Values, values_of, values_with
 from unturn.pipeline import Computed, StrainOptions
@@ -65,7 +73,7 @@ def measure_values(computed: Computed, what: Wanted, at: At, options: StrainOpti
                 f"{what.array} has no component {what.component!r} here; its components are {', '.join(labels)}."
             )
         numbers = np.ascontiguousarray(numbers[:, labels.index(what.component)])
-    name = f"{spoken(what.array)} {what.component}".rstrip()
+    name = spoken(what.array, what.component)
     frame = f"\naxes: {options.frame}" if options.frame and what.component else ""
     if what.array in GEOMETRY:
         unit = "unit of the mesh" if what.array == "element_volume" else "1"
@@ -87,8 +95,18 @@ def _held(computed: Computed, at: At) -> tuple[dict[str, Floats], dict[str, tupl
     return found.arrays, found.components
 
 
-def arrows_of(computed: Computed, request: PictureRequest, what: Wanted, options: StrainOptions) -> Arrows:
-    """Return the directions that a picture asks for."""
+_PRINCIPAL = "principal directions{}, heads outwards for stretch, inwards for shortening"
+_ROTATION = "axes of rotation by the right hand, arcs where they point to the eye or away"
+
+
+def arrows_of(
+    computed: Computed, request: PictureRequest, what: Wanted, options: StrainOptions, factor: float
+) -> Arrows:
+    """Return the directions that a picture asks for.
+
+    Directions of finite strains that belong to the undeformed part are turned with it where the displacement is drawn
+    as it is (`factor` 1); those of Almansi's strain belong to the deformed part already.
+    """
     arrays, _ = _held(computed, request.at)
     front = "surface_" if request.at == "surface" else ""
     place: Literal["cell", "point"] = "point" if request.at == "nodes" else "cell"
@@ -96,9 +114,34 @@ def arrows_of(computed: Computed, request: PictureRequest, what: Wanted, options
         name, directions = directions_with(what.array, options.base, request.at)
         vectors = np.stack([arrays[front + n] for n in directions], axis=1)
         values = arrays[front + name][:, : vectors.shape[1]]
-        return Arrows("principal", place, vectors, values, 1e6, "microstrain")
+        words = ""
+        if turns_with(name) and factor == 1.0:
+            vectors, words = turned(vectors, arrays[front + TURNING]), " turned with the part"
+        return Arrows("principal", place, vectors, values, 1e6, "microstrain", _PRINCIPAL.format(words))
     turn = arrays[front + rotation_with(what.array, options.base)]
     angle = np.linalg.norm(turn, axis=1)
     with np.errstate(invalid="ignore", divide="ignore"):
         axis = turn / angle[:, None]
-    return Arrows("rotation", place, axis[:, None], angle[:, None], float(np.degrees(1.0)), "degrees")
+    return Arrows(
+        "rotation", place, axis[:, None], angle[:, None], float(np.degrees(1.0)), "degrees", _ROTATION
+    )
+
+
+def turned(vectors: Floats, rotation: Floats) -> Floats:
+    """Return vectors `(n, k, 3)` turned by rotation vectors `(n, 3)`: angle times axis.
+
+    Notes
+    -----
+    Rodrigues' formula, `v cos a + (n x v) sin a + n (n . v)(1 - cos a)`.
+
+    Examples
+    --------
+    >>> turned(np.array([[[1.0, 0, 0]]]), np.array([[0, 0, np.pi / 2]])).round(12)
+    array([[[0., 1., 0.]]])
+    """
+    angle = np.linalg.norm(rotation, axis=1)[:, None, None]
+    axis = rotation[:, None] / np.where(angle > 0, angle, 1.0)
+    along = np.sum(axis * vectors, axis=2, keepdims=True)
+    return np.asarray(
+        vectors * np.cos(angle) + np.cross(axis, vectors) * np.sin(angle) + axis * along * (1 - np.cos(angle))
+    )

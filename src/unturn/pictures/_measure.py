@@ -115,24 +115,39 @@ def directions_with(array: str, base: str, at: At) -> tuple[str, tuple[str, ...]
     return found[0], tuple(found[1:])
 
 
+TURNING = "finite_rotation"
+"""The rotation by which directions turn with the part."""
+
+
+def turns_with(array: str) -> bool:
+    """Return whether the directions of principal values belong to the undeformed part and turn with it."""
+    return array in MEASURES and MEASURES[array].finite and not array.endswith("_almansi")
+
+
 def rotation_with(array: str, base: str) -> str:
     """Return the rotation vector that goes with a measure."""
     finite = base != "small" or (array in MEASURES and MEASURES[array].finite)
     return "finite_rotation" if finite else "rotation"
 
 
-_SPOKEN = {"green_lagrange": "Green-Lagrange", "hencky": "Hencky", "biot": "Biot", "almansi": "Almansi"}
+_SPOKEN = {
+    "mechanical": "mechanical",
+    "green_lagrange": "Green-Lagrange",
+    "hencky": "Hencky",
+    "biot": "Biot",
+    "almansi": "Almansi",
+}
 
 
-def spoken(array: str) -> str:
-    """Return the name of an array as the legend says it.
+def spoken(array: str, component: str = "") -> str:
+    """Return the name of an array and a component of it as the legend says it.
 
     Examples
     --------
-    >>> spoken("equivalent_strain_green_lagrange"), spoken("principal_strain_mechanical")
-    ('equivalent strain, Green-Lagrange', 'principal strain mechanical')
+    >>> spoken("equivalent_strain_green_lagrange"), spoken("principal_strain_hencky", "1"), spoken("strain", "XX")
+    ('equivalent strain, Green-Lagrange', 'principal strain 1, Hencky', 'strain XX')
     """
     for base, words in _SPOKEN.items():
         if array.endswith("_" + base):
-            return f"{array.removesuffix('_' + base).replace('_', ' ')}, {words}"
-    return array.replace("_", " ")
+            return f"{spoken(array.removesuffix('_' + base), component)}, {words}"
+    return f"{array.replace('_', ' ')} {component}".rstrip()

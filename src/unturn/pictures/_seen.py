@@ -18,14 +18,21 @@ if TYPE_CHECKING:
     from unturn.pictures._picture import Picture
 
 Ints = NDArray[np.int64]
-SPACING = 60.0  # of the places where arrows are drawn, in units of the page
+SPACING = 52.0  # of the places where arrows are drawn, in units of the page
 
 
 def arrow_places(picture: Picture) -> list[Place]:
-    """Return where arrows are drawn: at seen cells, or at their nodes."""
-    assert picture.arrows is not None
-    found = places(seen_cells(picture), picture.frame.box, unit_of(picture.size))
-    return found if picture.arrows.association == "cell" else [_at_node(picture, place) for place in found]
+    """Return where arrows are drawn: at seen cells, or at their nodes; the largest values find their places first."""
+    arrows = picture.arrows
+    assert arrows is not None
+    size = np.nan_to_num(np.abs(arrows.values)).max(axis=1)
+    if arrows.association == "point":
+        of_cells = np.zeros(picture.stage.result.n_cells)
+        for block in picture.stage.result.blocks:
+            of_cells[block.index] = size[block.connectivity].max(axis=1)
+        size = of_cells
+    found = places(seen_cells(picture), picture.frame.box, SPACING * unit_of(picture.size), size)
+    return found if arrows.association == "cell" else [_at_node(picture, place) for place in found]
 
 
 def _at_node(picture: Picture, place: Place) -> Place:
@@ -63,20 +70,31 @@ def code_colours(cells: Ints) -> NDArray[np.uint8]:
     return np.stack([code >> 16 & 255, code >> 8 & 255, code & 255], axis=1).astype(np.uint8)
 
 
-def places(seen: Ints, box: Box, unit: float) -> list[Place]:
-    """Return where arrows are drawn: on a grid of pixels, each cell once, nearest to the middle of its places."""
+def places(seen: Ints, box: Box, spacing: float, size: NDArray[np.float64]) -> list[Place]:
+    """Return the middles of seen cells, no two nearer to each other than `spacing`; large ones of `size` come first."""
     height = seen.shape[0]
-    step = SPACING * unit
-    columns = np.arange(box[0] + step / 2, box[1], step).astype(int)
-    rows = np.arange(height - box[3] + step / 2, height - box[2], step).astype(int)
-    if not len(columns) or not len(rows):
-        return []
-    row, column = (g.reshape(-1) for g in np.meshgrid(rows, columns, indexing="ij"))
-    cell = seen[row, column]
+    row, column = np.nonzero(seen >= 0)
+    keep = (column >= box[0]) & (column < box[1]) & (row >= height - box[3]) & (row < height - box[2])
+    row, column = row[keep], column[keep]
+    cells, which, count = np.unique(seen[row, column], return_inverse=True, return_counts=True)
+    middle = np.stack([np.bincount(which, column), np.bincount(which, row)], axis=1) / count[:, None]
+    taken: dict[tuple[int, int], list[NDArray[np.float64]]] = {}
     found = []
-    for position in np.unique(cell[cell >= 0]):
-        of = np.flatnonzero(cell == position)
-        pixels = np.stack([column[of], height - row[of]], axis=1).astype(np.float64)
-        nearest = np.argmin(np.linalg.norm(pixels - pixels.mean(axis=0), axis=1))
-        found.append(Place(pixels[nearest], int(position)))
+    for k in np.argsort(-size[cells], kind="stable"):
+        a, b = (int(x // spacing) for x in middle[k])
+        near = [q for i in (a - 1, a, a + 1) for j in (b - 1, b, b + 1) for q in taken.get((i, j), ())]
+        if any(np.hypot(*(q - middle[k])) < spacing for q in near):
+            continue
+        taken.setdefault((a, b), []).append(middle[k])
+        found.append(Place(_on_itself(seen, int(cells[k]), middle[k]), int(cells[k])))
     return found
+
+
+def _on_itself(seen: Ints, cell: int, middle: NDArray[np.float64]) -> NDArray[np.float64]:
+    """Return the middle of what is seen of a cell, from the lower left corner; its nearest pixel where it lies outside."""
+    column, row = middle
+    if seen[int(row), int(column)] != cell:
+        rows, columns = np.nonzero(seen == cell)
+        k = int(np.argmin(np.hypot(columns - column, rows - row)))
+        column, row = columns[k], rows[k]
+    return np.array([column + 0.5, seen.shape[0] - row - 0.5])

@@ -26,7 +26,7 @@ def _no_regions(name: str) -> Ints:
 class Arrows:
     """Directions that are drawn: `vectors` `(n, k, 3)` of unit length, `values` `(n, k)` with sign, the unit shown.
 
-    They live on cells or on points, whatever the number that is drawn lives on.
+    They live on cells or on points, whatever the number that is drawn lives on. `words` says what they are.
     """
 
     kind: Literal["principal", "rotation"]
@@ -35,6 +35,7 @@ class Arrows:
     values: Floats
     scale: float
     short_unit: str
+    words: str
 
 
 @dataclass(frozen=True, eq=False)

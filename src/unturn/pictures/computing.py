@@ -16,7 +16,15 @@ from unturn.model import Model
 from unturn.numbering import element_numbers, node_numbers
 from unturn.picture_keys import At, PictureRequest
 from unturn.pictures._columns import arrows_of, displacement_values, file_values, measure_values
-from unturn.pictures._measure import LOCATIONS, Wanted, directions_with, rotation_with, wanted
+from unturn.pictures._measure import (
+    LOCATIONS,
+    TURNING,
+    Wanted,
+    directions_with,
+    rotation_with,
+    turns_with,
+    wanted,
+)
 from unturn.pictures._range import Ends, ends_of
 from unturn.pictures._stage import Stage
 from unturn.pictures._subject import Subject
@@ -85,7 +93,7 @@ class Step:
         names = [what.array] if what.kind == "measure" else []
         if request.arrows == "principal":
             values, directions = directions_with(what.array, self.options.base, request.at)
-            names += [values, *directions]
+            names += [values, *directions, *([TURNING] if turns_with(values) else [])]
         elif request.arrows == "rotation":
             names.append(rotation_with(what.array, self.options.base))
         return names
@@ -150,13 +158,12 @@ class Step:
         location = LOCATIONS[request.at if what.kind == "measure" else "centroid"]
         if what.kind != "measure":
             location = "at the nodes" if association == "point" else "of each cell"
-        arrows = (
-            None
-            if request.arrows == "none"
-            else arrows_of(self.computed(request.at), request, what, self.options)
-        )
+        stage, arrows = self.stage(of_faces), None
+        if request.arrows != "none":
+            factor = stage.shape(request.factor).factor
+            arrows = arrows_of(self.computed(request.at), request, what, self.options, factor)
         return Subject(
-            self.stage(of_faces), self._columns[key], association, location, self._numbers(association, of_faces),
+            stage, self._columns[key], association, location, self._numbers(association, of_faces),
             self._weights(what), self._region(of_faces), arrows, of_faces,
         )  # fmt: skip
 
