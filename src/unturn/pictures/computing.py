@@ -114,6 +114,9 @@ class Step:
         """The model of the step."""
         for at in self._names:
             return self.computed(at).fields.model
+        if self._zero is not None:
+            options = replace(self.options, measures=["strain"], base="small")
+            return compute(self.result, options, zero=self._zero).fields.model
         return model_of(self.result, self.options)
 
     @cached_property
