@@ -185,7 +185,8 @@ def test_a_skin_has_its_own_frame_and_thickness(tmp_path: Path) -> None:
 )
 def test_the_solver_is_compared_on_the_whole_motion(tmp_path: Path) -> None:
     from unturn import strain
-    from unturn.pipeline import StrainOptions, compute
+    from unturn.options import StrainOptions
+    from unturn.pipeline import compute
     from unturn.summary import summarise
 
     plain = io.read(LEVER)

@@ -17,7 +17,8 @@ from test_nodal import ALPHA, HEAT, TURN, quadratic, two_parts
 from unturn import CellBlock, Result, displacement_gradient, kinematics, strain
 from unturn.elements import ELEMENTS
 from unturn.elsewhere import Elsewhere, ElsewhereExtreme
-from unturn.pipeline import StrainOptions, compute
+from unturn.options import StrainOptions
+from unturn.pipeline import compute
 from unturn.summary import Summary, SummaryOptions, summarise, summary_data
 from unturn.summary_text import summary_text
 from unturn.trusted import Growth
@@ -339,7 +340,7 @@ def test_measures_without_extremes_still_tell_the_error() -> None:
     assert row.endswith("%")
 
 
-KEYS = {"location", "extremes", "estimated_error_percent", "notes"}
+KEYS = {"location", "extremes", "estimated_error_percent", "largest_jump_at_border", "notes"}
 EXTREME = {"region", "statistic", "array", "value", "plus_minus", "place", "at"}
 GROWTH = {
     "location", "region", "statistic", "array", "extreme", "cell", "element", "value", "plus_minus", "point", "node",

@@ -12,7 +12,7 @@ import meshes
 from unturn.elements import ELEMENTS
 from unturn.errors import UsageError
 from unturn.model import Model, build_model
-from unturn.regions import bodies, find_regions, merge_coincident, named_regions, tag_arrays
+from unturn.regions import bodies, find_regions, judged_together, merge_coincident, named_regions, tag_arrays
 
 # Derived: stated definitions of regions; every cell that is judged is in exactly one tag, body or the whole.
 
@@ -116,6 +116,26 @@ def test_nodes_of_no_cell_change_nothing() -> None:
     assert cells_of(find_regions(m, everything(m))) == {"body 1": [0, 1, 2], "body 2": [3, 4, 5]}
 
 
+@pytest.mark.derived("every pair of points, one by one")
+@pytest.mark.parametrize("width", [3, 4])
+@pytest.mark.parametrize("origin", [0.0, 5e5])
+def test_coincident_points_by_brute_force(origin: float, width: int) -> None:
+    random = np.random.default_rng(3)
+    grid = np.stack(np.meshgrid(*[np.arange(4.0)] * width), -1).reshape(-1, width)
+    again = grid[random.permutation(len(grid))[:40]]
+    move = random.normal(size=again.shape)
+    move *= (
+        random.choice([0.0, 2e-9, 4e-9, 1e-7], len(again))[:, None] / np.linalg.norm(move, axis=1)[:, None]
+    )
+    points = origin + random.permutation(np.concatenate([grid, again + move, again]))
+    label, tolerance = merge_coincident(points)
+    near = np.linalg.norm(points[:, None] - points[None], axis=2) <= tolerance
+    for _ in range(3):  # chains
+        near = near @ near
+    np.testing.assert_array_equal(label, near.argmax(axis=1))
+    assert 0 < (label != np.arange(len(points))).sum() < 80
+
+
 def test_merging_names_the_lowest_and_tells_the_tolerance() -> None:
     points = np.array([[0.0, 0, 0], [10, 0, 0], [1e-9, 0, 0], [np.nan, 0, 0], [10, 0, 1e-7]])
     label, tolerance = merge_coincident(points)
@@ -150,7 +170,12 @@ def test_nodes_repeated_by_the_writer_make_no_bodies() -> None:
 
 def test_many_bodies_are_no_regions() -> None:
     m = model(row_of_hexahedra(gaps=tuple(range(1, 120)), n=120))
-    assert [r.name for r in find_regions(m, everything(m))] == ["whole"]
+    found = find_regions(m, everything(m))
+    assert [(r.name, r.n_bodies) for r in found] == [("whole", 120)]
+    assert "the mesh is 120 bodies, more than the 50 that are judged apart" in judged_together(found)
+    few = model(row_of_hexahedra(gaps=(4,)))
+    assert judged_together(find_regions(few, everything(few))) == ""
+    assert len(bodies(m, everything(m))) == 120
 
 
 def test_regions_by_name() -> None:

@@ -16,15 +16,15 @@ import numpy as np
 from numpy.typing import NDArray
 
 from unturn.cutout import Cutter
-from unturn.kinematics._finite import BASES
 from unturn.kinematics._symmetric import Floats
-from unturn.measures import MEASURES
+from unturn.measures import MEASURES, base_of
 from unturn.model import Model
 from unturn.neighbourhood import Location, Surroundings
 from unturn.nodal import FOLD
-from unturn.pipeline import Computed, computed_cells
+from unturn.pipeline import Computed
 from unturn.recovery import sheets
 from unturn.regions import Region, find_regions
+from unturn.rigid_parts import computed_cells
 from unturn.trust import MOST_CHANGE
 
 Ints = NDArray[np.int64]
@@ -176,11 +176,6 @@ def bound_of(
     if measure == "surface_equivalent_strain" and poisson is not None:
         change *= math.sqrt(1.0 + 2.0 * (poisson / (1.0 - poisson)) ** 2)
     return Bound((base,), change)
-
-
-def base_of(measure: str) -> str:
-    """Return the finite base of a measure by its name, empty for small ones."""
-    return next((b for b in BASES if measure.endswith(f"_{b}")), "")
 
 
 def trust_of(

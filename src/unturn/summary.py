@@ -11,14 +11,15 @@ import numpy as np
 
 from unturn._version import __version__
 from unturn.agreement import Agreement, compare_with_solver
-from unturn.elsewhere import Elsewhere, find_elsewhere
+from unturn.elsewhere import Border, Elsewhere, find_elsewhere
 from unturn.fields import CellDiagnostics, CellFields
 from unturn.measures import MEASURES
 from unturn.model import Model
 from unturn.numbering import Numbering, element_numbers
 from unturn.pipeline import Computed
-from unturn.regions import Region, find_regions, named_regions, unused_tags
+from unturn.regions import Region, find_regions, judged_together, named_regions, unused_tags
 from unturn.rigid import Removal
+from unturn.series import SERIES_MEASURES
 from unturn.statistics import LOW_PERCENTILES, PERCENTILES, Statistics, statistics
 from unturn.trial import Trial, try_remedies
 from unturn.trusted import Column, Growth, Trusts, Which, growths, trusted
@@ -43,7 +44,8 @@ class SummaryOptions:
 class RegionSummary:
     """One region: its verdict and statistics by column name (`principal_strain_1`, `equivalent_strain` ...).
 
-    `trust` tells how far to trust the extremes of the statistics, see `trusted`.
+    `trust` tells how far to trust the extremes of the statistics, see `trusted`; `error_percent` is the estimated global
+    error of each `strain_error` that was asked for.
     """
 
     region: Region
@@ -51,6 +53,7 @@ class RegionSummary:
     trials: tuple[Trial, ...]
     volume: float
     statistics: dict[str, Statistics]
+    error_percent: dict[str, float] = field(default_factory=dict)
     trust: Trusts = field(default_factory=dict)
 
     def plus_minus(self, name: str, which: Which) -> float:
@@ -122,7 +125,10 @@ def summarise(
         if verdict.level == "does not hold" and options.solve != "linear" and whole_motion:
             trials = try_remedies(fields, counted, options.solve, {"at": options.at, "threads": threads})
         counted_regions.append(counted)
-        made.append(RegionSummary(region, verdict, tuple(trials), float(np.nansum(d.volume[cells])), found))
+        errors = {} if computed.estimates is None else computed.estimates.errors
+        percent = {name: error.percentage(cells) for name, error in errors.items()}
+        volume = float(np.nansum(d.volume[cells]))
+        made.append(RegionSummary(region, verdict, tuple(trials), volume, found, percent))
     made, grown = _trusted(computed, columns, counted_regions, made, groups, options.full, threads)
     numbers = element_numbers(fields.model.result)
     elsewhere = find_elsewhere(
@@ -190,7 +196,7 @@ def foremost(regions: Sequence[RegionSummary], most: int = MOST_SHOWN) -> Sequen
 
 def leading(r: RegionSummary) -> str:
     """Return the name of the number by which a region is ranked: its equivalent strain, of whatever base."""
-    names = [n for n in r.statistics if n.startswith("equivalent_strain")]
+    names = [n for n in r.statistics if n.startswith("equivalent_strain") and n not in SERIES_MEASURES]
     first = [*names, "principal_strain_1", "angle_of_turn"]
     return next(n for n in first if n in r.statistics)
 
@@ -203,6 +209,8 @@ def _peak(r: RegionSummary) -> float:
 def _percentages(name: str, signed: bool, full: bool) -> Sequence[float]:
     if full:
         return (*LOW_PERCENTILES, *PERCENTILES) if signed else PERCENTILES
+    if name in SERIES_MEASURES:
+        return ()
     return (99.9,) if name.startswith("equivalent_strain") or name == "principal_strain_1" else ()
 
 
@@ -210,7 +218,7 @@ def _columns(fields: CellFields, d: CellDiagnostics, full: bool) -> dict[str, Co
     """Return every number that gets statistics."""
     columns: dict[str, Column] = {}
     for name, values in fields.arrays.items():
-        measure = MEASURES.get(name)
+        measure = MEASURES.get(name) or SERIES_MEASURES.get(name)
         signed = measure is not None and measure.signed
         if name.startswith("principal_direction") or name == "displacement_gradient":
             continue
@@ -265,8 +273,8 @@ def _warnings(fields: CellFields, d: CellDiagnostics, regions: list[RegionSummar
                 f"{r.region.name}: the stored precision blurs the strain by +-{_micro(r.verdict.noise)} microstrain, "
                 f"and 99 % of the volume is below {_micro(r.verdict.size)}: write the result with more digits"
             )
-    unused = unused_tags(fields.model.result)
-    return [*found, unused] if unused else found
+    together = unused_tags(fields.model.result) or judged_together([r.region for r in regions])
+    return [*found, together] if together else found
 
 
 def _beyond_linear(removals: Sequence[Removal], regions: list[RegionSummary]) -> list[str]:
@@ -337,7 +345,8 @@ def summary_data(summary: Summary) -> dict[str, Any]:
         "other_dimensions": {f"{k}D": n for k, n in summary.other_dimensions.items()},
         "notes": list(fields.notes),
         "warnings": list(summary.warnings),
-        "units": {"strain": "1", "rotation": "radian", "angle_of_turn": "radian", "volume": "length unit of the file"},
+        "units": {"strain": "1", "rotation": "radian", "rate": "1/time of the file", "angle_of_turn": "radian",
+                  "volume": "length unit of the file"},
         "caution": CAUTION,
     }  # fmt: skip
 
@@ -369,6 +378,7 @@ def _region_data(r: RegionSummary, summary: Summary) -> dict[str, Any]:
                 for t in r.trials
             ],
         },
+        "estimated_error_percent": r.error_percent,
         "statistics": {name: _statistics_data(name, r, summary) for name in r.statistics},
     }
 
@@ -386,7 +396,15 @@ def _elsewhere_data(found: Elsewhere | None) -> dict[str, Any] | None:
             for e in found.extremes
         ],
         "estimated_error_percent": found.error_percent or {},
+        "largest_jump_at_border": None if found.border is None else _border_data(found.border),
         "notes": list(found.notes),
+    }  # fmt: skip
+
+
+def _border_data(border: Border) -> dict[str, Any]:
+    jump = border.jump
+    return {
+        "value": jump.value, "regions": list(jump.regions), "point": jump.point, "node": border.node, "at": list(border.at),
     }  # fmt: skip
 
 

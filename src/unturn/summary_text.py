@@ -13,7 +13,7 @@ from unturn.agreement import Agreement
 from unturn.elsewhere import ElsewhereExtreme
 from unturn.fields import CellFields
 from unturn.measures import MEASURES
-from unturn.pipeline import OWN_MESH
+from unturn.options import OWN_MESH
 from unturn.rigid import Removal
 from unturn.summary import (
     CAUTION,
@@ -201,6 +201,10 @@ _FINITE_ENDS = tuple(
 )
 
 
+_BESIDE = ("strain_error", "strain_jump", "equivalent_strain_increment", "accumulated")
+"""Rows that are not values of the strain of this step: no bound of theirs is known, and no error that turning makes."""
+
+
 def _rows(summary: Summary, shown: Sequence[RegionSummary]) -> list[tuple[str, str, Which]]:
     """Return label, statistics name and which extreme of the rows of the table."""
     rows = table_rows(shown[0].statistics, summary.fields.components.get("strain", ()))
@@ -230,7 +234,7 @@ def _table(summary: Summary) -> list[str]:
         rows.append(
             ["  at x, y, z", *(_position(getattr(r.statistics[name], at), summary, digits) for r in shown)]
         )
-        if not summary.options.mode and not name.endswith(_FINITE_ENDS):
+        if not summary.options.mode and not name.endswith(_FINITE_ENDS) and not name.startswith(_BESIDE):
             rows.append(
                 ["  error there", *(_error(getattr(r.statistics[name], at), r, summary) for r in shown)]
             )
@@ -241,6 +245,11 @@ def _table(summary: Summary) -> list[str]:
     for label, name, which in _FACTORS:
         if name in shown[0].statistics:
             rows.append([label, *(_factor(r, name, which) for r in shown)])
+    for name in shown[0].error_percent if summary.elsewhere is None else ():
+        words = BASE_WORDS[name.removeprefix("strain_error")]
+        rows.append(
+            [f"estimated error of the strain{words}", *(_percent(r.error_percent[name]) for r in shown)]
+        )
     left = " left" if summary.removals else ""
     rows.append([f"largest rotation{left}, degree", *(_rotation(r) for r in shown)])
     lines = _aligned(rows)
@@ -251,7 +260,8 @@ def _table(summary: Summary) -> list[str]:
 
 
 def _extreme(r: RegionSummary, name: str, which: Which) -> str:
-    return _bounded(getattr(r.statistics[name], which), r.plus_minus(name, which))
+    value = getattr(r.statistics[name], which)
+    return _micro(value) if name.startswith(_BESIDE) else _bounded(value, r.plus_minus(name, which))
 
 
 def _bounded(value: float, plus_minus: float) -> str:
@@ -265,6 +275,8 @@ def _rotation(r: RegionSummary) -> str:
 
 def _suspected(summary: Summary, location: str, shown: Sequence[RegionSummary]) -> list[str]:
     """Return a line for each peak of the table that is suspected singular, and how many there are in other regions."""
+    if not shown:
+        return []
     names = [r.region.name for r in shown]
     in_table = {(name, which) for _, name, which in _rows(summary, shown)}
     here = [
@@ -312,6 +324,13 @@ def _elsewhere(summary: Summary) -> list[str]:
         errors = (_percent(found.error_percent[r.region.name]) for r in shown)
         rows.append(["estimated error of the strain", *errors])
     lines = ["", *_aligned(rows)]
+    if found.border is not None:
+        jump, border = found.border.jump, found.border
+        lines.append(
+            f"largest jump at a border: {_micro(jump.value)} microstrain (norm of the difference) between "
+            f"{jump.regions[0]} and {jump.regions[1]} at {_point(jump.point, border.node)}, "
+            f"{_coordinates(border.at, digits)}"
+        )
     if len(shown) < len(ranked):
         lines.append(
             f"{len(ranked) - len(shown)} more regions, whose peaks at cells are smaller: all are in --json"
@@ -371,8 +390,8 @@ def _micro(value: float) -> str:
     return f"{micro:.0f}" if abs(micro) >= 100 else f"{micro:.3g}"
 
 
-def _above(value: float) -> str:
-    """Return a bound with two digits, never rounded down.
+def _above(value: float, least: float = 1e-6) -> str:
+    """Return a bound with two digits, never rounded down; less than `least` is nothing.
 
     Examples
     --------
@@ -381,7 +400,7 @@ def _above(value: float) -> str:
     """
     if not math.isfinite(value):
         return " -"
-    if value < 1e-6:
+    if value < least:
         return "0"
     unit = 10.0 ** (math.floor(math.log10(value)) - 1)
     rounded = math.ceil(value / unit * (1.0 - 1e-12)) * unit
@@ -438,7 +457,7 @@ def _tail(summary: Summary) -> list[str]:
     lines = [_PLUS_MINUS]
     values = "values of the table" if summary.request.get("at") in ("nodes", *OWN_MESH) else "values"
     values += f" at element {_location(options.at)}; shear is tensor shear"
-    if any(name.startswith("equivalent_strain") for name in fields.arrays):
+    if any("equivalent" in name for name in fields.arrays):
         form = equivalent_form(options.equivalent_poisson)
         if any(name.endswith("_mechanical") for name in fields.arrays):
             form += " (mechanical: of the total less the free thermal strain)"

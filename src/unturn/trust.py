@@ -11,7 +11,7 @@ from collections.abc import Iterator
 from dataclasses import dataclass, replace
 from itertools import pairwise
 from threading import Lock
-from typing import Literal
+from typing import Literal, NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
@@ -131,7 +131,7 @@ def strain_error(
     n = model.result.n_cells
     volume, error, strain, plus_minus = (np.full(n, np.nan) for _ in range(4))
     departure = np.zeros(len(shares))
-    nodal = _components(recovered.values, model.plane, base)
+    nodal = strain_of(recovered.values, model.plane, base)
     reach = [np.zeros(cells.shape) for cells in shares.cells]
     lock = Lock()
     for block, cells, out in zip(model.blocks, shares.cells, reach):
@@ -169,7 +169,7 @@ def strain_components(H: Floats, plane: Plane | None) -> Floats:
     return e
 
 
-def _components(H: Floats, plane: Plane | None, base: str) -> Floats:
+def strain_of(H: Floats, plane: Plane | None, base: str) -> Floats:
     """Return what `strain_components` does, of a finite strain or of the rotation where that is asked for."""
     if not base:
         return strain_components(H, plane)
@@ -240,7 +240,7 @@ class _Job:
     def components(self, H: Floats, point: PointGradient, chunk: ElementChunk) -> Floats:
         """Return what is compared, of a gradient at a point of the elements."""
         if not self.in_space:
-            return _components(H, self.model.plane, self.base)
+            return strain_of(H, self.model.plane, self.base)
         return _of_finite(chunk.finite(replace(point, H=H)), self.base)
 
     def at_nodes(self, chunk: ElementChunk, cells: NDArray[np.int32]) -> Floats:
@@ -269,13 +269,32 @@ class _Job:
         if self.mean and self.in_space:
             middle = _of_finite(mean_gradient(chunk, self.middle, finite=True)[0], self.base)
         elif self.mean:
-            middle = _components(mean_gradient(chunk, self.middle)[0], self.model.plane, self.base)
+            middle = strain_of(mean_gradient(chunk, self.middle)[0], self.model.plane, self.base)
         else:
             middle, _ = next(self.strains(chunk, self.middle))
         return (volume, error, strain), departure, norms(nodal - middle[:, None]).T
 
 
-def strain_jump(recovered: Recovered, threads: int | None = None) -> tuple[Floats, Floats]:
+class StrainJump(NamedTuple):
+    """The largest difference between the strains that elements have where they meet.
+
+    Attributes
+    ----------
+    cells
+        `(n_cells,)` the largest jump at the nodes of each cell; NaN where not computed.
+    points
+        `(n_points,)` `max norm(e_a - e_b)` over the pairs of elements of one group that meet at the node, e the strain
+        of each element itself at the node; the largest over its groups; NaN at nodes of no computed cell.
+    shares
+        `(n_shares,)` the same of each share of the nodes, that is of one group.
+    """
+
+    cells: Floats
+    points: Floats
+    shares: Floats
+
+
+def strain_jump(recovered: Recovered, threads: int | None = None, base: str = "") -> StrainJump:
     """Return the largest difference between the strains that elements have where they meet.
 
     Parameters
@@ -284,18 +303,13 @@ def strain_jump(recovered: Recovered, threads: int | None = None) -> tuple[Float
         Tells which elements meet at which node; elements of different groups or dimensions are not compared.
     threads
         None: all processors.
+    base
+        Of which strain, as in `strain_error`.
 
-    Returns
-    -------
-    cells
-        `(n_cells,)` the largest jump at the nodes of each cell; NaN where not computed.
-    points
-        `(n_points,)` `max norm(e_a - e_b)` over the pairs of elements of one group that meet at the node, e the strain
-        of each element itself at the node; the largest over its groups; NaN at nodes of no computed cell.
     """
     shares, model = recovered.shares, recovered.shares.model
     jump = np.full(len(shares), np.nan)
-    meeting = _Meeting(recovered)
+    meeting = _Meeting(recovered, base)
 
     def work(a: int, b: int) -> None:
         with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
@@ -317,14 +331,15 @@ def strain_jump(recovered: Recovered, threads: int | None = None) -> tuple[Float
             usable = recovered.usable[block.index]
             cells[block.index[usable]] = np.fmax.reduce(jump[own[usable]], axis=1)
             np.fmax.at(points, block.connectivity[usable], jump[own[usable]])
-    return cells, points
+    return StrainJump(cells, points, jump)
 
 
 class _Meeting:
     """Pairs of share and cell, sorted by share, and the strain of the cell there."""
 
-    def __init__(self, recovered: Recovered) -> None:
-        self.shares = shares = recovered.shares
+    def __init__(self, recovered: Recovered, base: str) -> None:
+        self.shares, self.base = recovered.shares, base
+        shares = self.shares
         model = shares.model
         share = np.concatenate([c.reshape(-1) for c in shares.cells])
         used = [np.repeat(recovered.usable[b.index], c.shape[1]) for b, c in zip(model.blocks, shares.cells)]
@@ -358,6 +373,9 @@ class _Meeting:
                 mine = local == node
                 which = cell[mine]
                 chunk = model.chunk(block, block.connectivity[which], block.index[which])
-                H = chunk.at(samples.gradients[node], samples.functions[node]).H
-                out[:, here[mine]] = strain_components(H, model.plane)
+                point = chunk.at(samples.gradients[node], samples.functions[node])
+                if self.base and block.kind in ("surface", "line"):
+                    out[:, here[mine]] = _of_finite(chunk.finite(point), self.base)
+                else:
+                    out[:, here[mine]] = strain_of(point.H, model.plane, self.base)
         return out

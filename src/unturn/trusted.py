@@ -39,6 +39,10 @@ _ROWS: tuple[tuple[str, str, Which], ...] = tuple(
         (f"max shear, largest{words}", f"max_shear_strain{suffix}", "maximum"),
         (f"volumetric, largest{words}", f"volumetric_strain{suffix}", "maximum"),
         (f"volumetric, smallest{words}", f"volumetric_strain{suffix}", "minimum"),
+        (f"strain error, largest{words}", f"strain_error{suffix}", "maximum"),
+        (f"strain jump, largest{words}", f"strain_jump{suffix}", "maximum"),
+        (f"equivalent of increment, largest{words}", f"equivalent_strain_increment{suffix}", "maximum"),
+        (f"accumulated equivalent, largest{words}", f"accumulated_equivalent_strain{suffix}", "maximum"),
     )
 )
 _MOTION: tuple[tuple[str, Which], ...] = (

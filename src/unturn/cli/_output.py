@@ -53,6 +53,7 @@ def check_places(places: Sequence[Path | None], inputs: Sequence[Path]) -> None:
         A folder or a name in a folder that does not exist, one of the input files, or a place named twice.
     """
     taken: set[str] = set()
+    behind = _Inputs(inputs)
     for path in places:
         if path is None:
             continue
@@ -66,8 +67,44 @@ def check_places(places: Sequence[Path | None], inputs: Sequence[Path]) -> None:
             raise UsageError(f"{path} is a folder; give the name of a file in it.")
         if not path.parent.is_dir():
             raise UsageError(f"{path}: there is no folder {path.parent}; make it first.")
-        if any(_same_place(path, file) for file in inputs):
-            raise UsageError(f"{path} is an input file and would be lost; give another name.")
+        behind.check(path, "give another name")
+
+
+class _Inputs:
+    """The input files and, when first asked for, the files behind them."""
+
+    def __init__(self, files: Sequence[Path]) -> None:
+        self._files = files
+        self._behind: dict[Path, Sequence[Path]] = {}
+
+    def check(self, path: Path, advice: str, named: bool = False) -> None:
+        """Refuse a place where an input lies, or the numbers of one.
+
+        Parameters
+        ----------
+        path
+            The place.
+        advice
+            What to do.
+        named
+            An input may be replaced, with what is behind it, where it was named as the output.
+        """
+        files = [file for file in self._files if not (named and _same_place(path, file))]
+        if any(_same_place(path, file) for file in files):
+            raise UsageError(f"{path} is an input file and would be lost; {advice}.")
+        for file in files if os.path.lexists(path) else ():
+            if any(_same_place(path, behind) for behind in self._of(file)):
+                raise UsageError(f"{path} holds numbers of the input {file} and would be lost; {advice}.")
+
+    def _of(self, file: Path) -> Sequence[Path]:
+        if file not in self._behind:
+            from unturn.io import files_behind
+
+            try:
+                self._behind[file] = files_behind(file)
+            except OSError:  # it is told where the file is read
+                self._behind[file] = []
+        return self._behind[file]
 
 
 def is_folder(path: Path) -> bool:
@@ -94,7 +131,7 @@ class Places:
     """Where results go, so that none is written over another file of the same call."""
 
     def __init__(self, asked: Path | None, inputs: Sequence[Path], others: Sequence[Path | None]) -> None:
-        self._asked, self._inputs = asked, inputs
+        self._asked, self._inputs, self._behind = asked, inputs, _Inputs(inputs)
         self._taken = {os.path.realpath(p): "of the picture or the JSON" for p in others if p is not None}
 
     def of(self, source: Path, suffix: str, added: str = "strain") -> Path:
@@ -116,6 +153,7 @@ class Places:
             raise UsageError(
                 f"{source}: its result would replace {out}, which is an input too; say where it goes with -o."
             )
+        self._behind.check(out, "give another place with -o", named=True)
         place = os.path.realpath(out)
         if place in self._taken:
             raise UsageError(

@@ -12,7 +12,8 @@ from unturn.errors import UsageError
 from unturn.frames import parse_frame
 from unturn.kinematics._symmetric import Floats
 from unturn.measures import MEASURES, choose_measures
-from unturn.pipeline import OWN_MESH, Computed, StrainOptions, compute
+from unturn.options import OWN_MESH
+from unturn.pipeline import Computed, StrainOptions, compute
 from unturn.verdicts.compare_arrays import SideBySide, columns
 from unturn.verdicts.differences import Pair, Where
 from unturn.verdicts.directions import is_direction, turned, values_of

@@ -11,10 +11,11 @@ import numpy as np
 from unturn.errors import UnturnError
 from unturn.fields import CellDiagnostics
 from unturn.model import Model
-from unturn.pipeline import Computed, StrainOptions, compute, computed_cells
+from unturn.pipeline import Computed, StrainOptions, compute
 from unturn.regions import Region, find_regions
 from unturn.result import Result
 from unturn.rigid import RigidMotion
+from unturn.rigid_parts import computed_cells
 from unturn.surface import SURFACE_MEASURES
 from unturn.verdict import Verdict, judge
 from unturn.verdicts.limit import At, Limits, Quantity
