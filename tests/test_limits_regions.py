@@ -10,7 +10,7 @@ import pytest
 
 from limits_samples import checked, grid, one, written
 from unturn.result import CellBlock, Result
-from unturn.verdicts.region_kinds import REGION_KINDS
+from unturn.written_regions.kinds import REGION_KINDS
 
 N = 4
 A, B, C = (a.ravel() for a in np.meshgrid(*[np.arange(N)] * 3, indexing="ij"))

@@ -19,8 +19,9 @@ from unturn.io.vtk_result import result_from_vtk, vtk_from_result
 from unturn.model import PlaneOptions, build_model
 from unturn.pictures import Camera, draw
 from unturn.pictures._camera import directions, fit
-from unturn.pictures._colours import ABOVE, BELOW, NO_VALUE, choose_range, colour_table
+from unturn.pictures._colours import ABOVE, BELOW, NO_VALUE, colour_table
 from unturn.pictures._label import free_place
+from unturn.pictures._range import choose_range
 from unturn.pictures._values import fitted_factor
 from unturn.result import CellBlock, Result
 

@@ -5,7 +5,7 @@ Delegation only: a mesh becomes a `Result`, a function of `unturn` works on it, 
 
 from __future__ import annotations
 
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 import pyvista
 
@@ -13,6 +13,9 @@ from unturn._api import strain
 from unturn.io.vtk_arrays import update_attributes
 from unturn.io.vtk_result import result_from_vtk, vtk_from_result
 from unturn.result import Result
+
+if TYPE_CHECKING:
+    from unturn.pictures.image import Image
 
 
 class UnturnAccessor:
@@ -80,6 +83,38 @@ class UnturnAccessor:
         update_attributes(mesh.GetPointData(), found.point_data, "point", found.component_names)
         update_attributes(mesh.GetCellData(), found.cell_data, "cell", found.component_names)
         return mesh
+
+    def picture(self, **asked: Any) -> Image:
+        """Return a picture of the mesh, drawn without a screen; notebooks show it.
+
+        Parameters
+        ----------
+        **asked
+            The options of ``unturn picture`` with underscores, and the keywords of `unturn.strain`: ``measure``,
+            ``camera``, ``factor``, ``cut``, ``range``, ``at``, ``displacement`` ...
+
+        Returns
+        -------
+        unturn.pictures.image.Image
+            `save` writes it, `png` holds its bytes, `drawn` what was drawn.
+
+        Raises
+        ------
+        DisplacementError, UsageError, InputError, MissingExtraError
+            As `unturn.pictures.image.picture` says.
+
+        Examples
+        --------
+        >>> import pyvista
+        >>> import unturn._accessor  # not needed once the package is installed
+        >>> mesh = pyvista.ImageData(dimensions=(3, 3, 3)).cast_to_unstructured_grid()
+        >>> mesh.point_data["u"] = mesh.points * [1e-3, -0.3e-3, -0.3e-3]
+        >>> mesh.unturn.picture(camera="front", size="480x480").png[1:4]
+        b'PNG'
+        """
+        from unturn.pictures.image import picture
+
+        return picture(result_from_vtk(self._mesh), **asked)
 
 
 for _kind in (

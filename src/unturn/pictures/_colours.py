@@ -8,8 +8,6 @@ from dataclasses import dataclass
 import numpy as np
 from numpy.typing import NDArray
 
-from unturn.errors import UsageError
-
 Floats = NDArray[np.float64]
 
 ABOVE = (0.902, 0.224, 0.106)
@@ -19,6 +17,8 @@ INK = (0.12, 0.13, 0.16)
 
 # CIELAB lightness, a, b from the lowest to the highest value: straw, moss, petrol, night.
 _ANCHORS = np.array([[94, -3, 22], [72, -22, 22], [46, -20, -10], [17, 12, -32]], dtype=np.float64)
+# Two-sided: apricot, grey, plum.
+_TWO_SIDED = np.array([[92, 11, 45], [58, 0, 0], [22, 38, -40]], dtype=np.float64)
 N_COLOURS = 256
 _ONE_SIDED = 10.0  # a range reaches this much further below zero than above: as good as negative
 
@@ -45,11 +45,15 @@ def srgb_from_lab(lab: Floats) -> Floats:
 
 
 @functools.cache
-def colour_table() -> NDArray[np.uint8]:
-    """Return the `(256, 3)` bytes of the map, equal steps of CIELAB apart, dark for high values."""
+def colour_table(two_sided: bool = False) -> NDArray[np.uint8]:
+    """Return the `(256, 3)` bytes of a map, equal steps of CIELAB apart, dark for high values.
+
+    The two-sided one goes from light to dark too, so that grey print keeps the sign, and is without colour in its middle.
+    """
+    anchors = _TWO_SIDED if two_sided else _ANCHORS
     t = np.linspace(0, 1, 2001)
-    knots = np.linspace(0, 1, len(_ANCHORS))
-    lab = np.stack([np.interp(t, knots, _ANCHORS[:, k]) for k in range(3)], axis=1)
+    knots = np.linspace(0, 1, len(anchors))
+    lab = np.stack([np.interp(t, knots, anchors[:, k]) for k in range(3)], axis=1)
     way = np.concatenate([[0.0], np.cumsum(np.linalg.norm(np.diff(lab, axis=0), axis=1))])
     even = np.interp(np.linspace(0, way[-1], N_COLOURS), way, t)
     lab = np.stack([np.interp(even, t, lab[:, k]) for k in range(3)], axis=1)
@@ -70,6 +74,10 @@ class Range:
         Number of values that are not finite.
     count
         Number of all values.
+    words
+        How the range was chosen.
+    two_sided
+        Whether its middle stands out.
     """
 
     low: float
@@ -78,51 +86,19 @@ class Range:
     below: int
     missing: int
     count: int
+    words: str = ""
+    two_sided: bool = False
 
     @property
     def dark_low(self) -> bool:
         """Whether the dark end is the low one: where all that matters is negative."""
-        return self.low < 0 and -self.low >= _ONE_SIDED * max(self.high, 0.0)
+        return not self.two_sided and self.low < 0 and -self.low >= _ONE_SIDED * max(self.high, 0.0)
 
     @property
     def colours(self) -> NDArray[np.uint8]:
         """Colours `(256, 3)` from low to high; the dark end is the one far from zero."""
-        table = colour_table()
+        table = colour_table(self.two_sided)
         return table[::-1] if self.dark_low else table
-
-
-_FAR = 1.25  # the range is cut where the extreme is this much larger than the percentile
-
-
-def choose_range(values: Floats, given: tuple[float, float] | None = None) -> Range:
-    """Return the range of `values` `(n,)`, which always holds 0: from the smallest to the largest.
-
-    An end that lies far beyond 99.9 % of the values is drawn in to them; ends are rounded outwards to two digits.
-
-    Raises
-    ------
-    UsageError
-        A `given` range that is none.
-    """
-    finite = np.sort(values[np.isfinite(values)])
-    missing = len(values) - len(finite)
-    if given is not None:
-        low, high = given
-        if not (np.isfinite(low) and np.isfinite(high) and low < high):
-            raise UsageError(f"the colour range {low} to {high}: give two numbers, the lower one first.")
-    elif not len(finite):
-        low = high = 0.0
-    else:
-        high = round_up(_drawn_in(finite)) if finite[-1] > 0 else 0.0
-        low = -round_up(_drawn_in(-finite[::-1])) if finite[0] < 0 else 0.0
-    return Range(low, high, int((finite > high).sum()), int((finite < low).sum()), missing, len(values))
-
-
-def _drawn_in(ascending: Floats) -> float:
-    """Return the largest value, or the one 99.9 % do not exceed when that is far below it."""
-    most = float(ascending[int(np.ceil(0.999 * len(ascending))) - 1])
-    largest = float(ascending[-1])
-    return most if most > 0 and largest > _FAR * most else largest
 
 
 def round_up(value: float) -> float:

@@ -2,18 +2,33 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
+
 import numpy as np
 
 from unturn.pictures._camera import Camera
 from unturn.pictures._colours import ABOVE, BELOW, INK, NO_VALUE, Range
 from unturn.pictures._numbers import nice_step, ticks, written
-from unturn.pictures._page import Page
+from unturn.pictures._page import Page, unit_of
 from unturn.pictures._values import Values
 
 _SOFT = (0.32, 0.33, 0.37)
+_RULE = (0.8, 0.8, 0.82)
 LEGEND_WIDTH = 330
 HEAD = 118
-FOOT = 112
+_FOOT = 112
+_LINE = 22
+_LEFT = 190  # where the words below the model start
+
+
+def foot_height(n_lines: int) -> float:
+    """Return the height of what is below the model, in units of the page."""
+    return _FOOT + _LINE * (max(n_lines, 1) - 1)
+
+
+def letters(size: tuple[int, int]) -> int:
+    """Return how many letters a line below the model holds."""
+    return round((size[0] / unit_of(size) - _LEFT - 40) / 9.0)
 
 
 def head(page: Page, title: str, subtitle: str) -> None:
@@ -21,11 +36,11 @@ def head(page: Page, title: str, subtitle: str) -> None:
     u, (width, height) = page.unit, page.size
     page.text(title, 40 * u, height - 58 * u, 27 * u, bold=True, room=width - 80 * u)
     page.text(subtitle, 40 * u, height - 92 * u, 17 * u, colour=_SOFT, room=width - 80 * u)
-    page.line(np.array([[40 * u, height - 106 * u], [width - 40 * u, height - 106 * u]]), (0.8, 0.8, 0.82), u)
+    page.line(np.array([[40 * u, height - 106 * u], [width - 40 * u, height - 106 * u]]), _RULE, u)
 
 
-def colour_bar(page: Page, values: Values, found: Range, location: str, noun: str) -> None:
-    """Draw the colour bar with its name, unit and place, and what lies outside it; `noun` is what is counted."""
+def colour_bar(page: Page, values: Values, found: Range, location: str, noun: str, bottom: float) -> None:
+    """Draw the colour bar with name, unit and place, and what lies outside; `noun` is counted, `bottom` left free."""
     u, (width, height) = page.unit, page.size
     left, room = width - (LEGEND_WIDTH - 20) * u, (LEGEND_WIDTH - 60) * u
     name, *remarks = values.name.splitlines()
@@ -33,7 +48,7 @@ def colour_bar(page: Page, values: Values, found: Range, location: str, noun: st
     for line in page.wrapped(name, 20 * u, room, bold=True):
         page.text(line, left, y, 20 * u, bold=True, room=room)
         y -= 27 * u
-    for line in (*remarks, values.unit, location):
+    for line in (*remarks, values.unit, location, found.words):
         for part in page.wrapped(line, 16 * u, room):
             page.text(part, left, y, 16 * u, colour=_SOFT, room=room)
             y -= 22 * u
@@ -41,7 +56,7 @@ def colour_bar(page: Page, values: Values, found: Range, location: str, noun: st
     if found.above:
         words = f"above {written(found.high * values.scale)}: {_counted(found.above, noun)}"
         y = _swatch(page, left, y, ABOVE, words, room) - 8 * u
-    low = (170 + 28 * ((found.below > 0) + (found.missing > 0))) * u
+    low = (bottom + 58 + 28 * ((found.below > 0) + (found.missing > 0))) * u
     if found.above + found.below + found.missing < found.count:
         _bar(page, values, found, (left, low, y))
         y = low - 24 * u
@@ -90,23 +105,49 @@ def _strips(left: float, right: float, levels: np.ndarray) -> np.ndarray:
     return np.stack([np.stack(c, axis=1) for c in corners], axis=1)
 
 
-def foot(page: Page, camera: Camera, words: str) -> None:
-    """Draw axes, a scale bar, and how the shape is drawn."""
+def border(page: Page, box: tuple[int, int, int, int]) -> None:
+    """Draw the border of a view that does not show the whole model."""
+    left, right, low, high = box
+    page.line(
+        np.array([[left, low], [right, low], [right, high], [left, high], [left, low]]), _RULE, page.unit
+    )
+
+
+def aside(page: Page, box: tuple[int, int, int, int], lines: Sequence[str]) -> None:
+    """Say in the upper left corner of the view which extremes lie outside of it."""
+    u, (left, _, _, high) = page.unit, box
+    for k, words in enumerate(f"outside this view: {line}" for line in lines):
+        base = high - (30 + 28 * k) * u
+        page.box(
+            left + 8 * u,
+            base - 7 * u,
+            left + 22 * u + page.width(words, 15 * u),
+            base + 20 * u,
+            (1, 1, 1),
+            0.85,
+        )
+        page.text(words, left + 15 * u, base, 15 * u)
+
+
+def foot(page: Page, camera: Camera, lines: Sequence[str]) -> None:
+    """Draw axes, a scale bar, and what is said below the model."""
     u, (width, _) = page.unit, page.size
-    _axes(page, camera, (92 * u, 66 * u))
-    left = 190 * u
+    raised = (foot_height(len(lines)) - _FOOT) * u
+    _axes(page, camera, (92 * u, 66 * u + raised / 2))
+    left = _LEFT * u
     length = nice_step(200 * u * camera.pixel, 1) if camera.pixel > 0 else 0.0
     if length > 200 * u * camera.pixel * 1.6:
         length /= 2
     across = length / camera.pixel
-    base = 70 * u
+    base = 70 * u + raised
     page.line(
         np.array([[left, base + 6 * u], [left, base], [left + across, base], [left + across, base + 6 * u]]),
         INK,
         2 * u,
     )
     page.text(f"{written(length)} (length unit of the file)", left, base - 27 * u, 15 * u, colour=_SOFT)
-    page.text(words, left, 20 * u, 16 * u, room=width - left - 40 * u)
+    for k, words in enumerate(reversed(lines)):
+        page.text(words, left, (20 + _LINE * k) * u, 16 * u, room=width - left - 40 * u)
 
 
 def _axes(page: Page, camera: Camera, centre: tuple[float, float]) -> None:

@@ -41,17 +41,19 @@ class Mark:
     visible: bool
 
 
-def extremes(values: Floats) -> list[tuple[str, int]]:
-    """Return kind and position of the extremes: the largest if positive, the smallest if negative."""
+def extremes(values: Floats, both: bool = False) -> list[tuple[str, int]]:
+    """Return kind and position of the extremes: the largest if positive, the smallest if negative, or both."""
     finite = np.isfinite(values)
     if not finite.any():
         return []
     high = int(np.argmax(np.where(finite, values, -np.inf)))
     low = int(np.argmin(np.where(finite, values, np.inf)))
-    found = []
-    if values[high] > 0 or values[low] >= 0:
+    found: list[tuple[str, int]] = []
+    if values[high] == values[low] == 0.0 and not both:
+        return found
+    if both or values[high] > 0 or values[low] >= 0:
         found.append(("largest", high))
-    if values[low] < 0:
+    if both or values[low] < 0:
         found.append(("smallest", low))
     return found
 

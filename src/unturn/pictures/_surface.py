@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from dataclasses import dataclass
 from typing import Any
 
@@ -15,6 +16,7 @@ from unturn.result import Result
 Floats = NDArray[np.float64]
 POSITION = "position"
 VALUE = "value"
+_ORIGINAL = "original point"
 _SMOOTH_BELOW = (
     6_000  # faces up to which curved faces are drawn as 64 pieces each; 16 up to ten times as many
 )
@@ -28,7 +30,7 @@ class Skin:
     ----------
     surface
         `vtkPolyData` of flat pieces (and lines); cell array ``position`` tells the file position of the mesh
-        cell each belongs to, point array ``value`` the nodal value.
+        cell each belongs to; point arrays are the nodal values that were asked for.
     edges
         `vtkPolyData` of the edges of the cells.
     body
@@ -40,70 +42,107 @@ class Skin:
     body: Any
 
 
+class Faces:
+    """The free faces of solids, and all other cells; found once for every choice of cells."""
+
+    def __init__(self, result: Result) -> None:
+        self._grid = grid_of(result)
+        self._found: dict[bytes, Any] = {}
+
+    def skin(
+        self, points: Floats, keep: NDArray[np.bool_], nodal: Mapping[str, Floats], edges: bool = True
+    ) -> Skin:
+        """Return the visible part of the cells `keep` `(n_cells,)`.
+
+        Parameters
+        ----------
+        points
+            `(n_points, 3)` where the points are put.
+        keep
+            Which cells there are.
+        nodal
+            `(n_points,)` values by name that the surface carries, by the functions of the faces.
+        edges
+            Whether every cell gets points of its own, and its edges are found.
+        """
+        faces = self._moved(keep, points, nodal)
+        n = faces.GetNumberOfCells()
+        curved = not _is_linear(faces)
+        level = (3 if n <= _SMOOTH_BELOW else 2 if n <= 10 * _SMOOTH_BELOW else 1) if curved else 0
+        body = _flattened(faces, level)
+        if not edges:
+            return Skin(body, None, body)
+        apart = _flattened(_separated(faces), level)
+        return Skin(apart, _boundaries(apart), body)
+
+    def nodes(self, keep: NDArray[np.bool_]) -> NDArray[np.int64]:
+        """Return the nodes of what is seen of some cells."""
+        from vtkmodules.util.numpy_support import vtk_to_numpy
+
+        return np.asarray(vtk_to_numpy(self._of(keep).GetPointData().GetArray(_ORIGINAL)))
+
+    def _moved(self, keep: NDArray[np.bool_], points: Floats, nodal: Mapping[str, Floats]) -> Any:
+        from vtkmodules.vtkCommonDataModel import vtkUnstructuredGrid
+
+        faces, own = self._of(keep), self.nodes(keep)
+        moved = vtkUnstructuredGrid()
+        moved.CopyStructure(faces)
+        moved.GetCellData().AddArray(faces.GetCellData().GetArray(POSITION))
+        moved.SetPoints(vtk_points(points[own]))
+        for name, values in nodal.items():
+            moved.GetPointData().AddArray(named(name, values[own]))
+        return moved
+
+    def _of(self, keep: NDArray[np.bool_]) -> Any:
+        """Return the faces of some cells as a grid that keeps curved faces curved."""
+        from vtkmodules.vtkFiltersCore import vtkExtractCells
+        from vtkmodules.vtkFiltersGeometry import vtkUnstructuredGridGeometryFilter
+
+        key = np.packbits(keep).tobytes()
+        if key not in self._found:
+            grid = self._grid
+            if not keep.all():
+                choose = vtkExtractCells()
+                choose.SetInputData(grid)
+                cells: Any = np.flatnonzero(keep)
+                choose.SetCellIds(cells, len(cells))
+                choose.Update()
+                grid = choose.GetOutput()
+            faces = vtkUnstructuredGridGeometryFilter()
+            faces.SetInputData(grid)
+            faces.Update()
+            self._found[key] = faces.GetOutput()
+        return self._found[key]
+
+
 def grid_of(result: Result) -> Any:
-    """Return a `vtkUnstructuredGrid` of the result's cells without any array."""
+    """Return a `vtkUnstructuredGrid` of the result's cells whose only arrays are the file positions."""
     from vtkmodules.vtkCommonDataModel import vtkUnstructuredGrid
 
     bare = vtkUnstructuredGrid()
     bare.CopyStructure(vtk_from_result(result))
+    bare.GetCellData().AddArray(named(POSITION, np.arange(result.n_cells, dtype=np.int64)))
+    bare.GetPointData().AddArray(named(_ORIGINAL, np.arange(result.n_points, dtype=np.int64)))
     return bare
 
 
-def skin_of(
-    grid: Any, points: Floats, keep: NDArray[np.bool_], values: Floats | None, edges: bool = True
-) -> Skin:
-    """Return the visible part of the cells `keep` `(n_cells,)` with the points put at `points` `(n, 3)`."""
-    faces = _faces(_moved(grid, points, values), keep)
-    n = faces.GetNumberOfCells()
-    curved = not _is_linear(faces)
-    level = (3 if n <= _SMOOTH_BELOW else 2 if n <= 10 * _SMOOTH_BELOW else 1) if curved else 0
-    body = _flattened(faces, level)
-    if not edges:
-        return Skin(body, None, body)
-    apart = _flattened(_separated(faces), level)
-    return Skin(apart, _boundaries(apart), body)
+def named(name: str, values: NDArray[Any]) -> Any:
+    """Return a VTK array with a name."""
+    from vtkmodules.util.numpy_support import numpy_to_vtk
+
+    held = numpy_to_vtk(np.ascontiguousarray(values), deep=True)
+    held.SetName(name)
+    return held
 
 
-def _moved(grid: Any, points: Floats, values: Floats | None) -> Any:
+def vtk_points(points: Floats) -> Any:
+    """Return VTK points."""
     from vtkmodules.util.numpy_support import numpy_to_vtk
     from vtkmodules.vtkCommonCore import vtkPoints
-    from vtkmodules.vtkCommonDataModel import vtkUnstructuredGrid
 
-    moved = vtkUnstructuredGrid()
-    moved.CopyStructure(grid)
     held = vtkPoints()
     held.SetData(numpy_to_vtk(np.ascontiguousarray(points), deep=True))
-    moved.SetPoints(held)
-    number = numpy_to_vtk(np.arange(grid.GetNumberOfCells(), dtype=np.int64), deep=True)
-    number.SetName(POSITION)
-    moved.GetCellData().AddArray(number)
-    if values is not None:
-        nodal = numpy_to_vtk(np.ascontiguousarray(values, dtype=np.float64), deep=True)
-        nodal.SetName(VALUE)
-        moved.GetPointData().AddArray(nodal)
-    return moved
-
-
-def _faces(grid: Any, keep: NDArray[np.bool_]) -> Any:
-    """Return the free faces of the solids, and all other cells, as a grid that keeps curved faces curved."""
-    from vtkmodules.vtkFiltersCore import vtkExtractCells
-    from vtkmodules.vtkFiltersGeometry import vtkUnstructuredGridGeometryFilter
-
-    if not keep.all():
-        choose = vtkExtractCells()
-        choose.SetInputData(grid)
-        from vtkmodules.vtkCommonCore import vtkIdList
-
-        ids = vtkIdList()
-        for cell in np.flatnonzero(keep):
-            ids.InsertNextId(int(cell))
-        choose.SetCellList(ids)
-        choose.Update()
-        grid = choose.GetOutput()
-    faces = vtkUnstructuredGridGeometryFilter()
-    faces.SetInputData(grid)
-    faces.Update()
-    return faces.GetOutput()
+    return held
 
 
 def _is_linear(grid: Any) -> bool:
@@ -124,7 +163,6 @@ def _flattened(grid: Any, level: int) -> Any:
 def _separated(grid: Any) -> Any:
     """Return the grid with nodes of its own for every cell, so that each cell's edges are boundaries."""
     from vtkmodules.util.numpy_support import numpy_to_vtk, vtk_to_numpy
-    from vtkmodules.vtkCommonCore import vtkPoints
     from vtkmodules.vtkCommonDataModel import vtkCellArray, vtkUnstructuredGrid
 
     nodes = vtk_to_numpy(grid.GetCells().GetConnectivityArray())
@@ -134,16 +172,12 @@ def _separated(grid: Any) -> Any:
         numpy_to_vtk(np.arange(len(nodes), dtype=np.int64), deep=True),
     )
     apart = vtkUnstructuredGrid()
-    points = vtkPoints()
-    points.SetData(numpy_to_vtk(vtk_to_numpy(grid.GetPoints().GetData())[nodes], deep=True))
-    apart.SetPoints(points)
+    apart.SetPoints(vtk_points(vtk_to_numpy(grid.GetPoints().GetData())[nodes]))
     apart.SetCells(numpy_to_vtk(types_of(grid), deep=True), cells)
     apart.GetCellData().ShallowCopy(grid.GetCellData())
-    nodal = grid.GetPointData().GetArray(VALUE)
-    if nodal is not None:
-        own = numpy_to_vtk(vtk_to_numpy(nodal)[nodes], deep=True)
-        own.SetName(VALUE)
-        apart.GetPointData().AddArray(own)
+    held = grid.GetPointData()
+    for k in range(held.GetNumberOfArrays()):
+        apart.GetPointData().AddArray(named(held.GetArrayName(k), vtk_to_numpy(held.GetArray(k))[nodes]))
     return apart
 
 

@@ -74,10 +74,13 @@ def values_of(
     k = _component(component, columns.shape[1], labels, f"{where}{association} array {array!r}")
     name = legend or array.replace("_", " ") + (f" {labels[k]}" if columns.shape[1] > 1 else "")
     unit = unit or (MEASURES[array].unit if array in MEASURES else "1" if array in GEOMETRY else "")
+    return values_with(columns[:, k].astype(np.float64), name, unit)
+
+
+def values_with(numbers: Floats, name: str, unit: str) -> Values:
+    """Return numbers with what the legend says of them; `unit` as in `unturn.measures.MEASURES`, or any other."""
     scale, long = _UNITS.get(unit, (1.0, unit))
-    return Values(
-        columns[:, k].astype(np.float64), name, scale, long, _SHORT.get(unit, "" if unit in _UNITS else unit)
-    )
+    return Values(numbers, name, scale, long, _SHORT.get(unit, "" if unit in _UNITS else unit))
 
 
 def _labels(array: str, n: int) -> tuple[str, ...]:
@@ -122,8 +125,8 @@ class Shape:
     fitted: bool
 
 
-def shape_of(result: Result, displacement: Floats | None, factor: float | None) -> Shape:
-    """Return the deformed points and the factor used.
+def shape_of(result: Result, rest: Floats, displacement: Floats | None, factor: float | None) -> Shape:
+    """Return the deformed points and the factor used; `rest` `(n_points, 3)` are the undeformed ones.
 
     Raises
     ------
@@ -132,7 +135,6 @@ def shape_of(result: Result, displacement: Floats | None, factor: float | None) 
     InputError
         No point with finite coordinates.
     """
-    rest = np.asarray(result.points, dtype=np.float64)
     if not np.isfinite(rest).all(axis=1).any():
         raise InputError(f"{result.path + ': ' if result.path else ''}no point has finite coordinates.")
     if displacement is None:

@@ -82,8 +82,10 @@ def _try(name: str) -> str | None:
     return lines[-1] if lines else f"a crash without a message (status {done.returncode})"
 
 
-def make_window(size: tuple[int, int]) -> tuple[Any, Any, Any]:
-    """Return an invisible render window, the renderer behind (white ground) and the one in front.
+def make_window(
+    size: tuple[int, int], ground: tuple[float, float, float] = (1.0, 1.0, 1.0)
+) -> tuple[Any, Any, Any, Any]:
+    """Return an invisible render window, its renderers: behind, in front of it, and flat over both.
 
     The window has `FINE` times as many pixels on a side as the picture.
     """
@@ -97,20 +99,36 @@ def make_window(size: tuple[int, int]) -> tuple[Any, Any, Any]:
     window.SetShowWindow(False)
     window.SetMultiSamples(0)
     window.SetSize(size[0] * FINE, size[1] * FINE)
-    window.SetNumberOfLayers(2)
-    back, front = vtkRenderer(), vtkRenderer()
-    back.SetBackground(1.0, 1.0, 1.0)
-    front.SetLayer(1)
-    for renderer in (back, front):
+    window.SetNumberOfLayers(4)
+    under, back, front, flat = (vtkRenderer() for _ in range(4))
+    under.SetBackground(*ground)
+    for layer, renderer in enumerate((under, back, front, flat)):
+        renderer.SetLayer(layer)
         window.AddRenderer(renderer)
-    return window, back, front
+    return window, back, front, flat
 
 
-def capture(window: Any) -> NDArray[np.uint8]:
-    """Return the picture, `(height, width, 3)` bytes, top row first, without steps in its lines."""
+def capture(window: Any, single: bool = False, over: Any = None) -> NDArray[np.uint8]:
+    """Return the picture, `(height, width, 3)` bytes, top row first, without steps in its lines.
+
+    Parameters
+    ----------
+    window
+        See `make_window`.
+    single
+        Of all pixels that were drawn for one of the picture only one is kept: no colours are mixed.
+    over
+        A renderer that alone is drawn, over what is there from the time before.
+    """
     from vtkmodules.util.numpy_support import vtk_to_numpy
     from vtkmodules.vtkRenderingCore import vtkWindowToImageFilter
 
+    if over is not None:
+        renderers = window.GetRenderers()
+        for k in range(renderers.GetNumberOfItems()):
+            renderer = renderers.GetItemAsObject(k)
+            renderer.SetDraw(renderer is over)
+        window.EraseOff()
     window.Render()
     grab = vtkWindowToImageFilter()
     grab.SetInput(window)
@@ -121,28 +139,20 @@ def capture(window: Any) -> NDArray[np.uint8]:
     image = grab.GetOutput()
     width, height, _ = image.GetDimensions()
     fine = vtk_to_numpy(image.GetPointData().GetScalars()).reshape(height, width, 3)[::-1]
+    if single:
+        return np.ascontiguousarray(fine[FINE // 2 :: FINE, FINE // 2 :: FINE])
     total = sum(fine[i::FINE, j::FINE].astype(np.uint16) for i in range(FINE) for j in range(FINE))
     return np.asarray((total + FINE * FINE // 2) // (FINE * FINE), dtype=np.uint8)
 
 
-def write_png(picture: NDArray[np.uint8], path: Path) -> None:
-    """Write a picture `(height, width, 3)` as PNG.
+def write_png(picture: NDArray[np.uint8], path: Path, dpi: float = 200.0) -> None:
+    """Write a picture `(height, width, 3)` as PNG with `dpi` pixels an inch.
 
     Raises
     ------
     OSError
         The file cannot be written.
     """
-    from vtkmodules.util.numpy_support import numpy_to_vtk, vtk_to_numpy
-    from vtkmodules.vtkCommonDataModel import vtkImageData
-    from vtkmodules.vtkIOImage import vtkPNGWriter
+    from PIL import Image
 
-    height, width, _ = picture.shape
-    image = vtkImageData()
-    image.SetDimensions(width, height, 1)
-    image.GetPointData().SetScalars(numpy_to_vtk(picture[::-1].reshape(-1, 3), deep=True))
-    writer = vtkPNGWriter()
-    writer.WriteToMemoryOn()
-    writer.SetInputData(image)
-    writer.Write()
-    path.write_bytes(vtk_to_numpy(writer.GetResult()).tobytes())
+    Image.fromarray(picture).save(path, format="PNG", dpi=(dpi, dpi))

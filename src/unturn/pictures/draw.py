@@ -12,12 +12,18 @@ from numpy.typing import NDArray
 
 from unturn.errors import UsageError
 from unturn.io._atomic import replacing
+from unturn.picture_keys import PictureRequest
 from unturn.pictures._camera import Camera
-from unturn.pictures._colours import choose_range
+from unturn.pictures._colours import Range
 from unturn.pictures._marks import Mark
 from unturn.pictures._picture import Picture
-from unturn.pictures._values import shape_of, values_of
+from unturn.pictures._range import choose_range
+from unturn.pictures._stage import Stage
+from unturn.pictures._subject import Subject
+from unturn.pictures._values import values_of
+from unturn.pictures._view import camera_words
 from unturn.pictures._window import usable_window, write_png
+from unturn.pictures._words import made_from
 from unturn.result import Association, Result
 
 Floats = NDArray[np.float64]
@@ -42,6 +48,8 @@ class Drawing:
         Where the model is seen from.
     marks
         The extremes that are marked.
+    camera_words
+        The text that asks for this camera again.
     """
 
     path: str
@@ -52,6 +60,7 @@ class Drawing:
     missing: int
     camera: Camera
     marks: tuple[Mark, ...]
+    camera_words: str = ""
 
     @property
     def out_of_range(self) -> int:
@@ -121,6 +130,7 @@ def draw(
     -----
     Colours are not shaded: the colour of a pixel is the colour of its value in the bar.
     """
+    request = PictureRequest(factor=factor, title=title, size=(size[0], size[1]))
     target = Path(path)
     _check(target, size)
     if camera is not None and camera.size != tuple(size):
@@ -128,24 +138,57 @@ def draw(
             f"the camera was made for {camera.size[0]} x {camera.size[1]} pixels, not {size[0]} x {size[1]}."
         )
     values = values_of(result, array, association, component, legend, unit)
-    shape = shape_of(result, displacement, factor)
+    where = location or ("at element centroids" if association == "cell" else "at the nodes")
+    stage = Stage(result, displacement)
+    subject = Subject(stage, values, "cell" if association == "cell" else "point", where, numbers)
+    stage.shape(factor)
     usable_window()
-    picture = Picture(result, values, shape, association, choose_range(values.numbers, colour_range), size)
-    if camera is not None:
-        picture.camera = camera
+    return draw_subject(subject, request, choose_range(values.numbers, colour_range), target, camera)
+
+
+def draw_subject(
+    subject: Subject,
+    request: PictureRequest,
+    found: Range,
+    target: Path,
+    camera: Camera | None = None,
+    title: str = "",
+) -> Drawing:
+    """Return what was drawn into a PNG file.
+
+    Parameters
+    ----------
+    subject, request, found
+        What is drawn, how, and in which colours.
+    target
+        The picture; written whole or not at all.
+    camera
+        The camera of another picture of this size, instead of the one that is asked for.
+    title
+        Stands before that of the request.
+    """
+    picture = Picture(subject, request, found, camera)
     with replacing(target) as work:
-        write_png(picture.render(title, location, numbers), work)
-    found = picture.range
+        words = full_title(subject, request, title)
+        write_png(picture.render(words, made_from(subject.stage.result)), work, request.dpi)
     return Drawing(
-        str(path),
-        shape.factor,
+        str(target),
+        picture.shape.factor,
         (found.low, found.high),
         found.above,
         found.below,
         found.missing,
         picture.camera,
         picture.marks,
+        camera_words(picture.camera, picture.frame),
     )
+
+
+def full_title(subject: Subject, request: PictureRequest, title: str = "") -> str:
+    """Return the words above a picture: `title` first, then what was asked for or the name of the number."""
+    name = subject.values.name.splitlines()[0]
+    own = request.title or name[:1].upper() + name[1:]
+    return f"{title}: {own}" if title else own
 
 
 def _check(target: Path, size: tuple[int, int]) -> None:

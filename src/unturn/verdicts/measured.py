@@ -16,10 +16,10 @@ from unturn.verdicts.certainty import Ask, Certainty, certainties
 from unturn.verdicts.columns import NoValues, Selection
 from unturn.verdicts.finding import Place
 from unturn.verdicts.limit import Limit, Quantity
-from unturn.verdicts.region_select import NoRegion
 from unturn.verdicts.statistic import STATISTICS, Got, Sample
 from unturn.verdicts.step import Step
 from unturn.verdicts.units import BoundAt
+from unturn.written_regions.select import NoRegion
 
 
 @dataclass(frozen=True)

@@ -7,8 +7,8 @@ from dataclasses import dataclass, field
 
 import numpy as np
 
-from unturn.verdicts.region_kinds import REGION_KINDS, WHOLE, RegionSpec, region_words
-from unturn.verdicts.region_select import Cells, Found, Mask, NoRegion
+from unturn.written_regions.kinds import REGION_KINDS, WHOLE, RegionSpec, region_words
+from unturn.written_regions.select import Cells, Found, Mask, NoRegion
 
 
 @dataclass(eq=False)

@@ -8,7 +8,7 @@ from dataclasses import dataclass
 from typing import Any
 
 from unturn.errors import UsageError, close_matches
-from unturn.verdicts.kinds import REQUIRED, Key, Kind, Wrong, shown
+from unturn.toml_kinds import REQUIRED, Key, Kind, Wrong, shown
 
 Path = tuple[str | int, ...]
 _LONGEST = 1000  # characters of a line in which a key or table is looked for

@@ -1,0 +1,150 @@
+"""A picture plan: the same pictures of every revision, from a text file."""
+
+from __future__ import annotations
+
+import re
+import tomllib
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, field
+from pathlib import Path as FilePath
+from typing import Any
+
+from unturn import reading_keys as r
+from unturn import toml_kinds as k
+from unturn.errors import UsageError
+from unturn.options import StrainOptions
+from unturn.picture_keys import PICTURE_KEYS, PictureRequest
+from unturn.pictures._measure import LOCATIONS
+from unturn.toml_keys import Lines, Path, Source, read_table, read_value
+from unturn.toml_kinds import REQUIRED, Key
+from unturn.written_regions.kinds import RegionSpec
+from unturn.written_regions.read import read_regions
+
+SCHEMA = "unturn.plan/1"
+_MOST_BYTES = 10_000_000
+_ANY = k.Kind("a table", lambda value: value)
+
+PLAN_KEYS = (
+    Key("schema", k.choice_kind((SCHEMA,)), "version of the rules by which the file is read", REQUIRED),
+    Key("title", k.TEXT, "what is shown; stands before the title of every picture", ""),
+    Key("reading", _ANY, "how the result is read", {}),
+    Key("regions", _ANY, "named regions", {}),
+    Key("defaults", _ANY, "what holds for every picture that does not say otherwise", {}),
+    Key("pictures", _ANY, "the pictures", REQUIRED),
+)
+"""Keys of the file itself."""
+
+PLAN_READING_KEYS = (r.DISPLACEMENT_KEY, r.SOLVE_KEY, r.BASE_KEY, r.FRAME_KEY, *r.READING_KEYS)
+"""Keys of ``[reading]``."""
+
+NAME_KEY = Key(
+    "name", k.TEXT, "name of the file, without suffix: letters, digits, '_', '.' and '-'", REQUIRED
+)
+_AT_KEY = Key("at", k.choice_kind(tuple(LOCATIONS)), "where values live", "centroid")
+_CSV_KEY = Key("csv", k.BOOLEAN, "also the values that are drawn as a CSV file of the same name", False)
+DEFAULT_KEYS = (*PICTURE_KEYS, _AT_KEY, _CSV_KEY)
+"""Keys of ``[defaults]``: those of every picture."""
+
+
+@dataclass(frozen=True, eq=False)
+class Plan:
+    """A plan that was read.
+
+    Attributes
+    ----------
+    path, title
+        Where it came from; what it is for.
+    options, surface_poisson, zero_step
+        How results are read.
+    regions
+        Those that the plan defines, by name.
+    pictures
+        What is asked for, in the order of the file; names are different.
+    csv
+        Names of the pictures whose values are wanted as a table.
+    """
+
+    path: str
+    title: str
+    options: StrainOptions
+    surface_poisson: float | None
+    zero_step: int | None
+    regions: Mapping[str, RegionSpec]
+    pictures: tuple[PictureRequest, ...]
+    csv: frozenset[str] = field(default_factory=frozenset)
+
+
+def read_plan(path: FilePath | str) -> Plan:
+    """Return what a plan says.
+
+    Raises
+    ------
+    UsageError
+        The file cannot be read, is no TOML, or says something that is not known; with the line.
+    """
+    name = str(path)
+    try:
+        with open(path, "rb") as file:
+            raw = file.read(_MOST_BYTES + 1)
+    except (OSError, ValueError) as error:
+        reason = getattr(error, "strerror", None) or error
+        raise UsageError(f"{name}: the plan cannot be read: {reason}. Check the name.") from None
+    if len(raw) > _MOST_BYTES:
+        raise UsageError(f"{name}: a plan has at most {_MOST_BYTES} bytes; this is something else.")
+    return parse_plan(raw, name)
+
+
+def parse_plan(raw: bytes, name: str) -> Plan:
+    """Return what the bytes of a plan say; see `read_plan`."""
+    try:
+        text = raw.decode("utf-8")
+        data = tomllib.loads(text)
+    except (tomllib.TOMLDecodeError, UnicodeDecodeError, RecursionError) as error:
+        said = str(error) if not isinstance(error, RecursionError) else "nested too deep"
+        raise UsageError(f"{name}: not a TOML file: {said}. Correct it there.") from None
+    source = Source(name, Lines(text, data))
+    found = read_table(source, (), data, PLAN_KEYS)
+    reading = read_table(source, ("reading",), found["reading"], PLAN_READING_KEYS)
+    options, zero_step = r.options_of(reading)
+    read_table(source, ("defaults",), found["defaults"], DEFAULT_KEYS)
+    tables = _tables(source, found["pictures"])
+    pictures: list[PictureRequest] = []
+    csv: list[str] = []
+    for position, table in enumerate(tables):
+        place: Path = ("pictures", position)
+        read = _picture(source, place, table, found["defaults"])
+        if read.pop("csv"):
+            csv.append(read["name"])
+        line = source.lines.of(place)
+        request = PictureRequest(**read, source=f"{name}, line {line}, picture {read['name']!r}")
+        if request.name.casefold() in [p.name.casefold() for p in pictures]:
+            raise source.error((*place, "name"), f"another picture is called {request.name!r} too.")
+        pictures.append(request)
+    return Plan(
+        name,
+        found["title"],
+        options,
+        reading["surface_poisson"],
+        zero_step,
+        read_regions(source, found["regions"]),
+        tuple(pictures),
+        frozenset(csv),
+    )
+
+
+def _picture(source: Source, place: Path, table: Any, defaults: Mapping[str, Any]) -> dict[str, Any]:
+    """Return the keys of a picture; what it does not say is that of the defaults."""
+    keys = [NAME_KEY, *DEFAULT_KEYS]
+    read = read_table(source, place, table, keys)
+    if not re.fullmatch(r"[\w.-]{1,100}", read["name"]):
+        raise source.error((*place, "name"), f"expected {NAME_KEY.meaning}; found {k.shown(read['name'])}.")
+    for key in DEFAULT_KEYS:
+        if key.name in defaults and key.name not in table:
+            read[key.name] = read_value(source, ("defaults", key.name), defaults[key.name], key.kind)
+    return read
+
+
+def _tables(source: Source, tables: Any) -> Sequence[Any]:
+    if not isinstance(tables, list) or not tables:
+        raise source.error(("pictures",), "pictures are written as tables [[pictures]]; there must be one.")
+    return tables
