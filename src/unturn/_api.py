@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Sequence
+from collections.abc import Iterable, Mapping, Sequence
 from os import PathLike
 from typing import Literal
 
@@ -14,7 +14,7 @@ from unturn.kinematics._symmetric import Floats
 from unturn.options import Borders, FacesTo, Place, StrainOptions
 from unturn.pipeline import Computed
 from unturn.recovery import Method
-from unturn.result import Result
+from unturn.result import Array, Association, Result
 from unturn.rigid_parts import rigid_arrays
 from unturn.stepwise import Stepwise
 from unturn.verdict import Solve
@@ -242,11 +242,7 @@ def add_fields(result: Result, computed: Computed, *, prefix: str = "", overwrit
     UsageError
         An array of that name is already there and `overwrite` is not set, or a prefix that formats cannot hold.
     """
-    if prefix != prefix.strip() or not prefix.isprintable() or len(prefix) > _LONGEST_PREFIX:
-        raise UsageError(
-            f"--prefix {prefix[:40]!r}: not every format keeps blanks at the ends of a name, characters that cannot be "
-            f"printed, or more than {_LONGEST_PREFIX} of them; choose another one."
-        )
+    _check_prefix(prefix)
     own = computed.own_mesh
     if own is not None:
         if prefix:
@@ -267,6 +263,42 @@ def add_fields(result: Result, computed: Computed, *, prefix: str = "", overwrit
     names = {(where, prefix + name): labels for (where, name), labels in components.items()}
     motions = _motions(result, computed, prefix, overwrite)
     return result.with_arrays(point_data=points, cell_data=cells, field_data=motions, component_names=names)
+
+
+def add_arrays(
+    result: Result,
+    where: Association,
+    arrays: Mapping[str, Array],
+    components: Mapping[str, tuple[str, ...]],
+    *,
+    prefix: str = "",
+    overwrite: bool = False,
+) -> Result:
+    """Return the result with these cell or point arrays.
+
+    Raises
+    ------
+    UsageError
+        An array of that name is already there and `overwrite` is not set, or a prefix that formats cannot hold.
+    """
+    _check_prefix(prefix)
+    present = result.cell_data if where == "cell" else result.point_data
+    named = {prefix + name: values for name, values in arrays.items()}
+    _refuse_taken(result, where, [name for name in named if name in present and not overwrite])
+    names: dict[tuple[Association, str], tuple[str, ...]] = {
+        (where, prefix + name): labels for name, labels in components.items()
+    }
+    if where == "point":
+        return result.with_arrays(point_data=named, component_names=names)
+    return result.with_arrays(cell_data=named, component_names=names)
+
+
+def _check_prefix(prefix: str) -> None:
+    if prefix != prefix.strip() or not prefix.isprintable() or len(prefix) > _LONGEST_PREFIX:
+        raise UsageError(
+            f"--prefix {prefix[:40]!r}: not every format keeps blanks at the ends of a name, characters that cannot be "
+            f"printed, or more than {_LONGEST_PREFIX} of them; choose another one."
+        )
 
 
 def _refuse_taken(result: Result, where: str, taken: Sequence[str]) -> None:

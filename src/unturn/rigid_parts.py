@@ -47,7 +47,7 @@ def rigid_parts(
     if how == "whole":
         regions = [("whole", everything)]
     elif how == "bodies":
-        regions = [(r.name, r.cells) for r in bodies(model, computed, most=None)] or [("body 1", everything)]
+        regions = [(r.name, r.cells) for r in bodies(model, computed)] or [("body 1", everything)]
     elif how == "regions":
         regions = [(r.name, r.cells) for r in find_regions(model, computed, most=None)]
     else:

@@ -17,7 +17,7 @@ from unturn.measures import MEASURES
 from unturn.model import Model
 from unturn.numbering import Numbering, element_numbers
 from unturn.pipeline import Computed
-from unturn.regions import Region, find_regions, named_regions, unused_tags
+from unturn.regions import Region, find_regions, judged_together, named_regions, unused_tags
 from unturn.rigid import Removal
 from unturn.series import SERIES_MEASURES
 from unturn.statistics import LOW_PERCENTILES, PERCENTILES, Statistics, statistics
@@ -273,8 +273,8 @@ def _warnings(fields: CellFields, d: CellDiagnostics, regions: list[RegionSummar
                 f"{r.region.name}: the stored precision blurs the strain by +-{_micro(r.verdict.noise)} microstrain, "
                 f"and 99 % of the volume is below {_micro(r.verdict.size)}: write the result with more digits"
             )
-    unused = unused_tags(fields.model.result)
-    return [*found, unused] if unused else found
+    together = unused_tags(fields.model.result) or judged_together([r.region for r in regions])
+    return [*found, together] if together else found
 
 
 def _beyond_linear(removals: Sequence[Removal], regions: list[RegionSummary]) -> list[str]:

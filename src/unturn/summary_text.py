@@ -390,8 +390,8 @@ def _micro(value: float) -> str:
     return f"{micro:.0f}" if abs(micro) >= 100 else f"{micro:.3g}"
 
 
-def _above(value: float) -> str:
-    """Return a bound with two digits, never rounded down.
+def _above(value: float, least: float = 1e-6) -> str:
+    """Return a bound with two digits, never rounded down; less than `least` is nothing.
 
     Examples
     --------
@@ -400,7 +400,7 @@ def _above(value: float) -> str:
     """
     if not math.isfinite(value):
         return " -"
-    if value < 1e-6:
+    if value < least:
         return "0"
     unit = 10.0 ** (math.floor(math.log10(value)) - 1)
     rounded = math.ceil(value / unit * (1.0 - 1e-12)) * unit

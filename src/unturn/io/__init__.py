@@ -15,6 +15,7 @@ from numpy.typing import NDArray
 
 from unturn.errors import InputError, UnturnError, UsageError
 from unturn.io._atomic import ensure_room, replacing
+from unturn.io._behind import files_behind
 from unturn.io._format import Format, ResultFile, StepWriter
 from unturn.io._formats import FORMATS, format_for_writing, format_of_file, writable_suffix
 from unturn.io._readback import check_same
@@ -26,6 +27,7 @@ __all__ = [
     "ResultFile",
     "StepWriter",
     "check_target",
+    "files_behind",
     "open_result",
     "read",
     "series_writer",
