@@ -90,6 +90,72 @@ def test_a_singular_peak_is_undecided_and_a_value_away_from_it_is_not(desk: Path
     assert data["quantities"][1]["extrapolated"] == pytest.approx(0.5e-3, rel=2e-3)
 
 
+def sheared(n: int, kind: type, part: int = 1) -> Result:
+    """u = (y, x) / 1000 and a shift: no strain along x or y, but for rounding; its second part is numbered `part`."""
+    result = plate(n)
+    points = result.points + np.array([0.3, 0.7, 0.0])
+    u = 1e-3 * points[:, [1, 0, 2]] + np.array([0.37, 0.11, 0.0])
+    tags = {"part": part * np.asarray(result.cell_data["part"])}
+    return Result(points, result.blocks, {"u": u.astype(kind)}, tags)
+
+
+@pytest.mark.derived("a strain that is zero does not diverge, whatever rounding makes of it")
+@pytest.mark.parametrize("kind", [np.float32, np.float64])
+def test_zero_to_rounding_is_below_the_stored_precision(desk: Path, kind: type) -> None:
+    for name, n in (("a", 8), ("b", 16), ("c", 32)):
+        unturn.write(sheared(n, kind), f"{name}.vtu")
+    texts = ("peak strain_YY", "lowest strain_XX", "percentile 95 strain_YY", "value strain_XX at 0.8,0.9")
+    text = said("a.vtu b.vtu c.vtu", *texts, "peak strain_XY", more="--plane strain --json z.json")
+    found = json.loads(Path("z.json").read_text())["quantities"]
+    assert [q["behaviour"] for q in found] == ["below precision"] * 4 + ["unchanged"]
+    for q in found[:4]:
+        assert all(abs(on["value"]) <= on["floor"] for on in q["on"])
+        assert q["error"] == max(on["floor"] for on in q["on"])
+        assert (q["order"], q["extrapolated"]) == (None, None)
+    assert [on["at"] is None for q in found for on in q["on"]] == [False] * 6 + [True] * 3 + [False] * 6
+    assert text.count("below the stored precision: zero as far as the numbers tell") == 4
+    assert found[4]["on"][2]["value"] == pytest.approx(1e-3, abs=found[4]["on"][2]["floor"])
+
+
+@pytest.mark.practice("what is missing on one mesh is told of that mesh")
+def test_a_region_that_one_mesh_lacks(desk: Path) -> None:
+    for name, n, part in (("a", 8, 1), ("b", 16, 2), ("c", 32, 1)):
+        unturn.write(sheared(n, np.float64, part), f"{name}.vtu")
+    text = said("a.vtu b.vtu c.vtu", "percentile 50 strain_XX in part=1", status=2)
+    assert "medium mesh: b.vtu: 'percentile 50 strain_XX in part=1': region 'part=1' holds no cell" in text
+
+
+@pytest.mark.practice("rigid motion and free thermal strain are taken out on every mesh")
+def test_options_of_strain_hold_on_every_mesh(desk: Path) -> None:
+    for name, n in (("a", 4), ("b", 8), ("c", 16)):
+        result = plate(n)
+        hot = 20 + 100 * result.points[:, 0]
+        u = np.asarray(result.point_data["u"]) + np.column_stack(
+            [-0.2 * result.points[:, 1], 0.2 * result.points[:, 0], 0 * hot]
+        )
+        unturn.write(
+            Result(result.points, result.blocks, {"u": u, "T": hot}, result.cell_data), f"{name}.vtu"
+        )
+    heat = "--plane strain --thermal-expansion 12e-6 --temperature T --reference-temperature 20"
+    text = said(
+        "a.vtu b.vtu c.vtu", "peak mechanical_strain_XX", "peak strain_XX", more=f"{heat} --json m.json"
+    )
+    hot, cold = (q["on"][2] for q in json.loads(Path("m.json").read_text())["quantities"])
+    assert cold["value"] - hot["value"] == pytest.approx(12e-6 * 100 * cold["at"][0], rel=1e-9)
+    assert "2 quant" not in text
+    assert "the value at a point is that of the total strain" in said(
+        "a.vtu b.vtu c.vtu", "value mechanical_strain_XX at 0.5,0.5", status=2, more=heat
+    )
+    said(
+        "a.vtu b.vtu c.vtu",
+        "peak rotation_Z",
+        status=0,
+        more="--plane strain --remove-rigid whole --solve linear --json r.json",
+    )
+    turned = json.loads(Path("r.json").read_text())["quantities"][0]["on"]
+    assert all(abs(on["value"]) < 1e-3 for on in turned)
+
+
 @pytest.mark.practice("stdout is for the JSON when asked")
 def test_json_on_the_standard_output(desk: Path, capsys: pytest.CaptureFixture[str]) -> None:
     from unturn.cli import main

@@ -66,7 +66,7 @@ def test_a_series_gives_extremes_and_steps(desk: Path, suffix: str) -> None:
     assert np.allclose(grid.cell_data["strain_range_equivalent"], 3.5e-3 * 1.3 * 2 / 3, rtol=0.01)
     assert "element 10" in text
     assert "step 2 (t = 0.5) and step 3 (t = 0.75)" in text
-    assert re.search(r"wrote out.vtu: 31 arrays added, 2 of run\.\w+ step 3 unchanged", text)
+    assert re.search(r"wrote out.vtu: 44 arrays added, 2 of run\.\w+ step 3 unchanged", text)
     data = json.loads(Path("out.json").read_text())
     assert data["schema"] == "unturn.envelope/1"
     assert [s["time"] for s in data["states"]] == [0, 0.25, 0.5, 0.75]
@@ -184,9 +184,9 @@ def test_json_on_the_standard_output(desk: Path, capsys: pytest.CaptureFixture[s
         ("run.xdmf --base hencky --solve linear", 2, "are fiction"),
         ("run.xdmf --region roof", 2, "no region is called 'roof'"),
         ("run.xdmf --alive status", 2, "no cell array is called 'status'"),
-        ("run.xdmf --zero-step 9", 2, "--step 9 does not exist"),
+        ("run.xdmf --zero-step 9", 2, "--zero-step 9 does not exist"),
         ("dead.vtu wind.vtu --zero-step 0", 2, "several files are given"),
-        ("run.xdmf -o no/where.vtu", 2, "no folder"),
+        ("run.xdmf -o no/where.vtu", 2, "Choose a folder that exists"),
         ("run.xdmf -o out.xyz", 2, "no format is written"),
         ("run.xdmf --combinations none.toml", 3, "cannot be read"),
         (
@@ -194,7 +194,8 @@ def test_json_on_the_standard_output(desk: Path, capsys: pytest.CaptureFixture[s
             2,
             "nonlinear solve cannot be superposed",
         ),
-        ("dead.vtu --combinations ok.toml", 2, "no load case is called 'wind'"),
+        ("dead.vtu wind.vtu --combinations ok.toml", 2, "state --solve linear if they were"),
+        ("dead.vtu --combinations ok.toml --solve linear", 2, "no load case is called 'wind'"),
         ("part_1.vtu part_2.vtu --combinations ok.toml --as-series", 2, "give one of them"),
         ("dead.vtu dead.vtu --combinations ok.toml", 2, "two load cases are called 'dead'"),
         ("dead.vtu other.vtu", 3, "another one"),

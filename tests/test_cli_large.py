@@ -97,8 +97,8 @@ def test_a_finite_base_names_its_arrays_and_its_rows(tmp_path: Path, base: str) 
     principal = written.cell_data[f"principal_strain_{key}"]
     peaks = [r["statistics"][f"principal_strain_{key}_1"]["maximum"]["value"] for r in summary["regions"]]
     assert max(peaks) == principal[:, 0].max()
-    assert "det F, smallest to largest" in said
-    assert "stretch, smallest to largest" in said
+    for row in ("det F, smallest", "det F, largest", "stretch, smallest", "stretch, largest"):
+        assert row in said
 
 
 def test_all_of_a_base(tmp_path: Path) -> None:
@@ -185,7 +185,8 @@ def test_a_skin_has_its_own_frame_and_thickness(tmp_path: Path) -> None:
 )
 def test_the_solver_is_compared_on_the_whole_motion(tmp_path: Path) -> None:
     from unturn import strain
-    from unturn.pipeline import StrainOptions, compute
+    from unturn.options import StrainOptions
+    from unturn.pipeline import compute
     from unturn.summary import summarise
 
     plain = io.read(LEVER)

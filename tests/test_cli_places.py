@@ -159,7 +159,7 @@ def test_surface_of_a_bent_plate(tmp_path: Path) -> None:
     at_centroids = data["regions"][0]["statistics"]["principal_strain_1"]["maximum"]["value"]
     at_faces = {e["statistic"]: e for e in data["elsewhere"]["extremes"]}["largest principal, in plane"]
     assert at_faces["value"] == pytest.approx(1.5 * at_centroids, rel=1e-9)
-    assert at_faces["plus_minus"] is None
+    assert at_faces["plus_minus"] == pytest.approx(0, abs=1e-12)  # the faces hold this field, and all agree
     cell = at_faces["place"]["cell"]
     assert at_faces["place"]["element"] == number[cell]
     faces = (found["parent_cell"] == cell) & (found["parent_face"] == at_faces["place"]["face"])
@@ -292,7 +292,7 @@ def test_the_json_has_no_nan(tmp_path: Path) -> None:
     unturn.write(mesh.result(u=0 * mesh.points), source)
     data = data_of(tmp_path, source, "--at", "nodes", "-o", out)
     assert data["elsewhere"]["estimated_error_percent"] == {"whole": None}
-    assert data["elsewhere"]["suspected_singular"] == []
+    assert data["suspected_singular"] == []
     for at in ("centroid", "mean", "quadrature"):
         assert data_of(tmp_path, source, "--at", at, "-o", out)["elsewhere"] is None
     corners = mesh.points[mesh.cells[0]]
@@ -310,7 +310,7 @@ def test_a_corner_is_named_in_text_and_json(tmp_path: Path) -> None:
     number = 5000 + np.arange(len(mesh.points))
     unturn.write(mesh.result(u=corner_field(mesh.points), node_number=number), source)
     said = done(source, "--at", "nodes", "-o", tmp_path / "out.vtu", "--json", target)
-    found = {g["array"]: g for g in json.loads(target.read_text())["elsewhere"]["suspected_singular"]}
+    found = {g["array"]: g for g in json.loads(target.read_text())["suspected_singular"]}
     peak = found["principal_strain_1"]
     assert np.linalg.norm(mesh.points[peak["point"], :2]) < 1e-9
     assert peak["node"] == number[peak["point"]]

@@ -144,7 +144,7 @@ def test_a_fault_of_ours_is_no_broken_limit(tmp_path: Path, monkeypatch: pytest.
     def fail(*_: object, **__: object) -> None:
         raise RuntimeError("planted")
 
-    monkeypatch.setattr("unturn.pipeline.compute", fail)
+    monkeypatch.setattr("unturn.stepwise.compute", fail)
     status, text = run(["strain", "good.vtu"])
     assert status == 70
     assert "a fault of unturn" in text

@@ -11,7 +11,6 @@ from hypothesis import given
 from hypothesis import strategies as st
 
 from meshes import Mesh, curved, patch, straight
-from unturn.convergence import LOWEST, Study, check_refinement, observed_order, study
 from unturn.elements import ELEMENTS, Element
 from unturn.errors import InputError, UsageError
 from unturn.fields import CellFields
@@ -19,6 +18,7 @@ from unturn.locate import locate
 from unturn.model import build_model
 from unturn.pipeline import StrainOptions, compute
 from unturn.quantities import Found, find_quantity, parse_quantity
+from unturn.refinement import LOWEST, Study, check_refinement, observed_order, study
 
 # --- the published procedure ------------------------------------------------------------------------------------------
 
@@ -96,6 +96,52 @@ def test_other_sequences_are_refused_with_the_reason() -> None:
     assert math.isinf(study((-3.0, -1.0, 0.0), sizes).index)
     assert study((-3.0, -1.0, 0.0), sizes).error == pytest.approx(1.25)
     assert observed_order(1e-3, 2.0, 2.0) == LOWEST
+
+
+@pytest.mark.derived("a change no larger than what the stored numbers can be off says nothing")
+@pytest.mark.parametrize(
+    ("values", "floors", "behaviour", "words"),
+    [
+        ((1e-19, -3e-19, 9e-19), (1e-18, 1e-18, 1e-18), "below precision", "zero as far as the numbers tell"),
+        ((0.0, 0.0, 0.0), (1e-18, 1e-18, 1e-18), "below precision", "below the stored precision"),
+        ((1e-19, -3e-19, 9e-18), (1e-18, 1e-18, 1e-18), "stalls", "with more digits"),
+        ((1.0, 1.01, 0.995), (0.02, 0.02, 0.02), "unchanged", "on all three meshes to the stored precision"),
+        ((1.0, 2.0, 2.01), (0.02, 0.02, 0.02), "stalls", "medium and fine mesh to the stored precision"),
+        ((1.0, 1.01, 2.0), (0.02, 0.02, 0.02), "stalls", "coarse and medium mesh to the stored precision"),
+        ((1.0, 1.5, 1.75), (0.02, 0.02, 0.02), "converges", ""),
+        ((1.0, 2.0, 4.0), (0.02, 0.02, 0.02), "diverges", "does not shrink"),
+    ],
+)
+def test_changes_below_the_stored_precision(values: Any, floors: Any, behaviour: str, words: str) -> None:
+    found = study(values, (4.0, 2.0, 1.0), floors)
+    assert found.behaviour == behaviour
+    assert words in found.reason
+    if behaviour in ("below precision", "unchanged"):
+        assert found.error == max(floors)
+        assert found.index == (pytest.approx(max(floors) / abs(values[2])) if values[2] else math.inf)
+    elif behaviour == "converges":
+        assert found == study(values, (4.0, 2.0, 1.0))
+
+
+@pytest.mark.derived(
+    "a strain component that is zero by cancellation, in every kind of element, with 32 and 64 bits"
+)
+@pytest.mark.parametrize("name", [row.name for row in ELEMENTS.values() if row.dim > 1])
+def test_the_floor_of_a_quantity_covers_what_rounding_makes_of_zero(name: str) -> None:
+    row = ELEMENTS[name]
+    mesh = patch(row)
+    options = {"plane": "strain"} if row.dim == 2 else {}
+    for seed in range(4):
+        rng = np.random.default_rng(seed)
+        H = np.zeros((3, 3))
+        H[: row.dim, : row.dim] = 1e-3 * rng.normal(size=(row.dim, row.dim))
+        H[1, 1] = 0.0
+        away = np.where(np.arange(3) < row.dim, 3.0 * rng.normal(size=3), 0.0)
+        moved = mesh._replace(points=mesh.points + away)
+        for kind in (np.float32, np.float64):
+            f = fields(moved, (moved.points @ H.T).astype(kind), ["strain"], **options)
+            found = find_quantity(parse_quantity("peak strain_YY"), f)
+            assert abs(found.value) <= found.floor < 1e-3 * (1.0 if kind is np.float64 else 10.0)
 
 
 # --- quantities -------------------------------------------------------------------------------------------------------

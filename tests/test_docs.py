@@ -16,15 +16,15 @@ from typer.main import get_command
 import unturn
 import unturn._accessor  # found by itself only when the package is installed
 from documents import EVERY_PAGE, PAGES, ROOT, Session, blocks, run, spoken, table
-from unturn import CellBlock, Result, convergence
+from unturn import CellBlock, Result, refinement
 from unturn.cli._main import app
 from unturn.cli._options import BaseChoice
-from unturn.convergence import Behaviour
 from unturn.elements import ELEMENTS
 from unturn.errors import InputError, UnturnError
 from unturn.io import FORMATS, Format
 from unturn.kinematics._finite import BASES
-from unturn.measures import DEFAULT_MEASURES, GEOMETRY, MEASURES, SMALL, Measure
+from unturn.measures import DEFAULT_MEASURES, ESTIMATES, GEOMETRY, MEASURES, SMALL, Measure
+from unturn.refinement import Behaviour
 from unturn.series import SERIES_MEASURES
 
 SAMPLES = [p for p in (ROOT / "sample_meshes").iterdir() if p.suffix in (".vtu", ".xdmf", ".h5")]
@@ -134,6 +134,8 @@ def test_the_tables_of_measures_are_the_codes() -> None:
     assert table(page, "mechanical array") == [_row(m) for m in MEASURES.values() if m.mechanical]
     geometry = [[f"`{name}`", meaning] for name, meaning in GEOMETRY.items()]
     assert table(page, "array of the mesh alone") == geometry
+    estimates = [[f"`{name}`", meaning] for name, meaning in ESTIMATES.items() if not name.endswith(BASES)]
+    assert table(page, "estimate") == estimates
     assert f"`{', '.join(DEFAULT_MEASURES)}`" in page.read_text(encoding="utf-8")
 
 
@@ -146,9 +148,9 @@ def test_the_tables_of_series_and_studies_are_the_codes() -> None:
     ]  # fmt: skip
     assert [row[0] for row in table(page, "behaviour")] == [f"`{b}`" for b in get_args(Behaviour)]
     text = " ".join(page.read_text(encoding="utf-8").split())
-    assert f"{convergence.SOURCE.text} ({convergence.SOURCE.kind})" in text
-    assert f"an order between {convergence.LOWEST:g} and {convergence.HIGHEST:g}" in text
-    assert f"by less than a factor of {convergence.SMALL_RATIO:g}" in text
+    assert f"{refinement.SOURCE.text} ({refinement.SOURCE.kind})" in text
+    assert f"an order between {refinement.LOWEST:g} and {refinement.HIGHEST:g}" in text
+    assert f"by less than a factor of {refinement.SMALL_RATIO:g}" in text
 
 
 def test_the_table_of_an_envelope_names_what_is_written(desk: Path) -> None:
@@ -309,6 +311,7 @@ def test_the_summary_schema_is_documented_key_by_key(desk: Path) -> None:
         "mixed.xdmf",
         "bracket.vtu --at nodes --prefix n_",
         "bracket.vtu --at surface",
+        "bracket.vtu --measures strain,strain_error --prefix e_",
     )
     produced = [_json_of(f"unturn strain {c}") for c in commands]
     assert {d["schema"] for d in produced} == {"unturn.summary/1"}
@@ -318,7 +321,8 @@ def test_the_summary_schema_is_documented_key_by_key(desk: Path) -> None:
 def test_several_summaries_are_one_list(desk: Path) -> None:
     for command, n in (("bracket.vtu bracket_tets.vtu", 2), ("lever.xdmf --step all", 7)):
         data = _json_of(f"unturn strain {command}")
-        assert set(data) == {"schema", "results"}
+        assert set(data) == {"schema", "results", "failed"}
+        assert data["failed"] == []
         assert data["schema"] == "unturn.summaries/1"
         assert len(data["results"]) == n
         assert {d["schema"] for d in data["results"]} == {"unturn.summary/1"}
@@ -347,6 +351,7 @@ def test_the_envelope_schema_is_documented_key_by_key(desk: Path) -> None:
         "lever.xdmf --solve nonlinear --base hencky",
         "lever.xdmf --solve nonlinear --measures spin,accumulated_equivalent_strain -o spin.vtu",
         "bracket.vtu --combinations loads.toml --solve linear",
+        "bracket.vtu --combinations loads.toml --solve linear --at nodes -o nodes.vtu",
         "ring.vtu ring.vtu --measures strain -o ring.out.vtu",
         "mixed.xdmf mixed.xdmf -o mixed.out.xdmf",
     )

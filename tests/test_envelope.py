@@ -15,14 +15,16 @@ from numpy.typing import NDArray
 
 from meshes import patch
 from strategies import axis_angle
+from unturn.combinations import Combination, read_combinations
 from unturn.elements import ELEMENTS
-from unturn.envelope import Envelope, EnvelopeOptions, State, envelope
+from unturn.envelopes import envelope
 from unturn.errors import InputError, UsageError
 from unturn.kinematics import equivalent_strain, principal_strain, strain, tensor_from_components
 from unturn.model import build_model
 from unturn.pipeline import StrainOptions, compute
 from unturn.result import CellBlock, Result
-from unturn.superposition import Combination, read_combinations, superposed_states
+from unturn.states import Envelope, EnvelopeOptions, State, named
+from unturn.superposition import superposed_states
 from unturn.tensor_range import TensorRange, largest_distances
 
 Floats = NDArray[np.float64]
@@ -283,6 +285,8 @@ def test_measures_that_do_not_fit_are_refused() -> None:
         run(steps, ["spin"], kind="case")
     with pytest.raises(UsageError, match="is fiction"):
         run(steps, ["strain_increment"], base="hencky", solve="linear")
+    with pytest.raises(UsageError, match="strain_error tells how far one step can be trusted"):
+        run(steps, ["strain_error"])
     with pytest.raises(UsageError, match="no measure is called 'sstrain'"):
         run(steps, ["sstrain"])
     assert "strain_range_equivalent_almansi" not in run(steps, ["equivalent_strain"], base="almansi").arrays
@@ -313,6 +317,25 @@ def test_memory_does_not_grow_with_the_steps(tmp_path: Path) -> None:
     assert peaks[2] < 1.1 * peaks[1], peaks
 
 
+@pytest.mark.practice("an error names its state and its file, each once")
+@pytest.mark.parametrize(
+    ("name", "said", "words"),
+    [
+        ("step 3", "run.xdmf: cut short: 3 bytes.", "step 3: run.xdmf: cut short: 3 bytes."),
+        ("a.vtu", "old/a.vtu: cut short.", "old/a.vtu: cut short."),
+        ("a.vtu", "b.vtu: cut short.", "a.vtu: b.vtu: cut short."),
+        ("run.xdmf step 3", "old/run.xdmf: cut short.", "old/run.xdmf step 3: cut short."),
+        ("step 3", "step.vtu is empty.", "step 3: step.vtu is empty."),
+        ("a b.vtu", "old folder/a b.vtu is empty.", "old folder/a b.vtu is empty."),
+        ("a.vtu", "the mesh is plane: run.vtu", "a.vtu: the mesh is plane: run.vtu"),
+        ("run.pvd step 2", "run.pvd names the file x.vtu.", "run.pvd step 2: run.pvd names the file x.vtu."),
+        ("run.vtu step 2", "node 4.5 is lost.", "run.vtu step 2: node 4.5 is lost."),
+    ],
+)
+def test_errors_name_state_and_file_once(name: str, said: str, words: str) -> None:
+    assert str(named(name, InputError(said))) == words
+
+
 # --- superposition ----------------------------------------------------------------------------------------------------
 
 
@@ -339,7 +362,9 @@ def test_superposition_is_that_of_the_gradients(tmp_path: Path) -> None:
         "service", "storm (+wind, +snow)", "storm (+wind, -snow)", "storm (-wind, +snow)", "storm (-wind, -snow)",
     ]  # fmt: skip
     readers = {name: (lambda u=u: MESH.result(u=u)) for name, u in cases.items()}
-    states, options = superposed_states(readers, combinations, StrainOptions(measures=["all"]))
+    states, options = superposed_states(
+        readers, combinations, StrainOptions(measures=["all"], solve="linear")
+    )
     found = envelope(states, EnvelopeOptions(options, "case")).arrays
     H = {
         name: compute(MESH.result(u=u), StrainOptions(measures=["displacement_gradient"]))
@@ -373,7 +398,7 @@ def test_many_combinations_read_each_case_a_few_times() -> None:
         return read
 
     combinations = [Combination(f"c{k}", {"a": 1.0, "b": float(k)}) for k in range(17)]
-    options = StrainOptions(measures=["equivalent_strain"])
+    options = StrainOptions(measures=["equivalent_strain"], solve="linear")
     states, options = superposed_states({"a": reader(0), "b": reader(1)}, combinations, options)
     found = envelope(states, EnvelopeOptions(options, "case"))
     assert reads == [3, 3]
@@ -390,7 +415,7 @@ def test_cases_with_scaled_displacements_and_deformed_coordinates() -> None:
         "b": lambda: MESH._replace(points=MESH.points + v).result(u=1000 * v),
     }
     asked = StrainOptions(
-        coordinates="deformed", displacement="u", displacement_scale=1e-3, measures=["strain"]
+        coordinates="deformed", displacement="u", displacement_scale=1e-3, measures=["strain"], solve="linear"
     )
     states, options = superposed_states(readers, [Combination("both", {"a": 2.0, "b": -1.0})], asked)
     result = states[0].read()
@@ -407,9 +432,11 @@ def test_a_failed_case_fails_its_combinations_only() -> None:
 
     readers = {"dead": lambda: MESH.result(u=random_steps(1)[0]), "wind": broken}
     combinations = [Combination("storm", {"dead": 1, "wind": 1}), Combination("calm", {"dead": 1.35})]
-    states, options = superposed_states(readers, combinations, StrainOptions(measures=["strain"]))
+    states, options = superposed_states(
+        readers, combinations, StrainOptions(measures=["strain"], solve="linear")
+    )
     found = envelope(states, EnvelopeOptions(options, "case", keep_going=True))
-    assert {k: str(e) for k, e in found.failures.items()} == {0: "load case wind: wind.vtu: cut short."}
+    assert {k: str(e) for k, e in found.failures.items()} == {0: "wind.vtu: cut short."}
     assert set(found.arrays["strain_maximum_case"].ravel().tolist()) == {1}
 
 
@@ -442,6 +469,82 @@ def test_wrong_superposition_is_refused(tmp_path: Path) -> None:
         read_combinations(written(tmp_path, "= 1"))
     readers = {"dead": lambda: MESH.result(u=MESH.points)}
     with pytest.raises(UsageError, match="Did you mean 'dead'"):
-        superposed_states(readers, [Combination("x", {"deed": 1.0})], StrainOptions())
+        superposed_states(readers, [Combination("x", {"deed": 1.0})], StrainOptions(solve="linear"))
+    with pytest.raises(UsageError, match="state --solve linear if they were"):
+        superposed_states(readers, [Combination("x", {"dead": 1.0})], StrainOptions())
     with pytest.raises(UsageError, match="nonlinear solve cannot be superposed"):
         superposed_states(readers, [Combination("x", {"dead": 1.0})], StrainOptions(solve="nonlinear"))
+
+
+def temperature(points: Floats, k: int) -> Floats:
+    return 20.0 + 50.0 * k * points[:, 0]
+
+
+@pytest.mark.derived("the free strain of a sum is the sum of the free strains")
+@pytest.mark.parametrize("on_points", [True, False])
+def test_temperatures_of_cases_add_up_by_their_distance_from_the_reference(on_points: bool) -> None:
+    steps = random_steps(3)
+    centre = MESH.points[MESH.cells].mean(axis=1)
+
+    def case(k: int) -> Result:
+        result = MESH.result(u=steps[k])
+        if k == 2:  # a case that is not heated
+            return result
+        if on_points:
+            return result.with_arrays(point_data={"T": temperature(MESH.points, k + 1)})
+        return result.with_arrays(cell_data={"T": temperature(centre, k + 1)})
+
+    readers = {name: (lambda k=k: case(k)) for k, name in enumerate("abc")}  # type: ignore[misc]
+    asked = StrainOptions(
+        measures=["mechanical_strain"], solve="linear", thermal_expansion="12e-6", temperature="T",
+        reference_temperature=20.0,
+    )  # fmt: skip
+    factors = {"a": 2.0, "b": -1.5, "c": 1.0}
+    states, options = superposed_states(readers, [Combination("x", factors)], asked)
+    found = envelope(states, EnvelopeOptions(options, "case"))
+    every = [compute(case(k), asked).fields.arrays["mechanical_strain"] for k in range(2)]
+    every.append(measured([steps[2]], "strain")["strain"][0])
+    expected = 2.0 * every[0] - 1.5 * every[1] + every[2]
+    assert np.allclose(found.arrays["mechanical_strain_maximum"], expected, atol=1e-16)
+    assert "without an array 'T', so not heated: load case c" in found.notes
+
+
+@pytest.mark.derived("what is stored in single precision blurs a sum by the sum of what blurs its parts")
+def test_the_floor_of_a_sum_is_that_of_its_cases() -> None:
+    u = 1e-3 * np.sin(7 * MESH.points) + 1e-9 * MESH.points
+    single = u.astype(np.float32)
+    floors = [
+        compute(MESH.result(u=v), StrainOptions(measures=["strain"]), diagnose=True).fields.diagnostics.noise  # type: ignore[union-attr]
+        for v in (single, u)
+    ]
+    assert (floors[0] > 1e5 * floors[1]).all()
+    readers = {"a": lambda: MESH.result(u=single), "b": lambda: MESH.result(u=-0.999 * single)}
+    asked = StrainOptions(measures=["strain"], solve="linear")
+    states, _ = superposed_states(readers, [Combination("x", {"a": 2.0, "b": 2.0})], asked)
+    states[0].read()
+    assert states[0].noise is not None
+    floor = states[0].noise()
+    assert floor is not None
+    assert (floor >= 1.99 * floors[0]).all()
+    assert (floor <= 4.01 * floors[0]).all()
+    found = envelope(states, EnvelopeOptions(asked, "case"))
+    # almost nothing is left of the two, and what is left is no more than their rounding can be
+    assert [j.verdict.noise for j in found.judged] == pytest.approx([np.percentile(floor, 99)], rel=0.3)
+
+
+@pytest.mark.practice("a cell that one of the cases has deleted is deleted in their sum")
+def test_deleted_cells_of_cases() -> None:
+    u = random_steps(1)[0]
+    alive = np.ones((2, len(MESH.cells)), dtype=np.int32)
+    alive[1, 3] = 0
+    readers = {
+        name: (lambda k=k: MESH.result(u=u).with_arrays(cell_data={"on": alive[k]}))  # type: ignore[misc]
+        for k, name in enumerate("ab")
+    }
+    asked = StrainOptions(measures=["strain"], solve="linear", alive="on")
+    combinations = [Combination("a", {"a": 1.0}), Combination("both", {"a": 1.0, "b": 1.0})]
+    states, options = superposed_states(readers, combinations, asked)
+    found = envelope(states, EnvelopeOptions(options, "case"))
+    assert found.arrays["strain_maximum_case"][3].tolist() == [0] * 6
+    assert (found.arrays["strain_maximum_case"][:3] >= 0).all()
+    assert (found.arrays["strain_maximum_case"].max(axis=1)[:3] == 1).all()

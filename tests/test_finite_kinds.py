@@ -194,7 +194,7 @@ def test_plane_without_assumption() -> None:
     angle = np.arctan2(PLANE_H[1, 0] - PLANE_H[0, 1], 2 + PLANE_H[0, 0] + PLANE_H[1, 1])
     np.testing.assert_allclose(found["finite_rotation"][:, 2], angle, atol=1e-14)
     for name in STRAINS:
-        with pytest.raises(UsageError, match=f"{name} depend on the strain across the plane"):
+        with pytest.raises(UsageError, match=f"{name} depends on the strain across the plane"):
             computed(mesh, u, [name])
 
 
@@ -305,7 +305,8 @@ def test_lines(kind: str, at: str, stretch: float, angle: float) -> None:
     "turned inside out: NaN in finite measures, counted in the summary's warnings; the rest is right"
 )
 def test_inside_out_is_counted() -> None:
-    from unturn.pipeline import StrainOptions, compute
+    from unturn.options import StrainOptions
+    from unturn.pipeline import compute
     from unturn.summary import summarise
 
     mesh = meshes.patch(ELEMENTS["hexahedron"])

@@ -11,9 +11,12 @@ import unturn
 from documents import run
 from test_cli_wrong_input import POINTS, TETS, two_tets
 from unturn import CellBlock, DisplacementError, InputError, Result, UsageError
+from unturn.envelopes import envelope
 from unturn.model import build_model
-from unturn.pipeline import StrainOptions, compute
+from unturn.options import StrainOptions
+from unturn.pipeline import compute
 from unturn.regions import bodies, find_regions
+from unturn.states import State
 from unturn.summary import SummaryOptions, summarise
 
 GRADIENT = np.array([[1e-3, 4e-4, -2e-4], [2e-4, -3e-4, 5e-4], [-6e-4, 1e-4, 7e-4]])
@@ -104,8 +107,10 @@ def test_every_part_is_freed_of_its_motion_however_many(how: str) -> None:
     result = many(230)
     model = build_model(result)
     cells = np.ones(230, dtype=bool)
-    assert bodies(model, cells) == []  # too many to judge apart
-    assert [r.name for r in find_regions(model, cells)] == ["whole"]
+    assert len(bodies(model, cells)) == 230
+    assert [(r.name, r.n_bodies) for r in find_regions(model, cells)] == [
+        ("whole", 230)
+    ]  # too many to judge apart
     found = compute(result, StrainOptions(remove_rigid=how, solve="linear"))
     assert len(found.removals) == 230
     for name in ("strain", "rotation"):
@@ -117,6 +122,17 @@ def test_too_many_numbers_of_parts_are_said(tmp_path: Path) -> None:
     text = said(many(230), tmp_path)
     assert "WARNING: 'part' numbers 230 parts, more than the 200 that are judged apart" in text
     assert "part=7  " in said(many(230), tmp_path, "--region", "part=7")
+
+
+@pytest.mark.practice("bodies that are not judged apart are counted")
+def test_too_many_bodies_are_said(tmp_path: Path) -> None:
+    crowd = many(60)
+    nameless = Result(crowd.points, crowd.blocks, crowd.point_data)
+    words = "the mesh is 60 bodies, more than the 50 that are judged apart: they are judged as one"
+    assert f"WARNING: {words}" in said(nameless, tmp_path)
+    state = State("a", lambda: nameless)
+    assert words in " ".join(envelope([state, state]).notes)
+    assert "judged as one" not in " ".join(envelope([State("b", lambda: many(50))] * 2).notes)
 
 
 @pytest.mark.practice("two arrays are compared where both hold strain, and only there")

@@ -12,7 +12,7 @@ import meshes
 from unturn.elements import ELEMENTS
 from unturn.errors import UsageError
 from unturn.model import Model, build_model
-from unturn.regions import bodies, find_regions, merge_coincident, named_regions, tag_arrays
+from unturn.regions import bodies, find_regions, judged_together, merge_coincident, named_regions, tag_arrays
 
 # Derived: stated definitions of regions; every cell that is judged is in exactly one tag, body or the whole.
 
@@ -150,7 +150,12 @@ def test_nodes_repeated_by_the_writer_make_no_bodies() -> None:
 
 def test_many_bodies_are_no_regions() -> None:
     m = model(row_of_hexahedra(gaps=tuple(range(1, 120)), n=120))
-    assert [r.name for r in find_regions(m, everything(m))] == ["whole"]
+    found = find_regions(m, everything(m))
+    assert [(r.name, r.n_bodies) for r in found] == [("whole", 120)]
+    assert "the mesh is 120 bodies, more than the 50 that are judged apart" in judged_together(found)
+    few = model(row_of_hexahedra(gaps=(4,)))
+    assert judged_together(find_regions(few, everything(few))) == ""
+    assert len(bodies(m, everything(m))) == 120
 
 
 def test_regions_by_name() -> None:

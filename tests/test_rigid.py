@@ -14,7 +14,8 @@ from strategies import axis_angle
 from unturn import InputError, UsageError, io, strain
 from unturn.elements import ELEMENTS
 from unturn.model import Model, PlaneOptions, build_model
-from unturn.pipeline import StrainOptions, compute
+from unturn.options import StrainOptions
+from unturn.pipeline import compute
 from unturn.result import CellBlock, Result
 from unturn.rigid import Axis, Fit, RigidMotion, fit_rigid_motion, take_out, turn_of, unwrapped
 

@@ -12,6 +12,7 @@ from strategies import axis_angle
 from unturn import CellBlock, Result, UsageError, strain
 from unturn.elements import ELEMENTS
 from unturn.fields import LOCATIONS
+from unturn.pipeline import StrainOptions, compute
 
 ALPHA, T0 = 12e-6, 20.0
 HEAT: dict[str, Any] = {"thermal_expansion": ALPHA, "temperature": "T", "reference_temperature": T0}
@@ -205,7 +206,7 @@ def test_mechanical_measures_need_heat_and_plane_stress_an_isotropic_one() -> No
             poisson=0.3,
             **{**HEAT, "thermal_expansion": "1e-6,2e-6,0"},
         )
-    with pytest.raises(UsageError, match=r"mechanical_strain.* depend on the strain across the plane"):
+    with pytest.raises(UsageError, match=r"mechanical_strain.* depends on the strain across the plane"):
         strain(result, displacement="u", measures=["mechanical_strain"], **HEAT)
 
 
@@ -240,3 +241,15 @@ def test_defaults_and_rigid_motion_with_heat() -> None:
         np.testing.assert_allclose(
             back[name], strain(result, displacement="u", measures=[name], **HEAT).cell_data[name], atol=1e-15
         )
+
+
+@pytest.mark.practice("a coefficient of 12 is meant in millionths: no material expands a thousandth a degree")
+@pytest.mark.parametrize(
+    ("text", "told"), [("12", True), ("0,0.0011,0", True), ("1e-3", False), ("-2e-3", True)]
+)
+def test_a_coefficient_that_no_material_has_is_told(text: str, told: bool) -> None:
+    result = warmed(meshes.patch(ELEMENTS["tetra"]))
+    options = StrainOptions(thermal_expansion=text, temperature="T", reference_temperature=20.0)
+    notes = " ".join(compute(result, options).fields.notes)
+    assert ("is more than any material has" in notes) is told
+    assert ("write twelve millionths as --thermal-expansion 12e-6" in notes) is told

@@ -161,7 +161,8 @@ def test_a_name_with_spaces_is_quoted(tmp_path: Path) -> None:
     result = Result(mesh.points, (CellBlock("tetra", mesh.cells, np.arange(len(mesh.cells))),),
                     {"u": (mesh.points + mesh.points @ STRAINED.T) @ TURN.T + mesh.points @ STRAINED.T},
                     groups={"left arm's end": np.arange(10), "rest": np.arange(10, len(mesh.cells))})  # fmt: skip
-    from unturn.pipeline import StrainOptions, compute
+    from unturn.options import StrainOptions
+    from unturn.pipeline import compute
     from unturn.summary import SummaryOptions, summarise
 
     made = summarise(

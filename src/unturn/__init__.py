@@ -7,6 +7,8 @@ from typing import TYPE_CHECKING, Any
 if TYPE_CHECKING:
     from unturn import kinematics
     from unturn._api import read, strain, write
+    from unturn._api_meshes import convergence
+    from unturn._api_states import envelope
     from unturn._version import __version__
     from unturn.errors import (
         DisplacementError,
@@ -27,7 +29,9 @@ __all__ = [
     "UnturnError",
     "UsageError",
     "__version__",
+    "convergence",
     "displacement_gradient",
+    "envelope",
     "kinematics",
     "read",
     "strain",
@@ -38,7 +42,9 @@ _HOME = {
     "CellBlock": "unturn.result",
     "Result": "unturn.result",
     "__version__": "unturn._version",
+    "convergence": "unturn._api_meshes",
     "displacement_gradient": "unturn.gradient",
+    "envelope": "unturn._api_states",
     "read": "unturn._api",
     "strain": "unturn._api",
     "write": "unturn._api",

@@ -12,7 +12,7 @@ import pyvista
 from unturn._api import strain
 from unturn.io.vtk_arrays import update_attributes
 from unturn.io.vtk_result import result_from_vtk, vtk_from_result
-from unturn.pipeline import OWN_MESH
+from unturn.result import Result
 
 if TYPE_CHECKING:
     from unturn.pictures.image import Image
@@ -33,12 +33,14 @@ class UnturnAccessor:
     def strain(self, **options: Any) -> Any:
         """Return a new mesh of the same class with strain, rotation and what follows from them as arrays.
 
-        With ``at="surface"`` the free faces of solids, with ``at="quadrature"`` a cloud of points.
+        With ``at="surface"`` the free faces of solids, with ``at="quadrature"`` a cloud of points, with
+        ``borders="split"`` an unstructured grid with duplicated points.
 
         Parameters
         ----------
         **options
-            The keywords of `unturn.strain`: ``displacement``, ``measures``, ``at``, ``plane``, ``poisson`` ...
+            The keywords of `unturn.strain`: ``displacement``, ``measures``, ``at``, ``plane``, ``poisson`` ... ``zero`` and
+            ``previous`` take meshes too.
 
         Returns
         -------
@@ -65,8 +67,17 @@ class UnturnAccessor:
         >>> round(mesh.unturn.strain()["equivalent_strain"][0] * 1e6)
         867
         """
-        found = strain(result_from_vtk(self._mesh), **options)
-        if options.get("at") in OWN_MESH:
+        before = result_from_vtk(self._mesh)
+        if isinstance(options.get("zero"), pyvista.DataSet):
+            options["zero"] = result_from_vtk(options["zero"])
+        if "previous" in options:
+            given = options["previous"]
+            meshes = [given] if isinstance(given, pyvista.DataSet | Result) else given
+            options["previous"] = (
+                result_from_vtk(m) if isinstance(m, pyvista.DataSet) else m for m in meshes
+            )
+        found = strain(before, **options)
+        if found.blocks is not before.blocks:
             return pyvista.wrap(vtk_from_result(found))
         mesh = self._mesh.copy(deep=False)
         update_attributes(mesh.GetPointData(), found.point_data, "point", found.component_names)

@@ -2,17 +2,21 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterable, Mapping, Sequence
 from os import PathLike
 from typing import Literal
 
 from unturn import io
+from unturn.borders import split_mesh
 from unturn.errors import UsageError
 from unturn.gradient import PlaneModel
 from unturn.kinematics._symmetric import Floats
-from unturn.pipeline import Computed, Place, StrainOptions, compute, rigid_arrays
+from unturn.options import Borders, FacesTo, Place, StrainOptions
+from unturn.pipeline import Computed
 from unturn.recovery import Method
-from unturn.result import Association, Result
+from unturn.result import Array, Association, Result
+from unturn.rigid_parts import rigid_arrays
+from unturn.stepwise import Stepwise
 from unturn.verdict import Solve
 
 _LONGEST_PREFIX = 100
@@ -79,6 +83,10 @@ def strain(
     temperature: str | None = None,
     reference_temperature: float | None = None,
     zero: Result | None = None,
+    previous: Result | Iterable[Result] = (),
+    borders: Borders = "dominant",
+    faces: FacesTo = "mesh",
+    between_regions: bool = False,
     skin: bool = False,
     alive: str | None = None,
     prefix: str = "",
@@ -136,6 +144,20 @@ def strain(
     zero
         A step of the same series from which displacements are measured: `u - u_N` for small, `F F_N^-1` for finite
         measures.
+    previous
+        The steps before this one, in their order; a generator is read one by one. Needed by measures of what changes between
+        steps (``strain_increment``, ``deformation_rate``, ``accumulated_equivalent_strain`` ...): increments and rates take
+        the last of them, accumulated strain all. Without any at the first step of a series: the undeformed state. Rotation
+        vectors of rigid motions that are taken out continue those of the last one by whole turns.
+    borders
+        With ``at="nodes"``: ``dominant``: a point on the border of regions shows the value of the one with most volume
+        there; ``split``: such points are duplicated, so that every region shows its own value. The mesh then has more points;
+        the point array ``original_point`` holds the position of each in the file.
+    faces
+        With ``at="surface"``: ``mesh``: the free faces as a surface mesh of their own; ``cells``: their values as cell
+        arrays of the mesh itself, of each cell's face with the largest principal strain by magnitude.
+    between_regions
+        With ``at="surface"``: also the faces between cells of different regions, once for each side.
     skin
         Also compute cells whose nodes all belong to one cell of higher dimension.
     alive
@@ -180,11 +202,36 @@ def strain(
     options = StrainOptions(
         displacement, measures, base, at, recovery, solve, plane, poisson, axis, coordinates, displacement_scale,
         equivalent_poisson, remove_rigid, rigid_to, rigid_axis, frame, thermal_expansion, temperature,
-        reference_temperature, skin, alive, threads,
+        reference_temperature, skin, alive, threads, borders, faces, between_regions,
     )  # fmt: skip
-    computed = compute(result, options, zero=zero)
+    stepwise = Stepwise(options, zero)
+    if stepwise.series or remove_rigid != "none":
+        _go_through(stepwise, (previous,) if isinstance(previous, Result) else previous, result)
+    computed = stepwise.compute(result)
     computed.require_some()
     return add_fields(result, computed, prefix=prefix, overwrite=overwrite)
+
+
+def _go_through(stepwise: Stepwise, previous: Iterable[Result], result: Result) -> None:
+    """Take note of the steps before a result, and refuse measures of what changed when they are not there."""
+    number = None if result.steps is None else result.steps.current
+    count = 0
+    for step in previous:
+        stepwise.pass_over(step)
+        count += 1
+    if not stepwise.series:
+        return
+    name = stepwise.series[0]
+    if not count and number != 0:
+        raise UsageError(
+            f"{name} is what changes from one step of a series to the next: give the steps before this one with previous=."
+        )
+    total = stepwise.total
+    if total and number is not None and count != number:
+        raise UsageError(
+            f"{total} is a sum over all steps: step {number} has {number} before it, and previous= gives {count}. Give "
+            "all of them in their order."
+        )
 
 
 def add_fields(result: Result, computed: Computed, *, prefix: str = "", overwrite: bool = False) -> Result:
@@ -195,12 +242,8 @@ def add_fields(result: Result, computed: Computed, *, prefix: str = "", overwrit
     UsageError
         An array of that name is already there and `overwrite` is not set, or a prefix that formats cannot hold.
     """
-    if prefix != prefix.strip() or not prefix.isprintable() or len(prefix) > _LONGEST_PREFIX:
-        raise UsageError(
-            f"--prefix {prefix[:40]!r}: not every format keeps blanks at the ends of a name, characters that cannot be "
-            f"printed, or more than {_LONGEST_PREFIX} of them; choose another one."
-        )
-    own = computed.cloud if computed.surface is None else computed.surface.result
+    _check_prefix(prefix)
+    own = computed.own_mesh
     if own is not None:
         if prefix:
             raise UsageError(
@@ -208,24 +251,63 @@ def add_fields(result: Result, computed: Computed, *, prefix: str = "", overwrit
                 "--prefix out."
             )
         return own.with_arrays(field_data=_motions(own, computed, prefix, overwrite))
-    where: Association = "cell" if computed.nodes is None else "point"
-    found = computed.fields if computed.nodes is None else computed.nodes
-    present = result.cell_data if computed.nodes is None else result.point_data
-    arrays = {prefix + name: values for name, values in found.arrays.items()}
-    taken = [name for name in arrays if name in present]
-    if taken and not overwrite:
+    on_points, on_cells, components = computed.arrays()
+    points = {prefix + name: values for name, values in on_points.items()}
+    cells = {prefix + name: values for name, values in on_cells.items()}
+    for where, arrays, present in (("point", points, result.point_data), ("cell", cells, result.cell_data)):
+        _refuse_taken(result, where, [name for name in arrays if name in present and not overwrite])
+    if computed.nodes is not None and computed.nodes.layout.cells is not None:
+        layout = computed.nodes.layout
+        mesh = split_mesh(result, layout, computed.fields.model)
+        result = io.with_points(result, mesh, layout.point)
+    names = {(where, prefix + name): labels for (where, name), labels in components.items()}
+    motions = _motions(result, computed, prefix, overwrite)
+    return result.with_arrays(point_data=points, cell_data=cells, field_data=motions, component_names=names)
+
+
+def add_arrays(
+    result: Result,
+    where: Association,
+    arrays: Mapping[str, Array],
+    components: Mapping[str, tuple[str, ...]],
+    *,
+    prefix: str = "",
+    overwrite: bool = False,
+) -> Result:
+    """Return the result with these cell or point arrays.
+
+    Raises
+    ------
+    UsageError
+        An array of that name is already there and `overwrite` is not set, or a prefix that formats cannot hold.
+    """
+    _check_prefix(prefix)
+    present = result.cell_data if where == "cell" else result.point_data
+    named = {prefix + name: values for name, values in arrays.items()}
+    _refuse_taken(result, where, [name for name in named if name in present and not overwrite])
+    names: dict[tuple[Association, str], tuple[str, ...]] = {
+        (where, prefix + name): labels for name, labels in components.items()
+    }
+    if where == "point":
+        return result.with_arrays(point_data=named, component_names=names)
+    return result.with_arrays(cell_data=named, component_names=names)
+
+
+def _check_prefix(prefix: str) -> None:
+    if prefix != prefix.strip() or not prefix.isprintable() or len(prefix) > _LONGEST_PREFIX:
+        raise UsageError(
+            f"--prefix {prefix[:40]!r}: not every format keeps blanks at the ends of a name, characters that cannot be "
+            f"printed, or more than {_LONGEST_PREFIX} of them; choose another one."
+        )
+
+
+def _refuse_taken(result: Result, where: str, taken: Sequence[str]) -> None:
+    if taken:
         raise UsageError(
             f"{result.path + ': ' if result.path else ''}the file already has a {where} array called {taken[0]!r}; it is "
             "not overwritten unasked. Give the new "
             "arrays other names with --prefix TEXT, or replace the old ones with --overwrite."
         )
-    motions = _motions(result, computed, prefix, overwrite)
-    names: dict[tuple[Association, str], tuple[str, ...]] = {
-        (where, prefix + name): components for name, components in found.components.items()
-    }
-    if computed.nodes is not None:
-        return result.with_arrays(point_data=arrays, field_data=motions, component_names=names)
-    return result.with_arrays(cell_data=arrays, field_data=motions, component_names=names)
 
 
 def _motions(result: Result, computed: Computed, prefix: str, overwrite: bool) -> dict[str, Floats]:

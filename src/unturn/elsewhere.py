@@ -2,37 +2,25 @@
 
 from __future__ import annotations
 
-import math
 from collections.abc import Collection, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 from numpy.typing import NDArray
 
+from unturn.around import Asked, Trust, groups_of, trust_on
+from unturn.borders import BorderJump, border_jump
 from unturn.gradient import sample_points
-from unturn.kinematics._finite import BASES
 from unturn.kinematics._symmetric import Floats
-from unturn.measures import MEASURES
-from unturn.model import Model
-from unturn.nodal import NodeFields
+from unturn.measures import MEASURES, base_of
+from unturn.nodal import FOLD, NodeFields
 from unturn.numbering import node_numbers
-from unturn.peaks import Peak, Peaks
 from unturn.pipeline import Computed
-from unturn.recovery import NodeShares
+from unturn.recovery import NodeShares, sheets
 from unturn.regions import Region
-from unturn.result import Result
-from unturn.surface import Faces, SurfaceFields
+from unturn.surface import Faces, SurfaceFields, faces_model
 from unturn.trust import MOST_CHANGE, strain_error
-
-BASE_WORDS = {
-    "": "",
-    "_mechanical": ", mechanical",
-    "_green_lagrange": ", Green-Lagrange",
-    "_hencky": ", Hencky",
-    "_biot": ", Biot",
-    "_almansi": ", Almansi",
-}
-"""What stands behind the name of a statistic, by the ending of its array."""
+from unturn.trusted import BASE_WORDS, Growth, node_of
 
 
 @dataclass(frozen=True)
@@ -62,31 +50,6 @@ class ElsewhereExtreme:
 
 
 @dataclass(frozen=True)
-class Growth:
-    """A peak at centroids that keeps growing towards a node, and the next one away from it.
-
-    Attributes
-    ----------
-    region, label, array
-        As of `ElsewhereExtreme`.
-    peak
-        The peak.
-    node
-        The solver's number of the node, where the file holds them.
-    next_cell, next_value
-        -1 and NaN for none.
-    """
-
-    region: str
-    label: str
-    array: str
-    peak: Peak
-    node: int | None
-    next_cell: int
-    next_value: float
-
-
-@dataclass(frozen=True)
 class Elsewhere:
     """Extremes at another place than centroids.
 
@@ -97,11 +60,13 @@ class Elsewhere:
     extremes
         Region by region.
     growths
-        Peaks that are suspected singular.
+        Those of free surfaces that are suspected singular.
     error_percent
         Region -> estimated global error of its strain in percent.
     notes
         Sentences on how the values came about.
+    border
+        The largest jump of the strain between two regions at a node.
     """
 
     title: str
@@ -109,6 +74,16 @@ class Elsewhere:
     growths: tuple[Growth, ...] = ()
     error_percent: dict[str, float] | None = None
     notes: tuple[str, ...] = ()
+    border: Border | None = None
+
+
+@dataclass(frozen=True)
+class Border:
+    """The largest jump between the strains of two regions at a node, the solver's number of the node, and its place."""
+
+    jump: BorderJump
+    node: int | None
+    at: tuple[float, ...]
 
 
 def find_elsewhere(
@@ -116,6 +91,7 @@ def find_elsewhere(
     regions: Sequence[Region],
     numbers: NDArray[np.int64] | None,
     threads: int | None = None,
+    groups: Sequence[Region] | None = None,
 ) -> Elsewhere | None:
     """Return the extremes at nodes or on free surfaces, or None when values live at cells or quadrature points.
 
@@ -129,12 +105,13 @@ def find_elsewhere(
         The solver's element numbers, `(n_cells,)`.
     threads
         None: all processors.
+    groups
+        What `find_regions` returns for all computed cells, where it is at hand.
     """
     if computed.nodes is not None:
         return _Nodes(computed, computed.nodes, threads).find(regions)
     if computed.surface is not None:
-        extremes = tuple(e for r in regions for e in _on_surface(computed.surface, r, numbers))
-        return Elsewhere("free surfaces", extremes, notes=_surface_notes(computed.surface))
+        return _Surface(computed, computed.surface, numbers, threads, groups).find(regions)
     return None
 
 
@@ -174,24 +151,18 @@ def _rows(names: Collection[str], prefix: str = "") -> list[_Row]:
     return found
 
 
-def _base(array: str) -> str:
-    return next((b for b in BASES if array.endswith(f"_{b}")), "")
-
-
 class _Nodes:
     """Looks for extremes at nodes."""
 
     def __init__(self, computed: Computed, nodes: NodeFields, threads: int | None) -> None:
-        assert computed.fields.diagnostics is not None
-        self.computed, self.nodes, self.diagnostics = computed, nodes, computed.fields.diagnostics
-        numbering = node_numbers(computed.fields.model.result)
-        self.numbers = None if numbering is None else numbering.numbers
+        self.computed, self.nodes = computed, nodes
+        self.numbering = node_numbers(computed.fields.model.result)
         self.rows = _rows(nodes.arrays)
         strains = [n for n in nodes.arrays if MEASURES[n].unit == "strain"]
-        bases = list(dict.fromkeys(_base(n) for n in strains)) or [""]
+        bases = list(dict.fromkeys(base_of(n) for n in strains)) or [""]
         self.errors = {
             b: strain_error(nodes.of_finite if b else nodes.recovered, threads, b)
-            for b in dict.fromkeys([bases[0], *(_base(r.array) for r in self.rows)])
+            for b in dict.fromkeys([bases[0], *(base_of(r.array) for r in self.rows)])
         }
         self.main = bases[0]
 
@@ -200,13 +171,17 @@ class _Nodes:
         return Elsewhere(
             "nodes",
             tuple(e for r in regions for e in self._extremes(r)),
-            tuple(g for r in regions for g in self._growths(r)),
-            {r.name: error.percentage(r.cells) for r in regions},
-            self.nodes.recovered.notes,
+            error_percent={r.name: error.percentage(r.cells) for r in regions},
+            notes=self.nodes.recovered.notes,
+            border=self._border(regions),
         )
 
-    def _node(self, point: int) -> int | None:
-        return None if self.numbers is None else int(self.numbers[point])
+    def _border(self, regions: Sequence[Region]) -> Border | None:
+        jump = border_jump(self.nodes.of_finite if self.main else self.nodes.recovered, regions, self.main)
+        if jump is None:
+            return None
+        at = self.computed.fields.model.points[jump.point]
+        return Border(jump, node_of(self.numbering, jump.point), tuple(float(x) for x in at))
 
     def _extremes(self, region: Region) -> list[ElsewhereExtreme]:
         """Return the extremes of a region's own side of its nodes; on borders others may have been written."""
@@ -224,51 +199,13 @@ class _Nodes:
             change = MOST_CHANGE[row.kind]
             if row.kind == "equivalent_strain" and effective is not None:
                 change *= 1.5 / (1.0 + effective)
-            bound = change * float(self.errors[_base(row.array)].plus_minus_shares[own[pick]])
-            place = {"point": at, "node": self._node(at)}
+            bound = change * float(self.errors[base_of(row.array)].plus_minus_shares[own[pick]])
+            place = {"point": at, "node": node_of(self.numbering, at)}
             found.append(
                 ElsewhereExtreme(region.name, row.label, name, float(values[pick]), bound, place,
                                  tuple(float(x) for x in points[at]))
             )  # fmt: skip
         return found
-
-    def _growths(self, region: Region) -> list[Growth]:
-        """Return the principal peaks of a region that keep growing towards a node."""
-        arrays = {n: a for n, a in self.computed.fields.arrays.items() if n.startswith("principal_strain")}
-        if not arrays and not self.main:
-            arrays = {"principal_strain": self.diagnostics.principal}
-        found = []
-        for row in (r for r in _rows(arrays) if r.column is not None):
-            recovered = self.nodes.behind(row.array)
-            peaks = Peaks(recovered, _middles(recovered.shares.model), self.diagnostics.volume)
-            name, values = row.component(arrays[row.array])
-            peak = peaks.find(values, region.cells, row.smallest)
-            size = float(np.nanmax(np.abs(arrays[row.array][region.cells]), initial=0.0))
-            negligible = abs(peak.value) < _NEGLIGIBLE * size
-            if peak.cell >= 0 and peak.singular and not negligible and not self._resolved(row, region, peak):
-                after = peaks.next_peak(values, region.cells, peak, row.smallest)
-                node = self._node(peak.point)
-                found.append(Growth(region.name, row.label, name, peak, node, after.cell, after.value))
-        return found
-
-    def _resolved(self, row: _Row, region: Region, peak: Peak) -> bool:
-        """Return whether the elements around the node of a peak agree with what is recovered there.
-
-        At a singular point they never do: what recovery changes there stays in proportion to the peak, however fine the
-        mesh. A steep smooth field, such as bending across a thin part, they follow.
-        """
-        shares = self.nodes.behind(row.array).shares
-        own = _shares_of(shares, region.cells)
-        here = own[shares.point[own] == peak.point]
-        return bool(
-            (self.errors[_base(row.array)].plus_minus_shares[here] < _RESOLVED * abs(peak.value)).all()
-        )
-
-
-_NEGLIGIBLE = 1e-3  # of the largest principal strain of the region: a smaller extreme is no peak
-_RESOLVED = 0.3
-"""Plus and minus at the node of a peak, as a share of it, below which the mesh resolves it: 0.6 to 13 was seen at corners
-and point loads with four kinds of elements each, 0.05 to 0.2 in bending with 4 and 8 quadratic bricks in the thickness."""
 
 
 def _shares_of(shares: NodeShares, cells: NDArray[np.int64]) -> NDArray[np.int64]:
@@ -281,40 +218,85 @@ def _shares_of(shares: NodeShares, cells: NDArray[np.int64]) -> NDArray[np.int64
     return np.flatnonzero(mask)
 
 
-def _middles(model: Model) -> Floats:
-    """Return the middle of the corners of every cell where the gradient is taken `(n_cells, 3)`; NaN if not computed."""
-    middles = np.full((model.result.n_cells, 3), np.nan)
-    for block in model.blocks:
-        if block.row is not None:
-            middles[block.index] = model.points[block.connectivity[:, : block.row.n_corners]].mean(axis=1)
-    return middles
+class _Surface:
+    """Looks for extremes on free surfaces: each face is a cell of the mesh of all of them."""
 
+    def __init__(
+        self,
+        computed: Computed,
+        surface: SurfaceFields,
+        numbers: NDArray[np.int64] | None,
+        threads: int | None,
+        groups: Sequence[Region] | None,
+    ) -> None:
+        self.computed, self.surface, self.numbers = computed, surface, numbers
+        self.threads, self.groups = threads, groups
+        self.parents = np.asarray(surface.result.cell_data["parent_cell"])
+        self.numbering = node_numbers(computed.fields.model.result)
 
-def _on_surface(
-    surface: SurfaceFields, region: Region, numbers: NDArray[np.int64] | None
-) -> list[ElsewhereExtreme]:
-    result: Result = surface.result
-    parents = np.asarray(result.cell_data["parent_cell"])
-    mask = np.zeros(surface.faces.model.result.n_cells, dtype=bool)
-    mask[region.cells] = True
-    found = []
-    for row in _rows(result.cell_data, "surface_"):
-        name, values = row.component(np.asarray(result.cell_data[row.array]))
-        at = row.pick(values, mask[parents])
-        if at < 0:
-            continue
-        cell = int(parents[at])
+    def find(self, regions: Sequence[Region]) -> Elsewhere:
+        """Return the extremes of the faces of each region's cells."""
+        result, n_cells = self.surface.result, self.surface.faces.model.result.n_cells
+        rows = _rows(result.cell_data, "surface_")
+        picked: list[tuple[Region, _Row, str, Asked]] = []
+        for region in regions:
+            mask = np.zeros(n_cells, dtype=bool)
+            mask[region.cells] = True
+            faces = np.flatnonzero(mask[self.parents])
+            of_region = []
+            for row in rows:
+                name, values = row.component(np.asarray(result.cell_data[row.array]))
+                at = row.pick(values, mask[self.parents])
+                if at >= 0:
+                    of_region.append((row, name, values, at))
+            size = max((abs(float(values[at])) for _, _, values, at in of_region), default=0.0)
+            picked += [
+                (region, row, name, Asked(row.array, values, faces, at, row.smallest, size))
+                for row, name, values, at in of_region
+            ]
+        trusts = self._trusts([asked for *_, asked in picked])
+        return Elsewhere(
+            "free surfaces",
+            tuple(self._extreme(*p, trust) for p, trust in zip(picked, trusts)),
+            tuple(self._growth(*p, trust) for p, trust in zip(picked, trusts) if trust.singular),
+            notes=_surface_notes(self.surface),
+        )
+
+    def _trusts(self, asked: list[Asked]) -> list[Trust]:
+        model = faces_model(self.surface.faces, self.computed.request.get("poisson"))
+        whole = groups_of(self.computed.fields.model, self.groups)
+        groups = sheets(model, whole[self.parents], FOLD)
+        area = np.asarray(self.surface.result.cell_data["area"])
+        return trust_on(model, area, groups, asked, self.computed.equivalent_poisson, threads=self.threads)
+
+    def _extreme(self, region: Region, row: _Row, name: str, asked: Asked, trust: Trust) -> ElsewhereExtreme:
+        cell = int(self.parents[asked.cell])
         place: dict[str, int | None] = {
             "cell": cell,
-            "element": None if numbers is None else int(numbers[cell]),
-            "face": int(result.cell_data["parent_face"][at]),
+            "element": None if self.numbers is None else int(self.numbers[cell]),
+            "face": int(self.surface.result.cell_data["parent_face"][asked.cell]),
         }
-        label = row.label if row.column is None else f"{row.label}, in plane"
-        found.append(
-            ElsewhereExtreme(region.name, label, name, float(values[at]), math.nan, place,
-                             _middle(surface.faces, at))
-        )  # fmt: skip
-    return found
+        value = float(asked.values[asked.cell])
+        at = _middle(self.surface.faces, asked.cell)
+        return ElsewhereExtreme(region.name, _in_plane(row), name, value, trust.plus_minus, place, at)
+
+    def _growth(self, region: Region, row: _Row, name: str, asked: Asked, trust: Trust) -> Growth:
+        after = int(self.parents[trust.next_cell]) if trust.next_cell >= 0 else -1
+        return Growth(
+            "free surfaces",
+            region.name,
+            _in_plane(row),
+            name,
+            "minimum" if row.smallest else "maximum",
+            int(self.parents[asked.cell]),
+            float(asked.values[asked.cell]),
+            node_of(self.numbering, trust.point),
+            replace(trust, next_cell=after),
+        )
+
+
+def _in_plane(row: _Row) -> str:
+    return row.label if row.column is None else f"{row.label}, in plane"
 
 
 def _middle(faces: Faces, face: int) -> tuple[float, ...]:
@@ -331,4 +313,6 @@ def _surface_notes(surface: SurfaceFields) -> tuple[str, ...]:
     faces = surface.result.n_cells
     left = sum(len(cells) for cells in surface.left_out.values())
     note = f"free surfaces: {faces} faces, strain from the face's own nodes at its centroid"
+    between = int(np.sum(surface.result.cell_data.get("between_groups", 0)))
+    note += f"; {between} of them between regions" if between else ""
     return (note + (f"; {left} without values" if left else ""),)

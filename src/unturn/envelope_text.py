@@ -11,12 +11,14 @@ from typing import Any
 import numpy as np
 
 from unturn._version import __version__
-from unturn.envelope import RANGE, Envelope, Judged, Tracked
+from unturn.envelope_arrays import RANGE
 from unturn.measures import MEASURES
 from unturn.series import SERIES_MEASURES
+from unturn.states import Envelope, Judged, Tracked
 from unturn.statistics import statistics
 from unturn.summary import CAUTION, cell_counts, equivalent_form, mesh_kind
-from unturn.summary_text import _FINITE_ONLY, _advice, _aligned, _micro, _of_its_strain
+from unturn.summary_text import _FINITE_ONLY, _advice, _aligned, _micro, _of_its_strain, _one_digit
+from unturn.trusted import BASE_WORDS
 
 SCHEMA = "unturn.envelope/1"
 _MOST_COLUMNS = 5
@@ -30,7 +32,7 @@ class _Peak:
     of: Tracked
     component: str
     value: float
-    cell: int
+    place: int  # -1: none
     states: tuple[int, ...]
     percentile: float  # 99.9 % of the volume below; NaN for smallest values
 
@@ -41,17 +43,18 @@ class _Peak:
 
 
 def _peaks(envelope: Envelope, region: Judged) -> Iterator[_Peak]:
-    """Yield the extremes of a region over cells and states."""
+    """Yield the extremes of a region over its places and the states."""
+    places = envelope.places
+    own = places.of(region.region.cells)
     for of in envelope.tracked:
-        values = np.asarray(envelope.arrays[of.array], dtype=np.float64)
-        values = values.reshape(len(values), -1)
+        values = np.asarray(of.values, dtype=np.float64).reshape(places.n, -1)
         upper = of.which == "maximum"
         for c, label in enumerate(envelope.components.get(of.array, ("",))):
-            s = statistics(values[:, c], envelope.volume, region.region.cells, (99.9,) if upper else ())
-            value, cell = (s.maximum, s.at_maximum) if upper else (s.minimum, s.at_minimum)
-            made_by = [envelope.arrays[key].reshape(len(values), -1) for key in of.made_by]
-            states = tuple(int(at[cell, c]) for at in made_by) if cell >= 0 else ()
-            yield _Peak(of, label, value, cell, states, s.percentiles.get(99.9, math.nan))
+            s = statistics(values[:, c], places.weight, own, (99.9,) if upper else ())
+            value, place = (s.maximum, s.at_maximum) if upper else (s.minimum, s.at_minimum)
+            made_by = [states.reshape(places.n, -1) for states in of.made_by]
+            states = tuple(int(at[place, c]) for at in made_by) if place >= 0 else ()
+            yield _Peak(of, label, value, place, states, s.percentiles.get(99.9, math.nan))
 
 
 def _unit(name: str) -> str:
@@ -102,8 +105,9 @@ def _region_data(envelope: Envelope, r: Judged) -> dict[str, Any]:
     cells, v = r.region.cells, r.verdict
     found: dict[str, Any] = {}
     for p in _peaks(envelope, r):
-        place = _place(envelope, p.cell)
-        entry = {"value": p.value, **place, "states": list(p.states)}
+        place = _place(envelope, p.place)
+        times = [envelope.states[k].time for k in p.states]
+        entry = {"value": p.value, **place, "states": list(p.states), "times": times}
         if p.of.which == "maximum":
             entry["99.9_percent_of_volume_below"] = p.percentile
         found.setdefault(p.name, {})[p.of.which] = entry
@@ -119,18 +123,21 @@ def _region_data(envelope: Envelope, r: Judged) -> dict[str, Any]:
             "largest_rotation_degrees": v.largest_rotation,
             "action": v.action,
         },
+        "noise_floor": v.noise,
         "extremes": found,
     }
 
 
-def _place(envelope: Envelope, cell: int) -> dict[str, Any]:
-    numbers = envelope.numbers
-    known = cell >= 0
-    return {
-        "cell": cell if known else None,
-        "element": int(numbers.numbers[cell]) if known and numbers is not None else None,
-        "at": [float(x) for x in envelope.centroid[cell]] if known else None,
-    }
+def _place(envelope: Envelope, place: int) -> dict[str, Any]:
+    found: dict[str, Any] = dict.fromkeys(("cell", "element", "point", "node", "at"))
+    if place >= 0:
+        position = int(envelope.places.position[place])
+        ours, theirs = ("point", "node") if envelope.places.on == "point" else ("cell", "element")
+        found[ours] = position
+        if envelope.numbers is not None:
+            found[theirs] = int(envelope.numbers.numbers[position])
+        found["at"] = [float(x) for x in envelope.places.at[place]]
+    return found
 
 
 def envelope_text(envelope: Envelope, files: Sequence[str]) -> str:
@@ -196,11 +203,12 @@ def _table(envelope: Envelope) -> list[str]:
     rest = len(by_region) - _MOST_COLUMNS
     if rest > 0:
         by_region = sorted(by_region, key=lambda pair: -_leading(pair[1]))[:_MOST_COLUMNS]
-    rows = [["microstrain", *(r.region.name for r, _ in by_region)]]
+    strained = any(_unit(p.of.measure) == "strain" for _, peaks in by_region for p in peaks)
+    rows = [["microstrain" if strained else "", *(r.region.name for r, _ in by_region)]]
     for row in zip(*(peaks for _, peaks in by_region)):
         rows.append([_label(row[0]), *(_value(p) for p in row)])
-        rows.append(["  where", *(_where(envelope, p.cell) for p in row)])
-        rows.append(["  at x, y, z", *(_at(envelope, p.cell) for p in row)])
+        rows.append(["  where", *(_where(envelope, p.place) for p in row)])
+        rows.append(["  at x, y, z", *(_at(envelope, p.place) for p in row)])
         if row[0].of.made_by:
             rows.append(["  " + envelope.options.kind, *(_states(envelope, p) for p in row)])
         if row[0].name.startswith("equivalent_strain"):
@@ -229,11 +237,26 @@ def _leading(peaks: Sequence[_Peak]) -> float:
     return max(found, default=-1.0)
 
 
+_WORDS = {
+    "equivalent_strain": "equivalent",
+    "max_shear_strain": "max shear",
+    "volumetric_strain": "volumetric",
+}
+"""Shorter words for some measures, as in the summary of `unturn strain`."""
+
+
 def _label(p: _Peak) -> str:
-    if p.of.measure.startswith(RANGE):
-        return f"equivalent of the largest change{p.of.measure.removeprefix(RANGE).replace('_', ' ')}"
-    unit = {"strain": "", "1": ""}.get(_unit(p.of.measure), f", {_unit(p.of.measure)}")
-    return f"{p.name.replace('_', ' ')}{unit}, " + ("largest" if p.of.which == "maximum" else "smallest")
+    measure = p.of.measure
+    ending = max((e for e in BASE_WORDS if measure.endswith(e)), key=len)
+    stem, base = measure.removesuffix(ending), BASE_WORDS[ending]
+    if stem == RANGE:
+        return f"equivalent of the largest change{base}"
+    which = "largest" if p.of.which == "maximum" else "smallest"
+    if stem == "principal_strain":
+        return f"{which} principal{base}"
+    unit = {"strain": "", "1": ""}.get(_unit(measure), f", {_unit(measure)}")
+    component = f" {p.component}" if p.component else ""
+    return f"{_WORDS.get(stem, stem.replace('_', ' '))}{component}, {which}{base}{unit}"
 
 
 def _value(p: _Peak) -> str:
@@ -242,15 +265,17 @@ def _value(p: _Peak) -> str:
     return f"{p.value:.4g}" if math.isfinite(p.value) else "-"
 
 
-def _where(envelope: Envelope, cell: int) -> str:
-    if cell < 0:
+def _where(envelope: Envelope, place: int) -> str:
+    if place < 0:
         return "-"
-    place = _place(envelope, cell)
-    return f"cell {cell}" if place["element"] is None else f"element {place['element']} (cell {cell})"
+    found = _place(envelope, place)
+    ours, theirs = ("point", "node") if envelope.places.on == "point" else ("cell", "element")
+    own = f"{ours} {found[ours]}"
+    return own if found[theirs] is None else f"{theirs} {found[theirs]} ({own})"
 
 
-def _at(envelope: Envelope, cell: int) -> str:
-    return "-" if cell < 0 else ", ".join(f"{x:.5g}" for x in envelope.centroid[cell])
+def _at(envelope: Envelope, place: int) -> str:
+    return "-" if place < 0 else ", ".join(f"{x:.5g}" for x in envelope.places.at[place])
 
 
 def _states(envelope: Envelope, p: _Peak) -> str:
@@ -261,9 +286,10 @@ def _states(envelope: Envelope, p: _Peak) -> str:
 def _tail(envelope: Envelope) -> list[str]:
     strain = envelope.options.strain
     kind, n = envelope.options.kind, len(envelope.states) - 1
-    place = {"centroid": "centroids", "mean": "means over the volume"}.get(strain.at, strain.at)
+    places = {"centroid": "element centroids", "mean": "element means over the volume"}
+    place = places.get(strain.at, f"nodes, recovered ({strain.recovery}), never across regions")
     lines = [
-        f"equivalent = {equivalent_form(strain.equivalent_poisson)}; values at element {place}; shear is tensor shear",
+        f"equivalent = {equivalent_form(strain.equivalent_poisson)}; values at {place}; shear is tensor shear",
         f"{kind}s in the arrays: zero-based position, 0 to {n}; -1 where nothing was computed",
     ]
     if any(name.startswith(RANGE) for name in envelope.arrays):
@@ -272,10 +298,14 @@ def _tail(envelope: Envelope) -> list[str]:
             "is not a strain range"
         )
     left = ", ".join(f"{len(cells)} {reason}" for reason, cells in envelope.left_out.items())
-    lines.append(f"never computed: {left or 'no cell'}")
+    noise = max((r.verdict.noise for r in envelope.judged), default=math.nan)
+    floor = "below 1e-6" if noise < 1e-12 else f"+-{_one_digit(noise * 1e6)}"
+    precision = f"; stored precision {floor} microstrain" if math.isfinite(noise) else ""
+    lines.append(f"never computed: {left or 'no cell'}{precision}")
     numbers = envelope.numbers
-    of = f"element numbers are those of '{numbers.name}'; " if numbers is not None else ""
-    lines.append(f"{of}cell = zero-based position in the file")
+    what = "node" if envelope.places.on == "point" else "element"
+    of = f"{what} numbers are those of '{numbers.name}'; " if numbers is not None else ""
+    lines.append(f"{of}{envelope.places.on} = zero-based position in the file")
     lines += [f"note: {note}" for note in envelope.notes]
     lines.append(CAUTION)
     return lines

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 from typing import Literal
 
@@ -12,13 +12,15 @@ from numpy.typing import NDArray
 from unturn.errors import UsageError, close_matches
 from unturn.kinematics._finite import BASES
 from unturn.kinematics._symmetric import Floats
-from unturn.measures import GEOMETRY, MEASURES, SURFACE_AXES, choose_measures
+from unturn.measures import ESTIMATES, GEOMETRY, MEASURES, SURFACE_AXES, choose_measures
 from unturn.series import SERIES_MEASURES, StepChanges
 
 Kind = Literal["step", "case"]
+Which = Literal["maximum", "minimum", "largest_magnitude"]
 Stored = NDArray[np.float64] | NDArray[np.int32]
 
 _NO_RANGE = "almansi"  # its axes turn with the body: tensors of two steps cannot be subtracted
+_MECHANICAL = "mechanical"
 _NO_TENSOR = ("displacement_gradient", "small_strain_error")
 
 
@@ -40,22 +42,20 @@ class Extremes:
             at[mask] = state
         return higher, lower
 
-    def arrays(self, name: str, kind: Kind, signed: bool) -> dict[str, Stored]:
-        """Return the arrays of a measure by their names; of equal magnitudes the earlier state counts."""
+    def found(self, signed: bool) -> Iterator[tuple[Which, Stored, Stored]]:
+        """Yield each extreme and the states that made it, NaN and -1 for none; of equal ones the earlier state counts."""
         for extreme, at in ((self.maximum, self.at_maximum), (self.minimum, self.at_minimum)):
             extreme[at < 0] = np.nan
-        found: dict[str, Stored] = {
-            f"{name}_maximum": self.maximum,
-            f"{name}_maximum_{kind}": self.at_maximum,
-            f"{name}_minimum": self.minimum,
-            f"{name}_minimum_{kind}": self.at_minimum,
-        }
+        yield "maximum", self.maximum, self.at_maximum
+        yield "minimum", self.minimum, self.at_minimum
         if signed:
             high, low = np.abs(self.maximum), np.abs(self.minimum)
             upper = (high > low) | ((high == low) & (self.at_maximum <= self.at_minimum))
-            found[f"{name}_largest_magnitude"] = np.where(upper, high, low)
-            found[f"{name}_largest_magnitude_{kind}"] = np.where(upper, self.at_maximum, self.at_minimum)
-        return found
+            yield (
+                "largest_magnitude",
+                np.where(upper, high, low),
+                np.where(upper, self.at_maximum, self.at_minimum),
+            )
 
 
 @dataclass(frozen=True)
@@ -64,7 +64,7 @@ class Plan:
 
     extremes: tuple[str, ...]
     series: tuple[str, ...]
-    families: tuple[str, ...]  # of strain tensors with a range: "" or a finite base
+    families: tuple[str, ...]  # of strain tensors with a range: "", "mechanical" or a finite base
     needs: tuple[str, ...]
     notes: tuple[str, ...]
 
@@ -76,8 +76,10 @@ class Plan:
         )
 
 
-def plan_envelope(asked: Sequence[str] | None, base: str, changes: StepChanges, tensor_range: bool) -> Plan:
-    """Return what an envelope of these measures needs.
+def plan_envelope(
+    asked: Sequence[str] | None, base: str, changes: StepChanges, tensor_range: bool, mechanical: bool = False
+) -> Plan:
+    """Return what an envelope of these measures needs; `mechanical`: a free thermal strain is given.
 
     Raises
     ------
@@ -86,13 +88,17 @@ def plan_envelope(asked: Sequence[str] | None, base: str, changes: StepChanges, 
     """
     own = None if asked is None else [n for n in asked if n not in SERIES_MEASURES]
     for name in own or ():
+        if name in ESTIMATES:
+            raise UsageError(
+                f"{name} tells how far one step can be trusted and has no envelope: ask for it with 'unturn strain'."
+            )
         if name not in (*MEASURES, *GEOMETRY, *SURFACE_AXES, "all"):
             known = [*MEASURES, *SERIES_MEASURES]
             raise UsageError(
                 f"no measure is called {name!r}.{close_matches(name, known)} Measures: those of 'unturn strain', and of a "
                 f"series {', '.join(SERIES_MEASURES)}."
             )
-    chosen = choose_measures(own, base) if own is None or own else ()
+    chosen = choose_measures(own, base, mechanical) if own is None or own else ()
     for name in own or ():
         if name in (*GEOMETRY, *SURFACE_AXES) or name.startswith("principal_direction"):
             raise UsageError(
@@ -105,7 +111,7 @@ def plan_envelope(asked: Sequence[str] | None, base: str, changes: StepChanges, 
     if tensor_range and _NO_RANGE in families:
         notes = ("no strain range of the Almansi strain: its axes turn with the body, so that tensors of two steps "
                  "cannot be subtracted",)  # fmt: skip
-    ranged = [f for f in ("", *BASES) if f in families - {_NO_RANGE}] if tensor_range else []
+    ranged = [f for f in ("", _MECHANICAL, *BASES) if f in families - {_NO_RANGE}] if tensor_range else []
     needs = {*extremes, *changes.needs, *(strain_tensor(f) for f in ranged)}
     for suffix in (n.removeprefix("principal_strain") for n in extremes if n.startswith("principal_strain")):
         needs.update(f"principal_direction_{k}{suffix}" for k in (1, 2, 3))
@@ -113,9 +119,13 @@ def plan_envelope(asked: Sequence[str] | None, base: str, changes: StepChanges, 
 
 
 def _family(name: str) -> str:
+    if MEASURES[name].mechanical:
+        return _MECHANICAL
     return next((b for b in BASES if name.endswith(f"_{b}")), "")
 
 
 def strain_tensor(family: str) -> str:
-    """Return the name of the strain tensor of a base; ``""`` is the small strain."""
+    """Return the name of the strain tensor of a family; ``""`` is the small strain."""
+    if family == _MECHANICAL:
+        return "mechanical_strain"
     return f"strain_{family}" if family else "strain"

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from typing import Literal
 
 import numpy as np
@@ -150,6 +150,8 @@ def compute_fields(
     if at not in LOCATIONS:
         raise UsageError(f"at={at!r} is not known; use one of {', '.join(LOCATIONS)}.")
     check_request(model, names, frame, thermal)
+    if thermal is not None:
+        model = replace(model, notes=(*model.notes, *thermal.notes))
     job = _Job(model, names, at, equivalent_poisson, diagnose, frame, thermal)
     for block in model.blocks:
         if block.row is not None and len(block.active):
@@ -179,12 +181,14 @@ def _check_third_direction(model: Model, names: Sequence[str]) -> None:
     if model.plane is None or model.plane.model is not None:
         return
     bound = [n for n in names if n in MEASURES and MEASURES[n].needs_third]
+    asked = [n for n in bound if not MEASURES[n].directions]
+    bound = asked or bound  # directions may be computed for the values alone
     if bound:
         raise UsageError(
-            f"{model.result.path + ': ' if model.result.path else ''}the mesh is plane, and {', '.join(bound)} depend "
-            "on the strain across the plane, which the displacement does not hold: state it with --plane strain, "
-            "--plane stress --poisson NU or --plane axisymmetric, or ask for in-plane measures only "
-            "(--measures strain,rotation)."
+            f"{model.result.path + ': ' if model.result.path else ''}the mesh is plane, and {', '.join(bound)} "
+            f"depend{'s' * (len(bound) == 1)} on the strain across the plane, which the displacement does not hold: "
+            "state it with --plane strain, --plane stress --poisson NU or --plane axisymmetric, or ask for in-plane measures "
+            "only (--measures strain,rotation)."
         )
 
 

@@ -314,6 +314,16 @@ SURFACE_AXES: dict[str, str] = {
 }
 """Axes of the frame of a surface mesh, on request only."""
 
+ESTIMATES: dict[str, str] = {
+    name + (f"_{base}" if base else ""): meaning + (f", of the {_BASE_WORDS[base]}" if base else "")
+    for base in ("", *BASES)
+    for name, meaning in (
+        ("strain_error", "root mean square over the cell of norm(e* - e): recovered less its own strain"),
+        ("strain_jump", "largest norm(e_a - e_b) between cells of one region that meet at a node"),
+    )
+}
+"""Estimates of how far a strain can be trusted, on request only: they need the gradient at nodes."""
+
 DEFAULT_MEASURES = ("strain", "rotation", "equivalent_strain", "principal_strain")
 DEFAULT_MECHANICAL = ("mechanical_strain", "equivalent_strain_mechanical", "principal_strain_mechanical")
 
@@ -344,7 +354,7 @@ def choose_measures(
     >>> choose_measures(["rotation", "strain"], base="green-lagrange")
     ('finite_rotation', 'strain_green_lagrange')
     """
-    known = [*MEASURES, *GEOMETRY, *SURFACE_AXES]
+    known = [*MEASURES, *GEOMETRY, *SURFACE_AXES, *ESTIMATES]
     counterpart = _counterparts(base)
     wanted: set[str] = set()
     if isinstance(names, str):
@@ -363,7 +373,8 @@ def choose_measures(
         else:
             raise UsageError(
                 f"no measure is called {name!r}.{close_matches(name, [*known, 'all'])} "
-                f"Measures: {', '.join((*SMALL, *GEOMETRY))}, or all; finite ones: {', '.join(_finite_names())}."
+                f"Measures: {', '.join((*SMALL, *GEOMETRY))}, or all; beside them: strain_error, strain_jump; finite ones: "
+                f"{', '.join(_finite_names())}."
             )
     bound = [k for k in wanted if k in MEASURES and MEASURES[k].mechanical]
     if bound and not mechanical:
@@ -394,4 +405,16 @@ def _counterparts(base: str) -> dict[str, str]:
             f"no base is called {base!r}.{close_matches(base, names)} Bases: {', '.join(names)}."
         )
     rows = [*_finite_motion(), *_finite_rows(key)]
-    return {row.base: row.name for row in rows if row.base}
+    estimates = {n: f"{n}_{key}" for n in ("strain_error", "strain_jump")}
+    return {**{row.base: row.name for row in rows if row.base}, **estimates}
+
+
+def base_of(name: str) -> str:
+    """Return the finite base in the name of an array; empty for none.
+
+    Examples
+    --------
+    >>> base_of("strain_error_green_lagrange"), base_of("strain_error")
+    ('green_lagrange', '')
+    """
+    return next((b for b in BASES if name.endswith(f"_{b}")), "")

@@ -3,11 +3,12 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 import numpy as np
 from numpy.typing import NDArray
 
+from unturn.borders import Layout, lay_out
 from unturn.errors import UsageError
 from unturn.fields import check_request, component_names, fill_measures, with_thermal_thickness
 from unturn.frames import Frame
@@ -31,7 +32,7 @@ class NodeFields:
     Attributes
     ----------
     arrays
-        Measure name -> `(n_points,)` or `(n_points, components)`; NaN at nodes of no computed cell.
+        Measure name -> `(n,)` or `(n, components)`, n of `layout`; NaN at nodes of no computed cell.
     components
         Names of the components.
     recovered
@@ -40,13 +41,19 @@ class NodeFields:
         That of finite measures; another one when they are measured from a zero step.
     free
         `(6, n_shares)` free thermal strain of the shares of the nodes, or None.
+    layout
+        Which points the rows of the arrays are of.
+    changes
+        Measures of what changed since the step before, by name, as `arrays`.
     """
 
     arrays: dict[str, Floats]
     components: dict[str, tuple[str, ...]]
     recovered: Recovered
     of_finite: Recovered
+    layout: Layout
     free: Floats | None = None
+    changes: dict[str, Floats] = field(default_factory=dict)
 
     def behind(self, name: str) -> Recovered:
         """Return the recovered gradient that a measure follows from."""
@@ -70,6 +77,16 @@ def _split(
     return Split(H, equivalent_poisson, directions, finite, free)
 
 
+def recover_in_regions(
+    model: Model, regions: Sequence[Region], method: Method = "patch", threads: int | None = None
+) -> Recovered:
+    """Return the gradient at nodes, never averaged across borders of regions, dimensions or folds of surfaces."""
+    groups = np.zeros(model.result.n_cells, dtype=np.int64)
+    for number, region in enumerate(regions, 1):
+        groups[region.cells] = number
+    return recover_gradient(model, sheets(model, groups, FOLD), method, threads)
+
+
 def nodal_fields(
     model: Model,
     names: Sequence[str],
@@ -80,6 +97,8 @@ def nodal_fields(
     frame: Frame | None = None,
     thermal: Thermal | None = None,
     threads: int | None = None,
+    split: bool = False,
+    layout: Layout | None = None,
 ) -> NodeFields:
     """Return measures at nodes.
 
@@ -96,6 +115,10 @@ def nodal_fields(
         ``patch``, ``extrapolate`` or ``average``, see `recover_gradient`.
     equivalent_poisson, frame, thermal, threads
         As in `compute_fields`.
+    split
+        Give every region its own value on a border: further rows stand for duplicates of its points.
+    layout
+        That of other measures on the same cells and regions, to be kept.
 
     Raises
     ------
@@ -105,27 +128,26 @@ def nodal_fields(
     """
     check_request(model, names, frame, thermal)
     _check(model, names, frame, thermal)
-    groups = np.zeros(model.result.n_cells, dtype=np.int64)
-    for number, region in enumerate(regions, 1):
-        groups[region.cells] = number
-    groups = sheets(model, groups, FOLD)
-    recovered = recover_gradient(model, groups, method, threads)
+    recovered = recover_in_regions(model, regions, method, threads)
+    layout = layout or lay_out(recovered, split)
     measures = [MEASURES[name] for name in names]
-    n = model.result.n_points
+    n, share = len(layout.point), layout.shares(recovered)
     arrays = {m.name: np.empty((n, len(m.components)) if m.components else n) for m in measures}
     free = None if thermal is None else _free_strain(recovered.shares, thermal)
 
     def work(start: int, stop: int) -> None:
         rows = slice(start, stop)
-        part = None if free is None else free[:, recovered.share[rows]]
+        part = None if free is None else free[:, share[rows]]
+        H = recovered.values[:, :, share[rows]]
+        H[:, :, share[rows] < 0] = np.nan
         directions = any(m.directions for m in measures)
         with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
-            split = _split(recovered.H[:, :, rows], model, equivalent_poisson, part, directions)
-            axes = None if frame is None else frame.axes(model.points[rows].T, rows, None)
-            fill_measures(arrays, rows, measures, split, axes)
+            found = _split(H, model, equivalent_poisson, part, directions)
+            axes = None if frame is None else frame.axes(model.points[layout.point[rows]].T, rows, None)
+            fill_measures(arrays, rows, measures, found, axes)
 
     over_chunks(work, [(s, min(s + _CHUNK, n)) for s in range(0, n, _CHUNK)], threads)
-    return NodeFields(arrays, component_names(measures, frame), recovered, recovered, free)
+    return NodeFields(arrays, component_names(measures, frame), recovered, recovered, layout, free)
 
 
 def _check(model: Model, names: Sequence[str], frame: Frame | None, thermal: Thermal | None) -> None:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass
 
 import numpy as np
@@ -94,6 +95,7 @@ class Peaks:
         ones = np.ones(len(at[0]), dtype=np.int8)
         self.corners = sparse.coo_array((ones, at), shape=(n_cells, len(shares))).tocsr()
         self.cells = self.corners.T.tocsr()
+        self._known: dict[int, _Rings] = {}
 
     def find(self, values: Floats, cells: Ints, smallest: bool = False) -> Peak:
         """Return the largest (smallest) of `values[cells]` as a peak.
@@ -122,7 +124,14 @@ class Peaks:
         shown = tuple(sign * m for m in means)
         return Peak(cell, float(values[cell]), point, distances, shown, near, far, bool(singular))
 
-    def next_peak(self, values: Floats, cells: Ints, peak: Peak, smallest: bool = False) -> Peak:
+    def next_peak(
+        self,
+        values: Floats,
+        cells: Ints,
+        peak: Peak,
+        smallest: bool = False,
+        suspected: Callable[[Peak], bool] = lambda peak: peak.singular,
+    ) -> Peak:
         """Return the most extreme peak of `cells` that is not suspected singular, away from `peak`.
 
         The cells of the first two rings around a suspected peak are left out, and so on with the next while that is
@@ -131,48 +140,82 @@ class Peaks:
         rest = np.zeros(len(values), dtype=bool)
         rest[cells] = True
         for _ in range(_MOST):
-            if peak.cell < 0 or not peak.singular:
+            if peak.cell < 0 or not suspected(peak):
                 return peak
             share, _ = self._towards(-values if smallest else values, peak.cell)
-            for ring in self._rings(share)[:2]:
-                rest[ring] = False
+            rings = self._rings(share)
+            rest[rings.cells[: rings.starts[2] if len(rings.starts) > 2 else None]] = False
             rest[peak.cell] = False
             peak = self.find(values, np.flatnonzero(rest), smallest)
-        return peak if not peak.singular else self.find(values, np.zeros(0, dtype=np.int64), smallest)
+        return peak if not suspected(peak) else self.find(values, np.zeros(0, dtype=np.int64), smallest)
 
     def _towards(self, signed: Floats, cell: int) -> tuple[int, Profile]:
         """Return the corner of a cell towards which values grow most, and the rings around it."""
-        corners = [int(c) for c in np.unique(self.corners[[cell]].indices)]
+        corners = [int(c) for c in np.unique(_entries(self.corners, np.array([cell])))]
         profiles = [self._profile(signed, c) for c in corners]
         growth = np.nan_to_num([_exponent(*p, 0, 1) for p in profiles], nan=-np.inf)
         best = int(np.argmax(growth >= growth.max() - 1e-6))
         return corners[best], profiles[best]
 
-    def _mean(self, values: Floats, cells: NDArray[np.integer]) -> float:
-        weight = np.where(np.isfinite(values[cells]), self.volume[cells], 0.0)
-        return float((weight * np.nan_to_num(values[cells])).sum() / weight.sum())
+    def _rings(self, share: int) -> _Rings:
+        if share not in self._known:
+            self._known[share] = self._measured(self._find_rings(share), share)
+        return self._known[share]
 
-    def _rings(self, share: int) -> list[Ints]:
-        inside = np.zeros(0, dtype=np.int64)
+    def _find_rings(self, share: int) -> list[Ints]:
+        inside, met = (np.zeros(n, dtype=bool) for n in self.corners.shape)
         nodes = np.array([share], dtype=np.int64)
-        found = []
+        found: list[Ints] = []
         for _ in range(RINGS):
-            reached = np.unique(self.cells[nodes].indices).astype(np.int64)
-            ring = np.setdiff1d(reached, inside)
+            met[nodes] = True
+            reached = _entries(self.cells, nodes)
+            ring = np.unique(reached[~inside[reached]]).astype(np.int64)
             if not len(ring):
                 break
             found.append(ring)
-            inside, nodes = reached, np.unique(self.corners[reached].indices).astype(np.int64)
+            inside[ring] = True
+            corners = _entries(self.corners, ring)
+            nodes = np.unique(corners[~met[corners]]).astype(np.int64)
         return found
 
+    def _measured(self, rings: list[Ints], share: int) -> _Rings:
+        cells = np.concatenate(rings)
+        starts = np.cumsum([0] + [len(ring) for ring in rings[:-1]])
+        far = np.linalg.norm(
+            self.centroid[cells] - self.shares.model.points[self.shares.point[share]], axis=1
+        )
+        volume = self.volume[cells]
+        mean = np.add.reduceat(far * volume, starts) / np.add.reduceat(volume, starts)
+        return _Rings(cells, starts, volume, tuple(mean.tolist()))
+
     def _profile(self, signed: Floats, share: int) -> Profile:
-        place = self.shares.model.points[self.shares.point[share]]
-        distances, means = [], []
-        for ring in self._rings(share):
-            far = np.linalg.norm(self.centroid[ring] - place, axis=1)
-            distances.append(float(np.average(far, weights=self.volume[ring])))
-            means.append(self._mean(signed, ring))
-        return tuple(distances), tuple(means)
+        rings = self._rings(share)
+        values = signed[rings.cells]
+        known = np.isfinite(values)
+        weight = np.where(known, rings.volume, 0.0)
+        total = np.add.reduceat(np.where(known, values * weight, 0.0), rings.starts)
+        means = total / np.add.reduceat(weight, rings.starts)
+        return rings.distances, tuple(means.tolist())
+
+
+@dataclass(frozen=True, eq=False)
+class _Rings:
+    """Cells around a node, ring after ring, where each ring starts, their volume, and the mean distance of each ring."""
+
+    cells: Ints
+    starts: Ints
+    volume: Floats
+    distances: tuple[float, ...]
+
+
+def _entries(table: sparse.csr_array, rows: Ints) -> NDArray[np.integer]:
+    """Return the columns of the entries of some rows of a table, one row after the other."""
+    first = table.indptr[rows]
+    counts = table.indptr[rows + 1] - first
+    ends = np.cumsum(counts)
+    at = np.arange(int(ends[-1]) if len(ends) else 0) + np.repeat(first - (ends - counts), counts)
+    found: NDArray[np.integer] = table.indices[at]
+    return found
 
 
 def _exponent(distances: tuple[float, ...], means: tuple[float, ...], a: int, b: int) -> float:

@@ -2,65 +2,28 @@
 
 from __future__ import annotations
 
-import math
 from collections.abc import Sequence
-from dataclasses import asdict, dataclass, field, replace
-from typing import Any, Literal
+from dataclasses import dataclass, field, replace
+from typing import Any
 
-import numpy as np
-from numpy.typing import NDArray
-
-from unturn.displacement import find_displacement
+from unturn.borders import ORIGINAL_POINT
 from unturn.errors import InputError, UsageError
-from unturn.fields import CellDiagnostics, CellFields, compute_fields
+from unturn.estimates import Estimates, check_estimates, estimate
+from unturn.fields import CellFields, compute_fields
 from unturn.frames import Frame, parse_frame
-from unturn.gradient import NodalFields, PlaneModel
-from unturn.kinematics._symmetric import Floats
-from unturn.measures import GEOMETRY, MEASURES, SMALL, choose_measures
+from unturn.measures import ESTIMATES, SMALL
 from unturn.model import Model, PlaneOptions, build_model
-from unturn.nodal import NodeFields, nodal_fields
+from unturn.nodal import NodeFields, nodal_fields, recover_in_regions
+from unturn.options import OWN_MESH, FacesTo, StrainOptions, check_options, is_finite, measures_of, told
 from unturn.quadrature_points import quadrature_result
-from unturn.recovery import METHODS, Method
-from unturn.regions import bodies, find_regions, named_regions
-from unturn.result import Result
-from unturn.rigid import Axis, Removal, RigidMotion, take_out, unwrapped
+from unturn.recovery import Recovered
+from unturn.regions import find_regions
+from unturn.result import Array, Association, Result
+from unturn.rigid import Removal, RigidMotion, take_out
+from unturn.rigid_parts import computed_cells, continued, parse_axis, rigid_parts
 from unturn.surface import SurfaceFields, free_faces, surface_result
 from unturn.thermal import Thermal, parse_thermal
-from unturn.verdict import Solve
-
-Place = Literal["centroid", "mean", "nodes", "surface", "quadrature"]
-OWN_MESH: tuple[Place, ...] = ("surface", "quadrature")
-"""Places whose values do not fit on the mesh of the file."""
-PLACES: tuple[Place, ...] = ("centroid", "mean", "nodes", "surface", "quadrature")
-
-
-@dataclass(frozen=True)
-class StrainOptions:
-    """The options of `unturn.strain`, by the same names."""
-
-    displacement: str | None = None
-    measures: Sequence[str] | None = None
-    base: str = "small"
-    at: Place = "centroid"
-    recovery: Method = "patch"
-    solve: Solve = "unknown"
-    plane: PlaneModel | None = None
-    poisson: float | None = None
-    axis: Literal["x", "y"] = "y"
-    coordinates: Literal["reference", "deformed"] = "reference"
-    displacement_scale: float = 1.0
-    equivalent_poisson: float | None = None
-    remove_rigid: str = "none"
-    rigid_to: str | None = None
-    rigid_axis: str | None = None
-    frame: str | None = None
-    thermal_expansion: str | float | None = None
-    temperature: str | None = None
-    reference_temperature: float | None = None
-    skin: bool = False
-    alive: str | None = None
-    threads: int | None = None
-    surface: bool = False
+from unturn.zero_step import check_zero_temperature, judged_from_zero, zeroed
 
 
 @dataclass(frozen=True, eq=False)
@@ -68,7 +31,8 @@ class Computed:
     """Computed fields, and the rigid motions that were taken out first.
 
     `fields` are those of cells: at centroids where the values asked for live elsewhere. `nodes`, `surface` and `cloud` hold
-    those.
+    those. `estimates` are those of the strain; `faces` says where the values of free faces go. `finite_model` is that of
+    finite measures where it is another one than that of `fields`: with a zero step.
     """
 
     fields: CellFields
@@ -78,6 +42,33 @@ class Computed:
     surface: SurfaceFields | None = None
     cloud: Result | None = None
     equivalent_poisson: float | None = None
+    estimates: Estimates | None = None
+    faces: FacesTo = "mesh"
+    finite_model: Model | None = None
+
+    @property
+    def own_mesh(self) -> Result | None:
+        """The mesh of values that do not fit on that of the file."""
+        on_faces = self.surface if self.faces == "mesh" else None
+        return self.cloud if on_faces is None else on_faces.result
+
+    def arrays(
+        self,
+    ) -> tuple[dict[str, Array], dict[str, Array], dict[tuple[Association, str], tuple[str, ...]]]:
+        """Return the point and cell arrays for the mesh of the file, and the names of their components."""
+        if self.surface is not None:
+            values, names = self.surface.on_cells()
+            return {}, values, {("cell", n): labels for n, labels in names.items()}
+        if self.nodes is None:
+            return {}, dict(self.fields.arrays), {("cell", n): c for n, c in self.fields.components.items()}
+        points: dict[str, Array] = {**self.nodes.arrays, **self.nodes.changes}
+        layout = self.nodes.layout
+        if self.estimates is not None:
+            points |= {n: values[layout.point] for n, values in self.estimates.points.items()}
+        if layout.cells is not None:
+            points[ORIGINAL_POINT] = layout.point
+        cells = {} if self.estimates is None else dict(self.estimates.cells)
+        return points, cells, {("point", n): c for n, c in self.nodes.components.items()}
 
     def require_some(self) -> None:
         """Refuse a result of which no cell could be computed.
@@ -143,9 +134,8 @@ def compute(
     InputError
         A result that cannot be used.
     """
-    _check_choices(options)
-    names = _checked_measures(options)
-    _check_numbers(options)
+    check_options(options)
+    names = measures_of(options)
     model = model_of(result, options)
     frame = None if options.frame is None else parse_frame(options.frame, result)
     settings: dict[str, Any] = {
@@ -155,60 +145,95 @@ def compute(
         "thermal": _thermal(result, zero, options, frame),
         "threads": options.threads,
     }
-    small, finite = _zeroed(model, zero, options)
-    parts = _parts(small, options)
-    removals: tuple[Removal, ...] = ()
-    if parts:
-        wanted = any(n in MEASURES and MEASURES[n].finite for n in names)
-        small, removals = take_out(small, parts, options.solve, _axis(options.rigid_axis), wanted)
-    if finite is not None and parts:
-        finite, of_finite = take_out(finite, parts, "nonlinear", _axis(options.rigid_axis))
-        if not any(n in SMALL for n in names):
-            removals = of_finite
-    if previous and len(previous) == len(removals):
-        removals = tuple(_unwrap(r, p) for r, p in zip(removals, previous))
+    small, finite = zeroed(model, zero, options.displacement, options.displacement_scale)
+    small, finite, removals = _without_rigid(small, finite, names, options)
+    asked = [n for n in names if n in ESTIMATES]
+    names = tuple(n for n in names if n not in ESTIMATES)
+    check_estimates(asked, small)
     computed = Computed(
         _fields(small, finite, names, settings, options, diagnose),
-        removals,
-        _request(options, zero),
+        continued(removals, previous),
+        told(options, zero),
         equivalent_poisson=options.equivalent_poisson,
+        faces=options.faces,
+        finite_model=finite,
     )
     del settings["at"]
-    if options.at == "nodes":
-        return replace(computed, nodes=_at_nodes(small, finite, names, settings, options.recovery))
-    if options.at in ("surface", "quadrature"):
+    if options.at in OWN_MESH:
         model = small if finite is None else _one_model(small, finite, names)
         if options.at == "quadrature":
             return replace(computed, cloud=quadrature_result(model, names, **settings))
         return replace(computed, surface=_on_surface(model, options))
+    if options.at == "nodes":
+        computed = replace(computed, nodes=_at_nodes(small, finite, names, settings, options))
+    if asked:
+        computed = _estimated(computed, asked, small, finite or small, options)
     return computed
 
 
+def _without_rigid(
+    small: Model, finite: Model | None, names: Sequence[str], options: StrainOptions
+) -> tuple[Model, Model | None, tuple[Removal, ...]]:
+    """Return the models without the rigid motions that are to be taken out, and these."""
+    parts = rigid_parts(small, options.remove_rigid, options.rigid_to, options.rigid_axis)
+    if not parts:
+        return small, finite, ()
+    axis = parse_axis(options.rigid_axis)
+    small, removals = take_out(small, parts, options.solve, axis, any(map(is_finite, names)))
+    if finite is not None:
+        finite, of_finite = take_out(finite, parts, "nonlinear", axis)
+        if not any(n in SMALL for n in names):
+            removals = of_finite
+    return small, finite, removals
+
+
 def _at_nodes(
-    small: Model, finite: Model | None, names: Sequence[str], settings: dict[str, Any], method: Method
+    small: Model,
+    finite: Model | None,
+    names: Sequence[str],
+    settings: dict[str, Any],
+    options: StrainOptions,
 ) -> NodeFields:
-    regions = find_regions(small, _computed(small))
+    regions = find_regions(small, computed_cells(small))
+    how = {**settings, "method": options.recovery, "split": options.borders == "split"}
     if finite is None:
-        return nodal_fields(small, names, regions, method=method, **settings)
-    real = [n for n in names if n in MEASURES and MEASURES[n].finite]
-    if len(real) == len(names):
-        return nodal_fields(finite, names, regions, method=method, **settings)
-    first = nodal_fields(small, [n for n in names if n not in real], regions, method=method, **settings)
+        return nodal_fields(small, names, regions, **how)
+    real = [n for n in names if is_finite(n)]
+    if real and len(real) == len(names):
+        return nodal_fields(finite, names, regions, **how)
+    first = nodal_fields(small, [n for n in names if n not in real], regions, **how)
     if not real:
         return first
-    second = nodal_fields(finite, real, regions, method=method, **settings)
-    return NodeFields(
-        {n: (second if n in real else first).arrays[n] for n in names},
-        {**first.components, **second.components},
-        first.recovered,
-        second.recovered,
-        first.free,
+    second = nodal_fields(finite, real, regions, layout=first.layout, **how)
+    return replace(
+        first,
+        arrays={n: (second if n in real else first).arrays[n] for n in names},
+        components={**first.components, **second.components},
+        of_finite=second.of_finite,
     )
+
+
+def _estimated(
+    computed: Computed, asked: Sequence[str], small: Model, finite: Model, options: StrainOptions
+) -> Computed:
+    """Return the fields with estimates of the strain; what was recovered for values at nodes is used again."""
+    known = [] if computed.nodes is None else [computed.nodes.recovered, computed.nodes.of_finite]
+
+    def recovered(base: str) -> Recovered:
+        model = finite if base else small
+        if not any(r.shares.model is model for r in known):
+            regions = find_regions(small, computed_cells(small))
+            known.append(recover_in_regions(model, regions, options.recovery, options.threads))
+        return next(r for r in known if r.shares.model is model)
+
+    found = estimate(asked, recovered, options.threads)
+    fields = replace(computed.fields, arrays={**computed.fields.arrays, **found.cells})
+    return replace(computed, fields=fields, estimates=found)
 
 
 def _one_model(small: Model, finite: Model, names: Sequence[str]) -> Model:
     """Return the model for measures of one kind; with a zero step small and finite ones have different ones."""
-    real = [n for n in names if n in MEASURES and MEASURES[n].finite]
+    real = [n for n in names if is_finite(n)]
     if real and len(real) < len(names):
         raise UsageError(
             f"with --zero-step, small and finite measures ({real[0]} ...) are not given together here: ask for them in two "
@@ -228,7 +253,7 @@ def _on_surface(model: Model, options: StrainOptions) -> SurfaceFields:
         )
     return surface_result(
         model,
-        free_faces(model, threads=options.threads),
+        free_faces(model, between_groups=options.between_regions, threads=options.threads),
         options.measures,
         base=options.base,
         poisson=options.poisson,
@@ -236,19 +261,6 @@ def _on_surface(model: Model, options: StrainOptions) -> SurfaceFields:
         equivalent_poisson=options.equivalent_poisson,
         threads=options.threads,
     )
-
-
-def _request(options: StrainOptions, zero: Result | None) -> dict[str, Any]:
-    """Return what was asked for beyond the defaults, by option name, and the zero step."""
-    default = StrainOptions()
-    told = {
-        k: v
-        for k, v in asdict(options).items()
-        if v != getattr(default, k) and k not in ("threads", "surface")
-    }
-    if zero is not None:
-        told["zero_step"] = None if zero.steps is None else zero.steps.current
-    return told
 
 
 def _fields(
@@ -260,8 +272,9 @@ def _fields(
     diagnose: bool,
 ) -> CellFields:
     if finite is None:
-        return compute_fields(small, names, **settings, diagnose=diagnose)
-    real = [n for n in names if n in MEASURES and MEASURES[n].finite]
+        found = compute_fields(small, names or ["strain"], **settings, diagnose=diagnose)
+        return replace(found, arrays={n: found.arrays[n] for n in names})
+    real = [n for n in names if is_finite(n)]
     linear = [n for n in names if n not in real]
     judged = diagnose and options.solve != "linear"
     first = compute_fields(small, list(dict.fromkeys([*linear, "strain"])), **settings, diagnose=diagnose)
@@ -270,73 +283,8 @@ def _fields(
         first,
         arrays={n: (second if n in real else first).arrays[n] for n in names},
         components={**first.components, **second.components},
-        diagnostics=_judged_from_zero(first, second) if judged else first.diagnostics,
+        diagnostics=judged_from_zero(first, second) if judged else first.diagnostics,
     )
-
-
-def _judged_from_zero(small: CellFields, finite: CellFields) -> CellDiagnostics | None:
-    """Return the diagnostics of the small strain of `u - u_N`, judged by the motion since the zero step.
-
-    Where the zero step itself is turned, the gradient of `u - u_N` is that of no motion. The strain since then is the
-    stretch of `F F_N^-1`; what the small strain has more or less of than that, by its norm, is its error at least.
-    """
-    ours, real = small.diagnostics, finite.diagnostics
-    if ours is None or real is None:
-        return ours
-    e = small.arrays["strain"].T
-    size = np.sqrt(np.nansum(e[:3] ** 2, axis=0) + 2.0 * np.nansum(e[3:] ** 2, axis=0))
-    error = np.maximum(real.error, np.abs(size - real.stretch))
-    return replace(
-        ours, error=error, stretch=real.stretch, angle=real.angle, det_f=real.det_f, stretches=real.stretches
-    )
-
-
-def _checked_measures(options: StrainOptions) -> tuple[str, ...]:
-    names = choose_measures(options.measures, options.base, options.thermal_expansion is not None)
-    if options.at in ("nodes", "quadrature") and "all" in (options.measures or ()):
-        names = tuple(n for n in names if n not in GEOMETRY or n in (options.measures or ()))
-    finite = [n for n in names if n in MEASURES and MEASURES[n].finite]
-    if finite and options.solve == "linear":
-        raise UsageError(
-            f"finite measures ({finite[0]} ...) of a geometrically linear solve are fiction: the solve itself used the small "
-            "strain. Ask for the "
-            "small measures, or state --solve nonlinear if it was."
-        )
-    return names
-
-
-_CHOICES: dict[str, tuple[str | None, ...]] = {
-    "at": PLACES,
-    "recovery": METHODS,
-    "solve": ("linear", "nonlinear", "unknown"),
-    "plane": (None, "strain", "stress", "axisymmetric"),
-    "axis": ("x", "y"),
-    "coordinates": ("reference", "deformed"),
-}
-
-
-def _check_choices(options: StrainOptions) -> None:
-    for name, known in _CHOICES.items():
-        value = getattr(options, name)
-        if value not in known:
-            raise UsageError(
-                f"{name}={value!r} is not known; use one of {', '.join(repr(k) for k in known)}."
-            )
-
-
-def _check_numbers(options: StrainOptions) -> None:
-    effective = options.equivalent_poisson
-    if effective is not None and not -1.0 < effective <= 0.5:
-        raise UsageError(
-            f"--equivalent-poisson {effective:g}: an effective Poisson ratio lies between -1 and 0.5."
-        )
-    reference = options.reference_temperature
-    if reference is not None and not math.isfinite(reference):
-        raise UsageError(f"--reference-temperature {reference:g} is not a temperature.")
-    if options.axis != "y" and options.plane != "axisymmetric":
-        raise UsageError(
-            f"--axis {options.axis} belongs to --plane axisymmetric; without it, it does nothing."
-        )
 
 
 def model_of(result: Result, options: StrainOptions) -> Model:
@@ -366,119 +314,8 @@ def _thermal(
             "free thermal strain needs all three of --thermal-expansion, --temperature and --reference-temperature."
         )
     if zero is not None:
-        _check_zero_temperature(zero, temperature, float(reference))
+        check_zero_temperature(zero, temperature, float(reference))
     return parse_thermal(result, str(expansion), temperature, float(reference))
 
 
-def _check_zero_temperature(zero: Result, name: str, reference: float) -> None:
-    """Refuse a zero step whose temperature is not the reference: the free strain since then is not `T - T0`."""
-    values = zero.point_data.get(name, zero.cell_data.get(name))
-    if values is None or not len(values):
-        return
-    low, high = float(np.nanmin(values)), float(np.nanmax(values))
-    if max(abs(low - reference), abs(high - reference)) > 1e-6 * max(1.0, abs(reference)):
-        raise UsageError(
-            f"--reference-temperature {reference:g}: with --zero-step it must be the temperature of that step, whose "
-            f"{name!r} is {low:g} to {high:g}. Where it is not one number, the free strain since then is not known here."
-        )
-
-
-def _zeroed(model: Model, zero: Result | None, options: StrainOptions) -> tuple[Model, Model | None]:
-    """Return the model for small measures, and the one for finite measures when it differs."""
-    if zero is None:
-        return model, None
-    start = find_displacement(
-        zero, options.displacement or model.displacement.name, options.displacement_scale
-    ).values
-    if len(start) != len(model.points):
-        raise UsageError(
-            f"the zero step has {len(start)} points and this step {len(model.points)}: they cannot be subtracted."
-        )
-    normal = None if model.plane is None else model.plane.normal
-    if normal is not None:
-        start = start.copy()
-        start[:, normal] = 0.0
-    moved = model.displacement.values - start
-    if normal is not None:
-        moved[:, normal] = 0.0
-    displacement = replace(model.displacement, values=moved)
-    small = replace(model, displacement=displacement, fields=NodalFields(model.points, moved))
-    points = model.points + start
-    return small, replace(small, points=points, fields=NodalFields(points, moved))
-
-
-def _parts(
-    model: Model, options: StrainOptions
-) -> list[tuple[str, NDArray[np.int64], str, NDArray[np.int64]]]:
-    """Return name and cells over which each rigid motion is fitted, and name and cells it is taken from."""
-    how = options.remove_rigid
-    if how == "none":
-        if options.rigid_to is not None or options.rigid_axis is not None:
-            raise UsageError(
-                "--rigid-to and --rigid-axis belong to --remove-rigid: name what is to be taken out."
-            )
-        return []
-    computed = _computed(model)
-    everything = np.flatnonzero(computed)
-    if how == "whole":
-        regions = [("whole", everything)]
-    elif how == "bodies":
-        regions = [(r.name, r.cells) for r in bodies(model, computed, most=None)] or [("body 1", everything)]
-    elif how == "regions":
-        regions = [(r.name, r.cells) for r in find_regions(model, computed, most=None)]
-    else:
-        regions = [(r.name, r.cells) for r in named_regions(model, [how], computed)]
-    if options.rigid_to is None:
-        return [(name, cells, name, cells) for name, cells in regions]
-    if len(regions) != 1:
-        raise UsageError(
-            "--rigid-to needs one region in --remove-rigid, whose motion is then taken out of the other."
-        )
-    if options.rigid_to == "whole":
-        target = ("whole", everything)
-    else:
-        target = (options.rigid_to, named_regions(model, [options.rigid_to], computed)[0].cells)
-    return [(*regions[0], *target)]
-
-
-def _computed(model: Model) -> NDArray[np.bool_]:
-    computed = np.zeros(model.result.n_cells, dtype=bool)
-    for block in model.blocks:
-        computed[block.index] = True
-    return computed
-
-
-def _axis(text: str | None) -> Axis | None:
-    """Return the axis of ``DX,DY,DZ through X,Y,Z``."""
-    if text is None:
-        return None
-    words = text.split()
-    try:
-        if len(words) == 1:
-            words += ["through", "0,0,0"]
-        direction, point = (np.array([float(w) for w in words[k].split(",")]) for k in (0, 2))
-    except (ValueError, IndexError):
-        direction = point = np.zeros(0)
-    sound = all(v.shape == (3,) and np.isfinite(v).all() for v in (direction, point))
-    if len(words) != 3 or words[1] != "through" or not sound:
-        raise UsageError(f"--rigid-axis {text!r} is not understood. Use '0,0,1' or '0,0,1 through 10,0,0'.")
-    return Axis(point, direction)
-
-
-def _unwrap(removal: Removal, previous: RigidMotion) -> Removal:
-    if "linearised" in (removal.motion.fit, previous.fit):
-        return removal  # its rotation vector has no whole turns
-    rotation = unwrapped(removal.motion.rotation, previous.rotation)
-    return replace(removal, motion=replace(removal.motion, rotation=rotation))
-
-
-def rigid_arrays(removals: Sequence[Removal], prefix: str = "") -> dict[str, Floats]:
-    """Return the rigid motions that were taken out as field arrays, `(k, 3)` each, in the order of the parts."""
-    if not removals:
-        return {}
-    motions = [r.motion for r in removals]
-    return {
-        prefix + "rigid_translation": np.array([m.translation for m in motions]),
-        prefix + "rigid_rotation": np.array([m.rotation for m in motions]),
-        prefix + "rigid_center": np.array([m.center for m in motions]),
-    }
+__all__ = ["Computed", "StrainOptions", "compute", "model_of", "settled"]

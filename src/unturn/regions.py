@@ -42,11 +42,14 @@ class Region:
         Zero-based file positions.
     origin
         What it comes from.
+    n_bodies
+        Of the whole: how many connected bodies it is when they are too many to be judged apart.
     """
 
     name: str
     cells: NDArray[np.int64]
     origin: Origin
+    n_bodies: int = 1
 
 
 def tag_arrays(result: Result, most: int | None = _MOST_TAGS) -> list[str]:
@@ -73,6 +76,17 @@ def unused_tags(result: Result) -> str:
     return ""
 
 
+def judged_together(regions: Sequence[Region]) -> str:
+    """Return a sentence on bodies that are judged as one because there are so many; empty when there are none."""
+    for region in regions:
+        if region.n_bodies > 1:
+            return (
+                f"the mesh is {region.n_bodies} bodies, more than the {_MOST_BODIES} that are judged apart: they are judged "
+                "as one, each against the strain of all; an integer cell array 'part' would tell them apart"
+            )
+    return ""
+
+
 def find_regions(model: Model, cells: NDArray[np.bool_], most: int | None = _MOST_TAGS) -> list[Region]:
     """Return the regions of a model; only the `cells` (mask) that are judged belong to them.
 
@@ -81,11 +95,12 @@ def find_regions(model: Model, cells: NDArray[np.bool_], most: int | None = _MOS
     """
     result = model.result
     found = _groups(result, cells) or _tags(result, cells, most)
-    if not found:
-        found = bodies(model, cells, _MOST_BODIES if most is not None else None)
-    if not found:
-        found = [Region("whole", np.flatnonzero(cells), "whole")]
-    return found
+    if found:
+        return found
+    positions, part, counts = _body_of_cells(model, cells)
+    if len(counts) > 1 and (most is None or len(counts) <= _MOST_BODIES):
+        return _bodies(positions, part, counts)
+    return [Region("whole", np.flatnonzero(cells), "whole", max(1, len(counts)))]
 
 
 def _groups(result: Result, cells: NDArray[np.bool_]) -> list[Region]:
@@ -113,13 +128,25 @@ def _tags(result: Result, cells: NDArray[np.bool_], most: int | None) -> list[Re
     return []
 
 
-def bodies(model: Model, cells: NDArray[np.bool_], most: int | None = _MOST_BODIES) -> list[Region]:
-    """Return connected bodies: cells that share nodes.
+def bodies(model: Model, cells: NDArray[np.bool_]) -> list[Region]:
+    """Return connected bodies: cells that share nodes; an empty list for a single one: the whole is then the better unit.
 
     Coincident nodes count as one where two fifths of the nodes or more have a twin: the writer repeated them per element or
-    per block. Parts that only touch stay apart. A single body, or more than `most`, gives an empty list: the whole is then
-    the better unit. None: whatever their number.
+    per block. Parts that only touch stay apart.
     """
+    positions, part, counts = _body_of_cells(model, cells)
+    return _bodies(positions, part, counts) if len(counts) > 1 else []
+
+
+def _bodies(positions: NDArray[np.int64], part: NDArray[np.int64], counts: NDArray[np.int64]) -> list[Region]:
+    order = np.argsort(-counts, kind="stable")
+    return [Region(f"body {rank + 1}", np.sort(positions[part == k]), "body") for rank, k in enumerate(order)]
+
+
+def _body_of_cells(
+    model: Model, cells: NDArray[np.bool_]
+) -> tuple[NDArray[np.int64], NDArray[np.int64], NDArray[np.int64]]:
+    """Return file positions of cells, the body of each, and how many cells each body has."""
     corners, index = [], []
     for block in model.blocks:
         if block.row is not None:
@@ -138,14 +165,8 @@ def bodies(model: Model, cells: NDArray[np.bool_], most: int | None = _MOST_BODI
         single = np.bincount(label[where], minlength=len(label))[label[where]] == 1
         if len(where) and np.mean(~single) >= _REPEATED:
             part = _parts([label[conn] for conn in corners], model.result.n_points)
-    distinct, inverse, counts = np.unique(part, return_inverse=True, return_counts=True)
-    if len(distinct) < 2 or (most is not None and len(distinct) > most):
-        return []
-    positions = np.concatenate(index)
-    order = np.argsort(-counts, kind="stable")
-    return [
-        Region(f"body {rank + 1}", np.sort(positions[inverse == k]), "body") for rank, k in enumerate(order)
-    ]
+    _, part, counts = np.unique(part, return_inverse=True, return_counts=True)
+    return np.concatenate(index), part, counts
 
 
 def _parts(corners: Sequence[NDArray[np.int64]], n_points: int) -> NDArray[np.int64]:
@@ -186,15 +207,19 @@ def merge_coincident(points: Floats) -> tuple[NDArray[np.int64], float]:
     return label, tolerance
 
 
-def named_regions(model: Model, names: Sequence[str], cells: NDArray[np.bool_]) -> list[Region]:
+def named_regions(
+    model: Model, names: Sequence[str], cells: NDArray[np.bool_], known: Sequence[Region] | None = None
+) -> list[Region]:
     """Return the regions asked for by name: a group, ``array=value``, or a name that `find_regions` gives.
+
+    `known` is what `find_regions` gives for these cells, where it is at hand.
 
     Raises
     ------
     UsageError
         No such region, or it holds no computed cell.
     """
-    default = {r.name: r for r in find_regions(model, cells)}
+    default = {r.name: r for r in (find_regions(model, cells) if known is None else known)}
     return [_one_region(model.result, name, cells, default) for name in names]
 
 

@@ -4,24 +4,25 @@ from __future__ import annotations
 
 import math
 from collections.abc import Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from typing import Any
 
 import numpy as np
 
 from unturn._version import __version__
 from unturn.agreement import Agreement, compare_with_solver
-from unturn.elsewhere import Elsewhere, find_elsewhere
+from unturn.elsewhere import Border, Elsewhere, find_elsewhere
 from unturn.fields import CellDiagnostics, CellFields
-from unturn.kinematics._symmetric import Floats
 from unturn.measures import MEASURES
 from unturn.model import Model
 from unturn.numbering import Numbering, element_numbers
 from unturn.pipeline import Computed
-from unturn.regions import Region, find_regions, named_regions, unused_tags
+from unturn.regions import Region, find_regions, judged_together, named_regions, unused_tags
 from unturn.rigid import Removal
+from unturn.series import SERIES_MEASURES
 from unturn.statistics import LOW_PERCENTILES, PERCENTILES, Statistics, statistics
 from unturn.trial import Trial, try_remedies
+from unturn.trusted import Column, Growth, Trusts, Which, growths, trusted
 from unturn.verdict import BROKEN, Solve, Verdict, judge
 
 SCHEMA = "unturn.summary/1"
@@ -41,13 +42,23 @@ class SummaryOptions:
 
 @dataclass(frozen=True, eq=False)
 class RegionSummary:
-    """One region: its verdict and statistics by column name (`principal_strain_1`, `equivalent_strain` ...)."""
+    """One region: its verdict and statistics by column name (`principal_strain_1`, `equivalent_strain` ...).
+
+    `trust` tells how far to trust the extremes of the statistics, see `trusted`; `error_percent` is the estimated global
+    error of each `strain_error` that was asked for.
+    """
 
     region: Region
     verdict: Verdict
     trials: tuple[Trial, ...]
     volume: float
     statistics: dict[str, Statistics]
+    error_percent: dict[str, float] = field(default_factory=dict)
+    trust: Trusts = field(default_factory=dict)
+
+    def plus_minus(self, name: str, which: Which) -> float:
+        """Return the bound of an extreme's error; NaN where it is not known."""
+        return self.trust[name, which].plus_minus if (name, which) in self.trust else math.nan
 
 
 @dataclass(frozen=True, eq=False)
@@ -64,6 +75,7 @@ class Summary:
     removals: tuple[Removal, ...] = ()
     request: dict[str, Any] = field(default_factory=dict)
     elsewhere: Elsewhere | None = None
+    growths: tuple[Growth, ...] = ()
 
     @property
     def finite_only(self) -> bool:
@@ -95,19 +107,15 @@ def summarise(
     fields = computed.fields
     d = fields.diagnostics
     assert d is not None
-    judged = d.dimension == fields.model.dimension
-    if options.regions:
-        regions = named_regions(fields.model, options.regions, d.dimension > 0)
-    else:
-        regions = find_regions(fields.model, judged)
+    groups, regions = _regions(fields.model, d, options.regions)
     columns = _columns(fields, d, options.full)
     made: list[RegionSummary] = []
     counted_regions: list[Region] = []
     for region in regions:
         cells = region.cells[d.dimension[region.cells] == d.dimension[region.cells].max()]
         found = {
-            name: statistics(values, d.volume, cells, _percentages(name, signed, options.full))
-            for name, (values, signed) in columns.items()
+            name: statistics(c.values, d.volume, cells, _percentages(name, c.signed, options.full))
+            for name, c in columns.items()
         }
         counted = Region(region.name, cells, region.origin)
         verdict = judge(d, counted, options.solve, options.mode)
@@ -117,8 +125,15 @@ def summarise(
         if verdict.level == "does not hold" and options.solve != "linear" and whole_motion:
             trials = try_remedies(fields, counted, options.solve, {"at": options.at, "threads": threads})
         counted_regions.append(counted)
-        made.append(RegionSummary(region, verdict, tuple(trials), float(np.nansum(d.volume[cells])), found))
+        errors = {} if computed.estimates is None else computed.estimates.errors
+        percent = {name: error.percentage(cells) for name, error in errors.items()}
+        volume = float(np.nansum(d.volume[cells]))
+        made.append(RegionSummary(region, verdict, tuple(trials), volume, found, percent))
+    made, grown = _trusted(computed, columns, counted_regions, made, groups, options.full, threads)
     numbers = element_numbers(fields.model.result)
+    elsewhere = find_elsewhere(
+        computed, counted_regions, None if numbers is None else numbers.numbers, threads, groups
+    )
     others = {
         int(k): int((d.dimension == k).sum())
         for k in np.unique(d.dimension)
@@ -135,43 +150,97 @@ def summarise(
         others,
         computed.removals,
         computed.request,
-        find_elsewhere(computed, counted_regions, None if numbers is None else numbers.numbers, threads),
+        elsewhere,
+        (*grown, *(elsewhere.growths if elsewhere is not None else ())),
     )
+
+
+def _regions(model: Model, d: CellDiagnostics, names: Sequence[str]) -> tuple[list[Region], list[Region]]:
+    """Return the regions of all computed cells, and those of the summary: named, or of the highest dimension."""
+    every = find_regions(model, d.dimension > 0)
+    if names:
+        return every, named_regions(model, names, d.dimension > 0, every)
+    judged = d.dimension == model.dimension
+    return every, every if (judged == (d.dimension > 0)).all() else find_regions(model, judged)
+
+
+def _trusted(
+    computed: Computed,
+    columns: dict[str, Column],
+    counted: list[Region],
+    made: list[RegionSummary],
+    groups: list[Region],
+    full: bool,
+    threads: int | None,
+) -> tuple[list[RegionSummary], list[Growth]]:
+    """Return the summaries of the regions with how far to trust their extremes, and what is suspected of these."""
+    shown = range(len(made)) if full else [k for k, r in enumerate(made) if r in foremost(made)]
+    found = [(counted[k], made[k].statistics) for k in shown]
+    trusts = trusted(computed, columns, found, groups, full, threads)
+    made = made.copy()
+    for k, trust in zip(shown, trusts):
+        made[k] = replace(made[k], trust=trust)
+    return made, growths(computed, found, trusts)
+
+
+MOST_SHOWN = 5
+"""Regions that the table shows."""
+
+
+def foremost(regions: Sequence[RegionSummary], most: int = MOST_SHOWN) -> Sequence[RegionSummary]:
+    """Return the regions of the table: of many those with the largest peaks, largest first."""
+    if len(regions) <= MOST_SHOWN:
+        return regions
+    return sorted(regions, key=lambda r: -_peak(r))[:most]
+
+
+def leading(r: RegionSummary) -> str:
+    """Return the name of the number by which a region is ranked: its equivalent strain, of whatever base."""
+    names = [n for n in r.statistics if n.startswith("equivalent_strain") and n not in SERIES_MEASURES]
+    first = [*names, "principal_strain_1", "angle_of_turn"]
+    return next(n for n in first if n in r.statistics)
+
+
+def _peak(r: RegionSummary) -> float:
+    value = r.statistics[leading(r)].maximum
+    return value if math.isfinite(value) else -1.0
 
 
 def _percentages(name: str, signed: bool, full: bool) -> Sequence[float]:
     if full:
         return (*LOW_PERCENTILES, *PERCENTILES) if signed else PERCENTILES
+    if name in SERIES_MEASURES:
+        return ()
     return (99.9,) if name.startswith("equivalent_strain") or name == "principal_strain_1" else ()
 
 
-def _columns(fields: CellFields, d: CellDiagnostics, full: bool) -> dict[str, tuple[Floats, bool]]:
-    """Return every number that gets statistics: name -> values and whether it is signed."""
-    columns: dict[str, tuple[Floats, bool]] = {}
+def _columns(fields: CellFields, d: CellDiagnostics, full: bool) -> dict[str, Column]:
+    """Return every number that gets statistics."""
+    columns: dict[str, Column] = {}
     for name, values in fields.arrays.items():
-        measure = MEASURES.get(name)
+        measure = MEASURES.get(name) or SERIES_MEASURES.get(name)
         signed = measure is not None and measure.signed
         if name.startswith("principal_direction") or name == "displacement_gradient":
             continue
         if values.ndim == 1:
-            columns[name] = (values, signed)
+            columns[name] = Column(values, signed, name)
             continue
         labels = fields.components.get(name, ())
         principal = name.startswith("principal_strain")
         for k, component in enumerate(labels):
             if full or (principal and k != 1) or (name == "strain" and _third_unknown(fields.model)):
-                columns[f"{name}_{component}"] = (values[:, k], signed)
+                columns[f"{name}_{component}"] = Column(values[:, k], signed, name)
     small = any(
         not MEASURES[n].finite and MEASURES[n].unit == "strain" for n in fields.arrays if n in MEASURES
     )
     if small and not _third_unknown(fields.model):
-        columns["principal_strain_1"] = (d.principal[:, 0], True)
-        columns["principal_strain_3"] = (d.principal[:, 1], True)
+        for k, end in enumerate(("1", "3")):
+            columns[f"principal_strain_{end}"] = Column(d.principal[:, k], True, "principal_strain")
     if any(MEASURES[n].finite for n in fields.arrays if n in MEASURES):
-        columns["det_f"] = (d.det_f, True)
-        columns["stretch_1"] = (d.stretches[:, 0], True)
-        columns["stretch_3"] = (d.stretches[:, 1], True)
-    columns["angle_of_turn"] = (d.angle, False)
+        columns["det_f"] = Column(d.det_f, True, "det_f")
+        for k, end in enumerate(("1", "3")):
+            columns[f"stretch_{end}"] = Column(d.stretches[:, k], True, "stretch")
+    columns["angle_of_turn"] = Column(d.angle, False, "angle_of_turn")
     return columns
 
 
@@ -204,8 +273,8 @@ def _warnings(fields: CellFields, d: CellDiagnostics, regions: list[RegionSummar
                 f"{r.region.name}: the stored precision blurs the strain by +-{_micro(r.verdict.noise)} microstrain, "
                 f"and 99 % of the volume is below {_micro(r.verdict.size)}: write the result with more digits"
             )
-    unused = unused_tags(fields.model.result)
-    return [*found, unused] if unused else found
+    together = unused_tags(fields.model.result) or judged_together([r.region for r in regions])
+    return [*found, together] if together else found
 
 
 def _beyond_linear(removals: Sequence[Removal], regions: list[RegionSummary]) -> list[str]:
@@ -269,13 +338,15 @@ def summary_data(summary: Summary) -> dict[str, Any]:
              "agrees": a.agrees}
             for a in summary.agreements
         ],
+        "suspected_singular": [_growth_data(g, summary) for g in summary.growths],
         "elsewhere": _elsewhere_data(summary.elsewhere),
         "rigid_motion_taken_out": [_removal_data(r) for r in summary.removals],
         "left_out": {reason: len(cells) for reason, cells in fields.left_out.items()},
         "other_dimensions": {f"{k}D": n for k, n in summary.other_dimensions.items()},
         "notes": list(fields.notes),
         "warnings": list(summary.warnings),
-        "units": {"strain": "1", "rotation": "radian", "angle_of_turn": "radian", "volume": "length unit of the file"},
+        "units": {"strain": "1", "rotation": "radian", "rate": "1/time of the file", "angle_of_turn": "radian",
+                  "volume": "length unit of the file"},
         "caution": CAUTION,
     }  # fmt: skip
 
@@ -307,7 +378,8 @@ def _region_data(r: RegionSummary, summary: Summary) -> dict[str, Any]:
                 for t in r.trials
             ],
         },
-        "statistics": {name: _statistics_data(s, summary, v.size) for name, s in r.statistics.items()},
+        "estimated_error_percent": r.error_percent,
+        "statistics": {name: _statistics_data(name, r, summary) for name in r.statistics},
     }
 
 
@@ -323,17 +395,46 @@ def _elsewhere_data(found: Elsewhere | None) -> dict[str, Any] | None:
             }
             for e in found.extremes
         ],
-        "suspected_singular": [
-            {
-                "region": g.region, "statistic": g.label, "array": g.array, "cell": g.peak.cell, "value": g.peak.value,
-                "point": g.peak.point, "node": g.node, "growth": g.peak.growth, "next_cell": g.next_cell,
-                "next_value": g.next_value,
-            }
-            for g in found.growths
-        ],
         "estimated_error_percent": found.error_percent or {},
+        "largest_jump_at_border": None if found.border is None else _border_data(found.border),
         "notes": list(found.notes),
     }  # fmt: skip
+
+
+def _border_data(border: Border) -> dict[str, Any]:
+    jump = border.jump
+    return {
+        "value": jump.value, "regions": list(jump.regions), "point": jump.point, "node": border.node, "at": list(border.at),
+    }  # fmt: skip
+
+
+def _growth_data(g: Growth, summary: Summary) -> dict[str, Any]:
+    def element(cell: int) -> int | None:
+        return None if summary.numbers is None or cell < 0 else int(summary.numbers.numbers[cell])
+
+    t = g.trust
+    return {
+        "location": g.location,
+        "region": g.region,
+        "statistic": g.label,
+        "array": g.array,
+        "extreme": g.which,
+        "cell": g.cell,
+        "element": element(g.cell),
+        "value": g.value,
+        "plus_minus": t.plus_minus,
+        "point": t.point,
+        "node": g.node,
+        "growth": t.growth,
+        "next": None
+        if t.next_cell < 0
+        else {
+            "cell": t.next_cell,
+            "element": element(t.next_cell),
+            "value": t.next_value,
+            "plus_minus": t.next_plus_minus,
+        },
+    }
 
 
 def _removal_data(r: Removal) -> dict[str, Any]:
@@ -349,13 +450,29 @@ def _removal_data(r: Removal) -> dict[str, Any]:
     }
 
 
-def _statistics_data(s: Statistics, summary: Summary, size: float) -> dict[str, Any]:
+def _trust_data(name: str, which: Which, r: RegionSummary) -> dict[str, Any]:
+    known = r.trust.get((name, which))
+    if known is None:
+        return {"plus_minus": None, "suspected_singular": False}
+    return {"plus_minus": known.plus_minus, "suspected_singular": known.singular}
+
+
+def _statistics_data(name: str, r: RegionSummary, summary: Summary) -> dict[str, Any]:
+    s, size = r.statistics[name], r.verdict.size
     return {
         "count": s.count,
         "left_out": s.left_out,
         "mean": s.mean,
-        "maximum": {"value": s.maximum, **_place(s.at_maximum, summary, size)},
-        "minimum": {"value": s.minimum, **_place(s.at_minimum, summary, size)},
+        "maximum": {
+            "value": s.maximum,
+            **_trust_data(name, "maximum", r),
+            **_place(s.at_maximum, summary, size),
+        },
+        "minimum": {
+            "value": s.minimum,
+            **_trust_data(name, "minimum", r),
+            **_place(s.at_minimum, summary, size),
+        },
         "percentiles": {f"{q:g}": value for q, value in s.percentiles.items()},
     }
 

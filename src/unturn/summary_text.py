@@ -10,16 +10,26 @@ from pathlib import PurePath
 import numpy as np
 
 from unturn.agreement import Agreement
-from unturn.elsewhere import BASE_WORDS, ElsewhereExtreme
+from unturn.elsewhere import ElsewhereExtreme
 from unturn.fields import CellFields
 from unturn.measures import MEASURES
-from unturn.pipeline import OWN_MESH
+from unturn.options import OWN_MESH
 from unturn.rigid import Removal
-from unturn.summary import CAUTION, RegionSummary, Summary, cell_counts, equivalent_form, mesh_kind
+from unturn.summary import (
+    CAUTION,
+    MOST_SHOWN,
+    RegionSummary,
+    Summary,
+    cell_counts,
+    equivalent_form,
+    foremost,
+    leading,
+    mesh_kind,
+)
 from unturn.trial import Trial
+from unturn.trusted import BASE_WORDS, Growth, Which, table_rows
 from unturn.verdict import Solve, Verdict
 
-_MOST_COLUMNS = 5
 _MOST_VERDICTS = 12
 _LINE = 120  # where sentences are broken
 
@@ -186,46 +196,23 @@ def _share(value: float) -> str:
     return f"{100 * value:.2g} %" if value < 0.995 else f"{100 * value:.0f} %"
 
 
-_STRAIN_ROWS: tuple[tuple[str, str, str], ...] = tuple(
-    row
-    for suffix, words in BASE_WORDS.items()
-    for row in (
-        (f"largest principal{words}", f"principal_strain{suffix}_1", "maximum"),
-        (f"smallest principal{words}", f"principal_strain{suffix}_3", "minimum"),
-        (f"equivalent, largest{words}", f"equivalent_strain{suffix}", "maximum"),
-        (f"max shear, largest{words}", f"max_shear_strain{suffix}", "maximum"),
-        (f"volumetric, largest{words}", f"volumetric_strain{suffix}", "maximum"),
-        (f"volumetric, smallest{words}", f"volumetric_strain{suffix}", "minimum"),
-    )
-)
-
-
 _FINITE_ENDS = tuple(
     f"{base}{end}" for base in BASE_WORDS if base not in ("", "_mechanical") for end in ("", "_1", "_3")
 )
 
 
-def _rows(shown: Sequence[RegionSummary]) -> list[tuple[str, str, str]]:
+_BESIDE = ("strain_error", "strain_jump", "equivalent_strain_increment", "accumulated")
+"""Rows that are not values of the strain of this step: no bound of theirs is known, and no error that turning makes."""
+
+
+def _rows(summary: Summary, shown: Sequence[RegionSummary]) -> list[tuple[str, str, Which]]:
     """Return label, statistics name and which extreme of the rows of the table."""
-    have = shown[0].statistics
-    rows = list(_STRAIN_ROWS)
-    if (
-        "principal_strain_1" not in have
-    ):  # a plane mesh whose third direction is not stated: components instead
-        for name in have:
-            if name.startswith("strain_") and name.split("_")[1] not in (
-                "green",
-                "hencky",
-                "biot",
-                "almansi",
-            ):
-                component = name.removeprefix("strain_")
-                rows += [
-                    (f"largest {component}", name, "maximum"),
-                    (f"smallest {component}", name, "minimum"),
-                ]
-    rows = [row for row in rows if all(row[1] in r.statistics for r in shown)]
-    return [row for row in rows if not _always_zero(row[1], shown)]
+    rows = table_rows(shown[0].statistics, summary.fields.components.get("strain", ()))
+    return [
+        (label, name, which)
+        for label, name, which in rows
+        if not _always_zero(name, shown) and any(math.isfinite(r.statistics[name].maximum) for r in shown)
+    ]
 
 
 def _always_zero(name: str, shown: Sequence[RegionSummary]) -> bool:
@@ -236,22 +223,18 @@ def _always_zero(name: str, shown: Sequence[RegionSummary]) -> bool:
 
 
 def _table(summary: Summary) -> list[str]:
-    shown = summary.regions
-    if len(shown) > _MOST_COLUMNS:
-        shown = tuple(sorted(shown, key=lambda r: -_peak(r))[:_MOST_COLUMNS])
+    shown = foremost(summary.regions)
     unit = "microstrain" + (" per unit amplitude" if summary.options.mode else "")
     digits = _digits(summary)
     rows: list[list[str]] = [[unit, *(r.region.name for r in shown)]]
-    for label, name, which in _rows(shown):
-        if not any(math.isfinite(r.statistics[name].maximum) for r in shown):
-            continue
-        rows.append([label, *(_micro(getattr(r.statistics[name], which)) for r in shown)])
+    for label, name, which in _rows(summary, shown):
+        rows.append([label, *(_extreme(r, name, which) for r in shown)])
         at = f"at_{which}"
         rows.append(["  where", *(_where(getattr(r.statistics[name], at), summary) for r in shown)])
         rows.append(
             ["  at x, y, z", *(_position(getattr(r.statistics[name], at), summary, digits) for r in shown)]
         )
-        if not summary.options.mode and not name.endswith(_FINITE_ENDS):
+        if not summary.options.mode and not name.endswith(_FINITE_ENDS) and not name.startswith(_BESIDE):
             rows.append(
                 ["  error there", *(_error(getattr(r.statistics[name], at), r, summary) for r in shown)]
             )
@@ -259,16 +242,65 @@ def _table(summary: Summary) -> list[str]:
         rows.append(
             ["99.9 % of volume below" + _base_words(shown[0]), *(_micro(_percentile(r)) for r in shown)]
         )
-    for label, name in (("det F, smallest to largest", "det_f"), ("stretch, smallest to largest", "stretch")):
-        if "det_f" in shown[0].statistics:
-            rows.append([label, *(_scatter(r, name) for r in shown)])
+    for label, name, which in _FACTORS:
+        if name in shown[0].statistics:
+            rows.append([label, *(_factor(r, name, which) for r in shown)])
+    for name in shown[0].error_percent if summary.elsewhere is None else ():
+        words = BASE_WORDS[name.removeprefix("strain_error")]
+        rows.append(
+            [f"estimated error of the strain{words}", *(_percent(r.error_percent[name]) for r in shown)]
+        )
     left = " left" if summary.removals else ""
-    rows.append([f"largest rotation{left}, degree", *(_degrees(r.verdict.largest_rotation) for r in shown)])
+    rows.append([f"largest rotation{left}, degree", *(_rotation(r) for r in shown)])
     lines = _aligned(rows)
     if len(shown) < len(summary.regions):
         rest = len(summary.regions) - len(shown)
         lines.append(f"{rest} more regions with smaller peaks: all are in --json; --region NAME shows one")
+    return lines + _suspected(summary, "cells", shown)
+
+
+def _extreme(r: RegionSummary, name: str, which: Which) -> str:
+    value = getattr(r.statistics[name], which)
+    return _micro(value) if name.startswith(_BESIDE) else _bounded(value, r.plus_minus(name, which))
+
+
+def _bounded(value: float, plus_minus: float) -> str:
+    return f"{_micro(value)} +-{_above(plus_minus * 1e6)}" if math.isfinite(value) else "-"
+
+
+def _rotation(r: RegionSummary) -> str:
+    bound = math.degrees(r.plus_minus("angle_of_turn", "maximum"))
+    return f"{_degrees(r.verdict.largest_rotation)} +-{_above(bound)}"
+
+
+def _suspected(summary: Summary, location: str, shown: Sequence[RegionSummary]) -> list[str]:
+    """Return a line for each peak of the table that is suspected singular, and how many there are in other regions."""
+    if not shown:
+        return []
+    names = [r.region.name for r in shown]
+    in_table = {(name, which) for _, name, which in _rows(summary, shown)}
+    here = [
+        g
+        for g in summary.growths
+        if g.location == location and (location != "cells" or (g.array, g.which) in in_table)
+    ]
+    lines = [_growth(g, summary) for g in here if g.region in names]
+    others = len({g.region for g in here if g.region not in names})
+    if others:
+        lines.append(f"suspected singular too: peaks of {others} more region{'s' * (others > 1)}, see --json")
     return lines
+
+
+def _growth(g: Growth, summary: Summary) -> str:
+    t = g.trust
+    after = "none is found away from it"
+    if t.next_cell >= 0:
+        after = (
+            f"next away from it {_bounded(t.next_value, t.next_plus_minus)} in {_where(t.next_cell, summary)}"
+        )
+    return (
+        f"suspected singular, {g.region}: {g.label} keeps growing towards {_point(t.point, g.node)}; {after}"
+    )
 
 
 def _elsewhere(summary: Summary) -> list[str]:
@@ -276,30 +308,34 @@ def _elsewhere(summary: Summary) -> list[str]:
     found = summary.elsewhere
     if found is None:
         return []
-    named = [e.region for e in found.extremes] or list(found.error_percent or ())
-    shown = list(dict.fromkeys(named))[:_MOST_COLUMNS]
-    of_region = {name: [e for e in found.extremes if e.region == name] for name in shown}
+    named = {e.region for e in found.extremes} | set(found.error_percent or ())
+    ranked = [r for r in foremost(summary.regions, len(summary.regions)) if r.region.name in named]
+    shown = ranked[:MOST_SHOWN]
+    of_region = [[e for e in found.extremes if e.region == r.region.name] for r in shown]
     labels = list(dict.fromkeys(e.label for e in found.extremes))
     digits = _digits(summary)
-    rows = [[f"microstrain at {found.title}", *shown]]
+    rows = [[f"microstrain at {found.title}", *(r.region.name for r in shown)]]
     for label in labels:
-        each = [next((e for e in of_region[name] if e.label == label), None) for name in shown]
-        rows.append([label, *(_bounded(e) for e in each)])
+        each = [next((e for e in extremes if e.label == label), None) for extremes in of_region]
+        rows.append([label, *("-" if e is None else _bounded(e.value, e.plus_minus) for e in each)])
         rows.append(["  where", *(_spot(e) for e in each)])
         rows.append(["  at x, y, z", *("-" if e is None else _coordinates(e.at, digits) for e in each)])
     if found.error_percent is not None:
-        rows.append(
-            ["estimated error of the strain", *(_percent(found.error_percent[name]) for name in shown)]
-        )
-    lines = ["", *_aligned(rows), *found.notes]
-    for g in found.growths:
-        after = "nothing else is left" if g.next_cell < 0 else f"next away from it {_micro(g.next_value)} in " + _where(
-            g.next_cell, summary
-        )  # fmt: skip
+        errors = (_percent(found.error_percent[r.region.name]) for r in shown)
+        rows.append(["estimated error of the strain", *errors])
+    lines = ["", *_aligned(rows)]
+    if found.border is not None:
+        jump, border = found.border.jump, found.border
         lines.append(
-            f"suspected singular, {g.region}: {g.label} keeps growing towards {_point(g.peak.point, g.node)}; {after}"
+            f"largest jump at a border: {_micro(jump.value)} microstrain (norm of the difference) between "
+            f"{jump.regions[0]} and {jump.regions[1]} at {_point(jump.point, border.node)}, "
+            f"{_coordinates(border.at, digits)}"
         )
-    return lines
+    if len(shown) < len(ranked):
+        lines.append(
+            f"{len(ranked) - len(shown)} more regions, whose peaks at cells are smaller: all are in --json"
+        )
+    return [*lines, *_suspected(summary, found.title, shown), *found.notes]
 
 
 def _percent(value: float) -> str:
@@ -308,12 +344,6 @@ def _percent(value: float) -> str:
 
 def _point(point: int, node: int | None) -> str:
     return f"point {point}" if node is None else f"node {node} (point {point})"
-
-
-def _bounded(e: ElsewhereExtreme | None) -> str:
-    if e is None:
-        return "-"
-    return _micro(e.value) + ("" if math.isnan(e.plus_minus) else f" +-{_micro(e.plus_minus)}")
 
 
 def _spot(e: ElsewhereExtreme | None) -> str:
@@ -330,35 +360,25 @@ def _coordinates(at: Sequence[float], digits: int) -> str:
     return ", ".join(f"{x + 0.0:.{digits}f}" if digits < 9 else f"{x:.4g}" for x in at)
 
 
-def _scatter(r: RegionSummary, name: str) -> str:
-    low, high = ("det_f", "det_f") if name == "det_f" else ("stretch_3", "stretch_1")
-    return f"{r.statistics[low].minimum:.5g} to {r.statistics[high].maximum:.5g}"
+_FACTORS: tuple[tuple[str, str, Which], ...] = (
+    ("det F, smallest", "det_f", "minimum"),
+    ("det F, largest", "det_f", "maximum"),
+    ("stretch, smallest", "stretch_3", "minimum"),
+    ("stretch, largest", "stretch_1", "maximum"),
+)
 
 
-def _leading(r: RegionSummary) -> str:
-    """Return the number by which a region is ranked: its equivalent strain, of whatever base."""
-    names = [n for n in r.statistics if n.startswith("equivalent_strain")]
-    return (
-        names[0]
-        if names
-        else "principal_strain_1"
-        if "principal_strain_1" in r.statistics
-        else "angle_of_turn"
-    )
-
-
-def _peak(r: RegionSummary) -> float:
-    value = r.statistics[_leading(r)].maximum
-    return value if math.isfinite(value) else -1.0
+def _factor(r: RegionSummary, name: str, which: Which) -> str:
+    return f"{getattr(r.statistics[name], which):.5g} +-{_above(r.plus_minus(name, which))}"
 
 
 def _percentile(r: RegionSummary) -> float:
-    name = _leading(r)
+    name = leading(r)
     return math.nan if name == "angle_of_turn" else r.statistics[name].percentiles.get(99.9, math.nan)
 
 
 def _base_words(r: RegionSummary) -> str:
-    return BASE_WORDS.get(_leading(r).removeprefix("equivalent_strain"), "")
+    return BASE_WORDS.get(leading(r).removeprefix("equivalent_strain"), "")
 
 
 def _micro(value: float) -> str:
@@ -368,6 +388,23 @@ def _micro(value: float) -> str:
     if abs(micro) < 1e-6:
         return "0"
     return f"{micro:.0f}" if abs(micro) >= 100 else f"{micro:.3g}"
+
+
+def _above(value: float) -> str:
+    """Return a bound with two digits, never rounded down.
+
+    Examples
+    --------
+    >>> _above(1234.0), _above(40.0), _above(0.0731), _above(0.0)
+    ('1300', '40', '0.074', '0')
+    """
+    if not math.isfinite(value):
+        return " -"
+    if value < 1e-6:
+        return "0"
+    unit = 10.0 ** (math.floor(math.log10(value)) - 1)
+    rounded = math.ceil(value / unit * (1.0 - 1e-12)) * unit
+    return f"{rounded:.0f}" if rounded >= 10 else f"{rounded:.2g}"
 
 
 def _where(cell: int, summary: Summary) -> str:
@@ -410,12 +447,17 @@ def _aligned(rows: list[list[str]], left: bool = False) -> list[str]:
     return ["  ".join(p(cell, w) for p, cell, w in zip(pad, row, widths)).rstrip() for row in rows]
 
 
+_PLUS_MINUS = (
+    "+- is estimated from the elements around; at cells it covers the whole element, not its centroid alone"
+)
+
+
 def _tail(summary: Summary) -> list[str]:
     fields, options = summary.fields, summary.options
-    lines = []
+    lines = [_PLUS_MINUS]
     values = "values of the table" if summary.request.get("at") in ("nodes", *OWN_MESH) else "values"
     values += f" at element {_location(options.at)}; shear is tensor shear"
-    if any(name.startswith("equivalent_strain") for name in fields.arrays):
+    if any("equivalent" in name for name in fields.arrays):
         form = equivalent_form(options.equivalent_poisson)
         if any(name.endswith("_mechanical") for name in fields.arrays):
             form += " (mechanical: of the total less the free thermal strain)"
@@ -472,7 +514,7 @@ def _removals(summary: Summary) -> list[str]:
     if not summary.removals:
         return []
     order = sorted(summary.removals, key=lambda r: -float(np.linalg.norm(r.motion.rotation)))
-    shown = summary.removals if len(order) <= _MOST_COLUMNS else order[:_MOST_COLUMNS]
+    shown = summary.removals if len(order) <= MOST_SHOWN else order[:MOST_SHOWN]
     lines = [line for r in shown for line in _removed(r, _extent(summary))]
     if len(shown) < len(order):
         lines.append(

@@ -11,6 +11,10 @@ from unturn.errors import InputError, UsageError, close_matches
 from unturn.kinematics._symmetric import PAIRS, Floats
 from unturn.result import Result
 
+# Common practice, no source: steel has 1.2e-5 a degree, plastics and rubber 5e-5 to 3e-4.
+MOST_EXPANSION = 1e-3
+"""Coefficient above which a wrong unit is likelier than such a material."""
+
 
 @dataclass(frozen=True, eq=False)
 class Thermal:
@@ -33,6 +37,17 @@ class Thermal:
     cell: Floats | None
     reference: float
     isotropic: bool
+
+    @property
+    def notes(self) -> tuple[str, ...]:
+        """Sentences for the user on coefficients that no material has."""
+        largest = float(np.abs(self.expansion).max(initial=0.0))
+        if largest <= MOST_EXPANSION:
+            return ()
+        return (
+            f"an expansion of {largest:g} a degree is more than any material has (up to {MOST_EXPANSION:g}): "
+            "write twelve millionths as --thermal-expansion 12e-6",
+        )
 
     def free_strain(
         self,

@@ -8,9 +8,10 @@ plane counts.
 from __future__ import annotations
 
 from collections.abc import Iterator
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from itertools import pairwise
 from threading import Lock
+from typing import Literal
 
 import numpy as np
 from numpy.typing import NDArray
@@ -21,13 +22,16 @@ from unturn.gradient import (
     Plane,
     Samples,
     chunk_ranges,
+    mean_gradient,
     over_chunks,
     sample_points,
     with_thickness_stretch,
 )
 from unturn.kinematics._finite import Finite
+from unturn.kinematics._motion import rotation_vector
 from unturn.kinematics._symmetric import Floats
 from unturn.model import Model, ModelBlock
+from unturn.point_gradient import PointGradient
 from unturn.recovery import Recovered
 
 Ints = NDArray[np.int64]
@@ -94,7 +98,12 @@ class StrainError:
         return 100.0 * float(np.sqrt(error / (strain + error))) if strain + error > 0 else float("nan")
 
 
-def strain_error(recovered: Recovered, threads: int | None = None, base: str = "") -> StrainError:
+def strain_error(
+    recovered: Recovered,
+    threads: int | None = None,
+    base: str = "",
+    at: Literal["centroid", "mean"] = "centroid",
+) -> StrainError:
     """Return how far the recovered strain departs from that of the elements.
 
     Parameters
@@ -104,7 +113,11 @@ def strain_error(recovered: Recovered, threads: int | None = None, base: str = "
     threads
         None: all processors.
     base
-        Of which strain: empty for the small one, or a finite base such as ``hencky``; solids and plane meshes only.
+        Of which strain: empty for the small one, or a finite base such as ``hencky``. Also ``rotation``, the small rotation
+        vector, and ``turn``, R over the root of two: the norm of the difference of two is twice the sine of half the angle
+        between them. On surfaces and lines in space finite ones follow from the recovered gradient along them.
+    at
+        What `plus_minus` is the bound of: the value at the centroid, or that of the mean of the gradient.
 
     Notes
     -----
@@ -118,13 +131,13 @@ def strain_error(recovered: Recovered, threads: int | None = None, base: str = "
     n = model.result.n_cells
     volume, error, strain, plus_minus = (np.full(n, np.nan) for _ in range(4))
     departure = np.zeros(len(shares))
-    nodal = _components(recovered.values, model.plane, base)
+    nodal = strain_of(recovered.values, model.plane, base)
     reach = [np.zeros(cells.shape) for cells in shares.cells]
     lock = Lock()
     for block, cells, out in zip(model.blocks, shares.cells, reach):
         if block.row is None:
             continue
-        job = _Job(model, block, cells, nodal, recovered.usable[block.index], base)
+        job = _Job(model, block, cells, recovered.values, nodal, recovered.usable[block.index], base, at)
 
         def work(a: int, b: int, job: _Job = job, out: Floats = out) -> None:
             with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
@@ -156,12 +169,25 @@ def strain_components(H: Floats, plane: Plane | None) -> Floats:
     return e
 
 
-def _components(H: Floats, plane: Plane | None, base: str) -> Floats:
-    """Return what `strain_components` does, of a finite strain where a base is given."""
+def strain_of(H: Floats, plane: Plane | None, base: str) -> Floats:
+    """Return what `strain_components` does, of a finite strain or of the rotation where that is asked for."""
     if not base:
         return strain_components(H, plane)
+    if base == "rotation":
+        return rotation_vector(H)
+    if plane is not None and plane.model is None:
+        H = H.copy()
+        H[plane.normal, plane.normal] = 0.0
+    return _of_finite(with_thickness_stretch(H, plane), base)
+
+
+def _of_finite(H: Floats, base: str) -> Floats:
+    """Return components of a finite strain `(6, n)`, shear times sqrt 2, or of the turn `(9, n)`, from `F - I`."""
     with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
-        e: Floats = getattr(Finite(with_thickness_stretch(H, plane)), base)
+        if base == "turn":
+            turn: Floats = Finite(H).turn.reshape(9, -1) * 0.5**0.5
+            return turn
+        e: Floats = getattr(Finite(H), base)
     return e * _ROOTS[:, None]
 
 
@@ -184,18 +210,22 @@ class _Job:
         model: Model,
         block: ModelBlock,
         cells: NDArray[np.int32],
+        H: Floats,
         nodal: Floats,
         usable: NDArray[np.bool_],
         base: str,
+        at: str,
     ) -> None:
         assert block.row is not None
-        self.base = base
-        self.model, self.block, self.cells, self.nodal, self.usable = model, block, cells, nodal, usable
+        self.base, self.H, self.nodal = base, H, nodal
+        self.model, self.block, self.cells, self.usable = model, block, cells, usable
         row = block.row
         self.rule = rule_of_degree(row.shape, 2 * row.order)
         self.inside = sample_points(row, self.rule.points)
         self.nodes = sample_points(row, row.nodes)
-        self.center = sample_points(row, "centroid")
+        self.in_space = block.kind in ("surface", "line") and base not in ("", "rotation")
+        self.middle = sample_points(row, at)
+        self.mean = at == "mean" and len(self.middle.weights) > 1
         self.constant = _is_constant(row, model.plane)
 
     def strains(self, chunk: ElementChunk, where: Samples) -> Iterator[tuple[Floats, Floats]]:
@@ -204,13 +234,27 @@ class _Job:
         for gradients, functions in zip(where.gradients, where.functions):
             if point is None or not self.constant:
                 point = chunk.at(gradients, functions)
-                e = _components(point.H, self.model.plane, self.base)
+                e = self.components(point.H, point, chunk)
             yield e, point.weight
+
+    def components(self, H: Floats, point: PointGradient, chunk: ElementChunk) -> Floats:
+        """Return what is compared, of a gradient at a point of the elements."""
+        if not self.in_space:
+            return strain_of(H, self.model.plane, self.base)
+        return _of_finite(chunk.finite(replace(point, H=H)), self.base)
+
+    def at_nodes(self, chunk: ElementChunk, cells: NDArray[np.int32]) -> Floats:
+        """Return what is compared of the recovered gradient, `(6, n_nodes, m)` for strain."""
+        if not self.in_space:
+            return self.nodal[:, cells.T]
+        places = [chunk.at(g, f) for g, f in zip(self.nodes.gradients, self.nodes.functions)]
+        columns = [self.H[:, :, column] for column in cells.T]
+        return np.stack([self.components(H, place, chunk) for H, place in zip(columns, places)], 1)
 
     def chunk(self, a: int, b: int) -> tuple[tuple[Floats, Floats, Floats], Floats, Floats]:
         """Return volume, error and strain integrals; then, `(m, n_nodes)`, departure and reach at the nodes."""
         chunk = self.model.chunk(self.block, self.block.connectivity[a:b], self.block.index[a:b])
-        nodal = self.nodal[:, self.cells[a:b].T]
+        nodal = self.at_nodes(chunk, self.cells[a:b])
         volume, error, strain = np.zeros(b - a), np.zeros(b - a), np.zeros(b - a)
         inside = self.strains(chunk, self.inside)
         for (e, size), functions, weight in zip(inside, self.inside.functions, self.rule.weights):
@@ -222,11 +266,16 @@ class _Job:
         departure = np.stack(
             [norms(nodal[:, k] - e) for k, (e, _) in enumerate(self.strains(chunk, self.nodes))], 1
         )
-        middle, _ = next(self.strains(chunk, self.center))
+        if self.mean and self.in_space:
+            middle = _of_finite(mean_gradient(chunk, self.middle, finite=True)[0], self.base)
+        elif self.mean:
+            middle = strain_of(mean_gradient(chunk, self.middle)[0], self.model.plane, self.base)
+        else:
+            middle, _ = next(self.strains(chunk, self.middle))
         return (volume, error, strain), departure, norms(nodal - middle[:, None]).T
 
 
-def strain_jump(recovered: Recovered, threads: int | None = None) -> tuple[Floats, Floats]:
+def strain_jump(recovered: Recovered, threads: int | None = None, base: str = "") -> tuple[Floats, Floats]:
     """Return the largest difference between the strains that elements have where they meet.
 
     Parameters
@@ -235,6 +284,8 @@ def strain_jump(recovered: Recovered, threads: int | None = None) -> tuple[Float
         Tells which elements meet at which node; elements of different groups or dimensions are not compared.
     threads
         None: all processors.
+    base
+        Of which strain, as in `strain_error`.
 
     Returns
     -------
@@ -246,7 +297,7 @@ def strain_jump(recovered: Recovered, threads: int | None = None) -> tuple[Float
     """
     shares, model = recovered.shares, recovered.shares.model
     jump = np.full(len(shares), np.nan)
-    meeting = _Meeting(recovered)
+    meeting = _Meeting(recovered, base)
 
     def work(a: int, b: int) -> None:
         with np.errstate(invalid="ignore", divide="ignore", over="ignore"):
@@ -274,8 +325,9 @@ def strain_jump(recovered: Recovered, threads: int | None = None) -> tuple[Float
 class _Meeting:
     """Pairs of share and cell, sorted by share, and the strain of the cell there."""
 
-    def __init__(self, recovered: Recovered) -> None:
-        self.shares = shares = recovered.shares
+    def __init__(self, recovered: Recovered, base: str) -> None:
+        self.shares, self.base = recovered.shares, base
+        shares = self.shares
         model = shares.model
         share = np.concatenate([c.reshape(-1) for c in shares.cells])
         used = [np.repeat(recovered.usable[b.index], c.shape[1]) for b, c in zip(model.blocks, shares.cells)]
@@ -309,6 +361,9 @@ class _Meeting:
                 mine = local == node
                 which = cell[mine]
                 chunk = model.chunk(block, block.connectivity[which], block.index[which])
-                H = chunk.at(samples.gradients[node], samples.functions[node]).H
-                out[:, here[mine]] = strain_components(H, model.plane)
+                point = chunk.at(samples.gradients[node], samples.functions[node])
+                if self.base and block.kind in ("surface", "line"):
+                    out[:, here[mine]] = _of_finite(chunk.finite(point), self.base)
+                else:
+                    out[:, here[mine]] = strain_of(point.H, model.plane, self.base)
         return out

@@ -3,25 +3,44 @@
 from __future__ import annotations
 
 import contextlib
-import os
-import re
-from collections.abc import Callable, Sequence
-from functools import partial
+from collections.abc import Mapping, Sequence
+from enum import StrEnum
 from pathlib import Path
-from typing import TYPE_CHECKING, Annotated, cast
+from typing import TYPE_CHECKING, Annotated
 
 import typer
 
 from unturn.cli import _options as o
-from unturn.errors import UnturnError, UsageError
+from unturn.cli._shared import EVERY, strain_options
+from unturn.errors import UsageError
 
 if TYPE_CHECKING:
-    from unturn.envelope import Envelope, EnvelopeOptions, State
-    from unturn.fields import CellFields
+    from unturn.envelopes import EachStep
     from unturn.pipeline import StrainOptions
-    from unturn.result import Result
+    from unturn.result import Array, Association, Result
+    from unturn.states import Envelope, EnvelopeOptions, State
 
 
+_MEASURES = Annotated[
+    str | None,
+    typer.Option(
+        metavar="LIST",
+        help="Measures by comma, or 'all'; of a series also strain_increment, rotation_increment, deformation_rate, "
+        "spin, accumulated_equivalent_strain ... Default: strain,rotation,equivalent_strain,principal_strain.",
+    ),
+]
+
+
+class _Place(StrEnum):
+    centroid = "centroid"
+    mean = "mean"
+    nodes = "nodes"
+
+
+_At = Annotated[_Place, typer.Option(help="Where values are taken.")]
+
+
+@strain_options(*EVERY, measures=_MEASURES, at=_At)
 def envelope(
     files: Annotated[
         list[Path],
@@ -39,21 +58,8 @@ def envelope(
             "Default: the first input's name with .envelope before the suffix.",
         ),
     ] = None,
-    measures: Annotated[
-        str | None,
-        typer.Option(
-            metavar="LIST",
-            help="Measures by comma, or 'all'; of a series also strain_increment, rotation_increment, deformation_rate, "
-            "spin, accumulated_equivalent_strain ... Default: strain,rotation,equivalent_strain,principal_strain.",
-        ),
-    ] = None,
-    base: Annotated[
-        o.BaseChoice, typer.Option(help="Replace each small measure by its counterpart of this finite base.")
-    ] = o.BaseChoice.small,
-    at: Annotated[o.LocationChoice, typer.Option(help="Where values are taken.")] = o.LocationChoice.centroid,
-    solve: Annotated[
-        o.SolveChoice, typer.Option(help="What the solve was; it decides what the verdict says.")
-    ] = o.SolveChoice.unknown,
+    *,
+    options: StrainOptions,
     combinations: Annotated[
         Path | None,
         typer.Option(
@@ -91,30 +97,13 @@ def envelope(
             help="Leave out a state that fails, name it, and go on; the exit status is still that of the failure.",
         ),
     ] = False,
-    displacement: o.Displacement = None,
-    displacement_scale: o.Scale = 1.0,
-    coordinates: o.Coordinates = o.CoordinatesChoice.reference,
-    plane: o.Plane = None,
-    axis: o.Axis = o.AxisChoice.y,
-    poisson: o.Poisson = None,
-    equivalent_poisson: Annotated[
-        float | None,
+    displacement_table: Annotated[
+        list[Path] | None,
         typer.Option(
-            metavar="NU", help="Equivalent strain as 1/(1+NU) times the norm of the principal differences."
-        ),
-    ] = None,
-    remove_rigid: Annotated[
-        str,
-        typer.Option(
-            "--remove-rigid",
-            metavar="none|whole|bodies|regions|REGION",
-            help="Take the rigid motion of these out of every state first.",
-        ),
-    ] = "none",
-    frame: Annotated[
-        str | None,
-        typer.Option(
-            metavar="FRAME", help="Axes of the components: 'cylindrical z', 'cartesian 1,1,0 0,0,1' ..."
+            metavar="FILE.csv",
+            help="Displacements by node number for a mesh without (repeatable): each table is a load case or step on the "
+            "mesh of the one FILE.",
+            readable=False,
         ),
     ] = None,
     zero_step: Annotated[
@@ -124,150 +113,37 @@ def envelope(
         list[str] | None,
         typer.Option(metavar="NAME", help="Report this region only (repeatable): a group, or array=value."),
     ] = None,
-    alive: o.Alive = None,
-    skin: o.Skin = False,
     prefix: Annotated[str, typer.Option(metavar="TEXT", help="Goes before the name of each new array.")] = "",
     overwrite: Annotated[bool, typer.Option("--overwrite", help="Replace arrays of the same name.")] = False,
     json: o.Json = None,
-    threads: o.Threads = None,
 ) -> None:
-    """Find the extremes of every cell over steps or load cases, and which of them made each."""
+    """Find the extremes of every cell or node over steps or load cases, and which of them made each."""
     from unturn.cli._output import Places, check_place
-    from unturn.envelope import EnvelopeOptions
-    from unturn.io import writable_suffix
-    from unturn.pipeline import StrainOptions
+    from unturn.combinations import read_combinations
+    from unturn.io import check_target, writable_suffix
+    from unturn.state_files import Files, numbered, open_states, read_first
+    from unturn.states import EnvelopeOptions
 
-    strain = StrainOptions(
-        displacement=displacement,
-        measures=None if measures is None else [m.strip() for m in measures.split(",") if m.strip()],
-        base=base.value, at=at.value, solve=solve.value, plane=plane.value if plane else None, poisson=poisson,
-        axis=axis.value, coordinates=coordinates.value, displacement_scale=displacement_scale,
-        equivalent_poisson=equivalent_poisson, remove_rigid=remove_rigid, frame=frame, skin=skin, alive=alive,
-        threads=threads,
-    )  # fmt: skip
-    files = _numbered(files) if as_series else files
-    inputs = [*files, *([combinations] if combinations is not None else [])]
+    tables = tuple(displacement_table or ())
+    inputs = [*files, *tables, *([combinations] if combinations is not None else [])]
     check_place(None, json, inputs)
     check_place(None, steps_output, inputs)
-    suffix = writable_suffix(files[0], _read_first(files))
+    files = numbered(files) if as_series and not tables else files
+    suffix = writable_suffix(files[0], read_first(files))
     out = Places(output, files, (json, steps_output)).of(files[0], suffix, "envelope")
-    _check_target(out)
-    states, strain, zero = _states(files, strain, combinations, as_series, keep_going, zero_step)
-    options = EnvelopeOptions(
-        strain,
-        "step" if as_series or (len(files) == 1 and combinations is None) else "case",
-        tensor_range,
-        keep_going,
-        tuple(region or ()),
-        out.absolute().parent,
+    check_target(out)
+    chosen = None if combinations is None else read_combinations(combinations)
+    asked = Files(files, tables, chosen, as_series, keep_going, zero_step)
+    states, strain, zero = open_states(asked, options)
+    wanted = EnvelopeOptions(
+        strain, asked.kind, tensor_range, keep_going, tuple(region or ()), out.absolute().parent
     )
-    found = _run(states, options, zero, steps_output, prefix, overwrite)
-    base_result = _read_first(files) if combinations is not None else found.model.result
-    _write(found, base_result, out, [str(f) for f in files], prefix, overwrite, json)
+    found = _run(states, wanted, zero, steps_output, prefix, overwrite)
+    base = read_first(files) if chosen is not None else found.model.result
+    _write(found, base, out, [str(f) for f in (*files, *tables)], prefix, overwrite, json)
     if found.failures:
-        typer.echo(f"unturn: {len(found.failures)} of {len(states)} {options.kind}s failed", err=True)
+        typer.echo(f"unturn: {len(found.failures)} of {len(states)} {asked.kind}s failed", err=True)
         raise typer.Exit(max(e.exit_status for e in found.failures.values()))
-
-
-def _numbered(files: Sequence[Path]) -> list[Path]:
-    """Return the files in the order of the last number in their names."""
-    numbers = [re.findall(r"\d+", f.stem) for f in files]
-    for file, found in zip(files, numbers):
-        if not found:
-            raise UsageError(f"--as-series: the name of {file} holds no number by which to order it.")
-    return [f for _, f in sorted(zip([int(n[-1]) for n in numbers], files))]
-
-
-def _check_target(out: Path) -> None:
-    """Refuse before the work what could not be written after it."""
-    from unturn.io._formats import format_for_writing
-
-    format_for_writing(out)
-    folder = out.absolute().parent
-    if not folder.is_dir() or not os.access(folder, os.W_OK):
-        raise UsageError(f"-o {out}: there is no folder {folder} that may be written to. Choose another one.")
-
-
-def _settled(strain: StrainOptions, last: State) -> StrainOptions:
-    """Return the options with the kind of a flat mesh settled by the last state, where that can be used."""
-    from unturn.errors import UnturnError
-    from unturn.pipeline import settled
-
-    try:
-        return settled(strain, last.read())
-    except UnturnError:  # it is told where it is met
-        return strain
-
-
-def _states(
-    files: Sequence[Path],
-    strain: StrainOptions,
-    combinations: Path | None,
-    as_series: bool,
-    keep_going: bool,
-    zero_step: int | None,
-) -> tuple[Sequence[State], StrainOptions, Result | None]:
-    from unturn import io
-    from unturn.cli._strain import chosen_step
-    from unturn.superposition import read_combinations, superposed_states
-
-    if combinations is not None and as_series:
-        raise UsageError(
-            "--as-series makes steps of the files, and --combinations load cases: give one of them."
-        )
-    zero = None
-    if zero_step is not None:
-        if len(files) > 1:
-            raise UsageError("--zero-step is a step of one series; several files are given.")
-        opened = io.open_result(files[0])
-        zero = opened.read(chosen_step(opened, str(zero_step)))
-    chosen = read_combinations(combinations) if combinations is not None else None
-    states = [s for f in files for s in _of_file(f, len(files) > 1, chosen is not None, keep_going)]
-    names = [s.name for s in states]
-    twice = {n for n in names if names.count(n) > 1}
-    if chosen is None:
-        if len(states) == 1:
-            raise UsageError(
-                f"{files[0]} holds one step: an envelope needs a series, several files or --combinations."
-            )
-        return states, _settled(strain, states[-1]), zero
-    if zero is not None:
-        raise UsageError(
-            "--zero-step does not go with --combinations: a load case has its own undeformed state."
-        )
-    if twice:
-        raise UsageError(f"two load cases are called {min(twice)!r}: give the files different names.")
-    return *superposed_states({s.name: s.read for s in states}, chosen, strain), None
-
-
-def _of_file(path: Path, several: bool, as_case: bool, keep_going: bool) -> list[State]:
-    """Return the states of one file; with `as_case` their names are those of load cases in combinations."""
-    from unturn import io
-    from unturn.envelope import State
-
-    try:
-        opened = io.open_result(path)
-    except UnturnError as error:
-        if not keep_going:
-            raise
-        return [State(path.stem if as_case else path.name, partial(_fail, error))]
-    if opened.steps is None:
-        return [State(path.stem if as_case else path.name, partial(opened.read, 0))]
-    number = "{0}:{1}" if as_case else "{0} step {1}" if several else "step {1}"
-    alone = len(opened.steps) == 1 and as_case
-    return [
-        State(
-            path.stem if alone else number.format(path.stem if as_case else path.name, k),
-            partial(opened.read, k),
-            time,
-        )
-        for k, time in enumerate(opened.steps)
-    ]
-
-
-def _fail(error: UnturnError) -> Result:
-    """Stand for a file that could not be opened."""
-    raise error
 
 
 def _run(
@@ -278,16 +154,15 @@ def _run(
     prefix: str,
     overwrite: bool,
 ) -> Envelope:
-    from unturn._api import add_fields
+    from unturn._api import add_arrays
     from unturn.cli._progress import progress_bar
-    from unturn.envelope import envelope as find_envelope
+    from unturn.envelopes import envelope as find_envelope
     from unturn.io import series_writer
-    from unturn.pipeline import Computed
     from unturn.series import SERIES_MEASURES
 
     with contextlib.ExitStack() as stack:
         progress = stack.enter_context(progress_bar(f"{options.kind}s", len(states)))
-        each: Callable[[CellFields, float], None] | None = None
+        each: EachStep | None = None
         if steps_output is not None:
             if not any(m in SERIES_MEASURES for m in options.strain.measures or ()):
                 raise UsageError(
@@ -295,27 +170,19 @@ def _run(
                     f"{', '.join(SERIES_MEASURES)}."
                 )
             writer = stack.enter_context(series_writer(steps_output))
+            on: Association = "point" if options.strain.at == "nodes" else "cell"
 
-            def each(fields: CellFields, time: float) -> None:
-                computed = Computed(fields)
+            def each(
+                result: Result,
+                arrays: Mapping[str, Array],
+                components: Mapping[str, tuple[str, ...]],
+                time: float,
+            ) -> None:
                 writer.add(
-                    add_fields(fields.model.result, computed, prefix=prefix, overwrite=overwrite), time
+                    add_arrays(result, on, arrays, components, prefix=prefix, overwrite=overwrite), time
                 )
 
         return find_envelope(states, options, zero=zero, progress=progress, each=each)
-
-
-def _read_first(files: Sequence[Path]) -> Result:
-    """Return the first file that can be read: it tells what the output can hold, and carries that of combinations."""
-    from unturn import io
-
-    errors = []
-    for path in files:
-        try:
-            return io.read(path)
-        except UnturnError as error:
-            errors.append(error)
-    raise errors[0]
 
 
 def _write(
@@ -328,14 +195,12 @@ def _write(
     json: Path | None,
 ) -> None:
     from unturn import io
-    from unturn._api import add_fields
+    from unturn._api import add_arrays
     from unturn.envelope_text import envelope_data, envelope_text
-    from unturn.fields import CellFields
-    from unturn.kinematics._symmetric import Floats
-    from unturn.pipeline import Computed
 
-    fields = CellFields(found.model, cast("dict[str, Floats]", found.arrays), found.components)
-    result = add_fields(base, Computed(fields), prefix=prefix, overwrite=overwrite)
+    result = add_arrays(
+        base, found.places.on, found.arrays, found.components, prefix=prefix, overwrite=overwrite
+    )
     lost = io.write(result, out)
     to_stderr = str(json) == "-"
     typer.echo(envelope_text(found, files), err=to_stderr)

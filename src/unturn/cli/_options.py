@@ -67,6 +67,20 @@ class RecoveryChoice(StrEnum):
     average = "average"
 
 
+class BordersChoice(StrEnum):
+    """What a point on the border of regions shows."""
+
+    dominant = "dominant"
+    apart = "split"  # the name would hide a method of str
+
+
+class FacesChoice(StrEnum):
+    """Where the values of free faces go."""
+
+    mesh = "mesh"
+    cells = "cells"
+
+
 class CoordinatesChoice(StrEnum):
     """What the coordinates of the file are."""
 

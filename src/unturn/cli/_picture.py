@@ -3,15 +3,18 @@
 from __future__ import annotations
 
 from collections.abc import Mapping
+from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
 import numpy as np
 
 from unturn._api import add_fields
-from unturn.measures import MEASURES, SURFACE_AXES
+from unturn.borders import ORIGINAL_POINT
+from unturn.measures import ESTIMATES, MEASURES, SURFACE_AXES
 from unturn.numbering import node_numbers
 from unturn.pipeline import Computed
+from unturn.series import SERIES_MEASURES
 from unturn.summary import Summary, equivalent_form
 from unturn.surface import SURFACE_MEASURES, SurfaceFields
 
@@ -47,6 +50,9 @@ def draw_summary(summary: Summary, computed: Computed, at: str, path: Path) -> s
 
     how = _on_faces(computed.surface) if computed.surface is not None else _on_the_mesh(summary, computed)
     array, component = _chosen(how.pop("arrays"))
+    at = (
+        "" if at == "nodes" and how.get("association") == "cell" else at
+    )  # an estimate of cells, asked for beside
     drawing = draw(
         **how,
         array=array,
@@ -73,19 +79,28 @@ def _unit(array: str) -> str:
     if array in SURFACE_MEASURES:
         array = SURFACE_MEASURES[array].replaces
         return MEASURES[array].unit if array in MEASURES else "strain"  # along the normal, in local axes
-    return MEASURES[array].unit if array in MEASURES else ""
+    measure = MEASURES.get(array) or SERIES_MEASURES.get(array)
+    return "strain" if array in ESTIMATES else measure.unit if measure is not None else ""
 
 
 def _on_the_mesh(summary: Summary, computed: Computed) -> dict[str, Any]:
     model = summary.fields.model
-    found = summary.fields if computed.nodes is None else computed.nodes
-    numbers = summary.numbers if computed.nodes is None else node_numbers(model.result)
+    on_points, on_cells, _ = computed.arrays()
+    arrays = {n: a for n, a in on_points.items() if n != ORIGINAL_POINT} or on_cells
+    at_nodes = arrays is not on_cells
+    numbering = node_numbers(model.result) if at_nodes else summary.numbers
+    numbers = None if numbering is None else numbering.numbers
+    displacement = model.displacement.values
+    if computed.nodes is not None:
+        point = computed.nodes.layout.point
+        displacement = displacement[point]
+        numbers = numbers if numbers is None or not at_nodes else numbers[point]
     return {
-        "result": add_fields(model.result, Computed(summary.fields, nodes=computed.nodes), overwrite=True),
-        "association": "cell" if computed.nodes is None else "point",
-        "arrays": found.arrays,
-        "displacement": model.displacement.values,
-        "numbers": None if numbers is None else numbers.numbers,
+        "result": add_fields(model.result, replace(computed, removals=()), overwrite=True),
+        "association": "point" if at_nodes else "cell",
+        "arrays": arrays,
+        "displacement": displacement,
+        "numbers": numbers,
     }
 
 

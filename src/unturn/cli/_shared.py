@@ -15,7 +15,7 @@ Measures = Annotated[
     str | None,
     typer.Option(
         metavar="LIST",
-        help="Arrays to add, by comma; 'all' for every one. "
+        help="Arrays to add, by comma; 'all' for every small one. "
         "Default: strain,rotation,equivalent_strain,principal_strain.",
     ),
 ]
@@ -34,8 +34,41 @@ _OPTIONS: dict[str, tuple[Any, Any]] = {
     ),
     "at": (At, o.PlaceChoice.centroid),
     "recovery": (
-        Annotated[o.RecoveryChoice, typer.Option(help="How the gradient gets to the nodes with --at nodes.")],
+        Annotated[
+            o.RecoveryChoice,
+            typer.Option(help="How the gradient gets to the nodes, with --at nodes and for strain_error."),
+        ],
         o.RecoveryChoice.patch,
+    ),
+    "borders": (
+        Annotated[
+            o.BordersChoice,
+            typer.Option(
+                help="With --at nodes, a point on the border of regions: the value of the dominant one, or "
+                "duplicated, one for each region.",
+            ),
+        ],
+        o.BordersChoice.dominant,
+    ),
+    "faces": (
+        Annotated[
+            o.FacesChoice,
+            typer.Option(
+                help="With --at surface: the free faces as a mesh of their own, or their values on the cells of the "
+                "file, of the face with the largest principal strain.",
+            ),
+        ],
+        o.FacesChoice.mesh,
+    ),
+    "between_regions": (
+        Annotated[
+            bool,
+            typer.Option(
+                "--between-regions",
+                help="With --at surface: also the faces between cells of different regions.",
+            ),
+        ],
+        False,
     ),
     "solve": (
         Annotated[o.SolveChoice, typer.Option(help="What the solve was; it decides what the verdict says.")],
@@ -122,8 +155,11 @@ _OPTIONS: dict[str, tuple[Any, Any]] = {
     "threads": (o.Threads, None),
 }  # fmt: skip
 
-EVERY = tuple(_OPTIONS)
-"""Every option of `unturn.strain` that a command can take."""
+PLACES = ("borders", "faces", "between_regions")
+"""Options of values at nodes and on free faces, for commands that write those."""
+
+EVERY = tuple(name for name in _OPTIONS if name not in PLACES)
+"""Every other option of `unturn.strain`."""
 
 
 def strain_options(*names: str, **instead: Any) -> Callable[[Callable[..., None]], Callable[..., None]]:
@@ -147,7 +183,7 @@ def strain_options(*names: str, **instead: Any) -> Callable[[Callable[..., None]
 
     def decorate(command: Callable[..., None]) -> Callable[..., None]:
         def with_options(**given: Any) -> None:
-            from unturn.pipeline import StrainOptions
+            from unturn.options import StrainOptions
 
             asked = {name: _plain(name, given.pop(name)) for name in names}
             command(**given, options=StrainOptions(**asked))
@@ -181,4 +217,4 @@ def _plain(name: str, value: Any) -> Any:
     return value.value if isinstance(value, Enum) else value
 
 
-__all__ = ["EVERY", "At", "CellsOnly", "Measures", "strain_options"]
+__all__ = ["EVERY", "PLACES", "At", "CellsOnly", "Measures", "strain_options"]

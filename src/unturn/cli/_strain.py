@@ -2,27 +2,23 @@
 
 from __future__ import annotations
 
-import math
-from dataclasses import dataclass, replace
+from dataclasses import replace
 from pathlib import Path
 from typing import TYPE_CHECKING, Annotated, Any
 
 import typer
 
 from unturn.cli import _options as o
-from unturn.cli._shared import EVERY, strain_options
-from unturn.errors import InputError, UnturnError, UsageError
+from unturn.cli._shared import EVERY, PLACES, strain_options
+from unturn.cli._steps import chosen_step
+from unturn.cli._strain_job import Failure, StrainJob
+from unturn.errors import UnturnError, UsageError
 
 if TYPE_CHECKING:
-    from unturn.cli._output import Places
-    from unturn.io import ResultFile
-    from unturn.pipeline import Computed, StrainOptions
-    from unturn.result import Result
-    from unturn.rigid import RigidMotion
-    from unturn.summary import Summary
+    from unturn.options import StrainOptions
 
 
-@strain_options(*EVERY)
+@strain_options(*EVERY, *PLACES)
 def strain(
     files: Annotated[list[Path], typer.Argument(metavar="FILE...", help="Result files.", readable=False)],
     output: Annotated[
@@ -38,6 +34,14 @@ def strain(
     *,
     options: StrainOptions,
     step: o.Step = "last",
+    keep_going: Annotated[
+        bool,
+        typer.Option(
+            "--keep-going",
+            help="With --step all: leave out a step that fails, name it, and go on; the exit status is still that of "
+            "the failure.",
+        ),
+    ] = False,
     mode: Annotated[
         bool, typer.Option("--mode", help="A mode shape: no verdict, values per unit amplitude.")
     ] = False,
@@ -60,10 +64,32 @@ def strain(
     json: o.Json = None,
 ) -> None:
     """Add strain, rotation and equivalent strain to result files and say where they can be trusted."""
-    from unturn.cli._output import Places, check_place, is_folder, write_json
+    from unturn.cli._output import Places, check_place
 
-    check_place(picture, json, files)
-    if options.displacement is not None and displacement_table is not None:
+    check_place(picture, json, [*files, *([displacement_table] if displacement_table is not None else [])])
+    _check(files, options, output, picture, displacement_table)
+    if displacement_table is not None:
+        options = replace(options, displacement="displacement")
+    job = StrainJob(
+        places=Places(output, files, (picture, json)),
+        options=options,
+        zero_step=zero_step,
+        summary={"regions": tuple(region or ()), "solve": options.solve, "mode": mode,
+                 "at": "mean" if options.at == "mean" else "centroid",
+                 "equivalent_poisson": options.equivalent_poisson, "full": json is not None},
+        table=displacement_table, step=step, keep_going=keep_going, prefix=prefix, overwrite=overwrite, picture=picture,
+        text_to_stderr=str(json) == "-",
+    )  # fmt: skip
+    _run(job, files, json)
+
+
+def _check(
+    files: list[Path], options: StrainOptions, output: Path | None, picture: Path | None, table: Path | None
+) -> None:
+    """Refuse options of the command that do not fit each other."""
+    from unturn.cli._output import is_folder
+
+    if options.displacement is not None and table is not None:
         raise UsageError("--displacement and --displacement-table exclude each other: give one of them.")
     if picture is not None and len(files) > 1:
         raise UsageError("--picture FILE.png draws one file; give one input file with it.")
@@ -71,18 +97,14 @@ def strain(
         raise UsageError("--picture draws meshes, and --at quadrature gives points: leave one of them out.")
     if output is not None and not is_folder(output) and len(files) > 1:
         raise UsageError(f"-o {output}: with several input files the output must be an existing folder.")
-    job = _Job(
-        places=Places(output, files, (picture, json)),
-        options=options,
-        zero_step=zero_step,
-        summary={"regions": tuple(region or ()), "solve": options.solve, "mode": mode,
-                 "at": "mean" if options.at == "mean" else "centroid",
-                 "equivalent_poisson": options.equivalent_poisson, "full": json is not None},
-        table=displacement_table, step=step, prefix=prefix, overwrite=overwrite, picture=picture,
-        text_to_stderr=str(json) == "-",
-    )  # fmt: skip
+
+
+def _run(job: StrainJob, files: list[Path], json: Path | None) -> None:
+    """Do all files; a file or step that fails does not stop the others, and decides the exit status."""
+    from unturn.cli._output import write_json
+
     data: list[dict[str, Any]] = []
-    failed: list[UnturnError] = []
+    failed: list[Failure] = []
     for number, path in enumerate(files):
         if number:
             typer.echo(err=job.text_to_stderr)
@@ -92,194 +114,22 @@ def strain(
             if len(files) == 1:
                 raise
             typer.echo(f"unturn: {error}", err=True)
-            failed.append(error)
+            failed.append(Failure(str(path), None, None, error))
     if json is not None:
-        write_json(data[0] if len(files) == 1 and len(data) == 1 else {"schema": "unturn.summaries/1", "results": data},
-                   json)  # fmt: skip
+        alone = len(files) == 1 and len(data) == 1 and not job.failed
+        several = {
+            "schema": "unturn.summaries/1",
+            "results": data,
+            "failed": [f.data() for f in (*job.failed, *failed)],
+        }
+        write_json(data[0] if alone else several, json)
+    if job.failed:
+        n = len(job.failed)
+        typer.echo(f"unturn: {n} step{'s' * (n != 1)} failed", err=True)
     if failed:
         typer.echo(f"unturn: {len(failed)} of {len(files)} files failed", err=True)
-        raise typer.Exit(max(e.exit_status for e in failed))
+    if failed or job.failed:
+        raise typer.Exit(max(f.error.exit_status for f in (*job.failed, *failed)))
 
 
-@dataclass(frozen=True)
-class _Job:
-    places: Places
-    options: StrainOptions
-    zero_step: int | None
-    summary: dict[str, Any]
-    table: Path | None
-    step: str
-    prefix: str
-    overwrite: bool
-    picture: Path | None
-    text_to_stderr: bool  # stdout is for the JSON then
-
-    @property
-    def _own_mesh(self) -> bool:
-        from unturn.pipeline import OWN_MESH
-
-        return self.options.at in OWN_MESH
-
-    def run(self, path: Path) -> list[dict[str, Any]]:
-        """Do one file and return its summaries as data."""
-        from unturn import io
-
-        opened = io.open_result(path)
-        if (
-            self.table is not None
-            and opened.steps is not None
-            and (self.step == "all" or self.zero_step is not None)
-        ):
-            raise UsageError(
-                f"{path}: --displacement-table holds the displacement of one state, and --step all and --zero-step need "
-                "that of every step."
-            )
-        if self.step == "all" and opened.steps is not None:
-            if self._own_mesh:
-                raise UsageError(
-                    f"--at {self.options.at} makes a mesh of its own; give one --step of the series."
-                )
-            return self._series(opened, path)
-        result = opened.read(chosen_step(opened, "last" if self.step == "all" else self.step))
-        out = self._target(path, result, series=False)
-        result, summary, computed = self._compute(result, self._zero(opened), alone=True)
-        lost = io.write(result, out)
-        self._print(summary, computed, out, lost, result if self._own_mesh else None)
-        return [self._data(summary, out)]
-
-    def _series(self, opened: ResultFile, path: Path) -> list[dict[str, Any]]:
-        from unturn import io
-        from unturn.pipeline import settled
-
-        assert opened.steps is not None
-        last = opened.read(len(opened.steps) - 1)
-        out = self._target(path, last, series=True)
-        job = self if self.table is not None else replace(self, options=settled(self.options, last))
-        del last  # one step in memory at a time
-        data, summary = [], None
-        zero = self._zero(opened)
-        previous: tuple[RigidMotion, ...] = ()
-        with io.series_writer(out) as writer:
-            for index, value in enumerate(opened.steps):
-                try:
-                    result, summary, computed = job._compute(opened.read(index), zero, previous)
-                except InputError as error:
-                    raise type(error)(f"at step {index} (t = {value:g}): {error}") from error
-                previous = tuple(r.motion for r in summary.removals)
-                writer.add(result, value)
-                data.append(self._data(summary, out))
-                self._say(_step_line(summary, index, value))
-        if summary is None:
-            raise InputError(f"{path}: the series holds no step.")
-        self._say("")
-        self._print(summary, computed, out, ())
-        return data
-
-    def _say(self, text: str) -> None:
-        typer.echo(text, err=self.text_to_stderr)
-
-    def _zero(self, opened: ResultFile) -> Result | None:
-        if self.zero_step is None:
-            return None
-        if opened.steps is None:
-            raise UsageError(f"{opened.path} is not a series: --zero-step has nothing to measure from.")
-        return opened.read(chosen_step(opened, str(self.zero_step), "--zero-step"))
-
-    def _compute(
-        self, result: Result, zero: Result | None, previous: tuple[RigidMotion, ...] = (), alone: bool = False
-    ) -> tuple[Result, Summary, Computed]:
-        from unturn._api import add_fields
-        from unturn.pipeline import compute
-        from unturn.summary import SummaryOptions, summarise
-
-        options = self.options
-        if self.table is not None:
-            from unturn.io.table import attach_displacement_table, read_displacement_table
-
-            result = attach_displacement_table(result, read_displacement_table(self.table))
-            options = replace(options, displacement="displacement")
-        computed = compute(result, options, zero=zero, diagnose=True, previous=previous)
-        if alone:  # of a series, one such step is no reason to lose the others
-            computed.require_some()
-        summary = summarise(computed, SummaryOptions(**self.summary), threads=options.threads)
-        result = add_fields(result, computed, prefix=self.prefix, overwrite=self.overwrite)
-        return result, summary, computed
-
-    def _target(self, path: Path, result: Result, series: bool) -> Path:
-        from unturn.io import check_target, writable_suffix
-
-        own = self._own_mesh
-        suffix = ".vtu" if own else writable_suffix(path, result, series=series)
-        out = self.places.of(path, suffix, self.options.at if own else "strain")
-        check_target(out, series=series)
-        return out
-
-    def _print(
-        self,
-        summary: Summary,
-        computed: Computed,
-        out: Path,
-        lost: tuple[str, ...],
-        own: Result | None = None,
-    ) -> None:
-        from unturn.summary_text import summary_text
-
-        self._say(summary_text(summary))
-        result = summary.fields.model.result
-        before = len(result.point_data) + len(result.cell_data) + len(result.field_data)
-        found = summary.fields if computed.nodes is None else computed.nodes
-        n = len(found.arrays) + (3 if summary.removals else 0)
-        if own is None:
-            self._say(f"wrote {out}: {n} array{'s' * (n != 1)} added, {before} unchanged")
-        else:
-            what = "faces" if self.options.at == "surface" else "quadrature points"
-            self._say(
-                f"wrote {out}: {own.n_cells} {what} with {len(own.cell_data) + len(own.point_data)} arrays"
-            )
-        for sentence in lost:
-            self._say(f"note: {sentence}")
-        if self.picture is not None:
-            from unturn.cli._picture import draw_summary
-
-            self._say(draw_summary(summary, computed, self.options.at, self.picture))
-
-    def _data(self, summary: Summary, out: Path) -> dict[str, Any]:
-        from unturn.summary import summary_data
-
-        return {**summary_data(summary), "output": str(out)}
-
-
-def chosen_step(opened: ResultFile, step: str, option: str = "--step") -> int:
-    """Return the zero-based number of the step asked for.
-
-    Raises
-    ------
-    UsageError
-        Neither ``last`` nor ``all`` nor the number of a step that exists.
-    """
-    n = 1 if opened.steps is None else len(opened.steps)
-    if step == "last":
-        return n - 1
-    try:
-        number = int(step)
-    except ValueError:
-        raise UsageError(f"--step {step!r}: use 'last', 'all' or a number from 0 to {n - 1}.") from None
-    if not 0 <= number < n:
-        raise UsageError(
-            f"{opened.path} has {n} step{'s' * (n != 1)}, 0 to {n - 1}; {option} {number} does not exist."
-        )
-    return number
-
-
-def _step_line(summary: Summary, index: int, value: float) -> str:
-    parts = []
-    for r in summary.regions[:5]:
-        if r.verdict.worst_cell < 0 and not math.isfinite(r.verdict.size):
-            parts.append(f"{r.region.name}: no cell was computed")
-            continue
-        peak = next((s for n, s in r.statistics.items() if n.startswith("equivalent_strain")), None)
-        largest = f"equivalent up to {peak.maximum * 1e6:.0f} microstrain, " if peak else ""
-        parts.append(
-            f"{r.region.name}: {largest}turn {r.verdict.largest_rotation:.3g} degrees, {r.verdict.level}"
-        )
-    return f"step {index}  t = {value:g}   " + "; ".join(parts)
+__all__ = ["chosen_step", "strain"]

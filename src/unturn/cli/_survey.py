@@ -22,7 +22,7 @@ def survey(
     """Say what a result file holds, which array is the displacement, and what looks wrong."""
     from unturn import io
     from unturn.cli._output import check_place, write_json
-    from unturn.cli._strain import chosen_step
+    from unturn.cli._steps import chosen_step
     from unturn.survey import survey_result, survey_text
 
     check_place(None, json, [file])

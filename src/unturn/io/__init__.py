@@ -5,12 +5,17 @@ from __future__ import annotations
 import contextlib
 import os
 from collections.abc import Iterator
+from dataclasses import replace
 from os import PathLike
 from pathlib import Path
 from typing import Literal
 
+import numpy as np
+from numpy.typing import NDArray
+
 from unturn.errors import InputError, UnturnError, UsageError
 from unturn.io._atomic import ensure_room, replacing
+from unturn.io._behind import files_behind
 from unturn.io._format import Format, ResultFile, StepWriter
 from unturn.io._formats import FORMATS, format_for_writing, format_of_file, writable_suffix
 from unturn.io._readback import check_same
@@ -22,9 +27,11 @@ __all__ = [
     "ResultFile",
     "StepWriter",
     "check_target",
+    "files_behind",
     "open_result",
     "read",
     "series_writer",
+    "with_points",
     "writable_suffix",
     "write",
 ]
@@ -113,6 +120,25 @@ def check_target(path: str | PathLike[str], *, series: bool = False) -> None:
 
 class _Nothing(Exception):
     """Leaves a place as it was."""
+
+
+def with_points(before: Result, after: Result, point: NDArray[np.int64]) -> Result:
+    """Return `after` such that it is written as completely as `before`, from which it differs by duplicated points.
+
+    Parameters
+    ----------
+    before
+        As read.
+    after
+        The same cells in the same order and the same arrays.
+    point
+        `(n,)` position in `before` of each point of `after`.
+    """
+    if not hasattr(before.carrier, "GetPointData"):
+        return after
+    from unturn.io.vtk_points import grid_with_points
+
+    return replace(after, carrier=grid_with_points(before.carrier, after, point))
 
 
 def write(result: Result, path: str | PathLike[str]) -> tuple[str, ...]:

@@ -185,16 +185,21 @@ def _listing(formats: tuple[Format, ...] | list[Format]) -> str:
     return ", ".join(f"{f.name} ({' '.join(f.suffixes)})" for f in formats)
 
 
-def writable_suffix(path: Path, result: Result | None = None, *, series: bool = False) -> str:
+def writable_suffix(
+    path: Path, result: Result | None = None, *, series: bool = False, duplicated: bool = False
+) -> str:
     """Return the suffix of a new file for a result read from `path`: its own where that can be written.
 
     A format that is only read, a single step of a format that is only a series, and cells that XDMF has no name for, go to
-    ``.vtu``, a series of them to ``.pvd``; other series to ``.xdmf``.
+    ``.vtu``, a series of them to ``.pvd``; other series to ``.xdmf``. With `duplicated` points the mesh is unstructured,
+    whatever it was.
     """
     fmt = _BY_SUFFIX.get(path.suffix.lower())
     suffix = ".xdmf" if series else ".vtu"
     if fmt is not None and (fmt.write_series if series else fmt.write) is not None:
         suffix = path.suffix
+    if duplicated and suffix.lower() in (".vtp", ".vts", ".vtr", ".vti"):
+        suffix = ".vtu"
     blocks = () if result is None else result.blocks
     nameless = any(b.cell_type.startswith(("VTK_", "polyhedron")) for b in blocks)
     if nameless and _BY_SUFFIX.get(suffix.lower()) is _BY_NAME["XDMF"]:

@@ -72,18 +72,22 @@ def read_binary(node: Node) -> Array:
         raise fault(node, f"Endian={endian!r}, Seek={seek!r}, Compression={packing!r} is not understood.")
     path = beside(node, (node.text or "").strip(), "binary file")
     n_bytes = int(np.prod(shape, dtype=object)) * dtype.itemsize
-    with open(path, "rb") as stream:
-        size = path.stat().st_size
-        if packing == "raw":
-            if int(seek) + n_bytes > size:
-                raise fault(
-                    node, f"{path.name} has {size} bytes; {n_bytes} bytes from byte {seek} on are asked for."
-                )
-            stream.seek(int(seek))
-            raw = stream.read(n_bytes)
-        else:
-            stream.seek(min(int(seek), size))
-            raw = _unpack(stream.read(), packing, n_bytes, node)
+    try:
+        with open(path, "rb") as stream:
+            size = path.stat().st_size
+            if packing == "raw":
+                if int(seek) + n_bytes > size:
+                    raise fault(
+                        node,
+                        f"{path.name} has {size} bytes; {n_bytes} bytes from byte {seek} on are asked for.",
+                    )
+                stream.seek(int(seek))
+                raw = stream.read(n_bytes)
+            else:
+                stream.seek(min(int(seek), size))
+                raw = _unpack(stream.read(), packing, n_bytes, node)
+    except OSError as error:
+        raise fault(node, f"{path} cannot be read: {error.strerror}. Check its permissions.") from error
     if len(raw) != n_bytes:
         raise fault(node, f"{path.name} gave {len(raw)} bytes; {n_bytes} were asked for.")
     return np.frombuffer(raw, dtype=dtype.newbyteorder(order)).astype(dtype).reshape(shape)

@@ -54,6 +54,8 @@ class _OpenDataset:
             raise fault(
                 self.node, f"{self.path} is being written by another program; wait until it has finished."
             ) from error
+        except PermissionError as error:
+            raise fault(self.node, f"{self.path} may not be read. Check its permissions.") from error
         except (OSError, ValueError, RuntimeError) as error:
             raise fault(
                 self.node,

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from unturn.recovery._nodes import NodeShares, Spots, node_shares
+from unturn.recovery._nodes import NodeShares, Spots, coincident_points, node_shares
 from unturn.recovery._recover import METHODS, Method, Recovered, recover_gradient, recover_samples
 from unturn.recovery._samples import CellSamples, sample_cells
 from unturn.recovery._sheets import sheets
@@ -14,6 +14,7 @@ __all__ = [
     "NodeShares",
     "Recovered",
     "Spots",
+    "coincident_points",
     "node_shares",
     "recover_gradient",
     "recover_samples",

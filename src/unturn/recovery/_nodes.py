@@ -178,6 +178,11 @@ def _unique_pairs(
     return first.astype(np.int64), kinds, index
 
 
+def coincident_points(model: Model) -> Ints:
+    """Return for each point the smallest position among the points that recovery takes for one with it."""
+    return _coincident(model, _flat(model, [b.connectivity for b in model.blocks]))[0]
+
+
 def _coincident(model: Model, node: NDArray[np.int32]) -> tuple[Ints, float, int]:
     """Return for each point the smallest position among points at its place with its displacement."""
     used = np.zeros(len(model.points), dtype=bool)

@@ -43,8 +43,11 @@ def sheets(model: Model, groups: NDArray[np.integer], angle: float = 40.0) -> In
     UsageError
         The groups are not one integer a cell.
     """
-    shares = node_shares(model, groups)
     label: Ints = np.unique(groups, return_inverse=True)[1].astype(np.int64)
+    bendable = any(b.kind in ("surface", "line") and len(b.active) for b in model.blocks)
+    if not bendable and groups.shape == (model.result.n_cells,):
+        return label
+    shares = node_shares(model, groups)
     joints = [
         _facets(model, b, s) for b, s in zip(model.blocks, shares.cells) if b.kind in ("surface", "line")
     ]

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from unturn.surface._faces import FaceBlock, Faces, free_faces
+from unturn.surface._faces import FaceBlock, Faces, faces_model, free_faces
 from unturn.surface._fields import SurfaceFields, surface_result
 from unturn.surface._measures import SURFACE_MEASURES, SurfaceMeasure, choose_surface_measures
 
@@ -13,6 +13,7 @@ __all__ = [
     "SurfaceFields",
     "SurfaceMeasure",
     "choose_surface_measures",
+    "faces_model",
     "free_faces",
     "surface_result",
 ]

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -12,8 +12,9 @@ from unturn.elements import Element
 from unturn.errors import UsageError
 from unturn.gradient import ElementChunk, chunk_ranges
 from unturn.kinematics._symmetric import Floats
-from unturn.model import Model
+from unturn.model import Model, ModelBlock
 from unturn.regions import Region
+from unturn.result import CellBlock, Result
 from unturn.surface._matching import (
     Candidates,
     Ints,
@@ -200,3 +201,31 @@ def _turned_over(row: Element) -> list[int]:
     places = row.places[:, ::-1] if row.shape.name == "triangle" else row.places * [-1.0, 1.0]
     distance = np.linalg.norm(row.places[None] - places[:, None], axis=-1)
     return [int(n) for n in distance.argmin(axis=1)]
+
+
+def faces_model(faces: Faces, poisson: float | None = None) -> Model:
+    """Return the faces as a model of their own, of surfaces with the points of the file; rigid motion is taken out alike.
+
+    Parameters
+    ----------
+    faces
+        See `free_faces`; cell k of the model is face k, counted over the blocks.
+    poisson
+        Poisson's ratio of the material.
+    """
+    model = faces.model
+    blocks, start = [], 0
+    for b in faces.blocks:
+        index = np.arange(start, start + len(b))
+        start += len(b)
+        cells = CellBlock(b.row.name, b.connectivity, index)
+        blocks.append(ModelBlock(cells, b.row, "surface", np.arange(len(b))))
+    parent = np.concatenate([b.parent for b in faces.blocks])
+    return replace(
+        model,
+        result=Result(model.result.points, tuple(b.cells for b in blocks), path=model.result.path),
+        blocks=tuple(blocks),
+        left_out={},
+        back_of=None if model.back_of is None else model.back_of[parent],
+        poisson=poisson,
+    )

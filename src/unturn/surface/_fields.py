@@ -18,7 +18,7 @@ from unturn.numbering import element_numbers
 from unturn.result import Array, Association, CellBlock, Result
 from unturn.surface._faces import FaceBlock, Faces
 from unturn.surface._measures import SURFACE_MEASURES, SurfaceMeasure, choose_surface_measures
-from unturn.surface._split import SurfaceSplit
+from unturn.surface._split import BASES, SurfaceSplit
 from unturn.verdict import Solve
 
 _NO_AREA, _NOT_FINITE = "face without area", "displacement not finite"
@@ -43,12 +43,35 @@ class SurfaceFields:
     parent_arrays
         ``{array name: (n_cells,)}`` for the mesh of the solids: largest and smallest principal and largest equivalent
         value over the faces of each cell; NaN where a cell has none.
+    governing
+        `(n_cells,)` for each cell of the solids the face whose principal strain has the largest magnitude, the first of
+        equal ones; -1 where it has none with values.
     """
 
     result: Result
     faces: Faces
     left_out: dict[str, NDArray[np.int64]] = field(default_factory=dict)
     parent_arrays: dict[str, Floats] = field(default_factory=dict)
+    governing: NDArray[np.int64] = field(default_factory=lambda: np.zeros(0, dtype=np.int64))
+
+    def on_cells(self) -> tuple[dict[str, Array], dict[str, tuple[str, ...]]]:
+        """Return arrays `(n_cells, ...)` for the mesh of the solids, and the names of their components.
+
+        The measures and axes of each cell's governing face, ``surface_face`` (its position in the parent's
+        `Element.face_nodes`, -1 for none), and `parent_arrays`; NaN where a cell has no face.
+        """
+        faces = self.result.cell_data
+        some = self.governing >= 0
+        number = np.full(len(some), -1, dtype=np.int64)
+        number[some] = faces["parent_face"][self.governing[some]]
+        arrays: dict[str, Array] = {}
+        for name in (*SURFACE_MEASURES, *SURFACE_AXES):
+            if name in faces:
+                arrays[name] = np.full((len(some), *faces[name].shape[1:]), np.nan)
+                arrays[name][some] = faces[name][self.governing[some]]
+        names = self.result.component_names
+        components = {n: names["cell", n] for n in arrays if ("cell", n) in names}
+        return {**arrays, **self.parent_arrays, "surface_face": number}, components
 
 
 def surface_result(
@@ -111,7 +134,7 @@ def surface_result(
             f"{finite[0]} of a geometrically linear solve is fiction: the solve itself used the small strain. Ask for the "
             "small measures, or state --solve nonlinear if it was."
         )
-    job = _Job(replace(model, poisson=poisson), names, len(faces), poisson, equivalent_poisson, peaks)
+    job = _Job(replace(model, poisson=poisson), names, base, len(faces), poisson, equivalent_poisson, peaks)
     start = 0
     for block in faces.blocks:
         job.run(block, start, threads)
@@ -123,7 +146,10 @@ def surface_result(
         if mask.any()
     }
     result = _mesh(model, faces, parent, job)
-    return SurfaceFields(result, faces, left_out, _on_parents(job, parent, model.result.n_cells))
+    n_cells = model.result.n_cells
+    return SurfaceFields(
+        result, faces, left_out, _on_parents(job, parent, n_cells), _governing(job.size, parent, n_cells)
+    )
 
 
 class _Job:
@@ -133,6 +159,7 @@ class _Job:
         self,
         model: Model,
         names: Sequence[str],
+        base: str,
         n: int,
         poisson: float | None,
         equivalent_poisson: float | None,
@@ -152,6 +179,8 @@ class _Job:
             if m.components:
                 self.components[name] = m.components
         self.peaked = peaked
+        bases = [m.base for m in self.measures if m.base in BASES] or [base.replace("-", "_")]
+        self.base, self.size = bases[0], np.empty(n)
         self.flat, self.unknown = np.zeros(n, dtype=bool), np.zeros(n, dtype=bool)
 
     def run(self, block: FaceBlock, offset: int, threads: int | None) -> None:
@@ -170,6 +199,7 @@ class _Job:
         split, _ = self._split(chunk, place, 0)
         for name, axis in zip(SURFACE_AXES, split.axes):
             self.arrays[name][rows] = axis.T
+        self.size[rows] = np.abs(split.of_base(self.base).values).max(axis=0)
         for m in self.measures:
             self.arrays[m.name][rows] = m.compute(split).T
         for m in self.peaked:
@@ -199,6 +229,15 @@ def _widen(extreme: Floats, values: Floats) -> None:
         return
     np.fmax(extreme[:, 0], values[:, 0], out=extreme[:, 0])
     np.fmin(extreme[:, 1], values[:, 1], out=extreme[:, 1])
+
+
+def _governing(size: Floats, parent: NDArray[np.int64], n_cells: int) -> NDArray[np.int64]:
+    """Return for each cell the face of the largest size, the first of equal ones; -1 for none."""
+    found = np.full(n_cells, -1, dtype=np.int64)
+    usable = np.flatnonzero(np.isfinite(size))
+    order = usable[np.lexsort((-usable, size[usable]))]  # the last written stays
+    found[parent[order]] = order
+    return found
 
 
 def _on_parents(job: _Job, parent: NDArray[np.int64], n_cells: int) -> dict[str, Floats]:

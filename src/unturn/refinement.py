@@ -11,7 +11,12 @@ from scipy.optimize import brentq
 from unturn.errors import UsageError
 from unturn.source import Source
 
-Behaviour = Literal["converges", "unchanged", "oscillates", "diverges", "stalls"]
+Behaviour = Literal["converges", "unchanged", "below precision", "oscillates", "diverges", "stalls"]
+DECIDED: tuple[Behaviour, ...] = ("converges", "unchanged", "below precision")
+"""Behaviours that leave no question open."""
+
+Three = tuple[float, float, float]
+"""One number for each mesh, coarse first."""
 
 SAFETY = 1.25
 """Factor of the index for three meshes."""
@@ -37,7 +42,8 @@ class Study:
     values
         On the coarse, medium and fine mesh.
     behaviour
-        ``converges``; ``unchanged``: the same on all three; otherwise there is no order, and `reason` says why.
+        ``converges``; ``unchanged``: the same on all three; ``below precision``: zero as far as the stored numbers tell;
+        otherwise there is no order, and `reason` says why.
     reason
         A sentence; empty when it converges.
     order
@@ -52,7 +58,7 @@ class Study:
         The same of the medium mesh, from the medium and the coarse.
     """
 
-    values: tuple[float, float, float]
+    values: Three
     behaviour: Behaviour
     reason: str = ""
     order: float = math.nan
@@ -62,7 +68,7 @@ class Study:
     index_medium: float = math.nan
 
 
-def check_refinement(sizes: tuple[float, float, float]) -> tuple[float, float]:
+def check_refinement(sizes: Three) -> tuple[float, float]:
     """Return the ratios of sizes, coarse to medium and medium to fine.
 
     Raises
@@ -81,7 +87,7 @@ def check_refinement(sizes: tuple[float, float, float]) -> tuple[float, float]:
     return ratios
 
 
-def study(values: tuple[float, float, float], sizes: tuple[float, float, float]) -> Study:
+def study(values: Three, sizes: Three, floors: Three = (0.0, 0.0, 0.0)) -> Study:
     """Return order, extrapolated value and grid convergence index of a quantity.
 
     Parameters
@@ -90,6 +96,8 @@ def study(values: tuple[float, float, float], sizes: tuple[float, float, float])
         On the coarse, medium and fine mesh, in any unit.
     sizes
         Representative sizes `(volume / cells)^(1/dim)` of the meshes, in any unit of length.
+    floors
+        How far the stored precision can move each value; changes no larger than that of either mesh say nothing.
 
     Raises
     ------
@@ -116,15 +124,9 @@ def study(values: tuple[float, float, float], sizes: tuple[float, float, float])
     if not all(math.isfinite(v) for v in values):
         raise UsageError(f"the values {v3:g}, {v2:g} and {v1:g} are not all finite: there is no sequence.")
     e32, e21 = v3 - v2, v2 - v1
-    floor = _SAME * max(abs(v) for v in values)
-    if abs(e21) <= floor and abs(e32) <= floor:
-        return Study(values, "unchanged", "it is the same on all three meshes", math.nan, v1, 0.0, 0.0, 0.0)
-    if abs(e21) <= floor or abs(e32) <= floor:
-        which = "medium and fine" if abs(e21) <= floor else "coarse and medium"
-        reason = (
-            f"it is the same on the {which} mesh and another on the third: no order follows. Refine again"
-        )
-        return Study(values, "stalls", reason)
+    still = _still(values, floors)
+    if still is not None:
+        return still
     if e32 / e21 < 0:
         reason = (
             "it oscillates: up, then down, or the other way round. The meshes are too coarse for an order, or not "
@@ -148,7 +150,34 @@ def study(values: tuple[float, float, float], sizes: tuple[float, float, float])
     )  # fmt: skip
 
 
+def _still(values: Three, floors: Three) -> Study | None:
+    """Return what there is to say of values that hardly change, or None when they do."""
+    v3, v2, v1 = values
+    e32, e21 = v3 - v2, v2 - v1
+    blur = max(floors)
+    if all(abs(v) <= f for v, f in zip(values, floors)) and blur:
+        return Study(values, "below precision", "below the stored precision: zero as far as the numbers tell",
+                     error=blur, index=_share(blur, v1), index_medium=_share(blur, v2))  # fmt: skip
+    rounding = _SAME * max(abs(v) for v in values)
+    still21, still32 = abs(e21) <= max(rounding, *floors[1:]), abs(e32) <= max(rounding, *floors[:2])
+    if still21 and still32:
+        to = " to the stored precision" if max(abs(e21), abs(e32)) > rounding else ""
+        reason = f"it is the same on all three meshes{to}"
+        error = blur if to else 0.0
+        return Study(values, "unchanged", reason, math.nan, v1, error, _share(error, v1), _share(error, v2))
+    if still21 or still32:
+        which = "medium and fine" if still21 else "coarse and medium"
+        to = " to the stored precision" if min(abs(e21), abs(e32)) > rounding else ""
+        reason = f"it is the same on the {which} mesh{to} and another on the third: no order follows. " + (
+            "Write the results with more digits" if to else "Refine again"
+        )
+        return Study(values, "stalls", reason)
+    return None
+
+
 def _share(error: float, value: float) -> float:
+    if not error:
+        return 0.0
     return error / abs(value) if value else math.inf
 
 

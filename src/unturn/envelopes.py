@@ -1,152 +1,43 @@
 """Extremes over the steps of a series or over load cases, and which of them made each.
 
-One state is in memory at a time. What is kept per cell does not depend on the number of states.
+One state is in memory at a time. What is kept for each place does not depend on the number of states.
 """
 
 from __future__ import annotations
 
 import contextlib
 from collections.abc import Callable, Mapping, Sequence
-from dataclasses import dataclass, field, replace
-from pathlib import Path
-from typing import Literal
+from dataclasses import replace
 
 import numpy as np
 from numpy.typing import NDArray
 
+from unturn.envelope_arrays import EnvelopeArrays
+from unturn.envelope_places import Arrays, CellPlaces, Components, NodePlaces
 from unturn.errors import InputError, UnturnError, UsageError
-from unturn.extremes import Extremes, Kind, Stored, plan_envelope, strain_tensor
+from unturn.extremes import Extremes, Stored, plan_envelope, strain_tensor
 from unturn.fields import CellDiagnostics, CellFields
+from unturn.frames import parse_frame
 from unturn.kinematics._symmetric import Floats
 from unturn.measures import MEASURES
 from unturn.model import Model
-from unturn.numbering import Numbering, element_numbers
-from unturn.pipeline import StrainOptions, compute
-from unturn.regions import Region, find_regions, named_regions
+from unturn.numbering import element_numbers, node_numbers
+from unturn.pipeline import compute
+from unturn.regions import Region, find_regions, judged_together, named_regions
 from unturn.result import Result
 from unturn.rigid import RigidMotion
 from unturn.same_mesh import ReferenceMesh
 from unturn.series import SERIES_MEASURES, StepChanges, choose_series_measures
+from unturn.states import Envelope, EnvelopeOptions, Judged, State, named
 from unturn.tensor_range import TensorRange
-from unturn.verdict import Level, Verdict, judge
+from unturn.verdict import Level, judge
 
-RANGE = "strain_range_equivalent"
-_ENDS: tuple[Literal["maximum", "minimum"], ...] = ("maximum", "minimum")
+LOCATIONS = ("centroid", "mean", "nodes")
+"""Where the values of an envelope can live."""
 _LEVELS: tuple[Level, ...] = ("not judged", "no strain", "holds", "marginal", "does not hold")
 
-
-@dataclass(frozen=True, eq=False)
-class State:
-    """One step or load case.
-
-    Parameters
-    ----------
-    name
-        For people: ``step 3``, ``wind.vtu``.
-    read
-        Reads it.
-    time
-        Its time; None when the file holds none.
-    factors
-        For a combination: load case -> factor.
-    """
-
-    name: str
-    read: Callable[[], Result]
-    time: float | None = None
-    factors: Mapping[str, float] | None = None
-
-
-@dataclass(frozen=True)
-class EnvelopeOptions:
-    """What an envelope is of.
-
-    Parameters
-    ----------
-    strain
-        Options of every state; `measures` may name those of `unturn.series.SERIES_MEASURES` too.
-    kind
-        Whether the states are steps of one series or load cases.
-    tensor_range
-        Whether to find the largest difference of strain tensors.
-    keep_going
-        Whether the other states go on when one fails.
-    regions
-        Names of regions; none: all of them.
-    folder
-        Where the temporary file of the tensor range lies; None: the system's own place.
-    """
-
-    strain: StrainOptions = field(default_factory=StrainOptions)
-    kind: Kind = "step"
-    tensor_range: bool = True
-    keep_going: bool = False
-    regions: tuple[str, ...] = ()
-    folder: Path | None = None
-
-
-@dataclass(frozen=True, eq=False)
-class Judged:
-    """The worst verdict on a region over the states, and the state it is of (-1: none)."""
-
-    region: Region
-    verdict: Verdict
-    state: int
-
-
-@dataclass(frozen=True)
-class Tracked:
-    """An array of an envelope that has a peak: of which measure, which extreme, and the arrays of states that made it."""
-
-    array: str
-    measure: str
-    which: Literal["maximum", "minimum"]
-    made_by: tuple[str, ...]
-
-
-@dataclass(frozen=True, eq=False)
-class Envelope:
-    """Extremes of a result over its states.
-
-    Attributes
-    ----------
-    options, states
-        As given.
-    model
-        Of the last state that was computed.
-    arrays
-        By name, `(n_cells,)` or `(n_cells, components)` in file order; NaN, or state -1, where no state was computed.
-    components
-        Names of the components.
-    tracked
-        Which of the arrays are extremes, in the order of the measures.
-    judged
-        Regions with their worst verdict.
-    volume, centroid
-        Of every cell that was computed at least once.
-    left_out
-        ``{reason: file positions}`` of cells that no state computed.
-    failures
-        State -> what went wrong.
-    notes
-        Sentences for the user.
-    numbers
-        The solver's element numbers, where an array holds them.
-    """
-
-    options: EnvelopeOptions
-    states: tuple[State, ...]
-    model: Model
-    arrays: dict[str, Stored]
-    components: dict[str, tuple[str, ...]]
-    tracked: tuple[Tracked, ...]
-    judged: tuple[Judged, ...]
-    volume: Floats
-    centroid: Floats
-    left_out: dict[str, NDArray[np.int64]]
-    failures: dict[int, UnturnError]
-    notes: tuple[str, ...]
-    numbers: Numbering | None
+EachStep = Callable[[Result, Mapping[str, Stored], Components, float], None]
+"""Called with a step, the arrays of the series there, names of their components, and the time (or number) of the step."""
 
 
 def envelope(
@@ -155,9 +46,9 @@ def envelope(
     *,
     zero: Result | None = None,
     progress: Callable[[int], None] | None = None,
-    each: Callable[[CellFields, float], None] | None = None,
+    each: EachStep | None = None,
 ) -> Envelope:
-    """Return the extremes of a result over its states, cell by cell, and which state made each.
+    """Return the extremes of a result over its states, cell by cell or node by node, and which state made each.
 
     Parameters
     ----------
@@ -170,14 +61,14 @@ def envelope(
     progress
         Called with the number of states done.
     each
-        Called with the measures of the series at every step that was computed, and its time (its number where it has
-        none).
+        Called with the measures of the series at every step that was computed.
 
     Returns
     -------
     Envelope
         For each measure ``NAME_maximum``, ``NAME_minimum``, ``NAME_largest_magnitude`` (of signed ones) and with
-        ``_step`` or ``_case`` the zero-based state that made it; principal directions at the extremes; and
+        ``_step`` or ``_case`` the zero-based state that made it, with ``_time`` its time where the steps have one;
+        principal directions at the extremes; and
         ``strain_range_equivalent``, the equivalent of the largest difference of the strain tensors of any two states.
 
     Raises
@@ -202,38 +93,32 @@ def envelope(
                 run.add(state, number)
             except UnturnError as error:
                 if not options.keep_going or len(states) == 1:
-                    raise _named(state, error) from error
+                    raise named(state.name, error) from error
                 run.failures[number] = error
             if progress is not None:
                 progress(number + 1)
         if len(run.failures) == len(states):
             first = run.failures[0]
-            raise _named(states[0], first) from first
+            raise named(states[0].name, first) from first
         return run.finish(tuple(states))
-
-
-def _named(state: State, error: UnturnError) -> UnturnError:
-    return type(error)(f"{state.name}: {error}")
 
 
 class _Run:
     """The arrays being filled."""
 
-    def __init__(
-        self,
-        options: EnvelopeOptions,
-        zero: Result | None,
-        each: Callable[[CellFields, float], None] | None,
-    ) -> None:
+    def __init__(self, options: EnvelopeOptions, zero: Result | None, each: EachStep | None) -> None:
         self.options, self.zero, self.each = options, zero, each
         strain = options.strain
+        if strain.at not in LOCATIONS:
+            raise UsageError(f"an envelope is of values at {', '.join(LOCATIONS)}, not at={strain.at!r}.")
         series = choose_series_measures(strain.measures or (), strain.base, strain.solve)
         if series and options.kind == "case":
             raise UsageError(
                 f"{series[0]} needs the steps of one series; load cases do not follow one another."
             )
         self.changes = StepChanges(series, strain.solve, strain.equivalent_poisson)
-        self.plan = plan_envelope(strain.measures, strain.base, self.changes, options.tensor_range)
+        heated = strain.thermal_expansion is not None
+        self.plan = plan_envelope(strain.measures, strain.base, self.changes, options.tensor_range, heated)
         self.stack = contextlib.ExitStack()
         self.mesh: ReferenceMesh | None = None
         self.model: Model | None = None
@@ -241,7 +126,7 @@ class _Run:
         self.directions: dict[str, Floats] = {}
         self.totals: dict[str, Floats] = {}
         self.ranges: dict[str, TensorRange] = {}
-        self.components: dict[str, tuple[str, ...]] = {}
+        self.components: Components = {}
         self.judged: list[Judged] = []
         self.previous: Sequence[RigidMotion] = ()
         self.failures: dict[int, UnturnError] = {}
@@ -250,27 +135,34 @@ class _Run:
         self.said: tuple[str, ...] = ()
 
     def add(self, state: State, number: int) -> None:
-        options = replace(self.options.strain, measures=self.plan.needs, base="small")
-        computed = compute(state.read(), options, zero=self.zero, diagnose=True, previous=self.previous)
+        strain = self.options.strain
+        borders = "split" if strain.at == "nodes" else strain.borders
+        asked = replace(strain, measures=self.plan.needs, base="small", borders=borders)
+        computed = compute(state.read(), asked, zero=self.zero, diagnose=True, previous=self.previous)
         fields, d = computed.fields, computed.fields.diagnostics
         assert d is not None
+        noise = None if state.noise is None else state.noise()
+        if noise is not None:
+            d.noise = np.maximum(d.noise, noise)
         if self.mesh is None:
             mesh = ReferenceMesh(fields.model)
             self._begin(fields, d)
             self.mesh = mesh
         else:
             self.mesh.compare(fields.model)
-        changed = self.changes.add(fields.arrays, state.time) if self.changes.names else {}
-        self._take(fields, changed, number)
+        arrays, components = self.places.values(computed, self.plan.needs)
+        changed = self.changes.add(arrays, state.time) if self.changes.names else {}
+        self.components |= {k: v for k, v in components.items() if k in self.plan.extremes}
+        self._take(arrays, changed, number)
         self._judge(d, number)
         self._left_out(fields)
         fresh = np.isnan(self.volume) & np.isfinite(d.stretch)
         self.volume[fresh], self.centroid[fresh] = d.volume[fresh], d.centroid[fresh]
         if self.each is not None:
-            names = {n: self.components[n] for n in changed if n in self.components}
-            self.each(
-                CellFields(fields.model, dict(changed), names), number if state.time is None else state.time
-            )
+            self.places.settle(self.volume, self.centroid)
+            named_ones = {n: self.components[n] for n in changed if n in self.components}
+            written = {n: self.places.written(values) for n, values in changed.items()}
+            self.each(fields.model.result, written, named_ones, number if state.time is None else state.time)
         self.model, self.said = fields.model, fields.notes
         self.previous = tuple(r.motion for r in computed.removals)
 
@@ -283,22 +175,28 @@ class _Run:
         for reason, cells in model.left_out.items():
             if reason != "deleted":  # it may be alive in another step
                 dimension[cells] = 0
+        blocks = (replace(b, active=np.flatnonzero(dimension[b.cells.index] > 0)) for b in model.blocks)
+        whole = replace(model, blocks=tuple(blocks))
         names = self.options.regions
-        whole = replace(model, blocks=tuple(replace(b, active=np.arange(len(b.cells))) for b in model.blocks))
         regions = (
             named_regions(whole, names, dimension > 0)
             if names
             else find_regions(whole, dimension == model.dimension)
         )
+        together = judged_together(regions)
+        self.notes += [together] if together else []
         for r in regions:
             cells = r.cells[dimension[r.cells] == dimension[r.cells].max()]
             nothing = judge(d, Region(r.name, cells[:0], r.origin), self.options.strain.solve)
             self.judged.append(Judged(Region(r.name, cells, r.origin), nothing, -1))
+        self.places = NodePlaces(whole) if self.options.strain.at == "nodes" else CellPlaces(whole)
         self.volume, self.centroid = np.full(n, np.nan), np.full((n, 3), np.nan)
-        self.components = {k: v for k, v in fields.components.items() if k in self.plan.extremes}
-        self.components |= {
-            n: SERIES_MEASURES[n].components for n in self.plan.series if SERIES_MEASURES[n].components
-        }
+        frame = self.options.strain.frame
+        axes = None if frame is None else parse_frame(frame, model.result)
+        for name in self.plan.series:
+            labels = SERIES_MEASURES[name].components
+            if labels:
+                self.components[name] = labels if axes is None else axes.component_names(len(labels))
         families = self.plan.families
         if model.plane is not None and model.plane.model is None:
             families = ()
@@ -306,10 +204,10 @@ class _Run:
                 "no strain range: it depends on the strain across the plane, which is not stated"
             )
         for family in families:
-            self.ranges[family] = self.stack.enter_context(TensorRange(n, self.options.folder))
+            self.ranges[family] = self.stack.enter_context(TensorRange(self.places.n, self.options.folder))
 
-    def _take(self, fields: CellFields, changed: Mapping[str, Floats], number: int) -> None:
-        for name, values in [*((n, fields.arrays[n]) for n in self.plan.extremes), *changed.items()]:
+    def _take(self, arrays: Arrays, changed: Mapping[str, Floats], number: int) -> None:
+        for name, values in [*((n, arrays[n]) for n in self.plan.extremes), *changed.items()]:
             if name in SERIES_MEASURES and SERIES_MEASURES[name].total:
                 self.totals[name] = values
                 continue
@@ -321,11 +219,11 @@ class _Run:
                     key = f"principal_direction_{k + 1}{suffix}"
                     for mask, end in ((higher, "maximum"), (lower, "minimum")):
                         kept = self.directions.setdefault(
-                            f"{key}_at_{end}", np.full_like(fields.arrays[key], np.nan)
+                            f"{key}_at_{end}", np.full_like(arrays[key], np.nan)
                         )
-                        np.copyto(kept, fields.arrays[key], where=mask[:, k, None])
+                        np.copyto(kept, arrays[key], where=mask[:, k, None])
         for family, tensor_range in self.ranges.items():
-            tensor_range.add(fields.arrays[strain_tensor(family)], number)
+            tensor_range.add(arrays[strain_tensor(family)], number)
 
     def _judge(self, d: CellDiagnostics, number: int) -> None:
         for k, before in enumerate(self.judged):
@@ -335,10 +233,11 @@ class _Run:
                 before.verdict.worst,
             )
             turned = np.fmax(verdict.largest_rotation, before.verdict.largest_rotation)
+            noise = np.fmax(verdict.noise, before.verdict.noise)
             kept = verdict if worse else before.verdict
             self.judged[k] = Judged(
                 before.region,
-                replace(kept, largest_rotation=float(turned)),
+                replace(kept, largest_rotation=float(turned), noise=float(noise)),
                 number if worse else before.state,
             )
 
@@ -360,30 +259,19 @@ class _Run:
                 f"no cell could be computed in any {self.options.kind}: {reasons}. Look at the displacement and the mesh "
                 "with 'unturn survey'."
             )
-        kind = self.options.kind
-        arrays: dict[str, Stored] = {}
-        components: dict[str, tuple[str, ...]] = {}
-        tracked: list[Tracked] = []
+        self.places.settle(self.volume, self.centroid)
+        made = EnvelopeArrays(self.places, self.options.kind, [s.time for s in states])
         for name, extremes in self.extremes.items():
-            signed = SERIES_MEASURES[name].signed if name in SERIES_MEASURES else MEASURES[name].signed
-            found = extremes.arrays(name, kind, signed)
-            arrays |= found
-            if name in self.components:
-                components |= dict.fromkeys(found, self.components[name])
-            tracked += [Tracked(f"{name}_{w}", name, w, (f"{name}_{w}_{kind}",)) for w in _ENDS]
-        arrays |= self.directions
-        components |= {n: MEASURES["principal_direction_1"].components for n in self.directions}
-        arrays |= self.totals
-        tracked += [Tracked(name, name, "maximum", ()) for name in self.totals]
+            made.add_extremes(name, extremes, self.components.get(name))
+        for name, values in self.directions.items():
+            made.add(name, values, MEASURES["principal_direction_1"].components)
+        for name, values in self.totals.items():
+            made.add_total(name, values)
         for family, tensor_range in self.ranges.items():
-            name = f"{RANGE}_{family}" if family else RANGE
-            made_by = (f"{name}_first_{kind}", f"{name}_second_{kind}")
-            size, *steps = tensor_range.finish(self.options.strain.equivalent_poisson)
-            arrays[name] = size
-            arrays |= {key: at.astype(np.int32) for key, at in zip(made_by, steps)}
-            tracked.append(Tracked(name, name, "maximum", made_by))
+            made.add_range(family, *tensor_range.finish(self.options.strain.equivalent_poisson))
+        result = self.model.result
+        numbers = node_numbers(result) if self.places.on == "point" else element_numbers(result)
         return Envelope(
-            self.options, states, self.model, arrays, components, tuple(tracked), tuple(self.judged), self.volume,
-            self.centroid, self.left_out, self.failures, (*self.said, *self.notes),
-            element_numbers(self.model.result),
+            self.options, states, self.model, made.arrays, made.components, tuple(made.tracked), tuple(self.judged),
+            self.places, self.volume, self.left_out, self.failures, (*self.said, *self.notes), numbers,
         )  # fmt: skip
