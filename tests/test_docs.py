@@ -26,8 +26,10 @@ from unturn.kinematics._finite import BASES
 from unturn.measures import DEFAULT_MEASURES, ESTIMATES, GEOMETRY, MEASURES, SMALL, Measure
 from unturn.refinement import Behaviour
 from unturn.series import SERIES_MEASURES
+from unturn.verdicts.finding import STATES
+from unturn.verdicts.tolerances import ARRAY_KEYS, FILE_KEYS
 
-SAMPLES = [p for p in (ROOT / "sample_meshes").iterdir() if p.suffix in (".vtu", ".xdmf", ".h5")]
+SAMPLES = [p for p in (ROOT / "sample_meshes").iterdir() if p.suffix in (".vtu", ".xdmf", ".h5", ".toml")]
 README, DOCS = ROOT / "README.md", ROOT / "docs"
 COMMANDS: dict[str, Any] = dict(get_command(app).commands)  # type: ignore[attr-defined]
 
@@ -278,8 +280,8 @@ def _mixed_file(path: Path) -> None:
     unturn.write(Result(points, blocks, {"u": 1e-3 * points, "noisy": noisy}, groups=groups), path)
 
 
-def _check_schema(page: Path, produced: list[dict[str, Any]]) -> None:
-    rows = {row[0].strip("`"): row[1] for row in table(page, "key", "type")}
+def _check_schema(page: Path, produced: list[dict[str, Any]], *heading: str) -> None:
+    rows = {row[0].strip("`"): row[1] for row in table(page, *(heading or ("key", "type")))}
     found: dict[str, list[Any]] = {}
     for data in produced:
         _merge(found, _paths(data, set(rows)))
@@ -396,3 +398,37 @@ def test_the_convergence_schema_is_documented_key_by_key(desk: Path) -> None:
     produced.append(json.loads(Path("study.json").read_text(encoding="utf-8")))
     assert {d["schema"] for d in produced} == {"unturn.convergence/1"}
     _check_schema(DOCS / "convergence-json.md", produced)
+
+
+def test_the_verdict_schema_is_documented_key_by_key(desk: Path) -> None:
+    _mixed_file(desk / "mixed.xdmf")
+    commands = (
+        "bracket.vtu bracket_tets.vtu --measures strain",
+        "lever.xdmf lever.xdmf --step all --measures strain",
+        "mixed.xdmf mixed.xdmf",
+        "bracket.vtu ring.vtu",
+    )
+    produced = []
+    for command in commands:
+        run([*spoken(f"unturn compare {command}"), "--json", "out.json"])
+        produced.append(json.loads(Path("out.json").read_text(encoding="utf-8")))
+    assert {d["schema"] for d in produced} == {"unturn.verdict/1"}
+    details = [f.pop("details") for d in produced for f in d["findings"]]
+    settings = {key for d in produced for key in d.pop("settings")}
+    for finding in (f for d in produced for f in d["findings"]):
+        finding["details"] = {}
+    for data in produced:
+        data["settings"] = {}
+    page = DOCS / "verdict-json.md"
+    _check_schema(page, produced)
+    _check_schema(page, [d for d in details if "array" in d], "detail of `compare`", "type")
+    text = page.read_text(encoding="utf-8")
+    assert all(f"`{key}`" in text for key in settings)
+    assert [row[0] for row in table(page, "state", "meaning")] == [f"`{s}`" for s in STATES]
+
+
+def test_the_keys_of_tolerances_are_the_codes() -> None:
+    page = DOCS / "compare.md"
+    for heading, keys in (("key of the file", FILE_KEYS), ("key of an array", ARRAY_KEYS)):
+        expected = [[f"`{k.name}`", k.kind.words, k.meaning] for k in keys]
+        assert table(page, heading) == expected

@@ -48,7 +48,7 @@ LAYERS = (
     ("_api_meshes",),
     ("_api_states",),
     ("verdicts", "gauges", "pictures"),
-    ("_accessor", "__init__"),
+    ("_accessor", "testing", "__init__"),
     ("cli", "__main__"),
 )
 LEVEL = {name: level for level, names in enumerate(LAYERS) for name in names}

@@ -19,6 +19,7 @@ if TYPE_CHECKING:
     )
     from unturn.gradient import displacement_gradient
     from unturn.result import CellBlock, Result
+    from unturn.verdicts.comparison import compare
 
 __all__ = [
     "CellBlock",
@@ -29,6 +30,7 @@ __all__ = [
     "UnturnError",
     "UsageError",
     "__version__",
+    "compare",
     "convergence",
     "displacement_gradient",
     "envelope",
@@ -42,6 +44,7 @@ _HOME = {
     "CellBlock": "unturn.result",
     "Result": "unturn.result",
     "__version__": "unturn._version",
+    "compare": "unturn.verdicts.comparison",
     "convergence": "unturn._api_meshes",
     "displacement_gradient": "unturn.gradient",
     "envelope": "unturn._api_states",

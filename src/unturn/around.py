@@ -253,7 +253,8 @@ def trust_on(
     """
     found = [Trust(math.nan)] * len(asked)
     bounds = {k: bound_of(a.measure, model.poisson, equivalent_poisson) for k, a in enumerate(asked)}
-    known = {k: b for k, b in bounds.items() if b is not None and asked[k].cell >= 0}
+    there = computed_cells(model)
+    known = {k: b for k, b in bounds.items() if b is not None and asked[k].cell >= 0 and there[asked[k].cell]}
     if not known:
         return found
     mesh = _Mesh(Cutter(model), volume, groups, at, threads)

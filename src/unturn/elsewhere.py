@@ -218,6 +218,21 @@ def _shares_of(shares: NodeShares, cells: NDArray[np.int64]) -> NDArray[np.int64
     return np.flatnonzero(mask)
 
 
+def trust_on_faces(
+    computed: Computed,
+    surface: SurfaceFields,
+    asked: Sequence[Asked],
+    regions: Sequence[Region] | None = None,
+    threads: int | None = None,
+) -> list[Trust]:
+    """Return how far to trust values on free faces, whose cells are faces; see `unturn.around.trust_of`."""
+    model = faces_model(surface.faces, computed.request.get("poisson"))
+    whole = groups_of(computed.fields.model, regions)
+    groups = sheets(model, whole[np.asarray(surface.result.cell_data["parent_cell"])], FOLD)
+    area = np.asarray(surface.result.cell_data["area"])
+    return trust_on(model, area, groups, asked, computed.equivalent_poisson, threads=threads)
+
+
 class _Surface:
     """Looks for extremes on free surfaces: each face is a cell of the mesh of all of them."""
 
@@ -254,20 +269,15 @@ class _Surface:
                 (region, row, name, Asked(row.array, values, faces, at, row.smallest, size))
                 for row, name, values, at in of_region
             ]
-        trusts = self._trusts([asked for *_, asked in picked])
+        trusts = trust_on_faces(
+            self.computed, self.surface, [asked for *_, asked in picked], self.groups, self.threads
+        )
         return Elsewhere(
             "free surfaces",
             tuple(self._extreme(*p, trust) for p, trust in zip(picked, trusts)),
             tuple(self._growth(*p, trust) for p, trust in zip(picked, trusts) if trust.singular),
             notes=_surface_notes(self.surface),
         )
-
-    def _trusts(self, asked: list[Asked]) -> list[Trust]:
-        model = faces_model(self.surface.faces, self.computed.request.get("poisson"))
-        whole = groups_of(self.computed.fields.model, self.groups)
-        groups = sheets(model, whole[self.parents], FOLD)
-        area = np.asarray(self.surface.result.cell_data["area"])
-        return trust_on(model, area, groups, asked, self.computed.equivalent_poisson, threads=self.threads)
 
     def _extreme(self, region: Region, row: _Row, name: str, asked: Asked, trust: Trust) -> ElsewhereExtreme:
         cell = int(self.parents[asked.cell])

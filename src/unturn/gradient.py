@@ -144,13 +144,20 @@ class ElementChunk:
         return far, np.maximum(np.abs(self.first[3:]).max(axis=0), np.abs(values[3:]).max(axis=(0, 1)))
 
     def interpolate(self, functions: Floats, row: int) -> Floats:
-        """Return coordinate `row` (0 to 2) or displacement `row - 3` `(m,)` at a point with these shape functions."""
-        value: Floats = self.first[row] + np.einsum("a,am->m", functions[1:], self.relative[row])
+        """Return coordinate `row` (0 to 2) or displacement `row - 3` `(m,)` at a point with these shape functions.
+
+        `(nodes,)`, or `(nodes, m)`: another point in each element.
+        """
+        form = "a,am->m" if functions.ndim == 1 else "am,am->m"
+        value: Floats = self.first[row] + np.einsum(form, functions[1:], self.relative[row])
         return value
 
     def tangents(self, gradients: Floats) -> Floats:
         """Return `(6, dim, m)`: coordinates and displacements differentiated by the reference coordinates."""
         rest = gradients[:, 1:]
+        if rest.ndim == 3:
+            mixed: Floats = np.einsum("kam,jam->jkm", rest, self.relative)
+            return mixed
         if rest.shape[0] == rest.shape[1] and np.array_equal(rest, np.eye(len(rest))):
             return self.relative
         product: Floats = np.matmul(rest, self.relative)
@@ -176,7 +183,10 @@ class ElementChunk:
         return bool((spread * rule.reach**2 < 0.98).all())
 
     def at(self, gradients: Floats, functions: Floats) -> PointGradient:
-        """Return the displacement gradient at a point given by its shape gradients `(dim, nodes)` and functions."""
+        """Return the displacement gradient at a point given by its shape gradients `(dim, nodes)` and functions `(nodes,)`.
+
+        With one more axis of length m at their end: another point in each element.
+        """
         mixed = self.tangents(gradients)
         if self.row.dim == 3:
             return solid_point(mixed)

@@ -21,6 +21,9 @@ from unturn.result import CellBlock, Result, used_points
 Kind = Literal["solid", "plane", "surface", "line"]
 KINDS: tuple[Kind, ...] = ("line", "surface", "solid")
 
+SKINS = "skins and edges of other cells"
+"""Why they are left out."""
+
 _IN_PLANE = 1e-9  # share of the model's size within which a mesh counts as lying in a coordinate plane
 
 
@@ -291,7 +294,7 @@ def _left_out(
         for cells in skin_cells(result, rows):
             fresh = cells[~gone[cells]]
             if len(fresh):
-                out.setdefault("skins and edges of other cells", []).append(fresh)
+                out.setdefault(SKINS, []).append(fresh)
             gone[cells] = True
     masks = [~gone[block.index] for block in result.blocks]
     return {reason: np.sort(np.concatenate(parts)) for reason, parts in out.items()}, masks

@@ -58,8 +58,15 @@ class ReportPlaces:
     def _asked(self) -> dict[str, Path | None]:
         return {"json": self.json, "junit": self.junit, "markdown": self.markdown, "csv": self.csv}
 
-    def put(self, report: Report) -> None:
+    def put(self, report: Report, at_least: int = 0) -> None:
         """Print the report, write the files that were asked for, and end the command with its exit status.
+
+        Parameters
+        ----------
+        report
+            What to tell.
+        at_least
+            An exit status that stands for something worse than a finding.
 
         Raises
         ------
@@ -77,4 +84,4 @@ class ReportPlaces:
                 write_json(json_report(report), place)
             else:
                 write_text(WRITERS[name].write(report), place)
-        raise typer.Exit(report.exit_status)
+        raise typer.Exit(max(report.exit_status, at_least))

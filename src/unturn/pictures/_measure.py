@@ -10,7 +10,7 @@ import numpy as np
 from unturn.errors import UsageError, close_matches
 from unturn.kinematics._finite import BASES
 from unturn.measures import GEOMETRY, MEASURES, SURFACE_AXES, choose_measures
-from unturn.pipeline import Place, StrainOptions
+from unturn.options import Place, StrainOptions
 from unturn.result import Result
 from unturn.surface import SURFACE_MEASURES
 

@@ -14,13 +14,14 @@ from unturn.errors import UsageError
 from unturn.measures import GEOMETRY, MEASURES
 from unturn.model import Model
 from unturn.numbering import element_numbers, node_numbers
+from unturn.options import Place
 from unturn.picture_keys import PictureRequest
 from unturn.pictures._measure import Wanted, directions_with, rotation_with, spoken, wanted
 from unturn.pictures._range import Ends, ends_of
 from unturn.pictures._stage import Stage
 from unturn.pictures._subject import Arrows, Subject
 from unturn.pictures._values import Values, values_of, values_with
-from unturn.pipeline import Computed, Place, StrainOptions, compute, model_of
+from unturn.pipeline import Computed, StrainOptions, compute, model_of
 from unturn.regions import named_regions
 from unturn.result import Result
 from unturn.summary import equivalent_form

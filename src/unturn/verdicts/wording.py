@@ -5,12 +5,24 @@ from __future__ import annotations
 import math
 import unicodedata
 from decimal import ROUND_CEILING, ROUND_FLOOR, ROUND_HALF_EVEN, Context, Decimal
+from pathlib import PurePath
 
 from unturn.verdicts.finding import Finding, Place, Report
 
 _DIGITS = 5
 _MOST_DIGITS = 17  # of a double
 _DIRECTION = frozenset("\u200e\u200f\u061c\u202a\u202b\u202c\u202d\u202e\u2066\u2067\u2068\u2069")
+
+
+def short_name(path: str) -> str:
+    """Return what findings call a result: the name of its file.
+
+    Examples
+    --------
+    >>> short_name("results/foot.vtu"), short_name("")
+    ('foot.vtu', '(in memory)')
+    """
+    return PurePath(path).name or "(in memory)"
 
 
 def clean(text: str) -> str:
