@@ -18,7 +18,7 @@ LAYERS = (
     ("errors", "source", "_version"),
     ("kinematics", "elements", "toml_keys"),
     ("picture_wishes",),
-    ("picture_keys",),
+    ("picture_keys", "report_keys"),
     ("result", "statistics", "precision"),
     ("numbering", "frames", "point_gradient"),
     ("gradient", "measures", "midside", "displacement", "thermal"),
@@ -54,7 +54,7 @@ LAYERS = (
 LEVEL = {name: level for level, names in enumerate(LAYERS) for name in names}
 FILES = sorted(PACKAGE.rglob("*.py"))
 # `unturn.__init__` is what users import; inside the package its parts are named in full.
-OUTSIDE = {"vtk", "vtkmodules", "pyvista", "meshio"}
+OUTSIDE = {"vtk", "vtkmodules", "pyvista", "meshio", "matplotlib", "jinja2"}
 
 
 def part(path: Path) -> str:

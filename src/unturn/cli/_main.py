@@ -12,7 +12,7 @@ from typing import Annotated
 
 import typer
 
-from unturn.cli import _check, _compare, _convergence, _envelope, _pictures, _strain, _survey
+from unturn.cli import _check, _compare, _convergence, _envelope, _pictures, _report, _strain, _survey
 from unturn.errors import UnturnError
 
 _SIGPIPE = 13  # which not every system has
@@ -39,6 +39,7 @@ app.command("strain")(_strain.strain)
 app.command("check")(_check.check)
 app.command("compare")(_compare.compare)
 app.command("picture")(_pictures.picture)
+app.command("report")(_report.report)
 app.command("envelope")(_envelope.envelope)
 app.command("convergence")(_convergence.convergence)
 

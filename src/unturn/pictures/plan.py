@@ -11,10 +11,11 @@ from typing import Any
 
 from unturn import reading_keys as r
 from unturn import toml_keys as k
-from unturn.errors import UsageError
+from unturn.errors import UsageError, close_matches
 from unturn.picture_keys import PICTURE_KEYS, PictureRequest
 from unturn.pictures.computing import LOCATIONS
 from unturn.pipeline import StrainOptions
+from unturn.report_keys import REPORT_KEYS, ReportWish
 from unturn.toml_keys import REQUIRED, Key, Lines, Path, Source
 
 SCHEMA = "unturn.plan/1"
@@ -26,6 +27,7 @@ PLAN_KEYS = (
     Key("title", k.TEXT, "what is shown; stands before the title of every picture", ""),
     Key("reading", _ANY, "how the result is read", {}),
     Key("defaults", _ANY, "what holds for every picture that does not say otherwise", {}),
+    Key("report", _ANY, "what `unturn report` says beside the pictures", {}),
     Key("pictures", _ANY, "the pictures", REQUIRED),
 )
 """Keys of the file itself."""
@@ -56,6 +58,8 @@ class Plan:
         What is asked for, in the order of the file; names are different.
     csv
         Names of the pictures whose values are wanted as a table.
+    report
+        What a report says beside the pictures.
     """
 
     path: str
@@ -64,6 +68,7 @@ class Plan:
     zero_step: int | None
     pictures: tuple[PictureRequest, ...]
     csv: frozenset[str] = field(default_factory=frozenset)
+    report: ReportWish = field(default_factory=ReportWish)
 
 
 def read_plan(path: FilePath | str) -> Plan:
@@ -111,7 +116,19 @@ def parse_plan(raw: bytes, name: str) -> Plan:
         if request.name.casefold() in [p.name.casefold() for p in pictures]:
             raise source.error((*place, "name"), f"another picture is called {request.name!r} too.")
         pictures.append(request)
-    return Plan(name, found["title"], options, zero_step, tuple(pictures), frozenset(csv))
+    report = _report(source, found["report"], [p.name for p in pictures])
+    return Plan(name, found["title"], options, zero_step, tuple(pictures), frozenset(csv), report)
+
+
+def _report(source: Source, table: Any, pictures: Sequence[str]) -> ReportWish:
+    wish = ReportWish(**k.read_table(source, ("report",), table, REPORT_KEYS))
+    for name in wish.side_by_side:
+        if name not in pictures:
+            raise source.error(
+                ("report", "side_by_side"),
+                f"no picture is called {name!r}.{close_matches(name, pictures)} Pictures: {', '.join(pictures)}.",
+            )
+    return wish
 
 
 def _picture(source: Source, place: Path, table: Any, defaults: Mapping[str, Any]) -> dict[str, Any]:

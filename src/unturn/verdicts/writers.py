@@ -259,11 +259,12 @@ def csv_report(report: Report) -> str:
         place = data["place"]
         x, y, z = place["at"] or (None, None, None)
         values = {**data, **place, "x": x, "y": y, "z": z}
-        writer.writerow([_field(values[c]) for c in CSV_COLUMNS])
+        writer.writerow([csv_field(values[c]) for c in CSV_COLUMNS])
     return out.getvalue()
 
 
-def _field(value: Any) -> str:
+def csv_field(value: Any) -> str:
+    """Return a value as CSV holds it: a number with every digit, a text that no table program takes for a formula."""
     if value is None:
         return ""
     if not isinstance(value, str):

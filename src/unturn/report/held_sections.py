@@ -1,0 +1,127 @@
+"""The sections on what the result is held against: limits, a reference, its own steps."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Sequence
+
+from unturn.report.content import Content, Extreme
+from unturn.report.parts import Cell, Figures, Part, Said, Section, Table, Tone
+from unturn.report.words import NONE, bound, outward, shown_value, unit_name
+from unturn.verdicts.finding import Finding, Report, State
+from unturn.verdicts.wording import bound_text, counts_text, margin_text, measured_text, number, place_text
+
+_TONES: dict[State, Tone] = {
+    "met": "good", "warning": "open", "undecided": "open", "waived": "open", "exceeded": "bad", "error": "bad",
+}  # fmt: skip
+_HEAD = ("verdict", "limit", "value", "bound", "margin", "unit", "what and where", "why")
+
+
+def limits(content: Content) -> Section | None:
+    """Return every limit, worst first."""
+    report = content.limits
+    if report is None:
+        return None
+    rows = [_finding(f) for findings in report.groups.values() for f in findings]
+    title = report.settings.get("title") or "limits"
+    return Section(
+        "limits", "Limits",
+        [
+            Said([f"Limits: {title}. {counts_text(report)}. Waivers are judged on {report.settings['today']}."]),
+            Table("limits", "Limits, worst first", _HEAD, rows, frozenset({2, 4})),
+        ],
+    )  # fmt: skip
+
+
+def _finding(f: Finding) -> list[Cell]:
+    where = place_text(f.place)
+    return [
+        Cell(f.state, tone=_TONES[f.state]), Cell(f.id), Cell(measured_text(f), f.value), Cell(bound_text(f)),
+        Cell(margin_text(f), f.margin), Cell(f.unit), Cell(f"{f.title}: {where}" if where else f.title), Cell(f.message),
+    ]  # fmt: skip
+
+
+def versus(content: Content) -> Section | None:
+    """Return the comparison with the reference."""
+    found = content.versus
+    if found is None:
+        return None
+    head = ("region", "what", "this result", "±", "reference", "± of reference", "change", "unit")
+    rows = [_pair(new, old) for new, old in found.pairs]
+    judged = f"Against the tolerances: {counts_text(found.findings)}."
+    told = "No tolerances are stated: differences are told, not judged."
+    parts: list[Part] = [
+        Said([f"Compared with {found.reference}. {judged if found.judged else told}", *found.findings.notes]),
+        Table("change", "Extremes of this result and of the reference", head, rows, frozenset(range(2, 7))),
+        _differences(found.findings, found.judged),
+        Figures(found.pictures, 2),
+    ]
+    return Section("comparison", "Comparison with the reference", parts)
+
+
+def _pair(new: Extreme, old: Extreme | None) -> list[Cell]:
+    unit = unit_name(new.unit)
+    first = [Cell(new.region), Cell(new.label), Cell(outward(new.value, new.which, new.unit), new.value),
+             Cell(bound(new.plus_minus, new.unit), new.plus_minus)]  # fmt: skip
+    if old is None:
+        return [*first, Cell(NONE), Cell(NONE), Cell("not in the reference"), Cell(unit)]
+    return [
+        *first, Cell(outward(old.value, old.which, old.unit), old.value),
+        Cell(bound(old.plus_minus, old.unit), old.plus_minus),
+        Cell(_change(new.value, old.value), new.value - old.value), Cell(unit),
+    ]  # fmt: skip
+
+
+def _change(new: float, old: float) -> str:
+    if not (math.isfinite(new) and math.isfinite(old)):
+        return NONE
+    if old == 0.0:
+        return "none" if new == 0.0 else "from zero"
+    change = 100.0 * (new - old) / abs(old)
+    return f"{'+' if change > 0 else ''}{number(change, digits=3)} %"
+
+
+def _differences(report: Report, judged: bool) -> Table:
+    """Return what differs: with verdicts where it is judged, else sizes alone."""
+    findings = [f for group in report.groups.values() for f in group]
+    if judged:
+        caption = "Differences against tolerances, worst first"
+        rows = [_finding(f) for f in findings]
+        return Table("differences", caption, ("verdict", "compared", *_HEAD[2:]), rows, frozenset({2, 4}))
+    head = ("compared", "largest difference", "of the reference's largest", "of its mean size (L2)")
+    rows = [_difference(f) for f in findings]
+    return Table("differences", "Differences by array and region", head, rows, frozenset({1, 2, 3}))
+
+
+def _difference(f: Finding) -> list[Cell]:
+    if "l2" not in f.details:
+        return [Cell(f.id), Cell(f.message or f.title), Cell(""), Cell("")]
+    worst, size = f.details["largest"]["value"], f.details["largest_of_reference"]
+    return [
+        Cell(f.id), Cell(_size(worst, f.unit), worst),
+        Cell(f"{number(100.0 * worst / size, digits=3)} %" if size else NONE, worst / size if size else None),
+        Cell(f"{number(100.0 * f.details['l2_relative'], digits=3)} %", f.details["l2_relative"]),
+    ]  # fmt: skip
+
+
+def _size(value: float, unit: str) -> str:
+    if unit == "microstrain":
+        return f"{outward(value, 'maximum', 'strain')} microstrain"
+    return f"{number(value)} {unit}".rstrip()
+
+
+def steps(content: Content) -> Section | None:
+    """Return the extremes of every step."""
+    series = content.series
+    if series is None:
+        return None
+    head = ("step", "t", *(f"{c.region}: {c.label}, {unit_name(c.unit)}" for c in series.curves))
+    rows: list[Sequence[Cell]] = []
+    for k, (step, time) in enumerate(zip(series.steps, series.times)):
+        cells = [
+            Cell(outward(c.values[k], c.which, c.unit), shown_value(c.values[k], c.unit))
+            for c in series.curves
+        ]
+        rows.append([Cell(str(step), step), Cell(number(time), time), *cells])
+    table = Table("steps", "Extremes of each step", head, rows, frozenset(range(len(head))))
+    return Section("steps", "Over the steps", [Figures(series.plots, 2), table])

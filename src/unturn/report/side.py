@@ -1,0 +1,77 @@
+"""One step of a result, read, computed and summarised as a plan says: that of the report, or that of its reference."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
+
+from unturn.errors import UsageError
+from unturn.io import ResultFile
+from unturn.picture_keys import PictureRequest
+from unturn.pictures.computing import Step
+from unturn.pictures.plan import Plan
+from unturn.pipeline import Computed, StrainOptions, compute, settled
+from unturn.result import Result
+from unturn.summary import Summary, SummaryOptions, summarise
+
+
+@dataclass(frozen=True, eq=False)
+class Side:
+    """A step of a result with its fields and its summary; `options` are those of cells."""
+
+    result: Result
+    options: StrainOptions
+    zero: Result | None
+    computed: Computed
+    summary: Summary
+
+    def step(self, requests: Sequence[PictureRequest]) -> Step:
+        """Return what pictures are drawn of."""
+        return Step(self.result, requests, replace(self.options, at="centroid"), self.zero)
+
+
+def side_of(opened: ResultFile, result: Result, plan: Plan, threads: int | None) -> Side:
+    """Return one step of a result, `result`, as a plan reads it.
+
+    Raises
+    ------
+    UsageError
+        Options that do not fit the mesh, or a zero step that does not exist.
+    InputError
+        It cannot be used.
+    """
+    options = series_options(opened, plan, threads)
+    zero = zero_of(opened, plan)
+    computed = compute(result, options, zero=zero, diagnose=True)
+    computed.require_some()
+    return Side(
+        result, options, zero, computed, summarise(computed, summary_options(plan, full=True), threads)
+    )
+
+
+def series_options(opened: ResultFile, plan: Plan, threads: int | None) -> StrainOptions:
+    """Return how every step is computed."""
+    options = replace(plan.options, threads=threads, at=plan.report.at)
+    if opened.steps is None or len(opened.steps) < 2:
+        return options
+    return settled(options, opened.read(len(opened.steps) - 1))
+
+
+def zero_of(opened: ResultFile, plan: Plan) -> Result | None:
+    """Return the step from which displacements are measured."""
+    if plan.zero_step is None:
+        return None
+    n = 0 if opened.steps is None else len(opened.steps)
+    if plan.zero_step >= n:
+        steps = f"{n or 'no'} step{'s' * (n != 1)}"
+        raise UsageError(
+            f"{plan.path}: zero_step {plan.zero_step} does not exist: {opened.path} has {steps}."
+        )
+    return opened.read(plan.zero_step)
+
+
+def summary_options(plan: Plan, full: bool) -> SummaryOptions:
+    """Return how the summaries of a report are made."""
+    wish, options = plan.report, plan.options
+    at = "mean" if wish.at == "mean" else "centroid"
+    return SummaryOptions(wish.regions, options.solve, wish.mode, options.equivalent_poisson, at, full)
