@@ -17,7 +17,7 @@ from unturn.series import SERIES_MEASURES
 from unturn.states import Envelope, Judged, Tracked
 from unturn.statistics import statistics
 from unturn.summary import CAUTION, cell_counts, equivalent_form, mesh_kind
-from unturn.summary_text import _FINITE_ONLY, _advice, _aligned, _micro, _of_its_strain, _one_digit
+from unturn.summary_text import FINITE_ONLY, _advice, _aligned, _micro, _of_its_strain, _one_digit
 from unturn.trusted import BASE_WORDS
 
 SCHEMA = "unturn.envelope/1"
@@ -185,7 +185,7 @@ def _verdicts(envelope: Envelope) -> list[str]:
             actions.setdefault(v.action, []).append(r.region.name)
     lines += _aligned(rows, left=True)
     if _finite_only(envelope):
-        return [*lines, *_advice(_FINITE_ONLY[envelope.options.strain.solve])]
+        return [*lines, *_advice(FINITE_ONLY[envelope.options.strain.solve])]
     for action, names in actions.items():
         lines += _advice(f"{', '.join(names)}: {action}")
     return lines

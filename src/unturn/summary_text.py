@@ -117,7 +117,7 @@ def _verdicts(summary: Summary) -> list[str]:
     if len(shown) > _MOST_VERDICTS:
         lines.append(f"  {len(shown) - _MOST_VERDICTS} more regions with smaller errors")
     if summary.finite_only:
-        return [*lines, *_advice(_FINITE_ONLY[summary.options.solve])]
+        return [*lines, *_advice(FINITE_ONLY[summary.options.solve])]
     tried = [(r.region.name, trial) for r in shown[:_MOST_VERDICTS] for trial in r.trials]
     lines += [tried_text(name, trial, summary.options.solve) for name, trial in tried]
     by_action: dict[str, list[str]] = {}
@@ -130,11 +130,12 @@ def _verdicts(summary: Summary) -> list[str]:
     return lines
 
 
-_FINITE_ONLY: dict[Solve, str] = {
+FINITE_ONLY: dict[Solve, str] = {
     "nonlinear": "that is for the small strain; the arrays that are written are finite measures, which contain no turning",
     "unknown": "that is for the small strain; the arrays that are written are finite measures, which contain no turning "
     "but are real only if the solve was geometrically nonlinear (say which with --solve)",
 }
+"""What a verdict on the small strain means where only finite measures are asked for."""
 
 
 def _advice(sentence: str) -> list[str]:

@@ -7,6 +7,7 @@ import math
 from dataclasses import dataclass, field
 from typing import Any, Literal
 
+from unturn.measures import MEASURES
 from unturn.report_keys import ReportWish
 from unturn.summary import RegionSummary, Summary
 from unturn.trusted import Which, table_rows
@@ -159,14 +160,20 @@ def _extreme(summary: Summary, region: RegionSummary, label: str, name: str, whi
     assert d is not None
     size = region.verdict.size
     known = region.trust.get((name, which))
+    turns = not _is_finite(name)  # what turning adds to the small strain says nothing of a finite measure
     return Extreme(
         region.region.name, label, name, which, value, region.plus_minus(name, which),
         "radian" if name == "angle_of_turn" else "strain", cell,
         element_of(summary, cell),
         None if cell < 0 else (float(d.centroid[cell][0]), float(d.centroid[cell][1]), float(d.centroid[cell][2])),
-        float(d.error[cell] / size) if cell >= 0 and size > 0 and not summary.options.mode else math.nan,
+        float(d.error[cell] / size) if cell >= 0 and size > 0 and turns and not summary.options.mode else math.nan,
         known is not None and known.singular,
     )  # fmt: skip
+
+
+def _is_finite(name: str) -> bool:
+    measure = MEASURES.get(name) or MEASURES.get(name.rpartition("_")[0])
+    return measure is not None and measure.finite
 
 
 def element_of(summary: Summary, cell: int) -> int | None:

@@ -36,7 +36,7 @@ def shown(drawn: Drawn, name: str = "", of: str = "", with_values: bool = False)
     """Return a picture that lies in a file as a report shows it; `of` says which result, where there are two."""
     path = Path(drawn.drawing.path)
     title = full_title(drawn.subject, drawn.request)
-    title = f"{title} – {of}" if of else title
+    title = f"{of}: {title}" if of else title
     table = None
     if with_values:
         write_values(drawn, path.with_suffix(".csv"))
@@ -45,7 +45,7 @@ def shown(drawn: Drawn, name: str = "", of: str = "", with_values: bool = False)
     data.pop("path")
     shape = _shape(drawn)
     colours = _colours(drawn)
-    marks = "; ".join(_marks(drawn))
+    marks = " ".join(_marks(drawn))
     meaning = ", ".join(drawn.subject.values.name.splitlines()[1:])
     location = drawn.subject.location[:1].upper() + drawn.subject.location[1:]
     caption = f"{location}{'; ' if meaning else ''}{meaning}. {shape}. {marks}".strip()
@@ -61,7 +61,9 @@ def _shape(drawn: Drawn) -> str:
     factor = drawn.drawing.factor
     if not factor:
         return "Undeformed shape"
-    fitted = ", chosen to be seen" if drawn.request.factor is None and factor != 1.0 else ""
+    if factor == 1.0:
+        return "Displacement drawn true to scale"
+    fitted = ", chosen to be seen" if drawn.request.factor is None else ""
     return f"Displacement drawn {number(factor)} times{fitted}"
 
 

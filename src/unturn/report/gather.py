@@ -156,7 +156,7 @@ def _record(file: InputFile) -> FileRecord:
     except OSError:  # several files that are one record
         return FileRecord(file.role, file.path, file.sha256, None, None)
     changed = datetime.datetime.fromtimestamp(found.st_mtime, datetime.UTC)
-    return FileRecord(file.role, file.path, file.sha256, found.st_size, changed.isoformat(timespec="seconds"))
+    return FileRecord(file.role, file.path, file.sha256, found.st_size, f"{changed:%Y-%m-%d %H:%M:%S} UTC")
 
 
 def _beyond(computed: Computed, summary: Summary) -> list[Beyond]:

@@ -36,7 +36,8 @@ def limits(content: Content) -> Section | None:
 def _finding(f: Finding) -> list[Cell]:
     where = place_text(f.place)
     return [
-        Cell(f.state, tone=_TONES[f.state]), Cell(f.id), Cell(measured_text(f), f.value), Cell(bound_text(f)),
+        Cell(f.state, tone=_TONES[f.state]), Cell(f.id),
+        Cell(measured_text(f).replace(" +-", " ± "), f.value), Cell(bound_text(f)),
         Cell(margin_text(f), f.margin), Cell(f.unit), Cell(f"{f.title}: {where}" if where else f.title), Cell(f.message),
     ]  # fmt: skip
 
@@ -53,8 +54,8 @@ def versus(content: Content) -> Section | None:
     parts: list[Part] = [
         Said([f"Compared with {found.reference}. {judged if found.judged else told}", *found.findings.notes]),
         Table("change", "Extremes of this result and of the reference", head, rows, frozenset(range(2, 7))),
-        _differences(found.findings, found.judged),
-        Figures(found.pictures, 2),
+        *_differences(found.findings, found.judged),
+        Figures(found.pictures, "wide"),
     ]
     return Section("comparison", "Comparison with the reference", parts)
 
@@ -81,21 +82,21 @@ def _change(new: float, old: float) -> str:
     return f"{'+' if change > 0 else ''}{number(change, digits=3)} %"
 
 
-def _differences(report: Report, judged: bool) -> Table:
+def _differences(report: Report, judged: bool) -> list[Part]:
     """Return what differs: with verdicts where it is judged, else sizes alone."""
     findings = [f for group in report.groups.values() for f in group]
     if judged:
         caption = "Differences against tolerances, worst first"
         rows = [_finding(f) for f in findings]
-        return Table("differences", caption, ("verdict", "compared", *_HEAD[2:]), rows, frozenset({2, 4}))
+        return [Table("differences", caption, ("verdict", "compared", *_HEAD[2:]), rows, frozenset({2, 4}))]
     head = ("compared", "largest difference", "of the reference's largest", "of its mean size (L2)")
-    rows = [_difference(f) for f in findings]
-    return Table("differences", "Differences by array and region", head, rows, frozenset({1, 2, 3}))
+    rows = [_difference(f) for f in findings if "l2" in f.details]
+    said = [f"{f.title}: {f.message}" for f in findings if "l2" not in f.details and f.message]
+    table = Table("differences", "Differences by array and region", head, rows, frozenset({1, 2, 3}))
+    return [Said(said, "list"), table] if said else [table]
 
 
 def _difference(f: Finding) -> list[Cell]:
-    if "l2" not in f.details:
-        return [Cell(f.id), Cell(f.message or f.title), Cell(""), Cell("")]
     worst, size = f.details["largest"]["value"], f.details["largest_of_reference"]
     return [
         Cell(f.id), Cell(_size(worst, f.unit), worst),
@@ -124,4 +125,4 @@ def steps(content: Content) -> Section | None:
         ]
         rows.append([Cell(str(step), step), Cell(number(time), time), *cells])
     table = Table("steps", "Extremes of each step", head, rows, frozenset(range(len(head))))
-    return Section("steps", "Over the steps", [Figures(series.plots, 2), table])
+    return Section("steps", "Over the steps", [Figures(series.plots, "small"), table])

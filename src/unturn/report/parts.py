@@ -64,10 +64,10 @@ class Outcome:
 
 @dataclass(frozen=True)
 class Figures:
-    """Images with captions; `columns` of them beside each other where there is room."""
+    """Images with captions: each for itself, small ones beside each other, or wide ones where the screen has room."""
 
     images: Sequence[Shown]
-    columns: int = 1
+    layout: Literal["each", "small", "wide"] = "each"
     kind: Literal["figures"] = "figures"
 
 

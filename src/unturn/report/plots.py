@@ -18,7 +18,7 @@ _STYLES = (
     ("#8a6a1f", "D", ":"),
     ("#7a7f8c", "v", "-"),
 )
-_SETTINGS = {"svg.hashsalt": "unturn", "svg.fonttype": "path", "font.family": "DejaVu Sans", "font.size": 9}
+_SETTINGS = {"svg.hashsalt": "unturn", "svg.fonttype": "path", "font.family": "DejaVu Sans", "font.size": 8}
 
 
 def plot_series(series: Series) -> list[Shown]:
@@ -48,7 +48,7 @@ def _plot(label: str, unit: str, curves: Sequence[Curve], series: Series, positi
         ) from None
     title = f"{label[:1].upper()}{label[1:]}"
     with mpl.rc_context(_SETTINGS):
-        figure = Figure(figsize=(6.4, 3.2), layout="constrained")
+        figure = Figure(figsize=(4.4, 2.9), layout="constrained")
         axes: Any = figure.subplots()
         for curve, (colour, mark, dash) in zip(curves, _STYLES):
             axes.plot(

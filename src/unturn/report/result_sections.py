@@ -14,10 +14,12 @@ from unturn.report.parts import Cell, Figures, Part, Said, Section, Table
 from unturn.report.sections import LEVELS
 from unturn.report.words import NONE, bound, coordinates, outward, percent, place_of, unit_name
 from unturn.summary import RegionSummary, Summary
-from unturn.summary_text import tried_text
+from unturn.summary_text import FINITE_ONLY, tried_text
 from unturn.trusted import Growth, Which, table_rows
 from unturn.verdicts.finding import Place
 from unturn.verdicts.wording import number, place_text
+
+_TRUSTED = "May the small strain be trusted?"
 
 
 def verdicts(content: Content) -> Section:
@@ -25,7 +27,7 @@ def verdicts(content: Content) -> Section:
     summary = content.summary
     if summary.options.mode:
         said = "A mode shape has an arbitrary amplitude, so nothing is judged; values are per unit amplitude."
-        return Section("verdicts", "May the small strain be trusted?", [Said([said])])
+        return Section("verdicts", _TRUSTED, [Said([said])])
     head = ("region", "small strain", "largest error over its strain", "volume above 1 %", "volume above 10 %",
             "largest rotation, degree")  # fmt: skip
     rows = [_verdict(r) for r in summary.regions]
@@ -40,11 +42,11 @@ def verdicts(content: Content) -> Section:
         if r.verdict.action:
             actions.setdefault(r.verdict.action, []).append(r.region.name)
     solve = summary.options.solve
+    if summary.finite_only:
+        return Section("verdicts", _TRUSTED, [*parts, Said([f"{FINITE_ONLY[solve]}."])])
     advice = [f"{', '.join(names)}: {action}." for action, names in actions.items()]
     advice += [tried_text(r.region.name, t, solve).strip() for r in summary.regions for t in r.trials]
-    return Section(
-        "verdicts", "May the small strain be trusted?", [*parts, *([Said(advice, "list")] if advice else [])]
-    )
+    return Section("verdicts", _TRUSTED, [*parts, *([Said(advice, "list")] if advice else [])])
 
 
 def _verdict(r: RegionSummary) -> list[Cell]:

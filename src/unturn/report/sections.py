@@ -20,7 +20,8 @@ from unturn.report.words import (
     unit_name,
 )
 from unturn.summary import CAUTION, Summary, cell_counts, equivalent_form
-from unturn.summary_text import agreement_text, extent_of, kind_text, removed_text
+from unturn.summary_text import FINITE_ONLY, agreement_text, extent_of, kind_text, removed_text
+from unturn.verdicts.finding import Report
 from unturn.verdicts.wording import counts_text, number
 
 LEVELS: dict[str, tuple[str, Tone]] = {
@@ -37,15 +38,7 @@ def outcome(content: Content) -> Section:
     """Return what a reader must know first."""
     rows: list[tuple[str, str, Tone, str]] = []
     if content.limits is not None:
-        passed = content.limits.passed
-        rows.append(
-            (
-                "Limits",
-                "met" if passed else "not all met",
-                "good" if passed else "bad",
-                counts_text(content.limits),
-            )
-        )
+        rows.append(_limits(content.limits))
     if content.versus is not None and content.versus.judged:
         passed = content.versus.findings.passed
         word = "within tolerance" if passed else "not within tolerance"
@@ -53,7 +46,13 @@ def outcome(content: Content) -> Section:
     levels = [r.verdict.level for r in content.summary.regions]
     worst = next(level for level in _LEVELS_WORST_FIRST if level in levels)
     names = ", ".join(r.region.name for r in content.summary.regions if r.verdict.level == worst)
-    rows.append(("Small strain", *LEVELS[worst], f"worst in {names}; see the verdict of each region"))
+    word, tone = LEVELS[worst]
+    if content.summary.finite_only:
+        rows.append(
+            ("Small strain", word, "", f"worst in {names}; {FINITE_ONLY[content.summary.options.solve]}")
+        )
+    else:
+        rows.append(("Small strain", word, tone, f"worst in {names}; see the verdict of each region"))
     suspects = len({(g.region, g.location) for g in content.summary.growths})
     if suspects:
         rows.append(
@@ -70,6 +69,16 @@ def outcome(content: Content) -> Section:
     peaks = _leading_extremes(content)
     listed = [f"{e.label}, {e.region}: {_with_bound(e)} {unit_name(e.unit)}, {place_of(e)}" for e in peaks]
     return Section("outcome", "Outcome", [Outcome(rows), Said(listed, "list")])
+
+
+def _limits(report: Report) -> tuple[str, str, Tone, str]:
+    """Return how the limits stand; what is waived, or undecided and let pass, is no plain met."""
+    word: str = "not all met"
+    tone: Tone = "bad"
+    if report.passed:
+        others = [state for state in ("waived", "undecided") if state in report.counts]
+        word, tone = (f"met, or {' or '.join(others)}", "open") if others else ("met", "good")
+    return "Limits", word, tone, counts_text(report)
 
 
 def _leading_extremes(content: Content) -> list[Extreme]:

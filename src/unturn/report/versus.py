@@ -7,6 +7,7 @@ from collections.abc import Sequence
 from dataclasses import replace
 from pathlib import Path
 
+from unturn.errors import UsageError
 from unturn.measures import MEASURES
 from unturn.picture_keys import PictureRequest
 from unturn.pictures._measure import spoken, wanted
@@ -25,7 +26,7 @@ from unturn.verdicts.compare import Compared, CompareOptions, compare_states
 from unturn.verdicts.finding import Report
 from unturn.verdicts.tolerances import Tolerances, read_tolerances
 
-NEW, OLD = "this result", "reference"
+NEW, OLD = "This result", "Reference"
 
 
 def compare_with(side: Side, base: Side, plan: Plan, tolerances: Path | None) -> Versus:
@@ -43,8 +44,12 @@ def compare_with(side: Side, base: Side, plan: Plan, tolerances: Path | None) ->
     Raises
     ------
     UsageError
-        A picture of something that the reference does not have, or tolerances that do not fit.
+        A picture of something that the reference does not have, tolerances that do not fit, or a zero step.
     """
+    if plan.zero_step is not None:
+        raise UsageError(
+            f"{plan.path}: a reference is compared from the undeformed state: leave out reference, or zero_step."
+        )
     asked = plan.report.side_by_side or (plan.pictures[0].name,)
     requests = [p for p in plan.pictures if p.name in asked]
     stated = Tolerances() if tolerances is None else read_tolerances(tolerances)
@@ -52,7 +57,10 @@ def compare_with(side: Side, base: Side, plan: Plan, tolerances: Path | None) ->
     strain = replace(
         side.options, at="mean" if side.options.at == "mean" else "centroid", measures=measures, base="small"
     )
-    compared = compare_states(side.result, base.result, CompareOptions(stated, measures=True, strain=strain))
+    moved = side.summary.fields.model.displacement.name
+    arrays = () if tolerances is not None else tuple(name.strip() for name in moved.split(","))
+    wanted_too = CompareOptions(stated, arrays, measures=True, strain=strain)
+    compared = compare_states(side.result, base.result, wanted_too)
     return Versus(
         base.result.path,
         _pairs(side, base),
@@ -78,11 +86,11 @@ def _pictures(side: Side, base: Side, requests: Sequence[PictureRequest], compar
             place = Path(folder)
             with request.told_where():
                 subject = steps[0].subject(request)
-                new = Drawn(request, subject, draw_one(subject, request, ends, place / f"{k}-new.png"))
+                new = Drawn(request, subject, draw_one(subject, request, ends, place / f"{k}-new.png", NEW))
                 same = replace(request, factor=new.drawing.factor)
                 subject = steps[1].subject(same)
                 camera, target = new.drawing.camera, place / f"{k}-old.png"
-                old = draw_subject(subject, same, ranged(subject, same, ends), target, camera)
+                old = draw_subject(subject, same, ranged(subject, same, ends), target, camera, OLD)
             found += [
                 shown(new, f"{request.name}-this", NEW),
                 shown(Drawn(same, subject, old), f"{request.name}-reference", OLD),
@@ -106,7 +114,7 @@ def _difference(side: Side, base: Side, request: PictureRequest, compared: Compa
     labels = base.computed.fields.components.get(what.array, ())
     numbers = held if held.ndim == 1 else held[:, labels.index(what.component)]
     name = f"difference in {spoken(what.array)} {what.component}".rstrip()
-    values = values_with(numbers, f"{name}\n{NEW} less the {OLD}", _unit(what.array))
+    values = values_with(numbers, f"{name}\n{NEW.lower()} less the {OLD.lower()}", _unit(what.array))
     at_cells = replace(request, at="centroid", arrows="none")
     location = LOCATIONS["mean" if side.options.at == "mean" else "centroid"]
     return replace(base.step([at_cells]).subject(at_cells), values=values, location=location)
