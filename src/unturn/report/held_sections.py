@@ -14,7 +14,7 @@ from unturn.verdicts.wording import bound_text, counts_text, margin_text, measur
 _TONES: dict[State, Tone] = {
     "met": "good", "warning": "open", "undecided": "open", "waived": "open", "exceeded": "bad", "error": "bad",
 }  # fmt: skip
-_HEAD = ("verdict", "limit", "value", "bound", "margin", "unit", "what and where", "why")
+_HEAD = ("verdict", "limit", "value", "bound", "margin", "unit", "what, where and why")
 
 
 def limits(content: Content) -> Section | None:
@@ -38,7 +38,7 @@ def _finding(f: Finding) -> list[Cell]:
     return [
         Cell(f.state, tone=_TONES[f.state]), Cell(f.id),
         Cell(measured_text(f).replace(" +-", " ± "), f.value), Cell(bound_text(f)),
-        Cell(margin_text(f), f.margin), Cell(f.unit), Cell(f"{f.title}: {where}" if where else f.title), Cell(f.message),
+        Cell(margin_text(f), f.margin), Cell(f.unit), Cell(f"{f.title}{': ' + where if where else ''}{'. ' + f.message if f.message else ''}"),
     ]  # fmt: skip
 
 
