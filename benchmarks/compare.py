@@ -1,7 +1,7 @@
 """Times unturn against referees in the same run and prints the ratios. Run by hand on a quiet machine:
 
     python benchmarks/compare.py            # everything, about two minutes
-    python benchmarks/compare.py kernel     # or: finite, eigen, command, help, memory
+    python benchmarks/compare.py kernel     # or: finite, eigen, command, limits, help, memory
 
 Nothing here is asserted: a ratio is read by a person, on a machine whose other work is known.
 """
@@ -142,6 +142,47 @@ def command() -> None:
                   f"{ours / theirs:.2f} times its time")  # fmt: skip
 
 
+def limits_text() -> str:
+    """Return fifty limits on the measures, in ten regions and the whole, with five statistics."""
+    lines = ['schema = "unturn.limits/1"', "number_of_limits = 50"]
+    for k in range(10):
+        low, high = 5.5 * k, 5.5 * (k + 1)
+        lines += [f"[regions.slab{k}]", f"box = {{ from = [{low}, -1, -1], to = [{high}, 99, 99] }}"]
+    statistics = ("'maximum'", "'minimum'", "'percentile'\npercent = 99.9", "'share'\nabove = 500", "'mean'")
+    measures = ("'equivalent_strain'", "'strain'\ncomponent = 'XY'", "'strain'\ncomponent = 'XX'")
+    for i in range(50):
+        region = f"slab{i % 10}" if i % 3 else "whole"
+        lines += ["[[limits]]", f"id = 'l{i}'", f"measure = {measures[i % 3]}", f"statistic = {statistics[i % 5]}",
+                  f"region = '{region}'", "at_most = 1e9\nunit = 'microstrain'\nreason = 'r'\nsource = 's'",
+                  "accept = ['singular', 'turning']"]  # fmt: skip
+    return "\n".join(lines)
+
+
+def limits() -> None:
+    """The whole check command with fifty limits against the strain command with the same measures."""
+    from unturn import write
+
+    with tempfile.TemporaryDirectory() as folder:
+        source, asked = Path(folder) / "million.vtu", Path(folder) / "limits.toml"
+        write(million("tetra")[0], source)
+        asked.write_text(limits_text())
+        start = [sys.executable, "-c", "from unturn.cli import main; main()"]
+        check = [*start, "check", str(source), str(asked)]
+        strain = [
+            *start,
+            "strain",
+            str(source),
+            "-o",
+            str(Path(folder) / "out.vtu"),
+            "--measures",
+            "strain,equivalent_strain",
+        ]
+        ours = best(lambda: subprocess.run(check, check=True, capture_output=True), 3)
+        theirs = best(lambda: subprocess.run(strain, check=True, capture_output=True), 3)
+        print(f"check, 50 limits, 1 M tetrahedra: {ours:.2f} s; strain with the same measures: {theirs:.2f} s; "
+              f"{ours / theirs:.2f} times its time")  # fmt: skip
+
+
 def help_text() -> None:
     """How soon `unturn --help` answers."""
     run = [sys.executable, "-c", "from unturn.cli import main; main()", "--help"]
@@ -183,6 +224,7 @@ PARTS = {
     "finite": finite,
     "eigen": eigen,
     "command": command,
+    "limits": limits,
     "help": help_text,
     "memory": memory,
 }

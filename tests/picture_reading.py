@@ -59,7 +59,7 @@ def boxes(n: int = 4) -> Result:
 def one_cell(cell_type: str, **nodal: np.ndarray) -> Result:
     """One cell at its reference nodes, with a displacement and arrays at its nodes."""
     row = ELEMENTS[cell_type]
-    points = np.array(row.nodes)
+    points = np.pad(row.nodes, ((0, 0), (0, 3 - row.dim)))
     block = CellBlock(cell_type, np.arange(row.n_nodes)[None], np.array([0]))
     return Result(points, (block,), {"u": 1e-3 * points, **nodal})
 

@@ -302,7 +302,7 @@ def by_the_whole(computed: Computed, asked: Asked) -> Trust:
         return bool(
             peak.singular
             and abs(peak.value) >= 1e-3 * asked.size
-            and not (error.plus_minus_shares[share] < 0.3 * strain[peak.cell]).all()
+            and not (error.plus_minus_shares[share] < 0.4 * strain[peak.cell]).all()
         )
 
     known = error.plus_minus[asked.cell]

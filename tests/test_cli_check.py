@@ -7,6 +7,8 @@ import hashlib
 import json
 import re
 import shutil
+import subprocess
+import sys
 from pathlib import Path
 from typing import Any
 
@@ -112,9 +114,17 @@ def test_several_files_have_their_own_cases(desk: Path) -> None:
     results = {s.name: [type(r) for c in s for r in c.result] for s in suites}
     assert results == {"good.vtu": [], "bad.vtu": [junitparser.Failure], "broken.vtu": [junitparser.Error]}
     with Path("t.csv").open(encoding="utf-8", newline="") as file:
-        assert [(r["group"], r["state"]) for r in csv.DictReader(file)] == [
-            ("good.vtu", "met"), ("bad.vtu", "exceeded"), ("broken.vtu", "error"),
-        ]  # fmt: skip
+        rows = list(csv.DictReader(file))
+    assert [(r["group"], r["state"]) for r in rows] == [
+        ("good.vtu", "met"), ("bad.vtu", "exceeded"), ("broken.vtu", "error"),
+    ]  # fmt: skip
+    hashes = {
+        n: hashlib.sha256(Path(n).read_bytes()).hexdigest() for n in ("limits.toml", "good.vtu", "bad.vtu")
+    }
+    limits = f"limits limits.toml {hashes['limits.toml']}"
+    assert [r["sha256"] for r in rows] == [
+        f"{limits}; result good.vtu {hashes['good.vtu']}", f"{limits}; result bad.vtu {hashes['bad.vtu']}", limits,
+    ]  # fmt: skip
 
 
 def test_one_file_given_twice_is_refused(desk: Path) -> None:
@@ -151,9 +161,12 @@ def test_no_output_replaces_an_input(desk: Path) -> None:
             assert Path(name).read_bytes() == before
 
 
-def test_data_on_the_standard_output_stands_alone(desk: Path, capsys: pytest.CaptureFixture[str]) -> None:
-    _, text = run(["check", "good.vtu", "limits.toml", "--json", "-"])
-    assert '"schema": "unturn.verdict/1"' in text
+def test_data_on_the_standard_output_stands_alone(desk: Path) -> None:
+    program = f"import sys; sys.path.insert(0, {str(ROOT / 'src')!r}); from unturn.cli import main; main()"
+    command = [sys.executable, "-c", program, "check", "good.vtu", "limits.toml"]
+    done = subprocess.run([*command, "--json", "-"], capture_output=True, text=True, check=True, timeout=120)
+    assert json.loads(done.stdout)["schema"] == "unturn.verdict/1"
+    assert "1 met of 1: PASSED" in done.stderr
 
 
 def test_waivers_are_judged_on_the_day_that_is_given(desk: Path) -> None:

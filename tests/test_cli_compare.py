@@ -85,6 +85,7 @@ def _series(path: Path, times: tuple[float, ...], wrong: float = -1.0) -> None:
         ("now.vtu before.vtu --tolerances none.toml", 2, "cannot be read"),
         ("now.vtu before.vtu --json before.vtu", 2, "would be lost"),
         ("now.vtu before.vtu --json a --junit a", 2, "two outputs"),
+        ("before.xdmf before.xdmf --csv before.xdmf.h5", 2, "would be lost"),
         ("now.vtu before.vtu -o out.stl", 2, "out.stl"),
         ("none.vtu before.vtu", 3, "no such file"),
         ("before.vtu none.vtu", 3, "no such file"),

@@ -392,6 +392,27 @@ def test_a_renumbered_mesh_is_matched(element: str) -> None:
     assert (one.state, one.place["cell"]) == ("exceeded", 1)
 
 
+@pytest.mark.derived("measures that are recovered at nodes are those of the nodes, whatever their numbers")
+def test_measures_at_nodes_of_a_renumbered_mesh() -> None:
+    mesh = box(3, "tetra10", skew=1.0)
+    before = mesh.result(u=quadratic(mesh.points) + 1e-5 * RNG.random((len(mesh.points), 3)))
+    measures = ["strain", "principal_strain", "principal_direction_1"]
+    compared = unturn.compare(shuffled(before), before, measures=measures, at="nodes")
+    assert compared.passed, compared.report
+    assert compared.differences.point_data["strain_difference"].shape == (before.n_points, 6)
+    u = before.point_data["u"].copy()
+    u[np.argmin(np.linalg.norm(mesh.points - 1 / 3, axis=1))] += [0, 0, 1e-4]  # a node within
+    compared = unturn.compare(shuffled(mesh.result(u=u)), before, measures=["strain"], at="nodes")
+    one = found(compared, "computed strain in whole")
+    assert one.state == "exceeded"
+    assert "point" in one.place
+    with pytest.raises(UsageError, match="write it of both results"):
+        unturn.compare(before, before, measures=["strain"], at="surface")
+    with pytest.raises(UsageError, match="the meshes differ"):
+        unturn.compare(box(2, "tetra10").result(u=quadratic(box(2, "tetra10").points)), before, measures=["strain"],
+                       at="nodes")  # fmt: skip
+
+
 @pytest.mark.derived("nodes at one place that belong to different parts stay apart")
 def test_coincident_nodes_are_matched_by_their_cells() -> None:
     mesh = box(2, "hexahedron")

@@ -24,6 +24,8 @@ from unturn.errors import InputError, UnturnError
 from unturn.io import FORMATS, Format
 from unturn.kinematics._finite import BASES
 from unturn.measures import DEFAULT_MEASURES, ESTIMATES, GEOMETRY, MEASURES, SMALL, Measure
+from unturn.picture_keys import PICTURE_KEYS
+from unturn.pictures.plan import PLAN_KEYS, PLAN_READING_KEYS
 from unturn.refinement import Behaviour
 from unturn.series import SERIES_MEASURES
 from unturn.verdicts.finding import STATES
@@ -224,6 +226,13 @@ def _is_read(line: Format) -> bool:
     return True
 
 
+def test_the_tables_of_pictures_are_the_codes() -> None:
+    page = DOCS / "pictures.md"
+    assert table(page, "key of a picture") == [[f"`{k.name}`", k.meaning] for k in PICTURE_KEYS]
+    assert table(page, "table of a plan") == [[f"`{k.name}`", k.meaning] for k in PLAN_KEYS]
+    assert table(page, "key of `reading`") == [[f"`{k.name}`", k.meaning] for k in PLAN_READING_KEYS]
+
+
 @pytest.mark.parametrize("page", EVERY_PAGE, ids=lambda p: p.name)
 def test_every_link_leads_to_a_file(page: Path) -> None:
     for target in re.findall(r"\]\(([^)#]+)", page.read_text(encoding="utf-8")):
@@ -338,6 +347,18 @@ def test_the_survey_schema_is_documented_key_by_key(desk: Path) -> None:
     unturn.write(no_displacement, desk / "bare.vtu")
     produced.append(_json_of("unturn survey bare.vtu"))
     _check_schema(DOCS / "survey-json.md", produced)
+
+
+def test_the_pictures_schema_is_documented_key_by_key(desk: Path) -> None:
+    small = "--size 480x480"
+    commands = (
+        f"bracket.vtu -o a.png --measure strain_XX --csv a.csv {small}",
+        f"lever.xdmf -o b.png --solve nonlinear {small}",
+        f"lever.xdmf -o c.gif --solve nonlinear {small}",
+    )
+    produced = [_json_of(f"unturn picture {c}") for c in commands]
+    assert {d["schema"] for d in produced} == {"unturn.pictures/1"}
+    _check_schema(DOCS / "pictures-json.md", produced)
 
 
 def _loads(desk: Path) -> None:

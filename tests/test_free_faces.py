@@ -14,10 +14,10 @@ from unturn.elements import ELEMENTS, FAMILIES, Element, element
 from unturn.errors import UsageError
 from unturn.io.vtk_result import vtk_from_result
 from unturn.model import Model, build_model
+from unturn.node_sets import singles
 from unturn.regions import Region
 from unturn.result import CellBlock, Result
 from unturn.surface import Faces, free_faces
-from unturn.surface._matching import _singles
 
 # Derived: a face is free when no other cell has its corners; the free faces of a body close it, so their areas as
 # vectors sum to zero.
@@ -129,7 +129,7 @@ def test_keys_that_occur_once() -> None:
         keys = rng.integers(0, 2**64, size=max(n, 1), dtype=np.uint64)[rng.integers(0, max(n, 1), size=n)]
         values, first, count = np.unique(keys, return_index=True, return_counts=True)
         assert len(values) <= max(n, 1)
-        assert _singles(keys).tolist() == sorted(first[count == 1].tolist())
+        assert singles(keys).tolist() == sorted(first[count == 1].tolist())
 
 
 def mixed(extra: int = 0) -> tuple[np.ndarray, list[tuple[str, list[list[int]]]]]:

@@ -16,13 +16,14 @@ import pytest
 
 from documents import ROOT, run, table
 from unturn.errors import UnturnError
+from unturn.toml_kinds import REQUIRED, Key
 from unturn.verdicts.finding import STATES
-from unturn.verdicts.kinds import REQUIRED, Key
 from unturn.verdicts.limit import Accepted
 from unturn.verdicts.limit_keys import ACCEPTED, LIMIT_KEYS, WAIVER_KEYS
-from unturn.verdicts.read_limits import FILE_KEYS, READING_KEYS, REGION_KEYS, RESULT_KEYS
+from unturn.verdicts.read_limits import FILE_KEYS, READING_KEYS, RESULT_KEYS
 from unturn.verdicts.statistic import STATISTICS
 from unturn.verdicts.units import UNITS
+from unturn.written_regions.read import REGION_KEYS
 
 PAGE, SERVER, JSON = (ROOT / "docs" / name for name in ("limits.md", "build-server.md", "check-json.md"))
 
@@ -74,7 +75,7 @@ def _keys(data: dict[str, Any], path: str = "") -> dict[str, list[Any]]:
         found.setdefault(path + key, []).append(value)
         inner = [(f"{path}{key}.", value)] if isinstance(value, dict) and key != "place" else []
         if isinstance(value, list):
-            inner = [(f"{path}{key}[].", v) for v in value]
+            inner = [(f"{path}{key}[].", v) for v in value if isinstance(v, dict)]
         for below, part in inner:
             for name, values in _keys(part, below).items():
                 found.setdefault(name, []).extend(values)

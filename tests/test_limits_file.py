@@ -419,7 +419,7 @@ _KEYS = sorted(
 def test_any_value_of_any_key_is_read_or_refused(key: str, value: Any) -> None:
     import tomllib
 
-    from unturn.verdicts.keys import Lines, Source
+    from unturn.toml_keys import Lines, Source
     from unturn.verdicts.limit import Limits
     from unturn.verdicts.read_limit import read_limit
 

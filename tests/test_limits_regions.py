@@ -10,7 +10,7 @@ import pytest
 
 from limits_samples import checked, grid, one, written
 from unturn.result import CellBlock, Result
-from unturn.verdicts.region_kinds import REGION_KINDS
+from unturn.written_regions.kinds import REGION_KINDS
 
 N = 4
 A, B, C = (a.ravel() for a in np.meshgrid(*[np.arange(N)] * 3, indexing="ij"))
@@ -134,7 +134,10 @@ def test_cells_of_lower_dimension_do_not_count() -> None:
     tip = {"box": {"from": [8, -1, -1], "to": [11, 1, 1]}}
     assert one(mixed, {**COUNT, "at_most": 1, "at_least": 1}, regions={"it": tip}).state == "met"
     both = {"box": {"from": [-1, -1, -1], "to": [11, 9, 9]}}
-    assert one(mixed, {**COUNT, "at_most": 8, "at_least": 8}, regions={"it": both}).state == "met"
+    found = one(mixed, {**COUNT, "at_most": 8, "at_least": 8}, regions={"it": both})
+    assert found.state == "met"
+    assert "1 cell of it is of lower dimension and not counted" in found.message
+    assert found.details["lower_dimension"] == 1
 
 
 @pytest.mark.derived(

@@ -441,6 +441,16 @@ def test_displacements_are_measured_from_a_step() -> None:
     assert "zero_step 5" in gone.message
 
 
+def test_a_limit_that_is_not_tested_says_why_though_none_counts() -> None:
+    limit = {**PULL, "region": "gone"}
+    found = checked(MESH, written(limit, result={"cells": 9}, regions={"gone": {"tag": "part=9"}})).findings[
+        1
+    ]
+    assert found.state == "error"
+    assert "holds 0 computed cells" in found.message
+    assert "the result is not what it must be: result/cells" in found.message
+
+
 def test_a_measure_that_cannot_be_computed_stops_its_own_limits_only() -> None:
     points = np.array([[0, 0, 0], [1, 0, 0], [1, 1, 0], [0, 1, 0.0]])
     flat = Result(points, (CellBlock("quad", np.array([[0, 1, 2, 3]]), np.array([0])),), {"u": 1e-3 * points})

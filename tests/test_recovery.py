@@ -11,7 +11,7 @@ import meshes
 from recovery_meshes import block, model_of, one_group, smooth
 from unturn.elements import ELEMENTS, FAMILIES, Element, element
 from unturn.errors import UsageError
-from unturn.model import Model, build_model
+from unturn.model import Model, PlaneOptions, build_model
 from unturn.recovery import METHODS, node_shares, recover_gradient, recover_samples, sample_cells
 from unturn.recovery._average import extrapolation
 from unturn.result import CellBlock, Result
@@ -183,6 +183,63 @@ class TestBorders:
         model = model_of(block(ELEMENTS[name], 3), np.zeros((len(block(ELEMENTS[name], 3).points), 3)))
         found = recover_gradient(model, one_group(model))
         assert found.weight.sum() == pytest.approx(1.0, rel=1e-12)
+
+
+class TestFreeFacets:
+    """What the displacement says of the edges of a border."""
+
+    @pytest.mark.derived(
+        "u = xy (xyz) has on every edge of the unit cell a constant derivative, and it is that of the nodes"
+    )
+    @pytest.mark.parametrize("name", ["quad", "hexahedron"])
+    def test_one_bilinear_cell(self, name: str) -> None:
+        mesh = block(ELEMENTS[name], 1)
+        x, y, z = mesh.points.T
+        z = z if mesh.element.dim == 3 else np.ones(len(x))
+        u = np.zeros(mesh.points.shape)
+        u[:, 0] = x * y * z
+        found = recover_gradient(model_of(mesh, u), np.zeros(1, dtype=int))
+        exact = np.stack([y * z, x * z, x * y])[: mesh.element.dim]
+        np.testing.assert_allclose(found.H[0, : mesh.element.dim], exact, atol=1e-14)
+
+    @pytest.mark.derived(
+        "along a straight edge the displacement of its nodes has a mean derivative, and the values have it"
+    )
+    @pytest.mark.parametrize("name", ["triangle", "quad", "tetra", "wedge", "hexahedron", "pyramid"])
+    def test_the_residual_along_the_border_falls(self, name: str) -> None:
+        mesh = block(ELEMENTS[name], 4, 0.2)
+        u = smooth(mesh.points, mesh.element.dim)[0]
+        model = model_of(mesh, u)
+        shares, samples = node_shares(model, one_group(model)), sample_cells(model)
+        ends = np.concatenate([mesh.cells[:, [a, b]] for a, b, _ in mesh.element.edges])
+        x = mesh.points[:, : mesh.element.dim]
+        faces = np.concatenate([x < 1e-9, x > 1 - 1e-9], axis=1)
+        a, b = ends[(faces[ends[:, 0]] & faces[ends[:, 1]]).any(axis=1)].T
+        along = mesh.points[b] - mesh.points[a]
+        left = []
+        for borders in (False, True):
+            H = recover_samples(shares, samples, borders=borders).H
+            residual = u[b] - u[a] - np.einsum("ije,ej->ei", (H[..., a] + H[..., b]) / 2, along)
+            left.append(np.sqrt((residual**2).mean()))
+        assert left[1] < 0.6 * left[0]
+
+    def test_only_borders_change(self) -> None:
+        mesh = block(ELEMENTS["tetra"], 4, 0.2)
+        model = model_of(mesh, smooth(mesh.points, 3)[0])
+        shares, samples = node_shares(model, one_group(model)), sample_cells(model)
+        plain, shifted = (recover_samples(shares, samples, borders=b).H for b in (False, True))
+        border = (np.abs(mesh.points - 0.5) > 0.5 - 1e-9).any(axis=1)
+        np.testing.assert_array_equal(plain[..., ~border], shifted[..., ~border])
+        assert (np.abs(plain - shifted)[..., border].max(axis=(0, 1)) > 1e-6).all()
+
+    @pytest.mark.derived("e_zz = -nu/(1-nu)(e_xx + e_yy) at every node")
+    def test_plane_stress_stays_plane_stress(self) -> None:
+        mesh = block(ELEMENTS["quad"], 4, 0.2)
+        u = smooth(mesh.points, 2)[0]
+        H = recover_gradient(
+            build_model(mesh.result(u=u), plane=PlaneOptions("stress", 0.3)), np.zeros(16, dtype=int)
+        ).H
+        np.testing.assert_allclose(H[2, 2], -0.3 / 0.7 * (H[0, 0] + H[1, 1]), atol=1e-13)
 
 
 class TestCoincident:

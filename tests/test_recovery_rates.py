@@ -10,7 +10,7 @@ from recovery_meshes import block, model_of, one_group, smooth
 from unturn.elements import ELEMENTS
 from unturn.gradient import displacement_gradient
 from unturn.model import build_model
-from unturn.recovery import recover_gradient, sheets
+from unturn.recovery import node_shares, recover_gradient, recover_samples, sample_cells, sheets
 from unturn.result import CellBlock, Result
 
 # Source: Zienkiewicz and Zhu 1992, Int. J. Numer. Meth. Eng. 33, 1331-1364: at corners inside uniformly refined
@@ -73,6 +73,26 @@ def test_irregular_meshes(name: str) -> None:
     assert corners < 0.35 * raw
     assert between < 0.5 * raw
     assert corners < 0.75 * averaged
+
+
+@pytest.mark.derived(
+    "on borders the derivative along the edges is that of the nodes: less error than patches inside alone"
+)
+@pytest.mark.parametrize("move", [0.0, 0.2])
+@pytest.mark.parametrize("name", [*NAMES, "pyramid"])
+def test_borders_are_better_than_the_patches_inside(name: str, move: float) -> None:
+    row = ELEMENTS[name]
+    mesh = block(row, 8 if row.dim == 2 else 3, move)
+    u, exact = smooth(mesh.points, row.dim)
+    model = model_of(mesh, u)
+    shares, samples = node_shares(model, one_group(model)), sample_cells(model)
+    x = mesh.points[:, : row.dim]
+    border = ((x < 1e-9) | (x > 1 - 1e-9)).any(axis=1)
+    off = []
+    for borders in (False, True):
+        H = recover_samples(shares, samples, borders=borders).H
+        off.append(np.sqrt(((H - exact)[..., border] ** 2).sum(axis=(0, 1)).mean()))
+    assert off[1] < 0.85 * off[0]
 
 
 @pytest.mark.derived("borders take the patches inside: their error falls with the size of the cells")

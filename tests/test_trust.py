@@ -9,13 +9,14 @@ import pytest
 
 import meshes
 from recovery_meshes import block, model_of, one_group, smooth
-from solved_problems import BORE, NU, PEAK, cylinder, plate, ring, sphere
+from solved_problems import BORE, NU, PEAK, bent, cavity, cylinder, ellipse, plate, ring, sphere
 from unturn.elements import ELEMENTS, rule_of_degree
 from unturn.fields import compute_fields
 from unturn.gradient import displacement_gradient
 from unturn.model import Model, PlaneOptions, build_model
 from unturn.recovery import recover_gradient
 from unturn.result import CellBlock, Result
+from unturn.surface import free_faces, surface_result
 from unturn.trust import MOST_CHANGE, strain_error, strain_jump
 
 
@@ -144,68 +145,81 @@ class TestEffectivity:
             estimate = strain_error(recover_gradient(model_of(mesh, u), np.zeros(len(mesh.cells), dtype=int)))
             assert estimate.volume.sum() == pytest.approx(1.0)
             ratios.append(np.sqrt(estimate.error_squared.sum()) / true)
-        assert 0.8 < ratios[-1] < 1.2, dict(zip(sizes, ratios))
-        assert abs(ratios[-1] - 1) < 0.05, dict(zip(sizes, ratios))
+        off = np.abs(np.array(ratios) - 1)
+        assert off[-1] < 0.06, dict(zip(sizes, ratios))
+        assert off[-1] < 0.6 * off[0] or off[-1] < 0.02, dict(zip(sizes, ratios))
 
 
 def peaks(
     mesh: meshes.Mesh, u: np.ndarray, plane: PlaneOptions, truth: float
 ) -> tuple[np.ndarray, np.ndarray]:
-    """Largest principal strain over the truth at cells and at nodes, and the plus/minus of both."""
-    model = build_model(mesh.result(u=u), plane=plane if mesh.element.dim == 2 else None)
+    """Largest principal strain over the truth at cells, nodes and free faces, and the plus/minus of the first two."""
+    solid = mesh.element.dim == 3
+    model = build_model(mesh.result(u=u), plane=None if solid else plane)
     at_cells = compute_fields(model, ["principal_strain"]).arrays["principal_strain"][:, 0]
     found = recover_gradient(model, one_group(model))
     at_nodes = np.linalg.eigvalsh(strains(np.moveaxis(found.H, -1, 0)))[:, -1]
     estimate = strain_error(found)
     cell, node = int(at_cells.argmax()), int(at_nodes.argmax())
+    face = np.nan
+    if solid:
+        face = (
+            surface_result(model, free_faces(model)).result.cell_data["surface_principal_strain"][:, 0].max()
+        )
     bounds = np.array([estimate.plus_minus[cell], estimate.plus_minus_nodes[node]])
-    return np.array([at_cells[cell], at_nodes[node]]) / truth, bounds / truth
+    return np.array([at_cells[cell], at_nodes[node], face]) / truth, bounds / truth
 
 
-SIMPLICES = ("triangle", "tetra", "wedge")
+LINEAR_SIMPLICES = ("triangle", "tetra", "wedge")
+PLANE = ("triangle", "quad", "triangle6", "quad8", "quad9")
+SOLIDS = [
+    *((name, n) for name in ("tetra", "hexahedron", "wedge") for n in (3, 4, 6)),
+    *((name, n) for name in ("tetra10", "hexahedron20") for n in (3, 4)),
+]
 CASES = {
-    "plate": [(name, n) for name in ("triangle", "quad", "triangle6", "quad8") for n in (4, 6, 8, 12)],
-    "cylinder": [
-        *((name, n) for name in ("tetra", "hexahedron", "wedge") for n in (3, 4, 6)),
-        *((name, n) for name in ("tetra10", "hexahedron20") for n in (3, 4)),
-    ],
-    "ring": [(name, n) for name in ("triangle", "quad", "triangle6", "quad8", "quad9") for n in (4, 8, 12)],
-    "sphere": [
-        *((name, n) for name in ("tetra", "hexahedron", "wedge") for n in (3, 4, 6)),
-        *((name, n) for name in ("tetra10", "hexahedron20") for n in (3, 4)),
-    ],
+    "plate": [(name, n) for name in PLANE[:4] for n in (4, 6, 8, 12)],
+    "cylinder": SOLIDS,
+    "ring": [(name, n) for name in PLANE for n in (4, 8, 12)],
+    "sphere": SOLIDS,
+    "ellipse": [(name, n) for name in PLANE for n in (4, 8, 12)],
+    "cavity": SOLIDS,
+    "bent": [(name, n) for name in (*PLANE, "tetra", "hexahedron", "wedge") for n in (2, 4)],
 }
+CHORDS = ("cylinder", "ring", "sphere", "cavity")
+"""Problems whose hoop strain is the same all along a circle."""
 
 
 @pytest.mark.source(
-    "Kirsch 1898; Lame: Timoshenko and Goodier, Theory of Elasticity, articles 28, 35, 43, 136"
+    "Kirsch 1898; Inglis 1913; Goodier 1933; Lame: Timoshenko and Goodier, Theory of Elasticity, articles 28, 35, 43, 136"
 )
 @pytest.mark.parametrize("problem", CASES)
 def test_plus_minus_covers_the_peak(problem: str) -> None:
-    """The definitions were chosen on the plate and the cylinder; the ring and the sphere were tried afterwards.
+    """What happens at borders was chosen on the plate and the cylinder; all others were tried afterwards.
 
-    Recovered peaks must be nearer to the truth than those of cells wherever elements have their best points inside. The
-    strain along a border edge of a linear triangle, tetrahedron or wedge is as good as that of the border itself, and its
-    largest may be the nearer one.
+    The peak at nodes or on free faces must be nearer to the truth than that of cells. Only where the hoop strain is the
+    same along a circle the linear triangle, tetrahedron and wedge have it in their edge, as exact as the displacement of
+    its two nodes: no value at nodes can be nearer but by chance, so it must not be much farther.
     """
-    lines, inside, nearer = [], [], []
+    lines, inside, off = [], [], []
     for name, n in CASES[problem]:
         if problem in ("plate", "cylinder"):
             mesh, u = plate(name, n) if problem == "plate" else cylinder(name, n)
             truth = PEAK if problem == "plate" else BORE
         else:
-            mesh, u, truth = ring(name, n) if problem == "ring" else sphere(name, n)
-        plane = PlaneOptions("stress", NU) if problem == "plate" else PlaneOptions("strain")
-        value, bound = peaks(mesh, u, plane, truth)
-        inside.append(np.abs(value - 1) <= bound)
-        if name not in SIMPLICES:
-            nearer.append(abs(value[1] - 1) < abs(value[0] - 1))
+            made = {"ring": ring, "sphere": sphere, "ellipse": ellipse, "cavity": cavity, "bent": bent}
+            mesh, u, truth = made[problem](name, n)
+        stress = problem in ("plate", "ellipse", "bent")
+        value, bound = peaks(mesh, u, PlaneOptions("stress", NU) if stress else PlaneOptions("strain"), truth)
+        inside.append(np.abs(value[:2] - 1) <= bound + 1e-9)
+        tolerance = 0.025 if problem in CHORDS and name in LINEAR_SIMPLICES else 0.0
+        off.append(np.nanmin(np.abs(value[1:] - 1)) - abs(value[0] - 1) - tolerance)
         lines.append(
-            f"{name} {n}: cell {value[0]:.3f} +- {bound[0]:.3f}, node {value[1]:.3f} +- {bound[1]:.3f}"
+            f"{name} {n}: cell {value[0]:.3f} +- {bound[0]:.3f}, node {value[1]:.3f} +- {bound[1]:.3f}, "
+            f"face {value[2]:.3f}"
         )
     table = "\n".join(lines)
     assert (np.mean(inside, axis=0) >= 0.9).all(), table
-    assert all(nearer), table
+    assert max(off) < 0, table
 
 
 @pytest.mark.derived("Weyl 1912 and Cauchy-Schwarz, tried on random tensors")

@@ -46,11 +46,22 @@ class Cutter:
     ----------
     model
         See `build_model`.
+
+    Attributes
+    ----------
+    count
+        Number of its computed cells.
     """
 
     def __init__(self, model: Model) -> None:
         self.model = model
         self._blocks = [b for b in model.blocks if b.row is not None and len(b.active)]
+        self.count = sum(len(b.active) for b in self._blocks)
+
+    @cached_property
+    def everything(self) -> Ints:
+        """File positions of all computed cells, rising."""
+        return np.sort(np.concatenate([b.index for b in self._blocks]))
 
     @cached_property
     def _label(self) -> Ints | None:
@@ -70,7 +81,7 @@ class Cutter:
         rings
             How many.
         """
-        most = _WHOLE * sum(len(b.active) for b in self._blocks)
+        most = _WHOLE * self.count
         inside = np.zeros(self.model.result.n_cells, dtype=bool)
         inside[cells] = True
         for _ in range(rings):
@@ -86,7 +97,7 @@ class Cutter:
                     hit |= touched[column]
                 inside[block.index] |= hit
             if np.count_nonzero(inside) > most:
-                return np.sort(np.concatenate([b.index for b in self._blocks]))
+                return self.everything
         return np.flatnonzero(inside)
 
     def cut(self, cells: Ints) -> Cut:

@@ -15,13 +15,11 @@ from unturn.recovery import Recovered
 Ints = NDArray[np.int64]
 Profile = tuple[tuple[float, ...], tuple[float, ...]]
 
-RINGS = 3
-GROWING = 0.43
-"""Exponent of growth from the third ring to the first above which a peak that does not level off is suspected."""
-STEEP = 0.6
-"""Exponent between the first two rings above which it is suspected in any case."""
-LEVEL = 0.55
-"""Share of the exponent further out below which the growth levels off."""
+RINGS = 2
+GROWING = 0.2
+"""Exponent of growth from the second ring to the first above which a peak keeps growing."""
+DEPARTURE = 0.3
+"""Share of the strain at the node, left over by the linear strain around it, above which a peak is suspected."""
 _MOST = 200
 
 
@@ -36,13 +34,15 @@ class Peak:
     value
         The value there.
     point
-        Position of the node towards which it grows: of the corners of the cell the one with the largest exponent between
-        the first two rings; a singular point lies there or one cell on.
+        Position of the node towards which it grows: of the corners of the cell the one with the largest exponent; a
+        singular point lies there or one cell on.
     distances, means
-        Mean distance from the node and mean value of three rings of cells around it, volume-weighted.
-    growth, growth_outside
-        Exponents a of `value ~ distance^-a` between the first and second, and the second and third ring; NaN where there
-        are not that many rings, or values change sign.
+        Mean distance from the node and mean value of two rings of cells around it, volume-weighted.
+    growth
+        Exponent a of `value ~ distance^-a` between the rings; NaN where there is no second ring, or values change sign.
+    departure
+        How far the recovered strain at the node is from what the strain at the corners around it extrapolates to linearly,
+        as a share of the strain at the node (Frobenius norms); NaN where too few corners are around.
     singular
         Suspected singular.
     """
@@ -53,7 +53,7 @@ class Peak:
     distances: tuple[float, ...]
     means: tuple[float, ...]
     growth: float
-    growth_outside: float
+    departure: float
     singular: bool
 
 
@@ -69,20 +69,22 @@ class Peaks:
 
     Notes
     -----
-    The first ring is the cells that meet at the node, the second those that share a corner with them, and so on. Towards
-    a singular point the strain grows as a power of the distance (Williams 1952, Stress singularities resulting from
-    various boundary conditions in angular corners, J. Appl. Mech. 19, 526-528: exponent 0.46 at a re-entrant right
-    angle, 0.5 at a crack; 1 under a point load in the plane, 2 in space), so the exponent stays the same from ring to
-    ring; towards a smooth peak it falls to zero. A peak is suspected where the exponent from the third ring to the first
-    is above 0.43 and has not fallen, between the first two rings, below 0.55 of that further out; or is above 0.6 between
-    the first two. The bounds were set on solved problems (a hole, a thick cylinder, a re-entrant corner, a point load)
-    from 4 to 16 cells across. A notch that the mesh hardly resolves looks the same: then, too, the value is not to be
-    trusted.
+    The first ring is the cells that meet at the node, the second those that share a corner with them. Towards a singular
+    point the strain grows as a power of the distance (Williams 1952, Stress singularities resulting from various boundary
+    conditions in angular corners, J. Appl. Mech. 19, 526-528: exponent 0.46 at a re-entrant right angle, 0.5 at a crack;
+    1 under a point load in the plane, 2 in space). A power law looks the same on every mesh, so the recovered strain at
+    the node stands out from the strain around it by the same share however fine the mesh is, while a smooth field becomes
+    linear over a few cells: bending across two cells is linear already. A peak is suspected where its value grows from the
+    second ring to the first with an exponent above 0.2 and the strain at the node departs from the linear extrapolation of
+    the corners around it by more than 0.3 of itself. The strain is that of Green and Lagrange, which turning does not
+    change. The bounds were set on solved problems and tried on others: holes, cavities, thick and curved bars, bending,
+    torsion, steps; re-entrant corners, cracks, punches, point loads; 1 to 16 cells across, fourteen elements. A notch that
+    three or four cells hardly resolve looks the same: then, too, the value is not to be trusted.
     """
 
     def __init__(self, recovered: Recovered, centroid: Floats, volume: Floats) -> None:
         shares = recovered.shares
-        self.shares, self.centroid, self.volume = shares, centroid, volume
+        self.recovered, self.shares, self.centroid, self.volume = recovered, shares, centroid, volume
         n_cells, rows, columns = len(volume), [], []
         for block, cells in zip(shares.model.blocks, shares.cells):
             if block.row is None:
@@ -96,6 +98,7 @@ class Peaks:
         self.corners = sparse.coo_array((ones, at), shape=(n_cells, len(shares))).tocsr()
         self.cells = self.corners.T.tocsr()
         self._known: dict[int, _Rings] = {}
+        self._departures: dict[int, float] = {}
 
     def find(self, values: Floats, cells: Ints, smallest: bool = False) -> Peak:
         """Return the largest (smallest) of `values[cells]` as a peak.
@@ -110,19 +113,23 @@ class Peaks:
             Look for the smallest, and for values that fall towards it.
         """
         signed = -values if smallest else values
-        known = cells[np.isfinite(signed[cells]) & (np.diff(self.corners.indptr)[cells] > 0)]
+        known = cells[
+            np.isfinite(signed[cells]) & (self.corners.indptr[cells] < self.corners.indptr[cells + 1])
+        ]
         if not len(known):
             nan = float("nan")
             return Peak(-1, nan, -1, (), (), nan, nan, False)
         cell = int(known[signed[known].argmax()])
         share, (distances, means) = self._towards(signed, cell)
-        near, far = _exponent(distances, means, 0, 1), _exponent(distances, means, 1, 2)
-        growing = _exponent(distances, means, 0, 2) > GROWING and near >= LEVEL * far
-        singular = near > STEEP or growing
+        growth = _exponent(distances, means)
+        if share not in self._departures:
+            self._departures[share] = self._departure(share)
+        departure = self._departures[share]
+        singular = growth > GROWING and departure > DEPARTURE
         sign = -1.0 if smallest else 1.0
         point = int(self.shares.point[share])
         shown = tuple(sign * m for m in means)
-        return Peak(cell, float(values[cell]), point, distances, shown, near, far, bool(singular))
+        return Peak(cell, float(values[cell]), point, distances, shown, growth, departure, bool(singular))
 
     def next_peak(
         self,
@@ -134,7 +141,7 @@ class Peaks:
     ) -> Peak:
         """Return the most extreme peak of `cells` that is not suspected singular, away from `peak`.
 
-        The cells of the first two rings around a suspected peak are left out, and so on with the next while that is
+        The cells of the two rings around a suspected peak are left out, and so on with the next while that is
         suspected too (the nodes along a re-entrant edge), at most 200 times; `cell` is -1 when nothing is left.
         """
         rest = np.zeros(len(values), dtype=bool)
@@ -143,8 +150,7 @@ class Peaks:
             if peak.cell < 0 or not suspected(peak):
                 return peak
             share, _ = self._towards(-values if smallest else values, peak.cell)
-            rings = self._rings(share)
-            rest[rings.cells[: rings.starts[2] if len(rings.starts) > 2 else None]] = False
+            rest[self._rings(share).cells] = False
             rest[peak.cell] = False
             peak = self.find(values, np.flatnonzero(rest), smallest)
         return peak if not suspected(peak) else self.find(values, np.zeros(0, dtype=np.int64), smallest)
@@ -153,7 +159,7 @@ class Peaks:
         """Return the corner of a cell towards which values grow most, and the rings around it."""
         corners = [int(c) for c in np.unique(_entries(self.corners, np.array([cell])))]
         profiles = [self._profile(signed, c) for c in corners]
-        growth = np.nan_to_num([_exponent(*p, 0, 1) for p in profiles], nan=-np.inf)
+        growth = np.nan_to_num([_exponent(*p) for p in profiles], nan=-np.inf)
         best = int(np.argmax(growth >= growth.max() - 1e-6))
         return corners[best], profiles[best]
 
@@ -188,6 +194,37 @@ class Peaks:
         mean = np.add.reduceat(far * volume, starts) / np.add.reduceat(volume, starts)
         return _Rings(cells, starts, volume, tuple(mean.tolist()))
 
+    def _departure(self, share: int) -> float:
+        """Return the share of the strain at a node that the linear strain of the corners around it leaves over.
+
+        The corners are those of the first ring, or of both where the first has too few.
+        """
+        rings = self._rings(share)
+        nodes = np.zeros(0, dtype=np.int64)
+        for ring in np.split(rings.cells, rings.starts[1:]):
+            nodes = np.union1d(nodes, _entries(self.corners, ring))
+            around = nodes[nodes != share]
+            if len(around) > self.shares.dimension[share]:
+                break
+        else:
+            return float("nan")
+        x = (
+            self.shares.model.points[self.shares.point[around]]
+            - self.shares.model.points[self.shares.point[share]]
+        )
+        table = np.column_stack([np.ones(len(around)), x / np.abs(x).max()])
+        here, beside = self._strain(np.array([share]))[0], self._strain(around)
+        extrapolated = np.linalg.lstsq(table, beside)[0][0]
+        size = float(np.linalg.norm(here))
+        return float(np.linalg.norm(here - extrapolated)) / size if size > 0 else float("nan")
+
+    def _strain(self, shares: NDArray[np.integer]) -> Floats:
+        """Return the Green-Lagrange strain `(n, 9)` at shares; zero for the unknown third direction of a plane mesh."""
+        H = np.nan_to_num(np.moveaxis(self.recovered.values[:, :, shares], -1, 0))
+        turned = np.swapaxes(H, 1, 2)
+        strain: Floats = (0.5 * (H + turned + turned @ H)).reshape(-1, 9)
+        return strain
+
     def _profile(self, signed: Floats, share: int) -> Profile:
         rings = self._rings(share)
         values = signed[rings.cells]
@@ -218,7 +255,7 @@ def _entries(table: sparse.csr_array, rows: Ints) -> NDArray[np.integer]:
     return found
 
 
-def _exponent(distances: tuple[float, ...], means: tuple[float, ...], a: int, b: int) -> float:
-    if len(means) <= b or min(means[a], means[b]) <= 0 or distances[b] <= distances[a]:
+def _exponent(distances: tuple[float, ...], means: tuple[float, ...]) -> float:
+    if len(means) < RINGS or min(means) <= 0 or distances[1] <= distances[0]:
         return float("nan")
-    return float(np.log(means[a] / means[b]) / np.log(distances[b] / distances[a]))
+    return float(np.log(means[0] / means[1]) / np.log(distances[1] / distances[0]))

@@ -8,9 +8,9 @@ from dataclasses import dataclass
 from typing import Any, Literal
 
 from unturn import picture_wishes as w
-from unturn import toml_keys as k
+from unturn import toml_kinds as k
 from unturn.errors import UnturnError, UsageError, close_matches
-from unturn.toml_keys import Key, Wrong
+from unturn.toml_kinds import Key, Wrong
 
 
 @dataclass(frozen=True)

@@ -8,7 +8,7 @@ from collections.abc import Callable, Sequence
 from dataclasses import dataclass
 from typing import Any, Literal
 
-from unturn.toml_keys import Kind, Wrong
+from unturn.toml_kinds import Kind, Wrong
 
 Three = tuple[float, float, float]
 

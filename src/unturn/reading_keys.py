@@ -6,16 +6,17 @@ from collections.abc import Mapping
 from dataclasses import replace
 from typing import Any
 
-from unturn import toml_keys as k
+from unturn import toml_kinds as k
 from unturn.pipeline import StrainOptions
-from unturn.toml_keys import Key
+from unturn.toml_kinds import Key
 
 READING_KEYS = (
     Key("displacement_scale", k.POSITIVE, "factor from the displacement's unit to the mesh's", 1.0),
     Key("coordinates", k.choice_kind(("reference", "deformed")), "whether the coordinates are already moved", "reference"),
     Key("plane", k.choice_kind(("strain", "stress", "axisymmetric")), "what a plane mesh assumes of the direction across it"),
     Key("axis", k.choice_kind(("x", "y")), "axis of revolution", "y"),
-    Key("poisson", k.NUMBER, "Poisson's ratio for plane stress, free surfaces and the thickness of surfaces"),
+    Key("poisson", k.NUMBER, "Poisson's ratio for plane stress and the thickness of surfaces"),
+    Key("surface_poisson", k.NUMBER, "Poisson's ratio of solids, for the strain across their free faces"),
     Key("equivalent_poisson", k.NUMBER, "the other form of the equivalent strain"),
     Key("remove_rigid", k.TEXT, "take the rigid motion of these out first", "none"),
     Key("rigid_to", k.TEXT, "take it out of this region instead"),
@@ -28,7 +29,7 @@ READING_KEYS = (
     Key("alive", k.TEXT, "cell array; cells where it is zero do not count"),
     Key("skin", k.BOOLEAN, "also compute cells whose nodes all belong to one larger cell", False),
 )  # fmt: skip
-"""Keys of a table ``[reading]``."""
+"""Keys of ``[reading]``: the options of ``unturn strain`` by the same names."""
 
 DISPLACEMENT_KEY = Key(
     "displacement", k.TEXT, 'the point array that holds the displacement, or three scalars: "ux,uy,uz"'
@@ -43,5 +44,5 @@ FRAME_KEY = Key("frame", k.TEXT, "axes of the components")
 
 def options_of(reading: Mapping[str, Any]) -> tuple[StrainOptions, int | None]:
     """Return the options of a table that was read, and the zero step."""
-    names = [n for n in reading if n != "zero_step"]
+    names = [n for n in reading if n not in ("zero_step", "surface_poisson")]
     return replace(StrainOptions(), **{n: reading[n] for n in names}), reading.get("zero_step")

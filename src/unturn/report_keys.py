@@ -5,8 +5,8 @@ from __future__ import annotations
 from dataclasses import dataclass
 from typing import Literal
 
-from unturn import toml_keys as k
-from unturn.toml_keys import Key
+from unturn import toml_kinds as k
+from unturn.toml_kinds import Key
 
 REPORT_KEYS = (
     Key("number", k.TEXT, "number of the report; stands at the foot of every printed page", ""),

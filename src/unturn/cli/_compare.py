@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import contextlib
+import itertools
 from collections.abc import Callable, Iterator
 from dataclasses import asdict, replace
 from pathlib import Path
@@ -12,7 +13,7 @@ import typer
 
 from unturn.cli import _options as o
 from unturn.cli import _reports as r
-from unturn.cli._shared import CellsOnly, strain_options
+from unturn.cli._shared import strain_options
 from unturn.errors import UsageError
 
 if TYPE_CHECKING:
@@ -30,15 +31,15 @@ Measures = Annotated[
     ),
 ]
 _ONLY_WITH_MEASURES = (
-    "base", "at", "solve", "displacement", "displacement_scale", "equivalent_poisson", "remove_rigid", "rigid_to",
+    "base", "at", "recovery", "solve", "displacement", "displacement_scale", "equivalent_poisson", "remove_rigid", "rigid_to",
     "rigid_axis", "frame", "alive", "skin",
 )  # fmt: skip
 
 
 @strain_options(
-    "measures", "base", "at", "solve", "displacement", "displacement_scale", "coordinates", "plane", "axis", "poisson",
-    "equivalent_poisson", "remove_rigid", "rigid_to", "rigid_axis", "frame", "alive", "skin", "threads",
-    measures=Measures, at=CellsOnly,
+    "measures", "base", "at", "recovery", "solve", "displacement", "displacement_scale", "coordinates", "plane", "axis",
+    "poisson", "equivalent_poisson", "remove_rigid", "rigid_to", "rigid_axis", "frame", "alive", "skin", "threads",
+    measures=Measures,
 )  # fmt: skip
 def compare(
     file: Annotated[Path, typer.Argument(metavar="FILE", help="The result.", readable=False)],
@@ -110,6 +111,7 @@ def compare(
 ) -> None:
     """Hold a result against a reference: what differs, where, and whether by more than is tolerated."""
     from unturn import io
+    from unturn.cli._progress import progress_bar
     from unturn.verdicts.compare import CompareOptions
     from unturn.verdicts.compare_series import compare_opened
     from unturn.verdicts.finding import Report, hashed_file
@@ -131,8 +133,16 @@ def compare(
         outside,
     )
     opened, base = io.open_result(file), io.open_result(reference)
-    with _writer(output, base, chosen) as keep:
-        found = compare_opened(opened, base, chosen, wanted, keep)
+    places.check([*io.files_behind(file), *io.files_behind(reference)], output)
+    n = len(base.steps) if chosen == "all" and base.steps is not None else 1
+    with _writer(output, base, chosen) as keep, progress_bar(file.name, n) as progress:
+        count = itertools.count(1)
+
+        def keep_and_tell(result: Result, time: float | None) -> None:
+            keep(result, time)
+            progress(next(count))
+
+        found = compare_opened(opened, base, chosen, wanted, keep_and_tell)
     hashed = [*hashed_inputs("result", file), *hashed_inputs("reference", reference)]
     hashed += [hashed_file("tolerances", tolerances)] if tolerances is not None else []
     settings = {

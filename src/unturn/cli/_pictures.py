@@ -24,7 +24,7 @@ if TYPE_CHECKING:
 
 def picture_options(command: Callable[..., None]) -> Callable[..., None]:
     """Give a command every option that a picture can be asked for, and the command its `asked`: value by key."""
-    from unturn import toml_keys as k
+    from unturn import toml_kinds as k
     from unturn.picture_keys import NAMES, PICTURE_KEYS
 
     def with_options(**given: Any) -> None:
@@ -178,7 +178,8 @@ class _Job:
         self._check(*targets, *(folder / f"{name}.csv" for name in sorted(plan.csv)))
         opened = self._opened()
         options = replace(plan.options, threads=threads)
-        step = self._step(opened, self._number(opened), plan.pictures, options, plan.zero_step)
+        step = self._step(opened, self._number(opened), plan.pictures, options, plan.zero_step,
+                          surface_poisson=plan.surface_poisson, regions=plan.regions)  # fmt: skip
         drawn = draw_all(step, plan.pictures, targets, plan.title)
         tables = [(d, folder / f"{d.request.name}.csv") for d in drawn if d.request.name in plan.csv]
         for one, place in tables:
@@ -206,7 +207,7 @@ class _Job:
 
     def _step(
         self, opened: ResultFile, number: int, requests: Sequence[PictureRequest], options: StrainOptions,
-        zero_step: int | None,
+        zero_step: int | None, **of_plan: Any,
     ) -> Step:  # fmt: skip
         from unturn.cli._strain import chosen_step
         from unturn.pictures.computing import Step
@@ -222,7 +223,7 @@ class _Job:
             if opened.steps is None:
                 raise UsageError(f"{opened.path} is not a series: --zero-step has nothing to measure from.")
             zero = opened.read(chosen_step(opened, str(zero_step), "--zero-step"))
-        return Step(result, requests, options, zero)
+        return Step(result, requests, options, zero, **of_plan)
 
     def _animate(
         self, opened: ResultFile, request: PictureRequest, options: StrainOptions, zero_step: int | None, target: Path,
@@ -231,7 +232,7 @@ class _Job:
         from functools import lru_cache
 
         from unturn.pictures.animation import draw_series
-        from unturn.pictures.told import SCHEMA, series_data, series_text
+        from unturn.pictures.told import pictures_data, series_data, series_text
         from unturn.pipeline import settled
 
         if opened.steps is None:
@@ -243,20 +244,14 @@ class _Job:
         options = settled(options, opened.read(n - 1))
         step = lru_cache(maxsize=12)(lambda k: self._step(opened, k, [request], options, zero_step))
         drawn = draw_series(step, n, request, target)
-        data = {"schema": SCHEMA, "file": str(self.file), "pictures": [series_data(drawn)], "tables": []}
-        self._say(series_text(drawn), data)
+        self._say(series_text(drawn), pictures_data(str(self.file), [series_data(drawn)], []))
 
     def _tell(self, drawn: Sequence[Drawn], tables: Sequence[Path]) -> None:
-        from unturn.pictures.told import SCHEMA, drawn_data, drawn_text
+        from unturn.pictures.told import drawn_data, drawn_text, pictures_data
 
         lines = [drawn_text(d) for d in drawn] + [f"wrote {place}" for place in tables]
-        data = {
-            "schema": SCHEMA,
-            "file": str(self.file),
-            "pictures": [drawn_data(d) for d in drawn],
-            "tables": [str(t) for t in tables],
-        }
-        self._say("\n".join(lines), data)
+        data = [drawn_data(d) for d in drawn]
+        self._say("\n".join(lines), pictures_data(str(self.file), data, tables))
 
     def _say(self, text: str, data: dict[str, Any]) -> None:
         from unturn.cli._output import write_json

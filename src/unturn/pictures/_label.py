@@ -9,6 +9,7 @@ from unturn.pictures._colours import INK
 from unturn.pictures._marks import Mark
 from unturn.pictures._numbers import written
 from unturn.pictures._page import Page
+from unturn.pictures._scene import Box
 from unturn.pictures._subject import Subject
 from unturn.pictures._values import Values
 
@@ -29,24 +30,29 @@ def words_of(mark: Mark, values: Values, subject: Subject, hidden: str) -> list[
     return lines
 
 
-def add_label(page: Page, mark: Mark, lines: list[str], taken: NDArray[np.bool_]) -> None:
-    """Draw ring, leader and label where the label covers least; its place becomes taken."""
+def add_label(page: Page, mark: Mark, lines: list[str], taken: NDArray[np.bool_], box: Box) -> None:
+    """Draw ring, leader and label where the label covers least of `box`; its place becomes taken."""
     u, height = page.unit, page.size[1]
     letters = [_HEIGHTS[min(k, 1)] * u for k in range(len(lines))]
     wide = max(page.width(t, s, k == 0) for k, (t, s) in enumerate(zip(lines, letters))) + 20 * u
     tall = (34 + 20 * (len(lines) - 1)) * u
-    left, top = free_place(taken, mark.pixel, (wide, tall), 50 * u)
+    corner = (box[0], height - box[3])
+    inside = taken[corner[1] : height - box[2], corner[0] : box[1]]
+    left, top = free_place(
+        inside, (mark.pixel[0] - corner[0], mark.pixel[1] - corner[1]), (wide, tall), 50 * u
+    )
+    left, top = left + corner[0], top + corner[1]
     rim = 8 * u
     taken[
         int(max(0, top - rim)) : int(top + tall + rim), int(max(0, left - rim)) : int(left + wide + rim)
     ] = True
     right, low, high = left + wide, height - top - tall, height - top
     at = np.array([mark.pixel[0], height - mark.pixel[1]])
-    corner = np.array([np.clip(at[0], left, right), np.clip(at[1], low, high)])
-    away = corner - at
+    near = np.array([np.clip(at[0], left, right), np.clip(at[1], low, high)])
+    away = near - at
     start = at + away / (np.linalg.norm(away) or 1.0) * RING * u
     for colour, width in ((_WHITE, 4.5), (INK, 1.5)):
-        page.line(np.array([start, corner]), colour, width * u)
+        page.line(np.array([start, near]), colour, width * u)
     for colour, width in ((_WHITE, 5.5), (INK, 2.2)):
         page.ring(at, RING * u, colour, width * u)
     page.box(left, low, right, high, _WHITE)

@@ -51,7 +51,8 @@ def wanted(name: str, result: Result, options: StrainOptions, at: Place) -> Want
         turned = component and options.frame is not None  # its components have other names
         if component not in (components or ("",)) and not turned:
             listed = ", ".join(f"{array}_{c}" for c in components)
-            raise UsageError(f"{array} has {len(components)} components; a picture shows one: {listed}.")
+            what = f"no component {component!r}" if component else f"{len(components)} components"
+            raise UsageError(f"{array} has {what}; a picture shows one of {listed}.")
         if array == DISPLACEMENT:
             return Wanted("displacement", array, component)
         return Wanted("measure", choose_measures([array], options.base)[0], component)
@@ -95,10 +96,13 @@ def _of_file(name: str, result: Result) -> Wanted:
     )
 
 
-def directions_with(array: str, base: str) -> tuple[str, tuple[str, ...]]:
-    """Return the principal values that go with a measure, and the arrays of their directions."""
+def directions_with(array: str, base: str, at: Place) -> tuple[str, tuple[str, ...]]:
+    """Return the principal values that go with a measure, and the arrays of their directions; two on faces."""
     own = next((b for b in (*BASES, "mechanical") if array.endswith("_" + b)), None)
-    names = ["principal_strain", *(f"principal_direction_{k}" for k in (1, 2, 3))]
+    names = [
+        "principal_strain",
+        *(f"principal_direction_{k}" for k in ((1, 2) if at == "surface" else (1, 2, 3))),
+    ]
     found = [choose_measures([n], base)[0] if own is None else f"{n}_{own}" for n in names]
     return found[0], tuple(found[1:])
 

@@ -192,7 +192,7 @@ class Picture:
         _legend.aside(page, self.frame.box, [", ".join(w) for mark, w in labels if not self.inside(mark)])
         for mark, words in labels:
             if self.inside(mark):
-                add_label(page, mark, words, taken)
+                add_label(page, mark, words, taken, self.frame.box)
         picture = capture(window, over=flat)
         window.Finalize()
         return picture

@@ -100,18 +100,27 @@ def _camera(step: Callable[[int], Step], n_steps: int, request: PictureRequest, 
 
 
 def _write(frames: list[NDArray[np.uint8]], path: Path) -> None:
-    """Write frames with one palette: the colours of values, and greys for lines and letters."""
+    """Write frames with one palette, to the nearest of whose colours each pixel is rounded."""
     from PIL import Image
+    from scipy.spatial import cKDTree
 
-    images = [Image.fromarray(frame) for frame in frames]
-    step = max(1, len(images) // 8)
-    narrow = [np.asarray(image)[::4, ::4] for image in images[::step]]
-    palette = Image.fromarray(np.concatenate(narrow)).quantize(256, dither=Image.Dither.NONE)
-    colours = np.array(palette.getpalette(), dtype=np.int64).reshape(-1, 3)
-    colours[colours.sum(axis=1).argmax()] = 255  # the ground is white, not nearly white
-    palette.putpalette(colours.reshape(-1).tolist())
-    flat = [image.quantize(palette=palette, dither=Image.Dither.NONE) for image in images]
-    times = [_FRAME_MS] * (len(flat) - 1) + [_LAST_MS]
-    flat[0].save(
-        path, format="GIF", save_all=True, append_images=flat[1:], duration=times, loop=0, optimize=False
+    narrow = np.concatenate([frame[::3, ::3] for frame in frames[:: max(1, len(frames) // 8)]])
+    found = Image.fromarray(narrow).quantize(255, dither=Image.Dither.NONE).getpalette() or []
+    palette = np.vstack([np.full(3, 255), np.array(found, dtype=np.int64).reshape(-1, 3)])[:256]
+    tree = cKDTree(palette)
+    images = []
+    for frame in frames:
+        code: NDArray[np.int64] = frame.astype(np.int64) @ np.array([65536, 256, 1])
+        colours, place = np.unique(code, return_inverse=True)
+        nearest = np.asarray(
+            tree.query(np.stack([colours >> 16, colours >> 8 & 255, colours & 255], axis=1))[1]
+        )
+        image = Image.frombytes(
+            "P", frame.shape[1::-1], nearest.astype(np.uint8)[place.reshape(-1)].tobytes()
+        )
+        image.putpalette(palette.reshape(-1).tolist())
+        images.append(image)
+    times = [_FRAME_MS] * (len(images) - 1) + [_LAST_MS]
+    images[0].save(
+        path, format="GIF", save_all=True, append_images=images[1:], duration=times, loop=0, optimize=False
     )

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import replace
 from functools import cached_property
 from typing import Any, Literal
@@ -11,6 +11,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from unturn.errors import UsageError
+from unturn.fields import compute_fields
 from unturn.measures import GEOMETRY, MEASURES
 from unturn.model import Model
 from unturn.numbering import element_numbers, node_numbers
@@ -25,6 +26,9 @@ from unturn.pipeline import Computed, StrainOptions, compute, model_of
 from unturn.regions import named_regions
 from unturn.result import Result
 from unturn.summary import equivalent_form
+from unturn.written_regions.finder import RegionFinder
+from unturn.written_regions.kinds import RegionSpec
+from unturn.written_regions.select import Cells, NoRegion
 
 Floats = NDArray[np.float64]
 LOCATIONS: dict[str, str] = {
@@ -49,6 +53,10 @@ class Step:
         How strain is computed; `measures` and `at` are those of the requests.
     zero
         The step from which displacements are measured.
+    surface_poisson
+        Poisson's ratio of solids, for values on their free faces; None: that of the options.
+    regions
+        Regions that a plan defines.
 
     Raises
     ------
@@ -62,9 +70,12 @@ class Step:
         requests: Sequence[PictureRequest],
         options: StrainOptions | None = None,
         zero: Result | None = None,
+        surface_poisson: float | None = None,
+        regions: Mapping[str, RegionSpec] | None = None,
     ) -> None:
         self.result, self._zero = result, zero
         self.options = options or StrainOptions()
+        self._surface_poisson, self._regions = surface_poisson, regions or {}
         self._percentiles = any(r.range.how == "percentile" for r in requests)
         self._names: dict[Place, dict[str, None]] = {}
         for request in requests:
@@ -82,7 +93,7 @@ class Step:
         what = wanted(request.measure, self.result, self.options, request.at)
         names = [what.array] if what.kind == "measure" else []
         if request.arrows == "principal":
-            values, directions = directions_with(what.array, self.options.base)
+            values, directions = directions_with(what.array, self.options.base, request.at)
             names += [values, *directions]
         elif request.arrows == "rotation":
             names.append(rotation_with(what.array, self.options.base))
@@ -92,6 +103,8 @@ class Step:
         """Return the fields at a place."""
         if at not in self._computed:
             options = replace(self.options, at=at, measures=list(self._names[at]), base="small")
+            if at == "surface" and self._surface_poisson is not None:
+                options = replace(options, poisson=self._surface_poisson)
             found = compute(self.result, options, zero=self._zero, diagnose=self._percentiles)
             found.require_some()
             self._computed[at] = found
@@ -103,6 +116,14 @@ class Step:
         for at in self._names:
             return self.computed(at).fields.model
         return model_of(self.result, self.options)
+
+    @cached_property
+    def _finder(self) -> RegionFinder:
+        """Finds the regions that the plan defines."""
+        fields = compute_fields(self.model, ["element_volume"], diagnose=True, threads=self.options.threads)
+        d = fields.diagnostics
+        assert d is not None
+        return RegionFinder(self._regions, Cells(self.model, d.centroid, d.dimension))
 
     def stage(self, of_faces: bool = False) -> Stage:
         """Return the mesh of the file, or that of the free faces, with its displacement."""
@@ -232,7 +253,13 @@ class Step:
         everything = np.ones(self.result.n_cells, dtype=bool)
 
         def find(name: str) -> NDArray[np.int64]:
-            cells = named_regions(self.model, [name], everything)[0].cells
+            if name in self._regions:
+                try:
+                    cells = np.flatnonzero(self._finder.find(name).inside)
+                except NoRegion as error:
+                    raise UsageError(f"{error}.") from None
+            else:
+                cells = named_regions(self.model, [name], everything)[0].cells
             if not of_faces:
                 return cells
             return np.flatnonzero(np.isin(self.stage(True).result.cell_data["parent_cell"], cells))
@@ -245,8 +272,8 @@ class Step:
         arrays, _ = self._held(request.at)
         front = "surface_" if of_faces else ""
         if request.arrows == "principal":
-            values, names = directions_with(what.array, self.options.base)
-            vectors = np.stack([arrays[front + n] for n in names if front + n in arrays], axis=1)
+            values, names = directions_with(what.array, self.options.base, request.at)
+            vectors = np.stack([arrays[front + n] for n in names], axis=1)
             return Arrows(
                 "principal", vectors, arrays[front + values][:, : vectors.shape[1]], 1e6, "microstrain"
             )

@@ -10,13 +10,16 @@ from pathlib import Path as FilePath
 from typing import Any
 
 from unturn import reading_keys as r
-from unturn import toml_keys as k
+from unturn import toml_kinds as k
 from unturn.errors import UsageError, close_matches
 from unturn.picture_keys import PICTURE_KEYS, PictureRequest
 from unturn.pictures.computing import LOCATIONS
 from unturn.pipeline import StrainOptions
 from unturn.report_keys import REPORT_KEYS, ReportWish
-from unturn.toml_keys import REQUIRED, Key, Lines, Path, Source
+from unturn.toml_keys import Lines, Path, Source, read_table, read_value
+from unturn.toml_kinds import REQUIRED, Key
+from unturn.written_regions.kinds import RegionSpec
+from unturn.written_regions.read import read_regions
 
 SCHEMA = "unturn.plan/1"
 _MOST_BYTES = 10_000_000
@@ -26,6 +29,7 @@ PLAN_KEYS = (
     Key("schema", k.choice_kind((SCHEMA,)), "version of the rules by which the file is read", REQUIRED),
     Key("title", k.TEXT, "what is shown; stands before the title of every picture", ""),
     Key("reading", _ANY, "how the result is read", {}),
+    Key("regions", _ANY, "named regions", {}),
     Key("defaults", _ANY, "what holds for every picture that does not say otherwise", {}),
     Key("report", _ANY, "what `unturn report` says beside the pictures", {}),
     Key("pictures", _ANY, "the pictures", REQUIRED),
@@ -52,8 +56,10 @@ class Plan:
     ----------
     path, title
         Where it came from; what it is for.
-    options, zero_step
+    options, surface_poisson, zero_step
         How results are read.
+    regions
+        Those that the plan defines, by name.
     pictures
         What is asked for, in the order of the file; names are different.
     csv
@@ -65,7 +71,9 @@ class Plan:
     path: str
     title: str
     options: StrainOptions
+    surface_poisson: float | None
     zero_step: int | None
+    regions: Mapping[str, RegionSpec]
     pictures: tuple[PictureRequest, ...]
     csv: frozenset[str] = field(default_factory=frozenset)
     report: ReportWish = field(default_factory=ReportWish)
@@ -100,9 +108,10 @@ def parse_plan(raw: bytes, name: str) -> Plan:
         said = str(error) if not isinstance(error, RecursionError) else "nested too deep"
         raise UsageError(f"{name}: not a TOML file: {said}. Correct it there.") from None
     source = Source(name, Lines(text, data))
-    found = k.read_table(source, (), data, PLAN_KEYS)
-    options, zero_step = r.options_of(k.read_table(source, ("reading",), found["reading"], PLAN_READING_KEYS))
-    k.read_table(source, ("defaults",), found["defaults"], DEFAULT_KEYS)
+    found = read_table(source, (), data, PLAN_KEYS)
+    reading = read_table(source, ("reading",), found["reading"], PLAN_READING_KEYS)
+    options, zero_step = r.options_of(reading)
+    read_table(source, ("defaults",), found["defaults"], DEFAULT_KEYS)
     tables = _tables(source, found["pictures"])
     pictures: list[PictureRequest] = []
     csv: list[str] = []
@@ -117,11 +126,21 @@ def parse_plan(raw: bytes, name: str) -> Plan:
             raise source.error((*place, "name"), f"another picture is called {request.name!r} too.")
         pictures.append(request)
     report = _report(source, found["report"], [p.name for p in pictures])
-    return Plan(name, found["title"], options, zero_step, tuple(pictures), frozenset(csv), report)
+    return Plan(
+        name,
+        found["title"],
+        options,
+        reading["surface_poisson"],
+        zero_step,
+        read_regions(source, found["regions"]),
+        tuple(pictures),
+        frozenset(csv),
+        report,
+    )
 
 
 def _report(source: Source, table: Any, pictures: Sequence[str]) -> ReportWish:
-    wish = ReportWish(**k.read_table(source, ("report",), table, REPORT_KEYS))
+    wish = ReportWish(**read_table(source, ("report",), table, REPORT_KEYS))
     for name in wish.side_by_side:
         if name not in pictures:
             raise source.error(
@@ -134,12 +153,12 @@ def _report(source: Source, table: Any, pictures: Sequence[str]) -> ReportWish:
 def _picture(source: Source, place: Path, table: Any, defaults: Mapping[str, Any]) -> dict[str, Any]:
     """Return the keys of a picture; what it does not say is that of the defaults."""
     keys = [NAME_KEY, *DEFAULT_KEYS]
-    read = k.read_table(source, place, table, keys)
+    read = read_table(source, place, table, keys)
     if not re.fullmatch(r"[\w.-]{1,100}", read["name"]):
         raise source.error((*place, "name"), f"expected {NAME_KEY.meaning}; found {k.shown(read['name'])}.")
     for key in DEFAULT_KEYS:
         if key.name in defaults and key.name not in table:
-            read[key.name] = k.read_value(source, ("defaults", key.name), defaults[key.name], key.kind)
+            read[key.name] = read_value(source, ("defaults", key.name), defaults[key.name], key.kind)
     return read
 
 

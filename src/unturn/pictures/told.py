@@ -3,11 +3,13 @@
 from __future__ import annotations
 
 import csv
+from collections.abc import Sequence
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 import numpy as np
 
+from unturn._version import __version__
 from unturn.io._atomic import replacing
 from unturn.pictures._numbers import written
 
@@ -50,6 +52,17 @@ def _mark_text(drawn: Drawn, mark: Mark) -> str:
         where = f"{of} {subject.numbers[mark.position]} ({where})"
     value = f"{written(mark.value * values.scale, 4)} {values.short_unit}".rstrip()
     return f"{mark.kind} {value} at {where}" + ("" if mark.visible else ", not seen")
+
+
+def pictures_data(file: str, pictures: Sequence[dict[str, Any]], tables: Sequence[Path]) -> dict[str, Any]:
+    """Return what was drawn of a file as data: what `drawn_data` or `series_data` say of each picture."""
+    return {
+        "schema": SCHEMA,
+        "tool": {"name": "unturn", "version": __version__},
+        "file": file,
+        "pictures": list(pictures),
+        "tables": [str(table) for table in tables],
+    }
 
 
 def drawn_data(drawn: Drawn) -> dict[str, Any]:

@@ -151,15 +151,22 @@ def recover_gradient(
     if method not in METHODS:
         raise UsageError(f"method {method!r} is not known; use one of {', '.join(METHODS)}.")
     shares = node_shares(model, groups)
-    return recover_samples(shares, sample_cells(model, threads), method, threads)
+    return recover_samples(shares, sample_cells(model, threads), method, threads, borders=True)
 
 
 def recover_samples(
-    shares: NodeShares, samples: CellSamples, method: Method = "patch", threads: int | None = None
+    shares: NodeShares,
+    samples: CellSamples,
+    method: Method = "patch",
+    threads: int | None = None,
+    borders: bool = False,
 ) -> Recovered:
-    """Return the values at nodes of gradients that were sampled in the cells; see `recover_gradient`."""
+    """Return the values at nodes of gradients that were sampled in the cells; see `recover_gradient`.
+
+    With `borders` the samples are those of the model's displacement, which then has its say at borders.
+    """
     if method == "patch":
-        values, how = by_patches(shares, samples, threads)
+        values, how = by_patches(shares, samples, borders, threads)
     else:
         met = meetings(shares, samples)
         values, how = np.full((9, len(shares)), np.nan), np.zeros(len(shares), dtype=np.int8)

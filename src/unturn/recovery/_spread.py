@@ -12,6 +12,7 @@ from unturn.elements import ELEMENTS, Element
 from unturn.gradient import over_chunks
 from unturn.kinematics._symmetric import Floats
 from unturn.recovery._average import averages
+from unturn.recovery._border import border_shift
 from unturn.recovery._nodes import NodeShares
 from unturn.recovery._patch import Patches, fit_patches
 from unturn.recovery._samples import CellSamples, Meetings, meetings
@@ -30,9 +31,12 @@ Links = sparse.csr_array
 
 
 def by_patches(
-    shares: NodeShares, samples: CellSamples, threads: int | None
+    shares: NodeShares, samples: CellSamples, borders: bool, threads: int | None
 ) -> tuple[Floats, NDArray[np.int8]]:
-    """Return the value `(9, n_shares)` at each share, and how it came about: 0 as meant, else 1 + its fallback."""
+    """Return the value `(9, n_shares)` at each share, and how it came about: 0 as meant, else 1 + its fallback.
+
+    With `borders` the values there are shifted to what the displacement says of the edges of free facets.
+    """
     corners = meetings(shares, samples, corners_only=True)
     field = _Field(shares, samples, _fit_all(shares, samples, corners, threads), threads)
     no_corner = np.ones(len(shares), dtype=bool)
@@ -51,6 +55,10 @@ def by_patches(
     if len(rest.share):
         field.values[:, rest.share] = averages(shares, samples, rest, True, threads)
         field.how[rest.share] = _AVERAGE
+    if borders:
+        shift = border_shift(shares, samples, field.values, threads)
+        corners_of = np.maximum(np.diff(between.indptr), 1)
+        field.values += shift + (between @ shift.T).T / corners_of
     return field.values, field.how
 
 

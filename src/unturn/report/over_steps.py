@@ -36,7 +36,7 @@ def over_steps(opened: ResultFile, plan: Plan, summary: Summary, threads: int | 
     each: list[dict[tuple[str, str, Which], Extreme]] = []
     for number in range(len(opened.steps)):
         computed = stepwise.compute(opened.read(number), diagnose=True)
-        found = extremes_of(summarise(computed, summary_options(plan, full=False), threads))
+        found = extremes_of(summarise(computed, summary_options(plan, computed, full=False), threads))
         each.append({(e.region, e.array, e.which): e for e in found})
     curves = [
         Curve(*_named(key, each), tuple(step[key].value if key in step else float("nan") for step in each))

@@ -12,10 +12,10 @@ from numpy.typing import NDArray
 from unturn.elements import Element
 from unturn.gradient import chunk_ranges, over_chunks
 from unturn.model import Model, ModelBlock, _inside_one
+from unturn.node_sets import Keys, random_numbers, set_keys, singles
 from unturn.regions import Region, find_regions, merge_coincident
 
 Ints = NDArray[np.int64]
-Keys = NDArray[np.uint64]
 
 # Cells left out for these reasons are there all the same: what they touch is inside the body.
 _STILL_THERE = ("ghost", "duplicate")
@@ -101,61 +101,23 @@ def cells_there(model: Model) -> NDArray[np.bool_]:
 def group_codes(model: Model, groups: Sequence[Region] | None, there: NDArray[np.bool_]) -> Keys:
     """Return for each cell a number that tells in which groups it is, `(n_cells,)`."""
     regions = find_regions(model, there) if groups is None else groups
-    numbers = _random(len(regions), seed=1)
+    numbers = random_numbers(len(regions), seed=1)
     code = np.zeros(model.result.n_cells, dtype=np.uint64)
     for number, region in zip(numbers, regions):
         code[region.cells] += number
     return code
 
 
-def _random(n: int, seed: int) -> Keys:
-    return np.random.default_rng(seed).integers(1, 2**64 - 1, size=n, dtype=np.uint64)
-
-
-def _set_keys(nodes: Ints, table: Keys) -> tuple[Keys, NDArray[np.int8]]:
-    """Return a key of each set of nodes and how many different ones it has, from `(k, m)` nodes.
-
-    The key is the sum of the random 64-bit numbers that `table` gives to the different nodes. Two sets get the same key
-    by chance once in 2^64 pairs; a free face is lost so with a probability of faces times free faces over 2^64: 2e-8 for a
-    million hexahedra.
-    """
-    values = table[nodes]
-    key = values[0].copy()
-    count = np.ones(nodes.shape[1], dtype=np.int8)
-    for j in range(1, len(nodes)):
-        fresh = nodes[j] != nodes[0]
-        for i in range(1, j):
-            fresh &= nodes[j] != nodes[i]
-        key += values[j] * fresh
-        count += fresh
-    return key, count
-
-
-def _singles(keys: Keys) -> Ints:
-    """Return the positions, ascending, of the keys that occur once.
-
-    Most keys are pairs. In a table where every key is combined with what is there by exclusive or, a pair leaves nothing:
-    only keys that meet something in their place are sorted.
-    """
-    bits = max(4, len(keys).bit_length())
-    place = (keys >> np.uint64(64 - bits)).view(np.int64)
-    table = np.zeros(1 << bits, dtype=np.uint64)
-    np.bitwise_xor.at(table, place, keys)
-    maybe = np.flatnonzero(table[place])
-    _, first, count = np.unique(keys[maybe], return_index=True, return_counts=True)
-    return np.sort(maybe[first[count == 1]])
-
-
 def without_partner(
     model: Model, solids: Sequence[Solid], code: Keys | None, threads: int | None
 ) -> Candidates:
     """Return the faces whose corners no other face has, node number by node number."""
-    table = _random(model.result.n_points, seed=0)
+    table = random_numbers(model.result.n_points, seed=0)
     starts = np.concatenate([[0], np.cumsum([s.n_faces for s in solids])])
     keys = np.empty(starts[-1], dtype=np.uint64)
     for solid, start, stop in zip(solids, starts, starts[1:]):
         _fill_keys(solid, table, code, keys[start:stop].reshape(-1, len(solid.there)), threads)
-    ids = _singles(keys)
+    ids = singles(keys)
     parts = []
     for s, (solid, start, stop) in enumerate(zip(solids, starts, starts[1:])):
         if start == stop:
@@ -178,7 +140,7 @@ def _fill_keys(solid: Solid, table: Keys, code: Keys | None, out: Keys, threads:
     def work(start: int, stop: int) -> None:
         nodes = np.ascontiguousarray(solid.connectivity(start, stop)[:, :n_corners].T)
         for f, corners in enumerate(lists):
-            out[f, start:stop] = _set_keys(nodes[corners], table)[0]
+            out[f, start:stop] = set_keys(nodes[corners], table)[0]
         if code is not None:
             out[:, start:stop] += code[solid.block.cells.index[solid.there[start:stop]]]
 
@@ -195,11 +157,11 @@ def after_merging(
         label = _same_motion(label, model.displacement.values[used])
     merged = int((label != np.arange(len(used))).sum())
     corners = label[where.reshape(candidates.corners.shape)]
-    keys, count = _set_keys(np.ascontiguousarray(corners.T), _random(len(used), seed=2))
+    keys, count = set_keys(np.ascontiguousarray(corners.T), random_numbers(len(used), seed=2))
     keep = count > 2
     if merged:
         alone = np.zeros(len(keep), dtype=bool)
-        alone[_singles(keys if code is None else keys + code[candidates.parent])] = True
+        alone[singles(keys if code is None else keys + code[candidates.parent])] = True
         keep &= alone
     merged_nodes = Candidates(
         candidates.solid,
@@ -225,9 +187,11 @@ def _same_motion(label: Ints, displacement: NDArray[np.float64]) -> Ints:
 
 def mark_between(model: Model, candidates: Candidates) -> Candidates:
     """Return the faces, those marked that another cell has too: they were kept because its group is another."""
-    keys, _ = _set_keys(np.ascontiguousarray(candidates.corners.T), _random(model.result.n_points, seed=0))
+    keys, _ = set_keys(
+        np.ascontiguousarray(candidates.corners.T), random_numbers(model.result.n_points, seed=0)
+    )
     between = np.ones(len(keys), dtype=bool)
-    between[_singles(keys)] = False
+    between[singles(keys)] = False
     return replace(candidates, between=between)
 
 

@@ -19,9 +19,9 @@ from unturn.verdicts.limit import Limit, Limits
 from unturn.verdicts.measured import Measured, measure_all
 from unturn.verdicts.over_steps import OverSteps
 from unturn.verdicts.preconditions import PRECONDITIONS, Evidence
-from unturn.verdicts.region_select import NoRegion
 from unturn.verdicts.statistic import STATISTICS
 from unturn.verdicts.step import Step
+from unturn.written_regions.select import NoRegion
 
 
 class Opened(Protocol):

@@ -14,7 +14,8 @@ from unturn.measures import choose_measures
 from unturn.model import PlaneOptions
 from unturn.pipeline import StrainOptions, model_of
 from unturn.result import Array, Result
-from unturn.verdicts.compare_arrays import data_of, is_direction, measure_pairs, stored_pairs
+from unturn.verdicts.compare_arrays import data_of, stored_pairs
+from unturn.verdicts.compare_measures import measure_pairs
 from unturn.verdicts.compare_words import (
     counted_finding,
     coverage_finding,
@@ -25,6 +26,7 @@ from unturn.verdicts.compare_words import (
     regions_findings,
 )
 from unturn.verdicts.differences import ArrayDifference, Pair, Where
+from unturn.verdicts.directions import is_direction
 from unturn.verdicts.finding import Finding
 from unturn.verdicts.mesh_match import match
 from unturn.verdicts.mesh_view import MeshView, view

@@ -33,7 +33,7 @@ def state_of(limit: Limit, m: Measured) -> tuple[State, str]:
     if m.error or math.isnan(m.value):
         return "error", m.error or "it has no value"
     if _room(m) < 0:
-        return "exceeded", ""
+        return "exceeded", "; ".join(m.doubts)
     doubts = list(m.doubts)
     reach = 0.0 if math.isnan(m.plus_minus) or "plus-minus" in limit.accept else m.plus_minus
     if _reaches(m, reach):
@@ -86,9 +86,10 @@ def conclude(
     (state, message), m = states[worst], measured[worst]
     errors = [k for k, (s, _) in enumerate(states) if s == "error"]
     if state == "exceeded" and errors:
-        message = f"not tested in step {measured[errors[0]].step}: {states[errors[0]][1]}"
+        untested = f"not tested in step {measured[errors[0]].step}: {states[errors[0]][1]}"
+        message = "; ".join(t for t in (message, untested) if t)
     if stopped and state != "exceeded":
-        state, message = "error", stopped
+        state, message = "error", "; ".join(t for t in (message, stopped) if t)
     details = _details(limit, m, states, measured)
     if limit.waiver is not None and state in ("exceeded", "undecided"):
         until = f"until {limit.waiver.expires} by {limit.waiver.owner}: {limit.waiver.reason}"
@@ -97,12 +98,17 @@ def conclude(
         elif not errors and not stopped:
             message = "; ".join(t for t in (state, message, f"waived {until}") if t)
             details["waived"], state = state, "waived"
-    n = m.not_computed
-    missed = (
-        f"{n} cell{'s' * (n != 1)} of {limit.region} {'is' if n == 1 else 'are'} not computed" if n else ""
-    )
-    said = (message, m.note, _left_out_words(limit, m), missed)
+    said = (message, m.note, _left_out_words(limit, m), *_passed_over(limit, m))
     return _finding(limit, group, m, state, "; ".join(t for t in said if t), details)
+
+
+def _passed_over(limit: Limit, m: Measured) -> list[str]:
+    """Return sentences on cells of the region that do not count."""
+    said = []
+    for n, why in ((m.not_computed, "not computed"), (m.lower, "of lower dimension and not counted")):
+        if n:
+            said.append(f"{n} cell{'s' * (n != 1)} of {limit.region} {'is' if n == 1 else 'are'} {why}")
+    return said
 
 
 def _left_out_words(limit: Limit, m: Measured) -> str:
@@ -136,10 +142,12 @@ def _details(
         "without_value": m.missing,
         "left_out": m.left_out,
         "not_computed": m.not_computed,
+        "lower_dimension": m.lower,
         "steps": [
             {"step": k.step, "time": k.time, "state": s, "value": _in_unit(limit, k)}
             for k, (s, _) in zip(measured, states)
         ],
+        "accept": sorted(limit.accept),
         "reason": limit.reason,
         "source": limit.source,
         "waiver": None

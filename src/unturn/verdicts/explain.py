@@ -10,10 +10,10 @@ from unturn.summary import CAUTION, equivalent_form
 from unturn.verdicts.conclude import title_of
 from unturn.verdicts.limit import Limit, Limits, Waiver
 from unturn.verdicts.preconditions import PRECONDITIONS
-from unturn.verdicts.region_kinds import region_words
 from unturn.verdicts.statistic import STATISTICS
 from unturn.verdicts.units import unit_words
 from unturn.verdicts.wording import clean, number
+from unturn.written_regions.kinds import region_words
 
 _LINE = 110
 _ALL_DIGITS = 17

@@ -8,8 +8,8 @@ from dataclasses import dataclass, field
 from typing import Any, Literal
 
 from unturn.pipeline import StrainOptions
-from unturn.verdicts.region_kinds import RegionSpec
 from unturn.verdicts.units import Unit
+from unturn.written_regions.kinds import RegionSpec
 
 At = Literal["centroid", "mean", "nodes", "surface"]
 Accepted = Literal["plus-minus", "singular", "mid-surface", "turning"]

@@ -2,12 +2,12 @@
 
 from __future__ import annotations
 
+from unturn import toml_kinds as k
 from unturn.kinematics._finite import BASES
-from unturn.verdicts import kinds as k
-from unturn.verdicts.kinds import REQUIRED, Key
-from unturn.verdicts.region_kinds import WHOLE
+from unturn.toml_kinds import REQUIRED, Key
 from unturn.verdicts.statistic import STATISTICS
 from unturn.verdicts.units import UNITS
+from unturn.written_regions.kinds import WHOLE
 
 BASE_NAMES = ("small", *(b.replace("_", "-") for b in BASES))
 PLACES = ("centroid", "mean", "nodes", "surface")

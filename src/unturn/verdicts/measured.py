@@ -16,10 +16,10 @@ from unturn.verdicts.certainty import Ask, Certainty, certainties
 from unturn.verdicts.columns import NoValues, Selection
 from unturn.verdicts.finding import Place
 from unturn.verdicts.limit import Limit, Quantity
-from unturn.verdicts.region_select import NoRegion
 from unturn.verdicts.statistic import STATISTICS, Got, Sample
 from unturn.verdicts.step import Step
 from unturn.verdicts.units import BoundAt
+from unturn.written_regions.select import NoRegion
 
 
 @dataclass(frozen=True)
@@ -46,8 +46,8 @@ class Measured:
         What else there is to say of it.
     left_out
         What the region names and leaves out.
-    not_computed
-        Cells of the region that are not computed.
+    not_computed, lower
+        Cells of the region that are not computed, and that are of lower dimension than others.
     """
 
     step: int | None
@@ -64,6 +64,7 @@ class Measured:
     note: str = ""
     left_out: dict[str, Any] | None = None
     not_computed: int = 0
+    lower: int = 0
 
 
 @dataclass(frozen=True, eq=False)
@@ -198,6 +199,7 @@ def _finish(step: Step, p: _Pending, certain: list[Certainty]) -> Measured:
     doubts += _turning(step, limit)
     when: Place = {"step": step.shown, "time": step.time}
     where = step.place(p.selection.column, int(p.selection.index[p.got.ends[0][0]])) if p.got.ends else when
+    region = step.finder.find(limit.region)
     return Measured(
         step.shown,
         step.time,
@@ -210,7 +212,8 @@ def _finish(step: Step, p: _Pending, certain: list[Certainty]) -> Measured:
         missing=p.selection.missing,
         doubts=tuple(doubts),
         left_out=p.left_out,
-        not_computed=int(step.finder.find(limit.region).not_computed.sum()),
+        not_computed=int(region.not_computed.sum()),
+        lower=int(region.lower.sum()),
     )
 
 

@@ -8,9 +8,9 @@ from dataclasses import dataclass, field
 from pathlib import Path
 from typing import Any
 
+from unturn import toml_kinds as k
 from unturn.io import files_behind
 from unturn.verdict import Level, Verdict
-from unturn.verdicts import kinds as k
 from unturn.verdicts.finding import Bound
 
 _LEVELS: tuple[Level, ...] = ("no strain", "holds", "marginal", "does not hold", "not judged")

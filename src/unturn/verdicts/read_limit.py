@@ -11,13 +11,14 @@ from unturn.kinematics._finite import BASES
 from unturn.measures import MEASURES, SURFACE_AXES, choose_measures
 from unturn.pipeline import StrainOptions
 from unturn.surface import SURFACE_MEASURES, choose_surface_measures
+from unturn.toml_keys import Path, Source, read_table
 from unturn.verdicts.columns import MAGNITUDE
-from unturn.verdicts.keys import Path, Source, read_table
 from unturn.verdicts.limit import At, Limit, Quantity, Waiver
 from unturn.verdicts.limit_keys import LIMIT_KEYS, WAIVER_KEYS
-from unturn.verdicts.region_kinds import WHOLE, RegionSpec
 from unturn.verdicts.statistic import STATISTICS, Statistic
 from unturn.verdicts.units import OF_MEASURE, UNITS, Unit
+from unturn.written_regions.kinds import RegionSpec
+from unturn.written_regions.read import check_names
 
 _VECTOR = 3
 
@@ -270,18 +271,6 @@ class _Reader:
             raise self.error(
                 "at_most" if high is not None else "at_least",
                 "bounds and levels must rise in the order at_least, warn_below, warn_above, at_most.",
-            )
-
-
-def check_names(source: Source, path: Path, names: Iterable[str], regions: Mapping[str, RegionSpec]) -> None:
-    """Refuse names of regions that are not defined in the file."""
-    known = [*regions, WHOLE]
-    for name in names:
-        if name not in known:
-            raise source.error(
-                path,
-                f"no region is called {name!r}.{close_matches(name, known)} Regions: {', '.join(known)}; others are "
-                f"defined in [regions.NAME].",
             )
 
 

@@ -2,22 +2,20 @@
 
 from __future__ import annotations
 
-import re
 import tomllib
-from collections.abc import Mapping
 from dataclasses import replace
 from pathlib import Path as FilePath
 from typing import Any
 
+from unturn import toml_kinds as k
 from unturn.errors import UsageError
-from unturn.pipeline import StrainOptions
-from unturn.verdicts import kinds as k
-from unturn.verdicts.keys import Lines, Path, Source, key_path, read_table
-from unturn.verdicts.kinds import REQUIRED, Key
+from unturn.reading_keys import READING_KEYS, options_of
+from unturn.toml_keys import Lines, Path, Source, key_path, read_table
+from unturn.toml_kinds import REQUIRED, Key
 from unturn.verdicts.limit import Limits
 from unturn.verdicts.preconditions import PRECONDITIONS
-from unturn.verdicts.read_limit import check_names, read_limit
-from unturn.verdicts.region_kinds import REFERENCES, REGION_KINDS, WHOLE, RegionSpec
+from unturn.verdicts.read_limit import read_limit
+from unturn.written_regions.read import check_names, read_regions
 
 SCHEMA = "unturn.limits/1"
 _MOST_BYTES = 10_000_000
@@ -41,35 +39,6 @@ RESULT_KEYS = (
     *(Key(row.key, row.kind, row.meaning) for row in PRECONDITIONS.values()),
 )  # fmt: skip
 """Keys of ``[result]``."""
-
-READING_KEYS = (
-    Key("displacement_scale", k.POSITIVE, "factor from the displacement's unit to the mesh's", 1.0),
-    Key("coordinates", k.choice_kind(("reference", "deformed")), "whether the coordinates are already moved", "reference"),
-    Key("plane", k.choice_kind(("strain", "stress", "axisymmetric")), "what a plane mesh assumes of the direction across it"),
-    Key("axis", k.choice_kind(("x", "y")), "axis of revolution", "y"),
-    Key("poisson", k.NUMBER, "Poisson's ratio for plane stress and the thickness of surfaces"),
-    Key("surface_poisson", k.NUMBER, "Poisson's ratio of solids, for the strain across their free faces"),
-    Key("equivalent_poisson", k.NUMBER, "the other form of the equivalent strain"),
-    Key("remove_rigid", k.TEXT, "take the rigid motion of these out first", "none"),
-    Key("rigid_to", k.TEXT, "take it out of this region instead"),
-    Key("rigid_axis", k.TEXT, "a known axis instead of the full fit"),
-    Key("thermal_expansion", k.either_kind(k.NUMBER, k.TEXT), "free thermal strain to take out"),
-    Key("temperature", k.TEXT, "array of temperature"),
-    Key("reference_temperature", k.NUMBER, "temperature without thermal strain"),
-    Key("recovery", k.choice_kind(("patch", "extrapolate", "average")), "how the gradient gets to nodes", "patch"),
-    Key("zero_step", k.POSITION, "step from which displacements are measured"),
-    Key("alive", k.TEXT, "cell array; cells where it is zero do not count"),
-    Key("skin", k.BOOLEAN, "also compute cells whose nodes all belong to one larger cell", False),
-)  # fmt: skip
-"""Keys of ``[reading]``: the options of ``unturn strain`` by the same names."""
-
-REGION_KEYS = (
-    *(Key(row.key, row.kind, row.meaning) for row in REGION_KINDS.values()),
-    Key(
-        "cells_at_least", k.COUNT, "smallest number of computed cells; with fewer the limit is not tested", 1
-    ),
-)
-"""Keys of ``[regions.NAME]``."""
 
 
 def read_limits(path: FilePath | str) -> Limits:
@@ -104,13 +73,16 @@ def parse_limits(raw: bytes, name: str) -> Limits:
         data = tomllib.loads(text)
     except (ValueError, RecursionError) as error:  # also of numbers with thousands of digits
         said = str(error) if not isinstance(error, RecursionError) else "nested too deep"
-        raise UsageError(f"{name}: not a TOML file: {said}. Correct it there.") from None
+        raise UsageError(
+            f"{name}: not a TOML file: {said}. Correct it there; the limits file comes last."
+        ) from None
     source = Source(name, Lines(text, data))
     found = read_table(source, (), data, FILE_KEYS)
     required = read_table(source, ("result",), found["result"], RESULT_KEYS)
     reading = read_table(source, ("reading",), found["reading"], READING_KEYS)
-    options = _options(required, reading)
-    regions = _regions(source, found["regions"])
+    options, _ = options_of(reading)
+    options = replace(options, displacement=required["displacement"], solve=required["solve"])
+    regions = read_regions(source, found["regions"])
     written = _tables(source, found["limits"])
     if len(written) != found["number_of_limits"]:
         raise source.error(
@@ -160,49 +132,3 @@ def _tables(source: Source, tables: Any) -> list[Any]:
             ("limits",), "there is no limit: nothing would be tested, so nothing could be met."
         )
     return tables
-
-
-def _options(required: Mapping[str, Any], reading: Mapping[str, Any]) -> StrainOptions:
-    names = [n for n in reading if n not in ("zero_step", "surface_poisson")]
-    options = replace(StrainOptions(), **{n: reading[n] for n in names})
-    return replace(options, displacement=required["displacement"], solve=required["solve"])
-
-
-def _regions(source: Source, tables: Any) -> dict[str, RegionSpec]:
-    if not isinstance(tables, dict):
-        raise source.error(("regions",), "regions are written as tables [regions.NAME].")
-    found = {}
-    for name, table in tables.items():
-        place: Path = ("regions", name)
-        if name == WHOLE or not re.fullmatch(r"[\w.-]+", name):
-            raise source.error(
-                place, "a region's name has letters, digits, '_', '.' and '-' only, and is not 'whole'."
-            )
-        read = read_table(source, place, table, REGION_KEYS)
-        conditions = {key: read[key] for key in REGION_KINDS if read[key] is not None}
-        if not conditions:
-            raise source.error(place, f"the region has no condition. Give one of {', '.join(REGION_KINDS)}.")
-        found[name] = RegionSpec(name, conditions, read["cells_at_least"])
-    for spec in found.values():
-        _check_references(source, spec, found)
-    return found
-
-
-def _check_references(source: Source, spec: RegionSpec, regions: Mapping[str, RegionSpec]) -> None:
-    """Refuse names of regions that do not exist, and regions that name themselves in the end."""
-    for key in REFERENCES:
-        check_names(source, ("regions", spec.name, key), spec.conditions.get(key, ()), regions)
-    reached: list[str] = []
-    waiting = [spec.name]
-    while waiting:
-        current = regions.get(waiting.pop())
-        for name in () if current is None else _named(current):
-            if name == spec.name:
-                raise source.error(("regions", spec.name), "the region is made of itself in the end.")
-            if name not in reached:
-                reached.append(name)
-                waiting.append(name)
-
-
-def _named(spec: RegionSpec) -> list[str]:
-    return [name for key in REFERENCES for name in spec.conditions.get(key, ())]

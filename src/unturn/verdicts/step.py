@@ -20,9 +20,9 @@ from unturn.result import Result
 from unturn.verdicts.columns import Column, Ints, NoValues, Selection, one_component
 from unturn.verdicts.finding import Place
 from unturn.verdicts.limit import Quantity
-from unturn.verdicts.region_select import Mask
 from unturn.verdicts.step_fields import StepFields, group_of
 from unturn.verdicts.wording import place_text
+from unturn.written_regions.select import Mask
 
 
 class Step(StepFields):

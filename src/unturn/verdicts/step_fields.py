@@ -19,8 +19,8 @@ from unturn.rigid_parts import computed_cells
 from unturn.surface import SURFACE_MEASURES
 from unturn.verdict import Verdict, judge
 from unturn.verdicts.limit import At, Limits, Quantity
-from unturn.verdicts.region_finder import RegionFinder
-from unturn.verdicts.region_select import Cells, Mask
+from unturn.written_regions.finder import RegionFinder
+from unturn.written_regions.select import Cells, Mask
 
 Group = tuple[At, str | None, str]
 

@@ -8,10 +8,10 @@ from dataclasses import dataclass, field, replace
 from pathlib import Path
 from typing import Any, Literal, get_args
 
+from unturn import toml_kinds as k
 from unturn.errors import UsageError, close_matches
-from unturn.verdicts import kinds as k
-from unturn.verdicts.keys import Lines, Source, read_table
-from unturn.verdicts.kinds import REQUIRED, Key, Wrong
+from unturn.toml_keys import Lines, Source, read_table
+from unturn.toml_kinds import REQUIRED, Key, Wrong
 
 SCHEMA = "unturn.tolerances/1"
 By = Literal["components", "norm"]

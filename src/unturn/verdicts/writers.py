@@ -245,7 +245,7 @@ def _marked(text: str) -> str:
 
 CSV_COLUMNS = (
     "group", "id", "title", "state", "value", "low", "high", "margin", "plus_minus", "unit", "cell", "element", "point",
-    "node", "x", "y", "z", "step", "time", "message",
+    "node", "x", "y", "z", "step", "time", "message", "sha256",
 )  # fmt: skip
 
 
@@ -258,9 +258,15 @@ def csv_report(report: Report) -> str:
         data = _finding_data(f)
         place = data["place"]
         x, y, z = place["at"] or (None, None, None)
-        values = {**data, **place, "x": x, "y": y, "z": z}
+        values = {**data, **place, "x": x, "y": y, "z": z, "sha256": _hashes(report, f)}
         writer.writerow([csv_field(values[c]) for c in CSV_COLUMNS])
     return out.getvalue()
+
+
+def _hashes(report: Report, f: Finding) -> str:
+    """Return the inputs behind a finding with their hashes: those of its own group, and those that are of no other."""
+    others = set(report.groups) - {f.group}
+    return "; ".join(f"{i.role} {i.path} {i.sha256}" for i in report.inputs if i.path not in others)
 
 
 def csv_field(value: Any) -> str:

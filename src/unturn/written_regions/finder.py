@@ -7,8 +7,8 @@ from dataclasses import dataclass, field
 
 import numpy as np
 
-from unturn.verdicts.region_kinds import REGION_KINDS, WHOLE, RegionSpec, region_words
-from unturn.verdicts.region_select import Cells, Found, Mask, NoRegion
+from unturn.written_regions.kinds import REGION_KINDS, WHOLE, RegionSpec, region_words
+from unturn.written_regions.select import Cells, Found, Mask, NoRegion
 
 
 @dataclass(eq=False)
@@ -39,7 +39,7 @@ class RegionFinder:
 
     def _whole(self) -> Found:
         whole = self.cells.dimension == self.cells.model.dimension
-        return Found(whole, np.zeros(len(whole), dtype=bool), self.cells.missed)
+        return Found(whole, np.zeros(len(whole), dtype=bool), self.cells.missed, self.cells.computed & ~whole)
 
     def _make(self, spec: RegionSpec) -> Found:
         masks = {
@@ -51,8 +51,9 @@ class RegionFinder:
         )
         missed: Mask = named & self.cells.missed
         named = named & self.cells.computed
-        if named.any():  # skins and edges do not count beside what they belong to
-            named &= self.cells.dimension == self.cells.dimension[named].max()
+        highest = self.cells.dimension == self.cells.dimension[named].max(initial=0)
+        lower: Mask = named & ~highest
+        named = named & highest
         inside = named & masks["none_of"] if "none_of" in masks else named
         left_out = named & ~inside
         for key in ("all_of", "any_of"):
@@ -65,7 +66,7 @@ class RegionFinder:
             raise NoRegion(
                 f"it holds {n} computed cell{'s' * (n != 1)} and must hold {spec.cells_at_least} ({region_words(spec)})"
             )
-        return Found(inside, left_out, missed)
+        return Found(inside, left_out, missed, lower)
 
     def _every(self) -> Mask:
         return np.ones(len(self.cells.dimension), dtype=bool)

@@ -6,10 +6,10 @@ from collections.abc import Callable, Mapping
 from dataclasses import dataclass
 from typing import Any
 
-from unturn.verdicts import region_select as pick
-from unturn.verdicts.kinds import TEXT, TEXTS, Kind
-from unturn.verdicts.region_select import Cells, Mask, Pick
-from unturn.verdicts.region_values import BOX, CYLINDER, NEAR, SPHERE, TAG, WHERE
+from unturn.toml_kinds import TEXT, TEXTS, Kind
+from unturn.written_regions import select as pick
+from unturn.written_regions.select import Cells, Mask, Pick
+from unturn.written_regions.values import BOX, CYLINDER, NEAR, SPHERE, TAG, WHERE
 
 WHOLE = "whole"
 

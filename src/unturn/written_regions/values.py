@@ -4,7 +4,7 @@ from __future__ import annotations
 
 from typing import Any
 
-from unturn.verdicts.kinds import (
+from unturn.toml_kinds import (
     COUNT,
     NUMBER,
     POINT,

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass
 from functools import cached_property
 from typing import Any
@@ -46,6 +46,21 @@ class Cells:
         return self.dimension > 0
 
     @cached_property
+    def xyz(self) -> Floats:
+        """Coordinates of the centroids, `(3, n_cells)`."""
+        return np.ascontiguousarray(self.centroid.T)
+
+    @cached_property
+    def nowhere(self) -> Mask:
+        """Which cells have no place: they have no value either, and must not be passed over."""
+        return ~np.asarray(np.isfinite(self.xyz.sum(axis=0)))
+
+    def away(self, point: Sequence[float]) -> Floats:
+        """Return the distance of every centroid from a point."""
+        squares: Floats = sum((x - p) ** 2 for x, p in zip(self.xyz, point))
+        return np.sqrt(squares)
+
+    @cached_property
     def missed(self) -> Mask:
         """Which cells are not computed and should be: all but skins, edges and points."""
         mask = np.zeros(len(self.dimension), dtype=bool)
@@ -62,11 +77,24 @@ class Cells:
 
 @dataclass(frozen=True, eq=False)
 class Found:
-    """The cells of a region, those that it names and leaves out, and those that belong to it and are not computed."""
+    """The cells of a region.
+
+    Attributes
+    ----------
+    inside
+        `(n_cells,)` those that count.
+    left_out
+        Those that it names and leaves out.
+    not_computed
+        Those that belong to it and are not computed.
+    lower
+        Those that belong to it and are of a lower dimension than others.
+    """
 
     inside: Mask
     left_out: Mask
     not_computed: Mask
+    lower: Mask
 
 
 Pick = Callable[[str], Found]
@@ -103,37 +131,34 @@ def _numbers(values: NDArray[Any], n: int, name: str) -> Floats:
     return values.reshape(-1).astype(np.float64)
 
 
-def box(cells: Cells, box: Mapping[str, Any], pick: Pick) -> Mask:
-    low, high = np.array(box["from"]), np.array(box["to"])
-    inside: Mask = np.asarray(((cells.centroid >= low) & (cells.centroid <= high)).all(axis=1))
-    return _or_nowhere(cells, inside)
+def box(cells: Cells, shape: Mapping[str, Any], pick: Pick) -> Mask:
+    inside: Mask = np.ones(len(cells.dimension), dtype=bool)
+    for x, low, high in zip(cells.xyz, shape["from"], shape["to"]):
+        inside &= (x >= low) & (x <= high)
+    return inside | cells.nowhere
 
 
 def cylinder(cells: Cells, shape: Mapping[str, Any], pick: Pick) -> Mask:
     start, end = np.array(shape["from"]), np.array(shape["to"])
     length = float(np.linalg.norm(end - start))
     axis = (end - start) / length
-    away = cells.centroid - start
-    along = away @ axis
-    across = np.linalg.norm(away - along[:, None] * axis, axis=1)
-    return _or_nowhere(cells, (along >= 0) & (along <= length) & (across <= shape["radius"]))
+    away = cells.xyz - start[:, None]
+    along = axis @ away
+    across = np.linalg.norm(away - axis[:, None] * along, axis=0)
+    inside: Mask = (along >= 0) & (along <= length) & (across <= shape["radius"])
+    return inside | cells.nowhere
 
 
 def sphere(cells: Cells, shape: Mapping[str, Any], pick: Pick) -> Mask:
-    away = np.linalg.norm(cells.centroid - np.array(shape["center"]), axis=1)
-    return _or_nowhere(cells, away <= shape["radius"])
+    inside: Mask = np.asarray(cells.away(shape["center"]) <= shape["radius"])
+    return inside | cells.nowhere
 
 
-def _or_nowhere(cells: Cells, inside: Mask) -> Mask:
-    """Return the cells inside, and those whose place is not known: they have no value, which must not be passed over."""
-    return np.asarray(inside | ~np.isfinite(cells.centroid).all(axis=1))
-
-
-def near(cells: Cells, near: Mapping[str, Any], pick: Pick) -> Mask:
-    distance = np.linalg.norm(cells.centroid - np.array(near["point"]), axis=1)
-    usable = np.flatnonzero(cells.computed & (distance <= near["within"]))
-    chosen = usable[np.argsort(distance[usable], kind="stable")[: near["cells"]]]
-    mask = np.zeros(len(distance), dtype=bool)
+def near(cells: Cells, asked: Mapping[str, Any], pick: Pick) -> Mask:
+    distance = cells.away(asked["point"])
+    usable = np.flatnonzero(cells.computed & (distance <= asked["within"]))
+    chosen = usable[np.argsort(distance[usable], kind="stable")[: asked["cells"]]]
+    mask: Mask = np.zeros(len(distance), dtype=bool)
     mask[chosen] = True
     return mask
 
