@@ -48,6 +48,7 @@ LAYERS = (
     ("_api_meshes",),
     ("_api_states",),
     ("verdicts", "gauges", "pictures"),
+    ("report",),
     ("_accessor", "testing", "__init__"),
     ("cli", "__main__"),
 )

@@ -36,10 +36,10 @@ app = typer.Typer(
 )
 app.command("survey")(_survey.survey)
 app.command("strain")(_strain.strain)
-app.command("check")(_check.check)
-app.command("compare")(_compare.compare)
 app.command("picture")(_pictures.picture)
 app.command("report")(_report.report)
+app.command("check")(_check.check)
+app.command("compare")(_compare.compare)
 app.command("envelope")(_envelope.envelope)
 app.command("convergence")(_convergence.convergence)
 
