@@ -14,10 +14,11 @@ from solved_problems import NU, corner_plate, pressed
 from test_elsewhere import angle_mesh, corner_field
 from test_nodal import TURN, quadratic
 from unturn import CellBlock, Result, cutout, kinematics
-from unturn.around import Asked, Trust, bound_of, groups_of, middles, trust_of, trust_on
+from unturn.around import Asked, Trust, bound_of, groups_of, trust_of, trust_on
 from unturn.cutout import Cutter
 from unturn.elements import ELEMENTS
 from unturn.model import Model
+from unturn.neighbourhood import middles
 from unturn.options import StrainOptions
 from unturn.peaks import Peaks
 from unturn.pipeline import Computed, compute
@@ -522,19 +523,3 @@ class TestCutter:
         monkeypatch.setattr(cutout, "_WHOLE", 0.3)
         assert len(Cutter(model).around(np.array([0]), 2)) == 27
         assert len(Cutter(model).around(np.array([62]), 2)) == 125
-
-    @pytest.mark.derived("a tree search over all points")
-    @pytest.mark.parametrize("shift", [0.0, 5e5])
-    def test_whether_any_points_coincide(self, shift: float) -> None:
-        mesh = block(ELEMENTS["hexahedron"], 6)
-        mesh = mesh._replace(points=mesh.points + shift)
-        u = 0 * mesh.points
-        assert not cutout._any_coincident(computed_of(mesh.result(u=u)).fields.model)
-        node = mesh.cells[-1, 0]
-        for move in (0.0, 5e-10, 3e-8):
-            points = np.concatenate([mesh.points, mesh.points[[node]] + [move, 0, 0]])
-            cells = mesh.cells.copy()
-            cells[-1, 0] = len(mesh.points)
-            model = computed_of(mesh._replace(points=points, cells=cells).result(u=0 * points)).fields.model
-            close = np.linalg.norm(points[-1] - points[node]) <= 1e-9
-            assert cutout._any_coincident(model) is bool(close)

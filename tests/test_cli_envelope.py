@@ -178,6 +178,7 @@ def test_json_on_the_standard_output(desk: Path, capsys: pytest.CaptureFixture[s
         ("dead.vtu wind.vtu --measures spin", 2, "load cases do not follow"),
         ("part_1.vtu part_2.vtu --as-series --measures spin", 2, "rates need the time of every step"),
         ("run.xdmf --measures spinn", 2, "Did you mean 'spin'"),
+        ("run.xdmf --measures strain_eror", 2, "Did you mean 'strain_error'"),
         ("run.xdmf --steps-output s.xdmf", 2, "no measure of a series"),
         ("run.xdmf --steps-output s.msh --measures spin", 2, "s.msh"),
         ("dead.vtu wind.vtu --as-series", 2, "holds no number"),

@@ -17,7 +17,8 @@ from unturn.fields import CellFields
 from unturn.locate import locate
 from unturn.model import build_model
 from unturn.pipeline import StrainOptions, compute
-from unturn.quantities import Found, find_quantity, parse_quantity
+from unturn.quantities import Found, find_quantity
+from unturn.quantity_text import parse_quantity
 from unturn.refinement import LOWEST, Study, check_refinement, observed_order, study
 
 # --- the published procedure ------------------------------------------------------------------------------------------

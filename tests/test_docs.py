@@ -321,7 +321,7 @@ def test_the_summary_schema_is_documented_key_by_key(desk: Path) -> None:
         "lever.xdmf --solve nonlinear --base hencky",
         "lever.xdmf --remove-rigid regions --frame 'cylindrical z'",
         "mixed.xdmf",
-        "bracket.vtu --at nodes --prefix n_",
+        "bracket_tets.vtu --at nodes --prefix n_",
         "bracket.vtu --at surface",
         "bracket.vtu --measures strain,strain_error --prefix e_",
     )

@@ -401,7 +401,7 @@ def test_many_combinations_read_each_case_a_few_times() -> None:
     options = StrainOptions(measures=["equivalent_strain"], solve="linear")
     states, options = superposed_states({"a": reader(0), "b": reader(1)}, combinations, options)
     found = envelope(states, EnvelopeOptions(options, "case"))
-    assert reads == [3, 3]
+    assert reads == [4, 4]  # once more for the first of the two of the range, to tell how far to trust it
     every = measured([steps[0] + k * steps[1] for k in range(17)], "equivalent_strain")["equivalent_strain"]
     assert np.allclose(found.arrays["equivalent_strain_maximum"], every.max(axis=0), rtol=1e-12)
     assert np.array_equal(found.arrays["equivalent_strain_minimum_case"], every.argmin(axis=0))

@@ -254,3 +254,18 @@ def test_a_zero_step_that_is_not_turned_is_judged_as_before() -> None:
         (region,) = summarise(computed, SummaryOptions(solve=solve)).regions
         assert region.verdict.level == "holds"
         assert region.verdict.worst < 2e-3
+
+
+@pytest.mark.derived("a cell with a node nowhere has no Jacobian; the rest of the mesh is as right as before")
+@pytest.mark.parametrize("at", ["centroid", "nodes", "surface", "quadrature"])
+def test_a_node_nowhere_is_passed_over_in_silence(at: str) -> None:
+    points = POINTS.copy()
+    points[0] = np.inf
+    found = unturn.strain(Result(points, (TETS,), {"u": 1e-3 * POINTS}), at=at)  # type: ignore[arg-type]
+    assert found.n_cells > 0
+
+
+@pytest.mark.practice("no overflow on the way to an answer")
+def test_a_mesh_too_large_for_its_volume_is_an_error_not_a_fault() -> None:
+    with pytest.raises(InputError, match="no volume"):
+        unturn.strain(Result(POINTS * 1e150, (TETS,), {"u": 1e147 * POINTS}))

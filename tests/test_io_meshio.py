@@ -503,6 +503,25 @@ def test_bulk_data_in_a_coordinate_system_of_its_own_is_refused(tmp_path: Path) 
     assert "a coordinate system of their own" in refused(tmp_path / "a.bdf")
 
 
+def test_bulk_data_that_is_cut_off(tmp_path: Path) -> None:
+    # Derived: the reader behind it looks for the last line for ever.
+    (tmp_path / "a.bdf").write_text(NASTRAN[: NASTRAN.index("ENDDATA")])
+    assert "no ENDDATA" in refused(tmp_path / "a.bdf")
+
+
+def test_a_request_to_end_is_no_damaged_file(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    # Common practice, no source: status 128 and the number of the signal.
+    (tmp_path / "a.bdf").write_text(NASTRAN)
+
+    def stopped(*_: object, **__: object) -> None:
+        raise SystemExit(143)
+
+    monkeypatch.setattr("meshio.read", stopped)
+    with pytest.raises(SystemExit) as stop:
+        read(tmp_path / "a.bdf")
+    assert stop.value.code == 143
+
+
 def test_med_families_become_groups_and_steps_are_refused(tmp_path: Path) -> None:
     meant = one_cell("tetra")
     mesh = meshio.Mesh(

@@ -19,10 +19,10 @@ from solved_problems import (
     ring,
     sphere,
 )
-from unturn.around import RESOLVED
 from unturn.elements import ELEMENTS
 from unturn.fields import compute_fields
 from unturn.model import Model, PlaneOptions, build_model
+from unturn.neighbourhood import RESOLVED
 from unturn.peaks import Peak, Peaks
 from unturn.recovery import recover_gradient
 from unturn.trust import strain_error

@@ -116,6 +116,26 @@ def test_nodes_of_no_cell_change_nothing() -> None:
     assert cells_of(find_regions(m, everything(m))) == {"body 1": [0, 1, 2], "body 2": [3, 4, 5]}
 
 
+@pytest.mark.derived("every pair of points, one by one")
+@pytest.mark.parametrize("width", [3, 4])
+@pytest.mark.parametrize("origin", [0.0, 5e5])
+def test_coincident_points_by_brute_force(origin: float, width: int) -> None:
+    random = np.random.default_rng(3)
+    grid = np.stack(np.meshgrid(*[np.arange(4.0)] * width), -1).reshape(-1, width)
+    again = grid[random.permutation(len(grid))[:40]]
+    move = random.normal(size=again.shape)
+    move *= (
+        random.choice([0.0, 2e-9, 4e-9, 1e-7], len(again))[:, None] / np.linalg.norm(move, axis=1)[:, None]
+    )
+    points = origin + random.permutation(np.concatenate([grid, again + move, again]))
+    label, tolerance = merge_coincident(points)
+    near = np.linalg.norm(points[:, None] - points[None], axis=2) <= tolerance
+    for _ in range(3):  # chains
+        near = near @ near
+    np.testing.assert_array_equal(label, near.argmax(axis=1))
+    assert 0 < (label != np.arange(len(points))).sum() < 80
+
+
 def test_merging_names_the_lowest_and_tells_the_tolerance() -> None:
     points = np.array([[0.0, 0, 0], [10, 0, 0], [1e-9, 0, 0], [np.nan, 0, 0], [10, 0, 1e-7]])
     label, tolerance = merge_coincident(points)

@@ -294,6 +294,27 @@ def test_what_is_refused(series: Path, arguments: list[str], expected: int, word
     assert not out.exists()
 
 
+@pytest.mark.parametrize(
+    ("name", "meant"),
+    [
+        ("strain_incremnt", "strain_increment"),
+        ("spinn", "spin"),
+        ("acumulated_equivalent_strain", "accumulated_equivalent_strain"),
+        ("strain_jmp", "strain_jump"),
+    ],
+)
+@pytest.mark.parametrize("at", ["centroid", "nodes", "quadrature"])
+def test_a_misspelt_name_gets_a_close_match(series: Path, name: str, meant: str, at: str) -> None:
+    # Common practice, no source.
+    status, said = run(["strain", str(series), "--measures", f"strain,{name}", "--at", at])
+    assert status == 2
+    assert f"no measure is called {name!r}. Did you mean {meant!r}" in said
+    with pytest.raises(UsageError, match=f"Did you mean '{meant}'"):
+        strain(step(1.0), measures=[name])
+    with pytest.raises(UsageError, match="is one text; give a list"):
+        strain(step(1.0), measures=name)
+
+
 def test_changes_need_the_steps_before(tmp_path: Path, series: Path) -> None:
     # Source: the exit codes of the project: 2 is wrong usage, 3 an input that cannot be used.
     single = tmp_path / "one.vtu"

@@ -13,7 +13,7 @@ from unturn.convergence_text import refinement_data, refinement_text
 from unturn.errors import UsageError, close_matches
 from unturn.mesh_study import study_meshes
 from unturn.pipeline import StrainOptions
-from unturn.quantities import FORMS, parse_quantity
+from unturn.quantity_text import FORMS, parse_quantity
 from unturn.refinement import Study
 from unturn.result import Result
 

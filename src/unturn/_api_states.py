@@ -13,7 +13,8 @@ from unturn import io
 from unturn._api import add_arrays
 from unturn._api_meshes import strain_options
 from unturn.combinations import Combination, expanded_combinations, read_combinations
-from unturn.envelope_text import envelope_data, envelope_text
+from unturn.envelope_json import envelope_data
+from unturn.envelope_text import envelope_text
 from unturn.envelopes import envelope as find_envelope
 from unturn.errors import UnturnError, UsageError
 from unturn.extremes import Kind
@@ -63,7 +64,8 @@ def envelope(
 ) -> EnvelopeReport:
     """Return the extremes of every cell or node over steps or load cases, and which of them made each.
 
-    One state is in memory at a time where they come from files.
+    One state is in memory at a time where they come from files; those that made the extremes of regions are read twice, to
+    tell how far to trust them.
 
     Parameters
     ----------
@@ -147,7 +149,9 @@ def envelope(
         zero = None if zero_step is None else _zero(given, zero_step, kind)
         states, strain = chosen_states(given, strain, chosen)
         files, first = [s.name for s in given], given[0].read
-    found = find_envelope(states, EnvelopeOptions(strain, kind, range, keep_going, tuple(region)), zero=zero)
+    found = find_envelope(
+        states, EnvelopeOptions(strain, kind, range, keep_going, tuple(region), full=True), zero=zero
+    )
     base = found.model.result if chosen is None else first()
     result = add_arrays(
         base, found.places.on, found.arrays, found.components, prefix=prefix, overwrite=overwrite

@@ -9,27 +9,25 @@ from __future__ import annotations
 
 import math
 from collections.abc import Sequence
-from dataclasses import dataclass, field, replace
-from functools import cached_property
+from dataclasses import dataclass, replace
 from typing import Literal
 
 import numpy as np
 from numpy.typing import NDArray
 
-from unturn.cutout import Cut, Cutter
+from unturn.cutout import Cutter
 from unturn.kinematics._symmetric import Floats
 from unturn.measures import MEASURES, base_of
 from unturn.model import Model
+from unturn.neighbourhood import Location, Surroundings
 from unturn.nodal import FOLD
-from unturn.peaks import GROWING, Peak, Peaks
 from unturn.pipeline import Computed
-from unturn.recovery import Recovered, recover_gradient, sheets
+from unturn.recovery import sheets
 from unturn.regions import Region, find_regions
 from unturn.rigid_parts import computed_cells
-from unturn.trust import MOST_CHANGE, StrainError, strain_error
+from unturn.trust import MOST_CHANGE
 
 Ints = NDArray[np.int64]
-Location = Literal["centroid", "mean"]
 
 VALUES, PEAKS = 4, 6
 """Rings of cells on which the plus and minus of a cell depends, and whether it is a peak that is suspected.
@@ -44,10 +42,6 @@ _TAKEN = (
     8192,
 )  # cells of a region among which the next peak is looked for, more if there is none
 _MOST = 250_000  # cells around them that are worth it
-_NEGLIGIBLE = 1e-3  # of the largest strain of the region: a smaller extreme is no peak
-RESOLVED = 0.4
-"""Plus and minus at the node of a peak, as a share of the strain of its cell, below which the mesh resolves it: 0.5 to 3.5
-was seen at corners and point loads on eleven elements, less at holes, bores, cavities and in bending."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -268,21 +262,28 @@ def trust_on(
     known = {k: b for k, b in bounds.items() if b is not None and asked[k].cell >= 0 and there[asked[k].cell]}
     if not known:
         return found
-    mesh = _Mesh(Cutter(model), volume, groups, at, threads)
+    mesh = Surroundings(Cutter(model), volume, groups, at, threads)
     near = mesh.around([asked[k].cell for k in known], VALUES)
+    growing = []
     for k, bound in known.items():
-        found[k] = Trust(near.plus_minus(bound, asked[k], asked[k].cell))
-    growing = [k for k, b in known.items() if b.kind == "strain" and near.grows(asked[k])]
+        a = asked[k]
+        found[k] = Trust(bound.of(near.plus_minus(bound.bases, a.cell), float(a.values[a.cell])))
+        if bound.kind == "strain" and near.grows(near.peak(a.values, a.cell, a.smallest), a.size):
+            growing.append(k)
     if growing:
         near = mesh.around([asked[k].cell for k in growing], PEAKS)
         for k in growing:
-            found[k] = near.judged(found[k], asked[k], known[k])
+            a = asked[k]
+            peak = near.peak(a.values, a.cell, a.smallest)
+            if near.suspected(peak, known[k].bases[0], a.size):
+                point = int(near.part.points[peak.point])
+                found[k] = replace(found[k], singular=True, point=point, growth=peak.growth)
         _find_next(mesh, asked, known, found, len(near.part.cells))
     return found
 
 
 def _find_next(
-    mesh: _Mesh, asked: Sequence[Asked], bounds: dict[int, Bound], found: list[Trust], near: int
+    mesh: Surroundings, asked: Sequence[Asked], bounds: dict[int, Bound], found: list[Trust], near: int
 ) -> None:
     """Add the next peaks to those that are suspected: among ever more cells, while what lies around is not too much.
 
@@ -296,9 +297,13 @@ def _find_next(
         cells = mesh.cutter.around(np.unique(np.concatenate(list(among.values()))), PEAKS)
         if len(cells) > max(_MOST, near):
             return
-        wide = mesh.recovered(cells)
+        wide = mesh.of(cells)
         for k in todo:
-            found[k] = wide.with_next(found[k], asked[k], bounds[k], among[k])
+            a, bound = asked[k], bounds[k]
+            after, value = wide.next_peak(a.values, a.cell, among[k], a.smallest, bound.bases[0], a.size)
+            if after >= 0:
+                more = bound.of(wide.plus_minus(bound.bases, after), value)
+                found[k] = replace(found[k], next_cell=after, next_value=value, next_plus_minus=more)
         todo = [k for k in todo if found[k].next_cell < 0 and len(among[k]) > taken]
 
 
@@ -309,128 +314,3 @@ def _foremost(asked: Asked, volume: Floats, count: int) -> Ints:
         signed = asked.values[cells] if asked.smallest else -asked.values[cells]
         cells = np.append(cells[np.argpartition(signed, count)[: count + 1]], asked.cell)
     return np.unique(cells)
-
-
-@dataclass(eq=False)
-class _Mesh:
-    """A model and what is known of its cells."""
-
-    cutter: Cutter
-    volume: Floats
-    groups: Ints
-    at: Location
-    threads: int | None
-
-    def around(self, cells: Sequence[int], rings: int) -> _Around:
-        """Return these cells with some rings around them, recovered."""
-        return self.recovered(self.cutter.around(np.asarray(cells, dtype=np.int64), rings))
-
-    def recovered(self, cells: Ints) -> _Around:
-        """Return these cells alone, rising, recovered."""
-        return self.whole if len(cells) == self.cutter.count else self._recovered(cells)
-
-    @cached_property
-    def whole(self) -> _Around:
-        """All cells, recovered."""
-        return self._recovered(self.cutter.everything)
-
-    def _recovered(self, cells: Ints) -> _Around:
-        cut = self.cutter.cut(cells)
-        recovered = recover_gradient(cut.model, self.groups[cells], "patch", self.threads)
-        return _Around(cut, recovered, self.volume[cells], self.at, self.threads)
-
-
-@dataclass(frozen=True, eq=False)
-class _Around:
-    """Cells that were cut out, with the gradient recovered at their nodes."""
-
-    part: Cut
-    recovered: Recovered
-    volume: Floats
-    at: Location
-    threads: int | None
-    errors: dict[str, StrainError] = field(default_factory=dict)
-    taken: dict[int, Floats] = field(default_factory=dict)
-
-    def own(self, cells: Ints) -> Ints:
-        """Return the positions of cells of the file."""
-        return np.searchsorted(self.part.cells, cells)
-
-    def values(self, asked: Asked) -> Floats:
-        """Return the values of these cells; taken once from the array that several extremes share."""
-        key = id(asked.values)
-        if key not in self.taken:
-            self.taken[key] = asked.values[self.part.cells]
-        return self.taken[key]
-
-    def error(self, base: str) -> StrainError:
-        """Return the error of a tensor."""
-        if base not in self.errors:
-            self.errors[base] = strain_error(self.recovered, self.threads, base, self.at)
-        return self.errors[base]
-
-    def plus_minus(self, bound: Bound, asked: Asked, cell: int) -> float:
-        """Return the bound of a measure at a cell of the file."""
-        own = self.own(np.array([cell]))[0]
-        total = sum(float(self.error(base).plus_minus[own]) for base in bound.bases)
-        return bound.of(total, float(asked.values[cell]))
-
-    @cached_property
-    def peaks(self) -> Peaks:
-        """The peaks of these cells."""
-        return Peaks(self.recovered, middles(self.part.model), self.volume)
-
-    def peak(self, asked: Asked) -> Peak:
-        """Return the value that is asked for as a peak."""
-        return self.peaks.find(self.values(asked), self.own(np.array([asked.cell])), asked.smallest)
-
-    def grows(self, asked: Asked) -> bool:
-        """Return whether a value grows towards a node, and is not negligible."""
-        peak = self.peak(asked)
-        return peak.growth > GROWING and abs(peak.value) >= _NEGLIGIBLE * asked.size
-
-    def suspected(self, peak: Peak, base: str, size: float) -> bool:
-        """Return whether a peak grows, is not negligible, and is not resolved.
-
-        At a singular point the elements around never agree with what is recovered there: what recovery changes stays in
-        proportion to the strain, however fine the mesh. A steep smooth field, such as bending across a thin part, they
-        follow.
-        """
-        if not peak.singular or abs(peak.value) < _NEGLIGIBLE * size:
-            return False
-        error = self.error(base)
-        shares = self.peaks.corners[[peak.cell]].indices
-        share = shares[self.recovered.shares.point[shares] == peak.point]
-        strain = math.sqrt(error.strain_squared[peak.cell] / error.volume[peak.cell])
-        return not (error.plus_minus_shares[share] < RESOLVED * strain).all()
-
-    def judged(self, known: Trust, asked: Asked, bound: Bound) -> Trust:
-        """Return what is known of a value, and whether it is suspected singular."""
-        peak = self.peak(asked)
-        if not self.suspected(peak, bound.bases[0], asked.size):
-            return known
-        return replace(known, singular=True, point=int(self.part.points[peak.point]), growth=peak.growth)
-
-    def with_next(self, known: Trust, asked: Asked, bound: Bound, among: Ints) -> Trust:
-        """Return what is known of a suspected value, and the next peak among some cells of the file."""
-
-        def suspected(peak: Peak) -> bool:
-            return self.suspected(peak, bound.bases[0], asked.size)
-
-        after = self.peaks.next_peak(
-            self.values(asked), self.own(among), self.peak(asked), asked.smallest, suspected
-        )
-        if after.cell < 0:
-            return known
-        cell = int(self.part.cells[after.cell])
-        more = self.plus_minus(bound, asked, cell)
-        return replace(known, next_cell=cell, next_value=after.value, next_plus_minus=more)
-
-
-def middles(model: Model) -> Floats:
-    """Return the middle of the corners of every cell `(n_cells, 3)`; NaN where it is not computed."""
-    found = np.full((model.result.n_cells, 3), np.nan)
-    for block in model.blocks:
-        if block.row is not None:
-            found[block.index] = model.points[block.connectivity[:, : block.row.n_corners]].mean(axis=1)
-    return found

@@ -9,7 +9,8 @@ from typing import Any
 
 from unturn._version import __version__
 from unturn.mesh_study import LEVELS, Refinement
-from unturn.quantities import Found, Quantity
+from unturn.quantities import Found
+from unturn.quantity_text import Quantity
 from unturn.refinement import SAFETY, Study, check_refinement
 from unturn.summary import CAUTION
 from unturn.summary_text import _aligned

@@ -7,17 +7,16 @@ from functools import cached_property
 
 import numpy as np
 from numpy.typing import NDArray
-from scipy.spatial import cKDTree
 
 from unturn.gradient import NodalFields
 from unturn.model import Model, ModelBlock
 from unturn.recovery import coincident_points
+from unturn.regions import merge_coincident
 from unturn.result import CellBlock, Result
 
 Ints = NDArray[np.int64]
 
 _WHOLE = 0.3  # share of the cells above which it is not worth cutting
-_COINCIDENT = 1e-9  # of the model's size, as in recovery
 
 
 @dataclass(frozen=True, eq=False)
@@ -66,7 +65,11 @@ class Cutter:
     @cached_property
     def _label(self) -> Ints | None:
         """The first of the points that coincide with each; None where none does."""
-        return coincident_points(self.model) if _any_coincident(self.model) else None
+        used = np.zeros(len(self.model.points), dtype=bool)
+        for block in self._blocks:
+            used[block.connectivity] = True
+        same, _ = merge_coincident(self.model.points[used])
+        return None if (same == np.arange(len(same))).all() else coincident_points(self.model)
 
     def around(self, cells: Ints, rings: int) -> Ints:
         """Return file positions, rising, of these cells and of some rings around them.
@@ -134,26 +137,3 @@ class Cutter:
             poisson=model.poisson,
         )
         return Cut(small, cells, np.flatnonzero(used))
-
-
-def _any_coincident(model: Model) -> bool:
-    """Return whether any two points of computed cells lie at one place.
-
-    Points at one place are as near along any direction: only neighbours along one are looked at, and along this one hardly
-    any two points of a regular grid are.
-    """
-    used = np.zeros(len(model.points), dtype=bool)
-    for block in model.blocks:
-        used[block.connectivity] = True
-    x = model.points[used & np.isfinite(model.points).all(axis=1)]
-    if len(x) < 2:
-        return False
-    tolerance = _COINCIDENT * float(np.ptp(x, axis=0).max())
-    along = x @ (np.array([1.0, 2.0**0.5, 3.0**0.5]) / 6.0**0.5)
-    order = np.argsort(along)
-    near = np.diff(along[order]) <= tolerance + 1e-15 * float(np.abs(along).max())
-    if not near.any():
-        return False
-    maybe = np.zeros(len(x), dtype=bool)
-    maybe[order[:-1][near]] = maybe[order[1:][near]] = True
-    return len(cKDTree(x[maybe]).query_pairs(tolerance, output_type="ndarray")) > 0

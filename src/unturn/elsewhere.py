@@ -14,12 +14,12 @@ from unturn.gradient import sample_points
 from unturn.kinematics._symmetric import Floats
 from unturn.measures import MEASURES, base_of
 from unturn.nodal import FOLD, NodeFields
+from unturn.node_errors import NodeErrors
 from unturn.numbering import node_numbers
 from unturn.pipeline import Computed
 from unturn.recovery import NodeShares, sheets
 from unturn.regions import Region
 from unturn.surface import Faces, SurfaceFields, faces_model
-from unturn.trust import MOST_CHANGE, strain_error
 from unturn.trusted import BASE_WORDS, Growth, node_of
 
 
@@ -117,13 +117,12 @@ def find_elsewhere(
 
 @dataclass(frozen=True)
 class _Row:
-    """One extreme to look for: label, array, which component, the smallest or the largest, measure it is of."""
+    """One extreme to look for: label, array, which component, the smallest or the largest."""
 
     label: str
     array: str
     column: int | None
     smallest: bool
-    kind: str
 
     def component(self, values: Floats) -> tuple[str, Floats]:
         """Return the name of the component and its values."""
@@ -144,10 +143,10 @@ def _rows(names: Collection[str], prefix: str = "") -> list[_Row]:
     for suffix, words in BASE_WORDS.items():
         principal, equivalent = f"{prefix}principal_strain{suffix}", f"{prefix}equivalent_strain{suffix}"
         if principal in names:
-            found.append(_Row(f"largest principal{words}", principal, 0, False, "principal_strain"))
-            found.append(_Row(f"smallest principal{words}", principal, -1, True, "principal_strain"))
+            found.append(_Row(f"largest principal{words}", principal, 0, False))
+            found.append(_Row(f"smallest principal{words}", principal, -1, True))
         if equivalent in names:
-            found.append(_Row(f"equivalent, largest{words}", equivalent, None, False, "equivalent_strain"))
+            found.append(_Row(f"equivalent, largest{words}", equivalent, None, False))
     return found
 
 
@@ -158,16 +157,12 @@ class _Nodes:
         self.computed, self.nodes = computed, nodes
         self.numbering = node_numbers(computed.fields.model.result)
         self.rows = _rows(nodes.arrays)
-        strains = [n for n in nodes.arrays if MEASURES[n].unit == "strain"]
-        bases = list(dict.fromkeys(base_of(n) for n in strains)) or [""]
-        self.errors = {
-            b: strain_error(nodes.of_finite if b else nodes.recovered, threads, b)
-            for b in dict.fromkeys([bases[0], *(base_of(r.array) for r in self.rows)])
-        }
-        self.main = bases[0]
+        self.main = next((base_of(n) for n in nodes.arrays if MEASURES[n].unit == "strain"), "")
+        self.behind = nodes.of_finite if self.main else nodes.recovered
+        self.errors = NodeErrors(nodes, computed.equivalent_poisson, threads)
 
     def find(self, regions: Sequence[Region]) -> Elsewhere:
-        error = self.errors[self.main]
+        error = self.errors.error(self.behind, self.main)
         return Elsewhere(
             "nodes",
             tuple(e for r in regions for e in self._extremes(r)),
@@ -177,7 +172,7 @@ class _Nodes:
         )
 
     def _border(self, regions: Sequence[Region]) -> Border | None:
-        jump = border_jump(self.nodes.of_finite if self.main else self.nodes.recovered, regions, self.main)
+        jump = border_jump(self.behind, regions, self.main)
         if jump is None:
             return None
         at = self.computed.fields.model.points[jump.point]
@@ -196,15 +191,11 @@ class _Nodes:
             if pick < 0:
                 continue
             at = int(shares.point[own[pick]])
-            change = MOST_CHANGE[row.kind]
-            if row.kind == "equivalent_strain" and effective is not None:
-                change *= 1.5 / (1.0 + effective)
-            bound = change * float(self.errors[base_of(row.array)].plus_minus_shares[own[pick]])
+            value = float(values[pick])
+            bound = self.errors.plus_minus(row.array, int(own[pick]), value)
             place = {"point": at, "node": node_of(self.numbering, at)}
-            found.append(
-                ElsewhereExtreme(region.name, row.label, name, float(values[pick]), bound, place,
-                                 tuple(float(x) for x in points[at]))
-            )  # fmt: skip
+            coordinates = tuple(float(x) for x in points[at])
+            found.append(ElsewhereExtreme(region.name, row.label, name, value, bound, place, coordinates))
         return found
 
 

@@ -94,7 +94,7 @@ class NodePlaces(CellPlaces):
     def values(self, computed: Computed, names: Sequence[str]) -> tuple[Arrays, Components]:
         nodes = computed.nodes
         assert nodes is not None
-        row = self._row_of(computed.fields.model, nodes.layout)
+        row = self.row_of(computed.fields.model, nodes.layout)
         lost = row < 0
         arrays = {}
         for name in names:
@@ -102,8 +102,8 @@ class NodePlaces(CellPlaces):
             arrays[name][lost] = np.nan
         return arrays, nodes.components
 
-    def _row_of(self, model: Model, layout: Layout) -> Ints:
-        """Return which row of a state's values each place is; -1 for none."""
+    def row_of(self, model: Model, layout: Layout) -> Ints:
+        """Return which row of the values of a state each place is; -1 for none."""
         assert layout.cells is not None
         row = np.full(self.n, -1, dtype=np.int64)
         for block, whole, cells, spots in zip(

@@ -1,143 +1,33 @@
-"""What an envelope says: as data for JSON, and as text for people."""
+"""What an envelope says, as text for people."""
 
 from __future__ import annotations
 
 import math
-from collections.abc import Iterator, Sequence
-from dataclasses import dataclass
+from collections.abc import Sequence
 from pathlib import PurePath
-from typing import Any
 
-import numpy as np
-
-from unturn._version import __version__
 from unturn.envelope_arrays import RANGE
+from unturn.envelope_extremes import foremost, in_table, unit_of
+from unturn.envelope_json import element_of, place_data
 from unturn.measures import MEASURES
+from unturn.numbering import node_numbers
 from unturn.series import SERIES_MEASURES
-from unturn.states import Envelope, Judged, Tracked
-from unturn.statistics import statistics
-from unturn.summary import CAUTION, cell_counts, equivalent_form, mesh_kind
-from unturn.summary_text import FINITE_ONLY, _advice, _aligned, _micro, _of_its_strain, _one_digit
-from unturn.trusted import BASE_WORDS
+from unturn.states import Envelope, Extreme
+from unturn.summary import CAUTION, cell_counts, equivalent_form
+from unturn.summary_text import (
+    _PLUS_MINUS,
+    _above,
+    _advice,
+    _aligned,
+    _bounded,
+    _micro,
+    _of_its_strain,
+    _one_digit,
+    _point,
+)
+from unturn.trusted import BASE_WORDS, node_of
 
-SCHEMA = "unturn.envelope/1"
-_MOST_COLUMNS = 5
 _MOST_FAILURES = 5
-
-
-@dataclass(frozen=True)
-class _Peak:
-    """The extreme of one number over a region, and the states that made it there."""
-
-    of: Tracked
-    component: str
-    value: float
-    place: int  # -1: none
-    states: tuple[int, ...]
-    percentile: float  # 99.9 % of the volume below; NaN for smallest values
-
-    @property
-    def name(self) -> str:
-        """The number: its measure and component."""
-        return self.of.measure + (f"_{self.component}" if self.component else "")
-
-
-def _peaks(envelope: Envelope, region: Judged) -> Iterator[_Peak]:
-    """Yield the extremes of a region over its places and the states."""
-    places = envelope.places
-    own = places.of(region.region.cells)
-    for of in envelope.tracked:
-        values = np.asarray(of.values, dtype=np.float64).reshape(places.n, -1)
-        upper = of.which == "maximum"
-        for c, label in enumerate(envelope.components.get(of.array, ("",))):
-            s = statistics(values[:, c], places.weight, own, (99.9,) if upper else ())
-            value, place = (s.maximum, s.at_maximum) if upper else (s.minimum, s.at_minimum)
-            made_by = [states.reshape(places.n, -1) for states in of.made_by]
-            states = tuple(int(at[place, c]) for at in made_by) if place >= 0 else ()
-            yield _Peak(of, label, value, place, states, s.percentiles.get(99.9, math.nan))
-
-
-def _unit(name: str) -> str:
-    if name.startswith(RANGE):
-        return "strain"
-    return SERIES_MEASURES[name].unit if name in SERIES_MEASURES else MEASURES[name].unit
-
-
-def envelope_data(envelope: Envelope, files: Sequence[str]) -> dict[str, Any]:
-    """Return the envelope as plain data, schema ``unturn.envelope/1``: extremes by region, not the arrays."""
-    model, strain = envelope.model, envelope.options.strain
-    result = model.result
-    return {
-        "schema": SCHEMA,
-        "tool": {"name": "unturn", "version": __version__},
-        "files": list(files),
-        "kind": envelope.options.kind,
-        "states": [
-            {
-                "number": k,
-                "name": s.name,
-                "time": s.time,
-                "factors": None if s.factors is None else dict(s.factors),
-                "failed": str(envelope.failures[k]) if k in envelope.failures else None,
-            }
-            for k, s in enumerate(envelope.states)
-        ],
-        "mesh": {
-            "points": result.n_points,
-            "cells": result.n_cells,
-            "types": cell_counts(model),
-            "kind": mesh_kind(model),
-        },
-        "displacement": model.displacement.name,
-        "solve": strain.solve,
-        "location": strain.at,
-        "equivalent_strain": equivalent_form(strain.equivalent_poisson),
-        "arrays": list(envelope.arrays),
-        "regions": [_region_data(envelope, r) for r in envelope.judged],
-        "left_out": {reason: len(cells) for reason, cells in envelope.left_out.items()},
-        "notes": list(envelope.notes),
-        "units": {"strain": "1", "rotation": "radian", "rate": "1 / time of the file", "volume": "length of the file"},
-        "caution": CAUTION,
-    }  # fmt: skip
-
-
-def _region_data(envelope: Envelope, r: Judged) -> dict[str, Any]:
-    cells, v = r.region.cells, r.verdict
-    found: dict[str, Any] = {}
-    for p in _peaks(envelope, r):
-        place = _place(envelope, p.place)
-        times = [envelope.states[k].time for k in p.states]
-        entry = {"value": p.value, **place, "states": list(p.states), "times": times}
-        if p.of.which == "maximum":
-            entry["99.9_percent_of_volume_below"] = p.percentile
-        found.setdefault(p.name, {})[p.of.which] = entry
-    return {
-        "name": r.region.name,
-        "origin": r.region.origin,
-        "cells": len(cells),
-        "volume": float(np.nansum(envelope.volume[cells])),
-        "verdict": {
-            "small_strain": v.level,
-            "state": r.state,
-            "largest_error_over_size": v.worst,
-            "largest_rotation_degrees": v.largest_rotation,
-            "action": v.action,
-        },
-        "noise_floor": v.noise,
-        "extremes": found,
-    }
-
-
-def _place(envelope: Envelope, place: int) -> dict[str, Any]:
-    found: dict[str, Any] = dict.fromkeys(("cell", "element", "point", "node", "at"))
-    if place >= 0:
-        position = int(envelope.places.position[place])
-        ours, theirs = ("point", "node") if envelope.places.on == "point" else ("cell", "element")
-        found[ours] = position
-        if envelope.numbers is not None:
-            found[theirs] = int(envelope.numbers.numbers[position])
-        found["at"] = [float(x) for x in envelope.places.at[place]]
-    return found
 
 
 def envelope_text(envelope: Envelope, files: Sequence[str]) -> str:
@@ -185,7 +75,7 @@ def _verdicts(envelope: Envelope) -> list[str]:
             actions.setdefault(v.action, []).append(r.region.name)
     lines += _aligned(rows, left=True)
     if _finite_only(envelope):
-        return [*lines, *_advice(FINITE_ONLY[envelope.options.strain.solve])]
+        return [*lines, *_advice(_FINITE_ONLY[envelope.options.strain.solve])]
     for action, names in actions.items():
         lines += _advice(f"{', '.join(names)}: {action}")
     return lines
@@ -199,42 +89,41 @@ def _finite_only(envelope: Envelope) -> bool:
 
 
 def _table(envelope: Envelope) -> list[str]:
-    by_region = [(r, [p for p in _peaks(envelope, r) if _in_table(envelope, p)]) for r in envelope.judged]
-    rest = len(by_region) - _MOST_COLUMNS
-    if rest > 0:
-        by_region = sorted(by_region, key=lambda pair: -_leading(pair[1]))[:_MOST_COLUMNS]
-    strained = any(_unit(p.of.measure) == "strain" for _, peaks in by_region for p in peaks)
-    rows = [["microstrain" if strained else "", *(r.region.name for r, _ in by_region)]]
-    for row in zip(*(peaks for _, peaks in by_region)):
-        rows.append([_label(row[0]), *(_value(p) for p in row)])
-        rows.append(["  where", *(_where(envelope, p.place) for p in row)])
-        rows.append(["  at x, y, z", *(_at(envelope, p.place) for p in row)])
+    shown = foremost(envelope)
+    regions = [envelope.judged[k].region.name for k in shown]
+    columns = [[e for e in envelope.extremes[k] if in_table(envelope, e)] for k in shown]
+    strained = any(unit_of(e.of.measure) == "strain" for column in columns for e in column)
+    rows = [["microstrain" if strained else "", *regions]]
+    for row in zip(*columns):
+        rows.append([_label(row[0]), *(_value(e) for e in row)])
+        rows.append(["  where", *(_where(envelope, e.place) for e in row)])
+        rows.append(["  at x, y, z", *(_at(envelope, e.place) for e in row)])
         if row[0].of.made_by:
-            rows.append(["  " + envelope.options.kind, *(_states(envelope, p) for p in row)])
+            rows.append(["  " + envelope.options.kind, *(_states(envelope, e) for e in row)])
         if row[0].name.startswith("equivalent_strain"):
-            percentiles = [_micro(p.percentile) for p in row]
+            percentiles = [_micro(e.percentile) for e in row]
             rows.append(["  99.9 % of volume below", *percentiles])
     lines = _aligned(rows)
+    rest = len(envelope.judged) - len(shown)
     if rest > 0:
         lines.append(f"{rest} more regions with smaller peaks: all are in --json; --region NAME shows one")
-    return lines
+    named = zip(regions, columns)
+    return lines + [_growth(envelope, name, e) for name, column in named for e in column if e.trust.singular]
 
 
-def _in_table(envelope: Envelope, p: _Peak) -> bool:
-    """Whether a number is for people: scalars, outer principal values, components where there is nothing else."""
-    measure, which = p.of.measure, p.of.which
-    if measure.startswith("principal_strain"):
-        return (p.component, which) in (("1", "maximum"), ("3", "minimum"))
-    if not p.component:
-        row = MEASURES.get(measure)
-        return which == "maximum" or (row is not None and row.signed)
-    only = not any(n.startswith(("equivalent", "principal")) for n in envelope.arrays)
-    return only and math.isfinite(p.value)
-
-
-def _leading(peaks: Sequence[_Peak]) -> float:
-    found = [p.value for p in peaks if p.of.which == "maximum" and math.isfinite(p.value)]
-    return max(found, default=-1.0)
+def _growth(envelope: Envelope, region: str, e: Extreme) -> str:
+    """Return a line for a peak that is suspected singular."""
+    t, kind = e.trust, envelope.options.kind
+    node = node_of(node_numbers(envelope.model.result), t.point)
+    said = f"suspected singular, {region}: {_label(e)} keeps growing towards {_point(t.point, node)}"
+    if len(e.states) > 1:
+        return said
+    if t.next_cell < 0:
+        return f"{said}; none is found away from it in that {kind}"
+    place = _spot(("cell", t.next_cell), ("element", element_of(envelope, t.next_cell)))
+    at_centroids = " at centroids" if envelope.places.on == "point" else ""
+    after = _with_bound(e.of.measure, t.next_value, t.next_plus_minus)
+    return f"{said}; next away from it in that {kind}{at_centroids} {after} in {place}"
 
 
 _WORDS = {
@@ -245,41 +134,51 @@ _WORDS = {
 """Shorter words for some measures, as in the summary of `unturn strain`."""
 
 
-def _label(p: _Peak) -> str:
-    measure = p.of.measure
-    ending = max((e for e in BASE_WORDS if measure.endswith(e)), key=len)
+def _label(e: Extreme) -> str:
+    measure = e.of.measure
+    ending = max((b for b in BASE_WORDS if measure.endswith(b)), key=len)
     stem, base = measure.removesuffix(ending), BASE_WORDS[ending]
     if stem == RANGE:
         return f"equivalent of the largest change{base}"
-    which = "largest" if p.of.which == "maximum" else "smallest"
+    which = "largest" if e.of.which == "maximum" else "smallest"
     if stem == "principal_strain":
         return f"{which} principal{base}"
-    unit = {"strain": "", "1": ""}.get(_unit(measure), f", {_unit(measure)}")
-    component = f" {p.component}" if p.component else ""
+    unit = {"strain": "", "1": ""}.get(unit_of(measure), f", {unit_of(measure)}")
+    component = f" {e.component}" if e.component else ""
     return f"{_WORDS.get(stem, stem.replace('_', ' '))}{component}, {which}{base}{unit}"
 
 
-def _value(p: _Peak) -> str:
-    if _unit(p.of.measure) == "strain":
-        return _micro(p.value)
-    return f"{p.value:.4g}" if math.isfinite(p.value) else "-"
+def _value(e: Extreme) -> str:
+    return _with_bound(e.of.measure, e.value, e.trust.plus_minus)
+
+
+def _with_bound(measure: str, value: float, plus_minus: float) -> str:
+    """Return a value in the unit of the table, with its bound; changes between steps have none."""
+    strain = unit_of(measure) == "strain"
+    if not math.isfinite(value) or measure in SERIES_MEASURES:
+        return _micro(value) if strain else f"{value:.4g}" if math.isfinite(value) else "-"
+    return _bounded(value, plus_minus) if strain else f"{value:.4g} +-{_above(plus_minus, 1e-12)}"
 
 
 def _where(envelope: Envelope, place: int) -> str:
     if place < 0:
         return "-"
-    found = _place(envelope, place)
+    found = place_data(envelope, place)
     ours, theirs = ("point", "node") if envelope.places.on == "point" else ("cell", "element")
-    own = f"{ours} {found[ours]}"
-    return own if found[theirs] is None else f"{theirs} {found[theirs]} ({own})"
+    return _spot((ours, found[ours]), (theirs, found[theirs]))
+
+
+def _spot(ours: tuple[str, int], theirs: tuple[str, int | None]) -> str:
+    own = f"{ours[0]} {ours[1]}"
+    return own if theirs[1] is None else f"{theirs[0]} {theirs[1]} ({own})"
 
 
 def _at(envelope: Envelope, place: int) -> str:
     return "-" if place < 0 else ", ".join(f"{x:.5g}" for x in envelope.places.at[place])
 
 
-def _states(envelope: Envelope, p: _Peak) -> str:
-    named = [_state(envelope, k) for k in p.states]
+def _states(envelope: Envelope, e: Extreme) -> str:
+    named = [_state(envelope, k) for k in e.states]
     return " and ".join(named) if named else "-"
 
 
@@ -289,6 +188,7 @@ def _tail(envelope: Envelope) -> list[str]:
     places = {"centroid": "element centroids", "mean": "element means over the volume"}
     place = places.get(strain.at, f"nodes, recovered ({strain.recovery}), never across regions")
     lines = [
+        _PLUS_MINUS,
         f"equivalent = {equivalent_form(strain.equivalent_poisson)}; values at {place}; shear is tensor shear",
         f"{kind}s in the arrays: zero-based position, 0 to {n}; -1 where nothing was computed",
     ]

@@ -13,7 +13,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 from unturn.envelope_arrays import EnvelopeArrays
+from unturn.envelope_extremes import find_extremes
 from unturn.envelope_places import Arrays, CellPlaces, Components, NodePlaces
+from unturn.envelope_trust import trusted_extremes
 from unturn.errors import InputError, UnturnError, UsageError
 from unturn.extremes import Extremes, Stored, plan_envelope, strain_tensor
 from unturn.fields import CellDiagnostics, CellFields
@@ -53,7 +55,7 @@ def envelope(
     Parameters
     ----------
     states
-        Steps or load cases on one mesh, each read when its turn comes.
+        Steps or load cases on one mesh, each read when its turn comes; those that made extremes of regions once more.
     options
         See `EnvelopeOptions`.
     zero
@@ -86,6 +88,19 @@ def envelope(
     options = options or EnvelopeOptions()
     if not states:
         raise InputError("the series holds no step: there is nothing to envelop.")
+    found = _gone_through(states, options, zero, progress, each)
+    found = replace(found, extremes=find_extremes(found))
+    return replace(found, extremes=trusted_extremes(found, zero))
+
+
+def _gone_through(
+    states: Sequence[State],
+    options: EnvelopeOptions,
+    zero: Result | None,
+    progress: Callable[[int], None] | None,
+    each: EachStep | None,
+) -> Envelope:
+    """Return the envelope of the states, without the extremes of its regions."""
     run = _Run(options, zero, each)
     with run.stack:
         for number, state in enumerate(states):

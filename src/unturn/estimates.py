@@ -23,12 +23,15 @@ class Estimates:
         Name -> `(n_cells,)`; NaN where not computed.
     points
         Name -> `(n_points,)`, of those that nodes have too.
+    shares
+        Name -> `(n_shares,)`, the same of each side of a border that a node lies on.
     errors
         Name of the strain error -> the whole of it, for each base of the arrays; gives the global error of a region.
     """
 
     cells: dict[str, Floats]
     points: dict[str, Floats]
+    shares: dict[str, Floats]
     errors: dict[str, StrainError]
 
 
@@ -68,6 +71,7 @@ def estimate(
     """
     cells: dict[str, Floats] = {}
     points: dict[str, Floats] = {}
+    shares: dict[str, Floats] = {}
     errors: dict[str, StrainError] = {}
     for name in names:
         base = base_of(name)
@@ -77,5 +81,5 @@ def estimate(
         if name == whole:
             cells[name] = errors[whole].strain_error
         else:
-            cells[name], points[name] = strain_jump(recovered(base), threads, base)
-    return Estimates(cells, points, errors)
+            cells[name], points[name], shares[name] = strain_jump(recovered(base), threads, base)
+    return Estimates(cells, points, shares, errors)

@@ -93,7 +93,7 @@ def plan_envelope(
                 f"{name} tells how far one step can be trusted and has no envelope: ask for it with 'unturn strain'."
             )
         if name not in (*MEASURES, *GEOMETRY, *SURFACE_AXES, "all"):
-            known = [*MEASURES, *SERIES_MEASURES]
+            known = [*MEASURES, *SERIES_MEASURES, *ESTIMATES]
             raise UsageError(
                 f"no measure is called {name!r}.{close_matches(name, known)} Measures: those of 'unturn strain', and of a "
                 f"series {', '.join(SERIES_MEASURES)}."

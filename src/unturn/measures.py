@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Callable, Sequence
+from collections.abc import Callable, Collection, Sequence
 from dataclasses import dataclass
 from functools import cached_property
 from typing import cast
@@ -329,7 +329,10 @@ DEFAULT_MECHANICAL = ("mechanical_strain", "equivalent_strain_mechanical", "prin
 
 
 def choose_measures(
-    names: Sequence[str] | None, base: str = "small", mechanical: bool = False
+    names: Sequence[str] | None,
+    base: str = "small",
+    mechanical: bool = False,
+    others: Collection[str] = (),
 ) -> tuple[str, ...]:
     """Return the names asked for, in table order, without repeats.
 
@@ -341,6 +344,8 @@ def choose_measures(
         ``small``, or a finite base: each small measure is then replaced by its counterpart of that base.
     mechanical
         Whether a free thermal strain is given: the default set then has the mechanical strain too.
+    others
+        Names that are chosen elsewhere, but may be meant by an unknown one.
 
     Raises
     ------
@@ -372,7 +377,7 @@ def choose_measures(
             wanted.add(counterpart.get(name, name))
         else:
             raise UsageError(
-                f"no measure is called {name!r}.{close_matches(name, [*known, 'all'])} "
+                f"no measure is called {name!r}.{close_matches(name, [*known, 'all', *others])} "
                 f"Measures: {', '.join((*SMALL, *GEOMETRY))}, or all; beside them: strain_error, strain_jump; finite ones: "
                 f"{', '.join(_finite_names())}."
             )

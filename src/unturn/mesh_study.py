@@ -11,7 +11,8 @@ import numpy as np
 from unturn.errors import UnturnError
 from unturn.fields import CellFields
 from unturn.pipeline import StrainOptions, compute
-from unturn.quantities import Found, Quantity, find_quantity
+from unturn.quantities import Found, find_quantity
+from unturn.quantity_text import Quantity
 from unturn.refinement import DECIDED, SMALL_RATIO, Study, Three, check_refinement, study
 from unturn.result import Result
 from unturn.summary import cell_counts, mesh_kind

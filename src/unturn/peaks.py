@@ -41,8 +41,9 @@ class Peak:
     growth
         Exponent a of `value ~ distance^-a` between the rings; NaN where there is no second ring, or values change sign.
     departure
-        How far the recovered strain at the node is from what the strain at the corners around it extrapolates to linearly,
-        as a share of the strain at the node (Frobenius norms); NaN where too few corners are around.
+        How far the recovered strain at a corner of the cell is from what the strain at the corners around it extrapolates
+        to linearly, as a share of the strain at that corner (Frobenius norms): the largest over the corners towards which
+        the exponent is above 0.2; NaN without such a corner, or where too few others are around.
     singular
         Suspected singular.
     """
@@ -69,17 +70,18 @@ class Peaks:
 
     Notes
     -----
-    The first ring is the cells that meet at the node, the second those that share a corner with them. Towards a singular
-    point the strain grows as a power of the distance (Williams 1952, Stress singularities resulting from various boundary
-    conditions in angular corners, J. Appl. Mech. 19, 526-528: exponent 0.46 at a re-entrant right angle, 0.5 at a crack;
-    1 under a point load in the plane, 2 in space). A power law looks the same on every mesh, so the recovered strain at
-    the node stands out from the strain around it by the same share however fine the mesh is, while a smooth field becomes
-    linear over a few cells: bending across two cells is linear already. A peak is suspected where its value grows from the
-    second ring to the first with an exponent above 0.2 and the strain at the node departs from the linear extrapolation of
-    the corners around it by more than 0.3 of itself. The strain is that of Green and Lagrange, which turning does not
-    change. The bounds were set on solved problems and tried on others: holes, cavities, thick and curved bars, bending,
-    torsion, steps; re-entrant corners, cracks, punches, point loads; 1 to 16 cells across, fourteen elements. A notch that
-    three or four cells hardly resolve looks the same: then, too, the value is not to be trusted.
+    The first ring is the cells that meet at the node, the second those that share a corner with them. Towards a
+    singular point the strain grows as a power of the distance (Williams 1952, Stress singularities resulting from
+    various boundary conditions in angular corners, J. Appl. Mech. 19, 526-528: exponent 0.46 at a re-entrant right
+    angle, 0.5 at a crack; 1 under a point load in the plane, 2 in space). A power law looks the same on every mesh, so
+    the recovered strain at the node stands out from the strain around it by the same share however fine the mesh is,
+    while a smooth field becomes linear over a few cells: bending across two cells is linear already. A peak is
+    suspected where towards a corner of its cell the value grows from the second ring to the first with an exponent
+    above 0.2 and the strain at that corner departs from the linear extrapolation of the corners around it by more than
+    0.3 of itself. The strain is that of Green and Lagrange, which turning does not change. The bounds were set on
+    solved problems and tried on others: holes, cavities, thick and curved bars, bending, torsion, steps; re-entrant
+    corners, cracks, punches, point loads; 1 to 16 cells across, fourteen elements. A notch that three or four cells
+    hardly resolve looks the same: then, too, the value is not to be trusted.
     """
 
     def __init__(self, recovered: Recovered, centroid: Floats, volume: Floats) -> None:
@@ -120,16 +122,14 @@ class Peaks:
             nan = float("nan")
             return Peak(-1, nan, -1, (), (), nan, nan, False)
         cell = int(known[signed[known].argmax()])
-        share, (distances, means) = self._towards(signed, cell)
+        share, (distances, means), departure = self._towards(signed, cell)
         growth = _exponent(distances, means)
-        if share not in self._departures:
-            self._departures[share] = self._departure(share)
-        departure = self._departures[share]
-        singular = growth > GROWING and departure > DEPARTURE
         sign = -1.0 if smallest else 1.0
         point = int(self.shares.point[share])
         shown = tuple(sign * m for m in means)
-        return Peak(cell, float(values[cell]), point, distances, shown, growth, departure, bool(singular))
+        return Peak(
+            cell, float(values[cell]), point, distances, shown, growth, departure, departure > DEPARTURE
+        )
 
     def next_peak(
         self,
@@ -149,19 +149,23 @@ class Peaks:
         for _ in range(_MOST):
             if peak.cell < 0 or not suspected(peak):
                 return peak
-            share, _ = self._towards(-values if smallest else values, peak.cell)
+            share, _, _ = self._towards(-values if smallest else values, peak.cell)
             rest[self._rings(share).cells] = False
             rest[peak.cell] = False
             peak = self.find(values, np.flatnonzero(rest), smallest)
         return peak if not suspected(peak) else self.find(values, np.zeros(0, dtype=np.int64), smallest)
 
-    def _towards(self, signed: Floats, cell: int) -> tuple[int, Profile]:
-        """Return the corner of a cell towards which values grow most, and the rings around it."""
+    def _towards(self, signed: Floats, cell: int) -> tuple[int, Profile, float]:
+        """Return the corner of a cell towards which values grow most, the rings around it, and the largest departure.
+
+        The departure is that of the corners towards which they keep growing; NaN without such a corner.
+        """
         corners = [int(c) for c in np.unique(_entries(self.corners, np.array([cell])))]
         profiles = [self._profile(signed, c) for c in corners]
         growth = np.nan_to_num([_exponent(*p) for p in profiles], nan=-np.inf)
         best = int(np.argmax(growth >= growth.max() - 1e-6))
-        return corners[best], profiles[best]
+        departures = [self._departure(c) for c, g in zip(corners, growth) if g > GROWING]
+        return corners[best], profiles[best], float(np.fmax.reduce([np.nan, *departures]))
 
     def _rings(self, share: int) -> _Rings:
         if share not in self._known:
@@ -195,6 +199,11 @@ class Peaks:
         return _Rings(cells, starts, volume, tuple(mean.tolist()))
 
     def _departure(self, share: int) -> float:
+        if share not in self._departures:
+            self._departures[share] = self._find_departure(share)
+        return self._departures[share]
+
+    def _find_departure(self, share: int) -> float:
         """Return the share of the strain at a node that the linear strain of the corners around it leaves over.
 
         The corners are those of the first ring, or of both where the first has too few.

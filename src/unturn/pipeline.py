@@ -6,6 +6,8 @@ from collections.abc import Sequence
 from dataclasses import dataclass, field, replace
 from typing import Any
 
+import numpy as np
+
 from unturn.borders import ORIGINAL_POINT
 from unturn.errors import InputError, UsageError
 from unturn.estimates import Estimates, check_estimates, estimate
@@ -63,8 +65,12 @@ class Computed:
             return {}, dict(self.fields.arrays), {("cell", n): c for n, c in self.fields.components.items()}
         points: dict[str, Array] = {**self.nodes.arrays, **self.nodes.changes}
         layout = self.nodes.layout
-        if self.estimates is not None:
-            points |= {n: values[layout.point] for n, values in self.estimates.points.items()}
+        if self.estimates is not None and layout.cells is None:
+            points |= self.estimates.points
+        elif self.estimates is not None:
+            share = layout.shares(self.nodes.recovered)
+            each = self.estimates.shares.items()
+            points |= {n: np.where(share >= 0, values[share], np.nan) for n, values in each}
         if layout.cells is not None:
             points[ORIGINAL_POINT] = layout.point
         cells = {} if self.estimates is None else dict(self.estimates.cells)

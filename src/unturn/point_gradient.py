@@ -76,7 +76,7 @@ def _flat(J: Floats, det: Floats) -> NDArray[np.bool_] | None:
     """Return which cells have no volume; None when no cell can be flat: the smallest determinant is large enough."""
     values = J.reshape(-1)
     # no smaller than _FLAT times the product of the columns of any cell
-    bound = _FLAT * (float(np.einsum("i,i->", values, values)) / 3.0) ** 1.5
+    bound = _FLAT * np.float64(np.einsum("i,i->", values, values) / 3.0) ** 1.5
     if float(np.abs(det).min(initial=np.inf)) > bound:
         return None
     squares = J * J

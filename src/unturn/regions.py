@@ -186,15 +186,18 @@ def _parts(corners: Sequence[NDArray[np.int64]], n_points: int) -> NDArray[np.in
 
 def merge_coincident(points: Floats) -> tuple[NDArray[np.int64], float]:
     """Return for each point the smallest position among coincident points, and the tolerance used."""
-    from scipy import sparse
-    from scipy.sparse.csgraph import connected_components
-    from scipy.spatial import cKDTree
-
     finite = np.isfinite(points).all(axis=1)
     spread = float(np.ptp(points[finite], axis=0).max()) if finite.any() else 0.0
     tolerance = 1e-9 * spread
     label = np.arange(len(points))
     where = np.flatnonzero(finite)
+    where = where[_near_along(points[where], tolerance)]
+    if not len(where):
+        return label, tolerance
+    from scipy import sparse
+    from scipy.sparse.csgraph import connected_components
+    from scipy.spatial import cKDTree
+
     pairs = cKDTree(points[where]).query_pairs(tolerance, output_type="ndarray")
     if len(pairs):
         graph = sparse.csr_array(
@@ -205,6 +208,22 @@ def merge_coincident(points: Floats) -> tuple[NDArray[np.int64], float]:
         np.minimum.at(smallest, part, where)
         label[where] = smallest[part]
     return label, tolerance
+
+
+def _near_along(points: Floats, tolerance: float) -> NDArray[np.bool_]:
+    """Return which points have another within a tolerance along one direction: others have none anywhere.
+
+    The direction is one along which hardly any two points of a regular grid are that near.
+    """
+    found = np.zeros(len(points), dtype=bool)
+    if len(points) < 2:
+        return found
+    direction = np.sqrt([1.0, 2.0, 3.0, 5.0, 7.0])[: points.shape[1]]
+    along = points @ (direction / np.linalg.norm(direction))
+    order = np.argsort(along)
+    near = np.diff(along[order]) <= tolerance + 1e-15 * float(np.abs(along).max())
+    found[order[:-1][near]] = found[order[1:][near]] = True
+    return found
 
 
 def named_regions(

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import math
 import re
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
@@ -11,6 +12,7 @@ from typing import Literal
 import numpy as np
 from numpy.typing import NDArray
 
+from unturn.around import Trust
 from unturn.envelope_places import CellPlaces
 from unturn.errors import UnturnError
 from unturn.extremes import Kind, Stored
@@ -24,6 +26,8 @@ from unturn.verdict import Verdict
 
 _FILE = re.compile(r"(?:[^:]*/)?([^:/]*?\.\w+)(?=: | is | has | cannot | holds )")
 """A file name, with or without folders, at the start of an error."""
+UNKNOWN = Trust(math.nan)
+"""Of a value of which nothing is known."""
 
 
 @dataclass(frozen=True, eq=False)
@@ -70,6 +74,8 @@ class EnvelopeOptions:
         Names of regions; none: all of them.
     folder
         Where the temporary file of the tensor range lies; None: the system's own place.
+    full
+        Tell of every extreme how far to trust it, or only of those of the table.
     """
 
     strain: StrainOptions = field(default_factory=StrainOptions)
@@ -78,6 +84,7 @@ class EnvelopeOptions:
     keep_going: bool = False
     regions: tuple[str, ...] = ()
     folder: Path | None = None
+    full: bool = False
 
 
 @dataclass(frozen=True, eq=False)
@@ -98,6 +105,43 @@ class Tracked:
     which: Literal["maximum", "minimum"]
     values: Stored
     made_by: tuple[Stored, ...]
+
+
+@dataclass(frozen=True, eq=False)
+class Extreme:
+    """The extreme of one number over the places of a region and the states.
+
+    Attributes
+    ----------
+    of
+        The extreme of the measure.
+    column, component
+        Which component: its position and name; zero and empty for a scalar.
+    value
+        The value.
+    place
+        Which of the places holds it; -1 for none.
+    states
+        The states that made it there: one, two for a range, none for a sum.
+    percentile
+        99.9 % of the volume is below; NaN for smallest values.
+    trust
+        How far to trust it, as a value of its state; of a range the bounds of both states added.
+    """
+
+    of: Tracked
+    column: int
+    component: str
+    value: float
+    place: int
+    states: tuple[int, ...]
+    percentile: float
+    trust: Trust = UNKNOWN
+
+    @property
+    def name(self) -> str:
+        """The number: its measure and component."""
+        return self.of.measure + (f"_{self.component}" if self.component else "")
 
 
 @dataclass(frozen=True, eq=False)
@@ -131,6 +175,8 @@ class Envelope:
         Sentences for the user.
     numbers
         The solver's element or node numbers, where an array holds them.
+    extremes
+        Those of each region, in the order of `judged`.
     """
 
     options: EnvelopeOptions
@@ -146,6 +192,7 @@ class Envelope:
     failures: dict[int, UnturnError]
     notes: tuple[str, ...]
     numbers: Numbering | None
+    extremes: tuple[tuple[Extreme, ...], ...] = ()
 
 
 def named(name: str, error: UnturnError, file: str = "") -> UnturnError:

@@ -39,12 +39,18 @@ class Stepwise:
 
     def __init__(self, options: StrainOptions, zero: Result | None = None) -> None:
         self._zero = zero
-        asked = tuple(options.measures or ())
+        asked = (
+            () if isinstance(options.measures, str) else tuple(options.measures or ())
+        )  # a text is refused later
         self.series = choose_series_measures(asked, options.base, options.solve)
         if self.series:
             _check_place(options, self.series[0])
         self.options = options
         self._plain = tuple(n for n in asked if n not in SERIES_MEASURES)
+        self._kept: tuple[str, ...] = ()
+        if self._plain and options.at != "surface":  # names of surfaces are looked at where they are computed
+            heated = options.thermal_expansion is not None
+            self._kept = choose_measures(self._plain, options.base, heated, others=SERIES_MEASURES)
         kinds = ("cell", "point") if options.at == "nodes" else ("cell",)
         self._changes = {
             k: StepChanges(self.series, options.solve, options.equivalent_poisson) for k in kinds
@@ -90,9 +96,7 @@ class Stepwise:
         changed = self._changed(computed, result)
         if not self.series:
             return computed
-        kept: tuple[str, ...] = ()
-        if self._plain:
-            kept = choose_measures(self._plain, options.base, options.thermal_expansion is not None)
+        kept = self._kept
         frame = None if options.frame is None else parse_frame(options.frame, result)
         labels = {
             n: c if frame is None else frame.component_names(len(c))

@@ -117,7 +117,7 @@ def _verdicts(summary: Summary) -> list[str]:
     if len(shown) > _MOST_VERDICTS:
         lines.append(f"  {len(shown) - _MOST_VERDICTS} more regions with smaller errors")
     if summary.finite_only:
-        return [*lines, *_advice(FINITE_ONLY[summary.options.solve])]
+        return [*lines, *_advice(_FINITE_ONLY[summary.options.solve])]
     tried = [(r.region.name, trial) for r in shown[:_MOST_VERDICTS] for trial in r.trials]
     lines += [tried_text(name, trial, summary.options.solve) for name, trial in tried]
     by_action: dict[str, list[str]] = {}
@@ -130,7 +130,7 @@ def _verdicts(summary: Summary) -> list[str]:
     return lines
 
 
-FINITE_ONLY: dict[Solve, str] = {
+_FINITE_ONLY: dict[Solve, str] = {
     "nonlinear": "that is for the small strain; the arrays that are written are finite measures, which contain no turning",
     "unknown": "that is for the small strain; the arrays that are written are finite measures, which contain no turning "
     "but are real only if the solve was geometrically nonlinear (say which with --solve)",
@@ -393,8 +393,8 @@ def _micro(value: float) -> str:
     return f"{micro:.0f}" if abs(micro) >= 100 else f"{micro:.3g}"
 
 
-def _above(value: float) -> str:
-    """Return a bound with two digits, never rounded down.
+def _above(value: float, least: float = 1e-6) -> str:
+    """Return a bound with two digits, never rounded down; less than `least` is nothing.
 
     Examples
     --------
@@ -403,7 +403,7 @@ def _above(value: float) -> str:
     """
     if not math.isfinite(value):
         return " -"
-    if value < 1e-6:
+    if value < least:
         return "0"
     unit = 10.0 ** (math.floor(math.log10(value)) - 1)
     rounded = math.ceil(value / unit * (1.0 - 1e-12)) * unit

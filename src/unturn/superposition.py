@@ -37,7 +37,7 @@ def superposed_states(
     Parameters
     ----------
     cases
-        Load case -> reads it. Each is read once for every eight combinations, one at a time.
+        Load case -> reads it. Each is read once for every eight combinations that are gone through, one at a time.
     combinations
         See `read_combinations`.
     options

@@ -11,7 +11,7 @@ from collections.abc import Iterator
 from dataclasses import dataclass, replace
 from itertools import pairwise
 from threading import Lock
-from typing import Literal
+from typing import Literal, NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
@@ -275,7 +275,26 @@ class _Job:
         return (volume, error, strain), departure, norms(nodal - middle[:, None]).T
 
 
-def strain_jump(recovered: Recovered, threads: int | None = None, base: str = "") -> tuple[Floats, Floats]:
+class StrainJump(NamedTuple):
+    """The largest difference between the strains that elements have where they meet.
+
+    Attributes
+    ----------
+    cells
+        `(n_cells,)` the largest jump at the nodes of each cell; NaN where not computed.
+    points
+        `(n_points,)` `max norm(e_a - e_b)` over the pairs of elements of one group that meet at the node, e the strain
+        of each element itself at the node; the largest over its groups; NaN at nodes of no computed cell.
+    shares
+        `(n_shares,)` the same of each share of the nodes, that is of one group.
+    """
+
+    cells: Floats
+    points: Floats
+    shares: Floats
+
+
+def strain_jump(recovered: Recovered, threads: int | None = None, base: str = "") -> StrainJump:
     """Return the largest difference between the strains that elements have where they meet.
 
     Parameters
@@ -287,13 +306,6 @@ def strain_jump(recovered: Recovered, threads: int | None = None, base: str = ""
     base
         Of which strain, as in `strain_error`.
 
-    Returns
-    -------
-    cells
-        `(n_cells,)` the largest jump at the nodes of each cell; NaN where not computed.
-    points
-        `(n_points,)` `max norm(e_a - e_b)` over the pairs of elements of one group that meet at the node, e the strain
-        of each element itself at the node; the largest over its groups; NaN at nodes of no computed cell.
     """
     shares, model = recovered.shares, recovered.shares.model
     jump = np.full(len(shares), np.nan)
@@ -319,7 +331,7 @@ def strain_jump(recovered: Recovered, threads: int | None = None, base: str = ""
             usable = recovered.usable[block.index]
             cells[block.index[usable]] = np.fmax.reduce(jump[own[usable]], axis=1)
             np.fmax.at(points, block.connectivity[usable], jump[own[usable]])
-    return cells, points
+    return StrainJump(cells, points, jump)
 
 
 class _Meeting:

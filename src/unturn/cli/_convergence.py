@@ -48,7 +48,7 @@ def convergence(
     from unturn.cli._output import check_place, write_json
     from unturn.convergence_text import refinement_data, refinement_text
     from unturn.mesh_study import study_meshes
-    from unturn.quantities import FORMS, parse_quantity
+    from unturn.quantity_text import FORMS, parse_quantity
 
     if not quantity:
         raise UsageError(f"say what is to be followed over the meshes with --quantity: {FORMS}.")

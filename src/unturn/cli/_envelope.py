@@ -135,9 +135,8 @@ def envelope(
     chosen = None if combinations is None else read_combinations(combinations)
     asked = Files(files, tables, chosen, as_series, keep_going, zero_step)
     states, strain, zero = open_states(asked, options)
-    wanted = EnvelopeOptions(
-        strain, asked.kind, tensor_range, keep_going, tuple(region or ()), out.absolute().parent
-    )
+    folder, full = out.absolute().parent, json is not None
+    wanted = EnvelopeOptions(strain, asked.kind, tensor_range, keep_going, tuple(region or ()), folder, full)
     found = _run(states, wanted, zero, steps_output, prefix, overwrite)
     base = read_first(files) if chosen is not None else found.model.result
     _write(found, base, out, [str(f) for f in (*files, *tables)], prefix, overwrite, json)
@@ -196,7 +195,8 @@ def _write(
 ) -> None:
     from unturn import io
     from unturn._api import add_arrays
-    from unturn.envelope_text import envelope_data, envelope_text
+    from unturn.envelope_json import envelope_data
+    from unturn.envelope_text import envelope_text
 
     result = add_arrays(
         base, found.places.on, found.arrays, found.components, prefix=prefix, overwrite=overwrite

@@ -199,7 +199,7 @@ class _Job:
         return io.open_result(self.file)
 
     def _number(self, opened: ResultFile) -> int:
-        from unturn.cli._strain import chosen_step
+        from unturn.cli._steps import chosen_step
 
         if self.step == "all":
             raise UsageError("a picture shows one --step; all of them are drawn with -o NAME.gif.")
@@ -209,7 +209,7 @@ class _Job:
         self, opened: ResultFile, number: int, requests: Sequence[PictureRequest], options: StrainOptions,
         zero_step: int | None, **of_plan: Any,
     ) -> Step:  # fmt: skip
-        from unturn.cli._strain import chosen_step
+        from unturn.cli._steps import chosen_step
         from unturn.pictures.computing import Step
 
         result = opened.read(number)

@@ -10,7 +10,6 @@ import typer
 
 from unturn.cli import _options as o
 from unturn.cli._shared import EVERY, PLACES, strain_options
-from unturn.cli._steps import chosen_step
 from unturn.cli._strain_job import Failure, StrainJob
 from unturn.errors import UnturnError, UsageError
 
@@ -130,6 +129,3 @@ def _run(job: StrainJob, files: list[Path], json: Path | None) -> None:
         typer.echo(f"unturn: {len(failed)} of {len(files)} files failed", err=True)
     if failed or job.failed:
         raise typer.Exit(max(f.error.exit_status for f in (*job.failed, *failed)))
-
-
-__all__ = ["chosen_step", "strain"]

@@ -29,6 +29,7 @@ from unturn.result import Array, CellBlock, Result
 _LINEAR = ("vertex", "line", "triangle", "quad", "tetra", "pyramid", "wedge", "hexahedron")
 _FULL = ("quad9", "wedge18", "hexahedron27")
 _QUADRATIC = ("line3", "triangle6", "quad8", "tetra10", "pyramid13", "wedge15", "hexahedron20")
+_SIGNALLED = 128  # exit statuses above it mean a signal
 
 
 @dataclass(frozen=True)
@@ -182,14 +183,18 @@ def _read_quietly(path: Path, line: _Line) -> Any:
         med_to_meshio_type.setdefault(med_name, cell_type)
     if not path.is_file():
         raise InputError(f"{path}: there is no such file.")
+    if line.meshio_name == "nastran":
+        _check_complete(path)
     heard = io.StringIO()
-    # meshio raises anything, and exits.
+    # meshio raises anything, and exits with status 1 or a text; a request to end the program has another status.
     try:
         with warnings.catch_warnings(), contextlib.redirect_stdout(heard), contextlib.redirect_stderr(heard):
             warnings.simplefilter("ignore")
             warnings.filterwarnings("error", message="string or file could not be read")
             return meshio.read(path, file_format=line.meshio_name)
     except (Exception, SystemExit) as error:
+        if isinstance(error, SystemExit) and isinstance(error.code, int) and error.code > _SIGNALLED:
+            raise
         reason = heard.getvalue().strip().splitlines()
         said = " ".join(reason[:2]) if isinstance(error, SystemExit) else f"{type(error).__name__}: {error}"
         raise InputError(
@@ -197,6 +202,15 @@ def _read_quietly(path: Path, line: _Line) -> Any:
             "or uses a "
             "part of the format that is not read: convert the result to VTU or XDMF."
         ) from error
+
+
+def _check_complete(path: Path) -> None:
+    """Refuse bulk data without its last line: meshio would read on for ever."""
+    with path.open("rb") as file:
+        if not any(row.startswith(b"ENDDATA") for row in file):
+            raise InputError(
+                f"{path}: the bulk data has no ENDDATA: the file is cut off. Write or copy it again."
+            )
 
 
 def _flat(values: Array) -> Array:

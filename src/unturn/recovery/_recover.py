@@ -90,7 +90,8 @@ class Recovered:
 
 
 _TITLES = {
-    "patch": "values at nodes: polynomial through the accurate points around each corner, least squares",
+    "patch": "values at nodes: polynomial through the accurate points around each corner, least squares; on borders "
+    "shifted to the derivative along their edges",
     "extrapolate": "values at nodes: extrapolated in each element, averaged weighted by volume",
     "average": "values at nodes: average of the elements weighted by volume",
 }
@@ -133,6 +134,14 @@ def recover_gradient(
     patches of usable corners of the cells around, evaluated at the node; the same of the cells around those; for order 1
     the linear polynomial along the directions that the samples cover; else what the elements extrapolate to the node,
     averaged weighted by volume.
+
+    On borders of solids and plane meshes (facets that one cell of the group alone has) these values are then shifted. Along
+    an edge of such a facet the displacement of its own nodes has a derivative, at the accurate points of a line of the
+    element's order as accurate as inside the body; what it has more than the recovered gradient, interpolated along the
+    edge, is extrapolated to the ends. A corner takes the smallest change (in the mean square where its edges disagree)
+    that makes up for it; directions that no edge covers, the normal of a border that bends by less than 40 degrees, keep
+    their values. Nodes between corners take the mean of the shifts of their corners. A linear displacement, and a
+    quadratic one in elements that hold it, shifts nothing.
 
     Examples
     --------

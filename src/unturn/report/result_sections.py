@@ -14,7 +14,7 @@ from unturn.report.parts import Cell, Figures, Part, Said, Section, Table
 from unturn.report.sections import LEVELS
 from unturn.report.words import NONE, bound, coordinates, outward, percent, place_of, unit_name
 from unturn.summary import RegionSummary, Summary
-from unturn.summary_text import FINITE_ONLY, tried_text
+from unturn.summary_text import _FINITE_ONLY, tried_text
 from unturn.trusted import Growth, Which, table_rows
 from unturn.verdicts.finding import Place
 from unturn.verdicts.wording import number, place_text
@@ -43,7 +43,7 @@ def verdicts(content: Content) -> Section:
             actions.setdefault(r.verdict.action, []).append(r.region.name)
     solve = summary.options.solve
     if summary.finite_only:
-        return Section("verdicts", _TRUSTED, [*parts, Said([f"{FINITE_ONLY[solve]}."])])
+        return Section("verdicts", _TRUSTED, [*parts, Said([f"{_FINITE_ONLY[solve]}."])])
     advice = [f"{', '.join(names)}: {action}." for action, names in actions.items()]
     advice += [tried_text(r.region.name, t, solve).strip() for r in summary.regions for t in r.trials]
     return Section("verdicts", _TRUSTED, [*parts, *([Said(advice, "list")] if advice else [])])

@@ -20,7 +20,7 @@ from unturn.report.words import (
     unit_name,
 )
 from unturn.summary import CAUTION, Summary, cell_counts, equivalent_form
-from unturn.summary_text import FINITE_ONLY, agreement_text, extent_of, kind_text, removed_text
+from unturn.summary_text import _FINITE_ONLY, agreement_text, extent_of, kind_text, removed_text
 from unturn.verdicts.finding import Report
 from unturn.verdicts.wording import counts_text, number
 
@@ -49,7 +49,7 @@ def outcome(content: Content) -> Section:
     word, tone = LEVELS[worst]
     if content.summary.finite_only:
         rows.append(
-            ("Small strain", word, "", f"worst in {names}; {FINITE_ONLY[content.summary.options.solve]}")
+            ("Small strain", word, "", f"worst in {names}; {_FINITE_ONLY[content.summary.options.solve]}")
         )
     else:
         rows.append(("Small strain", word, tone, f"worst in {names}; see the verdict of each region"))

@@ -162,7 +162,7 @@ def _assemble(
         of_solid = np.flatnonzero(candidates.solid == s)
         inside = solid.there[candidates.cell[of_solid]]
         low, high = _jacobian_range(model, solid, inside)
-        bad = (low <= 0) & (high >= 0)
+        bad = ~((low > 0) | (high < 0))  # NaN too: coordinates that are not finite
         broken.append(candidates.parent[of_solid[bad]])
         for f, face in enumerate(solid.row.face_nodes):
             mask = ~bad & (candidates.number[of_solid] == f)
@@ -190,7 +190,8 @@ def _jacobian_range(model: Model, solid: Solid, cells: Ints) -> tuple[Floats, Fl
         conn = solid.block.cells.connectivity[distinct[start:stop]]
         chunk = ElementChunk(model.fields, conn, solid.row, None)
         for at in gradients:
-            det = chunk.measure(at)
+            with np.errstate(invalid="ignore", over="ignore"):
+                det = chunk.measure(at)
             low[start:stop] = np.minimum(low[start:stop], det)
             high[start:stop] = np.maximum(high[start:stop], det)
     return low[inverse], high[inverse]
