@@ -15,6 +15,7 @@ from unturn.series import SERIES_MEASURES
 from unturn.states import Envelope, Extreme
 from unturn.summary import CAUTION, cell_counts, equivalent_form
 from unturn.summary_text import (
+    _FINITE_ONLY,
     _PLUS_MINUS,
     _above,
     _advice,
