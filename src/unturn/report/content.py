@@ -10,7 +10,7 @@ from typing import Any, Literal
 from unturn.measures import MEASURES
 from unturn.report_keys import ReportWish
 from unturn.summary import RegionSummary, Summary
-from unturn.trusted import Which, table_rows
+from unturn.trusted import Growth, Which, table_rows
 from unturn.verdicts.finding import Report
 
 
@@ -133,6 +133,12 @@ class Content:
         """Whether no limit and no tolerance is exceeded or undecided."""
         judged = [self.limits, self.versus.findings if self.versus and self.versus.judged else None]
         return all(report is None or report.passed for report in judged)
+
+    @property
+    def suspects(self) -> list[Growth]:
+        """What is suspected singular among the extremes that are told."""
+        told = {(e.array, e.which) for e in self.extremes}
+        return [g for g in self.summary.growths if g.location != "cells" or (g.array, g.which) in told]
 
     @property
     def images(self) -> tuple[Shown, ...]:

@@ -35,7 +35,7 @@ def limits(content: Content) -> Section | None:
 
 def _finding(f: Finding) -> list[Cell]:
     where = place_text(f.place)
-    said = f"{f.title}{': ' if where else ''}{where}{'. ' if f.message else ''}{f.message}"
+    said = f"{f.title}{': ' if where else ''}{where}{'; ' if f.message else ''}{f.message}"
     return [
         Cell(f.state, tone=_TONES[f.state]), Cell(f.id), Cell(measured_text(f).replace(" +-", " ± "), f.value),
         Cell(bound_text(f)), Cell(margin_text(f), f.margin), Cell(f.unit), Cell(said),

@@ -70,11 +70,9 @@ def extremes(content: Content) -> Section:
         Table("shares", "Values that a share of the volume does not go beyond",
               ("region", "what", *(f"{s:g} %" for s in _SHARES), "unit"), list(_shares(summary)), frozenset(range(2, 6))),
     ]  # fmt: skip
-    told = {(e.array, e.which) for e in content.extremes}
-    suspects = [g for g in summary.growths if g.location != "cells" or (g.array, g.which) in told]
-    if suspects:
+    if content.suspects:
         heads = ("region", "what", "value", "grows towards", "next peak away from it", "unit")
-        grown = [_growth(g, summary) for g in suspects]
+        grown = [_growth(g, summary) for g in content.suspects]
         parts.append(
             Said(["A peak that keeps growing towards a node is not resolved by this mesh, and no finer mesh need ever "
                   "resolve it: its value is that of the mesh, not of the part."])

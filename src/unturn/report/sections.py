@@ -53,16 +53,9 @@ def outcome(content: Content) -> Section:
         )
     else:
         rows.append(("Small strain", word, tone, f"worst in {names}; see the verdict of each region"))
-    suspects = len({(g.region, g.location) for g in content.summary.growths})
-    if suspects:
-        rows.append(
-            (
-                "Peaks",
-                "suspected singular",
-                "open",
-                "some extremes keep growing towards a node as the mesh is refined",
-            )
-        )
+    if content.suspects:
+        said = "some extremes keep growing towards a node that the mesh does not resolve"
+        rows.append(("Peaks", "suspected singular", "open", said))
     if content.summary.warnings:
         n = len(content.summary.warnings)
         rows.append(("Warnings", str(n), "open", "see the cautions"))

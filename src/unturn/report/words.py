@@ -15,7 +15,7 @@ UNITS = {"strain": (1e6, "microstrain"), "radian": (180.0 / math.pi, "degree")}
 """Unit of an array -> factor to the unit that is told, and its name."""
 
 NONE = "–"
-_DIGITS = 4
+_DIGITS = 5
 
 
 def shown_value(value: float, unit: str) -> float:
@@ -41,7 +41,7 @@ def outward(value: float, which: Which, unit: str, digits: int = _DIGITS) -> str
     Examples
     --------
     >>> outward(0.00100000001, "maximum", "strain"), outward(-0.0012345678, "minimum", "strain")
-    ('1001', '-1235')
+    ('1000.1', '-1234.6')
     """
     if not math.isfinite(value):
         return NONE
