@@ -6,6 +6,7 @@ import base64
 import csv
 import hashlib
 import html.parser
+import itertools
 import json
 import re
 import shutil
@@ -117,7 +118,8 @@ class Page(html.parser.HTMLParser):
         page = cls()
         page.feed(text)
         page.close()
-        assert not page.open and not page.wrong, page.wrong
+        assert not page.wrong
+        assert not page.open
         return page
 
     def handle_starttag(self, tag: str, attrs: list[tuple[str, str | None]]) -> None:
@@ -358,7 +360,7 @@ def test_the_page_can_be_read_without_seeing_it(made: dict[str, Any]) -> None:
     assert all(len(seen.all(tag)) == 1 for tag in ("header", "nav", "main", "footer", "h1"))
     levels = [int(tag[1]) for tag, _, _ in seen.found if re.fullmatch(r"h[1-6]", tag)]
     assert levels[0] == 1
-    assert all(b - a <= 1 for a, b in zip(levels, levels[1:]))
+    assert all(b - a <= 1 for a, b in itertools.pairwise(levels))
     ids = [a["id"] for _, a, _ in seen.found if "id" in a]
     assert len(ids) == len(set(ids))
     for _, attrs, _ in seen.found:

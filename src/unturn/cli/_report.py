@@ -82,7 +82,7 @@ def report(
     from unturn.pictures.plan import parse_plan, read_plan
     from unturn.report.data import report_data
     from unturn.report.gather import Request, gather
-    from unturn.report.page import html_page, sections_of
+    from unturn.report.page import html_page, page_template, sections_of
 
     day = date_of(today)
     target = output or file.with_name(f"{file.stem}.report.{kind.value}")
@@ -100,12 +100,13 @@ def report(
     )
     request = Request(opened, result, number, made, plan, _command(), day, options.threads)
     check_places((target, write_plan), [file, *request.named])
+    template = page_template() if kind is FormatChoice.html else None
     content = gather(request)
     sections = sections_of(content)
-    if kind is FormatChoice.json:
+    if template is None:
         write_json(report_data(content), target)
     else:
-        write_text(html_page(content, sections), target)
+        write_text(html_page(content, sections, template), target)
     if write_plan is not None:
         write_text(text, write_plan)
     files = [] if folder is None else write_folder(content, sections, folder, [file, *request.named])

@@ -15,6 +15,7 @@ from unturn.pipeline import Computed
 from unturn.report.content import Beyond, Content, FileRecord, element_of, extremes_of
 from unturn.report.drawing import draw_pictures
 from unturn.report.over_steps import over_steps
+from unturn.report.plots import check_plotting
 from unturn.report.side import side_of
 from unturn.report.versus import compare_with
 from unturn.result import Result
@@ -82,6 +83,9 @@ def gather(request: Request) -> Content:
     """
     plan, wish = request.plan, request.plan.report
     opened = request.opened
+    series = wish.steps and opened.steps is not None and len(opened.steps) > 1
+    if series:
+        check_plotting()
     side = side_of(opened, request.result, plan, request.threads)
     pictures = draw_pictures(side, plan)
     limits = _limits(opened, request) if wish.limits else None
@@ -104,7 +108,7 @@ def gather(request: Request) -> Content:
         tuple(pictures),
         limits,
         versus,
-        over_steps(opened, plan, side.summary, request.threads) if wish.steps else None,
+        over_steps(opened, plan, side.summary, request.threads) if series else None,
     )
 
 

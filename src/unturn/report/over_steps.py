@@ -12,8 +12,8 @@ from unturn.summary import Summary, foremost, summarise
 from unturn.trusted import Which
 
 
-def over_steps(opened: ResultFile, plan: Plan, summary: Summary, threads: int | None) -> Series | None:
-    """Return the extremes of every step; None of a file that is no series.
+def over_steps(opened: ResultFile, plan: Plan, summary: Summary, threads: int | None) -> Series:
+    """Return the extremes of every step of a series.
 
     Parameters
     ----------
@@ -29,8 +29,7 @@ def over_steps(opened: ResultFile, plan: Plan, summary: Summary, threads: int | 
     InputError
         A step that cannot be used.
     """
-    if opened.steps is None or len(opened.steps) < 2:
-        return None
+    assert opened.steps is not None
     names = [r.region.name for r in foremost(summary.regions)]
     stepwise = Stepwise(series_options(opened, plan, threads), zero_of(opened, plan))
     each: list[dict[tuple[str, str, Which], Extreme]] = []

@@ -5,7 +5,7 @@ from __future__ import annotations
 import base64
 from collections.abc import Callable, Sequence
 from pathlib import Path
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 from unturn.errors import MissingExtraError
 from unturn.report import held_sections as held
@@ -15,6 +15,9 @@ from unturn.report.content import Content, Shown
 from unturn.report.parts import Section
 from unturn.summary import CAUTION
 from unturn.verdicts.wording import clean, short_name
+
+if TYPE_CHECKING:
+    from jinja2 import Template
 
 _SECTIONS: tuple[Callable[[Content], Section | None], ...] = (
     about.outcome, held.limits, result.verdicts, result.extremes, result.left_out, result.pictures, held.versus, held.steps,
@@ -28,8 +31,8 @@ def sections_of(content: Content) -> list[Section]:
     return [section for make in _SECTIONS if (section := make(content)) is not None]
 
 
-def html_page(content: Content, sections: Sequence[Section]) -> str:
-    """Return a report as one HTML file: images inside, no script, nothing from elsewhere.
+def page_template() -> Template:
+    """Return what lays a page out.
 
     Raises
     ------
@@ -47,18 +50,22 @@ def html_page(content: Content, sections: Sequence[Section]) -> str:
         trim_blocks=True, lstrip_blocks=True, keep_trailing_newline=True, finalize=_plain,
     )  # fmt: skip
     environment.filters.update(css=css_text, source=image_source)
+    return environment.get_template("page.html")
+
+
+def html_page(content: Content, sections: Sequence[Section], template: Template) -> str:
+    """Return a report as one HTML file: images inside, no script, nothing from elsewhere."""
     wish = content.wish
     main = content.files[0]
-    return environment.get_template("page.html").render(
+    revision = f"revision {wish.revision}" if wish.revision else ""
+    return template.render(
         content=content,
         wish=wish,
         sections=sections,
         signers=(("Prepared", wish.prepared), ("Checked", wish.checked), ("Approved", wish.approved)),
         result_name=short_name(main.path),
         result_hash=main.sha256,
-        identity=" · ".join(
-            t for t in (wish.number or content.title, wish.revision and f"revision {wish.revision}") if t
-        ),
+        identity=" · ".join(part for part in (wish.number or content.title, revision) if part),
         caution=CAUTION,
     )
 

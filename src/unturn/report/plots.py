@@ -21,14 +21,25 @@ _STYLES = (
 _SETTINGS = {"svg.hashsalt": "unturn", "svg.fonttype": "path", "font.family": "DejaVu Sans", "font.size": 8}
 
 
-def plot_series(series: Series) -> list[Shown]:
-    """Return a plot for each number of the regions over the steps.
+def check_plotting() -> None:
+    """Refuse a computer without the plotting library, before anything is computed.
 
     Raises
     ------
     MissingExtraError
-        No plotting library.
+        It is not installed.
     """
+    try:
+        import matplotlib  # noqa: F401
+    except ImportError:
+        raise MissingExtraError(
+            "plots over the steps of a series need matplotlib: pip install 'unturn[report]'; or leave them out of the "
+            "plan: steps = false."
+        ) from None
+
+
+def plot_series(series: Series) -> list[Shown]:
+    """Return a plot for each number of the regions over the steps."""
     by_label: dict[tuple[str, str], list[Curve]] = {}
     for curve in series.curves:
         by_label.setdefault((curve.label, curve.unit), []).append(curve)
@@ -38,14 +49,9 @@ def plot_series(series: Series) -> list[Shown]:
 
 
 def _plot(label: str, unit: str, curves: Sequence[Curve], series: Series, position: int) -> Shown:
-    try:
-        import matplotlib as mpl
-        from matplotlib.figure import Figure
-    except ImportError:
-        raise MissingExtraError(
-            "plots over the steps of a series need matplotlib: pip install 'unturn[report]'; or leave them out of the "
-            "plan: steps = false."
-        ) from None
+    import matplotlib as mpl
+    from matplotlib.figure import Figure
+
     title = f"{label[:1].upper()}{label[1:]}"
     with mpl.rc_context(_SETTINGS):
         figure = Figure(figsize=(4.4, 2.9), layout="constrained")
