@@ -17,6 +17,8 @@ REPORT_KEYS = (
     Key("approved", k.TEXT, "who approved it", ""),
     Key("remarks", k.TEXTS, "sentences that stand under the title block", ()),
     Key("regions", k.TEXTS, "report these regions only; the peak of everything else is told", ()),
+    Key("measures", k.TEXTS, "arrays that are computed, as in unturn strain; default: strain, rotation, equivalent_strain, "
+        "principal_strain", ()),
     Key("at", k.choice_kind(("centroid", "mean", "nodes", "surface")), "where values live; extremes at nodes or on free "
         "surfaces are told beside those of the cells", "centroid"),
     Key("mode", k.BOOLEAN, "a mode shape: no verdict, values per unit amplitude", False),
@@ -43,6 +45,7 @@ class ReportWish:
     approved: str = ""
     remarks: tuple[str, ...] = ()
     regions: tuple[str, ...] = ()
+    measures: tuple[str, ...] = ()
     at: Literal["centroid", "mean", "nodes", "surface"] = "centroid"
     mode: bool = False
     limits: str = ""

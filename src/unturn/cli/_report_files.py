@@ -45,7 +45,8 @@ def write_folder(
 
 def report_line(content: Content, target: Path) -> str:
     """Return what was written, and how it stands, in a line."""
-    parts = [f"wrote {target}: {len(content.summary.regions)} regions, {len(content.images)} images"]
+    n, images = len(content.summary.regions), len(content.images)
+    parts = [f"wrote {target}: {n} region{'s' * (n != 1)}, {images} image{'s' * (images != 1)}"]
     if content.limits is not None:
         parts.append("limits met" if content.limits.passed else "limits NOT all met")
     if content.versus is not None and content.versus.judged:

@@ -47,7 +47,16 @@ def outcome(content: Content) -> Section:
     worst = next(level for level in _LEVELS_WORST_FIRST if level in levels)
     names = ", ".join(r.region.name for r in content.summary.regions if r.verdict.level == worst)
     word, tone = LEVELS[worst]
-    if content.summary.finite_only:
+    if content.summary.options.mode:
+        rows.append(
+            (
+                "Small strain",
+                word,
+                "",
+                "a mode shape has an arbitrary amplitude; values are per unit amplitude",
+            )
+        )
+    elif content.summary.finite_only:
         rows.append(
             ("Small strain", word, "", f"worst in {names}; {_FINITE_ONLY[content.summary.options.solve]}")
         )

@@ -59,7 +59,7 @@ def side_of(opened: ResultFile, result: Result, plan: Plan, threads: int | None)
 
 def series_options(opened: ResultFile, plan: Plan, threads: int | None) -> StrainOptions:
     """Return how every step is computed."""
-    options = replace(plan.options, threads=threads, at=plan.report.at)
+    options = replace(plan.options, threads=threads, at=plan.report.at, measures=plan.report.measures or None)
     if options.at == "surface" and plan.surface_poisson is not None:
         options = replace(options, poisson=plan.surface_poisson)
     if opened.steps is None or len(opened.steps) < 2:

@@ -40,6 +40,7 @@ def plan_text(
         "",
         "[report]",
         *(f"{key} = {_value(value)}" for key, value in report.items()),
+        *(['measures = ["strain", "rotation"]'] if _flat(model) else []),
         "",
         "[reading]",
         *(f"{key} = {_value(value)}" for key, value in _reading(options, zero_step).items()),
@@ -62,7 +63,8 @@ def _reading(options: StrainOptions, zero_step: int | None) -> dict[str, Any]:
 
 def _pictures(model: Model) -> Sequence[dict[str, Any]]:
     """Return a whole view and a close-up of the number that matters most, and where the model turns."""
-    if model.plane is not None and model.plane.model is None:  # nothing is known across the plane
+    if _flat(model):
+        assert model.plane is not None
         first, second = (f"strain_{'XYZ'[k] * 2}" for k in range(3) if k != model.plane.normal)
         return (
             {"name": "first", "measure": first},
@@ -76,6 +78,11 @@ def _pictures(model: Model) -> Sequence[dict[str, Any]]:
         {"name": "stretch", "measure": "principal_strain_1", "range": "percentile 99.9"},
         {"name": "turning", "measure": "rotation_angle"},
     )
+
+
+def _flat(model: Model) -> bool:
+    """Return whether nothing is known of the direction across a plane mesh."""
+    return model.plane is not None and model.plane.model is None
 
 
 def _value(value: Any) -> str:
