@@ -761,6 +761,36 @@ def test_a_node_that_is_nowhere() -> None:
     assert compared.report.exit_status == 1
 
 
+@pytest.mark.derived("numbers of any size are compared without a fault; what is beyond is told")
+@pytest.mark.parametrize("huge", [1e30, 1e200, 1e308])
+def test_numbers_of_any_size(huge: float) -> None:
+    a, b = box(2, "hexahedron"), box(3, "tetra")
+    u = linear(a.points)
+    u[5] = huge
+    points = a.points.copy()
+    points[0] = -huge
+    wild, far, sound = (
+        a.result(u=u),
+        replace(a.result(u=linear(a.points)), points=points),
+        a.result(u=linear(a.points)),
+    )
+    other = b.result(u=linear(b.points))
+    for now, before in (
+        (wild, sound),
+        (sound, wild),
+        (far, sound),
+        (wild, other),
+        (other, wild),
+        (far, other),
+    ):
+        for share in (0.0, 1e-9):
+            compared = unturn.compare(
+                now, before, measures=["strain"], tolerances={"default": {"share": share}}
+            )
+            assert not compared.passed
+    assert unturn.compare(wild, shuffled(wild), measures=["all"]).passed
+
+
 # --- series in memory -------------------------------------------------------------------------------------------------
 
 

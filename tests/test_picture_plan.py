@@ -263,6 +263,22 @@ def test_arrays_of_the_file_and_the_displacement_are_drawn(tmp_path):
         assert f"{measure} {says}" in said
 
 
+@pytest.mark.derived("u - u_N: no displacement is left from a step to itself")
+def test_a_zero_step_holds_for_the_displacement_too(tmp_path):
+    how = [LEVER, "--measure", "displacement", "--size", "640x480", "-o", tmp_path / "x.png", "--step", "3"]
+    for more, largest in (
+        (["--zero-step", "3"], 0.0),
+        (["--zero-step", "1", "--measure", "displacement"], None),
+    ):
+        status, said = run(*how, *more, "--json", tmp_path / "out.json")
+        assert status == 0, said
+        data = json.loads((tmp_path / "out.json").read_text())["pictures"][0]
+        steps = [unturn.read(LEVER, k).point_data["u"] for k in (1, 3)]
+        expected = np.linalg.norm(steps[1] - steps[0], axis=1).max() if largest is None else largest
+        found = data["extremes"][0]["value"] if data["extremes"] else 0.0
+        assert found == pytest.approx(expected)
+
+
 def test_values_of_faces_are_drawn_on_faces(tmp_path):
     status, said = run(
         BRACKET, "--at", "surface", "--poisson", "0.3", "--size", "640x480", "-o", tmp_path / "x.png", "--arrows",
@@ -352,6 +368,7 @@ def test_the_scene_of_a_window_is_that_of_the_picture(tmp_path):
 
     fill(Plotter(), drawn)
     mesh, how = added[0]
+    assert how["scalars"] in mesh.array_names
     assert how["clim"] == pytest.approx([-1000, 1000])
     np.testing.assert_allclose(mesh["strain XX"], 1000)
     assert len(how["cmap"]) == 256

@@ -23,6 +23,7 @@ _SETTLED = (
     1e-12  # step in reference coordinates, or share of the cell's size, from which on a search stands still
 )
 _ASTRAY = 10.0  # reference coordinate from which on it will not come back
+_FAR = 1e15  # grid cells from the middle of the mesh, from which on they count as one
 _POINTS_AT_ONCE = 20_000
 _PAIRS_AT_ONCE = 100_000
 _PRIMES = np.array([73_856_093, 19_349_663, 83_492_791], dtype=np.int64)
@@ -173,7 +174,7 @@ class _Boxes:
             self.high += margin
             size = (self.high - self.low).max(axis=1)
         sound = np.isfinite(size) & (size > 0)
-        self.origin = self.low[sound].min(axis=0) if sound.any() else np.zeros(3)
+        self.origin = np.median(self.low[sound], axis=0) if sound.any() else np.zeros(3)
         level = np.zeros(len(size), dtype=np.int64)
         level[sound] = np.ceil(np.log2(size[sound])).astype(np.int64)
         self.grids = [
@@ -195,7 +196,8 @@ class _Boxes:
         return key[order], member[order]
 
     def _bins(self, places: Floats, spacing: float) -> Ints:
-        return np.floor((places - self.origin) / spacing).astype(np.int64)
+        bins = np.floor((places - self.origin) / spacing)
+        return np.clip(bins, -_FAR, _FAR).astype(np.int64)
 
     def pairs(self, points: Floats) -> tuple[Ints, Ints]:
         """Return positions of points and of the cells in whose box they lie."""

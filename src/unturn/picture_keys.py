@@ -12,6 +12,9 @@ from unturn import toml_kinds as k
 from unturn.errors import UnturnError, UsageError, close_matches
 from unturn.toml_kinds import Key, Wrong
 
+At = Literal["centroid", "mean", "nodes", "surface", "quadrature"]
+"""Where values may live; what cannot be drawn there is refused when it is drawn."""
+
 
 @dataclass(frozen=True)
 class PictureKey(Key):
@@ -72,6 +75,13 @@ PICTURE_KEYS = (
 )  # fmt: skip
 """Everything a picture can be asked for."""
 
+STRAIN_OPTIONS = (
+    "base", "at", "recovery", "solve", "displacement", "displacement_scale", "coordinates", "plane", "axis", "poisson",
+    "equivalent_poisson", "remove_rigid", "rigid_to", "rigid_axis", "frame", "thermal_expansion", "temperature",
+    "reference_temperature", "alive", "skin", "threads",
+)  # fmt: skip
+"""The options of strain that pictures take."""
+
 
 @dataclass(frozen=True)
 class PictureRequest:
@@ -98,7 +108,7 @@ class PictureRequest:
     arrows: str = "none"
     size: tuple[int, int] = (1600, 1000)
     dpi: float = 200.0
-    at: Literal["centroid", "mean", "nodes", "surface", "quadrature"] = "centroid"
+    at: At = "centroid"
     name: str = ""
     source: str = ""
 

@@ -2,17 +2,18 @@
 
 from __future__ import annotations
 
-import inspect
-from collections.abc import Callable, Sequence
+from collections.abc import Sequence
 from dataclasses import dataclass, replace
 from pathlib import Path
-from typing import TYPE_CHECKING, Annotated, Any, get_type_hints
+from typing import TYPE_CHECKING, Annotated, Any
 
 import typer
 
 from unturn.cli import _options as o
-from unturn.cli._shared import EVERY, strain_options
+from unturn.cli._picture_options import picture_options
+from unturn.cli._shared import strain_options
 from unturn.errors import UsageError
+from unturn.picture_keys import STRAIN_OPTIONS
 
 if TYPE_CHECKING:
     from unturn.io import ResultFile
@@ -22,45 +23,7 @@ if TYPE_CHECKING:
     from unturn.pipeline import StrainOptions
 
 
-def picture_options(command: Callable[..., None]) -> Callable[..., None]:
-    """Give a command every option that a picture can be asked for, and the command its `asked`: value by key."""
-    from unturn import toml_kinds as k
-    from unturn.picture_keys import NAMES, PICTURE_KEYS
-
-    def with_options(**given: Any) -> None:
-        asked = {key.name: given.pop(key.name) for key in PICTURE_KEYS}
-        command(asked={n: v for n, v in asked.items() if v is not None and v != []}, **given)
-
-    hints = get_type_hints(command, localns={"StrainOptions": object}, include_extras=True)
-    declared: list[tuple[str, Any, Any]] = []
-    for own in inspect.signature(command).parameters.values():
-        if own.name != "asked":
-            declared.append((own.name, hints[own.name], own.default))
-            continue
-        for key in PICTURE_KEYS:
-            text = key.meaning[:1].upper() + key.meaning[1:] + "."
-            flag = "--" + key.name.replace("_", "-")
-            kind: Any = str | None
-            names, metavar = [flag], key.metavar or None
-            if key.kind is k.BOOLEAN:
-                kind, names = bool | None, [f"{flag}/--no-{flag[2:]}"]
-            elif key.kind is NAMES:
-                kind, text = list[str] | None, text[:-1] + " (repeatable)."
-            declared.append(
-                (key.name, Annotated[kind, typer.Option(*names, metavar=metavar, help=text)], None)
-            )
-    with_options.__name__, with_options.__doc__ = command.__name__, command.__doc__
-    with_options.__annotations__ = {name: kind for name, kind, _ in declared}
-    with_options.__signature__ = inspect.Signature(  # type: ignore[attr-defined]
-        [
-            inspect.Parameter(name, inspect.Parameter.KEYWORD_ONLY, default=default, annotation=kind)
-            for name, kind, default in declared
-        ]
-    )
-    return with_options
-
-
-@strain_options(*(name for name in EVERY if name != "measures"))
+@strain_options(*STRAIN_OPTIONS)
 @picture_options
 def picture(
     file: Annotated[Path, typer.Argument(metavar="FILE", help="Result file.", readable=False)],

@@ -10,12 +10,11 @@ from numpy.typing import NDArray
 from unturn.pictures._camera import Camera
 from unturn.pictures._colours import INK
 from unturn.pictures._page import Page
-from unturn.pictures._scene import Box, Colour
+from unturn.pictures._scene import Colour
 from unturn.pictures._subject import Arrows
 
 Floats = NDArray[np.float64]
 Ints = NDArray[np.int64]
-SPACING = 60.0  # of the places where arrows are drawn, in units of the page
 _LONGEST = 28.0  # half the length of the longest
 _SHORTEST = 0.12  # share of the longest below which nothing is drawn
 _END_ON = 0.35  # share of its length below which an axis of rotation is seen from its end
@@ -28,37 +27,6 @@ class Place:
 
     at: Floats
     position: int
-
-
-def seen_cells(window_picture: NDArray[np.uint8], n_cells: int) -> Ints:
-    """Return `(height, width)` the cells behind the pixels of a picture in `code_colours`; -1 where there is none."""
-    code = window_picture.astype(np.int64) @ np.array([65536, 256, 1]) - 1
-    return np.where((code >= 0) & (code < n_cells), code, -1)
-
-
-def code_colours(cells: Ints) -> NDArray[np.uint8]:
-    """Return colours `(n, 3)` that tell cells apart; none is black."""
-    code = cells + 1
-    return np.stack([code >> 16 & 255, code >> 8 & 255, code & 255], axis=1).astype(np.uint8)
-
-
-def places(seen: Ints, box: Box, unit: float) -> list[Place]:
-    """Return where arrows are drawn: on a grid of pixels, each cell once, nearest to the middle of its places."""
-    height = seen.shape[0]
-    step = SPACING * unit
-    columns = np.arange(box[0] + step / 2, box[1], step).astype(int)
-    rows = np.arange(height - box[3] + step / 2, height - box[2], step).astype(int)
-    if not len(columns) or not len(rows):
-        return []
-    row, column = (g.reshape(-1) for g in np.meshgrid(rows, columns, indexing="ij"))
-    cell = seen[row, column]
-    found = []
-    for position in np.unique(cell[cell >= 0]):
-        of = np.flatnonzero(cell == position)
-        pixels = np.stack([column[of], height - row[of]], axis=1).astype(np.float64)
-        nearest = np.argmin(np.linalg.norm(pixels - pixels.mean(axis=0), axis=1))
-        found.append(Place(pixels[nearest], int(position)))
-    return found
 
 
 def longest(arrows: Arrows, which: NDArray[np.bool_]) -> float:

@@ -10,11 +10,19 @@ import numpy as np
 from unturn.errors import UsageError, close_matches
 from unturn.kinematics._finite import BASES
 from unturn.measures import GEOMETRY, MEASURES, SURFACE_AXES, choose_measures
-from unturn.options import Place, StrainOptions
+from unturn.picture_keys import At
+from unturn.pipeline import StrainOptions
 from unturn.result import Result
 from unturn.surface import SURFACE_MEASURES
 
 DISPLACEMENT = "displacement"
+LOCATIONS: dict[str, str] = {
+    "centroid": "at element centroids",
+    "mean": "mean over each element",
+    "nodes": "recovered at the nodes",
+    "surface": "on free faces, at their centroids",
+}
+"""Where values live, in words."""
 
 
 @dataclass(frozen=True)
@@ -36,7 +44,7 @@ class Wanted:
     component: str = ""
 
 
-def wanted(name: str, result: Result, options: StrainOptions, at: Place) -> Wanted:
+def wanted(name: str, result: Result, options: StrainOptions, at: At) -> Wanted:
     """Return what a name stands for; a measure of the base that is asked for.
 
     Raises
@@ -64,7 +72,7 @@ def _split(name: str) -> list[tuple[str, str]]:
     return [(name, ""), (base, component)]
 
 
-def _components(array: str, at: Place) -> tuple[str, ...] | None:
+def _components(array: str, at: At) -> tuple[str, ...] | None:
     """Return the components of a measure, empty for a single number; None when there is no such measure."""
     if array == DISPLACEMENT:
         return ("", "X", "Y", "Z")
@@ -96,7 +104,7 @@ def _of_file(name: str, result: Result) -> Wanted:
     )
 
 
-def directions_with(array: str, base: str, at: Place) -> tuple[str, tuple[str, ...]]:
+def directions_with(array: str, base: str, at: At) -> tuple[str, tuple[str, ...]]:
     """Return the principal values that go with a measure, and the arrays of their directions; two on faces."""
     own = next((b for b in (*BASES, "mechanical") if array.endswith("_" + b)), None)
     names = [
@@ -107,24 +115,39 @@ def directions_with(array: str, base: str, at: Place) -> tuple[str, tuple[str, .
     return found[0], tuple(found[1:])
 
 
+TURNING = "finite_rotation"
+"""The rotation by which directions turn with the part."""
+
+
+def turns_with(array: str) -> bool:
+    """Return whether the directions of principal values belong to the undeformed part and turn with it."""
+    return array in MEASURES and MEASURES[array].finite and not array.endswith("_almansi")
+
+
 def rotation_with(array: str, base: str) -> str:
     """Return the rotation vector that goes with a measure."""
     finite = base != "small" or (array in MEASURES and MEASURES[array].finite)
     return "finite_rotation" if finite else "rotation"
 
 
-_SPOKEN = {"green_lagrange": "Green-Lagrange", "hencky": "Hencky", "biot": "Biot", "almansi": "Almansi"}
+_SPOKEN = {
+    "mechanical": "mechanical",
+    "green_lagrange": "Green-Lagrange",
+    "hencky": "Hencky",
+    "biot": "Biot",
+    "almansi": "Almansi",
+}
 
 
-def spoken(array: str) -> str:
-    """Return the name of an array as the legend says it.
+def spoken(array: str, component: str = "") -> str:
+    """Return the name of an array and a component of it as the legend says it.
 
     Examples
     --------
-    >>> spoken("equivalent_strain_green_lagrange"), spoken("principal_strain_mechanical")
-    ('equivalent strain, Green-Lagrange', 'principal strain mechanical')
+    >>> spoken("equivalent_strain_green_lagrange"), spoken("principal_strain_hencky", "1"), spoken("strain", "XX")
+    ('equivalent strain, Green-Lagrange', 'principal strain 1, Hencky', 'strain XX')
     """
     for base, words in _SPOKEN.items():
         if array.endswith("_" + base):
-            return f"{array.removesuffix('_' + base).replace('_', ' ')}, {words}"
-    return array.replace("_", " ")
+            return f"{spoken(array.removesuffix('_' + base), component)}, {words}"
+    return f"{array.replace('_', ' ')} {component}".rstrip()

@@ -11,14 +11,15 @@ from numpy.typing import NDArray
 from unturn.errors import UsageError
 from unturn.picture_keys import PictureRequest
 from unturn.pictures import _close, _legend, _scene, _words
-from unturn.pictures._arrows import Place, code_colours, draw_arrows, longest, places, seen_cells
+from unturn.pictures._arrows import draw_arrows, longest
 from unturn.pictures._camera import Camera, directions
 from unturn.pictures._colours import Range
 from unturn.pictures._label import add_label, words_of
 from unturn.pictures._marks import Mark, Sight, extremes
 from unturn.pictures._page import Page, unit_of
+from unturn.pictures._seen import arrow_places
 from unturn.pictures._subject import Arrows, Subject
-from unturn.pictures._surface import POSITION, VALUE, Skin
+from unturn.pictures._surface import VALUE, Skin
 from unturn.pictures._view import Frame, camera_for, chosen_direction, facing, through
 from unturn.pictures._window import capture, make_window
 
@@ -143,32 +144,9 @@ class Picture:
     @cached_property
     def longest(self) -> float:
         """The value of the longest arrow: the largest of all that is drawn, from whatever side."""
-        return 0.0 if self.arrows is None else longest(self.arrows, self.subject.which(self.shown))
-
-    def _places(self) -> list[Place]:
-        found = places(self.seen_cells(), self.frame.box, unit_of(self.size))
-        return found if self.subject.association == "cell" else [self._at_node(place) for place in found]
-
-    def seen_cells(self) -> NDArray[np.int64]:
-        """Return `(height, width)` the cell that is seen in each pixel, -1 where there is none."""
-        from vtkmodules.util.numpy_support import vtk_to_numpy
-
-        window, _, front, _ = make_window(self.size, ground=(0.0, 0.0, 0.0))
-        _scene.look(front, self.camera, self.stage.origin, self.reach, self.frame.box)
-        surface = self.skin.surface
-        cells = vtk_to_numpy(surface.GetCellData().GetArray(POSITION))
-        _scene.add_coded(front, surface, code_colours(cells))
-        picture = capture(window, single=True)
-        window.Finalize()
-        return seen_cells(picture, self.stage.result.n_cells)
-
-    def _at_node(self, place: Place) -> Place:
-        """Return the node nearest to a place in the cell that is seen there."""
-        nodes = _close.nodes(self.subject, place.position)
-        seen = self.camera.pixels(self.shape.points[nodes])
-        seen[:, 1] = self.size[1] - seen[:, 1]
-        k = int(np.argmin(np.linalg.norm(seen - place.at, axis=1)))
-        return Place(seen[k], int(nodes[k]))
+        if self.arrows is None:
+            return 0.0
+        return longest(self.arrows, self.subject.on(self.arrows.association, self.shown))
 
     def render(self, title: str, made_from: str) -> NDArray[np.uint8]:
         """Return the picture, `(height, width, 3)` bytes, top row first."""
@@ -183,7 +161,7 @@ class Picture:
         _legend.colour_bar(page, self.values, self.range, self.subject.location, self.subject.noun, foot)
         _legend.foot(page, self.camera, self.notes)
         if self.arrows is not None:
-            draw_arrows(page, self.camera, self.arrows, self._places(), self.longest)
+            draw_arrows(page, self.camera, self.arrows, arrow_places(self), self.longest)
         if self.focus is not None:
             _legend.border(page, self.frame.box)
         labels = [

@@ -41,7 +41,7 @@ class Stage:
         self.rest = np.asarray(result.points if points is None else points, dtype=np.float64)
         self.faces = Faces(result)
         self._shapes: dict[float | None, Shape] = {}
-        self._skins: dict[tuple[object, ...], Skin] = {}
+        self._skins: dict[tuple[object, ...], tuple[Skin, dict[str, Floats]]] = {}
         self._sights: dict[int, Sight] = {}
         self._outlines: dict[tuple[int, bytes], Any] = {}
         self._placed: Mask = np.asarray(np.isfinite(self.rest).all(axis=1))
@@ -109,8 +109,8 @@ class Stage:
             skin = self.faces.skin(points, keep, held, edges)
             if plane is not None:
                 skin = cut(skin, section_of(self.result, keep, points, held))
-            self._skins[key] = skin
-        return self._skins[key]
+            self._skins[key] = skin, held  # the values are kept, for the key holds their identity
+        return self._skins[key][0]
 
     def sight(self, skin: Skin, reach: float) -> Sight:
         """Return what can be seen of a skin from where; nothing is farther from the middle than `reach`."""

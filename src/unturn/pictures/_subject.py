@@ -24,13 +24,18 @@ def _no_regions(name: str) -> Ints:
 
 @dataclass(frozen=True, eq=False)
 class Arrows:
-    """Directions that are drawn: `vectors` `(n, k, 3)` of unit length, `values` `(n, k)` with sign, the unit shown."""
+    """Directions that are drawn: `vectors` `(n, k, 3)` of unit length, `values` `(n, k)` with sign, the unit shown.
+
+    They live on cells or on points, whatever the number that is drawn lives on. `words` says what they are.
+    """
 
     kind: Literal["principal", "rotation"]
+    association: Literal["cell", "point"]
     vectors: Floats
     values: Floats
     scale: float
     short_unit: str
+    words: str
 
 
 @dataclass(frozen=True, eq=False)
@@ -102,4 +107,8 @@ class Subject:
 
     def which(self, cells: Mask) -> Mask:
         """Return the values that belong to some cells: the cells themselves, or their nodes."""
-        return cells if self.association == "cell" else self.stage.nodes(cells)
+        return self.on(self.association, cells)
+
+    def on(self, association: Literal["cell", "point"], cells: Mask) -> Mask:
+        """Return some cells, or their nodes."""
+        return cells if association == "cell" else self.stage.nodes(cells)

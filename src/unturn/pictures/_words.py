@@ -87,9 +87,5 @@ def _about_arrows(picture: Picture) -> list[str]:
     arrows = picture.subject.arrows
     if arrows is None:
         return []
-    if arrows.kind == "principal":
-        what = "arrows: principal directions, heads outwards for stretch, inwards for shortening"
-    else:
-        what = "arrows: axes of rotation by the right hand, arcs where they point to the eye or away"
     most = f"{written(picture.longest * arrows.scale)} {arrows.short_unit}"
-    return [what, f"the longest: {most}, the shortest left out"]
+    return [f"arrows: {arrows.words}", f"the longest: {most}, the shortest left out"]

@@ -12,32 +12,31 @@ from numpy.typing import NDArray
 
 from unturn.errors import UsageError
 from unturn.fields import compute_fields
-from unturn.measures import GEOMETRY, MEASURES
 from unturn.model import Model
 from unturn.numbering import element_numbers, node_numbers
-from unturn.options import Place
-from unturn.picture_keys import PictureRequest
-from unturn.pictures._measure import Wanted, directions_with, rotation_with, spoken, wanted
+from unturn.picture_keys import At, PictureRequest
+from unturn.pictures._columns import arrows_of, displacement_values, file_values, measure_values
+from unturn.pictures._measure import (
+    LOCATIONS,
+    TURNING,
+    Wanted,
+    directions_with,
+    rotation_with,
+    turns_with,
+    wanted,
+)
 from unturn.pictures._range import Ends, ends_of
 from unturn.pictures._stage import Stage
-from unturn.pictures._subject import Arrows, Subject
-from unturn.pictures._values import Values, values_of, values_with
+from unturn.pictures._subject import Subject
+from unturn.pictures._values import Values
 from unturn.pipeline import Computed, StrainOptions, compute, model_of
 from unturn.regions import named_regions
 from unturn.result import Result
-from unturn.summary import equivalent_form
 from unturn.written_regions.finder import RegionFinder
 from unturn.written_regions.kinds import RegionSpec
 from unturn.written_regions.select import Cells, NoRegion
 
 Floats = NDArray[np.float64]
-LOCATIONS: dict[str, str] = {
-    "centroid": "at element centroids",
-    "mean": "mean over each element",
-    "nodes": "recovered at the nodes",
-    "surface": "on free faces, at their centroids",
-}
-"""Where values live, in words."""
 
 
 class Step:
@@ -77,29 +76,29 @@ class Step:
         self.options = options or StrainOptions()
         self._surface_poisson, self._regions = surface_poisson, regions or {}
         self._percentiles = any(r.range.how == "percentile" for r in requests)
-        self._names: dict[Place, dict[str, None]] = {}
+        self._names: dict[At, dict[str, None]] = {}
         for request in requests:
             with request.told_where():
-                _check_place(request)
                 names = self._arrays(request)
             if names:
                 self._names.setdefault(request.at, {}).update(dict.fromkeys(names))
-        self._computed: dict[Place, Computed] = {}
+        self._computed: dict[At, Computed] = {}
         self._stages: dict[bool, Stage] = {}
-        self._columns: dict[tuple[Place, str], Values] = {}
+        self._columns: dict[tuple[At, str], Values] = {}
 
     def _arrays(self, request: PictureRequest) -> list[str]:
         """Return the measures that must be computed for a picture."""
         what = wanted(request.measure, self.result, self.options, request.at)
+        _check(request, self.options, what)
         names = [what.array] if what.kind == "measure" else []
         if request.arrows == "principal":
             values, directions = directions_with(what.array, self.options.base, request.at)
-            names += [values, *directions]
+            names += [values, *directions, *([TURNING] if turns_with(values) else [])]
         elif request.arrows == "rotation":
             names.append(rotation_with(what.array, self.options.base))
         return names
 
-    def computed(self, at: Place) -> Computed:
+    def computed(self, at: At) -> Computed:
         """Return the fields at a place."""
         if at not in self._computed:
             options = replace(self.options, at=at, measures=list(self._names[at]), base="small")
@@ -115,6 +114,9 @@ class Step:
         """The model of the step."""
         for at in self._names:
             return self.computed(at).fields.model
+        if self._zero is not None:
+            options = replace(self.options, measures=["strain"], base="small")
+            return compute(self.result, options, zero=self._zero).fields.model
         return model_of(self.result, self.options)
 
     @cached_property
@@ -159,9 +161,13 @@ class Step:
         location = LOCATIONS[request.at if what.kind == "measure" else "centroid"]
         if what.kind != "measure":
             location = "at the nodes" if association == "point" else "of each cell"
+        stage, arrows = self.stage(of_faces), None
+        if request.arrows != "none":
+            factor = stage.shape(request.factor).factor
+            arrows = arrows_of(self.computed(request.at), request, what, self.options, factor)
         return Subject(
-            self.stage(of_faces), self._columns[key], association, location, self._numbers(association, of_faces),
-            self._weights(what), self._region(of_faces), self._arrows(request, what, of_faces), of_faces,
+            stage, self._columns[key], association, location, self._numbers(association, of_faces),
+            self._weights(what), self._region(of_faces), arrows, of_faces,
         )  # fmt: skip
 
     def ends(self, request: PictureRequest) -> Ends:
@@ -177,62 +183,12 @@ class Step:
         )
         return found.symmetric() if request.symmetric else found
 
-    def _values(self, what: Wanted, at: Place) -> Values:
+    def _values(self, what: Wanted, at: At) -> Values:
         if what.kind == "displacement":
-            u = self.model.displacement.values
-            numbers = u[:, "XYZ".index(what.component)] if what.component else np.linalg.norm(u, axis=1)
-            name = (
-                f"displacement {what.component}" if what.component else "displacement\nlength of the vector"
-            )
-            return replace(values_with(numbers, name, "length unit of the file"), short_unit="")
+            return displacement_values(self.model, what)
         if what.kind != "measure":
-            return self._of_file(what)
-        numbers = self._column(what, at)
-        name = f"{spoken(what.array)} {what.component}".rstrip()
-        if what.array == "equivalent_strain":
-            meaning = equivalent_form(self.options.equivalent_poisson)
-        else:
-            meaning = MEASURES[what.array].meaning if what.array in MEASURES else GEOMETRY.get(what.array, "")
-        frame = f"\naxes: {self.options.frame}" if self.options.frame and what.component else ""
-        unit = MEASURES[what.array].unit if what.array in MEASURES else "1"
-        return values_with(numbers, f"{name}\n{meaning}{frame}".rstrip(), unit)
-
-    def _of_file(self, what: Wanted) -> Values:
-        component: str | int | None = what.component or None
-        assert what.kind in ("cell", "point")
-        if what.component.isdigit():
-            component = int(what.component) - 1
-        place: Literal["cell", "point"] = "cell" if what.kind == "cell" else "point"
-        values = values_of(self.result, what.array, place, component, "", "unit of the array")
-        return replace(values, name=f"{values.name}\narray of the file", short_unit="")
-
-    def _column(self, what: Wanted, at: Place) -> Floats:
-        arrays, components = self._held(at)
-        array = f"surface_{what.array}" if at == "surface" else what.array
-        if array not in arrays:
-            raise UsageError(
-                f"{what.array} has no value {LOCATIONS[at]}; ask for another --measure, or another --at."
-            )
-        held = arrays[array]
-        if held.ndim == 1:
-            return held
-        labels = components.get(array, ())
-        if what.component not in labels:
-            raise UsageError(
-                f"{what.array} has no component {what.component!r} here; its components are {', '.join(labels)}."
-            )
-        return np.ascontiguousarray(held[:, labels.index(what.component)])
-
-    def _held(self, at: Place) -> tuple[dict[str, Floats], dict[str, tuple[str, ...]]]:
-        """Return the arrays at a place, and the names of their components."""
-        computed = self.computed(at)
-        if at == "surface":
-            assert computed.surface is not None
-            mesh = computed.surface.result
-            names = {array: names for (_, array), names in mesh.component_names.items()}
-            return dict(mesh.cell_data), names
-        found = computed.fields if computed.nodes is None else computed.nodes
-        return found.arrays, found.components
+            return file_values(self.result, what)
+        return measure_values(self.computed(at), what, at, self.options)
 
     def _numbers(self, association: str, of_faces: bool) -> NDArray[Any] | None:
         if of_faces:
@@ -266,24 +222,13 @@ class Step:
 
         return find
 
-    def _arrows(self, request: PictureRequest, what: Wanted, of_faces: bool) -> Arrows | None:
-        if request.arrows == "none":
-            return None
-        arrays, _ = self._held(request.at)
-        front = "surface_" if of_faces else ""
-        if request.arrows == "principal":
-            values, names = directions_with(what.array, self.options.base, request.at)
-            vectors = np.stack([arrays[front + n] for n in names], axis=1)
-            return Arrows(
-                "principal", vectors, arrays[front + values][:, : vectors.shape[1]], 1e6, "microstrain"
-            )
-        turn = arrays[front + rotation_with(what.array, self.options.base)]
-        angle = np.linalg.norm(turn, axis=1)
-        with np.errstate(invalid="ignore", divide="ignore"):
-            axis = turn / angle[:, None]
-        return Arrows("rotation", axis[:, None], angle[:, None], float(np.degrees(1.0)), "degrees")
 
-
-def _check_place(request: PictureRequest) -> None:
+def _check(request: PictureRequest, options: StrainOptions, what: Wanted) -> None:
     if request.at not in LOCATIONS:
         raise UsageError(f"a picture is drawn of values at {', '.join(LOCATIONS)}; not at {request.at!r}.")
+    if request.arrows == "rotation" and options.frame is not None:
+        raise UsageError("axes of rotation are drawn in the axes of the file: leave --frame or --arrows out.")
+    if request.arrows != "none" and request.at == "surface" and what.kind != "measure":
+        raise UsageError(
+            f"{request.measure} does not live on free faces, and arrows with --at surface do: ask for another --at."
+        )

@@ -3,14 +3,14 @@
 from __future__ import annotations
 
 import tempfile
-from dataclasses import dataclass, fields
+from dataclasses import dataclass
 from os import PathLike
 from pathlib import Path
 from typing import Any
 
 from unturn.errors import UsageError, close_matches
 from unturn.io._atomic import replacing
-from unturn.picture_keys import PICTURE_KEYS, request_of
+from unturn.picture_keys import PICTURE_KEYS, STRAIN_OPTIONS, request_of
 from unturn.pictures.computing import Step
 from unturn.pictures.drawing import Drawn, draw_all
 from unturn.pictures.told import drawn_text
@@ -84,7 +84,7 @@ def picture(result: Result, **asked: Any) -> Image:
     867
     """
     own = {key.name for key in PICTURE_KEYS}
-    strain = {f.name for f in fields(StrainOptions)} - {"measures", "surface", "at"}
+    strain = set(STRAIN_OPTIONS) - {"at"}
     for name in asked:
         if name not in own | strain | {"at"}:
             raise UsageError(

@@ -13,7 +13,7 @@ from unturn import reading_keys as r
 from unturn import toml_kinds as k
 from unturn.errors import UsageError, close_matches
 from unturn.picture_keys import PICTURE_KEYS, PictureRequest
-from unturn.pictures.computing import LOCATIONS
+from unturn.pictures._measure import LOCATIONS
 from unturn.pipeline import StrainOptions
 from unturn.report_keys import REPORT_KEYS, ReportWish
 from unturn.toml_keys import Lines, Path, Source, read_table, read_value

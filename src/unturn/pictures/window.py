@@ -14,6 +14,8 @@ from unturn.pictures._range import Ends
 from unturn.pictures._surface import POSITION, VALUE
 from unturn.pictures.drawing import Drawn, ranged
 
+_SIZE = (1200, 800)
+
 
 def show_scene(drawn: Drawn) -> None:
     """Open a window in which the model of a picture can be turned; return when it is closed.
@@ -26,7 +28,7 @@ def show_scene(drawn: Drawn) -> None:
     check_display()
     import pyvista
 
-    plotter: Any = pyvista.Plotter(title=drawn.drawing.path)
+    plotter: Any = pyvista.Plotter(title=drawn.drawing.path, window_size=list(_SIZE))
     fill(plotter, drawn)
     plotter.show()
 
@@ -61,16 +63,24 @@ def fill(plotter: Any, drawn: Drawn) -> None:
         surface.cell_data[VALUE] = subject.values.numbers[own] * subject.values.scale
     else:
         surface.point_data[VALUE] = np.asarray(surface.point_data[VALUE]) * subject.values.scale
-    surface.rename_array(VALUE, subject.values.name.splitlines()[0])
+    name = subject.values.name.splitlines()[0]
+    surface.rename_array(VALUE, name)
     plotter.set_background("white")
     plotter.add_mesh(
-        surface, lighting=False, clim=[x * subject.values.scale for x in drawing.colour_range],
+        surface,
+        scalars=name,
+        preference=subject.association,
+        lighting=False,
+        clim=[x * subject.values.scale for x in drawing.colour_range],
         cmap=[f"#{r:02x}{g:02x}{b:02x}" for r, g, b in found.colours.tolist()],
-        scalar_bar_args={"color": "black", "vertical": True},
+        scalar_bar_args={
+            "title": f"{name} {subject.values.short_unit}".rstrip(), "color": "black", "vertical": True, "fmt": "%.4g",
+            "position_x": 0.82, "position_y": 0.15, "height": 0.6, "width": 0.06,
+        },
     )  # fmt: skip
     if picture.skin.edges is not None:
         plotter.add_mesh(pyvista.wrap(picture.skin.edges), color="black", lighting=False, line_width=1)
-    plotter.add_axes(color="black")
+    plotter.add_axes(color="black", x_color="black", y_color="black", z_color="black")
     camera = picture.camera
     plotter.enable_parallel_projection()
     middle = np.array(camera.focus) - subject.stage.origin

@@ -152,7 +152,11 @@ def extremes_of(summary: Summary) -> list[Extreme]:
     found = []
     for region in summary.regions:
         rows = table_rows(region.statistics, summary.fields.components.get("strain", ()))
-        kept = [row for row in rows if math.isfinite(getattr(region.statistics[row[1]], row[2]))]
+        kept = [
+            row
+            for row in rows
+            if math.isfinite(getattr(region.statistics[row[1]], row[2])) and not _always_zero(summary, row[1])
+        ]
         for label, name, which in [*kept, ("largest rotation", "angle_of_turn", "maximum")]:
             found.append(_extreme(summary, region, label, name, which))
     return found
@@ -180,6 +184,12 @@ def _extreme(summary: Summary, region: RegionSummary, label: str, name: str, whi
 def _is_finite(name: str) -> bool:
     measure = MEASURES.get(name) or MEASURES.get(name.rpartition("_")[0])
     return measure is not None and measure.finite
+
+
+def _always_zero(summary: Summary, name: str) -> bool:
+    """Return whether a component is zero by what the mesh is: the shear across a plane."""
+    held = [r.statistics[name] for r in summary.regions if name in r.statistics]
+    return name.startswith("strain_") and all(s.minimum == 0 == s.maximum for s in held)
 
 
 def element_of(summary: Summary, cell: int) -> int | None:

@@ -4,7 +4,6 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterator
-from decimal import ROUND_CEILING
 
 import numpy as np
 from numpy.typing import NDArray
@@ -12,12 +11,12 @@ from numpy.typing import NDArray
 from unturn.report.content import Content, Extreme
 from unturn.report.parts import Cell, Figures, Part, Said, Section, Table
 from unturn.report.sections import LEVELS
-from unturn.report.words import NONE, bound, coordinates, outward, percent, place_of, unit_name
+from unturn.report.words import bound, coordinates, outward, percent, place_of, unit_name
 from unturn.summary import RegionSummary, Summary
 from unturn.summary_text import _FINITE_ONLY, tried_text
-from unturn.trusted import Growth, Which, table_rows
+from unturn.trusted import Growth, Which
 from unturn.verdicts.finding import Place
-from unturn.verdicts.wording import number, place_text
+from unturn.verdicts.wording import place_text
 
 _TRUSTED = "May the small strain be trusted?"
 
@@ -52,7 +51,7 @@ def verdicts(content: Content) -> Section:
 def _verdict(r: RegionSummary) -> list[Cell]:
     v = r.verdict
     word, tone = LEVELS[v.level]
-    turn = number(v.largest_rotation, ROUND_CEILING, 3) if math.isfinite(v.largest_rotation) else NONE
+    turn = outward(v.largest_rotation, "maximum", "degree", 3)
     return [
         Cell(r.region.name), Cell(word, tone=tone), Cell(percent(v.worst), v.worst),
         Cell(percent(v.share_marginal), v.share_marginal), Cell(percent(v.share_broken), v.share_broken),
@@ -68,7 +67,7 @@ def extremes(content: Content) -> Section:
     parts: list[Part] = [
         Table("extremes", "Extremes by region, at cells", head, rows, frozenset({2, 3, 7})),
         Table("shares", "Values that a share of the volume does not go beyond",
-              ("region", "what", *(f"{s:g} %" for s in _SHARES), "unit"), list(_shares(summary)), frozenset(range(2, 6))),
+              ("region", "what", *(f"{s:g} %" for s in _SHARES), "unit"), list(_shares(content)), frozenset(range(2, 6))),
     ]  # fmt: skip
     if content.suspects:
         heads = ("region", "what", "value", "grows towards", "next peak away from it", "unit")
@@ -93,10 +92,11 @@ def _extreme(e: Extreme) -> list[Cell]:
 _SHARES = (50.0, 95.0, 99.0, 99.9)
 
 
-def _shares(summary: Summary) -> Iterator[list[Cell]]:
+def _shares(content: Content) -> Iterator[list[Cell]]:
     """Yield, for each region and number, the value that so much of the volume does not go beyond."""
-    for r in summary.regions:
-        for label, name, which in table_rows(r.statistics, summary.fields.components.get("strain", ())):
+    for r in content.summary.regions:
+        told = [(e.label, e.array, e.which) for e in content.extremes if e.region == r.region.name]
+        for label, name, which in told:
             held = r.statistics[name].percentiles
             shares = _SHARES if which == "maximum" else [round(100.0 - s, 1) for s in _SHARES]
             values = [held.get(s, math.nan) for s in shares]

@@ -10,12 +10,11 @@ from pathlib import Path
 from unturn.errors import UsageError
 from unturn.measures import MEASURES
 from unturn.picture_keys import PictureRequest
-from unturn.pictures._measure import spoken, wanted
+from unturn.pictures._measure import LOCATIONS, spoken, wanted
 from unturn.pictures._range import automatic
 from unturn.pictures._subject import Subject
 from unturn.pictures._values import values_with
 from unturn.pictures._window import usable_window
-from unturn.pictures.computing import LOCATIONS
 from unturn.pictures.draw import draw_subject
 from unturn.pictures.drawing import Drawn, draw_one, ranged, shared_ends
 from unturn.pictures.plan import Plan

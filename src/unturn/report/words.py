@@ -15,6 +15,8 @@ UNITS = {"strain": (1e6, "microstrain"), "radian": (180.0 / math.pi, "degree")}
 """Unit of an array -> factor to the unit that is told, and its name."""
 
 NONE = "–"
+_NOTHING = 1e-9
+"""In the unit that is told: less is rounding of the numbers themselves."""
 _DIGITS = 5
 
 
@@ -46,7 +48,8 @@ def outward(value: float, which: Which, unit: str, digits: int = _DIGITS) -> str
     if not math.isfinite(value):
         return NONE
     rounding = ROUND_CEILING if which == "maximum" else ROUND_FLOOR
-    return number(shown_value(value, unit), rounding, digits)
+    told = shown_value(value, unit)
+    return "0" if abs(told) < _NOTHING else number(told, rounding, digits)
 
 
 def bound(plus_minus: float, unit: str) -> str:
@@ -68,7 +71,9 @@ def percent(ratio: float, digits: int = 2) -> str:
     >>> percent(0.0871), percent(13.2), percent(0.0)
     ('8.8 %', '1400 %', '0 %')
     """
-    return f"{number(100.0 * ratio, ROUND_CEILING, digits)} %" if math.isfinite(ratio) else NONE
+    if not math.isfinite(ratio):
+        return NONE
+    return "0 %" if 100.0 * ratio < _NOTHING else f"{number(100.0 * ratio, ROUND_CEILING, digits)} %"
 
 
 def place_of(e: Extreme) -> str:

@@ -116,7 +116,8 @@ def compare_states(
     if not 0.0 <= options.outside < 1.0:
         raise UsageError(f"--outside {options.outside:g}: a share of the volume lies from 0 to below 1.")
     _check_names(result, reference, options)
-    return _Comparison(_overlay(result, reference, options.strain, before), options).run()
+    with np.errstate(over="ignore", invalid="ignore", divide="ignore"):  # numbers of any size are compared
+        return _Comparison(_overlay(result, reference, options.strain, before), options).run()
 
 
 def _overlay(result: Result, reference: Result, strain: StrainOptions, before: Overlay | None) -> Overlay:

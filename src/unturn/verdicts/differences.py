@@ -263,4 +263,5 @@ def _share(mask: NDArray[np.bool_], weights: Floats) -> float:
     if not mask.any():
         return 0.0
     shares = [float(w[mask].sum() / w.sum()) for w in weights if w.sum() > 0]
-    return max(shares, default=0.0) or float(mask.mean())
+    known = [share for share in shares if math.isfinite(share)]
+    return max(known, default=0.0) or float(mask.mean())

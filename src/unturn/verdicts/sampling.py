@@ -106,7 +106,6 @@ def sample(
         for f in near:
             beside[f.point] = True
         found += [*held, *near]
-    found = [_only(f, mesh.counted[f.cell]) for f in found]
     found = _of_the_same_part(found, len(places), mesh.result.n_cells, regions)
     count = np.zeros(len(places), dtype=np.int64)
     for f in found:
