@@ -95,7 +95,11 @@ _SHARES = (50.0, 95.0, 99.0, 99.9)
 def _shares(content: Content) -> Iterator[list[Cell]]:
     """Yield, for each region and number, the value that so much of the volume does not go beyond."""
     for r in content.summary.regions:
-        told = [(e.label, e.array, e.which) for e in content.extremes if e.region == r.region.name]
+        told = [
+            (e.label, e.array, e.which)
+            for e in content.extremes
+            if e.region == r.region.name and e.unit == "strain"
+        ]
         for label, name, which in told:
             held = r.statistics[name].percentiles
             shares = _SHARES if which == "maximum" else [round(100.0 - s, 1) for s in _SHARES]
