@@ -13,16 +13,13 @@ from unturn._api import add_fields
 from unturn.borders import ORIGINAL_POINT
 from unturn.measures import ESTIMATES, MEASURES, SURFACE_AXES
 from unturn.numbering import node_numbers
+from unturn.pictures._measure import LOCATIONS
 from unturn.pipeline import Computed
 from unturn.series import SERIES_MEASURES
 from unturn.summary import Summary, equivalent_form
 from unturn.surface import SURFACE_MEASURES, SurfaceFields
 
-_LOCATIONS = {
-    "mean": "mean over each element",
-    "nodes": "recovered at the nodes",
-    "surface": "on free faces, at their centroids",
-}
+_LOCATIONS = {at: words for at, words in LOCATIONS.items() if at != "centroid"}
 
 
 def draw_summary(summary: Summary, computed: Computed, at: str, path: Path) -> str:
