@@ -23,7 +23,9 @@ from hypothesis import strategies as st
 import unturn
 from documents import ROOT, run
 from limits_samples import row
+from unturn.report.content import Curve, Series
 from unturn.report.page import css_text
+from unturn.report.plots import plot_series
 from unturn.report.words import bound, outward, percent
 from unturn.report_keys import REPORT_KEYS, ReportWish
 
@@ -490,6 +492,27 @@ def test_an_image_never_replaces_an_input(tmp_path: Path, monkeypatch: pytest.Mo
     status, _ = run(["report", "table-files.csv", "plan.toml", "-o", "r.html", "--folder", "."])
     assert status in (2, 3)
     assert Path("table-files.csv").read_bytes() == before
+
+
+def test_two_files_of_a_folder_never_have_one_name(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.chdir(tmp_path)
+    write_row("row.xdmf", 1.0)
+    named = PLAN.replace('"whole"', '"Table-Extremes"\ncsv = true')
+    Path("plan.toml").write_text(named, encoding="utf-8")
+    status, said = run(["report", "row.xdmf", "plan.toml", "-o", "r.html", "--folder", "."])
+    assert status == 2
+    assert "table-extremes.csv" in said
+
+
+def test_no_settings_of_a_user_change_a_plot() -> None:
+    import matplotlib as mpl
+
+    curves = (Curve("a $x$ \u4e2d", "largest", "strain_XX", "maximum", "strain", (0.0, 1e-3)),)
+    series = Series((0, 1), (0.0, 1.0), curves)
+    first = plot_series(series)
+    with mpl.rc_context({"lines.linewidth": 9.0, "font.size": 30.0, "axes.facecolor": "red"}):
+        second = plot_series(series)
+    assert first[0].image == second[0].image
 
 
 @pytest.mark.parametrize(("module", "kind"), [("jinja2", "html"), ("matplotlib", "json")])

@@ -114,13 +114,14 @@ def gather(request: Request) -> Content:
 
 def _same_step(reference: ResultFile, step: int, opened: ResultFile) -> int:
     """Return the step of the reference: the last for the last, else the one of the same number."""
-    n = 1 if reference.steps is None else len(reference.steps)
-    last = 1 if opened.steps is None else len(opened.steps)
+    if reference.steps is None:
+        return 0
+    n, last = len(reference.steps), 1 if opened.steps is None else len(opened.steps)
     if step == last - 1:
         return n - 1
     if step >= n:
         raise UsageError(
-            f"{reference.path}: the reference has {n} steps, and no step {step} to compare with."
+            f"{reference.path}: the reference has steps 0 to {n - 1}, and no step {step} to compare with."
         )
     return step
 

@@ -3,9 +3,8 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Sequence
 
-from unturn.report.content import Content, Extreme
+from unturn.report.content import Content, Curve, Extreme
 from unturn.report.parts import Cell, Figures, Part, Said, Section, Table, Tone
 from unturn.report.words import NONE, bound, outward, shown_value, unit_name
 from unturn.verdicts.finding import Finding, Report, State
@@ -116,13 +115,18 @@ def steps(content: Content) -> Section | None:
     series = content.series
     if series is None:
         return None
-    head = ("step", "t", *(f"{c.region}: {c.label}, {unit_name(c.unit)}" for c in series.curves))
-    rows: list[Sequence[Cell]] = []
-    for k, (step, time) in enumerate(zip(series.steps, series.times)):
-        cells = [
-            Cell(outward(c.values[k], c.which, c.unit), shown_value(c.values[k], c.unit))
-            for c in series.curves
+    tables: list[Part] = []
+    for k, region in enumerate(dict.fromkeys(c.region for c in series.curves), 1):
+        curves = [c for c in series.curves if c.region == region]
+        head = ("step", "t", *(f"{c.label}, {unit_name(c.unit)}" for c in curves))
+        rows = [
+            [Cell(str(step), step), Cell(number(time), time), *(_step_cell(c, n) for c in curves)]
+            for n, (step, time) in enumerate(zip(series.steps, series.times))
         ]
-        rows.append([Cell(str(step), step), Cell(number(time), time), *cells])
-    table = Table("steps", "Extremes of each step", head, rows, frozenset(range(len(head))))
-    return Section("steps", "Over the steps", [Figures(series.plots, "small"), table])
+        caption = f"Extremes of each step, {region}"
+        tables.append(Table(f"steps-{k}", caption, head, rows, frozenset(range(len(head)))))
+    return Section("steps", "Over the steps", [Figures(series.plots, "small"), *tables])
+
+
+def _step_cell(curve: Curve, n: int) -> Cell:
+    return Cell(outward(curve.values[n], curve.which, curve.unit), shown_value(curve.values[n], curve.unit))

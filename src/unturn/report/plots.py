@@ -3,12 +3,14 @@
 from __future__ import annotations
 
 import io
+import warnings
 from collections.abc import Sequence
 from typing import Any
 
 from unturn.errors import MissingExtraError
 from unturn.report.content import Curve, Series, Shown
 from unturn.report.words import outward, shown_value, unit_name
+from unturn.verdicts.wording import clean
 
 # from dark to light, each with its own mark and dash
 _STYLES = (
@@ -53,7 +55,11 @@ def _plot(label: str, unit: str, curves: Sequence[Curve], series: Series, positi
     from matplotlib.figure import Figure
 
     title = f"{label[:1].upper()}{label[1:]}"
-    with mpl.rc_context(_SETTINGS):
+    with mpl.rc_context(), warnings.catch_warnings():
+        mpl.rcdefaults()  # nobody's own settings change a report
+        mpl.rcParams.update(_SETTINGS)
+        # a letter that the font lacks is a box here; the table below and the words beside it have the name
+        warnings.filterwarnings("ignore", "Glyph .* missing from font", UserWarning)
         figure = Figure(figsize=(4.4, 2.9), layout="constrained")
         axes: Any = figure.subplots()
         for curve, (colour, mark, dash) in zip(curves, _STYLES):
@@ -80,7 +86,7 @@ def _plot(label: str, unit: str, curves: Sequence[Curve], series: Series, positi
 
 def _plain(text: str) -> str:
     """Return a name that the plotting library takes for no formula, nor for a line that is to be hidden."""
-    return " " + text.replace("$", r"\$")
+    return " " + clean(text).replace("$", r"\$")
 
 
 def _told(curves: Sequence[Curve]) -> str:
