@@ -81,8 +81,9 @@ def _pictures(side: Side, base: Side, requests: Sequence[PictureRequest], compar
     steps = [side.step(requests), base.step(requests)]
     found = []
     with tempfile.TemporaryDirectory() as folder:
-        for k, (request, ends) in enumerate(zip(requests, shared_ends(steps, requests))):
+        for k, (request, range_) in enumerate(zip(requests, shared_ends(steps, requests))):
             place = Path(folder)
+            ends = replace(range_, words=range_.words.replace("of all steps", "of both results"))
             with request.told_where():
                 subject = steps[0].subject(request)
                 new = Drawn(request, subject, draw_one(subject, request, ends, place / f"{k}-new.png", NEW))
