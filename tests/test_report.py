@@ -173,6 +173,22 @@ def test_what_is_not_reported_has_its_own_peak(made: dict[str, Any]) -> None:
     assert any("1333.4" in text and "equivalent" in text for _, text in made["seen"].all("td"))
 
 
+def test_cells_without_a_value_are_told_as_such(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.chdir(tmp_path)
+    points = np.array([*np.eye(4, 3), [2, 0, 0], [3, 0, 0], [2, 1, 0.0]])
+    cells = (("tetra", [[0, 1, 2, 3]]), ("triangle", [[4, 5, 6]]), ("vertex", [[0]]))
+    blocks = tuple(unturn.CellBlock(t, np.array(c), np.array([k])) for k, (t, c) in enumerate(cells))
+    u = 1e-3 * points
+    u[5] = np.nan
+    unturn.write(unturn.Result(points, blocks, {"u": u}), "gap.vtu")
+    Path("plan.toml").write_text(PLAN, encoding="utf-8")
+    status, said = run(["report", "gap.vtu", "plan.toml", "-o", "r.html", "--folder", "."])
+    assert status == 0, said
+    why = {r["why"]: r["first of them"] for r in table_of(tmp_path, "left-out")}
+    assert why["displacement not finite"] == "cell 1"
+    assert not Path("table-beyond.csv").exists()  # the triangle has no value that could be told
+
+
 def test_limits_are_told_with_value_bound_and_verdict(made: dict[str, Any]) -> None:
     rows = {r["limit"]: r for r in table_of(made["folder"], "limits")}
     assert (rows["high"]["verdict"], rows["wide"]["verdict"]) == ("exceeded", "met")

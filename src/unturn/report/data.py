@@ -7,7 +7,7 @@ from dataclasses import asdict
 from typing import Any
 
 from unturn._version import __version__
-from unturn.report.content import Beyond, Content, Extreme, Series, Shown, Versus
+from unturn.report.content import Content, Extreme, Series, Shown, Versus
 from unturn.summary import CAUTION, summary_data
 from unturn.verdicts.writers import json_report
 
@@ -31,7 +31,7 @@ def report_data(content: Content) -> dict[str, Any]:
         "passed": content.passed,
         "summary": summary_data(content.summary),
         "extremes": [_extreme(e) for e in content.extremes],
-        "beyond": [_beyond(b) for b in content.beyond],
+        "beyond": [asdict(b) for b in content.beyond],
         "pictures": [_image(i) for i in content.pictures],
         "limits": None if content.limits is None else json_report(content.limits),
         "comparison": None if content.versus is None else _versus(content.versus),
@@ -46,10 +46,6 @@ def _extreme(e: Extreme) -> dict[str, Any]:
         "plus_minus": e.plus_minus, "unit": e.unit, "cell": e.cell if e.cell >= 0 else None, "element": e.element,
         "at": None if e.at is None else list(e.at), "error_over_size": e.error_over_size, "suspected_singular": e.singular,
     }  # fmt: skip
-
-
-def _beyond(b: Beyond) -> dict[str, Any]:
-    return {**asdict(b), "cell": b.cell if b.cell >= 0 else None}
 
 
 def _image(image: Shown) -> dict[str, Any]:

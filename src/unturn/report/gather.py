@@ -179,16 +179,9 @@ def _beyond(computed: Computed, summary: Summary) -> list[Beyond]:
     for dimension in sorted(set(d.dimension[rest].tolist()), reverse=True):
         cells = np.flatnonzero(rest & (d.dimension == dimension))
         peak = statistics(values, d.volume, cells, ())
+        if not peak.count:  # they are told as cells without a value
+            continue
         unit = "radian" if name == "angle_of_turn" else "strain"
-        found.append(
-            Beyond(
-                dimension,
-                len(cells),
-                name,
-                peak.maximum,
-                peak.at_maximum,
-                element_of(summary, peak.at_maximum),
-                unit,
-            )
-        )
+        where = element_of(summary, peak.at_maximum)
+        found.append(Beyond(dimension, peak.count, name, peak.maximum, peak.at_maximum, where, unit))
     return found
