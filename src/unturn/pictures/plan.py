@@ -11,10 +11,11 @@ from typing import Any
 
 from unturn import reading_keys as r
 from unturn import toml_kinds as k
-from unturn.errors import UsageError
+from unturn.errors import UsageError, close_matches
 from unturn.options import StrainOptions
 from unturn.picture_keys import PICTURE_KEYS, PictureRequest
 from unturn.pictures._measure import LOCATIONS
+from unturn.report_keys import REPORT_KEYS, ReportWish
 from unturn.toml_keys import Lines, Path, Source, read_table, read_value
 from unturn.toml_kinds import REQUIRED, Key
 from unturn.written_regions.kinds import RegionSpec
@@ -30,6 +31,7 @@ PLAN_KEYS = (
     Key("reading", _ANY, "how the result is read", {}),
     Key("regions", _ANY, "named regions", {}),
     Key("defaults", _ANY, "what holds for every picture that does not say otherwise", {}),
+    Key("report", _ANY, "what `unturn report` says beside the pictures", {}),
     Key("pictures", _ANY, "the pictures", REQUIRED),
 )
 """Keys of the file itself."""
@@ -62,6 +64,8 @@ class Plan:
         What is asked for, in the order of the file; names are different.
     csv
         Names of the pictures whose values are wanted as a table.
+    report
+        What a report says beside the pictures.
     """
 
     path: str
@@ -72,6 +76,7 @@ class Plan:
     regions: Mapping[str, RegionSpec]
     pictures: tuple[PictureRequest, ...]
     csv: frozenset[str] = field(default_factory=frozenset)
+    report: ReportWish = field(default_factory=ReportWish)
 
 
 def read_plan(path: FilePath | str) -> Plan:
@@ -120,6 +125,7 @@ def parse_plan(raw: bytes, name: str) -> Plan:
         if request.name.casefold() in [p.name.casefold() for p in pictures]:
             raise source.error((*place, "name"), f"another picture is called {request.name!r} too.")
         pictures.append(request)
+    report = _report(source, found["report"], [p.name for p in pictures])
     return Plan(
         name,
         found["title"],
@@ -129,7 +135,19 @@ def parse_plan(raw: bytes, name: str) -> Plan:
         read_regions(source, found["regions"]),
         tuple(pictures),
         frozenset(csv),
+        report,
     )
+
+
+def _report(source: Source, table: Any, pictures: Sequence[str]) -> ReportWish:
+    wish = ReportWish(**read_table(source, ("report",), table, REPORT_KEYS))
+    for name in wish.side_by_side:
+        if name not in pictures:
+            raise source.error(
+                ("report", "side_by_side"),
+                f"no picture is called {name!r}.{close_matches(name, pictures)} Pictures: {', '.join(pictures)}.",
+            )
+    return wish
 
 
 def _picture(source: Source, place: Path, table: Any, defaults: Mapping[str, Any]) -> dict[str, Any]:
