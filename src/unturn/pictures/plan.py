@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import re
-import tomllib
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field
 from pathlib import Path as FilePath
@@ -11,18 +10,17 @@ from typing import Any
 
 from unturn import reading_keys as r
 from unturn import toml_kinds as k
-from unturn.errors import UsageError, close_matches
+from unturn.errors import close_matches
 from unturn.options import StrainOptions
 from unturn.picture_keys import PICTURE_KEYS, PictureRequest
 from unturn.pictures._measure import LOCATIONS
 from unturn.report_keys import REPORT_KEYS, ReportWish
-from unturn.toml_keys import Lines, Path, Source, read_table, read_value
+from unturn.toml_keys import Path, Source, parse_toml, read_raw, read_table, read_value
 from unturn.toml_kinds import REQUIRED, Key
 from unturn.written_regions.kinds import RegionSpec
 from unturn.written_regions.read import read_regions
 
 SCHEMA = "unturn.plan/1"
-_MOST_BYTES = 10_000_000
 _ANY = k.Kind("a table", lambda value: value)
 
 PLAN_KEYS = (
@@ -87,27 +85,12 @@ def read_plan(path: FilePath | str) -> Plan:
     UsageError
         The file cannot be read, is no TOML, or says something that is not known; with the line.
     """
-    name = str(path)
-    try:
-        with open(path, "rb") as file:
-            raw = file.read(_MOST_BYTES + 1)
-    except (OSError, ValueError) as error:
-        reason = getattr(error, "strerror", None) or error
-        raise UsageError(f"{name}: the plan cannot be read: {reason}. Check the name.") from None
-    if len(raw) > _MOST_BYTES:
-        raise UsageError(f"{name}: a plan has at most {_MOST_BYTES} bytes; this is something else.")
-    return parse_plan(raw, name)
+    return parse_plan(read_raw(path, "plan"), str(path))
 
 
 def parse_plan(raw: bytes, name: str) -> Plan:
     """Return what the bytes of a plan say; see `read_plan`."""
-    try:
-        text = raw.decode("utf-8")
-        data = tomllib.loads(text)
-    except (tomllib.TOMLDecodeError, UnicodeDecodeError, RecursionError) as error:
-        said = str(error) if not isinstance(error, RecursionError) else "nested too deep"
-        raise UsageError(f"{name}: not a TOML file: {said}. Correct it there.") from None
-    source = Source(name, Lines(text, data))
+    source, data = parse_toml(raw, name)
     found = read_table(source, (), data, PLAN_KEYS)
     reading = read_table(source, ("reading",), found["reading"], PLAN_READING_KEYS)
     options, zero_step = r.options_of(reading)
