@@ -384,3 +384,24 @@ def test_the_command_needs_no_display(tmp_path):
     )  # fmt: skip
     assert (done.returncode, done.stderr) == (0, "")
     assert pixels_of(tmp_path / "x.png").shape == (1000, 1600, 3)
+
+
+# Common practice, no source.
+@pytest.mark.parametrize(
+    ("options", "says"),
+    [
+        (["-o", "a.png", "--json", "a.png"], "named for two outputs"),
+        (["-o", "a.png", "--csv", "a.png"], "named for two outputs"),
+        (["-o", "a.png", "--csv", "table.csv", "--displacement-table", "table.csv"], "input file"),
+        (["-o", ".", "--plan", "plan.toml", "--json", "plan.toml"], "input file"),
+    ],
+)
+def test_no_output_replaces_an_input_or_another(options, says, tmp_path, monkeypatch):
+    monkeypatch.chdir(tmp_path)
+    held = {"table.csv": "node,ux,uy,uz\n1,0,0,0\n", "plan.toml": PLAN}
+    for name, text in held.items():
+        Path(name).write_text(text, encoding="utf-8")
+    status, said = run(BRACKET, *options)
+    assert status == 2, said
+    assert says in said
+    assert {p.name: p.read_text(encoding="utf-8") for p in tmp_path.iterdir()} == held

@@ -5,6 +5,7 @@ from __future__ import annotations
 import os
 import subprocess
 import sys
+from dataclasses import replace
 from pathlib import Path
 
 import numpy as np
@@ -274,6 +275,29 @@ def test_the_factor_is_fitted(computed):
 @pytest.mark.derived(
     "a quadratic arc over 90 degrees leaves its circle by 0.6 % of the radius, its chord by 29 %"
 )
+# Common practice, no source. Coordinates beyond single precision end the graphics library, and the process with it.
+@pytest.mark.parametrize(("value", "factor"), [(1e-3, 1e30), (1e-3, -1e308), (1e30, None), (1e30, 1.0)])
+def test_a_displacement_beyond_what_can_be_drawn_is_refused(value, factor, tmp_path):
+    result = squares()
+    moved = np.zeros((result.n_points, 3))
+    moved[7, 0] = value
+    with pytest.raises(UsageError, match=r"displacement of point 7.*million times the size"):
+        draw(result, array="value", path=tmp_path / "p.png", displacement=moved, factor=factor, size=SIZE)
+    assert not any(tmp_path.iterdir())
+
+
+# Common practice, no source.
+def test_a_node_of_no_cell_does_not_change_the_factor(tmp_path):
+    result = squares()
+    moved = np.zeros((result.n_points, 3))
+    moved[:, 0] = 1e-3
+    plain = draw(result, array="value", path=tmp_path / "p.png", displacement=moved, size=SIZE)
+    loose = replace(result, points=np.vstack([result.points, [[1e3, 0, 0]]]), point_data={})
+    far = np.vstack([moved, [[1e30, 0, 0]]])
+    drawn = draw(loose, array="value", path=tmp_path / "q.png", displacement=far, size=SIZE)
+    assert drawn.factor == plain.factor > 1
+
+
 def test_a_hole_between_quadratic_cells_is_round(tmp_path):
     points, cells = [], []
     for k in range(4):

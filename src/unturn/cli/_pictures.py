@@ -138,7 +138,7 @@ class _Job:
         if not is_folder(folder):
             raise UsageError(f"-o {folder}: with --plan the output is an existing folder; make it first.")
         targets = [folder / f"{p.name}.png" for p in plan.pictures]
-        self._check(*targets, *(folder / f"{name}.csv" for name in sorted(plan.csv)))
+        self._check(*targets, *(folder / f"{name}.csv" for name in sorted(plan.csv)), plan=path)
         opened = self._opened()
         options = replace(plan.options, threads=threads)
         step = self._step(opened, self._number(opened), plan.pictures, options, plan.zero_step,
@@ -149,12 +149,11 @@ class _Job:
             write_values(one, place)
         self._tell(drawn, [place for _, place in tables])
 
-    def _check(self, *targets: Path | None) -> None:
-        from unturn.cli._output import check_place
+    def _check(self, *targets: Path | None, plan: Path | None = None) -> None:
+        from unturn.cli._output import check_places
 
-        for target in targets:
-            check_place(None, target, [self.file])
-        check_place(None, self.json, [self.file])
+        inputs = [path for path in (self.file, self.table, plan) if path is not None]
+        check_places((*targets, self.json), inputs)
 
     def _opened(self) -> ResultFile:
         from unturn import io

@@ -10,7 +10,7 @@ from numpy.typing import NDArray
 from unturn.errors import InputError, UsageError, close_matches
 from unturn.measures import GEOMETRY, MEASURES
 from unturn.pictures._colours import round_up
-from unturn.result import Association, Result
+from unturn.result import Association, Result, used_points
 
 Floats = NDArray[np.float64]
 
@@ -23,6 +23,7 @@ _UNITS = {
 }
 _SHORT = {"strain": "microstrain", "radian": "mrad"}
 FITTED_SHARE = 0.05
+FARTHEST = 1e6  # sizes of the model that a displacement is drawn across
 
 
 @dataclass(frozen=True, eq=False)
@@ -131,7 +132,8 @@ def shape_of(result: Result, rest: Floats, displacement: Floats | None, factor: 
     Raises
     ------
     UsageError
-        A displacement of another shape, or a factor that is not a number.
+        A displacement of another shape, a factor that is not a number, or one that moves points beyond what can be
+        drawn.
     InputError
         No point with finite coordinates.
     """
@@ -146,9 +148,26 @@ def shape_of(result: Result, rest: Floats, displacement: Floats | None, factor: 
         raise UsageError(f"the displacement has shape {moved.shape}; expected {rest.shape}.")
     if factor is not None and not np.isfinite(factor):
         raise UsageError(f"the deformation factor is {factor}; give a number.")
-    moved = np.where(np.isfinite(moved).all(axis=1, keepdims=True), moved, 0.0)
-    used = fitted_factor(rest, moved) if factor is None else float(factor)
+    there = used_points(result.blocks, result.n_points) & np.isfinite(rest).all(axis=1)
+    moved = np.where((there & np.isfinite(moved).all(axis=1))[:, None], moved, 0.0)
+    points = rest[there] if there.any() else rest
+    used = fitted_factor(points, moved) if factor is None else float(factor)
+    _check_reach(points, moved, used)
     return Shape(rest + used * moved, rest, used, factor is None)
+
+
+def _check_reach(points: Floats, displacement: Floats, factor: float) -> None:
+    """Refuse a drawn displacement that leaves nothing of the model to be seen, and overflows single precision."""
+    finite = points[np.isfinite(points).all(axis=1)]
+    size = float(np.linalg.norm(np.ptp(finite, axis=0)))
+    each = np.abs(displacement).max(axis=1)
+    if factor and size and each.max() > FARTHEST * size / abs(factor):
+        node = int(each.argmax())
+        raise UsageError(
+            f"the displacement of point {node}, {each[node]:.4g} in the length unit of the file, drawn x {factor:g} is more "
+            f"than a million times the size of the model ({size:.4g}): look for a wrong unit or a value that stands "
+            "for 'none', and draw with a smaller factor, or 0."
+        )
 
 
 def fitted_factor(points: Floats, displacement: Floats) -> float:
