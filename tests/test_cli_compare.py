@@ -296,7 +296,7 @@ def test_a_series_on_another_mesh(desk: Path) -> None:
     [
         ("", "'schema' is missing"),
         ('schema = "unturn.tolerances/9"', "unturn.tolerances/1"),
-        ("[default", "no TOML file"),
+        ("[default", "not a TOML file"),
         ("[defualt]\nabsolute = 1", "Did you mean 'default'"),
         ("[default]\nabsolut = 1", "Did you mean 'absolute'"),
         ("[default]\nabsolute = -1", "line 3: default.absolute: expected a number from 0 on, found -1"),

@@ -189,7 +189,7 @@ def test_json_on_the_standard_output(desk: Path, capsys: pytest.CaptureFixture[s
         ("dead.vtu wind.vtu --zero-step 0", 2, "several files are given"),
         ("run.xdmf -o no/where.vtu", 2, "Choose a folder that exists"),
         ("run.xdmf -o out.xyz", 2, "no format is written"),
-        ("run.xdmf --combinations none.toml", 3, "cannot be read"),
+        ("run.xdmf --combinations none.toml", 2, "cannot be read"),
         (
             "dead.vtu wind.vtu --combinations ok.toml --solve nonlinear",
             2,

@@ -28,6 +28,7 @@ from unturn.measures import DEFAULT_MEASURES, ESTIMATES, GEOMETRY, MEASURES, SMA
 from unturn.picture_keys import PICTURE_KEYS
 from unturn.pictures.plan import PLAN_KEYS, PLAN_READING_KEYS
 from unturn.refinement import Behaviour
+from unturn.report_keys import REPORT_KEYS
 from unturn.series import SERIES_MEASURES
 from unturn.verdicts.finding import STATES
 from unturn.verdicts.imposed import imposed_fields
@@ -86,7 +87,7 @@ def test_the_first_two_commands_are_single_lines_that_need_nothing_else() -> Non
     assert "--picture" in shell[0].text
     assert shell[1].text == (
         "python3 -m venv .venv-test && .venv-test/bin/pip install --quiet -e '.[test]' && "
-        ".venv-test/bin/python -m pytest"
+        ".venv-test/bin/python -m pytest -n auto"
     )
     assert "\n" not in shell[0].text + shell[1].text
 
@@ -475,3 +476,43 @@ def test_the_schema_of_an_installation_is_documented_key_by_key() -> None:
     fault = Check("fault", "it cannot be run", FORMULAS[0].source, broken)
     data = record_data(check_installation("2026-12-31", [*sound, failed, fault]))
     _check_schema(DOCS / "installation-json.md", [json.loads(json.dumps(data, allow_nan=False))])
+
+
+def test_the_keys_of_a_report_are_the_codes() -> None:
+    assert table(DOCS / "report.md", "key of `report`") == [[f"`{k.name}`", k.meaning] for k in REPORT_KEYS]
+
+
+def test_the_report_schema_is_documented_key_by_key(desk: Path) -> None:
+    produced = []
+    for job in ("bracket.vtu small.toml", "lever.xdmf lever.toml"):
+        Path("lever.toml").write_text(_SMALL_PLAN.replace("linear", "nonlinear"), encoding="utf-8")
+        Path("small.toml").write_text(
+            _SMALL_PLAN
+            + '[report]\nregions = ["part=1"]\nlimits = "bracket.limits.toml"\nreference = "bracket.vtu"\n',
+            encoding="utf-8",
+        )
+        status, said = run(spoken(f"unturn report {job} -o out.json --format json"))
+        assert status == 0, said
+        data = json.loads(Path("out.json").read_text(encoding="utf-8"))
+        assert data["summary"]["schema"] == "unturn.summary/1"
+        nested = [data["limits"], (data["comparison"] or {}).get("findings")]
+        assert {d["schema"] for d in nested if d} <= {"unturn.verdict/1"}
+        for holder, key in ((data, "summary"), (data, "limits"), (data["comparison"] or {}, "findings")):
+            holder[key] = holder.get(key) and {}  # documented on their own pages
+        images = [*data["pictures"], *(data["comparison"] or {}).get("pictures", ())]
+        for image in images:
+            assert set(image.pop("drawn")) >= {"measure", "factor", "range"}
+            image["drawn"] = {}
+        produced.append(data)
+    _check_schema(DOCS / "report-json.md", produced)
+
+
+_SMALL_PLAN = """
+schema = "unturn.plan/1"
+[reading]
+solve = "linear"
+[defaults]
+size = [480, 480]
+[[pictures]]
+name = "whole"
+"""

@@ -464,10 +464,11 @@ def test_wrong_tables_are_refused(tmp_path: Path, text: str, words: str) -> None
 
 @pytest.mark.practice("what cannot be superposed is refused")
 def test_wrong_superposition_is_refused(tmp_path: Path) -> None:
-    with pytest.raises(InputError, match="cannot be read"):
+    with pytest.raises(UsageError, match="cannot be read"):
         read_combinations(tmp_path / "none.toml")
-    with pytest.raises(InputError, match="not a TOML file"):
-        read_combinations(written(tmp_path, "= 1"))
+    for text in ("= 1", "a = " + "1" * 5000, "a = " + "[" * 5000):
+        with pytest.raises(UsageError, match="not a TOML file"):
+            read_combinations(written(tmp_path, text))
     readers = {"dead": lambda: MESH.result(u=MESH.points)}
     with pytest.raises(UsageError, match="Did you mean 'dead'"):
         superposed_states(readers, [Combination("x", {"deed": 1.0})], StrainOptions(solve="linear"))

@@ -17,7 +17,7 @@ PACKAGE = Path(unturn.errors.__file__).parent
 LAYERS = (
     ("errors", "source", "_version"),
     ("kinematics", "elements", "toml_kinds"),
-    ("toml_keys", "picture_wishes"),
+    ("toml_keys", "picture_wishes", "report_keys"),
     ("picture_keys",),
     ("result", "statistics", "precision", "node_sets"),
     ("numbering", "frames", "point_gradient"),
@@ -51,13 +51,14 @@ LAYERS = (
     ("_api_meshes",),
     ("_api_states",),
     ("verdicts", "gauges", "pictures"),
+    ("report",),
     ("_accessor", "testing", "__init__"),
     ("cli", "__main__"),
 )
 LEVEL = {name: level for level, names in enumerate(LAYERS) for name in names}
 FILES = sorted(PACKAGE.rglob("*.py"))
 # `unturn.__init__` is what users import; inside the package its parts are named in full.
-OUTSIDE = {"vtk", "vtkmodules", "pyvista", "meshio"}
+OUTSIDE = {"vtk", "vtkmodules", "pyvista", "meshio", "matplotlib", "jinja2"}
 
 
 def part(path: Path) -> str:

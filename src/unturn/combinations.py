@@ -4,13 +4,13 @@ from __future__ import annotations
 
 import itertools
 import math
-import tomllib
 from collections.abc import Mapping
 from dataclasses import dataclass
 from pathlib import Path
 from typing import Any
 
-from unturn.errors import InputError, UsageError
+from unturn.errors import UsageError
+from unturn.toml_keys import parse_toml, read_raw
 
 _MOST_REVERSIBLE = 10
 
@@ -31,19 +31,10 @@ def read_combinations(path: Path) -> tuple[Combination, ...]:
 
     Raises
     ------
-    InputError
-        The file cannot be read or is no TOML.
     UsageError
-        What it holds is no table of combinations.
+        The file cannot be read, is no TOML, or what it holds is no table of combinations.
     """
-    try:
-        data = tomllib.loads(path.read_text(encoding="utf-8"))
-    except OSError as error:
-        raise InputError(
-            f"{path}: the combinations cannot be read: {error.strerror}. Check the name."
-        ) from error
-    except (tomllib.TOMLDecodeError, UnicodeDecodeError) as error:
-        raise InputError(f"{path}: not a TOML file ({error}). Correct it there.") from error
+    _, data = parse_toml(read_raw(path, "combinations"), str(path))
     others = sorted(set(data) - {"combinations"})
     tables = data.get("combinations")
     if others or not isinstance(tables, dict) or not tables:

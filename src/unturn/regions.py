@@ -15,7 +15,7 @@ from unturn.kinematics._symmetric import Floats
 from unturn.model import Model
 from unturn.result import Result
 
-Origin = Literal["group", "tag", "body", "whole"]
+Origin = Literal["group", "tag", "body", "whole", "plan"]
 
 _TAG_NAMES = re.compile(
     r"region|material|^mat(_?id)?$|part|body|bodies|group|tag|physical|propert|^[pm]id$|domain|section|component|zone",

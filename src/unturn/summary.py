@@ -3,11 +3,12 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field, replace
 from typing import Any
 
 import numpy as np
+from numpy.typing import NDArray
 
 from unturn._version import __version__
 from unturn.agreement import Agreement, compare_with_solver
@@ -30,7 +31,10 @@ SCHEMA = "unturn.summary/1"
 
 @dataclass(frozen=True)
 class SummaryOptions:
-    """How a summary is made: regions by name, what is known of the solve, mode shape or not, all statistics or few."""
+    """How a summary is made: regions by name, what is known of the solve, mode shape or not, all statistics or few.
+
+    `defined` holds the cells, zero-based file positions, of regions that are not of the file, by name.
+    """
 
     regions: tuple[str, ...] = ()
     solve: Solve = "unknown"
@@ -38,6 +42,7 @@ class SummaryOptions:
     equivalent_poisson: float | None = None
     at: str = "centroid"
     full: bool = False
+    defined: Mapping[str, NDArray[np.int64]] = field(default_factory=dict)
 
 
 @dataclass(frozen=True, eq=False)
@@ -107,7 +112,7 @@ def summarise(
     fields = computed.fields
     d = fields.diagnostics
     assert d is not None
-    groups, regions = _regions(fields.model, d, options.regions)
+    groups, regions = _regions(fields.model, d, options)
     columns = _columns(fields, d, options.full)
     made: list[RegionSummary] = []
     counted_regions: list[Region] = []
@@ -155,11 +160,16 @@ def summarise(
     )
 
 
-def _regions(model: Model, d: CellDiagnostics, names: Sequence[str]) -> tuple[list[Region], list[Region]]:
+def _regions(model: Model, d: CellDiagnostics, options: SummaryOptions) -> tuple[list[Region], list[Region]]:
     """Return the regions of all computed cells, and those of the summary: named, or of the highest dimension."""
     every = find_regions(model, d.dimension > 0)
-    if names:
-        return every, named_regions(model, names, d.dimension > 0, every)
+    if options.regions:
+        defined = options.defined
+        of_file = named_regions(
+            model, [n for n in options.regions if n not in defined], d.dimension > 0, every
+        )
+        found = {r.name: r for r in of_file} | {n: Region(n, cells, "plan") for n, cells in defined.items()}
+        return every, [found[n] for n in options.regions]
     judged = d.dimension == model.dimension
     return every, every if (judged == (d.dimension > 0)).all() else find_regions(model, judged)
 

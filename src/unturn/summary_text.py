@@ -65,14 +65,15 @@ def _head(summary: Summary) -> list[str]:
     parts += [f"{result.n_cells} cells ({types})", f"{n} region{'s' * (n != 1)}"]
     parts.append(f"displacement '{model.displacement.name}' ({model.displacement.why})")
     solve = "not stated" if options.solve == "unknown" else f"stated {options.solve}"
-    lines = ["   ".join(parts), f"solve: {solve}   {_kind(summary)}"]
+    lines = ["   ".join(parts), f"solve: {solve}   {kind_text(summary)}"]
     asked = [f"--{k.replace('_', '-')} {v}" for k, v in summary.request.items() if k in _TOLD]
     if asked:
         lines.append("asked: " + ", ".join(asked))
-    return lines + [_agreement(a) for a in summary.agreements]
+    return lines + [agreement_text(a) for a in summary.agreements]
 
 
-def _agreement(a: Agreement) -> str:
+def agreement_text(a: Agreement) -> str:
+    """Return how the solver's own strain array compares with ours."""
     where = "cells" if a.association == "cell" else "nodes, averaged to cells"
     start = f"solver's strain array '{a.array}' ({where}):"
     if not a.guess:
@@ -82,7 +83,8 @@ def _agreement(a: Agreement) -> str:
     return f"{start} {said} {part} (read as {a.guess})"
 
 
-def _kind(summary: Summary) -> str:
+def kind_text(summary: Summary) -> str:
+    """Return what kind of mesh it is, and what is assumed of the directions that it does not hold."""
     model = summary.fields.model
     kind = mesh_kind(model)
     plane = model.plane
@@ -117,7 +119,7 @@ def _verdicts(summary: Summary) -> list[str]:
     if summary.finite_only:
         return [*lines, *_advice(_FINITE_ONLY[summary.options.solve])]
     tried = [(r.region.name, trial) for r in shown[:_MOST_VERDICTS] for trial in r.trials]
-    lines += [_tried(name, trial, summary.options.solve) for name, trial in tried]
+    lines += [tried_text(name, trial, summary.options.solve) for name, trial in tried]
     by_action: dict[str, list[str]] = {}
     for r in shown:
         if r.verdict.action:
@@ -133,6 +135,7 @@ _FINITE_ONLY: dict[Solve, str] = {
     "unknown": "that is for the small strain; the arrays that are written are finite measures, which contain no turning "
     "but are real only if the solve was geometrically nonlinear (say which with --solve)",
 }
+"""What a verdict on the small strain means where only finite measures are asked for."""
 
 
 def _advice(sentence: str) -> list[str]:
@@ -146,7 +149,7 @@ def _advice(sentence: str) -> list[str]:
     )
 
 
-def _tried(region: str, trial: Trial, solve: Solve) -> str:
+def tried_text(region: str, trial: Trial, solve: Solve) -> str:
     """Return what a trial leaves, and the option that does it when that helps."""
     supposed = "" if solve == "nonlinear" else " (if the solve was nonlinear)"
     peak = "" if math.isnan(trial.peak) else f", largest equivalent {_micro(trial.peak)} microstrain"
@@ -415,14 +418,15 @@ def _where(cell: int, summary: Summary) -> str:
     return f"element {summary.numbers.numbers[cell]} (cell {cell})"
 
 
-def _extent(summary: Summary) -> float:
+def extent_of(summary: Summary) -> float:
+    """Return the largest extent of the model along an axis."""
     points = summary.fields.model.points
     return float(np.nanmax(np.nanmax(points, axis=0) - np.nanmin(points, axis=0)))
 
 
 def _digits(summary: Summary) -> int:
     """Return how many decimals tell a position to a ten-thousandth of the model's size."""
-    extent = _extent(summary)
+    extent = extent_of(summary)
     return max(0, 4 - math.ceil(math.log10(extent))) if 0 < extent < math.inf else 3
 
 
@@ -515,7 +519,7 @@ def _removals(summary: Summary) -> list[str]:
         return []
     order = sorted(summary.removals, key=lambda r: -float(np.linalg.norm(r.motion.rotation)))
     shown = summary.removals if len(order) <= MOST_SHOWN else order[:MOST_SHOWN]
-    lines = [line for r in shown for line in _removed(r, _extent(summary))]
+    lines = [line for r in shown for line in removed_text(r, extent_of(summary))]
     if len(shown) < len(order):
         lines.append(
             f"rigid motion taken out of {len(order) - len(shown)} more that turn less: all are in --json"
@@ -524,7 +528,8 @@ def _removals(summary: Summary) -> list[str]:
     return lines
 
 
-def _removed(r: Removal, extent: float) -> list[str]:
+def removed_text(r: Removal, extent: float) -> list[str]:
+    """Return the rigid motion that was taken out; numbers that are nothing beside the model's size are zero."""
     m = r.motion
     turn = np.degrees(m.rotation)
     fits = {"linearised": "linearised fit", "finite": "best-fit rotation"}

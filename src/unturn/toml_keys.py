@@ -3,8 +3,10 @@
 from __future__ import annotations
 
 import re
+import tomllib
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
+from pathlib import Path as FilePath
 from typing import Any
 
 from unturn.errors import UsageError, close_matches
@@ -12,6 +14,7 @@ from unturn.toml_kinds import REQUIRED, Key, Kind, Wrong, shown
 
 Path = tuple[str | int, ...]
 _LONGEST = 1000  # characters of a line in which a key or table is looked for
+_MOST_BYTES = 10_000_000
 
 
 class Lines:
@@ -78,6 +81,44 @@ class Source:
         where = f"{self.name}, line {line}" if line is not None else self.name
         spelt = key_path(path)
         return UsageError(f"{where}: {spelt + ': ' if spelt else ''}{what}")
+
+
+def read_raw(path: FilePath | str, what: str) -> bytes:
+    """Return the bytes of a file that people write; `what` it holds, for the error.
+
+    Raises
+    ------
+    UsageError
+        It cannot be read, or is far too long.
+    """
+    try:
+        with open(path, "rb") as file:
+            raw = file.read(_MOST_BYTES + 1)
+    except (OSError, ValueError) as error:
+        reason = getattr(error, "strerror", None) or error
+        raise UsageError(f"{path}: the {what} cannot be read: {reason}. Check the name.") from None
+    if len(raw) > _MOST_BYTES:
+        raise UsageError(
+            f"{path}: longer than the {_MOST_BYTES} bytes that {what} may have; this is something else."
+        )
+    return raw
+
+
+def parse_toml(raw: bytes, name: str, hint: str = "") -> tuple[Source, dict[str, Any]]:
+    """Return a TOML file and its data; `hint` ends the error.
+
+    Raises
+    ------
+    UsageError
+        It is no TOML.
+    """
+    try:
+        text = raw.decode("utf-8")
+        data = tomllib.loads(text)
+    except (ValueError, RecursionError) as error:  # also of numbers with thousands of digits
+        said = str(error) if not isinstance(error, RecursionError) else "nested too deep"
+        raise UsageError(f"{name}: not a TOML file: {said}. Correct it there{hint}.") from None
+    return Source(name, Lines(text, data)), data
 
 
 def key_path(path: Path) -> str:

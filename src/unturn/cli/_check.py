@@ -51,7 +51,7 @@ def check(
     from unturn.verdicts.inputs import hashed_inputs
     from unturn.verdicts.read_limits import read_limits
 
-    day = _date(today)
+    day = date_of(today)
     places = r.ReportPlaces(json, junit, markdown, csv)
     if explain and len(files) > 1:
         raise UsageError("--explain reads no result: give the limits file alone.")
@@ -86,7 +86,14 @@ def check(
     )  # fmt: skip
 
 
-def _date(text: str | None) -> datetime.date:
+def date_of(text: str | None) -> datetime.date:
+    """Return the day of ``--today``.
+
+    Raises
+    ------
+    UsageError
+        It is no date.
+    """
     if text is None:
         return datetime.date.today()
     try:

@@ -12,7 +12,17 @@ from typing import Annotated
 
 import typer
 
-from unturn.cli import _check, _compare, _convergence, _envelope, _patchtest, _pictures, _strain, _survey
+from unturn.cli import (
+    _check,
+    _compare,
+    _convergence,
+    _envelope,
+    _patchtest,
+    _pictures,
+    _report,
+    _strain,
+    _survey,
+)
 from unturn.errors import UnturnError
 
 _SIGPIPE = 13  # which not every system has
@@ -37,6 +47,7 @@ app = typer.Typer(
 app.command("survey")(_survey.survey)
 app.command("strain")(_strain.strain)
 app.command("picture")(_pictures.picture)
+app.command("report")(_report.report)
 app.command("check")(_check.check)
 app.command("compare")(_compare.compare)
 app.command("envelope")(_envelope.envelope)

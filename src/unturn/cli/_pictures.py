@@ -63,13 +63,15 @@ def picture(
     json: o.Json = None,
 ) -> None:
     """Draw pictures of a result without a screen: from options, or the pictures of a plan."""
+    from unturn.options import told
+
     job = _Job(file, step, displacement_table, json)
     assert isinstance(asked, dict)
     if plan is None:
         request = request_of_options(asked, options)
         job.single(request, options, zero_step, output, csv, show)
         return
-    given = [*asked, *_changed(options)]
+    given = [*asked, *told(options, None)]
     for name, value in (("zero_step", zero_step), ("csv", csv), ("show", show or None)):
         given += [name] if value is not None else []
     if given:
@@ -85,20 +87,6 @@ def request_of_options(asked: dict[str, Any], options: StrainOptions) -> Picture
     from unturn.picture_keys import request_of
 
     return request_of({**asked, "at": options.at}, "--{}")
-
-
-def _changed(options: StrainOptions) -> list[str]:
-    """Return the names of the options that are not as they are without being given."""
-    from dataclasses import fields
-
-    from unturn.options import StrainOptions
-
-    usual = StrainOptions()
-    return [
-        f.name
-        for f in fields(usual)
-        if f.name != "threads" and getattr(options, f.name) != getattr(usual, f.name)
-    ]
 
 
 @dataclass(frozen=True)

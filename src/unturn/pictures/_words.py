@@ -80,7 +80,8 @@ def _about_cut(picture: Picture) -> list[str]:
     if cut is None:
         return []
     hollow = ["hollow: only free faces are drawn"] if picture.subject.of_faces else []
-    return [f"cut: {cut.text} of the undeformed shape, the half towards the eye taken away", *hollow]
+    place = cut.text if cut.point is not None else f"{cut.text}, through the middle,"
+    return [f"cut: {place} of the undeformed shape, the half towards the eye taken away", *hollow]
 
 
 def _about_arrows(picture: Picture) -> list[str]:

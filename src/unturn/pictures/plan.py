@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 import re
-import tomllib
 from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, field
 from pathlib import Path as FilePath
@@ -11,17 +10,17 @@ from typing import Any
 
 from unturn import reading_keys as r
 from unturn import toml_kinds as k
-from unturn.errors import UsageError
+from unturn.errors import close_matches
 from unturn.options import StrainOptions
 from unturn.picture_keys import PICTURE_KEYS, PictureRequest
 from unturn.pictures._measure import LOCATIONS
-from unturn.toml_keys import Lines, Path, Source, read_table, read_value
+from unturn.report_keys import REPORT_KEYS, ReportWish
+from unturn.toml_keys import Path, Source, parse_toml, read_raw, read_table, read_value
 from unturn.toml_kinds import REQUIRED, Key
 from unturn.written_regions.kinds import RegionSpec
 from unturn.written_regions.read import read_regions
 
 SCHEMA = "unturn.plan/1"
-_MOST_BYTES = 10_000_000
 _ANY = k.Kind("a table", lambda value: value)
 
 PLAN_KEYS = (
@@ -30,6 +29,7 @@ PLAN_KEYS = (
     Key("reading", _ANY, "how the result is read", {}),
     Key("regions", _ANY, "named regions", {}),
     Key("defaults", _ANY, "what holds for every picture that does not say otherwise", {}),
+    Key("report", _ANY, "what `unturn report` says beside the pictures", {}),
     Key("pictures", _ANY, "the pictures", REQUIRED),
 )
 """Keys of the file itself."""
@@ -62,6 +62,8 @@ class Plan:
         What is asked for, in the order of the file; names are different.
     csv
         Names of the pictures whose values are wanted as a table.
+    report
+        What a report says beside the pictures.
     """
 
     path: str
@@ -72,6 +74,7 @@ class Plan:
     regions: Mapping[str, RegionSpec]
     pictures: tuple[PictureRequest, ...]
     csv: frozenset[str] = field(default_factory=frozenset)
+    report: ReportWish = field(default_factory=ReportWish)
 
 
 def read_plan(path: FilePath | str) -> Plan:
@@ -82,27 +85,12 @@ def read_plan(path: FilePath | str) -> Plan:
     UsageError
         The file cannot be read, is no TOML, or says something that is not known; with the line.
     """
-    name = str(path)
-    try:
-        with open(path, "rb") as file:
-            raw = file.read(_MOST_BYTES + 1)
-    except (OSError, ValueError) as error:
-        reason = getattr(error, "strerror", None) or error
-        raise UsageError(f"{name}: the plan cannot be read: {reason}. Check the name.") from None
-    if len(raw) > _MOST_BYTES:
-        raise UsageError(f"{name}: a plan has at most {_MOST_BYTES} bytes; this is something else.")
-    return parse_plan(raw, name)
+    return parse_plan(read_raw(path, "plan"), str(path))
 
 
 def parse_plan(raw: bytes, name: str) -> Plan:
     """Return what the bytes of a plan say; see `read_plan`."""
-    try:
-        text = raw.decode("utf-8")
-        data = tomllib.loads(text)
-    except (tomllib.TOMLDecodeError, UnicodeDecodeError, RecursionError) as error:
-        said = str(error) if not isinstance(error, RecursionError) else "nested too deep"
-        raise UsageError(f"{name}: not a TOML file: {said}. Correct it there.") from None
-    source = Source(name, Lines(text, data))
+    source, data = parse_toml(raw, name)
     found = read_table(source, (), data, PLAN_KEYS)
     reading = read_table(source, ("reading",), found["reading"], PLAN_READING_KEYS)
     options, zero_step = r.options_of(reading)
@@ -120,6 +108,7 @@ def parse_plan(raw: bytes, name: str) -> Plan:
         if request.name.casefold() in [p.name.casefold() for p in pictures]:
             raise source.error((*place, "name"), f"another picture is called {request.name!r} too.")
         pictures.append(request)
+    report = _report(source, found["report"], [p.name for p in pictures])
     return Plan(
         name,
         found["title"],
@@ -129,7 +118,19 @@ def parse_plan(raw: bytes, name: str) -> Plan:
         read_regions(source, found["regions"]),
         tuple(pictures),
         frozenset(csv),
+        report,
     )
+
+
+def _report(source: Source, table: Any, pictures: Sequence[str]) -> ReportWish:
+    wish = ReportWish(**read_table(source, ("report",), table, REPORT_KEYS))
+    for name in wish.side_by_side:
+        if name not in pictures:
+            raise source.error(
+                ("report", "side_by_side"),
+                f"no picture is called {name!r}.{close_matches(name, pictures)} Pictures: {', '.join(pictures)}.",
+            )
+    return wish
 
 
 def _picture(source: Source, place: Path, table: Any, defaults: Mapping[str, Any]) -> dict[str, Any]:

@@ -2,15 +2,13 @@
 
 from __future__ import annotations
 
-import tomllib
 from dataclasses import replace
 from pathlib import Path as FilePath
 from typing import Any
 
 from unturn import toml_kinds as k
-from unturn.errors import UsageError
 from unturn.reading_keys import READING_KEYS, options_of
-from unturn.toml_keys import Lines, Path, Source, key_path, read_table
+from unturn.toml_keys import Path, Source, key_path, parse_toml, read_raw, read_table
 from unturn.toml_kinds import REQUIRED, Key
 from unturn.verdicts.limit import Limits
 from unturn.verdicts.preconditions import PRECONDITIONS
@@ -18,7 +16,6 @@ from unturn.verdicts.read_limit import read_limit
 from unturn.written_regions.read import check_names, read_regions
 
 SCHEMA = "unturn.limits/1"
-_MOST_BYTES = 10_000_000
 
 _ANY = k.Kind("a table", lambda value: value)
 
@@ -54,29 +51,12 @@ def read_limits(path: FilePath | str) -> Limits:
     UsageError
         The file cannot be read, is no TOML, or says something that is not known, contradicts itself, or tests nothing.
     """
-    name = str(path)
-    try:
-        with open(path, "rb") as file:
-            raw = file.read(_MOST_BYTES + 1)
-    except (OSError, ValueError) as error:
-        reason = getattr(error, "strerror", None) or error
-        raise UsageError(f"{name}: the limits cannot be read: {reason}. Check the name.") from None
-    if len(raw) > _MOST_BYTES:
-        raise UsageError(f"{name}: a limits file has at most {_MOST_BYTES} bytes; this is something else.")
-    return parse_limits(raw, name)
+    return parse_limits(read_raw(path, "limits"), str(path))
 
 
 def parse_limits(raw: bytes, name: str) -> Limits:
     """Return what the bytes of a limits file say; see `read_limits`."""
-    try:
-        text = raw.decode("utf-8")
-        data = tomllib.loads(text)
-    except (ValueError, RecursionError) as error:  # also of numbers with thousands of digits
-        said = str(error) if not isinstance(error, RecursionError) else "nested too deep"
-        raise UsageError(
-            f"{name}: not a TOML file: {said}. Correct it there; the limits file comes last."
-        ) from None
-    source = Source(name, Lines(text, data))
+    source, data = parse_toml(raw, name, "; the limits file comes last")
     found = read_table(source, (), data, FILE_KEYS)
     required = read_table(source, ("result",), found["result"], RESULT_KEYS)
     reading = read_table(source, ("reading",), found["reading"], READING_KEYS)

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import tomllib
 from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass, field, replace
 from pathlib import Path
@@ -10,7 +9,7 @@ from typing import Any, Literal, get_args
 
 from unturn import toml_kinds as k
 from unturn.errors import UsageError, close_matches
-from unturn.toml_keys import Lines, Source, read_table
+from unturn.toml_keys import Lines, Source, parse_toml, read_raw, read_table
 from unturn.toml_kinds import REQUIRED, Key, Wrong
 
 SCHEMA = "unturn.tolerances/1"
@@ -155,16 +154,7 @@ def read_tolerances(path: Path | str) -> Tolerances:
     UsageError
         It cannot be read, is no TOML, or holds an unknown key, another kind of value, or a number that is no tolerance.
     """
-    try:
-        text = Path(path).read_bytes().decode()
-        data = tomllib.loads(text)
-    except OSError as error:
-        raise UsageError(
-            f"{path}: the tolerances cannot be read: {error.strerror}. Check the name."
-        ) from error
-    except (ValueError, RecursionError) as error:  # no UTF-8, no TOML, or a path that none can be
-        raise UsageError(f"{path}: no TOML file ({error}). Correct it there.") from error
-    return _parsed(Source(str(path), Lines(text, data)), data)
+    return _parsed(*parse_toml(read_raw(path, "tolerances"), str(path)))
 
 
 def parse_tolerances(data: Mapping[str, Any]) -> Tolerances:

@@ -259,7 +259,7 @@ def csv_report(report: Report) -> str:
         place = data["place"]
         x, y, z = place["at"] or (None, None, None)
         values = {**data, **place, "x": x, "y": y, "z": z, "sha256": _hashes(report, f)}
-        writer.writerow([_field(values[c]) for c in CSV_COLUMNS])
+        writer.writerow([csv_field(values[c]) for c in CSV_COLUMNS])
     return out.getvalue()
 
 
@@ -269,7 +269,8 @@ def _hashes(report: Report, f: Finding) -> str:
     return "; ".join(f"{i.role} {i.path} {i.sha256}" for i in report.inputs if i.path not in others)
 
 
-def _field(value: Any) -> str:
+def csv_field(value: Any) -> str:
+    """Return a value as CSV holds it: a number with every digit, a text that no table program takes for a formula."""
     if value is None:
         return ""
     if not isinstance(value, str):
