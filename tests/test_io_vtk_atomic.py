@@ -249,3 +249,13 @@ def test_component_names_of_an_array_taken_away_do_not_matter(result: Result, tm
     bare = replace(result, point_data={"u": result.point_data["u"]}, cell_data={}, field_data={})
     assert bare.component_names
     assert unturn.io.write(bare, tmp_path / "out.vtu") == ()
+
+
+@pytest.mark.skipif(not hasattr(os, "mkfifo"), reason="the system has no named pipes")
+def test_a_pipe_or_a_device_is_not_replaced_by_a_file(tmp_path: Path) -> None:
+    pipe = tmp_path / "pipe.json"
+    os.mkfifo(pipe)
+    with pytest.raises(UsageError, match="is a device or a pipe"), replacing(pipe) as work:
+        work.write_text("x")
+    assert pipe.is_fifo()
+    assert [*tmp_path.iterdir()] == [pipe]

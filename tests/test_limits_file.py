@@ -157,6 +157,14 @@ def test_a_missing_key_is_named(key: str) -> None:
         ({**ARRAY, "stored_in": "degree"}, "degree and number are units of different things"),
         ({**ARRAY, "plus_minus": -1}, "expected a number not below zero"),
         (
+            {**GOOD, "statistic": "share", "above": 2000, "at_most": 2000},
+            "limits[1].at_most: a share is from 0 to 100 percent of the volume: 2000 says nothing.",
+        ),
+        (
+            {**GOOD, "statistic": "share", "above": 2000, "at_least": -5},
+            "limits[1].at_least: a share is from 0 to 100 percent of the volume: -5 says nothing.",
+        ),
+        (
             {**GOOD, "measure": "strain", "statistic": "tensor_range", "base": "almansi", "component": ""},
             "expected a text",
         ),

@@ -91,9 +91,8 @@ def test_random_limits_say_what_the_page_says(
         limit["percent"] = data.draw(st.sampled_from([1, 25, 50, 75, 99, 100]))
     if limit["statistic"] in ("share", "count"):
         limit[data.draw(st.sampled_from(["above", "below"]))] = data.draw(NUMBERS)
-    bounds = sorted(
-        data.draw(st.lists(st.integers(-20, 120).map(float), min_size=2, max_size=2, unique=True))
-    )
+    room = (0, 100) if limit["statistic"] == "share" else (-20, 120)
+    bounds = sorted(data.draw(st.lists(st.integers(*room).map(float), min_size=2, max_size=2, unique=True)))
     which = data.draw(st.sampled_from(["at_least", "at_most", "both"]))
     limit |= {k: b for k, b in zip(("at_least", "at_most"), bounds) if which in (k, "both")}
     if data.draw(st.booleans()):

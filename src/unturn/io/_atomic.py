@@ -26,12 +26,16 @@ def replacing(target: Path) -> Iterator[Path]:
     Raises
     ------
     UsageError
-        The target is a folder, its folder is missing or may not be written to, the disk is full, or a file that goes
-        beside the target would replace one of another result.
+        The target is a folder, a device or a pipe, its folder is missing or may not be written to, the disk is full, or a
+        file that goes beside the target would replace one of another result.
     """
     final = Path(os.path.realpath(target))
     if final.is_dir():
         raise UsageError(f"{target} is a folder; give the name of a file in it.")
+    if final.exists() and not final.is_file():
+        raise UsageError(
+            f"{target} is a device or a pipe, which a file would take the place of; give another name."
+        )
     try:
         os.fspath(final).encode()
     except UnicodeEncodeError:

@@ -196,7 +196,7 @@ def _finish(step: Step, p: _Pending, certain: list[Certainty]) -> Measured:
     doubts += _hidden(step, p.selection)
     if statistic.extreme and "singular" not in limit.accept:
         doubts += [c.singular for c in certain if c.singular]
-    doubts += _turning(step, limit)
+    doubts += turning(step, limit)
     when: Place = {"step": step.shown, "time": step.time}
     where = step.place(p.selection.column, int(p.selection.index[p.got.ends[0][0]])) if p.got.ends else when
     region = step.finder.find(limit.region)
@@ -225,8 +225,8 @@ def _hidden(step: Step, selection: Selection) -> list[str]:
     return [f"{n} cell{'s' * (n != 1)} of the region {'have' if n != 1 else 'has'} no value"] if n else []
 
 
-def _turning(step: Step, limit: Limit) -> list[str]:
-    """Return the doubt that a small strain contains turning."""
+def turning(step: Step, limit: Limit) -> list[str]:
+    """Return the doubt that a small strain contains turning; none or one."""
     row = MEASURES.get(limit.quantity.name.removeprefix("surface_"))
     small = limit.quantity.measure and row is not None and row.unit == "strain" and not row.finite
     if not small or "turning" in limit.accept or limit.quantity.name == "small_strain_error":

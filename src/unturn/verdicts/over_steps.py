@@ -18,8 +18,9 @@ from unturn.tensor_range import TensorRange
 from unturn.verdicts.columns import Column, NoValues
 from unturn.verdicts.finding import Place
 from unturn.verdicts.limit import Limit, Quantity
-from unturn.verdicts.measured import Measured, measure_all
+from unturn.verdicts.measured import Measured, measure_all, turning
 from unturn.verdicts.step import Step
+from unturn.written_regions.select import NoRegion
 
 
 @dataclass(frozen=True)
@@ -43,6 +44,7 @@ class OverSteps:
         self._ranges: dict[tuple[Quantity, object], _Numbers | _Tensors] = {}
         self._errors: dict[str, str] = {}
         self._taken: dict[str, int] = {v.id: 0 for v in limits}
+        self._turned: dict[str, tuple[int, list[str]]] = {}
 
     def __enter__(self) -> OverSteps:
         return self
@@ -75,7 +77,9 @@ class OverSteps:
                     self._ranges[key].add(step, limit.quantity)
                 taken.add(key)
                 self._taken[limit.id] += 1
-            except (NoValues, UnturnError) as error:
+                if limit.id not in self._turned and (said := turning(step, limit)):
+                    self._turned[limit.id] = step.number, said
+            except (NoRegion, NoValues, UnturnError) as error:
                 self._errors[limit.id] = f"step {step.number}: {error}"
 
     def forget(self) -> None:
@@ -109,7 +113,7 @@ class OverSteps:
     def _ranged(self, step: Step, limit: Limit, values: Floats, made_by: NDArray[np.int64]) -> Ranged:
         """Return a limit held against ranges, as if they were values of the last step."""
         step.replace_column(limit.quantity, Column(values, "cells", None))
-        measured = measure_all(step, [limit])[0]
+        measured = self._doubted(limit, measure_all(step, [limit])[0])
         cell = measured.place.get("cell")
         if measured.error or cell is None:
             return Ranged(limit, measured)
@@ -120,6 +124,14 @@ class OverSteps:
             measured, step=later, time=time, place=where, note=f"between steps {first} and {later}"
         )
         return Ranged(limit, told, cell, (first, later))
+
+    def _doubted(self, limit: Limit, measured: Measured) -> Measured:
+        """Return a range with the doubt about the first step that the small strain does not hold in."""
+        if measured.error or limit.id not in self._turned:
+            return measured
+        number, said = self._turned[limit.id]
+        others = (d for d in measured.doubts if d not in said)
+        return replace(measured, doubts=(*(f"in step {number} {d}" for d in said), *others))
 
 
 class _Numbers:

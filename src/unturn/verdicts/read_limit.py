@@ -266,6 +266,12 @@ class _Reader:
         ):
             if level is not None and bound is None:
                 raise self.error(key, f"it is a level within {side!r}, which is missing.")
+        if self.found["statistic"] == "share":
+            for key, bound in (("at_least", low), ("at_most", high)):
+                if bound is not None and not 0 <= bound <= 100:
+                    raise self.error(
+                        key, f"a share is from 0 to 100 percent of the volume: {bound:g} says nothing."
+                    )
         order = [v for v in (low, self.found["warn_below"], self.found["warn_above"], high) if v is not None]
         if order != sorted(order):
             raise self.error(

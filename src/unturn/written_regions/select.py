@@ -160,7 +160,7 @@ def near(cells: Cells, asked: Mapping[str, Any], pick: Pick) -> Mask:
     chosen = usable[np.argsort(distance[usable], kind="stable")[: asked["cells"]]]
     mask: Mask = np.zeros(len(distance), dtype=bool)
     mask[chosen] = True
-    return mask
+    return mask | cells.nowhere
 
 
 def where(cells: Cells, asked: Mapping[str, Any], pick: Pick) -> Mask:
