@@ -87,7 +87,7 @@ def test_the_first_two_commands_are_single_lines_that_need_nothing_else() -> Non
     assert "--picture" in shell[0].text
     assert shell[1].text == (
         "python3 -m venv .venv-test && .venv-test/bin/pip install --quiet -e '.[test]' && "
-        ".venv-test/bin/python -m pytest -n auto --dist loadfile"
+        ".venv-test/bin/python -m pytest -n auto"
     )
     assert "\n" not in shell[0].text + shell[1].text
 
