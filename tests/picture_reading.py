@@ -41,6 +41,31 @@ def value_of(rgb: np.ndarray, low: float, high: float, table: np.ndarray | None 
     return low + (int(away.argmin()) + 0.5) / 256 * (high - low)
 
 
+def lightness(rgb: np.ndarray) -> np.ndarray:
+    """CIELAB lightness of sRGB bytes."""
+    s = np.asarray(rgb) / 255.0
+    linear = np.where(s <= 0.04045, s / 12.92, ((s + 0.055) / 1.055) ** 2.4)
+    y = linear @ [0.2126, 0.7152, 0.0722]
+    return np.where(y > (6 / 29) ** 3, 116 * np.cbrt(y) - 16, y * (29 / 3) ** 3)
+
+
+# From memory, not looked up: Machado et al. 2009, severity 1.0; the rows' sums show that each matrix keeps greys.
+COLOUR_BLIND = (
+    [[0.152286, 1.052583, -0.204868], [0.114503, 0.786281, 0.099216], [-0.003882, -0.048116, 1.051998]],
+    [[0.367322, 0.860646, -0.227968], [0.280085, 0.672501, 0.047413], [-0.011820, 0.042940, 0.968881]],
+)
+
+
+def seen_by(matrix: list[list[float]], rgb: np.ndarray) -> np.ndarray:
+    """The colours, sRGB bytes, that somebody colour-blind sees of colours from 0 to 1."""
+    turn = np.array(matrix)
+    np.testing.assert_allclose(turn.sum(axis=1), 1, atol=2e-6)
+    s = np.atleast_2d(rgb)
+    linear = np.where(s <= 0.04045, s / 12.92, ((s + 0.055) / 1.055) ** 2.4)
+    linear = np.clip(linear @ turn.T, 0, 1)
+    return np.where(linear <= 0.0031308, 12.92 * linear, 1.055 * linear ** (1 / 2.4) - 0.055) * 255
+
+
 def is_colour(rgb: np.ndarray, wanted: tuple[float, float, float]) -> bool:
     """Whether a pixel has a colour given from 0 to 1."""
     return bool(np.abs(rgb - np.round(np.array(wanted) * 255)).max() <= 1)

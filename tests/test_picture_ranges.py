@@ -5,7 +5,19 @@ from __future__ import annotations
 import numpy as np
 import pytest
 
-from picture_reading import boxes, colour, drawn, is_colour, one_cell, pixels_of, value_of, wanted
+from picture_reading import (
+    COLOUR_BLIND,
+    boxes,
+    colour,
+    drawn,
+    is_colour,
+    lightness,
+    one_cell,
+    pixels_of,
+    seen_by,
+    value_of,
+    wanted,
+)
 from unturn.elements import ELEMENTS
 from unturn.picture_wishes import RangeWish
 from unturn.pictures._colours import ABOVE, BELOW, NO_VALUE, Range, colour_table, srgb_from_lab
@@ -15,14 +27,6 @@ from unturn.pictures.drawing import draw_all, shared_ends
 from unturn.statistics import weighted_percentiles
 
 HOW = {"measure": "value", "camera": "front", "factor": 0, "extremes": False, "edges": False}
-
-
-def lightness(rgb: np.ndarray) -> np.ndarray:
-    """CIELAB lightness of sRGB bytes."""
-    s = np.asarray(rgb) / 255.0
-    linear = np.where(s <= 0.04045, s / 12.92, ((s + 0.055) / 1.055) ** 2.4)
-    y = linear @ [0.2126, 0.7152, 0.0722]
-    return np.where(y > (6 / 29) ** 3, 116 * np.cbrt(y) - 16, y * (29 / 3) ** 3)
 
 
 @pytest.mark.memory(
@@ -41,28 +45,13 @@ def test_the_two_sided_map_survives_grey_print_and_has_a_grey_zero():
 
 
 @pytest.mark.memory("Machado et al. 2009, severity 1.0; each matrix keeps greys, which the rows' sums show")
-@pytest.mark.parametrize(
-    "matrix",
-    [
-        [[0.152286, 1.052583, -0.204868], [0.114503, 0.786281, 0.099216], [-0.003882, -0.048116, 1.051998]],
-        [[0.367322, 0.860646, -0.227968], [0.280085, 0.672501, 0.047413], [-0.011820, 0.042940, 0.968881]],
-    ],
-)
+@pytest.mark.parametrize("matrix", COLOUR_BLIND)
 def test_the_two_sided_map_survives_colour_blindness(matrix):
-    turn = np.array(matrix)
-    np.testing.assert_allclose(turn.sum(axis=1), 1, atol=2e-6)
-
-    def seen(rgb):
-        s = np.atleast_2d(rgb)
-        linear = np.where(s <= 0.04045, s / 12.92, ((s + 0.055) / 1.055) ** 2.4)
-        linear = np.clip(linear @ turn.T, 0, 1)
-        return np.where(linear <= 0.0031308, 12.92 * linear, 1.055 * linear ** (1 / 2.4) - 0.055) * 255
-
-    table = seen(colour_table(two_sided=True) / 255)
+    table = seen_by(matrix, colour_table(two_sided=True) / 255)
     assert (np.diff(lightness(table[::16])) < -2).all()
     for special in (ABOVE, BELOW):
-        assert np.linalg.norm(table - seen(np.array(special)), axis=1).min() > 20, special
-    assert np.linalg.norm(table - seen(np.array(NO_VALUE)), axis=1).min() > 8
+        assert np.linalg.norm(table - seen_by(matrix, np.array(special)), axis=1).min() > 20, special
+    assert np.linalg.norm(table - seen_by(matrix, np.array(NO_VALUE)), axis=1).min() > 8
 
 
 @pytest.mark.derived("the definitions of the modes")

@@ -11,8 +11,8 @@ from pathlib import Path
 import numpy as np
 import pytest
 import pyvista
-from PIL import Image
 
+from picture_reading import COLOUR_BLIND, colour, is_colour, lightness, pixels_of, seen_by, value_of
 from unturn.errors import InputError, MissingExtraError, UsageError
 from unturn.fields import compute_fields
 from unturn.io import read
@@ -29,28 +29,6 @@ from unturn.result import CellBlock, Result
 ROOT = Path(__file__).parent.parent
 SAMPLES = ROOT / "sample_meshes"
 SIZE = (960, 640)
-
-
-def pixels_of(path) -> np.ndarray:
-    with Image.open(path) as image:
-        assert image.format == "PNG"
-        return np.asarray(image.convert("RGB")).astype(int)
-
-
-def colour(pixels: np.ndarray, place: np.ndarray) -> np.ndarray:
-    column, row = place
-    return pixels[round(row - 0.5), round(column - 0.5)]
-
-
-def value_of(rgb: np.ndarray, low: float, high: float) -> float:
-    """The value a reader takes from the colour bar; fails for a colour that is not in it."""
-    away = np.abs(colour_table().astype(int) - rgb).max(axis=1)
-    assert away.min() <= 1, f"colour {rgb} is not in the bar"
-    return low + (int(away.argmin()) + 0.5) / 256 * (high - low)
-
-
-def is_colour(rgb: np.ndarray, wanted: tuple[float, float, float]) -> bool:
-    return bool(np.abs(rgb - np.round(np.array(wanted) * 255)).max() <= 1)
 
 
 def squares(nx: int = 6, ny: int = 4) -> Result:
@@ -72,14 +50,6 @@ def computed():
     return make
 
 
-def lightness(rgb: np.ndarray) -> np.ndarray:
-    """CIELAB lightness of sRGB bytes."""
-    s = rgb / 255.0
-    linear = np.where(s <= 0.04045, s / 12.92, ((s + 0.055) / 1.055) ** 2.4)
-    y = linear @ [0.2126, 0.7152, 0.0722]
-    return np.where(y > (6 / 29) ** 3, 116 * np.cbrt(y) - 16, y * (29 / 3) ** 3)
-
-
 @pytest.mark.memory(
     "IEC 61966-2-1 and CIE 15; matplotlib's even map cividis is measured the same way beside it"
 )
@@ -96,27 +66,12 @@ def test_the_colour_map_survives_grey_print():
 
 
 @pytest.mark.memory("Machado et al. 2009, severity 1.0; each matrix keeps greys, which the rows' sums show")
-@pytest.mark.parametrize(
-    "matrix",
-    [
-        [[0.152286, 1.052583, -0.204868], [0.114503, 0.786281, 0.099216], [-0.003882, -0.048116, 1.051998]],
-        [[0.367322, 0.860646, -0.227968], [0.280085, 0.672501, 0.047413], [-0.011820, 0.042940, 0.968881]],
-    ],
-)
+@pytest.mark.parametrize("matrix", COLOUR_BLIND)
 def test_the_colours_survive_colour_blindness(matrix):
-    turn = np.array(matrix)
-    np.testing.assert_allclose(turn.sum(axis=1), 1, atol=2e-6)
-
-    def seen(rgb):
-        s = np.atleast_2d(rgb)
-        linear = np.where(s <= 0.04045, s / 12.92, ((s + 0.055) / 1.055) ** 2.4)
-        linear = np.clip(linear @ turn.T, 0, 1)
-        return np.where(linear <= 0.0031308, 12.92 * linear, 1.055 * linear ** (1 / 2.4) - 0.055) * 255
-
-    table = seen(colour_table() / 255)
+    table = seen_by(matrix, colour_table() / 255)
     assert (np.diff(lightness(table[::16])) < -2).all()
     for special in (ABOVE, BELOW, NO_VALUE):
-        away = np.linalg.norm(table - seen(np.array(special)), axis=1)
+        away = np.linalg.norm(table - seen_by(matrix, np.array(special)), axis=1)
         assert away.min() > 25, special
 
 

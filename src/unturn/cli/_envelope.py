@@ -106,15 +106,13 @@ def envelope(
             readable=False,
         ),
     ] = None,
-    zero_step: Annotated[
-        int | None, typer.Option(metavar="N", help="Measure displacements from this step of the series.")
-    ] = None,
+    zero_step: o.ZeroStep = None,
     region: Annotated[
         list[str] | None,
         typer.Option(metavar="NAME", help="Report this region only (repeatable): a group, or array=value."),
     ] = None,
-    prefix: Annotated[str, typer.Option(metavar="TEXT", help="Goes before the name of each new array.")] = "",
-    overwrite: Annotated[bool, typer.Option("--overwrite", help="Replace arrays of the same name.")] = False,
+    prefix: o.Prefix = "",
+    overwrite: o.Overwrite = False,
     json: o.Json = None,
 ) -> None:
     """Find the extremes of every cell or node over steps or load cases, and which of them made each."""

@@ -111,6 +111,11 @@ Coordinates = Annotated[
     CoordinatesChoice, typer.Option(help="Whether the file's coordinates are already deformed.")
 ]
 Step = Annotated[str, typer.Option(metavar="last|all|N", help="Step of a series; N counts from zero.")]
+ZeroStep = Annotated[
+    int | None, typer.Option(metavar="N", help="Measure displacements from this step of the series.")
+]
+Prefix = Annotated[str, typer.Option(metavar="TEXT", help="Goes before the name of each new array.")]
+Overwrite = Annotated[bool, typer.Option("--overwrite", help="Replace arrays of the same name.")]
 Plane = Annotated[
     PlaneChoice | None, typer.Option(help="What a plane mesh assumes of the direction across it.")
 ]

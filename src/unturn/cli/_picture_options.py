@@ -9,6 +9,7 @@ from typing import Annotated, Any, get_type_hints
 import typer
 
 from unturn import toml_kinds as k
+from unturn.cli._shared import declare
 from unturn.picture_keys import NAMES, PICTURE_KEYS
 
 
@@ -37,12 +38,5 @@ def picture_options(command: Callable[..., None]) -> Callable[..., None]:
             declared.append(
                 (key.name, Annotated[kind, typer.Option(*names, metavar=metavar, help=text)], None)
             )
-    with_options.__name__, with_options.__doc__ = command.__name__, command.__doc__
-    with_options.__annotations__ = {name: kind for name, kind, _ in declared}
-    with_options.__signature__ = inspect.Signature(  # type: ignore[attr-defined]
-        [
-            inspect.Parameter(name, inspect.Parameter.KEYWORD_ONLY, default=default, annotation=kind)
-            for name, kind, default in declared
-        ]
-    )
+    declare(with_options, command, declared)
     return with_options

@@ -50,9 +50,7 @@ def picture(
     options: StrainOptions,
     step: o.Step = "last",
     displacement_table: o.Table = None,
-    zero_step: Annotated[
-        int | None, typer.Option(metavar="N", help="Measure displacements from this step of the series.")
-    ] = None,
+    zero_step: o.ZeroStep = None,
     csv: Annotated[
         Path | None,
         typer.Option("--csv", metavar="FILE", help="Also write the values that are drawn as a table."),

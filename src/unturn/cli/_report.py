@@ -63,9 +63,7 @@ def report(
         ),
     ] = None,
     step: o.Step = "last",
-    zero_step: Annotated[
-        int | None, typer.Option(metavar="N", help="Measure displacements from this step of the series.")
-    ] = None,
+    zero_step: o.ZeroStep = None,
     today: Annotated[
         str | None,
         typer.Option(

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import inspect
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from enum import Enum
 from typing import Annotated, Any, get_type_hints
 
@@ -197,17 +197,24 @@ def strain_options(*names: str, **instead: Any) -> Callable[[Callable[..., None]
                     declared.append((name, instead.get(name, kind), default))
             else:
                 declared.append((own.name, hints[own.name], own.default))
-        with_options.__name__, with_options.__doc__ = command.__name__, command.__doc__
-        with_options.__annotations__ = {name: kind for name, kind, _ in declared}
-        with_options.__signature__ = inspect.Signature(  # type: ignore[attr-defined]
-            [
-                inspect.Parameter(name, inspect.Parameter.KEYWORD_ONLY, default=default, annotation=kind)
-                for name, kind, default in declared
-            ]
-        )
+        declare(with_options, command, declared)
         return with_options
 
     return decorate
+
+
+def declare(
+    shown: Callable[..., None], command: Callable[..., None], options: Sequence[tuple[str, Any, Any]]
+) -> None:
+    """Give a function the name and help of a command, and options as `(name, annotation, default)` as its parameters."""
+    shown.__name__, shown.__doc__ = command.__name__, command.__doc__
+    shown.__annotations__ = {name: kind for name, kind, _ in options}
+    shown.__signature__ = inspect.Signature(  # type: ignore[attr-defined]
+        [
+            inspect.Parameter(name, inspect.Parameter.KEYWORD_ONLY, default=default, annotation=kind)
+            for name, kind, default in options
+        ]
+    )
 
 
 def _plain(name: str, value: Any) -> Any:
@@ -217,4 +224,4 @@ def _plain(name: str, value: Any) -> Any:
     return value.value if isinstance(value, Enum) else value
 
 
-__all__ = ["EVERY", "PLACES", "At", "CellsOnly", "Measures", "strain_options"]
+__all__ = ["EVERY", "PLACES", "At", "CellsOnly", "Measures", "declare", "strain_options"]

@@ -45,17 +45,15 @@ def strain(
         bool, typer.Option("--mode", help="A mode shape: no verdict, values per unit amplitude.")
     ] = False,
     displacement_table: o.Table = None,
-    zero_step: Annotated[
-        int | None, typer.Option(metavar="N", help="Measure displacements from this step of the series.")
-    ] = None,
+    zero_step: o.ZeroStep = None,
     region: Annotated[
         list[str] | None,
         typer.Option(
             metavar="NAME", help="Summarise this region only (repeatable): a group, or array=value."
         ),
     ] = None,
-    prefix: Annotated[str, typer.Option(metavar="TEXT", help="Goes before the name of each new array.")] = "",
-    overwrite: Annotated[bool, typer.Option("--overwrite", help="Replace arrays of the same name.")] = False,
+    prefix: o.Prefix = "",
+    overwrite: o.Overwrite = False,
     picture: Annotated[
         Path | None,
         typer.Option(metavar="FILE.png", help="Also draw the equivalent strain on the deformed shape."),
